@@ -1,0 +1,1 @@
+"""What is issued: one builder per document kind, drawing, plots, PDF."""

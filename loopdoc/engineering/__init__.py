@@ -1,0 +1,1 @@
+"""What it means: scaling, direction, pairing, PID, frequency response, simulation."""

@@ -1,0 +1,1 @@
+"""What is written: text with positions, quantities and units, schema, model, tags."""

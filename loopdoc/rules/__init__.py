@@ -1,0 +1,1 @@
+"""What must hold: a module per family of rules, a function per rule."""

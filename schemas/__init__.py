@@ -1,0 +1,1 @@
+"""JSON Schema of the register, found as package data."""

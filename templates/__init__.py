@@ -1,0 +1,1 @@
+"""Document templates, found as package data."""
