@@ -1,0 +1,453 @@
+"""The register as written: what the engineer stated, each part knowing where it stands in the text.
+
+A field is ``None`` where the register says nothing and a `Hold` where it says that the value is not yet known.
+Nothing here is computed; what follows from several facts together is in ``loopdoc.engineering``.
+"""
+
+from __future__ import annotations
+
+import re
+from dataclasses import dataclass, field
+from functools import cached_property
+from typing import TypeVar
+
+from loopdoc.register.place import Place
+from loopdoc.register.quantity import Gain, Quantity, Range
+from loopdoc.register.text import TextFile
+
+T = TypeVar("T")
+
+
+@dataclass(frozen=True, slots=True)
+class Hold:
+    """A value not yet known, with the reason."""
+
+    reason: str
+    readable: bool = True
+    """False where the text holds a value that could not be read; a `schema` finding has said so."""
+
+
+def known(value: T | Hold | None) -> T | None:
+    """The value, or None where it is held or not given."""
+    return None if isinstance(value, Hold) else value
+
+
+@dataclass(frozen=True, slots=True)
+class Origin:
+    """Where a part of the register is written."""
+
+    source: TextFile
+    path: tuple[str | int, ...]
+
+    def place(self, *steps: str | int) -> Place:
+        """Place of the value under this part, or of the nearest enclosing key where it is not written."""
+        return self.source.place((*self.path, *steps))
+
+    def key(self, *steps: str | int) -> Place:
+        """Place of the key of this part or of a value under it."""
+        return self.source.place((*self.path, *steps), key=True)
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Part:
+    """Any part of the register."""
+
+    origin: Origin = field(repr=False, compare=False)
+
+
+# ---------------------------------------------------------------- measurements
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Measurement(Part):
+    """A transmitter signal."""
+
+    transmitter: str | Hold | None
+    """Tag of the transmitter."""
+    variable: str | Hold | None
+    """temperature, pressure, differential pressure, flow, level, analysis, speed ... (see the schema)."""
+    sensor: str | Hold | None
+    """Sensor type, such as `Pt100 class A` or `thermocouple type K`."""
+    element: str | Hold | None
+    """Primary element, such as `orifice plate`."""
+    characteristic: str | Hold | None
+    """linear or square root."""
+    range: Range | Hold | None
+    signal: str | Hold | None
+    """4-20 mA, 0-20 mA, 1-5 V, pulse, digital ..."""
+    on_fault: str | Hold | None
+    """reads high, reads low, holds, unknown."""
+    filter: Quantity | Hold | None
+    """Time constant of the measurement filter."""
+    channel: str | Hold | None
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Operating(Part):
+    """The band in which the plant runs, and its normal value."""
+
+    low: Quantity | Hold | None
+    normal: Quantity | Hold | None
+    high: Quantity | Hold | None
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Instrument(Part):
+    """A sensor that belongs to no loop."""
+
+    tag: str
+    unit: str | Hold | None
+    service: str | Hold | None
+    measurement: Measurement
+
+
+# ---------------------------------------------------------------- controllers
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Setpoint(Part):
+    """Setpoint limits and normal setpoint of a controller."""
+
+    low: Quantity | Hold | None
+    normal: Quantity | Hold | None
+    high: Quantity | Hold | None
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Output(Part):
+    """Where a controller's output goes, over which span, within which limits."""
+
+    to: str | Hold | None
+    """Tag of a loop (cascade), a function or a final element."""
+    span: Range | Hold | None
+    """What 0 and 100 % of the output ask of the secondary; not given for a final element (0 to 100 %)."""
+    low: Quantity | Hold | None
+    high: Quantity | Hold | None
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Modes(Part):
+    """Normal mode and permitted modes: manual, automatic, cascade, ..."""
+
+    normal: str | Hold | None
+    permitted: tuple[str, ...]
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class BadMeasurement(Part):
+    """What the controller does when its measurement is bad."""
+
+    mode: str | Hold | None
+    output: str | Hold | None
+    """`hold`, or an output such as `0 %`."""
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Controller(Part):
+    """A PID controller as configured."""
+
+    action: str | Hold | None
+    """direct or reverse."""
+    form: str | Hold | None
+    """standard, parallel or series (ISA-TR5.9); standard where not given."""
+    gain: float | Hold | None
+    """Percent of output per percent of measurement span, always positive; the action gives the sign."""
+    proportional_band: Quantity | Hold | None
+    reset: Quantity | Hold | None
+    """Reset (integral) time; none for proportional-only control."""
+    repeats: Quantity | Hold | None
+    rate: Quantity | Hold | None
+    """Rate (derivative) time."""
+    derivative_filter: float | Hold | None
+    """Ratio of the rate time to the time constant of its filter; 10 where not given (common practice)."""
+    setpoint_weight: float | Hold | None
+    """Weight of the setpoint in the proportional part; 1 where not given."""
+    interval: Quantity | Hold | None
+    """Execution interval."""
+    setpoint: Setpoint | Hold | None
+    output: Output | Hold | None
+    modes: Modes | Hold | None
+    on_bad_measurement: BadMeasurement | Hold | None
+    when_not_followed: str | Hold | None
+    """What the controller does while its output is not followed: track, hold, nothing."""
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Process(Part):
+    """What the measurement does when the thing commanded rises.
+
+    The thing commanded is the final element's opening or speed in percent, or the secondary's measurement.
+    """
+
+    effect: str | Hold | None
+    """rises or falls."""
+    gain: Gain | Hold | None
+    lags: tuple[Quantity, ...] | Hold
+    """First-order time constants, from `lag` or `lags`."""
+    dead_time: Quantity | Hold | None
+    integrating: bool
+    source: str | Hold | None
+    """Where the model comes from: a step test on a date, a design estimate."""
+    branches: dict[str, Process]
+    """For a split range: one process for each final element, by its tag."""
+
+
+# ---------------------------------------------------------------- alarms, loops
+
+ALARM_ORDER = ("low_low", "low", "high", "high_high")
+"""Alarm kinds on the measurement, in rising order of limit."""
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Alarm(Part):
+    """An alarm on a loop's measurement."""
+
+    kind: str
+    """high_high, high, low, low_low or deviation."""
+    limit: Quantity | Hold | None
+    deadband: Quantity | Hold | None
+    delay: Quantity | Hold | None
+    priority: str | Hold | None
+    """low, medium, high or critical."""
+    cause: str | Hold | None
+    consequence: str | Hold | None
+    response: str | Hold | None
+    time_to_respond: Quantity | Hold | None
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Loop(Part):
+    """A controller, or an indicator, with its measurement and its destination."""
+
+    tag: str
+    unit: str | Hold | None
+    service: str | Hold | None
+    drawing: str | Hold | None
+    purpose: str | Hold | None
+    measurement: Measurement | Hold | None
+    operating: Operating | Hold | None
+    controller: Controller | Hold | None
+    """None for an indicator."""
+    process: Process | Hold | None
+    hazard: str | Hold | None
+    """The direction of the measurement that hurts: high, low, both, none."""
+    alarms: dict[str, Alarm]
+
+
+# ---------------------------------------------------------------- final elements, functions
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class FinalElement(Part):
+    """What an output moves: valve, drive, heater bank."""
+
+    tag: str
+    unit: str | Hold | None
+    kind: str | Hold | None
+    """control valve, on-off valve, damper, variable-speed drive, motor, heater bank."""
+    service: str | Hold | None
+    drawing: str | Hold | None
+    opens_on: str | Hold | None
+    """rising signal or falling signal (a drive speeds up where a valve opens)."""
+    output_block: str | Hold | None
+    """direct, or reversed where the output block turns 0 % output into the high end of the signal."""
+    fails: str | Hold | None
+    """Position on loss of motive power: closed, open, last, stopped."""
+    safe: str | Hold | None
+    """Where the hazard study wants it: closed, open, last, stopped."""
+    signal: str | Hold | None
+    channel: str | Hold | None
+    characteristic: str | Hold | None
+    """Inherent characteristic: linear, equal percentage, quick opening."""
+    stroke_time: Quantity | Hold | None
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Function(Part):
+    """A computing element between loops."""
+
+    tag: str
+    kind: str | Hold | None
+    """ratio, high select, low select, sum, split range, lead-lag, characteriser."""
+    unit: str | Hold | None
+    service: str | Hold | None
+    inputs: tuple[str, ...]
+    """Tags of the measurements that enter. Controllers are not listed: their own `output: to:` says so."""
+    weights: dict[str, float]
+    """Sum: factor of each input by tag (of a measurement or a commanding loop); 1 where not given."""
+    to: str | Hold | None
+    """Tag of the loop or final element that the result commands."""
+    outputs: dict[str, Range]
+    """Split range: for each final element, the controller output over which it goes from shut to fully open.
+    A range written downwards (`50 to 0 %`) opens as the output falls."""
+    span: Range | Hold | None
+    """Ratio: the span of the ratio setting."""
+    normal: float | Hold | None
+    """Ratio: the ratio in normal operation."""
+
+
+# ---------------------------------------------------------------- interlocks
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Initiator(Part):
+    """One input of an interlock: a measurement and the limit at which it trips."""
+
+    tag: str
+    """Tag of an instrument, or of a loop or its transmitter."""
+    direction: str | Hold | None
+    """above or below."""
+    limit: Quantity | Hold | None
+    delay: Quantity | Hold | None
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class InterlockAction(Part):
+    """What an interlock does to a final element or to a controller."""
+
+    tag: str
+    position: str | Hold | None
+    """closed, open, stopped, started for a final element; None for a controller."""
+    mode: str | Hold | None
+    """Mode into which a controller is forced."""
+    output: Quantity | Hold | None
+    """Output to which a controller is forced."""
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Interlock(Part):
+    """Initiators, voting, actions and reset."""
+
+    tag: str
+    unit: str | Hold | None
+    service: str | Hold | None
+    drawing: str | Hold | None
+    layer: str | Hold | None
+    """process or safety."""
+    initiators: dict[str, Initiator]
+    voting: str | Hold | None
+    """Such as 1oo1, 1oo2, 2oo3."""
+    actions: dict[str, InterlockAction]
+    reset: str | Hold | None
+    process_safety_time: Quantity | Hold | None
+    response_time: Quantity | Hold | None
+    proof_test: Quantity | Hold | None
+    cause: str | Hold | None
+    consequence: str | Hold | None
+
+
+# ---------------------------------------------------------------- site, revision, texts, deviations
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Site(Part):
+    """The plant and the owner of the register."""
+
+    name: str | Hold | None
+    owner: str | Hold | None
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Revision(Part):
+    """The revision at which documents are issued."""
+
+    code: str | Hold | None
+    date: str | Hold | None
+    """ISO 8601 date."""
+    status: str | Hold | None
+    """issued for review, issued for construction, issued for use, as built."""
+    summary: str | Hold | None
+    prepared_by: str | Hold | None
+    checked_by: str | Hold | None
+    approved_by: str | Hold | None
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class PlantUnit(Part):
+    """A process unit."""
+
+    number: str
+    name: str | Hold | None
+    purpose: str | Hold | None
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class UnitText(Part):
+    """Narrative prose of one unit."""
+
+    overview: str | Hold | None
+    start_up: tuple[str, ...]
+    shut_down: tuple[str, ...]
+    upsets: tuple[str, ...]
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Deviation(Part):
+    """A finding accepted in writing."""
+
+    rule: str | Hold | None
+    at: str | Hold | None
+    """Tag at which the finding stands."""
+    reason: str | Hold | None
+    approved_by: str | Hold | None
+    until: str | Hold | None
+    """ISO 8601 date."""
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class HeldValue:
+    """A hold with the place where it stands and the tag it belongs to."""
+
+    tag: str
+    path: tuple[str | int, ...]
+    """Path of the value under the tag, such as ("process", "gain")."""
+    reason: str
+    place: Place
+
+
+@dataclass(frozen=True)
+class Register:
+    """All loops, final elements, functions, interlocks and texts of a site."""
+
+    root: TextFile
+    files: tuple[TextFile, ...]
+    """The root file first, then the included ones in order of name."""
+    site: Site | None
+    revision: Revision | None
+    history: tuple[Revision, ...]
+    """Earlier revisions, as written (oldest first)."""
+    numbering: str
+    """Pattern of document numbers with {unit}, {kind} and {serial}."""
+    tag_pattern: re.Pattern[str] | None
+    policy: dict[str, float]
+    """Thresholds that the register sets; the others keep their defaults (see ``loopdoc.rules.policy``)."""
+    units: dict[str, PlantUnit]
+    loops: dict[str, Loop]
+    final_elements: dict[str, FinalElement]
+    instruments: dict[str, Instrument]
+    functions: dict[str, Function]
+    interlocks: dict[str, Interlock]
+    deviations: tuple[Deviation, ...]
+    texts: dict[str, UnitText]
+    twice: tuple[tuple[str, Place, Place], ...]
+    """Tags defined more than once: tag, the later place, the first place. The first definition counts."""
+    holds: tuple[HeldValue, ...]
+
+    @cached_property
+    def measurements(self) -> dict[str, Measurement]:
+        """Every measurement by the tag of its transmitter or instrument."""
+        found = {tag: instrument.measurement for tag, instrument in self.instruments.items()}
+        for loop in self.loops.values():
+            measurement = known(loop.measurement)
+            transmitter = measurement and known(measurement.transmitter)
+            if measurement and transmitter:
+                found.setdefault(transmitter, measurement)
+        return found
+
+    def defined_at(self, tag: str) -> Place | None:
+        """Place of the key under which a tag is defined; None for a tag the register does not define."""
+        for part in (self.loops, self.final_elements, self.instruments, self.functions, self.interlocks):
+            if tag in part:
+                return part[tag].origin.key()  # type: ignore[attr-defined,no-any-return]
+        measurement = self.measurements.get(tag)
+        return measurement.origin.place("transmitter") if measurement else None
