@@ -1,0 +1,294 @@
+"""Who commands whom: the directed graph of loops, functions and final elements, resolved once.
+
+A `Plant` is what the rules and documents work on: every link of it exists, so nobody has to look a tag up
+twice. What could not be resolved (unknown tags, cycles) is kept beside it for the rules to tell.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import dataclass
+from functools import cached_property
+
+from loopdoc.register.model import (
+    Alarm,
+    Controller,
+    FinalElement,
+    Function,
+    Initiator,
+    Instrument,
+    Interlock,
+    Loop,
+    Measurement,
+    Register,
+    known,
+)
+from loopdoc.register.quantity import Range
+
+
+@dataclass(frozen=True, slots=True)
+class Route:
+    """One way of a controller's output, through functions, to a final element or to a secondary loop."""
+
+    via: tuple[Function, ...]
+    end: FinalElement | Loop
+    branch: Range | None = None
+    """Of a split range: the controller output over which this final element goes from shut to fully open."""
+
+
+@dataclass(frozen=True, slots=True)
+class ControlledLoop:
+    """A loop with a controller, and where its output leads."""
+
+    loop: Loop
+    controller: Controller
+    routes: tuple[Route, ...]
+
+    @property
+    def tag(self) -> str:
+        return self.loop.tag
+
+
+@dataclass(frozen=True, slots=True)
+class CascadeLink:
+    """A primary that commands a secondary, directly or through functions."""
+
+    primary: ControlledLoop
+    secondary: ControlledLoop
+    via: tuple[Function, ...]
+
+
+@dataclass(frozen=True, slots=True)
+class LoopAlarm:
+    """An alarm with the loop on whose measurement it stands."""
+
+    loop: Loop
+    alarm: Alarm
+
+
+@dataclass(frozen=True, slots=True)
+class Trip:
+    """One initiator of an interlock with the measurement it watches."""
+
+    interlock: Interlock
+    initiator: Initiator
+    measurement: Measurement | None
+    """None where the register does not define the initiator's tag."""
+    loop: Loop | None
+    """The loop of that measurement; None for an instrument of its own."""
+    instrument: Instrument | None
+
+
+@dataclass(frozen=True, slots=True)
+class Scheme:
+    """Loops that act together: a cascade with all its levels, an override, a split range, or a single loop."""
+
+    loops: tuple[Loop, ...]
+    """Outermost first; loops without a controller stand alone."""
+    functions: tuple[Function, ...]
+    final_elements: tuple[FinalElement, ...]
+
+    @property
+    def lead(self) -> Loop:
+        """The loop after which the scheme is named: the outermost."""
+        return self.loops[0]
+
+
+class Plant:
+    """The register resolved: routes, cascades, alarms, trips, schemes."""
+
+    def __init__(self, register: Register) -> None:
+        self.register = register
+
+    @cached_property
+    def controlled(self) -> dict[str, ControlledLoop]:
+        """Loops with a controller, by tag."""
+        found = {}
+        for tag, loop in self.register.loops.items():
+            controller = known(loop.controller)
+            if controller is not None:
+                found[tag] = ControlledLoop(loop, controller, tuple(self._routes(loop, controller)))
+        return found
+
+    @cached_property
+    def links(self) -> tuple[CascadeLink, ...]:
+        """Every pair of primary and secondary; a chain of three levels gives two links."""
+        return tuple(
+            CascadeLink(primary, self.controlled[route.end.tag], route.via)
+            for primary in self.controlled.values()
+            for route in primary.routes
+            if isinstance(route.end, Loop) and route.end.tag in self.controlled
+        )
+
+    @cached_property
+    def alarms(self) -> tuple[LoopAlarm, ...]:
+        return tuple(LoopAlarm(loop, alarm) for loop in self.register.loops.values() for alarm in loop.alarms.values())
+
+    @cached_property
+    def trips(self) -> tuple[Trip, ...]:
+        found = []
+        for interlock in self.register.interlocks.values():
+            for tag, initiator in interlock.initiators.items():
+                instrument = self.register.instruments.get(tag)
+                loop = self.register.loops.get(tag) or self.loop_of_transmitter.get(tag)
+                measurement = instrument.measurement if instrument else known(loop.measurement) if loop else None
+                found.append(Trip(interlock, initiator, measurement, None if instrument else loop, instrument))
+        return tuple(found)
+
+    @cached_property
+    def loop_of_transmitter(self) -> dict[str, Loop]:
+        """The loop that each transmitter belongs to (the first, where several name it)."""
+        found: dict[str, Loop] = {}
+        for loop in self.register.loops.values():
+            measurement = known(loop.measurement)
+            transmitter = known(measurement.transmitter) if measurement else None
+            if transmitter:
+                found.setdefault(transmitter, loop)
+        return found
+
+    @cached_property
+    def commanders(self) -> dict[str, tuple[str, ...]]:
+        """Tags of the loops and functions that command each tag directly."""
+        found: dict[str, list[str]] = {}
+        for tag, targets in self._targets.items():
+            for target in targets:
+                found.setdefault(target, []).append(tag)
+        return {tag: tuple(commanders) for tag, commanders in found.items()}
+
+    @cached_property
+    def cycles(self) -> tuple[tuple[str, ...], ...]:
+        """Tags that command one another in a ring, each ring once, beginning with its first tag in the register."""
+        found: dict[frozenset[str], tuple[str, ...]] = {}
+        done: set[str] = set()
+        for start in self._targets:
+            path: list[str] = []
+            on_path: set[str] = set()
+            stack = [(start, iter(self._targets.get(start, ())))] if start not in done else []
+            if stack:
+                path.append(start)
+                on_path.add(start)
+            while stack:
+                tag, targets = stack[-1]
+                target = next(targets, None)
+                if target is None:
+                    stack.pop()
+                    path.pop()
+                    on_path.discard(tag)
+                    done.add(tag)
+                elif target in on_path:
+                    ring = tuple(path[path.index(target) :])
+                    found.setdefault(frozenset(ring), ring)
+                elif target not in done and target in self._targets:
+                    stack.append((target, iter(self._targets[target])))
+                    path.append(target)
+                    on_path.add(target)
+        return tuple(found.values())
+
+    @cached_property
+    def schemes(self) -> tuple[Scheme, ...]:
+        """Every loop in exactly one scheme, in the order in which the register names its first loop."""
+        neighbours: dict[str, set[str]] = {tag: set() for tag in self.register.loops}
+        for tag, targets in self._targets.items():
+            for target in targets:
+                neighbours.setdefault(tag, set()).add(target)
+                neighbours.setdefault(target, set()).add(tag)
+        seen: set[str] = set()
+        schemes = []
+        for first in self.register.loops:
+            if first in seen:
+                continue
+            together = {first}
+            waiting = [first]
+            while waiting:
+                for tag in neighbours[waiting.pop()] - together:
+                    together.add(tag)
+                    waiting.append(tag)
+            seen |= together
+            register = self.register
+            loops = [loop for tag, loop in register.loops.items() if tag in together]
+            # A loop that commands more levels stands further out; the order of the register decides among equals.
+            loops.sort(key=lambda loop: -self.depth(loop.tag))
+            schemes.append(
+                Scheme(
+                    tuple(loops),
+                    tuple(part for tag, part in register.functions.items() if tag in together),
+                    tuple(part for tag, part in register.final_elements.items() if tag in together),
+                )
+            )
+        return tuple(schemes)
+
+    def depth(self, tag: str) -> int:
+        """How many levels of secondaries stand below a loop: 0 for one that moves a final element."""
+        return self._depth(tag, frozenset())
+
+    def scheme_of(self, tag: str) -> Scheme:
+        """The scheme a loop belongs to.
+
+        Raises
+        ------
+        KeyError
+            The register has no such loop.
+        """
+        return self._scheme_by_loop[tag]
+
+    @cached_property
+    def _scheme_by_loop(self) -> dict[str, Scheme]:
+        return {loop.tag: scheme for scheme in self.schemes for loop in scheme.loops}
+
+    def chain(self, tag: str) -> tuple[ControlledLoop, ...]:
+        """A loop and the secondaries below it, innermost first, following the first route of each."""
+        found: list[ControlledLoop] = []
+        next_tag: str | None = tag
+        while next_tag in self.controlled and next_tag not in (loop.tag for loop in found):
+            loop = self.controlled[next_tag]
+            found.append(loop)
+            next_tag = next((route.end.tag for route in loop.routes if isinstance(route.end, Loop)), None)
+        return tuple(reversed(found))
+
+    def primaries_of(self, tag: str) -> tuple[ControlledLoop, ...]:
+        """The loops that command a loop, directly or through functions."""
+        return tuple(link.primary for link in self.links if link.secondary.tag == tag)
+
+    # -- the graph
+
+    @cached_property
+    def _targets(self) -> dict[str, tuple[str, ...]]:
+        """What each loop and function commands directly, as written (unknown tags included)."""
+        targets: dict[str, tuple[str, ...]] = {}
+        for tag, loop in self.register.loops.items():
+            controller = known(loop.controller)
+            output = known(controller.output) if controller else None
+            to = known(output.to) if output else None
+            targets[tag] = (to,) if to else ()
+        for tag, function in self.register.functions.items():
+            to = known(function.to)
+            targets[tag] = ((to,) if to else ()) + tuple(function.outputs)
+        return targets
+
+    def _routes(self, loop: Loop, controller: Controller) -> Iterator[Route]:
+        output = known(controller.output)
+        to = known(output.to) if output else None
+        if to is not None:
+            yield from self._routes_from(to, (), None)
+
+    def _routes_from(self, tag: str, via: tuple[Function, ...], branch: Range | None) -> Iterator[Route]:
+        register = self.register
+        if tag in register.final_elements:
+            yield Route(via, register.final_elements[tag], branch)
+        elif tag in register.loops:
+            yield Route(via, register.loops[tag], branch)
+        elif tag in register.functions and register.functions[tag] not in via:
+            function = register.functions[tag]
+            to = known(function.to)
+            if to is not None:
+                yield from self._routes_from(to, (*via, function), branch)
+            for element, span in function.outputs.items():
+                yield from self._routes_from(element, (*via, function), span)
+
+    def _depth(self, tag: str, above: frozenset[str]) -> int:
+        below = [
+            self._depth(target, above | {tag})
+            for target in self._targets.get(tag, ())
+            if target in self._targets and target not in above and target != tag
+        ]
+        return (1 if tag in self.register.loops else 0) + max(below, default=0) if tag in self._targets else 0

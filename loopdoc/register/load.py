@@ -1,0 +1,457 @@
+"""A folder of text files to a `Register`.
+
+What cannot be read as a register at all is `Unreadable`; every other mistake is a fault beside the register
+that could be built, so that one bad value does not hide the rest of the plant from the check.
+"""
+
+from __future__ import annotations
+
+import re
+from collections.abc import Iterator, Mapping
+from dataclasses import dataclass, fields
+from functools import lru_cache
+from pathlib import Path
+from types import UnionType
+from typing import Any, TypeVar, Union, get_args, get_origin, get_type_hints
+
+from loopdoc.register.model import (
+    Alarm,
+    BadMeasurement,
+    Controller,
+    Deviation,
+    FinalElement,
+    Function,
+    HeldValue,
+    Hold,
+    Initiator,
+    Instrument,
+    Interlock,
+    InterlockAction,
+    Loop,
+    Measurement,
+    Modes,
+    Operating,
+    Origin,
+    Output,
+    Part,
+    PlantUnit,
+    Process,
+    Register,
+    Revision,
+    Setpoint,
+    Site,
+    UnitText,
+)
+from loopdoc.register.place import Fault, Place
+from loopdoc.register.quantity import Gain, Quantity, QuantityError, Range, parse_gain, parse_quantity, parse_range
+from loopdoc.register.schema import schema_faults
+from loopdoc.register.text import Spot, TextFile, read_text
+
+ROOT_NAME = "register.yaml"
+MAX_FILES = 5_000
+DEFAULT_NUMBERING = "{unit}-{kind}-{serial}"
+P = TypeVar("P", bound=Part)
+_SECTIONS = ("loops", "final_elements", "instruments", "functions", "interlocks", "texts", "units")
+_UNREADABLE = Hold("the value in the register could not be read", readable=False)
+
+
+@dataclass(frozen=True, slots=True)
+class Unreadable:
+    """Why a folder or file cannot be read as a register."""
+
+    faults: tuple[Fault, ...]
+
+
+@dataclass(frozen=True, slots=True)
+class Loaded:
+    """A register and the faults found while reading it."""
+
+    register: Register
+    faults: tuple[Fault, ...]
+    sources: Mapping[str, bytes]
+    """Content of each file read, by its name."""
+
+
+def load(path: Path) -> Loaded | Unreadable:
+    """Read the register in a folder, or the one whose root file is ``path``."""
+    folder, root_name = (path.parent, path.name) if path.is_file() else (path, ROOT_NAME)
+    if not path.exists():
+        return _unreadable(Place(str(path), 1, 1), "there is no such file or folder", "name the register's folder")
+    if not (folder / root_name).is_file():
+        return _unreadable(
+            Place(str(path), 1, 1), f"the folder has no `{ROOT_NAME}`", "name the register's folder, or make one: loopdoc new"
+        )
+    sources: dict[str, bytes] = {}
+    root = _read(folder, root_name, sources)
+    if isinstance(root, Fault):
+        return Unreadable((root,))
+    if not isinstance(root.data, dict):
+        return _unreadable(
+            root.place(()), "a register is a mapping of keys; this is something else", "begin with `format: 1` and `site:`"
+        )
+    names, include_faults = _included(folder, root)
+    files: list[TextFile] = [root]
+    unreadable = list(include_faults)
+    for name in names:
+        file = _read(folder, name, sources)
+        if isinstance(file, Fault):
+            unreadable.append(file)
+        elif not isinstance(file.data, dict):
+            unreadable.append(
+                Fault(file.place(()), "an included file is a mapping of keys; this is something else", "begin with `loops:`")
+            )
+        else:
+            files.append(file)
+    if unreadable:
+        return Unreadable(tuple(unreadable))
+    faults = [fault for file in files for fault in schema_faults(file, root=file is root)]
+    reader = _Reader(faults)
+    register = reader.register(tuple(files))
+    return Loaded(register, tuple(faults), sources)
+
+
+def _unreadable(place: Place, message: str, remedy: str) -> Unreadable:
+    return Unreadable((Fault(place, message, remedy),))
+
+
+def _read(folder: Path, name: str, sources: dict[str, bytes]) -> TextFile | Fault:
+    try:
+        content = (folder / name).read_bytes()
+    except OSError as error:
+        return Fault(Place(name, 1, 1), f"the file cannot be read ({error.strerror})", "check its name and permissions")
+    sources[name] = content
+    return read_text(content, name)
+
+
+def _included(folder: Path, root: TextFile) -> tuple[list[str], list[Fault]]:
+    """Names of the included files in order, and a fault for each pattern that leads nowhere or outside."""
+    assert isinstance(root.data, dict)
+    patterns = root.data.get("include", [])
+    if not isinstance(patterns, list):
+        return [], [Fault(root.place(("include",)), "`include` is not a list", "write `include: [units/*.yaml]`")]
+    inside = folder.resolve()
+    names: dict[str, None] = {}
+    faults = []
+    for index, pattern in enumerate(patterns):
+        place = root.place(("include", index))
+        if not isinstance(pattern, str) or not pattern:
+            faults.append(Fault(place, "an `include` entry is not a file name", "write `include: [units/*.yaml]`"))
+            continue
+        if Path(pattern).is_absolute() or ".." in Path(pattern).parts:
+            faults.append(
+                Fault(place, f"`{pattern}` leads outside the register's folder", "include files inside the folder only")
+            )
+            continue
+        found = sorted(file for file in folder.glob(pattern) if file.is_file() and file.name != root.name)
+        outside = [file for file in found if not file.resolve().is_relative_to(inside)]
+        if outside:
+            faults.append(
+                Fault(
+                    place,
+                    f"`{outside[0].relative_to(folder).as_posix()}` is a link that leads outside the register's folder",
+                    "include files inside the folder only",
+                )
+            )
+        elif not found:
+            faults.append(Fault(place, f"no file matches `{pattern}`", "correct the name, or remove the entry"))
+        for file in found:
+            names[file.relative_to(folder).as_posix()] = None
+    if len(names) > MAX_FILES:
+        faults.append(Fault(root.place(("include",)), f"more than {MAX_FILES} files are included", "include fewer files"))
+    return list(names), faults
+
+
+# ---------------------------------------------------------------- from plain data to parts
+
+
+@lru_cache(maxsize=None)
+def _field_types(part: type[Part]) -> tuple[tuple[str, type, bool], ...]:
+    """For each field of a part that is read by its type alone: name, type, whether it may be a list."""
+    hints = get_type_hints(part)
+    found = []
+    for entry in fields(part):
+        if entry.name == "origin":
+            continue
+        hint = hints[entry.name]
+        members = [hint]
+        if get_origin(hint) in (Union, UnionType):
+            members = [member for member in get_args(hint) if member not in (type(None), Hold)]
+        kind = members[0]
+        if kind in (str, float, bool, Quantity, Range, Gain) or (isinstance(kind, type) and issubclass(kind, Part)):
+            found.append((entry.name, kind, False))
+        elif get_origin(kind) is tuple and get_args(kind)[0] is str:
+            found.append((entry.name, str, True))
+    return tuple(found)
+
+
+_PARSERS = {Quantity: parse_quantity, Range: parse_range, Gain: parse_gain}
+
+
+class _Reader:
+    """Builds the parts of the register, adding a fault for each value that cannot be read."""
+
+    def __init__(self, faults: list[Fault]) -> None:
+        self._faults = faults
+        self._told = {fault.place for fault in faults}
+
+    # -- values
+
+    def _value(self, origin: Origin, steps: tuple[str | int, ...], value: Any, kind: type) -> Any:
+        """One value as ``kind``; a Hold where it is held or cannot be read; None where it is not given."""
+        if value is None:
+            return None
+        if isinstance(value, dict) and "hold" in value:
+            return Hold(str(value["hold"]))
+        if kind in _PARSERS:
+            if not isinstance(value, str):
+                return _UNREADABLE  # the schema has said so
+            try:
+                return _PARSERS[kind](value)
+            except QuantityError as error:
+                message, _, remedy = str(error).partition("; ")
+                self._fault(origin, steps, f"`{steps[-1]}` is `{value}`: {message}", remedy or "write a number and a unit")
+                return _UNREADABLE
+        if kind is float:
+            return float(value) if isinstance(value, int | float) and not isinstance(value, bool) else _UNREADABLE
+        if kind is str:
+            return value if isinstance(value, str) else _UNREADABLE
+        if kind is bool:
+            return value if isinstance(value, bool) else False
+        return self._part(Origin(origin.source, (*origin.path, *steps)), value, kind)
+
+    def _part(self, origin: Origin, value: Any, kind: type[P], **given: Any) -> P | Hold:
+        if not isinstance(value, dict):
+            return _UNREADABLE
+        if "hold" in value and kind not in (Loop,):
+            return Hold(str(value["hold"]))
+        read: dict[str, Any] = {}
+        for name, inner, many in _field_types(kind):
+            if name in given:
+                continue
+            written = value.get(name)
+            if many:
+                items = written if isinstance(written, list) else []
+                read[name] = tuple(item for item in items if isinstance(item, str))
+            else:
+                read[name] = self._value(origin, (name,), written, inner)
+                if inner is bool:
+                    read[name] = bool(read[name])
+        return kind(origin=origin, **read, **given)
+
+    def _fault(self, origin: Origin, steps: tuple[str | int, ...], message: str, remedy: str) -> None:
+        place = origin.place(*steps)
+        if place not in self._told:
+            self._told.add(place)
+            self._faults.append(Fault(place, message, remedy, "/" + "/".join(map(str, (*origin.path, *steps)))))
+
+    def _below(self, origin: Origin, value: Any, name: str) -> Iterator[tuple[str, Any, Origin]]:
+        """Entries of the mapping ``name`` inside ``value``: key, value, origin."""
+        section = value.get(name) if isinstance(value, dict) else None
+        if isinstance(section, dict) and "hold" not in section:
+            for key, entry in section.items():
+                yield key, entry, Origin(origin.source, (*origin.path, name, key))
+
+    # -- parts with more than plain fields
+
+    def _loop(self, origin: Origin, tag: str, value: Any) -> Loop | None:
+        alarms = {}
+        for kind, entry, where in self._below(origin, value, "alarms"):
+            alarm = self._part(where, entry, Alarm, kind=kind)
+            if isinstance(alarm, Alarm):
+                alarms[kind] = alarm
+        process = self._process(Origin(origin.source, (*origin.path, "process")), value.get("process"))
+        loop = self._part(origin, value, Loop, tag=tag, alarms=alarms, process=process)
+        return loop if isinstance(loop, Loop) else None
+
+    def _process(self, origin: Origin, value: Any) -> Process | Hold | None:
+        if value is None:
+            return None
+        if not isinstance(value, dict):
+            return _UNREADABLE
+        if "hold" in value:
+            return Hold(str(value["hold"]))
+        branches = {}
+        for tag, entry, where in self._below(origin, value, "branches"):
+            branch = self._process(where, entry)
+            if isinstance(branch, Process):
+                branches[tag] = branch
+        process = self._part(origin, value, Process, lags=self._lags(origin, value), branches=branches)
+        return process
+
+    def _lags(self, origin: Origin, value: dict[str, Any]) -> tuple[Quantity, ...] | Hold:
+        if "lags" not in value:
+            lag = self._value(origin, ("lag",), value.get("lag"), Quantity)
+            return lag if isinstance(lag, Hold) else () if lag is None else (lag,)
+        written = value["lags"]
+        if isinstance(written, dict) and "hold" in written:
+            return Hold(str(written["hold"]))
+        if not isinstance(written, list):
+            return _UNREADABLE
+        lags = [self._value(origin, ("lags", index), item, Quantity) for index, item in enumerate(written)]
+        held = [lag for lag in lags if not isinstance(lag, Quantity)]
+        return held[0] or _UNREADABLE if held else tuple(lags)
+
+    def _function(self, origin: Origin, tag: str, value: Any) -> Function | None:
+        weights = {
+            key: float(entry)
+            for key, entry, _ in self._below(origin, value, "weights")
+            if isinstance(entry, int | float) and not isinstance(entry, bool)
+        }
+        outputs = {}
+        for element, entry, where in self._below(origin, value, "outputs"):
+            span = self._value(Origin(where.source, where.path[:-1]), (element,), entry, Range)
+            if isinstance(span, Range):
+                outputs[element] = span
+        function = self._part(origin, value, Function, tag=tag, weights=weights, outputs=outputs)
+        return function if isinstance(function, Function) else None
+
+    def _interlock(self, origin: Origin, tag: str, value: Any) -> Interlock | None:
+        initiators = {}
+        for sensor, entry, where in self._below(origin, value, "initiators"):
+            direction, limit = self._trips(where, entry.get("trips") if isinstance(entry, dict) else None)
+            initiator = self._part(where, entry, Initiator, tag=sensor, direction=direction, limit=limit)
+            if isinstance(initiator, Initiator):
+                initiators[sensor] = initiator
+        actions = {}
+        for target, entry, where in self._below(origin, value, "actions"):
+            if isinstance(entry, str):
+                actions[target] = InterlockAction(origin=where, tag=target, position=entry, mode=None, output=None)
+            elif isinstance(entry, dict):
+                action = self._part(where, entry, InterlockAction, tag=target, position=None)
+                if isinstance(action, InterlockAction):
+                    actions[target] = action
+        interlock = self._part(origin, value, Interlock, tag=tag, initiators=initiators, actions=actions)
+        return interlock if isinstance(interlock, Interlock) else None
+
+    def _trips(self, origin: Origin, written: Any) -> tuple[str | Hold | None, Quantity | Hold | None]:
+        if isinstance(written, dict) and "hold" in written:
+            held = Hold(str(written["hold"]))
+            return held, held
+        if not isinstance(written, str):
+            return (None, None) if written is None else (_UNREADABLE, _UNREADABLE)
+        direction, _, limit = written.partition(" ")
+        if direction not in ("above", "below"):
+            return _UNREADABLE, _UNREADABLE  # the schema has said so
+        return direction, self._value(origin, ("trips",), limit, Quantity)
+
+    def _instrument(self, origin: Origin, tag: str, value: Any) -> Instrument | None:
+        measurement = self._part(origin, value, Measurement, transmitter=tag)
+        if not isinstance(measurement, Measurement):
+            return None
+        instrument = self._part(origin, value, Instrument, tag=tag, measurement=measurement)
+        return instrument if isinstance(instrument, Instrument) else None
+
+    # -- the whole
+
+    def register(self, files: tuple[TextFile, ...]) -> Register:
+        root = files[0]
+        assert isinstance(root.data, dict)
+        sections: dict[str, dict[str, tuple[Origin, Any]]] = {name: {} for name in _SECTIONS}
+        first_key: dict[str, Place] = {}
+        twice: list[tuple[str, Place, Place]] = []
+        deviations: list[Deviation] = []
+        for file in files:
+            origin = Origin(file, ())
+            for name in _SECTIONS:
+                for tag, value, where in self._below(origin, file.data, name):
+                    if not isinstance(value, dict):
+                        continue  # the schema has said so
+                    space = name if name in ("texts", "units") else "tags"
+                    first = first_key.setdefault(f"{space}/{tag}", where.key())
+                    if first == where.key():
+                        sections[name][tag] = (where, value)
+                    else:
+                        twice.append((tag, where.key(), first))
+            written = file.data.get("deviations") if isinstance(file.data, dict) else None
+            for index, entry in enumerate(written if isinstance(written, list) else ()):
+                deviation = self._part(Origin(file, ("deviations", index)), entry, Deviation)
+                if isinstance(deviation, Deviation):
+                    deviations.append(deviation)
+        data, at_root = root.data, Origin(root, ())
+
+        def only(kind: type[P], name: str) -> P | None:
+            part = self._value(at_root, (name,), data.get(name), kind)
+            return part if isinstance(part, kind) else None
+
+        history = []
+        for index, entry in enumerate(data["history"] if isinstance(data.get("history"), list) else ()):
+            revision = self._part(Origin(root, ("history", index)), entry, Revision)
+            if isinstance(revision, Revision):
+                history.append(revision)
+
+        def parts(name: str, kind: type[P], key: str) -> dict[str, P]:
+            made = {tag: self._part(where, value, kind, **{key: tag}) for tag, (where, value) in sections[name].items()}
+            return {tag: part for tag, part in made.items() if isinstance(part, kind)}
+
+        def built(name: str, build: Any) -> dict[str, Any]:
+            made = {tag: build(where, tag, value) for tag, (where, value) in sections[name].items()}
+            return {tag: part for tag, part in made.items() if part is not None}
+
+        texts = {tag: self._part(where, value, UnitText) for tag, (where, value) in sections["texts"].items()}
+        numbering = data.get("numbering")
+        policy = data.get("policy")
+        return Register(
+            root=root,
+            files=files,
+            site=only(Site, "site"),
+            revision=only(Revision, "revision"),
+            history=tuple(history),
+            numbering=numbering if isinstance(numbering, str) else DEFAULT_NUMBERING,
+            tag_pattern=self._tag_pattern(root),
+            policy={
+                name: float(value)
+                for name, value in (policy if isinstance(policy, dict) else {}).items()
+                if isinstance(value, int | float) and not isinstance(value, bool)
+            },
+            units=parts("units", PlantUnit, "number"),
+            loops=built("loops", self._loop),
+            final_elements=parts("final_elements", FinalElement, "tag"),
+            instruments=built("instruments", self._instrument),
+            functions=built("functions", self._function),
+            interlocks=built("interlocks", self._interlock),
+            deviations=tuple(deviations),
+            texts={tag: text for tag, text in texts.items() if isinstance(text, UnitText)},
+            twice=tuple(twice),
+            holds=tuple(hold for file in files for hold in _holds(file)),
+        )
+
+    def _tag_pattern(self, root: TextFile) -> re.Pattern[str] | None:
+        assert isinstance(root.data, dict)
+        written = root.data.get("tags")
+        if not isinstance(written, str):
+            return None
+        origin = Origin(root, ())
+        try:
+            pattern = re.compile(written)
+        except re.error as error:
+            self._fault(origin, ("tags",), f"`tags` is not a regular expression ({error})", "correct the expression")
+            return None
+        missing = [group for group in ("letters", "unit", "serial") if group not in pattern.groupindex]
+        if missing:
+            self._fault(
+                origin, ("tags",), f"`tags` has no group named {' or '.join(missing)}", "name it, as in `(?P<letters>[A-Z]+)`"
+            )
+            return None
+        return pattern
+
+
+def _holds(file: TextFile) -> Iterator[HeldValue]:
+    """Every hold of one file, with the tag (or section) under which it stands."""
+
+    def walk(data: Any, spot: Spot, path: tuple[str | int, ...]) -> Iterator[HeldValue]:
+        if isinstance(data, dict) and isinstance(spot.inside, dict):
+            if "hold" in data:
+                tag, inner = (str(path[1]), path[2:]) if len(path) > 1 else (str(path[0]) if path else "", ())
+                yield HeldValue(
+                    tag=tag, path=inner, reason=str(data["hold"]), place=Place(file.name, spot.key_line, spot.key_column)
+                )
+                return
+            for key, value in data.items():
+                if isinstance(value, dict | list):
+                    yield from walk(value, spot.inside[key], (*path, key))
+        elif isinstance(data, list) and isinstance(spot.inside, list):
+            for index, value in enumerate(data):
+                if isinstance(value, dict | list):
+                    yield from walk(value, spot.inside[index], (*path, index))
+
+    yield from walk(file.data, file.spot, ())

@@ -1,0 +1,94 @@
+"""A finding: one result of the check, and what a whole check found."""
+
+from __future__ import annotations
+
+import hashlib
+from collections import Counter
+from dataclasses import dataclass, field
+from enum import IntEnum
+
+from loopdoc.register.model import Deviation
+from loopdoc.register.place import Place
+
+
+class Level(IntEnum):
+    """How much a finding matters; a higher number is worse."""
+
+    NOTE = 1
+    WARNING = 2
+    ERROR = 3
+
+    def __str__(self) -> str:
+        return self.name.lower()
+
+
+@dataclass(frozen=True, slots=True)
+class Related:
+    """A second place that belongs to a finding, and what stands there."""
+
+    place: Place
+    what: str
+
+
+@dataclass(frozen=True, slots=True)
+class Finding:
+    """One result of the check."""
+
+    rule: str
+    level: Level
+    tag: str
+    """The tag (or, for texts and document control, the section) it is about."""
+    message: str
+    remedy: str
+    place: Place
+    related: tuple[Related, ...] = ()
+    accepted_by: Deviation | None = None
+    """The deviation that accepts it."""
+
+    @property
+    def order(self) -> tuple[str, int, int, str, str]:
+        return (self.place.file, self.place.line, self.place.column, self.rule, self.message)
+
+
+@dataclass(slots=True)
+class Coverage:
+    """How often a rule was checked, could not be checked, and why not."""
+
+    checked: int = 0
+    not_checked: int = 0
+    reasons: Counter[str] = field(default_factory=Counter)
+    """Why it was not checked, in words, each with its count."""
+    where: list[tuple[str, str]] = field(default_factory=list)
+    """Tag and reason of each check that was not made."""
+
+
+@dataclass(frozen=True, slots=True)
+class CheckResult:
+    """All that one check found, accepted and could not check."""
+
+    findings: tuple[Finding, ...]
+    """Open findings in order of file, line, column and rule."""
+    accepted: tuple[Finding, ...]
+    """Findings accepted by a deviation in force."""
+    coverage: dict[str, Coverage]
+    """By rule id, in the order of the catalogue."""
+
+    def count(self, level: Level) -> int:
+        return sum(1 for finding in self.findings if finding.level is level)
+
+    @property
+    def checked(self) -> int:
+        return sum(entry.checked for entry in self.coverage.values())
+
+    @property
+    def not_checked(self) -> int:
+        return sum(entry.not_checked for entry in self.coverage.values())
+
+    def about(self, tags: set[str]) -> tuple[Finding, ...]:
+        """Open findings about any of these tags."""
+        return tuple(finding for finding in self.findings if finding.tag in tags)
+
+
+def fingerprint(finding: Finding, ordinal: int) -> str:
+    """A stable name of a finding: rule, tag and ordinal, never its line (a moved line is not a new finding)."""
+    return hashlib.sha256(f"{finding.rule}\0{finding.tag}\0{ordinal}".encode()).hexdigest()[:32]
