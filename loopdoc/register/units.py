@@ -63,9 +63,9 @@ _PRESSURE_PA: Mapping[str, Fraction | int | str] = {
     "kgf/cm2": 10_000 * _GRAVITY,
 }
 
-# Kind by kind, the size of each unit in the kind's SI unit. Standard volumes are all taken at the site's one
-# standard condition, so that Sm3 and scf differ by the size of the foot only (15 degC against 60 degF would be
-# 0.2 %); normal volumes (0 degC) are a kind of their own.
+# Kind by kind, the size of each unit in the kind's SI unit. Standard volumes are all at the one standard
+# condition of the site, so that Sm3 and scf differ by the size of the foot only (15 degC for one and 60 degF
+# for the other would be 0.2 %); normal volumes (0 degC) are a kind of their own.
 _TABLE: Mapping[str, Mapping[str, Fraction | int | str]] = {
     "temperature": {"degC": 1, "degF": "5/9", "K": 1},
     "pressure difference": _PRESSURE_PA,
@@ -305,6 +305,14 @@ def same_difference(first: Unit | str, second: Unit | str) -> bool:
     return _resolved(first).difference_kind == _resolved(second).difference_kind
 
 
+def rate_parts(symbol: str) -> tuple[Unit, Unit] | None:
+    """Take a rate of change such as `%/min` apart into what changes and the time; None where it is none."""
+    changed, _, per_time = symbol.rpartition("/")
+    if changed in UNITS and per_time in UNITS and UNITS[per_time].kind == "time":
+        return UNITS[changed], UNITS[per_time]
+    return None
+
+
 def _resolved(written: Unit | str) -> Unit:
     return unit(written) if isinstance(written, str) else written
 
@@ -423,7 +431,9 @@ _SPELLINGS: Mapping[str, str] = {
     "Hz cP": "cps",
 }
 _OTHER_SPELLINGS: Mapping[str, tuple[str, ...]] = {
-    spelling: tuple(answers.split()) for answers, spellings in _SPELLINGS.items() for spelling in spellings.split()
+    spelling: tuple(answers.split())
+    for answers, spellings in _SPELLINGS.items()
+    for spelling in spellings.split()
 }
 
 _TYPOGRAPHY = str.maketrans(
@@ -439,7 +449,7 @@ _LONGEST_SHOWN = 40
 def _unknown(symbol: str) -> str:
     shown = symbol if len(symbol) <= _LONGEST_SHOWN else symbol[:_LONGEST_SHOWN] + "..."
     statement = f"unknown unit `{shown}`"
-    meant = _meant(symbol) if len(symbol) <= _LONGEST_SHOWN else ()
+    meant = intended_units(symbol) if len(symbol) <= _LONGEST_SHOWN else ()
     if meant:
         return f"{statement}; write {' or '.join(f'`{answer}`' for answer in meant)}"
     near = difflib.get_close_matches(symbol, UNITS, n=3, cutoff=0.6) if len(symbol) <= _LONGEST_SHOWN else []
@@ -448,7 +458,8 @@ def _unknown(symbol: str) -> str:
     return f"{statement}; it is not in the table of units"
 
 
-def _meant(symbol: str) -> tuple[str, ...]:
+def intended_units(symbol: str) -> tuple[str, ...]:
+    """The symbols that another spelling of the trade stands for; none where it is not recognised."""
     plain = symbol.translate(_TYPOGRAPHY)
     plain = _BRACKETED.sub(lambda found: found.group(1)[0].lower(), plain)
     plain = _TIME_WORD.sub(lambda found: "/" + next(filter(None, found.groups())).lower(), plain)

@@ -1,0 +1,247 @@
+"""What is wrong with a value that does not read as a quantity, a range or a gain, and what to write instead."""
+
+import re
+
+from loopdoc.register.units import UNITS, UnitError, intended_units, rate_parts, unit
+
+LONGEST_TEXT = 60
+"""Characters; no value with its units needs more, and longer texts are not searched for a remedy."""
+
+_QUANTITY_EXAMPLE = "such as `84.5 degC`"
+_RANGE_EXAMPLE = "such as `60 to 120 degC`"
+_NUMBER_RANGE_EXAMPLE = "such as `0.2 to 0.8`"
+_GAIN_EXAMPLE = "such as `5.5 degC per t/h`"
+
+# Numbers as people write them: any minus, thousands separators, decimal commas, points without digits.
+_NUMBER = (
+    r"(?>[+\-\u2212\u2013]? ?"
+    r"(?:[0-9]{1,3}(?: [0-9]{3})+(?:[.,][0-9]+)?|[0-9]+(?:[.,'’_][0-9]+)*(?:\.(?!\.))?|\.[0-9]+)"
+    r"(?:[eE][+\-\u2212]?[0-9]+)?)"
+)
+_QUANTITY = re.compile(rf"({_NUMBER}) ?(.*)")
+_SEPARATOR = r"\bto\b|\.{2,3}|…|, |[-\u2013\u2014/;:~]"
+_RANGE = re.compile(rf"[\[(]? ?({_NUMBER}) ?(.*?) ?({_SEPARATOR}) ?({_NUMBER}) ?[\])]? ?(.*)", re.IGNORECASE)
+_PER = re.compile(r" +per +", re.IGNORECASE)
+_NOT_FINITE = re.compile(r"[+\-\u2212]? ?\.?(?:inf|infinity|nan)\b.*", re.IGNORECASE)
+_SPACES = str.maketrans(dict.fromkeys("\t\n\r\u00a0\u2007\u2009\u202f", " "))
+_MINUSES = str.maketrans(dict.fromkeys("\u2212\u2013", "-"))
+
+
+def quantity_fault(text: str) -> str:
+    """Say why a text is not a number with a unit, and what to write."""
+    plain = _plain(text)
+    if (fault := _common_fault(text, plain, f"a number with its unit, {_QUANTITY_EXAMPLE}")) is not None:
+        return fault
+    if _is_range(plain):
+        return f"`{text}` is a range where one value is wanted; write one value, {_QUANTITY_EXAMPLE}"
+    found = _QUANTITY.fullmatch(plain)
+    if found is None:
+        if _symbol(plain) is not None:
+            return f"`{text}` has no number; write the number before the unit, {_QUANTITY_EXAMPLE}"
+        return f"`{text}` is not a number with a unit; write a number and a unit, {_QUANTITY_EXAMPLE}"
+    number, symbol = found.groups()
+    if not symbol:
+        return f"`{text}` has no unit; write the unit after the number, {_QUANTITY_EXAMPLE}"
+    if " per " in symbol and _gain_units(symbol) is not None:
+        return f"`{text}` is a gain where one value is wanted; write one value, {_QUANTITY_EXAMPLE}"
+    known = _symbol(symbol)
+    if known is None:
+        return f"`{text}`: {_unit_fault(symbol)}"
+    complaint, numbers = _number_fault(number)
+    return _remedy(
+        text, complaint or _spelling_fault(symbol, known), [f"{mended} {known}" for mended in numbers]
+    )
+
+
+def range_fault(text: str) -> str:
+    """Say why a text is not a range with a unit, and what to write."""
+    plain = _plain(text)
+    if (fault := _common_fault(text, plain, f"two numbers and a unit, {_RANGE_EXAMPLE}")) is not None:
+        return fault
+    found = _RANGE.fullmatch(plain)
+    if found is None:
+        if _QUANTITY.fullmatch(plain):
+            return f"`{text}` is one value where a range is wanted; write both ends, {_RANGE_EXAMPLE}"
+        return (
+            f"`{text}` is not a range; write the low end, `to`, the high end and the unit, {_RANGE_EXAMPLE}"
+        )
+    low, early, separator, high, late = found.groups()
+    if not (early or late):
+        return f"`{text}` has no unit; write the unit after the high end, {_RANGE_EXAMPLE}"
+    known = _symbol(late or early)
+    if known is None:
+        return f"`{text}`: {_unit_fault(late or early)}"
+    if early and late and _symbol(early) != known:
+        return f"`{text}` has two units; write both ends in one unit, {_RANGE_EXAMPLE}"
+    complaint, ends = _ends_fault(low, separator, high)
+    if not complaint and early:
+        complaint = "has its unit twice" if late else "has its unit before the high end"
+    return _remedy(text, complaint or _spelling_fault(late, known), [f"{end} {known}" for end in ends])
+
+
+def number_range_fault(text: str) -> str:
+    """Say why a text is not a range of plain numbers, and what to write."""
+    plain = _plain(text)
+    if (fault := _common_fault(text, plain, f"two numbers, {_NUMBER_RANGE_EXAMPLE}")) is not None:
+        return fault
+    found = _RANGE.fullmatch(plain)
+    if found is None:
+        return f"`{text}` is not a range of numbers; write two numbers with `to`, {_NUMBER_RANGE_EXAMPLE}"
+    low, early, separator, high, late = found.groups()
+    complaint, ends = _ends_fault(low, separator, high)
+    if early or late:
+        complaint = "has a unit where plain numbers are wanted"
+    return _remedy(text, complaint or "is not written in the form of the register", ends)
+
+
+def gain_fault(text: str) -> str:
+    """Say why a text is not a process gain, and what to write."""
+    plain = _plain(text)
+    if (fault := _common_fault(text, plain, f"a gain, {_GAIN_EXAMPLE}")) is not None:
+        return fault
+    found = _QUANTITY.fullmatch(plain)
+    if found is None:
+        return f"`{text}` has no number; write the number before the units, {_GAIN_EXAMPLE}"
+    number, symbols = found.groups()
+    if (units := _gain_units(symbols)) is not None:
+        complaint, numbers = _number_fault(number)
+        return _remedy(text, complaint or _gain_form_fault(symbols, units), [f"{n} {units}" for n in numbers])
+    parts = _PER.split(f" {symbols} ", maxsplit=1)
+    if len(parts) == 1:
+        return (
+            f"`{text}` does not say per what; write the change of the measurement "
+            f"per change of what moves it, {_GAIN_EXAMPLE}"
+        )
+    changed, moved = (part.strip() for part in parts)
+    if not changed or not moved:
+        return f"`{text}` has no unit {'after' if changed else 'before'} `per`; write both units, {_GAIN_EXAMPLE}"
+    return f"`{text}`: {_unit_fault(moved if _rate(changed) else changed)}"
+
+
+def _plain(text: str) -> str:
+    return " ".join(text[: LONGEST_TEXT + 1].translate(_SPACES).split())
+
+
+def _common_fault(text: str, plain: str, wanted: str) -> str | None:
+    if len(text) > LONGEST_TEXT:
+        return f"`{text[:LONGEST_TEXT]}...` is too long; write {wanted}"
+    if not plain:
+        return f"no value is written; write {wanted}"
+    if _NOT_FINITE.fullmatch(plain):
+        return f"`{text}` is not a finite number; write {wanted}"
+    return None
+
+
+def _remedy(text: str, complaint: str, answers: list[str]) -> str:
+    return f"`{text}` {complaint}; write {' or '.join(f'`{answer}`' for answer in answers)}"
+
+
+def _number_fault(number: str) -> tuple[str, list[str]]:
+    """Say what is wrong with a number as people write it (nothing: ""), and the forms it may stand for."""
+    complaints = []
+    mended = number.translate(_MINUSES)
+    if mended != number:
+        complaints.append("has a typographic minus sign")
+    mantissa, exponent_sign, exponent = mended.replace("E", "e").partition("e")
+    digits = mantissa.lstrip("+- ")
+    sign = mantissa[: len(mantissa) - len(digits)].replace(" ", "")
+    tail = exponent_sign + exponent
+    plain = re.sub(r"[ '’_]", "", digits)
+    if plain != digits:
+        complaints.append("has a thousands separator")
+    if re.fullmatch(r"[1-9][0-9]{0,2},[0-9]{3}", plain):
+        complaint = "has a comma that may mean thousands or decimals"
+        return complaint, [f"{sign}{plain.replace(',', form)}{tail}" for form in ("", ".")]
+    last = max(plain.rfind(","), plain.rfind("."))
+    whole, decimals = (plain[:last], plain[last + 1 :]) if last >= 0 else (plain, "")
+    if re.search(r"[.,]", whole) or plain.count(",") + plain.count(".") > 1:
+        complaints.append("has a thousands separator")
+        if plain.count(plain[last]) > 1:
+            whole, decimals = whole + decimals, ""
+        whole = re.sub(r"[.,]", "", whole)
+    elif "," in plain:
+        complaints.append("has a decimal comma")
+    elif last == 0:
+        complaints.append("has no digit before its decimal point")
+    elif last == len(plain) - 1 and last > 0:
+        complaints.append("has no digit after its decimal point")
+    if re.match(r"0[0-9]", whole):
+        complaints.append("has a leading zero")
+    whole = whole.lstrip("0") or "0"
+    return next(iter(complaints), ""), [f"{sign}{whole}{'.' if decimals else ''}{decimals}{tail}"]
+
+
+def _ends_fault(low: str, separator: str, high: str) -> tuple[str, list[str]]:
+    (low_complaint, lows), (high_complaint, highs) = _number_fault(low), _number_fault(high)
+    complaint = low_complaint or high_complaint
+    if not complaint and separator != "to":
+        complaint = f"joins its ends with `{separator.strip()}`"
+    # Where both ends are ambiguous they are read the same way; where one is, the other stands for both.
+    answers = max(len(lows), len(highs))
+    lows, highs = (ends * (answers // len(ends)) for ends in (lows, highs))
+    return complaint, [f"{first} to {second}" for first, second in zip(lows, highs, strict=True)]
+
+
+def _is_range(plain: str) -> bool:
+    found = _RANGE.fullmatch(plain)
+    if found is None:
+        return False
+    _, early, separator, _, late = found.groups()
+    # `4 min-1` and `1/2 in` are no ranges.
+    return separator not in "/:" and not (separator == "-" and early and not late)
+
+
+def _symbol(written: str) -> str | None:
+    if written in UNITS:
+        return written
+    intended = intended_units(written)
+    return intended[0] if len(intended) == 1 else None
+
+
+def _unit_fault(written: str) -> str:
+    try:
+        return f"`{unit(written)}` does not belong here"
+    except UnitError as error:
+        return str(error)
+
+
+def _spelling_fault(written: str, known: str) -> str:
+    if written != known:
+        return f"has the unknown unit `{written}`"
+    return "needs one ordinary space between its parts"
+
+
+def _rate(written: str) -> str | None:
+    if (known := _symbol(written)) is not None:
+        return known
+    changed, _, per_time = written.rpartition("/")
+    rate = f"{_symbol(changed)}/{_symbol(per_time)}"
+    return rate if rate_parts(rate) is not None else None
+
+
+def _gain_units(symbols: str) -> str | None:
+    """The units of a gain in the form of the register, from the forms in which people write them."""
+    if _rate(symbols) is not None:
+        return None
+    parts = [part.strip(" ()") for part in _PER.split(symbols)]
+    if len(parts) == 3:
+        readings = [(f"{parts[0]}/{parts[1]}", parts[2]), (f"{parts[0]}/{parts[2]}", parts[1])]
+    elif len(parts) == 2:
+        readings = [(parts[0], parts[1])]
+    else:
+        slashes = [found.start() for found in re.finditer("/", symbols)]
+        readings = [(symbols[:slash].strip(" ()"), symbols[slash + 1 :].strip(" ()")) for slash in slashes]
+    for changed, moved in readings:
+        rate, mover = _rate(changed), _symbol(moved)
+        if rate is not None and mover is not None:
+            return f"{rate} per {mover}"
+    return None
+
+
+def _gain_form_fault(symbols: str, units: str) -> str:
+    if symbols == units:
+        return "needs one ordinary space between its parts"
+    changed, per, moved = symbols.partition(" per ")
+    if per and " per " not in moved and "(" not in symbols:
+        return f"has the unknown unit `{changed if _symbol(changed) != changed else moved}`"
+    return "is not written with one `per`"
