@@ -165,7 +165,7 @@ def _included(folder: Path, root: TextFile) -> tuple[list[str], list[Fault]]:
 
 
 @lru_cache(maxsize=None)
-def _field_types(part: type[Part]) -> tuple[tuple[str, type, bool], ...]:
+def _field_types(part: type[Any]) -> tuple[tuple[str, type, bool], ...]:
     """For each field of a part that is read by its type alone: name, type, whether it may be a list."""
     hints = get_type_hints(part)
     found = []
@@ -219,13 +219,13 @@ class _Reader:
             return value if isinstance(value, bool) else False
         return self._part(Origin(origin.source, (*origin.path, *steps)), value, kind)
 
-    def _part(self, origin: Origin, value: Any, kind: type[P], **given: Any) -> P | Hold:
+    def _part(self, origin: Origin, value: Any, part: type[P], /, **given: Any) -> P | Hold:
         if not isinstance(value, dict):
             return _UNREADABLE
-        if "hold" in value and kind not in (Loop,):
+        if "hold" in value and part is not Loop:
             return Hold(str(value["hold"]))
         read: dict[str, Any] = {}
-        for name, inner, many in _field_types(kind):
+        for name, inner, many in _field_types(part):
             if name in given:
                 continue
             written = value.get(name)
@@ -236,7 +236,7 @@ class _Reader:
                 read[name] = self._value(origin, (name,), written, inner)
                 if inner is bool:
                     read[name] = bool(read[name])
-        return kind(origin=origin, **read, **given)
+        return part(origin=origin, **read, **given)
 
     def _fault(self, origin: Origin, steps: tuple[str | int, ...], message: str, remedy: str) -> None:
         place = origin.place(*steps)

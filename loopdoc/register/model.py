@@ -7,6 +7,7 @@ Nothing here is computed; what follows from several facts together is in ``loopd
 from __future__ import annotations
 
 import re
+from collections.abc import Mapping
 from dataclasses import dataclass, field
 from functools import cached_property
 from typing import TypeVar
@@ -446,8 +447,11 @@ class Register:
 
     def defined_at(self, tag: str) -> Place | None:
         """Place of the key under which a tag is defined; None for a tag the register does not define."""
-        for part in (self.loops, self.final_elements, self.instruments, self.functions, self.interlocks):
-            if tag in part:
-                return part[tag].origin.key()  # type: ignore[attr-defined,no-any-return]
+        sections: tuple[Mapping[str, Part], ...] = (
+            self.loops, self.final_elements, self.instruments, self.functions, self.interlocks,
+        )  # fmt: skip
+        for section in sections:
+            if tag in section:
+                return section[tag].origin.key()
         measurement = self.measurements.get(tag)
         return measurement.origin.place("transmitter") if measurement else None

@@ -1,0 +1,44 @@
+"""What documents are made of, and one page set of them before it is rendered."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from typing import Any
+
+from loopdoc.documents.titleblock import Document, document
+from loopdoc.engineering.dynamics import Dynamics
+from loopdoc.engineering.pairing import Plant
+from loopdoc.rules.finding import CheckResult
+
+
+@dataclass(frozen=True, slots=True)
+class Basis:
+    """One register resolved, checked and calculated: the only source of every statement in a document."""
+
+    plant: Plant
+    result: CheckResult
+    sources: Mapping[str, bytes]
+    """Content of the register's files by name."""
+    dynamics: Dynamics
+
+    def document(self, *, kind: str, code: str, title: str, supplementary_title: str, unit: str, serial: str) -> Document:
+        """Title block of one document of this register."""
+        return document(
+            self.plant, self.result, self.sources,
+            kind=kind, code=code, title=title, supplementary_title=supplementary_title, unit=unit, serial=serial,
+        )  # fmt: skip
+
+
+@dataclass(frozen=True, slots=True)
+class Page:
+    """A document ready for its template."""
+
+    folder: str
+    """Folder under the output folder, such as `loop-sheets`."""
+    name: str
+    """File name without its ending, such as `TIC-2014`."""
+    document: Document
+    template: str
+    view: Mapping[str, Any]
+    """What the template places: text with units, tables, drawings. No numbers to compute with."""

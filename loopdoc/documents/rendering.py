@@ -1,0 +1,70 @@
+"""A view and a template to HTML. Templates loop and place; whatever is computed or worded comes in the view."""
+
+from __future__ import annotations
+
+import base64
+from functools import lru_cache
+from importlib.resources import files
+from typing import Any
+
+from jinja2 import FunctionLoader, StrictUndefined, select_autoescape
+from jinja2.sandbox import SandboxedEnvironment
+
+FONTS = {
+    ("loopdoc", "normal", "400"): "IBMPlexSans-Regular.ttf",
+    ("loopdoc", "normal", "700"): "IBMPlexSans-Bold.ttf",
+    ("loopdoc", "italic", "400"): "IBMPlexSans-Italic.ttf",
+    ("loopdoc narrow", "normal", "400"): "IBMPlexSansCondensed-Regular.ttf",
+    ("loopdoc narrow", "normal", "700"): "IBMPlexSansCondensed-Bold.ttf",
+}
+"""Fonts that go with the package, by family, style and weight: pages look alike on every machine."""
+
+
+def template_text(name: str) -> str:
+    """Text of a template or style sheet of the package."""
+    return files("loopdoc.templates").joinpath(name).read_text(encoding="utf-8")
+
+
+@lru_cache(maxsize=1)
+def _environment() -> SandboxedEnvironment:
+    environment = SandboxedEnvironment(
+        loader=FunctionLoader(template_text),
+        autoescape=select_autoescape(default=True, default_for_string=True),
+        undefined=StrictUndefined,
+        trim_blocks=True,
+        lstrip_blocks=True,
+    )
+    environment.globals.pop("lipsum", None)
+    return environment
+
+
+def render(template: str, **view: Any) -> str:
+    """The HTML of one document."""
+    return _environment().get_template(template).render(**view)
+
+
+@lru_cache(maxsize=1)
+def style_sheet() -> str:
+    """The style sheet for print: fonts through the package's own address, so the machine's fonts do not matter."""
+    faces = "\n".join(
+        f"@font-face {{ font-family: '{family}'; font-style: {style}; font-weight: {weight}; "
+        f"src: url('loopdoc-font:{name}') }}"
+        for (family, style, weight), name in FONTS.items()
+    )
+    return faces + "\n" + template_text("style.css")
+
+
+def font(name: str) -> bytes:
+    """A font file of the package."""
+    return files("loopdoc.templates").joinpath("fonts", name).read_bytes()
+
+
+@lru_cache(maxsize=1)
+def web_style_sheet() -> str:
+    """The style sheet for the screen: one file with the fonts inside, which opens from disk anywhere."""
+    faces = "\n".join(
+        f"@font-face {{ font-family: '{family}'; font-style: {style}; font-weight: {weight}; "
+        f"src: url('data:font/ttf;base64,{base64.b64encode(font(name)).decode()}') format('truetype') }}"
+        for (family, style, weight), name in FONTS.items()
+    )
+    return faces + "\n" + template_text("style.css")
