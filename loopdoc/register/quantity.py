@@ -6,13 +6,6 @@ from dataclasses import dataclass, field
 from decimal import ROUND_HALF_UP, Context, Decimal
 from functools import lru_cache
 
-from loopdoc.register.quantity_faults import (
-    LONGEST_TEXT,
-    gain_fault,
-    number_range_fault,
-    quantity_fault,
-    range_fault,
-)
 from loopdoc.register.units import UNITS, Unit, convert, convert_difference, rate_parts, unit
 
 
@@ -89,7 +82,7 @@ class Gain:
     numerator: Unit
     """The unit of the change of the measurement."""
     per_time: Unit | None
-    """The unit of time of an integrating gain; None where the numerator is one unit in itself, as `t/h` is."""
+    """The unit of time of an integrating gain; None where the numerator is a unit in itself, as `t/h` is."""
     denominator: Unit
     """The unit of the change of what is moved."""
     written: str = field(default="", compare=False)
@@ -129,6 +122,8 @@ _QUANTITY = re.compile(rf"({_NUMBER}) +([^ ]+)")
 _RANGE = re.compile(rf"({_NUMBER}) +to +({_NUMBER}) +([^ ]+)")
 _NUMBER_RANGE = re.compile(rf"({_NUMBER}) +to +({_NUMBER})")
 _GAIN = re.compile(rf"({_NUMBER}) +([^ ]+) +per +([^ ]+)")
+LONGEST_TEXT = 60
+"""Characters; no value with its units needs more, and a longer text is not searched for a remedy."""
 _REMEMBERED = 1 << 17  # distinct texts; ten thousand loops hold about 98,000
 
 
@@ -137,7 +132,7 @@ def parse_quantity(text: str) -> Quantity:
     """Read a value with its unit, such as `84.5 degC`."""
     found = _QUANTITY.fullmatch(text) if len(text) <= LONGEST_TEXT else None
     if found is None or found[2] not in UNITS:
-        raise QuantityError(quantity_fault(text))
+        raise _refusal(text, "quantity")
     number, symbol = found.groups()
     return Quantity(_finite(number), UNITS[symbol], number)
 
@@ -147,7 +142,7 @@ def parse_range(text: str) -> Range:
     """Read a range with its unit, such as `60 to 120 degC`."""
     found = _RANGE.fullmatch(text) if len(text) <= LONGEST_TEXT else None
     if found is None or found[3] not in UNITS:
-        raise QuantityError(range_fault(text))
+        raise _refusal(text, "range")
     low, high, symbol = found.groups()
     return Range(_finite(low), _finite(high), UNITS[symbol], low, high)
 
@@ -157,7 +152,7 @@ def parse_number_range(text: str) -> tuple[float, float]:
     """Read a range of plain numbers, such as the `0.2 to 0.8` of a ratio."""
     found = _NUMBER_RANGE.fullmatch(text) if len(text) <= LONGEST_TEXT else None
     if found is None:
-        raise QuantityError(number_range_fault(text))
+        raise _refusal(text, "number range")
     low, high = found.groups()
     return _finite(low), _finite(high)
 
@@ -167,13 +162,26 @@ def parse_gain(text: str) -> Gain:
     """Read a process gain, such as `5.5 degC per t/h` or `-2.0 %/min per %`."""
     found = _GAIN.fullmatch(text) if len(text) <= LONGEST_TEXT else None
     if found is None:
-        raise QuantityError(gain_fault(text))
+        raise _refusal(text, "gain")
     number, changed, moved = found.groups()
-    # A numerator that is a unit in itself (`t/h`) stays whole: only the measurement tells whether it integrates.
+    # A numerator that is a unit in itself (`t/h`) stays whole: the measurement tells whether it integrates.
     numerator, per_time = (UNITS[changed], None) if changed in UNITS else rate_parts(changed) or (None, None)
     if numerator is None or moved not in UNITS:
-        raise QuantityError(gain_fault(text))
+        raise _refusal(text, "gain")
     return Gain(_finite(number), numerator, per_time, UNITS[moved], number)
+
+
+def _refusal(text: str, wanted: str) -> QuantityError:
+    # Loaded for a faulty text only: a register without faults starts without it.
+    from loopdoc.register import quantity_faults
+
+    explanations = {
+        "quantity": quantity_faults.quantity_fault,
+        "range": quantity_faults.range_fault,
+        "number range": quantity_faults.number_range_fault,
+        "gain": quantity_faults.gain_fault,
+    }
+    return QuantityError(explanations[wanted](text))
 
 
 def _finite(number: str) -> float:
@@ -198,7 +206,7 @@ _SUPERSCRIPTS = str.maketrans("-0123456789", "⁻⁰¹²³⁴⁵⁶⁷⁸⁹")
 
 
 def display_number(value: float, significant: int = 6) -> str:
-    """Print a calculated number for a document, rounded, never with more digits before the point than it has."""
+    """Print a calculated number for a document, rounded, without binary noise and without exponents."""
     if math.isnan(value):
         raise ValueError("a result that is not a number cannot be printed")
     if math.isinf(value):

@@ -1,11 +1,10 @@
-"""What is wrong with a value that does not read as a quantity, a range or a gain, and what to write instead."""
+"""What is wrong with a text that does not read as a quantity, range or gain, and what to write instead."""
 
 import re
 
-from loopdoc.register.units import UNITS, UnitError, intended_units, rate_parts, unit
-
-LONGEST_TEXT = 60
-"""Characters; no value with its units needs more, and longer texts are not searched for a remedy."""
+from loopdoc.register.quantity import LONGEST_TEXT
+from loopdoc.register.unit_spellings import intended_units
+from loopdoc.register.units import UNITS, UnitError, rate_parts, unit
 
 _QUANTITY_EXAMPLE = "such as `84.5 degC`"
 _RANGE_EXAMPLE = "such as `60 to 120 degC`"
@@ -114,7 +113,8 @@ def gain_fault(text: str) -> str:
         )
     changed, moved = (part.strip() for part in parts)
     if not changed or not moved:
-        return f"`{text}` has no unit {'after' if changed else 'before'} `per`; write both units, {_GAIN_EXAMPLE}"
+        side = "after" if changed else "before"
+        return f"`{text}` has no unit {side} `per`; write both units, {_GAIN_EXAMPLE}"
     return f"`{text}`: {_unit_fault(moved if _rate(changed) else changed)}"
 
 

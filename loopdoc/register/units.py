@@ -1,6 +1,5 @@
 """The trade's units as a closed table: exact, gauge apart from absolute, differences apart from readings."""
 
-import difflib
 import re
 from collections.abc import Mapping
 from dataclasses import dataclass
@@ -269,7 +268,10 @@ def unit(symbol: str) -> Unit:
     """Look a unit up by the symbol that the register writes, or say what to write instead."""
     found = UNITS.get(symbol)
     if found is None:
-        raise UnitError(_unknown(symbol))
+        # Loaded for an unknown unit only: a register without faults starts without it.
+        from loopdoc.register.unit_spellings import unknown_unit
+
+        raise UnitError(unknown_unit(symbol))
     return found
 
 
@@ -358,112 +360,3 @@ def _refusal(source: Unit, target: Unit) -> str:
     if reason is None:
         return f"{statement}; the two cannot be compared"
     return f"{statement}, and {reason} of the register; write both in one of them"
-
-
-# Other spellings of the trade that no rule below mends, in lower case; two answers where one is ambiguous.
-_SPELLINGS: Mapping[str, str] = {
-    "degC": "c celsius degcelsius",
-    "degF": "f fahrenheit",
-    "K": "kelvin degk",
-    "s": "sec secs second seconds",
-    "ms": "msec",
-    "min": "mins minute minutes",
-    "h": "hr hrs hour hours",
-    "d": "day days",
-    "months": "mo",
-    "years": "yr",
-    "A years": "a",
-    "%": "pct percent",
-    "mol%": "mole% %mol",
-    "wt%": "mass% %wt %w/w",
-    "vol%": "%v/v %vol",
-    "%LEL": "lel",
-    "%RH": "rh",
-    "rpm": "r/min rev/min",
-    "1/min": "/min permin repeats/min rpt/min",
-    "1/min rpm": "min-1",
-    "1/s": "/s s-1",
-    "l/min": "lpm",
-    "l/h": "lph",
-    "Sl/min": "slpm",
-    "Nl/min": "nlpm",
-    "kg/h": "kgph kph",
-    "t/h": "tph mt/h ton/h tons/h tonne/h tonnes/h",
-    "t/d": "tpd ton/d",
-    "t": "ton tonne tonnes",
-    "lb": "lbs",
-    "lb/h": "lbs/h pph",
-    "gpm": "usgpm gal/min",
-    "bbl/d": "bpd",
-    "m3/h": "cmh cum/h",
-    "ft3/min scfm": "cfm",
-    "ft3/h scfh": "cfh",
-    "ft3/min": "acfm",
-    "Nm3/h": "nm3 nm3h nm3hr ncmh",
-    "Sm3/h": "sm3 scmh",
-    "kscfh": "mscfh",
-    "bara": "barabs",
-    "barg": "bargauge",
-    "bar": "bard",
-    "kPa": "kpad",
-    "psi": "psid",
-    "psi psig psia": "lb/in2",
-    "kgf/cm2 kgf/cm2g kgf/cm2a": "kg/cm2",
-    "kgf/cm2g": "kg/cm2g",
-    "kgf/cm2a": "kg/cm2a",
-    "mmHga": "torr",
-    "inH2O inH2Og": 'inwc "wc',
-    "inH2Og": "inwg",
-    "inH2O": "inh20",
-    "mmH2O mmH2Og": "mmwc",
-    "mmH2Og": "mmwg",
-    "mmH2O": "mmh20",
-    "mA": "ma-dc madc",
-    "V": "vdc volt volts",
-    "A": "amp amps",
-    "ohm": "ohms",
-    "ml/min": "cc/min",
-    "l": "litre litres liter liters",
-    "ft": "feet",
-    "in": "inch inches",
-    "um": "micron microns",
-    "Hz": "hertz",
-    "Hz cP": "cps",
-}
-_OTHER_SPELLINGS: Mapping[str, tuple[str, ...]] = {
-    spelling: tuple(answers.split())
-    for answers, spellings in _SPELLINGS.items()
-    for spelling in spellings.split()
-}
-
-_TYPOGRAPHY = str.maketrans(
-    {"°": "deg", "º": "deg", "˚": "deg", "℃": "degC", "℉": "degF", "²": "2", "³": "3", "₂": "2", "₃": "3"}
-    | {"µ": "u", "μ": "u", "Ω": "ohm", "\u2126": "ohm", "·": ".", "⋅": ".", "∕": "/", "％": "%"}
-    | {" ": None, "\u00a0": None, "\u2009": None, "\u202f": None, "^": None}
-)
-_BRACKETED = re.compile(r"\((g|a|gauge|abs|absolute)\)$", re.IGNORECASE)
-_TIME_WORD = re.compile(r"/(?:(h)(?:r|our)|(s)ec(?:ond)?|(min)ute|(d)ay)$", re.IGNORECASE)
-_LONGEST_SHOWN = 40
-
-
-def _unknown(symbol: str) -> str:
-    shown = symbol if len(symbol) <= _LONGEST_SHOWN else symbol[:_LONGEST_SHOWN] + "..."
-    statement = f"unknown unit `{shown}`"
-    meant = intended_units(symbol) if len(symbol) <= _LONGEST_SHOWN else ()
-    if meant:
-        return f"{statement}; write {' or '.join(f'`{answer}`' for answer in meant)}"
-    near = difflib.get_close_matches(symbol, UNITS, n=3, cutoff=0.6) if len(symbol) <= _LONGEST_SHOWN else []
-    if near:
-        return f"{statement}; the nearest known are {', '.join(f'`{answer}`' for answer in near)}"
-    return f"{statement}; it is not in the table of units"
-
-
-def intended_units(symbol: str) -> tuple[str, ...]:
-    """The symbols that another spelling of the trade stands for; none where it is not recognised."""
-    plain = symbol.translate(_TYPOGRAPHY)
-    plain = _BRACKETED.sub(lambda found: found.group(1)[0].lower(), plain)
-    plain = _TIME_WORD.sub(lambda found: "/" + next(filter(None, found.groups())).lower(), plain)
-    if plain in UNITS:
-        return (plain,)
-    folded = plain.casefold()
-    return _OTHER_SPELLINGS.get(folded) or tuple(known for known in UNITS if known.casefold() == folded)
