@@ -10,7 +10,15 @@ from loopdoc.register.units import UNITS, Unit, convert, convert_difference, rat
 
 
 class QuantityError(ValueError):
-    """A value that does not read as a number with a unit; the message says what to write instead."""
+    """A text that does not read as a value with its unit: what is wrong, and what to write instead."""
+
+    def __init__(self, fault: str, remedy: str) -> None:
+        super().__init__(fault, remedy)
+        self.fault = fault
+        self.remedy = remedy
+
+    def __str__(self) -> str:
+        return f"{self.fault}; {self.remedy}"
 
 
 @dataclass(frozen=True, slots=True)
@@ -181,13 +189,13 @@ def _refusal(text: str, wanted: str) -> QuantityError:
         "number range": quantity_faults.number_range_fault,
         "gain": quantity_faults.gain_fault,
     }
-    return QuantityError(explanations[wanted](text))
+    return QuantityError(*explanations[wanted](text))
 
 
 def _finite(number: str) -> float:
     value = float(number)
     if math.isinf(value):
-        raise QuantityError(f"`{number}` is too large to be a value of the process; check its exponent")
+        raise QuantityError(f"`{number}` is too large to be a value of the process", "check its exponent")
     return value
 
 

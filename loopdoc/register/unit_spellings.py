@@ -3,13 +3,14 @@
 import difflib
 import re
 from collections.abc import Mapping
+from functools import lru_cache
 
 from loopdoc.register.units import UNITS
 
 # Other spellings of the trade that no rule below mends, in lower case; two answers where one is ambiguous.
-_SPELLINGS: Mapping[str, str] = {
-    "degC": "c celsius degcelsius",
-    "degF": "f fahrenheit",
+SPELLINGS: Mapping[str, str] = {
+    "degC": "c celsius degcelsius degreec degreesc deg.c",
+    "degF": "f fahrenheit degreef degreesf deg.f",
     "K": "kelvin degk",
     "s": "sec secs second seconds",
     "ms": "msec",
@@ -48,8 +49,6 @@ _SPELLINGS: Mapping[str, str] = {
     "Nm3/h": "nm3 nm3h nm3hr ncmh",
     "Sm3/h": "sm3 scmh",
     "kscfh": "mscfh",
-    "bara": "barabs",
-    "barg": "bargauge",
     "bar": "bard",
     "kPa": "kpad",
     "psi": "psid",
@@ -60,7 +59,7 @@ _SPELLINGS: Mapping[str, str] = {
     "mmHga": "torr",
     "inH2O inH2Og": 'inwc "wc',
     "inH2Og": "inwg",
-    "inH2O": "inh20",
+    "inH2O": "inh20 in.h2o",
     "mmH2O mmH2Og": "mmwc",
     "mmH2Og": "mmwg",
     "mmH2O": "mmh20",
@@ -76,39 +75,41 @@ _SPELLINGS: Mapping[str, str] = {
     "Hz": "hertz",
     "Hz cP": "cps",
 }
-_OTHER_SPELLINGS: Mapping[str, tuple[str, ...]] = {
+_ANSWERS: Mapping[str, tuple[str, ...]] = {
     spelling: tuple(answers.split())
-    for answers, spellings in _SPELLINGS.items()
+    for answers, spellings in SPELLINGS.items()
     for spelling in spellings.split()
 }
 
 _TYPOGRAPHY = str.maketrans(
     {"°": "deg", "º": "deg", "˚": "deg", "℃": "degC", "℉": "degF", "²": "2", "³": "3", "₂": "2", "₃": "3"}
     | {"µ": "u", "μ": "u", "Ω": "ohm", "\u2126": "ohm", "·": ".", "⋅": ".", "∕": "/", "％": "%"}
-    | {" ": None, "\u00a0": None, "\u2009": None, "\u202f": None, "^": None}
+    | {" ": None, "\u00a0": None, "\u2009": None, "\u202f": None, "^": None, "*": None}
 )
-_BRACKETED = re.compile(r"\((g|a|gauge|abs|absolute)\)$", re.IGNORECASE)
+_REFERENCE = re.compile(r"(?:\((g|a)\)|[-_](g|a)|\(?(gauge|abs|absolute)\)?)$", re.IGNORECASE)
 _TIME_WORD = re.compile(r"/(?:(h)(?:r|our)|(s)ec(?:ond)?|(min)ute|(d)ay)$", re.IGNORECASE)
 _LONGEST_SHOWN = 40
 
 
-def unknown_unit(symbol: str) -> str:
+@lru_cache(maxsize=1024)  # one wrong spelling tends to stand in a whole register
+def unknown_unit(symbol: str) -> tuple[str, str]:
     """Say that a unit is not known, and what to write instead."""
     if len(symbol) > _LONGEST_SHOWN:
-        return f"unknown unit `{symbol[:_LONGEST_SHOWN]}...`; it is not in the table of units"
+        return f"unknown unit `{symbol[:_LONGEST_SHOWN]}...`", "write a unit of the register's table"
     if meant := intended_units(symbol):
-        return f"unknown unit `{symbol}`; write {' or '.join(f'`{answer}`' for answer in meant)}"
+        return f"unknown unit `{symbol}`", f"write {' or '.join(f'`{answer}`' for answer in meant)}"
     if near := difflib.get_close_matches(symbol, UNITS, n=3):
-        return f"unknown unit `{symbol}`; the nearest known are {', '.join(f'`{answer}`' for answer in near)}"
-    return f"unknown unit `{symbol}`; it is not in the table of units"
+        return f"unknown unit `{symbol}`", f"near it are {', '.join(f'`{answer}`' for answer in near)}"
+    return f"unknown unit `{symbol}`", "write a unit of the register's table"
 
 
+@lru_cache(maxsize=1024)
 def intended_units(symbol: str) -> tuple[str, ...]:
     """The symbols that another spelling of the trade stands for; none where it is not recognised."""
-    plain = symbol.translate(_TYPOGRAPHY)
-    plain = _BRACKETED.sub(lambda found: found.group(1)[0].lower(), plain)
+    plain = symbol.translate(_TYPOGRAPHY).rstrip(".")
+    plain = _REFERENCE.sub(lambda found: next(filter(None, found.groups()))[0].lower(), plain)
     plain = _TIME_WORD.sub(lambda found: "/" + next(filter(None, found.groups())).lower(), plain)
     if plain in UNITS:
         return (plain,)
     folded = plain.casefold()
-    return _OTHER_SPELLINGS.get(folded) or tuple(known for known in UNITS if known.casefold() == folded)
+    return _ANSWERS.get(folded) or tuple(known for known in UNITS if known.casefold() == folded)

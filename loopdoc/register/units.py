@@ -271,7 +271,7 @@ def unit(symbol: str) -> Unit:
         # Loaded for an unknown unit only: a register without faults starts without it.
         from loopdoc.register.unit_spellings import unknown_unit
 
-        raise UnitError(unknown_unit(symbol))
+        raise UnitError("; ".join(unknown_unit(symbol)))
     return found
 
 
