@@ -1,0 +1,277 @@
+"""The command line: parse, call, print."""
+
+from __future__ import annotations
+
+import argparse
+import gc
+import os
+import sys
+from collections.abc import Callable, Sequence
+from pathlib import Path
+from typing import TYPE_CHECKING, TextIO
+
+from loopdoc import __version__
+
+if TYPE_CHECKING:
+    from loopdoc.documents.basis import Basis
+    from loopdoc.register.load import Loaded
+
+EXIT_CLEAN, EXIT_FOUND, EXIT_UNREADABLE = 0, 1, 2
+
+
+def main() -> int:
+    """Entry point of the `loopdoc` command."""
+    # A large register is many small objects that live to the end: collecting among them only costs time.
+    gc.set_threshold(50_000, 20, 50)
+    try:
+        return run(sys.argv[1:], sys.stdout, sys.stderr)
+    except BrokenPipeError:  # the reader of our output has gone, as in `loopdoc check . | head`
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+        return EXIT_FOUND
+    except KeyboardInterrupt:
+        return 130
+
+
+def run(argv: Sequence[str], stdout: TextIO, stderr: TextIO) -> int:
+    """Run one command; returns the exit code."""
+    arguments = _parser().parse_args(argv)
+    command: Callable[[argparse.Namespace, TextIO, TextIO], int] = arguments.command
+    try:
+        return command(arguments, stdout, stderr)
+    except OSError as error:
+        if isinstance(error, BrokenPipeError):
+            raise
+        stderr.write(f"loopdoc: {error.strerror}: {error.filename}\n")
+        return EXIT_UNREADABLE
+
+
+def _parser() -> argparse.ArgumentParser:
+    parser = argparse.ArgumentParser(
+        prog="loopdoc",
+        description="Checks a plant's loop register as a reviewer would, does the control calculations, and issues the documents.",
+    )
+    parser.add_argument("--version", action="version", version=f"loopdoc {__version__}")
+    commands = parser.add_subparsers(title="commands", required=True, metavar="COMMAND")
+
+    def command(name: str, function: Callable[..., int], summary: str) -> argparse.ArgumentParser:
+        sub = commands.add_parser(name, help=summary, description=summary[0].upper() + summary[1:] + ".")
+        sub.set_defaults(command=function)
+        return sub
+
+    new = command("new", _new, "write a small register to start from")
+    new.add_argument("folder", type=Path, metavar="FOLDER", help="a folder that does not exist yet, or is empty")
+
+    check = command("check", _check, "check a register and print the findings")
+    _add_register(check)
+    check.add_argument("--format", choices=("text", "json"), default="text", help="form of the output (default: text)")
+    check.add_argument(
+        "--fail-on", choices=("error", "warning", "note", "never"), default="error",
+        help="exit 1 when a finding of this level or above is open (default: error)",
+    )  # fmt: skip
+    check.add_argument("--only", nargs="+", metavar="RULE", default=[], help="check by these rules only")
+
+    issue = command("issue", _issue, "issue the documents of a register")
+    _add_register(issue)
+    issue.add_argument("--out", type=Path, required=True, metavar="FOLDER", help="where the documents are written")
+    issue.add_argument(
+        "--documents", nargs="+", metavar="KIND", default=[], help="narrative, loop-sheet, response (default: all)"
+    )
+    issue.add_argument("--formats", default="pdf,html", metavar="LIST", help="pdf, html or pdf,html (default)")
+    issue.add_argument(
+        "--jobs", type=int, default=os.cpu_count() or 1, metavar="N", help="processes at work (default: one a processor)"
+    )
+
+    response = command("response", _response, "margins and time responses of a loop or cascade")
+    _add_register(response)
+    response.add_argument("tag", metavar="TAG", help="tag of a loop with a controller")
+    response.add_argument("--format", choices=("text", "json"), default="text", help="form of the output (default: text)")
+    response.add_argument("--plot", type=Path, metavar="FILE", help="also draw the responses, as .svg, .png or .pdf")
+
+    explain = command("explain", _explain, "explain a rule: what it means, why, and what it cannot see")
+    explain.add_argument("rule", metavar="RULE", help="id of a rule, as in a finding")
+    command("rules", _rules, "list the rules and the thresholds of the policy")
+    command("schema", _schema, "print the JSON Schema of the register format")
+    return parser
+
+
+def _add_register(parser: argparse.ArgumentParser) -> None:
+    parser.add_argument("register", type=Path, metavar="REGISTER", help="folder that holds register.yaml")
+
+
+# ---------------------------------------------------------------- commands
+
+
+def _new(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
+    from loopdoc.register.starter import starter_files
+
+    folder: Path = arguments.folder
+    if folder.exists() and (not folder.is_dir() or any(folder.iterdir())):
+        stderr.write(f"loopdoc: {folder} is there already and not an empty folder; name another\n")
+        return EXIT_UNREADABLE
+    for name, content in starter_files().items():
+        path = folder / name
+        path.parent.mkdir(parents=True, exist_ok=True)
+        path.write_bytes(content)
+        stdout.write(f"wrote {path}\n")
+    stdout.write(f"Next: loopdoc check {folder}\n")
+    return EXIT_CLEAN
+
+
+def _check(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
+    from loopdoc.engineering.pairing import Plant
+    from loopdoc.exchange.findings import as_json, as_text
+    from loopdoc.rules.check import check
+    from loopdoc.rules.finding import Level
+
+    unknown = _unknown_rule(arguments.only, stderr)
+    if unknown:
+        return unknown
+    loaded = _load(arguments.register, stderr)
+    if loaded is None:
+        return EXIT_UNREADABLE
+    result = check(Plant(loaded.register), loaded.faults, only=arguments.only)
+    stdout.write(as_json(result) if arguments.format == "json" else as_text(result))
+    if arguments.fail_on == "never":
+        return EXIT_CLEAN
+    least = Level[arguments.fail_on.upper()]
+    return EXIT_FOUND if any(finding.level >= least for finding in result.findings) else EXIT_CLEAN
+
+
+def _issue(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
+    from loopdoc.documents.issue import FORMATS, KINDS, issue
+    from loopdoc.documents.pdf import PdfError
+    from loopdoc.exchange.findings import summary
+
+    kinds = arguments.documents or list(KINDS)
+    formats = [name.strip() for name in arguments.formats.split(",")]
+    for what, given, known in (("document kind", kinds, tuple(KINDS)), ("format", formats, FORMATS)):
+        strange = [name for name in given if name not in known]
+        if strange:
+            stderr.write(f"loopdoc: there is no {what} `{strange[0]}`; write {' or '.join(known)}\n")
+            return EXIT_UNREADABLE
+    if arguments.jobs < 1:
+        stderr.write("loopdoc: --jobs takes 1 or more\n")
+        return EXIT_UNREADABLE
+    basis = _basis(arguments.register, stderr)
+    if basis is None:
+        return EXIT_UNREADABLE
+    status = EXIT_CLEAN
+    progress = _progress(stderr)
+    try:
+        issued = issue(basis, arguments.out, kinds=kinds, formats=formats, jobs=arguments.jobs, progress=progress)
+    except PdfError as error:
+        stderr.write(f"loopdoc: {error}\n")
+        if "html" not in formats:
+            return EXIT_UNREADABLE
+        status = EXIT_FOUND
+        issued = issue(basis, arguments.out, kinds=kinds, formats=["html"], jobs=1, progress=progress)
+    stdout.write(f"{issued.documents} documents in {issued.folder} ({len(issued.files)} files).\n")
+    stdout.write(f"Check of the register: {summary(basis.result)}\n")
+    return status
+
+
+def _response(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
+    from loopdoc.exchange.responses import response_json, response_text
+
+    basis = _basis(arguments.register, stderr)
+    if basis is None:
+        return EXIT_UNREADABLE
+    if arguments.tag not in basis.plant.controlled:
+        from difflib import get_close_matches
+
+        near = get_close_matches(arguments.tag, basis.plant.controlled, 1)
+        hint = f"did you mean {near[0]}?" if near else "name a loop with a controller"
+        stderr.write(f"loopdoc: the register has no controller {arguments.tag}; {hint}\n")
+        return EXIT_UNREADABLE
+    analysis = basis.dynamics.loop(arguments.tag)
+    if arguments.plot is not None:
+        from loopdoc.documents.plots import save_plot
+
+        message = save_plot(analysis, arguments.plot)
+        if message:
+            stderr.write(f"loopdoc: {message}\n")
+            return EXIT_UNREADABLE
+    stdout.write(response_json(analysis) if arguments.format == "json" else response_text(analysis))
+    return EXIT_CLEAN
+
+
+def _explain(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
+    from loopdoc.rules.catalogue import RULES
+    from loopdoc.rules.explain import explanation
+
+    unknown = _unknown_rule([arguments.rule], stderr)
+    if unknown:
+        return unknown
+    stdout.write(explanation(next(rule for rule in RULES if rule.id == arguments.rule)))
+    return EXIT_CLEAN
+
+
+def _rules(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
+    from loopdoc.rules.explain import overview
+
+    stdout.write(overview())
+    return EXIT_CLEAN
+
+
+def _schema(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
+    from loopdoc.register.schema import schema_text
+
+    stdout.write(schema_text())
+    return EXIT_CLEAN
+
+
+# ---------------------------------------------------------------- steps that commands share
+
+
+def _load(path: Path, stderr: TextIO) -> Loaded | None:
+    """The register; None, with each reason told, where the text cannot be read as one."""
+    from loopdoc.exchange.findings import as_line
+    from loopdoc.register.load import Unreadable, load
+
+    loaded = load(path)
+    if isinstance(loaded, Unreadable):
+        for fault in loaded.faults:
+            stderr.write(as_line(fault.place, fault.message, fault.remedy) + "\n")
+        return None
+    return loaded
+
+
+def _basis(path: Path, stderr: TextIO) -> Basis | None:
+    """The register read, resolved, checked and calculated; None, with each reason told, where it cannot be read."""
+    loaded = _load(path, stderr)
+    if loaded is None:
+        return None
+    from loopdoc.documents.basis import Basis
+    from loopdoc.engineering.dynamics import Dynamics
+    from loopdoc.engineering.pairing import Plant
+    from loopdoc.rules.check import check
+
+    plant = Plant(loaded.register)
+    return Basis(plant, check(plant, loaded.faults), loaded.sources, Dynamics(plant))
+
+
+def _unknown_rule(ids: Sequence[str], stderr: TextIO) -> int:
+    from difflib import get_close_matches
+
+    from loopdoc.rules.catalogue import RULES
+
+    known = [rule.id for rule in RULES]
+    for name in ids:
+        if name not in known:
+            near = get_close_matches(name, known, 1)
+            hint = f"did you mean {near[0]}?" if near else "`loopdoc rules` lists them"
+            stderr.write(f"loopdoc: there is no rule `{name}`; {hint}\n")
+            return EXIT_UNREADABLE
+    return EXIT_CLEAN
+
+
+def _progress(stderr: TextIO) -> Callable[[int, int], None]:
+    """Shows how far a long work is, on a terminal only."""
+    if not stderr.isatty():
+        return lambda done, total: None
+
+    def show(done: int, total: int) -> None:
+        stderr.write(f"\r{done} of {total} files" + ("\n" if done == total else ""))
+        stderr.flush()
+
+    return show

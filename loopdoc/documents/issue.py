@@ -1,0 +1,114 @@
+"""Issues the documents of a register: builds the pages, renders them, writes them whole or not at all."""
+
+from __future__ import annotations
+
+import os
+import tempfile
+from collections.abc import Callable, Collection, Iterator
+from concurrent.futures import ProcessPoolExecutor
+from dataclasses import dataclass
+from pathlib import Path
+
+from loopdoc.documents.basis import Basis, Page
+from loopdoc.documents.index import index_page
+from loopdoc.documents.loop_sheet import loop_sheets
+from loopdoc.documents.narrative import narratives
+from loopdoc.documents.pdf import ensure_available, to_pdf
+from loopdoc.documents.rendering import render, web_style_sheet
+from loopdoc.documents.responses import responses
+
+KINDS: dict[str, Callable[[Basis], Iterator[Page]]] = {
+    "narrative": narratives,
+    "loop-sheet": loop_sheets,
+    "response": responses,
+}
+"""Document kinds by the name that `loopdoc issue --documents` takes."""
+
+FORMATS = ("pdf", "html")
+STYLE_SHEET = "style.css"
+FILES_PER_BATCH = 4
+
+
+@dataclass(frozen=True, slots=True)
+class Issued:
+    """What was written."""
+
+    folder: Path
+    documents: int
+    files: tuple[str, ...]
+    """Paths below the folder, in the order of writing; the index last."""
+
+
+def issue(
+    basis: Basis,
+    out: Path,
+    *,
+    kinds: Collection[str] = tuple(KINDS),
+    formats: Collection[str] = FORMATS,
+    jobs: int = 1,
+    progress: Callable[[int, int], None] = lambda done, total: None,
+) -> Issued:
+    """Write the documents of these kinds and formats below ``out``.
+
+    Raises
+    ------
+    PdfError
+        PDF is wanted and cannot be made; nothing has been written then.
+    OSError
+        The folder cannot be written to.
+    """
+    if "pdf" in formats:
+        ensure_available()
+    pages = [page for kind in KINDS if kind in kinds for page in KINDS[kind](basis)]
+    files: list[str] = []
+    done, total = 0, len(pages) * len(formats)
+    if "html" in formats:
+        write_whole(out / STYLE_SHEET, web_style_sheet().encode())
+        files.append(STYLE_SHEET)
+        for page in pages:
+            name = f"{page.folder}/{page.name}.html"
+            write_whole(out / name, _html(page, stylesheet=f"../{STYLE_SHEET}").encode())
+            files.append(name)
+            done += 1
+            progress(done, total)
+    if "pdf" in formats:
+        names = [f"{page.folder}/{page.name}.pdf" for page in pages]
+        sources = (_html(page, stylesheet="") for page in pages)
+        for name, content in zip(names, _pdfs(sources, jobs), strict=True):
+            write_whole(out / name, content)
+            files.append(name)
+            done += 1
+            progress(done, total)
+    if "html" in formats:
+        index = index_page(basis, pages, formats)
+        write_whole(out / "index.html", _html(index, stylesheet=STYLE_SHEET).encode())
+        files.append("index.html")
+    return Issued(out, len(pages), tuple(files))
+
+
+def _html(page: Page, *, stylesheet: str) -> str:
+    return render(page.template, document=page.document, stylesheet=stylesheet, **page.view)
+
+
+def _pdfs(sources: Iterator[str], jobs: int) -> Iterator[bytes]:
+    if jobs == 1:
+        yield from map(to_pdf, sources)
+        return
+    with ProcessPoolExecutor(jobs) as pool:
+        yield from pool.map(to_pdf, sources, chunksize=FILES_PER_BATCH)
+
+
+def write_whole(path: Path, content: bytes) -> None:
+    """Write a file so that no reader ever sees half of it."""
+    path.parent.mkdir(parents=True, exist_ok=True)
+    handle, temporary = tempfile.mkstemp(dir=path.parent, prefix=f".{path.name}.")
+    try:
+        with os.fdopen(handle, "wb") as file:
+            file.write(content)
+            file.flush()
+            os.fsync(file.fileno())
+        os.chmod(temporary, 0o644)
+        os.replace(temporary, path)
+    except BaseException:
+        os.unlink(temporary)
+        raise

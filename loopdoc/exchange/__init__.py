@@ -1,0 +1,1 @@
+"""Other forms of what loopdoc knows: findings as text and as JSON."""
