@@ -107,7 +107,7 @@ class Gain:
         value = convert_difference(self.value, changed, measured)
         if per_time is not None:
             value /= per_time.factor
-        # The size of one written denominator in wanted ones divides: 2 per t/h are 0.002 per kg/h.
+        # One wanted unit of what moves is so many written ones: 2 per t/h are 0.002 per kg/h.
         return value * convert_difference(1.0, unit(denominator), self.denominator)
 
     def _rate_of(self, measured: Unit) -> tuple[Unit, Unit] | None:
