@@ -43,9 +43,19 @@ from loopdoc.register.model import (
     UnitText,
 )
 from loopdoc.register.place import Fault, Place
-from loopdoc.register.quantity import Gain, Quantity, QuantityError, Range, parse_gain, parse_quantity, parse_range
+from loopdoc.register.quantity import (
+    Gain,
+    Quantity,
+    QuantityError,
+    Range,
+    parse_gain,
+    parse_number_range,
+    parse_quantity,
+    parse_range,
+)
 from loopdoc.register.schema import schema_faults
 from loopdoc.register.text import Spot, TextFile, read_text
+from loopdoc.register.units import unit
 
 ROOT_NAME = "register.yaml"
 MAX_FILES = 5_000
@@ -208,8 +218,7 @@ class _Reader:
             try:
                 return _PARSERS[kind](value)
             except QuantityError as error:
-                message, _, remedy = str(error).partition("; ")
-                self._fault(origin, steps, f"`{steps[-1]}` is `{value}`: {message}", remedy or "write a number and a unit")
+                self._fault(origin, steps, f"`{steps[-1]}`: {error.fault}", error.remedy)
                 return _UNREADABLE
         if kind is float:
             return float(value) if isinstance(value, int | float) and not isinstance(value, bool) else _UNREADABLE
@@ -302,8 +311,21 @@ class _Reader:
             span = self._value(Origin(where.source, where.path[:-1]), (element,), entry, Range)
             if isinstance(span, Range):
                 outputs[element] = span
-        function = self._part(origin, value, Function, tag=tag, weights=weights, outputs=outputs)
+        function = self._part(
+            origin, value, Function, tag=tag, weights=weights, outputs=outputs, span=self._ratio_span(origin, value)
+        )
         return function if isinstance(function, Function) else None
+
+    def _ratio_span(self, origin: Origin, value: Any) -> Range | Hold | None:
+        """The span of a ratio setting: two numbers, as a rule without a unit."""
+        written = value.get("span")
+        if isinstance(written, str):
+            try:
+                return Range(*parse_number_range(written), unit("fraction"))
+            except QuantityError:
+                pass  # it may have a unit, as percent
+        span = self._value(origin, ("span",), written, Range)
+        return span if isinstance(span, Range | Hold) else None
 
     def _interlock(self, origin: Origin, tag: str, value: Any) -> Interlock | None:
         initiators = {}
