@@ -59,11 +59,15 @@ def _parser() -> argparse.ArgumentParser:
         return sub
 
     new = command("new", _new, "write a small register to start from")
-    new.add_argument("folder", type=Path, metavar="FOLDER", help="a folder that does not exist yet, or is empty")
+    new.add_argument(
+        "folder", type=Path, metavar="FOLDER", help="a folder that does not exist yet, or is empty"
+    )
 
     check = command("check", _check, "check a register and print the findings")
     _add_register(check)
-    check.add_argument("--format", choices=("text", "json"), default="text", help="form of the output (default: text)")
+    check.add_argument(
+        "--format", choices=("text", "json"), default="text", help="form of the output (default: text)"
+    )
     check.add_argument(
         "--fail-on", choices=("error", "warning", "note", "never"), default="error",
         help="exit 1 when a finding of this level or above is open (default: error)",
@@ -72,20 +76,36 @@ def _parser() -> argparse.ArgumentParser:
 
     issue = command("issue", _issue, "issue the documents of a register")
     _add_register(issue)
-    issue.add_argument("--out", type=Path, required=True, metavar="FOLDER", help="where the documents are written")
     issue.add_argument(
-        "--documents", nargs="+", metavar="KIND", default=[], help="narrative, loop-sheet, response (default: all)"
+        "--out", type=Path, required=True, metavar="FOLDER", help="where the documents are written"
     )
-    issue.add_argument("--formats", default="pdf,html", metavar="LIST", help="pdf, html or pdf,html (default)")
     issue.add_argument(
-        "--jobs", type=int, default=os.cpu_count() or 1, metavar="N", help="processes at work (default: one a processor)"
+        "--documents",
+        nargs="+",
+        metavar="KIND",
+        default=[],
+        help="narrative, loop-sheet, response (default: all)",
+    )
+    issue.add_argument(
+        "--formats", default="pdf,html", metavar="LIST", help="pdf, html or pdf,html (default)"
+    )
+    issue.add_argument(
+        "--jobs",
+        type=int,
+        default=os.cpu_count() or 1,
+        metavar="N",
+        help="processes at work (default: one a processor)",
     )
 
     response = command("response", _response, "margins and time responses of a loop or cascade")
     _add_register(response)
     response.add_argument("tag", metavar="TAG", help="tag of a loop with a controller")
-    response.add_argument("--format", choices=("text", "json"), default="text", help="form of the output (default: text)")
-    response.add_argument("--plot", type=Path, metavar="FILE", help="also draw the responses, as .svg, .png or .pdf")
+    response.add_argument(
+        "--format", choices=("text", "json"), default="text", help="form of the output (default: text)"
+    )
+    response.add_argument(
+        "--plot", type=Path, metavar="FILE", help="also draw the responses, as .svg, .png or .pdf"
+    )
 
     explain = command("explain", _explain, "explain a rule: what it means, why, and what it cannot see")
     explain.add_argument("rule", metavar="RULE", help="id of a rule, as in a finding")
@@ -158,7 +178,9 @@ def _issue(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int
     status = EXIT_CLEAN
     progress = _progress(stderr)
     try:
-        issued = issue(basis, arguments.out, kinds=kinds, formats=formats, jobs=arguments.jobs, progress=progress)
+        issued = issue(
+            basis, arguments.out, kinds=kinds, formats=formats, jobs=arguments.jobs, progress=progress
+        )
     except PdfError as error:
         stderr.write(f"loopdoc: {error}\n")
         if "html" not in formats:

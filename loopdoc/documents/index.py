@@ -15,7 +15,11 @@ def index_page(basis: Basis, pages: Sequence[Page], formats: Collection[str]) ->
     kinds: dict[str, list[dict[str, object]]] = {}
     for page in pages:
         path = f"{page.folder}/{page.name}"
-        links = [{"label": form.upper(), "address": f"{path}.{form}"} for form in ("html", "pdf") if form in formats]
+        links = [
+            {"label": form.upper(), "address": f"{path}.{form}"}
+            for form in ("html", "pdf")
+            if form in formats
+        ]
         row = {
             "number": page.document.number,
             "title": page.document.title,

@@ -23,7 +23,9 @@ def as_text(result: CheckResult) -> str:
         deviation = finding.accepted_by
         assert deviation is not None
         lines.append(f"{_head(finding, 'accepted')}: {finding.message}")
-        lines.append(f"    deviation: {deviation.reason}; approved by {deviation.approved_by}, until {deviation.until}")
+        lines.append(
+            f"    deviation: {deviation.reason}; approved by {deviation.approved_by}, until {deviation.until}"
+        )
     if lines:
         lines.append("")
     lines.append(summary(result))
@@ -35,7 +37,9 @@ def as_text(result: CheckResult) -> str:
             reason, times = entry.reasons.most_common(1)[0]
             others = len(entry.reasons) - 1
             more = f" and {others} other {'reason' if others == 1 else 'reasons'}" if others else ""
-            lines.append(f"    {rule:<{width}}  {entry.not_checked:>4}  {reason} ({times} of {entry.not_checked}){more}")
+            lines.append(
+                f"    {rule:<{width}}  {entry.not_checked:>4}  {reason} ({times} of {entry.not_checked}){more}"
+            )
     lines.append(CAUTION)
     return escape("\n".join(lines)) + "\n"
 
@@ -107,7 +111,8 @@ def _finding_object(finding: Finding) -> dict[str, Any]:
         "line": finding.place.line,
         "column": finding.place.column,
         "related": [
-            {"file": r.place.file, "line": r.place.line, "column": r.place.column, "what": r.what} for r in finding.related
+            {"file": r.place.file, "line": r.place.line, "column": r.place.column, "what": r.what}
+            for r in finding.related
         ],
     }
 

@@ -86,10 +86,14 @@ def load(path: Path) -> Loaded | Unreadable:
     """Read the register in a folder, or the one whose root file is ``path``."""
     folder, root_name = (path.parent, path.name) if path.is_file() else (path, ROOT_NAME)
     if not path.exists():
-        return _unreadable(Place(str(path), 1, 1), "there is no such file or folder", "name the register's folder")
+        return _unreadable(
+            Place(str(path), 1, 1), "there is no such file or folder", "name the register's folder"
+        )
     if not (folder / root_name).is_file():
         return _unreadable(
-            Place(str(path), 1, 1), f"the folder has no `{ROOT_NAME}`", "name the register's folder, or make one: loopdoc new"
+            Place(str(path), 1, 1),
+            f"the folder has no `{ROOT_NAME}`",
+            "name the register's folder, or make one: loopdoc new",
         )
     sources: dict[str, bytes] = {}
     root = _read(folder, root_name, sources)
@@ -97,7 +101,9 @@ def load(path: Path) -> Loaded | Unreadable:
         return Unreadable((root,))
     if not isinstance(root.data, dict):
         return _unreadable(
-            root.place(()), "a register is a mapping of keys; this is something else", "begin with `format: 1` and `site:`"
+            root.place(()),
+            "a register is a mapping of keys; this is something else",
+            "begin with `format: 1` and `site:`",
         )
     names, include_faults = _included(folder, root)
     files: list[TextFile] = [root]
@@ -108,7 +114,11 @@ def load(path: Path) -> Loaded | Unreadable:
             unreadable.append(file)
         elif not isinstance(file.data, dict):
             unreadable.append(
-                Fault(file.place(()), "an included file is a mapping of keys; this is something else", "begin with `loops:`")
+                Fault(
+                    file.place(()),
+                    "an included file is a mapping of keys; this is something else",
+                    "begin with `loops:`",
+                )
             )
         else:
             files.append(file)
@@ -128,7 +138,9 @@ def _read(folder: Path, name: str, sources: dict[str, bytes]) -> TextFile | Faul
     try:
         content = (folder / name).read_bytes()
     except OSError as error:
-        return Fault(Place(name, 1, 1), f"the file cannot be read ({error.strerror})", "check its name and permissions")
+        return Fault(
+            Place(name, 1, 1), f"the file cannot be read ({error.strerror})", "check its name and permissions"
+        )
     sources[name] = content
     return read_text(content, name)
 
@@ -138,18 +150,26 @@ def _included(folder: Path, root: TextFile) -> tuple[list[str], list[Fault]]:
     assert isinstance(root.data, dict)
     patterns = root.data.get("include", [])
     if not isinstance(patterns, list):
-        return [], [Fault(root.place(("include",)), "`include` is not a list", "write `include: [units/*.yaml]`")]
+        return [], [
+            Fault(root.place(("include",)), "`include` is not a list", "write `include: [units/*.yaml]`")
+        ]
     inside = folder.resolve()
     names: dict[str, None] = {}
     faults = []
     for index, pattern in enumerate(patterns):
         place = root.place(("include", index))
         if not isinstance(pattern, str) or not pattern:
-            faults.append(Fault(place, "an `include` entry is not a file name", "write `include: [units/*.yaml]`"))
+            faults.append(
+                Fault(place, "an `include` entry is not a file name", "write `include: [units/*.yaml]`")
+            )
             continue
         if Path(pattern).is_absolute() or ".." in Path(pattern).parts:
             faults.append(
-                Fault(place, f"`{pattern}` leads outside the register's folder", "include files inside the folder only")
+                Fault(
+                    place,
+                    f"`{pattern}` leads outside the register's folder",
+                    "include files inside the folder only",
+                )
             )
             continue
         found = sorted(file for file in folder.glob(pattern) if file.is_file() and file.name != root.name)
@@ -163,11 +183,17 @@ def _included(folder: Path, root: TextFile) -> tuple[list[str], list[Fault]]:
                 )
             )
         elif not found:
-            faults.append(Fault(place, f"no file matches `{pattern}`", "correct the name, or remove the entry"))
+            faults.append(
+                Fault(place, f"no file matches `{pattern}`", "correct the name, or remove the entry")
+            )
         for file in found:
             names[file.relative_to(folder).as_posix()] = None
     if len(names) > MAX_FILES:
-        faults.append(Fault(root.place(("include",)), f"more than {MAX_FILES} files are included", "include fewer files"))
+        faults.append(
+            Fault(
+                root.place(("include",)), f"more than {MAX_FILES} files are included", "include fewer files"
+            )
+        )
     return list(names), faults
 
 
@@ -187,7 +213,9 @@ def _field_types(part: type[Any]) -> tuple[tuple[str, type, bool], ...]:
         if get_origin(hint) in (Union, UnionType):
             members = [member for member in get_args(hint) if member not in (type(None), Hold)]
         kind = members[0]
-        if kind in (str, float, bool, Quantity, Range, Gain) or (isinstance(kind, type) and issubclass(kind, Part)):
+        if kind in (str, float, bool, Quantity, Range, Gain) or (
+            isinstance(kind, type) and issubclass(kind, Part)
+        ):
             found.append((entry.name, kind, False))
         elif get_origin(kind) is tuple and get_args(kind)[0] is str:
             found.append((entry.name, str, True))
@@ -221,7 +249,11 @@ class _Reader:
                 self._fault(origin, steps, f"`{steps[-1]}`: {error.fault}", error.remedy)
                 return _UNREADABLE
         if kind is float:
-            return float(value) if isinstance(value, int | float) and not isinstance(value, bool) else _UNREADABLE
+            return (
+                float(value)
+                if isinstance(value, int | float) and not isinstance(value, bool)
+                else _UNREADABLE
+            )
         if kind is str:
             return value if isinstance(value, str) else _UNREADABLE
         if kind is bool:
@@ -251,7 +283,9 @@ class _Reader:
         place = origin.place(*steps)
         if place not in self._told:
             self._told.add(place)
-            self._faults.append(Fault(place, message, remedy, "/" + "/".join(map(str, (*origin.path, *steps)))))
+            self._faults.append(
+                Fault(place, message, remedy, "/" + "/".join(map(str, (*origin.path, *steps))))
+            )
 
     def _below(self, origin: Origin, value: Any, name: str) -> Iterator[tuple[str, Any, Origin]]:
         """Entries of the mapping ``name`` inside ``value``: key, value, origin."""
@@ -312,7 +346,13 @@ class _Reader:
             if isinstance(span, Range):
                 outputs[element] = span
         function = self._part(
-            origin, value, Function, tag=tag, weights=weights, outputs=outputs, span=self._ratio_span(origin, value)
+            origin,
+            value,
+            Function,
+            tag=tag,
+            weights=weights,
+            outputs=outputs,
+            span=self._ratio_span(origin, value),
         )
         return function if isinstance(function, Function) else None
 
@@ -337,7 +377,9 @@ class _Reader:
         actions = {}
         for target, entry, where in self._below(origin, value, "actions"):
             if isinstance(entry, str):
-                actions[target] = InterlockAction(origin=where, tag=target, position=entry, mode=None, output=None)
+                actions[target] = InterlockAction(
+                    origin=where, tag=target, position=entry, mode=None, output=None
+                )
             elif isinstance(entry, dict):
                 action = self._part(where, entry, InterlockAction, tag=target, position=None)
                 if isinstance(action, InterlockAction):
@@ -402,7 +444,10 @@ class _Reader:
                 history.append(revision)
 
         def parts(name: str, kind: type[P], key: str) -> dict[str, P]:
-            made = {tag: self._part(where, value, kind, **{key: tag}) for tag, (where, value) in sections[name].items()}
+            made = {
+                tag: self._part(where, value, kind, **{key: tag})
+                for tag, (where, value) in sections[name].items()
+            }
             return {tag: part for tag, part in made.items() if isinstance(part, kind)}
 
         def built(name: str, build: Any) -> dict[str, Any]:
@@ -446,12 +491,17 @@ class _Reader:
         try:
             pattern = re.compile(written)
         except re.error as error:
-            self._fault(origin, ("tags",), f"`tags` is not a regular expression ({error})", "correct the expression")
+            self._fault(
+                origin, ("tags",), f"`tags` is not a regular expression ({error})", "correct the expression"
+            )
             return None
         missing = [group for group in ("letters", "unit", "serial") if group not in pattern.groupindex]
         if missing:
             self._fault(
-                origin, ("tags",), f"`tags` has no group named {' or '.join(missing)}", "name it, as in `(?P<letters>[A-Z]+)`"
+                origin,
+                ("tags",),
+                f"`tags` has no group named {' or '.join(missing)}",
+                "name it, as in `(?P<letters>[A-Z]+)`",
             )
             return None
         return pattern
@@ -465,7 +515,10 @@ def _holds(file: TextFile) -> Iterator[HeldValue]:
             if "hold" in data:
                 tag, inner = (str(path[1]), path[2:]) if len(path) > 1 else (str(path[0]) if path else "", ())
                 yield HeldValue(
-                    tag=tag, path=inner, reason=str(data["hold"]), place=Place(file.name, spot.key_line, spot.key_column)
+                    tag=tag,
+                    path=inner,
+                    reason=str(data["hold"]),
+                    place=Place(file.name, spot.key_line, spot.key_column),
                 )
                 return
             for key, value in data.items():

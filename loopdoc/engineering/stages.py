@@ -1,0 +1,322 @@
+"""From the register to numbers: each loop of a cascade as a controller and a process in percent of span.
+
+Percent of a measurement is percent of its range; percent of a command is percent of opening, or of the
+secondary's range. The sign of the path is taken from `loopdoc.engineering.direction`, that of the
+controller from its written action, so that a wrong action shows as an unstable loop and not as a sound one.
+"""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass
+from typing import TypeVar
+
+from loopdoc.engineering.direction import Undecided, element_sign, process_on
+from loopdoc.engineering.frequency import LoopStage
+from loopdoc.engineering.pairing import ControlledLoop, Plant, Route
+from loopdoc.engineering.pid import (
+    Controller,
+    ParallelSettings,
+    SeriesSettings,
+    StandardSettings,
+    gain_from_proportional_band,
+    on_secondary_range,
+    reset_from_repeats,
+    standard_from_parallel,
+    standard_from_series,
+)
+from loopdoc.engineering.process import Process
+from loopdoc.register import model
+from loopdoc.register.model import FinalElement, Hold, known
+from loopdoc.register.quantity import Quantity, Range
+from loopdoc.register.units import UnitError
+
+T = TypeVar("T")
+
+DERIVATIVE_FILTER = 10.0
+"""Ratio of rate time to its filter where the register gives none (common practice)."""
+
+
+@dataclass(frozen=True, slots=True)
+class Lacking:
+    """Why a loop's dynamics cannot be calculated."""
+
+    reason: str
+
+
+class _Lacking(Exception):
+    """Carries the reason out of the steps below; never leaves this module."""
+
+
+@dataclass(frozen=True, slots=True)
+class Level:
+    """One level of a chain: the loop, the route its output takes, and both as numbers."""
+
+    loop: ControlledLoop
+    route: Route
+    stage: LoopStage
+
+
+@dataclass(frozen=True, slots=True)
+class Chain:
+    """A loop with the secondaries below it, innermost first."""
+
+    levels: tuple[Level, ...]
+
+    @property
+    def stages(self) -> tuple[LoopStage, ...]:
+        return tuple(level.stage for level in self.levels)
+
+    @property
+    def lead(self) -> ControlledLoop:
+        """The outermost loop."""
+        return self.levels[-1].loop
+
+    @property
+    def final_element(self) -> FinalElement:
+        """What the innermost loop moves."""
+        end = self.levels[0].route.end
+        assert isinstance(end, FinalElement)
+        return end
+
+
+def chains(plant: Plant, lead: ControlledLoop) -> tuple[Chain, ...] | Lacking:
+    """Every chain from a loop down to a final element: one, or one for each branch of a split range."""
+    if not lead.routes:
+        return Lacking(f"the output of {lead.tag} leads nowhere")
+    try:
+        return tuple(Chain(levels) for levels in _below(plant, lead, ()))
+    except _Lacking as lacking:
+        return Lacking(str(lacking))
+
+
+def _below(plant: Plant, loop: ControlledLoop, above: tuple[str, ...]) -> list[tuple[Level, ...]]:
+    if loop.tag in above:
+        raise _Lacking(f"{loop.tag} commands itself")
+    found: list[tuple[Level, ...]] = []
+    for route in loop.routes:
+        level = Level(loop, route, LoopStage(_controller(plant, loop, route), _process(loop, route)))
+        if isinstance(route.end, FinalElement):
+            found.append((level,))
+            continue
+        secondary = plant.controlled.get(route.end.tag)
+        if secondary is None or not secondary.routes:
+            raise _Lacking(f"{route.end.tag} has no controller with an output")
+        found.extend((*inner, level) for inner in _below(plant, secondary, (*above, loop.tag)))
+    return found
+
+
+# ---------------------------------------------------------------- controller
+
+
+def _controller(plant: Plant, loop: ControlledLoop, route: Route) -> Controller:
+    written, tag = loop.controller, loop.tag
+    action = _need(written.action, f"the action of {tag}")
+    measurement = _need(loop.loop.measurement, f"the measurement of {tag}")
+    own = _need(measurement.range, f"the range of {tag}")
+    try:
+        settings = settings_of(written, tag)
+        output = known(written.output)
+        setpoint = known(written.setpoint)
+        weight = known(written.setpoint_weight)
+        low, high = _output_limits(output, route, tag)
+        setpoint_low = _percent_of(known(setpoint.low) if setpoint else None, own, 0.0)
+        setpoint_high = _percent_of(known(setpoint.high) if setpoint else None, own, 100.0)
+        controller = Controller(
+            gain=settings.gain if action == "reverse" else -settings.gain,
+            reset_s=settings.reset_s,
+            rate_s=settings.rate_s,
+            derivative_filter=known(written.derivative_filter) or DERIVATIVE_FILTER,
+            setpoint_weight=1.0 if weight is None else weight,
+            interval_s=_seconds(written.interval),
+            measurement_filter_s=_seconds(measurement.filter),
+            output_low_pct=low,
+            output_high_pct=high,
+            setpoint_low_pct=setpoint_low,
+            setpoint_high_pct=setpoint_high,
+        )
+        return _on_commanded(plant, controller, loop, route)
+    except (
+        ValueError,
+        ZeroDivisionError,
+    ) as error:  # a nonsensical setting; `tuning-invalid` and others tell it
+        raise _Lacking(f"the settings of {tag} do not make a controller: {error}") from error
+
+
+def settings_of(written: model.Controller, tag: str) -> StandardSettings:
+    """The written settings in the standard form.
+
+    In the parallel form `reset` or `repeats` gives the integral gain by itself (1/time) and `rate` the
+    derivative gain (time), as ISA-TR5.9 has them (from memory).
+
+    Raises
+    ------
+    ValueError
+        The settings have no standard form.
+    """
+    band = known(written.proportional_band)
+    gain = known(written.gain)
+    if gain is None and band is not None:
+        gain = gain_from_proportional_band(band.to("%"))
+    gain = _need(written.gain if gain is None else gain, f"the gain of {tag}")
+    reset, repeats = (
+        _need_not_held(written.reset, f"the reset of {tag}"),
+        _need_not_held(written.repeats, f"the repeats of {tag}"),
+    )
+    reset_s = math.inf
+    if reset is not None:
+        reset_s = reset.to("s")
+    elif repeats is not None:
+        reset_s = reset_from_repeats(repeats.to("1/s"))
+    rate = _need_not_held(written.rate, f"the rate of {tag}")
+    rate_s = rate.to("s") if rate else 0.0
+    form = known(written.form) or "standard"
+    if form == "series":
+        return standard_from_series(SeriesSettings(gain, reset_s, rate_s))
+    if form == "parallel":
+        return standard_from_parallel(ParallelSettings(gain, 1.0 / reset_s, rate_s))
+    return StandardSettings(gain, reset_s, rate_s)
+
+
+def _output_limits(output: model.Output | None, route: Route, tag: str) -> tuple[float, float]:
+    """Output limits in percent of the output span."""
+    span = known(output.span) if output else None
+    low = known(output.low) if output else None
+    high = known(output.high) if output else None
+    if span is None:
+        if not isinstance(route.end, FinalElement):
+            raise _Lacking(f"the output span of {tag} is not given")
+        return (low.to("%") if low else 0.0, high.to("%") if high else 100.0)
+    return _percent_of(low, span, 0.0), _percent_of(high, span, 100.0)
+
+
+def _on_commanded(plant: Plant, controller: Controller, loop: ControlledLoop, route: Route) -> Controller:
+    """The controller with its output in percent of what it commands: opening, or the secondary's range."""
+    if isinstance(route.end, FinalElement):
+        element = element_sign(route.end)
+        if isinstance(element, Undecided):
+            raise _Lacking(element.reason)
+        if route.branch is not None:
+            # The element goes from shut to fully open over its branch: its opening moves that much faster.
+            start, width = route.branch.to("%").low, route.branch.to("%").span
+            controller = _rescaled(
+                controller, at_0=-100.0 * start / width, at_100=100.0 * (100.0 - start) / width
+            )
+        return controller if element.sign > 0 else _rescaled(controller, at_0=100.0, at_100=0.0)
+    measurement = _need(route.end.measurement, f"the measurement of {route.end.tag}")
+    own = _need(measurement.range, f"the range of {route.end.tag}")
+    output = known(loop.controller.output)
+    span = _need(output.span if output else None, f"the output span of {loop.tag}")
+    is_ratio = any(known(function.kind) == "ratio" for function in route.via)
+    try:
+        if is_ratio:
+            low, high = span.to("fraction").low, span.to("fraction").high
+        elif route.via:  # a sum may add a span on both sides of zero: it is a difference, not a reading
+            low, high = (
+                Quantity(end, span.unit).difference_in(own.unit.symbol) for end in (span.low, span.high)
+            )
+        else:
+            low, high = span.to(own.unit.symbol).low, span.to(own.unit.symbol).high
+    except UnitError as error:
+        raise _Lacking(
+            f"the output span of {loop.tag} and the range of {route.end.tag} are of different kinds"
+        ) from error
+    commander = loop.tag
+    for function in route.via:
+        low, high = _through(plant, function, commander, own, low, high)
+        commander = function.tag
+    return _rescaled(
+        controller, at_0=100.0 * (low - own.low) / own.span, at_100=100.0 * (high - own.low) / own.span
+    )
+
+
+def _through(
+    plant: Plant, function: model.Function, commander: str, own: Range, low: float, high: float
+) -> tuple[float, float]:
+    """What a function makes of the ends of a primary's span, its other inputs at their normal values."""
+    kind = known(function.kind)
+    if kind in ("high select", "low select", "lead-lag"):
+        return low, high
+    if kind not in ("ratio", "sum"):
+        raise _Lacking(
+            f"what {function.tag} makes of the output of {commander} does not follow from the register"
+        )
+    inputs = {tag: _normal(plant, tag, own) for tag in function.inputs}
+    if kind == "ratio":
+        factor = math.prod(inputs.values())
+        return low * factor, high * factor
+    weight = function.weights.get(commander, 1.0)
+    added = sum(function.weights.get(tag, 1.0) * value for tag, value in inputs.items())
+    return weight * low + added, weight * high + added
+
+
+def _normal(plant: Plant, tag: str, own: Range) -> float:
+    """Normal value of a measurement that enters a function, in the secondary's unit."""
+    loop = plant.register.loops.get(tag) or plant.loop_of_transmitter.get(tag)
+    operating = known(loop.operating) if loop else None
+    normal = _need(operating.normal if operating else None, f"the normal value of {tag}")
+    return normal.to(own.unit.symbol)
+
+
+def _rescaled(controller: Controller, *, at_0: float, at_100: float) -> Controller:
+    """The controller with 0 and 100 % of its output at these percentages of what it commands."""
+    return on_secondary_range(controller, span_low_pct=at_0, span_high_pct=at_100)
+
+
+# ---------------------------------------------------------------- process
+
+
+def _process(loop: ControlledLoop, route: Route) -> Process:
+    tag = loop.tag
+    held = loop.loop.process
+    if isinstance(held, Hold):
+        raise _Lacking(f"the process of {tag} is on hold")
+    written = process_on(loop, route)
+    if written is None:
+        raise _Lacking(f"{tag} has no `process` for {route.end.tag}")
+    gain = _need(written.gain, f"the process gain of {tag}")
+    measurement = _need(loop.loop.measurement, f"the measurement of {tag}")
+    own = _need(measurement.range, f"the range of {tag}")
+    if isinstance(route.end, FinalElement):
+        commanded_unit, commanded_span = "%", 100.0
+    else:
+        below = _need(route.end.measurement, f"the measurement of {route.end.tag}")
+        range_ = _need(below.range, f"the range of {route.end.tag}")
+        commanded_unit, commanded_span = range_.unit.symbol, range_.span
+    if isinstance(written.lags, Hold):
+        raise _Lacking(f"the lag of {tag} is on hold")
+    _need_not_held(written.dead_time, f"the dead time of {tag}")
+    try:
+        per_unit = gain.in_units(own.unit.symbol, commanded_unit) * commanded_span / own.span
+        return Process(
+            gain=per_unit,
+            lags_s=tuple(lag.to("s") for lag in written.lags),
+            dead_time_s=_seconds(written.dead_time),
+            integrating=written.integrating,
+        )
+    except (ValueError, ZeroDivisionError) as error:
+        raise _Lacking(f"the process of {tag} does not make a model: {error}") from error
+
+
+# ---------------------------------------------------------------- values
+
+
+def _need(value: T | Hold | None, what: str) -> T:
+    if value is None:
+        raise _Lacking(f"{what} is not given")
+    if isinstance(value, Hold):
+        raise _Lacking(f"{what} is on hold" if value.readable else f"{what} could not be read")
+    return value
+
+
+def _need_not_held(value: T | Hold | None, what: str) -> T | None:
+    return None if value is None else _need(value, what)
+
+
+def _seconds(value: Quantity | Hold | None) -> float:
+    quantity = known(value)
+    return quantity.to("s") if quantity else 0.0
+
+
+def _percent_of(value: Quantity | None, own: Range, default: float) -> float:
+    return default if value is None else 100.0 * (value.to(own.unit.symbol) - own.low) / own.span
