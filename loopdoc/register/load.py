@@ -9,15 +9,13 @@ from __future__ import annotations
 import re
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, fields
-from functools import lru_cache
+from functools import cache
 from pathlib import Path
 from types import UnionType
 from typing import Any, TypeVar, Union, get_args, get_origin, get_type_hints
 
 from loopdoc.register.model import (
     Alarm,
-    BadMeasurement,
-    Controller,
     Deviation,
     FinalElement,
     Function,
@@ -29,16 +27,12 @@ from loopdoc.register.model import (
     InterlockAction,
     Loop,
     Measurement,
-    Modes,
-    Operating,
     Origin,
-    Output,
     Part,
     PlantUnit,
     Process,
     Register,
     Revision,
-    Setpoint,
     Site,
     UnitText,
 )
@@ -200,7 +194,7 @@ def _included(folder: Path, root: TextFile) -> tuple[list[str], list[Fault]]:
 # ---------------------------------------------------------------- from plain data to parts
 
 
-@lru_cache(maxsize=None)
+@cache
 def _field_types(part: type[Any]) -> tuple[tuple[str, type, bool], ...]:
     """For each field of a part that is read by its type alone: name, type, whether it may be a list."""
     hints = get_type_hints(part)

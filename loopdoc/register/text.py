@@ -217,7 +217,8 @@ class _Builder:
                 raise _Refused(line, column, "a key is empty or has control characters", "write `key: value`")
             if key in mapping:
                 first = spots[key].key_line
-                raise _Refused(line, column, f"the key `{key}` stands twice (first in line {first})", "keep one of them")
+                message = f"the key `{key}` stands twice (first in line {first})"
+                raise _Refused(line, column, message, "keep one of them")
             mapping[key], spots[key] = self._node(self._next(), (line, column), depth + 1)
         return mapping, spots
 
