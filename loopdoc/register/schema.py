@@ -11,9 +11,10 @@ from functools import cache
 from importlib.resources import files
 from typing import TYPE_CHECKING, Any
 
+from loopdoc.register.expected import Format, Path
 from loopdoc.register.place import Fault
 from loopdoc.register.schema_faults import explained
-from loopdoc.register.text import TextFile
+from loopdoc.register.text import Data, TextFile
 
 if TYPE_CHECKING:
     from jsonschema_rs import Draft202012Validator
@@ -33,19 +34,48 @@ def schema_text(*, root: bool = True) -> str:
 
 def schema_faults(file: TextFile, *, root: bool) -> tuple[Fault, ...]:
     """What the format refuses in one file, in order of place; one fault for one mistake."""
-    failing = {tuple(error.instance_path) for error in _validator(root).iter_errors(file.data)}
-    found = [fault for path in failing for fault in explained(file, path, _schema(root))]
+    format_ = _format(root)
+    found = [fault for path in failing_paths(file.data, root=root) for fault in explained(file, path, format_)]
     return tuple(sorted(found, key=lambda fault: (fault.place, fault.pointer)))
 
 
+def failing_paths(data: Data, *, root: bool) -> set[Path]:
+    """Paths of the values at which the schema refuses the data, each once."""
+    validator = _validator(root)
+    paths = {tuple(error.instance_path) for error in validator.iter_errors(data)}
+    # The validator's paths turn keys made of digits (`"20"`, `"007"`) into numbers; its pointers, which cost
+    # ten times as much, do not.
+    if any(_has_number_for_key(data, path) for path in paths):
+        return {_path(data, error["instanceLocation"]) for error in validator.evaluate(data).errors()}
+    return paths
+
+
+def _has_number_for_key(data: Any, path: Path) -> bool:
+    for step in path:
+        if isinstance(step, int) and isinstance(data, dict):
+            return True
+        data = data[step]
+    return False
+
+
+def _path(data: Any, pointer: str) -> Path:
+    """The path of a JSON Pointer (RFC 6901) into the data."""
+    path: list[str | int] = []
+    for token in pointer.split("/")[1:]:
+        step = int(token) if isinstance(data, list) else token.replace("~1", "/").replace("~0", "~")
+        path.append(step)
+        data = data[step]
+    return tuple(path)
+
+
 @cache
-def _schema(root: bool) -> dict[str, Any]:
-    schema: dict[str, Any] = json.loads(schema_text(root=root))
-    return schema
+def _format(root: bool) -> Format:
+    return Format(json.loads(schema_text(root=root)))
 
 
 @cache
 def _validator(root: bool) -> Draft202012Validator:
     from jsonschema_rs import Draft202012Validator, RegexOptions
 
-    return Draft202012Validator(_schema(root), validate_formats=True, pattern_options=RegexOptions())
+    schema = json.loads(schema_text(root=root))
+    return Draft202012Validator(schema, validate_formats=True, pattern_options=RegexOptions())

@@ -9,6 +9,7 @@ from dataclasses import dataclass
 from difflib import get_close_matches
 from typing import Any
 
+from loopdoc.register.expected import Expected, Format, Path
 from loopdoc.register.place import Fault
 from loopdoc.register.quantity import (
     QuantityError,
@@ -19,14 +20,16 @@ from loopdoc.register.quantity import (
 )
 from loopdoc.register.text import TextFile
 
-Path = tuple[str | int, ...]
-
 _HOLD = "`{hold: reason}`"
 _SHOWN_CHARACTERS = 60
 _COMPARED_CHARACTERS = 40
+_COMPARED_KEYS = 100
 _SHORT_LIST = 4
 _NEAR = 0.7  # of difflib's ratio: one or two letters wrong in a word
 _BY_TAG = ("loops", "final_elements", "instruments", "functions", "interlocks")
+_SIGN = re.compile(r"[<>≤≥]=? *(.+)", re.DOTALL)
+_SUCH_AS = re.compile(r"such as `[^`]*`")
+_ANSWER = re.compile(r"(write | or )`")
 _UNSAFE_START = re.compile(r"[^A-Za-z0-9(+\-.]|[-.](?![0-9])")
 _UNSAFE_INSIDE = re.compile(r"[\[\]{},\"#\n]|: |:$|^\s|\s$")
 
@@ -52,84 +55,18 @@ _PARSERS: Mapping[str, Callable[[str], object]] = {
     "output range": parse_range,
     "gain": parse_gain,
     "ratio range": parse_number_range,
+    "output value": parse_quantity,
 }
 
 
-@dataclass(frozen=True, slots=True)
-class _Expected:
-    """What may stand at one place: its schema with the references followed and the hold left aside."""
-
-    schema: Mapping[str, Any]
-    may_be_held: bool
-
-    @property
-    def title(self) -> str:
-        return str(self.schema.get("title", "value"))
-
-    @property
-    def example(self) -> Any:
-        return self.schema.get("examples", [None])[0]
-
-    @property
-    def types(self) -> tuple[str, ...]:
-        written = self.schema.get("type", "string")
-        return (written,) if isinstance(written, str) else tuple(written)
-
-    @property
-    def keys(self) -> Mapping[str, Mapping[str, Any]]:
-        return self.schema.get("properties", {})  # type: ignore[no-any-return]
-
-    @property
-    def entry(self) -> Mapping[str, Any] | None:
-        """Schema of the entries by tag or number; None where the keys are fixed."""
-        entry = self.schema.get("additionalProperties")
-        return entry if isinstance(entry, Mapping) else None
-
-    @property
-    def is_mapping(self) -> bool:
-        """A mapping in its own right; a value or a list that may be held has only the key `hold`."""
-        return self.entry is not None or bool(set(self.keys) - {"hold"})
-
-    @property
-    def required(self) -> tuple[str, ...]:
-        return tuple(self.schema.get("required", ()))
-
-    @property
-    def options(self) -> tuple[Any, ...]:
-        return tuple(self.schema.get("enum", ()))
-
-
-def _expected(schema: Mapping[str, Any], definitions: Mapping[str, Any]) -> _Expected:
-    may_be_held = False
-    while "$ref" in schema or "if" in schema:
-        if "$ref" in schema:
-            inner = definitions[schema["$ref"].removeprefix("#/$defs/")]
-        elif "$ref" in schema["then"]:  # held, or what is wanted
-            inner = schema["else"]
-            may_be_held = True
-        else:  # a mapping or a word
-            inner = {**schema["then"], **schema["else"]}
-        own = {
-            key: value for key, value in schema.items() if key not in ("$ref", "if", "then", "else", "$defs")
-        }
-        schema = {**inner, **own}
-    return _Expected(schema, may_be_held or "hold" in schema.get("properties", {}))
-
-
-def explained(file: TextFile, path: Path, schema: Mapping[str, Any]) -> Iterator[Fault]:
-    """The faults of the value at a path at which the schema refuses the file."""
-    definitions = schema["$defs"]
-    expected = [_expected(schema, definitions)]
+def explained(file: TextFile, path: Path, format_: Format) -> Iterator[Fault]:
+    """The faults of the value at a path at which the format refuses the file."""
+    expected = [format_.expected()]
     values: list[Any] = [file.data]
     for step in path:
-        outer = expected[-1]
-        if isinstance(step, int):
-            below = outer.schema["items"]
-        else:
-            below = definitions["reason"] if step == "hold" else outer.keys.get(step) or outer.entry or {}
-        expected.append(_expected(below, definitions))
+        expected.append(format_.below(expected[-1], step))
         values.append(values[-1][step])
-    yield from _Refused(file, path, tuple(expected), tuple(values), definitions).faults()
+    yield from _Refused(file, path, tuple(expected), tuple(values), format_).faults()
 
 
 @dataclass(frozen=True, slots=True)
@@ -138,9 +75,9 @@ class _Refused:
 
     file: TextFile
     path: Path
-    expected: tuple[_Expected, ...]
+    expected: tuple[Expected, ...]
     values: tuple[Any, ...]
-    definitions: Mapping[str, Any]
+    format: Format
 
     def faults(self) -> Iterator[Fault]:
         expected, value = self.expected[-1], self.values[-1]
@@ -207,10 +144,10 @@ class _Refused:
         """The key that excludes this one in the mapping where both stand; empty where there is none."""
         if not self.path:
             return ""
-        for key, schema in self.expected[-2].schema.get("dependentSchemas", {}).items():
-            if key in self.values[-2] and schema["properties"].get(self.path[-1]) is False:
-                return str(key)
-        return ""
+        outer = self.values[-2]
+        return next(
+            (key for key, out in self.expected[-2].excludes.items() if key in outer and self.path[-1] in out), ""
+        )
 
     def _of_hold(self, value: Mapping[str, Any]) -> Fault:
         beside = next(key for key in value if key != "hold")
@@ -220,138 +157,178 @@ class _Refused:
             key=True,
         )
 
-    def _of_keys(self, expected: _Expected, value: Mapping[str, Any]) -> Iterator[Fault]:
-        missing = [key for key in expected.required if key not in value]
+    def _of_keys(self, expected: Expected, value: Mapping[str, Any]) -> Iterator[Fault]:
+        missing = [key for key in expected.required if key not in value and not self._stands_near(key)]
         unknown = [key for key in value if key not in expected.keys] if expected.entry is None else []
-        owner = (
-            f"{expected.title} {self._name()}"
-            if len(self.path) == 2 and self.path[0] in _BY_TAG
-            else self._name()
-        )
-        for key in unknown:
-            meant = self._meant(key, value)
+        by_tag = len(self.path) == 2 and self.path[0] in _BY_TAG
+        owner = f"{expected.title} {self._name()}" if by_tag else self._name()
+        free = [key for key in expected.keys if key not in value]
+        below = {key: self.format.expected(schema) for key, schema in expected.keys.items()}
+        for count, key in enumerate(unknown):
+            # A mapping with very many unknown keys has no typing errors: it is something else altogether.
+            meant = self._meant(key, free, below) if count < _COMPARED_KEYS else ""
             if meant in missing:
                 missing.remove(meant)  # one mistake, one fault
             yield Fault(
                 self.file.place((*self.path, key), key=True),
                 f"`{_shown(key)}` is not a key of {owner}",
-                f"write `{meant}`" if meant else self._elsewhere(key) or self._known_keys(),
+                f"write `{meant}`" if meant else self._remedy(key, below),
                 _pointer((*self.path, key)),
             )
         for key in missing:
-            example = _expected(expected.keys[key], self.definitions).example
-            yield self._fault(
-                f"{self._name()} has no `{key}`", f"add it, as in `{key}: {_flow(example)}`", key=True
-            )
+            example = f"{key}: {_flow(below[key].examples[0])}"
+            yield self._fault(f"{self._name()} has no `{key}`", f"add it, as in `{example}`", key=True)
 
-    def _meant(self, key: str, value: Mapping[str, Any]) -> str:
+    def _stands_near(self, key: str) -> bool:
+        """Whether a missing key stands where it is unknown, one level down or up, and a fault there says so."""
+        near = [(self.expected[-2], self.values[-2])] if self.path else []
+        near += [
+            (self.format.expected(schema), self.values[-1].get(name)) for name, schema in self.expected[-1].keys.items()
+        ]
+        return any(
+            isinstance(value, dict) and key in value and key not in expected.keys and expected.entry is None
+            for expected, value in near
+        )
+
+    def _meant(self, key: str, free: list[str], below: Mapping[str, Expected]) -> str:
         """The key of the same mapping that an unknown one stands for; empty where none is near."""
-        free = [known for known in self.expected[-1].keys if known not in value]
-        plain = key[:_COMPARED_CHARACTERS].lower().replace("-", "_").replace(" ", "_")
+        plain = _plain(key)
         if plain in free:
             return plain
         if _OTHER_WORDS.get(plain) in free:
             return _OTHER_WORDS[plain]
-        if self._elsewhere(key):
+        if self._elsewhere(key, below):
             return ""
         return next(iter(get_close_matches(plain, free, n=1, cutoff=_NEAR)), "")
 
-    def _elsewhere(self, key: str) -> str:
-        """Where to move a key that belongs one level down or further up; empty where it belongs nowhere near."""
-        entry = self.values[-1][key]
+    def _remedy(self, key: str, below: Mapping[str, Expected]) -> str:
+        """What to do with an unknown key that stands for no other key of its mapping."""
+        same = _OTHER_WORDS.get(_plain(key))
+        if same in below:
+            return f"remove it; `{same}` says the same"
+        if key == "hold":
+            return f"hold its values one by one, as in `{next(iter(below))}: {{hold: reason}}`"
+        return self._elsewhere(key, below) or f"write one of {_either(list(below))}, or remove it"
+
+    def _elsewhere(self, key: str, below: Mapping[str, Expected]) -> str:
+        """Where to move a key that belongs a level down or further up; empty where there is no such place."""
+        value = self.values[-1][key]
         homes = []
-        for name, schema in self.expected[-1].keys.items():
-            below = _expected(schema, self.definitions)
-            if key in below.keys and below.is_mapping:
-                inner = _expected(below.keys[key], self.definitions)
-                if inner.is_mapping == isinstance(entry, dict):
-                    homes.append(name)
-            elif below.entry is not None and isinstance(entry, dict) and entry:
-                if set(entry) <= set(_expected(below.entry, self.definitions).keys):
-                    homes.append(name)
+        for name, expected in below.items():
+            if expected.is_mapping and key in expected.keys:
+                inner = self.format.expected(expected.keys[key])
+                homes += [name] if inner.is_mapping == isinstance(value, dict) else []
+            elif expected.entry is not None and isinstance(value, dict) and value:
+                known = self.format.expected(expected.entry).keys
+                homes += [name] if set(value) <= set(known) else []
         if homes:
             return f"move it into {_either(homes)}"
         for depth in range(len(self.path) - 1, 1, -1):
             if key in self.expected[depth].keys:
                 return f"move it up, to {self._name(depth)}"
-        if not self.path and key in self.definitions["root"]["properties"]:
+        if not self.path and key in self.format.definition("root")["properties"]:
             return "move it to the root file, register.yaml"
         return ""
 
-    def _known_keys(self) -> str:
-        keys = list(self.expected[-1].keys)
-        return f"write one of {_either(keys)}, or remove it"
-
     # -- values
 
-    def _of_value(self, expected: _Expected, value: Any) -> Fault:
+    def _of_value(self, expected: Expected, value: Any) -> Fault:
         subject, wanted = self._subject(), _wanted(expected)
+        or_hold = f", or {_HOLD}" if expected.may_be_held and _HOLD not in wanted else ""
         if value is None:
-            needed = (
-                not self.path or isinstance(self.path[-1], int) or self.path[-1] in self.expected[-2].required
-            )
+            last = self.path[-1] if self.path else 0
+            needed = isinstance(last, int) or last in self.expected[-2].required
             return self._fault(f"{subject} is empty", wanted if needed else f"{wanted}, or leave the key out")
         if isinstance(value, dict):
             if "hold" in value and expected.may_be_held:
                 return self._of_hold(value)
-            return self._fault(f"{subject} is a mapping", wanted)
+            return self._fault(f"{subject} is a mapping", f"{wanted}{or_hold}")
         if isinstance(value, list):
             return self._fault(f"{subject} is a list", wanted)
         if isinstance(value, str):
             return self._of_text(expected, value)
         if isinstance(value, bool):
             return self._fault(f"{subject} is `{str(value).lower()}`", wanted)
+        message = f"{subject} is the number {value}"
+        if self.path == ("format",):
+            return self._fault(message, f"write {_either(list(map(str, expected.options)))}, or use a later loopdoc")
         if expected.title in _PARSERS:
-            return self._fault(f"{subject} is the number {value}, without a unit", wanted)
-        if "string" in expected.types and not expected.options:
-            return self._fault(f"{subject} is the number {value}", f'write `"{value}"` in quotes')
-        return self._fault(f"{subject} is the number {value}", wanted)
+            return self._fault(f"{message}, without a unit", wanted)
+        if expected.is_free_text:
+            return self._fault(message, f'write `"{value}"` in quotes')
+        return self._fault(message, wanted)
 
-    def _of_text(self, expected: _Expected, value: str) -> Fault:
+    def _of_text(self, expected: Expected, value: str) -> Fault:
         subject, wanted = self._subject(), _wanted(expected, value)
         if not value.strip():
             return self._fault(f"{subject} has no text", wanted)
-        if "number" in expected.types and _is_number(value):
-            return self._fault(f"{subject} is in quotes", f"write `{value.strip()}` without quotes")
-        if expected.title in _PARSERS:
-            try:
-                _PARSERS[expected.title](value)
-            except QuantityError as error:
-                reason, _, remedy = str(error).partition("; ")
-                or_hold = f", or {_HOLD}" if expected.may_be_held and "such as" in remedy else ""
-                return self._fault(
-                    f"{subject}: {' '.join(reason.split())}", f"{remedy}{or_hold}" if remedy else wanted
-                )
+        if "array" in expected.types and len(value) <= _SHOWN_CHARACTERS:
+            return self._fault(f"{subject} is not a list", f"write `{_flow([value])}`")
+        unquoted = "boolean" in expected.types and value in ("true", "false")
+        unquoted |= _is_number(value) and ("number" in expected.types or value in map(str, expected.options))
+        if unquoted:
+            return self._fault(f"{subject} is in quotes", f"write `{value}` without quotes")
+        if expected.title == "trip" and (sign := _SIGN.fullmatch(value)):
+            direction = "above" if value[0] in ">≥" else "below"
+            return self._fault(f"{subject} is `{_shown(value)}`", f"write `{direction} {_shown(sign[1])}`")
+        trip = re.match(r"(above|below) +", value) if expected.title == "trip" else None
+        word = trip[0] if trip else ""
+        parse = parse_quantity if trip else _PARSERS.get(expected.title)
+        try:
+            if parse:
+                parse(value[len(word) :])
+        except QuantityError as error:
+            return self._of_quantity(expected, word, error)
         return self._fault(f"{subject} is `{_shown(value)}`", wanted)
+
+    def _of_quantity(self, expected: Expected, word: str, error: QuantityError) -> Fault:
+        """The fault of a number with its unit, after a word such as `above`."""
+        reason, _, remedy = " ".join(str(error).split()).partition("; ")
+        if _SUCH_AS.search(remedy):
+            remedy = _SUCH_AS.sub(lambda _: _such_as(expected), remedy)
+            remedy += f", or {_HOLD}" if expected.may_be_held else ""
+        else:
+            remedy = _ANSWER.sub(rf"\1`{word}", remedy)
+        return self._fault(f"{self._subject()}: {reason}", remedy or _wanted(expected))
 
 
 # ---------------------------------------------------------------- words
 
 
-def _wanted(expected: _Expected, value: str = "") -> str:
+def _wanted(expected: Expected, value: str = "") -> str:
     """What to write at a place, near to the text that stands there."""
     options = [str(option) for option in expected.options]
-    if options and not expected.is_mapping:
-        near = (
-            get_close_matches(value[:_COMPARED_CHARACTERS].lower(), options, n=1)
-            if len(options) > _SHORT_LIST
-            else []
-        )
-        return f"write {_either(near or options)}"
     or_hold = f", or {_HOLD}" if expected.may_be_held else ""
+    if options and expected.is_mapping:
+        return f"write {_either(options)}, or a mapping such as `{_flow(expected.examples[-1])}`"
+    if options:
+        written = value[:_COMPARED_CHARACTERS].lower()
+        near = get_close_matches(written, options, n=1) if len(options) > _SHORT_LIST else []
+        return f"write {_either(near or options)}"
     if "boolean" in expected.types:
         return "write `true` or `false`"
     if "array" in expected.types:
-        return f"write a list, such as `{_flow(expected.example)}`{or_hold}"
-    if options:
-        return f"write {_either(options)}, or a mapping such as `{_flow(expected.schema['examples'][-1])}`"
+        return f"write a list, {_such_as(expected)}{or_hold}"
     if expected.is_mapping:
-        return f"write a mapping, such as `{_flow(expected.example)[1:-1]}`{or_hold}"
+        return f"write a mapping, {_such_as(expected)}{or_hold}"
     if "number" in expected.types:
-        return f"write a number without a unit, such as `{_flow(expected.example)}`{or_hold}"
+        return f"write a number without a unit, {_such_as(expected)}{or_hold}"
     title = expected.title
     article = "" if title == "text" else "an " if title[0] in "aeiou" else "a "
-    return f"write {article}{title} such as `{_flow(expected.example)}`{or_hold}"
+    return f"write {article}{title} {_such_as(expected)}{or_hold}"
+
+
+def _such_as(expected: Expected) -> str:
+    """The examples of the schema, as a register writes them after a key."""
+    shown = [
+        _flow(example)[1:-1] if isinstance(example, dict) and len(example) == 1 else _flow(example)
+        for example in expected.examples
+    ]
+    return f"such as {_either(shown)}"
+
+
+def _plain(written: str) -> str:
+    return written[:_COMPARED_CHARACTERS].strip().lower().replace("-", "_").replace(" ", "_")
 
 
 def _either(words: list[str]) -> str:
@@ -367,11 +344,7 @@ def _flow(value: Any) -> str:
         return "[" + ", ".join(map(_flow, value)) + "]"
     if isinstance(value, str):
         plain = not (_is_number(value) or _UNSAFE_START.match(value) or _UNSAFE_INSIDE.search(value))
-        return (
-            value
-            if plain and value not in ("true", "false", "null")
-            else json.dumps(value, ensure_ascii=False)
-        )
+        return value if plain and value not in ("true", "false", "null") else json.dumps(value, ensure_ascii=False)
     return json.dumps(value)
 
 
