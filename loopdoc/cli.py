@@ -48,7 +48,9 @@ def run(argv: Sequence[str], stdout: TextIO, stderr: TextIO) -> int:
 def _parser() -> argparse.ArgumentParser:
     parser = argparse.ArgumentParser(
         prog="loopdoc",
-        description="Checks a plant's loop register as a reviewer would, does the control calculations, and issues the documents.",
+        description=(
+            "Checks a plant's loop register as a reviewer would, does the control calculations, and issues the documents."
+        ),
     )
     parser.add_argument("--version", action="version", version=f"loopdoc {__version__}")
     commands = parser.add_subparsers(title="commands", required=True, metavar="COMMAND")

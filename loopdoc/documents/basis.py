@@ -22,7 +22,9 @@ class Basis:
     """Content of the register's files by name."""
     dynamics: Dynamics
 
-    def document(self, *, kind: str, code: str, title: str, supplementary_title: str, unit: str, serial: str) -> Document:
+    def document(
+        self, *, kind: str, code: str, title: str, supplementary_title: str, unit: str, serial: str
+    ) -> Document:
         """Title block of one document of this register."""
         return document(
             self.plant, self.result, self.sources,
