@@ -121,6 +121,14 @@ class Plant:
         )
 
     @cached_property
+    def links_to(self) -> dict[str, tuple[CascadeLink, ...]]:
+        """The links that end at each secondary, by its tag."""
+        found: dict[str, list[CascadeLink]] = {}
+        for link in self.links:
+            found.setdefault(link.secondary.tag, []).append(link)
+        return {tag: tuple(links) for tag, links in found.items()}
+
+    @cached_property
     def alarms(self) -> tuple[LoopAlarm, ...]:
         return tuple(LoopAlarm(loop, alarm) for loop in self.register.loops.values() for alarm in loop.alarms.values())
 
@@ -136,15 +144,20 @@ class Plant:
         return tuple(found)
 
     @cached_property
-    def loop_of_transmitter(self) -> dict[str, Loop]:
-        """The loop that each transmitter belongs to (the first, where several name it)."""
-        found: dict[str, Loop] = {}
+    def loops_on(self) -> dict[str, tuple[Loop, ...]]:
+        """The loops that measure with each transmitter, in the order of the register."""
+        found: dict[str, list[Loop]] = {}
         for loop in self.register.loops.values():
             measurement = known(loop.measurement)
             transmitter = known(measurement.transmitter) if measurement else None
             if transmitter:
-                found.setdefault(transmitter, loop)
-        return found
+                found.setdefault(transmitter, []).append(loop)
+        return {tag: tuple(loops) for tag, loops in found.items()}
+
+    @cached_property
+    def loop_of_transmitter(self) -> dict[str, Loop]:
+        """The loop that each transmitter belongs to (the first, where several name it)."""
+        return {tag: loops[0] for tag, loops in self.loops_on.items()}
 
     @cached_property
     def commanders(self) -> dict[str, tuple[str, ...]]:
@@ -247,7 +260,7 @@ class Plant:
 
     def primaries_of(self, tag: str) -> tuple[ControlledLoop, ...]:
         """The loops that command a loop, directly or through functions."""
-        return tuple(link.primary for link in self.links if link.secondary.tag == tag)
+        return tuple(link.primary for link in self.links_to.get(tag, ()))
 
     # -- the graph
 

@@ -4,17 +4,21 @@ from __future__ import annotations
 
 import datetime
 import os
-from collections.abc import Collection, Iterable
+from collections.abc import Collection, Iterable, Iterator
+from dataclasses import replace
+from typing import Any
 
 from loopdoc.engineering.pairing import Plant
-from loopdoc.register.model import Deviation, Register, known
-from loopdoc.register.place import Fault, Place
+from loopdoc.register.model import Deviation, known
+from loopdoc.register.place import Fault
 from loopdoc.rules.catalogue import RULES
 from loopdoc.rules.finding import CheckResult, Coverage, Finding, Level
 from loopdoc.rules.policy import limits_from
-from loopdoc.rules.rule import SUBJECTS, NotApplicable, NotChecked, Rule, tag_of
+from loopdoc.rules.rule import Draft, NotApplicable, NotChecked, Rule
+from loopdoc.rules.subjects import Faults, Scope, name_of, place_of, tag_of
 
 INTERNAL = "internal-error"
+"""The id of a finding that a rule failed: a defect of the program, which no deviation accepts."""
 
 
 def check(
@@ -23,45 +27,63 @@ def check(
     *,
     only: Collection[str] = (),
     today: datetime.date | None = None,
+    rules: tuple[Rule, ...] = RULES,
 ) -> CheckResult:
     """Check a plant by all rules, or by the ones named in ``only``.
 
     ``faults`` are what the reader of the text found; they become findings of the rule `schema`.
     """
     register = plant.register
-    limits = limits_from(register.policy)
+    scope = Scope(plant, limits_from(register.policy), _by_file(faults), tuple(rule.id for rule in rules))
     found: list[Finding] = []
     coverage: dict[str, Coverage] = {}
-    for rule in RULES:
-        if only and rule.id not in only:
-            continue
-        counts = coverage[rule.id] = Coverage()
-        for subject in SUBJECTS[rule.subject](plant):
-            try:
-                drafts = list(rule.function(subject, limits))
-            except NotApplicable:
-                continue
-            except NotChecked as lacking:
-                counts.not_checked += 1
-                counts.reasons[str(lacking)] += 1
-                counts.where.append((tag_of(subject), str(lacking)))
-                continue
-            except Exception as error:  # one broken rule must not silence the others
-                found.append(_internal_error(rule, tag_of(subject), error, register))
-                continue
-            counts.checked += 1
-            found.extend(Finding(rule.id, rule.level, d.tag, d.message, d.remedy, d.place, d.related) for d in drafts)
-    if not only or "schema" in only:
-        coverage["schema"] = Coverage(checked=len(register.files))
-        found.extend(
-            Finding("schema", Level.ERROR, _tag_of_fault(fault), fault.message, fault.remedy, fault.place) for fault in faults
-        )
+    for rule in rules:
+        if not only or rule.id in only:
+            coverage[rule.id] = Coverage()
+            found.extend(_findings(rule, scope, coverage[rule.id]))
     accepted, still_open = _accept(found, register.deviations, today or _today())
     return CheckResult(
         tuple(sorted(still_open, key=lambda finding: finding.order)),
         tuple(sorted(accepted, key=lambda finding: finding.order)),
         coverage,
     )
+
+
+def _findings(rule: Rule, scope: Scope, counts: Coverage) -> Iterator[Finding]:
+    """What one rule finds in the whole plant, counting what it checked and what it could not."""
+    try:
+        for subject in rule.visits(scope):
+            yield from _in_subject(rule, subject, scope, counts)
+    except Exception as error:  # one broken rule must not silence the others
+        yield _internal_error(rule, scope.plant, error, scope)
+
+
+def _in_subject(rule: Rule, subject: Any, scope: Scope, counts: Coverage) -> Iterator[Finding]:
+    try:
+        for found in rule.drafts(subject, scope):
+            yield _finding(rule, found)
+    except NotApplicable:
+        return
+    except NotChecked as lacking:
+        counts.not_checked += 1
+        counts.reasons[str(lacking)] += 1
+        counts.where.append((name_of(subject), str(lacking)))
+        return
+    except Exception as error:
+        yield _internal_error(rule, subject, error, scope)
+        return
+    counts.checked += 1
+
+
+def _finding(rule: Rule, found: Draft) -> Finding:
+    return Finding(rule.id, rule.level, found.tag, found.message, found.remedy, found.place, found.related)
+
+
+def _by_file(faults: Iterable[Fault]) -> Faults:
+    by_file: dict[str, list[Fault]] = {}
+    for fault in faults:
+        by_file.setdefault(fault.place.file, []).append(fault)
+    return Faults({name: tuple(found) for name, found in by_file.items()})
 
 
 def _accept(
@@ -76,15 +98,10 @@ def _accept(
     accepted, still_open = [], []
     for finding in findings:
         deviation = in_force.get((finding.rule, finding.tag))
-        if deviation is None:
+        if deviation is None or finding.rule == INTERNAL:
             still_open.append(finding)
         else:
-            accepted.append(
-                Finding(
-                    finding.rule, finding.level, finding.tag, finding.message, finding.remedy, finding.place,
-                    finding.related, deviation,
-                )
-            )  # fmt: skip
+            accepted.append(replace(finding, accepted_by=deviation))
     return accepted, still_open
 
 
@@ -98,23 +115,19 @@ def _date(written: str | None) -> datetime.date | None:
 def _today() -> datetime.date:
     """Today; or the day of SOURCE_DATE_EPOCH, so that a document can be made again as it was."""
     epoch = os.environ.get("SOURCE_DATE_EPOCH", "")
-    if epoch.isdigit():
+    try:
         return datetime.datetime.fromtimestamp(int(epoch), datetime.UTC).date()
-    return datetime.date.today()
+    except (ValueError, OverflowError, OSError):  # not set, or no date
+        return datetime.date.today()
 
 
-def _tag_of_fault(fault: Fault) -> str:
-    steps = [step.replace("~1", "/").replace("~0", "~") for step in fault.pointer.split("/")[1:]]
-    return steps[1] if len(steps) > 1 else steps[0] if steps else "register"
-
-
-def _internal_error(rule: Rule, tag: str, error: Exception, register: Register) -> Finding:
-    where = register.defined_at(tag) or Place(register.root.name, 1, 1)
+def _internal_error(rule: Rule, subject: Any, error: Exception, scope: Scope) -> Finding:
+    told = " ".join(f"{type(error).__name__}: {error}".split())
     return Finding(
         INTERNAL,
         Level.ERROR,
-        tag,
-        f"the rule `{rule.id}` failed here ({type(error).__name__}: {error}); it is not checked",
+        tag_of(subject),
+        f"the rule `{rule.id}` failed here ({told}); it is not checked",
         "report this as a defect of loopdoc, with the lines around this place",
-        where,
+        place_of(subject, scope.plant),
     )

@@ -5,13 +5,13 @@ from __future__ import annotations
 import inspect
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass
-from typing import Any, NoReturn, TypeVar, get_type_hints
+from types import UnionType
+from typing import Any, NoReturn, TypeVar, get_args, get_origin, get_type_hints
 
-from loopdoc.engineering.pairing import CascadeLink, ControlledLoop, LoopAlarm, Plant, Trip
-from loopdoc.register.model import FinalElement, Function, Hold, Interlock, Loop, Origin
+from loopdoc.register.model import Hold, Origin
 from loopdoc.register.place import Place
 from loopdoc.rules.finding import Level, Related
-from loopdoc.rules.policy import Limits
+from loopdoc.rules.subjects import BESIDES, SUBJECTS, Scope
 
 T = TypeVar("T")
 
@@ -30,7 +30,10 @@ class Draft:
 
 
 class NotChecked(Exception):
-    """A rule lacks a value that it needs; the check counts it and says why."""
+    """A rule lacks a value that it needs; the check counts it and says why.
+
+    What the rule has found before stands: a rule over several values judges the known ones first.
+    """
 
 
 class NotApplicable(Exception):
@@ -80,27 +83,43 @@ class Rule:
     """The text under each of `HEADINGS`."""
     source: str
     since: str
-    subject: type
+    subjects: tuple[type, ...]
     """What the rule visits, from the type of its first parameter."""
-    function: Callable[[Any, Limits], Iterator[Draft]]
+    besides: tuple[type, ...]
+    """What else the rule asks for, from the types of its further parameters."""
+    function: Callable[..., Iterator[Draft]]
+
+    def visits(self, scope: Scope) -> Iterator[Any]:
+        """Every subject of one check that the rule looks at."""
+        for subject in self.subjects:
+            yield from SUBJECTS[subject](scope)
+
+    def drafts(self, subject: Any, scope: Scope) -> Iterator[Draft]:
+        """What the rule finds in one subject."""
+        return self.function(subject, *(BESIDES[kind](scope) for kind in self.besides))
 
 
 def rule(*, level: Level, source: str, since: str = "0.1") -> Callable[[Callable[..., Iterator[Draft]]], Rule]:
-    """Make a rule of a function ``(subject, limits) -> Iterator[Draft]``.
+    """Make a rule of a function ``(subject, ...) -> Iterator[Draft]``.
 
-    The id is the function's name in kebab case; the subject is the type of the first parameter; the
-    docstring's first paragraph states the fault and its sections explain it.
+    The id is the function's name in kebab case; the subject is the type of the first parameter (of each
+    member of a union), and further parameters get what their type names; the docstring's first paragraph
+    states the fault and its sections explain it.
     """
 
     def make(function: Callable[..., Iterator[Draft]]) -> Rule:
         name = function.__name__
         lines = inspect.cleandoc(function.__doc__ or "").split("\n")
         statement, sections = _docstring(lines, name)
-        first = next(iter(inspect.signature(function).parameters))
-        subject = get_type_hints(function)[first]
-        if subject not in SUBJECTS:
-            raise TypeError(f"{name}: no rule can visit a {subject}")
-        return Rule(name.replace("_", "-"), level, statement, sections, source, since, subject, function)
+        hints = get_type_hints(function)
+        first, *further = (hints[parameter] for parameter in inspect.signature(function).parameters)
+        subjects = get_args(first) if get_origin(first) is UnionType else (first,)
+        for kind, known in (*((kind, SUBJECTS) for kind in subjects), *((kind, BESIDES) for kind in further)):
+            if kind not in known:
+                raise TypeError(f"{name}: no rule can ask for a {kind}")
+        return Rule(
+            name.replace("_", "-"), level, statement, sections, source, since, subjects, tuple(further), function
+        )
 
     return make
 
@@ -119,32 +138,3 @@ def _docstring(lines: list[str], name: str) -> tuple[str, dict[str, str]]:
         raise TypeError(f"{name}: the docstring needs the headings {', '.join(HEADINGS)}, in this order")
     joined = {heading: " ".join(part for part in text if part) for heading, text in sections.items()}
     return " ".join(part for part in statement if part), joined
-
-
-SUBJECTS: dict[type, Callable[[Plant], tuple[Any, ...]]] = {
-    Plant: lambda plant: (plant,),
-    Loop: lambda plant: tuple(plant.register.loops.values()),
-    ControlledLoop: lambda plant: tuple(plant.controlled.values()),
-    CascadeLink: lambda plant: plant.links,
-    LoopAlarm: lambda plant: plant.alarms,
-    FinalElement: lambda plant: tuple(plant.register.final_elements.values()),
-    Function: lambda plant: tuple(plant.register.functions.values()),
-    Interlock: lambda plant: tuple(plant.register.interlocks.values()),
-    Trip: lambda plant: plant.trips,
-}
-"""What a rule may visit, and how it is found in a plant."""
-
-
-def tag_of(subject: Any) -> str:
-    """The tag under which a check that was not made is listed."""
-    match subject:
-        case Plant():
-            return "register"
-        case CascadeLink():
-            return f"{subject.primary.tag} to {subject.secondary.tag}"
-        case LoopAlarm():
-            return f"{subject.loop.tag} {subject.alarm.kind.replace('_', '-')} alarm"
-        case Trip():
-            return f"{subject.interlock.tag} {subject.initiator.tag}"
-        case _:
-            return str(subject.tag)

@@ -1,0 +1,203 @@
+"""Rules on controller action and fail position."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+
+from loopdoc.engineering.direction import PathSign, Undecided, path_sign
+from loopdoc.engineering.pairing import ControlledLoop
+from loopdoc.register.model import FinalElement, Process, known
+from loopdoc.register.place import Place
+from loopdoc.rules.finding import Level
+from loopdoc.rules.rule import Draft, draft, need, not_checked, only_if, rule
+
+_MACHINES = ("variable-speed drive", "motor", "heater bank")
+"""Final elements that stop where a valve closes."""
+
+
+@rule(level=Level.ERROR, source="ISA-TR5.9-2023, direct and reverse action (from memory); sign algebra")
+def action_wrong(controlled: ControlledLoop) -> Iterator[Draft]:
+    """A controller acts in the direction that makes its error larger.
+
+    Why:
+        With the wrong action a disturbance is driven on instead of back: the output runs to its limit and
+        stays there. It is the first fault that a loop shows when it is put into automatic.
+    Breaks:
+        A level controller on the outlet valve (opens on a rising signal; the level falls when it opens) with
+        `action: reverse`.
+    Holds:
+        The product of the signs along the path is positive with reverse action and negative with direct
+        action: output block (reversed -1), final element (opens on falling signal -1), process effect
+        (falls -1). A primary's path begins at its secondary's measurement, whatever the valve below does.
+    What this check cannot see:
+        An effect that is stated wrongly, or a process whose effect turns round within the operating band.
+    """
+    action = need(controlled.controller.action, "the action")
+    paths = _paths(controlled)
+    for _, path in paths:
+        if isinstance(path, Undecided):
+            not_checked("the direction of the path does not follow from the register")
+    decided = [path for _, path in paths if isinstance(path, PathSign)]
+    if len({path.sign for path in decided}) > 1:
+        not_checked("the branches of a split range disagree")
+    path = decided[0]
+    if action != path.action:
+        yield draft(
+            controlled.tag,
+            f"{controlled.tag} is {action} acting, but its path needs {path.action} action: {path}, "
+            f"together {path.sign:+d}",
+            remedy=f"write `action: {path.action}`, or correct the step that is not so",
+            at=controlled.controller.origin.place("action"),
+            related=tuple(_places(controlled)),
+        )
+
+
+@rule(level=Level.WARNING, source="sign algebra; common practice")
+def action_undecided(controlled: ControlledLoop) -> Iterator[Draft]:
+    """The register does not say enough to tell which action a controller needs, or contradicts itself.
+
+    Why:
+        Nobody can then check the action on paper, and a wrong one is found only when the loop is put into
+        automatic.
+    Breaks:
+        No `process`, an `effect` on hold, `effect: rises` with a negative gain, a final element without
+        `opens_on`, the two branches of a split range with opposite products.
+    Holds:
+        Each step of each path has its sign, and all paths of one controller have the same.
+    What this check cannot see:
+        Whether the signs are true.
+    """
+    paths = _paths(controlled)
+    told = set()
+    for place, path in paths:
+        if isinstance(path, Undecided) and path.reason not in told:
+            told.add(path.reason)
+            yield draft(
+                controlled.tag,
+                f"the action of {controlled.tag} cannot be told: {path.reason}",
+                remedy="say under `process` whether the measurement rises or falls, and on which signal each "
+                "final element opens",
+                at=place,
+            )
+    decided = [path for _, path in paths if isinstance(path, PathSign)]
+    if len({path.sign for path in decided}) > 1:
+        process = known(controlled.loop.process)
+        routes = zip(controlled.routes, (path for _, path in paths), strict=True)
+        each = "; ".join(
+            f"by {route.end.tag} {path.action}: {path}" for route, path in routes if isinstance(path, PathSign)
+        )
+        yield draft(
+            controlled.tag,
+            f"no action of {controlled.tag} serves all that it moves ({each})",
+            remedy="turn round the range of one branch (`50 to 0 %`), or correct the step that is not so",
+            at=process.origin.place("branches") if process else controlled.loop.origin,
+            related=tuple(_places(controlled)),
+        )
+
+
+def _paths(controlled: ControlledLoop) -> list[tuple[Place, PathSign | Undecided]]:
+    """The sign of each route, and the place of what decides it or is lacking."""
+    if not controlled.routes:
+        need(controlled.controller.output, "the output")
+        not_checked("the output leads to nothing that the register knows")
+    found = []
+    for route in controlled.routes:
+        path = path_sign(controlled, route)
+        lacks_element = isinstance(route.end, FinalElement) and known(route.end.opens_on) is None
+        if lacks_element:
+            place = route.end.origin.place("opens_on")
+        else:
+            branch = ("branches", route.end.tag) if _has_branches(controlled) else ()
+            place = controlled.loop.origin.place("process", *branch, "effect")
+        found.append((place, path))
+    return found
+
+
+def _has_branches(controlled: ControlledLoop) -> bool:
+    process = known(controlled.loop.process)
+    return isinstance(process, Process) and bool(process.branches)
+
+
+def _places(controlled: ControlledLoop) -> Iterator[tuple[Place, str]]:
+    """Where the signs of a controller's paths stand."""
+    for route in controlled.routes:
+        end = route.end
+        if isinstance(end, FinalElement):
+            yield end.origin.place("opens_on"), f"{end.tag} opens on {known(end.opens_on)}"
+            if known(end.output_block) == "reversed":
+                yield end.origin.place("output_block"), f"the output block of {end.tag} is reversed"
+        branch = ("branches", end.tag) if _has_branches(controlled) else ()
+        yield controlled.loop.origin.place("process", *branch, "effect"), f"the effect of {end.tag}"
+
+
+# ---------------------------------------------------------------- fail positions
+
+
+@rule(level=Level.ERROR, source="common practice; the hazard study states the safe position")
+def fail_position_unsafe(element: FinalElement) -> Iterator[Draft]:
+    """A final element does not fail to where the hazard study wants it.
+
+    Why:
+        When the air or the power is lost, every final element of the plant goes to its fail position at
+        once. One that goes elsewhere than the study supposed takes a layer of protection away.
+    Breaks:
+        `fails: open` with `safe: closed`; `fails: last` with `safe: closed`: the valve stays where it was,
+        which may be open.
+    Holds:
+        `fails` and `safe` say the same. For a drive, a motor or a heater bank, closed and stopped are one
+        position.
+    What this check cannot see:
+        Whether the spring is built as written, and what the hazard study says.
+    """
+    fails, safe = need(element.fails, "the fail position"), need(element.safe, "the safe position")
+    if _position(element, fails) != _position(element, safe):
+        loss = "power" if known(element.kind) in _MACHINES else "air or power"
+        where = "stays where it is" if fails == "last" else f"goes {fails}" if fails != "stopped" else "stops"
+        yield draft(
+            element.tag,
+            f"{element.tag} {where} on loss of {loss}, but its safe position is {safe}",
+            remedy=f"write `fails: {safe}` and order it so, or bring the position before the hazard study",
+            at=element.origin.place("fails"),
+            related=((element.origin.place("safe"), f"the safe position, {safe}"),),
+        )
+
+
+def _position(element: FinalElement, position: str) -> str:
+    return "stopped" if position == "closed" and known(element.kind) in _MACHINES else position
+
+
+@rule(
+    level=Level.ERROR, source="common practice: a spring closes a valve that air opens, and opens one that air closes"
+)
+def fail_position_signal_mismatch(element: FinalElement) -> Iterator[Draft]:
+    """A spring-return final element goes one way without signal and the other way without air.
+
+    Why:
+        The spring decides both. A valve that opens on a rising signal is shut at the low end of the signal,
+        where a lost signal puts it, and shut without air; if it is said to fail open, either the direction
+        or the fail position is wrong, and with it the action of its loop or the failure study.
+    Breaks:
+        `opens_on: rising signal` with `fails: open`; `opens_on: falling signal` with `fails: closed`.
+    Holds:
+        What opens on a rising signal fails closed, what opens on a falling signal fails open. A reversed
+        output block lies before the signal and changes nothing here. `fails: last`, drives, motors and
+        heater banks are left out.
+    What this check cannot see:
+        A positioner set to act in reverse, or a double-acting actuator with a trip valve and an air tank:
+        there the two losses may well differ; say so in a deviation.
+    """
+    only_if(known(element.kind) not in _MACHINES)
+    fails = need(element.fails, "the fail position")
+    only_if(fails in ("closed", "open"))
+    opens_on = need(element.opens_on, "the signal on which it opens")
+    without_signal = "closed" if opens_on == "rising signal" else "open"
+    if fails != without_signal:
+        yield draft(
+            element.tag,
+            f"{element.tag} opens on a {opens_on}, so that it goes {without_signal} when the signal is lost, "
+            f"but it fails {fails} when the air is lost",
+            remedy=f"write `fails: {without_signal}`, or `opens_on: "
+            f"{'falling' if opens_on == 'rising signal' else 'rising'} signal`, whichever is not so",
+            at=element.origin.place("fails"),
+            related=((element.origin.place("opens_on"), f"opens on {opens_on}"),),
+        )

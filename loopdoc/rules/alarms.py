@@ -1,0 +1,97 @@
+"""Rules on alarms."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from itertools import pairwise
+
+from loopdoc.engineering.pairing import LoopAlarm
+from loopdoc.register.model import ALARM_ORDER, Loop, known
+from loopdoc.rules.finding import Level
+from loopdoc.rules.rule import Draft, draft, need, not_checked, only_if, rule
+from loopdoc.rules.values import above, amount, below, equal, in_both, measured_range, range_place, reading
+
+_NAMES = {"low_low": "low-low", "low": "low", "high": "high", "high_high": "high-high", "deviation": "deviation"}
+
+
+@rule(level=Level.ERROR, source="common practice; alarm types as in ANSI/ISA-18.2-2016 (from memory)")
+def alarm_order(loop: Loop) -> Iterator[Draft]:
+    """Two alarms on one measurement do not come in the order of their names.
+
+    Why:
+        The operator reads the high-high alarm as the worse one. If it comes first, or together with the high
+        alarm, the time for the first response is gone before it is asked for.
+    Breaks:
+        `high: {limit: 94 degC}` with `high_high: {limit: 92 degC}`, or both at 94 degC.
+    Holds:
+        low-low is below low, low below high, high below high-high, whichever of them there are.
+    What this check cannot see:
+        Whether the distance between two alarms leaves time to act.
+    """
+    alarms = [loop.alarms[kind] for kind in ALARM_ORDER if kind in loop.alarms]
+    only_if(len(alarms) > 1)
+    limits = [(alarm, limit) for alarm in alarms if (limit := known(alarm.limit)) is not None]
+    for (lower, low), (upper, high) in pairwise(limits):
+        value = reading(low, high.unit, f"the limit of the {_NAMES[lower.kind]} alarm")
+        if below(value, high.value):
+            continue
+        relation = "equals" if equal(value, high.value) else "is below"
+        yield draft(
+            loop.tag,
+            f"the {_NAMES[upper.kind]} alarm at {high} {relation} "
+            f"the {_NAMES[lower.kind]} alarm at {in_both(low, high.unit)}",
+            remedy=f"set the {_NAMES[upper.kind]} alarm above the {_NAMES[lower.kind]} alarm, or leave one of them out",
+            at=upper.origin.place("limit"),
+            related=((lower.origin.place("limit"), f"the {_NAMES[lower.kind]} alarm, {low}"),),
+        )
+    for alarm in alarms:
+        need(alarm.limit, f"the limit of the {_NAMES[alarm.kind]} alarm")
+
+
+@rule(level=Level.ERROR, source="common practice; a signal that saturates cannot pass a limit at its end")
+def alarm_outside_range(subject: LoopAlarm) -> Iterator[Draft]:
+    """An alarm limit lies outside the measurement range or at its very end.
+
+    Why:
+        The signal cannot be relied upon beyond the ends of its range: a limit there is never passed, or is
+        passed for ever. The alarm stands in the schedule and does not sound in the plant.
+    Breaks:
+        A high alarm at 125 degC, or at 120 degC exactly, on a range of 60 to 120 degC. A low alarm at
+        0 t/h on 0 to 15 t/h. A deviation alarm of the whole span or more.
+    Holds:
+        The limit lies inside the range and at neither end; the limit of a deviation alarm, a difference,
+        is above nothing and below the span.
+    What this check cannot see:
+        A transmitter that reads on beyond its range: between 20 and 20.5 mA (NAMUR NE 43) an alarm at the
+        very end may sound, but nobody should depend on it.
+    """
+    loop, alarm = subject.loop, subject.alarm
+    limit = need(alarm.limit, "the alarm limit")
+    band = measured_range(loop)
+    name = _NAMES[alarm.kind]
+    related = ((range_place(loop), f"the range, {band}"),)
+    if alarm.kind == "deviation":
+        if limit.unit.difference_kind != band.unit.difference_kind:
+            not_checked("the alarm limit has a unit of another kind")
+        size = abs(limit.difference_in(band.unit.symbol))
+        if size == 0 or not below(size, band.span):
+            fault = "always sounds" if size == 0 else f"can never sound: the span is {amount(band.span, band.unit)}"
+            yield draft(
+                loop.tag,
+                f"the deviation alarm at {limit} {fault}",
+                remedy="set the limit to a part of the span",
+                at=alarm.origin.place("limit"),
+                related=related,
+            )
+        return
+    value = reading(limit, band.unit, "the alarm limit")
+    if above(value, band.low) and below(value, band.high):
+        return
+    where = "outside" if below(value, band.low) or above(value, band.high) else "at the very end of"
+    yield draft(
+        loop.tag,
+        f"the {name} alarm at {in_both(limit, band.unit)} lies {where} the measurement range, {band}",
+        remedy="set the limit inside the range, or give the transmitter a range that reaches beyond it",
+        at=alarm.origin.place("limit"),
+        related=related,
+    )

@@ -1,0 +1,105 @@
+"""Rules on interlocks and their trip limits."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+
+from loopdoc.engineering.pairing import Plant, Trip
+from loopdoc.register.model import Alarm, Loop, known
+from loopdoc.register.units import same_kind
+from loopdoc.rules.finding import Level
+from loopdoc.rules.rule import Draft, draft, need, only_if, rule
+from loopdoc.rules.values import above, below, equal, in_both, measured_range, range_place, reading
+
+
+@rule(
+    level=Level.ERROR, source="common practice; ANSI/ISA-18.2-2016: an alarm asks for a response in time (from memory)"
+)
+def trip_before_alarm(trip: Trip, plant: Plant) -> Iterator[Draft]:
+    """The interlock trips before the alarm that should have warned of it.
+
+    Why:
+        The operator is called when there is nothing left to do: the response that the alarm schedule
+        promises cannot be given.
+    Breaks:
+        A trip above 1.6 barg with the high alarm on the same transmitter at 1.7 barg.
+    Holds:
+        Of a trip above a limit, the high and high-high alarms on the same transmitter lie below that limit;
+        of a trip below a limit, the low and low-low alarms lie above it. A high-high (low-low) alarm exactly
+        at the limit holds where another alarm comes before it: it then tells that the trip has come.
+    What this check cannot see:
+        Alarms on another transmitter of the same vessel, and how long the process takes from alarm to trip.
+    """
+    direction = need(trip.initiator.direction, "the direction of the trip")
+    kinds = ("high", "high_high") if direction == "above" else ("low", "low_low")
+    alarms = [(loop, loop.alarms[kind]) for loop in _loops_on(trip, plant) for kind in kinds if kind in loop.alarms]
+    only_if(alarms)
+    limit = need(trip.initiator.limit, "the trip limit")
+    comes_before = above if direction == "below" else below
+    values = [
+        (loop, alarm, written, written.to(limit.unit.symbol))
+        for loop, alarm in alarms
+        if (written := known(alarm.limit)) is not None and same_kind(written.unit, limit.unit)
+    ]
+    warned = any(comes_before(value, limit.value) for *_, value in values)
+    for loop, alarm, written, value in values:
+        at_the_trip = equal(value, limit.value)
+        if comes_before(value, limit.value) or (at_the_trip and warned and alarm.kind in ("high_high", "low_low")):
+            continue
+        name = alarm.kind.replace("_", "-")
+        when = "together with" if at_the_trip else "after"
+        yield draft(
+            loop.tag,
+            f"the {name} alarm of {loop.tag} at {in_both(written, limit.unit)} comes {when} "
+            f"the trip of {trip.interlock.tag} {direction} {limit}",
+            remedy=f"set the alarm {'below' if direction == 'above' else 'above'} {limit}, with time to act in between",
+            at=alarm.origin.place("limit"),
+            related=((trip.initiator.origin.place("trips"), f"{trip.interlock.tag} trips {direction} {limit}"),),
+        )
+    for _, alarm in alarms:
+        _comparable(alarm, trip)
+
+
+def _comparable(alarm: Alarm, trip: Trip) -> None:
+    limit = need(alarm.limit, "the alarm limit")
+    reading(limit, need(trip.initiator.limit, "the trip limit").unit, "the alarm limit")
+
+
+def _loops_on(trip: Trip, plant: Plant) -> tuple[Loop, ...]:
+    """Every loop that measures with the transmitter of the trip."""
+    transmitter = known(trip.measurement.transmitter) if trip.measurement else None
+    sharing = plant.loops_on.get(transmitter, ()) if transmitter else ()
+    return sharing or ((trip.loop,) if trip.loop else ())
+
+
+@rule(level=Level.ERROR, source="common practice; a signal that saturates cannot pass a limit at its end")
+def trip_outside_range(trip: Trip) -> Iterator[Draft]:
+    """A trip limit lies outside the measurement range or at its very end.
+
+    Why:
+        The signal stands still at the end of its range, so the limit is never passed: the interlock is
+        drawn, tested on paper and blind.
+    Breaks:
+        A trip above 2.5 barg, or above 3 barg, on a range of 0 to 2.5 barg.
+    Holds:
+        The limit lies inside the range and at neither end.
+    What this check cannot see:
+        Whether the transmitter is accurate enough near the end of its range.
+    """
+    only_if(trip.measurement is not None)
+    owner = trip.instrument or trip.loop
+    assert owner is not None
+    limit = need(trip.initiator.limit, "the trip limit")
+    band = measured_range(owner)
+    value = reading(limit, band.unit, "the trip limit")
+    if above(value, band.low) and below(value, band.high):
+        return
+    where = "outside" if below(value, band.low) or above(value, band.high) else "at the very end of"
+    yield draft(
+        trip.interlock.tag,
+        f"{trip.interlock.tag} trips {known(trip.initiator.direction)} {in_both(limit, band.unit)}, "
+        f"{where} the range of {trip.initiator.tag}, {band}",
+        remedy="set the limit inside the range, or give the transmitter a range that reaches beyond it",
+        at=trip.initiator.origin.place("trips"),
+        related=((range_place(owner), f"the range of {trip.initiator.tag}, {band}"),),
+    )
