@@ -130,7 +130,7 @@ _QUANTITY = re.compile(rf"({_NUMBER}) +([^ ]+)")
 _RANGE = re.compile(rf"({_NUMBER}) +to +({_NUMBER}) +([^ ]+)")
 _NUMBER_RANGE = re.compile(rf"({_NUMBER}) +to +({_NUMBER})")
 _GAIN = re.compile(rf"({_NUMBER}) +([^ ]+) +per +([^ ]+)")
-LONGEST_TEXT = 60
+LONGEST_TEXT = 80
 """Characters; no value with its units needs more, and a longer text is not searched for a remedy."""
 _REMEMBERED = 1 << 17  # distinct texts; ten thousand loops hold about 98,000
 
