@@ -126,7 +126,8 @@ def static_gains(levels: Sequence[LevelArrays]) -> list[tuple[IntArray, FloatArr
         leading = np.where(integral, gain * level.repeats_per_s[:, 0], gain)
         found.append((poles, leading))
         weight = level.setpoint_weight[:, 0]
-        settled = np.where(level.integrating[:, 0], weight, weight * gain / (1.0 + gain))
+        with np.errstate(divide="ignore", invalid="ignore"):
+            settled = np.where(level.integrating[:, 0], weight, weight * gain / (1.0 + gain))
         below = np.where(integral, 1.0, settled)
     return found
 
@@ -187,10 +188,8 @@ def _frequency_grid(levels: Sequence[LevelArrays]) -> FloatArray:
         turning = np.maximum(end - start, 0.0) * delay / _DEAD_TIME_STEP
         count = math.ceil(float(turning.max())) + 1
         if count > 1:
-            start, end = (
-                np.where(start > 0.0, start, low),
-                np.where(end > start, end, np.where(start > 0.0, start, low)),
-            )
+            start = np.where(start > 0.0, start, low)
+            end = np.maximum(start, end)
             parts.append(start[:, None] + (end - start)[:, None] * np.linspace(0.0, 1.0, count))
     return np.sort(np.concatenate(parts, axis=1), axis=1)
 
@@ -251,6 +250,8 @@ class Survey:
         self.levels = levels
         self.w = _frequency_grid(levels)
         self.loops = open_loops(levels, self.w)
+        # So far out that only what never rolls off is left; several points, as dead time turns it.
+        self.far = open_loops(levels, 1e6 * self.w[:, -1:] * np.linspace(1.0, 2.0, 16))
         # A lightly damped inner loop is a resonance in every loop around it, narrower than the grid.
         for level in range(len(levels) - 1):
             self._resolve_resonance(level)
@@ -339,10 +340,12 @@ class Survey:
         return width
 
     def peak(self, level: int, *, complementary: bool) -> FloatArray:
-        """(n,) largest |1/(1+L)| or |L/(1+L)| = |1/(1+1/L)| between the ends of the grid."""
-        curve = 1.0 / self.loops[level] if complementary else self.loops[level]
+        """(n,) largest |1/(1+L)| or |L/(1+L)| = |1/(1+1/L)| over the frequencies above zero."""
+        curve, far = self.loops[level], self.far[level]
+        if complementary:
+            curve, far = 1.0 / curve, 1.0 / far
         distance = np.abs(1.0 + curve)
-        nearest = distance.min(axis=1)
+        nearest = np.minimum(distance.min(axis=1), np.abs(1.0 + far).min(axis=1))
         inside = (distance[:, 1:-1] <= distance[:, :-2]) & (distance[:, 1:-1] < distance[:, 2:])
         # Between grid points the curve can come nearer than they do by half a step of it at most.
         step = np.abs(curve[:, 1:] - curve[:, :-1])
@@ -375,8 +378,7 @@ class Survey:
         encircling = crossed.loop.real < -1.0
         np.add.at(turns, crossed.row[encircling], direction[encircling])
         delay = np.sum([one.delay_s[:, 0] for one in self.levels[: level + 1]], axis=0)
-        far = 1e6 * self.w[:, -1:] * np.linspace(1.0, 2.0, 16)
-        far_gain = np.abs(open_loops(self.levels, far)[level]).max(axis=1)
+        far_gain = np.abs(self.far[level]).max(axis=1)
         end = np.where((far_gain > _ROLLED_OFF) & (delay == 0.0), np.angle(1.0 + loop[:, -1]), 0.0)
         change = end - np.angle(1.0 + loop[:, 0]) + 2.0 * math.pi * turns
         count = np.maximum(np.round(below + poles / 2.0 - change / math.pi), 0.0)
