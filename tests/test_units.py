@@ -286,6 +286,7 @@ def test_published_conversions(value, source, target, published, figures):
     ("value", "source", "target", "expected"),
     [
         (32.0, "degF", "degC", 0.0),
+        (140.0, "degF", "degC", 60.0),
         (212.0, "degF", "degC", 100.0),
         (100.0, "degC", "degF", 212.0),
         (-40.0, "degC", "degF", -40.0),

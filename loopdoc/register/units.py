@@ -334,7 +334,7 @@ def _point_terms(source: str, target: str) -> tuple[float, float, float, float]:
     constant = (source_zero - target_zero) / target_factor
     shift = constant * target_factor / source_factor
     multiplier, divisor = _difference_terms(source, target)
-    # Add on the side where the zero is a plain decimal (32 degF, not 17.77... degC): 212 degF are 100 degC.
+    # Add on the side where the zero is a plain decimal (32 degF, not 17.77... degC): 140 degF are 60 degC.
     if 10**6 % shift.denominator == 0:
         return float(shift), multiplier, divisor, 0.0
     return 0.0, multiplier, divisor, float(constant)
