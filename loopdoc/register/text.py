@@ -21,14 +21,19 @@ from loopdoc.register.place import Fault, Place
 MAX_FILE_BYTES = 32 * 1024 * 1024
 MAX_DEPTH = 40
 MAX_SCALAR_CHARACTERS = 20_000
+_SHOWN_CHARACTERS = 40
 
 # What a text may not carry: control characters (a terminal would obey them), bidirectional marks (a reviewer
-# would see another order than the program) and lone surrogates (no file can hold them).
-_FORBIDDEN = re.compile("[\x00-\x08\x0b-\x1f\x7f-\x9f\u200e\u200f\u202a-\u202e\u2066-\u2069\ud800-\udfff\ufeff]")
+# would see another order than the program), line and paragraph separators (the parser breaks the line there,
+# so that a comment could hide a key, and an editor does not) and what no UTF-8 text can hold.
+_FORBIDDEN = re.compile(
+    "[\x00-\x08\x0b-\x1f\x7f-\x9f\u061c\u200e\u200f\u2028-\u202e\u2066-\u2069\ud800-\udfff\ufeff\ufffe\uffff]"
+)
 _INTEGER = re.compile(r"[-+]?[0-9]{1,18}")
-_LEADING_ZERO = re.compile(r"[-+]?0[0-9]+")
+_LEADING_ZERO = re.compile(r"[-+]?0[0-9]+(\.[0-9]*)?([eE][-+]?[0-9]+)?")
 _FLOAT = re.compile(r"[-+]?(\.[0-9]+|[0-9]+(\.[0-9]*)?)([eE][-+]?[0-9]{1,3})?")
 _NOT_FINITE = re.compile(r"[-+]?\.(inf|Inf|INF)|\.(nan|NaN|NAN)")
+_OPENED = re.compile("flow (mapping|sequence)|quoted scalar")
 _WORDS: dict[str, bool | None] = {
     "null": None, "Null": None, "NULL": None, "~": None, "": None,
     "true": True, "True": True, "TRUE": True, "false": False, "False": False, "FALSE": False,
@@ -96,16 +101,13 @@ def read_text(content: bytes, name: str) -> TextFile | Fault:
     try:
         text = content.decode("utf-8-sig")
     except UnicodeDecodeError as error:
-        before = content[: error.start]
-        line = before.count(b"\n") + 1
-        column = error.start - (before.rfind(b"\n") + 1) + 1
-        return fault(line, column, "this is not UTF-8 text", "save the file as plain text in UTF-8")
-    forbidden = _FORBIDDEN.search(text.replace("\r\n", "\n"))
+        before_text = error.object[: error.start].decode("utf-8")
+        return fault(*_end(before_text), "this is not UTF-8 text", "save the file as plain text in UTF-8")
+    plain = text.replace("\r\n", "\n")
+    forbidden = _FORBIDDEN.search(plain)
     if forbidden:
-        before_text = text.replace("\r\n", "\n")[: forbidden.start()]
         return fault(
-            before_text.count("\n") + 1,
-            len(before_text) - (before_text.rfind("\n") + 1) + 1,
+            *_end(plain[: forbidden.start()]),
             f"a control character (U+{ord(forbidden.group()):04X}) stands in the text",
             "delete the character",
         )
@@ -115,10 +117,23 @@ def read_text(content: bytes, name: str) -> TextFile | Fault:
         return fault(refused.line, refused.column, refused.message, refused.remedy)
     except yaml.MarkedYAMLError as error:
         mark = error.problem_mark or error.context_mark
+        opened = error.context_mark
+        # An open bracket or quote shows only further down; what must be mended is where it was opened.
+        if opened and mark and opened.line < mark.line and _OPENED.search(error.context or ""):
+            mark = opened
         line, column = (mark.line + 1, mark.column + 1) if mark else (1, 1)
         return fault(line, column, *_in_trade_words(error, text, line, column))
     except yaml.YAMLError:
         return fault(1, 1, "this is not YAML text", "save the file as plain text in UTF-8")
+
+
+def _end(before: str) -> tuple[int, int]:
+    """Line and column just after a text."""
+    return before.count("\n") + 1, len(before) - (before.rfind("\n") + 1) + 1
+
+
+def _short(written: str) -> str:
+    return written if len(written) <= _SHOWN_CHARACTERS else written[: _SHOWN_CHARACTERS - 1] + "…"
 
 
 def _in_trade_words(error: yaml.MarkedYAMLError, text: str, line: int, column: int) -> tuple[str, str]:
@@ -131,7 +146,8 @@ def _in_trade_words(error: yaml.MarkedYAMLError, text: str, line: int, column: i
         return "a tab is used for indentation", "indent with spaces"
     if "cannot start any token" in problem:
         start = source[column - 1 : column]
-        return f"a value cannot begin with `{start}`", "put the value in quotes"
+        shown = "a backtick" if start == "`" else f"`{start}`"
+        return f"a value cannot begin with {shown}", "put the value in quotes"
     if "mapping values are not allowed" in problem:
         return (
             "a colon and a space stand inside a value, or the indentation is wrong",
@@ -139,6 +155,14 @@ def _in_trade_words(error: yaml.MarkedYAMLError, text: str, line: int, column: i
         )
     if "could not find expected ':'" in problem:
         return "a key is not followed by a colon", "write `key: value`"
+    if "did not find expected node content" in problem:
+        return "a value is missing here", "write it, or remove the comma or the bracket"
+    if "block sequence entries are not allowed" in problem:
+        return "a list begins beside its key", "write each `- ` of the list on a line of its own"
+    if "maximum nesting" in problem:
+        return f"nested deeper than {MAX_DEPTH} levels", "flatten the structure"
+    if "did not find expected key" in problem and source[: column - 1].rstrip().endswith(("'", '"')):
+        return "text stands after a closing quote", "put the whole value in quotes"
     if "did not find expected key" in problem or "did not find expected '-' indicator" in problem:
         return "the indentation does not agree with the lines above", "align the key with its neighbours"
     if "did not find expected ',' or" in problem:
@@ -162,6 +186,9 @@ class _Builder:
         event = self._next()
         if isinstance(event, yaml.StreamEndEvent):
             raise _Refused(1, 1, "the file is empty", "write the register's mapping, or leave the file out")
+        if event.version or event.tags:
+            line, column = event.start_mark.line + 1, event.start_mark.column + 1
+            raise _Refused(line, column, "a line with `%` tells the reader how to read", "remove the line")
         data, spot = self._node(self._next(), None, 1)
         self._next()  # document end
         event = self._next()
@@ -176,11 +203,12 @@ class _Builder:
         mark = event.start_mark
         line, column = mark.line + 1, mark.column + 1
         if isinstance(event, yaml.AliasEvent):
-            raise _Refused(line, column, f"`*{event.anchor}` repeats another value", "write the value out")
+            raise _Refused(line, column, f"`*{_short(str(event.anchor))}` repeats another value", "write the value out")
         if event.anchor is not None:
-            raise _Refused(line, column, f"`&{event.anchor}` names a value for repetition", "remove the anchor")
+            raise _Refused(line, column, f"`&{_short(event.anchor)}` names a value for repetition", "remove the anchor")
         if event.tag is not None:
-            raise _Refused(line, column, f"`{event.tag}` sets a type", "remove it; loopdoc knows the types")
+            tag = event.tag.replace("tag:yaml.org,2002:", "!!")
+            raise _Refused(line, column, f"`{_short(tag)}` sets a type", "remove it; loopdoc knows the types")
         if depth > MAX_DEPTH:
             raise _Refused(line, column, f"nested deeper than {MAX_DEPTH} levels", "flatten the structure")
         key_line, key_column = key or (line, column)
@@ -211,13 +239,15 @@ class _Builder:
             if not isinstance(event, yaml.ScalarEvent) or event.anchor is not None or event.tag is not None:
                 raise _Refused(line, column, "a key is not plain text", "write `key: value`")
             key = event.value
+            if len(key) > MAX_SCALAR_CHARACTERS:
+                raise _Refused(line, column, f"a key of more than {MAX_SCALAR_CHARACTERS} characters", "shorten it")
             if key == "<<":
                 raise _Refused(line, column, "`<<` merges another mapping", "write the keys out")
             if not key or _FORBIDDEN.search(key):
                 raise _Refused(line, column, "a key is empty or has control characters", "write `key: value`")
             if key in mapping:
                 first = spots[key].key_line
-                message = f"the key `{key}` stands twice (first in line {first})"
+                message = f"the key `{_short(key)}` stands twice (first in line {first})"
                 raise _Refused(line, column, message, "keep one of them")
             mapping[key], spots[key] = self._node(self._next(), (line, column), depth + 1)
         return mapping, spots
@@ -238,14 +268,18 @@ def _resolve(written: str) -> tuple[Data, str, str]:
     first = written[0]
     if first.isdigit() or first in "+-.":
         if _LEADING_ZERO.fullmatch(written):
-            return None, f"`{written}` is a number with a leading zero", f'write `"{written}"`, or drop the zero'
+            return (
+                None,
+                f"`{_short(written)}` is a number with a leading zero",
+                f'write `"{_short(written)}"`, or drop the zero',
+            )
         if _INTEGER.fullmatch(written):
             return int(written), "", ""
         if _FLOAT.fullmatch(written):
             number = float(written)
             if number in (float("inf"), float("-inf")):
-                return None, f"`{written}` is too large a number", "write a number with a unit that fits"
+                return None, f"`{_short(written)}` is too large a number", "write a number with a unit that fits"
             return number, "", ""
         if _NOT_FINITE.fullmatch(written):
-            return None, f"`{written}` is not a number of any plant", "write a finite number"
+            return None, f"`{_short(written)}` is not a number of any plant", "write a finite number"
     return written, "", ""
