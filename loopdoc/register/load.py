@@ -80,9 +80,7 @@ def load(path: Path) -> Loaded | Unreadable:
     """Read the register in a folder, or the one whose root file is ``path``."""
     folder, root_name = (path.parent, path.name) if path.is_file() else (path, ROOT_NAME)
     if not path.exists():
-        return _unreadable(
-            Place(str(path), 1, 1), "there is no such file or folder", "name the register's folder"
-        )
+        return _unreadable(Place(str(path), 1, 1), "there is no such file or folder", "name the register's folder")
     if not (folder / root_name).is_file():
         return _unreadable(
             Place(str(path), 1, 1),
@@ -132,9 +130,7 @@ def _read(folder: Path, name: str, sources: dict[str, bytes]) -> TextFile | Faul
     try:
         content = (folder / name).read_bytes()
     except OSError as error:
-        return Fault(
-            Place(name, 1, 1), f"the file cannot be read ({error.strerror})", "check its name and permissions"
-        )
+        return Fault(Place(name, 1, 1), f"the file cannot be read ({error.strerror})", "check its name and permissions")
     sources[name] = content
     return read_text(content, name)
 
@@ -144,18 +140,14 @@ def _included(folder: Path, root: TextFile) -> tuple[list[str], list[Fault]]:
     assert isinstance(root.data, dict)
     patterns = root.data.get("include", [])
     if not isinstance(patterns, list):
-        return [], [
-            Fault(root.place(("include",)), "`include` is not a list", "write `include: [units/*.yaml]`")
-        ]
+        return [], [Fault(root.place(("include",)), "`include` is not a list", "write `include: [units/*.yaml]`")]
     inside = folder.resolve()
     names: dict[str, None] = {}
     faults = []
     for index, pattern in enumerate(patterns):
         place = root.place(("include", index))
         if not isinstance(pattern, str) or not pattern:
-            faults.append(
-                Fault(place, "an `include` entry is not a file name", "write `include: [units/*.yaml]`")
-            )
+            faults.append(Fault(place, "an `include` entry is not a file name", "write `include: [units/*.yaml]`"))
             continue
         if Path(pattern).is_absolute() or ".." in Path(pattern).parts:
             faults.append(
@@ -177,16 +169,12 @@ def _included(folder: Path, root: TextFile) -> tuple[list[str], list[Fault]]:
                 )
             )
         elif not found:
-            faults.append(
-                Fault(place, f"no file matches `{pattern}`", "correct the name, or remove the entry")
-            )
+            faults.append(Fault(place, f"no file matches `{pattern}`", "correct the name, or remove the entry"))
         for file in found:
             names[file.relative_to(folder).as_posix()] = None
     if len(names) > MAX_FILES:
         faults.append(
-            Fault(
-                root.place(("include",)), f"more than {MAX_FILES} files are included", "include fewer files"
-            )
+            Fault(root.place(("include",)), f"more than {MAX_FILES} files are included", "include fewer files")
         )
     return list(names), faults
 
@@ -207,9 +195,7 @@ def _field_types(part: type[Any]) -> tuple[tuple[str, type, bool], ...]:
         if get_origin(hint) in (Union, UnionType):
             members = [member for member in get_args(hint) if member not in (type(None), Hold)]
         kind = members[0]
-        if kind in (str, float, bool, Quantity, Range, Gain) or (
-            isinstance(kind, type) and issubclass(kind, Part)
-        ):
+        if kind in (str, float, bool, Quantity, Range, Gain) or (isinstance(kind, type) and issubclass(kind, Part)):
             found.append((entry.name, kind, False))
         elif get_origin(kind) is tuple and get_args(kind)[0] is str:
             found.append((entry.name, str, True))
@@ -243,11 +229,7 @@ class _Reader:
                 self._fault(origin, steps, f"`{steps[-1]}`: {error.fault}", error.remedy)
                 return _UNREADABLE
         if kind is float:
-            return (
-                float(value)
-                if isinstance(value, int | float) and not isinstance(value, bool)
-                else _UNREADABLE
-            )
+            return float(value) if isinstance(value, int | float) and not isinstance(value, bool) else _UNREADABLE
         if kind is str:
             return value if isinstance(value, str) else _UNREADABLE
         if kind is bool:
@@ -277,9 +259,7 @@ class _Reader:
         place = origin.place(*steps)
         if place not in self._told:
             self._told.add(place)
-            self._faults.append(
-                Fault(place, message, remedy, "/" + "/".join(map(str, (*origin.path, *steps))))
-            )
+            self._faults.append(Fault(place, message, remedy, "/" + "/".join(map(str, (*origin.path, *steps)))))
 
     def _below(self, origin: Origin, value: Any, name: str) -> Iterator[tuple[str, Any, Origin]]:
         """Entries of the mapping ``name`` inside ``value``: key, value, origin."""
@@ -371,9 +351,7 @@ class _Reader:
         actions = {}
         for target, entry, where in self._below(origin, value, "actions"):
             if isinstance(entry, str):
-                actions[target] = InterlockAction(
-                    origin=where, tag=target, position=entry, mode=None, output=None
-                )
+                actions[target] = InterlockAction(origin=where, tag=target, position=entry, mode=None, output=None)
             elif isinstance(entry, dict):
                 action = self._part(where, entry, InterlockAction, tag=target, position=None)
                 if isinstance(action, InterlockAction):
@@ -438,10 +416,7 @@ class _Reader:
                 history.append(revision)
 
         def parts(name: str, kind: type[P], key: str) -> dict[str, P]:
-            made = {
-                tag: self._part(where, value, kind, **{key: tag})
-                for tag, (where, value) in sections[name].items()
-            }
+            made = {tag: self._part(where, value, kind, **{key: tag}) for tag, (where, value) in sections[name].items()}
             return {tag: part for tag, part in made.items() if isinstance(part, kind)}
 
         def built(name: str, build: Any) -> dict[str, Any]:
@@ -485,9 +460,7 @@ class _Reader:
         try:
             pattern = re.compile(written)
         except re.error as error:
-            self._fault(
-                origin, ("tags",), f"`tags` is not a regular expression ({error})", "correct the expression"
-            )
+            self._fault(origin, ("tags",), f"`tags` is not a regular expression ({error})", "correct the expression")
             return None
         missing = [group for group in ("letters", "unit", "serial") if group not in pattern.groupindex]
         if missing:
@@ -507,7 +480,8 @@ def _holds(file: TextFile) -> Iterator[HeldValue]:
     def walk(data: Any, spot: Spot, path: tuple[str | int, ...]) -> Iterator[HeldValue]:
         if isinstance(data, dict) and isinstance(spot.inside, dict):
             if "hold" in data:
-                tag, inner = (str(path[1]), path[2:]) if len(path) > 1 else (str(path[0]) if path else "", ())
+                depth = 1 if len(path) > 1 and path[0] in _SECTIONS else 0
+                tag, inner = (str(path[depth]), path[depth + 1 :]) if path else ("register", ())
                 yield HeldValue(
                     tag=tag,
                     path=inner,

@@ -4,9 +4,9 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 
-from loopdoc.engineering.direction import PathSign, Undecided, path_sign
-from loopdoc.engineering.pairing import ControlledLoop
-from loopdoc.register.model import FinalElement, Process, known
+from loopdoc.engineering.direction import PathSign, Undecided, path_sign, process_on
+from loopdoc.engineering.pairing import ControlledLoop, Route
+from loopdoc.register.model import FinalElement, Hold, Process, known
 from loopdoc.register.place import Place
 from loopdoc.rules.finding import Level
 from loopdoc.rules.rule import Draft, draft, need, not_checked, only_if, rule
@@ -44,8 +44,7 @@ def action_wrong(controlled: ControlledLoop) -> Iterator[Draft]:
     if action != path.action:
         yield draft(
             controlled.tag,
-            f"{controlled.tag} is {action} acting, but its path needs {path.action} action: {path}, "
-            f"together {path.sign:+d}",
+            f"it is {action} acting, but its path needs {path.action} action: {path}; together {path.sign:+d}",
             remedy=f"write `action: {path.action}`, or correct the step that is not so",
             at=controlled.controller.origin.place("action"),
             related=tuple(_places(controlled)),
@@ -74,7 +73,7 @@ def action_undecided(controlled: ControlledLoop) -> Iterator[Draft]:
             told.add(path.reason)
             yield draft(
                 controlled.tag,
-                f"the action of {controlled.tag} cannot be told: {path.reason}",
+                f"which action it needs cannot be told: {path.reason.removeprefix(f'{controlled.tag}: ')}",
                 remedy="say under `process` whether the measurement rises or falls, and on which signal each "
                 "final element opens",
                 at=place,
@@ -84,11 +83,11 @@ def action_undecided(controlled: ControlledLoop) -> Iterator[Draft]:
         process = known(controlled.loop.process)
         routes = zip(controlled.routes, (path for _, path in paths), strict=True)
         each = "; ".join(
-            f"by {route.end.tag} {path.action}: {path}" for route, path in routes if isinstance(path, PathSign)
+            f"{path.action} for {route.end.tag}: {path}" for route, path in routes if isinstance(path, PathSign)
         )
         yield draft(
             controlled.tag,
-            f"no action of {controlled.tag} serves all that it moves ({each})",
+            f"no action serves all that it moves ({each})",
             remedy="turn round the range of one branch (`50 to 0 %`), or correct the step that is not so",
             at=process.origin.place("branches") if process else controlled.loop.origin,
             related=tuple(_places(controlled)),
@@ -102,7 +101,7 @@ def _paths(controlled: ControlledLoop) -> list[tuple[Place, PathSign | Undecided
         not_checked("the output leads to nothing that the register knows")
     found = []
     for route in controlled.routes:
-        path = path_sign(controlled, route)
+        path = _held(controlled, route) or path_sign(controlled, route)
         lacks_element = isinstance(route.end, FinalElement) and known(route.end.opens_on) is None
         if lacks_element:
             place = route.end.origin.place("opens_on")
@@ -111,6 +110,14 @@ def _paths(controlled: ControlledLoop) -> list[tuple[Place, PathSign | Undecided
             place = controlled.loop.origin.place("process", *branch, "effect")
         found.append((place, path))
     return found
+
+
+def _held(controlled: ControlledLoop, route: Route) -> Undecided | None:
+    """Why the process on a route has no known sign where it is on hold."""
+    process = process_on(controlled, route)
+    if isinstance(controlled.loop.process, Hold):
+        return Undecided("`process` is on hold")
+    return Undecided("the effect of the process is on hold") if process and isinstance(process.effect, Hold) else None
 
 
 def _has_branches(controlled: ControlledLoop) -> bool:
@@ -155,7 +162,7 @@ def fail_position_unsafe(element: FinalElement) -> Iterator[Draft]:
         where = "stays where it is" if fails == "last" else f"goes {fails}" if fails != "stopped" else "stops"
         yield draft(
             element.tag,
-            f"{element.tag} {where} on loss of {loss}, but its safe position is {safe}",
+            f"it {where} on loss of {loss}, but its safe position is {safe}",
             remedy=f"write `fails: {safe}` and order it so, or bring the position before the hazard study",
             at=element.origin.place("fails"),
             related=((element.origin.place("safe"), f"the safe position, {safe}"),),
@@ -194,7 +201,7 @@ def fail_position_signal_mismatch(element: FinalElement) -> Iterator[Draft]:
     if fails != without_signal:
         yield draft(
             element.tag,
-            f"{element.tag} opens on a {opens_on}, so that it goes {without_signal} when the signal is lost, "
+            f"it opens on a {opens_on}, so that it goes {without_signal} when the signal is lost, "
             f"but it fails {fails} when the air is lost",
             remedy=f"write `fails: {without_signal}`, or `opens_on: "
             f"{'falling' if opens_on == 'rising signal' else 'rising'} signal`, whichever is not so",

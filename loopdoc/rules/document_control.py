@@ -26,7 +26,7 @@ def hold_open(held: HeldValue) -> Iterator[Draft]:
     what = " ".join(str(step).replace("_", " ") for step in held.path)
     yield draft(
         held.tag,
-        f"{held.tag}: {what} is on hold: {held.reason}" if what else f"{held.tag} is on hold: {held.reason}",
+        f"{what} on hold: {held.reason}".lstrip(),
         remedy="write the value when it is known, in place of the hold",
         at=held.place,
     )

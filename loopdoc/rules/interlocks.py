@@ -25,8 +25,9 @@ def trip_before_alarm(trip: Trip, plant: Plant) -> Iterator[Draft]:
         A trip above 1.6 barg with the high alarm on the same transmitter at 1.7 barg.
     Holds:
         Of a trip above a limit, the high and high-high alarms on the same transmitter lie below that limit;
-        of a trip below a limit, the low and low-low alarms lie above it. A high-high (low-low) alarm exactly
-        at the limit holds where another alarm comes before it: it then tells that the trip has come.
+        of a trip below a limit, the low and low-low alarms lie above it. Where a first alarm comes before
+        the trip, a high-high (low-low) alarm may stand exactly at its limit, to tell that the trip has come,
+        or beyond it, to warn of another trip further out.
     What this check cannot see:
         Alarms on another transmitter of the same vessel, and how long the process takes from alarm to trip.
     """
@@ -44,13 +45,16 @@ def trip_before_alarm(trip: Trip, plant: Plant) -> Iterator[Draft]:
     warned = any(comes_before(value, limit.value) for *_, value in values)
     for loop, alarm, written, value in values:
         at_the_trip = equal(value, limit.value)
-        if comes_before(value, limit.value) or (at_the_trip and warned and alarm.kind in ("high_high", "low_low")):
+        outer = alarm.kind in ("high_high", "low_low")
+        if comes_before(value, limit.value) or (
+            warned and outer and (at_the_trip or _warns_of_another(trip, value, plant))
+        ):
             continue
         name = alarm.kind.replace("_", "-")
         when = "together with" if at_the_trip else "after"
         yield draft(
             loop.tag,
-            f"the {name} alarm of {loop.tag} at {in_both(written, limit.unit)} comes {when} "
+            f"the {name} alarm at {in_both(written, limit.unit)} comes {when} "
             f"the trip of {trip.interlock.tag} {direction} {limit}",
             remedy=f"set the alarm {'below' if direction == 'above' else 'above'} {limit}, with time to act in between",
             at=alarm.origin.place("limit"),
@@ -58,6 +62,20 @@ def trip_before_alarm(trip: Trip, plant: Plant) -> Iterator[Draft]:
         )
     for _, alarm in alarms:
         _comparable(alarm, trip)
+
+
+def _warns_of_another(trip: Trip, alarm: float, plant: Plant) -> bool:
+    """Whether an alarm, in the unit of a trip's limit, comes before another trip of the same measurement."""
+    comes_before = above if trip.initiator.direction == "below" else below
+    unit = need(trip.initiator.limit, "the trip limit").unit
+    return any(
+        other.measurement == trip.measurement
+        and other.initiator.direction == trip.initiator.direction
+        and (limit := known(other.initiator.limit)) is not None
+        and same_kind(limit.unit, unit)
+        and comes_before(alarm, limit.to(unit.symbol))
+        for other in plant.trips
+    )
 
 
 def _comparable(alarm: Alarm, trip: Trip) -> None:
@@ -97,7 +115,7 @@ def trip_outside_range(trip: Trip) -> Iterator[Draft]:
     where = "outside" if below(value, band.low) or above(value, band.high) else "at the very end of"
     yield draft(
         trip.interlock.tag,
-        f"{trip.interlock.tag} trips {known(trip.initiator.direction)} {in_both(limit, band.unit)}, "
+        f"it trips {known(trip.initiator.direction)} {in_both(limit, band.unit)}, "
         f"{where} the range of {trip.initiator.tag}, {band}",
         remedy="set the limit inside the range, or give the transmitter a range that reaches beyond it",
         at=trip.initiator.origin.place("trips"),

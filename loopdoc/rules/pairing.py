@@ -9,7 +9,7 @@ from loopdoc.engineering.pairing import ControlledLoop, Plant
 from loopdoc.register.model import FinalElement, Function, Loop, known
 from loopdoc.register.place import Place
 from loopdoc.rules.finding import Level
-from loopdoc.rules.rule import Draft, draft, need, not_checked, only_if, rule
+from loopdoc.rules.rule import Draft, draft, need, only_if, rule
 
 _SEVERAL = ("high select", "low select", "sum")
 """Functions that are there to take in more than one commander."""
@@ -35,9 +35,7 @@ def pairing_cycle(plant: Plant) -> Iterator[Draft]:
         first, *others = pairwise((*ring, ring[0]))
         yield draft(
             ring[0],
-            f"{ring[0]} commands itself"
-            if not others
-            else f"{' commands '.join((*ring, ring[0]))}: nothing commands the ring",
+            "it commands itself" if not others else f"the outputs run in a ring: {' commands '.join((*ring, ring[0]))}",
             remedy="lead one of these outputs to the final element that it is to move",
             at=_place_of_command(plant, *first),
             related=tuple(
@@ -67,10 +65,9 @@ def pairing_two_primaries(commanded: Loop | FinalElement | Function, plant: Plan
         return
     second = commanders[1]
     names = f"{', '.join(commanders[:-1])} and {commanders[-1]}"
-    what = f"the {known(commanded.kind)} {commanded.tag}" if isinstance(commanded, Function) else commanded.tag
     yield draft(
         commanded.tag,
-        f"{what} is commanded by {names}, and nothing chooses between them",
+        f"commanded by {names}, and nothing chooses between them",
         remedy="lead them to a low select, a high select or a sum, and its result to this one",
         at=_place_of_command(plant, second, commanded.tag),
         related=tuple(
@@ -107,7 +104,7 @@ def mode_normal_conflict(secondary: ControlledLoop, plant: Plant) -> Iterator[Dr
         if normal == "cascade":
             yield draft(
                 secondary.tag,
-                f"the normal mode of {secondary.tag} is cascade, but nothing commands it",
+                "its normal mode is cascade, but nothing commands it",
                 remedy=f"lead the output of its primary to {secondary.tag}, or write `normal: automatic`",
                 at=place,
             )
@@ -115,8 +112,6 @@ def mode_normal_conflict(secondary: ControlledLoop, plant: Plant) -> Iterator[Dr
     if normal == "cascade":
         return
     links = plant.links_to.get(secondary.tag, ())
-    if not links and not any(tag in plant.register.functions for tag in commanders):
-        not_checked("its commander has no controller")
     commanding = [link.primary for link in links if _normal_mode(link.primary) in _COMMANDING]
     if commanding or not links:
         who = (
@@ -131,7 +126,7 @@ def mode_normal_conflict(secondary: ControlledLoop, plant: Plant) -> Iterator[Dr
         )
         yield draft(
             secondary.tag,
-            f"the normal mode of {secondary.tag} is {normal}, but {who}, which asks for cascade",
+            f"its normal mode is {normal}, but {who}, which asks for cascade",
             remedy="write `normal: cascade`"
             + (f", or another normal mode for {commanding[0].tag}" if commanding else ""),
             at=place,

@@ -7,7 +7,7 @@ from collections.abc import Iterator
 from loopdoc.engineering.demand import Demand, demand
 from loopdoc.engineering.direction import Undecided
 from loopdoc.engineering.pairing import CascadeLink, ControlledLoop, Plant
-from loopdoc.register.model import Function, Instrument, Loop, Output, Part, known
+from loopdoc.register.model import Function, Hold, Instrument, Loop, Output, Part, known
 from loopdoc.register.place import Place
 from loopdoc.register.quantity import Range
 from loopdoc.register.units import Unit
@@ -44,8 +44,9 @@ def range_reversed(part: Loop | Instrument | Function) -> Iterator[Draft]:
     What this check cannot see:
         A transmitter that is calibrated the other way round than written.
     """
-    for what, written, place in _ranges(part):
-        if written is not None and written.span <= 0:
+    ranges = tuple(_ranges(part))
+    for what, written, place in ranges:
+        if isinstance(written, Range) and written.span <= 0:
             fault, remedy = (
                 ("its two ends are the same", "write its low and its high end")
                 if written.span == 0
@@ -63,18 +64,21 @@ def range_reversed(part: Loop | Instrument | Function) -> Iterator[Draft]:
                     remedy=f"write the output at which {element} is shut, then the one at which it is fully open",
                     at=part.origin.place("outputs", element),
                 )
+    for what, written, _ in ranges:
+        if written is not None:
+            need(written, what)
 
 
-def _ranges(part: Loop | Instrument | Function) -> Iterator[tuple[str, Range | None, Place]]:
+def _ranges(part: Loop | Instrument | Function) -> Iterator[tuple[str, Range | Hold | None, Place]]:
     if isinstance(part, Function):
-        yield "the span of the ratio", known(part.span), part.origin.place("span")
+        yield "the span of the ratio", part.span, part.origin.place("span")
         return
     measurement = known(part.measurement)
     if measurement:
-        yield "the measurement range", known(measurement.range), measurement.origin.place("range")
+        yield "the measurement range", measurement.range, measurement.origin.place("range")
     output = _output(part) if isinstance(part, Loop) else None
     if output:
-        yield "the output span", known(output.span), output.origin.place("span")
+        yield "the output span", output.span, output.origin.place("span")
 
 
 def _output(loop: Loop) -> Output | None:
@@ -197,7 +201,7 @@ def secondary_range_short(link: CascadeLink, plant: Plant) -> Iterator[Draft]:
     if short:
         yield draft(
             secondary.tag,
-            f"the range of {secondary.tag}, {band}, does not cover {_told(link, span, asked)}: {short} lies outside it",
+            f"its range, {band}, does not cover {_told(link, span, asked)}: {short} lies outside it",
             remedy=f"give {secondary.tag} a range that covers {_rounded(asked.asked)}, "
             f"or {primary.tag} a shorter output span",
             at=range_place(secondary.loop),
@@ -232,13 +236,15 @@ def secondary_range_wide(secondary: ControlledLoop, plant: Plant, limits: Limits
         span = forward(need(output.span, "the primary's output span"), "the primary's output span")
         asked.append(_decided(demand(link, span, plant)).asked)
     low, high = min(one.low for one in asked), max(one.high for one in asked)
+    if not above(high, low):
+        not_checked("the primary may ask for one value only")
     ratio = band.span / (high - low)
     if above(ratio, limits.secondary_range_ratio):
         primaries = " and ".join(link.primary.tag for link in links)
         verb = "asks" if len(links) == 1 else "ask"
         yield draft(
             secondary.tag,
-            f"the span of {secondary.tag}, {amount(band.span, band.unit)}, is {ratio:.3g} times the "
+            f"its span, {amount(band.span, band.unit)}, is {ratio:.3g} times the "
             f"{amount(high - low, band.unit)} for which {primaries} {verb}; "
             f"the limit is {limits.secondary_range_ratio:g} times",
             remedy=f"give {secondary.tag} a range nearer to {_rounded(Range(low, high, band.unit))}",
@@ -284,22 +290,22 @@ def output_limit_outside_setpoint(link: CascadeLink, plant: Plant) -> Iterator[D
         asked_end, told, place = _output_end(link, output, end, plant)
         if accepted is None:
             bound, bound_place = (band.low if end == "low" else band.high), range_place(secondary.loop)
-            bound_told = f"the {end} end of its range, {amount(bound, band.unit)}"
+            bound_told = f"the {end} end of that loop's range, {amount(bound, band.unit)}"
         else:
             assert setpoint is not None
             written = need(accepted, f"the secondary's {end} setpoint limit")
             bound = reading(written, band.unit, f"the secondary's {end} setpoint limit")
-            bound_told = f"its {end} setpoint limit, {in_both(written, band.unit)}"
+            bound_told = f"that loop's {end} setpoint limit, {in_both(written, band.unit)}"
             bound_place = setpoint.origin.place(end)
         if beyond(asked_end, bound):
             side = "below" if end == "low" else "above"
             yield draft(
                 primary.tag,
-                f"{primary.tag} may ask {secondary.tag} for {told}, {side} {bound_told}",
+                f"its output may ask {secondary.tag} for {told}, {side} {bound_told}",
                 remedy=f"limit the output of {primary.tag} to {amount(bound, band.unit)}, "
                 f"or let {secondary.tag} accept {amount(asked_end, band.unit)}",
                 at=place,
-                related=((bound_place, f"{secondary.tag}: {bound_told}"),),
+                related=((bound_place, f"{secondary.tag}, {bound_told}"),),
             )
 
 

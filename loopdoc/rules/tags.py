@@ -37,7 +37,7 @@ def tag_grammar(defined: DefinedTag, plant: Plant) -> Iterator[Draft]:
     if parts is None:
         yield draft(
             defined.tag,
-            f"the {defined.what} `{defined.tag}` does not follow the site's tag grammar",
+            f"the tag of this {defined.what} does not follow the site's tag grammar",
             remedy=f"correct the tag, or the expression under `tags`: {pattern.pattern}",
             at=defined.place,
             related=((plant.register.root.place(("tags",)), "the site's tag grammar"),),
@@ -47,7 +47,7 @@ def tag_grammar(defined: DefinedTag, plant: Plant) -> Iterator[Draft]:
     if unit is not None and unit != parts["unit"]:
         yield draft(
             defined.tag,
-            f"the tag {defined.tag} is of unit {parts['unit']}, but the register puts it in unit {unit}",
+            f"the tag is of unit {parts['unit']}, but the register puts it in unit {unit}",
             remedy=f'write `unit: "{parts["unit"]}"`, or correct the tag',
             at=defined.unit_place,
             related=((defined.place, "the tag"),),
@@ -75,7 +75,7 @@ def tag_duplicate(plant: Plant) -> Iterator[Draft]:
     for tag, later, first in plant.register.twice:
         yield draft(
             tag,
-            f"`{tag}` is defined a second time; only the first definition, in {first.file} line {first.line}, counts",
+            f"defined a second time; only the first definition, in {first.file} line {first.line}, counts",
             remedy="keep one of the two, or give this one a tag of its own",
             at=later,
             related=((first, "the first definition"),),
@@ -103,8 +103,8 @@ def _second_description(
     for key in differing:
         yield draft(
             loop.tag,
-            f"{loop.tag} gives `{key}: {getattr(measurement, key)}` for {transmitter}, "
-            f"and {first_tag} gives `{getattr(first, key)}` for the same transmitter",
+            f"`{key}: {getattr(measurement, key)}` is given for {transmitter} here, "
+            f"and `{key}: {getattr(first, key)}` under {first_tag}",
             remedy="write the same in both, or name the transmitter that is meant",
             at=measurement.origin.place(key),
             related=((first.origin.place(key), f"what {first_tag} says of {transmitter}"),),
@@ -112,7 +112,7 @@ def _second_description(
     if not differing and not _same_number(plant, loop.tag, first_tag):
         yield draft(
             loop.tag,
-            f"{loop.tag} measures with {transmitter}, which {first_tag} describes already",
+            f"it measures with {transmitter}, which is the transmitter of {first_tag} already",
             remedy=f"name the transmitter of {loop.tag}; if the two share it on purpose, write a deviation",
             at=measurement.origin.place("transmitter"),
             related=((first.origin.place("transmitter"), f"{transmitter} in {first_tag}"),),
@@ -162,7 +162,7 @@ def reference_unknown(reference: Reference) -> Iterator[Draft]:
         fault = f"{reference.where} is `{reference.target}`, which is not {reference.among.what}"
     yield draft(
         reference.tag,
-        f"{reference.tag}: {fault}",
+        fault,
         remedy=f"write `{nearest}`, the nearest known" if nearest else "correct the name, or define what it names",
         at=reference.place,
     )

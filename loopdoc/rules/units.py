@@ -76,9 +76,12 @@ def unit_incompatible(part: Loop | Instrument | Function | Trip, plant: Plant) -
         A number that was converted wrongly. Units of time, frequency and percent have fixed places in the
         format, and the rule `schema` tells of them.
     """
-    lacking = ""
     tag = part.interlock.tag if isinstance(part, Trip) else part.tag
-    yield from _measured_in_another_kind(tag, part)
+    in_another_kind = _measured_in_another_kind(part)
+    if in_another_kind:
+        yield in_another_kind
+        return  # which of the two is wrong decides what all the others must agree with
+    lacking = ""
     for value in _values(part, plant):
         if value.written is None:
             continue
@@ -92,6 +95,8 @@ def unit_incompatible(part: Loop | Instrument | Function | Trip, plant: Plant) -
                 yield _draft(tag, value, fault)
     if isinstance(part, Loop):
         yield from _gains(part, plant)
+        process = known(part.process)
+        lacking = lacking or ("the process gain is on hold" if process and isinstance(process.gain, Hold) else "")
     if lacking:
         not_checked(lacking)
 
@@ -135,22 +140,24 @@ def _percent_of_range(value: _Value) -> str:
 # ---------------------------------------------------------------- what must agree with what
 
 
-def _measured_in_another_kind(tag: str, part: Loop | Instrument | Function | Trip) -> Iterator[Draft]:
+def _measured_in_another_kind(part: Loop | Instrument | Function | Trip) -> Draft | None:
     """A finding where the range is not in a unit of the variable that is measured."""
-    measurement = known(part.measurement) if isinstance(part, Loop | Instrument) else None
+    if isinstance(part, Function | Trip):
+        return None
+    measurement = known(part.measurement)
     band = known(measurement.range) if measurement else None
     variable = known(measurement.variable) if measurement else None
     kinds = _KINDS_OF_VARIABLE.get(variable or "")
     if measurement is None or band is None or kinds is None or band.unit.kind in kinds:
-        return
+        return None
     if band.unit.kind == "pressure difference":
         fault = f"`{band.unit}` does not say gauge or absolute"
         remedy = f"write `{band.unit}g` or `{band.unit}a`, or `variable: differential pressure`"
     else:
         fault = f"`{band.unit}` is a unit of {band.unit.kind}"
         remedy = f"write a unit of {' or '.join(kinds)}, or another variable"
-    yield draft(
-        tag,
+    return draft(
+        part.tag,
         f"the measurement of {variable} has the range {band}: {fault}",
         remedy=remedy,
         at=measurement.origin.place("range"),
