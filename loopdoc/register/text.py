@@ -133,7 +133,9 @@ def _end(before: str) -> tuple[int, int]:
 
 
 def _short(written: str) -> str:
-    return written if len(written) <= _SHOWN_CHARACTERS else written[: _SHOWN_CHARACTERS - 1] + "…"
+    """What stands in the text, fit for a message: a tag such as `!%1b` carries a control character unseen."""
+    shown = _FORBIDDEN.sub("?", written)
+    return shown if len(shown) <= _SHOWN_CHARACTERS else shown[: _SHOWN_CHARACTERS - 1] + "…"
 
 
 def _in_trade_words(error: yaml.MarkedYAMLError, text: str, line: int, column: int) -> tuple[str, str]:
@@ -146,8 +148,8 @@ def _in_trade_words(error: yaml.MarkedYAMLError, text: str, line: int, column: i
         return "a tab is used for indentation", "indent with spaces"
     if "cannot start any token" in problem:
         start = source[column - 1 : column]
-        shown = "a backtick" if start == "`" else f"`{start}`"
-        return f"a value cannot begin with {shown}", "put the value in quotes"
+        shown = {"`": "a backtick", "\t": "a tab"}.get(start, f"`{start}`")
+        return f"a value cannot begin with {shown}", "put the value in quotes" if start != "\t" else "use spaces"
     if "mapping values are not allowed" in problem:
         return (
             "a colon and a space stand inside a value, or the indentation is wrong",
