@@ -482,6 +482,7 @@ def test_values_survive_a_cache_on_disk():
         ("1.6 barg", "1.6\u00a0bar(g)"),
         ("12 months", "12\u00a0months"),
         ("90 deg", "90°"),
+        ("0.35 fraction", "0.35"),
         ("-0.0 %", "0.0\u00a0%"),
     ],
 )
@@ -499,6 +500,7 @@ def test_a_calculated_quantity_is_printed_without_binary_noise():
         ("60 to 120 degC", "60 to 120\u00a0°C"),
         ("-20.0 to 40 degC", "\u221220.0 to 40\u00a0°C"),
         ("50 to 0 %", "50 to 0\u00a0%"),
+        ("0.2 to 0.8 fraction", "0.2 to 0.8"),
         ("0 to 12e3 Nm3/h", "0 to 12000\u00a0Nm³/h"),
     ],
 )
@@ -509,6 +511,7 @@ def test_a_range_is_printed_with_its_unit_once(text, printed):
 def test_a_gain_is_printed_as_it_reads():
     assert display_gain(parse_gain("5.50 degC per t/h")) == "5.50\u00a0°C per t/h"
     assert display_gain(parse_gain("-2.0 %/min per %")) == "\u22122.0\u00a0%/min per %"
+    assert display_gain(parse_gain("12 t/h per fraction")) == "12\u00a0t/h per fraction"
 
 
 @pytest.mark.parametrize(

@@ -240,9 +240,7 @@ def test_every_difference_agrees_with_pint(pint_units):
 
 
 @pytest.mark.parametrize("value", [-40.0, 0.0, 25.0, 84.5, 212.0, 1768.0])
-@pytest.mark.parametrize(
-    ("source", "target"), [(a, b) for a in ("degC", "degF", "K") for b in ("degC", "degF", "K")]
-)
+@pytest.mark.parametrize(("source", "target"), [(a, b) for a in ("degC", "degF", "K") for b in ("degC", "degF", "K")])
 def test_every_temperature_agrees_with_pint(pint_units, value, source, target):
     names = {"degC": "degree_Celsius", "degF": "degree_Fahrenheit", "K": "kelvin"}
     expected = pint_units.Quantity(value, names[source]).to(names[target]).magnitude
@@ -350,7 +348,8 @@ def test_a_unit_may_be_given_itself_or_by_its_symbol():
     assert convert(1.0, unit("t/h"), "kg/h") == convert(1.0, "t/h", unit("kg/h")) == 1000.0
 
 
-VALUES = st.floats(min_value=-1e9, max_value=1e9, allow_nan=False)
+# Nothing below 1e-12: no reading is so small, and near 1e-308 double precision itself gives way.
+VALUES = st.floats(min_value=-1e9, max_value=1e9).map(lambda value: value if abs(value) > 1e-12 else 0.0)
 PAIRS = st.sampled_from(pairs_of_a_kind())
 
 
@@ -363,9 +362,7 @@ def test_there_and_back_is_identity(value, pair):
     assert back == pytest.approx(value, rel=1e-15)
     if same_kind(source, target):
         # A zero of up to 459.67 may be added and taken away: rounding of that size.
-        assert convert(convert(value, source, target), target, source) == pytest.approx(
-            value, rel=1e-15, abs=1e-12
-        )
+        assert convert(convert(value, source, target), target, source) == pytest.approx(value, rel=1e-15, abs=1e-12)
 
 
 @settings(deadline=None, max_examples=300)
@@ -502,6 +499,7 @@ def test_every_spelling_leads_to_units_of_the_table():
         ("ohm", "Ω"),
         ("kscmh", "kscmh"),
         ("mol%", "mol%"),
+        ("fraction", ""),
         ("1/min", "1/min"),
         ("t/h", "t/h"),
     ],

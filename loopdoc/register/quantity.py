@@ -242,7 +242,7 @@ def display_gain(gain: Gain) -> str:
     """Print a process gain for a document, with the digits as written: `5.5 °C per t/h`."""
     per_time = "" if gain.per_time is None else f"/{gain.per_time.display}"
     changed = _with_unit(_display_written(gain.value, gain.written), gain.numerator)
-    return f"{changed}{per_time} per {gain.denominator.display}"
+    return f"{changed}{per_time} per {gain.denominator.display or gain.denominator.symbol}"
 
 
 def _display_written(value: float, written: str) -> str:
@@ -261,5 +261,6 @@ def _printed(exact: Decimal) -> str:
 
 
 def _with_unit(number: str, printed: Unit) -> str:
-    # The degree of arc stands against its number. Source: BIPM SI Brochure, 9th edition, 5.4.3.
-    return f"{number}{'' if printed.symbol == 'deg' else _NO_BREAK_SPACE}{printed.display}"
+    # The degree of arc stands against its number. Source: BIPM SI Brochure, 9th edition (2019), 5.4.3.
+    space = "" if printed.symbol in ("deg", "fraction") else _NO_BREAK_SPACE
+    return f"{number}{space}{printed.display}"

@@ -53,9 +53,7 @@ def quantity_fault(text: str) -> tuple[str, str]:
     if known is None:
         return _unknown(text, symbol)
     complaint, numbers = _number_fault(number)
-    return _mended(
-        text, complaint or _spelling_fault(symbol, known), [f"{mended} {known}" for mended in numbers]
-    )
+    return _mended(text, complaint or _spelling_fault(symbol, known), [f"{mended} {known}" for mended in numbers])
 
 
 def range_fault(text: str) -> tuple[str, str]:

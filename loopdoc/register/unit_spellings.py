@@ -76,9 +76,7 @@ SPELLINGS: Mapping[str, str] = {
     "Hz cP": "cps",
 }
 _ANSWERS: Mapping[str, tuple[str, ...]] = {
-    spelling: tuple(answers.split())
-    for answers, spellings in SPELLINGS.items()
-    for spelling in spellings.split()
+    spelling: tuple(answers.split()) for answers, spellings in SPELLINGS.items() for spelling in spellings.split()
 }
 
 _TYPOGRAPHY = str.maketrans(

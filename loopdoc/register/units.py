@@ -25,7 +25,7 @@ class Unit:
     offset: float
     """The unit's zero in the kind's base unit; nought except for degC and degF."""
     display: str
-    """How documents print it: `°C`, `bar(g)`, `Nm³/h`."""
+    """How documents print it: `°C`, `bar(g)`, `Nm³/h`; empty for a plain fraction."""
     difference_kind: str
     """What the difference of two readings measures: gauge and absolute both give `pressure difference`."""
 
@@ -227,7 +227,8 @@ _DIFFERENCE_KINDS = {
     "absolute pressure": "pressure difference",
 }
 
-_DISPLAYS = {"degC": "°C", "degF": "°F", "deg": "°", "ohm": "Ω", "kohm": "kΩ", "Mohm": "MΩ"}
+# The unit one is not printed with its number. Source: BIPM SI Brochure, 9th edition (2019), 5.4.7.
+_DISPLAYS = {"fraction": "", "degC": "°C", "degF": "°F", "deg": "°", "ohm": "Ω", "kohm": "kΩ", "Mohm": "MΩ"}
 
 
 def _display(symbol: str, kind: str) -> str:
