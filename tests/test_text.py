@@ -124,7 +124,6 @@ REFUSED = {
     "a: !!str 1": (1, 4, "`!!str`"),
     "a: ! 1": (1, 4, "`!`"),
     "a: !!python/object:os.system x": (1, 4, "sets a type"),
-    "a: !%1b[31m x": (1, 4, ""),
     "a: !%1bx 1": (1, 4, "`!?x` sets a type"),
     "!!str a: 1": (1, 1, "key"),
     "a: 1\n<<: {b: 1}": (2, 1, "`<<`"),
