@@ -226,10 +226,6 @@ class ScanCoefficients:
     """c [dimensionless]."""
     filter_gain: FloatArray
     """Share of the way the filtered measurement goes in a scan [dimensionless]; 1 for no filter."""
-    low_pct: FloatArray
-    """Lower output limit [%]."""
-    high_pct: FloatArray
-    """Upper output limit [%]."""
     has_rate: bool
     """True where any of the controllers has rate."""
     has_filter: bool
@@ -283,8 +279,6 @@ def scan_coefficients(controllers: Sequence[Controller], interval_s: FloatArray)
         derivative_gain=gain * rate / (smoothing + h),
         derivative_setpoint_weight=np.array([c.derivative_setpoint_weight for c in controllers]),
         filter_gain=filter_gain,
-        low_pct=np.array([c.output_low_pct for c in controllers]),
-        high_pct=np.array([c.output_high_pct for c in controllers]),
         has_rate=bool(np.any(rate > 0.0)),
         has_filter=bool(np.any(filter_lag > 0.0)),
     )
@@ -302,19 +296,6 @@ class ScanState:
     """Derivative part of the output [%]."""
     derivative_input: FloatArray
     """c times setpoint less filtered measurement, at the last scan [%]."""
-
-
-def balanced_state(
-    coefficients: ScanCoefficients, *, setpoint: FloatArray, measurement: FloatArray, output: FloatArray
-) -> ScanState:
-    """Return the memory with which the next scan leaves the output where it is (bumpless start)."""
-    proportional = coefficients.setpoint_gain * setpoint - coefficients.gain * measurement
-    return ScanState(
-        integral=output - proportional - coefficients.integral_gain * (setpoint - measurement),
-        filtered=measurement.copy(),
-        derivative=np.zeros_like(measurement),
-        derivative_input=coefficients.derivative_setpoint_weight * setpoint - measurement,
-    )
 
 
 def scan(

@@ -1,0 +1,119 @@
+"""Time step and horizon of a simulation, chosen from the dynamics."""
+
+import math
+from collections.abc import Sequence
+from dataclasses import dataclass
+from functools import reduce
+
+from loopdoc.engineering.frequency import LoopStage, Margins, analyse_chains
+from loopdoc.engineering.process import in_series
+from loopdoc.engineering.structure import ControlStructure
+
+# Above this many steps the interval is widened as far as the loops do not notice.
+_STEPS_WANTED = 3000
+_STEPS_MOST = 40_000
+# A widened interval may turn the phase at any crossover by this much [rad], about one degree.
+_PHASE_UNNOTICED = 0.02
+# Horizons are checked for rest at their eighths, so that numbers of steps are multiples of eight.
+HORIZON_PARTS = 8
+
+
+@dataclass(frozen=True, slots=True)
+class Clock:
+    """Time step and number of steps of a simulation."""
+
+    step_s: float
+    """Time step [s]."""
+    steps: int
+    """Number of steps."""
+
+
+def _controlled_chain(structure: ControlStructure) -> list[LoopStage]:
+    """The loops of a structure, uncontrolled processes joined to the next loop out."""
+    stages, waiting = [], []
+    for process, controller in zip(structure.processes, structure.controllers, strict=True):
+        waiting.append(process)
+        if controller is not None:
+            stages.append(LoopStage(controller, reduce(in_series, waiting)))
+            waiting = []
+    return stages
+
+
+def _horizon_s(structure: ControlStructure, chain: Sequence[LoopStage], margins: Sequence[Margins]) -> float:
+    """Several times the slowest of the open-loop lags and the closed-loop modes [s]."""
+    lags = math.fsum(lag for process in structure.processes for lag in process.lags_s)
+    dead = math.fsum(process.dead_time_s for process in structure.processes)
+    intervals = math.fsum(stage.controller.interval_s for stage in chain)
+    slow = [6.0 * lags, 10.0 * (dead + intervals), 3.0 * structure.final_element.stroke_time_s]
+    for stage, found in zip(chain, margins, strict=True):
+        gain, reset = abs(stage.controller.gain * stage.process.gain), stage.controller.reset_s
+        if stage.process.integrating:
+            slow.append(6.0 * max(reset if math.isfinite(reset) else 0.0, 2.0 / gain))
+        elif math.isfinite(reset):
+            slow.append(6.0 * reset * (1.0 + 1.0 / gain))
+        if math.isfinite(found.crossover_rad_per_s):
+            slow.append(6.0 * min(found.max_sensitivity, 6.0) / found.crossover_rad_per_s)
+    longest = max(slow)
+    if longest <= 0.0:
+        raise ValueError("nothing in this structure takes time: there is no response to simulate")
+    return longest
+
+
+def _common_interval_s(intervals_s: Sequence[float]) -> float:
+    """Largest step that all intervals are whole multiples of, or the smallest of them if there is none near."""
+    micro = reduce(math.gcd, [max(1, round(interval * 1e6)) for interval in intervals_s])
+    smallest = min(intervals_s)
+    return micro / 1e6 if micro / 1e6 > smallest / 20.0 else smallest
+
+
+def _round_up(steps: float) -> int:
+    """A number of steps from a coarse series of multiples of eight, so that many runs share theirs."""
+    series = 2.0 ** (math.ceil(4.0 * math.log2(max(steps, 64.0) / HORIZON_PARTS)) / 4.0)
+    return int(HORIZON_PARTS * math.ceil(min(series, _STEPS_MOST / HORIZON_PARTS)))
+
+
+def _choose_clock(horizon_s: float, loops: Sequence[tuple[float, float]]) -> Clock:
+    """The clock of loops given as execution interval [s] and crossover [rad/s], 0 where there is none."""
+    fastest = max((crossover for _, crossover in loops), default=0.0)
+    # Without a crossover nothing is faster than the horizon divided by what it was multiplied with.
+    smooth = 0.1 / fastest if fastest > 0.0 else horizon_s / 600.0
+    executed = [interval for interval, _ in loops if interval > 0.0]
+    if not executed:
+        return Clock(step_s=smooth, steps=_round_up(horizon_s / smooth))
+    base = _common_interval_s(executed)
+    step = base / math.ceil(base / smooth)
+    if step == base:
+        for multiple in range(math.ceil(horizon_s / base / _STEPS_WANTED), 1, -1):
+            wider = multiple * base
+            if all(
+                (wider - interval) / 2.0 * crossover <= _PHASE_UNNOTICED
+                if interval < wider
+                else math.isclose(interval / wider, round(interval / wider), rel_tol=1e-9)
+                for interval, crossover in loops
+            ):
+                step = wider
+                break
+    return Clock(step_s=step, steps=_round_up(horizon_s / step))
+
+
+def choose_clocks(groups: Sequence[Sequence[ControlStructure]]) -> tuple[Clock, ...]:
+    """Return one clock per group of structures that are to be compared.
+
+    The step is the common execution interval; shorter where the loops are too fast for it to show; longer
+    where thousands of steps would be needed and no crossover loses a degree of phase by it. The horizon
+    is several times the slowest lag or closed-loop mode.
+    """
+    chains = [[_controlled_chain(structure) for structure in group] for group in groups]
+    flat = [chain for group in chains for chain in group if chain]
+    found = iter(analyse_chains(flat))
+    clocks = []
+    for group, group_chains in zip(groups, chains, strict=True):
+        horizon_s, loops = 0.0, []
+        for structure, chain in zip(group, group_chains, strict=True):
+            margins = next(found) if chain else ()
+            horizon_s = max(horizon_s, _horizon_s(structure, chain, margins))
+            for stage, margin in zip(chain, margins, strict=True):
+                crossover = margin.crossover_rad_per_s
+                loops.append((stage.controller.interval_s, crossover if math.isfinite(crossover) else 0.0))
+        clocks.append(_choose_clock(horizon_s, loops))
+    return tuple(clocks)

@@ -1,0 +1,378 @@
+"""Time responses of control structures, simulated scan by scan as they are executed.
+
+Many structures and scenarios advance together as columns of arrays: a whole plant is simulated at once.
+"""
+
+import math
+from collections import defaultdict
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from loopdoc.engineering.clock import HORIZON_PARTS, Clock, choose_clocks
+from loopdoc.engineering.process import FloatArray, Process, state_space, transition
+from loopdoc.engineering.response_metrics import ResponseMetrics, read_metrics
+from loopdoc.engineering.scanning import (
+    ControllerArrays,
+    Engine,
+    FinalElementArrays,
+    IntArray,
+    Traces,
+    controller_arrays,
+)
+from loopdoc.engineering.structure import ControlStructure, Scenario
+
+# Numbers held at once by one run: bounds the memory of a batch to some 50 MB.
+_BATCH_NUMBERS = 6_000_000
+# A run is cut short when nothing moved by more than this share of its peak for an eighth of the horizon.
+_AT_REST = 2e-4
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Response:
+    """A simulated time response; arrays are (n,) over time, percent of span or travel."""
+
+    scenario: Scenario
+    time_s: FloatArray
+    """Time since the upset [s]."""
+    measurement_pct: tuple[FloatArray, ...]
+    """Per process, innermost first."""
+    setpoint_pct: tuple[FloatArray | None, ...]
+    """Per process, after the setpoint limits; None where it is not controlled."""
+    output_pct: tuple[FloatArray | None, ...]
+    """Per process, after the output limits; None where it is not controlled."""
+    travel_pct: FloatArray
+    """Final element, mean over the step that begins at each time."""
+    metrics: ResponseMetrics
+
+
+@dataclass(frozen=True, slots=True)
+class _Column:
+    """One structure under one scenario: a column of the engine."""
+
+    place: tuple[int, int, int]
+    structure: ControlStructure
+    scenario: Scenario
+    clock: Clock
+
+    @property
+    def every(self) -> tuple[int, ...]:
+        """Steps between scans, per process, 0 where it is not controlled."""
+        return tuple(
+            0 if controller is None else max(1, round(controller.interval_s / self.clock.step_s))
+            for controller in self.structure.controllers
+        )
+
+    @property
+    def pattern(self) -> tuple[object, ...]:
+        """What columns must share to be run together."""
+        return (tuple(process.order for process in self.structure.processes), self.every)
+
+
+def _disturbances(
+    columns: Sequence[_Column], level: int, step_s: FloatArray, steps: int
+) -> FloatArray | None:
+    """(steps + 1, n) disturbance at the measurement of a level [%]: a step through the lags of its process."""
+    sizes = np.array(
+        [
+            math.fsum(d.size_pct for d in column.scenario.disturbances if d.level == level)
+            for column in columns
+        ]
+    )
+    moved = np.nonzero(sizes)[0].tolist()
+    if not moved:
+        return None
+    processes = [columns[i].structure.processes[level] for i in moved]
+    paths = [
+        Process(gain=1.0, lags_s=process.lags_s, integrating=process.integrating) for process in processes
+    ]
+    slopes = np.array([abs(process.gain) if process.integrating else 1.0 for process in processes])
+    system = state_space(paths)
+    advance, held, _ = transition(system, step_s[moved])
+    order = held.shape[1]
+    # With the input as a last state that stays at 1, each doubling takes all samples so far further on.
+    augmented = np.zeros((len(moved), order + 1, order + 1))
+    augmented[:, :order, :order], augmented[:, :order, order], augmented[:, order, order] = advance, held, 1.0
+    states = np.zeros((1, len(moved), order + 1))
+    states[..., order] = 1.0
+    while len(states) <= steps:
+        states = np.concatenate([states, np.einsum("nij,knj->kni", augmented, states)])
+        augmented = augmented @ augmented
+    path = np.einsum("nj,knj->kn", system.c, states[: steps + 1, :, :order]) + system.d
+    signal = np.zeros((steps + 1, len(columns)))
+    signal[:, moved] = path * (slopes * sizes[moved])
+    return signal
+
+
+def _engine(columns: Sequence[_Column], steps: int, *, keep_signals: bool) -> Engine:
+    structures = [column.structure for column in columns]
+    step_s = np.array([column.clock.step_s for column in columns])
+    elements = [structure.final_element for structure in structures]
+    valve_start = np.array([element.start_pct for element in elements])
+    stroke_s = np.array([element.stroke_time_s for element in elements])
+    controllers: list[ControllerArrays | None] = []
+    commanded = valve_start
+    for level, every in enumerate(columns[0].every):
+        measured = np.array([structure.start_pct[level] for structure in structures])
+        at_level = [c for c in (structure.controllers[level] for structure in structures) if c is not None]
+        if not at_level:
+            controllers.append(None)
+            continue
+        controllers.append(
+            controller_arrays(
+                at_level,
+                interval_s=step_s * every,
+                every=every,
+                output_start_pct=commanded,
+                setpoint_start_pct=measured,
+            )
+        )
+        commanded = measured
+    with np.errstate(divide="ignore"):
+        travel_per_step = 100.0 * step_s / stroke_s
+    return Engine(
+        processes=[
+            [structure.processes[level] for structure in structures] for level in range(len(controllers))
+        ],
+        controllers=controllers,
+        final_element=FinalElementArrays(
+            step_pct=np.array([column.scenario.final_element_step_pct for column in columns]),
+            travel_per_step_pct=travel_per_step,
+            half_backlash_pct=np.array([element.backlash_pct / 2.0 for element in elements]),
+            low_pct=0.0 - valve_start,
+            high_pct=100.0 - valve_start,
+        ),
+        setpoint_step_pct=np.array([column.scenario.setpoint_step_pct for column in columns]),
+        disturbances_pct=[_disturbances(columns, level, step_s, steps) for level in range(len(controllers))],
+        step_s=step_s,
+        steps=steps,
+        keep_signals=keep_signals,
+    )
+
+
+def _at_rest(traces: Traces, columns: IntArray, window: int) -> NDArray[np.bool_]:
+    """Which columns did not move over the last ``window`` steps, against what they had moved before."""
+    rest = np.ones(len(columns), dtype=bool)
+    for signal in (*traces.measurement_pct, traces.travel_pct):
+        tail = signal[-window - 1 :, columns]
+        peak = np.abs(signal[:, columns]).max(axis=0)
+        rest &= np.ptp(tail, axis=0) <= _AT_REST * peak
+    return rest
+
+
+def _run(columns: Sequence[_Column], *, keep_signals: bool) -> tuple[Engine, IntArray]:
+    """Run columns of one pattern until each has come to rest; return the steps at which they had."""
+    horizons = np.array([column.clock.steps for column in columns])
+    steps = int(horizons.max())
+    engine = _engine(columns, steps, keep_signals=keep_signals)
+    stops = horizons.copy()
+    going = np.ones(len(columns), dtype=bool)
+    checks: dict[int, IntArray] = {}
+    for horizon in np.unique(horizons):
+        for check in range(2, HORIZON_PARTS + 1):
+            at = int(horizon) * check // HORIZON_PARTS
+            checks[at] = np.union1d(
+                checks.get(at, np.zeros(0, dtype=np.intp)), np.nonzero(horizons == horizon)[0]
+            )
+    for at in sorted(checks):
+        traces = engine.run_to(at)
+        for window in np.unique(horizons[checks[at]] // HORIZON_PARTS):
+            members = checks[at][(horizons[checks[at]] // HORIZON_PARTS == window) & going[checks[at]]]
+            done = _at_rest(traces, members, int(window)) | (horizons[members] == at)
+            stops[members[done]] = at
+            going[members[done]] = False
+        if not going.any():
+            break
+    return engine, stops
+
+
+def _accepted_step_pct(column: _Column) -> float:
+    """The setpoint step of a column after the setpoint limits, 0 without a controller."""
+    controllers = [
+        (controller, start)
+        for controller, start in zip(column.structure.controllers, column.structure.start_pct, strict=True)
+        if controller is not None
+    ]
+    if not controllers:
+        return 0.0
+    outermost, start = controllers[-1]
+    asked = start + column.scenario.setpoint_step_pct
+    return min(max(asked, outermost.setpoint_low_pct), outermost.setpoint_high_pct) - start
+
+
+def _all_metrics(columns: Sequence[_Column], traces: Traces, stops: IntArray) -> list[ResponseMetrics]:
+    """Read the metrics of each column up to its own stop."""
+    found: dict[int, ResponseMetrics] = {}
+    for stop in np.unique(stops):
+        members = np.nonzero(stops == stop)[0].tolist()
+        part = [columns[i] for i in members]
+        outermost = [column.structure.controllers[-1] for column in part]
+        metrics = read_metrics(
+            traces.measurement_pct[-1][: stop + 1, members],
+            traces.travel_pct[: stop + 1, members],
+            step_s=np.array([column.clock.step_s for column in part]),
+            setpoint_step_pct=np.array([_accepted_step_pct(column) for column in part]),
+            disturbed_pct=np.array(
+                [math.fsum(abs(d.size_pct) for d in column.scenario.disturbances) for column in part]
+            ),
+            has_reset=np.array([c is not None and math.isfinite(c.reset_s) for c in outermost]),
+            executed_interval_s=[
+                tuple(every * column.clock.step_s for every in column.every if every) for column in part
+            ],
+        )
+        found.update(zip(members, metrics, strict=True))
+    return [found[i] for i in range(len(columns))]
+
+
+def _batches(columns: Sequence[_Column], signals_per_column: int) -> list[list[_Column]]:
+    """Columns that can run together, of like length, no more at once than memory should hold."""
+    by_pattern: dict[tuple[object, ...], list[_Column]] = defaultdict(list)
+    for column in columns:
+        by_pattern[column.pattern].append(column)
+    batches = []
+    for members in by_pattern.values():
+        members.sort(key=lambda column: column.clock.steps)
+        batch: list[_Column] = []
+        for column in members:
+            if batch and (len(batch) + 1) * column.clock.steps * signals_per_column > _BATCH_NUMBERS:
+                batches.append(batch)
+                batch = []
+            batch.append(column)
+        batches.append(batch)
+    return batches
+
+
+def _columns(
+    group: int, structures: Sequence[ControlStructure], scenarios: Sequence[Scenario], clock: Clock
+) -> list[_Column]:
+    for scenario in scenarios:
+        for disturbance in scenario.disturbances:
+            if any(not 0 <= disturbance.level < len(structure.processes) for structure in structures):
+                raise ValueError(f"scenario {scenario.name}: there is no level {disturbance.level}")
+    return [
+        _Column((group, i, j), structure, scenario, clock)
+        for i, structure in enumerate(structures)
+        for j, scenario in enumerate(scenarios)
+    ]
+
+
+def _response(column: _Column, traces: Traces, position: int, metrics: ResponseMetrics) -> Response:
+    """One column of the signals as a response, the start added."""
+    structure = column.structure
+    starts = structure.start_pct
+
+    def signal(values: FloatArray, start_pct: float) -> FloatArray:
+        absolute: FloatArray = values[:, position] + start_pct
+        absolute.flags.writeable = False
+        return absolute
+
+    setpoints: list[FloatArray | None] = []
+    outputs: list[FloatArray | None] = []
+    commanded, loop = structure.final_element.start_pct, 0
+    for controller, start in zip(structure.controllers, starts, strict=True):
+        if controller is None:
+            setpoints.append(None)
+            outputs.append(None)
+            continue
+        setpoints.append(signal(traces.setpoint_pct[loop], start))
+        outputs.append(signal(traces.output_pct[loop], commanded))
+        commanded, loop = start, loop + 1
+    time_s: FloatArray = column.clock.step_s * np.arange(len(traces.travel_pct), dtype=np.float64)
+    time_s.flags.writeable = False
+    return Response(
+        scenario=column.scenario,
+        time_s=time_s,
+        measurement_pct=tuple(
+            signal(values, start) for values, start in zip(traces.measurement_pct, starts, strict=True)
+        ),
+        setpoint_pct=tuple(setpoints),
+        output_pct=tuple(outputs),
+        travel_pct=signal(traces.travel_pct, structure.final_element.start_pct),
+        metrics=metrics,
+    )
+
+
+def simulate(
+    structures: Sequence[ControlStructure], scenarios: Sequence[Scenario], *, clock: Clock | None = None
+) -> tuple[tuple[Response, ...], ...]:
+    """Time responses of structures that are to be compared, scan by scan with limits, on one clock.
+
+    Parameters
+    ----------
+    structures : sequence of ControlStructure
+        For example a cascade and the single loop in its place.
+    scenarios : sequence of Scenario
+        Each is applied to each structure.
+    clock : Clock, optional
+        Time step and horizon; without it they are chosen from the dynamics.
+
+    Returns
+    -------
+    tuple of tuples of Response
+        One tuple per structure, one `Response` per scenario. A response ends early, at an eighth of the
+        horizon, once all signals have come to rest.
+
+    Raises
+    ------
+    ValueError
+        A scenario names a level that a structure does not have, or nothing takes time.
+
+    Source: K. J. Astrom, B. Wittenmark, Computer-Controlled Systems, 3rd ed. 1997, ch. 2 and 8
+    (sampling of lags and dead time, digital PID; chapters from memory).
+    """
+    chosen = choose_clocks([structures])[0] if clock is None else clock
+    found: dict[tuple[int, int, int], Response] = {}
+    columns = _columns(0, structures, scenarios, chosen)
+    runs = []
+    for batch in _batches(columns, 4 * max(len(structure.processes) for structure in structures)):
+        engine, stops = _run(batch, keep_signals=True)
+        runs.append((batch, engine, stops))
+    # Curves that are drawn together end together; the figures are read where each had come to rest.
+    end = max(int(stops.max()) for _, _, stops in runs)
+    for batch, engine, stops in runs:
+        traces = engine.run_to(end)
+        for position, metrics in enumerate(_all_metrics(batch, traces, stops)):
+            found[batch[position].place] = _response(batch[position], traces, position, metrics)
+    return tuple(tuple(found[0, i, j] for j in range(len(scenarios))) for i in range(len(structures)))
+
+
+def simulate_metrics(
+    groups: Sequence[tuple[Sequence[ControlStructure], Sequence[Scenario]]],
+) -> tuple[tuple[tuple[ResponseMetrics, ...], ...], ...]:
+    """Metrics of many groups of structures at once, a whole plant for example, without their signals.
+
+    Parameters
+    ----------
+    groups : sequence of (structures, scenarios)
+        Each group as in `simulate`, on a clock of its own chosen from its dynamics.
+
+    Returns
+    -------
+    nested tuples of ResponseMetrics
+        Per group, per structure, per scenario; the same figures as those of `simulate`.
+
+    Raises
+    ------
+    ValueError
+        A scenario names a level that a structure does not have, or nothing takes time.
+
+    Source: as for `simulate`.
+    """
+    clocks = choose_clocks([structures for structures, _ in groups])
+    columns = []
+    for group, ((structures, scenarios), clock) in enumerate(zip(groups, clocks, strict=True)):
+        columns += _columns(group, structures, scenarios, clock)
+    found: dict[tuple[int, int, int], ResponseMetrics] = {}
+    widest = max(
+        (len(structure.processes) for structures, _ in groups for structure in structures), default=1
+    )
+    for batch in _batches(columns, 1 + widest):
+        engine, stops = _run(batch, keep_signals=False)
+        metrics = _all_metrics(batch, engine.run_to(int(stops.max())), stops)
+        found.update(zip((column.place for column in batch), metrics, strict=True))
+    return tuple(
+        tuple(tuple(found[group, i, j] for j in range(len(scenarios))) for i in range(len(structures)))
+        for group, (structures, scenarios) in enumerate(groups)
+    )

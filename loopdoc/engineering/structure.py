@@ -1,0 +1,121 @@
+"""Control structures to be simulated and compared, and what upsets them.
+
+A `ControlStructure` is a chain of processes from one final element outward, with a controller on some
+or all of their measurements: on every one it is a cascade, on the outermost alone a single loop on the
+same final element, on none a loop in manual. Upsets enter all of them in the same places.
+"""
+
+import math
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+from loopdoc.engineering.frequency import LoopStage
+from loopdoc.engineering.pid import Controller
+from loopdoc.engineering.process import Process
+
+
+@dataclass(frozen=True, slots=True)
+class FinalElement:
+    """Valve or drive at the end of the chain, in percent of its travel."""
+
+    stroke_time_s: float = 0.0
+    """Time for the full travel at the full rate [s]; 0 is immediate."""
+    backlash_pct: float = 0.0
+    """Signal lost on a reversal [%]; the start is in the middle of it."""
+    start_pct: float = 50.0
+    """Travel before the upset [%]."""
+
+    def __post_init__(self) -> None:
+        if not (math.isfinite(self.stroke_time_s) and self.stroke_time_s >= 0.0):
+            raise ValueError("the stroke time must be a finite time of zero or more")
+        if not 0.0 <= self.backlash_pct < 100.0:
+            raise ValueError("the backlash must be zero or more, and below 100 %")
+        if not 0.0 <= self.start_pct <= 100.0:
+            raise ValueError("the final element starts outside its travel of 0 to 100 %")
+
+
+@dataclass(frozen=True, slots=True)
+class ControlStructure:
+    """Processes in a chain from one final element, and the controllers on their measurements."""
+
+    processes: tuple[Process, ...]
+    """Innermost first: each takes the measurement below it, the first the final element."""
+    controllers: tuple[Controller | None, ...]
+    """One per process; None where the measurement is not controlled."""
+    final_element: FinalElement = FinalElement()
+    start_pct: tuple[float, ...] = ()
+    """Measurements, and setpoints, before the upset [%]; 50 % each if left empty."""
+
+    def __post_init__(self) -> None:
+        if not self.processes:
+            raise ValueError("a control structure needs at least one process")
+        if len(self.controllers) != len(self.processes):
+            raise ValueError("a control structure needs one entry per process in its controllers")
+        if not self.start_pct:
+            object.__setattr__(self, "start_pct", (50.0,) * len(self.processes))
+        if len(self.start_pct) != len(self.processes):
+            raise ValueError("a control structure needs one start per process")
+
+
+def cascade_structure(
+    stages: Sequence[LoopStage], *, final_element: FinalElement, start_pct: tuple[float, ...] = ()
+) -> ControlStructure:
+    """Return the structure in which every level of the chain, innermost first, is controlled."""
+    return ControlStructure(
+        processes=tuple(stage.process for stage in stages),
+        controllers=tuple(stage.controller for stage in stages),
+        final_element=final_element,
+        start_pct=start_pct,
+    )
+
+
+def single_loop_structure(cascade: ControlStructure, controller: Controller) -> ControlStructure:
+    """Return the same processes with one controller, from the outermost measurement to the final element."""
+    levels = len(cascade.processes)
+    return ControlStructure(
+        processes=cascade.processes,
+        controllers=(None,) * (levels - 1) + (controller,),
+        final_element=cascade.final_element,
+        start_pct=cascade.start_pct,
+    )
+
+
+@dataclass(frozen=True, slots=True)
+class Disturbance:
+    """A step that reaches the measurement of a level through the lags of that level's own process.
+
+    Through a process that settles it ends at its full size; through an integrating one it is a load
+    of that size at the process input, and the measurement ramps.
+    """
+
+    level: int
+    """Level whose measurement it moves, 0 the innermost."""
+    size_pct: float
+    """Size [% of span]."""
+
+
+@dataclass(frozen=True, slots=True)
+class Scenario:
+    """What upsets a structure at time zero."""
+
+    name: str
+    setpoint_step_pct: float = 0.0
+    """Step of the outermost controller's setpoint [%]."""
+    disturbances: tuple[Disturbance, ...] = ()
+    final_element_step_pct: float = 0.0
+    """Step of the final element [%]; only where no controller moves it."""
+
+
+def standard_scenarios(levels: int, *, size_pct: float = 10.0) -> tuple[Scenario, ...]:
+    """Return a setpoint step and a disturbance per level, outermost last, each a share of span [%]."""
+    names = ("primary", "secondary", "tertiary")
+    disturbances = [
+        Scenario(
+            name=f"{names[levels - 1 - level]} disturbance"
+            if levels - 1 - level < len(names)
+            else f"level {level + 1} disturbance",
+            disturbances=(Disturbance(level, size_pct),),
+        )
+        for level in range(levels)
+    ]
+    return (Scenario(name="setpoint step", setpoint_step_pct=size_pct), *disturbances)
