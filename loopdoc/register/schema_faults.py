@@ -26,7 +26,7 @@ _COMPARED_CHARACTERS = 40
 _COMPARED_KEYS = 100
 _SHORT_LIST = 4
 _NEAR = 0.7  # of difflib's ratio: one or two letters wrong in a word
-_BY_TAG = ("loops", "final_elements", "instruments", "functions", "interlocks")
+_BY_TAG = ("loops", "final_elements", "instruments", "functions", "interlocks", "units", "texts")
 _SIGN = re.compile(r"[<>≤≥]=? *(.+)", re.DOTALL)
 _SUCH_AS = re.compile(r"such as `[^`]*`")
 _ANSWER = re.compile(r"(write | or )`")
@@ -101,42 +101,27 @@ class _Refused:
     # -- names
 
     def _name(self, end: int | None = None) -> str:
-        """What the value, or (by a negative end) one that encloses it, is called in a sentence."""
+        """What the value, or (by a negative end) one that encloses it, is called in a sentence after its tag."""
         path = self.path[:end]
-        title = self.expected[len(path)].title
+        expected = self.expected[len(path)]
         if not path:
-            return "the register" if title == "register" else "an included file"
-        if len(path) == 1:
-            return f"`{path[0]}`"
-        section, which = path[0], path[1]
-        if section == "texts":
-            head = f"unit {which}'s texts"
-        elif isinstance(which, int):
-            head = f"{self.expected[2].title} {which + 1}"
-        elif section in _BY_TAG:
-            head = _shown(which)
-        elif section == "units":
-            head = f"unit {_shown(which)}"
-        else:
-            return f"the {self.expected[1].title}'s `{_shown(which)}`"
-        if len(path) == 2:
-            return head
+            return "the register" if expected.title == "register" else "the file"
         last = path[-1]
+        if len(path) == 1:
+            return f"`{last}`" if expected.entry or not expected.is_mapping else f"the {expected.title}"
         if isinstance(last, int):
-            name = f"`{path[-2]}` entry {last + 1}"
-        elif self.expected[len(path) - 1].entry is not None:
-            name = f"{title} {_shown(last)}"
-        elif len(path) > 3 and path[-2] == "alarms":
-            name = f"{str(last).replace('_', ' ')} alarm"
-        else:
-            name = title
-        return f"{head}'s {name}" if " " not in head else f"{name} of {head}"
+            return f"{expected.title} {last + 1}" if len(path) == 2 else f"entry {last + 1} of `{path[-2]}`"
+        if len(path) > 2 and self.expected[len(path) - 1].entry:
+            return f"the {expected.title} {_shown(last)}"
+        if path[-2] == "alarms":
+            return f"the {str(last).replace('_', ' ')} alarm"
+        return f"the {expected.title}"
 
     def _subject(self) -> str:
         """The value's key and where it belongs, or its name where it is an entry."""
-        if len(self.path) < 2 or isinstance(self.path[-1], int) or self.expected[-2].entry is not None:
+        if not self.path or isinstance(self.path[-1], int) or self.expected[-2].entry:
             return self._name()
-        return f"`{_shown(self.path[-1])}` of {self._name(-1)}"
+        return f"`{_shown(self.path[-1])}`" + (f" of {self._name(-1)}" if len(self.path) > 1 else "")
 
     # -- keys
 
@@ -160,8 +145,11 @@ class _Refused:
     def _of_keys(self, expected: Expected, value: Mapping[str, Any]) -> Iterator[Fault]:
         missing = [key for key in expected.required if key not in value and not self._stands_near(key)]
         unknown = [key for key in value if key not in expected.keys] if expected.entry is None else []
-        by_tag = len(self.path) == 2 and self.path[0] in _BY_TAG
-        owner = f"{expected.title} {self._name()}" if by_tag else self._name()
+        owner = (
+            f"{_article(expected.title)} {expected.title}"
+            if len(self.path) == 2 and self.path[0] in _BY_TAG
+            else self._name()
+        )
         free = [key for key in expected.keys if key not in value]
         below = {key: self.format.expected(schema) for key, schema in expected.keys.items()}
         for count, key in enumerate(unknown):
@@ -283,7 +271,7 @@ class _Refused:
 
     def _of_quantity(self, expected: Expected, word: str, error: QuantityError) -> Fault:
         """The fault of a number with its unit, after a word such as `above`."""
-        reason, _, remedy = " ".join(str(error).split()).partition("; ")
+        reason, remedy = (" ".join(part.split()) for part in (error.fault, error.remedy))
         if _SUCH_AS.search(remedy):
             remedy = _SUCH_AS.sub(lambda _: _such_as(expected), remedy)
             remedy += f", or {_HOLD}" if expected.may_be_held else ""
@@ -314,8 +302,12 @@ def _wanted(expected: Expected, value: str = "") -> str:
     if "number" in expected.types:
         return f"write a number without a unit, {_such_as(expected)}{or_hold}"
     title = expected.title
-    article = "" if title == "text" else "an " if title[0] in "aeiou" else "a "
-    return f"write {article}{title} {_such_as(expected)}{or_hold}"
+    what = title if title == "text" else f"{_article(title)} {title}"
+    return f"write {what} {_such_as(expected)}{or_hold}"
+
+
+def _article(noun: str) -> str:
+    return "an" if noun[0] in "aeiou" else "a"
 
 
 def _such_as(expected: Expected) -> str:
