@@ -226,6 +226,8 @@ class ScanCoefficients:
     """c [dimensionless]."""
     filter_gain: FloatArray
     """Share of the way the filtered measurement goes in a scan [dimensionless]; 1 for no filter."""
+    unit_weight: bool
+    """True where every controller has the setpoint weight 1."""
     has_rate: bool
     """True where any of the controllers has rate."""
     has_filter: bool
@@ -279,6 +281,7 @@ def scan_coefficients(controllers: Sequence[Controller], interval_s: FloatArray)
         derivative_gain=gain * rate / (smoothing + h),
         derivative_setpoint_weight=np.array([c.derivative_setpoint_weight for c in controllers]),
         filter_gain=filter_gain,
+        unit_weight=all(c.setpoint_weight == 1.0 for c in controllers),
         has_rate=bool(np.any(rate > 0.0)),
         has_filter=bool(np.any(filter_lag > 0.0)),
     )
@@ -308,8 +311,12 @@ def scan(
     if coefficients.has_filter:
         state.filtered = state.filtered + coefficients.filter_gain * (measurement - state.filtered)
         measurement = state.filtered
-    state.integral = state.integral + coefficients.integral_gain * (setpoint - measurement)
-    output = coefficients.setpoint_gain * setpoint - coefficients.gain * measurement + state.integral
+    error = setpoint - measurement
+    state.integral = state.integral + coefficients.integral_gain * error
+    if coefficients.unit_weight:
+        output = coefficients.gain * error + state.integral
+    else:
+        output = coefficients.setpoint_gain * setpoint - coefficients.gain * measurement + state.integral
     if coefficients.has_rate:
         derivative_input = coefficients.derivative_setpoint_weight * setpoint - measurement
         state.derivative = coefficients.derivative_decay * state.derivative + coefficients.derivative_gain * (

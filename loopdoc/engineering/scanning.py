@@ -138,6 +138,12 @@ class _ProcessArrays:
     def advance(self, history: FloatArray, row: int) -> FloatArray:
         """Advance the state by one step, to ``row`` of the input history, and return the (n,) output [%]."""
         inputs = [(self._delayed(history, row, tap), state, through) for tap, state, through in self._taps]
+        if self._plain and self.order == 1:
+            value = self._advance[0][0] * self.state[0]
+            for delayed, tap, _ in inputs:
+                value += tap[0] * delayed
+            self.state[0] = value
+            return value
         new = []
         for i, factors in enumerate(self._advance):
             value = factors[0] * self.state[0]
@@ -161,8 +167,13 @@ class _ProcessArrays:
 class _FinalElement:
     """Stroke rate and backlash between the signal and the travel of the final element."""
 
-    def __init__(self, arrays: FinalElementArrays) -> None:
+    def __init__(self, arrays: FinalElementArrays, innermost: ControllerArrays | None) -> None:
         self._arrays = arrays
+        # Output limits inside the travel leave nothing for its ends to do.
+        self._ends = innermost is None or bool(
+            np.any(innermost.output_low_pct < arrays.low_pct)
+            or np.any(innermost.output_high_pct > arrays.high_pct)
+        )
         self._rated = bool(np.isfinite(arrays.travel_per_step_pct).any())
         self._loose = bool((arrays.half_backlash_pct > 0.0).any())
         self._drive = np.zeros_like(arrays.step_pct)
@@ -171,7 +182,9 @@ class _FinalElement:
     def move(self, signal: FloatArray) -> FloatArray:
         """Return the (n,) mean travel over a step whose signal is held [%]."""
         arrays = self._arrays
-        target = np.minimum(np.maximum(signal, arrays.low_pct), arrays.high_pct)
+        target = signal
+        if self._ends:
+            target = np.minimum(np.maximum(signal, arrays.low_pct), arrays.high_pct)
         mean = target
         if self._rated:
             most = arrays.travel_per_step_pct
@@ -231,7 +244,7 @@ class Engine:
             if controller is not None
         ]
         self._loops = _Loops(controlled, n) if controlled else None
-        self._valve = _FinalElement(final_element)
+        self._valve = _FinalElement(final_element, controlled[0][1] if controlled else None)
         self._manual_pct = final_element.step_pct
         self._disturbances = disturbances_pct
         self._setpoint = setpoint_step_pct
@@ -324,10 +337,10 @@ class _Loops:
                     setpoint = np.minimum(
                         np.maximum(asked, arrays.setpoint_low_pct), arrays.setpoint_high_pct
                     )
-                    limited = limited or bool((setpoint != asked).any())
+                    limited = limited or int(np.count_nonzero(setpoint != asked)) > 0
                 computed = scan(arrays.coefficients, self._memory[loop], setpoint, measured[level])
                 output = np.minimum(np.maximum(computed, arrays.output_low_pct), arrays.output_high_pct)
-                limited = limited or bool((output != computed).any())
+                limited = limited or int(np.count_nonzero(output != computed)) > 0
                 self.setpoint[loop], self._computed[loop], self.output[loop] = setpoint, computed, output
                 due.append(loop)
             setpoint = self.output[loop]

@@ -27,7 +27,7 @@ from loopdoc.engineering.structure import ControlStructure, Scenario
 # Numbers held at once by one run: bounds the memory of a batch to some 50 MB.
 _BATCH_NUMBERS = 6_000_000
 # A run is cut short when nothing moved by more than this share of its peak for an eighth of the horizon.
-_AT_REST = 2e-4
+_AT_REST = 1e-3
 
 
 @dataclass(frozen=True, slots=True, eq=False)

@@ -1,0 +1,445 @@
+"""Published tuning rules, and tuning to a given robustness.
+
+Gains are per unit (percent of output per percent of measurement); the sign of a controller gain is that
+of the process gain, so that error = setpoint - measurement is driven to zero.
+"""
+
+import math
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass
+from typing import Literal
+
+import numpy as np
+
+from loopdoc.engineering.frequency import LoopStage, analyse_chain, maximum_sensitivities
+from loopdoc.engineering.pid import Controller, SeriesSettings, StandardSettings, standard_from_series
+from loopdoc.engineering.process import FloatArray, Process
+from loopdoc.engineering.reduction import ReducedModel, reduce_to_first_order, reduce_to_second_order
+
+Actions = Literal["P", "PI", "PID"]
+
+
+@dataclass(frozen=True, slots=True)
+class UltimatePoint:
+    """Where proportional control alone oscillates steadily."""
+
+    gain: float
+    """Ultimate gain Ku [dimensionless, % per %], with the sign of the process gain."""
+    period_s: float
+    """Ultimate period Pu [s]."""
+
+
+def ultimate_point(process: Process, *, interval_s: float = 0.0) -> UltimatePoint:
+    """Ultimate gain and period from the exact frequency response.
+
+    Parameters
+    ----------
+    process : Process
+        The process.
+    interval_s : float
+        Execution interval of the controller [s].
+
+    Returns
+    -------
+    UltimatePoint
+        Gain [dimensionless] and period [s].
+
+    Raises
+    ------
+    ValueError
+        No gain makes the loop oscillate: the phase never reaches -180 degrees.
+
+    Source: J. G. Ziegler, N. B. Nichols, "Optimum settings for automatic controllers", Trans. ASME
+    64:759-768, 1942.
+    """
+    scale = (
+        1.0 / (process.dead_time_s + interval_s + math.fsum(process.lags_s)) if process.integrating else 1.0
+    )
+    gain = scale / process.gain
+    # The margin is sharpest where the loop gain at the phase crossover is near 1.
+    for _ in range(8):
+        margins = analyse_chain([LoopStage(Controller(gain, interval_s=interval_s), process)])[0]
+        if not math.isfinite(margins.gain_margin):
+            raise ValueError(
+                "no gain makes this loop oscillate steadily: its phase never reaches -180 degrees"
+            )
+        gain *= margins.gain_margin
+        if 0.5 < margins.gain_margin < 2.0:
+            break
+        gain *= 0.7
+    return UltimatePoint(gain=gain, period_s=2.0 * math.pi / margins.phase_crossover_rad_per_s)
+
+
+# --- rules ---------------------------------------------------------------------------------------
+
+
+def _dead_time(model: ReducedModel) -> float:
+    if model.dead_time_s <= 0.0:
+        raise ValueError("this rule needs a dead time above zero: without one it asks for infinite gain")
+    return model.dead_time_s
+
+
+def _self_regulating(model: ReducedModel) -> None:
+    if model.integrating:
+        raise ValueError("this rule is for processes that settle, not for integrating ones")
+    if model.lag_s <= 0.0:
+        raise ValueError("this rule needs a lag above zero")
+
+
+def simc_pi(model: ReducedModel, *, closed_loop_s: float) -> StandardSettings:
+    """Return the SIMC PI settings for a closed-loop time constant [s].
+
+    Source: S. Skogestad, J. Process Control 13:291-309, 2003, eqs. 23-24 (numbers from memory).
+    """
+    wanted = closed_loop_s + model.dead_time_s
+    if wanted <= 0.0 or model.lag_s <= 0.0:
+        raise ValueError(
+            "SIMC needs a lag, and a closed-loop time and dead time that are together above zero"
+        )
+    return StandardSettings(gain=1.0 / (model.slope * wanted), reset_s=min(model.lag_s, 4.0 * wanted))
+
+
+def simc_pid(model: ReducedModel, *, closed_loop_s: float) -> SeriesSettings:
+    """Return the SIMC PID settings, in the series form, for a closed-loop time constant [s].
+
+    Source: S. Skogestad, J. Process Control 13:291-309, 2003, eqs. 23-25 (numbers from memory).
+    """
+    pi = simc_pi(model, closed_loop_s=closed_loop_s)
+    return SeriesSettings(gain=pi.gain, reset_s=pi.reset_s, rate_s=model.second_lag_s)
+
+
+def lambda_pi(model: ReducedModel, *, lambda_s: float) -> StandardSettings:
+    """Return the lambda PI settings for a closed-loop time constant [s]; integrating after Chien and Fruehauf.
+
+    Source: D. E. Seborg and others, Process Dynamics and Control, ch. 12 (direct synthesis; from memory);
+    I-L. Chien, P. S. Fruehauf, Chem. Eng. Prog. 86(10):33-41, 1990 (integrating; from memory).
+    """
+    wanted = lambda_s + model.dead_time_s
+    if lambda_s <= 0.0 or model.lag_s <= 0.0:
+        raise ValueError("lambda tuning needs a lag and a closed-loop time above zero")
+    if model.integrating:
+        reset_s = 2.0 * lambda_s + model.dead_time_s
+        return StandardSettings(gain=reset_s / (model.gain * wanted**2), reset_s=reset_s)
+    return StandardSettings(gain=model.lag_s / (model.gain * wanted), reset_s=model.lag_s)
+
+
+def imc_pid(model: ReducedModel, *, lambda_s: float) -> StandardSettings:
+    """Return the internal model control PID settings for a first-order model with dead time.
+
+    Source: D. E. Rivera, M. Morari, S. Skogestad, Ind. Eng. Chem. Process Des. Dev. 25:252-265, 1986
+    (formulas from memory).
+    """
+    _self_regulating(model)
+    if lambda_s <= 0.0:
+        raise ValueError("internal model control needs a closed-loop time above zero")
+    twice = 2.0 * model.lag_s + model.dead_time_s
+    return StandardSettings(
+        gain=twice / (model.gain * (2.0 * lambda_s + model.dead_time_s)),
+        reset_s=twice / 2.0,
+        rate_s=model.lag_s * model.dead_time_s / twice,
+    )
+
+
+def ziegler_nichols_ultimate(point: UltimatePoint, actions: Actions) -> StandardSettings:
+    """Return the Ziegler-Nichols settings from the ultimate gain and period.
+
+    Source: J. G. Ziegler, N. B. Nichols, Trans. ASME 64:759-768, 1942.
+    """
+    if actions == "P":
+        return StandardSettings(0.5 * point.gain)
+    if actions == "PI":
+        return StandardSettings(0.45 * point.gain, point.period_s / 1.2)
+    return StandardSettings(0.6 * point.gain, point.period_s / 2.0, point.period_s / 8.0)
+
+
+def ziegler_nichols_reaction_curve(model: ReducedModel, actions: Actions) -> StandardSettings:
+    """Return the Ziegler-Nichols settings from the reaction curve.
+
+    Source: J. G. Ziegler, N. B. Nichols, Trans. ASME 64:759-768, 1942.
+    """
+    dead_time = _dead_time(model)
+    unit = 1.0 / (model.slope * dead_time)
+    if actions == "P":
+        return StandardSettings(unit)
+    if actions == "PI":
+        return StandardSettings(0.9 * unit, dead_time / 0.3)
+    return StandardSettings(1.2 * unit, 2.0 * dead_time, 0.5 * dead_time)
+
+
+def cohen_coon(model: ReducedModel, actions: Actions) -> StandardSettings:
+    """Return the Cohen-Coon settings for a first-order model with dead time.
+
+    Source: G. H. Cohen, G. A. Coon, "Theoretical consideration of retarded control", Trans. ASME
+    75:827-834, 1953.
+    """
+    _self_regulating(model)
+    dead_time = _dead_time(model)
+    r = dead_time / model.lag_s
+    if actions == "P":
+        return StandardSettings((1.0 / r + 1.0 / 3.0) / model.gain)
+    if actions == "PI":
+        return StandardSettings(
+            (0.9 / r + 1.0 / 12.0) / model.gain, dead_time * (30.0 + 3.0 * r) / (9.0 + 20.0 * r)
+        )
+    return StandardSettings(
+        (4.0 / (3.0 * r) + 0.25) / model.gain,
+        dead_time * (32.0 + 6.0 * r) / (13.0 + 8.0 * r),
+        dead_time * 4.0 / (11.0 + 2.0 * r),
+    )
+
+
+def amigo(model: ReducedModel, actions: Literal["PI", "PID"]) -> StandardSettings:
+    """Return the AMIGO settings for a first-order or integrating model with dead time.
+
+    Source: K. J. Astrom, T. Hagglund, Advanced PID Control, ISA 2006, eqs. 7.5, 7.7, 7.32, 7.33.
+    """
+    dead_time = _dead_time(model)
+    if model.integrating:
+        unit = 1.0 / (model.gain * dead_time)
+        if actions == "PI":
+            return StandardSettings(0.35 * unit, 13.4 * dead_time)
+        return StandardSettings(0.45 * unit, 8.0 * dead_time, 0.5 * dead_time)
+    _self_regulating(model)
+    lag = model.lag_s
+    if actions == "PI":
+        weight = 0.35 - dead_time * lag / (dead_time + lag) ** 2
+        return StandardSettings(
+            (0.15 + weight * lag / dead_time) / model.gain,
+            0.35 * dead_time
+            + 13.0 * dead_time * lag**2 / (lag**2 + 12.0 * dead_time * lag + 7.0 * dead_time**2),
+        )
+    return StandardSettings(
+        (0.2 + 0.45 * lag / dead_time) / model.gain,
+        (0.4 * dead_time + 0.8 * lag) * dead_time / (dead_time + 0.1 * lag),
+        0.5 * dead_time * lag / (0.3 * dead_time + lag),
+    )
+
+
+def tyreus_luyben(point: UltimatePoint, actions: Literal["PI", "PID"]) -> StandardSettings:
+    """Return the Tyreus-Luyben settings from the ultimate gain and period.
+
+    Source: B. D. Tyreus, W. L. Luyben, Ind. Eng. Chem. Res. 31:2625-2628, 1992.
+    """
+    if actions == "PI":
+        return StandardSettings(point.gain / 3.2, 2.2 * point.period_s)
+    return StandardSettings(point.gain / 2.2, 2.2 * point.period_s, point.period_s / 6.3)
+
+
+@dataclass(frozen=True, slots=True)
+class Recommendation:
+    """What one published rule says for a process."""
+
+    rule: str
+    """Name of the rule and of the actions it sets."""
+    settings: StandardSettings
+    """The settings in the standard form."""
+
+
+def recommendations(process: Process, *, interval_s: float = 0.0) -> tuple[Recommendation, ...]:
+    """Return what each rule recommends; a rule that does not fit the process is left out.
+
+    SIMC is taken with a closed-loop time equal to the effective dead time (its default), lambda and IMC
+    with one equal to the lag (three dead times when integrating), at least the dead time.
+    """
+    first = reduce_to_first_order(process, interval_s=interval_s)
+    second = reduce_to_second_order(process, interval_s=interval_s)
+    lambda_s = max(first.dead_time_s, 3.0 * first.dead_time_s if first.integrating else first.lag_s)
+    rules: list[tuple[str, Callable[[], StandardSettings]]] = [
+        ("SIMC PI", lambda: simc_pi(first, closed_loop_s=first.dead_time_s)),
+        ("SIMC PID", lambda: standard_from_series(simc_pid(second, closed_loop_s=second.dead_time_s))),
+        ("lambda PI", lambda: lambda_pi(first, lambda_s=lambda_s)),
+        ("IMC PID", lambda: imc_pid(first, lambda_s=lambda_s)),
+        ("AMIGO PI", lambda: amigo(first, "PI")),
+        ("AMIGO PID", lambda: amigo(first, "PID")),
+        ("Ziegler-Nichols PI, reaction curve", lambda: ziegler_nichols_reaction_curve(first, "PI")),
+        ("Ziegler-Nichols PID, reaction curve", lambda: ziegler_nichols_reaction_curve(first, "PID")),
+        ("Cohen-Coon PI", lambda: cohen_coon(first, "PI")),
+        ("Cohen-Coon PID", lambda: cohen_coon(first, "PID")),
+    ]
+    try:
+        point = ultimate_point(process, interval_s=interval_s)
+    except ValueError:
+        pass
+    else:
+        rules += [
+            ("Ziegler-Nichols PI, ultimate gain", lambda: ziegler_nichols_ultimate(point, "PI")),
+            ("Ziegler-Nichols PID, ultimate gain", lambda: ziegler_nichols_ultimate(point, "PID")),
+            ("Tyreus-Luyben PI", lambda: tyreus_luyben(point, "PI")),
+            ("Tyreus-Luyben PID", lambda: tyreus_luyben(point, "PID")),
+        ]
+    found = []
+    for name, rule in rules:
+        try:
+            found.append(Recommendation(name, rule()))
+        except ValueError:
+            continue
+    return tuple(found)
+
+
+# --- tuning to a robustness ----------------------------------------------------------------------
+
+
+@dataclass(frozen=True, slots=True)
+class SensitivityTuning:
+    """SIMC settings whose closed-loop time was chosen for a given maximum sensitivity."""
+
+    settings: StandardSettings
+    closed_loop_s: float
+    """Tuning constant of the rule [s]; negative where more is asked than the model's dead time allows."""
+    max_sensitivity: float
+    """Ms reached, from the exact frequency response of the whole process [dimensionless]."""
+
+
+class _SimcLoop:
+    """One loop as a function of the closed-loop time that SIMC is asked for."""
+
+    def __init__(self, process: Process, interval_s: float, filter_s: float, with_rate: bool) -> None:
+        self.process = process
+        self._interval_s = interval_s
+        self._filter_s = filter_s
+        self._model = (reduce_to_second_order if with_rate else reduce_to_first_order)(
+            process, interval_s=interval_s
+        )
+        # The default of the rule, a closed-loop time equal to the dead time; a tenth of the lag without one.
+        lag_s = math.fsum(process.lags_s) + self._filter_s or 1.0 / abs(process.gain)
+        self.usual_wanted_s = 2.0 * self._model.dead_time_s or 0.1 * lag_s
+
+    def settings(self, wanted_s: float) -> StandardSettings:
+        """Settings for a closed-loop time plus dead time [s]."""
+        closed_loop_s = wanted_s - self._model.dead_time_s
+        return standard_from_series(simc_pid(self._model, closed_loop_s=closed_loop_s))
+
+    def stage(self, wanted_s: float) -> LoopStage:
+        settings = self.settings(wanted_s)
+        controller = Controller(
+            settings.gain,
+            settings.reset_s,
+            settings.rate_s,
+            interval_s=self._interval_s,
+            measurement_filter_s=self._filter_s,
+        )
+        return LoopStage(controller, self.process)
+
+    def tuning(self, wanted_s: float, max_sensitivity: float) -> SensitivityTuning:
+        return SensitivityTuning(
+            settings=self.settings(wanted_s),
+            closed_loop_s=wanted_s - self._model.dead_time_s,
+            max_sensitivity=max_sensitivity,
+        )
+
+
+def simc_at_sensitivities(
+    processes: Sequence[Process],
+    *,
+    target_ms: Sequence[float],
+    interval_s: Sequence[float],
+    measurement_filter_s: Sequence[float] | None = None,
+    with_rate: bool = False,
+) -> tuple[SensitivityTuning | None, ...]:
+    """SIMC settings of many loops, each tuned to its own maximum sensitivity.
+
+    Parameters
+    ----------
+    processes : sequence of n Process
+        From the final element to the measurement.
+    target_ms : sequence of n float
+        Wanted maximum sensitivity [dimensionless] > 1.
+    interval_s : sequence of n float
+        Execution interval [s].
+    measurement_filter_s : sequence of n float, optional
+        Measurement filter [s]; none if left out.
+    with_rate : bool
+        PID on the second-order model instead of PI on the first-order model.
+
+    Returns
+    -------
+    tuple of n SensitivityTuning or None
+        None where no tuning has that sensitivity: the process has no lag to reset on, or so little
+        dead time that no gain disturbs it.
+
+    Raises
+    ------
+    ValueError
+        A target is not a finite number above 1.
+
+    Source: S. Skogestad, J. Process Control 13:291-309, 2003 (rule); K. J. Astrom, T. Hagglund,
+    Advanced PID Control, ISA 2006, section 4.5 (Ms as the measure of robustness).
+    """
+    if not all(math.isfinite(target) and target > 1.0 for target in target_ms):
+        raise ValueError("a target sensitivity must be a finite number above 1")
+    filters = [0.0] * len(processes) if measurement_filter_s is None else measurement_filter_s
+    loops = [
+        _SimcLoop(process, interval, filter_s, with_rate)
+        for process, interval, filter_s in zip(processes, interval_s, filters, strict=True)
+    ]
+    found: list[SensitivityTuning | None] = [None] * len(loops)
+    rows = [i for i, loop in enumerate(loops) if loop.process.order > 0]
+    target = np.log(np.asarray(target_ms, dtype=np.float64))
+
+    def excess(members: Sequence[int], ln_wanted: FloatArray) -> FloatArray:
+        """ln Ms less its target for (k, m) candidates of the closed-loop time plus dead time, at most 3."""
+        stages = [
+            loops[i].stage(math.exp(candidate))
+            for i, candidates in zip(members, ln_wanted, strict=True)
+            for candidate in candidates
+        ]
+        ms = maximum_sensitivities(stages).reshape(ln_wanted.shape)
+        limited: FloatArray = np.minimum(np.log(ms) - target[list(members), None], 3.0)
+        return limited
+
+    # Ms falls as the closed loop is made slower: first bracket the target, then close in on it.
+    low, high = np.zeros(len(loops)), np.zeros(len(loops))
+    f_low, f_high = np.zeros(len(loops)), np.zeros(len(loops))
+    middle = {i: math.log(loops[i].usual_wanted_s) for i in rows}
+    bracketed: list[int] = []
+    for _ in range(5):
+        if not rows:
+            break
+        spread = np.array([middle[i] for i in rows])[:, None] + math.log(2.0) * np.arange(-3.0, 4.0)
+        values = excess(rows, spread)
+        for i, x, f in zip(list(rows), spread, values, strict=True):
+            if f[0] < 0.0 or f[-1] >= 0.0:
+                middle[i] += math.log(64.0) * (-1.0 if f[0] < 0.0 else 1.0)
+                continue
+            last = int(np.nonzero(f >= 0.0)[0][-1])
+            low[i], f_low[i], high[i], f_high[i] = x[last], f[last], x[last + 1], f[last + 1]
+            bracketed.append(i)
+            rows.remove(i)
+    open_rows = bracketed
+    for _ in range(40):
+        if not open_rows:
+            break
+        at = np.array(open_rows)
+        x = high[at] - f_high[at] * (high[at] - low[at]) / (f_high[at] - f_low[at])
+        f = excess(open_rows, x[:, None])[:, 0]
+        crossed = f * f_high[at] < 0.0
+        low[at] = np.where(crossed, high[at], low[at])
+        f_low[at] = np.where(crossed, f_high[at], 0.5 * f_low[at])
+        high[at], f_high[at] = x, f
+        open_rows = [i for i, value in zip(open_rows, f, strict=True) if abs(value) > 1e-7]
+    for i in bracketed:
+        found[i] = loops[i].tuning(math.exp(high[i]), math.exp(target[i] + f_high[i]))
+    return tuple(found)
+
+
+def simc_at_sensitivity(
+    process: Process,
+    *,
+    target_ms: float,
+    interval_s: float,
+    measurement_filter_s: float = 0.0,
+    with_rate: bool = False,
+) -> SensitivityTuning:
+    """Return the SIMC settings that give one loop a maximum sensitivity; see `simc_at_sensitivities`."""
+    found = simc_at_sensitivities(
+        [process],
+        target_ms=[target_ms],
+        interval_s=[interval_s],
+        measurement_filter_s=[measurement_filter_s],
+        with_rate=with_rate,
+    )[0]
+    if found is None:
+        raise ValueError(
+            "SIMC cannot be tuned to that sensitivity: the process has no lag, or hardly any dead time"
+        )
+    return found
