@@ -107,9 +107,10 @@ def _orders(loop: Loop) -> Iterator[Draft]:
             limit = low.to(high.unit.symbol)
             # The normal value may be one of the limits; a low limit must leave room below the high one.
             if above(limit, high.value) or ("normal" not in (lower, upper) and not below(limit, high.value)):
+                relation = "is above" if above(limit, high.value) else "equals"
                 yield draft(
                     loop.tag,
-                    f"{name} {lower}, {in_both(low, high.unit)}, is not below {name} {upper}, {high}",
+                    f"{name} {lower}, {in_both(low, high.unit)}, {relation} {name} {upper}, {high}",
                     remedy="put the values in order",
                     at=group.origin.place(upper),
                     related=((group.origin.place(lower), f"{name} {lower}"),),

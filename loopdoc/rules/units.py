@@ -203,8 +203,16 @@ def _against_range(
     is_difference: bool = False,
 ) -> _Value:
     band = known(measurement.range) if measurement else None
-    unit, against = (band.unit, "the measurement range") if band else (None, "the unit of the measurement")
+    unit = _unit(part)
+    against = "the measurement range" if unit else "the unit of the measurement"
     return _Value(what, written, place, unit, against, is_difference, band, range_place(part))
+
+
+def _unit(part: Loop | Instrument) -> Unit | None:
+    """The unit of a measurement; None where its range is not known, or is not one of what is measured."""
+    measurement = known(part.measurement)
+    band = known(measurement.range) if measurement else None
+    return band.unit if band and _measured_in_another_kind(part) is None else None
 
 
 def _of_alarm(alarm: Alarm, loop: Loop, measurement: Measurement | None) -> Iterator[_Value]:
@@ -233,11 +241,10 @@ def _commanded(route: Route) -> tuple[Unit | None, str, bool, Place | None]:
         return _PERCENT, f"the output on {route.end.tag}", False, None
     if "ratio" in kinds:
         return UNITS["fraction"], f"the ratio set in {route.via[kinds.index('ratio')].tag}", False, None
-    measurement = known(route.end.measurement)
-    band = known(measurement.range) if measurement else None
-    if band is None or "characteriser" in kinds:
+    unit = None if "characteriser" in kinds else _unit(route.end)
+    if unit is None:
         return None, f"the unit in which {route.end.tag} is asked", False, None
-    return band.unit, f"the measurement of {route.end.tag}", "sum" in kinds, range_place(route.end)
+    return unit, f"the measurement of {route.end.tag}", "sum" in kinds, range_place(route.end)
 
 
 def _of_trip(trip: Trip) -> Iterator[_Value]:
@@ -302,6 +309,4 @@ def _gain(controlled: ControlledLoop, route: Route, process: Process, gain: Gain
 def _moved(route: Route) -> tuple[Unit | None, str]:
     if not isinstance(route.end, Loop):
         return _PERCENT, f"the opening of {route.end.tag}"
-    measurement = known(route.end.measurement)
-    band = known(measurement.range) if measurement else None
-    return (band.unit if band else None), f"the measurement of {route.end.tag}"
+    return _unit(route.end), f"the measurement of {route.end.tag}"
