@@ -46,6 +46,12 @@ _OTHER_WORDS = {
     "valves": "final_elements", "trip": "trips", "type": "kind", "vote": "voting",
 }  # fmt: skip
 
+
+def _parse_ratio_range(text: str) -> object:
+    """Read the span of a ratio setting, which has a unit where the two flows differ in theirs."""
+    return parse_number_range(text) if text[-1:].isdigit() else parse_range(text)
+
+
 _PARSERS: Mapping[str, Callable[[str], object]] = {
     "value": parse_quantity,
     "time": parse_quantity,
@@ -54,7 +60,7 @@ _PARSERS: Mapping[str, Callable[[str], object]] = {
     "range": parse_range,
     "output range": parse_range,
     "gain": parse_gain,
-    "ratio range": parse_number_range,
+    "ratio range": _parse_ratio_range,
     "output value": parse_quantity,
 }
 
@@ -157,9 +163,10 @@ class _Refused:
             meant = self._meant(key, free, below) if count < _COMPARED_KEYS else ""
             if meant in missing:
                 missing.remove(meant)  # one mistake, one fault
+            stray = bool(meant) and _shown(key) == meant
             yield Fault(
                 self.file.place((*self.path, key), key=True),
-                f"`{_shown(key)}` is not a key of {owner}",
+                f"the key `{meant}` has a stray space" if stray else f"`{_shown(key)}` is not a key of {owner}",
                 f"write `{meant}`" if meant else self._remedy(key, below),
                 _pointer((*self.path, key)),
             )
@@ -225,7 +232,7 @@ class _Refused:
         or_hold = f", or {_HOLD}" if expected.may_be_held and _HOLD not in wanted else ""
         if value is None:
             last = self.path[-1] if self.path else 0
-            needed = isinstance(last, int) or last in self.expected[-2].required
+            needed = isinstance(last, int) or last in ("hold", *self.expected[-2].required)
             return self._fault(f"{subject} is empty", wanted if needed else f"{wanted}, or leave the key out")
         if isinstance(value, dict):
             if "hold" in value and expected.may_be_held:
@@ -320,7 +327,7 @@ def _such_as(expected: Expected) -> str:
 
 
 def _plain(written: str) -> str:
-    return written[:_COMPARED_CHARACTERS].strip().lower().replace("-", "_").replace(" ", "_")
+    return "_".join(written[:_COMPARED_CHARACTERS].lower().replace("-", " ").split())
 
 
 def _either(words: list[str]) -> str:
