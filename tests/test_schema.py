@@ -210,8 +210,8 @@ def test_every_value_has_an_example_that_the_format_takes() -> None:
     assert lacking == []
     for path, part in PARTS.items():
         checker = jsonschema.Draft202012Validator({**defs, **part})
-        for example in followed(part).get("examples", ()):
-            assert [error.message for error in checker.iter_errors(example)] == [], path
+        for shown in followed(part).get("examples", ()):
+            assert [error.message for error in checker.iter_errors(shown)] == [], path
 
 
 def test_the_schema_uses_no_keyword_with_poor_messages() -> None:
@@ -740,7 +740,7 @@ def test_every_part_replaced_by_something_else(root: bool, path: tuple[str | int
     assert isinstance(whole, dict)
     kept = {"format", "site", "revision", "units"} if root else set()
     base = {name: part for name, part in whole.items() if name == path[0] or name in kept}
-    for value in VALUES:
+    for value in (None, 3, "x", [], {}, ["x"], {"a": 1}, {"hold": "r"}):
         data = copy.deepcopy(base)
         value_at(data, path[:-1])[path[-1]] = value
         found = check_corpus(data, root=root)
