@@ -10,6 +10,8 @@ from loopdoc.rules.finding import Level
 from loopdoc.rules.rule import Draft, draft, rule
 from loopdoc.rules.subjects import Faults
 
+_BY_TAG = ("loops", "final_elements", "instruments", "functions", "interlocks", "units", "texts")
+
 
 @rule(level=Level.ERROR, source="the register's format, `loopdoc schema`")
 def schema(file: TextFile, faults: Faults) -> Iterator[Draft]:
@@ -32,6 +34,8 @@ def schema(file: TextFile, faults: Faults) -> Iterator[Draft]:
 
 
 def _tag(fault: Fault) -> str:
-    """The tag under which a fault stands: the key below the section in its JSON Pointer (RFC 6901)."""
+    """The tag (or unit) under which a fault stands, from its JSON Pointer (RFC 6901); elsewhere the section."""
     steps = [step.replace("~1", "/").replace("~0", "~") for step in fault.pointer.split("/")[1:]]
-    return steps[1] if len(steps) > 1 else steps[0] if steps else "register"
+    if len(steps) > 1 and steps[0] in _BY_TAG:
+        return steps[1]
+    return steps[0] if steps else "register"
