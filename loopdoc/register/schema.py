@@ -28,7 +28,8 @@ def schema_text(*, root: bool = True) -> str:
     if root:
         return text
     schema = json.loads(text)
-    included = {**schema, "title": "included file", "$ref": "#/$defs/included"}
+    told = {word: schema["$defs"]["included"][word] for word in ("title", "description")}
+    included = {**schema, **told, "$ref": "#/$defs/included"}
     return json.dumps(included, indent=2, ensure_ascii=False) + "\n"
 
 
