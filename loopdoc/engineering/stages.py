@@ -318,5 +318,18 @@ def _seconds(value: Quantity | Hold | None) -> float:
     return quantity.to("s") if quantity else 0.0
 
 
+def measured_range(loop: ControlledLoop) -> Range:
+    """The measurement range of a loop that has a stage, and so has one."""
+    measurement = known(loop.loop.measurement)
+    own = known(measurement.range) if measurement else None
+    assert own is not None
+    return own
+
+
+def percent_of_range(value: Quantity, own: Range) -> float:
+    """A reading in percent of a measurement range."""
+    return 100.0 * (value.to(own.unit.symbol) - own.low) / own.span
+
+
 def _percent_of(value: Quantity | None, own: Range, default: float) -> float:
-    return default if value is None else 100.0 * (value.to(own.unit.symbol) - own.low) / own.span
+    return default if value is None else percent_of_range(value, own)
