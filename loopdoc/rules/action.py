@@ -34,10 +34,9 @@ def action_wrong(controlled: ControlledLoop) -> Iterator[Draft]:
     """
     action = need(controlled.controller.action, "the action")
     paths = _paths(controlled)
-    for _, path in paths:
-        if isinstance(path, Undecided):
-            not_checked("the direction of the path does not follow from the register")
-    decided = [path for _, path in paths if isinstance(path, PathSign)]
+    decided = [path for path in paths if isinstance(path, PathSign)]
+    if len(decided) < len(paths):
+        not_checked("the direction of the path does not follow from the register")
     if len({path.sign for path in decided}) > 1:
         not_checked("the branches of a split range disagree")
     path = decided[0]
@@ -68,7 +67,7 @@ def action_undecided(controlled: ControlledLoop) -> Iterator[Draft]:
     """
     paths = _paths(controlled)
     told = set()
-    for place, path in paths:
+    for route, path in zip(controlled.routes, paths, strict=True):
         if isinstance(path, Undecided) and path.reason not in told:
             told.add(path.reason)
             yield draft(
@@ -76,12 +75,11 @@ def action_undecided(controlled: ControlledLoop) -> Iterator[Draft]:
                 f"which action it needs cannot be told: {path.reason.removeprefix(f'{controlled.tag}: ')}",
                 remedy="say under `process` whether the measurement rises or falls, and on which signal each "
                 "final element opens",
-                at=place,
+                at=_undecided_at(controlled, route),
             )
-    decided = [path for _, path in paths if isinstance(path, PathSign)]
-    if len({path.sign for path in decided}) > 1:
+    if len({path.sign for path in paths if isinstance(path, PathSign)}) > 1:
         process = known(controlled.loop.process)
-        routes = zip(controlled.routes, (path for _, path in paths), strict=True)
+        routes = zip(controlled.routes, paths, strict=True)
         each = "; ".join(
             f"{path.action} for {route.end.tag}: {path}" for route, path in routes if isinstance(path, PathSign)
         )
@@ -94,22 +92,20 @@ def action_undecided(controlled: ControlledLoop) -> Iterator[Draft]:
         )
 
 
-def _paths(controlled: ControlledLoop) -> list[tuple[Place, PathSign | Undecided]]:
-    """The sign of each route, and the place of what decides it or is lacking."""
+def _paths(controlled: ControlledLoop) -> list[PathSign | Undecided]:
+    """The sign of each route of a controller."""
     if not controlled.routes:
         need(controlled.controller.output, "the output")
         not_checked("the output leads to nothing that the register knows")
-    found = []
-    for route in controlled.routes:
-        path = _held(controlled, route) or path_sign(controlled, route)
-        lacks_element = isinstance(route.end, FinalElement) and known(route.end.opens_on) is None
-        if lacks_element:
-            place = route.end.origin.place("opens_on")
-        else:
-            branch = ("branches", route.end.tag) if _has_branches(controlled) else ()
-            place = controlled.loop.origin.place("process", *branch, "effect")
-        found.append((place, path))
-    return found
+    return [_held(controlled, route) or path_sign(controlled, route) for route in controlled.routes]
+
+
+def _undecided_at(controlled: ControlledLoop, route: Route) -> Place:
+    """Where the sign is lacking that would decide a route."""
+    if isinstance(route.end, FinalElement) and known(route.end.opens_on) is None:
+        return route.end.origin.place("opens_on")
+    branch = ("branches", route.end.tag) if _has_branches(controlled) else ()
+    return controlled.loop.origin.place("process", *branch, "effect")
 
 
 def _held(controlled: ControlledLoop, route: Route) -> Undecided | None:

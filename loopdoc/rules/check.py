@@ -52,15 +52,16 @@ def check(
 def _findings(rule: Rule, scope: Scope, counts: Coverage) -> Iterator[Finding]:
     """What one rule finds in the whole plant, counting what it checked and what it could not."""
     try:
+        asked = rule.asks(scope)
         for subject in rule.visits(scope):
-            yield from _in_subject(rule, subject, scope, counts)
+            yield from _in_subject(rule, subject, asked, scope, counts)
     except Exception as error:  # one broken rule must not silence the others
         yield _internal_error(rule, scope.plant, error, scope)
 
 
-def _in_subject(rule: Rule, subject: Any, scope: Scope, counts: Coverage) -> Iterator[Finding]:
+def _in_subject(rule: Rule, subject: Any, asked: tuple[Any, ...], scope: Scope, counts: Coverage) -> Iterator[Finding]:
     try:
-        for found in rule.drafts(subject, scope):
+        for found in rule.function(subject, *asked):
             yield _finding(rule, found)
     except NotApplicable:
         return

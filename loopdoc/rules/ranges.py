@@ -45,14 +45,14 @@ def range_reversed(part: Loop | Instrument | Function) -> Iterator[Draft]:
         A transmitter that is calibrated the other way round than written.
     """
     ranges = tuple(_ranges(part))
-    for what, written, place in ranges:
+    for what, written, holder, key in ranges:
         if isinstance(written, Range) and written.span <= 0:
             fault, remedy = (
                 ("its two ends are the same", "write its low and its high end")
                 if written.span == 0
                 else ("its first end is above its second", f"write `{Range(written.high, written.low, written.unit)}`")
             )
-            yield draft(part.tag, f"{what} is {written}: {fault}", remedy=remedy, at=place)
+            yield draft(part.tag, f"{what} is {written}: {fault}", remedy=remedy, at=holder.origin.place(key))
     if isinstance(part, Loop):
         yield from _orders(part)
     elif isinstance(part, Function):
@@ -64,21 +64,22 @@ def range_reversed(part: Loop | Instrument | Function) -> Iterator[Draft]:
                     remedy=f"write the output at which {element} is shut, then the one at which it is fully open",
                     at=part.origin.place("outputs", element),
                 )
-    for what, written, _ in ranges:
+    for what, written, *_ in ranges:
         if written is not None:
             need(written, what)
 
 
-def _ranges(part: Loop | Instrument | Function) -> Iterator[tuple[str, Range | Hold | None, Place]]:
+def _ranges(part: Loop | Instrument | Function) -> Iterator[tuple[str, Range | Hold | None, Part, str]]:
+    """Each range in words, with the part and the key under which it stands."""
     if isinstance(part, Function):
-        yield "the span of the ratio", part.span, part.origin.place("span")
+        yield "the span of the ratio", part.span, part, "span"
         return
     measurement = known(part.measurement)
     if measurement:
-        yield "the measurement range", measurement.range, measurement.origin.place("range")
+        yield "the measurement range", measurement.range, measurement, "range"
     output = _output(part) if isinstance(part, Loop) else None
     if output:
-        yield "the output span", output.span, output.origin.place("span")
+        yield "the output span", output.span, output, "span"
 
 
 def _output(loop: Loop) -> Output | None:

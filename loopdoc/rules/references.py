@@ -2,12 +2,13 @@
 
 from __future__ import annotations
 
-from collections.abc import Collection, Iterator
+from collections.abc import Collection, Iterator, Mapping
 from dataclasses import dataclass
 from functools import cached_property
+from typing import Any
 
 from loopdoc.engineering.pairing import Plant
-from loopdoc.register.model import Hold, Loop, Origin, Register, known
+from loopdoc.register.model import Function, Loop, Origin, Part, Register, known
 from loopdoc.register.place import Place
 
 SECTIONS = ("register", "site", "revision", "history", "texts")
@@ -21,10 +22,17 @@ class DefinedTag:
     tag: str
     what: str
     """What it is, such as `loop` or `transmitter`."""
-    place: Place
-    unit: str | Hold | None
-    """The unit that the register gives it; None for a transmitter, which has the unit of no part of its own."""
-    unit_place: Place
+    part: Part
+    """The part of this tag, or the measurement that names the transmitter."""
+
+    @property
+    def place(self) -> Place:
+        return self.part.origin.place("transmitter") if self.what == "transmitter" else self.part.origin.key()
+
+    @property
+    def unit(self) -> str | None:
+        """The unit that the register gives it; None for a transmitter, which has no unit of its own."""
+        return known(getattr(self.part, "unit", None))
 
 
 @dataclass(frozen=True)
@@ -67,117 +75,126 @@ class Reference:
     tag: str
     """The tag under which the name stands."""
     where: str
-    """What it is named as, such as `output`."""
+    """What it is named as, such as `an input`."""
     target: str
-    place: Place
     among: Names
-    otherwise: str
-    """What the target is where it is defined but cannot be named here; empty where nothing defines it."""
+    origin: Origin
+    steps: tuple[str | int, ...]
+    is_key: bool
+    """Whether the name is a key, and not a value."""
 
     @property
     def resolved(self) -> bool:
         return self.target in self.among.tags
 
+    @property
+    def place(self) -> Place:
+        return self.origin.key(*self.steps) if self.is_key else self.origin.place(*self.steps)
 
-def defined_tags(register: Register) -> tuple[DefinedTag, ...]:
+
+def _sections(register: Register) -> Iterator[tuple[str, Mapping[str, Any]]]:
+    """What the register defines under tags: what each section holds, and the section."""
+    yield "loop", register.loops
+    yield "final element", register.final_elements
+    yield "instrument", register.instruments
+    yield "function", register.functions
+    yield "interlock", register.interlocks
+
+
+def defined_tags(register: Register) -> Iterator[DefinedTag]:
     """Every tag that the register defines, once each."""
-    found: dict[str, DefinedTag] = {}
-    for what, section in (
-        ("loop", register.loops),
-        ("final element", register.final_elements),
-        ("instrument", register.instruments),
-        ("function", register.functions),
-        ("interlock", register.interlocks),
-    ):
+    for what, section in _sections(register):
         for tag, part in section.items():
-            unit_place = part.origin.place("unit")
-            found.setdefault(tag, DefinedTag(tag, what, part.origin.key(), part.unit, unit_place))
+            yield DefinedTag(tag, what, part)
     for tag, measurement in register.measurements.items():
-        place = measurement.origin.place("transmitter")
-        found.setdefault(tag, DefinedTag(tag, "transmitter", place, None, place))
-    return tuple(found.values())
+        if tag not in register.instruments:
+            yield DefinedTag(tag, "transmitter", measurement)
 
 
-def references(plant: Plant, rule_ids: Collection[str]) -> tuple[Reference, ...]:
+def what_is(register: Register, tag: str) -> str:
+    """What the register defines under a tag; empty where nothing."""
+    for what, section in _sections(register):
+        if tag in section:
+            return what
+    return "transmitter" if tag in register.measurements else ""
+
+
+def references(plant: Plant, rule_ids: Collection[str]) -> Iterator[Reference]:
     """Every place where the register names a tag, a unit or a rule."""
-    return tuple(_References(plant, rule_ids).all())
+    register = plant.register
+    commanded = Names(
+        "a loop, a function or a final element",
+        {*register.loops, *register.functions, *register.final_elements},
+    )
+    measured = Names("a transmitter, an instrument or a loop", {*register.measurements, *register.loops})
+    units = Names("a unit under `units`", register.units)
+    for loop in register.loops.values():
+        yield from _of_loop(loop, plant, commanded)
+    for function in register.functions.values():
+        yield from _of_function(function, plant, commanded, measured)
+    yield from _of_interlocks(register, measured)
+    for _, section in _sections(register):
+        for tag, part in section.items():
+            unit = known(part.unit)
+            if unit is not None:
+                yield Reference(tag, "the unit", unit, units, part.origin, ("unit",), False)
+    for number, text in register.texts.items():
+        yield Reference(number, "the unit of the texts", number, units, text.origin, (), True)
+    yield from _of_deviations(register, rule_ids)
 
 
-class _References:
-    def __init__(self, plant: Plant, rule_ids: Collection[str]) -> None:
-        self._plant = plant
-        self._register = register = plant.register
-        self._what = {defined.tag: defined.what for defined in defined_tags(register)}
-        measured = {*register.measurements, *register.loops}
-        self._commanded = Names(
-            "a loop, a function or a final element",
-            {*register.loops, *register.functions, *register.final_elements},
-        )
-        self._measured = Names("a transmitter, an instrument or a loop", measured)
-        self._acted_on = Names("a final element or a loop", {*register.final_elements, *register.loops})
-        self._units = Names("a unit under `units`", register.units)
-        self._rules = Names("a rule (`loopdoc rules` lists them)", rule_ids)
-        self._anything = Names(
-            "a tag of the register", {*self._what, *register.units, *SECTIONS, *(file.name for file in register.files)}
-        )
-
-    def all(self) -> Iterator[Reference]:
-        register = self._register
-        for loop in register.loops.values():
-            yield from self._of_loop(loop)
-        for tag, function in register.functions.items():
-            to = known(function.to)
-            if to is not None:
-                yield self._to(tag, "the destination", to, function.origin.place("to"), self._commanded)
-            for element in function.outputs:
-                yield self._to(tag, "an output", element, function.origin.key("outputs", element), self._commanded)
-            for index, entry in enumerate(function.inputs):
-                yield self._to(tag, "an input", entry, function.origin.place("inputs", index), self._measured)
-            entering = Names(
-                f"an input of {tag} or a loop whose output goes to it",
-                {*function.inputs, *self._plant.commanders.get(tag, ())},
-            )
-            for entry in function.weights:
-                yield self._to(tag, "a weight", entry, function.origin.key("weights", entry), entering)
-        for tag, interlock in register.interlocks.items():
-            for entry in interlock.initiators:
-                yield self._to(tag, "an initiator", entry, interlock.origin.key("initiators", entry), self._measured)
-            for entry in interlock.actions:
-                yield self._to(tag, "an action", entry, interlock.origin.key("actions", entry), self._acted_on)
-        for section in (register.loops, register.final_elements, register.instruments, register.functions,
-                        register.interlocks):  # fmt: skip
-            for tag, part in section.items():
-                yield from self._unit(tag, part.unit, part.origin)
-        for number, text in register.texts.items():
-            yield self._to(number, "the unit of the texts", number, text.origin.key(), self._units)
-        for deviation in register.deviations:
-            at, rule = known(deviation.at), known(deviation.rule)
-            whose = at or "deviations"
-            if rule is not None:
-                yield self._to(whose, "the rule of a deviation", rule, deviation.origin.place("rule"), self._rules)
-            if at is not None:
-                yield self._to(whose, "the tag of a deviation", at, deviation.origin.place("at"), self._anything)
-
-    def _of_loop(self, loop: Loop) -> Iterator[Reference]:
-        controller = known(loop.controller)
-        output = known(controller.output) if controller else None
-        to = known(output.to) if output else None
-        if output is not None and to is not None:
-            yield self._to(loop.tag, "the destination of the output", to, output.origin.place("to"), self._commanded)
-        process = known(loop.process)
-        if process is None or loop.tag not in self._plant.controlled:
-            return
-        moved = Names(
-            f"a final element that {loop.tag} moves",
-            [route.end.tag for route in self._plant.controlled[loop.tag].routes],
-        )
+def _of_loop(loop: Loop, plant: Plant, commanded: Names) -> Iterator[Reference]:
+    controller = known(loop.controller)
+    output = known(controller.output) if controller else None
+    to = known(output.to) if output else None
+    if output is not None and to is not None:
+        where = "the destination of the output"
+        yield Reference(loop.tag, where, to, commanded, output.origin, ("to",), False)
+    process = known(loop.process)
+    if process is not None and process.branches and loop.tag in plant.controlled:
+        routes = plant.controlled[loop.tag].routes
+        moved = Names(f"a final element that {loop.tag} moves", {route.end.tag for route in routes})
         for tag in process.branches:
-            yield self._to(loop.tag, "a branch of the process", tag, process.origin.key("branches", tag), moved)
+            steps = ("branches", tag)
+            yield Reference(loop.tag, "a branch of the process", tag, moved, process.origin, steps, True)
 
-    def _unit(self, tag: str, unit: str | Hold | None, origin: Origin) -> Iterator[Reference]:
-        number = known(unit)
-        if number is not None:
-            yield self._to(tag, "the unit", number, origin.place("unit"), self._units)
 
-    def _to(self, tag: str, where: str, target: str, place: Place, among: Names) -> Reference:
-        return Reference(tag, where, target, place, among, self._what.get(target, ""))
+def _of_function(function: Function, plant: Plant, commanded: Names, measured: Names) -> Iterator[Reference]:
+    tag, origin = function.tag, function.origin
+    to = known(function.to)
+    if to is not None:
+        yield Reference(tag, "the destination", to, commanded, origin, ("to",), False)
+    for element in function.outputs:
+        yield Reference(tag, "an output", element, commanded, origin, ("outputs", element), True)
+    for index, entry in enumerate(function.inputs):
+        yield Reference(tag, "an input", entry, measured, origin, ("inputs", index), False)
+    entering = Names(
+        f"an input of {tag} or a loop whose output goes to it",
+        {*function.inputs, *plant.commanders.get(tag, ())},
+    )
+    for entry in function.weights:
+        yield Reference(tag, "a weight", entry, entering, origin, ("weights", entry), True)
+
+
+def _of_interlocks(register: Register, measured: Names) -> Iterator[Reference]:
+    acted_on = Names("a final element or a loop", {*register.final_elements, *register.loops})
+    for tag, interlock in register.interlocks.items():
+        for entry in interlock.initiators:
+            yield Reference(tag, "an initiator", entry, measured, interlock.origin, ("initiators", entry), True)
+        for entry in interlock.actions:
+            yield Reference(tag, "an action", entry, acted_on, interlock.origin, ("actions", entry), True)
+
+
+def _of_deviations(register: Register, rule_ids: Collection[str]) -> Iterator[Reference]:
+    rules = Names("a rule (`loopdoc rules` lists them)", rule_ids)
+    tags = (tag for _, section in _sections(register) for tag in section)
+    files = (file.name for file in register.files)
+    anything = Names("a tag of the register", {*tags, *register.measurements, *register.units, *SECTIONS, *files})
+    for deviation in register.deviations:
+        at, rule = known(deviation.at), known(deviation.rule)
+        whose = at or "deviations"
+        if rule is not None:
+            where = "the rule of a deviation"
+            yield Reference(whose, where, rule, rules, deviation.origin, ("rule",), False)
+        if at is not None:
+            yield Reference(whose, "the tag of a deviation", at, anything, deviation.origin, ("at",), False)

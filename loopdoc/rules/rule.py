@@ -94,9 +94,9 @@ class Rule:
         for subject in self.subjects:
             yield from SUBJECTS[subject](scope)
 
-    def drafts(self, subject: Any, scope: Scope) -> Iterator[Draft]:
-        """What the rule finds in one subject."""
-        return self.function(subject, *(BESIDES[kind](scope) for kind in self.besides))
+    def asks(self, scope: Scope) -> tuple[Any, ...]:
+        """What the rule asks for besides its subject."""
+        return tuple(BESIDES[kind](scope) for kind in self.besides)
 
 
 def rule(*, level: Level, source: str, since: str = "0.1") -> Callable[[Callable[..., Iterator[Draft]]], Rule]:

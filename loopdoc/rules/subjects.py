@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Iterable, Mapping
 from dataclasses import dataclass
 from typing import Any
 
@@ -31,20 +31,20 @@ class Scope:
     rule_ids: tuple[str, ...]
 
 
-SUBJECTS: Mapping[type, Callable[[Scope], tuple[Any, ...]]] = {
+SUBJECTS: Mapping[type, Callable[[Scope], Iterable[Any]]] = {
     TextFile: lambda scope: scope.plant.register.files,
     Plant: lambda scope: (scope.plant,),
     DefinedTag: lambda scope: defined_tags(scope.plant.register),
     Reference: lambda scope: references(scope.plant, scope.rule_ids),
     HeldValue: lambda scope: scope.plant.register.holds,
-    Loop: lambda scope: tuple(scope.plant.register.loops.values()),
-    ControlledLoop: lambda scope: tuple(scope.plant.controlled.values()),
+    Loop: lambda scope: scope.plant.register.loops.values(),
+    ControlledLoop: lambda scope: scope.plant.controlled.values(),
     CascadeLink: lambda scope: scope.plant.links,
     LoopAlarm: lambda scope: scope.plant.alarms,
-    FinalElement: lambda scope: tuple(scope.plant.register.final_elements.values()),
-    Instrument: lambda scope: tuple(scope.plant.register.instruments.values()),
-    Function: lambda scope: tuple(scope.plant.register.functions.values()),
-    Interlock: lambda scope: tuple(scope.plant.register.interlocks.values()),
+    FinalElement: lambda scope: scope.plant.register.final_elements.values(),
+    Instrument: lambda scope: scope.plant.register.instruments.values(),
+    Function: lambda scope: scope.plant.register.functions.values(),
+    Interlock: lambda scope: scope.plant.register.interlocks.values(),
     Trip: lambda scope: scope.plant.trips,
 }
 """What a rule may visit (its first parameter), and where one check finds it."""

@@ -9,7 +9,7 @@ from loopdoc.register.model import Hold, Loop, Measurement, known
 from loopdoc.register.quantity import Range
 from loopdoc.register.units import same_kind
 from loopdoc.rules.finding import Level
-from loopdoc.rules.references import DefinedTag, Reference
+from loopdoc.rules.references import DefinedTag, Reference, what_is
 from loopdoc.rules.rule import Draft, draft, need, rule
 from loopdoc.rules.values import equal
 
@@ -43,13 +43,12 @@ def tag_grammar(defined: DefinedTag, plant: Plant) -> Iterator[Draft]:
             related=((plant.register.root.place(("tags",)), "the site's tag grammar"),),
         )
         return
-    unit = known(defined.unit)
-    if unit is not None and unit != parts["unit"]:
+    if defined.unit is not None and defined.unit != parts["unit"]:
         yield draft(
             defined.tag,
-            f"the tag is of unit {parts['unit']}, but the register puts it in unit {unit}",
+            f"the tag is of unit {parts['unit']}, but the register puts it in unit {defined.unit}",
             remedy=f'write `unit: "{parts["unit"]}"`, or correct the tag',
-            at=defined.unit_place,
+            at=defined.part.origin.place("unit"),
             related=((defined.place, "the tag"),),
         )
 
@@ -136,7 +135,7 @@ def _same_number(plant: Plant, tag: str, other: str) -> bool:
 
 
 @rule(level=Level.ERROR, source="common practice")
-def reference_unknown(reference: Reference) -> Iterator[Draft]:
+def reference_unknown(reference: Reference, plant: Plant) -> Iterator[Draft]:
     """The register names a tag, a unit or a rule that does not exist, or is not of the sort wanted there.
 
     Why:
@@ -156,8 +155,9 @@ def reference_unknown(reference: Reference) -> Iterator[Draft]:
     if reference.resolved:
         return
     nearest = reference.among.nearest(reference.target)
-    if reference.otherwise:
-        fault = f"{reference.where} is `{reference.target}`, a {reference.otherwise}; {reference.among.what} is wanted"
+    otherwise = what_is(plant.register, reference.target)
+    if otherwise:
+        fault = f"{reference.where} is `{reference.target}`, a {otherwise}; {reference.among.what} is wanted"
     else:
         fault = f"{reference.where} is `{reference.target}`, which is not {reference.among.what}"
     yield draft(

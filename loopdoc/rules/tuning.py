@@ -61,9 +61,9 @@ def _parameters(tag: str, controller: Controller) -> Iterator[Draft]:
 
 def _times(tag: str, process: Process) -> Iterator[Draft]:
     lags = () if isinstance(process.lags, Hold) else process.lags
-    single = process.origin.place("lags") == process.origin.key()  # written as `lag`
     for index, lag in enumerate(lags):
         if lag.value <= 0:
+            single = process.origin.place("lags") == process.origin.key()  # written as `lag`
             place = process.origin.place("lag") if single else process.origin.place("lags", index)
             message = f"a lag of the process is {lag}; it must be above nothing"
             yield draft(tag, message, remedy="leave it out", at=place)

@@ -3,12 +3,11 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 from loopdoc.engineering.direction import process_on
 from loopdoc.engineering.pairing import ControlledLoop, Plant, Route, Trip
-from loopdoc.register.model import Alarm, Function, Hold, Instrument, Loop, Measurement, Part, Process, known
-from loopdoc.register.place import Place
+from loopdoc.register.model import Function, Hold, Instrument, Loop, Origin, Part, Process, known
 from loopdoc.register.quantity import Gain, Quantity, Range
 from loopdoc.register.units import UNITS, Unit, UnitError, convert, convert_difference
 from loopdoc.rules.finding import Level
@@ -43,7 +42,8 @@ class _Value:
 
     what: str
     written: Quantity | Range | Hold | None
-    place: Place
+    origin: Origin
+    steps: tuple[str, ...]
     wanted: Unit | None
     """None where what it must agree with is not known."""
     against: str
@@ -51,8 +51,8 @@ class _Value:
     is_difference: bool = False
     range: Range | None = None
     """The measurement range, of which a percentage may have been meant."""
-    elsewhere: Place | None = None
-    """Where the unit that is wanted stands."""
+    owner: Loop | Instrument | None = None
+    """Whose range has the unit that is wanted."""
 
 
 @rule(level=Level.ERROR, source="BIPM SI Brochure, 9th edition (2019): only quantities of one kind can be compared")
@@ -121,8 +121,8 @@ def _draft(tag: str, value: _Value, fault: str) -> Draft:
         tag,
         f"{value.what} is {value.written}, but {value.against} is in {value.wanted}: {message}",
         remedy=_percent_of_range(value) or (remedy if remedy.startswith("write") else f"write it in {value.wanted}"),
-        at=value.place,
-        related=((value.elsewhere, f"{value.against}, in {value.wanted}"),) if value.elsewhere else (),
+        at=value.origin.place(*value.steps),
+        related=((range_place(value.owner), f"{value.against}, in {value.wanted}"),) if value.owner else (),
     )
 
 
@@ -172,40 +172,34 @@ def _values(part: Loop | Instrument | Function | Trip, plant: Plant) -> Iterator
             yield from _of_loop(part, plant)
         case Function():
             for element, opening in part.outputs.items():
-                place = part.origin.place("outputs", element)
-                yield _Value(f"the output for {element}", opening, place, _PERCENT, "a controller's output")
+                what, steps = f"the output for {element}", ("outputs", element)
+                yield _Value(what, opening, part.origin, steps, _PERCENT, "a controller's output")
         case Trip():
             yield from _of_trip(part)
 
 
 def _of_loop(loop: Loop, plant: Plant) -> Iterator[_Value]:
-    measurement, controller = known(loop.measurement), known(loop.controller)
-    operating = known(loop.operating)
-    groups: list[tuple[str, Part | None]] = [("operating", operating)]
-    groups.append(("setpoint", known(controller.setpoint) if controller else None))
-    for name, group in groups:
+    controller = known(loop.controller)
+    setpoint = known(controller.setpoint) if controller else None
+    for name, group in (("operating", known(loop.operating)), ("setpoint", setpoint)):
         for key in ("low", "normal", "high") if group else ():
             assert group is not None
-            place = group.origin.place(key)
-            yield _against_range(f"{name} {key}", getattr(group, key), place, loop, measurement)
+            yield _against_range(f"{name} {key}", group, key, loop)
     for alarm in loop.alarms.values():
-        yield from _of_alarm(alarm, loop, measurement)
+        name = f"the {alarm.kind.replace('_', '-')} alarm"
+        yield _against_range(f"the limit of {name}", alarm, "limit", loop, alarm.kind == "deviation")
+        yield _against_range(f"the dead band of {name}", alarm, "deadband", loop, True)
     if loop.tag in plant.controlled:
         yield from _of_output(plant.controlled[loop.tag])
 
 
-def _against_range(
-    what: str,
-    written: Quantity | Hold | None,
-    place: Place,
-    part: Loop | Instrument,
-    measurement: Measurement | None,
-    is_difference: bool = False,
-) -> _Value:
+def _against_range(what: str, part: Part, key: str, owner: Loop | Instrument, is_difference: bool = False) -> _Value:
+    """A value that stands under a key and must agree with a measurement range."""
+    unit = _unit(owner)
+    measurement = known(owner.measurement)
     band = known(measurement.range) if measurement else None
-    unit = _unit(part)
     against = "the measurement range" if unit else "the unit of the measurement"
-    return _Value(what, written, place, unit, against, is_difference, band, range_place(part))
+    return _Value(what, getattr(part, key), part.origin, (key,), unit, against, is_difference, band, owner)
 
 
 def _unit(part: Loop | Instrument) -> Unit | None:
@@ -215,43 +209,35 @@ def _unit(part: Loop | Instrument) -> Unit | None:
     return band.unit if band and _measured_in_another_kind(part) is None else None
 
 
-def _of_alarm(alarm: Alarm, loop: Loop, measurement: Measurement | None) -> Iterator[_Value]:
-    name = alarm.kind.replace("_", "-")
-    limit, deadband = alarm.origin.place("limit"), alarm.origin.place("deadband")
-    is_difference = alarm.kind == "deviation"
-    yield _against_range(f"the limit of the {name} alarm", alarm.limit, limit, loop, measurement, is_difference)
-    yield _against_range(f"the dead band of the {name} alarm", alarm.deadband, deadband, loop, measurement, True)
-
-
 def _of_output(controlled: ControlledLoop) -> Iterator[_Value]:
     output = known(controlled.controller.output)
     if output is None or not controlled.routes:
         return
-    unit, against, is_difference, elsewhere = _commanded(controlled.routes[0])
+    route = controlled.routes[0]
+    unit, against = _commanded(route)
+    is_difference = any(known(function.kind) == "sum" for function in route.via)
+    owner = route.end if isinstance(route.end, Loop) else None
     for key in ("span", "low", "high"):
         what = "the output span" if key == "span" else f"the {key} output limit"
-        place = output.origin.place(key)
-        yield _Value(what, getattr(output, key), place, unit, against, is_difference, None, elsewhere)
+        yield _Value(what, getattr(output, key), output.origin, (key,), unit, against, is_difference, owner=owner)
 
 
-def _commanded(route: Route) -> tuple[Unit | None, str, bool, Place | None]:
-    """The unit of what a controller's output sets: the unit, whose it is, whether differences count, its place."""
+def _commanded(route: Route) -> tuple[Unit | None, str]:
+    """The unit of what a controller's output sets, and whose it is in words."""
     kinds = [known(function.kind) for function in route.via]
     if not isinstance(route.end, Loop):
-        return _PERCENT, f"the output on {route.end.tag}", False, None
+        return _PERCENT, f"the output on {route.end.tag}"
     if "ratio" in kinds:
-        return UNITS["fraction"], f"the ratio set in {route.via[kinds.index('ratio')].tag}", False, None
+        return UNITS["fraction"], f"the ratio set in {route.via[kinds.index('ratio')].tag}"
     unit = None if "characteriser" in kinds else _unit(route.end)
-    if unit is None:
-        return None, f"the unit in which {route.end.tag} is asked", False, None
-    return unit, f"the measurement of {route.end.tag}", "sum" in kinds, range_place(route.end)
+    return unit, f"the measurement of {route.end.tag}" if unit else f"the unit in which {route.end.tag} is asked"
 
 
 def _of_trip(trip: Trip) -> Iterator[_Value]:
-    owner = trip.instrument or trip.loop
+    owner, initiator = trip.instrument or trip.loop, trip.initiator
     if owner is not None:
-        what = f"the trip limit of {trip.initiator.tag}"
-        yield _against_range(what, trip.initiator.limit, trip.initiator.origin.place("trips"), owner, trip.measurement)
+        what = f"the trip limit of {initiator.tag}"
+        yield replace(_against_range(what, initiator, "limit", owner), steps=("trips",))
 
 
 # ---------------------------------------------------------------- process gains

@@ -56,9 +56,20 @@ class Reading:
     name: str
     """The key under which it stands, in words."""
     value: float
-    told: str
-    """As written, and as compared where that is another unit."""
-    place: Place
+    """In `unit`."""
+    written: Quantity
+    unit: Unit
+    part: Part
+    key: str
+
+    @property
+    def told(self) -> str:
+        """As written, and as compared where that is another unit."""
+        return in_both(self.written, self.unit)
+
+    @property
+    def place(self) -> Place:
+        return self.part.origin.place(self.key)
 
 
 def readings(part: Part, keys: tuple[str, ...], unit: Unit, whose: str) -> Iterator[Reading]:
@@ -76,7 +87,7 @@ def readings(part: Part, keys: tuple[str, ...], unit: Unit, whose: str) -> Itera
         elif written is not None and not same_kind(written.unit, unit):
             lacking = lacking or f"{whose} {name} has a unit of another kind"
         elif written is not None:
-            yield Reading(name, written.to(unit.symbol), in_both(written, unit), part.origin.place(key))
+            yield Reading(name, written.to(unit.symbol), written, unit, part, key)
     if lacking:
         raise NotChecked(lacking)
 
