@@ -633,6 +633,9 @@ ROOT_SAID = {
         "5:1", "`purpose` is not a key of the register",
         "write one of `format`, `site`, `revision`, `history`, `numbering`, `tags`, `include`, `units`, `policy`, "
         "`loops`, `final_elements`, `instruments`, `functions`, `interlocks`, `deviations` or `texts`, or remove it"),
+    "site: {name: x}\nformat: 1\nrevision: {code: A, date: 2026-01-31, status: as built}\nunits: {}\nhistory: none": (
+        "5:10", "`history` is `none`",
+        "write a list, such as `[{code: A, date: 2026-09-01, summary: First issue for review}]`"),
     "[format, 1]": ("1:1", "the register is a list",
         "write a mapping, such as `{format: 1, site: {name: Tarn Hollow Solvent Recovery}, "
         'revision: {code: B, date: 2026-11-20, status: issued for review}, units: {"20": {name: Rectification}}}`'),
@@ -703,7 +706,7 @@ def check_corpus(data: Any, *, root: bool) -> tuple[Fault, ...]:
         assert not JARGON.search(words), fault
         assert fault.message
         assert fault.remedy
-        assert (fault.message + fault.remedy).isprintable()
+        assert not re.search("[\x00-\x1f\x7f-\x9f]", fault.message + fault.remedy)
     assert len({fault.pointer for fault in found}) <= len(found) <= len({(f.pointer, f.message) for f in found})
     return found
 

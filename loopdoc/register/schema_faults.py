@@ -257,7 +257,8 @@ class _Refused:
         subject, wanted = self._subject(), _wanted(expected, value)
         if not value.strip():
             return self._fault(f"{subject} has no text", wanted)
-        if "array" in expected.types and len(value) <= _SHOWN_CHARACTERS:
+        holds_text = expected.item is not None and not self.format.expected(expected.item).is_mapping
+        if holds_text and len(value) <= _SHOWN_CHARACTERS:
             return self._fault(f"{subject} is not a list", f"write `{_flow([value])}`")
         unquoted = "boolean" in expected.types and value in ("true", "false")
         unquoted |= _is_number(value) and ("number" in expected.types or value in map(str, expected.options))
