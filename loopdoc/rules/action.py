@@ -52,13 +52,13 @@ def action_wrong(controlled: ControlledLoop) -> Iterator[Draft]:
 
 @rule(level=Level.WARNING, source="sign algebra; common practice")
 def action_undecided(controlled: ControlledLoop) -> Iterator[Draft]:
-    """The register does not say enough to tell which action a controller needs, or contradicts itself.
+    """The register does not say which action a controller has or needs, or contradicts itself.
 
     Why:
         Nobody can then check the action on paper, and a wrong one is found only when the loop is put into
         automatic.
     Breaks:
-        No `process`, an `effect` on hold, `effect: rises` with a negative gain, a final element without
+        No `action`, no `process`, an `effect` on hold, `effect: rises` with a negative gain, a final element without
         `opens_on`, the two branches of a split range with opposite products.
     Holds:
         Each step of each path has its sign, and all paths of one controller have the same.
@@ -77,7 +77,16 @@ def action_undecided(controlled: ControlledLoop) -> Iterator[Draft]:
                 "final element opens",
                 at=_undecided_at(controlled, route),
             )
-    if len({path.sign for path in paths if isinstance(path, PathSign)}) > 1:
+    signs = {path.sign for path in paths if isinstance(path, PathSign)}
+    if controlled.controller.action is None and len(signs) == 1:
+        path = next(path for path in paths if isinstance(path, PathSign))
+        yield draft(
+            controlled.tag,
+            f"its action is not given; its path needs {path.action} action: {path}",
+            remedy=f"write `action: {path.action}`, as the controller is configured",
+            at=controlled.controller.origin,
+        )
+    if len(signs) > 1:
         process = known(controlled.loop.process)
         routes = zip(controlled.routes, paths, strict=True)
         each = "; ".join(

@@ -9,7 +9,7 @@ from loopdoc.engineering.pairing import LoopAlarm
 from loopdoc.register.model import ALARM_ORDER, Loop, known
 from loopdoc.rules.finding import Level
 from loopdoc.rules.rule import Draft, draft, need, not_checked, only_if, rule
-from loopdoc.rules.values import above, amount, below, equal, in_both, measured_range, range_place, reading
+from loopdoc.rules.values import above, amount, below, equal, measured_range, range_place, reading, scale_in
 
 _NAMES = {"low_low": "low-low", "low": "low", "high": "high", "high_high": "high-high", "deviation": "deviation"}
 
@@ -32,14 +32,14 @@ def alarm_order(loop: Loop) -> Iterator[Draft]:
     only_if(len(alarms) > 1)
     limits = [(alarm, limit) for alarm in alarms if (limit := known(alarm.limit)) is not None]
     for (lower, low), (upper, high) in pairwise(limits):
-        value = reading(low, high.unit, f"the limit of the {_NAMES[lower.kind]} alarm")
+        scale = scale_in(high.unit, loop)
+        value = reading(low, scale, f"the limit of the {_NAMES[lower.kind]} alarm")
         if below(value, high.value):
             continue
         relation = "equals" if equal(value, high.value) else "is below"
         yield draft(
             loop.tag,
-            f"the {_NAMES[upper.kind]} alarm at {high} {relation} "
-            f"the {_NAMES[lower.kind]} alarm at {in_both(low, high.unit)}",
+            f"the {_NAMES[upper.kind]} alarm at {high} {relation} the {_NAMES[lower.kind]} alarm at {scale.told(low)}",
             remedy=f"set the {_NAMES[upper.kind]} alarm above the {_NAMES[lower.kind]} alarm, or leave one of them out",
             at=upper.origin.place("limit"),
             related=((lower.origin.place("limit"), f"the {_NAMES[lower.kind]} alarm, {low}"),),
@@ -84,13 +84,14 @@ def alarm_outside_range(subject: LoopAlarm) -> Iterator[Draft]:
                 related=related,
             )
         return
-    value = reading(limit, band.unit, "the alarm limit")
+    scale = scale_in(band.unit, loop)
+    value = reading(limit, scale, "the alarm limit")
     if above(value, band.low) and below(value, band.high):
         return
     where = "outside" if below(value, band.low) or above(value, band.high) else "at the very end of"
     yield draft(
         loop.tag,
-        f"the {name} alarm at {in_both(limit, band.unit)} lies {where} the measurement range, {band}",
+        f"the {name} alarm at {scale.told(limit)} lies {where} the measurement range, {band}",
         remedy="set the limit inside the range, or give the transmitter a range that reaches beyond it",
         at=alarm.origin.place("limit"),
         related=related,

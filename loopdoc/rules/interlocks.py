@@ -5,11 +5,10 @@ from __future__ import annotations
 from collections.abc import Iterator
 
 from loopdoc.engineering.pairing import Plant, Trip
-from loopdoc.register.model import Alarm, Loop, known
-from loopdoc.register.units import same_kind
+from loopdoc.register.model import Loop, known
 from loopdoc.rules.finding import Level
 from loopdoc.rules.rule import Draft, draft, need, only_if, rule
-from loopdoc.rules.values import above, below, equal, in_both, measured_range, range_place, reading
+from loopdoc.rules.values import Scale, above, below, equal, measured_range, range_place, reading, scale_in
 
 
 @rule(
@@ -36,51 +35,46 @@ def trip_before_alarm(trip: Trip, plant: Plant) -> Iterator[Draft]:
     alarms = [(loop, loop.alarms[kind]) for loop in _loops_on(trip, plant) for kind in kinds if kind in loop.alarms]
     only_if(alarms)
     limit = need(trip.initiator.limit, "the trip limit")
+    scale = scale_in(limit.unit, trip.instrument or trip.loop)
     comes_before = above if direction == "below" else below
     values = [
-        (loop, alarm, written, written.to(limit.unit.symbol))
+        (loop, alarm, written, scale.value(written))
         for loop, alarm in alarms
-        if (written := known(alarm.limit)) is not None and same_kind(written.unit, limit.unit)
+        if (written := known(alarm.limit)) is not None and scale.takes(written.unit)
     ]
     warned = any(comes_before(value, limit.value) for *_, value in values)
     for loop, alarm, written, value in values:
         at_the_trip = equal(value, limit.value)
         outer = alarm.kind in ("high_high", "low_low")
         if comes_before(value, limit.value) or (
-            warned and outer and (at_the_trip or _warns_of_another(trip, value, plant))
+            warned and outer and (at_the_trip or _warns_of_another(trip, value, scale, plant))
         ):
             continue
         name = alarm.kind.replace("_", "-")
         when = "together with" if at_the_trip else "after"
         yield draft(
             loop.tag,
-            f"the {name} alarm at {in_both(written, limit.unit)} comes {when} "
+            f"the {name} alarm at {scale.told(written)} comes {when} "
             f"the trip of {trip.interlock.tag} {direction} {limit}",
             remedy=f"set the alarm {'below' if direction == 'above' else 'above'} {limit}, with time to act in between",
             at=alarm.origin.place("limit"),
             related=((trip.initiator.origin.place("trips"), f"{trip.interlock.tag} trips {direction} {limit}"),),
         )
     for _, alarm in alarms:
-        _comparable(alarm, trip)
+        reading(need(alarm.limit, "the alarm limit"), scale, "the alarm limit")
 
 
-def _warns_of_another(trip: Trip, alarm: float, plant: Plant) -> bool:
-    """Whether an alarm, in the unit of a trip's limit, comes before another trip of the same measurement."""
+def _warns_of_another(trip: Trip, alarm: float, scale: Scale, plant: Plant) -> bool:
+    """Whether an alarm comes before another trip of the same measurement."""
     comes_before = above if trip.initiator.direction == "below" else below
-    unit = need(trip.initiator.limit, "the trip limit").unit
     return any(
         other.measurement == trip.measurement
         and other.initiator.direction == trip.initiator.direction
         and (limit := known(other.initiator.limit)) is not None
-        and same_kind(limit.unit, unit)
-        and comes_before(alarm, limit.to(unit.symbol))
+        and scale.takes(limit.unit)
+        and comes_before(alarm, scale.value(limit))
         for other in plant.trips
     )
-
-
-def _comparable(alarm: Alarm, trip: Trip) -> None:
-    limit = need(alarm.limit, "the alarm limit")
-    reading(limit, need(trip.initiator.limit, "the trip limit").unit, "the alarm limit")
 
 
 def _loops_on(trip: Trip, plant: Plant) -> tuple[Loop, ...]:
@@ -109,13 +103,14 @@ def trip_outside_range(trip: Trip) -> Iterator[Draft]:
     assert owner is not None
     limit = need(trip.initiator.limit, "the trip limit")
     band = measured_range(owner)
-    value = reading(limit, band.unit, "the trip limit")
+    scale = scale_in(band.unit, owner)
+    value = reading(limit, scale, "the trip limit")
     if above(value, band.low) and below(value, band.high):
         return
     where = "outside" if below(value, band.low) or above(value, band.high) else "at the very end of"
     yield draft(
         trip.interlock.tag,
-        f"it trips {known(trip.initiator.direction)} {in_both(limit, band.unit)}, "
+        f"it trips {known(trip.initiator.direction)} {scale.told(limit)}, "
         f"{where} the range of {trip.initiator.tag}, {band}",
         remedy="set the limit inside the range, or give the transmitter a range that reaches beyond it",
         at=trip.initiator.origin.place("trips"),

@@ -13,17 +13,20 @@ from loopdoc.register.quantity import Range
 from loopdoc.register.units import Unit
 from loopdoc.rules.finding import Level
 from loopdoc.rules.policy import Limits
-from loopdoc.rules.rule import Draft, draft, need, not_checked, only_if, rule
+from loopdoc.rules.rule import Draft, NotChecked, draft, need, not_checked, only_if, rule
 from loopdoc.rules.values import (
+    Scale,
     above,
     amount,
     below,
     forward,
-    in_both,
     measured_range,
+    range_in_both,
     range_place,
     reading,
     readings,
+    rounded,
+    scale_in,
 )
 
 
@@ -101,17 +104,20 @@ def _orders(loop: Loop) -> Iterator[Draft]:
         values = {key: known(getattr(group, key, None)) for key in ("low", "normal", "high")}
         for lower, upper in (("low", "normal"), ("normal", "high"), ("low", "high")):
             low, high = values[lower], values[upper]
-            if low is None or high is None or low.unit.kind != high.unit.kind:
+            if low is None or high is None:
+                continue
+            scale = Scale(high.unit) if name == "output" else scale_in(high.unit, loop)
+            if not scale.takes(low.unit):
                 continue
             if lower == "low" and upper == "high" and values["normal"] is not None:
                 continue
-            limit = low.to(high.unit.symbol)
+            limit = scale.value(low)
             # The normal value may be one of the limits; a low limit must leave room below the high one.
             if above(limit, high.value) or ("normal" not in (lower, upper) and not below(limit, high.value)):
                 relation = "is above" if above(limit, high.value) else "equals"
                 yield draft(
                     loop.tag,
-                    f"{name} {lower}, {in_both(low, high.unit)}, {relation} {name} {upper}, {high}",
+                    f"{name} {lower}, {scale.told(low)}, {relation} {name} {upper}, {high}",
                     remedy="put the values in order",
                     at=group.origin.place(upper),
                     related=((group.origin.place(lower), f"{name} {lower}"),),
@@ -161,7 +167,7 @@ def operating_outside_range(loop: Loop) -> Iterator[Draft]:
 
 def _outside(loop: Loop, group: Part, name: str) -> Iterator[Draft]:
     band = measured_range(loop)
-    for value in readings(group, ("low", "normal", "high"), band.unit, name):
+    for value in readings(group, ("low", "normal", "high"), scale_in(band.unit, loop), name):
         if above(value.value, band.high) or below(value.value, band.low):
             yield draft(
                 loop.tag,
@@ -204,7 +210,7 @@ def secondary_range_short(link: CascadeLink, plant: Plant) -> Iterator[Draft]:
         yield draft(
             secondary.tag,
             f"its range, {band}, does not cover {_told(link, span, asked)}: {short} lies outside it",
-            remedy=f"give {secondary.tag} a range that covers {_rounded(asked.asked)}, "
+            remedy=f"give {secondary.tag} a range that covers {rounded(asked.asked)}, "
             f"or {primary.tag} a shorter output span",
             at=range_place(secondary.loop),
             related=(
@@ -249,7 +255,7 @@ def secondary_range_wide(secondary: ControlledLoop, plant: Plant, limits: Limits
             f"its span, {amount(band.span, band.unit)}, is {ratio:.3g} times the "
             f"{amount(high - low, band.unit)} for which {primaries} {verb}; "
             f"the limit is {limits.secondary_range_ratio:g} times",
-            remedy=f"give {secondary.tag} a range nearer to {_rounded(Range(low, high, band.unit))}",
+            remedy=f"give {secondary.tag} a range nearer to {rounded(Range(low, high, band.unit))}",
             at=range_place(secondary.loop),
             related=tuple(
                 (
@@ -278,37 +284,47 @@ def output_limit_outside_setpoint(link: CascadeLink, plant: Plant) -> Iterator[D
         A primary that holds or tracks when its secondary is at a limit; that keeps it from winding up, but
         the limits still contradict each other.
     """
+    lacking = None
+    for end in ("low", "high"):
+        try:
+            yield from _beyond_setpoint(link, end, plant)
+        except NotChecked as reason:
+            lacking = reason
+    if lacking:
+        raise lacking
+
+
+def _beyond_setpoint(link: CascadeLink, end: str, plant: Plant) -> Iterator[Draft]:
+    """A finding where one end of a primary's output is beyond what its secondary accepts."""
     primary, secondary = link.primary, link.secondary
     output = need(primary.controller.output, "the primary's output")
-    setpoint = known(secondary.controller.setpoint)
-    if secondary.controller.setpoint is not None:
-        setpoint = need(secondary.controller.setpoint, "the secondary's setpoint")
+    setpoint = secondary.controller.setpoint
+    if setpoint is not None:
+        setpoint = need(setpoint, "the secondary's setpoint")
+    accepted = getattr(setpoint, end) if setpoint else None
+    if getattr(output, end) is None and accepted is None:
+        return
     band = measured_range(secondary.loop)
-    for end, beyond in (("low", below), ("high", above)):
-        limit = getattr(output, end)
-        accepted = getattr(setpoint, end) if setpoint else None
-        if limit is None and accepted is None:
-            continue
-        asked_end, told, place = _output_end(link, output, end, plant)
-        if accepted is None:
-            bound, bound_place = (band.low if end == "low" else band.high), range_place(secondary.loop)
-            bound_told = f"the {end} end of that loop's range, {amount(bound, band.unit)}"
-        else:
-            assert setpoint is not None
-            written = need(accepted, f"the secondary's {end} setpoint limit")
-            bound = reading(written, band.unit, f"the secondary's {end} setpoint limit")
-            bound_told = f"that loop's {end} setpoint limit, {in_both(written, band.unit)}"
-            bound_place = setpoint.origin.place(end)
-        if beyond(asked_end, bound):
-            side = "below" if end == "low" else "above"
-            yield draft(
-                primary.tag,
-                f"its output may ask {secondary.tag} for {told}, {side} {bound_told}",
-                remedy=f"limit the output of {primary.tag} to {amount(bound, band.unit)}, "
-                f"or let {secondary.tag} accept {amount(asked_end, band.unit)}",
-                at=place,
-                related=((bound_place, f"{secondary.tag}, {bound_told}"),),
-            )
+    asked, told, place = _output_end(link, output, end, plant)
+    if accepted is None:
+        bound, bound_place = (band.low if end == "low" else band.high), range_place(secondary.loop)
+        bound_told = f"the {end} end of that loop's range, {amount(bound, band.unit)}"
+    else:
+        written = need(accepted, f"the secondary's {end} setpoint limit")
+        scale = scale_in(band.unit, secondary.loop)
+        bound = reading(written, scale, f"the secondary's {end} setpoint limit")
+        bound_told = f"that loop's {end} setpoint limit, {scale.told(written)}"
+        bound_place = secondary.controller.origin.place("setpoint", end)
+    if below(asked, bound) if end == "low" else above(asked, bound):
+        side = "below" if end == "low" else "above"
+        yield draft(
+            primary.tag,
+            f"its output may ask {secondary.tag} for {told}, {side} {bound_told}",
+            remedy=f"limit the output of {primary.tag} to {amount(bound, band.unit)}, "
+            f"or let {secondary.tag} accept {amount(asked, band.unit)}",
+            at=place,
+            related=((bound_place, f"{secondary.tag}, {bound_told}"),),
+        )
 
 
 def _output_end(link: CascadeLink, output: Output, end: str, plant: Plant) -> tuple[float, str, Place]:
@@ -342,19 +358,15 @@ def _told(link: CascadeLink, span: Range, asked: Demand) -> str:
     """What the primary may ask for, in words."""
     if asked.steps:
         steps = "; ".join(asked.steps)
-        return f"what {link.primary.tag} may ask for, {_rounded(asked.asked)} (its output of {span}; {steps})"
-    return f"what {link.primary.tag} may ask for, {in_both(span, asked.asked.unit)}"
-
-
-def _rounded(band: Range) -> Range:
-    return Range(float(f"{band.low:.6g}"), float(f"{band.high:.6g}"), band.unit)
+        return f"what {link.primary.tag} may ask for, {rounded(asked.asked)} (its output of {span}; {steps})"
+    return f"what {link.primary.tag} may ask for, {range_in_both(span, asked.asked.unit)}"
 
 
 def _excess(asked: Range, band: Range) -> str:
     """The parts of what is asked that lie outside a range, in words; empty where it is covered."""
     parts = []
     if below(asked.low, band.low):
-        parts.append(str(_rounded(Range(asked.low, min(asked.high, band.low), band.unit))))
+        parts.append(str(rounded(Range(asked.low, min(asked.high, band.low), band.unit))))
     if above(asked.high, band.high):
-        parts.append(str(_rounded(Range(max(asked.low, band.high), asked.high, band.unit))))
+        parts.append(str(rounded(Range(max(asked.low, band.high), asked.high, band.unit))))
     return " and ".join(parts)

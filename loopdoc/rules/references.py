@@ -136,7 +136,7 @@ def references(plant: Plant, rule_ids: Collection[str]) -> Iterator[Reference]:
     for _, section in _sections(register):
         for tag, part in section.items():
             unit = known(part.unit)
-            if unit is not None:
+            if unit is not None and register.units:  # without any, the schema has asked for them
                 yield Reference(tag, "the unit", unit, units, part.origin, ("unit",), False)
     for number, text in register.texts.items():
         yield Reference(number, "the unit of the texts", number, units, text.origin, (), True)

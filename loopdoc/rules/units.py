@@ -4,10 +4,11 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 from dataclasses import dataclass, replace
+from typing import TypeAlias
 
 from loopdoc.engineering.direction import process_on
 from loopdoc.engineering.pairing import ControlledLoop, Plant, Route, Trip
-from loopdoc.register.model import Function, Hold, Instrument, Loop, Origin, Part, Process, known
+from loopdoc.register.model import Function, Hold, Instrument, Interlock, Loop, Origin, Part, Process, known
 from loopdoc.register.quantity import Gain, Quantity, Range
 from loopdoc.register.units import UNITS, Unit, UnitError, convert, convert_difference
 from loopdoc.rules.finding import Level
@@ -15,6 +16,7 @@ from loopdoc.rules.rule import Draft, draft, not_checked, rule
 from loopdoc.rules.values import amount, measured_range, range_place
 
 _PERCENT = UNITS["%"]
+_Visited: TypeAlias = Loop | Instrument | Function | Interlock | Trip
 
 _FLOWS = ("mass flow", "volume flow", "normal volume flow", "standard volume flow", "molar flow")
 _KINDS_OF_VARIABLE: dict[str, tuple[str, ...]] = {
@@ -56,7 +58,7 @@ class _Value:
 
 
 @rule(level=Level.ERROR, source="BIPM SI Brochure, 9th edition (2019): only quantities of one kind can be compared")
-def unit_incompatible(part: Loop | Instrument | Function | Trip, plant: Plant) -> Iterator[Draft]:
+def unit_incompatible(part: Loop | Instrument | Function | Interlock | Trip, plant: Plant) -> Iterator[Draft]:
     """A value has a unit that cannot be compared with what it belongs to.
 
     Why:
@@ -140,9 +142,9 @@ def _percent_of_range(value: _Value) -> str:
 # ---------------------------------------------------------------- what must agree with what
 
 
-def _measured_in_another_kind(part: Loop | Instrument | Function | Trip) -> Draft | None:
+def _measured_in_another_kind(part: _Visited) -> Draft | None:
     """A finding where the range is not in a unit of the variable that is measured."""
-    if isinstance(part, Function | Trip):
+    if not isinstance(part, Loop | Instrument):
         return None
     measurement = known(part.measurement)
     band = known(measurement.range) if measurement else None
@@ -165,7 +167,7 @@ def _measured_in_another_kind(part: Loop | Instrument | Function | Trip) -> Draf
     )
 
 
-def _values(part: Loop | Instrument | Function | Trip, plant: Plant) -> Iterator[_Value]:
+def _values(part: _Visited, plant: Plant) -> Iterator[_Value]:
     """Every value of a part that has to agree with another."""
     match part:
         case Loop():
@@ -174,6 +176,8 @@ def _values(part: Loop | Instrument | Function | Trip, plant: Plant) -> Iterator
             for element, opening in part.outputs.items():
                 what, steps = f"the output for {element}", ("outputs", element)
                 yield _Value(what, opening, part.origin, steps, _PERCENT, "a controller's output")
+        case Interlock():
+            yield from _of_actions(part, plant)
         case Trip():
             yield from _of_trip(part)
 
@@ -231,6 +235,16 @@ def _commanded(route: Route) -> tuple[Unit | None, str]:
         return UNITS["fraction"], f"the ratio set in {route.via[kinds.index('ratio')].tag}"
     unit = None if "characteriser" in kinds else _unit(route.end)
     return unit, f"the measurement of {route.end.tag}" if unit else f"the unit in which {route.end.tag} is asked"
+
+
+def _of_actions(interlock: Interlock, plant: Plant) -> Iterator[_Value]:
+    for action in interlock.actions.values():
+        controlled = plant.controlled.get(action.tag)
+        output = action.output
+        if controlled is None or (isinstance(output, Quantity) and output.unit == _PERCENT):
+            continue  # every output may be given in percent
+        unit, against = _commanded(controlled.routes[0]) if controlled.routes else (None, "the destination")
+        yield _Value(f"the output forced on {action.tag}", output, action.origin, ("output",), unit, against)
 
 
 def _of_trip(trip: Trip) -> Iterator[_Value]:

@@ -9,8 +9,8 @@ from dataclasses import dataclass
 from loopdoc.register.model import Hold, Instrument, Loop, Part, known
 from loopdoc.register.place import Place
 from loopdoc.register.quantity import Quantity, Range
-from loopdoc.register.units import Unit, same_kind
-from loopdoc.rules.rule import NotChecked, need, not_checked
+from loopdoc.register.units import Unit, same_difference, same_kind
+from loopdoc.rules.rule import need, not_checked
 
 # A conversion is exact but for the last binary digits: 12000 kg/h must not lie above 12 t/h. Far below any
 # digit that a register gives.
@@ -38,15 +38,34 @@ def amount(value: float, unit: Unit) -> str:
     return str(Quantity(float(f"{value:.6g}"), unit))
 
 
-def in_both(written: Quantity | Range, unit: Unit) -> str:
-    """A value or range as written, and in the unit in which it is compared where that is another."""
-    if written.unit.symbol == unit.symbol:
-        return str(written)
-    if isinstance(written, Quantity):
-        return f"{written} ({amount(written.to(unit.symbol), unit)})"
-    band = written.to(unit.symbol)
-    rounded = Range(float(f"{band.low:.6g}"), float(f"{band.high:.6g}"), unit)
-    return f"{written} ({rounded})"
+@dataclass(frozen=True, slots=True)
+class Scale:
+    """The unit in which values are compared, and whether they are differences of readings."""
+
+    unit: Unit
+    is_difference: bool = False
+    """True for a temperature difference, where 9 degF are 5 degC and not -12.8."""
+
+    def takes(self, unit: Unit) -> bool:
+        """Whether a value in a unit can be compared here."""
+        return same_difference(unit, self.unit) if self.is_difference else same_kind(unit, self.unit)
+
+    def value(self, written: Quantity) -> float:
+        """A value in the unit of the scale."""
+        symbol = self.unit.symbol
+        return written.difference_in(symbol) if self.is_difference else written.to(symbol)
+
+    def told(self, written: Quantity) -> str:
+        """A value as written, and in the unit of the scale where that is another."""
+        if written.unit.symbol == self.unit.symbol:
+            return str(written)
+        return f"{written} ({amount(self.value(written), self.unit)})"
+
+
+def scale_in(unit: Unit, owner: Loop | Instrument | None) -> Scale:
+    """The scale of a unit for values of one measurement."""
+    measurement = known(owner.measurement) if owner else None
+    return Scale(unit, measurement is not None and known(measurement.variable) == "temperature difference")
 
 
 @dataclass(frozen=True, slots=True)
@@ -56,24 +75,24 @@ class Reading:
     name: str
     """The key under which it stands, in words."""
     value: float
-    """In `unit`."""
+    """In the unit of `scale`."""
     written: Quantity
-    unit: Unit
+    scale: Scale
     part: Part
     key: str
 
     @property
     def told(self) -> str:
         """As written, and as compared where that is another unit."""
-        return in_both(self.written, self.unit)
+        return self.scale.told(self.written)
 
     @property
     def place(self) -> Place:
         return self.part.origin.place(self.key)
 
 
-def readings(part: Part, keys: tuple[str, ...], unit: Unit, whose: str) -> Iterator[Reading]:
-    """The values that a part gives under the keys, each in the given unit.
+def readings(part: Part, keys: tuple[str, ...], scale: Scale, whose: str) -> Iterator[Reading]:
+    """The values that a part gives under the keys, each on the given scale.
 
     Keys that are not given are left out. After the last value the rule counts as not checked where one of
     them is on hold or has a unit of another kind (which the rule `unit-incompatible` tells).
@@ -84,19 +103,31 @@ def readings(part: Part, keys: tuple[str, ...], unit: Unit, whose: str) -> Itera
         written: Quantity | Hold | None = getattr(part, key)
         if isinstance(written, Hold):
             lacking = lacking or f"{whose} {name} {'is on hold' if written.readable else 'could not be read'}"
-        elif written is not None and not same_kind(written.unit, unit):
+        elif written is not None and not scale.takes(written.unit):
             lacking = lacking or f"{whose} {name} has a unit of another kind"
         elif written is not None:
-            yield Reading(name, written.to(unit.symbol), written, unit, part, key)
+            yield Reading(name, scale.value(written), written, scale, part, key)
     if lacking:
-        raise NotChecked(lacking)
+        not_checked(lacking)
 
 
-def reading(written: Quantity, unit: Unit, what: str) -> float:
-    """A value in the given unit; not checked where it has a unit of another kind."""
-    if not same_kind(written.unit, unit):
+def reading(written: Quantity, scale: Scale, what: str) -> float:
+    """A value on the given scale; not checked where it has a unit of another kind."""
+    if not scale.takes(written.unit):
         not_checked(f"{what} has a unit of another kind")
-    return written.to(unit.symbol)
+    return scale.value(written)
+
+
+def range_in_both(written: Range, unit: Unit) -> str:
+    """A range as written, and in the unit in which it is compared where that is another."""
+    if written.unit.symbol == unit.symbol:
+        return str(written)
+    return f"{written} ({rounded(written.to(unit.symbol))})"
+
+
+def rounded(band: Range) -> Range:
+    """A calculated range with six significant digits, as it is shown."""
+    return Range(float(f"{band.low:.6g}"), float(f"{band.high:.6g}"), band.unit)
 
 
 def measured_range(part: Loop | Instrument) -> Range:
