@@ -1,0 +1,580 @@
+"""Margins against closed forms, published worked examples and python-control."""
+
+import math
+import warnings
+
+import numpy as np
+import pytest
+from hypothesis import given, settings
+from hypothesis import strategies as st
+from numpy.typing import NDArray
+
+from loopdoc.engineering.frequency import (
+    LoopStage,
+    Margins,
+    analyse_chain,
+    analyse_chains,
+    maximum_sensitivities,
+    speed_ratio,
+)
+from loopdoc.engineering.pid import Controller, SeriesSettings, standard_from_series
+from loopdoc.engineering.process import Process, frequency_response, in_series
+
+with warnings.catch_warnings():
+    # python-control looks for optional packages with calls that newer Pythons deprecate.
+    warnings.simplefilter("ignore")
+    import control
+
+INTEGRATOR = Process(1.0, integrating=True)
+
+
+def single(controller: Controller, process: Process) -> Margins:
+    return analyse_chain([LoopStage(controller, process)])[0]
+
+
+# --- closed forms --------------------------------------------------------------------------------
+
+
+@pytest.mark.parametrize(("a", "dead_time_s"), [(0.5, 1.0), (0.5, 40.0), (1.2, 3.0), (0.1, 0.2)])
+def test_proportional_control_of_integrator_with_dead_time(a: float, dead_time_s: float) -> None:
+    # a = K k' L: GM = pi/(2a), PM = pi/2 - a, crossover a/L, so that the delay margin is L (pi/2 - a)/a.
+    margins = single(Controller(a / dead_time_s), Process(1.0, (), dead_time_s, integrating=True))
+    assert margins.stable
+    # All of these follow from one refined root: rounding only.
+    assert margins.gain_margin == pytest.approx(math.pi / (2.0 * a), rel=1e-10)
+    assert margins.phase_margin_deg == pytest.approx(90.0 - math.degrees(a), rel=1e-10)
+    assert margins.crossover_rad_per_s == pytest.approx(a / dead_time_s, rel=1e-10)
+    assert margins.phase_crossover_rad_per_s == pytest.approx(math.pi / (2.0 * dead_time_s), rel=1e-10)
+    assert margins.delay_margin_s == pytest.approx(dead_time_s * (math.pi / 2.0 - a) / a, rel=1e-10)
+
+
+# Robustness of SIMC PI with tauc = theta: Skogestad 2003, Table 1, recomputed to the digits given here.
+SIMC_MARGINS = [
+    (math.inf, 3.1416, 61.352, 1.5905, 1.0, 0.5, 1.5708, 2.1416),
+    (8.0, 2.9634, 46.864, 1.7035, 1.2994, 0.5145, 1.4869, 1.5896),
+]
+
+
+@pytest.mark.parametrize(("reset_s", "gm", "pm", "ms", "mt", "wc", "w180", "delay"), SIMC_MARGINS)
+def test_simc_margins(
+    reset_s: float, gm: float, pm: float, ms: float, mt: float, wc: float, w180: float, delay: float
+) -> None:
+    margins = single(Controller(0.5, reset_s), Process(1.0, (), 1.0, integrating=True))
+    found = (
+        margins.gain_margin,
+        margins.phase_margin_deg,
+        margins.max_sensitivity,
+        margins.max_complementary_sensitivity,
+        margins.crossover_rad_per_s,
+        margins.phase_crossover_rad_per_s,
+        margins.delay_margin_s,
+    )
+    # The reference prints four decimals, the phase margin three.
+    assert found == pytest.approx((gm, pm, ms, mt, wc, w180, delay), abs=6e-5, rel=2e-5)
+
+
+def test_first_order_with_dead_time_and_matched_reset_is_an_integrator_with_dead_time() -> None:
+    # Ti = tau cancels the lag: L = K k/(tau s) exp(-Ls), the closed form above with a = K k L/tau.
+    margins = single(Controller(2.0, 10.0), Process(1.5, (10.0,), 2.0))
+    assert margins.gain_margin == pytest.approx(math.pi / (2.0 * 0.6), rel=1e-10)
+    assert margins.phase_margin_deg == pytest.approx(90.0 - math.degrees(0.6), rel=1e-10)
+
+
+def test_integral_like_control_of_pure_dead_time() -> None:
+    # L = g exp(-Ls) under P control: |L| = g everywhere, Ms = 1/(1 - g), Mt = g/(1 - g), GM = 1/g.
+    margins = single(Controller(0.5), Process(1.0, (), 3.0))
+    assert margins.stable
+    assert margins.gain_margin == pytest.approx(2.0, rel=1e-10)
+    assert margins.max_sensitivity == pytest.approx(2.0, rel=1e-8)
+    assert margins.max_complementary_sensitivity == pytest.approx(1.0, rel=1e-8)
+    # The gain never crosses 1: there is no crossover and no angle or delay that could destabilise.
+    assert math.isnan(margins.crossover_rad_per_s)
+    assert margins.phase_margin_deg == math.inf
+    assert margins.delay_margin_s == math.inf
+
+
+def test_gain_above_one_through_pure_dead_time_is_unstable() -> None:
+    assert not single(Controller(1.01), Process(1.0, (), 3.0)).stable
+
+
+@pytest.mark.parametrize(
+    ("process", "ku", "wu"),
+    [
+        (Process(1.0, (1.0, 1.0, 1.0)), 8.0, math.sqrt(3.0)),  # classical: (1 + jw)^3 = -8 at sqrt 3
+        (Process(1.0, (2.0, 5.0, 1.0)), 12.6, 0.89442719),  # Seborg and others, Example 10.4: 63/5
+        (Process(2.0, (10.0, 5.0), 1.0), 7.8756645, 0.5388724),  # Seborg prints 7.88 and 11.6 (from memory)
+        (Process(1.0, (10.0,), 2.0), 8.502425, 2.0 * math.pi / 7.4415227),
+    ],
+)
+def test_ultimate_gain(process: Process, ku: float, wu: float) -> None:
+    margins = single(Controller(1.0), process)
+    # Seven to eight printed digits.
+    assert margins.gain_margin == pytest.approx(ku, rel=1e-7)
+    assert margins.phase_crossover_rad_per_s == pytest.approx(wu, rel=1e-7)
+    assert single(Controller(ku * 0.9999), process).stable
+    beyond = single(Controller(ku * 1.0001), process)
+    assert not beyond.stable
+    assert beyond.gain_margin == pytest.approx(1.0 / 1.0001, rel=1e-6)
+    assert beyond.phase_margin_deg < 0.0
+    assert beyond.max_sensitivity == math.inf
+    assert beyond.delay_margin_s == 0.0
+
+
+def test_a_loop_on_its_stability_limit_is_not_stable() -> None:
+    assert not single(Controller(8.0), Process(1.0, (1.0, 1.0, 1.0))).stable
+
+
+def test_bandwidth_of_a_first_order_loop() -> None:
+    # L = 3/(5s+1): T = 0.75/(1.25s+1), 3 dB down at 1/1.25; 3 dB is taken as a factor of 1/sqrt 2.
+    margins = single(Controller(3.0), Process(1.0, (5.0,)))
+    assert margins.bandwidth_rad_per_s == pytest.approx(0.8, rel=1e-10)
+    assert margins.gain_margin == math.inf
+    assert math.isnan(margins.phase_crossover_rad_per_s)
+    # |L| = 1 at 5w = sqrt 8.
+    assert margins.crossover_rad_per_s == pytest.approx(math.sqrt(8.0) / 5.0, rel=1e-10)
+    # |S| is 1/4 at rest and rises to 1 where the loop no longer acts.
+    assert margins.max_sensitivity == pytest.approx(1.0, abs=1e-6)
+
+
+def test_an_interval_is_half_of_itself_in_dead_time() -> None:
+    sampled = single(Controller(1.0, 10.0, interval_s=3.0), Process(1.0, (10.0,), 2.0))
+    delayed = single(Controller(1.0, 10.0), Process(1.0, (10.0,), 3.5))
+    assert sampled.gain_margin == pytest.approx(delayed.gain_margin, rel=1e-12)
+    assert sampled.max_sensitivity == pytest.approx(delayed.max_sensitivity, rel=1e-12)
+
+
+def test_the_measurement_filter_is_in_the_loop() -> None:
+    filtered = single(Controller(1.0, 10.0, measurement_filter_s=3.0), Process(1.0, (10.0,), 2.0))
+    lagged = single(Controller(1.0, 10.0), Process(1.0, (10.0, 3.0), 2.0))
+    assert filtered.max_sensitivity == pytest.approx(lagged.max_sensitivity, rel=1e-12)
+
+
+# --- direction, several crossovers, conditional stability ----------------------------------------
+
+
+def test_wrong_action_is_unstable() -> None:
+    margins = single(Controller(-1.0, 10.0), Process(1.0, (10.0,), 2.0))
+    assert not margins.stable
+    # Less gain does not mend a wrong action.
+    assert math.isnan(margins.gain_margin)
+
+
+def test_direct_action_on_a_falling_process_is_sound() -> None:
+    rising = single(Controller(1.0, 10.0), Process(2.0, (10.0,), 2.0))
+    falling = single(Controller(-1.0, 10.0), Process(-2.0, (10.0,), 2.0))
+    assert falling == rising
+
+
+def test_conditionally_stable_loop() -> None:
+    """PI on an integrating process with two lags: the phase begins at -180 and rises only in between."""
+    process = Process(1.0, (0.02, 0.01), integrating=True)
+    # Characteristic s^2 (0.02s+1)(0.01s+1) + K s + K/Ti; Routh array of 0.0002, 0.03, 1, K, K/Ti.
+    reset_s = 1.0
+
+    def routh_stable(k: float) -> bool:
+        a, b, c, d, e = 0.0002, 0.03, 1.0, k, k / reset_s
+        first = (b * c - a * d) / b
+        second = (first * d - b * e) / first
+        return first > 0.0 and second > 0.0 and e > 0.0
+
+    for k in (0.02, 0.05, 1.0, 50.0, 149.0, 200.0):
+        assert single(Controller(k, reset_s), process).stable == routh_stable(k), k
+
+
+def test_several_gain_crossovers_take_the_worst() -> None:
+    """A slow loop around a lightly damped inner loop crosses 1 again at the resonance."""
+    inner = LoopStage(Controller(24.5), Process(1.0, (1.0, 1.0), 0.0512))
+    outer = LoopStage(Controller(0.6, 4.0), Process(1.0, (8.0,)))
+    w = np.geomspace(1e-3, 100.0, 400_001)
+    s = 1j * w
+    first = 24.5 * np.exp(-0.0512 * s) / (1.0 + s) ** 2
+    loop = 0.6 * (1.0 + 0.25 / s) / (1.0 + 8.0 * s) * first / (1.0 + first)
+    crossings = np.nonzero(np.diff(np.abs(loop) > 1.0))[0]
+    margins = analyse_chain([inner, outer])[1]
+    # The dense grid of this test places crossings and peaks to about 3e-5.
+    assert margins.crossover_rad_per_s == pytest.approx(w[crossings[-1]], rel=1e-4)
+    assert margins.max_sensitivity == pytest.approx((1.0 / np.abs(1.0 + loop)).max(), rel=1e-4)
+    angles = np.abs(np.degrees(np.angle(-loop[crossings])))
+    assert margins.phase_margin_deg == pytest.approx(angles.min(), rel=1e-3)
+
+
+def test_outer_loop_may_hold_an_unstable_inner_one() -> None:
+    """Inner loop of the wrong action, L = -2/(s+1): one growing mode at s = 1, moved back by the outer loop."""
+    inner = LoopStage(Controller(-2.0), Process(1.0, (1.0,)))
+    # T = -2/(s-1); outer P of gain -1 on no dynamics but 0.1 s: 0.1 s^2 + 0.9 s + 1 has no growing mode.
+    outer = LoopStage(Controller(-1.0), Process(1.0, (0.1,)))
+    margins = analyse_chain([inner, outer])
+    assert [m.stable for m in margins] == [False, True]
+    # With less than half of that gain the mode is left growing: 0.1 s^2 + 0.9 s + 2 K - 1.
+    assert not analyse_chain([inner, LoopStage(Controller(-0.49), Process(1.0, (0.1,)))])[1].stable
+
+
+# --- published cascades --------------------------------------------------------------------------
+
+# D. E. Seborg, T. F. Edgar, D. A. Mellichamp, Process Dynamics and Control, Example 16.1 (statement from
+# memory, limits by Routh): Gv = 5/(s+1), Gp1 = 4/((4s+1)(2s+1)), Km1 = 0.05, Km2 = 0.2, minutes. In percent
+# of the measurements: secondary 1/(s+1), primary 4*0.05/0.2 = 1.
+SECONDARY = Process(1.0, (60.0,))
+PRIMARY = Process(1.0, (240.0, 120.0))
+
+
+def seborg(kc1: float, kc2: float) -> tuple[Margins, ...]:
+    return analyse_chain([LoopStage(Controller(kc2), SECONDARY), LoopStage(Controller(kc1), PRIMARY)])
+
+
+@pytest.mark.parametrize(
+    ("kc2", "limit"),
+    [
+        (0.5, 42.0),
+        (1.0, 33.75),
+        (2.0, 34.125),
+        (4.0, 43.3125),
+        (8.0, 65.90625),
+        (16.0, 113.203125),
+        (25.0, 166.95),
+    ],
+)
+def test_seborg_stability_limits(kc2: float, limit: float) -> None:
+    margins = seborg(1.0, kc2)[1]
+    # Exact rationals from the Routh array.
+    assert margins.gain_margin == pytest.approx(limit, rel=1e-9)
+    assert seborg(0.999 * limit, kc2)[1].stable
+    assert not seborg(1.001 * limit, kc2)[1].stable
+
+
+def test_seborg_ultimate_frequency_of_the_cascade() -> None:
+    # sqrt(31/8) rad/min.
+    found = seborg(1.0, 4.0)[1].phase_crossover_rad_per_s * 60.0
+    assert found == pytest.approx(math.sqrt(31.0 / 8.0), rel=1e-9)
+
+
+def test_seborg_single_loop() -> None:
+    # The same valve and primary under one controller: limit 45/4 at sqrt(7/8) rad/min, Gv Gp1 Km1 = 1/(...).
+    margins = single(Controller(1.0), in_series(SECONDARY, PRIMARY))
+    assert margins.gain_margin == pytest.approx(45.0 / 4.0, rel=1e-9)
+    assert margins.phase_crossover_rad_per_s * 60.0 == pytest.approx(math.sqrt(7.0 / 8.0), rel=1e-9)
+
+
+@pytest.mark.parametrize(
+    ("kc2", "limit", "w"),
+    [(1.0, 8.0802, 2.0025), (5.0, 14.44804, 3.4655), (10.0, 24.24402, 4.6915), (20.0, 44.14201, 6.4815)],
+)
+def test_stephanopoulos_cascade(kc2: float, limit: float, w: float) -> None:
+    # G. Stephanopoulos, Chemical Process Control, 1984, ch. 20 (attribution from memory), 1/(0.1s+1) inside
+    # 100/(10s+1)^2; limits by Routh.
+    chain = [
+        LoopStage(Controller(kc2), Process(1.0, (0.1,))),
+        LoopStage(Controller(1.0), Process(100.0, (10.0, 10.0))),
+    ]
+    margins = analyse_chain(chain)[1]
+    assert margins.gain_margin == pytest.approx(limit, rel=1e-5)
+    # Four decimals are printed.
+    assert margins.phase_crossover_rad_per_s == pytest.approx(w, abs=6e-5)
+
+
+def test_stephanopoulos_single_loop() -> None:
+    margins = single(Controller(1.0), Process(100.0, (0.1, 10.0, 10.0)))
+    assert margins.gain_margin == pytest.approx(2.0402, rel=1e-5)
+    assert margins.phase_crossover_rad_per_s == pytest.approx(1.417745, abs=1e-6)
+
+
+# SIMC PI and PID of Skogestad 2003, Table 4: process, Kc, tauI, tauD, Ms computed for the whole process with
+# the series PID and a derivative filter of 0.01 tauD (recalled published values differ by at most 0.021).
+SIMC_CASES = [
+    (Process(1.0, (1.0, 0.2)), 5.5, 0.8, 0.0, 1.56, 1.277),
+    (
+        Process(1.0, (2.0, 1.0, 0.4, 0.2, 0.05, 0.05, 0.05), 0.0, (-0.3, 0.08)),
+        0.85034,
+        2.5,
+        0.0,
+        1.662,
+        1.038,
+    ),
+    (Process(1.0, (2.0, 1.0, 0.4, 0.2, 0.05, 0.05, 0.05), 0.0, (-0.3, 0.08)), 1.2987, 2.0, 1.2, 1.74, 1.052),
+    (Process(2.0, (20.0, 1.0, 0.1, 0.1), 0.0, (15.0,)), 2.33333, 1.05, 0.0, 1.55, 1.078),
+    (Process(1.0, (1.0,) * 4), 0.3, 1.5, 0.0, 1.463, 1.0),
+    (Process(1.0, (1.0, 1.0, 0.028), 0.0, (0.17, 0.17), True), 0.29586, 13.52, 0.0, 1.475, 1.294),
+    (Process(1.0, (1.0, 1.0, 1.0), 0.0, (-2.0,)), 0.21429, 1.5, 0.0, 1.66, 1.0),
+    (Process(1.0, (1.0, 1.0), 1.0), 0.5, 1.5, 0.0, 1.614, 1.0),
+    (Process(1.0, (20.0, 2.0), 1.0), 5.25, 16.0, 0.0, 1.716, 1.234),
+    (Process(1.0, (10.0, 8.0, 1.0), 0.3, (6.0, 3.0)), 7.40741, 1.0, 0.0, 1.657, 1.182),
+]
+
+
+@pytest.mark.parametrize(("process", "gain", "reset_s", "rate_s", "ms", "mt"), SIMC_CASES)
+def test_simc_sensitivities(
+    process: Process, gain: float, reset_s: float, rate_s: float, ms: float, mt: float
+) -> None:
+    standard = standard_from_series(SeriesSettings(gain, reset_s, rate_s))
+    margins = single(
+        Controller(standard.gain, standard.reset_s, standard.rate_s, derivative_filter=100.0), process
+    )
+    # Three printed decimals; the placing of the derivative filter differs a little where there is rate.
+    tolerance = 0.01 if rate_s else 0.00051
+    assert margins.max_sensitivity == pytest.approx(ms, abs=tolerance)
+    assert margins.max_complementary_sensitivity == pytest.approx(mt, abs=tolerance)
+
+
+# --- python-control ------------------------------------------------------------------------------
+
+
+def transfer_function(process: Process) -> control.TransferFunction:
+    numerator, denominator = [process.gain], [1.0, 0.0] if process.integrating else [1.0]
+    for lead in process.leads_s:
+        numerator = np.polymul(numerator, [lead, 1.0])
+    for lag in process.lags_s:
+        denominator = np.polymul(denominator, [lag, 1.0])
+    return control.tf(numerator, denominator)
+
+
+def controller_polynomials(controller: Controller) -> tuple[NDArray[np.float64], ...]:
+    """Numerator from the measurement, numerator from the setpoint, common denominator."""
+    c = controller
+    integral = np.array([c.reset_s, 0.0]) if math.isfinite(c.reset_s) else np.array([1.0])
+    smoothing = np.array([c.rate_s / c.derivative_filter, 1.0]) if c.rate_s else np.array([1.0])
+
+    def numerator(proportional: float, derivative: float) -> NDArray[np.float64]:
+        total = proportional * np.polymul(integral, smoothing)
+        if math.isfinite(c.reset_s):
+            total = np.polyadd(total, smoothing)
+        if c.rate_s:
+            total = np.polyadd(total, derivative * np.polymul([c.rate_s, 0.0], integral))
+        return c.gain * total
+
+    return (
+        numerator(1.0, 1.0),
+        numerator(c.setpoint_weight, c.derivative_setpoint_weight),
+        np.polymul(integral, smoothing),
+    )
+
+
+def reference_loops(chain: list[LoopStage]) -> list[tuple[control.TransferFunction, NDArray[np.complex128]]]:
+    """Per level the open loop, and the closed-loop poles, by polynomial algebra."""
+    below_numerator, below_denominator = np.array([1.0]), np.array([1.0])
+    loops = []
+    for stage in chain:
+        process = transfer_function(stage.process)
+        plant_numerator = np.polymul(process.num[0][0], below_numerator)
+        plant_denominator = np.polymul(process.den[0][0], below_denominator)
+        feedback, forward, common = controller_polynomials(stage.controller)
+        filtered = np.array([stage.controller.measurement_filter_s, 1.0])
+        numerator = np.polymul(plant_numerator, feedback)
+        denominator = np.polymul(np.polymul(plant_denominator, common), filtered)
+        closed = np.polyadd(numerator, denominator)
+        loops.append((control.tf(numerator, denominator), np.roots(closed)))
+        below_numerator = np.polymul(np.polymul(plant_numerator, forward), filtered)
+        below_denominator = closed
+    return loops
+
+
+REFERENCE_CHAINS = {
+    "PI on two lags": [LoopStage(Controller(2.0, 8.0), Process(1.5, (10.0, 3.0, 0.5)))],
+    "PID with filters": [
+        LoopStage(
+            Controller(3.0, 12.0, 2.0, derivative_filter=8.0, measurement_filter_s=0.7),
+            Process(0.8, (10.0, 3.0, 0.5)),
+        )
+    ],
+    "integrating, inverse response": [
+        LoopStage(Controller(0.4, 30.0), Process(0.2, (2.0, 0.5), 0.0, (-0.8,), integrating=True))
+    ],
+    "PI over PI": [
+        LoopStage(Controller(1.2, 3.0), Process(1.0, (3.0, 0.4))),
+        LoopStage(Controller(2.5, 30.0), Process(0.9, (30.0, 5.0))),
+    ],
+    "setpoint weights and filters inside": [
+        LoopStage(
+            Controller(
+                2.0, 3.0, 0.4, setpoint_weight=0.6, derivative_setpoint_weight=0.2, measurement_filter_s=0.3
+            ),
+            Process(1.0, (3.0, 0.4)),
+        ),
+        LoopStage(Controller(-2.5, 30.0, measurement_filter_s=2.0), Process(-0.9, (30.0, 5.0))),
+    ],
+    "level over flow": [
+        LoopStage(Controller(0.6, 4.0), Process(1.0, (4.0, 0.5))),
+        LoopStage(Controller(-3.0, 900.0), Process(-0.002, (6.0,), integrating=True)),
+    ],
+    "three levels": [
+        LoopStage(Controller(3.0), Process(1.0, (1.0, 0.05))),
+        LoopStage(Controller(2.0, 12.0), Process(1.2, (10.0, 1.0))),
+        LoopStage(Controller(1.5, 90.0, 10.0), Process(0.8, (80.0, 15.0))),
+    ],
+}
+
+
+@pytest.mark.parametrize("name", REFERENCE_CHAINS)
+def test_margins_agree_with_python_control(name: str) -> None:
+    chain = REFERENCE_CHAINS[name]
+    for margins, (loop, poles) in zip(analyse_chain(chain), reference_loops(chain), strict=True):
+        assert margins.stable
+        assert (poles.real < 0.0).all()
+        gm, pm, _, w180, wc, _ = control.stability_margins(loop, returnall=True)
+        # Both refine the same roots; polynomials of order ten or so leave about eight digits.
+        raising = [(g, w) for g, w in zip(gm, w180, strict=True) if g > 1.0]
+        if raising:
+            expected, at = min(raising)
+            assert margins.gain_margin == pytest.approx(expected, rel=1e-6)
+            assert margins.phase_crossover_rad_per_s == pytest.approx(at, rel=1e-6)
+        else:
+            assert margins.gain_margin == math.inf
+        assert margins.phase_margin_deg == pytest.approx(min(abs(pm)), rel=1e-6)
+        assert margins.crossover_rad_per_s == pytest.approx(max(wc), rel=1e-6)
+        peak = control.system_norm(control.feedback(1, loop), "inf", tol=1e-9)
+        assert margins.max_sensitivity == pytest.approx(peak, rel=1e-6)
+        complementary = control.minreal(control.feedback(loop, 1), verbose=False)
+        bandwidth = control.bandwidth(complementary, dbdrop=-20.0 * math.log10(math.sqrt(2.0)))
+        assert margins.bandwidth_rad_per_s == pytest.approx(bandwidth, rel=1e-6)
+
+
+def test_stability_agrees_with_the_closed_loop_poles() -> None:
+    """Random chains of one to three levels, many of them unstable, against polynomial roots."""
+    rng = np.random.default_rng(3)
+    chains = []
+    for _ in range(150):
+        chain = []
+        for level in range(rng.integers(1, 4)):
+            lags = tuple(10.0 ** rng.uniform(-1.0, 1.0) * 5.0**level for _ in range(rng.integers(1, 4)))
+            process = Process(10.0 ** rng.uniform(-0.5, 0.5), lags, integrating=rng.random() < 0.25)
+            reset_s = math.inf if rng.random() < 0.4 else 10.0 ** rng.uniform(-0.5, 1.5)
+            gain = 10.0 ** rng.uniform(-1.5, 1.2) * (-1.0 if rng.random() < 0.1 else 1.0)
+            chain.append(LoopStage(Controller(gain, reset_s), process))
+        chains.append(chain)
+    states: list[bool] = []
+    for chain, found in zip(chains, analyse_chains(chains), strict=True):
+        for margins, (_, poles) in zip(found, reference_loops(chain), strict=True):
+            # Polynomial roots cannot tell a nearly undamped pole from an undamped one.
+            if (np.abs(poles.real) > 1e-4 * np.abs(poles)).all():
+                assert margins.stable == bool((poles.real < 0.0).all()), chain
+                states.append(margins.stable)
+    assert 50 < sum(states) < len(states) - 50
+
+
+def test_dead_time_against_a_high_order_pade_loop() -> None:
+    # The test may approximate where the tool does not: order 8 is exact to 1e-6 at these frequencies.
+    chain = [
+        LoopStage(Controller(0.8, 4.0), Process(1.0, (4.0,), 1.0)),
+        LoopStage(Controller(1.5, 60.0), Process(1.2, (60.0,), 12.0)),
+    ]
+    delays = [control.tf(*control.pade(stage.process.dead_time_s, 8)) for stage in chain]
+    below = control.tf(1, 1)
+    for margins, stage, delay in zip(analyse_chain(chain), chain, delays, strict=True):
+        pi = control.tf(
+            [stage.controller.gain * stage.controller.reset_s, stage.controller.gain],
+            [stage.controller.reset_s, 0.0],
+        )
+        loop = pi * transfer_function(stage.process) * delay * below
+        gm, pm, _, _, wc, _ = control.stability_margins(loop, returnall=True)
+        assert margins.gain_margin == pytest.approx(min(g for g in gm if g > 1.0), rel=1e-5)
+        assert margins.phase_margin_deg == pytest.approx(min(abs(pm)), rel=1e-5)
+        assert margins.crossover_rad_per_s == pytest.approx(max(wc), rel=1e-5)
+        below = control.feedback(loop, 1)
+
+
+# --- properties ----------------------------------------------------------------------------------
+
+positive = st.floats(0.05, 20.0)
+
+
+@settings(max_examples=40, deadline=None)
+@given(gain=positive, reset_s=positive, lag_s=positive, dead_time_s=positive)
+def test_doubling_dead_time_never_raises_the_delay_margin(
+    gain: float, reset_s: float, lag_s: float, dead_time_s: float
+) -> None:
+    controller = Controller(gain, reset_s)
+    short = single(controller, Process(1.0, (lag_s,), dead_time_s))
+    long = single(controller, Process(1.0, (lag_s,), 2.0 * dead_time_s))
+    assert long.delay_margin_s <= short.delay_margin_s * (1.0 + 1e-9)
+    assert short.stable or not long.stable
+    if short.stable:
+        # Added dead time up to the delay margin is what the loop can take, by definition.
+        margin = short.delay_margin_s
+        assert single(controller, Process(1.0, (lag_s,), dead_time_s + 0.999 * margin)).stable
+        assert not single(controller, Process(1.0, (lag_s,), dead_time_s + 1.001 * margin)).stable
+
+
+@settings(max_examples=30, deadline=None)
+@given(gain=positive, reset_s=positive, lag_s=positive, dead_time_s=positive, faster=st.floats(1e-3, 1e3))
+def test_margins_do_not_depend_on_the_unit_of_time(
+    gain: float, reset_s: float, lag_s: float, dead_time_s: float, faster: float
+) -> None:
+    one = single(Controller(gain, reset_s), Process(1.0, (lag_s,), dead_time_s))
+    other = single(Controller(gain, reset_s * faster), Process(1.0, (lag_s * faster,), dead_time_s * faster))
+    assert one.stable == other.stable
+    if one.stable:
+        assert other.gain_margin == pytest.approx(one.gain_margin, rel=1e-9)
+        assert other.max_sensitivity == pytest.approx(one.max_sensitivity, rel=1e-7)
+        assert other.crossover_rad_per_s * faster == pytest.approx(
+            one.crossover_rad_per_s, rel=1e-9, nan_ok=True
+        )
+
+
+@settings(max_examples=30, deadline=None)
+@given(gain=positive, reset_s=positive, lag_s=positive, dead_time_s=positive)
+def test_margins_bound_each_other(gain: float, reset_s: float, lag_s: float, dead_time_s: float) -> None:
+    # Astrom and Hagglund 2006, section 4.5: GM >= Ms/(Ms - 1) and PM >= 2 asin(1/(2 Ms)).
+    margins = single(Controller(gain, reset_s), Process(1.0, (lag_s,), dead_time_s))
+    if margins.stable:
+        ms = margins.max_sensitivity
+        assert margins.gain_margin >= ms / (ms - 1.0) * (1.0 - 1e-9)
+        assert margins.phase_margin_deg >= math.degrees(2.0 * math.asin(0.5 / ms)) * (1.0 - 1e-9)
+
+
+# --- batches and small things --------------------------------------------------------------------
+
+
+def test_a_batch_gives_each_chain_its_own_margins_in_order() -> None:
+    chains = [*REFERENCE_CHAINS.values(), *reversed(REFERENCE_CHAINS.values())]
+    for chain, found in zip(chains, analyse_chains(chains), strict=True):
+        for alone, together in zip(analyse_chain(chain), found, strict=True):
+            # The grid of a batch is as fine as its widest member needs: the refined figures agree.
+            assert together.gain_margin == pytest.approx(alone.gain_margin, rel=1e-9)
+            assert together.max_sensitivity == pytest.approx(alone.max_sensitivity, rel=1e-7)
+            assert together.phase_margin_deg == pytest.approx(alone.phase_margin_deg, rel=1e-9)
+
+
+def test_maximum_sensitivities_are_those_of_the_margins() -> None:
+    loops = [chain[0] for chain in REFERENCE_CHAINS.values()]
+    loops.append(LoopStage(Controller(-1.0, 10.0), Process(1.0, (10.0,), 2.0)))
+    expected = [single(loop.controller, loop.process).max_sensitivity for loop in loops]
+    assert list(maximum_sensitivities(loops)) == pytest.approx(expected, rel=1e-7)
+
+
+def test_speed_ratio_is_the_ratio_of_crossovers() -> None:
+    # Two matched PI loops: crossovers K/tau of 1/4 and 1.5/60 rad/s, the inner one seen only through T = 1.
+    inner = single(Controller(1.0, 4.0), Process(1.0, (4.0,)))
+    outer = single(Controller(1.5, 60.0), Process(1.0, (60.0,)))
+    assert speed_ratio(inner, outer) == pytest.approx(10.0, rel=1e-10)
+
+
+def test_an_empty_chain_is_refused() -> None:
+    with pytest.raises(ValueError, match="at least one loop"):
+        analyse_chain([])
+
+
+def test_process_frequency_response_agrees_with_python_control() -> None:
+    process = Process(2.0, (5.0, 1.0), 0.0, (-0.5,), integrating=True)
+    w = np.geomspace(1e-3, 1e2, 50)
+    np.testing.assert_allclose(frequency_response(process, w), transfer_function(process)(1j * w), rtol=1e-12)
+    delayed = frequency_response(Process(2.0, (5.0,), 3.0), w)
+    np.testing.assert_allclose(delayed, 2.0 / (1.0 + 5j * w) * np.exp(-3j * w), rtol=1e-12)
+
+
+@pytest.mark.parametrize(
+    ("fields", "said"),
+    [
+        ({"gain": 0.0}, "other than zero"),
+        ({"gain": 1.0, "lags_s": (-1.0,)}, "every lag"),
+        ({"gain": 1.0, "dead_time_s": math.inf}, "dead time"),
+        ({"gain": 1.0, "lags_s": (1.0,), "leads_s": (math.nan,)}, "every lead"),
+        ({"gain": 1.0, "lags_s": (1.0, 0.0), "leads_s": (1.0, 2.0)}, "more leads than lags"),
+    ],
+)
+def test_a_process_that_cannot_be_is_refused(fields: dict[str, object], said: str) -> None:
+    with pytest.raises(ValueError, match=said):
+        Process(**fields)  # type: ignore[arg-type]
+
+
+def test_two_integrations_in_series_are_refused() -> None:
+    with pytest.raises(ValueError, match="two integrating processes"):
+        in_series(INTEGRATOR, INTEGRATOR)
