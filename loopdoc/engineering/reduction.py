@@ -52,11 +52,9 @@ def _without_leads(process: Process, closed_loop_s: float) -> tuple[float, list[
     return gain, lags
 
 
-def _reduce(process: Process, *, order: int, interval_s: float) -> ReducedModel:
-    inverse = -math.fsum(lead for lead in process.leads_s if lead < 0.0)
-    fixed = process.dead_time_s + inverse + interval_s / 2.0
-    # The rules for leads need the closed-loop time, which is taken as the dead time that they lead to.
-    dead_time = fixed + math.fsum(process.lags_s)
+def _reduce_from(process: Process, order: int, fixed_s: float, start_s: float) -> ReducedModel:
+    """Half rule, the closed-loop time of the rules for leads taken as the dead time that they lead to."""
+    dead_time = start_s
     for _ in range(10):
         gain, lags = _without_leads(process, dead_time)
         kept = [math.inf, *lags] if process.integrating else list(lags)
@@ -70,12 +68,23 @@ def _reduce(process: Process, *, order: int, interval_s: float) -> ReducedModel:
             gain=gain,
             lag_s=main[0],
             second_lag_s=main[1] if order == 2 else 0.0,
-            dead_time_s=fixed + neglected - half + math.fsum(kept[order + 1 :]),
+            dead_time_s=fixed_s + neglected - half + math.fsum(kept[order + 1 :]),
         )
         if math.isclose(reduced.dead_time_s, dead_time, rel_tol=1e-12):
             break
         dead_time = reduced.dead_time_s
     return reduced
+
+
+def _reduce(process: Process, *, order: int, interval_s: float) -> ReducedModel:
+    inverse = -math.fsum(lead for lead in process.leads_s if lead < 0.0)
+    fixed = process.dead_time_s + inverse + interval_s / 2.0
+    # With leads a fast and a slow closed loop may both agree with their own model. The fast one is right
+    # where every lead acts long before it; at the five closed-loop times of the rule it is too hopeful.
+    tight = _reduce_from(process, order, fixed, fixed)
+    if all(lead >= 10.0 * tight.dead_time_s for lead in process.leads_s if lead > 0.0):
+        return tight
+    return _reduce_from(process, order, fixed, fixed + math.fsum(process.lags_s))
 
 
 def reduce_to_first_order(process: Process, *, interval_s: float = 0.0) -> ReducedModel:

@@ -1,0 +1,306 @@
+"""Tuning rules and model reduction against published tables and worked examples."""
+
+import math
+
+import pytest
+
+from loopdoc.engineering.frequency import LoopStage, analyse_chain
+from loopdoc.engineering.pid import Controller, StandardSettings
+from loopdoc.engineering.process import Process
+from loopdoc.engineering.reduction import ReducedModel, reduce_to_first_order, reduce_to_second_order
+from loopdoc.engineering.tuning import (
+    UltimatePoint,
+    amigo,
+    cohen_coon,
+    imc_pid,
+    lambda_pi,
+    recommendations,
+    simc_at_sensitivities,
+    simc_at_sensitivity,
+    simc_pi,
+    simc_pid,
+    tyreus_luyben,
+    ultimate_point,
+    ziegler_nichols_reaction_curve,
+    ziegler_nichols_ultimate,
+)
+
+
+def model(gain: float, lag_s: float, dead_time_s: float) -> ReducedModel:
+    return ReducedModel(gain=gain, lag_s=lag_s, second_lag_s=0.0, dead_time_s=dead_time_s)
+
+
+def integrating(slope: float, dead_time_s: float) -> ReducedModel:
+    return model(slope, math.inf, dead_time_s)
+
+
+def values(settings: StandardSettings) -> tuple[float, ...]:
+    """Gain, then reset and rate where the rule sets them."""
+    found = [settings.gain]
+    if math.isfinite(settings.reset_s):
+        found.append(settings.reset_s)
+    if settings.rate_s:
+        found.append(settings.rate_s)
+    return tuple(found)
+
+
+# --- SIMC and the half rule ----------------------------------------------------------------------
+
+# S. Skogestad, J. Process Control 13:291-309, 2003, Table 4: process list and settings (from memory).
+E2 = Process(1.0, (2.0, 1.0, 0.4, 0.2, 0.05, 0.05, 0.05), 0.0, (-0.3, 0.08))
+E6 = Process(1.0, (1.0, 1.0, 0.028), 0.0, (0.17, 0.17), True)
+E12 = Process(1.0, (10.0, 8.0, 1.0), 0.3, (6.0, 3.0))
+FIRST_ORDER = [
+    # process, gain, lag, dead time, Kc, tauI
+    ("E1", Process(1.0, (1.0, 0.2)), 1.0, 1.1, 0.1, 5.5, 0.8),
+    ("E2", E2, 1.0, 2.5, 1.47, 0.85034, 2.5),
+    ("E3", Process(2.0, (20.0, 1.0, 0.1, 0.1), 0.0, (15.0,)), 1.5, 1.05, 0.15, 2.33333, 1.05),
+    ("E4", Process(1.0, (1.0,) * 4), 1.0, 1.5, 2.5, 0.3, 1.5),
+    ("E6", E6, 1.0, math.inf, 1.688, 0.29621, 13.504),
+    ("E7", Process(1.0, (1.0,) * 3, 0.0, (-2.0,)), 1.0, 1.5, 3.5, 0.21429, 1.5),
+    ("E9", Process(1.0, (1.0, 1.0), 1.0), 1.0, 1.5, 1.5, 0.5, 1.5),
+    ("E10", Process(1.0, (20.0, 2.0), 1.0), 1.0, 21.0, 2.0, 5.25, 16.0),
+    ("E12", E12, 0.225, 1.0, 0.3, 7.40741, 1.0),
+]
+SECOND_ORDER = [
+    # process, gain, lags, dead time, Kc, tauI, tauD (series)
+    ("E2", E2, 1.0, 2.0, 1.2, 0.77, 1.2987, 2.0),
+    ("E3", Process(2.0, (20.0, 1.0, 0.1, 0.1), 0.0, (15.0,)), 1.5, 1.0, 0.15, 0.05, 6.66667, 0.4),
+    ("E4", Process(1.0, (1.0,) * 4), 1.0, 1.5, 1.0, 1.5, 0.5, 1.5),
+    ("E6", E6, 1.0, math.inf, 1.33, 0.358, 1.39665, 2.864),
+    ("E7", Process(1.0, (1.0,) * 3, 0.0, (-2.0,)), 1.0, 1.5, 1.0, 2.5, 0.3, 1.5),
+    ("E9", Process(1.0, (1.0, 1.0), 1.0), 1.0, 1.0, 1.0, 1.0, 0.5, 1.0),
+    ("E10", Process(1.0, (20.0, 2.0), 1.0), 1.0, 20.0, 2.0, 1.0, 10.0, 8.0),
+]
+
+
+@pytest.mark.parametrize(("case", "process", "gain", "lag", "dead_time", "kc", "reset"), FIRST_ORDER)
+def test_simc_pi(
+    case: str, process: Process, gain: float, lag: float, dead_time: float, kc: float, reset: float
+) -> None:
+    reduced = reduce_to_first_order(process)
+    # The models are exact decimals; the paper rounds E6 to 1.69, from which 0.296 and 13.5 follow.
+    assert (reduced.gain, reduced.lag_s, reduced.dead_time_s) == pytest.approx(
+        (gain, lag, dead_time), rel=1e-9
+    )
+    # Five decimals.
+    assert values(simc_pi(reduced, closed_loop_s=dead_time)) == pytest.approx((kc, reset), abs=6e-6, rel=1e-5)
+
+
+@pytest.mark.parametrize(
+    ("case", "process", "gain", "lag", "second", "dead_time", "kc", "reset"), SECOND_ORDER
+)
+def test_simc_pid(
+    case: str,
+    process: Process,
+    gain: float,
+    lag: float,
+    second: float,
+    dead_time: float,
+    kc: float,
+    reset: float,
+) -> None:
+    reduced = reduce_to_second_order(process)
+    found = (reduced.gain, reduced.lag_s, reduced.second_lag_s, reduced.dead_time_s)
+    assert found == pytest.approx((gain, lag, second, dead_time), rel=1e-9)
+    series = simc_pid(reduced, closed_loop_s=dead_time)
+    assert (series.gain, series.reset_s, series.rate_s) == pytest.approx((kc, reset, second), rel=1e-5)
+
+
+def test_half_of_the_interval_counts_as_dead_time() -> None:
+    # Skogestad 2003, section 2: h/2 of a sampled controller is added to the effective delay.
+    assert reduce_to_first_order(Process(1.0, (10.0,), 2.0), interval_s=1.0).dead_time_s == 2.5
+
+
+@pytest.mark.parametrize(("lead", "gain"), [(4.0, 2.0), (0.5, 0.5)])
+def test_a_lead_beyond_every_lag(lead: float, gain: float) -> None:
+    """Rules T1a (T0 above the closed-loop time above the lag) and T1b (both below it), Skogestad 2003."""
+    # Closed-loop time 2 s = dead time; lag 1 s. T1a: 4/2. T3 from a lag of 1 s: 1/(0.5s+1), gain 1.
+    reduced = reduce_to_first_order(Process(1.0, (1.0,), 2.0, (lead,)))
+    if lead > 1.0:
+        assert (reduced.gain, reduced.lag_s) == (gain, 0.0)
+    else:
+        assert (reduced.gain, reduced.lag_s) == (1.0, gain)
+
+
+def test_a_lead_on_an_integration_alone_is_refused() -> None:
+    with pytest.raises(ValueError, match="lead on an integration"):
+        reduce_to_first_order(Process(1.0, (), 2.0, (1.0,), integrating=True))
+
+
+# --- other rules ---------------------------------------------------------------------------------
+
+
+@pytest.mark.parametrize(
+    ("found", "expected"),
+    [
+        # Direct synthesis; Seborg's example with tauc = tau/3 prints Kc = 1.27, tauI = 5.93 (from memory).
+        (lambda_pi(model(1.54, 5.93, 1.07), lambda_s=1.97667), (1.2639, 5.93)),
+        (lambda_pi(model(1.0, 10.0, 2.0), lambda_s=2.0), (2.5, 10.0)),
+        # I-L. Chien, P. S. Fruehauf, Chem. Eng. Prog. 86(10):33-41, 1990, integrating (from memory).
+        (lambda_pi(integrating(0.02, 5.0), lambda_s=15.0), (4.375, 35.0)),
+        (lambda_pi(integrating(0.1, 7.4), lambda_s=14.8), (0.750751, 37.0)),
+        (lambda_pi(integrating(1.0, 1.0), lambda_s=3.0), (0.4375, 7.0)),
+        # Rivera, Morari, Skogestad 1986; the second is P. C. Chau's Example 5.7A: about 3.4, 4.5, 0.4.
+        (imc_pid(model(1.0, 10.0, 2.0), lambda_s=2.0), (3.6667, 11.0, 0.9091)),
+        (imc_pid(model(1.25, 4.0, 0.9), lambda_s=0.6), (3.3905, 4.45, 0.4045)),
+        # Ziegler and Nichols 1942, ultimate gain and period.
+        (ziegler_nichols_ultimate(UltimatePoint(10.0, 4.0), "P"), (5.0,)),
+        (ziegler_nichols_ultimate(UltimatePoint(10.0, 4.0), "PI"), (4.5, 3.33333)),
+        (ziegler_nichols_ultimate(UltimatePoint(10.0, 4.0), "PID"), (6.0, 2.0, 0.5)),
+        # Ziegler and Nichols 1942, reaction curve; the PID of the last is Chau's Example 5.7A.
+        (ziegler_nichols_reaction_curve(model(1.0, 10.0, 2.0), "P"), (5.0,)),
+        (ziegler_nichols_reaction_curve(model(1.0, 10.0, 2.0), "PI"), (4.5, 6.66667)),
+        (ziegler_nichols_reaction_curve(model(1.0, 10.0, 2.0), "PID"), (6.0, 4.0, 1.0)),
+        (ziegler_nichols_reaction_curve(model(1.25, 4.0, 0.9), "PID"), (4.2666667, 1.8, 0.45)),
+        # Cohen and Coon 1953.
+        (cohen_coon(model(1.25, 4.0, 0.9), "P"), (3.8222,)),
+        (cohen_coon(model(1.25, 4.0, 0.9), "PI"), (3.2667, 2.045)),
+        (cohen_coon(model(1.25, 4.0, 0.9), "PID"), (4.9407, 2.028, 0.3144)),
+        (cohen_coon(model(1.0, 10.0, 2.0), "PI"), (4.5833, 4.7077)),
+        (cohen_coon(model(1.0, 10.0, 2.0), "PID"), (6.9167, 4.5479, 0.7018)),
+        (cohen_coon(model(1.54, 5.93, 1.07), "PI"), (3.293, 2.5918)),
+        (cohen_coon(model(1.54, 5.93, 1.07), "PID"), (4.9607, 2.4508, 0.3767)),
+        # Astrom and Hagglund 2006, eqs. 7.5, 7.7, 7.32, 7.33.
+        (amigo(model(1.0, 10.0, 2.0), "PI"), (1.20556, 7.76515)),
+        (amigo(model(1.0, 10.0, 2.0), "PID"), (2.45, 5.86667, 0.9434)),
+        (amigo(model(1.25, 4.0, 0.9), "PI"), (0.8313, 3.2008)),
+        (amigo(model(1.25, 4.0, 0.9), "PID"), (1.76, 2.4646, 0.4215)),
+        (amigo(model(2.0, 10.0, 3.0), "PI"), (0.3625, 8.507)),
+        (amigo(model(2.0, 10.0, 3.0), "PID"), (0.85, 6.9, 1.3761)),
+        (amigo(integrating(0.1, 2.0), "PI"), (1.75, 26.8)),
+        (amigo(integrating(0.1, 2.0), "PID"), (2.25, 16.0, 1.0)),
+        # Tyreus and Luyben 1992.
+        (tyreus_luyben(UltimatePoint(10.0, 4.0), "PI"), (3.125, 8.8)),
+        (tyreus_luyben(UltimatePoint(10.0, 4.0), "PID"), (4.54545, 8.8, 0.634921)),
+        (tyreus_luyben(UltimatePoint(1.570796, 4.0), "PI"), (0.490874, 8.8)),
+    ],
+)
+def test_published_settings(found: StandardSettings, expected: tuple[float, ...]) -> None:
+    # The references are printed to four or five decimals.
+    assert values(found) == pytest.approx(expected, abs=6e-5, rel=2e-5)
+
+
+@pytest.mark.parametrize(
+    ("process", "gain", "period"),
+    [
+        (Process(1.0, (1.0, 1.0, 1.0)), 8.0, 3.6275987),
+        (Process(2.0, (10.0, 5.0), 1.0), 7.8756645, 11.6598754),
+        (Process(1.0, (10.0,), 2.0), 8.502425, 7.4415227),
+        (Process(1.0, (), 1.0, integrating=True), 1.570796, 4.0),
+        (Process(-1.0, (1.0, 1.0, 1.0)), -8.0, 3.6275987),
+        # A gain of thousands, where the loop gain at rest says nothing of the ultimate one: Routh limit of
+        # (100s+1)(0.1s+1)(0.01s+1): (a + b + c)(1/a + 1/b + 1/c) - 1.
+        (Process(1.0, (100.0, 0.1, 0.01)), 100.11 * 110.01 - 1.0, 2.0 * math.pi * math.sqrt(0.1 / 100.11)),
+    ],
+)
+def test_ultimate_points(process: Process, gain: float, period: float) -> None:
+    point = ultimate_point(process)
+    # Seven printed digits.
+    assert (point.gain, point.period_s) == pytest.approx((gain, period), rel=5e-7)
+
+
+def test_a_process_that_never_oscillates_has_no_ultimate_point() -> None:
+    with pytest.raises(ValueError, match="never reaches -180 degrees"):
+        ultimate_point(Process(1.0, (10.0, 2.0)))
+
+
+def test_rules_keep_the_sign_of_the_process() -> None:
+    rising = recommendations(Process(2.0, (10.0, 3.0), 2.0), interval_s=0.5)
+    falling = recommendations(Process(-2.0, (10.0, 3.0), 2.0), interval_s=0.5)
+    assert len(rising) == 14
+    for one, other in zip(rising, falling, strict=True):
+        assert other.rule == one.rule
+        assert other.settings.gain == pytest.approx(-one.settings.gain, rel=1e-9)
+        assert other.settings.reset_s == pytest.approx(one.settings.reset_s, rel=1e-9)
+
+
+def test_rules_that_do_not_fit_are_left_out() -> None:
+    # Cohen-Coon and IMC PID are for processes that settle; without dead time most rules ask for no limit.
+    names = {found.rule for found in recommendations(Process(0.1, (), 2.0, integrating=True))}
+    assert not {name for name in names if name.startswith(("Cohen-Coon", "IMC"))}
+    assert {"SIMC PI", "lambda PI", "AMIGO PID"} <= names
+    assert {found.rule for found in recommendations(Process(1.0, (10.0,)))} == {"lambda PI", "IMC PID"}
+
+
+@pytest.mark.parametrize(
+    "rule",
+    [
+        lambda: simc_pi(model(1.0, 10.0, 0.0), closed_loop_s=0.0),
+        lambda: simc_pi(model(1.0, 0.0, 1.0), closed_loop_s=1.0),
+        lambda: lambda_pi(model(1.0, 10.0, 1.0), lambda_s=0.0),
+        lambda: imc_pid(model(1.0, 10.0, 1.0), lambda_s=0.0),
+        lambda: imc_pid(integrating(1.0, 1.0), lambda_s=1.0),
+        lambda: cohen_coon(integrating(1.0, 1.0), "PI"),
+        lambda: cohen_coon(model(1.0, 0.0, 1.0), "PI"),
+        lambda: ziegler_nichols_reaction_curve(model(1.0, 10.0, 0.0), "PI"),
+    ],
+)
+def test_rules_refuse_what_they_cannot_tune(rule: object) -> None:
+    with pytest.raises(ValueError, match=r"need|not for integrating"):
+        rule()  # type: ignore[operator]
+
+
+# --- tuning to a robustness ----------------------------------------------------------------------
+
+
+def test_simc_at_its_own_published_sensitivity() -> None:
+    # Skogestad 2003, Table 1: tauc = theta gives Ms 1.7035 (integrating) and 1.5905 (lag = reset).
+    found = simc_at_sensitivity(Process(1.0, (), 1.0, integrating=True), target_ms=1.7035217, interval_s=0.0)
+    # Ms to eight digits gives the tuning constant to about seven.
+    assert found.closed_loop_s == pytest.approx(1.0, rel=1e-5)
+    assert found.settings.gain == pytest.approx(0.5, rel=1e-5)
+    assert found.settings.reset_s == pytest.approx(8.0, rel=1e-5)
+    found = simc_at_sensitivity(Process(3.0, (5.0,), 1.0), target_ms=1.5904902, interval_s=0.0)
+    assert found.closed_loop_s == pytest.approx(1.0, rel=1e-5)
+
+
+@pytest.mark.parametrize("with_rate", [False, True])
+@pytest.mark.parametrize("target", [1.2, 1.6, 3.0])
+def test_the_sensitivity_reached_is_the_one_asked_for(target: float, with_rate: bool) -> None:
+    processes = [
+        Process(1.1, (4.0, 540.0), 91.0),
+        Process(-0.4, (30.0, 8.0, 2.0), 0.0),
+        Process(0.01, (6.0,), 3.0, integrating=True),
+        Process(1.0, (5.0,), 0.0),
+    ]
+    intervals = [1.0, 0.5, 1.0, 2.0]
+    found = simc_at_sensitivities(
+        processes,
+        target_ms=[target] * 4,
+        interval_s=intervals,
+        measurement_filter_s=[0.0, 1.0, 0.0, 0.0],
+        with_rate=with_rate,
+    )
+    for process, interval, filter_s, tuning in zip(
+        processes, intervals, [0.0, 1.0, 0.0, 0.0], found, strict=True
+    ):
+        assert tuning is not None
+        settings = tuning.settings
+        controller = Controller(
+            settings.gain,
+            settings.reset_s,
+            settings.rate_s,
+            interval_s=interval,
+            measurement_filter_s=filter_s,
+        )
+        margins = analyse_chain([LoopStage(controller, process)])[0]
+        # The search stops within 1e-7 of the target; margins and search refine the peak separately.
+        assert margins.max_sensitivity == pytest.approx(target, rel=1e-6)
+        assert tuning.max_sensitivity == pytest.approx(target, rel=1e-6)
+
+
+def test_no_tuning_where_no_gain_disturbs_the_loop() -> None:
+    unlimited, no_lag = simc_at_sensitivities(
+        [Process(1.0, (5.0,)), Process(1.0, (), 3.0)], target_ms=[1.5, 1.5], interval_s=[0.0, 1.0]
+    )
+    assert unlimited is None
+    assert no_lag is None
+    with pytest.raises(ValueError, match="hardly any dead time"):
+        simc_at_sensitivity(Process(1.0, (5.0,)), target_ms=1.5, interval_s=0.0)
+
+
+@pytest.mark.parametrize("target", [1.0, math.inf, math.nan])
+def test_a_meaningless_target_is_refused(target: float) -> None:
+    with pytest.raises(ValueError, match="finite number above 1"):
+        simc_at_sensitivity(Process(1.0, (5.0,), 1.0), target_ms=target, interval_s=1.0)
