@@ -307,10 +307,11 @@ def test_a_policy_moves_a_threshold(tmp_path: Path) -> None:
         ("FIC-20111", "FIC-2011"),  # one too many
         ("fic-2011", "FIC-2011"),
         ("LIC-3002", None),
+        ("40", None),  # too short to have a nearest
     ],
 )
 def test_the_nearest_tag_is_one_slip_away(written: str, nearest: str | None) -> None:
-    assert Names("a loop", ["FIC-2011", "TIC-4050"]).nearest(written) == nearest
+    assert Names("a loop", ["FIC-2011", "TIC-4050", "20"]).nearest(written) == nearest
 
 
 def test_a_rule_must_explain_itself_and_visit_something_known() -> None:

@@ -73,8 +73,7 @@ def action_undecided(controlled: ControlledLoop) -> Iterator[Draft]:
             yield draft(
                 controlled.tag,
                 f"which action it needs cannot be told: {path.reason.removeprefix(f'{controlled.tag}: ')}",
-                remedy="say under `process` whether the measurement rises or falls, and on which signal each "
-                "final element opens",
+                remedy=_remedy(controlled, route),
                 at=_undecided_at(controlled, route),
             )
     signs = {path.sign for path in paths if isinstance(path, PathSign)}
@@ -107,6 +106,16 @@ def _paths(controlled: ControlledLoop) -> list[PathSign | Undecided]:
         need(controlled.controller.output, "the output")
         not_checked("the output leads to nothing that the register knows")
     return [_held(controlled, route) or path_sign(controlled, route) for route in controlled.routes]
+
+
+def _remedy(controlled: ControlledLoop, route: Route) -> str:
+    """What to write so that the sign of a route follows."""
+    if isinstance(route.end, FinalElement) and known(route.end.opens_on) is None:
+        return f"write for {route.end.tag} `opens_on: rising signal` or `opens_on: falling signal`"
+    process = process_on(controlled, route)
+    if process and known(process.effect) and known(process.gain):
+        return "correct the effect, or the sign of the gain"
+    return "write under `process` whether the measurement rises or falls, as in `effect: rises`"
 
 
 def _undecided_at(controlled: ControlledLoop, route: Route) -> Place:
@@ -164,7 +173,7 @@ def fail_position_unsafe(element: FinalElement) -> Iterator[Draft]:
     fails, safe = need(element.fails, "the fail position"), need(element.safe, "the safe position")
     if _position(element, fails) != _position(element, safe):
         loss = "power" if known(element.kind) in _MACHINES else "air or power"
-        where = "stays where it is" if fails == "last" else f"goes {fails}" if fails != "stopped" else "stops"
+        where = {"last": "stays as it is", "stopped": "stops"}.get(fails, f"goes {fails}")
         yield draft(
             element.tag,
             f"it {where} on loss of {loss}, but its safe position is {safe}",

@@ -23,10 +23,10 @@ def hold_open(held: HeldValue) -> Iterator[Draft]:
     What this check cannot see:
         Who is to supply the value, and when: the reason is the place to say so.
     """
-    what = " ".join(str(step).replace("_", " ") for step in held.path)
+    what = "/".join(map(str, held.path))
     yield draft(
         held.tag,
-        f"{what} on hold: {held.reason}".lstrip(),
+        f"`{what}` is on hold: {held.reason}" if what else f"on hold: {held.reason}",
         remedy="write the value when it is known, in place of the hold",
         at=held.place,
     )

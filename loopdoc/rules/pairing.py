@@ -33,9 +33,10 @@ def pairing_cycle(plant: Plant) -> Iterator[Draft]:
     """
     for ring in plant.cycles:
         first, *others = pairwise((*ring, ring[0]))
+        round_again = ", which commands ".join((*ring[1:], ring[0]))
         yield draft(
             ring[0],
-            "it commands itself" if not others else f"the outputs run in a ring: {' commands '.join((*ring, ring[0]))}",
+            f"the outputs run in a ring: {ring[0]} commands {round_again}" if others else "it commands itself",
             remedy="lead one of these outputs to the final element that it is to move",
             at=_place_of_command(plant, *first),
             related=tuple(
@@ -112,25 +113,23 @@ def mode_normal_conflict(secondary: ControlledLoop, plant: Plant) -> Iterator[Dr
     if normal == "cascade":
         return
     links = plant.links_to.get(secondary.tag, ())
-    commanding = [link.primary for link in links if _normal_mode(link.primary) in _COMMANDING]
-    if commanding or not links:
-        who = (
-            f"{commanding[0].tag} commands it in {_normal_mode(commanding[0])}"
-            if commanding
-            else f"{commanders[0]} commands it"
-        )
-        related = (
-            ((_mode_place(commanding[0]), f"the normal mode of {commanding[0].tag}"),)
-            if commanding
-            else ((_place_of_command(plant, commanders[0], secondary.tag), f"{commanders[0]} commands it"),)
-        )
+    commanding = next((link.primary for link in links if _normal_mode(link.primary) in _COMMANDING), None)
+    if commanding is not None:
         yield draft(
             secondary.tag,
-            f"its normal mode is {normal}, but {who}, which asks for cascade",
-            remedy="write `normal: cascade`"
-            + (f", or another normal mode for {commanding[0].tag}" if commanding else ""),
+            f"its normal mode is {normal}, but {commanding.tag}, with normal mode {_normal_mode(commanding)}, "
+            "commands it; it follows in cascade only",
+            remedy=f"write `normal: cascade`, or another normal mode for {commanding.tag}",
             at=place,
-            related=related,
+            related=((_mode_place(commanding), f"the normal mode of {commanding.tag}"),),
+        )
+    elif not links:
+        yield draft(
+            secondary.tag,
+            f"its normal mode is {normal}, but {commanders[0]} commands it; it follows in cascade only",
+            remedy="write `normal: cascade`",
+            at=place,
+            related=((_place_of_command(plant, commanders[0], secondary.tag), f"{commanders[0]} commands it"),),
         )
     for link in links:
         need(need(link.primary.controller.modes, "the primary's modes").normal, "the primary's normal mode")

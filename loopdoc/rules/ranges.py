@@ -209,7 +209,7 @@ def secondary_range_short(link: CascadeLink, plant: Plant) -> Iterator[Draft]:
     if short:
         yield draft(
             secondary.tag,
-            f"its range, {band}, does not cover {_told(link, span, asked)}: {short} lies outside it",
+            f"its range, {band}, does not cover {_told(link, span, asked)}: {short} cannot be measured",
             remedy=f"give {secondary.tag} a range that covers {rounded(asked.asked)}, "
             f"or {primary.tag} a shorter output span",
             at=range_place(secondary.loop),
@@ -308,22 +308,22 @@ def _beyond_setpoint(link: CascadeLink, end: str, plant: Plant) -> Iterator[Draf
     asked, told, place = _output_end(link, output, end, plant)
     if accepted is None:
         bound, bound_place = (band.low if end == "low" else band.high), range_place(secondary.loop)
-        bound_told = f"the {end} end of that loop's range, {amount(bound, band.unit)}"
+        bound_told = f"the {end} end of the range of {secondary.tag}, {amount(bound, band.unit)}"
     else:
         written = need(accepted, f"the secondary's {end} setpoint limit")
         scale = scale_in(band.unit, secondary.loop)
         bound = reading(written, scale, f"the secondary's {end} setpoint limit")
-        bound_told = f"that loop's {end} setpoint limit, {scale.told(written)}"
+        bound_told = f"the {end} setpoint limit of {secondary.tag}, {scale.told(written)}"
         bound_place = secondary.controller.origin.place("setpoint", end)
     if below(asked, bound) if end == "low" else above(asked, bound):
         side = "below" if end == "low" else "above"
         yield draft(
             primary.tag,
-            f"its output may ask {secondary.tag} for {told}, {side} {bound_told}",
-            remedy=f"limit the output of {primary.tag} to {amount(bound, band.unit)}, "
-            f"or let {secondary.tag} accept {amount(asked, band.unit)}",
+            f"its output may ask for {told}, {side} {bound_told}",
+            remedy=f"limit the output so that it asks for no {'less' if end == 'low' else 'more'} "
+            f"than {amount(bound, band.unit)}, or let {secondary.tag} accept {amount(asked, band.unit)}",
             at=place,
-            related=((bound_place, f"{secondary.tag}, {bound_told}"),),
+            related=((bound_place, bound_told),),
         )
 
 

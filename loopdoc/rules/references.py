@@ -15,6 +15,9 @@ SECTIONS = ("register", "site", "revision", "history", "texts")
 """Where a finding may stand that is about no tag; a deviation may name them."""
 
 
+_SHORT = 4
+
+
 @dataclass(frozen=True, slots=True)
 class DefinedTag:
     """A tag that the register defines."""
@@ -44,7 +47,12 @@ class Names:
     tags: Collection[str]
 
     def nearest(self, written: str) -> str | None:
-        """The tag that differs from the written one by one character, or by two neighbours swapped."""
+        """The tag that differs from the written one by one character, or by two neighbours swapped.
+
+        None for a name so short that every other one is near.
+        """
+        if len(written) < _SHORT:
+            return None
         for short in _shortened(written):
             for tag in self._by_shortened.get(short, ()):
                 if tag != written:

@@ -111,10 +111,11 @@ def _second_description(
     if not differing and not _same_number(plant, loop.tag, first_tag):
         yield draft(
             loop.tag,
-            f"it measures with {transmitter}, which is the transmitter of {first_tag} already",
+            f"it measures with {transmitter}, which is "
+            + ("an instrument of its own" if first_tag == transmitter else f"the transmitter of {first_tag} already"),
             remedy=f"name the transmitter of {loop.tag}; if the two share it on purpose, write a deviation",
             at=measurement.origin.place("transmitter"),
-            related=((first.origin.place("transmitter"), f"{transmitter} in {first_tag}"),),
+            related=((first.origin.place("transmitter"), f"where {transmitter} is described first"),),
         )
 
 

@@ -17,13 +17,13 @@ def tuning_invalid(controlled: ControlledLoop) -> Iterator[Draft]:
 
     Why:
         Nothing can be calculated from it, and a control system either refuses it or takes it for something
-        else (a reset time of nothing is read by one as no reset, by another as the fastest).
+        else (a reset time of 0 is read by one as no reset, by another as the fastest).
     Breaks:
         `gain: -1.8` (the sign belongs in `action`), `gain: 0`, `reset: 0 s`, `rate: -5 s`, `interval: 0 s`,
-        a lag of nothing, a negative dead time.
+        a lag of 0, a negative dead time.
     Holds:
-        Gain, proportional band, reset, repeats, interval, derivative filter and lags are above nothing; rate,
-        measurement filter, setpoint weight and dead time are not below it. Proportional-only control has no
+        Gain, proportional band, reset, repeats, interval, derivative filter and lags are greater than 0; rate,
+        measurement filter, setpoint weight and dead time are not negative. Proportional-only control has no
         `reset`, and no rate is the same as `rate: 0 s`.
     What this check cannot see:
         Whether the loop is stable and well tuned, which other rules judge. Both of `gain` and
@@ -65,7 +65,7 @@ def _times(tag: str, process: Process) -> Iterator[Draft]:
         if lag.value <= 0:
             single = process.origin.place("lags") == process.origin.key()  # written as `lag`
             place = process.origin.place("lag") if single else process.origin.place("lags", index)
-            message = f"a lag of the process is {lag}; it must be above nothing"
+            message = f"a lag of the process is {lag}; it must be greater than 0"
             yield draft(tag, message, remedy="leave it out", at=place)
     yield from _not_negative(tag, process, "dead_time", "the dead time", "leave it out where there is none")
 
@@ -73,7 +73,7 @@ def _times(tag: str, process: Process) -> Iterator[Draft]:
 def _positive(tag: str, part: Part, key: str, what: str, remedy: str) -> Iterator[Draft]:
     value = _number(part, key)
     if value is not None and value <= 0:
-        yield _draft(tag, part, key, f"{what} is {_written(part, key)}; it must be above nothing", remedy)
+        yield _draft(tag, part, key, f"{what} is {_written(part, key)}; it must be greater than 0", remedy)
 
 
 def _not_negative(tag: str, part: Part, key: str, what: str, remedy: str) -> Iterator[Draft]:
