@@ -1,0 +1,491 @@
+"""Failure effects: what a loop does, and where the process goes, when one thing around it fails.
+
+By sign algebra and mode policy alone, without a simulation: a direction is what follows from the signs that
+the register gives, and where one is lacking the effect is `Undecided` with the reason. Only one thing fails at
+a time.
+
+Assumptions
+-----------
+- A transmitter that notices its own fault drives a 4-20 mA signal to 3.6 mA or less, or to 21 mA or more
+  (NAMUR NE 43; a 1-5 V signal in proportion). The control system takes such a reading as bad and the controller
+  does what `on_bad_measurement` says. A digital signal carries the same news in its status. The low end of
+  0-20 mA and a pulse that stays away cannot be told from a true reading of zero, nor a held value from a
+  steady process: these the controller takes as good.
+- A wrong reading within the limits of measurement (3.8 to 20.5 mA by NE 43: drift, a blocked impulse line, a
+  fouled element) is taken as good whatever `on_fault` says. It is supposed to stand at the far end of the
+  range, so that no setpoint from above can satisfy it.
+- A lost analogue output falls to the low end of its signal, and the final element with it. With the power of
+  the control system go its alarms and the interlocks of the process layer; the safety layer stands.
+- Motive power is lost to all final elements of one sort at a time: air to the valves, electric power to drives,
+  motors and heaters.
+
+Sources: NAMUR NE 43 (2003, 2021), limits as in `loopdoc.engineering.scaling`; the algebra is elementary.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import dataclass
+from enum import StrEnum
+from functools import cached_property
+
+from loopdoc.engineering.direction import Undecided
+from loopdoc.engineering.pairing import ControlledLoop, LoopAlarm, Plant, Trip
+from loopdoc.engineering.spreading import (
+    PASSIVE_MODES,
+    Direction,
+    ElementMove,
+    Moves,
+    SetpointMove,
+    command,
+    feedback,
+    final_elements_of,
+    measured_directions,
+    normal_mode,
+    through_function,
+    times,
+    transmitter_of,
+    upward,
+)
+from loopdoc.register.model import FinalElement, Function, Hold, Interlock, Loop, Measurement, known
+
+_ELECTRIC = ("variable-speed drive", "motor", "heater bank")
+_LESS, _MORE = ("closed", "stopped"), ("open", "started")
+
+
+class Failure(StrEnum):
+    """What fails."""
+
+    MEASUREMENT_BAD = "measurement bad"
+    """The transmitter fails in the way that the register states under `on_fault`."""
+    MEASUREMENT_HIGH = "measurement high"
+    """The reading is too high and taken as good."""
+    MEASUREMENT_LOW = "measurement low"
+    """The reading is too low and taken as good."""
+    MEASUREMENT_FROZEN = "measurement frozen"
+    """The reading stands still and is taken as good."""
+    SECONDARY_LOST = "secondary measurement lost"
+    """The secondary's transmitter fails in the way that the register states."""
+    OUTPUT_LOST = "output signal lost"
+    MOTIVE_POWER_LOST = "motive power lost"
+    CONTROL_POWER_LOST = "control system power lost"
+
+
+@dataclass(frozen=True, slots=True)
+class FaultReading:
+    """How the fault of a transmitter shows in the control system."""
+
+    reads: str
+    """reads high, reads low or holds, as the register says."""
+    noticed: bool
+    """Whether the control system can tell it from a good reading."""
+
+
+@dataclass(frozen=True, slots=True)
+class Consequence:
+    """What becomes of the true value that a loop measures."""
+
+    loop: Loop
+    direction: Direction
+    hazardous: bool | None
+    """Whether that is the direction that hurts; None where the direction or the hazard is not known."""
+    alarms: tuple[LoopAlarm, ...]
+    """Alarms on it, by a sensor that has not failed, in the direction in which it goes. Where it is left to
+    itself: in the directions that hurt."""
+    trips: tuple[Trip, ...]
+    """The same for initiators of interlocks."""
+    opposed_by: tuple[str, ...]
+    """Loops that go on working against it: the other candidates of a selector, the other terms of a sum."""
+
+
+@dataclass(frozen=True, slots=True)
+class Unfollowed:
+    """A loop whose output is no longer followed, and what it does meanwhile."""
+
+    loop: ControlledLoop
+    policy: str
+    """track, hold or nothing; empty where the register does not say."""
+
+
+@dataclass(frozen=True, slots=True)
+class FailureEffect:
+    """The effect of one failure, seen from one loop."""
+
+    failure: Failure
+    loop: Loop
+    at: tuple[str, ...]
+    """Tags of the transmitter or final elements that fail; empty for the control system as a whole."""
+    seen: str
+    """What the controller whose measurement fails sees: bad, high, low or frozen; empty where none fails."""
+    mode: str
+    """Mode into which that controller goes; empty where it stays in its own."""
+    forced_output: str
+    """Output into which it goes with that, as the register writes it; empty where none is given."""
+    output: Direction
+    """Which way its output goes."""
+    setpoints: tuple[SetpointMove, ...]
+    elements: tuple[ElementMove, ...]
+    consequences: tuple[Consequence, ...]
+    """The loop's own measurement first, then the others that the failure reaches, innermost first."""
+    unfollowed: tuple[Unfollowed, ...]
+    initiated: tuple[Trip, ...]
+    """Interlocks that the failed reading itself sets off, alone."""
+    opposing: tuple[Interlock, ...]
+    """Interlocks with other sensors that would move a final element back, should their limits be reached."""
+
+
+def fault_reading(measurement: Measurement | Hold | None) -> FaultReading | Undecided:
+    """How a transmitter's own fault shows, by its signal and by what it does on a fault (NAMUR NE 43)."""
+    written = known(measurement)
+    on_fault = known(written.on_fault) if written else None
+    if written is None or on_fault not in ("reads high", "reads low", "holds"):
+        return Undecided("what the transmitter does when it fails is not given")
+    if on_fault == "holds":
+        return FaultReading(on_fault, noticed=False)
+    signal = known(written.signal)
+    if signal is None:
+        return Undecided("the transmitter's signal is not given")
+    beyond = ("4-20 mA", "1-5 V", "digital", "0-20 mA") if on_fault == "reads high" else ("4-20 mA", "1-5 V", "digital")
+    return FaultReading(on_fault, noticed=signal in beyond)
+
+
+class FailureAnalysis:
+    """The failure effects of a plant; what the questions share is resolved once."""
+
+    def __init__(self, plant: Plant) -> None:
+        self.plant = plant
+
+    def effects(self, tag: str) -> tuple[FailureEffect, ...]:
+        """The effect of each failure that concerns a loop, in the order of `Failure`.
+
+        An indicator has effects only where its reading enters a function or an interlock.
+
+        Raises
+        ------
+        KeyError
+            The register has no such loop.
+        """
+        return tuple(_Effects(self, self.plant.register.loops[tag]).all())
+
+    def same_quantity(self, loop: Loop) -> tuple[Loop, ...]:
+        """Other loops that measure the same thing with a transmitter of their own.
+
+        Told by the unit, the variable and the service up to its first comma: `Drum level` and `Drum level,
+        second transmitter`. Where a register does not write it so, nothing is assumed.
+        """
+        own = transmitter_of(loop)
+        return tuple(
+            other
+            for other in self._by_quantity.get(_quantity(loop) or ("", "", ""), ())
+            if other is not loop and transmitter_of(other) not in (None, own)
+        )
+
+    def trips_on(self, transmitter: str | None) -> tuple[Trip, ...]:
+        """The initiators that watch a transmitter."""
+        return self._trips.get(transmitter or "", ())
+
+    def functions_of(self, loop: Loop) -> tuple[tuple[Function, str], ...]:
+        """The functions that a loop's measurement enters, each with the tag by which it does."""
+        tags = (loop.tag, transmitter_of(loop))
+        return tuple((function, tag) for tag in tags if tag for function in self._readers.get(tag, ()))
+
+    @cached_property
+    def _by_quantity(self) -> dict[tuple[str, str, str], list[Loop]]:
+        found: dict[tuple[str, str, str], list[Loop]] = {}
+        for loop in self.plant.register.loops.values():
+            key = _quantity(loop)
+            if key is not None:
+                found.setdefault(key, []).append(loop)
+        return found
+
+    @cached_property
+    def _trips(self) -> dict[str, tuple[Trip, ...]]:
+        found: dict[str, tuple[Trip, ...]] = {}
+        for trip in self.plant.trips:
+            transmitter = known(trip.measurement.transmitter) if trip.measurement else None
+            if transmitter:
+                found[transmitter] = (*found.get(transmitter, ()), trip)
+        return found
+
+    @cached_property
+    def _readers(self) -> dict[str, tuple[Function, ...]]:
+        found: dict[str, tuple[Function, ...]] = {}
+        for function in self.plant.register.functions.values():
+            for tag in function.inputs:
+                found[tag] = (*found.get(tag, ()), function)
+        return found
+
+    @cached_property
+    def interlocks_on(self) -> dict[str, tuple[Interlock, ...]]:
+        """The interlocks that act on each tag."""
+        found: dict[str, tuple[Interlock, ...]] = {}
+        for interlock in self.plant.register.interlocks.values():
+            for tag in interlock.actions:
+                found[tag] = (*found.get(tag, ()), interlock)
+        return found
+
+
+class _Effects:
+    """The effects of one loop."""
+
+    def __init__(self, analysis: FailureAnalysis, loop: Loop) -> None:
+        self._analysis = analysis
+        self._plant = analysis.plant
+        self._loop = loop
+
+    def all(self) -> Iterator[FailureEffect]:
+        loop = self._loop
+        controlled = loop.tag in self._plant.controlled
+        if controlled or self._analysis.functions_of(loop) or self._analysis.trips_on(transmitter_of(loop)):
+            yield self._failed(loop, Failure.MEASUREMENT_BAD)
+            yield self._wrong(loop, 1, Failure.MEASUREMENT_HIGH)
+            yield self._wrong(loop, -1, Failure.MEASUREMENT_LOW)
+            yield self._frozen(loop, Failure.MEASUREMENT_FROZEN)
+        if controlled:
+            secondaries = {route.end.tag: route.end for route in self._plant.controlled[loop.tag].routes}
+            for end in secondaries.values():
+                if isinstance(end, Loop):
+                    yield self._failed(end, Failure.SECONDARY_LOST)
+            yield from self._final_elements()
+
+    # -- the measurement
+
+    def _failed(self, loop: Loop, failure: Failure) -> FailureEffect:
+        """The fault that the transmitter itself makes; one that is not noticed is a wrong or a frozen reading."""
+        fault = fault_reading(loop.measurement)
+        if isinstance(fault, Undecided):
+            return self._still(loop, failure, "bad", fault)
+        if fault.noticed:
+            return self._bad(loop, failure)
+        if fault.reads == "holds":
+            return self._frozen(loop, failure)
+        return self._wrong(loop, 1 if fault.reads == "reads high" else -1, failure)
+
+    def _bad(self, loop: Loop, failure: Failure) -> FailureEffect:
+        controlled = self._plant.controlled.get(loop.tag)
+        moves = Moves()
+        mode, written = "", ""
+        output: Direction = 0
+        if controlled:
+            policy = known(controlled.controller.on_bad_measurement)
+            mode = (known(policy.mode) or "") if policy else ""
+            written = (known(policy.output) or "") if policy else ""
+            output = _forced(controlled, mode, written)
+            command(self._plant, controlled, output, moves)
+        self._unsaid(loop, moves)
+        return self._effect(loop, failure, "bad", output, moves, mode=mode, forced_output=written)
+
+    def _unsaid(self, loop: Loop, moves: Moves) -> None:
+        """A bad reading enters a function: what that makes of it is in no register."""
+        for function, entry in self._analysis.functions_of(loop):
+            secondary = self._plant.controlled.get(known(function.to) or "")
+            if secondary:
+                unsaid = Undecided(f"what {function.tag} does when {entry} is bad is not given")
+                moves.setpoints.append(SetpointMove(secondary, function.tag, unsaid, None, None, ()))
+
+    def _wrong(self, loop: Loop, reading: int, failure: Failure) -> FailureEffect:
+        """A reading at the far end of its range, taken as good."""
+        moves = Moves()
+        controlled = self._plant.controlled.get(loop.tag)
+        output: Direction = 0
+        if controlled and normal_mode(controlled) not in PASSIVE_MODES:
+            output = times(reading, feedback(controlled))
+            command(self._plant, controlled, output, moves)
+        for function, entry in self._analysis.functions_of(loop):
+            through_function(self._plant, function, entry, reading, moves)
+        return self._effect(loop, failure, "high" if reading > 0 else "low", output, moves)
+
+    def _frozen(self, loop: Loop, failure: Failure) -> FailureEffect:
+        controlled = self._plant.controlled.get(loop.tag)
+        if controlled is None or normal_mode(controlled) in PASSIVE_MODES:
+            return self._still(loop, failure, "frozen", 0)
+        return self._still(loop, failure, "frozen", Undecided("the output follows whatever error was left"))
+
+    def _still(self, loop: Loop, failure: Failure, seen: str, output: Direction) -> FailureEffect:
+        """Nothing follows for the final element; the measurement is left to itself."""
+        return self._effect(loop, failure, seen, output, Moves())
+
+    # -- the final elements, the power
+
+    def _final_elements(self) -> Iterator[FailureEffect]:
+        ends = final_elements_of(self._plant, self._loop.tag)
+        unpowered = tuple(ElementMove(element, *_without_signal(element)) for element in ends)
+        for move in unpowered:
+            yield self._elements_lost(Failure.OUTPUT_LOST, (move,), (move.element.tag,))
+        for electric in (False, True):
+            sort = tuple(
+                ElementMove(element, *_without_motive_power(element))
+                for element in ends
+                if (known(element.kind) in _ELECTRIC) == electric
+            )
+            if sort:
+                tags = tuple(move.element.tag for move in sort)
+                yield self._elements_lost(Failure.MOTIVE_POWER_LOST, sort, tags)
+        if ends:
+            yield self._elements_lost(Failure.CONTROL_POWER_LOST, unpowered, ())
+
+    def _elements_lost(self, failure: Failure, moved: tuple[ElementMove, ...], at: tuple[str, ...]) -> FailureEffect:
+        moves = Moves(elements=list(moved))
+        lost = {move.element.tag: move for move in moved}
+        for loop in self._plant.scheme_of(self._loop.tag).loops:
+            controlled = self._plant.controlled.get(loop.tag)
+            for route in controlled.routes if controlled else ():
+                if controlled and route.end.tag in lost and lost[route.end.tag].direction != 0:
+                    moves.ways.append((controlled, route, lost[route.end.tag].direction))
+        return self._effect(self._loop, failure, "", 0, moves, at=at)
+
+    # -- what it does to the process
+
+    def _effect(
+        self,
+        failed: Loop,
+        failure: Failure,
+        seen: str,
+        output: Direction,
+        moves: Moves,
+        *,
+        mode: str = "",
+        forced_output: str = "",
+        at: tuple[str, ...] | None = None,
+    ) -> FailureEffect:
+        """Put an effect together; ``failed`` is the loop whose measurement fails, or our own."""
+        sensor = transmitter_of(failed)
+        sensors = {sensor} if seen and sensor else set()
+        alarms_stand = failure is not Failure.CONTROL_POWER_LOST
+        unfollowed = self._plant.primaries_of(failed.tag) if seen == "bad" else ()
+        reading = {"high": "above", "low": "below"}.get(seen, "")
+        return FailureEffect(
+            failure=failure,
+            loop=self._loop,
+            at=((sensor,) if sensor else ()) if at is None else at,
+            seen=seen,
+            mode=mode,
+            forced_output=forced_output,
+            output=output,
+            setpoints=tuple(moves.setpoints),
+            elements=tuple(moves.elements),
+            consequences=tuple(
+                self._consequence(loop, direction, sensors, moves, alarms_stand)
+                for loop, direction in self._directions(failed, moves)
+            ),
+            unfollowed=tuple(Unfollowed(one, known(one.controller.when_not_followed) or "") for one in unfollowed),
+            initiated=tuple(
+                trip
+                for trip in self._analysis.trips_on(sensor if reading else None)
+                if known(trip.initiator.direction) == reading and _trips_alone(trip)
+            ),
+            opposing=self._opposing(moves, sensors) if seen else (),
+        )
+
+    def _directions(self, failed: Loop, moves: Moves) -> list[tuple[Loop, Direction]]:
+        """Where each measurement goes that the movement reaches; the loop's own first."""
+        found = measured_directions(self._plant, moves)
+        if not found and failed.tag in self._plant.controlled:
+            # Nothing moves: the loop, and what hangs on it, is left to itself.
+            unknown = [move.direction for move in moves.elements if isinstance(move.direction, Undecided)]
+            found = upward(self._plant, {failed.tag: unknown[0] if unknown else 0})
+        loops = self._plant.register.loops
+        ordered = sorted(found, key=lambda tag: tag != self._loop.tag)
+        return [(loops[tag], found[tag]) for tag in ordered]
+
+    def _consequence(
+        self, loop: Loop, direction: Direction, failed: set[str], moves: Moves, alarms_stand: bool
+    ) -> Consequence:
+        hurts = {"high": (1,), "low": (-1,), "both": (1, -1), "none": ()}.get(known(loop.hazard) or "")
+        moved = direction if isinstance(direction, int) and direction else None
+        hazardous: bool | None = None
+        if hurts == ():
+            hazardous = False
+        elif hurts is not None and moved is not None:
+            hazardous = moved in hurts
+        watched = (moved,) if moved is not None else hurts or ()
+        watchers = [
+            one
+            for one in (loop, *self._analysis.same_quantity(loop))
+            if transmitter_of(one) is not None and transmitter_of(one) not in failed
+        ]
+        alarms = tuple(
+            LoopAlarm(watcher, watcher.alarms[kind])
+            for sign in watched
+            for watcher in watchers
+            for kind in (("high", "high_high") if sign > 0 else ("low", "low_low"))
+            if kind in watcher.alarms
+        )
+        sides = {"above" if sign > 0 else "below" for sign in watched}
+        trips = tuple(
+            trip
+            for watcher in watchers
+            for trip in self._analysis.trips_on(transmitter_of(watcher))
+            if known(trip.initiator.direction) in sides
+            and (alarms_stand or known(trip.interlock.layer) == "safety")
+        )
+        opposed_by = moves.opposed.get(loop.tag, ())
+        return Consequence(loop, direction, hazardous, alarms if alarms_stand else (), trips, opposed_by)
+
+    def _opposing(self, moves: Moves, failed: set[str]) -> tuple[Interlock, ...]:
+        """Interlocks without the failed sensor that put a moved final element back where it came from."""
+        found: dict[str, Interlock] = {}
+        for move in moves.elements:
+            if isinstance(move.direction, Undecided) or move.direction == 0:
+                continue
+            back = _LESS if move.direction > 0 else _MORE
+            for interlock in self._analysis.interlocks_on.get(move.element.tag, ()):
+                shares = any(
+                    trip.interlock is interlock for sensor in failed for trip in self._analysis.trips_on(sensor)
+                )
+                if known(interlock.actions[move.element.tag].position) in back and not shares:
+                    found[interlock.tag] = interlock
+        return tuple(found.values())
+
+
+def _quantity(loop: Loop) -> tuple[str, str, str] | None:
+    measurement = known(loop.measurement)
+    variable = known(measurement.variable) if measurement else None
+    unit, service = known(loop.unit), known(loop.service)
+    if variable is None or unit is None or service is None:
+        return None
+    return unit, variable, service.partition(",")[0].strip().casefold()
+
+
+def _forced(controlled: ControlledLoop, mode: str, written: str) -> Direction:
+    """Which way the output goes when the measurement is bad."""
+    if normal_mode(controlled) in PASSIVE_MODES or written == "hold" or (mode and not written):
+        return 0
+    if written in ("0 %", "100 %"):
+        return 1 if written == "100 %" else -1
+    if written:
+        return Undecided(f"whether {written} is more or less than before depends on the load")
+    return Undecided("what the controller does with a bad measurement is not given")
+
+
+def _trips_alone(trip: Trip) -> bool:
+    """Whether this one initiator is enough to trip its interlock."""
+    voting = known(trip.interlock.voting)
+    return voting.startswith("1oo") if voting else len(trip.interlock.initiators) == 1
+
+
+def _without_signal(element: FinalElement) -> tuple[Direction, str]:
+    signal, opens_on = known(element.signal), known(element.opens_on)
+    if signal is None or signal == "digital":
+        told = "its signal is not given" if signal is None else "a digital signal has no low end"
+        return Undecided(f"where {element.tag} goes without its signal does not follow: {told}"), ""
+    if known(element.kind) in _ELECTRIC:
+        # On a contact it stops; whether a speed signal that is lost stops a drive or leaves it at its lowest
+        # speed is set in the drive.
+        return -1, "stopped" if signal == "contact" else ""
+    if opens_on == "rising signal":
+        return -1, "closed"
+    if opens_on == "falling signal":
+        return 1, "open"
+    return Undecided(f"{element.tag} does not say on which signal it opens"), ""
+
+
+def _without_motive_power(element: FinalElement) -> tuple[Direction, str]:
+    fails = known(element.fails)
+    if fails in _LESS:
+        return -1, fails
+    if fails == "open":
+        return 1, fails
+    if fails == "last":
+        return 0, fails
+    return Undecided(f"where {element.tag} fails to is not given"), ""
