@@ -20,7 +20,7 @@ def index_page(basis: Basis, pages: Sequence[Page], formats: Collection[str]) ->
             for form in ("html", "pdf")
             if form in formats
         ]
-        row = {
+        row: dict[str, object] = {
             "number": page.document.number,
             "title": page.document.title,
             "supplementary_title": page.document.supplementary_title,

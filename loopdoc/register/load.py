@@ -242,7 +242,8 @@ class _Reader:
         if "hold" in value and part is not Loop:
             return Hold(str(value["hold"]))
         read: dict[str, Any] = {}
-        for name, inner, many in _field_types(part):
+        hashable: type[Any] = part  # mypy doubts the hash of a class whose instances it knows more of
+        for name, inner, many in _field_types(hashable):
             if name in given:
                 continue
             written = value.get(name)
