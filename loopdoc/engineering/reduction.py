@@ -82,7 +82,8 @@ def _reduce(process: Process, *, order: int, interval_s: float) -> ReducedModel:
     # With leads a fast and a slow closed loop may both agree with their own model. The fast one is right
     # where every lead acts long before it; at the five closed-loop times of the rule it is too hopeful.
     tight = _reduce_from(process, order, fixed, fixed)
-    if all(lead >= 10.0 * tight.dead_time_s for lead in process.leads_s if lead > 0.0):
+    leads = [lead for lead in process.leads_s if lead > 0.0]
+    if not leads or min(leads) >= 10.0 * tight.dead_time_s > 0.0:
         return tight
     return _reduce_from(process, order, fixed, fixed + math.fsum(process.lags_s))
 
