@@ -19,6 +19,8 @@ from loopdoc.rules.ranges import (
     secondary_range_short,
     secondary_range_wide,
     setpoint_limit_outside_range,
+    split_range_gap,
+    split_range_overlap,
 )
 from loopdoc.rules.rule import Rule
 from loopdoc.rules.tags import reference_unknown, tag_duplicate, tag_grammar
@@ -41,6 +43,8 @@ RULES: tuple[Rule, ...] = (
     operating_outside_range,
     setpoint_limit_outside_range,
     output_limit_outside_setpoint,
+    split_range_gap,
+    split_range_overlap,
     # action and fail-safe
     action_wrong,
     action_undecided,

@@ -9,7 +9,7 @@ from loopdoc.rules.finding import Level
 from loopdoc.rules.rule import Draft, draft, rule
 
 
-@rule(level=Level.WARNING, source="common practice: holds are listed and cleared before construction")
+@rule(level=Level.NOTE, source="common practice: holds are listed and cleared before construction")
 def hold_open(held: HeldValue) -> Iterator[Draft]:
     """A value is on hold.
 

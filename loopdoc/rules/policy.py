@@ -23,6 +23,18 @@ class Limits:
         meaning="above this ratio the secondary's range is called too wide for its primary",
         source="common practice",
     )
+    split_range_gap: float = _limit(
+        2.0,
+        unit="% of the output",
+        meaning="above this width a band of a split range in which nothing moves is told",
+        source="common practice",
+    )
+    split_range_overlap: float = _limit(
+        2.0,
+        unit="% of the output",
+        meaning="above this width a band of a split range in which two elements move is told",
+        source="common practice",
+    )
 
 
 def limits_from(policy: dict[str, float]) -> Limits:

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
+from itertools import pairwise
 
 from loopdoc.engineering.demand import Demand, demand
 from loopdoc.engineering.direction import Undecided
@@ -370,3 +371,67 @@ def _excess(asked: Range, band: Range) -> str:
     if above(asked.high, band.high):
         parts.append(str(rounded(Range(max(asked.low, band.high), asked.high, band.unit))))
     return " and ".join(parts)
+
+
+@rule(level=Level.WARNING, source="common practice; see policy split_range_gap")
+def split_range_gap(function: Function, limits: Limits) -> Iterator[Draft]:
+    """A band of a split range's output moves no final element.
+
+    Why:
+        Inside the band the controller integrates and nothing happens: the loop has a dead zone, and the
+        measurement drifts across it before the next valve answers.
+    Breaks:
+        `outputs: {PV-3001A: 60 to 100 %, PV-3001B: 40 to 0 %}`: between 40 and 60 % both valves stand still.
+    Holds:
+        The branches meet (`50 to 100 %` and `50 to 0 %`), or leave no more than the policy allows.
+    What this check cannot see:
+        A gap that is wanted, so that two opposed valves are never open together: accept it by a deviation.
+    """
+    only_if(known(function.kind) == "split range" and len(function.outputs) > 1)
+    for (lower, _, top), (upper, bottom, _) in pairwise(_branches(function)):
+        if above(bottom - top, limits.split_range_gap):
+            yield draft(
+                function.tag,
+                f"between {top:g} and {bottom:g} % of the output neither {lower} nor {upper} moves",
+                remedy=f"let {upper} begin where {lower} ends, or accept the gap by a deviation with its reason",
+                at=function.origin.place("outputs", upper),
+                related=((function.origin.place("outputs", lower), f"where {lower} ends"),),
+            )
+
+
+@rule(level=Level.WARNING, source="common practice; see policy split_range_overlap")
+def split_range_overlap(function: Function, limits: Limits) -> Iterator[Draft]:
+    """Two final elements of a split range move together over a band of the output.
+
+    Why:
+        Where the branches overlap both elements move: the gain of the loop is the sum of the two there, and two
+        opposed valves work against each other.
+    Breaks:
+        `outputs: {PV-3001A: 40 to 100 %, PV-3001B: 60 to 0 %}`: between 40 and 60 % both move.
+    Holds:
+        The branches meet, or overlap by no more than the policy allows.
+    What this check cannot see:
+        An overlap that is wanted, as to keep a small valve from shutting before the large one opens: accept it by
+        a deviation.
+    """
+    only_if(known(function.kind) == "split range" and len(function.outputs) > 1)
+    for (lower, _, top), (upper, bottom, _) in pairwise(_branches(function)):
+        if above(top - bottom, limits.split_range_overlap):
+            yield draft(
+                function.tag,
+                f"between {bottom:g} and {top:g} % of the output {lower} and {upper} both move",
+                remedy=f"let {upper} begin where {lower} ends, or accept the overlap by a deviation with its reason",
+                at=function.origin.place("outputs", upper),
+                related=((function.origin.place("outputs", lower), f"where {lower} ends"),),
+            )
+
+
+def _branches(function: Function) -> list[tuple[str, float, float]]:
+    """The branches of a split range in order: element, and the output in percent over which it moves."""
+    found = []
+    for element, branch in function.outputs.items():
+        if branch.unit.kind != "fraction":
+            not_checked(f"the branch of {element} is not in percent of the output")
+        span = branch.to("%")
+        found.append((element, min(span.low, span.high), max(span.low, span.high)))
+    return sorted(found, key=lambda one: one[1:])
