@@ -11,6 +11,8 @@ from loopdoc.engineering.process import FloatArray
 
 # A response has settled once it stays within this share of the step that caused it.
 SETTLING_BAND = 0.02
+# To have settled it must be seen to stay for the rest of the time after this share of it.
+SEEN_TO_STAY = 0.95
 # A reversal of the final element counts once it has moved back by this much [%].
 REVERSAL_PCT = 0.1
 
@@ -28,7 +30,7 @@ class ResponseMetrics:
     settling_s: float
     """Time after which the measurement stays within 2 % of the causing step (setpoint step, or size of
     the disturbances; of the peak for a step of the final element) of the setpoint, or of its last value
-    where the outermost measurement has no integral action [s]; infinite if not within the horizon."""
+    where the outermost measurement has no integral action [s]; infinite if not seen to settle."""
     overshoot_pct: float
     """After a setpoint step, how far beyond it in percent of the step; else how far on the other side of
     the setpoint in percent of the peak."""
@@ -116,8 +118,10 @@ def read_metrics(
     cause = np.where(cause > 0.0, cause, np.abs(peak))
     outside = np.abs(measurement - final) > SETTLING_BAND * cause
     last = len(measurement) - 1 - np.argmax(outside[::-1], axis=0)
-    settling = np.where(outside.any(axis=0), (last + 1) * step_s, 0.0)
-    settling = np.where(outside[-1], math.inf, settling)
+    last = np.where(outside.any(axis=0), last, -1)
+    settling = (last + 1) * step_s
+    # A response that crosses its band on the last few points has not been seen to stay.
+    settling = np.where(last >= SEEN_TO_STAY * (len(measurement) - 1), math.inf, settling)
 
     beyond = np.maximum(0.0, (-deviation * np.sign(setpoint)).max(axis=0))
     opposite = np.maximum(0.0, (-measurement * np.sign(peak)).max(axis=0))

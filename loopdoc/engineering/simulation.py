@@ -162,11 +162,13 @@ def _at_rest(traces: Traces, columns: IntArray, window: int) -> NDArray[np.bool_
     return rest
 
 
-def _run(columns: Sequence[_Column], *, keep_signals: bool) -> tuple[Engine, IntArray]:
-    """Run columns of one pattern until each has come to rest; return the steps at which they had."""
+def _run(columns: Sequence[_Column], *, keep_signals: bool, until_rest: bool) -> tuple[Engine, IntArray]:
+    """Run columns of one pattern to the horizon, or until each is at rest; return where each ended."""
     horizons = np.array([column.clock.steps for column in columns])
     steps = int(horizons.max())
     engine = _engine(columns, steps, keep_signals=keep_signals)
+    if not until_rest:
+        return engine, horizons
     stops = horizons.copy()
     going = np.ones(len(columns), dtype=bool)
     checks: dict[int, IntArray] = {}
@@ -306,13 +308,13 @@ def simulate(
     scenarios : sequence of Scenario
         Each is applied to each structure.
     clock : Clock, optional
-        Time step and horizon; without it they are chosen from the dynamics.
+        Time step and horizon, kept to the end. Without it both are chosen from the dynamics, and a run
+        ends at an eighth of the horizon once all signals have come to rest.
 
     Returns
     -------
     tuple of tuples of Response
-        One tuple per structure, one `Response` per scenario. A response ends early, at an eighth of the
-        horizon, once all signals have come to rest.
+        One tuple per structure, one `Response` per scenario, all of the same length.
 
     Raises
     ------
@@ -327,7 +329,7 @@ def simulate(
     columns = _columns(0, structures, scenarios, chosen)
     runs = []
     for batch in _batches(columns, 4 * max(len(structure.processes) for structure in structures)):
-        engine, stops = _run(batch, keep_signals=True)
+        engine, stops = _run(batch, keep_signals=True, until_rest=clock is None)
         runs.append((batch, engine, stops))
     # Curves that are drawn together end together; the figures are read where each had come to rest.
     end = max(int(stops.max()) for _, _, stops in runs)
@@ -369,7 +371,7 @@ def simulate_metrics(
         (len(structure.processes) for structures, _ in groups for structure in structures), default=1
     )
     for batch in _batches(columns, 1 + widest):
-        engine, stops = _run(batch, keep_signals=False)
+        engine, stops = _run(batch, keep_signals=False, until_rest=True)
         metrics = _all_metrics(batch, engine.run_to(int(stops.max())), stops)
         found.update(zip((column.place for column in batch), metrics, strict=True))
     return tuple(
