@@ -7,12 +7,12 @@ that could be built, so that one bad value does not hide the rest of the plant f
 from __future__ import annotations
 
 import re
-from collections.abc import Iterator, Mapping
+from collections.abc import Hashable, Iterator, Mapping
 from dataclasses import dataclass, fields
 from functools import cache
 from pathlib import Path
 from types import UnionType
-from typing import Any, TypeVar, Union, get_args, get_origin, get_type_hints
+from typing import Any, TypeVar, Union, cast, get_args, get_origin, get_type_hints
 
 from loopdoc.register.model import (
     Alarm,
@@ -242,8 +242,8 @@ class _Reader:
         if "hold" in value and part is not Loop:
             return Hold(str(value["hold"]))
         read: dict[str, Any] = {}
-        hashable: type[Any] = part  # mypy doubts the hash of a class whose instances it knows more of
-        for name, inner, many in _field_types(hashable):
+        # mypy takes a class for unhashable where it cannot tell whether its instances are.
+        for name, inner, many in _field_types(cast("Hashable", part)):
             if name in given:
                 continue
             written = value.get(name)
