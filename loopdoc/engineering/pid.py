@@ -287,6 +287,25 @@ def scan_coefficients(controllers: Sequence[Controller], interval_s: FloatArray)
     )
 
 
+def repeated_coefficients(coefficients: ScanCoefficients, columns: int) -> ScanCoefficients:
+    """Return the coefficients of the first controller in so many columns."""
+
+    def repeat(values: FloatArray) -> FloatArray:
+        return np.full(columns, values[0])
+
+    return replace(
+        coefficients,
+        gain=repeat(coefficients.gain),
+        setpoint_gain=repeat(coefficients.setpoint_gain),
+        integral_gain=repeat(coefficients.integral_gain),
+        tracking=repeat(coefficients.tracking),
+        derivative_decay=repeat(coefficients.derivative_decay),
+        derivative_gain=repeat(coefficients.derivative_gain),
+        derivative_setpoint_weight=repeat(coefficients.derivative_setpoint_weight),
+        filter_gain=repeat(coefficients.filter_gain),
+    )
+
+
 @dataclass(slots=True, eq=False)
 class ScanState:
     """Memory of n controllers between scans; every array is (n,) [%]."""

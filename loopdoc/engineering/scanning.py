@@ -6,13 +6,23 @@ output of a controller is held until its next scan; the processes are solved exa
 (the final element) or for one that is straight between steps (a secondary measurement).
 """
 
+import copy
+import math
 from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
-from loopdoc.engineering.pid import Controller, ScanCoefficients, ScanState, scan, scan_coefficients, track
+from loopdoc.engineering.pid import (
+    Controller,
+    ScanCoefficients,
+    ScanState,
+    repeated_coefficients,
+    scan,
+    scan_coefficients,
+    track,
+)
 from loopdoc.engineering.process import FloatArray, Process, state_space, transition
 
 IntArray = NDArray[np.intp]
@@ -52,6 +62,18 @@ class ControllerArrays:
     reverse: NDArray[np.bool_]
     """True where the output falls as the measurement rises."""
 
+    def unlimited(self, columns: int) -> "ControllerArrays":
+        """The controller of the first column, without its limits, in so many columns."""
+        return ControllerArrays(
+            coefficients=repeated_coefficients(self.coefficients, columns),
+            every=self.every,
+            output_low_pct=np.full(columns, -math.inf),
+            output_high_pct=np.full(columns, math.inf),
+            setpoint_low_pct=np.full(columns, -math.inf),
+            setpoint_high_pct=np.full(columns, math.inf),
+            reverse=np.full(columns, self.reverse[0]),
+        )
+
 
 def controller_arrays(
     controllers: Sequence[Controller],
@@ -73,7 +95,7 @@ def controller_arrays(
     )
 
 
-class _ProcessArrays:
+class ProcessArrays:
     """One process level of n columns: its state, and how the delayed input moves it within a step."""
 
     def __init__(self, processes: Sequence[Process], step_s: FloatArray, *, held_input: bool) -> None:
@@ -120,6 +142,24 @@ class _ProcessArrays:
         self._same = int(whole[0]) if (whole == whole[0]).all() else None
         self._columns = np.arange(len(processes))
 
+    def repeated(self, columns: int) -> "ProcessArrays":
+        """The process of the first column, at rest, in so many columns."""
+
+        def repeat(values: FloatArray) -> FloatArray:
+            return np.full(columns, values[0])
+
+        other = copy.copy(self)
+        other.whole = np.full(columns, self.whole[0])
+        other.state = [np.zeros(columns) for _ in self.state]
+        other._advance = [[repeat(factor) for factor in row] for row in self._advance]
+        other._taps = [
+            (tap, [repeat(share) for share in state], None if through is None else repeat(through))
+            for tap, state, through in self._taps
+        ]
+        other._weights = [repeat(weight) for weight in self._weights]
+        other._same = int(self.whole[0])
+        return other
+
     def _delayed(self, history: FloatArray, row: int, tap: int) -> FloatArray:
         if self._same is not None:
             view: FloatArray = history[row - self._same - tap]
@@ -164,7 +204,7 @@ class _ProcessArrays:
         return output
 
 
-class _FinalElement:
+class MovingElement:
     """Stroke rate and backlash between the signal and the travel of the final element."""
 
     def __init__(self, arrays: FinalElementArrays, innermost: ControllerArrays | None) -> None:
@@ -175,7 +215,7 @@ class _FinalElement:
             or np.any(innermost.output_high_pct > arrays.high_pct)
         )
         self._rated = bool(np.isfinite(arrays.travel_per_step_pct).any())
-        self._loose = bool((arrays.half_backlash_pct > 0.0).any())
+        self.loose = bool((arrays.half_backlash_pct > 0.0).any())
         self._drive = np.zeros_like(arrays.step_pct)
         self._travel = np.zeros_like(arrays.step_pct)
 
@@ -193,11 +233,26 @@ class _FinalElement:
             mean = self._drive + moved - moved * np.abs(moved) / (2.0 * most)
             target = self._drive + moved
         self._drive = target
-        if self._loose:
+        if self.loose:
             half = arrays.half_backlash_pct
             mean = np.minimum(np.maximum(self._travel, mean - half), mean + half)
             self._travel = np.minimum(np.maximum(self._travel, target - half), target + half)
         return mean
+
+    def follows(self, signals: FloatArray) -> bool:
+        """Whether the element, tight, would do what the (k, n) signals of k steps ask, as good as at once."""
+        arrays = self._arrays
+        if self._ends and bool(((signals < arrays.low_pct) | (signals > arrays.high_pct)).any()):
+            return False
+        if not self._rated:
+            return True
+        # Moved by a fiftieth of what it could, it is late by a hundredth of a step.
+        steps = np.abs(np.diff(signals, axis=0, prepend=self._drive[None]))
+        return bool((steps <= 0.02 * arrays.travel_per_step_pct).all())
+
+    def rest_at(self, signal: FloatArray) -> None:
+        """Take over where the element has followed its signal."""
+        self._drive = signal
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -220,12 +275,11 @@ class Engine:
     def __init__(
         self,
         *,
-        processes: Sequence[Sequence[Process]],
+        plants: Sequence[ProcessArrays],
         controllers: Sequence[ControllerArrays | None],
         final_element: FinalElementArrays,
         setpoint_step_pct: FloatArray,
         disturbances_pct: Sequence[FloatArray | None],
-        step_s: FloatArray,
         steps: int,
         keep_signals: bool,
     ) -> None:
@@ -233,88 +287,81 @@ class Engine:
 
         ``disturbances_pct`` holds per level the (steps + 1, n) disturbance at its measurement [%].
         """
-        n = len(step_s)
-        self._plants = [
-            _ProcessArrays(level, step_s, held_input=position == 0)
-            for position, level in enumerate(processes)
-        ]
-        controlled = [
-            (position, controller)
-            for position, controller in enumerate(controllers)
-            if controller is not None
-        ]
-        self._loops = _Loops(controlled, n) if controlled else None
-        self._valve = _FinalElement(final_element, controlled[0][1] if controlled else None)
+        n = len(setpoint_step_pct)
+        controlled = [(level, one) for level, one in enumerate(controllers) if one is not None]
+        self.plants = plants
+        self.loops = Loops(controlled, n)
+        self.element = MovingElement(final_element, controlled[0][1] if controlled else None)
+        self.disturbances = disturbances_pct
+        self.setpoint = setpoint_step_pct
         self._manual_pct = final_element.step_pct
-        self._disturbances = disturbances_pct
-        self._setpoint = setpoint_step_pct
         if controlled:
             outermost = controlled[-1][1]
-            self._setpoint = np.minimum(
+            self.setpoint = np.minimum(
                 np.maximum(setpoint_step_pct, outermost.setpoint_low_pct), outermost.setpoint_high_pct
             )
+        self.steps = steps
         # Rows before the start hold the rest that the dead times still look back at.
-        self._pad = pad = max(int(plant.whole.max()) for plant in self._plants) + 2
-        self._travel = np.zeros((pad + steps + 1, n))
-        self._measured = [np.zeros((pad + steps + 1, n)) for _ in self._plants]
-        self._kept = [
-            (np.zeros((steps + 1, n)), np.zeros((steps + 1, n))) for _ in (controlled if keep_signals else ())
-        ]
-        for position, plant in enumerate(self._plants):
-            if position:
-                self._measured[position][pad] = plant.feedthrough(self._measured[position - 1], pad)
-            disturbance = disturbances_pct[position]
+        self.pad = pad = max(int(plant.whole.max()) for plant in plants) + 2
+        self.travel = np.zeros((pad + steps + 1, n))
+        self.measured = [np.zeros((pad + steps + 1, n)) for _ in plants]
+        kept = controlled if keep_signals else []
+        self.kept_setpoint = [np.zeros((steps + 1, n)) for _ in kept]
+        self.kept_output = [np.zeros((steps + 1, n)) for _ in kept]
+        for level, plant in enumerate(plants):
+            if level:
+                self.measured[level][pad] = plant.feedthrough(self.measured[level - 1], pad)
+            disturbance = disturbances_pct[level]
             if disturbance is not None:
-                self._measured[position][pad] += disturbance[0]
-        self._step = 0
+                self.measured[level][pad] += disturbance[0]
+        self.step = 0
         self._act()
 
     def _act(self) -> None:
         """Execute the controllers that are due and move the final element."""
-        row = self._pad + self._step
+        row = self.pad + self.step
         signal = self._manual_pct
-        if self._loops is not None:
-            measured = [history[row] for history in self._measured]
-            signal = self._loops.execute(self._step, self._setpoint, measured)
-            for loop, (setpoint, output) in enumerate(self._kept):
-                setpoint[self._step], output[self._step] = (
-                    self._loops.setpoint[loop],
-                    self._loops.output[loop],
-                )
-        self._travel[row] = self._valve.move(signal)
+        if self.loops.controlled:
+            signal = self.loops.execute(self.step, self.setpoint, [history[row] for history in self.measured])
+            for kept, value in zip(self.kept_setpoint, self.loops.setpoint, strict=False):
+                kept[self.step] = value
+            for kept, value in zip(self.kept_output, self.loops.output, strict=False):
+                kept[self.step] = value
+        self.travel[row] = self.element.move(signal)
 
-    def run_to(self, step: int) -> Traces:
-        """Advance to a step and return the signals from the start to there."""
-        while self._step < step:
-            self._step += 1
-            row = self._pad + self._step
-            source = self._travel
-            for plant, disturbance, history in zip(
-                self._plants, self._disturbances, self._measured, strict=True
-            ):
-                value = plant.advance(source, row)
-                history[row] = value if disturbance is None else value + disturbance[self._step]
-                source = history
-            self._act()
-        end = self._pad + step + 1
+    def advance(self) -> None:
+        """Advance by one step."""
+        self.step += 1
+        row = self.pad + self.step
+        source = self.travel
+        for plant, disturbance, history in zip(self.plants, self.disturbances, self.measured, strict=True):
+            value = plant.advance(source, row)
+            history[row] = value if disturbance is None else value + disturbance[self.step]
+            source = history
+        self._act()
+
+    def traces(self, step: int) -> Traces:
+        """Return the signals from the start to a step that has been reached."""
+        end = self.pad + step + 1
         return Traces(
-            measurement_pct=tuple(history[self._pad : end] for history in self._measured),
-            travel_pct=self._travel[self._pad : end],
-            setpoint_pct=tuple(setpoint[: step + 1] for setpoint, _ in self._kept),
-            output_pct=tuple(output[: step + 1] for _, output in self._kept),
+            measurement_pct=tuple(history[self.pad : end] for history in self.measured),
+            travel_pct=self.travel[self.pad : end],
+            setpoint_pct=tuple(kept[: step + 1] for kept in self.kept_setpoint),
+            output_pct=tuple(kept[: step + 1] for kept in self.kept_output),
         )
 
 
-class _Loops:
+class Loops:
     """The controllers of n columns at work, outermost last."""
 
     def __init__(self, controlled: Sequence[tuple[int, ControllerArrays]], columns: int) -> None:
         zero = np.zeros(columns)
-        self._controlled = controlled
-        self._memory = [ScanState(zero, zero, zero, zero) for _ in controlled]
+        self.controlled = controlled
+        self.memory = [ScanState(zero, zero, zero, zero) for _ in controlled]
         self.setpoint = [zero for _ in controlled]
         self.output = [zero for _ in controlled]
-        self._computed = [zero for _ in controlled]
+        self.computed = [zero for _ in controlled]
+        self.limited = [False for _ in controlled]
         # A primary whose output limits lie inside its secondary's setpoint limits needs no second limit.
         self._limit_setpoint = [
             position + 1 < len(controlled)
@@ -327,24 +374,24 @@ class _Loops:
 
     def execute(self, k: int, setpoint: FloatArray, measured: Sequence[FloatArray]) -> FloatArray:
         """Run the controllers that are due at step ``k``, outermost first, and return the valve signal [%]."""
-        limited = False
         due = []
-        for loop in reversed(range(len(self._controlled))):
-            level, arrays = self._controlled[loop]
+        for loop in reversed(range(len(self.controlled))):
+            level, arrays = self.controlled[loop]
             if k % arrays.every == 0:
+                limited = False
                 if self._limit_setpoint[loop]:
                     asked = setpoint
                     setpoint = np.minimum(
                         np.maximum(asked, arrays.setpoint_low_pct), arrays.setpoint_high_pct
                     )
-                    limited = limited or int(np.count_nonzero(setpoint != asked)) > 0
-                computed = scan(arrays.coefficients, self._memory[loop], setpoint, measured[level])
+                    limited = int(np.count_nonzero(setpoint != asked)) > 0
+                computed = scan(arrays.coefficients, self.memory[loop], setpoint, measured[level])
                 output = np.minimum(np.maximum(computed, arrays.output_low_pct), arrays.output_high_pct)
-                limited = limited or int(np.count_nonzero(output != computed)) > 0
-                self.setpoint[loop], self._computed[loop], self.output[loop] = setpoint, computed, output
+                self.limited[loop] = limited or int(np.count_nonzero(output != computed)) > 0
+                self.setpoint[loop], self.computed[loop], self.output[loop] = setpoint, computed, output
                 due.append(loop)
             setpoint = self.output[loop]
-        if limited:
+        if any(self.limited):
             self._track(due, measured)
         return setpoint
 
@@ -355,20 +402,20 @@ class _Loops:
         further, that measurement, so that the primary's integral goes no further either.
         """
         no_higher = no_lower = np.zeros(len(measured[0]), dtype=bool)
-        low, high = self._controlled[0][1].output_low_pct, self._controlled[0][1].output_high_pct
-        for loop, (_, arrays) in enumerate(self._controlled):
-            computed = self._computed[loop]
+        low, high = self.controlled[0][1].output_low_pct, self.controlled[0][1].output_high_pct
+        for loop, (_, arrays) in enumerate(self.controlled):
+            computed = self.computed[loop]
             actual = np.minimum(np.maximum(computed, low), high)
             if loop:
-                below = measured[self._controlled[loop - 1][0]]
+                below = measured[self.controlled[loop - 1][0]]
                 actual = np.where(no_higher, np.minimum(actual, below), actual)
                 actual = np.where(no_lower, np.maximum(actual, below), actual)
             if loop in due:
-                track(arrays.coefficients, self._memory[loop], computed, actual)
+                track(arrays.coefficients, self.memory[loop], computed, actual)
             at_high, at_low = (computed > high) | no_higher, (computed < low) | no_lower
             no_higher = np.where(arrays.reverse, at_high, at_low)
             no_lower = np.where(arrays.reverse, at_low, at_high)
-            if loop + 1 < len(self._controlled):
-                above = self._controlled[loop + 1][1]
+            if loop + 1 < len(self.controlled):
+                above = self.controlled[loop + 1][1]
                 low = np.maximum(above.output_low_pct, arrays.setpoint_low_pct)
                 high = np.minimum(above.output_high_pct, arrays.setpoint_high_pct)

@@ -12,6 +12,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from loopdoc.engineering.clock import HORIZON_PARTS, Clock, choose_clocks
+from loopdoc.engineering.linear_blocks import Run
 from loopdoc.engineering.process import FloatArray, Process, state_space, transition
 from loopdoc.engineering.response_metrics import ResponseMetrics, read_metrics
 from loopdoc.engineering.scanning import (
@@ -19,6 +20,7 @@ from loopdoc.engineering.scanning import (
     Engine,
     FinalElementArrays,
     IntArray,
+    ProcessArrays,
     Traces,
     controller_arrays,
 )
@@ -133,8 +135,11 @@ def _engine(columns: Sequence[_Column], steps: int, *, keep_signals: bool) -> En
     with np.errstate(divide="ignore"):
         travel_per_step = 100.0 * step_s / stroke_s
     return Engine(
-        processes=[
-            [structure.processes[level] for structure in structures] for level in range(len(controllers))
+        plants=[
+            ProcessArrays(
+                [structure.processes[level] for structure in structures], step_s, held_input=level == 0
+            )
+            for level in range(len(controllers))
         ],
         controllers=controllers,
         final_element=FinalElementArrays(
@@ -146,7 +151,6 @@ def _engine(columns: Sequence[_Column], steps: int, *, keep_signals: bool) -> En
         ),
         setpoint_step_pct=np.array([column.scenario.setpoint_step_pct for column in columns]),
         disturbances_pct=[_disturbances(columns, level, step_s, steps) for level in range(len(controllers))],
-        step_s=step_s,
         steps=steps,
         keep_signals=keep_signals,
     )
@@ -162,13 +166,17 @@ def _at_rest(traces: Traces, columns: IntArray, window: int) -> NDArray[np.bool_
     return rest
 
 
-def _run(columns: Sequence[_Column], *, keep_signals: bool, until_rest: bool) -> tuple[Engine, IntArray]:
+def _run(columns: Sequence[_Column], *, keep_signals: bool, until_rest: bool) -> tuple[Run, IntArray]:
     """Run columns of one pattern to the horizon, or until each is at rest; return where each ended."""
     horizons = np.array([column.clock.steps for column in columns])
     steps = int(horizons.max())
-    engine = _engine(columns, steps, keep_signals=keep_signals)
+    first = columns[0]
+    run = Run(
+        _engine(columns, steps, keep_signals=keep_signals),
+        one_structure=all((c.structure, c.clock) == (first.structure, first.clock) for c in columns),
+    )
     if not until_rest:
-        return engine, horizons
+        return run, horizons
     stops = horizons.copy()
     going = np.ones(len(columns), dtype=bool)
     checks: dict[int, IntArray] = {}
@@ -179,7 +187,7 @@ def _run(columns: Sequence[_Column], *, keep_signals: bool, until_rest: bool) ->
                 checks.get(at, np.zeros(0, dtype=np.intp)), np.nonzero(horizons == horizon)[0]
             )
     for at in sorted(checks):
-        traces = engine.run_to(at)
+        traces = run.to(at)
         for window in np.unique(horizons[checks[at]] // HORIZON_PARTS):
             members = checks[at][(horizons[checks[at]] // HORIZON_PARTS == window) & going[checks[at]]]
             done = _at_rest(traces, members, int(window)) | (horizons[members] == at)
@@ -187,7 +195,7 @@ def _run(columns: Sequence[_Column], *, keep_signals: bool, until_rest: bool) ->
             going[members[done]] = False
         if not going.any():
             break
-    return engine, stops
+    return run, stops
 
 
 def _accepted_step_pct(column: _Column) -> float:
@@ -329,12 +337,12 @@ def simulate(
     columns = _columns(0, structures, scenarios, chosen)
     runs = []
     for batch in _batches(columns, 4 * max(len(structure.processes) for structure in structures)):
-        engine, stops = _run(batch, keep_signals=True, until_rest=clock is None)
-        runs.append((batch, engine, stops))
+        run, stops = _run(batch, keep_signals=True, until_rest=clock is None)
+        runs.append((batch, run, stops))
     # Curves that are drawn together end together; the figures are read where each had come to rest.
     end = max(int(stops.max()) for _, _, stops in runs)
-    for batch, engine, stops in runs:
-        traces = engine.run_to(end)
+    for batch, run, stops in runs:
+        traces = run.to(end)
         for position, metrics in enumerate(_all_metrics(batch, traces, stops)):
             found[batch[position].place] = _response(batch[position], traces, position, metrics)
     return tuple(tuple(found[0, i, j] for j in range(len(scenarios))) for i in range(len(structures)))
@@ -371,8 +379,8 @@ def simulate_metrics(
         (len(structure.processes) for structures, _ in groups for structure in structures), default=1
     )
     for batch in _batches(columns, 1 + widest):
-        engine, stops = _run(batch, keep_signals=False, until_rest=True)
-        metrics = _all_metrics(batch, engine.run_to(int(stops.max())), stops)
+        run, stops = _run(batch, keep_signals=False, until_rest=True)
+        metrics = _all_metrics(batch, run.to(int(stops.max())), stops)
         found.update(zip((column.place for column in batch), metrics, strict=True))
     return tuple(
         tuple(tuple(found[group, i, j] for j in range(len(scenarios))) for i in range(len(structures)))
