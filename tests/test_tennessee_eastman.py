@@ -15,9 +15,12 @@ from typing import NamedTuple, TypeVar
 
 import pytest
 
+from loopdoc.engineering.pairing import Plant
 from loopdoc.register.load import Loaded, load
 from loopdoc.register.model import Controller, Hold, Loop, Register
 from loopdoc.register.quantity import Quantity, Range
+from loopdoc.rules.check import check
+from loopdoc.rules.finding import CheckResult
 
 T = TypeVar("T")
 
@@ -174,9 +177,7 @@ def test_output_goes_where_the_program_writes(register: Register, published: Pub
 
 
 @each_controller
-def test_cascade_exactly_where_a_controller_writes_the_setpoint(
-    register: Register, published: Published
-) -> None:
+def test_cascade_exactly_where_a_controller_writes_the_setpoint(register: Register, published: Published) -> None:
     commanded = f"SETPT({published.number})" in {other.output for other in CONTROLLERS}
     assert _normal_mode(register.loops[published.tag]) == ("cascade" if commanded else "automatic")
 
@@ -346,3 +347,32 @@ def test_nothing_that_the_papers_leave_open_is_filled_in(register: Register) -> 
         if loop.controller is not None:
             assert isinstance(_given(loop.measurement).on_fault, Hold)
             assert isinstance(_controller(loop).on_bad_measurement, Hold)
+
+
+def _told_findings() -> dict[str, set[str]]:
+    """Rule and tags of the table under "What the check finds" in the README."""
+    readme = (FOLDER / "README.md").read_text(encoding="utf-8")
+    told: dict[str, set[str]] = {}
+    for rule, at in re.findall(r"^\| `([a-z-]+)` \| ([^|]+) \|", readme, re.MULTILINE):
+        if at != "everywhere":
+            told.setdefault(rule, set()).update(at.split(", "))
+    return told
+
+
+@pytest.fixture(scope="module")
+def checked(register: Register) -> CheckResult:
+    return check(Plant(register), ())
+
+
+def test_the_readme_tells_what_the_check_finds(checked: CheckResult) -> None:
+    told = _told_findings()
+    assert told
+    for rule, tags in told.items():
+        assert {finding.tag for finding in checked.findings if finding.rule == rule} == tags
+
+
+def test_published_actions_agree_with_the_balances(checked: CheckResult) -> None:
+    # `effect` follows from balances, `action` from the sign of the published gain. The effect is held for
+    # LIC-2008; CONTRL22, which is never called, comes on top.
+    assert checked.coverage["action-wrong"].checked == len(CONTROLLERS) - 1 + 1
+    assert not [finding for finding in checked.findings if finding.rule == "action-wrong"]
