@@ -195,6 +195,7 @@ def _issue(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int
 
 
 def _response(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
+    from loopdoc.engineering.comparison import compare
     from loopdoc.exchange.responses import response_json, response_text
 
     basis = _basis(arguments.register, stderr)
@@ -207,15 +208,22 @@ def _response(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> 
         hint = f"did you mean {near[0]}?" if near else "name a loop with a controller"
         stderr.write(f"loopdoc: the register has no controller {arguments.tag}; {hint}\n")
         return EXIT_UNREADABLE
-    analysis = basis.dynamics.loop(arguments.tag)
+    loop = basis.dynamics.loop(arguments.tag)
+    comparisons = [compare(chain) for chain in loop.chains]
     if arguments.plot is not None:
-        from loopdoc.documents.plots import save_plot
-
-        message = save_plot(analysis, arguments.plot)
-        if message:
-            stderr.write(f"loopdoc: {message}\n")
+        drawn = next((found for found in comparisons if found is not None), None)
+        if drawn is None:
+            stderr.write(f"loopdoc: nothing to draw for {loop.tag}: {loop.reason or 'as tuned it is not stable'}\n")
             return EXIT_UNREADABLE
-    stdout.write(response_json(analysis) if arguments.format == "json" else response_text(analysis))
+        from loopdoc.documents.plots import save
+        from loopdoc.documents.responses import figure
+
+        try:
+            save(figure(drawn), arguments.plot)
+        except ValueError as error:
+            stderr.write(f"loopdoc: {error}\n")
+            return EXIT_UNREADABLE
+    stdout.write((response_json if arguments.format == "json" else response_text)(loop, comparisons))
     return EXIT_CLEAN
 
 

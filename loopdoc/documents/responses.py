@@ -134,7 +134,8 @@ def figure(comparison: Comparison) -> Drawing:
         for kind, alarm in lead.loop.alarms.items()
         if kind in ALARM_NAMES and (limit := known(alarm.limit)) is not None
     )
-    above, below = [], []
+    above: list[Panel] = []
+    below: list[Panel] = []
     for entry in comparison.scenarios:
         last = float(entry.tuned.time_s[-1])
         _, divisor, time_unit = next(unit for unit in TIME_UNITS if last >= unit[0])

@@ -4,9 +4,10 @@ from __future__ import annotations
 
 import json
 import math
+from collections.abc import Sequence
 from typing import Any
 
-from loopdoc.engineering.comparison import Comparison, ScenarioResponses, compare
+from loopdoc.engineering.comparison import Comparison, ScenarioResponses
 from loopdoc.engineering.dynamics import ChainDynamics, LoopDynamics
 from loopdoc.engineering.frequency import Margins
 from loopdoc.engineering.response_metrics import ResponseMetrics
@@ -17,19 +18,19 @@ from loopdoc.register.quantity import Range, display_number
 TUNING_CAUTION = "Try tuning changes only under supervision."
 
 
-def response_json(loop: LoopDynamics) -> str:
-    """Margins, speed ratio and scenarios of a loop; engineering units and seconds."""
+def response_json(loop: LoopDynamics, comparisons: Sequence[Comparison | None]) -> str:
+    """Margins, speed ratio and scenarios of a loop; engineering units and seconds. One comparison for each chain."""
     document: dict[str, Any] = {"tag": loop.tag}
     if loop.reason:
         document["not_calculated"] = loop.reason
-    chains = [_chain_object(chain) for chain in loop.chains]
+    chains = [_chain_object(chain, found) for chain, found in zip(loop.chains, comparisons, strict=True)]
     # A split range has one chain for each branch; every other loop has one, and its fields stand at the top.
     document |= chains[0] if len(chains) == 1 else {"branches": chains} if chains else {}
     document["caution"] = f"{CAUTION} {TUNING_CAUTION}"
     return json.dumps(document, ensure_ascii=False, indent=2, allow_nan=False) + "\n"
 
 
-def _chain_object(dynamics: ChainDynamics) -> dict[str, Any]:
+def _chain_object(dynamics: ChainDynamics, comparison: Comparison | None) -> dict[str, Any]:
     margins = [_margins_object(found) for found in dynamics.margins]
     levels = [level.loop.tag for level in dynamics.chain.levels]
     found: dict[str, Any] = {"levels": levels, "final_element": dynamics.chain.final_element.tag}
@@ -38,7 +39,6 @@ def _chain_object(dynamics: ChainDynamics) -> dict[str, Any]:
     else:
         found |= {"inner": margins[-2], "outer": margins[-1], "speed_ratio": _number(dynamics.speed_ratio)}
         found["margins_by_level"] = dict(zip(levels, margins, strict=True))
-    comparison = compare(dynamics)
     own = measured_range(dynamics.chain.lead)
     found["unit"] = own.unit.symbol
     if comparison is None:
@@ -86,19 +86,19 @@ def _number(value: float | None) -> float | None:
     return None if value is None or not math.isfinite(value) else float(f"{value:.6g}")
 
 
-def response_text(loop: LoopDynamics) -> str:
+def response_text(loop: LoopDynamics, comparisons: Sequence[Comparison | None]) -> str:
     """The same for reading."""
     if loop.reason:
         return f"{loop.tag}: not calculated: {loop.reason}.\n{CAUTION}\n"
     lines: list[str] = []
-    for dynamics in loop.chains:
-        lines.extend(_chain_lines(dynamics))
+    for dynamics, comparison in zip(loop.chains, comparisons, strict=True):
+        lines.extend(_chain_lines(dynamics, comparison))
         lines.append("")
     lines.append(f"{CAUTION} {TUNING_CAUTION}")
     return "\n".join(lines) + "\n"
 
 
-def _chain_lines(dynamics: ChainDynamics) -> list[str]:
+def _chain_lines(dynamics: ChainDynamics, comparison: Comparison | None) -> list[str]:
     chain = dynamics.chain
     path = " > ".join([level.loop.tag for level in reversed(chain.levels)] + [chain.final_element.tag])
     lines = [
@@ -113,7 +113,6 @@ def _chain_lines(dynamics: ChainDynamics) -> list[str]:
         )
     if dynamics.speed_ratio is not None:
         lines.append(f"speed ratio of the crossovers, secondary over primary: {_shown(dynamics.speed_ratio)}")
-    comparison = compare(dynamics)
     if comparison is None:
         return [*lines, "no time responses: the loop as tuned is not stable"]
     return [*lines, "", *_scenario_lines(comparison)]
@@ -122,7 +121,8 @@ def _chain_lines(dynamics: ChainDynamics) -> list[str]:
 def _scenario_lines(comparison: Comparison) -> list[str]:
     own = measured_range(comparison.dynamics.chain.lead)
     unit = own.unit.symbol
-    lines = [f"{'upset':24}{'':10}{f'peak, {unit}':>14}{f'IAE, {unit} s':>16}{'settling, s':>14}{'valve travel, %':>18}"]
+    heads = f"{f'peak, {unit}':>14}{f'IAE, {unit} s':>16}{'settling, s':>14}{'valve travel, %':>18}"
+    lines = [f"{'upset':24}{'':10}{heads}"]
     for entry in comparison.scenarios:
         rows = [("as tuned", entry.tuned)] + ([("single", entry.single)] if entry.single else [])
         for name, response in rows:
