@@ -14,6 +14,10 @@ _STEPS_WANTED = 3000
 _STEPS_MOST = 40_000
 # A widened interval may turn the phase at any crossover by this much [rad], about one degree.
 _PHASE_UNNOTICED = 0.02
+# Longest step, as a share of the inverse of the fastest crossover: of a controller that is meant to be
+# continuous, and of processes between the scans of one that is not.
+_CONTINUOUS = 0.1
+_BETWEEN_SCANS = 0.35
 # Horizons are checked for rest at their eighths, so that numbers of steps are multiples of eight.
 HORIZON_PARTS = 8
 
@@ -76,12 +80,13 @@ def _choose_clock(horizon_s: float, loops: Sequence[tuple[float, float]]) -> Clo
     """The clock of loops given as execution interval [s] and crossover [rad/s], 0 where there is none."""
     fastest = max((crossover for _, crossover in loops), default=0.0)
     # Without a crossover nothing is faster than the horizon divided by what it was multiplied with.
-    smooth = 0.1 / fastest if fastest > 0.0 else horizon_s / 600.0
+    shortest = 1.0 / fastest if fastest > 0.0 else horizon_s / 60.0
     executed = [interval for interval, _ in loops if interval > 0.0]
     if not executed:
-        return Clock(step_s=smooth, steps=_round_up(horizon_s / smooth))
+        step = _CONTINUOUS * shortest
+        return Clock(step_s=step, steps=_round_up(horizon_s / step))
     base = _common_interval_s(executed)
-    step = base / math.ceil(base / smooth)
+    step = base / math.ceil(base / (_BETWEEN_SCANS * shortest))
     if step == base:
         for multiple in range(math.ceil(horizon_s / base / _STEPS_WANTED), 1, -1):
             wider = multiple * base

@@ -49,9 +49,12 @@ class ResponseMetrics:
 def _reversals(travel_pct: FloatArray) -> list[int]:
     """Per column, turns of a (k, n) travel that went back by at least the counted amount."""
     change = np.diff(travel_pct, axis=0)
+    # Once the travel stays this near its end only rounding turns it.
+    settled = np.abs(travel_pct - travel_pct[-1]) < 1e-3 * REVERSAL_PCT
+    ends = len(travel_pct) - np.argmin(settled[::-1], axis=0)
     counts = []
-    for column in range(travel_pct.shape[1]):
-        moving = np.nonzero(change[:, column])[0]
+    for column, end in enumerate(ends.tolist()):
+        moving = np.nonzero(change[:end, column])[0]
         direction = np.sign(change[moving, column])
         turns = moving[1:][direction[1:] != direction[:-1]]
         points = [*travel_pct[turns, column].tolist(), float(travel_pct[-1, column])]

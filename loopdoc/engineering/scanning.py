@@ -140,7 +140,9 @@ class ProcessArrays:
             np.all(system.c[:, :-1] == 0.0) and np.all(system.c[:, -1] == 1.0) and not system.d.any()
         )
         self._same = int(whole[0]) if (whole == whole[0]).all() else None
-        self._columns = np.arange(len(processes))
+        # Where each column finds its delayed input in the rows from the longest dead time on, laid end to end.
+        self._longest = int(whole.max())
+        self._places = (self._longest - whole) * len(processes) + np.arange(len(processes))
 
     def repeated(self, columns: int) -> "ProcessArrays":
         """The process of the first column, at rest, in so many columns."""
@@ -164,7 +166,8 @@ class ProcessArrays:
         if self._same is not None:
             view: FloatArray = history[row - self._same - tap]
             return view
-        gathered: FloatArray = history[row - self.whole - tap, self._columns]
+        earliest = history[row - self._longest - tap : row - tap + 1].reshape(-1)
+        gathered: FloatArray = earliest.take(self._places)
         return gathered
 
     def feedthrough(self, history: FloatArray, row: int) -> FloatArray:

@@ -9,7 +9,6 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
-from numpy.typing import NDArray
 
 from loopdoc.engineering.clock import HORIZON_PARTS, Clock, choose_clocks
 from loopdoc.engineering.linear_blocks import Run
@@ -26,8 +25,10 @@ from loopdoc.engineering.scanning import (
 )
 from loopdoc.engineering.structure import ControlStructure, Scenario
 
-# Numbers held at once by one run: bounds the memory of a batch to some 50 MB.
-_BATCH_NUMBERS = 6_000_000
+# Numbers held at once by one run: bounds the memory of a batch to some 100 MB.
+_BATCH_NUMBERS = 12_000_000
+# Up to so many columns blocks of steps are quicker than steps.
+_FEW = 24
 # A run is cut short when nothing moved by more than this share of its peak for an eighth of the horizon.
 _AT_REST = 1e-3
 
@@ -95,14 +96,19 @@ def _disturbances(
     advance, held, _ = transition(system, step_s[moved])
     order = held.shape[1]
     # With the input as a last state that stays at 1, each doubling takes all samples so far further on.
-    augmented = np.zeros((len(moved), order + 1, order + 1))
-    augmented[:, :order, :order], augmented[:, :order, order], augmented[:, order, order] = advance, held, 1.0
-    states = np.zeros((1, len(moved), order + 1))
-    states[..., order] = 1.0
-    while len(states) <= steps:
-        states = np.concatenate([states, np.einsum("nij,knj->kni", augmented, states)])
-        augmented = augmented @ augmented
-    path = np.einsum("nj,knj->kn", system.c, states[: steps + 1, :, :order]) + system.d
+    further = np.zeros((len(moved), order + 1, order + 1))
+    further[:, :order, :order], further[:, :order, order], further[:, order, order] = advance, held, 1.0
+    states = [np.zeros((1, len(moved))) for _ in range(order)] + [np.ones((1, len(moved)))]
+    while len(states[0]) <= steps:
+        later = [
+            sum((further[:, i, j] * states[j] for j in range(order + 1)), np.zeros_like(states[0]))
+            for i in range(order + 1)
+        ]
+        states = [np.concatenate([now, then]) for now, then in zip(states, later, strict=True)]
+        further = further @ further
+    path = np.broadcast_to(system.d, (steps + 1, len(moved)))
+    for i in range(order):
+        path = path + system.c[:, i] * states[i][: steps + 1]
     signal = np.zeros((steps + 1, len(columns)))
     signal[:, moved] = path * (slopes * sizes[moved])
     return signal
@@ -156,14 +162,40 @@ def _engine(columns: Sequence[_Column], steps: int, *, keep_signals: bool) -> En
     )
 
 
-def _at_rest(traces: Traces, columns: IntArray, window: int) -> NDArray[np.bool_]:
-    """Which columns did not move over the last ``window`` steps, against what they had moved before."""
-    rest = np.ones(len(columns), dtype=bool)
-    for signal in (*traces.measurement_pct, traces.travel_pct):
-        tail = signal[-window - 1 :, columns]
-        peak = np.abs(signal[:, columns]).max(axis=0)
-        rest &= np.ptp(tail, axis=0) <= _AT_REST * peak
-    return rest
+class _RestWatch:
+    """Watches when the columns of a run come to rest: no signal moves any more, against what it had moved."""
+
+    def __init__(self, horizons: IntArray) -> None:
+        self.stops = horizons.copy()
+        self._horizons = horizons
+        self._going = np.ones(len(horizons), dtype=bool)
+        self._peaks: list[FloatArray] = []
+        self._seen = 0
+
+    @property
+    def checks(self) -> list[int]:
+        """The steps at which a column is at one of the parts of its horizon, but for the first."""
+        parts = range(2, HORIZON_PARTS + 1)
+        horizons = np.unique(self._horizons).tolist()
+        return sorted({horizon * part // HORIZON_PARTS for horizon in horizons for part in parts})
+
+    def check(self, step: int, traces: Traces) -> bool:
+        """Note which columns are at rest at a step; False once none is left going."""
+        signals = (*traces.measurement_pct, traces.travel_pct)
+        since = [np.abs(signal[self._seen :]).max(axis=0) for signal in signals]
+        self._peaks = (
+            [np.maximum(a, b) for a, b in zip(self._peaks, since, strict=True)] if self._peaks else since
+        )
+        self._seen = step
+        windows = self._horizons // HORIZON_PARTS
+        for window in np.unique(windows[(step % windows == 0) & self._going]).tolist():
+            members = np.nonzero((windows == window) & self._going)[0]
+            rest = np.ones(len(members), dtype=bool)
+            for signal, peak in zip(signals, self._peaks, strict=True):
+                rest &= np.ptp(signal[-window - 1 :, members], axis=0) <= _AT_REST * peak[members]
+            done = members[rest | (self._horizons[members] == step)]
+            self.stops[done], self._going[done] = step, False
+        return bool(self._going.any())
 
 
 def _run(columns: Sequence[_Column], *, keep_signals: bool, until_rest: bool) -> tuple[Run, IntArray]:
@@ -173,29 +205,16 @@ def _run(columns: Sequence[_Column], *, keep_signals: bool, until_rest: bool) ->
     first = columns[0]
     run = Run(
         _engine(columns, steps, keep_signals=keep_signals),
-        one_structure=all((c.structure, c.clock) == (first.structure, first.clock) for c in columns),
+        one_structure=len(columns) <= _FEW
+        and all((c.structure, c.clock) == (first.structure, first.clock) for c in columns),
     )
     if not until_rest:
         return run, horizons
-    stops = horizons.copy()
-    going = np.ones(len(columns), dtype=bool)
-    checks: dict[int, IntArray] = {}
-    for horizon in np.unique(horizons):
-        for check in range(2, HORIZON_PARTS + 1):
-            at = int(horizon) * check // HORIZON_PARTS
-            checks[at] = np.union1d(
-                checks.get(at, np.zeros(0, dtype=np.intp)), np.nonzero(horizons == horizon)[0]
-            )
-    for at in sorted(checks):
-        traces = run.to(at)
-        for window in np.unique(horizons[checks[at]] // HORIZON_PARTS):
-            members = checks[at][(horizons[checks[at]] // HORIZON_PARTS == window) & going[checks[at]]]
-            done = _at_rest(traces, members, int(window)) | (horizons[members] == at)
-            stops[members[done]] = at
-            going[members[done]] = False
-        if not going.any():
+    watch = _RestWatch(horizons)
+    for step in watch.checks:
+        if not watch.check(step, run.to(step)):
             break
-    return run, stops
+    return run, watch.stops
 
 
 def _accepted_step_pct(column: _Column) -> float:
