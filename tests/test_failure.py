@@ -363,6 +363,12 @@ def test_what_is_not_given_is_undecided_and_not_guessed() -> None:
     assert (found.output, found.elements, [one.interlock.tag for one in found.initiated]) == (0, (), ["IS-3013H"])
 
 
+def test_a_reading_cannot_trip_beyond_the_end_of_its_range() -> None:
+    # IS-3012H trips above 136.6 % and LT-3012 ends at 100 % (`trip-outside-range` says so).
+    plant = plant_of(EXAMPLES / "tennessee-eastman")
+    assert effect(plant, "LIC-3012", Failure.MEASUREMENT_HIGH).initiated == ()
+
+
 def test_a_ring_of_loops_is_followed_once(tmp_path: Path) -> None:
     text = CASCADE % {"outer": "reverse", "inner": "reverse", "outer_effect": "rises", "inner_effect": "rises"}
     ring = text.replace("to: FV-2002", "to: TIC-2001").replace("normal: automatic", "normal: cascade")

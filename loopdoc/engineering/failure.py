@@ -372,7 +372,7 @@ class _Effects:
             initiated=tuple(
                 trip
                 for trip in self._analysis.trips_on(sensor if reading else None)
-                if known(trip.initiator.direction) == reading and _trips_alone(trip)
+                if known(trip.initiator.direction) == reading and _trips_alone(trip) and _within_reach(trip)
             ),
             opposing=self._opposing(moves, sensors) if seen else (),
         )
@@ -462,6 +462,17 @@ def _trips_alone(trip: Trip) -> bool:
     """Whether this one initiator is enough to trip its interlock."""
     voting = known(trip.interlock.voting)
     return voting.startswith("1oo") if voting else len(trip.interlock.initiators) == 1
+
+
+def _within_reach(trip: Trip) -> bool:
+    """Whether a reading at the end of the range passes the limit; taken so where either is not known."""
+    limit, span = known(trip.initiator.limit), known(trip.measurement.range) if trip.measurement else None
+    if limit is None or span is None or limit.unit.kind != span.unit.kind:
+        return True
+    reach = span.to(limit.unit.symbol)
+    if known(trip.initiator.direction) == "above":
+        return max(reach.low, reach.high) > limit.value
+    return min(reach.low, reach.high) < limit.value
 
 
 def _without_signal(element: FinalElement) -> tuple[Direction, str]:

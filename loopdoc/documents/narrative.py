@@ -1,0 +1,457 @@
+"""The control narrative of a process unit: what its control does, told so that it can be read aloud."""
+
+from __future__ import annotations
+
+import re
+from collections.abc import Iterable, Iterator, Mapping, Sequence
+from dataclasses import dataclass
+from typing import TypeVar
+from urllib.parse import quote
+
+from loopdoc.documents import failure_story, open_points, protection_story, settings_story, tuning_story
+from loopdoc.documents.basis import Basis, Page
+from loopdoc.documents.naming import over_range, sensor
+from loopdoc.documents.page_fit import MM, room
+from loopdoc.documents.scheme_story import SchemeStory, headline
+from loopdoc.documents.values import HOLD
+from loopdoc.documents.view import Block, Figure, Paragraph, Section, Steps, table
+from loopdoc.documents.wording import (
+    Prose,
+    Run,
+    Setter,
+    Target,
+    band,
+    counted,
+    listed,
+    sentence,
+    sentences,
+    told_of,
+    upper_first,
+    value,
+)
+from loopdoc.engineering.failure import FailureAnalysis
+from loopdoc.engineering.pairing import Plant, Scheme
+from loopdoc.engineering.spreading import transmitter_of
+from loopdoc.register.model import FinalElement, Function, HeldValue, Instrument, Interlock, Loop, UnitText, known
+from loopdoc.rules.finding import Finding
+from loopdoc.rules.references import defined_tags
+
+_P = TypeVar("_P", Loop, FinalElement, Instrument, Function, Interlock)
+
+FOLDER = "narratives"
+PAPER_MM = 297 - 12
+"""Height of the paper below its upper margin [mm]; the foot of the page grows with its title block."""
+NO_UNIT = "00"
+"""Unit under which parts are told whose unit the register does not give."""
+
+_LONGEST_NAME = 60
+"""Characters; what stands before a colon is the name of an upset up to this length."""
+
+INDICATOR_HEAD = ("Tag", "Measures", "Transmitter", "Range", "Normal band", "What it is for")
+INSTRUMENT_HEAD = ("Tag", "Measures", "Range", "On fault")
+
+
+@dataclass(frozen=True, slots=True)
+class Supplement:
+    """What is calculated elsewhere and belongs to a scheme's tuning basis."""
+
+    benefit: str = ""
+    """What its cascade gains against a single loop, in sentences; empty where nothing is said."""
+    figures: tuple[Figure, ...] = ()
+
+
+def narratives(basis: Basis, supplements: Mapping[str, Supplement] | None = None) -> Iterator[Page]:
+    """The control narrative of each unit; supplements by the tag of the scheme's lead."""
+    analysis = FailureAnalysis(basis.plant)
+    for number in _units(basis.plant):
+        unit = basis.plant.register.units.get(number)
+        name = known(unit.name) if unit else None
+        builder = _Narrative(basis, analysis, number, supplements or {})
+        sections = builder.sections()
+        document = basis.document(
+            kind="Control narrative",
+            code="CN",
+            title=f"Unit {number} {name}" if name else f"Unit {number}",
+            supplementary_title=builder.extent(),
+            unit=number,
+            serial="001",
+        )
+        view = {
+            "reading": builder.reading(sections),
+            "sections": sections,
+            "foot": f"{PAPER_MM - room(document) / MM:.1f}mm",
+        }
+        yield Page(FOLDER, file_name(number), document, "narrative.html", view)
+
+
+def file_name(number: str) -> str:
+    """Name of a unit's narrative without its ending."""
+    return f"unit-{re.sub(r'[^A-Za-z0-9.-]+', '-', number)}"
+
+
+def _units(plant: Plant) -> tuple[str, ...]:
+    """Numbers of the units, as declared; then those that only a part names."""
+    register = plant.register
+    found = dict.fromkeys(register.units)
+    sections: tuple[Mapping[str, Loop | FinalElement | Instrument | Function | Interlock], ...] = (
+        register.loops, register.final_elements, register.instruments, register.functions, register.interlocks,
+    )  # fmt: skip
+    for section in sections:
+        for part in section.values():
+            found.setdefault(known(part.unit) or NO_UNIT)
+    return tuple(found)
+
+
+class _Narrative:
+    """The narrative of one unit while it is put together."""
+
+    def __init__(
+        self, basis: Basis, analysis: FailureAnalysis, number: str, supplements: Mapping[str, Supplement]
+    ) -> None:
+        self._basis = basis
+        self._plant = basis.plant
+        self._register = basis.plant.register
+        self._analysis = analysis
+        self._number = number
+        self._supplements = supplements
+        register = self._register
+        self._loops = self._own(register.loops)
+        self._elements = self._own(register.final_elements)
+        self._interlocks = self._own(register.interlocks)
+        self._instruments = self._own(register.instruments)
+        self._functions = self._own(register.functions)
+        self._schemes = self._own_schemes()
+        self._indicators = [loop for loop in self._loops if loop.tag not in self._plant.controlled]
+        self._told_findings: set[int] = set()
+        tags = [defined.tag for defined in defined_tags(register)]
+        self._setter = Setter(register, tags, self._target)
+
+    def _own(self, parts: Mapping[str, _P]) -> list[_P]:
+        return [part for part in parts.values() if (known(part.unit) or NO_UNIT) == self._number]
+
+    def _own_schemes(self) -> list[tuple[Scheme, tuple[Loop, ...]]]:
+        """Schemes with a controller in this unit, each with the loops that are told here."""
+        found: list[tuple[Scheme, tuple[Loop, ...]]] = []
+        own = {loop.tag for loop in self._loops}
+        for scheme in self._plant.schemes:
+            controlled = [loop for loop in scheme.loops if loop.tag in self._plant.controlled]
+            here = tuple(loop for loop in controlled if loop.tag in own)
+            if here:
+                found.append((scheme, tuple(controlled) if controlled[0].tag in own else here))
+        return found
+
+    # -- front matter
+
+    def extent(self) -> str:
+        """How much the narrative covers, for the title block."""
+        counts = (
+            (len(self._schemes), "control scheme"),
+            (len(self._indicators), "indicator"),
+            (len(self._interlocks), "interlock"),
+        )
+        return upper_first(listed(counted(number, noun) for number, noun in counts if number)) or "Overview"
+
+    def reading(self, sections: Sequence[Section]) -> Prose:
+        """How to read it, in two lines."""
+        site = self._register.site
+        owner = known(site.owner) if site else None
+        keeper = f", which {owner} keeps," if owner and len(owner) < 60 else ""
+        open_ = next((section.number for section in sections if section.anchor == "open-points"), "")
+        held = f"What is not yet known is on hold and listed in section {open_}" if open_ and self._holds() else ""
+        changed = f"Every value stands in the register{keeper} or is calculated from it, and is changed only there"
+        return self._set(sentences(changed, held))
+
+    def sections(self) -> tuple[Section, ...]:
+        """The numbered sections; one that would be empty is left out and takes no number."""
+        found: list[Section] = []
+        text = self._register.texts.get(self._number)
+        for title, anchor, build in (
+            ("Overview", "overview", self._overview),
+            ("Control schemes", "control-schemes", None),
+            ("Indicators", "indicators", self._indicator_blocks),
+            ("Interlocks", "interlocks", None),
+            ("Start-up", "start-up", lambda: self._steps(text.start_up if text else ())),
+            ("Shutdown", "shutdown", lambda: self._steps(text.shut_down if text else ())),
+            ("Upsets", "upsets", lambda: self._upsets(text)),
+            ("Final elements", "final-elements", self._element_blocks),
+            ("Holds, deviations and findings", "open-points", self._open_blocks),
+        ):
+            number = str(len(found) + 1)
+            below: tuple[Section, ...] = ()
+            if build is not None:
+                blocks = tuple(build())
+            elif anchor == "control-schemes":
+                below = tuple(self._scheme_sections(number))
+                blocks = tuple(self._scheme_basis()) if below else ()
+            else:
+                below = tuple(self._interlock_sections(number))
+                blocks = tuple(self._bare_interlocks())
+            if blocks or below:
+                found.append(Section(number, title, anchor, blocks, below))
+        return tuple(found)
+
+    # -- overview, upsets
+
+    def _overview(self) -> Iterator[Block]:
+        unit = self._register.units.get(self._number)
+        purpose = known(unit.purpose) if unit else None
+        if purpose:
+            yield self._paragraph(told_of(f"Unit {self._number}", purpose))
+        text = self._register.texts.get(self._number)
+        for part in re.split(r"\n+", (known(text.overview) or "") if text else ""):
+            if part.strip():
+                yield self._paragraph(sentence(part))
+
+    def _steps(self, steps: Sequence[str]) -> Iterator[Block]:
+        if steps:
+            yield Steps(tuple(self._set(sentence(step)) for step in steps))
+
+    def _upsets(self, text: UnitText | None) -> Iterator[Block]:
+        items = []
+        for upset in text.upsets if text else ():
+            name, colon, rest = upset.partition(": ")
+            if colon and len(name) <= _LONGEST_NAME:
+                items.append((Run(f"{name}.", "strong"), Run(" "), *self._set(sentence(rest))))
+            else:
+                items.append(self._set(sentence(upset)))
+        if items:
+            yield Steps(tuple(items))
+
+    # -- schemes
+
+    def _scheme_basis(self) -> Iterator[Block]:
+        """What holds for all schemes, told once."""
+        yield self._paragraph(failure_story.ASSUMPTIONS, "How failures are judged.")
+        yield self._paragraph(tuning_story.BASIS, "How tuning is stated.")
+
+    def _scheme_sections(self, number: str) -> Iterator[Section]:
+        for ordinal, (scheme, loops) in enumerate(self._schemes):
+            story = SchemeStory(self._plant, scheme, loops, ordinal)
+            yield Section(
+                f"{number}.{ordinal + 1}",
+                headline(loops),
+                f"scheme-{_slug(loops[0].tag)}",
+                tuple(self._scheme_blocks(scheme, loops, story, ordinal)),
+                tags=self._set(self._scheme_tags(scheme, loops)),
+            )
+
+    def _scheme_tags(self, scheme: Scheme, loops: Sequence[Loop]) -> str:
+        tags = [loop.tag for loop in loops]
+        parts: list[Function | FinalElement] = [*scheme.functions, *scheme.final_elements]
+        whole = len(loops) == sum(loop.tag in self._plant.controlled for loop in scheme.loops)
+        tags += [part.tag for part in parts if whole or known(part.unit) == self._number]
+        drawings = dict.fromkeys(drawing for loop in loops if (drawing := known(loop.drawing)))
+        return f"{', '.join(tags)}{f' (drawing {listed(drawings)})' if drawings else ''}"
+
+    def _scheme_blocks(
+        self, scheme: Scheme, loops: Sequence[Loop], story: SchemeStory, ordinal: int
+    ) -> Iterator[Block]:
+        controlled = story.controlled
+        lead = next(loop for loop in scheme.loops if loop.tag in self._plant.controlled)
+        yield from self._paragraphs("", story.purpose(), self._elsewhere(lead, loops))
+        yield from self._paragraphs("How it works.", story.course(), story.rising())
+        waits = settings_story.not_followed(controlled, ordinal)
+        if len(controlled) == 1:
+            yield from self._paragraphs("Modes and limits.", sentences(settings_story.settings(controlled[0]), waits))
+        else:
+            rows = settings_story.settings_rows(self._plant, controlled)
+            yield from table("settings", settings_story.SETTINGS_HEAD, rows, self._set, title="Modes and limits")
+            yield from self._paragraphs("", waits)
+        yield from self._alarm_table(loops)
+        tags = [loop.tag for loop in loops] + [part.tag for part in scheme.final_elements]
+        acting = sentences(
+            protection_story.initiated_by(self._plant, loops), protection_story.interlock_effects(self._plant, tags)
+        )
+        yield from self._paragraphs("Interlocks.", acting)
+        yield from self._failures(scheme, loops, story)
+        yield from self._tuning(lead, story)
+        yield from self._scheme_open(tags, [part.tag for part in scheme.functions])
+
+    def _elsewhere(self, lead: Loop, loops: Sequence[Loop]) -> str:
+        """Where the whole scheme is told, when only a part of it stands in this unit."""
+        if lead.tag in {loop.tag for loop in loops}:
+            return ""
+        unit = known(lead.unit) or NO_UNIT
+        which = self._register.numbering.replace("{unit}", unit).replace("{kind}", "CN").replace("{serial}", "001")
+        those = "It" if len(loops) == 1 else "They"
+        belongs = "belongs" if len(loops) == 1 else "belong"
+        return f"{those} {belongs} to the scheme led by {lead.tag}, which {which} tells as a whole (unit {unit})."
+
+    def _failures(self, scheme: Scheme, loops: Sequence[Loop], story: SchemeStory) -> Iterator[Block]:
+        found = failure_story.FailureStory(self._plant, self._analysis, scheme, loops, story.names).rows()
+        rows = [(row.failure, row.control, row.process, row.against) for row in found]
+        hazards = failure_story.hazards(loops, story.names) if rows else ""
+        title = "When something fails"
+        yield from self._paragraphs(f"{title}.", hazards)
+        yield from table("failures", failure_story.HEAD, rows, self._set, title="" if hazards else title)
+
+    def _tuning(self, lead: Loop, story: SchemeStory) -> Iterator[Block]:
+        dynamics = self._basis.dynamics
+        settings = tuning_story.settings_rows(story.controlled, dynamics)
+        yield from table("tuning", tuning_story.SETTINGS_HEAD, settings, self._set, title="Tuning")
+        models = list(tuning_story.process_rows(story.controlled))
+        if any(cell not in ("", HOLD) for row in models for cell in row[2:5]):
+            yield from table("process", tuning_story.PROCESS_HEAD, models, self._set)
+        supplement = self._supplements.get(lead.tag, Supplement())
+        yield from self._paragraphs("", tuning_story.remarks(story.controlled, dynamics), supplement.benefit)
+        yield from supplement.figures
+
+    def _alarm_table(self, loops: Iterable[Loop]) -> Iterator[Block]:
+        rows = protection_story.alarm_rows(loops)
+        yield from table("alarms", protection_story.ALARM_HEAD, rows, self._set, title="Alarms")
+
+    def _scheme_open(self, tags: Sequence[str], functions: Sequence[str]) -> Iterator[Block]:
+        whole = {*tags, *functions}
+        holds = [hold for hold in self._register.holds if hold.tag in whole]
+        accepted = [finding for finding in self._basis.result.accepted if finding.tag in whole]
+        told = sentences(open_points.held_in_a_sentence(holds), open_points.accepted_in_a_sentence(accepted))
+        yield from self._paragraphs("Open points.", told)
+        findings = open_points.told(self._basis.result.findings, whole)
+        self._told_findings.update(id(finding) for finding in findings)
+        yield from self._finding_table(findings)
+
+    def _finding_table(self, findings: Sequence[Finding]) -> Iterator[Block]:
+        rows = open_points.finding_rows(findings)
+        yield from table("open-findings", open_points.FINDING_HEAD, rows, self._set, title="Open findings")
+
+    # -- indicators
+
+    def _indicator_blocks(self) -> Iterator[Block]:
+        rows = []
+        for loop in self._indicators:
+            measurement = known(loop.measurement)
+            operating = known(loop.operating)
+            usual = known(operating.normal) if operating else None
+            limits = band(operating.low, operating.high) if operating else ""
+            normal = value(usual) if usual else ""
+            kind = sensor(measurement) if measurement else ""
+            tag = (known(measurement.transmitter) or "") if measurement else ""
+            rows.append((
+                loop.tag, known(loop.service) or "", f"{tag}, {kind}" if kind else tag,
+                over_range(measurement).removeprefix(" over ") if measurement else "",
+                f"{limits}, normally {normal}" if limits and normal else limits or normal,
+                known(loop.purpose) or "",
+            ))  # fmt: skip
+        yield from table("indicators", INDICATOR_HEAD, rows, self._set)
+        yield from self._alarm_table(self._indicators)
+        told = [self._entered(loop) for loop in self._indicators]
+        yield from self._paragraphs("", sentences(protection_story.initiated_by(self._plant, self._indicators), *told))
+
+    def _entered(self, loop: Loop) -> str:
+        """Which functions an indicator's measurement enters."""
+        entered = [function.tag for function, _ in self._analysis.functions_of(loop)]
+        return f"{transmitter_of(loop) or loop.tag} also enters {listed(entered)}" if entered else ""
+
+    # -- interlocks
+
+    def _interlock_sections(self, number: str) -> Iterator[Section]:
+        told = [interlock for interlock in self._interlocks if not protection_story.bare(interlock)]
+        for ordinal, interlock in enumerate(told, 1):
+            service = known(interlock.service)
+            told_and_reset = (protection_story.told(interlock), protection_story.reset(interlock))
+            blocks = (*self._paragraphs("", *told_and_reset), *self._sensors(interlock))
+            if blocks:
+                title = f"{interlock.tag} {service}" if service else interlock.tag
+                yield Section(f"{number}.{ordinal}", title, f"interlock-{_slug(interlock.tag)}", blocks)
+
+    def _sensors(self, interlock: Interlock) -> Iterator[Block]:
+        """Sensors of an interlock that belong to no loop."""
+        rows = []
+        for tag in interlock.initiators:
+            instrument = self._register.instruments.get(tag)
+            if instrument:
+                measurement = instrument.measurement
+                rows.append((
+                    tag, known(instrument.service) or "", over_range(measurement).removeprefix(" over "),
+                    known(measurement.on_fault) or "",
+                ))  # fmt: skip
+        yield from table("sensors", INSTRUMENT_HEAD, rows, self._set)
+
+    def _bare_interlocks(self) -> Iterator[Block]:
+        found = [interlock for interlock in self._interlocks if protection_story.bare(interlock)]
+        if found:
+            yield self._paragraph(sentence(f"Of {_these(found)} the register gives no more than what trips it"))
+        rows = protection_story.bare_rows(found)
+        yield from table("bare-interlocks", protection_story.BARE_HEAD, rows, self._set)
+        watching = {tag for interlock in self._register.interlocks.values() for tag in interlock.initiators}
+        idle = [one for one in self._instruments if one.tag not in watching]
+        if idle:
+            yield from self._paragraphs("", sentence(f"No interlock uses {listed(one.tag for one in idle)}"))
+
+    # -- final elements, open points
+
+    def _element_blocks(self) -> Iterator[Block]:
+        rows = protection_story.element_rows(self._plant, self._elements)
+        yield from table("elements", protection_story.ELEMENT_HEAD, rows, self._set)
+
+    def _unit_tags(self) -> set[str]:
+        parts: list[Loop | FinalElement | Interlock | Instrument | Function] = [
+            *self._loops, *self._elements, *self._interlocks, *self._instruments, *self._functions,
+        ]  # fmt: skip
+        return {part.tag for part in parts} | {self._number}
+
+    def _holds(self) -> list[HeldValue]:
+        tags = self._unit_tags()
+        return [hold for hold in self._register.holds if hold.tag in tags]
+
+    def _open_blocks(self) -> Iterator[Block]:
+        tags = self._unit_tags()
+        yield from table("holds", open_points.HOLD_HEAD, open_points.hold_rows(self._holds()), self._set, title="Holds")
+        accepted = [finding for finding in self._basis.result.accepted if finding.tag in tags]
+        rows = open_points.deviation_rows(accepted)
+        yield from table("deviations", open_points.DEVIATION_HEAD, rows, self._set, title="Accepted deviations")
+        findings = open_points.told(self._basis.result.findings, tags)
+        yield from self._finding_table([one for one in findings if id(one) not in self._told_findings])
+
+    # -- setting text
+
+    def _set(self, text: str) -> Prose:
+        return self._setter.prose(text)
+
+    def _paragraph(self, text: str, label: str = "") -> Paragraph:
+        return Paragraph(self._set(text), label)
+
+    def _paragraphs(self, label: str, *texts: str) -> Iterator[Paragraph]:
+        """Paragraphs, the first with the label; nothing where all are empty."""
+        for text in texts:
+            if text:
+                yield self._paragraph(text, label)
+                label = ""
+
+    def _target(self, tag: str) -> Target:
+        """Where a tag leads: to its loop's sheet, or to the section that tells of its interlock."""
+        register = self._register
+        interlock = register.interlocks.get(tag)
+        if interlock:
+            anchor = f"interlock-{_slug(tag)}"
+            if protection_story.bare(interlock):
+                anchor = "interlocks"
+            unit = known(interlock.unit) or NO_UNIT
+            if unit == self._number:
+                return Target(anchor=anchor)
+            return Target(sheet=f"{quote(file_name(unit))}.html#{anchor}")
+        loop = register.loops.get(tag) or self._plant.loop_of_transmitter.get(tag) or self._mover(tag)
+        return Target(sheet=f"../loop-sheets/{quote(loop.tag)}.html") if loop else Target()
+
+    def _mover(self, tag: str) -> Loop | None:
+        """The loop on whose sheet a final element or a function is drawn."""
+        loops = self._register.loops
+        waiting, seen = [tag], {tag}
+        while waiting:
+            for commander in self._plant.commanders.get(waiting.pop(0), ()):
+                if commander in loops:
+                    return loops[commander]
+                if commander not in seen:
+                    seen.add(commander)
+                    waiting.append(commander)
+        function = self._register.functions.get(tag)
+        return loops.get(known(function.to) or "") if function else None
+
+
+def _these(interlocks: Sequence[Interlock]) -> str:
+    return interlocks[0].tag if len(interlocks) == 1 else "each of these"
+
+
+def _slug(tag: str) -> str:
+    return re.sub(r"[^A-Za-z0-9]+", "-", tag).strip("-")
+

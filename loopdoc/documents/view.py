@@ -1,0 +1,93 @@
+"""What a page of prose is made of: sections with paragraphs, tables, steps and figures, all ready to be placed."""
+
+from __future__ import annotations
+
+import re
+from collections.abc import Callable, Iterable, Sequence
+from dataclasses import dataclass
+
+from loopdoc.documents.values import HOLD
+from loopdoc.documents.wording import Prose
+
+
+@dataclass(frozen=True, slots=True)
+class Paragraph:
+    """A paragraph, with a few words in front that say what it is about."""
+
+    prose: Prose
+    label: str = ""
+    kind: str = "paragraph"
+
+
+@dataclass(frozen=True, slots=True)
+class Table:
+    """A table; the first cell of each row heads it."""
+
+    name: str
+    """By which the style sheet knows it."""
+    head: tuple[tuple[str, str], ...]
+    """Class and heading of each column."""
+    rows: tuple[tuple[Prose, ...], ...]
+    title: str = ""
+    kind: str = "table"
+
+
+@dataclass(frozen=True, slots=True)
+class Steps:
+    """Numbered steps."""
+
+    items: tuple[Prose, ...]
+    kind: str = "steps"
+
+
+@dataclass(frozen=True, slots=True)
+class Figure:
+    """A drawing as SVG text, with its caption."""
+
+    svg: str
+    caption: str
+    kind: str = "figure"
+
+
+Block = Paragraph | Table | Steps | Figure
+
+
+@dataclass(frozen=True, slots=True)
+class Section:
+    """A numbered section; one without blocks and sections is never made."""
+
+    number: str
+    title: str
+    anchor: str
+    blocks: tuple[Block, ...]
+    sections: tuple[Section, ...] = ()
+    tags: Prose = ()
+    """The tags that it is about, under its heading."""
+
+
+def table(
+    name: str,
+    head: Sequence[str],
+    rows: Iterable[Sequence[str]],
+    prose: Callable[[str], Prose],
+    *,
+    title: str = "",
+) -> tuple[Table, ...]:
+    """A table without the columns of which no row says anything; nothing at all where no row is left.
+
+    A column in which everything said is on hold says nothing: the holds are listed by themselves.
+    """
+    found = [tuple(row) for row in rows]
+    kept = [
+        column
+        for column in range(len(head))
+        if column == 0 or any(row[column] not in ("", HOLD) for row in found)
+    ]
+    if not found:
+        return ()
+    cells = tuple(tuple(prose(row[column]) for column in kept) for row in found)
+    return (Table(name, tuple((_class(head[column]), head[column]) for column in kept), cells, title),)
+
+
+def _class(heading: str) -> str:
+    return "c-" + re.sub(r"[^a-z]+", "-", heading.lower()).strip("-")
