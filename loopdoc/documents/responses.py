@@ -164,7 +164,7 @@ def caption(comparison: Comparison) -> str:
         f"of the process concerned, at each measurement.",
         "Linear models about the normal values, simulated scan by scan as executed, with output limits"
         + (f" and a stroke time of {shown(stroke)}" if stroke else "")
-        + "; every measurement starts at its normal value and the final element at half travel.",
+        + "; every measurement starts at its normal value and the final element in the middle of its output limits.",
     ]
     if comparison.single is not None:
         settings = comparison.single.settings

@@ -110,8 +110,15 @@ def _single_loop(dynamics: ChainDynamics) -> SensitivityTuning | None:
 
 
 def _final_element(chain: Chain) -> FinalElement:
+    """The final element with its stroke time, in the middle of what the innermost controller may ask of it.
+
+    The register does not say how far a valve is open in normal operation, and the process models are linear: what
+    the start decides is only how far the limits are away.
+    """
     stroke = known(chain.final_element.stroke_time)
-    return FinalElement(stroke_time_s=stroke.to("s") if stroke else 0.0)
+    inner = chain.stages[0].controller
+    middle = (inner.output_low_pct + inner.output_high_pct) / 2.0
+    return FinalElement(stroke_time_s=stroke.to("s") if stroke else 0.0, start_pct=min(100.0, max(0.0, middle)))
 
 
 def _start_pct(level: Level) -> float:
