@@ -1,0 +1,314 @@
+"""Rows of a drawn loop: which there are, what stands in words beside them, and how high each one is.
+
+From top to bottom: the primary, the functions between, the loop itself, the functions on its output, the
+secondary or the final elements.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Iterator
+from dataclasses import dataclass, replace
+
+from loopdoc.documents.drawing import BLOCK, BUBBLE, DIAMOND, LEADING, text_width, wrapped
+from loopdoc.documents.values import DASH, shown
+from loopdoc.engineering.pairing import Plant
+from loopdoc.register.model import FinalElement, Function, Interlock, InterlockAction, Loop, known
+from loopdoc.register.quantity import Range
+
+NOTE_WIDTH = 90.0
+"""Of the words beside an instrument of the field [pt]."""
+INPUT_DISTANCE = 44.0
+"""Between two inputs of a function [pt]."""
+BESIDE_DISTANCE = 38.0
+"""Between two commanders beside a function [pt]."""
+MOST_BESIDE = 3
+"""Commanders drawn beside a function; more are counted."""
+
+_TOP = 18.0
+_CLEAR = 13.0
+"""Least height left between two rows for the words on the link [pt]."""
+_APART = 5.0
+_FIELD_BELOW = 31.0
+"""What a transmitter needs below its signal, with the pipe or vessel that it is connected to [pt]."""
+
+_SHUT_AND_OPEN = {"variable-speed drive": ("lowest speed", "full speed"), "heater bank": ("off", "full power")}
+_SIGNAL_ENDS = {"4-20 mA": ("4", "20", "mA"), "0-20 mA": ("0", "20", "mA"), "1-5 V": ("1", "5", "V")}
+
+
+# ---------------------------------------------------------------- parts
+
+
+@dataclass(frozen=True, slots=True)
+class Primary:
+    """The loop that commands the drawn one, directly or through functions."""
+
+    loop: Loop
+
+
+@dataclass(frozen=True, slots=True)
+class Others:
+    """Further loops that command the drawn one with nothing to choose between them."""
+
+    tags: tuple[str, ...]
+
+
+@dataclass(frozen=True, slots=True)
+class Block:
+    """A function on the way."""
+
+    function: Function
+    beside: tuple[str, ...]
+    """Tags of its other commanders."""
+
+
+@dataclass(frozen=True, slots=True)
+class Own:
+    """The loop of the drawing."""
+
+    loop: Loop
+
+
+@dataclass(frozen=True, slots=True)
+class Secondary:
+    """The loop that it commands, with the final element that this one moves."""
+
+    loop: Loop
+    element: FinalElement | None
+    onward: str
+    """What the secondary commands where that is no final element."""
+
+
+@dataclass(frozen=True, slots=True)
+class Element:
+    """A final element of the loop."""
+
+    element: FinalElement
+    branch: Range | None
+    """Of a split range: the controller's output over which it opens."""
+
+
+@dataclass(frozen=True, slots=True)
+class Elsewhere:
+    """An output that leads to what the register does not define, or does not say."""
+
+    to: str
+
+
+Part = Primary | Others | Block | Own | Secondary | Element | Elsewhere
+
+
+@dataclass(frozen=True, slots=True)
+class Row:
+    """One row of a drawing."""
+
+    part: Part
+    above: float
+    """Height that it needs above its signal line [pt]."""
+    below: float
+    """Height that it needs below [pt]."""
+    label: str = ""
+    """Words on the link from the row above."""
+    y: float = 0.0
+    """Of its signal line, from the top of the drawing [pt]."""
+
+
+def rows_of(plant: Plant, loop: Loop) -> tuple[Row, ...]:
+    """The rows of a loop's drawing, placed below each other."""
+    upward = _upward(plant, loop)
+    own = _own_row(plant, loop, upward[0].label if upward else "")
+    # Upward, the label met last belongs to the link below the row: hand each one down.
+    labels = [row.label for row in upward[1:]] + [""] if upward else []
+    above = [replace(row, label=label) for row, label in zip(upward, labels, strict=True)]
+    placed: list[Row] = []
+    for row in (*reversed(above), own, *_downward(plant, loop)):
+        y = _TOP + row.above
+        if placed:
+            last = placed[-1]
+            y = last.y + last.below + row.above + (_CLEAR if row.label else _APART)
+        placed.append(replace(row, y=y))
+    return tuple(placed)
+
+
+def _upward(plant: Plant, loop: Loop) -> list[Row]:
+    """Rows above the loop, the nearest first; the label of each is that of the link below it."""
+    register = plant.register
+    rows: list[Row] = []
+    target, seen = loop.tag, {loop.tag}
+    while True:
+        commanders = [tag for tag in plant.commanders.get(target, ()) if tag not in seen]
+        main = next((tag for tag in commanders if tag in register.loops), commanders[0] if commanders else None)
+        beside = tuple(tag for tag in commanders if tag != main)
+        if rows and isinstance(last := rows[-1].part, Block):
+            rows[-1] = _block_row(last.function, beside, rows[-1].label)
+        elif beside:
+            rows.append(Row(Others(beside), 9, 9))
+        if main is None:
+            return rows
+        seen.add(main)
+        if main in register.loops:
+            primary = register.loops[main]
+            rows.append(Row(Primary(primary), BUBBLE + 2, BUBBLE + 2, demand_words(primary)))
+            return rows
+        rows.append(_block_row(register.functions[main], (), "setpoint"))
+        target = main
+
+
+def _own_row(plant: Plant, loop: Loop, label: str) -> Row:
+    high = sum(kind in loop.alarms for kind in ("high", "high_high"))
+    low = sum(kind in loop.alarms for kind in ("low", "low_low", "deviation"))
+    tapped = 30.0 if known(loop.measurement) and initiated_lines(plant, loop) else 0.0
+    above = max(BUBBLE + 2, 6 + high * LEADING, tapped)
+    below = max(_FIELD_BELOW if known(loop.measurement) else BUBBLE + 3, 10 + low * LEADING)
+    return Row(Own(loop), above, below, label)
+
+
+def _downward(plant: Plant, loop: Loop) -> Iterator[Row]:
+    """Rows below the loop."""
+    register = plant.register
+    controller = known(loop.controller)
+    if controller is None:
+        return
+    output = known(controller.output)
+    to = output.to if output else controller.output
+    label, source, seen = demand_words(loop), loop.tag, {loop.tag}
+    while isinstance(to, str) and to in register.functions and to not in seen:
+        seen.add(to)
+        function = register.functions[to]
+        beside = tuple(tag for tag in plant.commanders.get(to, ()) if tag != source)
+        yield _block_row(function, beside, label)
+        for end, branch in function.outputs.items():
+            if end in register.final_elements:
+                yield _element_row(plant, Element(register.final_elements[end], branch))
+            else:
+                yield Row(Elsewhere(end), 8, 12)
+        if function.outputs:
+            return
+        label, source, to = "setpoint", to, function.to
+    if isinstance(to, str) and to in register.final_elements:
+        yield _element_row(plant, Element(register.final_elements[to], None))
+    elif isinstance(to, str) and to in register.loops and to not in seen:
+        yield _secondary_row(plant, register.loops[to], label)
+    else:
+        yield Row(Elsewhere(shown(to)), 8, 12)
+
+
+def _block_row(function: Function, beside: tuple[str, ...], label: str) -> Row:
+    drawn = min(len(beside), MOST_BESIDE)
+    side = BUBBLE + 2 + (drawn - 1) * BESIDE_DISTANCE / 2 if drawn else 0.0
+    words = 0.0 if beside else LEADING * len(block_words(function, NOTE_WIDTH)) / 2 + 2
+    inputs = _FIELD_BELOW + (len(function.inputs) - 1) * INPUT_DISTANCE if function.inputs else 0.0
+    transmitter = BUBBLE + 2 if function.inputs else 0.0
+    above = max(BLOCK + 2, side, words, transmitter)
+    return Row(Block(function, beside), above, max(BLOCK + 2, side, words, inputs), label)
+
+
+def _element_row(plant: Plant, part: Element) -> Row:
+    above, below = _element_extent(plant, part.element)
+    return Row(part, above, below)
+
+
+def _element_extent(plant: Plant, element: FinalElement) -> tuple[float, float]:
+    words = 5 + LEADING * len(element_words(element))
+    return max(12.0, forcing_height(plant, element)), max(28.0, words)
+
+
+def _secondary_row(plant: Plant, loop: Loop, label: str) -> Row:
+    controller = known(loop.controller)
+    output = known(controller.output) if controller else None
+    to = known(output.to) if output else None
+    element = plant.register.final_elements.get(to) if to else None
+    above, below = _element_extent(plant, element) if element else (0.0, 0.0)
+    part = Secondary(loop, element, "" if element else to or "")
+    return Row(part, max(BUBBLE + 2, above), max(BUBBLE + 3, below), label)
+
+
+# ---------------------------------------------------------------- words
+
+
+def transmitter_of(loop: Loop) -> str:
+    """Tag of a loop's transmitter; empty where the register does not give it."""
+    measurement = known(loop.measurement)
+    return (known(measurement.transmitter) if measurement else None) or ""
+
+
+def demand_words(loop: Loop) -> str:
+    """What 0 and 100 % of a controller's output ask for."""
+    controller = known(loop.controller)
+    output = known(controller.output) if controller else None
+    return f"0 to 100\u00a0% = {shown(output.span)}" if output and output.span is not None else ""
+
+
+def block_words(function: Function, width: float) -> tuple[str, ...]:
+    """Tag, kind, settings and service of a function."""
+    words = [function.tag, shown(function.kind)]
+    if function.span is not None:
+        # The span of a ratio is a plain number, which the register reads as a fraction.
+        span = shown(function.span).removesuffix("\u00a0fraction")
+        words.append(span if function.normal is None else f"{span}, normally {shown(function.normal)}")
+    if isinstance(function.service, str):
+        words.extend(wrapped(function.service, width, 2))
+    return tuple(words)
+
+
+def element_words(element: FinalElement) -> tuple[str, ...]:
+    """Tag, service and signal of a final element."""
+    ends = _signal_ends(element)
+    return (element.tag, *wrapped(shown(element.service), NOTE_WIDTH, 2), *((ends,) if ends else ()))
+
+
+def _signal_ends(element: FinalElement) -> str:
+    """At which ends of the signal a final element is shut and open."""
+    ends = _SIGNAL_ENDS.get(known(element.signal) or "")
+    opens_on = known(element.opens_on)
+    if ends is None or opens_on is None:
+        return ""
+    low, high, unit = ends
+    shut, opened = _SHUT_AND_OPEN.get(known(element.kind) or "", ("shut", "open"))
+    first, last = (low, high) if opens_on == "rising signal" else (high, low)
+    return f"{first}\u00a0{unit} {shut}, {last}\u00a0{unit} {opened}"
+
+
+def initiated_lines(plant: Plant, loop: Loop) -> tuple[str, ...]:
+    """Interlocks that a loop's measurement initiates, in at most three lines."""
+    tags = {loop.tag, transmitter_of(loop)}
+    initiated = [interlock.tag for interlock in plant.register.interlocks.values() if tags & set(interlock.initiators)]
+    return wrapped(", ".join(initiated), 74, 3) if initiated else ()
+
+
+def forcing_lines(plant: Plant, tag: str, width: float, most: int) -> tuple[str, ...]:
+    """Interlocks that act on a tag, each with what it does there; those beyond the most lines are counted."""
+    entries = [
+        f"{interlock.tag}: {action_words(interlock.actions[tag])}"
+        for interlock in plant.register.interlocks.values()
+        if tag in interlock.actions
+    ]
+    lines = [line for entry in entries for line in wrapped(entry, width, 2)]
+    if len(lines) <= most:
+        return tuple(lines)
+    kept = [entry for entry in entries if text_width(entry) <= width][: most - 1]
+    return (*kept, f"and {len(entries) - len(kept)} more")
+
+
+def element_forcing_lines(plant: Plant, element: FinalElement) -> tuple[str, ...]:
+    """Interlocks that act on a final element, as they stand beside its diamond."""
+    return forcing_lines(plant, element.tag, NOTE_WIDTH + 4, 6)
+
+
+def forcing_height(plant: Plant, element: FinalElement) -> float:
+    """Height above a final element's signal for the interlocks that act on it [pt]."""
+    lines = len(element_forcing_lines(plant, element))
+    return 11.0 + max(2 * DIAMOND, lines * LEADING) if lines else 0.0
+
+
+def action_words(action: InterlockAction) -> str:
+    """What an interlock does to one final element or controller."""
+    if action.position is not None:
+        return shown(action.position)
+    parts = [shown(part) for part in (action.mode, action.output) if part is not None]
+    return ", ".join(parts) or DASH
+
+
+def acts_on(interlock: Interlock, tags: Iterable[str]) -> tuple[InterlockAction, ...]:
+    """The actions of an interlock on any of these tags."""
+    wanted = set(tags)
+    return tuple(action for tag, action in interlock.actions.items() if tag in wanted)

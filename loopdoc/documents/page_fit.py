@@ -1,0 +1,108 @@
+"""How high the tables of a page will be, so that its type size is chosen before it is set.
+
+The heights follow templates/style.css; a test holds them against the pages as they are set.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Sequence
+from dataclasses import dataclass
+
+from markupsafe import Markup
+
+from loopdoc.documents.drawing import text_width
+from loopdoc.documents.titleblock import Document
+
+MM = 72 / 25.4
+PAGE_WIDTH = 180 * MM
+"""Between the margins [pt]."""
+PAGE_HEIGHT = 242 * MM
+"""Between the margins, the title block in the lower one [pt]."""
+ABOVE_TITLE_BLOCK = 277 * MM
+"""From the upper margin to the lower edge of the title block [pt]."""
+
+_LINE = 1.18
+"""Line height of a table in type sizes."""
+_PADDING = 0.3 * MM
+_SIDE = 0.8 * MM
+_BORDER = 0.4
+
+
+@dataclass(frozen=True, slots=True)
+class Density:
+    """A type size of the tables, with its class in the style sheet."""
+
+    name: str
+    size: float
+    """[pt]"""
+
+
+DENSITIES = (Density("roomy", 8.0), Density("normal", 7.2), Density("dense", 6.6), Density("densest", 6.0))
+"""From the largest to the smallest type."""
+
+
+def line_count(content: str, width: float, size: float, *, bold: bool = False, narrow: bool = True) -> int:
+    """Lines that a text takes when it breaks at its spaces."""
+    lines, used = 1, 0.0
+    space = text_width(" ", size, bold=bold, narrow=narrow)
+    for word in _plain(content).split(" "):
+        needed = text_width(word, size, bold=bold, narrow=narrow)
+        if used and used + space + needed > width:
+            lines, used = lines + 1, 0.0
+        used = used + space + needed if used else needed
+        while used > width:  # a word longer than the line is broken anywhere
+            lines, used = lines + 1, used - width
+    return lines
+
+
+def table_height(rows: Iterable[Sequence[tuple[str, float, bool]]], size: float, *, label: bool = False) -> float:
+    """Height of a table [pt]; each row gives its cells as text, width [pt] and whether it is bold."""
+    height = _BORDER
+    for row in rows:
+        lines = max(line_count(content, width - 2 * _SIDE - _BORDER, size, bold=bold) for content, width, bold in row)
+        height += lines * _LINE * size + 2 * _PADDING + _BORDER + (6.6 if label else 0.0)
+    return height
+
+
+def paragraph_height(content: str, width: float, size: float, line: float, *, narrow: bool = True) -> float:
+    """Height of a paragraph without its margins [pt]; ``line`` is its line height in type sizes."""
+    return line_count(content, width, size, narrow=narrow) * line * size
+
+
+def room(document: Document) -> float:
+    """Height that a document leaves on its page for the text [pt]: less where its title block is high."""
+    return min(PAGE_HEIGHT, ABOVE_TITLE_BLOCK - title_block_height(document) - 1.0 * MM)
+
+
+def title_block_height(document: Document) -> float:
+    """Height of the title block of templates/base.html [pt]."""
+    revision = document.revision
+    draft = f" (DRAFT: {document.draft})" if document.draft else ""
+    # Each cell as text, columns of six, and whether it is bold.
+    rows = (
+        ((document.title, 3, False), (document.kind, 2, False), (document.number, 1, True)),
+        (
+            (document.supplementary_title, 3, False),
+            (revision.code, 1, True),
+            (revision.date, 1, False),
+            (revision.status + draft, 1, bool(draft)),
+        ),
+        (
+            (revision.prepared_by, 1, False),
+            (revision.checked_by, 1, False),
+            (revision.approved_by, 1, False),
+            (f"{document.site}, {document.owner}", 2, False),
+        ),
+        ((document.check_state, 4, False), (f"{document.fingerprint}, {document.generator}", 2, False)),
+    )
+    height = 2.0
+    for row in rows:
+        lines = max(
+            line_count(content, span * PAGE_WIDTH / 6 - 2 * MM - 0.8, 7.6, bold=bold) for content, span, bold in row
+        )
+        height += 6.6 + lines * 1.15 * 7.6 + 1.0 * MM + 0.4
+    return height + paragraph_height(document.cautions, PAGE_WIDTH - 2 * MM, 6.2, 1.15) + 1.0 * MM + 0.4
+
+
+def _plain(content: str) -> str:
+    return str(Markup(content).striptags()) if isinstance(content, Markup) else content
