@@ -11,7 +11,7 @@ from hypothesis import strategies as st
 from numpy.typing import NDArray
 from scipy.linalg import expm
 
-from loopdoc.engineering.clock import Clock, choose_clocks
+from loopdoc.engineering.clock import Clock, Unsuited, choose_clocks
 from loopdoc.engineering.frequency import LoopStage
 from loopdoc.engineering.pid import Controller
 from loopdoc.engineering.process import Process
@@ -564,6 +564,7 @@ def test_a_batch_gives_the_figures_of_single_runs() -> None:
         ([TIC], standard_scenarios(2, size_pct=5.0)),
     ]
     for (structures, scenarios), found in zip(groups, simulate_metrics(groups), strict=True):
+        assert not isinstance(found, Unsuited)
         for row, together in zip(simulate(structures, scenarios), found, strict=True):
             for response, metrics in zip(row, together, strict=True):
                 one = response.metrics
@@ -617,6 +618,7 @@ def test_a_chosen_horizon_covers_the_response() -> None:
 
 def test_cutting_a_run_short_at_rest_changes_little() -> None:
     clock = choose_clocks([[TIC]])[0]
+    assert isinstance(clock, Clock)
     short = simulate([TIC], standard_scenarios(2))[0]
     full = simulate([TIC], standard_scenarios(2), clock=Clock(clock.step_s, 2 * clock.steps))[0]
     for one, other in zip(short, full, strict=True):
@@ -633,6 +635,7 @@ def test_a_widened_step_changes_little() -> None:
         final_element=VALVE,
     )
     chosen = choose_clocks([[structure]])[0]
+    assert isinstance(chosen, Clock)
     assert chosen.step_s > 1.0
     coarse = simulate([structure], standard_scenarios(1))[0]
     fine = simulate(
@@ -650,6 +653,7 @@ def test_a_fast_loop_is_stepped_within_its_interval() -> None:
         [LoopStage(Controller(0.9, 4.0, interval_s=2.0), Process(1.0, (4.0,), 1.0))], final_element=VALVE
     )
     clock = choose_clocks([[structure]])[0]
+    assert isinstance(clock, Clock)
     assert clock.step_s < 2.0
     response = simulate([structure], standard_scenarios(1))[0][0]
     assert response.metrics.executed_interval_s == (2.0,)
@@ -661,6 +665,31 @@ def test_a_loop_that_cannot_settle_says_so() -> None:
     metrics = simulate([structure], [Scenario("sp", setpoint_step_pct=5.0)])[0][0].metrics
     assert metrics.settling_s == math.inf
     assert metrics.reversals > 3
+
+
+TOO_WIDE = cascade_structure(
+    [
+        LoopStage(Controller(1.0, 0.1, interval_s=0.05), Process(1.0, (0.1,), 0.05)),
+        LoopStage(Controller(1.0, 1e5, interval_s=1.0), Process(1.0, (1e5,), 1e4)),
+    ],
+    final_element=VALVE,
+)
+LEVEL = Process(0.01, (), 5.0, integrating=True)
+TWO_INTEGRATIONS = ControlStructure((LEVEL, LEVEL), (None, Controller(1.0, 100.0, interval_s=1.0)), VALVE)
+
+
+def test_a_group_that_cannot_be_simulated_leaves_the_others() -> None:
+    found = simulate_metrics(
+        [
+            ([TOO_WIDE], standard_scenarios(2)),
+            ([TIC], standard_scenarios(2)),
+            ([TWO_INTEGRATIONS], standard_scenarios(2)),
+        ]
+    )
+    assert isinstance(found[0], Unsuited)
+    assert isinstance(found[2], Unsuited)
+    assert not isinstance(found[1], Unsuited)
+    assert len(found[1][0]) == 3
 
 
 @pytest.mark.parametrize(
@@ -677,9 +706,11 @@ def test_a_loop_that_cannot_settle_says_so() -> None:
             "there is no level 2",
         ),
         (
-            lambda: choose_clocks([[ControlStructure((Process(1.0),), (None,), VALVE)]]),
+            lambda: simulate([ControlStructure((Process(1.0),), (None,), VALVE)], standard_scenarios(1)),
             "nothing in this structure",
         ),
+        (lambda: simulate([TOO_WIDE], standard_scenarios(2)), "too far apart"),
+        (lambda: simulate([TWO_INTEGRATIONS], standard_scenarios(2)), "two integrating processes"),
     ],
 )
 def test_what_cannot_be_simulated_is_refused(build: object, said: str) -> None:

@@ -1,7 +1,7 @@
 """Time step and horizon of a simulation, chosen from the dynamics."""
 
 import math
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from functools import reduce
 
@@ -32,6 +32,13 @@ class Clock:
     """Number of steps."""
 
 
+@dataclass(frozen=True, slots=True)
+class Unsuited:
+    """Why structures cannot be simulated."""
+
+    reason: str
+
+
 def _controlled_chain(structure: ControlStructure) -> list[LoopStage]:
     """The loops of a structure, uncontrolled processes joined to the next loop out."""
     stages, waiting = [], []
@@ -57,10 +64,7 @@ def _horizon_s(structure: ControlStructure, chain: Sequence[LoopStage], margins:
             slow.append(6.0 * reset * (1.0 + 1.0 / gain))
         if math.isfinite(found.crossover_rad_per_s):
             slow.append(6.0 * min(found.max_sensitivity, 6.0) / found.crossover_rad_per_s)
-    longest = max(slow)
-    if longest <= 0.0:
-        raise ValueError("nothing in this structure takes time: there is no response to simulate")
-    return longest
+    return max(slow)
 
 
 def _common_interval_s(intervals_s: Sequence[float]) -> float:
@@ -101,24 +105,48 @@ def _choose_clock(horizon_s: float, loops: Sequence[tuple[float, float]]) -> Clo
     return Clock(step_s=step, steps=_round_up(horizon_s / step))
 
 
-def choose_clocks(groups: Sequence[Sequence[ControlStructure]]) -> tuple[Clock, ...]:
-    """Return one clock per group of structures that are to be compared.
+def _choose_for(
+    group: Sequence[ControlStructure], margins: Iterator[tuple[Margins, ...]]
+) -> Clock | Unsuited:
+    horizon_s, open_loop_s, loops = 0.0, 0.0, []
+    for structure in group:
+        chain = _controlled_chain(structure)
+        found = next(margins) if chain else ()
+        horizon_s = max(horizon_s, _horizon_s(structure, chain, found))
+        for process in structure.processes:
+            open_loop_s = max(open_loop_s, math.fsum(process.lags_s) + process.dead_time_s)
+        for stage, margin in zip(chain, found, strict=True):
+            crossover = margin.crossover_rad_per_s
+            loops.append((stage.controller.interval_s, crossover if math.isfinite(crossover) else 0.0))
+    if horizon_s <= 0.0:
+        return Unsuited("nothing in this structure takes time: there is no response to simulate")
+    clock = _choose_clock(horizon_s, loops)
+    if clock.step_s * clock.steps < min(horizon_s, 2.0 * open_loop_s):
+        return Unsuited(
+            f"its slowest part takes {open_loop_s:.3g} s and its fastest loop needs steps of {clock.step_s:.3g} s: "
+            "they are too far apart to be simulated together"
+        )
+    return clock
+
+
+def choose_clocks(groups: Sequence[Sequence[ControlStructure]]) -> tuple[Clock | Unsuited, ...]:
+    """Return one clock per group of structures that are to be compared, or why there is none.
 
     The step is the common execution interval; shorter where the loops are too fast for it to show; longer
     where thousands of steps would be needed and no crossover loses a degree of phase by it. The horizon
-    is several times the slowest lag or closed-loop mode.
+    is several times the slowest lag or closed-loop mode, but at most 40,000 steps.
     """
-    chains = [[_controlled_chain(structure) for structure in group] for group in groups]
-    flat = [chain for group in chains for chain in group if chain]
-    found = iter(analyse_chains(flat))
-    clocks = []
-    for group, group_chains in zip(groups, chains, strict=True):
-        horizon_s, loops = 0.0, []
-        for structure, chain in zip(group, group_chains, strict=True):
-            margins = next(found) if chain else ()
-            horizon_s = max(horizon_s, _horizon_s(structure, chain, margins))
-            for stage, margin in zip(chain, margins, strict=True):
-                crossover = margin.crossover_rad_per_s
-                loops.append((stage.controller.interval_s, crossover if math.isfinite(crossover) else 0.0))
-        clocks.append(_choose_clock(horizon_s, loops))
-    return tuple(clocks)
+    chains: list[list[LoopStage]] = []
+    refused: dict[int, Unsuited] = {}
+    for position, group in enumerate(groups):
+        try:
+            found = [chain for structure in group if (chain := _controlled_chain(structure))]
+        except ValueError as error:
+            refused[position] = Unsuited(str(error))
+        else:
+            chains += found
+    margins = iter(analyse_chains(chains))
+    return tuple(
+        refused[position] if position in refused else _choose_for(group, margins)
+        for position, group in enumerate(groups)
+    )

@@ -157,6 +157,7 @@ class Run:
             and not engine.element.loose
             and engine.steps >= _BLOCKS_WORTH * _STEPS
             and sum(int(plant.whole[0]) for plant in engine.plants) <= _MEMORY_MOST
+            and math.lcm(*(arrays.every for _, arrays in engine.loops.controlled)) <= 4 * _STEPS
         )
         self._blocks = LinearBlocks(engine) if may else None
 

@@ -194,6 +194,12 @@ def _frequency_grid(levels: Sequence[LevelArrays]) -> FloatArray:
     return np.sort(np.concatenate(parts, axis=1), axis=1)
 
 
+def _inverse(loop: ComplexArray) -> ComplexArray:
+    """1/L, very large where a secondary that ignores its setpoint leaves nothing of the loop."""
+    inverse: ComplexArray = np.divide(1.0, loop, out=np.full_like(loop, 1e200), where=loop != 0.0)
+    return inverse
+
+
 def _zoom_to_maximum(
     value: Callable[[FloatArray], FloatArray], low: FloatArray, high: FloatArray
 ) -> tuple[FloatArray, FloatArray]:
@@ -343,7 +349,7 @@ class Survey:
         """(n,) largest |1/(1+L)| or |L/(1+L)| = |1/(1+1/L)| over the frequencies above zero."""
         curve, far = self.loops[level], self.far[level]
         if complementary:
-            curve, far = 1.0 / curve, 1.0 / far
+            curve, far = _inverse(curve), _inverse(far)
         distance = np.abs(1.0 + curve)
         nearest = np.minimum(distance.min(axis=1), np.abs(1.0 + far).min(axis=1))
         inside = (distance[:, 1:-1] <= distance[:, :-2]) & (distance[:, 1:-1] < distance[:, 2:])
@@ -355,7 +361,7 @@ class Survey:
             loop = self.loop_at(level, rows)
 
             def height(x: FloatArray) -> FloatArray:
-                found = 1.0 / loop(x) if complementary else loop(x)
+                found = _inverse(loop(x)) if complementary else loop(x)
                 value: FloatArray = -np.log(np.abs(1.0 + found))
                 return value
 

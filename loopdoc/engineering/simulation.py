@@ -10,7 +10,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from loopdoc.engineering.clock import HORIZON_PARTS, Clock, choose_clocks
+from loopdoc.engineering.clock import HORIZON_PARTS, Clock, Unsuited, choose_clocks
 from loopdoc.engineering.linear_blocks import Run
 from loopdoc.engineering.process import FloatArray, Process, state_space, transition
 from loopdoc.engineering.response_metrics import ResponseMetrics, read_metrics
@@ -346,12 +346,14 @@ def simulate(
     Raises
     ------
     ValueError
-        A scenario names a level that a structure does not have, or nothing takes time.
+        A scenario names a level that a structure does not have, or they cannot be simulated together.
 
     Source: K. J. Astrom, B. Wittenmark, Computer-Controlled Systems, 3rd ed. 1997, ch. 2 and 8
     (sampling of lags and dead time, digital PID; chapters from memory).
     """
     chosen = choose_clocks([structures])[0] if clock is None else clock
+    if isinstance(chosen, Unsuited):
+        raise ValueError(chosen.reason)
     found: dict[tuple[int, int, int], Response] = {}
     columns = _columns(0, structures, scenarios, chosen)
     runs = []
@@ -369,7 +371,7 @@ def simulate(
 
 def simulate_metrics(
     groups: Sequence[tuple[Sequence[ControlStructure], Sequence[Scenario]]],
-) -> tuple[tuple[tuple[ResponseMetrics, ...], ...], ...]:
+) -> tuple[tuple[tuple[ResponseMetrics, ...], ...] | Unsuited, ...]:
     """Metrics of many groups of structures at once, a whole plant for example, without their signals.
 
     Parameters
@@ -379,20 +381,22 @@ def simulate_metrics(
 
     Returns
     -------
-    nested tuples of ResponseMetrics
-        Per group, per structure, per scenario; the same figures as those of `simulate`.
+    tuple of nested tuples of ResponseMetrics, or Unsuited
+        Per group, per structure, per scenario; the figures are those of `simulate`. Where a group cannot
+        be simulated, the reason.
 
     Raises
     ------
     ValueError
-        A scenario names a level that a structure does not have, or nothing takes time.
+        A scenario names a level that a structure does not have.
 
     Source: as for `simulate`.
     """
     clocks = choose_clocks([structures for structures, _ in groups])
     columns = []
     for group, ((structures, scenarios), clock) in enumerate(zip(groups, clocks, strict=True)):
-        columns += _columns(group, structures, scenarios, clock)
+        if isinstance(clock, Clock):
+            columns += _columns(group, structures, scenarios, clock)
     found: dict[tuple[int, int, int], ResponseMetrics] = {}
     widest = max(
         (len(structure.processes) for structures, _ in groups for structure in structures), default=1
@@ -402,6 +406,8 @@ def simulate_metrics(
         metrics = _all_metrics(batch, run.to(int(stops.max())), stops)
         found.update(zip((column.place for column in batch), metrics, strict=True))
     return tuple(
-        tuple(tuple(found[group, i, j] for j in range(len(scenarios))) for i in range(len(structures)))
-        for group, (structures, scenarios) in enumerate(groups)
+        clock
+        if isinstance(clock, Unsuited)
+        else tuple(tuple(found[group, i, j] for j in range(len(scenarios))) for i in range(len(structures)))
+        for group, ((structures, scenarios), clock) in enumerate(zip(groups, clocks, strict=True))
     )

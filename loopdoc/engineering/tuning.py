@@ -158,6 +158,8 @@ def ziegler_nichols_reaction_curve(model: ReducedModel, actions: Actions) -> Sta
     Source: J. G. Ziegler, N. B. Nichols, Trans. ASME 64:759-768, 1942.
     """
     dead_time = _dead_time(model)
+    if model.lag_s <= 0.0:
+        raise ValueError("the reaction curve rules need a lag above zero")
     unit = 1.0 / (model.slope * dead_time)
     if actions == "P":
         return StandardSettings(unit)
@@ -300,6 +302,7 @@ class _SimcLoop:
         self._model = (reduce_to_second_order if with_rate else reduce_to_first_order)(
             process, interval_s=interval_s
         )
+        self.has_lag = self._model.lag_s > 0.0
         # The default of the rule, a closed-loop time equal to the dead time; a tenth of the lag without one.
         lag_s = math.fsum(process.lags_s) + self._filter_s or 1.0 / abs(process.gain)
         self.usual_wanted_s = 2.0 * self._model.dead_time_s or 0.1 * lag_s
@@ -355,7 +358,7 @@ def simc_at_sensitivities(
     -------
     tuple of n SensitivityTuning or None
         None where no tuning has that sensitivity: the process has no lag to reset on, or so little
-        dead time that no gain disturbs it.
+        dead time that no gain disturbs it, or it does not reduce to a model.
 
     Raises
     ------
@@ -368,12 +371,16 @@ def simc_at_sensitivities(
     if not all(math.isfinite(target) and target > 1.0 for target in target_ms):
         raise ValueError("a target sensitivity must be a finite number above 1")
     filters = [0.0] * len(processes) if measurement_filter_s is None else measurement_filter_s
-    loops = [
-        _SimcLoop(process, interval, filter_s, with_rate)
-        for process, interval, filter_s in zip(processes, interval_s, filters, strict=True)
-    ]
-    found: list[SensitivityTuning | None] = [None] * len(loops)
-    rows = [i for i, loop in enumerate(loops) if loop.process.order > 0]
+    loops: dict[int, _SimcLoop] = {}
+    for i, (process, interval, filter_s) in enumerate(zip(processes, interval_s, filters, strict=True)):
+        try:
+            loop = _SimcLoop(process, interval, filter_s, with_rate)
+        except ValueError:
+            continue
+        if loop.has_lag:
+            loops[i] = loop
+    found: list[SensitivityTuning | None] = [None] * len(processes)
+    rows = list(loops)
     target = np.log(np.asarray(target_ms, dtype=np.float64))
 
     def excess(members: Sequence[int], ln_wanted: FloatArray) -> FloatArray:
@@ -388,8 +395,8 @@ def simc_at_sensitivities(
         return limited
 
     # Ms falls as the closed loop is made slower: first bracket the target, then close in on it.
-    low, high = np.zeros(len(loops)), np.zeros(len(loops))
-    f_low, f_high = np.zeros(len(loops)), np.zeros(len(loops))
+    low, high = np.zeros(len(processes)), np.zeros(len(processes))
+    f_low, f_high = np.zeros(len(processes)), np.zeros(len(processes))
     middle = {i: math.log(loops[i].usual_wanted_s) for i in rows}
     bracketed: list[int] = []
     for _ in range(5):
