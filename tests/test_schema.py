@@ -74,9 +74,13 @@ loops:
       modes: {normal: automatic, permitted: [manual, automatic]}
       on_bad_measurement: {mode: manual, output: hold}
       when_not_followed: track
-    process: {effect: rises, gain: 5.5 degC per t/h, lag: 9 min, dead_time: 1.5 min, integrating: false,
+    process: {effect: rises, gain: 5.5 degC per t/h, lag: 9 min, lead: -10 s, dead_time: 1.5 min, integrating: false,
               source: step test 2026-05-14}
     hazard: high
+    disturbances:
+      steam pressure falls: {size: -2 t/h, at: process input}
+      cold reflux: {size: -3 degC, lag: 4 min}
+      feed without light ends: {hold: process study}
     alarms:
       high_high: {limit: 97 degC}
       high: {limit: 94 degC, deadband: 0.6 degC, delay: 10 s, priority: medium, cause: Steam valve open,
@@ -98,7 +102,7 @@ loops:
 final_elements:
   FV-2011: {unit: "20", kind: control valve, service: Reboiler steam, drawing: D-20-103, opens_on: rising signal,
             output_block: direct, fails: closed, safe: closed, signal: 4-20 mA, channel: AO-1-03,
-            characteristic: equal percentage, stroke_time: 6 s}
+            characteristic: equal percentage, stroke_time: 6 s, backlash: 0.5 %, resolution: 0.2 %}
 instruments:
   PT-2021A: {unit: "20", service: Column pressure, variable: pressure, sensor: diaphragm, element: tapping,
              characteristic: linear, range: 0 to 2.5 barg, signal: 4-20 mA, on_fault: reads high, filter: 1 s,
@@ -267,6 +271,7 @@ NOT_WRITTEN = {
     "initiator": {"tag"},
     "action": {"tag", "position"},  # `FV-2011: closed`
     "alarm": {"kind"},
+    "disturbance": {"name"},
     "plant_unit": {"number"},
     "branch": {"branches"},  # a branch has none of its own
 }
@@ -281,6 +286,7 @@ CLASSES = {
     "process": model.Process,
     "branch": model.Process,
     "alarm": model.Alarm,
+    "disturbance": model.Disturbance,
     "loop": model.Loop,
     "final_element": model.FinalElement,
     "function": model.Function,
@@ -456,7 +462,7 @@ SAID = {
     loop("'x` \u00e9': 1"): (
         "6:5", "`x' é` is not a key of a loop",
         "write one of `unit`, `service`, `drawing`, `purpose`, `measurement`, `operating`, `controller`, `process`, "
-        "`hazard` or `alarms`, or remove it"),
+        "`hazard`, `disturbances` or `alarms`, or remove it"),
     loop("hold: scope"): (
         "6:5", "`hold` is not a key of a loop", "hold its values one by one, as in `unit: {hold: reason}`"),
     # keys in the wrong place
@@ -562,7 +568,7 @@ SAID = {
         "keep `{hold: reason}` alone, or remove `hold`"),
     loop("measurement2: {hold: x}"): ("6:5", "`measurement2` is not a key of a loop",
         "write one of `unit`, `service`, `drawing`, `purpose`, `measurement`, `operating`, `controller`, `process`, "
-        "`hazard` or `alarms`, or remove it"),
+        "`hazard`, `disturbances` or `alarms`, or remove it"),
     # one or the other
     loop("controller: {reset: 9 min, repeats: 0.11 1/min}"): (
         "6:32", "the controller has both `reset` and `repeats`", "keep one of them"),

@@ -17,6 +17,7 @@ from typing import Any, TypeVar, Union, cast, get_args, get_origin, get_type_hin
 from loopdoc.register.model import (
     Alarm,
     Deviation,
+    Disturbance,
     FinalElement,
     Function,
     HeldValue,
@@ -277,8 +278,13 @@ class _Reader:
             alarm = self._part(where, entry, Alarm, kind=kind)
             if isinstance(alarm, Alarm):
                 alarms[kind] = alarm
+        disturbances = {}
+        for name, entry, where in self._below(origin, value, "disturbances"):
+            disturbance = self._part(where, entry, Disturbance, name=name)
+            if isinstance(disturbance, Disturbance):
+                disturbances[name] = disturbance
         process = self._process(Origin(origin.source, (*origin.path, "process")), value.get("process"))
-        loop = self._part(origin, value, Loop, tag=tag, alarms=alarms, process=process)
+        loop = self._part(origin, value, Loop, tag=tag, alarms=alarms, disturbances=disturbances, process=process)
         return loop if isinstance(loop, Loop) else None
 
     def _process(self, origin: Origin, value: Any) -> Process | Hold | None:

@@ -185,12 +185,27 @@ class Process(Part):
     gain: Gain | Hold | None
     lags: tuple[Quantity, ...] | Hold
     """First-order time constants, from `lag` or `lags`."""
+    lead: Quantity | Hold | None
+    """Time constant of a lead; negative for an inverse response."""
     dead_time: Quantity | Hold | None
     integrating: bool
     source: str | Hold | None
     """Where the model comes from: a step test on a date, a design estimate."""
     branches: dict[str, Process]
     """For a split range: one process for each final element, by its tag."""
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Disturbance(Part):
+    """An upset that a loop must cope with: a step, and what it passes through on its way to the measurement."""
+
+    name: str
+    size: Quantity | Hold | None
+    """A difference of the measurement's kind; at the process input, of the kind of what is commanded."""
+    lag: Quantity | Hold | None
+    """First-order time constant to the measurement; the process's own lags where not given."""
+    at: str | Hold | None
+    """measurement (where not given) or process input."""
 
 
 # ---------------------------------------------------------------- alarms, loops
@@ -232,6 +247,8 @@ class Loop(Part):
     process: Process | Hold | None
     hazard: str | Hold | None
     """The direction of the measurement that hurts: high, low, both, none."""
+    disturbances: dict[str, Disturbance]
+    """Declared upsets, by name."""
     alarms: dict[str, Alarm]
 
 
@@ -261,6 +278,10 @@ class FinalElement(Part):
     characteristic: str | Hold | None
     """Inherent characteristic: linear, equal percentage, quick opening."""
     stroke_time: Quantity | Hold | None
+    backlash: Quantity | Hold | None
+    """Part of the travel that the signal loses when it turns round."""
+    resolution: Quantity | Hold | None
+    """Smallest change of the signal that it answers."""
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

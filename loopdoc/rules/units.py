@@ -8,7 +8,18 @@ from typing import TypeAlias
 
 from loopdoc.engineering.direction import process_on
 from loopdoc.engineering.pairing import ControlledLoop, Plant, Route, Trip
-from loopdoc.register.model import Function, Hold, Instrument, Interlock, Loop, Origin, Part, Process, known
+from loopdoc.register.model import (
+    Disturbance,
+    Function,
+    Hold,
+    Instrument,
+    Interlock,
+    Loop,
+    Origin,
+    Part,
+    Process,
+    known,
+)
 from loopdoc.register.quantity import Gain, Quantity, Range
 from loopdoc.register.units import UNITS, Unit, UnitError, convert, convert_difference
 from loopdoc.rules.finding import Level
@@ -72,8 +83,9 @@ def unit_incompatible(part: Loop | Instrument | Function | Interlock | Trip, pla
     Holds:
         Operating values, setpoints, alarm and trip limits are of the kind of the measurement range; dead
         bands and deviation limits are differences of that kind; outputs are in percent on a final element
-        and of the secondary's kind on a secondary; gains are per unit of what is moved. Units of one kind
-        may be mixed: 12 t/h and 12000 kg/h.
+        and of the secondary's kind on a secondary; gains are per unit of what is moved. A disturbance is a
+        difference of the measurement's kind, or at the process input of what the gain is per unit of. Units of
+        one kind may be mixed: 12 t/h and 12000 kg/h.
     What this check cannot see:
         A number that was converted wrongly. Units of time, frequency and percent have fixed places in the
         format, and the rule `schema` tells of them.
@@ -193,8 +205,22 @@ def _of_loop(loop: Loop, plant: Plant) -> Iterator[_Value]:
         name = f"the {alarm.kind.replace('_', '-')} alarm"
         yield _against_range(f"the limit of {name}", alarm, "limit", loop, alarm.kind == "deviation")
         yield _against_range(f"the dead band of {name}", alarm, "deadband", loop, True)
+    for disturbance in loop.disturbances.values():
+        yield _of_disturbance(loop, disturbance)
     if loop.tag in plant.controlled:
         yield from _of_output(plant.controlled[loop.tag])
+
+
+def _of_disturbance(loop: Loop, disturbance: Disturbance) -> _Value:
+    """Its size must agree with the measurement, or with what the process gain is per unit of."""
+    what = f"the disturbance `{disturbance.name}`"
+    if known(disturbance.at) != "process input":
+        return _against_range(what, disturbance, "size", loop, is_difference=True)
+    process = known(loop.process)
+    gains = [known(one.gain) for one in (process, *process.branches.values())] if process else []
+    wanted = next((gain.denominator for gain in gains if gain), None)
+    against = "the process input" if wanted else "the unit of the process input"
+    return _Value(what, disturbance.size, disturbance.origin, ("size",), wanted, against, is_difference=True)
 
 
 def _against_range(what: str, part: Part, key: str, owner: Loop | Instrument, is_difference: bool = False) -> _Value:
