@@ -299,7 +299,7 @@ class _Drawing:
         sheet.final_element(_FIELD, y, kind, known(fails) or "")
         if fails is not None:
             letters = HOLD if isinstance(fails, Hold) else _FAIL_LETTERS.get(fails, fails)
-            x, baseline = (_FIELD - 11, y + 21.2) if kind in _DRIVES else (_FIELD - 4, y + 12.2)
+            x, baseline = (_FIELD - 11, y + 21.2) if kind in _DRIVES else (_FIELD - 4, y + 11.4)
             sheet.note(x, baseline, (letters,), width=24, anchor="end")
         sheet.electric((_TERMINALS - 7, y), (_FIELD + 9.5, y), arrow=True)
         self._wire(y, element.signal)
