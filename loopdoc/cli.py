@@ -195,7 +195,7 @@ def _issue(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int
 
 
 def _response(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
-    from loopdoc.engineering.comparison import compare
+    from loopdoc.engineering.comparison import Comparison, NotSimulated, compare
     from loopdoc.exchange.responses import response_json, response_text
 
     basis = _basis(arguments.register, stderr)
@@ -211,9 +211,10 @@ def _response(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> 
     loop = basis.dynamics.loop(arguments.tag)
     comparisons = [compare(chain) for chain in loop.chains]
     if arguments.plot is not None:
-        drawn = next((found for found in comparisons if found is not None), None)
+        drawn = next((found for found in comparisons if isinstance(found, Comparison)), None)
         if drawn is None:
-            stderr.write(f"loopdoc: nothing to draw for {loop.tag}: {loop.reason or 'as tuned it is not stable'}\n")
+            reasons = [loop.reason, *(found.reason for found in comparisons if isinstance(found, NotSimulated))]
+            stderr.write(f"loopdoc: nothing to draw for {loop.tag}: {next(filter(None, reasons))}\n")
             return EXIT_UNREADABLE
         from loopdoc.documents.plots import save
         from loopdoc.documents.responses import figure

@@ -3,16 +3,17 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Any
 
 from loopdoc.documents.titleblock import Document, document
-from loopdoc.engineering.dynamics import Dynamics
+from loopdoc.engineering.comparison import Comparison, NotSimulated, compare
+from loopdoc.engineering.dynamics import ChainDynamics, Dynamics
 from loopdoc.engineering.pairing import Plant
 from loopdoc.rules.finding import CheckResult
 
 
-@dataclass(frozen=True, slots=True)
+@dataclass(frozen=True, slots=True, eq=False)
 class Basis:
     """One register resolved, checked and calculated: the only source of every statement in a document."""
 
@@ -21,6 +22,13 @@ class Basis:
     sources: Mapping[str, bytes]
     """Content of the register's files by name."""
     dynamics: Dynamics
+    _compared: dict[ChainDynamics, Comparison | NotSimulated] = field(default_factory=dict, repr=False)
+
+    def comparison(self, chain: ChainDynamics) -> Comparison | NotSimulated:
+        """Time responses of a chain, or why there is none, simulated once for all documents."""
+        if chain not in self._compared:
+            self._compared[chain] = compare(chain)
+        return self._compared[chain]
 
     def document(
         self, *, kind: str, code: str, title: str, supplementary_title: str, unit: str, serial: str

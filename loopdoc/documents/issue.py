@@ -15,10 +15,10 @@ from loopdoc.documents.loop_sheet import loop_sheets
 from loopdoc.documents.narrative import narratives
 from loopdoc.documents.pdf import ensure_available, to_pdf
 from loopdoc.documents.rendering import render, web_style_sheet
-from loopdoc.documents.responses import responses
+from loopdoc.documents.responses import responses, supplements
 
 KINDS: dict[str, Callable[[Basis], Iterator[Page]]] = {
-    "narrative": narratives,
+    "narrative": lambda basis: narratives(basis, supplements(basis)),
     "loop-sheet": loop_sheets,
     "response": responses,
 }

@@ -9,9 +9,11 @@ from typing import Any
 import numpy as np
 
 from loopdoc.documents.basis import Basis, Page
+from loopdoc.documents.narrative import Supplement
 from loopdoc.documents.plots import Curve, Drawing, Limit, Panel, to_svg
 from loopdoc.documents.values import DASH, shown
-from loopdoc.engineering.comparison import UPSET_PCT, Comparison, ScenarioResponses, compare
+from loopdoc.documents.view import Figure
+from loopdoc.engineering.comparison import UPSET_PCT, Comparison, NotSimulated, ScenarioResponses
 from loopdoc.engineering.dynamics import ChainDynamics
 from loopdoc.engineering.pairing import Scheme
 from loopdoc.engineering.process import FloatArray
@@ -28,14 +30,49 @@ TIME_UNITS = ((7200.0, 3600.0, "h"), (600.0, 60.0, "min"), (0.0, 1.0, "s"))
 def responses(basis: Basis) -> Iterator[Page]:
     """One document for each scheme of which a loop's dynamics follow from the register."""
     for scheme in basis.plant.schemes:
-        leads = [loop for loop in scheme.loops if _is_lead(basis, loop.tag)]
-        chains = [chain for loop in leads for chain in basis.dynamics.loop(loop.tag).chains]
+        chains = _chains(basis, scheme)
         if chains:
             yield _page(basis, scheme, chains)
 
 
-def _is_lead(basis: Basis, tag: str) -> bool:
-    return tag in basis.plant.controlled and not basis.plant.primaries_of(tag)
+def supplements(basis: Basis) -> dict[str, Supplement]:
+    """For the narrative, by the lead of each scheme: what its cascades gain, and how it answers upsets."""
+    found = {}
+    for scheme in basis.plant.schemes:
+        all_chains = [basis.comparison(chain) for chain in _chains(basis, scheme)]
+        compared = [comparison for comparison in all_chains if isinstance(comparison, Comparison)]
+        if compared:
+            found[scheme.lead.tag] = Supplement(
+                " ".join(sentence for comparison in compared if (sentence := benefit(comparison))),
+                tuple(Figure(to_svg(figure(comparison)), caption(comparison)) for comparison in compared),
+            )
+    return found
+
+
+def _chains(basis: Basis, scheme: Scheme) -> list[ChainDynamics]:
+    """The chains of a scheme from each loop that nothing commands."""
+    plant = basis.plant
+    leads = [loop for loop in scheme.loops if loop.tag in plant.controlled and not plant.primaries_of(loop.tag)]
+    return [chain for loop in leads for chain in basis.dynamics.loop(loop.tag).chains]
+
+
+def benefit(comparison: Comparison) -> str:
+    """What a cascade gains on an upset at its innermost loop, in a sentence; empty where nothing is compared."""
+    entry = next((entry for entry in comparison.scenarios if entry.scenario.disturbances), None)
+    if comparison.single is None or entry is None or entry.single is None:
+        return ""
+    lead = comparison.dynamics.chain.lead
+    own = measured_range(lead)
+    unit = difference_unit(own)
+    peaks = [abs(found.metrics.peak_pct) * own.span / 100.0 for found in (entry.single, entry.tuned)]
+    ratio = entry.ratio("iae_pct_s")
+    integral = f", and the integral of the error to {number(100.0 * ratio)} %" if ratio is not None and ratio < 1 else ""
+    upset = upset_name(comparison, entry)
+    return (
+        f"{upset[0].upper()}{upset[1:]} moves {lead.tag} by {_with_unit(peaks[1], unit)} at most, against "
+        f"{_with_unit(peaks[0], unit)} with a single loop on {comparison.dynamics.chain.final_element.tag} that is "
+        f"tuned by SIMC to the same Ms{integral}."
+    )
 
 
 def _page(basis: Basis, scheme: Scheme, chains: list[ChainDynamics]) -> Page:
@@ -61,13 +98,14 @@ def section(basis: Basis, dynamics: ChainDynamics, *, several: bool) -> dict[str
     """View of one chain: heading, margins, comparison, figure and the assumptions beside them."""
     chain = dynamics.chain
     path = [level.loop.tag for level in reversed(chain.levels)] + [chain.final_element.tag]
-    comparison = compare(dynamics)
+    compared = basis.comparison(dynamics)
+    comparison = compared if isinstance(compared, Comparison) else None
     return {
         "heading": f"From {path[0]} to {path[-1]}" if several else "",
         "path": " → ".join(path),
         "margins": margin_rows(dynamics),
         "speed_ratio": number(dynamics.speed_ratio) if dynamics.speed_ratio is not None else "",
-        "unstable": comparison is None,
+        "not_simulated": compared.reason if isinstance(compared, NotSimulated) else "",
         "unit": measured_range(chain.lead).unit.display,
         "rows": metric_rows(comparison) if comparison else [],
         "single": comparison is not None and comparison.single is not None,
@@ -121,7 +159,7 @@ def upset_name(comparison: Comparison, entry: ScenarioResponses) -> str:
     loop = levels[moved.level].loop
     size = _step(moved.size_pct, measured_range(loop))
     integrating = known(loop.loop.process).integrating if known(loop.loop.process) else False  # type: ignore[union-attr]
-    return f"Load upset at {loop.tag} of {size}" + (" at its process input" if integrating else "")
+    return f"An upset of {size} at {loop.tag}" + (" at its process input" if integrating else "")
 
 
 def figure(comparison: Comparison) -> Drawing:
@@ -208,8 +246,12 @@ def _eu(percent: float, own: Range) -> str:
 
 
 def _step(percent: float, own: Range) -> str:
-    unit = "K" if own.unit.kind == "temperature" else own.unit.display
-    return _with_unit(percent * own.span / 100.0, unit)
+    return _with_unit(percent * own.span / 100.0, difference_unit(own))
+
+
+def difference_unit(own: Range) -> str:
+    """The unit in which a change of a measurement is printed: kelvin for degrees Celsius."""
+    return "K" if own.unit.symbol == "degC" else own.unit.display
 
 
 def _with_unit(value: float, unit: str) -> str:

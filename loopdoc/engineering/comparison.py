@@ -11,12 +11,14 @@ import math
 from dataclasses import dataclass
 from functools import reduce
 
+from loopdoc.engineering.clock import Unsuited, choose_clocks
 from loopdoc.engineering.dynamics import ChainDynamics
 from loopdoc.engineering.pid import Controller
 from loopdoc.engineering.process import in_series
 from loopdoc.engineering.simulation import Response, simulate
 from loopdoc.engineering.stages import Chain, Level, percent_of_range
 from loopdoc.engineering.structure import (
+    Disturbance,
     FinalElement,
     Scenario,
     cascade_structure,
@@ -24,6 +26,7 @@ from loopdoc.engineering.structure import (
     standard_scenarios,
 )
 from loopdoc.engineering.tuning import SensitivityTuning, simc_at_sensitivities
+from loopdoc.engineering.upsets import Step, declared_step, normal_value
 from loopdoc.register.model import known
 
 UPSET_PCT = 10.0
@@ -59,11 +62,21 @@ class Comparison:
     """Where each measurement stood before the upset, innermost first [% of range]."""
 
 
-def compare(dynamics: ChainDynamics) -> Comparison | None:
-    """Simulate one chain; None where its loops as tuned are not stable, so that there is no response to show."""
+@dataclass(frozen=True, slots=True)
+class NotSimulated:
+    """Why there is no time response to show."""
+
+    reason: str
+
+
+def compare(dynamics: ChainDynamics) -> Comparison | NotSimulated:
+    """Simulate one chain, and for a cascade the single loop in its place."""
     chain = dynamics.chain
-    if not all(margins.stable for margins in dynamics.margins):
-        return None
+    unstable = [
+        level.loop.tag for level, margins in zip(chain.levels, dynamics.margins, strict=True) if not margins.stable
+    ]
+    if unstable:
+        return NotSimulated(f"{unstable[0]} as tuned is not stable")
     start_pct = tuple(_start_pct(level) for level in chain.levels)
     structure = cascade_structure(chain.stages, final_element=_final_element(chain), start_pct=start_pct)
     structures = [structure]
@@ -80,7 +93,10 @@ def compare(dynamics: ChainDynamics) -> Comparison | None:
             setpoint_high_pct=lead.setpoint_high_pct,
         )
         structures.append(single_loop_structure(structure, controller))
-    scenarios = standard_scenarios(len(chain.levels), size_pct=UPSET_PCT)
+    clock = choose_clocks([structures])[0]
+    if isinstance(clock, Unsuited):
+        return NotSimulated(clock.reason)
+    scenarios = (*standard_scenarios(len(chain.levels), size_pct=UPSET_PCT), *declared_scenarios(chain))
     tuned, *others = simulate(structures, scenarios)
     alone = others[0] if others else (None,) * len(scenarios)
     return Comparison(
@@ -92,6 +108,19 @@ def compare(dynamics: ChainDynamics) -> Comparison | None:
         ),
         start_pct,
     )
+
+
+def declared_scenarios(chain: Chain) -> tuple[Scenario, ...]:
+    """The disturbances that the register declares for the loops of a chain, by name; those it gives in full."""
+    found: dict[str, Scenario] = {}
+    for level, (loop, route, stage) in enumerate((one.loop, one.route, one.stage) for one in chain.levels):
+        for written in loop.loop.disturbances.values():
+            step = declared_step(written, loop, route, stage.process)
+            if isinstance(step, Step) and step.size_pct:
+                # Two loops may use one name for what each of them meets.
+                name = written.name if written.name not in found else f"{written.name} ({loop.tag})"
+                found[name] = Scenario(name, disturbances=(Disturbance(level, step.size_pct, step.path),))
+    return tuple(found.values())
 
 
 def _single_loop(dynamics: ChainDynamics) -> SensitivityTuning | None:
@@ -110,24 +139,28 @@ def _single_loop(dynamics: ChainDynamics) -> SensitivityTuning | None:
 
 
 def _final_element(chain: Chain) -> FinalElement:
-    """The final element with its stroke time, in the middle of what the innermost controller may ask of it.
+    """The final element with its stroke time and backlash, in the middle of what the innermost controller may ask of it.
 
     The register does not say how far a valve is open in normal operation, and the process models are linear: what
     the start decides is only how far the limits are away.
     """
-    stroke = known(chain.final_element.stroke_time)
+    stroke, backlash = known(chain.final_element.stroke_time), known(chain.final_element.backlash)
     inner = chain.stages[0].controller
     middle = (inner.output_low_pct + inner.output_high_pct) / 2.0
-    return FinalElement(stroke_time_s=stroke.to("s") if stroke else 0.0, start_pct=min(100.0, max(0.0, middle)))
+    # `tuning-invalid` tells of a negative time, and of a backlash that leaves no travel.
+    return FinalElement(
+        stroke_time_s=max(0.0, stroke.to("s")) if stroke else 0.0,
+        backlash_pct=min(99.9, max(0.0, backlash.to("%"))) if backlash else 0.0,
+        start_pct=min(100.0, max(0.0, middle)),
+    )
 
 
 def _start_pct(level: Level) -> float:
     """Normal setpoint or normal measurement in percent of range; the middle where the register gives neither."""
     loop = level.loop.loop
-    measurement, operating = known(loop.measurement), known(loop.operating)
-    setpoint = known(level.loop.controller.setpoint)
+    measurement = known(loop.measurement)
     own = known(measurement.range) if measurement else None
-    normal = (known(setpoint.normal) if setpoint else None) or (known(operating.normal) if operating else None)
+    normal = normal_value(loop)
     if own is None or normal is None:
         return 50.0
     return min(100.0, max(0.0, percent_of_range(normal, own)))

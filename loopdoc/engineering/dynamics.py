@@ -10,7 +10,7 @@ from loopdoc.engineering.pairing import Plant
 from loopdoc.engineering.stages import Chain, Lacking, chains
 
 
-@dataclass(frozen=True, slots=True)
+@dataclass(frozen=True, slots=True, eq=False)
 class ChainDynamics:
     """One chain from a loop down to a final element, with its margins level by level."""
 

@@ -7,7 +7,7 @@ import math
 from collections.abc import Sequence
 from typing import Any
 
-from loopdoc.engineering.comparison import Comparison, ScenarioResponses
+from loopdoc.engineering.comparison import Comparison, NotSimulated, ScenarioResponses
 from loopdoc.engineering.dynamics import ChainDynamics, LoopDynamics
 from loopdoc.engineering.frequency import Margins
 from loopdoc.engineering.response_metrics import ResponseMetrics
@@ -18,7 +18,7 @@ from loopdoc.register.quantity import Range, display_number
 TUNING_CAUTION = "Try tuning changes only under supervision."
 
 
-def response_json(loop: LoopDynamics, comparisons: Sequence[Comparison | None]) -> str:
+def response_json(loop: LoopDynamics, comparisons: Sequence[Comparison | NotSimulated]) -> str:
     """Margins, speed ratio and scenarios of a loop; engineering units and seconds. One comparison for each chain."""
     document: dict[str, Any] = {"tag": loop.tag}
     if loop.reason:
@@ -30,7 +30,7 @@ def response_json(loop: LoopDynamics, comparisons: Sequence[Comparison | None]) 
     return json.dumps(document, ensure_ascii=False, indent=2, allow_nan=False) + "\n"
 
 
-def _chain_object(dynamics: ChainDynamics, comparison: Comparison | None) -> dict[str, Any]:
+def _chain_object(dynamics: ChainDynamics, comparison: Comparison | NotSimulated) -> dict[str, Any]:
     margins = [_margins_object(found) for found in dynamics.margins]
     levels = [level.loop.tag for level in dynamics.chain.levels]
     found: dict[str, Any] = {"levels": levels, "final_element": dynamics.chain.final_element.tag}
@@ -41,8 +41,8 @@ def _chain_object(dynamics: ChainDynamics, comparison: Comparison | None) -> dic
         found["margins_by_level"] = dict(zip(levels, margins, strict=True))
     own = measured_range(dynamics.chain.lead)
     found["unit"] = own.unit.symbol
-    if comparison is None:
-        found["not_simulated"] = "the loop as tuned is not stable"
+    if isinstance(comparison, NotSimulated):
+        found["not_simulated"] = comparison.reason
     else:
         found["scenarios"] = {
             entry.scenario.name: _scenario_object(entry, own, single=len(levels) == 1) for entry in comparison.scenarios
@@ -86,7 +86,7 @@ def _number(value: float | None) -> float | None:
     return None if value is None or not math.isfinite(value) else float(f"{value:.6g}")
 
 
-def response_text(loop: LoopDynamics, comparisons: Sequence[Comparison | None]) -> str:
+def response_text(loop: LoopDynamics, comparisons: Sequence[Comparison | NotSimulated]) -> str:
     """The same for reading."""
     if loop.reason:
         return f"{loop.tag}: not calculated: {loop.reason}.\n{CAUTION}\n"
@@ -98,7 +98,7 @@ def response_text(loop: LoopDynamics, comparisons: Sequence[Comparison | None]) 
     return "\n".join(lines) + "\n"
 
 
-def _chain_lines(dynamics: ChainDynamics, comparison: Comparison | None) -> list[str]:
+def _chain_lines(dynamics: ChainDynamics, comparison: Comparison | NotSimulated) -> list[str]:
     chain = dynamics.chain
     path = " > ".join([level.loop.tag for level in reversed(chain.levels)] + [chain.final_element.tag])
     lines = [
@@ -113,8 +113,8 @@ def _chain_lines(dynamics: ChainDynamics, comparison: Comparison | None) -> list
         )
     if dynamics.speed_ratio is not None:
         lines.append(f"speed ratio of the crossovers, secondary over primary: {_shown(dynamics.speed_ratio)}")
-    if comparison is None:
-        return [*lines, "no time responses: the loop as tuned is not stable"]
+    if isinstance(comparison, NotSimulated):
+        return [*lines, f"no time responses: {comparison.reason}"]
     return [*lines, "", *_scenario_lines(comparison)]
 
 
