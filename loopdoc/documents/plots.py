@@ -35,7 +35,7 @@ class Curve:
 
     label: str
     style: str
-    """solid, dashed or dotted."""
+    """solid, dashed, dotted, or points that no line joins."""
     x: NDArray[np.float64]
     y: NDArray[np.float64]
 
@@ -154,13 +154,19 @@ def _draw(figure: Figure, drawing: Drawing) -> None:
 
 
 def _draw_panel(axes: Any, panel: Panel, *, last_row: bool) -> None:
-    styles = {"solid": ("-", 1.1, "#000000"), "dashed": ("--", 0.9, "#444444"), "dotted": (":", 0.8, "#000000")}
+    styles = {
+        "solid": ("-", 1.1, "#000000"),
+        "dashed": ("--", 0.9, "#444444"),
+        "dotted": (":", 0.8, "#000000"),
+        "points": ("none", 0.0, "#777777"),
+    }
     for curve in panel.curves:
         line, width, colour = styles[curve.style]
         step = max(1, len(curve.x) // POINTS_DRAWN)
         axes.plot(
-            curve.x[::step], curve.y[::step], linestyle=line, linewidth=width, color=colour, label=curve.label
-        )
+            curve.x[::step], curve.y[::step], linestyle=line, linewidth=width, color=colour, label=curve.label,
+            marker="." if curve.style == "points" else "none", markersize=2.5,
+        )  # fmt: skip
     low, high = axes.get_ylim()
     for limit in panel.limits:
         # A limit far off would flatten the curves; it is named in the caption's table instead.
