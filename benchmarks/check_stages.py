@@ -58,8 +58,10 @@ def main() -> None:
         rules_s, result = median_s(lambda: check(Plant(loaded.register), loaded.faults))
         text_s, _ = median_s(lambda: as_text(result))
 
-    print(f"{len(loaded.register.loops)} loops, {len(contents)} files, {size_mb:.1f} MB, {len(result.findings)} findings")
-    print(f"read text with places      {read_s:8.2f} s    floor: bare C parser, no places, {floor_s:.2f} s ({read_s / floor_s:.2f} times)")
+    size = f"{len(loaded.register.loops)} loops, {len(contents)} files, {size_mb:.1f} MB"
+    print(f"{size}, {len(result.findings)} findings")
+    floor = f"floor: bare C parser, no places, {floor_s:.2f} s ({read_s / floor_s:.2f} times)"
+    print(f"read text with places      {read_s:8.2f} s    {floor}")
     print(f"schema                     {schema_s:8.2f} s")
     print(f"model                      {load_s - read_s - schema_s:8.2f} s    (load less the two above)")
     print(f"pairing and rules          {rules_s:8.2f} s    {1e6 * rules_s / max(1, result.checked):.0f} us a check")

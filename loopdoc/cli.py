@@ -49,7 +49,8 @@ def _parser() -> argparse.ArgumentParser:
     parser = argparse.ArgumentParser(
         prog="loopdoc",
         description=(
-            "Checks a plant's loop register as a reviewer would, does the control calculations, and issues the documents."
+            "Checks a plant's loop register as a reviewer would, does the control calculations, "
+            "and issues the documents."
         ),
     )
     parser.add_argument("--version", action="version", version=f"loopdoc {__version__}")

@@ -66,7 +66,9 @@ def benefit(comparison: Comparison) -> str:
     unit = difference_unit(own)
     peaks = [abs(found.metrics.peak_pct) * own.span / 100.0 for found in (entry.single, entry.tuned)]
     ratio = entry.ratio("iae_pct_s")
-    integral = f", and the integral of the error to {number(100.0 * ratio)} %" if ratio is not None and ratio < 1 else ""
+    integral = ""
+    if ratio is not None and ratio < 1:
+        integral = f", and the integral of the error to {number(100.0 * ratio)} %"
     upset = upset_name(comparison, entry)
     return (
         f"{upset[0].upper()}{upset[1:]} moves {lead.tag} by {_with_unit(peaks[1], unit)} at most, against "
@@ -184,9 +186,8 @@ def figure(comparison: Comparison) -> Drawing:
             if response is not None:
                 curves.append(Curve(name, style, *_xy(response, _eu_curve(response.measurement_pct[-1], own), divisor)))
                 valves.append(Curve(name, style, *_xy(response, response.travel_pct, divisor)))
-        above.append(
-            Panel(_short_name(comparison, entry), "", f"{lead.tag}, {own.unit.display}" if not above else "", tuple(curves), alarms)
-        )
+        ordinate = f"{lead.tag}, {own.unit.display}" if not above else ""
+        above.append(Panel(_short_name(comparison, entry), "", ordinate, tuple(curves), alarms))
         below.append(
             Panel("", f"time, {time_unit}", f"{chain.final_element.tag}, %" if not below else "", tuple(valves))
         )
@@ -207,12 +208,14 @@ def caption(comparison: Comparison) -> str:
     if comparison.single is not None:
         settings = comparison.single.settings
         parts.append(
-            f"Single loop: one controller on {chain.final_element.tag} in place of the cascade, tuned by SIMC to the same "
-            f"maximum sensitivity, Ms {number(comparison.single.max_sensitivity)} (gain {number(abs(settings.gain))}, "
+            f"Single loop: one controller on {chain.final_element.tag} in place of the cascade, tuned by SIMC "
+            f"to the same maximum sensitivity, Ms {number(comparison.single.max_sensitivity)} (gain {number(abs(settings.gain))}, "
             f"reset {_duration(settings.reset_s)})."
         )
     elif len(chain.levels) > 1:
-        parts.append("No single loop on the same final element reaches the same maximum sensitivity by SIMC; none is drawn.")
+        parts.append(
+            "No single loop on the same final element reaches the same maximum sensitivity by SIMC; none is drawn."
+        )
     return " ".join(parts)
 
 
