@@ -124,6 +124,31 @@ def test_disturbance_of_an_integrating_process_is_a_load() -> None:
     np.testing.assert_allclose(deviation(response[0][0]), 0.1 * response[0][0].time_s, atol=1e-12)
 
 
+def test_a_disturbance_may_have_a_path_of_its_own() -> None:
+    structure = ControlStructure((Process(3.0, (4.0,), 2.0), Process(2.0, (20.0, 5.0), 4.0)), (None, None), VALVE)
+    own = Disturbance(1, 10.0, Process(1.0, (7.0,), 30.0))
+    load = Disturbance(1, -5.0, Process(-0.02, integrating=True))
+    scenarios = [Scenario("own", disturbances=(own,)), Scenario("both", disturbances=(own, load))]
+    one, both = simulate([structure], scenarios, clock=Clock(0.1, 2000))[0]
+    # The dead time of a path would only postpone the upset: the time of the response begins without it.
+    expected = 10.0 * (1.0 - np.exp(-one.time_s / 7.0))
+    np.testing.assert_allclose(deviation(one), expected, atol=1e-11)
+    np.testing.assert_allclose(deviation(both), expected + 0.1 * one.time_s, atol=1e-10)
+
+
+def test_a_slow_disturbance_is_followed_until_it_has_come() -> None:
+    stage = LoopStage(Controller(1.0, 5.0, interval_s=0.5, **WIDE), Process(1.0, (4.0,), 1.0))
+    structure = cascade_structure([stage], final_element=VALVE)
+    slow = Scenario("slow", disturbances=(Disturbance(0, 10.0, Process(1.0, (300.0,))),))
+    response = simulate([structure], [slow])[0][0]
+    # Against integral action a ramp of 10/300 % a second stands off by slope Ti/K, less what has died out.
+    assert response.time_s[-1] >= 1800.0
+    assert response.metrics.settling_s < 1800.0
+    late = response.time_s > 60.0
+    expected = 10.0 / 300.0 * np.exp(-response.time_s[late] / 300.0) * 5.0
+    np.testing.assert_allclose(deviation(response)[late], expected, rtol=0.02, atol=1e-4)
+
+
 # --- closed loops --------------------------------------------------------------------------------
 
 

@@ -150,3 +150,8 @@ def choose_clocks(groups: Sequence[Sequence[ControlStructure]]) -> tuple[Clock |
         refused[position] if position in refused else _choose_for(group, margins)
         for position, group in enumerate(groups)
     )
+
+
+def lasting(clock: Clock, least_s: float) -> Clock:
+    """Return a clock of the same step that lasts at least so long, within the most steps there may be."""
+    return Clock(clock.step_s, max(clock.steps, _round_up(least_s / clock.step_s)))

@@ -30,7 +30,7 @@ from enum import StrEnum
 from functools import cached_property
 
 from loopdoc.engineering.direction import Undecided
-from loopdoc.engineering.pairing import ControlledLoop, LoopAlarm, Plant, Trip
+from loopdoc.engineering.pairing import ControlledLoop, LoopAlarm, Plant, Trip, measured_quantity
 from loopdoc.engineering.spreading import (
     PASSIVE_MODES,
     Direction,
@@ -176,7 +176,7 @@ class FailureAnalysis:
         own = transmitter_of(loop)
         return tuple(
             other
-            for other in self._by_quantity.get(_quantity(loop) or ("", "", ""), ())
+            for other in self._by_quantity.get(measured_quantity(loop) or ("", "", ""), ())
             if other is not loop and transmitter_of(other) not in (None, own)
         )
 
@@ -193,7 +193,7 @@ class FailureAnalysis:
     def _by_quantity(self) -> dict[tuple[str, str, str], list[Loop]]:
         found: dict[tuple[str, str, str], list[Loop]] = {}
         for loop in self.plant.register.loops.values():
-            key = _quantity(loop)
+            key = measured_quantity(loop)
             if key is not None:
                 found.setdefault(key, []).append(loop)
         return found
@@ -436,15 +436,6 @@ class _Effects:
                 if known(interlock.actions[move.element.tag].position) in back and not shares:
                     found[interlock.tag] = interlock
         return tuple(found.values())
-
-
-def _quantity(loop: Loop) -> tuple[str, str, str] | None:
-    measurement = known(loop.measurement)
-    variable = known(measurement.variable) if measurement else None
-    unit, service = known(loop.unit), known(loop.service)
-    if variable is None or unit is None or service is None:
-        return None
-    return unit, variable, service.partition(",")[0].strip().casefold()
 
 
 def _forced(controlled: ControlledLoop, mode: str, written: str) -> Direction:

@@ -23,7 +23,7 @@ from loopdoc.register.model import (
     Register,
     known,
 )
-from loopdoc.register.quantity import Range
+from loopdoc.register.quantity import Quantity, Range
 
 
 @dataclass(frozen=True, slots=True)
@@ -92,6 +92,26 @@ class Scheme:
     def lead(self) -> Loop:
         """The loop after which the scheme is named: the outermost."""
         return self.loops[0]
+
+
+def measured_quantity(part: Loop | Instrument) -> tuple[str, str, str] | None:
+    """What a loop or instrument measures: unit, variable, and service up to its first comma.
+
+    `Drum level` and `Drum level, second transmitter` are one quantity. None where the register does not say.
+    """
+    measurement = known(part.measurement)
+    variable = known(measurement.variable) if measurement else None
+    unit, service = known(part.unit), known(part.service)
+    if variable is None or unit is None or service is None:
+        return None
+    return unit, variable, service.partition(",")[0].strip().casefold()
+
+
+def normal_value(loop: Loop) -> Quantity | None:
+    """Where a measurement stands in normal operation: its normal setpoint, or its normal operating value."""
+    controller, operating = known(loop.controller), known(loop.operating)
+    setpoint = known(controller.setpoint) if controller else None
+    return (known(setpoint.normal) if setpoint else None) or (known(operating.normal) if operating else None)
 
 
 class Plant:

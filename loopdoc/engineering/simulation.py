@@ -10,7 +10,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from loopdoc.engineering.clock import HORIZON_PARTS, Clock, Unsuited, choose_clocks
+from loopdoc.engineering.clock import HORIZON_PARTS, Clock, Unsuited, choose_clocks, lasting
 from loopdoc.engineering.linear_blocks import Run
 from loopdoc.engineering.process import FloatArray, Process, state_space, transition
 from loopdoc.engineering.response_metrics import ResponseMetrics, read_metrics
@@ -31,6 +31,8 @@ _BATCH_NUMBERS = 12_000_000
 _FEW = 24
 # A run is cut short when nothing moved by more than this share of its peak for an eighth of the horizon.
 _AT_REST = 1e-3
+# A step through a lag is within 0.3 % of its end after so many times the lag.
+_LAGS_TO_ARRIVE = 6.0
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -77,28 +79,34 @@ class _Column:
 def _disturbances(
     columns: Sequence[_Column], level: int, step_s: FloatArray, steps: int
 ) -> FloatArray | None:
-    """(steps + 1, n) disturbance at the measurement of a level [%]: a step through the lags of its process."""
-    sizes = np.array(
-        [
-            math.fsum(d.size_pct for d in column.scenario.disturbances if d.level == level)
-            for column in columns
-        ]
-    )
-    moved = np.nonzero(sizes)[0].tolist()
-    if not moved:
+    """(steps + 1, n) disturbance at the measurement of a level [%]: steps through the path of each."""
+    by_order: dict[int, list[tuple[int, Process, float]]] = defaultdict(list)
+    for position, column in enumerate(columns):
+        for disturbance in column.scenario.disturbances:
+            if disturbance.level == level and disturbance.size_pct:
+                path = disturbance.path_through(column.structure.processes[level])
+                by_order[path.order].append((position, path, disturbance.size_pct))
+    if not by_order:
         return None
-    processes = [columns[i].structure.processes[level] for i in moved]
-    paths = [
-        Process(gain=1.0, lags_s=process.lags_s, integrating=process.integrating) for process in processes
-    ]
-    slopes = np.array([abs(process.gain) if process.integrating else 1.0 for process in processes])
+    signal = np.zeros((steps + 1, len(columns)))
+    for members in by_order.values():
+        positions = [position for position, _, _ in members]
+        sizes = np.array([path.gain * size for _, path, size in members])
+        moved = _unit_steps([path for _, path, _ in members], step_s[positions], steps) * sizes
+        for position, one in zip(positions, moved.T, strict=True):  # a column may have several
+            signal[:, position] += one
+    return signal
+
+
+def _unit_steps(paths: Sequence[Process], step_s: FloatArray, steps: int) -> FloatArray:
+    """(steps + 1, n) response to a unit step of n paths of equal order, per unit of their gains."""
     system = state_space(paths)
-    advance, held, _ = transition(system, step_s[moved])
+    advance, held, _ = transition(system, step_s)
     order = held.shape[1]
     # With the input as a last state that stays at 1, each doubling takes all samples so far further on.
-    further = np.zeros((len(moved), order + 1, order + 1))
+    further = np.zeros((len(paths), order + 1, order + 1))
     further[:, :order, :order], further[:, :order, order], further[:, order, order] = advance, held, 1.0
-    states = [np.zeros((1, len(moved))) for _ in range(order)] + [np.ones((1, len(moved)))]
+    states = [np.zeros((1, len(paths))) for _ in range(order)] + [np.ones((1, len(paths)))]
     while len(states[0]) <= steps:
         later = [
             sum((further[:, i, j] * states[j] for j in range(order + 1)), np.zeros_like(states[0]))
@@ -106,12 +114,10 @@ def _disturbances(
         ]
         states = [np.concatenate([now, then]) for now, then in zip(states, later, strict=True)]
         further = further @ further
-    path = np.broadcast_to(system.d, (steps + 1, len(moved)))
+    response = np.broadcast_to(system.d, (steps + 1, len(paths)))
     for i in range(order):
-        path = path + system.c[:, i] * states[i][: steps + 1]
-    signal = np.zeros((steps + 1, len(columns)))
-    signal[:, moved] = path * (slopes * sizes[moved])
-    return signal
+        response = response + system.c[:, i] * states[i][: steps + 1]
+    return response
 
 
 def _engine(columns: Sequence[_Column], steps: int, *, keep_signals: bool) -> Engine:
@@ -287,6 +293,12 @@ def _columns(
     ]
 
 
+def _slowest_disturbance_s(scenarios: Sequence[Scenario]) -> float:
+    """How long disturbances with a path of their own take to come through in full [s]."""
+    paths = [d.path for scenario in scenarios for d in scenario.disturbances if d.path is not None]
+    return max((_LAGS_TO_ARRIVE * path.lag_sum_s for path in paths), default=0.0)
+
+
 def _response(column: _Column, traces: Traces, position: int, metrics: ResponseMetrics) -> Response:
     """One column of the signals as a response, the start added."""
     structure = column.structure
@@ -354,6 +366,8 @@ def simulate(
     chosen = choose_clocks([structures])[0] if clock is None else clock
     if isinstance(chosen, Unsuited):
         raise ValueError(chosen.reason)
+    if clock is None:
+        chosen = lasting(chosen, _slowest_disturbance_s(scenarios))
     found: dict[tuple[int, int, int], Response] = {}
     columns = _columns(0, structures, scenarios, chosen)
     runs = []
@@ -396,7 +410,8 @@ def simulate_metrics(
     columns = []
     for group, ((structures, scenarios), clock) in enumerate(zip(groups, clocks, strict=True)):
         if isinstance(clock, Clock):
-            columns += _columns(group, structures, scenarios, clock)
+            chosen = lasting(clock, _slowest_disturbance_s(scenarios))
+            columns += _columns(group, structures, scenarios, chosen)
     found: dict[tuple[int, int, int], ResponseMetrics] = {}
     widest = max(
         (len(structure.processes) for structures, _ in groups for structure in structures), default=1

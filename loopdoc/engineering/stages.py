@@ -9,7 +9,7 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass
-from typing import TypeVar
+from typing import TypeAlias, TypeVar
 
 from loopdoc.engineering.direction import Undecided, element_sign, process_on
 from loopdoc.engineering.frequency import LoopStage
@@ -48,6 +48,10 @@ class _Lacking(Exception):
     """Carries the reason out of the steps below; never leaves this module."""
 
 
+Way: TypeAlias = tuple[tuple[ControlledLoop, Route], ...]
+"""Loops with the route that each takes, innermost first."""
+
+
 @dataclass(frozen=True, slots=True)
 class Level:
     """One level of a chain: the loop, the route its output takes, and both as numbers."""
@@ -82,27 +86,45 @@ class Chain:
 
 def chains(plant: Plant, lead: ControlledLoop) -> tuple[Chain, ...] | Lacking:
     """Every chain from a loop down to a final element: one, or one for each branch of a split range."""
-    if not lead.routes:
-        return Lacking(f"the output of {lead.tag} leads nowhere")
+    ways = ways_down(plant, lead)
+    if isinstance(ways, Lacking):
+        return ways
     try:
-        return tuple(Chain(levels) for levels in _below(plant, lead, ()))
+        return tuple(
+            Chain(
+                tuple(
+                    Level(loop, route, LoopStage(_controller(plant, loop, route), _process(loop, route)))
+                    for loop, route in way
+                )
+            )
+            for way in ways
+        )
     except _Lacking as lacking:
         return Lacking(str(lacking))
 
 
-def _below(plant: Plant, loop: ControlledLoop, above: tuple[str, ...]) -> list[tuple[Level, ...]]:
+def ways_down(plant: Plant, lead: ControlledLoop) -> tuple[Way, ...] | Lacking:
+    """The loops and routes from a loop down to each final element that it moves, innermost first."""
+    if not lead.routes:
+        return Lacking(f"the output of {lead.tag} leads nowhere")
+    try:
+        return tuple(_below(plant, lead, ()))
+    except _Lacking as lacking:
+        return Lacking(str(lacking))
+
+
+def _below(plant: Plant, loop: ControlledLoop, above: tuple[str, ...]) -> list[Way]:
     if loop.tag in above:
         raise _Lacking(f"{loop.tag} commands itself")
-    found: list[tuple[Level, ...]] = []
+    found: list[Way] = []
     for route in loop.routes:
-        level = Level(loop, route, LoopStage(_controller(plant, loop, route), _process(loop, route)))
         if isinstance(route.end, FinalElement):
-            found.append((level,))
+            found.append(((loop, route),))
             continue
         secondary = plant.controlled.get(route.end.tag)
         if secondary is None or not secondary.routes:
             raise _Lacking(f"{route.end.tag} has no controller with an output")
-        found.extend((*inner, level) for inner in _below(plant, secondary, (*above, loop.tag)))
+        found.extend((*inner, (loop, route)) for inner in _below(plant, secondary, (*above, loop.tag)))
     return found
 
 
@@ -266,32 +288,61 @@ def _rescaled(controller: Controller, *, at_0: float, at_100: float) -> Controll
 # ---------------------------------------------------------------- process
 
 
+def process_along(loop: ControlledLoop, route: Route) -> Process | Lacking:
+    """The process of a loop on one route, from percent of what it commands to percent of its own range."""
+    try:
+        return _process(loop, route)
+    except _Lacking as lacking:
+        return Lacking(str(lacking))
+
+
+def process_of_indicator(loop: model.Loop) -> Process | Lacking:
+    """The process of a loop without controller, from a hundredth of the unit of its input to percent of its range."""
+    written = known(loop.process)
+    if written is None:
+        return Lacking(f"{loop.tag} has no `process`")
+    try:
+        gain = _need(written.gain, f"the process gain of {loop.tag}")
+        return _model(loop, written, gain.denominator.symbol, 1.0)
+    except _Lacking as lacking:
+        return Lacking(str(lacking))
+
+
 def _process(loop: ControlledLoop, route: Route) -> Process:
-    tag = loop.tag
-    held = loop.loop.process
-    if isinstance(held, Hold):
-        raise _Lacking(f"the process of {tag} is on hold")
+    if isinstance(loop.loop.process, Hold):
+        raise _Lacking(f"the process of {loop.tag} is on hold")
     written = process_on(loop, route)
     if written is None:
-        raise _Lacking(f"{tag} has no `process` for {route.end.tag}")
-    gain = _need(written.gain, f"the process gain of {tag}")
-    measurement = _need(loop.loop.measurement, f"the measurement of {tag}")
-    own = _need(measurement.range, f"the range of {tag}")
+        raise _Lacking(f"{loop.tag} has no `process` for {route.end.tag}")
+    commanded_unit, commanded_span = commanded(route)
+    return _model(loop.loop, written, commanded_unit, commanded_span)
+
+
+def commanded(route: Route) -> tuple[str, float]:
+    """Unit and span of what a route commands: percent of opening, or the secondary's range."""
     if isinstance(route.end, FinalElement):
-        commanded_unit, commanded_span = "%", 100.0
-    else:
-        below = _need(route.end.measurement, f"the measurement of {route.end.tag}")
-        range_ = _need(below.range, f"the range of {route.end.tag}")
-        commanded_unit, commanded_span = range_.unit.symbol, range_.span
+        return "%", 100.0
+    below = _need(route.end.measurement, f"the measurement of {route.end.tag}")
+    range_ = _need(below.range, f"the range of {route.end.tag}")
+    return range_.unit.symbol, range_.span
+
+
+def _model(loop: model.Loop, written: model.Process, commanded_unit: str, commanded_span: float) -> Process:
+    tag = loop.tag
+    gain = _need(written.gain, f"the process gain of {tag}")
+    measurement = _need(loop.measurement, f"the measurement of {tag}")
+    own = _need(measurement.range, f"the range of {tag}")
     if isinstance(written.lags, Hold):
         raise _Lacking(f"the lag of {tag} is on hold")
     _need_not_held(written.dead_time, f"the dead time of {tag}")
+    lead = _need_not_held(written.lead, f"the lead of {tag}")
     try:
         per_unit = gain.in_units(own.unit.symbol, commanded_unit) * commanded_span / own.span
         return Process(
             gain=per_unit,
             lags_s=tuple(lag.to("s") for lag in written.lags),
             dead_time_s=_seconds(written.dead_time),
+            leads_s=(lead.to("s"),) if lead and lead.value else (),
             integrating=written.integrating,
         )
     except (ValueError, ZeroDivisionError) as error:

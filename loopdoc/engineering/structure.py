@@ -7,7 +7,7 @@ same final element, on none a loop in manual. Upsets enter all of them in the sa
 
 import math
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 from loopdoc.engineering.frequency import LoopStage
 from loopdoc.engineering.pid import Controller
@@ -85,13 +85,22 @@ class Disturbance:
     """A step that reaches the measurement of a level through the lags of that level's own process.
 
     Through a process that settles it ends at its full size; through an integrating one it is a load
-    of that size at the process input, and the measurement ramps.
+    of that size at the process input, and the measurement ramps. It may have a path of its own instead.
     """
 
     level: int
     """Level whose measurement it moves, 0 the innermost."""
     size_pct: float
     """Size [% of span]."""
+    path: Process | None = None
+    """From the step to the measurement; a dead time would only postpone the upset and is left out."""
+
+    def path_through(self, process: Process) -> Process:
+        """Return the path to the measurement of a level with the given process, without dead time."""
+        if self.path is not None:
+            return replace(self.path, dead_time_s=0.0)
+        gain = abs(process.gain) if process.integrating else 1.0
+        return Process(gain=gain, lags_s=process.lags_s, integrating=process.integrating)
 
 
 @dataclass(frozen=True, slots=True)
