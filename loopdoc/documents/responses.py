@@ -209,8 +209,8 @@ def caption(comparison: Comparison) -> str:
         settings = comparison.single.settings
         parts.append(
             f"Single loop: one controller on {chain.final_element.tag} in place of the cascade, tuned by SIMC "
-            f"to the same maximum sensitivity, Ms {number(comparison.single.max_sensitivity)} (gain {number(abs(settings.gain))}, "
-            f"reset {_duration(settings.reset_s)})."
+            f"to the same maximum sensitivity, Ms {number(comparison.single.max_sensitivity)} "
+            f"(gain {number(abs(settings.gain))}, reset {_duration(settings.reset_s)})."
         )
     elif len(chain.levels) > 1:
         parts.append(
