@@ -31,7 +31,7 @@ from loopdoc.register.model import (
     Setpoint,
     known,
 )
-from loopdoc.register.quantity import Quantity, Range, display_number
+from loopdoc.register.quantity import Quantity, QuantityError, Range, display_number, parse_quantity
 
 Pair = tuple[str, str]
 """A label and its value."""
@@ -199,9 +199,18 @@ def _bad_measurement(controller: Controller) -> str:
         return cell(controller.on_bad_measurement)
     parts = [] if bad.mode is None else [cell(bad.mode)]
     if bad.output is not None:
-        output = "hold output" if bad.output == "hold" else cell(bad.output)
-        parts.append(output)
+        parts.append(_forced_output(bad.output))
     return joined(parts)
+
+
+def _forced_output(output: str | Hold) -> str:
+    """`hold`, or a quantity, which the register keeps as it is written."""
+    if output == "hold":
+        return "hold output"
+    try:
+        return cell(output) if isinstance(output, Hold) else shown(parse_quantity(output))
+    except QuantityError:
+        return cell(output)
 
 
 def _sign(controlled: ControlledLoop) -> str:
@@ -430,8 +439,8 @@ def expected_table(plant: Plant, loop: Loop) -> Table | None:
     return Table("Expected at the loop check", columns, rows) if rows else None
 
 
-def revision_table(revisions: Iterable[RevisionRow]) -> Table:
-    """Revisions, the latest first."""
+def revision_table(revisions: Iterable[RevisionRow]) -> Table | None:
+    """Revisions, the latest first; None where the register has none."""
     rows = tuple(
         (
             revision.code,
@@ -453,7 +462,7 @@ def revision_table(revisions: Iterable[RevisionRow]) -> Table:
         Column("Checked by", 12),
         Column("Approved by", 12),
     )
-    return Table("Revisions", columns, rows)
+    return Table("Revisions", columns, rows) if rows else None
 
 
 # ---------------------------------------------------------------- holds

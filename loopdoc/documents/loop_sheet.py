@@ -51,6 +51,9 @@ MOST_FINDINGS = 4
 LEGIBLE = DENSITIES[:2]
 """Type sizes at which a page still takes the figure of the response."""
 
+OVERFULL = "overfull"
+"""Class of a sheet that no type size brings onto one page: it runs on, clear of a high title block."""
+
 COLUMN_WIDTH = 0.493 * PAGE_WIDTH
 """Of each of the two columns below the drawing [pt]."""
 LABEL_SHARE = 0.21
@@ -86,11 +89,12 @@ class SheetView:
     points: tuple[Point, ...]
     more_points: str
     holds: tuple[str, ...]
-    revisions: Table
+    revisions: Table | None
     response: str = ""
     """Figure of the setpoint response; empty where there is none or no room."""
     response_words: str = ""
-    density: str = DENSITIES[-1].name
+    density: str = ""
+    """Classes of the page."""
 
 
 def loop_sheets(basis: Basis) -> Iterator[Page]:
@@ -241,7 +245,7 @@ def _fitted(basis: Basis, loop: Loop, view: SheetView, height: float) -> SheetVi
     for density in DENSITIES:
         if sheet_height(view, density.size) <= height:
             return replace(view, density=density.name)
-    return view
+    return replace(view, density=f"{DENSITIES[-1].name} {OVERFULL}")
 
 
 def sheet_height(view: SheetView, size: float) -> float:
@@ -253,7 +257,7 @@ def sheet_height(view: SheetView, size: float) -> float:
     height += table_height([[(value, share, False) for _, value in view.facts]], size, label=True)
     height += 1.2 * MM + view.drawing_height
     height += max(_left_height(view, size), sum(_panel_height(panel, size) for panel in view.controller))
-    for table in (*view.tables, view.revisions):
+    for table in (*view.tables, *((view.revisions,) if view.revisions else ())):
         height += 1.5 * MM + _listed_height(table, PAGE_WIDTH, size)
     lines = [f"{point.kind} ({point.rule}): {point.text}" for point in view.points]
     lines += [*filter(None, (view.more_points,)), *(f"HOLD    {line}" for line in view.holds)]
