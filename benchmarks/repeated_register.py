@@ -16,7 +16,9 @@ def write_repeated(folder: Path, copies: int) -> None:
     root = (DEMO / "register.yaml").read_text(encoding="utf-8")
     head, _, units = root.partition("units:\n")
     body, separator, rest = units.partition("policy:")
-    numbers = [{unit: f"{100 + 3 * copy + index}" for index, unit in enumerate(_DEMO_UNITS)} for copy in range(copies)]
+    numbers = [
+        {unit: f"{100 + 3 * copy + index}" for index, unit in enumerate(_DEMO_UNITS)} for copy in range(copies)
+    ]
     folder.mkdir(parents=True, exist_ok=True)
     (folder / "units").mkdir(exist_ok=True)
     repeated = "".join(_renumbered(body, by_unit) for by_unit in numbers)

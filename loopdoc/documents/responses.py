@@ -182,9 +182,14 @@ def figure(comparison: Comparison) -> Drawing:
         shown_names = ("cascade", "single loop") if entry.single else ("as tuned", "")
         curves = [Curve("setpoint", "dotted", *_xy(entry.tuned, _setpoint(entry.tuned, own), divisor))]
         valves = []
-        for name, style, response in ((shown_names[0], "solid", entry.tuned), (shown_names[1], "dashed", entry.single)):
+        for name, style, response in (
+            (shown_names[0], "solid", entry.tuned),
+            (shown_names[1], "dashed", entry.single),
+        ):
             if response is not None:
-                curves.append(Curve(name, style, *_xy(response, _eu_curve(response.measurement_pct[-1], own), divisor)))
+                curves.append(
+                    Curve(name, style, *_xy(response, _eu_curve(response.measurement_pct[-1], own), divisor))
+                )
                 valves.append(Curve(name, style, *_xy(response, response.travel_pct, divisor)))
         ordinate = f"{lead.tag}, {own.unit.display}" if not above else ""
         above.append(Panel(_short_name(comparison, entry), "", ordinate, tuple(curves), alarms))
