@@ -8,15 +8,19 @@ the measure of robustness: K. J. Astrom, T. Hagglund, Advanced PID Control, ISA 
 from __future__ import annotations
 
 import math
+from collections.abc import Sequence
 from dataclasses import dataclass
 from functools import reduce
 
+from loopdoc.engineering.attenuation import Rival, error_ratios
 from loopdoc.engineering.clock import Unsuited, choose_clocks
 from loopdoc.engineering.dynamics import ChainDynamics
+from loopdoc.engineering.frequency import LoopStage
+from loopdoc.engineering.pairing import normal_value
 from loopdoc.engineering.pid import Controller
-from loopdoc.engineering.process import in_series
+from loopdoc.engineering.process import Process, in_series
 from loopdoc.engineering.simulation import Response, simulate
-from loopdoc.engineering.stages import Chain, Level, percent_of_range
+from loopdoc.engineering.stages import Chain, Lacking, Level, percent_of_range
 from loopdoc.engineering.structure import (
     Disturbance,
     FinalElement,
@@ -26,7 +30,7 @@ from loopdoc.engineering.structure import (
     standard_scenarios,
 )
 from loopdoc.engineering.tuning import SensitivityTuning, simc_at_sensitivities
-from loopdoc.engineering.upsets import Step, declared_step, normal_value
+from loopdoc.engineering.upsets import Step, declared_step
 from loopdoc.register.model import known
 
 UPSET_PCT = 10.0
@@ -80,19 +84,9 @@ def compare(dynamics: ChainDynamics) -> Comparison | NotSimulated:
     start_pct = tuple(_start_pct(level) for level in chain.levels)
     structure = cascade_structure(chain.stages, final_element=_final_element(chain), start_pct=start_pct)
     structures = [structure]
-    single = _single_loop(dynamics) if len(chain.levels) > 1 else None
+    single = _single_loops([dynamics])[0] if len(chain.levels) > 1 else None
     if single is not None:
-        lead = chain.stages[-1].controller
-        controller = Controller(
-            single.settings.gain,
-            single.settings.reset_s,
-            single.settings.rate_s,
-            interval_s=lead.interval_s,
-            measurement_filter_s=lead.measurement_filter_s,
-            setpoint_low_pct=lead.setpoint_low_pct,
-            setpoint_high_pct=lead.setpoint_high_pct,
-        )
-        structures.append(single_loop_structure(structure, controller))
+        structures.append(single_loop_structure(structure, _single_controller(chain, single)))
     clock = choose_clocks([structures])[0]
     if isinstance(clock, Unsuited):
         return NotSimulated(clock.reason)
@@ -113,33 +107,83 @@ def compare(dynamics: ChainDynamics) -> Comparison | NotSimulated:
 def declared_scenarios(chain: Chain) -> tuple[Scenario, ...]:
     """The disturbances that the register declares for the loops of a chain, by name; those it gives in full."""
     found: dict[str, Scenario] = {}
+    standard = {scenario.name for scenario in standard_scenarios(len(chain.levels))}
     for level, (loop, route, stage) in enumerate((one.loop, one.route, one.stage) for one in chain.levels):
         for written in loop.loop.disturbances.values():
             step = declared_step(written, loop, route, stage.process)
             if isinstance(step, Step) and step.size_pct:
                 # Two loops may use one name for what each of them meets.
-                name = written.name if written.name not in found else f"{written.name} ({loop.tag})"
+                taken = written.name in found or written.name in standard
+                name = f"{written.name} ({loop.tag})" if taken else written.name
                 found[name] = Scenario(name, disturbances=(Disturbance(level, step.size_pct, step.path),))
     return tuple(found.values())
 
 
-def _single_loop(dynamics: ChainDynamics) -> SensitivityTuning | None:
-    stages = dynamics.chain.stages
+def cascade_error_ratios(cascades: Sequence[ChainDynamics]) -> tuple[float | Lacking, ...]:
+    """What each cascade leaves of the error after an upset at its secondary, as a share of the single loop's.
+
+    Root of the integrated squared error of the outermost measurement, by `loopdoc.engineering.attenuation`: for
+    all cascades of a plant together, where a simulation of each would take minutes.
+    """
+    unreached = Lacking("no single loop reaches the same maximum sensitivity by SIMC")
+    found: list[float | Lacking] = [unreached] * len(cascades)
+    rivals: dict[int, Rival] = {}
+    for position, (dynamics, single) in enumerate(zip(cascades, _single_loops(cascades), strict=True)):
+        chain = dynamics.chain
+        process = _joined(chain)
+        if not all(margins.stable for margins in dynamics.margins):
+            found[position] = Lacking(f"{chain.lead.tag} as tuned, or a loop below it, is not stable")
+        elif single is not None and process is not None:
+            rivals[position] = Rival(chain.stages, LoopStage(_single_controller(chain, single), process))
+    for position, ratio in zip(rivals, error_ratios(list(rivals.values())).tolist(), strict=True):
+        found[position] = Lacking("the error after an upset does not die out") if math.isnan(ratio) else ratio
+    return tuple(found)
+
+
+def _joined(chain: Chain) -> Process | None:
+    """All processes in series; None for two integrators, on which no rule tunes one loop."""
     try:
-        process = reduce(in_series, (stage.process for stage in stages))
-    except ValueError:  # two integrators in series: no rule tunes one loop on them
+        return reduce(in_series, (stage.process for stage in chain.stages))
+    except ValueError:
         return None
-    lead = stages[-1].controller
-    return simc_at_sensitivities(
-        [process],
-        target_ms=[dynamics.margins[-1].max_sensitivity],
-        interval_s=[lead.interval_s],
-        measurement_filter_s=[lead.measurement_filter_s],
-    )[0]
+
+
+def _single_loops(cascades: Sequence[ChainDynamics]) -> list[SensitivityTuning | None]:
+    """One loop on all processes in series for each cascade, as robust as its outermost loop."""
+    found: list[SensitivityTuning | None] = [None] * len(cascades)
+    processes = {
+        position: process
+        for position, dynamics in enumerate(cascades)
+        # A loop that adds nothing to any disturbance has no tuning that is its equal.
+        if (process := _joined(dynamics.chain)) is not None and 1.0 < dynamics.margins[-1].max_sensitivity < math.inf
+    }
+    leads = [cascades[position].chain.stages[-1].controller for position in processes]
+    tuned = simc_at_sensitivities(
+        list(processes.values()),
+        target_ms=[cascades[position].margins[-1].max_sensitivity for position in processes],
+        interval_s=[lead.interval_s for lead in leads],
+        measurement_filter_s=[lead.measurement_filter_s for lead in leads],
+    )
+    for position, tuning in zip(processes, tuned, strict=True):
+        found[position] = tuning
+    return found
+
+
+def _single_controller(chain: Chain, single: SensitivityTuning) -> Controller:
+    lead = chain.stages[-1].controller
+    return Controller(
+        single.settings.gain,
+        single.settings.reset_s,
+        single.settings.rate_s,
+        interval_s=lead.interval_s,
+        measurement_filter_s=lead.measurement_filter_s,
+        setpoint_low_pct=lead.setpoint_low_pct,
+        setpoint_high_pct=lead.setpoint_high_pct,
+    )
 
 
 def _final_element(chain: Chain) -> FinalElement:
-    """The final element with its stroke time and backlash, in the middle of what the innermost controller may ask of it.
+    """The final element with stroke time and backlash, in the middle of what the innermost controller may ask of it.
 
     The register does not say how far a valve is open in normal operation, and the process models are linear: what
     the start decides is only how far the limits are away.

@@ -4,10 +4,14 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from functools import cached_property
+from typing import TYPE_CHECKING
 
-from loopdoc.engineering.frequency import Margins, analyse_chains, speed_ratio
 from loopdoc.engineering.pairing import Plant
-from loopdoc.engineering.stages import Chain, Lacking, chains
+
+# What calculates is loaded at the first question, so that a check without one starts without numpy.
+if TYPE_CHECKING:
+    from loopdoc.engineering.frequency import Margins
+    from loopdoc.engineering.stages import Chain, Lacking
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -21,6 +25,8 @@ class ChainDynamics:
     @property
     def speed_ratio(self) -> float | None:
         """Crossover of the level below over that of the outermost; None for a single loop."""
+        from loopdoc.engineering.frequency import speed_ratio
+
         return speed_ratio(self.margins[-2], self.margins[-1]) if len(self.margins) > 1 else None
 
 
@@ -56,8 +62,25 @@ class Dynamics:
         """
         return self._by_tag[tag]
 
+    def error_ratio(self, cascade: ChainDynamics) -> float | Lacking:
+        """Error of a cascade after an upset at its secondary, as a share of a single loop's; or why there is none.
+
+        See `loopdoc.engineering.comparison.cascade_error_ratios`.
+        """
+        return self._error_ratios[cascade]
+
+    @cached_property
+    def _error_ratios(self) -> dict[ChainDynamics, float | Lacking]:
+        from loopdoc.engineering.comparison import cascade_error_ratios
+
+        cascades = [chain for loop in self._by_tag.values() for chain in loop.chains if len(chain.margins) > 1]
+        return dict(zip(cascades, cascade_error_ratios(cascades), strict=True))
+
     @cached_property
     def _by_tag(self) -> dict[str, LoopDynamics]:
+        from loopdoc.engineering.frequency import analyse_chains
+        from loopdoc.engineering.stages import Lacking, chains
+
         resolved = {tag: chains(self._plant, controlled) for tag, controlled in self._plant.controlled.items()}
         flat = [chain for found in resolved.values() if not isinstance(found, Lacking) for chain in found]
         margins = iter(analyse_chains([chain.stages for chain in flat]))
