@@ -6,7 +6,7 @@ from collections.abc import Iterable, Iterator, Sequence
 from dataclasses import dataclass
 
 from loopdoc.documents.naming import Names, moves, moves_by_itself, power_of
-from loopdoc.documents.wording import as_written, listed, sentence, sentences, value
+from loopdoc.documents.wording import NO_BREAK, as_written, listed, sentence, sentences, value
 from loopdoc.engineering.direction import Undecided
 from loopdoc.engineering.failure import Consequence, Failure, FailureAnalysis, FailureEffect, fault_reading
 from loopdoc.engineering.pairing import ControlledLoop, Plant, Scheme
@@ -14,7 +14,7 @@ from loopdoc.engineering.spreading import PASSIVE_MODES, ElementMove, SetpointMo
 from loopdoc.register.model import FinalElement, Function, Loop, known
 
 ASSUMPTIONS = (
-    "One at a time, by the signs and modes in the register. A transmitter signals its own fault "
+    "They are judged one at a time, by the signs and modes in the register. A transmitter signals its own fault "
     "by a current of at most 3.6 mA or at least 21 mA (NAMUR NE 43); its controller then does what is set for a bad "
     "measurement. A reading that is merely wrong is taken as good, at the worst at the end of its range. One that "
     "stands still is taken as good too, and only another measurement can tell. With the power of the control system "
@@ -270,7 +270,7 @@ class FailureStory:
         for found in (found for one in consequences for found in one.alarms):
             limit = known(found.alarm.limit)
             kind = found.alarm.kind.replace("_", "-")
-            alarms.setdefault(found.loop.tag, []).append(f"{kind} {value(limit)}" if limit else kind)
+            alarms.setdefault(found.loop.tag, []).append(f"{kind}{NO_BREAK}{value(limit)}" if limit else kind)
         told = [f"{tag} alarm{'' if len(kinds) == 1 else 's'} ({', '.join(kinds)})" for tag, kinds in alarms.items()]
         tripping: dict[str, str] = {}
         for trip in (trip for one in consequences for trip in one.trips):

@@ -221,8 +221,8 @@ class _Narrative:
 
     def _scheme_basis(self) -> Iterator[Block]:
         """What holds for all schemes, told once."""
-        yield self._paragraph(failure_story.ASSUMPTIONS, "How failures are judged.")
-        yield self._paragraph(tuning_story.BASIS, "How tuning is stated.")
+        yield self._paragraph(failure_story.ASSUMPTIONS, "Failures.")
+        yield self._paragraph(tuning_story.BASIS, "Tuning.")
 
     def _scheme_sections(self, number: str) -> Iterator[Section]:
         for ordinal, (scheme, loops) in enumerate(self._schemes):
@@ -248,7 +248,9 @@ class _Narrative:
     ) -> Iterator[Block]:
         controlled = story.controlled
         lead = next(loop for loop in scheme.loops if loop.tag in self._plant.controlled)
-        yield from self._paragraphs("", story.purpose(), self._elsewhere(lead, loops))
+        purpose = sentences(story.purpose(), self._elsewhere(lead, loops))
+        if purpose:
+            yield Paragraph(self._set(purpose), keep=True)
         yield from self._paragraphs("How it works.", story.course(), story.rising())
         waits = settings_story.not_followed(controlled, ordinal)
         if len(controlled) == 1:
@@ -282,7 +284,8 @@ class _Narrative:
         rows = [(row.failure, row.control, row.process, row.against) for row in found]
         hazards = failure_story.hazards(loops, story.names) if rows else ""
         title = "When something fails"
-        yield from self._paragraphs(f"{title}.", hazards)
+        if hazards:
+            yield Paragraph(self._set(hazards), f"{title}.", keep=True)
         yield from table("failures", failure_story.HEAD, rows, self._set, title="" if hazards else title)
 
     def _tuning(self, lead: Loop, story: SchemeStory) -> Iterator[Block]:
@@ -370,7 +373,8 @@ class _Narrative:
     def _bare_interlocks(self) -> Iterator[Block]:
         found = [interlock for interlock in self._interlocks if protection_story.bare(interlock)]
         if found:
-            yield self._paragraph(sentence(f"Of {_these(found)} the register gives no more than what trips it"))
+            told = sentence(f"Of {_these(found)} the register gives no more than what trips it")
+            yield Paragraph(self._set(told), keep=True)
         rows = protection_story.bare_rows(found)
         yield from table("bare-interlocks", protection_story.BARE_HEAD, rows, self._set)
         watching = {tag for interlock in self._register.interlocks.values() for tag in interlock.initiators}

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Iterable, Iterator, Sequence
 
 from loopdoc.documents.wording import NO_BREAK, clause, grouped, listed, number_word, sentences, value
@@ -18,7 +19,7 @@ _DOES = {"closed": "closes", "open": "opens", "stopped": "stops", "started": "st
 def alarm_rows(loops: Iterable[Loop]) -> Iterator[tuple[str, ...]]:
     """One row for each alarm, as `ALARM_HEAD` names the columns; the highest limit of a loop first."""
     for loop in loops:
-        for kind in sorted(loop.alarms, key=_HIGH_FIRST.index):
+        for kind in sorted(loop.alarms, key=lambda kind: _HIGH_FIRST.index(kind) if kind in _HIGH_FIRST else -1):
             alarm = loop.alarms[kind]
             yield (
                 f"{loop.tag} {kind.replace('_', '-')}",
@@ -82,7 +83,7 @@ def _acts(interlock: Interlock, only: set[str] | None = None) -> str:
             continue
         position, mode, output = known(action.position), known(action.mode), known(action.output)
         if position:
-            positions.append((_DOES[position], tag))
+            positions.append((_DOES.get(position, f"brings to {position}"), tag))
         elif mode or output:
             at = f" at {value(output)} output" if output else ""
             forced.append((f"in {mode}{at}" if mode else f"to {value(output)} output", tag))
@@ -104,16 +105,20 @@ def trips_when(interlock: Interlock) -> str:
     initiators = list(interlock.initiators.values())
     if not initiators:
         return ""
-    needed, _, of = (known(interlock.voting) or "").partition("oo")
+    votes = re.fullmatch(r"([1-9])oo([1-9])", known(interlock.voting) or "")
+    needed, of = votes.groups() if votes else ("", "")
     alike = {(one.direction, one.limit, one.delay) for one in initiators}
     several = len(initiators) > 1
     if several and len(alike) == 1 and isinstance(initiators[0].limit, Quantity):
         names = listed(one.tag for one in initiators)
         rest = _condition(initiators[0]).partition(" stands ")[2]
+        if not needed:
+            return f"{names} stand {rest}; the voting is not given"
         if needed == of:
-            return f"all of {names} stand {rest}" if of else f"{names} stand {rest}; the voting is not given"
-        many = number_word(int(needed))
-        return f"{'any' if needed == '1' else many} of {names} {'stands' if needed == '1' else 'stand'} {rest}"
+            return f"all of {names} stand {rest}"
+        if needed == "1":
+            return f"any of {names} stands {rest}"
+        return f"{number_word(int(needed))} of {names} stand {rest}"
     conditions = [_condition(one) for one in initiators]
     if not several or needed == "1":
         return listed(conditions, "or")

@@ -232,7 +232,7 @@ class SchemeStory:
             start, because, why = actions[0].partition(", because ") if actions else ("", "", "")
             if because:  # why first, then what follows
                 follows = clause(told[0]).replace(f"{loop.tag} ", "it ", 1)
-                return sentences(f"Because {why}, {loop.tag} {start.removeprefix('It ')}: {follows}")
+                return sentences(f"Because {why}, {start}: {follows}")
         return sentences(*told, *actions)
 
     def _steps(self, loop: ControlledLoop) -> list[_Step]:
@@ -281,9 +281,7 @@ class SchemeStory:
         parts = []
         for action, tags in by_action.items():
             who = listed(tags)
-            if len(self.acting) == 1:
-                who = "It"
-            elif len(by_action) == 1 and len(tags) == len(self.acting):
+            if len(self.acting) > 1 and len(by_action) == 1 and len(tags) == len(self.acting):
                 who = "Both" if len(tags) == 2 else f"All {number_word(len(tags))}"
             why = _because([reason for kind, _, found in reasons if kind == action for reason in found])
             parts.append(f"{who} {'is' if len(tags) == 1 else 'are'} {action} acting, because {why}")

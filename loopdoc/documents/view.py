@@ -16,6 +16,8 @@ class Paragraph:
 
     prose: Prose
     label: str = ""
+    keep: bool = False
+    """Whether it introduces what follows and stays on its page."""
     kind: str = "paragraph"
 
 

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import re
 from collections.abc import Callable, Iterable, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import lru_cache
 
 from loopdoc.documents.values import HOLD, shown
@@ -180,6 +180,10 @@ class Run:
     """Address of another document of the issue, for the screen only; empty where there is none."""
     anchor: str = ""
     """Name of a place in this document; empty where it is not one."""
+    before: str = ""
+    """What stands against it in front, such as a bracket: no line is broken there."""
+    after: str = ""
+    """What stands against it behind, such as a comma."""
 
 
 Prose = tuple[Run, ...]
@@ -196,7 +200,7 @@ class Target:
 
 _PIECE = re.compile(
     rf"`(?P<code>[^`]+)`|(?P<value>[^\s(\[{NO_BREAK}]*(?:{NO_BREAK}[^\s{NO_BREAK}]+)+)"
-    rf"|(?P<word>[^\W_](?:[\w./-]*\w)?)|(?P<other>[\s{NO_BREAK}]+|.)",
+    rf"|(?P<word>[^\W_](?:[\w./-]*\w)?)|(?P<other>\s+|[^\w\s`.+−-]+|.)",
     re.DOTALL,
 )
 
@@ -226,6 +230,8 @@ class Setter:
             runs.append(Run(f"{{{pointer}}}", "unresolved"))
         elif isinstance(found, Hold):
             runs.append(Run(HOLD, "hold"))
+        elif isinstance(found, str) and " " in as_written(found):
+            self._plain(found, runs)  # a text, not a value: it may be broken like any other
         else:
             runs.append(Run(as_written(found), "value"))
 
@@ -236,7 +242,7 @@ class Setter:
                 runs.append(Run(piece["code"], "code"))
             elif piece["value"]:
                 whole = _without_punctuation(written)
-                runs += [Run(whole, "value"), Run(written[len(whole) :])]
+                runs.extend((Run(whole, "value"), Run(written[len(whole) :])))
             elif written in self._tags:
                 target = self._target(written)
                 runs.append(Run(written, "tag", target.sheet, target.anchor))
@@ -252,7 +258,7 @@ def _without_punctuation(written: str) -> str:
 
 
 def _merged(runs: Sequence[Run]) -> Prose:
-    """Neighbouring pieces of plain text as one."""
+    """Neighbouring pieces of plain text as one; what stands against a tag or a value is given to it."""
     merged: list[Run] = []
     for run in runs:
         if not run.text:
@@ -261,12 +267,29 @@ def _merged(runs: Sequence[Run]) -> Prose:
             merged[-1] = Run(merged[-1].text + run.text)
         else:
             merged.append(run)
-    return tuple(merged)
+    for index, run in enumerate(merged):
+        if run.kind == "text":
+            continue
+        before = after = ""
+        if index and merged[index - 1].kind == "text":
+            text = merged[index - 1].text
+            at = len(text)
+            while at and not text[at - 1].isspace():
+                at -= 1
+            merged[index - 1], before = Run(text[:at]), text[at:]
+        if index + 1 < len(merged) and merged[index + 1].kind == "text":
+            text = merged[index + 1].text
+            at = 0
+            while at < len(text) and not text[at].isspace():
+                at += 1
+            after, merged[index + 1] = text[:at], Run(text[at:])
+        merged[index] = replace(run, before=before, after=after)
+    return tuple(run for run in merged if run.text)
 
 
 def plain(prose: Prose) -> str:
     """The text of runs, without how it is set."""
-    return "".join(run.text for run in prose)
+    return "".join(f"{run.before}{run.text}{run.after}" for run in prose)
 
 
 def grouped(pairs: Iterable[tuple[str, str]]) -> dict[str, tuple[str, ...]]:
