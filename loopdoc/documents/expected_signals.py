@@ -76,7 +76,7 @@ def _signal_rows(measurement: Measurement, points: Sequence[CheckPoint], *, root
         yield sensor
     if root:
         shares = tuple(f"{point.signal_pct:g}" for point in points)
-        yield ExpectedRow("Differential pressure", "% of span", shares)
+        yield ExpectedRow("Differential pressure", "%", shares)
     ends = _SIGNAL_ENDS.get(known(measurement.signal) or "")
     if ends:
         yield _signal_row(f"Signal of {known(measurement.transmitter) or DASH}", ends, CHECK_POINTS_PCT)

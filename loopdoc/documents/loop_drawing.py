@@ -30,6 +30,7 @@ from loopdoc.documents.loop_rows import (
     forcing_height,
     forcing_lines,
     initiated_lines,
+    measurement_words,
     rows_of,
     transmitter_of,
 )
@@ -272,14 +273,12 @@ class _Drawing:
     def _draw_measurement(self, tag: str, measurement: Measurement, y: float, *, strong: bool = False) -> float:
         """Transmitter, terminals and input of a measurement; the x at which its signal leaves to the right."""
         sheet = self._sheet
-        element = measurement.element or measurement.sensor
         sheet.measuring_point(_FIELD, y, known(measurement.variable) or "", known(measurement.element) or "")
         sheet.field_instrument(_FIELD, y, self._lines(tag), strong=strong)
         sheet.electric((_FIELD + BUBBLE, y), (_TERMINALS - 7, y))
         self._wire(y, measurement.signal)
         sheet.channel(_CHANNEL, y, shown(measurement.channel))
-        words = (shown(measurement.range), *(wrapped(shown(element), NOTE_WIDTH, 2) if element is not None else ()))
-        sheet.note(_FIELD_NOTE, y + 8.5, words, width=NOTE_WIDTH)
+        sheet.note(_FIELD_NOTE, y + 8.5, measurement_words(measurement), width=NOTE_WIDTH)
         if known(measurement.characteristic) != "square root":
             return _CHANNEL + 21
         sheet.software((_CHANNEL + 21, y), (_ROOT - 5.5, y), arrow=False)

@@ -94,7 +94,7 @@ def measurement_panel(loop: Loop) -> Panel:
         return Panel("Measurement", ((("Measurement", cell(loop.measurement)),),))
     rows: list[tuple[Pair, ...]] = [
         (("Transmitter", cell(measurement.transmitter)), ("Variable", cell(measurement.variable))),
-        (("Sensor", _sensor(measurement)),),
+        (("Element" if measurement.element is not None else "Sensor", _sensor(measurement)),),
         (("Range", _range(measurement)),),
         (("Signal", cell(measurement.signal)), ("Channel", cell(measurement.channel))),
         (("On fault", cell(measurement.on_fault)), ("Filter", cell(measurement.filter))),
@@ -219,7 +219,8 @@ def _sign(controlled: ControlledLoop) -> str:
     for route in controlled.routes:
         sign = path_sign(controlled, route)
         if isinstance(sign, Undecided):
-            words = f"not decided: {sign.reason}"
+            reason = sign.reason.replace("`", "").removeprefix(f"{controlled.tag}: ")
+            words = f"not decided: {reason}"
         else:
             steps = ", ".join(f"{step.what} ({'+' if step.sign > 0 else '−'})" for step in sign.steps)
             words = f"{steps}: {'+' if sign.sign > 0 else '−'} in all, needs {sign.action} action"
@@ -287,12 +288,15 @@ def _figure(value: float, unit: str = "") -> str:
 # ---------------------------------------------------------------- final elements
 
 
-def element_table(elements: Iterable[FinalElement]) -> Table | None:
+def element_table(plant: Plant, loop: Loop, elements: Iterable[FinalElement]) -> Table | None:
     """Final elements on the loop's drawing; None where there are none."""
+    controlled = plant.controlled.get(loop.tag)
+    ends = dict.fromkeys(route.end.tag for route in controlled.routes) if controlled else {}
+    movers = ", ".join(tag for tag in ends if tag in plant.register.loops)
     rows = tuple(
         (
             element.tag,
-            cell(element.service),
+            cell(element.service) if element.tag in ends else joined([cell(element.service), f"moved by {movers}"]),
             cell(element.kind),
             cell(element.opens_on),
             cell(element.output_block or "direct"),
@@ -327,8 +331,8 @@ def element_table(elements: Iterable[FinalElement]) -> Table | None:
 def alarm_table(plant: Plant, loop: Loop) -> Table | None:
     """Alarms and trips on the loop's measurement, from the highest limit to the lowest."""
     trips = [trip for trip in plant.trips if trip.loop is loop]
-    above = [_trip_row(trip) for trip in trips if trip.initiator.direction == "above"]
-    rest = [_trip_row(trip) for trip in trips if trip.initiator.direction != "above"]
+    above = [_trip_row(plant, trip) for trip in trips if trip.initiator.direction == "above"]
+    rest = [_trip_row(plant, trip) for trip in trips if trip.initiator.direction != "above"]
     alarms = {kind: _alarm_row(loop.alarms[kind]) for kind in _HIGH_FIRST if kind in loop.alarms}
     deviation = [alarms.pop("deviation")] if "deviation" in alarms else []
     rows = (*above, *alarms.values(), *rest, *deviation)
@@ -356,7 +360,7 @@ def _alarm_row(alarm: Alarm) -> tuple[str, ...]:
     )
 
 
-def _trip_row(trip: Trip) -> tuple[str, ...]:
+def _trip_row(plant: Plant, trip: Trip) -> tuple[str, ...]:
     initiator = trip.initiator
     return (
         f"Trip {trip.interlock.tag}",
@@ -365,7 +369,7 @@ def _trip_row(trip: Trip) -> tuple[str, ...]:
         cell(initiator.delay),
         DASH,
         DASH,
-        Markup("By itself: {}").format(_actions(trip.interlock)),
+        _trip_words(plant, trip.interlock),
     )
 
 
@@ -375,9 +379,13 @@ def _limit(initiator: Initiator) -> str:
     return " ".join(shown(part) for part in (initiator.direction, initiator.limit) if part is not None) or DASH
 
 
-def _actions(interlock: Interlock) -> str:
-    actions = [f"{tag} {action_words(action)}" for tag, action in interlock.actions.items()]
-    return "; ".join(actions) or "see the interlock"
+def _trip_words(plant: Plant, interlock: Interlock) -> str:
+    """What a trip does by itself."""
+    held = any(hold.tag == interlock.tag and hold.path == ("actions",) for hold in plant.register.holds)
+    if held:
+        return Markup("By itself: {}").format(cell(Hold("")))
+    actions = "; ".join(f"{tag} {action_words(action)}" for tag, action in interlock.actions.items())
+    return f"By itself: {actions}" if actions else DASH
 
 
 def related_interlocks(plant: Plant, loop: Loop, elements: Iterable[FinalElement]) -> tuple[Interlock, ...]:

@@ -12,12 +12,12 @@ from dataclasses import dataclass, replace
 from loopdoc.documents.drawing import BLOCK, BUBBLE, DIAMOND, LEADING, text_width, wrapped
 from loopdoc.documents.values import DASH, shown
 from loopdoc.engineering.pairing import Plant
-from loopdoc.register.model import FinalElement, Function, Interlock, InterlockAction, Loop, known
+from loopdoc.register.model import FinalElement, Function, Interlock, InterlockAction, Loop, Measurement, known
 from loopdoc.register.quantity import Range
 
 NOTE_WIDTH = 90.0
 """Of the words beside an instrument of the field [pt]."""
-INPUT_DISTANCE = 44.0
+INPUT_DISTANCE = 46.0
 """Between two inputs of a function [pt]."""
 BESIDE_DISTANCE = 38.0
 """Between two commanders beside a function [pt]."""
@@ -29,7 +29,9 @@ _CLEAR = 13.0
 """Least height left between two rows for the words on the link [pt]."""
 _APART = 5.0
 _FIELD_BELOW = 31.0
-"""What a transmitter needs below its signal, with the pipe or vessel that it is connected to [pt]."""
+"""What the pipe or vessel below a transmitter needs [pt]."""
+_INPUT_DEPTH = 34.0
+"""The same with the most words that stand beside an input of a function [pt]."""
 
 _SHUT_AND_OPEN = {"variable-speed drive": ("lowest speed", "full speed"), "heater bank": ("off", "full power")}
 _SIGNAL_ENDS = {"4-20 mA": ("4", "20", "mA"), "0-20 mA": ("0", "20", "mA"), "1-5 V": ("1", "5", "V")}
@@ -158,7 +160,7 @@ def _own_row(plant: Plant, loop: Loop, label: str) -> Row:
     low = sum(kind in loop.alarms for kind in ("low", "low_low", "deviation"))
     tapped = 30.0 if known(loop.measurement) and initiated_lines(plant, loop) else 0.0
     above = max(BUBBLE + 2, 6 + high * LEADING, tapped)
-    below = max(_FIELD_BELOW if known(loop.measurement) else BUBBLE + 3, 10 + low * LEADING)
+    below = max(BUBBLE + 3, measurement_depth(known(loop.measurement)), 10 + low * LEADING)
     return Row(Own(loop), above, below, label)
 
 
@@ -196,7 +198,7 @@ def _block_row(function: Function, beside: tuple[str, ...], label: str) -> Row:
     drawn = min(len(beside), MOST_BESIDE)
     side = BUBBLE + 2 + (drawn - 1) * BESIDE_DISTANCE / 2 if drawn else 0.0
     words = 0.0 if beside else LEADING * len(block_words(function, NOTE_WIDTH)) / 2 + 2
-    inputs = _FIELD_BELOW + (len(function.inputs) - 1) * INPUT_DISTANCE if function.inputs else 0.0
+    inputs = _INPUT_DEPTH + (len(function.inputs) - 1) * INPUT_DISTANCE if function.inputs else 0.0
     transmitter = BUBBLE + 2 if function.inputs else 0.0
     above = max(BLOCK + 2, side, words, transmitter)
     return Row(Block(function, beside), above, max(BLOCK + 2, side, words, inputs), label)
@@ -248,6 +250,17 @@ def block_words(function: Function, width: float) -> tuple[str, ...]:
     if isinstance(function.service, str):
         words.extend(wrapped(function.service, width, 2))
     return tuple(words)
+
+
+def measurement_words(measurement: Measurement) -> tuple[str, ...]:
+    """Range and element of a measurement, as they stand beside its transmitter."""
+    element = measurement.element or measurement.sensor
+    return (shown(measurement.range), *(wrapped(shown(element), NOTE_WIDTH, 3) if element is not None else ()))
+
+
+def measurement_depth(measurement: Measurement | None) -> float:
+    """Height that a transmitter needs below its signal, with its words and what it is connected to [pt]."""
+    return max(_FIELD_BELOW, 5 + LEADING * len(measurement_words(measurement))) if measurement else 0.0
 
 
 def element_words(element: FinalElement) -> tuple[str, ...]:

@@ -145,7 +145,7 @@ def _view(basis: Basis, loop: Loop, document: Document) -> SheetView:
         dynamics = basis.dynamics.loop(loop.tag)
         panels = (controller_panel(plant, loop, controller), tuning_panel(loop, dynamics))
     tables = (
-        element_table(drawn.elements),
+        element_table(plant, loop, drawn.elements),
         alarm_table(plant, loop),
         interlock_table(interlocks, loop, drawn.elements),
     )
