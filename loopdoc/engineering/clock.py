@@ -12,6 +12,8 @@ from loopdoc.engineering.structure import ControlStructure
 # Above this many steps the interval is widened as far as the loops do not notice.
 _STEPS_WANTED = 3000
 _STEPS_MOST = 40_000
+# What is not stable need not be watched for long.
+_STEPS_UNSTABLE = 4096
 # A widened interval may turn the phase at any crossover by this much [rad], about one degree.
 _PHASE_UNNOTICED = 0.02
 # Longest step, as a share of the inverse of the fastest crossover: of a controller that is meant to be
@@ -61,7 +63,8 @@ def _horizon_s(structure: ControlStructure, chain: Sequence[LoopStage], margins:
         if stage.process.integrating:
             slow.append(6.0 * max(reset if math.isfinite(reset) else 0.0, 2.0 / gain))
         elif math.isfinite(reset):
-            slow.append(6.0 * reset * (1.0 + 1.0 / gain))
+            # With hardly any loop gain the reset takes for ever; it need not be watched to its end.
+            slow.append(6.0 * reset * (1.0 + min(1.0 / gain, 9.0)))
         if math.isfinite(found.crossover_rad_per_s):
             slow.append(6.0 * min(found.max_sensitivity, 6.0) / found.crossover_rad_per_s)
     return max(slow)
@@ -80,10 +83,31 @@ def _round_up(steps: float) -> int:
     return int(HORIZON_PARTS * math.ceil(min(series, _STEPS_MOST / HORIZON_PARTS)))
 
 
+def _multiple(base_s: float, loops: Sequence[tuple[float, float]], *, wanted: int) -> int:
+    """Largest multiple of the base, up to the wanted one, at which no loop notices that it is scanned more seldom.
+
+    A loop that is scanned at a longer interval than the step needs that interval to be a multiple of it.
+    """
+    for interval, speed in loops:
+        if speed > 0.0:
+            wanted = min(wanted, int((interval + 2.0 * _PHASE_UNNOTICED / speed) / base_s))
+    longest = max(interval for interval, _ in loops)
+    if wanted * base_s >= longest:
+        return max(1, wanted)
+    for multiple in range(wanted, 1, -1):
+        ratios = [interval / (multiple * base_s) for interval, _ in loops if interval > multiple * base_s]
+        if all(math.isclose(ratio, round(ratio), rel_tol=1e-9) for ratio in ratios):
+            return multiple
+    return 1
+
+
 def _choose_clock(horizon_s: float, loops: Sequence[tuple[float, float]]) -> Clock:
-    """The clock of loops given as execution interval [s] and crossover [rad/s], 0 where there is none."""
-    fastest = max((crossover for _, crossover in loops), default=0.0)
-    # Without a crossover nothing is faster than the horizon divided by what it was multiplied with.
+    """The clock of loops given as execution interval [s] and speed [rad/s].
+
+    The speed of a loop is its crossover, or without one that of its open loop; 0 if that takes no time.
+    """
+    fastest = max((speed for _, speed in loops), default=0.0)
+    # Without any speed nothing is faster than the horizon divided by what it was multiplied with.
     shortest = 1.0 / fastest if fastest > 0.0 else horizon_s / 60.0
     executed = [interval for interval, _ in loops if interval > 0.0]
     if not executed:
@@ -92,23 +116,14 @@ def _choose_clock(horizon_s: float, loops: Sequence[tuple[float, float]]) -> Clo
     base = _common_interval_s(executed)
     step = base / math.ceil(base / (_BETWEEN_SCANS * shortest))
     if step == base:
-        for multiple in range(math.ceil(horizon_s / base / _STEPS_WANTED), 1, -1):
-            wider = multiple * base
-            if all(
-                (wider - interval) / 2.0 * crossover <= _PHASE_UNNOTICED
-                if interval < wider
-                else math.isclose(interval / wider, round(interval / wider), rel_tol=1e-9)
-                for interval, crossover in loops
-            ):
-                step = wider
-                break
+        step *= _multiple(base, loops, wanted=math.ceil(horizon_s / base / _STEPS_WANTED))
     return Clock(step_s=step, steps=_round_up(horizon_s / step))
 
 
 def _choose_for(
     group: Sequence[ControlStructure], margins: Iterator[tuple[Margins, ...]]
 ) -> Clock | Unsuited:
-    horizon_s, open_loop_s, loops = 0.0, 0.0, []
+    horizon_s, open_loop_s, stable, loops = 0.0, 0.0, True, []
     for structure in group:
         chain = _controlled_chain(structure)
         found = next(margins) if chain else ()
@@ -116,11 +131,17 @@ def _choose_for(
         for process in structure.processes:
             open_loop_s = max(open_loop_s, math.fsum(process.lags_s) + process.dead_time_s)
         for stage, margin in zip(chain, found, strict=True):
-            crossover = margin.crossover_rad_per_s
-            loops.append((stage.controller.interval_s, crossover if math.isfinite(crossover) else 0.0))
+            stable = stable and margin.stable
+            speed = margin.crossover_rad_per_s
+            if not math.isfinite(speed):
+                open_loop = math.fsum(stage.process.lags_s) + stage.process.dead_time_s
+                speed = 1.0 / open_loop if open_loop > 0.0 else 0.0
+            loops.append((stage.controller.interval_s, speed))
     if horizon_s <= 0.0:
         return Unsuited("nothing in this structure takes time: there is no response to simulate")
     clock = _choose_clock(horizon_s, loops)
+    if not stable:
+        return Clock(clock.step_s, min(clock.steps, _STEPS_UNSTABLE))
     if clock.step_s * clock.steps < min(horizon_s, 2.0 * open_loop_s):
         return Unsuited(
             f"its slowest part takes {open_loop_s:.3g} s and its fastest loop needs steps of {clock.step_s:.3g} s: "

@@ -52,10 +52,9 @@ def ultimate_point(process: Process, *, interval_s: float = 0.0) -> UltimatePoin
     Source: J. G. Ziegler, N. B. Nichols, "Optimum settings for automatic controllers", Trans. ASME
     64:759-768, 1942.
     """
-    scale = (
-        1.0 / (process.dead_time_s + interval_s + math.fsum(process.lags_s)) if process.integrating else 1.0
-    )
-    gain = scale / process.gain
+    delay_s = process.dead_time_s + interval_s + math.fsum(process.lags_s)
+    # A loop gain near 1: of an integrating process after the time that its dead time and lags take.
+    gain = 1.0 / (process.gain * delay_s) if process.integrating and delay_s > 0.0 else 1.0 / process.gain
     # The margin is sharpest where the loop gain at the phase crossover is near 1.
     for _ in range(8):
         margins = analyse_chain([LoopStage(Controller(gain, interval_s=interval_s), process)])[0]
