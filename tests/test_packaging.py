@@ -53,6 +53,11 @@ def built(tmp_path_factory: pytest.TempPathFactory) -> Path:
     base = tmp_path_factory.mktemp("built")
     not_sources = shutil.ignore_patterns(".*", "build", "dist", "issued", "*.egg-info")
     shutil.copytree(ROOT, base / "tree", ignore=not_sources)
+    # What an interpreter leaves beside the sources must not be shipped with them.
+    for folder in ("templates", "templates/starter", "schemas"):
+        left_over = base / "tree" / folder / "__pycache__" / "left_over.cpython-311.pyc"
+        left_over.parent.mkdir(exist_ok=True)
+        left_over.write_bytes(b"")
     build = (sys.executable, "-m", "build", "--no-isolation", "--sdist", "--wheel", "--outdir", base, ".")
     call(*build, cwd=base / "tree")
     return base
