@@ -221,6 +221,7 @@ def test_rules_that_do_not_fit_are_left_out() -> None:
     assert not {name for name in names if name.startswith(("Cohen-Coon", "IMC"))}
     assert {"SIMC PI", "lambda PI", "AMIGO PID"} <= names
     assert {found.rule for found in recommendations(Process(1.0, (10.0,)))} == {"lambda PI", "IMC PID"}
+    assert recommendations(Process(1.0, (), 2.0, (1.0,), integrating=True)) == ()
 
 
 @pytest.mark.parametrize(

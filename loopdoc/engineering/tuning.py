@@ -239,11 +239,16 @@ class Recommendation:
 def recommendations(process: Process, *, interval_s: float = 0.0) -> tuple[Recommendation, ...]:
     """Return what each rule recommends; a rule that does not fit the process is left out.
 
+    Nothing is recommended for a process that does not reduce to a model with dead time.
+
     SIMC is taken with a closed-loop time equal to the effective dead time (its default), lambda and IMC
     with one equal to the lag (three dead times when integrating), at least the dead time.
     """
-    first = reduce_to_first_order(process, interval_s=interval_s)
-    second = reduce_to_second_order(process, interval_s=interval_s)
+    try:
+        first = reduce_to_first_order(process, interval_s=interval_s)
+        second = reduce_to_second_order(process, interval_s=interval_s)
+    except ValueError:
+        return ()
     lambda_s = max(first.dead_time_s, 3.0 * first.dead_time_s if first.integrating else first.lag_s)
     rules: list[tuple[str, Callable[[], StandardSettings]]] = [
         ("SIMC PI", lambda: simc_pi(first, closed_loop_s=first.dead_time_s)),
