@@ -29,18 +29,30 @@ class LevelArrays:
     """One level of n chains of equal structure; every array is (n, 1)."""
 
     gain: FloatArray
+    """Controller gain times process gain [dimensionless], [1/s] when integrating."""
     integrating: NDArray[np.bool_]
+    """True where the process integrates."""
     lags_s: tuple[FloatArray, ...]
+    """Lags [s], 0 where a chain has fewer."""
     leads_s: tuple[FloatArray, ...]
+    """Leads [s], 0 where a chain has fewer."""
     delay_s: FloatArray
+    """Dead time and half of the execution interval [s]."""
     repeats_per_s: FloatArray
+    """1/Ti [1/s], 0 for no integral action."""
     rate_s: FloatArray
+    """Rate time [s]."""
     smoothing_s: FloatArray
+    """Lag of the derivative filter [s]."""
     setpoint_weight: FloatArray
+    """b [dimensionless]."""
     derivative_setpoint_weight: FloatArray
+    """c [dimensionless]."""
     filter_s: FloatArray
+    """Measurement filter [s]."""
 
     def take(self, rows: IntArray) -> "LevelArrays":
+        """Return the chains of the given rows."""
         return LevelArrays(
             gain=self.gain[rows],
             integrating=self.integrating[rows],
@@ -245,8 +257,11 @@ class Crossings:
     """Refined crossings of one level, over all chains of a chunk."""
 
     row: IntArray
+    """(k,) chain of each crossing."""
     w: FloatArray
+    """(k,) frequency [rad/s]."""
     loop: ComplexArray
+    """(k,) open loop there [dimensionless]."""
 
 
 class Survey:

@@ -108,9 +108,11 @@ class Scenario:
     """What upsets a structure at time zero."""
 
     name: str
+    """How the scenario is called in results."""
     setpoint_step_pct: float = 0.0
     """Step of the outermost controller's setpoint [%]."""
     disturbances: tuple[Disturbance, ...] = ()
+    """Steps that reach measurements from outside."""
     final_element_step_pct: float = 0.0
     """Step of the final element [%]; only where no controller moves it."""
 
