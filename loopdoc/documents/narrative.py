@@ -241,7 +241,8 @@ class _Narrative:
         whole = len(loops) == sum(loop.tag in self._plant.controlled for loop in scheme.loops)
         tags += [part.tag for part in parts if whole or known(part.unit) == self._number]
         drawings = dict.fromkeys(drawing for loop in loops if (drawing := known(loop.drawing)))
-        return f"{', '.join(tags)}{f' (drawing {listed(drawings)})' if drawings else ''}"
+        drawn = f"drawing{'' if len(drawings) == 1 else 's'} {listed(drawings)}"
+        return f"{', '.join(tags)} ({drawn})" if drawings else ", ".join(tags)
 
     def _scheme_blocks(
         self, scheme: Scheme, loops: Sequence[Loop], story: SchemeStory, ordinal: int
@@ -293,7 +294,7 @@ class _Narrative:
         settings = tuning_story.settings_rows(story.controlled, dynamics)
         yield from table("tuning", tuning_story.SETTINGS_HEAD, settings, self._set, title="Tuning")
         models = list(tuning_story.process_rows(story.controlled))
-        if any(cell not in ("", HOLD) for row in models for cell in row[2:5]):
+        if any(cell not in ("", HOLD) for row in models for cell in row[2:-1]):
             yield from table("process", tuning_story.PROCESS_HEAD, models, self._set)
         supplement = self._supplements.get(lead.tag, Supplement())
         yield from self._paragraphs("", tuning_story.remarks(story.controlled, dynamics), supplement.benefit)

@@ -181,7 +181,7 @@ def bare_rows(interlocks: Sequence[Interlock]) -> Iterator[tuple[str, ...]]:
 
 ELEMENT_HEAD = (
     "Tag", "Service", "Kind", "Opens on", "Output block", "Signal", "On failure", "Safe position", "Stroke time",
-    "Moved by",
+    "Backlash", "Resolution", "Moved by",
 )  # fmt: skip
 
 
@@ -201,5 +201,7 @@ def element_rows(plant: Plant, elements: Iterable[FinalElement]) -> Iterator[tup
             _text(element.fails),
             _text(element.safe),
             _text(element.stroke_time),
+            _text(element.backlash),
+            _text(element.resolution),
             listed(dict.fromkeys(movers)),
         )

@@ -91,6 +91,8 @@ class SchemeStory:
     def _holds(self, loop: ControlledLoop, position: int) -> str:
         measurement = known(loop.loop.measurement)
         what, how = f"the {quantity(loop.loop)}", self._how(loop)
+        if any(self._how(other) == how for other in self.acting[:position] if not self._plant.links_to.get(loop.tag)):
+            how = "in the same way"
         if loop not in self.acting:
             would = f" by moving {listed(route.end.tag for route in loop.routes)}" if loop.routes else ""
             beside = in_brackets(measurement) if measurement else ""
@@ -327,7 +329,8 @@ def _because(reasons: Sequence[_Reason]) -> str:
         said = last == (rises, 1) and len(subjects) == 1 and len(by_how) == 2
         parts.append(f"{listed(subjects)} {how}" if said else f"{listed(subjects)} {verb} {how}")
         last = (rises, len(subjects))
-    return listed(parts)
+    several = len(parts) > 1 and any(len(subjects) > 1 for subjects in by_how.values())
+    return f"{', '.join(parts[:-1])}, and {parts[-1]}" if several else listed(parts)
 
 
 def _chained(steps: Sequence[_Step], verbs: Sequence[str]) -> str:

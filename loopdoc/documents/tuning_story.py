@@ -17,7 +17,7 @@ SETTINGS_HEAD = (
     "Controller", "Form", "Gain", "Proportional band", "Reset", "Repeats", "Rate", "Rate filter", "Setpoint weight",
     "Filter", "Interval", "Gain margin", "Phase margin", "Ms", "Crossover", "Speed ratio",
 )  # fmt: skip
-PROCESS_HEAD = ("Loop", "Moved", "Process gain", "Lags", "Dead time", "Source")
+PROCESS_HEAD = ("Loop", "Moved", "Process gain", "Lags", "Lead", "Dead time", "Source")
 
 BASIS = (
     "Gains are in percent of output per percent of measurement span, in the standard form (ISA-TR5.9) unless a table "
@@ -70,15 +70,15 @@ def _commanded(loop: ControlledLoop) -> str:
     return listed(dict.fromkeys(route.end.tag for route in loop.routes))
 
 
-def _model(model: Process | Hold | None) -> tuple[str, str, str]:
-    """Gain, lags and dead time of a model."""
+def _model(model: Process | Hold | None) -> tuple[str, str, str, str]:
+    """Gain, lags, lead and dead time of a model."""
     if isinstance(model, Hold):
-        return HOLD, "", ""
+        return HOLD, "", "", ""
     if model is None:
-        return "", "", ""
+        return "", "", "", ""
     gain = _given(model.gain)
     lags = HOLD if isinstance(model.lags, Hold) else listed(value(lag) for lag in model.lags)
-    return gain, lags, _given(model.dead_time)
+    return gain, lags, _given(model.lead), _given(model.dead_time)
 
 
 def _margins(dynamics: Dynamics, tag: str) -> tuple[str, str, str, str, str]:
