@@ -1,0 +1,226 @@
+"""Scenarios, chosen clocks, blocks of steps and batches of simulated responses."""
+
+import math
+from dataclasses import replace
+
+import numpy as np
+import pytest
+
+from loopdoc.engineering.clock import Clock, Unsuited, choose_clocks
+from loopdoc.engineering.frequency import LoopStage
+from loopdoc.engineering.pid import Controller
+from loopdoc.engineering.process import Process
+from loopdoc.engineering.simulation import simulate, simulate_metrics
+from loopdoc.engineering.structure import (
+    ControlStructure,
+    Disturbance,
+    FinalElement,
+    Scenario,
+    cascade_structure,
+    single_loop_structure,
+    standard_scenarios,
+)
+
+VALVE = FinalElement()
+
+
+TIC = cascade_structure(
+    [
+        LoopStage(Controller(0.45, 12.0, interval_s=0.5), Process(1.0, (4.0,), 1.0)),
+        LoopStage(Controller(1.44, 540.0, interval_s=1.0), Process(1.375, (540.0,), 90.0)),
+    ],
+    final_element=FinalElement(stroke_time_s=6.0, start_pct=49.0),
+    start_pct=(49.3, 40.8),
+)
+SINGLE = single_loop_structure(TIC, Controller(1.6, 545.0, interval_s=1.0))
+
+
+def test_standard_scenarios_name_the_levels() -> None:
+    names = [[s.name for s in standard_scenarios(levels)] for levels in (1, 2, 3, 4)]
+    assert names == [
+        ["setpoint step", "primary disturbance"],
+        ["setpoint step", "secondary disturbance", "primary disturbance"],
+        ["setpoint step", "tertiary disturbance", "secondary disturbance", "primary disturbance"],
+        [
+            "setpoint step",
+            "level 1 disturbance",
+            "tertiary disturbance",
+            "secondary disturbance",
+            "primary disturbance",
+        ],
+    ]
+
+
+def test_the_cascade_takes_the_secondary_disturbance_away() -> None:
+    cascade, single = simulate([TIC, SINGLE], standard_scenarios(2))
+    ours, theirs = cascade[1].metrics, single[1].metrics
+    # The single loop learns of it through 540 s of lag; ten times is far on the near side of what is seen.
+    assert abs(ours.peak_pct) < 0.3 * abs(theirs.peak_pct)
+    assert ours.iae_pct_s < 0.1 * theirs.iae_pct_s
+    assert {len(r.time_s) for r in (*cascade, *single)} == {len(cascade[0].time_s)}
+    assert single[0].setpoint_pct[0] is None
+    assert single[0].output_pct[0] is None
+
+
+def test_a_batch_gives_the_figures_of_single_runs() -> None:
+    other = cascade_structure(
+        [LoopStage(Controller(0.6, 20.0, interval_s=1.0), Process(1.2, (20.0,), 4.0))], final_element=VALVE
+    )
+    groups = [
+        ([TIC, SINGLE], standard_scenarios(2)),
+        ([other], standard_scenarios(1)),
+        ([TIC], standard_scenarios(2, size_pct=5.0)),
+    ]
+    for (structures, scenarios), found in zip(groups, simulate_metrics(groups), strict=True):
+        assert not isinstance(found, Unsuited)
+        for row, together in zip(simulate(structures, scenarios), found, strict=True):
+            for response, metrics in zip(row, together, strict=True):
+                one = response.metrics
+                # One structure is advanced by blocks, in which a valve that moves slowly is taken to be in
+                # time: late by less than a hundredth of a step. Otherwise only rounding differs.
+                assert metrics.iae_pct_s == pytest.approx(one.iae_pct_s, rel=1e-4)
+                assert metrics.peak_pct == pytest.approx(one.peak_pct, rel=1e-4)
+                assert metrics.settling_s == pytest.approx(one.settling_s, abs=one.step_s)
+                assert metrics.horizon_s == one.horizon_s
+                assert metrics.executed_interval_s == one.executed_interval_s
+
+
+def test_blocks_of_steps_are_the_steps() -> None:
+    """PID with filters and weights, scanned at two intervals, limited at first: by blocks and one by one."""
+    structure = cascade_structure(
+        [
+            LoopStage(
+                Controller(1.5, 6.0, 0.5, measurement_filter_s=0.8, setpoint_weight=0.7, interval_s=0.5),
+                Process(1.0, (4.0, 1.0), 1.2, (0.5,)),
+            ),
+            LoopStage(
+                Controller(6.0, 50.0, 3.0, derivative_setpoint_weight=0.4, interval_s=1.5),
+                Process(0.04, (8.0,), 12.3, integrating=True),
+            ),
+        ],
+        final_element=FinalElement(start_pct=80.0),
+    )
+    scenarios = [Scenario("sp", 8.0), Scenario("d", 2.0, (Disturbance(0, 3.0), Disturbance(1, 2.0)))]
+    clock = Clock(0.5, 1600)
+    by_blocks = simulate([structure], scenarios, clock=clock)[0]
+    assert by_blocks[0].travel_pct.max() == 100.0
+    # Another structure of the same pattern beside it keeps the engine to single steps.
+    other = replace(structure, start_pct=(49.0, 49.0))
+    by_steps = simulate([structure, other], scenarios, clock=clock)[0]
+    for one, two in zip(by_blocks, by_steps, strict=True):
+        for ours, theirs in zip(
+            (*one.measurement_pct, *one.output_pct, *one.setpoint_pct, one.travel_pct),
+            (*two.measurement_pct, *two.output_pct, *two.setpoint_pct, two.travel_pct),
+            strict=True,
+        ):
+            # The same sums in another order.
+            np.testing.assert_allclose(ours, theirs, atol=1e-9)
+
+
+def test_a_chosen_horizon_covers_the_response() -> None:
+    for responses in simulate([TIC, SINGLE], standard_scenarios(2)):
+        for response in responses:
+            assert math.isfinite(response.metrics.settling_s)
+            assert response.metrics.settling_s < 0.8 * response.metrics.horizon_s
+
+
+def test_cutting_a_run_short_at_rest_changes_little() -> None:
+    clock = choose_clocks([[TIC]])[0]
+    assert isinstance(clock, Clock)
+    short = simulate([TIC], standard_scenarios(2))[0]
+    full = simulate([TIC], standard_scenarios(2), clock=Clock(clock.step_s, 2 * clock.steps))[0]
+    for one, other in zip(short, full, strict=True):
+        assert other.metrics.horizon_s > one.metrics.horizon_s
+        # At rest means within 0.1 % of the peak: the error integral then misses about as much.
+        assert one.metrics.iae_pct_s == pytest.approx(other.metrics.iae_pct_s, rel=5e-3)
+        assert one.metrics.peak_pct == other.metrics.peak_pct
+
+
+def test_a_widened_step_changes_little() -> None:
+    """A slow loop that is scanned often is not followed through every scan; the figures stay."""
+    structure = cascade_structure(
+        [LoopStage(Controller(1.0, 3000.0, interval_s=1.0), Process(1.0, (3000.0,), 600.0))],
+        final_element=VALVE,
+    )
+    chosen = choose_clocks([[structure]])[0]
+    assert isinstance(chosen, Clock)
+    assert chosen.step_s > 1.0
+    coarse = simulate([structure], standard_scenarios(1))[0]
+    fine = simulate(
+        [structure], standard_scenarios(1), clock=Clock(1.0, round(chosen.step_s * chosen.steps))
+    )[0]
+    assert coarse[0].metrics.executed_interval_s == (chosen.step_s,)
+    for one, other in zip(coarse, fine, strict=True):
+        # One degree of phase at the crossover.
+        assert one.metrics.iae_pct_s == pytest.approx(other.metrics.iae_pct_s, rel=0.01)
+        assert one.metrics.peak_pct == pytest.approx(other.metrics.peak_pct, rel=0.01)
+
+
+def test_a_fast_loop_is_stepped_within_its_interval() -> None:
+    structure = cascade_structure(
+        [LoopStage(Controller(0.9, 4.0, interval_s=2.0), Process(1.0, (4.0,), 1.0))], final_element=VALVE
+    )
+    clock = choose_clocks([[structure]])[0]
+    assert isinstance(clock, Clock)
+    assert clock.step_s < 2.0
+    response = simulate([structure], standard_scenarios(1))[0][0]
+    assert response.metrics.executed_interval_s == (2.0,)
+
+
+def test_a_loop_that_cannot_settle_says_so() -> None:
+    stage = LoopStage(Controller(9.0, interval_s=0.1), Process(1.0, (10.0, 10.0, 10.0)))
+    structure = cascade_structure([stage], final_element=VALVE)
+    metrics = simulate([structure], [Scenario("sp", setpoint_step_pct=5.0)])[0][0].metrics
+    assert metrics.settling_s == math.inf
+    assert metrics.reversals > 3
+
+
+TOO_WIDE = cascade_structure(
+    [
+        LoopStage(Controller(1.0, 0.1, interval_s=0.05), Process(1.0, (0.1,), 0.05)),
+        LoopStage(Controller(1.0, 1e5, interval_s=1.0), Process(1.0, (1e5,), 1e4)),
+    ],
+    final_element=VALVE,
+)
+LEVEL = Process(0.01, (), 5.0, integrating=True)
+TWO_INTEGRATIONS = ControlStructure((LEVEL, LEVEL), (None, Controller(1.0, 100.0, interval_s=1.0)), VALVE)
+
+
+def test_a_group_that_cannot_be_simulated_leaves_the_others() -> None:
+    found = simulate_metrics(
+        [
+            ([TOO_WIDE], standard_scenarios(2)),
+            ([TIC], standard_scenarios(2)),
+            ([TWO_INTEGRATIONS], standard_scenarios(2)),
+        ]
+    )
+    assert isinstance(found[0], Unsuited)
+    assert isinstance(found[2], Unsuited)
+    assert not isinstance(found[1], Unsuited)
+    assert len(found[1][0]) == 3
+
+
+@pytest.mark.parametrize(
+    ("build", "said"),
+    [
+        (lambda: ControlStructure((), (), VALVE), "at least one process"),
+        (lambda: ControlStructure((LEVEL,), (), VALVE), "one entry per process"),
+        (lambda: ControlStructure((LEVEL,), (None,), VALVE, (50.0, 50.0)), "one start per process"),
+        (lambda: FinalElement(stroke_time_s=-1.0), "stroke time"),
+        (lambda: FinalElement(backlash_pct=100.0), "backlash"),
+        (lambda: FinalElement(start_pct=101.0), "outside its travel"),
+        (
+            lambda: simulate([TIC], [Scenario("d", disturbances=(Disturbance(2, 1.0),))]),
+            "there is no level 2",
+        ),
+        (
+            lambda: simulate([ControlStructure((Process(1.0),), (None,), VALVE)], standard_scenarios(1)),
+            "nothing in this structure",
+        ),
+        (lambda: simulate([TOO_WIDE], standard_scenarios(2)), "too far apart"),
+        (lambda: simulate([TWO_INTEGRATIONS], standard_scenarios(2)), "two integrating processes"),
+    ],
+)
+def test_what_cannot_be_simulated_is_refused(build: object, said: str) -> None:
+    with pytest.raises(ValueError, match=said):
+        build()  # type: ignore[operator]
