@@ -363,6 +363,59 @@ def test_what_is_not_given_is_undecided_and_not_guessed() -> None:
     assert (found.output, found.elements, [one.interlock.tag for one in found.initiated]) == (0, (), ["IS-3013H"])
 
 
+SELECTED = """
+format: 1
+units: {"20": {name: Test}}
+loops:
+  TIC-2001:
+    unit: "20"
+    measurement: {transmitter: TT-2001, variable: temperature, range: 0 to 1200 degC, signal: 4-20 mA}
+    controller: {action: reverse, gain: 1, output: {to: TY-2001}, modes: {normal: automatic}}
+    process: {effect: rises}
+    hazard: high
+  TIC-2002:
+    unit: "20"
+    measurement: {transmitter: TT-2002, variable: temperature, range: 0 to 400 degC, signal: 4-20 mA}
+    operating: {normal: 200 degC}
+    controller: {action: reverse, gain: 1, setpoint: {normal: 300 degC}, output: {to: TY-2001},
+                 modes: {normal: automatic}}
+    process: {effect: rises}
+    hazard: high
+functions:
+  TY-2001: {kind: low select, unit: "20", to: EH-2001}
+final_elements:
+  EH-2001: {unit: "20", kind: heater bank, opens_on: rising signal, fails: stopped, signal: 4-20 mA}
+interlocks:
+  IS-2001: {unit: "20", layer: safety, voting: 2oo2, actions: {EH-2001: stopped},
+            initiators: {TT-2001: {trips: above 1100 degC}, TT-2002: {trips: above 390 degC}}}
+  IS-2002: {unit: "20", layer: safety, voting: 1oo2, actions: {EH-2001: stopped},
+            initiators: {TT-2001: {trips: above 1150 degC}, TT-2002: {trips: above 395 degC}}}
+"""
+
+
+def test_a_selector_before_a_final_element_works_as_before_a_loop(tmp_path: Path) -> None:
+    plant = written(tmp_path, SELECTED)
+    # TIC-2002 stands by (200 of 300 degC); reading low it asks for more heat, and the low select passes it over.
+    idle = effect(plant, "TIC-2002", Failure.MEASUREMENT_LOW)
+    assert [(one.direction, one.instead) for one in idle.elements] == [(0, ("TIC-2001",))]
+    # Reading high it takes the heat away, from both temperatures.
+    assert directions(effect(plant, "TIC-2002", Failure.MEASUREMENT_HIGH)) == {"TIC-2002": -1, "TIC-2001": -1}
+    # TIC-2001 reading low turns the heat up until TIC-2002 takes over.
+    up = effect(plant, "TIC-2001", Failure.MEASUREMENT_LOW)
+    assert directions(up) == {"TIC-2001": 1, "TIC-2002": 1}
+    assert up.consequences[0].opposed_by == ("TIC-2002",)
+    # Without its signal a heater bank is off.
+    assert [one.position for one in effect(plant, "TIC-2001", Failure.OUTPUT_LOST).elements] == ["stopped"]
+
+
+def test_an_initiator_that_needs_another_does_not_stand_alone(tmp_path: Path) -> None:
+    plant = written(tmp_path, SELECTED)
+    told = {one.loop.tag: one for one in effect(plant, "TIC-2001", Failure.MEASUREMENT_LOW).consequences}
+    # Of TT-2002 alone, IS-2001 (2oo2) does not trip; IS-2002 (1oo2) does.
+    assert [one.interlock.tag for one in told["TIC-2002"].trips] == ["IS-2002"]
+    assert [one.interlock.tag for one in effect(plant, "TIC-2001", Failure.MEASUREMENT_HIGH).initiated] == ["IS-2002"]
+
+
 def test_a_reading_cannot_trip_beyond_the_end_of_its_range() -> None:
     # IS-3012H trips above 136.6 % and LT-3012 ends at 100 % (`trip-outside-range` says so).
     plant = plant_of(EXAMPLES / "tennessee-eastman")

@@ -79,11 +79,9 @@ class FailureStory:
 
     def _measurement(self, loop: ControlledLoop) -> Iterator[FailureRow]:
         sensor = transmitter_of(loop.loop)
-        for effect in self._analysis.effects(loop.tag) if sensor else ():
-            if effect.failure is Failure.MEASUREMENT_BAD:
-                fails = _own_fault(loop.loop)
-            else:
-                fails = _WRONG.get(effect.failure, "")
+        leads_anywhere = loop.routes or self._analysis.functions_of(loop.loop) or self._analysis.trips_on(sensor)
+        for effect in self._analysis.effects(loop.tag) if sensor and leads_anywhere else ():
+            fails = _fails(loop.loop, effect.failure)
             if fails:
                 control = sentences(*self._control(effect, loop))
                 idle = normal_mode(loop) in PASSIVE_MODES
@@ -129,9 +127,11 @@ class FailureStory:
             told.append(f"{mover} {listed(moves(move.element, _sign(move)) for move in moved)}")
         if told:
             yield listed(told)
-        for move in by_loops:
-            if move.instead and not _sign(move) and move.selector:
-                yield f"{move.selector.tag} goes on passing the demand of {listed(move.instead, 'or')}"
+        passed: list[SetpointMove | ElementMove] = [*by_loops, *effect.elements]
+        for candidate in passed:
+            if candidate.instead and not _sign(candidate) and candidate.selector:
+                asks = "" if told else f"{loop.tag} asks for {'more' if output > 0 else 'less'}. "
+                yield f"{asks}{candidate.selector.tag} goes on passing the demand of {listed(candidate.instead, 'or')}"
         for move in by_functions:
             wanted = "higher" if _sign(move) > 0 else "lower"
             yield f"{move.by} asks {move.loop.tag} for a {wanted} {Names((move.loop.loop,)).bare(move.loop.loop)}"
@@ -249,7 +249,8 @@ class FailureStory:
 
     def _still(self, consequences: Sequence[Consequence], effect: FailureEffect) -> str:
         still = [self._names.the(one.loop) for one in consequences if one.direction == 0]
-        if still and any(move.instead for move in effect.setpoints):
+        passed_over = any(move.instead for move in effect.setpoints) or any(move.instead for move in effect.elements)
+        if still and passed_over:
             return f"nothing moves, but {listed(still)} {'is' if len(still) == 1 else 'are'} no longer limited"
         if not still:
             return ""
@@ -298,14 +299,18 @@ def _sign(move: ElementMove | SetpointMove) -> int:
     return move.direction if isinstance(move.direction, int) else 0
 
 
-def _own_fault(loop: Loop) -> str:
-    """How the transmitter's own fault shows; empty where the register does not say."""
+def _fails(loop: Loop, failure: Failure) -> str:
+    """What the transmitter does; empty where the register does not say, or where another row says it."""
     fault = fault_reading(loop.measurement)
-    if isinstance(fault, Undecided):
-        return ""
-    if fault.noticed:
-        return "signals a fault"
-    return "fails and holds its last value" if fault.reads == "holds" else f"fails and {fault.reads}"
+    own = "" if isinstance(fault, Undecided) or fault.noticed else fault.reads
+    if failure is Failure.MEASUREMENT_BAD:
+        if isinstance(fault, Undecided):
+            return ""
+        if fault.noticed:
+            return "signals a fault"
+        return "fails and holds its last value" if own == "holds" else ""
+    wrong = _WRONG.get(failure, "")
+    return f"{wrong}, as when it fails" if wrong and own == wrong.replace("too ", "") else wrong
 
 
 def _idle(loop: ControlledLoop) -> str:

@@ -64,14 +64,25 @@ def interlock_effects(plant: Plant, tags: Iterable[str]) -> str:
 
 
 def initiated_by(plant: Plant, loops: Iterable[Loop]) -> str:
-    """Which interlocks these loops' transmitters trip, in one paragraph."""
+    """Which interlocks these loops' transmitters trip, alone or together with others, in one paragraph."""
     own = {loop.tag for loop in loops}
-    told = [
-        (trip.interlock.tag, _condition(trip.initiator))
-        for trip in plant.trips
-        if trip.loop is not None and trip.loop.tag in own
-    ]
-    return sentences(*(f"{tag} trips when {listed(conditions, 'or')}" for tag, conditions in grouped(told).items()))
+    trips = [trip for trip in plant.trips if trip.loop is not None and trip.loop.tag in own]
+    alone = grouped((trip.interlock.tag, _condition(trip.initiator)) for trip in trips if _alone(trip.interlock))
+    voted = grouped(
+        (f"{trip.interlock.tag} ({known(trip.interlock.voting) or 'voting not given'})",
+         _condition(trip.initiator, verb=""))
+        for trip in trips if not _alone(trip.interlock)
+    )  # fmt: skip
+    return sentences(
+        *(f"{tag} trips when {listed(conditions, 'or')}" for tag, conditions in alone.items()),
+        *(f"{tag} counts {listed(conditions)} among its conditions" for tag, conditions in voted.items()),
+    )
+
+
+def _alone(interlock: Interlock) -> bool:
+    """Whether one initiator is enough."""
+    voting = known(interlock.voting)
+    return voting.startswith("1oo") if voting else len(interlock.initiators) == 1
 
 
 def _acts(interlock: Interlock, only: set[str] | None = None) -> str:

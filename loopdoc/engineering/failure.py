@@ -24,7 +24,8 @@ Sources: NAMUR NE 43 (2003, 2021), limits as in `loopdoc.engineering.scaling`; t
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+import re
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from enum import StrEnum
 from functools import cached_property
@@ -46,6 +47,7 @@ from loopdoc.engineering.spreading import (
     times,
     transmitter_of,
     upward,
+    ways_to,
 )
 from loopdoc.register.model import FinalElement, Function, Hold, Interlock, Loop, Measurement, known
 
@@ -326,12 +328,10 @@ class _Effects:
 
     def _elements_lost(self, failure: Failure, moved: tuple[ElementMove, ...], at: tuple[str, ...]) -> FailureEffect:
         moves = Moves(elements=list(moved))
-        lost = {move.element.tag: move for move in moved}
-        for loop in self._plant.scheme_of(self._loop.tag).loops:
-            controlled = self._plant.controlled.get(loop.tag)
-            for route in controlled.routes if controlled else ():
-                if controlled and route.end.tag in lost and lost[route.end.tag].direction != 0:
-                    moves.ways.append((controlled, route, lost[route.end.tag].direction))
+        own = self._plant.controlled[self._loop.tag]
+        for move in moved:
+            if move.direction != 0:
+                moves.ways.extend(ways_to(self._plant, own, move.element.tag, move.direction))
         return self._effect(self._loop, failure, "", 0, moves, at=at)
 
     # -- what it does to the process
@@ -411,16 +411,27 @@ class _Effects:
             for kind in (("high", "high_high") if sign > 0 else ("low", "low_low"))
             if kind in watcher.alarms
         )
-        sides = {"above" if sign > 0 else "below" for sign in watched}
         trips = tuple(
             trip
-            for watcher in watchers
-            for trip in self._analysis.trips_on(transmitter_of(watcher))
-            if known(trip.initiator.direction) in sides
-            and (alarms_stand or known(trip.interlock.layer) == "safety")
+            for sign in watched
+            for trip in self._voting(watchers, "above" if sign > 0 else "below")
+            if alarms_stand or known(trip.interlock.layer) == "safety"
         )
         opposed_by = moves.opposed.get(loop.tag, ())
         return Consequence(loop, direction, hazardous, alarms if alarms_stand else (), trips, opposed_by)
+
+    def _voting(self, watchers: Sequence[Loop], side: str) -> Iterator[Trip]:
+        """Initiators on these measurements that are enough together to trip their interlock."""
+        found = [
+            trip
+            for watcher in watchers
+            for trip in self._analysis.trips_on(transmitter_of(watcher))
+            if known(trip.initiator.direction) == side
+        ]
+        for trip in found:
+            votes = sum(1 for other in found if other.interlock is trip.interlock)
+            if votes >= (_needed(trip.interlock) or len(trip.interlock.initiators)):
+                yield trip
 
     def _opposing(self, moves: Moves, failed: set[str]) -> tuple[Interlock, ...]:
         """Interlocks without the failed sensor that put a moved final element back where it came from."""
@@ -451,8 +462,13 @@ def _forced(controlled: ControlledLoop, mode: str, written: str) -> Direction:
 
 def _trips_alone(trip: Trip) -> bool:
     """Whether this one initiator is enough to trip its interlock."""
-    voting = known(trip.interlock.voting)
-    return voting.startswith("1oo") if voting else len(trip.interlock.initiators) == 1
+    return (_needed(trip.interlock) or len(trip.interlock.initiators)) == 1
+
+
+def _needed(interlock: Interlock) -> int | None:
+    """How many initiators trip an interlock; None where the voting is not known."""
+    votes = re.fullmatch(r"([1-9])oo[1-9]", known(interlock.voting) or "")
+    return int(votes[1]) if votes else None
 
 
 def _within_reach(trip: Trip) -> bool:
@@ -471,12 +487,16 @@ def _without_signal(element: FinalElement) -> tuple[Direction, str]:
     if signal is None or signal == "digital":
         told = "its signal is not given" if signal is None else "a digital signal has no low end"
         return Undecided(f"where {element.tag} goes without its signal does not follow: {told}"), ""
-    if known(element.kind) in _ELECTRIC:
-        # On a contact it stops; whether a speed signal that is lost stops a drive or leaves it at its lowest
-        # speed is set in the drive.
-        return -1, "stopped" if signal == "contact" else ""
+    kind = known(element.kind)
+    if signal == "contact" and kind in _ELECTRIC:
+        return -1, "stopped"
+    if kind in ("variable-speed drive", "motor"):
+        # Whether it stops without its speed signal or falls to its lowest speed is set in the drive.
+        if opens_on == "rising signal":
+            return -1, ""
+        return Undecided(f"what {element.tag} does without its signal is set in the drive"), ""
     if opens_on == "rising signal":
-        return -1, "closed"
+        return -1, "stopped" if kind == "heater bank" else "closed"
     if opens_on == "falling signal":
         return 1, "open"
     return Undecided(f"{element.tag} does not say on which signal it opens"), ""

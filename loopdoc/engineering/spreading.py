@@ -50,8 +50,9 @@ class ElementMove:
     direction: Direction
     position: str
     """closed, open, stopped or last, where the failure leads to a position of its own; else empty."""
+    selector: Function | None = None
     instead: tuple[str, ...] = ()
-    """As for a setpoint: the candidates of a selector that command it in place of this movement."""
+    """As for a setpoint: a selector on the way, and its candidates that command in place of this movement."""
 
 
 @dataclass(slots=True)
@@ -61,7 +62,7 @@ class Moves:
     setpoints: list[SetpointMove] = field(default_factory=list)
     elements: list[ElementMove] = field(default_factory=list)
     ways: list[tuple[ControlledLoop, Route, Direction]] = field(default_factory=list)
-    """Every way to a final element that moved: the loop that moves it, its route, the opening."""
+    """Every way from a final element that moved: a loop that can move it, its route, the opening."""
     opposed: dict[str, tuple[str, ...]] = field(default_factory=dict)
     """Loops that go on working against the movement, by the tag of the loop on whose measurement they do."""
     commanded: set[str] = field(default_factory=set)
@@ -153,14 +154,24 @@ def command(plant: Plant, controlled: ControlledLoop, output: Direction, moves: 
             opening = times(direction, element if isinstance(element, Undecided) else element.sign)
             if route.branch is not None and route.branch.low > route.branch.high:
                 opening = times(opening, -1)
-            moves.elements.append(ElementMove(route.end, opening, "", instead))
+            moves.elements.append(ElementMove(route.end, opening, "", selector, instead))
             if opening != 0:
-                moves.ways.append((controlled, route, opening))
+                moves.ways.extend(ways_to(plant, controlled, route.end.tag, opening))
         elif route.end.tag in plant.controlled:
             secondary = plant.controlled[route.end.tag]
             limit = output_limit(controlled, output)
             moves.setpoints.append(SetpointMove(secondary, controlled.tag, direction, limit, selector, instead))
             _follow(plant, secondary, direction, moves)
+
+
+def ways_to(
+    plant: Plant, controlled: ControlledLoop, element: str, opening: Direction
+) -> list[tuple[ControlledLoop, Route, Direction]]:
+    """Every loop of a scheme whose measurement a moved final element reaches, each with its route to it."""
+    scheme = plant.scheme_of(controlled.tag)
+    loops = [plant.controlled[loop.tag] for loop in scheme.loops if loop.tag in plant.controlled]
+    loops.sort(key=lambda loop: loop is not controlled)
+    return [(loop, route, opening) for loop in loops for route in loop.routes if route.end.tag == element]
 
 
 def through_function(plant: Plant, function: Function, entry: str, reading: Direction, moves: Moves) -> None:
