@@ -58,8 +58,8 @@ COLUMN_WIDTH = 0.493 * PAGE_WIDTH
 """Of each of the two columns below the drawing [pt]."""
 LABEL_SHARE = 0.21
 """Of a column's width, for a label."""
-_HEADING = 8 * 1.36 + 1.9 * MM
-_SIGN_OFF = 8 * MM + 0.4
+_HEADING = 8 * 1.36 + 1.6 * MM
+_SIGN_OFF = 8 * MM + 0.5
 
 
 @dataclass(frozen=True, slots=True)
@@ -255,13 +255,13 @@ def sheet_height(view: SheetView, size: float) -> float:
     height += paragraph_height(view.purpose, PAGE_WIDTH, 8.4, 1.25, narrow=False) + 1.0 * MM
     share = PAGE_WIDTH / len(view.facts)
     height += table_height([[(value, share, False) for _, value in view.facts]], size, label=True)
-    height += 1.2 * MM + view.drawing_height
+    height += 1.0 * MM + view.drawing_height
     height += max(_left_height(view, size), sum(_panel_height(panel, size) for panel in view.controller))
     for table in (*view.tables, *((view.revisions,) if view.revisions else ())):
-        height += 1.5 * MM + _listed_height(table, PAGE_WIDTH, size)
+        height += 1.2 * MM + _listed_height(table, PAGE_WIDTH, size)
     lines = [f"{point.kind} ({point.rule}): {point.text}" for point in view.points]
     lines += [*filter(None, (view.more_points,)), *(f"HOLD    {line}" for line in view.holds)]
-    height += 1.5 * MM if lines else 0.0
+    height += 1.2 * MM if lines else 0.0
     height += sum(paragraph_height(line, PAGE_WIDTH, size, 1.2) + 0.4 * MM for line in lines)
     return height + _SIGN_OFF
 

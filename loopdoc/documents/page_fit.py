@@ -25,7 +25,8 @@ _LINE = 1.18
 """Line height of a table in type sizes."""
 _PADDING = 0.3 * MM
 _SIDE = 0.8 * MM
-_BORDER = 0.4
+_BORDER = 0.5
+"""Two half lines [pt]."""
 
 
 @dataclass(frozen=True, slots=True)

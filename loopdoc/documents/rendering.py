@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import base64
+import re
 from functools import lru_cache
 from importlib.resources import files
 from typing import Any
@@ -45,13 +46,18 @@ def render(template: str, **view: Any) -> str:
 
 @lru_cache(maxsize=1)
 def style_sheet() -> str:
-    """The style sheet for print: fonts through the package's own address, so the machine's fonts do not matter."""
+    """The style sheet for print: fonts through the package's own address, so the machine's fonts do not matter.
+
+    Variables are put in here, since WeasyPrint would resolve them anew for every cell of every table.
+    """
     faces = "\n".join(
         f"@font-face {{ font-family: '{family}'; font-style: {style}; font-weight: {weight}; "
         f"src: url('loopdoc-font:{name}') }}"
         for (family, style, weight), name in FONTS.items()
     )
-    return faces + "\n" + template_text("style.css")
+    css = template_text("style.css")
+    values = dict(re.findall(r"(--[\w-]+): ([^;}]+?)\s*[;}]", css))
+    return faces + "\n" + re.sub(r"var\((--[\w-]+)\)", lambda use: values[use[1]], css)
 
 
 def font(name: str) -> bytes:

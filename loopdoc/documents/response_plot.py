@@ -11,9 +11,9 @@ from loopdoc.engineering.dynamics import LoopDynamics
 from loopdoc.engineering.step_response import SetpointResponse, setpoint_response
 from loopdoc.register.quantity import display_number
 
-WIDTH, HEIGHT = 251.0, 62.0
+WIDTH, HEIGHT = 251.0, 56.0
 """Of the figure [pt]."""
-_LEFT, _RIGHT, _TOP, _BOTTOM = 24.0, 244.0, 5.0, 50.0
+_LEFT, _RIGHT, _TOP, _BOTTOM = 14.0, 246.0, 4.0, 44.0
 _POINTS = 140
 _TIME_UNITS = ((7200.0, 3600.0, "h"), (300.0, 60.0, "min"), (0.0, 1.0, "s"))
 """From this duration on [s], divide by this and write that."""
