@@ -295,6 +295,13 @@ def test_findings_and_deviations_of_the_loop_stand_on_its_sheet(tmp_path: Path) 
     assert "Approved by Operations" in deviation.text
 
 
+def test_words_of_the_register_stand_in_quotation_marks(tmp_path: Path) -> None:
+    page = sheet_of(tmp_path, "loops:\n  FIC-1: {controller: {output: {to: FV-404}}}\n")
+    unknown = next(point for point in page.view["sheet"].points if point.rule == "reference-unknown")
+    assert "“FV-404”" in unknown.text
+    assert "`" not in unknown.text
+
+
 def test_more_findings_than_a_sheet_takes_are_counted(tmp_path: Path) -> None:
     page = sheet_of(
         tmp_path,

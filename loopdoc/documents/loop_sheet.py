@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, replace
 
@@ -217,7 +218,9 @@ def _commands(plant: Plant, tag: str) -> str:
 
 def _open_point(finding: Finding, own: str) -> Point:
     subject = "" if finding.tag == own else f"{finding.tag}: "
-    return Point(str(finding.level).capitalize(), finding.rule, f"{subject}{finding.message}.")
+    # On a page, words of the register stand in quotation marks and not in the back ticks of a terminal.
+    message = re.sub(r"`([^`]*)`", "“\\1”", finding.message)
+    return Point(str(finding.level).capitalize(), finding.rule, f"{subject}{message}.")
 
 
 def _accepted_point(finding: Finding, own: str) -> Point:
