@@ -181,6 +181,8 @@ def settings_of(written: model.Controller, tag: str) -> StandardSettings:
     if gain is None and band is not None:
         gain = gain_from_proportional_band(band.to("%"))
     gain = _need(written.gain if gain is None else gain, f"the gain of {tag}")
+    if gain < 0.0:
+        raise ValueError("the gain is negative, where the action gives the sign")
     reset, repeats = (
         _need_not_held(written.reset, f"the reset of {tag}"),
         _need_not_held(written.repeats, f"the repeats of {tag}"),
@@ -336,6 +338,11 @@ def _model(loop: model.Loop, written: model.Process, commanded_unit: str, comman
         raise _Lacking(f"the lag of {tag} is on hold")
     _need_not_held(written.dead_time, f"the dead time of {tag}")
     lead = _need_not_held(written.lead, f"the lead of {tag}")
+    if gain.integrates(own.unit.symbol) != written.integrating:
+        is_rate = "no rate of change, but the process is" if written.integrating else "a rate of change, but the process is not"
+        raise _Lacking(f"the process gain of {tag} is {is_rate} said to integrate")
+    if gain.value * {"rises": 1, "falls": -1}.get(known(written.effect) or "", 0) < 0:
+        raise _Lacking(f"the process gain of {tag} contradicts the effect")
     try:
         per_unit = gain.in_units(own.unit.symbol, commanded_unit) * commanded_span / own.span
         return Process(

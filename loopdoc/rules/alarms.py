@@ -6,10 +6,12 @@ from collections.abc import Iterator
 from itertools import pairwise
 
 from loopdoc.engineering.pairing import LoopAlarm
-from loopdoc.register.model import ALARM_ORDER, Loop, known
+from loopdoc.engineering.time_to_act import AlarmToTrip, TimeBetween, TimeToAct
+from loopdoc.register.model import ALARM_ORDER, Hold, Loop, known
+from loopdoc.register.quantity import Quantity
 from loopdoc.rules.finding import Level
 from loopdoc.rules.rule import Draft, draft, need, not_checked, only_if, rule
-from loopdoc.rules.values import above, amount, below, equal, measured_range, range_place, reading, scale_in
+from loopdoc.rules.values import above, amount, below, duration, equal, measured_range, range_place, reading, scale_in
 
 _NAMES = {"low_low": "low-low", "low": "low", "high": "high", "high_high": "high-high", "deviation": "deviation"}
 
@@ -96,3 +98,66 @@ def alarm_outside_range(subject: LoopAlarm) -> Iterator[Draft]:
         at=alarm.origin.place("limit"),
         related=related,
     )
+
+
+@rule(
+    level=Level.WARNING,
+    source="ANSI/ISA-18.2-2016, rationalisation: an alarm leaves the operator time to respond (from memory)",
+)
+def alarm_time_short(subject: LoopAlarm, times: TimeToAct) -> Iterator[Draft]:
+    """Between an alarm and the trip behind it an upset leaves less time than the operator is given.
+
+    Why:
+        The alarm schedule promises a time to respond. If the interlock trips before it is over, the response
+        is not an answer to that upset, and whoever counts on the operator counts on nothing.
+    Breaks:
+        A low alarm at 33 % with 5 min to respond before a trip below 20 %, where the level falls by 3 % a
+        minute once the feed is lost: 4.3 min.
+    Holds:
+        Under each upset, the final element at either end of its travel or a declared disturbance, with the
+        loops in manual and from normal operation, the time from the alarm to the trip is the time to respond
+        or more. The delays of both and the filters of their measurements count.
+    What this check cannot see:
+        How long the response itself takes to show. Upsets that the register does not declare, and alarms on
+        another quantity that warn of the same trip.
+    """
+    loop, alarm = subject.loop, subject.alarm
+    behind = times.of(loop, alarm)
+    only_if(behind)
+    given = need(alarm.time_to_respond, "the time to respond")
+    lacking = ""
+    for entry in behind:
+        reached = sorted(entry.times, key=lambda time: time.available_s)
+        short = [time for time in reached if below(time.available_s, given.to("s"))]
+        certain = next((time for time in short if not time.at_least), None)
+        if certain is not None:
+            yield _too_short(entry, certain, given)
+        elif short:
+            lacking = lacking or f"how far the final element stands open before {short[0].upset} is not known"
+        for upset in entry.not_decided:
+            lacking = lacking or f"{upset.upset}: {upset.reason}"
+    if lacking:
+        not_checked(lacking)
+
+
+def _too_short(entry: AlarmToTrip, time: TimeBetween, given: Quantity) -> Draft:
+    alarm, trip = entry.alarm, entry.trips[0]
+    name = f"the {_NAMES[alarm.kind]} alarm at {known(alarm.limit)}{_delayed(alarm.delay)}"
+    limit = f"{known(trip.initiator.direction)} {known(trip.initiator.limit)}{_delayed(trip.initiator.delay)}"
+    order = "before" if time.available_s > 0 else "after"
+    return draft(
+        entry.loop.tag,
+        f"under the upset `{time.upset}` {name} comes {duration(abs(time.available_s))} {order} the trip of "
+        f"{entry.interlock.tag} {limit}; the operator is given {given}",
+        remedy=f"move the alarm away from the trip, or write what time there is; where {entry.interlock.tag} alone is "
+        "to meet this upset, say so in a deviation",
+        at=alarm.origin.place("time_to_respond"),
+        related=(
+            (alarm.origin.place("limit"), name),
+            (trip.initiator.origin.place("trips"), f"{entry.interlock.tag} trips {limit}"),
+        ),
+    )
+
+
+def _delayed(delay: Quantity | Hold | None) -> str:
+    return f" (delay {delay})" if isinstance(delay, Quantity) and delay.value else ""

@@ -8,9 +8,20 @@ from loopdoc.rules.action import (
     fail_position_signal_mismatch,
     fail_position_unsafe,
 )
-from loopdoc.rules.alarms import alarm_order, alarm_outside_range
+from loopdoc.rules.alarms import alarm_order, alarm_outside_range, alarm_time_short
 from loopdoc.rules.document_control import hold_open
-from loopdoc.rules.interlocks import trip_before_alarm, trip_outside_range
+from loopdoc.rules.dynamics import (
+    cascade_interval_order,
+    cascade_no_benefit,
+    cascade_too_slow,
+    filter_too_slow,
+    interval_too_slow,
+    loop_unstable,
+    margin_low,
+    rate_on_flow,
+    stroke_too_slow,
+)
+from loopdoc.rules.interlocks import interlock_too_slow, trip_before_alarm, trip_outside_range
 from loopdoc.rules.pairing import mode_normal_conflict, pairing_cycle, pairing_two_primaries
 from loopdoc.rules.ranges import (
     operating_outside_range,
@@ -57,11 +68,22 @@ RULES: tuple[Rule, ...] = (
     # alarms
     alarm_order,
     alarm_outside_range,
+    alarm_time_short,
     # interlocks
     trip_before_alarm,
     trip_outside_range,
-    # tuning
+    interlock_too_slow,
+    # tuning and dynamics
     tuning_invalid,
+    loop_unstable,
+    margin_low,
+    interval_too_slow,
+    cascade_interval_order,
+    cascade_too_slow,
+    cascade_no_benefit,
+    filter_too_slow,
+    rate_on_flow,
+    stroke_too_slow,
     # document control
     hold_open,
 )

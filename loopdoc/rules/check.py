@@ -8,7 +8,9 @@ from collections.abc import Collection, Iterable, Iterator
 from dataclasses import replace
 from typing import Any
 
+from loopdoc.engineering.dynamics import Dynamics
 from loopdoc.engineering.pairing import Plant
+from loopdoc.engineering.time_to_act import TimeToAct
 from loopdoc.register.model import Deviation, known
 from loopdoc.register.place import Fault
 from loopdoc.rules.catalogue import RULES
@@ -28,13 +30,22 @@ def check(
     only: Collection[str] = (),
     today: datetime.date | None = None,
     rules: tuple[Rule, ...] = RULES,
+    dynamics: Dynamics | None = None,
 ) -> CheckResult:
     """Check a plant by all rules, or by the ones named in ``only``.
 
-    ``faults`` are what the reader of the text found; they become findings of the rule `schema`.
+    ``faults`` are what the reader of the text found; they become findings of the rule `schema`. ``dynamics`` are
+    those of the plant, where whoever asks for the check needs them as well.
     """
     register = plant.register
-    scope = Scope(plant, limits_from(register.policy), _by_file(faults), tuple(rule.id for rule in rules))
+    scope = Scope(
+        plant,
+        limits_from(register.policy),
+        _by_file(faults),
+        tuple(rule.id for rule in rules),
+        dynamics or Dynamics(plant),
+        TimeToAct(plant),
+    )
     found: list[Finding] = []
     coverage: dict[str, Coverage] = {}
     for rule in rules:
@@ -77,7 +88,8 @@ def _in_subject(rule: Rule, subject: Any, asked: tuple[Any, ...], scope: Scope, 
 
 
 def _finding(rule: Rule, found: Draft) -> Finding:
-    return Finding(rule.id, rule.level, found.tag, found.message, found.remedy, found.place, found.related)
+    level = found.level or rule.level
+    return Finding(rule.id, level, found.tag, found.message, found.remedy, found.place, found.related)
 
 
 def _by_file(faults: Iterable[Fault]) -> Faults:

@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterator
 
 from loopdoc.engineering.pairing import Plant, Trip
-from loopdoc.register.model import Loop, known
+from loopdoc.register.model import Interlock, Loop, known
 from loopdoc.rules.finding import Level
+from loopdoc.rules.policy import Limits
 from loopdoc.rules.rule import Draft, draft, need, only_if, rule
 from loopdoc.rules.values import Scale, above, below, equal, measured_range, range_place, reading, scale_in
 
@@ -115,4 +117,43 @@ def trip_outside_range(trip: Trip) -> Iterator[Draft]:
         remedy="set the limit inside the range, or give the transmitter a range that reaches beyond it",
         at=trip.initiator.origin.place("trips"),
         related=((range_place(owner), f"the range of {trip.initiator.tag}, {band}"),),
+    )
+
+
+@rule(
+    level=Level.WARNING,
+    source="IEC 61511-1:2016, process safety time (from memory); half of it for the response: common practice",
+)
+def interlock_too_slow(interlock: Interlock, limits: Limits) -> Iterator[Draft]:
+    """The response of an interlock takes too much of the time that the process gives.
+
+    Why:
+        When the final element stands at last, the hazardous event may have come. Sensor, logic and stroke are
+        never quicker than on paper, and a valve that has stood still for a year is slower.
+    Breaks:
+        A response time of 50 s with a process safety time of 90 s: more than half of it. An error where the
+        response takes the whole of it or more.
+    Holds:
+        The response time is at most the share of the policy of the process safety time. An interlock of the
+        safety layer gives both; one of the process layer is judged where it gives a process safety time.
+    What this check cannot see:
+        Whether either time is right: how the process runs away, and how the valve was tested.
+    """
+    only_if(interlock.process_safety_time is not None or known(interlock.layer) != "process")
+    if interlock.process_safety_time is None:
+        need(interlock.layer, "the layer")
+    given = need(interlock.process_safety_time, "the process safety time")
+    response = need(interlock.response_time, "the response time")
+    share = response.to("s") / given.to("s") if given.value > 0 else math.inf
+    if not above(share, limits.interlock_time_share):
+        return
+    whole = not below(share, 1.0)
+    told = "no less than" if whole else f"more than {100 * limits.interlock_time_share:g} % of"
+    yield draft(
+        interlock.tag,
+        f"its response time, {response}, is {told} the process safety time, {given}",
+        remedy="quicken the sensor, the logic or the final element, or act on an earlier sign of the event",
+        at=interlock.origin.place("response_time"),
+        related=((interlock.origin.place("process_safety_time"), f"the process safety time, {given}"),),
+        level=Level.ERROR if whole else None,
     )

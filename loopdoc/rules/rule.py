@@ -27,6 +27,8 @@ class Draft:
     remedy: str
     place: Place
     related: tuple[Related, ...]
+    level: Level | None = None
+    """Where this one is worse, or less, than the rule as a whole."""
 
 
 class NotChecked(Exception):
@@ -41,10 +43,17 @@ class NotApplicable(Exception):
 
 
 def draft(
-    tag: str, message: str, *, remedy: str, at: Place | Origin, related: tuple[tuple[Place | Origin, str], ...] = ()
+    tag: str,
+    message: str,
+    *,
+    remedy: str,
+    at: Place | Origin,
+    related: tuple[tuple[Place | Origin, str], ...] = (),
+    level: Level | None = None,
 ) -> Draft:
     """A finding about ``tag``; ``related`` are further places, each with what stands there."""
-    return Draft(tag, message, remedy, _place(at), tuple(Related(_place(where), what) for where, what in related))
+    others = tuple(Related(_place(where), what) for where, what in related)
+    return Draft(tag, message, remedy, _place(at), others, level)
 
 
 def _place(where: Place | Origin) -> Place:

@@ -6,7 +6,9 @@ from collections.abc import Callable, Iterable, Mapping
 from dataclasses import dataclass
 from typing import Any
 
+from loopdoc.engineering.dynamics import Dynamics
 from loopdoc.engineering.pairing import CascadeLink, ControlledLoop, LoopAlarm, Plant, Trip
+from loopdoc.engineering.time_to_act import TimeToAct
 from loopdoc.register.model import FinalElement, Function, HeldValue, Instrument, Interlock, Loop
 from loopdoc.register.place import Fault, Place
 from loopdoc.register.text import TextFile
@@ -29,6 +31,8 @@ class Scope:
     limits: Limits
     faults: Faults
     rule_ids: tuple[str, ...]
+    dynamics: Dynamics
+    times: TimeToAct
 
 
 SUBJECTS: Mapping[type, Callable[[Scope], Iterable[Any]]] = {
@@ -53,6 +57,8 @@ BESIDES: Mapping[type, Callable[[Scope], Any]] = {
     Plant: lambda scope: scope.plant,
     Limits: lambda scope: scope.limits,
     Faults: lambda scope: scope.faults,
+    Dynamics: lambda scope: scope.dynamics,
+    TimeToAct: lambda scope: scope.times,
 }
 """What a rule may ask for besides its subject (its further parameters)."""
 

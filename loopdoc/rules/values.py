@@ -38,6 +38,13 @@ def amount(value: float, unit: Unit) -> str:
     return str(Quantity(float(f"{value:.6g}"), unit))
 
 
+def duration(seconds: float) -> str:
+    """A calculated time as the register would write it, with two significant digits."""
+    if abs(seconds) < 100:
+        return f"{seconds:.2g} s"
+    return f"{seconds / 60:.2g} min" if abs(seconds) < 6000 else f"{seconds / 3600:.2g} h"
+
+
 @dataclass(frozen=True, slots=True)
 class Scale:
     """The unit in which values are compared, and whether they are differences of readings."""
