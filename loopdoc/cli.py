@@ -17,6 +17,25 @@ if TYPE_CHECKING:
     from loopdoc.register.load import Loaded
 
 EXIT_CLEAN, EXIT_FOUND, EXIT_UNREADABLE = 0, 1, 2
+IDENTIFY_HELP = """\
+The head of DATA.csv names three columns, the last two with their units; others are passed over:
+  time         numbers under `time [s]`, [min] or [h], or ISO 8601 times under a plain `time`
+  and one that says what was moved:
+    output     the controller's output in `%`, of a primary also in the units of its secondary
+    opening    the opening (or speed) of the final element, `%`
+    secondary  of a primary: the secondary's measurement or setpoint, in its units
+  measurement  in its units, or in `%` of the register's range
+Columns stand apart by commas, semicolons or tabs; a decimal comma is read beside the latter two. Each value of
+what was moved holds until the next line. Samples may be irregular; several steps, and bumps, are welcome.
+
+The model is what the register's `process` states: per percent of the final element's opening, or per unit of the
+secondary's measurement. The register says how an output becomes that: output block, direction of the valve, output
+span, split range. Test in manual (a primary: with the secondary following), from rest, and move back again: one
+step alone cannot tell the gain from a drift. Without REGISTER the model is per unit of the column as recorded,
+and nothing can be written.
+
+Exit code: 0 where the test supports a model, 1 where it is refused, 2 where something cannot be read or written.
+"""
 
 
 def main() -> int:
@@ -62,9 +81,7 @@ def _parser() -> argparse.ArgumentParser:
         return sub
 
     new = command("new", _new, "write a small register to start from")
-    new.add_argument(
-        "folder", type=Path, metavar="FOLDER", help="a folder that does not exist yet, or is empty"
-    )
+    new.add_argument("folder", type=Path, metavar="FOLDER", help="a folder that does not exist yet, or is empty")
 
     check = command("check", _check, "check a register and print the findings")
     _add_register(check)
@@ -79,9 +96,7 @@ def _parser() -> argparse.ArgumentParser:
 
     issue = command("issue", _issue, "issue the documents of a register")
     _add_register(issue)
-    issue.add_argument(
-        "--out", type=Path, required=True, metavar="FOLDER", help="where the documents are written"
-    )
+    issue.add_argument("--out", type=Path, required=True, metavar="FOLDER", help="where the documents are written")
     issue.add_argument(
         "--documents",
         nargs="+",
@@ -89,9 +104,7 @@ def _parser() -> argparse.ArgumentParser:
         default=[],
         help="narrative, loop-sheet, response (default: all)",
     )
-    issue.add_argument(
-        "--formats", default="pdf,html", metavar="LIST", help="pdf, html or pdf,html (default)"
-    )
+    issue.add_argument("--formats", default="pdf,html", metavar="LIST", help="pdf, html or pdf,html (default)")
     issue.add_argument(
         "--jobs",
         type=int,
@@ -106,8 +119,26 @@ def _parser() -> argparse.ArgumentParser:
     response.add_argument(
         "--format", choices=("text", "json"), default="text", help="form of the output (default: text)"
     )
-    response.add_argument(
-        "--plot", type=Path, metavar="FILE", help="also draw the responses, as .svg, .png or .pdf"
+    response.add_argument("--plot", type=Path, metavar="FILE", help="also draw the responses, as .svg, .png or .pdf")
+
+    identify = command("identify", _identify, "fit a process model to a recorded step or bump test")
+    identify.formatter_class = argparse.RawDescriptionHelpFormatter
+    identify.epilog = IDENTIFY_HELP
+    identify.add_argument(
+        "register", type=Path, nargs="?", metavar="REGISTER", help="folder that holds register.yaml; may be left out"
+    )
+    identify.add_argument("data", type=Path, metavar="DATA.csv", help="the recorded test")
+    identify.add_argument("--tag", metavar="TAG", help="tag of the loop tested; needed with REGISTER")
+    identify.add_argument(
+        "--format", choices=("text", "json"), default="text", help="form of the output (default: text)"
+    )
+    identify.add_argument(
+        "--plot", type=Path, metavar="FILE", help="also draw record, fit and residual, as .svg, .png or .pdf"
+    )
+    identify.add_argument(
+        "--write",
+        action="store_true",
+        help="write the model and its source into the register; the rest stays as it is",
     )
 
     explain = command("explain", _explain, "explain a rule: what it means, why, and what it cannot see")
@@ -181,9 +212,7 @@ def _issue(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int
     status = EXIT_CLEAN
     progress = _progress(stderr)
     try:
-        issued = issue(
-            basis, arguments.out, kinds=kinds, formats=formats, jobs=arguments.jobs, progress=progress
-        )
+        issued = issue(basis, arguments.out, kinds=kinds, formats=formats, jobs=arguments.jobs, progress=progress)
     except PdfError as error:
         stderr.write(f"loopdoc: {error}\n")
         if "html" not in formats:
@@ -227,6 +256,62 @@ def _response(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> 
             return EXIT_UNREADABLE
     stdout.write((response_json if arguments.format == "json" else response_text)(loop, comparisons))
     return EXIT_CLEAN
+
+
+def _identify(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
+    from loopdoc.engineering.stages import Lacking
+    from loopdoc.exchange.findings import escape
+    from loopdoc.exchange.identified import identified, identified_json, identified_text, write_into
+    from loopdoc.exchange.step_test import MAX_BYTES, read_step_test
+    from loopdoc.register.place import Fault, Place
+
+    def unreadable(message: str) -> int:
+        stderr.write(escape(f"loopdoc: {message}\n"))
+        return EXIT_UNREADABLE
+
+    if arguments.register is None and arguments.write:
+        return unreadable("--write needs the register into which it is to write")
+    if arguments.register is not None and arguments.tag is None:
+        return unreadable("say with --tag which loop was tested")
+    with arguments.data.open("rb") as file:
+        test = read_step_test(file.read(MAX_BYTES + 1), arguments.data.name)
+    if isinstance(test, Fault):
+        stderr.write(escape(f"{test.place}: error: {test.message}\n    remedy: {test.remedy}\n"))
+        return EXIT_UNREADABLE
+    loaded = _load(arguments.register, stderr) if arguments.register is not None else None
+    if loaded is None and arguments.register is not None:
+        return EXIT_UNREADABLE
+    found = identified(test, arguments.tag or "", loaded.register if loaded else None)
+    if isinstance(found, Lacking):
+        return unreadable(found.reason)
+    if arguments.plot is not None:
+        from loopdoc.documents.plots import save
+        from loopdoc.documents.step_test_plot import step_test_drawing
+
+        drawing = step_test_drawing(
+            found.plot_title,
+            time_s=test.time_s,
+            measurement=found.measurement,
+            measurement_unit=found.measurement_unit.display,
+            moved=found.moved,
+            moved_label=f"{found.moved_label}, {found.moved_unit.display}",
+            fitted_time_s=found.result.time_s,
+            fitted=found.result.fitted,
+        )
+        try:
+            save(drawing, arguments.plot)
+        except ValueError as error:
+            return unreadable(str(error))
+    written: Place | str | None = None
+    if arguments.write and loaded is not None and found.result.model is not None:
+        folder = arguments.register.parent if arguments.register.is_file() else arguments.register
+        written = write_into(loaded, folder, found)
+    place = written if isinstance(written, Place) else None
+    as_asked = identified_json if arguments.format == "json" else identified_text
+    stdout.write(as_asked(found, place))
+    if isinstance(written, str):
+        return unreadable(f"nothing was written: {written}")
+    return EXIT_CLEAN if found.result.model is not None else EXIT_FOUND
 
 
 def _explain(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
@@ -281,7 +366,8 @@ def _basis(path: Path, stderr: TextIO) -> Basis | None:
     from loopdoc.rules.check import check
 
     plant = Plant(loaded.register)
-    return Basis(plant, check(plant, loaded.faults), loaded.sources, Dynamics(plant))
+    dynamics = Dynamics(plant)
+    return Basis(plant, check(plant, loaded.faults, dynamics=dynamics), loaded.sources, dynamics)
 
 
 def _unknown_rule(ids: Sequence[str], stderr: TextIO) -> int:

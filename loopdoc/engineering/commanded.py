@@ -79,7 +79,7 @@ def commanded(
             route, values = _opening(loop, recorded, moved, unit)
             element = route.end
             assert isinstance(element, FinalElement)
-            what, moved_unit, turned = "opening", UNITS["%"], _is_reversed(route) and recorded == OUTPUT
+            what, moved_unit, turned = "opening", UNITS["%"], recorded == OUTPUT and _is_reversed(route)
         elif len(loop.routes) == 1:
             route, turned = loop.routes[0], False
             values, moved_unit = _secondary(loop, route, recorded, moved, unit)

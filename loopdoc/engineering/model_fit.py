@@ -33,6 +33,7 @@ _DEAD_TIME_RATIO = 1.25  # between neighbours of the search
 _LAG_RATIOS = (0.5, 0.15)  # second lag over first in the search
 _STARTS = 2
 _ROUGHLY, _CLOSELY = 1e-4, 1e-9  # relative change of the sum of squares at which a refinement ends
+_ROUNDING = 1e-6  # of the measurement's movement: no record is written or followed more closely
 _LOG_STEP = 1e-4  # of a lag's logarithm, for its derivative by central difference
 
 
@@ -134,12 +135,33 @@ class Fit:
     """(n, p) change of the fitted measurement with gain, dead time, the logarithm of each unknown lag (longest
     first), then with the nuisance terms, of which the drift is the second."""
     squares: float
-    """Sum of squares of the whitened residual, in the measurement's units squared."""
+    """Sum of squares of the whitened residual, in the measurement's units squared; not below rounding."""
+    exact: bool
+    """Whether nothing but rounding is left over, as of a simulated record."""
 
     @property
     def parameters(self) -> int:
         """Number of parameters fitted."""
         return int(self.jacobian.shape[1])
+
+    @property
+    def bayes(self) -> float:
+        """Bayesian information criterion [dimensionless]; comparable among fits by one noise model.
+
+        Source: G. Schwarz, "Estimating the dimension of a model", Annals of Statistics 6:461-464, 1978.
+        """
+        n = len(self.fitted)
+        return n * math.log(self.squares / n) + self.parameters * math.log(n)
+
+    @property
+    def akaike(self) -> float:
+        """Akaike's criterion corrected for few samples [dimensionless]; comparable as `bayes`.
+
+        Source: C. M. Hurvich, C.-L. Tsai, "Regression and time series model selection in small samples",
+        Biometrika 76:297-307, 1989.
+        """
+        n, k = len(self.fitted), self.parameters
+        return n * math.log(self.squares / n) + 2.0 * k + 2.0 * k * (k + 1.0) / (n - k - 1.0)
 
 
 def fit(record: Record, structure: Structure, nuisance: Nuisance, noise: NoiseModel, *, near: Fit | None = None) -> Fit:
@@ -358,6 +380,8 @@ class _Problem:
 
     def fit_at(self, point: FloatArray) -> Fit:
         columns, _, coefficients, residual = self.solved(point)
+        squares = float(residual @ residual)
+        rounding = len(residual) * (_ROUNDING * float(np.ptp(self.measured))) ** 2
         lags = self.lags(point[1:])
         order = np.argsort(-np.array(lags[: len(point) - 1]), kind="stable")
         directions = self.directions(point, coefficients)
@@ -371,5 +395,6 @@ class _Problem:
             drift=float(coefficients[2]) if self.nuisance.drift else 0.0,
             fitted=columns @ coefficients,
             jacobian=np.column_stack((columns[:, 0], directions, columns[:, 1:])),
-            squares=float(residual @ residual),
+            squares=max(squares, rounding),
+            exact=squares <= rounding,
         )

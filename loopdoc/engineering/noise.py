@@ -48,12 +48,13 @@ def durbin_watson(residual: FloatArray) -> float:
     Returns
     -------
     float
-        Sum of the squared steps over the sum of squares [dimensionless].
+        Sum of the squared steps over the sum of squares [dimensionless]; 2 where there are no residuals.
 
     Source: J. Durbin, G. S. Watson, "Testing for serial correlation in least squares regression",
     Biometrika 37:409-428, 1950.
     """
-    return float(np.sum(np.diff(residual) ** 2) / np.sum(residual**2))
+    power = float(np.sum(residual**2))
+    return float(np.sum(np.diff(residual) ** 2)) / power if power else 2.0
 
 
 def ljung_box(residual: FloatArray, *, lags: int) -> float:
@@ -69,7 +70,7 @@ def ljung_box(residual: FloatArray, *, lags: int) -> float:
     Returns
     -------
     float
-        Tail probability of the statistic [dimensionless].
+        Tail probability of the statistic [dimensionless]; 1 where there are no residuals.
 
     Source: G. M. Ljung, G. E. P. Box, "On a measure of lack of fit in time series models", Biometrika
     65:297-303, 1978.
@@ -77,6 +78,8 @@ def ljung_box(residual: FloatArray, *, lags: int) -> float:
     n = len(residual)
     centred = residual - residual.mean()
     power = float(centred @ centred)
+    if not power:
+        return 1.0
     correlations = np.array([float(centred[lag:] @ centred[:-lag]) / power for lag in range(1, lags + 1)])
     statistic = n * (n + 2.0) * float(np.sum(correlations**2 / (n - np.arange(1, lags + 1))))
     return float(chdtrc(lags, statistic))

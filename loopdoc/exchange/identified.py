@@ -6,20 +6,29 @@ import json
 import math
 from dataclasses import dataclass
 from decimal import ROUND_HALF_EVEN, Decimal
+from pathlib import Path
 from typing import Any
 
 import numpy as np
+from numpy.typing import NDArray
 
-from loopdoc.engineering.commanded import OPENING, OUTPUT, Commanded
-from loopdoc.engineering.identification import Estimate, Identification, Model
-from loopdoc.exchange.findings import CAUTION, escape
+from loopdoc.engineering.commanded import OPENING, OUTPUT, Commanded, commanded
+from loopdoc.engineering.confidence import Estimate, Model
+from loopdoc.engineering.identification import Identification, identify
+from loopdoc.engineering.pairing import Plant
+from loopdoc.engineering.stages import Lacking
+from loopdoc.exchange.findings import CAUTION, as_line, escape
 from loopdoc.exchange.responses import TUNING_CAUTION
 from loopdoc.exchange.step_test import StepTest
-from loopdoc.register.model import Process, known
+from loopdoc.register.edit import Value, replace_file, set_values
+from loopdoc.register.load import Loaded
+from loopdoc.register.model import Process, Register, known
+from loopdoc.register.place import Fault, Place
 from loopdoc.register.quantity import display_number, parse_gain, parse_quantity
-from loopdoc.register.units import UNITS, Unit
+from loopdoc.register.text import read_text
+from loopdoc.register.units import UNITS, Unit, convert_difference, same_difference
 
-RegisterValue = str | bool | list[str] | None
+FloatArray = NDArray[np.float64]
 
 MOST_DIGITS = 4
 """Significant digits of a written value at most: no plant is known better."""
@@ -44,6 +53,16 @@ class Identified:
     """What the register holds so far."""
 
     @property
+    def moved(self) -> FloatArray:
+        """(n,) what moved, in `moved_unit`."""
+        return self.commanded.moved if self.commanded else self.test.moved
+
+    @property
+    def measurement(self) -> FloatArray:
+        """(n,) in `measurement_unit`."""
+        return self.commanded.measurement if self.commanded else self.test.measurement
+
+    @property
     def moved_unit(self) -> Unit:
         return self.commanded.unit if self.commanded else self.test.moved_unit
 
@@ -59,9 +78,45 @@ class Identified:
         return self.test.recorded
 
     @property
+    def moved_label(self) -> str:
+        """What moved, short enough for an axis."""
+        return self.commanded.tag if self.commanded else self.test.recorded
+
+    @property
+    def title(self) -> str:
+        """The test, and the loop where it is named."""
+        return f"{self.tag}: {self.test_name}" if self.tag else self.test_name
+
+    @property
+    def plot_title(self) -> str:
+        """The same, with what a reader of the plot alone must know."""
+        return self.title if self.result.model else f"{self.title}: refused, the test supports no model"
+
+    @property
     def test_name(self) -> str:
         """The test, as the source of a model names it."""
         return f"step test {self.test.date}".rstrip() + f", file {self.test.file}"
+
+
+def identified(test: StepTest, tag: str, register: Register | None) -> Identified | Lacking:
+    """What a test says of the process of a loop, or why the register does not say how to take its output."""
+    if register is None:
+        return Identified(tag, test, identify(test.time_s, test.moved, test.measurement), None, None)
+    record = commanded(
+        Plant(register),
+        tag,
+        recorded=test.recorded,
+        moved=test.moved,
+        unit=test.moved_unit,
+        measurement=test.measurement,
+        measurement_unit=test.measurement_unit,
+    )
+    if isinstance(record, Lacking):
+        return record
+    process = known(register.loops[tag].process)
+    if process is not None and record.branch:
+        process = process.branches.get(record.tag)
+    return Identified(tag, test, identify(test.time_s, record.moved, record.measurement), record, process)
 
 
 # ---------------------------------------------------------------- rounding
@@ -123,15 +178,28 @@ def _time(estimate: Estimate, written: Unit | None) -> _Shown:
 
 
 def _gain(found: Identified, model: Model) -> _Shown:
-    changed, moved = found.measurement_unit.symbol, found.moved_unit.symbol
-    if not model.integrating:
-        return _shown(model.gain, f"{changed} per {moved}")
+    """The gain, in the units in which the register has it so far."""
     written = known(found.process.gain) if found.process else None
-    time = written.per_time.symbol if written and written.per_time else None
+    changed, moved = _difference(found.measurement_unit), found.moved_unit
+    if written is not None and same_difference(written.denominator, moved):
+        moved = written.denominator
+    if written is not None and same_difference(written.numerator, changed):
+        changed = written.numerator
+    size = convert_difference(1.0, changed, found.measurement_unit)
+    size /= convert_difference(1.0, moved, found.moved_unit)
+    if not model.integrating:
+        return _shown(model.gain, f"{changed} per {moved}", size)
+    time = written.per_time.symbol if written is not None and written.per_time is not None else None
     if time is None:
-        per_min = abs(model.gain.value) * 60.0
+        per_min = abs(model.gain.value) / size * UNITS["min"].factor
         time = "s" if per_min >= PER_SECOND_FROM else "min" if per_min >= PER_MINUTE_FROM else "h"
-    return _shown(model.gain, f"{changed}/{time} per {moved}", 1.0 / UNITS[time].factor)
+    return _shown(model.gain, f"{changed}/{time} per {moved}", size / UNITS[time].factor)
+
+
+def _difference(unit: Unit) -> Unit:
+    """The unit in which changes of a reading are stated: `bar` of one in `barg`."""
+    plain = UNITS.get(unit.symbol[:-1])
+    return plain if plain is not None and plain.kind == unit.difference_kind != unit.kind else unit
 
 
 @dataclass(frozen=True, slots=True)
@@ -158,7 +226,7 @@ def _figures(found: Identified, model: Model) -> _Figures:
 # ---------------------------------------------------------------- for the register
 
 
-def register_values(found: Identified) -> dict[str, RegisterValue]:
+def register_values(found: Identified) -> dict[str, Value | None]:
     """What the register's `process` is to hold, key by key; None for a key that goes.
 
     Raises
@@ -185,6 +253,38 @@ def register_values(found: Identified) -> dict[str, RegisterValue]:
     }
 
 
+def write_into(loaded: Loaded, folder: Path, found: Identified) -> Place | str:
+    """Write the model into the register, and say where; or why it was not written."""
+    register, record = loaded.register, found.commanded
+    assert record is not None  # without a register nothing is written
+    if any(tag == found.tag for tag, _, _ in register.twice):
+        return f"{found.tag} is defined twice; mend that first"
+    origin = register.loops[found.tag].origin
+    steps = (*origin.path, "process", *(("branches", record.tag) if record.branch else ()))
+    path = tuple(str(step) for step in steps)
+    name = origin.source.name
+    content = loaded.sources[name]
+    changed = set_values(
+        content,
+        name,
+        path,
+        register_values(found),
+        in_place_of={"lag": "lags", "lags": "lag"},
+        after=("unit", "service", "drawing", "purpose", "measurement", "operating", "controller"),
+    )
+    if isinstance(changed, Fault):
+        return as_line(changed.place, changed.message, changed.remedy)
+    complaint = replace_file(folder / name, before=content, after=changed)
+    return complaint or Place(name, *_line_of(changed, name, path))
+
+
+def _line_of(content: bytes, name: str, path: tuple[str, ...]) -> tuple[int, int]:
+    again = read_text(content, name)
+    assert not isinstance(again, Fault)  # the edit has read it back
+    place = again.place(path, key=True)
+    return place.line, place.column
+
+
 def _intervals(figures: _Figures) -> str:
     parts = [f"gain {figures.gain.interval}"]
     parts += [f"lag {lag.interval}" for lag in figures.lags]
@@ -194,10 +294,10 @@ def _intervals(figures: _Figures) -> str:
 # ---------------------------------------------------------------- text
 
 
-def identified_text(found: Identified) -> str:
+def identified_text(found: Identified, written: Place | None = None) -> str:
     """The model with its intervals, the residuals, the forms compared and the cautions, or the refusal."""
     result, test = found.result, found.test
-    lines = [f"{found.tag}: {found.test_name}" if found.tag else found.test_name, _record_line(found)]
+    lines = [found.title, _record_line(found)]
     if found.commanded is None:
         lines.append(
             f"no register given: the process is per unit of the {test.recorded} as recorded, not of what the register "
@@ -211,6 +311,8 @@ def identified_text(found: Identified) -> str:
         lines.extend(_residual_lines(found))
         lines.extend(_register_lines(found))
         lines.extend(f"caution: {caution}" for caution in result.cautions)
+    if written is not None:
+        lines.append(f"wrote the process of {found.tag} at {written}; see what `loopdoc check` now says")
     lines.extend(["", f"{CAUTION} {TUNING_CAUTION}"])
     return escape("\n".join(lines)) + "\n"
 
@@ -256,7 +358,7 @@ def _model_lines(found: Identified, model: Model) -> list[str]:
     rows = [("gain", figures.gain)]
     rows += [("lag", lag) for lag in figures.lags]
     rows.append(("dead time", figures.dead_time))
-    drift = _shown(model.drift_per_s, f"{found.measurement_unit}/h", 1.0 / 3600.0)
+    drift = _shown(model.drift_per_s, f"{_difference(found.measurement_unit)}/h", 1.0 / UNITS["h"].factor)
     rows.append(("slope before" if model.integrating else "drift", drift))
     effect = "rises" if model.gain.value > 0.0 else "falls"
     lines = [
@@ -267,7 +369,7 @@ def _model_lines(found: Identified, model: Model) -> list[str]:
 
 
 def _residual_lines(found: Identified) -> list[str]:
-    leftover, unit = found.result.leftover, found.measurement_unit
+    leftover, unit = found.result.leftover, _difference(found.measurement_unit)
     assert leftover is not None  # a model has residuals
     noise = f"noise {display_number(leftover.noise, 2)} {unit}"
     if leftover.disturbance:
@@ -322,7 +424,7 @@ def _said(seconds: float) -> str:
 # ---------------------------------------------------------------- JSON
 
 
-def identified_json(found: Identified) -> str:
+def identified_json(found: Identified, written: Place | None = None) -> str:
     """The same for programs: times in seconds, the gain in the units stated; an integrating gain per second."""
     result, test = found.result, found.test
     model, leftover = result.model, result.leftover
@@ -364,6 +466,7 @@ def identified_json(found: Identified) -> str:
     document["candidates"] = [
         {"form": entry.name, "criterion_above_best": _number(entry.criterion)} for entry in result.candidates
     ]
+    document["written"] = None if written is None else {"file": written.file, "line": written.line}
     document["caution"] = f"{CAUTION} {TUNING_CAUTION}"
     return json.dumps(document, ensure_ascii=False, indent=2, allow_nan=False) + "\n"
 

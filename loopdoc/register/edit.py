@@ -253,6 +253,8 @@ class _Edit:
         for step in reversed(path[done + 1 :]):
             made = {step: made}
         old = _entry(mapping, path[done])
+        if old is not None and (old.value.items is not None or (_is_scalar(old.value) and self._text_of(old.value))):
+            raise _Refused(f"something else than a mapping stands at `{path[done]}`")
         if old is not None:
             self._replace(mapping, old, made)
         else:
@@ -347,6 +349,9 @@ class _Edit:
                 self._changes.append((entries[first - 1].value.end, entries[last].value.end, ""))
 
     # -- lines
+
+    def _text_of(self, node: _Node) -> str:
+        return self._text[node.start : node.end]
 
     def _is_block(self, node: _Node) -> bool:
         return not node.flow and bool(node.entries or node.items)
