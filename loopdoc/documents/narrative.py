@@ -62,11 +62,17 @@ class Supplement:
 
 def narratives(basis: Basis, supplements: Mapping[str, Supplement] | None = None) -> Iterator[Page]:
     """The control narrative of each unit; supplements by the tag of the scheme's lead."""
-    analysis = FailureAnalysis(basis.plant)
+    register, result = basis.plant.register, basis.result
+    shared = _Shared(
+        FailureAnalysis(basis.plant),
+        open_points.OpenPoints(register.holds, result.findings, result.accepted),
+        frozenset(defined.tag for defined in defined_tags(register)),
+        supplements or {},
+    )
     for number in _units(basis.plant):
-        unit = basis.plant.register.units.get(number)
+        unit = register.units.get(number)
         name = known(unit.name) if unit else None
-        builder = _Narrative(basis, analysis, number, supplements or {})
+        builder = _Narrative(basis, shared, number)
         sections = builder.sections()
         document = basis.document(
             kind="Control narrative",
@@ -102,18 +108,27 @@ def _units(plant: Plant) -> tuple[str, ...]:
     return tuple(found)
 
 
+@dataclass(frozen=True, slots=True)
+class _Shared:
+    """What the narratives of all units look things up in."""
+
+    analysis: FailureAnalysis
+    points: open_points.OpenPoints
+    tags: frozenset[str]
+    supplements: Mapping[str, Supplement]
+
+
 class _Narrative:
     """The narrative of one unit while it is put together."""
 
-    def __init__(
-        self, basis: Basis, analysis: FailureAnalysis, number: str, supplements: Mapping[str, Supplement]
-    ) -> None:
+    def __init__(self, basis: Basis, shared: _Shared, number: str) -> None:
         self._basis = basis
         self._plant = basis.plant
         self._register = basis.plant.register
-        self._analysis = analysis
+        self._analysis = shared.analysis
+        self._points = shared.points
+        self._supplements = shared.supplements
         self._number = number
-        self._supplements = supplements
         register = self._register
         self._loops = self._own(register.loops)
         self._elements = self._own(register.final_elements)
@@ -123,8 +138,7 @@ class _Narrative:
         self._schemes = self._own_schemes()
         self._indicators = [loop for loop in self._loops if loop.tag not in self._plant.controlled]
         self._told_findings: set[int] = set()
-        tags = [defined.tag for defined in defined_tags(register)]
-        self._setter = Setter(register, tags, self._target)
+        self._setter = Setter(register, shared.tags, self._target)
 
     def _own(self, parts: Mapping[str, _P]) -> list[_P]:
         return [part for part in parts.values() if (known(part.unit) or NO_UNIT) == self._number]
@@ -306,11 +320,10 @@ class _Narrative:
 
     def _scheme_open(self, tags: Sequence[str], functions: Sequence[str]) -> Iterator[Block]:
         whole = {*tags, *functions}
-        holds = [hold for hold in self._register.holds if hold.tag in whole]
-        accepted = [finding for finding in self._basis.result.accepted if finding.tag in whole]
+        holds, accepted = self._points.holds(whole), self._points.accepted(whole)
         told = sentences(open_points.held_in_a_sentence(holds), open_points.accepted_in_a_sentence(accepted))
         yield from self._paragraphs("Open points.", told)
-        findings = open_points.told(self._basis.result.findings, whole)
+        findings = self._points.findings(whole)
         self._told_findings.update(id(finding) for finding in findings)
         yield from self._finding_table(findings)
 
@@ -395,17 +408,15 @@ class _Narrative:
         ]  # fmt: skip
         return {part.tag for part in parts} | {self._number}
 
-    def _holds(self) -> list[HeldValue]:
-        tags = self._unit_tags()
-        return [hold for hold in self._register.holds if hold.tag in tags]
+    def _holds(self) -> tuple[HeldValue, ...]:
+        return self._points.holds(self._unit_tags())
 
     def _open_blocks(self) -> Iterator[Block]:
         tags = self._unit_tags()
         yield from table("holds", open_points.HOLD_HEAD, open_points.hold_rows(self._holds()), self._set, title="Holds")
-        accepted = [finding for finding in self._basis.result.accepted if finding.tag in tags]
-        rows = open_points.deviation_rows(accepted)
+        rows = open_points.deviation_rows(self._points.accepted(tags))
         yield from table("deviations", open_points.DEVIATION_HEAD, rows, self._set, title="Accepted deviations")
-        findings = open_points.told(self._basis.result.findings, tags)
+        findings = self._points.findings(tags)
         yield from self._finding_table([one for one in findings if id(one) not in self._told_findings])
 
     # -- setting text

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Collection, Iterable, Iterator, Sequence
+from collections.abc import Iterable, Iterator, Sequence
 
 from loopdoc.documents.values import shown
 from loopdoc.documents.wording import grouped, listed, sentence, upper_first
@@ -96,6 +96,36 @@ def finding_rows(findings: Iterable[Finding]) -> Iterator[tuple[str, ...]]:
         yield str(finding.level), f"{finding.rule}, {finding.tag}", sentence(finding.message), sentence(finding.remedy)
 
 
-def told(findings: Iterable[Finding], tags: Collection[str]) -> tuple[Finding, ...]:
-    """Findings about these tags, without those that only repeat a hold."""
-    return tuple(finding for finding in findings if finding.tag in tags and finding.rule != HOLD_RULE)
+class OpenPoints:
+    """Holds, findings and accepted findings of a register, found by their tags."""
+
+    def __init__(self, holds: Iterable[HeldValue], findings: Iterable[Finding], accepted: Iterable[Finding]) -> None:
+        self._holds: dict[str, list[HeldValue]] = {}
+        for hold in holds:
+            self._holds.setdefault(hold.tag, []).append(hold)
+        self._findings = _by_tag(finding for finding in findings if finding.rule != HOLD_RULE)
+        self._accepted = _by_tag(accepted)
+
+    def holds(self, tags: Iterable[str]) -> tuple[HeldValue, ...]:
+        """Holds under these tags, in the order of the register."""
+        found = [hold for tag in set(tags) for hold in self._holds.get(tag, ())]
+        return tuple(sorted(found, key=lambda hold: hold.place))
+
+    def findings(self, tags: Iterable[str]) -> tuple[Finding, ...]:
+        """Open findings about these tags, without those that only repeat a hold."""
+        return _of(self._findings, tags)
+
+    def accepted(self, tags: Iterable[str]) -> tuple[Finding, ...]:
+        """Findings about these tags that a deviation accepts."""
+        return _of(self._accepted, tags)
+
+
+def _by_tag(findings: Iterable[Finding]) -> dict[str, list[Finding]]:
+    found: dict[str, list[Finding]] = {}
+    for finding in findings:
+        found.setdefault(finding.tag, []).append(finding)
+    return found
+
+
+def _of(by_tag: dict[str, list[Finding]], tags: Iterable[str]) -> tuple[Finding, ...]:
+    return tuple(sorted((one for tag in set(tags) for one in by_tag.get(tag, ())), key=lambda one: one.order))

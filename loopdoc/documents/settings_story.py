@@ -4,14 +4,12 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Sequence
 
-from loopdoc.documents.naming import percent
+from loopdoc.documents.naming import percent, travel
 from loopdoc.documents.wording import band, listed, sentences, value
 from loopdoc.engineering.pairing import ControlledLoop, Plant
 from loopdoc.engineering.spreading import SELECTORS, normal_mode
 from loopdoc.register.model import Controller, FinalElement, Hold, Loop, known
 from loopdoc.register.quantity import Quantity
-
-_DRIVES = {"variable-speed drive": "speed range", "motor": "speed range", "heater bank": "power"}
 
 
 def permitted(controller: Controller) -> tuple[str, ...]:
@@ -60,7 +58,7 @@ def _output(loop: ControlledLoop) -> str:
         return f"its output stays {_within(limits)}"
     end = loop.routes[0].end
     if isinstance(end, FinalElement) and len(loop.routes) == 1:
-        return f"its output may use the whole {_DRIVES.get(known(end.kind) or '', 'travel')} of {end.tag}"
+        return f"its output may use the whole {travel(end)} of {end.tag}"
     return f"its output runs from 0 to {percent(100)}"
 
 
