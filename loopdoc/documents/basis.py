@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
 from typing import Any
 
@@ -23,12 +23,20 @@ class Basis:
     """Content of the register's files by name."""
     dynamics: Dynamics
     _compared: dict[ChainDynamics, Comparison | NotSimulated] = field(default_factory=dict, repr=False)
+    _drawn: dict[ChainDynamics, str] = field(default_factory=dict, repr=False)
 
     def comparison(self, chain: ChainDynamics) -> Comparison | NotSimulated:
         """Time responses of a chain, or why there is none, simulated once for all documents."""
         if chain not in self._compared:
             self._compared[chain] = compare(chain)
         return self._compared[chain]
+
+    def drawn(self, chain: ChainDynamics, draw: Callable[[Comparison], str]) -> str:
+        """The figure of a chain's time responses, drawn once for all documents; empty where there is none."""
+        if chain not in self._drawn:
+            comparison = self.comparison(chain)
+            self._drawn[chain] = draw(comparison) if isinstance(comparison, Comparison) else ""
+        return self._drawn[chain]
 
     def document(
         self, *, kind: str, code: str, title: str, supplementary_title: str, unit: str, serial: str

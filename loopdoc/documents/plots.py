@@ -25,6 +25,11 @@ FONT_FILES = ("IBMPlexSansCondensed-Regular.ttf", "IBMPlexSansCondensed-Bold.ttf
 FONT_FAMILY = "IBM Plex Sans Condensed"
 PAGE_FAMILY = "loopdoc narrow"
 WIDTH_IN = 180 / 25.4
+_LEFT_IN, _RIGHT_IN, _TOP_IN, _BOTTOM_IN = 0.55, 0.06, 0.2, 0.62
+_PANEL_IN, _BETWEEN_IN = 1.2, 0.16
+"""Height of a panel and of what is between two of them [in]."""
+MOST_TICKS = 4
+"""Steps of an axis; more numbers would touch one another in a panel of a third of the width."""
 POINTS_DRAWN = 400
 """Points of one curve in a figure: finer than a printer's dot at this width."""
 
@@ -142,15 +147,24 @@ def _style(salt: str) -> Iterator[Figure]:
 
 def _draw(figure: Figure, drawing: Drawing) -> None:
     rows, columns = len(drawing.rows), len(drawing.rows[0])
-    figure.set_layout_engine("constrained")
-    figure.set_size_inches(WIDTH_IN, 0.35 + 1.55 * rows)
+    height_in = _TOP_IN + rows * _PANEL_IN + (rows - 1) * _BETWEEN_IN + _BOTTOM_IN
+    figure.set_size_inches(WIDTH_IN, height_in)
+    # Set by hand: an automatic layout measures every text several times and takes as long as all the rest.
+    figure.subplots_adjust(
+        left=_LEFT_IN / WIDTH_IN,
+        right=1.0 - _RIGHT_IN / WIDTH_IN,
+        top=1.0 - _TOP_IN / height_in,
+        bottom=_BOTTOM_IN / height_in,
+        wspace=0.34,
+        hspace=_BETWEEN_IN / _PANEL_IN,
+    )
     axes = figure.subplots(rows, columns, squeeze=False, sharex="col")
     for row, panels in enumerate(drawing.rows):
         for column, panel in enumerate(panels):
             _draw_panel(axes[row][column], panel, last_row=row == rows - 1)
     handles, labels = axes[0][0].get_legend_handles_labels()
     if len(handles) > 1:
-        figure.legend(handles, labels, loc="outside lower center", ncols=len(handles))
+        figure.legend(handles, labels, loc="lower center", ncols=len(handles))
 
 
 def _draw_panel(axes: Any, panel: Panel, *, last_row: bool) -> None:
@@ -176,6 +190,7 @@ def _draw_panel(axes: Any, panel: Panel, *, last_row: bool) -> None:
                 limit.label, (1.0, limit.value), xycoords=("axes fraction", "data"), xytext=(-2, 1.5),
                 textcoords="offset points", ha="right", va="bottom", fontsize=6.5,
             )  # fmt: skip
+    axes.locator_params(nbins=MOST_TICKS)
     axes.margins(x=0)
     axes.grid(visible=True)
     axes.set_axisbelow(True)

@@ -44,7 +44,7 @@ def supplements(basis: Basis) -> dict[str, Supplement]:
         if compared:
             found[scheme.lead.tag] = Supplement(
                 " ".join(sentence for comparison in compared if (sentence := benefit(comparison))),
-                tuple(Figure(to_svg(figure(comparison)), caption(comparison)) for comparison in compared),
+                tuple(Figure(basis.drawn(found.dynamics, _svg), caption(found)) for found in compared),
             )
     return found
 
@@ -111,7 +111,7 @@ def section(basis: Basis, dynamics: ChainDynamics, *, several: bool) -> dict[str
         "unit": measured_range(chain.lead).unit.display,
         "rows": metric_rows(comparison) if comparison else [],
         "single": comparison is not None and comparison.single is not None,
-        "figure": to_svg(figure(comparison)) if comparison else "",
+        "figure": basis.drawn(dynamics, _svg),
         "caption": caption(comparison) if comparison else "",
     }
 
@@ -197,6 +197,10 @@ def figure(comparison: Comparison) -> Drawing:
             Panel("", f"time, {time_unit}", f"{chain.final_element.tag}, %" if not below else "", tuple(valves))
         )
     return Drawing(f"Time responses of {lead.tag} with {chain.final_element.tag}", (tuple(above), tuple(below)))
+
+
+def _svg(comparison: Comparison) -> str:
+    return to_svg(figure(comparison))
 
 
 def caption(comparison: Comparison) -> str:
