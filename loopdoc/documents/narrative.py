@@ -11,7 +11,7 @@ from urllib.parse import quote
 from loopdoc.documents import failure_story, open_points, protection_story, settings_story, tuning_story
 from loopdoc.documents.basis import Basis, Page
 from loopdoc.documents.naming import over_range, sensor
-from loopdoc.documents.page_fit import MM, room
+from loopdoc.documents.page_fit import foot
 from loopdoc.documents.scheme_story import SchemeStory, headline
 from loopdoc.documents.values import HOLD
 from loopdoc.documents.view import Block, Figure, Paragraph, Section, Steps, table
@@ -39,8 +39,6 @@ from loopdoc.rules.references import defined_tags
 _P = TypeVar("_P", Loop, FinalElement, Instrument, Function, Interlock)
 
 FOLDER = "narratives"
-PAPER_MM = 297 - 12
-"""Height of the paper below its upper margin [mm]; the foot of the page grows with its title block."""
 NO_UNIT = "00"
 """Unit under which parts are told whose unit the register does not give."""
 
@@ -85,7 +83,7 @@ def narratives(basis: Basis, supplements: Mapping[str, Supplement] | None = None
         view = {
             "reading": builder.reading(sections),
             "sections": sections,
-            "foot": f"{PAPER_MM - room(document) / MM:.1f}mm",
+            "foot": foot(document),
         }
         yield Page(FOLDER, file_name(number), document, "narrative.html", view)
 

@@ -18,6 +18,8 @@ PAGE_WIDTH = 180 * MM
 """Between the margins [pt]."""
 PAGE_HEIGHT = 242 * MM
 """Between the margins, the title block in the lower one [pt]."""
+PAPER_HEIGHT = (297 - 12) * MM
+"""Of the paper below its upper margin [pt]."""
 ABOVE_TITLE_BLOCK = 277 * MM
 """From the upper margin to the lower edge of the title block [pt]."""
 
@@ -107,3 +109,8 @@ def title_block_height(document: Document) -> float:
 
 def _plain(content: str) -> str:
     return str(Markup(content).striptags()) if isinstance(content, Markup) else content
+
+
+def foot(document: Document) -> str:
+    """The lower margin that a document's title block needs, as CSS writes it."""
+    return f"{(PAPER_HEIGHT - room(document)) / MM:.1f}mm"

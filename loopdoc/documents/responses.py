@@ -10,6 +10,7 @@ import numpy as np
 
 from loopdoc.documents.basis import Basis, Page
 from loopdoc.documents.narrative import Supplement
+from loopdoc.documents.page_fit import foot
 from loopdoc.documents.plots import Curve, Drawing, Limit, Panel, to_svg
 from loopdoc.documents.values import DASH, shown
 from loopdoc.documents.view import Figure
@@ -92,7 +93,7 @@ def _page(basis: Basis, scheme: Scheme, chains: list[ChainDynamics]) -> Page:
         unit=unit,
         serial=f"{match['letters']}{serial}" if match else serial,
     )
-    view = {"sections": [section(basis, chain, several=len(chains) > 1) for chain in chains]}
+    view = {"sections": [section(basis, chain, several=len(chains) > 1) for chain in chains], "foot": foot(document)}
     return Page("responses", lead.tag, document, "responses.html", view)
 
 
