@@ -279,7 +279,7 @@ def test_a_held_range_is_counted_and_not_judged(tmp_path: Path) -> None:
     result = checked(tmp_path, BASE.replace("range: 60 to 120 degC", "range: {hold: awaiting vendor data}"))
     assert [finding.rule for finding in result.findings] == ["hold-open"]
     lacking = {rule: entry.not_checked for rule, entry in result.coverage.items() if entry.not_checked}
-    # TIC-2014 once each, its two alarms, and as a trip of IS-2002
+    # TIC-2014 once each and in its cascade, its two alarms, and as a trip of IS-2002
     assert lacking == {
         "range-reversed": 1,
         "unit-incompatible": 2,
@@ -287,8 +287,15 @@ def test_a_held_range_is_counted_and_not_judged(tmp_path: Path) -> None:
         "setpoint-limit-outside-range": 1,
         "alarm-outside-range": 2,
         "trip-outside-range": 1,
+        "alarm-time-short": 2,
+        "loop-unstable": 1,
+        "margin-low": 1,
+        "interval-too-slow": 1,
+        "filter-too-slow": 1,
+        "cascade-too-slow": 1,
+        "cascade-no-benefit": 1,
     }
-    assert result.not_checked == 8
+    assert result.not_checked == 16
 
 
 def test_a_policy_moves_a_threshold(tmp_path: Path) -> None:

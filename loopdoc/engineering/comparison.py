@@ -31,7 +31,7 @@ from loopdoc.engineering.structure import (
 )
 from loopdoc.engineering.tuning import SensitivityTuning, simc_at_sensitivities
 from loopdoc.engineering.upsets import Step, declared_step
-from loopdoc.register.model import known
+from loopdoc.register.model import known, seconds
 
 UPSET_PCT = 10.0
 """Size of the standard upsets: a tenth of the span of the measurement that they move [%]."""
@@ -188,13 +188,13 @@ def _final_element(chain: Chain) -> FinalElement:
     The register does not say how far a valve is open in normal operation, and the process models are linear: what
     the start decides is only how far the limits are away.
     """
-    stroke, backlash = known(chain.final_element.stroke_time), known(chain.final_element.backlash)
+    backlash = known(chain.final_element.backlash)
     inner = chain.stages[0].controller
     middle = (inner.output_low_pct + inner.output_high_pct) / 2.0
-    # `tuning-invalid` tells of a negative time, and of a backlash that leaves no travel.
+    # `tuning-invalid` tells of a backlash that leaves no travel.
     return FinalElement(
-        stroke_time_s=max(0.0, stroke.to("s")) if stroke else 0.0,
-        backlash_pct=min(99.9, max(0.0, backlash.to("%"))) if backlash else 0.0,
+        stroke_time_s=seconds(chain.final_element.stroke_time),
+        backlash_pct=min(99.9, max(0.0, backlash.value)) if backlash and backlash.unit.symbol == "%" else 0.0,
         start_pct=min(100.0, max(0.0, middle)),
     )
 

@@ -339,8 +339,8 @@ def _model(loop: model.Loop, written: model.Process, commanded_unit: str, comman
     _need_not_held(written.dead_time, f"the dead time of {tag}")
     lead = _need_not_held(written.lead, f"the lead of {tag}")
     if gain.integrates(own.unit.symbol) != written.integrating:
-        is_rate = "no rate of change, but the process is" if written.integrating else "a rate of change, but the process is not"
-        raise _Lacking(f"the process gain of {tag} is {is_rate} said to integrate")
+        rate, integrates = ("no", "is") if written.integrating else ("a", "is not")
+        raise _Lacking(f"the process gain of {tag} is {rate} rate of change, but the process {integrates} integrating")
     if gain.value * {"rises": 1, "falls": -1}.get(known(written.effect) or "", 0) < 0:
         raise _Lacking(f"the process gain of {tag} contradicts the effect")
     try:

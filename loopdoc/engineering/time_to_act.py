@@ -9,13 +9,14 @@ the service up to its first comma), and nearer to normal operation on the same s
 from __future__ import annotations
 
 import math
+import re
 from collections.abc import Iterator
 from dataclasses import dataclass
 from functools import cached_property
 from typing import TYPE_CHECKING
 
 from loopdoc.engineering.pairing import Plant, Trip, measured_quantity, normal_value
-from loopdoc.register.model import Alarm, Interlock, Loop, Measurement, known
+from loopdoc.register.model import Alarm, Interlock, Loop, Measurement, known, seconds
 from loopdoc.register.quantity import Quantity
 from loopdoc.register.units import UnitError
 
@@ -23,6 +24,7 @@ if TYPE_CHECKING:
     from loopdoc.engineering.upsets import UndecidedUpset, Upset
 
 _SIDES = {"high": 1, "high_high": 1, "low": -1, "low_low": -1}
+_VOTING = re.compile("([1-9])oo[1-9]")
 _SIGNS = {"above": 1, "below": -1}
 
 
@@ -140,7 +142,8 @@ class TimeToAct:
         self, loop: Loop, alarm: Alarm, side: int, limit: Quantity, trips: tuple[Trip, ...]
     ) -> AlarmToTrip | _Pair | None:
         interlock = trips[0].interlock
-        needed = int((known(interlock.voting) or "1").partition("oo")[0])
+        voting = _VOTING.fullmatch(known(interlock.voting) or "")
+        needed = int(voting[1]) if voting else 1
 
         def undecided(reason: str) -> AlarmToTrip:
             return AlarmToTrip(loop, alarm, interlock, trips, (), (NotDecided("every upset", reason),))
@@ -205,7 +208,7 @@ class TimeToAct:
                 if not isinstance(upset, Upset):
                     continue
                 for measurement, distance in _readings(pair):
-                    filter_s = _filter_s(measurement)
+                    filter_s = seconds(measurement.filter) if measurement else 0.0
                     paths.append(in_series(upset.path, Process(1.0, (filter_s,) if filter_s else ())))
                     sizes.append(upset.size_pct)
                     ramps.append(upset.ramp_s)
@@ -231,8 +234,8 @@ def _assembled(
         if isinstance(upset, UndecidedUpset):
             not_decided.append(NotDecided(upset.name, upset.reason))
             continue
-        alarm_s = next(times) + _seconds(pair.alarm.delay)
-        tripped = sorted(next(times) + _seconds(trip.initiator.delay) for trip in pair.trips)
+        alarm_s = next(times) + seconds(pair.alarm.delay)
+        tripped = sorted(next(times) + seconds(trip.initiator.delay) for trip in pair.trips)
         trip_s = tripped[pair.needed - 1]
         if math.isfinite(alarm_s) or math.isfinite(trip_s):
             between.append(TimeBetween(upset.name, alarm_s, trip_s, upset.whole_travel))
@@ -259,11 +262,3 @@ def _band(loop: Loop) -> tuple[str, float] | None:
     measurement = known(loop.measurement)
     own = known(measurement.range) if measurement else None
     return (own.unit.symbol, own.span) if own is not None and own.span > 0.0 else None
-
-
-def _filter_s(measurement: Measurement | None) -> float:
-    return max(0.0, _seconds(measurement.filter)) if measurement else 0.0
-
-
-def _seconds(value: object) -> float:
-    return value.to("s") if isinstance(value, Quantity) else 0.0

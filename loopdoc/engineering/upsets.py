@@ -24,7 +24,7 @@ from loopdoc.engineering.stages import (
     ways_down,
 )
 from loopdoc.register import model
-from loopdoc.register.model import FinalElement, Loop, known
+from loopdoc.register.model import FinalElement, Loop, known, seconds
 from loopdoc.register.units import UnitError
 
 _MOVES = {
@@ -102,7 +102,7 @@ def _step(
     if size is None or own is None or own.span <= 0.0:
         return Lacking(f"its size, or the range of {loop.tag}, is not known")
     if isinstance(lag, model.Hold):
-        return Lacking("its lag is on hold")
+        return Lacking("its lag is on hold" if lag.readable else "its lag could not be read")
     try:
         if known(written.at) == "process input":
             if isinstance(process, Lacking):
@@ -112,7 +112,7 @@ def _step(
     except UnitError:
         return Lacking("its size is in a unit of another kind")
     if lag is not None:
-        return Step(size_pct, Process(1.0, (max(0.0, lag.to("s")),)))
+        return Step(size_pct, Process(1.0, (seconds(lag),)))
     if isinstance(process, Lacking):
         return Lacking(f"it has no lag of its own, and {process.reason}")
     return Step(size_pct, Process(1.0, process.lags_s))
@@ -179,8 +179,7 @@ def _by_element(way: Way) -> Iterator[Upset | UndecidedUpset]:
         return
     assert isinstance(processes[0], Process)
     start_pct = _opening_pct(inner, route, processes[0])
-    stroke = known(route.end.stroke_time)
-    stroke_s = max(0.0, stroke.to("s")) if stroke else 0.0
+    stroke_s = seconds(route.end.stroke_time)
     moves = _MOVES.get(known(route.end.kind) or "", _VALVE_MOVES)
     for move, end_pct in zip(moves, (0.0, 100.0), strict=True):
         size_pct = (2.0 * end_pct - 100.0) if start_pct is None else end_pct - start_pct

@@ -33,6 +33,12 @@ def known(value: T | Hold | None) -> T | None:
     return None if isinstance(value, Hold) else value
 
 
+def seconds(value: Quantity | Hold | None) -> float:
+    """A time in seconds; 0 where it is held or not given, or is negative or no time, of which the check tells."""
+    time = known(value)
+    return max(0.0, time.to("s")) if time is not None and time.unit.kind == "time" else 0.0
+
+
 @dataclass(frozen=True, slots=True)
 class Origin:
     """Where a part of the register is written."""

@@ -11,7 +11,18 @@ from loopdoc.register.model import ALARM_ORDER, Hold, Loop, known
 from loopdoc.register.quantity import Quantity
 from loopdoc.rules.finding import Level
 from loopdoc.rules.rule import Draft, draft, need, not_checked, only_if, rule
-from loopdoc.rules.values import above, amount, below, duration, equal, measured_range, range_place, reading, scale_in
+from loopdoc.rules.values import (
+    above,
+    amount,
+    below,
+    duration,
+    equal,
+    measured_range,
+    range_place,
+    reading,
+    scale_in,
+    time_s,
+)
 
 _NAMES = {"low_low": "low-low", "low": "low", "high": "high", "high_high": "high-high", "deviation": "deviation"}
 
@@ -125,10 +136,11 @@ def alarm_time_short(subject: LoopAlarm, times: TimeToAct) -> Iterator[Draft]:
     behind = times.of(loop, alarm)
     only_if(behind)
     given = need(alarm.time_to_respond, "the time to respond")
+    given_s = time_s(given, "the time to respond")
     lacking = ""
     for entry in behind:
         reached = sorted(entry.times, key=lambda time: time.available_s)
-        short = [time for time in reached if below(time.available_s, given.to("s"))]
+        short = [time for time in reached if below(time.available_s, given_s)]
         certain = next((time for time in short if not time.at_least), None)
         if certain is not None:
             yield _too_short(entry, certain, given)

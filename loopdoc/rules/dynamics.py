@@ -17,7 +17,7 @@ from loopdoc.register.place import Place
 from loopdoc.rules.finding import Level
 from loopdoc.rules.policy import Limits
 from loopdoc.rules.rule import Draft, draft, need, not_checked, only_if, rule
-from loopdoc.rules.values import above, below, duration
+from loopdoc.rules.values import above, below, duration, time_s
 
 if TYPE_CHECKING:
     from loopdoc.engineering.frequency import Margins
@@ -135,8 +135,9 @@ def interval_too_slow(controlled: ControlledLoop, dynamics: Dynamics, limits: Li
         Transmitters and networks that are slower than the controller.
     """
     interval = need(controlled.controller.interval, "the execution interval")
+    interval_s = time_s(interval, "the execution interval")
     crossover = _fastest_crossover(controlled, dynamics)
-    turned = interval.to("s") * crossover
+    turned = interval_s * crossover
     if above(turned, limits.interval_crossover):
         yield draft(
             controlled.tag,
@@ -168,8 +169,9 @@ def filter_too_slow(controlled: ControlledLoop, dynamics: Dynamics, limits: Limi
     assert measurement is not None
     filtered = need(measurement.filter, "the measurement filter")
     only_if(filtered.value > 0)
+    filter_s = time_s(filtered, "the measurement filter")
     crossover = _fastest_crossover(controlled, dynamics)
-    lag_deg = math.degrees(math.atan(filtered.to("s") * crossover))
+    lag_deg = math.degrees(math.atan(filter_s * crossover))
     if above(lag_deg, limits.filter_phase_lag):
         most_s = math.tan(math.radians(limits.filter_phase_lag)) / crossover
         yield draft(
@@ -232,9 +234,9 @@ def cascade_interval_order(link: CascadeLink) -> Iterator[Draft]:
         The order in which the two are executed within one interval.
     """
     primary, secondary = link.primary.controller, link.secondary.controller
-    own = need(secondary.interval, f"the interval of {link.secondary.tag}")
-    of_primary = need(primary.interval, f"the interval of {link.primary.tag}")
-    if above(own.to("s"), of_primary.to("s")):
+    own = need(secondary.interval, "the interval of the secondary")
+    of_primary = need(primary.interval, "the interval of the primary")
+    if above(time_s(own, "the interval of the secondary"), time_s(of_primary, "the interval of the primary")):
         yield draft(
             link.secondary.tag,
             f"it is executed every {own}, and {link.primary.tag}, which commands it, every {of_primary}",
@@ -353,7 +355,7 @@ def stroke_too_slow(controlled: ControlledLoop, dynamics: Dynamics, limits: Limi
         if math.isnan(crossover):
             continue  # the gain nowhere reaches 1: there is no speed to follow
         most_s = 100 / (limits.stroke_move * crossover)
-        if above(stroke.to("s"), most_s):
+        if above(time_s(stroke, "the stroke time"), most_s):
             yield draft(
                 element.tag,
                 f"its stroke time is {stroke}; to follow {controlled.tag} in a move of {limits.stroke_move:g} % at its "

@@ -10,7 +10,7 @@ from loopdoc.register.model import Interlock, Loop, known
 from loopdoc.rules.finding import Level
 from loopdoc.rules.policy import Limits
 from loopdoc.rules.rule import Draft, draft, need, only_if, rule
-from loopdoc.rules.values import Scale, above, below, equal, measured_range, range_place, reading, scale_in
+from loopdoc.rules.values import Scale, above, below, equal, measured_range, range_place, reading, scale_in, time_s
 
 
 @rule(
@@ -144,7 +144,8 @@ def interlock_too_slow(interlock: Interlock, limits: Limits) -> Iterator[Draft]:
         need(interlock.layer, "the layer")
     given = need(interlock.process_safety_time, "the process safety time")
     response = need(interlock.response_time, "the response time")
-    share = response.to("s") / given.to("s") if given.value > 0 else math.inf
+    response_s, given_s = time_s(response, "the response time"), time_s(given, "the process safety time")
+    share = response_s / given_s if given_s > 0 else math.inf
     if not above(share, limits.interlock_time_share):
         return
     whole = not below(share, 1.0)

@@ -38,6 +38,13 @@ def amount(value: float, unit: Unit) -> str:
     return str(Quantity(float(f"{value:.6g}"), unit))
 
 
+def time_s(written: Quantity, what: str) -> float:
+    """A time in seconds; not checked where the value is no time (the rule `schema` tells of it)."""
+    if written.unit.kind != "time":
+        not_checked(f"{what} is no time")
+    return written.to("s")
+
+
 def duration(seconds: float) -> str:
     """A calculated time as the register would write it, with two significant digits."""
     if abs(seconds) < 100:
