@@ -122,14 +122,15 @@ def _scenario_lines(comparison: Comparison) -> list[str]:
     own = measured_range(comparison.dynamics.chain.lead)
     unit = own.unit.symbol
     heads = f"{f'peak, {unit}':>14}{f'IAE, {unit} s':>16}{'settling, s':>14}{'valve travel, %':>18}"
-    lines = [f"{'upset':24}{'':10}{heads}"]
+    width = max(24, *(len(entry.scenario.name) + 2 for entry in comparison.scenarios))
+    lines = [f"{'upset':{width}}{'':10}{heads}"]
     for entry in comparison.scenarios:
         rows = [("as tuned", entry.tuned)] + ([("single", entry.single)] if entry.single else [])
         for name, response in rows:
             metrics = response.metrics
             per_pct = own.span / 100.0
             lines.append(
-                f"{entry.scenario.name if name == 'as tuned' else '':24}{name:10}"
+                f"{entry.scenario.name if name == 'as tuned' else '':{width}}{name:10}"
                 f"{_shown(metrics.peak_pct * per_pct):>14}{_shown(metrics.iae_pct_s * per_pct, 4):>16}"
                 f"{_shown(metrics.settling_s, 4):>14}{_shown(metrics.valve_travel_pct):>18}"
             )
