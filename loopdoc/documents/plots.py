@@ -186,9 +186,12 @@ def _draw_panel(axes: Any, panel: Panel, *, last_row: bool) -> None:
         # A limit far off would flatten the curves; it is named in the caption's table instead.
         if low - 0.6 * (high - low) <= limit.value <= high + 0.6 * (high - low):
             axes.axhline(limit.value, linewidth=0.6, color="#000000", dashes=(6, 2, 1, 2))
+            # The name stands on the side away from the nearer end of the axis.
+            is_high = limit.value > (low + high) / 2
             axes.annotate(
-                limit.label, (1.0, limit.value), xycoords=("axes fraction", "data"), xytext=(-2, 1.5),
-                textcoords="offset points", ha="right", va="bottom", fontsize=6.5,
+                limit.label, (1.0, limit.value), xycoords=("axes fraction", "data"),
+                xytext=(-2, -1.5 if is_high else 1.5), textcoords="offset points",
+                ha="right", va="top" if is_high else "bottom", fontsize=6.5,
             )  # fmt: skip
     axes.locator_params(nbins=MOST_TICKS)
     axes.margins(x=0)

@@ -24,6 +24,8 @@ from loopdoc.register.model import known
 from loopdoc.register.quantity import Range, display_number
 
 ALARM_NAMES = {"high_high": "HH", "high": "H", "low": "L", "low_low": "LL"}
+COLUMNS = 4
+"""Upsets side by side in a figure."""
 TIME_UNITS = ((7200.0, 3600.0, "h"), (600.0, 60.0, "min"), (0.0, 1.0, "s"))
 """From this duration on [s], divide by this and write that."""
 
@@ -69,12 +71,12 @@ def benefit(comparison: Comparison) -> str:
     ratio = entry.ratio("iae_pct_s")
     integral = ""
     if ratio is not None and ratio < 1:
-        integral = f", and the integral of the error to {number(100.0 * ratio)} %"
+        integral = f" The integral of the absolute error is {display_number(100.0 * ratio, 2)} % of the single loop's."
     upset = upset_name(comparison, entry)
     return (
-        f"{upset[0].upper()}{upset[1:]} moves {lead.tag} by {_with_unit(peaks[1], unit)} at most, against "
-        f"{_with_unit(peaks[0], unit)} with a single loop on {comparison.dynamics.chain.final_element.tag} that is "
-        f"tuned by SIMC to the same Ms{integral}."
+        f"With the cascade, {upset[0].lower()}{upset[1:]} moves {lead.tag} by {_with_unit(peaks[1], unit)} at most; a "
+        f"single loop on {comparison.dynamics.chain.final_element.tag}, tuned by SIMC to the same Ms, would let it move "
+        f"by {_with_unit(peaks[0], unit)}.{integral}"
     )
 
 
@@ -160,6 +162,8 @@ def upset_name(comparison: Comparison, entry: ScenarioResponses) -> str:
         return f"Setpoint of {lead.tag} up by {_step(entry.scenario.setpoint_step_pct, measured_range(lead))}"
     moved = entry.scenario.disturbances[0]
     loop = levels[moved.level].loop
+    if moved.path is not None:
+        return f"{entry.scenario.name[:1].upper()}{entry.scenario.name[1:]}, declared at {loop.tag}"
     size = _step(moved.size_pct, measured_range(loop))
     integrating = known(loop.loop.process).integrating if known(loop.loop.process) else False  # type: ignore[union-attr]
     return f"An upset of {size} at {loop.tag}" + (" at its process input" if integrating else "")
@@ -177,7 +181,7 @@ def figure(comparison: Comparison) -> Drawing:
     )
     above: list[Panel] = []
     below: list[Panel] = []
-    for entry in comparison.scenarios:
+    for entry in _drawn(comparison):
         last = float(entry.tuned.time_s[-1])
         _, divisor, time_unit = next(unit for unit in TIME_UNITS if last >= unit[0])
         shown_names = ("cascade", "single loop") if entry.single else ("as tuned", "")
@@ -200,6 +204,13 @@ def figure(comparison: Comparison) -> Drawing:
     return Drawing(f"Time responses of {lead.tag} with {chain.final_element.tag}", (tuple(above), tuple(below)))
 
 
+def _drawn(comparison: Comparison) -> list[ScenarioResponses]:
+    """The upsets that a figure has room for: the setpoint step, then those that the register declares."""
+    step, *others = comparison.scenarios
+    declared = [entry for entry in others if entry.scenario.disturbances[0].path is not None]
+    return [step, *declared, *(entry for entry in others if entry not in declared)][:COLUMNS]
+
+
 def _svg(comparison: Comparison) -> str:
     return to_svg(figure(comparison))
 
@@ -211,6 +222,9 @@ def caption(comparison: Comparison) -> str:
     parts = [
         f"Response of {chain.lead.tag} to a step of {number(UPSET_PCT)} % of span in its setpoint and, through the lag "
         f"of the process concerned, at each measurement.",
+        "Upsets that the register declares come with their own size and lag."
+        if any(entry.scenario.disturbances and entry.scenario.disturbances[0].path for entry in comparison.scenarios)
+        else "",
         "Linear models about the normal values, simulated scan by scan as executed, with output limits"
         + (f" and a stroke time of {shown(stroke)}" if stroke else "")
         + "; every measurement starts at its normal value and the final element in the middle of its output limits.",
@@ -226,7 +240,7 @@ def caption(comparison: Comparison) -> str:
         parts.append(
             "No single loop on the same final element reaches the same maximum sensitivity by SIMC; none is drawn."
         )
-    return " ".join(parts)
+    return " ".join(part for part in parts if part)
 
 
 def number(value: float | None) -> str:
@@ -237,6 +251,8 @@ def number(value: float | None) -> str:
 def _short_name(comparison: Comparison, entry: ScenarioResponses) -> str:
     if entry.scenario.setpoint_step_pct:
         return "Setpoint step"
+    if entry.scenario.disturbances[0].path is not None:
+        return f"{entry.scenario.name[:1].upper()}{entry.scenario.name[1:]}"
     return f"Upset at {comparison.dynamics.chain.levels[entry.scenario.disturbances[0].level].loop.tag}"
 
 

@@ -190,7 +190,8 @@ def _final_element(chain: Chain) -> FinalElement:
     """
     backlash = known(chain.final_element.backlash)
     inner = chain.stages[0].controller
-    middle = (inner.output_low_pct + inner.output_high_pct) / 2.0
+    # Of a split range's branch the limits lie beyond the travel: the other branch is moved there.
+    middle = (max(0.0, inner.output_low_pct) + min(100.0, inner.output_high_pct)) / 2.0
     # `tuning-invalid` tells of a backlash that leaves no travel.
     return FinalElement(
         stroke_time_s=seconds(chain.final_element.stroke_time),
