@@ -18,7 +18,7 @@ from scipy.stats import t as student
 from loopdoc.engineering.confidence import Confidence, Estimate
 from loopdoc.engineering.held_input import held_input, start_terms, unit_response
 from loopdoc.engineering.identification import MOST_FITTED, STRUCTURES, Identification, identify
-from loopdoc.engineering.model_fit import Nuisance, fit, record
+from loopdoc.engineering.model_fit import Nuisance, Record, fit, record
 from loopdoc.engineering.noise import (
     WHITE,
     NoiseModel,
@@ -158,6 +158,17 @@ def test_response_adds_up_and_its_rate_is_its_slope(
     assert rate.rate[smooth] == pytest.approx(slope[smooth], abs=1e-5 * size)
 
 
+def test_a_record_of_many_changes_is_followed_as_one_of_few() -> None:
+    # The halves are reckoned in one way, the whole, with more changes, in the other; responses add up.
+    t, u = np.arange(500.0), np.random.default_rng(2).normal(size=500)
+    halves = (np.where(t < 250.0, u, u[249]), np.where(t < 250.0, u[249], u))
+    whole, early, late = (
+        unit_response(held_input(t, value), lags_s=(30.0, 8.0), integrating=False, dead_time_s=4.3, time_s=t).value
+        for value in (u, *halves)
+    )
+    assert whole == pytest.approx(early + late, abs=1e-12)
+
+
 def test_start_away_from_rest_dies_out_as_two_lags_do() -> None:
     t = np.linspace(0.0, 200.0, 41)
     own, passed_on = start_terms(t, (30.0, 8.0)).T
@@ -227,8 +238,8 @@ def test_noise_model_is_found_where_it_is_and_not_where_it_is_not() -> None:
     # Of 1500 samples about 100 are independent: the share is known to about 0.05, the memory to about 15 %.
     assert found.share == pytest.approx(0.6, abs=0.15)
     assert found.memory_s == pytest.approx(60.0, rel=0.45)
-    white = [noise_model(t[:200], rng.normal(size=200), regressors[:200]).white for _ in range(20)]
-    assert sum(white) >= 18  # each is taken for correlated with a probability of about 1 %
+    white = [noise_model(t[:200], rng.normal(size=200), regressors[:200]).white for _ in range(12)]
+    assert sum(white) >= 11  # each is taken for correlated with a probability of about 1 %
 
 
 # --- one form against scipy's own fit ------------------------------------------------------------
@@ -337,31 +348,28 @@ def test_a_long_record_is_thinned_and_says_so() -> None:
 # --- intervals hold their truth ------------------------------------------------------------------
 
 
-def hits(records: Sequence[tuple[Array, Array, Array]], noise: NoiseModel | None) -> int:
-    """In how many records the interval of the gain holds it; the noise model is found where none is given."""
-    found = 0
-    for t, u, y in records:
-        test = record(t, u, y)
-        best = fit(test, ONE_LAG, DRIFT, WHITE)
-        shape = noise if noise is not None else noise_model(test.time_s, y - best.fitted, best.jacobian)
-        best = fit(test, ONE_LAG, DRIFT, shape, near=best)
-        found += holds(Confidence(test, best, shape).gain(), 2.0)
-    return found
+def known_as_white(test: Record) -> Confidence:
+    return Confidence(test, fit(test, ONE_LAG, DRIFT, WHITE), WHITE)
 
 
 @pytest.mark.parametrize(("noise", "drift"), [(0.1, 0.0), (1.0, 0.001)])
 def test_intervals_hold_the_truth_in_white_noise(noise: float, drift: float) -> None:
-    records = [a_bump(seed, noise, drift_per_s=drift, samples=80) for seed in range(24)]
+    records = [record(*a_bump(seed, noise, drift_per_s=drift, samples=80)) for seed in range(24)]
     # Of 24 intervals of 95 % fewer than 20 hold their truth with a probability of 0.6 %.
-    assert hits(records, WHITE) >= 20
+    assert sum(holds(known_as_white(test).gain(), 2.0) for test in records) >= 20
 
 
 def test_intervals_are_widened_for_correlated_noise() -> None:
-    disturbance = NoiseModel(0.7, 80.0)
-    records = [a_bump(seed, 0.5, disturbance=disturbance, samples=120) for seed in range(20)]
+    narrow = wide = 0
+    for seed in range(20):
+        test = record(*a_bump(seed, 0.5, disturbance=NoiseModel(0.7, 80.0), samples=120))
+        white = known_as_white(test)
+        noise = noise_model(test.time_s, white.residual, white.fit.jacobian)
+        narrow += holds(white.gain(), 2.0)
+        wide += holds(Confidence(test, fit(test, ONE_LAG, DRIFT, noise, near=white.fit), noise).gain(), 2.0)
     # Taken for white, this noise leaves about 45 of 100 truths inside; with the model found, about 90.
-    assert hits(records, WHITE) <= 13
-    assert hits(records, None) >= 15
+    assert narrow <= 13
+    assert wide >= 15
 
 
 def test_correlated_noise_is_told() -> None:
@@ -410,6 +418,8 @@ REFUSED: dict[str, tuple[Callable[[], tuple[Array, Array, Array]], str]] = {
     "no answer": (lambda: a_bump(2, 0.5, gain=0.0), "does not answer the output by more than its noise"),
     "lag beyond the test": (lambda: slow(300.0, 0.02), "the test is shorter than the dynamics"),
     "one short step": (lambda: a_bump(5, 0.8, samples=33, moves=((0.2, 5.0),)), "cannot tell the gain from a drift"),
+    "at the end": (lambda: a_bump(1, 0.1, moves=((0.1, 5.0),), dead_time=800.0), "answers only at the end"),
+    "dynamics in the noise": (lambda: a_bump(2, 5.0, samples=80, interval=60.0), "lags and dead time together"),
     "fast": (lambda: a_bump(1, 0.1, samples=60, interval=400.0), "settles within one sampling interval"),
 }
 
