@@ -139,3 +139,19 @@ def test_the_command_line_starts_without_heavy_libraries() -> None:
 def test_a_check_loads_nothing_that_only_documents_need() -> None:
     program = "import loopdoc.cli; loopdoc.cli.run(['check', 'examples/tarn-hollow'], sys.stdout, sys.stderr)"
     assert loaded_after(f"import sys; {program}") & HEAVY == set()
+
+
+def test_a_check_that_asks_for_no_dynamics_starts_without_numpy() -> None:
+    arguments = "['check', 'examples/tarn-hollow', '--only', 'tag-grammar', 'cascade-interval-order', 'rate-on-flow']"
+    program = f"import sys, loopdoc.cli; loopdoc.cli.run({arguments}, sys.stderr, sys.stderr)"
+    assert loaded_after(program) & (HEAVY | {"numpy"}) == set()
+
+
+def test_a_check_of_a_plant_without_models_starts_without_numpy(tmp_path: Path) -> None:
+    register = (ROOT / "tests" / "rules" / "base-register.yaml").read_text("utf-8")
+    without = re.sub(r"\n    process:( \{.*\}|\n      branches:(\n        .*)*)", "", register)
+    assert "process: {" not in without
+    assert "branches" not in without
+    (tmp_path / "register.yaml").write_text(without, "utf-8")
+    program = f"import sys, loopdoc.cli; loopdoc.cli.run(['check', {str(tmp_path)!r}], sys.stderr, sys.stderr)"
+    assert loaded_after(program) & (HEAVY | {"numpy"}) == set()
