@@ -273,6 +273,8 @@ def _model(process: Process) -> str:
         parts.append(Markup("lag {}").format(cell(lags)))
     elif lags:
         parts.append(f"{'lag' if len(lags) == 1 else 'lags'} {' and '.join(shown(lag) for lag in lags)}")
+    if process.lead is not None:
+        parts.append(Markup("lead {}").format(cell(process.lead)))
     if process.dead_time is not None:
         parts.append(Markup("dead time {}").format(cell(process.dead_time)))
     return joined(parts)

@@ -42,6 +42,8 @@ def held_name(path: Sequence[str | int]) -> str:
     words = [step.replace("_", " ") for step in steps]
     if len(steps) > 1 and steps[0] == "alarms":
         return f"{steps[1].replace('_', '-')} alarm {' '.join(words[2:])}".strip()
+    if len(steps) > 1 and steps[0] == "disturbances":
+        return f"{words[2]} of the disturbance {steps[1]}" if len(steps) > 2 else f"disturbance {steps[1]}"
     if len(steps) > 1 and steps[0] == "process" and steps[1] == "branches":
         return f"process {' of '.join(reversed(words[2:]))}"
     if len(steps) > 1 and steps[0] in ("setpoint", "output", "operating"):

@@ -101,6 +101,8 @@ def margin_low(controlled: ControlledLoop, dynamics: Dynamics, limits: Limits) -
             remedy="lower the gain, or lengthen the reset time",
             at=_gain_place(controlled.controller),
         )
+    elif math.isnan(worst.margins[-1].gain_margin):
+        not_checked("the gain margin lies above a quarter of the sampling frequency and is not calculated")
 
 
 def _margin_faults(margins: Margins, limits: Limits) -> Iterator[str]:
@@ -302,7 +304,7 @@ def cascade_no_benefit(controlled: ControlledLoop, dynamics: Dynamics, limits: L
         After a step at the measurement of the secondary, through the lags of its own process, the primary's
         error is below the share of the policy of what a single loop leaves: SIMC on all the processes in
         series, tuned to the same maximum sensitivity. The error is the root of the integrated square, summed
-        over frequency by Parseval's relation, which takes a thousandth of the time of a simulation.
+        over frequency by Parseval's relation, which takes far less time than a simulation.
     What this check cannot see:
         Other reasons for the secondary, such as a limit on the flow or a valve that sticks. In a chain of
         three levels each primary is judged with all that stands below it.
