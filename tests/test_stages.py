@@ -92,7 +92,8 @@ def test_other_units_change_no_number(tmp_path: Path) -> None:
     other = (
         CASCADE.replace("60 to 120 degC", "140 to 248 degF")
         .replace(
-            "{low: 78 degC, normal: 84 degC, high: 96 degC}", "{low: 172.4 degF, normal: 183.2 degF, high: 204.8 degF}"
+            "{low: 78 degC, normal: 84 degC, high: 96 degC}",
+            "{low: 172.4 degF, normal: 183.2 degF, high: 204.8 degF}",
         )
         .replace("5.5 degC per t/h", "0.0099 degF per kg/h")
         .replace("0 to 12 t/h, low: 3 t/h, high: 10.5 t/h", "0 to 12000 kg/h, low: 3000 kg/h, high: 10500 kg/h")
@@ -107,7 +108,14 @@ def test_other_units_change_no_number(tmp_path: Path) -> None:
         strict=True,
     ):
         assert theirs.process.gain == pytest.approx(ours.process.gain, rel=1e-12)
-        for field in ("gain", "reset_s", "output_low_pct", "output_high_pct", "setpoint_low_pct", "setpoint_high_pct"):
+        for field in (
+            "gain",
+            "reset_s",
+            "output_low_pct",
+            "output_high_pct",
+            "setpoint_low_pct",
+            "setpoint_high_pct",
+        ):
             assert getattr(theirs.controller, field) == pytest.approx(getattr(ours.controller, field), rel=1e-9)
 
 
@@ -234,6 +242,22 @@ def test_a_wrong_action_shows_as_an_unstable_loop(tmp_path: Path) -> None:
     text = CASCADE.replace("action: reverse\n      gain: 1.8", "action: direct\n      gain: 1.8")
     margins = Dynamics(plant_of(tmp_path, text)).loop("TIC-2014").chains[0].margins
     assert [found.stable for found in margins] == [True, False]
+
+
+def test_a_gain_margin_is_not_quoted_where_half_an_interval_is_no_longer_the_sampling(tmp_path: Path) -> None:
+    """Proportional control of a lag without dead time, by hand (K. J. Astrom, B. Wittenmark, Computer-Controlled
+    Systems, 3rd ed. 1997, ch. 2, from memory): with a = exp(-T/tau) it turns unstable at the gain (1+a)/(1-a)/K, and
+    at half the sampling frequency; half an interval as dead time would give another figure."""
+    lag = CASCADE.replace("      reset: 12 s\n", "").replace(", lag: 4 s, dead_time: 1 s", ", lag: 4 s")
+    lag = lag.replace("      interval: 0.5 s", "      interval: 2 s")
+    found = Dynamics(plant_of(tmp_path, lag)).loop("FIC-2011").chains[0].margins[0]
+    exact = (1 + math.exp(-2 / 4)) / (1 - math.exp(-2 / 4)) / (0.5 * 1.2)
+    w = np.linspace(0.5, 3.0, 200_000)
+    half_interval = 0.5 * 1.2 * np.exp(-1j * w) / (1 + 4j * w)
+    crossing = np.argmax(np.diff(np.sign(half_interval.imag)) > 0)
+    assert -1 / half_interval.real[crossing] > 1.3 * exact
+    assert found.stable
+    assert math.isnan(found.gain_margin)
 
 
 @pytest.mark.parametrize(

@@ -53,10 +53,14 @@ def supplements(basis: Basis) -> dict[str, Supplement]:
 
 
 def _chains(basis: Basis, scheme: Scheme) -> list[ChainDynamics]:
-    """The chains of a scheme from each loop that nothing commands."""
-    plant = basis.plant
-    leads = [loop for loop in scheme.loops if loop.tag in plant.controlled and not plant.primaries_of(loop.tag)]
-    return [chain for loop in leads for chain in basis.dynamics.loop(loop.tag).chains]
+    """The chains of a scheme from the outermost loops whose dynamics are known."""
+    dynamics, plant = basis.dynamics, basis.plant
+    return [
+        chain
+        for loop in scheme.loops
+        if not any(dynamics.loop(primary.tag).chains for primary in plant.primaries_of(loop.tag))
+        for chain in dynamics.loop(loop.tag).chains
+    ]
 
 
 def benefit(comparison: Comparison) -> str:
@@ -75,8 +79,8 @@ def benefit(comparison: Comparison) -> str:
     upset = upset_name(comparison, entry)
     return (
         f"With the cascade, {upset[0].lower()}{upset[1:]} moves {lead.tag} by {_with_unit(peaks[1], unit)} at most; a "
-        f"single loop on {comparison.dynamics.chain.final_element.tag}, tuned by SIMC to the same Ms, would let it move "
-        f"by {_with_unit(peaks[0], unit)}.{integral}"
+        f"single loop on {comparison.dynamics.chain.final_element.tag}, tuned by SIMC to the same Ms, would let it "
+        f"move by {_with_unit(peaks[0], unit)}.{integral}"
     )
 
 

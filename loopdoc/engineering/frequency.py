@@ -78,8 +78,9 @@ def _nearest(size: int, roots: Crossings, value: FloatArray) -> tuple[FloatArray
     """Per chain the smallest of the values at its crossings, and the frequency there; inf and nan if none."""
     least, where = np.full(size, math.inf), np.full(size, math.nan)
     np.minimum.at(least, roots.row, value)
-    chosen = value == least[roots.row]
-    where[roots.row[chosen]] = roots.w[chosen]
+    # Of crossings that are alike (dead time alone crosses for ever) the first counts.
+    chosen = value <= least[roots.row] * (1.0 + 1e-9)
+    np.fmin.at(where, roots.row[chosen], roots.w[chosen])
     return least, where
 
 

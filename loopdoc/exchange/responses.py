@@ -108,7 +108,7 @@ def _chain_lines(dynamics: ChainDynamics, comparison: Comparison | NotSimulated)
     for level, margins in zip(reversed(chain.levels), reversed(dynamics.margins), strict=True):
         state = "" if margins.stable else "   NOT STABLE"
         lines.append(
-            f"{level.loop.tag:12}{_shown(margins.gain_margin):>13}{_shown(margins.phase_margin_deg, 3) + ' deg':>14}"
+            f"{level.loop.tag:12}{_gain_margin(margins):>13}{_shown(margins.phase_margin_deg, 3) + ' deg':>14}"
             f"{_shown(margins.max_sensitivity):>7}{_shown(margins.crossover_rad_per_s) + ' rad/s':>16}{state}"
         )
     if dynamics.speed_ratio is not None:
@@ -142,6 +142,10 @@ def _scenario_lines(comparison: Comparison) -> list[str]:
             f"reset {_shown(settings.reset_s)} s)"
         )
     return lines
+
+
+def _gain_margin(margins: Margins) -> str:
+    return "not quoted" if math.isnan(margins.gain_margin) else _shown(margins.gain_margin)
 
 
 def _shown(value: float, significant: int = 3) -> str:
