@@ -22,8 +22,9 @@ PROCESS_HEAD = ("Loop", "Moved", "Process gain", "Lags", "Lead", "Dead time", "S
 BASIS = (
     "Gains are in percent of output per percent of measurement span, in the standard form (ISA-TR5.9) unless a table "
     "names another. Margins come from the exact frequency response of the process models with every loop below "
-    "closed; dead time is not approximated, and an execution interval counts as half of itself in dead time. Ms is "
-    "the maximum sensitivity; the speed ratio is the crossover of the loop below over that of the loop itself."
+    "closed; dead time is not approximated, and an execution interval counts as half of itself in dead time; a gain "
+    "margin above a quarter of the sampling frequency is not quoted, since that no longer holds there. Ms is the "
+    "maximum sensitivity; the speed ratio is the crossover of the loop below over that of the loop itself."
 )
 """What every table of settings and margins rests on, told once in a document."""
 
@@ -100,6 +101,8 @@ def _margins(dynamics: Dynamics, tag: str) -> tuple[str, str, str, str, str]:
 
 
 def _figure(number: float) -> str:
+    if math.isnan(number):
+        return "not quoted"  # a gain margin above a quarter of the sampling frequency
     return display_number(number, 3 if abs(number) < 100 else 4)
 
 

@@ -164,10 +164,10 @@ def _number_fault(number: str) -> tuple[str, list[str]]:
     elif re.fullmatch("[0-9]+,[0-9]+", digits):
         complaint = "has a decimal comma"
         forms = [digits.replace(",", ".")]
-    elif digits.startswith("."):
+    elif re.fullmatch(r"\.[0-9]+", digits):
         complaint = "has no digit before its decimal point"
         forms = [f"0{digits}"]
-    elif digits.endswith("."):
+    elif re.fullmatch(r"[0-9]+\.", digits):
         complaint = "has no digit after its decimal point"
         forms = [digits[:-1]]
     elif not _PLAIN.fullmatch(digits):
