@@ -1,8 +1,10 @@
 """How well a fitted model is known: intervals from the Jacobian, and what the fit leaves over.
 
-The intervals are those of least squares on the record whitened by the noise model. Correlated noise leaves fewer
-independent samples, and with them a wider quantile.
-Source: L. Ljung, System Identification, 2nd ed. 1999, ch. 9 (from memory).
+The intervals are those of least squares on the record whitened by its noise, averaged over the shapes of noise
+that the residuals allow; correlated noise leaves fewer independent samples, and with them a wider quantile.
+Source: L. Ljung, System Identification, 2nd ed. 1999, ch. 9 (covariance from the Jacobian, from memory); J. A.
+Hoeting, D. Madigan, A. E. Raftery, C. T. Volinsky, "Bayesian model averaging", Statistical Science 14:382-417,
+1999 (mean and variance of an average over models).
 """
 
 from __future__ import annotations
@@ -17,7 +19,7 @@ from scipy.special import stdtrit
 from loopdoc.engineering.model_fit import Fit, Record
 from loopdoc.engineering.noise import (
     WHITE,
-    NoiseModel,
+    NoiseModels,
     Whitening,
     durbin_watson,
     effective_samples,
@@ -87,12 +89,17 @@ class Leftover:
 class Confidence:
     """A fit with the covariance of its parameters."""
 
-    def __init__(self, test: Record, chosen: Fit, noise: NoiseModel) -> None:
-        self.test, self.fit, self.noise = test, chosen, noise
-        self.whitening = Whitening(noise, test.time_s)
-        self.freedom = max(effective_samples(noise, test.time_s) - chosen.parameters, 2.0)
-        self.quantile = float(stdtrit(self.freedom, 0.975))
-        self.covariance = _covariance(test, chosen, self.whitening)
+    def __init__(self, test: Record, fit: Fit, noises: NoiseModels) -> None:
+        """The fit is one by the best of the noise models."""
+        self.test, self.fit, self.noises, self.noise = test, fit, noises, noises.best
+        self.whitening = Whitening(self.noise, test.time_s)
+        n = len(test.time_s)
+        independent = sum(weight * effective_samples(noise, test.time_s) for noise, weight in noises.weighted)
+        self.quantile = float(stdtrit(max(min(independent - 1.0, n - fit.parameters), 2.0), 0.975))
+        self.covariance = np.zeros((fit.parameters, fit.parameters))
+        for noise, weight in noises.weighted:
+            shift, own = _by(Whitening(noise, test.time_s), fit, self.residual)
+            self.covariance += weight * (own + np.outer(shift, shift))
 
     @property
     def residual(self) -> FloatArray:
@@ -174,8 +181,7 @@ class Confidence:
         residual = self.residual
         variance = self.fit.squares / (len(residual) - self.fit.parameters)
         whitened = self.whitening(residual)
-        plain = _covariance(self.test, self.fit, Whitening(WHITE, self.test.time_s))
-        plain = plain * float(residual @ residual) / self.fit.squares
+        _, plain = _by(Whitening(WHITE, self.test.time_s), self.fit, residual)
         return Leftover(
             noise=math.sqrt(variance * (1.0 - self.noise.share)),
             disturbance=math.sqrt(variance * self.noise.share),
@@ -186,14 +192,17 @@ class Confidence:
         )
 
 
-def _covariance(test: Record, entry: Fit, whitening: Whitening) -> FloatArray:
-    """(p, p) covariance of the parameters, from the whitened Jacobian."""
-    columns = whitening(entry.jacobian)
+def _by(whitening: Whitening, fit: Fit, residual: FloatArray) -> tuple[FloatArray, FloatArray]:
+    """(p,) shift of the parameters and (p, p) their covariance, were the noise of one shape."""
+    columns, left = whitening(fit.jacobian), whitening(residual)
     scale = np.linalg.norm(columns, axis=0)
     scale[scale == 0.0] = 1.0
-    _, singular, rows = np.linalg.svd(columns / scale, full_matrices=False)
+    directions, singular, rows = np.linalg.svd(columns / scale, full_matrices=False)
+    explained = directions.T @ left
     # A direction that the record does not see has no bound: its tiny singular value must not be dropped.
     inverse = rows.T / np.maximum(singular, 1e-12)
-    spread = entry.squares / (len(test.time_s) - entry.parameters)
-    covariance: FloatArray = spread * (inverse @ inverse.T) / np.outer(scale, scale)
-    return covariance
+    seen = singular > 1e-9 * singular[0]
+    shift = (rows.T[:, seen] / singular[seen]) @ explained[seen]
+    squares = fit.squares if fit.exact else max(float(left @ left) - float(explained @ explained), 0.0)
+    spread = squares / (len(left) - fit.parameters)
+    return shift / scale, spread * (inverse @ inverse.T) / np.outer(scale, scale)

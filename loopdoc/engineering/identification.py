@@ -1,10 +1,10 @@
 """A process model from a step or bump test: gain, lags and dead time, or integration, with their intervals.
 
-Each form of model is fitted by least squares in the time domain; the residuals of the closest give the noise,
-white or correlated; the forms are fitted again to the record whitened by it, and the Bayesian information
-criterion chooses among them. A drift of the measurement is always allowed for: a single step cannot tell it
-from the process, and an interval that takes it for nought does not hold. What the record does not support is
-refused with the reason.
+Each form of model is fitted by least squares in the time domain; the residuals of the closest say how probable
+white noise is and each shape of correlated noise; the forms are fitted again to the record whitened by the
+likeliest, and the Bayesian information criterion chooses among them. A drift of the measurement is always allowed
+for: a single step cannot tell it from the process, and an interval that takes it for nought does not hold. What
+the record does not support is refused with the reason.
 Source: the criterion, G. Schwarz, Annals of Statistics 6:461-464, 1978; that for a start away from rest,
 C. M. Hurvich, C.-L. Tsai, Biometrika 76:297-307, 1989; least squares and intervals, L. Ljung, System
 Identification, 2nd ed. 1999, ch. 7 and 9 (from memory).
@@ -19,19 +19,22 @@ from numpy.typing import NDArray
 
 from loopdoc.engineering.confidence import Confidence, Leftover, Model
 from loopdoc.engineering.model_fit import Fit, Nuisance, Record, Structure, fit, record
-from loopdoc.engineering.noise import WHITE, NoiseModel, noise_model
+from loopdoc.engineering.noise import SURELY_WHITE, WHITE, NoiseModel, noise_models
 from loopdoc.engineering.verdict import cautions, refusals, without_a_fit
 
 FloatArray = NDArray[np.float64]
 
+ONE_LAG, NO_LAG = Structure("one lag", 1), Structure("no lag", 0)
 STRUCTURES = (
-    Structure("one lag", 1),
+    ONE_LAG,
     Structure("two equal lags", 2, equal=True),
     Structure("two lags", 2),
     Structure("integrating", 0, integrating=True),
     Structure("integrating with a lag", 1, integrating=True),
+    NO_LAG,
 )
-"""The forms of model, each with a gain and a dead time."""
+"""The forms of model, each with a gain and a dead time. The one without a lag is for a response that settles
+between two samples; noise that hides a lag is no reason to leave it out."""
 
 MOST_FITTED = 3000
 """Samples fitted; of a longer record each second, third ... sample, which loses little and biases nothing."""
@@ -108,16 +111,17 @@ def identify(
     test = Record(whole.time_s[::step], whole.measurement[::step], whole.held)
     plain = [_fitted(test, structure, WHITE, ()) for structure in structures]
     closest = min((entry for pair in plain for entry in pair), key=lambda entry: entry.squares)
-    noise = WHITE
+    noises, pairs = SURELY_WHITE, plain
     if not closest.exact:
-        noise = noise_model(test.time_s, test.measurement - closest.fitted, closest.jacobian)
-    pairs = plain
-    if not noise.white:
-        pairs = [_fitted(test, structure, noise, pair) for structure, pair in zip(structures, plain, strict=True)]
+        noises = noise_models(test.time_s, test.measurement - closest.fitted, closest.jacobian)
+    if not noises.best.white:
+        pairs = [_fitted(test, form, noises.best, pair) for form, pair in zip(structures, plain, strict=True)]
     # Akaike's criterion is the readier to keep a start away from rest, whose lack would bias the rest.
     fits = sorted((min(pair, key=lambda entry: entry.akaike) for pair in pairs), key=lambda entry: entry.bayes)
+    lag_seen = any(entry.structure == ONE_LAG and entry.lags_s[0] > test.interval_s for entry in fits)
+    fits = [entry for entry in fits if not (lag_seen and entry.structure == NO_LAG)]
     chosen = fits[0]
-    known = Confidence(test, chosen, noise)
+    known = Confidence(test, chosen, noises)
     leftover = known.leftover()
     reasons = tuple(refusals(known))
     said: tuple[str, ...] = ()

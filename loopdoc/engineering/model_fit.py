@@ -199,7 +199,7 @@ def fit(record: Record, structure: Structure, nuisance: Nuisance, noise: NoiseMo
         best = min((coarse.refined(start, _ROUGHLY) for start in coarse.searched()), key=coarse.squares)
     best = problem.refined(best, _CLOSELY)
     # The sum of squares has a kink wherever the dead time carries a step past a sample: look beside the minimum.
-    beside = best[0] + record.interval_s * np.arange(-3.0, 3.01, 0.25)
+    beside = best[0] + record.interval_s * np.arange(-3.0 * step, 3.0 * step + 0.01, 0.25)
     beside = beside[(beside >= 0.0) & (beside <= problem.longest_dead_time)]
     along = problem.squares_along(best[1:], beside)
     if len(beside) and along.min() < problem.squares(best) * (1.0 - 1e-9):
@@ -354,6 +354,8 @@ class _Problem:
         count = 2 + math.ceil(math.log(longest / shortest) / math.log(_DEAD_TIME_RATIO))
         dead_times = np.concatenate(([0.0], np.geomspace(shortest, longest, count)))
         if self.structure.unknown_lags == 0:
+            # Without a lag nothing leads from one dead time to the next: all of them are tried.
+            dead_times = np.arange(0.0, longest, self.record.interval_s / 2.0)
             order = np.argsort(self.squares_along(np.zeros(0), dead_times))
             return [np.array([dead_times[i]]) for i in order[:_STARTS]]
         choices = [np.array([math.log(lag)]) for lag in lags]

@@ -8,13 +8,11 @@ linear estimate and its intervals hold.
 
 from __future__ import annotations
 
-import math
 from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 from scipy.linalg import cholesky_banded, solve_banded
-from scipy.optimize import minimize
 from scipy.special import chdtrc
 
 FloatArray = NDArray[np.float64]
@@ -123,15 +121,35 @@ class Whitening:
         return whitened
 
 
-_SHARES = (0.15, 0.4, 0.65, 0.85, 0.95, 0.99)
-_MEMORIES = 9
-_LARGEST_SHARE = 0.9999
-SIGNIFICANT_GAIN = 9.2
-"""Gain of twice the log likelihood that a correlated part must bring: 1 % tail of chi-square with 2 degrees."""
+_SHARES = (0.15, 0.3, 0.45, 0.6, 0.75, 0.87, 0.95, 0.99)
+_MEMORIES = 12
+_WHITE_ODDS = 0.5  # before the residuals are seen: white or correlated, and every correlated shape alike
+_NEGLIGIBLE = 1e-3
 
 
-def noise_model(time_s: FloatArray, residual: FloatArray, regressors: FloatArray) -> NoiseModel:
-    """Return the noise model of largest restricted likelihood; white where correlation is not significant.
+@dataclass(frozen=True, slots=True)
+class NoiseModels:
+    """The shapes of the noise that residuals allow, each with its probability.
+
+    Residuals of one test tell little of a slow disturbance; a single shape taken for certain makes intervals
+    that do not hold.
+    """
+
+    weighted: tuple[tuple[NoiseModel, float], ...]
+    """Most probable first; the probabilities add up to 1."""
+
+    @property
+    def best(self) -> NoiseModel:
+        """White where that is at least as probable as all correlated shapes together, else the likeliest of these."""
+        white = sum(weight for noise, weight in self.weighted if noise.white)
+        return WHITE if white >= 0.5 else next(noise for noise, _ in self.weighted if not noise.white)
+
+
+SURELY_WHITE = NoiseModels(((WHITE, 1.0),))
+
+
+def noise_models(time_s: FloatArray, residual: FloatArray, regressors: FloatArray) -> NoiseModels:
+    """Return how probable each shape of the noise is, by its restricted likelihood on a grid.
 
     The restricted likelihood allows for what the fit itself took out of the residuals.
 
@@ -146,18 +164,17 @@ def noise_model(time_s: FloatArray, residual: FloatArray, regressors: FloatArray
 
     Returns
     -------
-    NoiseModel
-        Share and memory.
+    NoiseModels
+        White noise, and correlated noise of all shares and of memories from a sample to the whole record.
 
     Source: H. D. Patterson, R. Thompson, "Recovery of inter-block information when block sizes are
-    unequal", Biometrika 58:545-554, 1971.
+    unequal", Biometrika 58:545-554, 1971; D. A. Harville, Biometrika 61:383-385, 1974 (its Bayesian reading).
     """
     scale = np.linalg.norm(regressors, axis=0)
     directions, singular, _ = np.linalg.svd(regressors / np.where(scale > 0.0, scale, 1.0), full_matrices=False)
     basis = directions[:, singular > 1e-9 * singular[0]]
     columns = np.column_stack((basis, residual))
-    span = float(time_s[-1] - time_s[0])
-    shortest = float(np.median(np.diff(time_s)))
+    freedom = len(time_s) - int(basis.shape[1])
 
     def deviance(noise: NoiseModel) -> float:
         whitening = Whitening(noise, time_s)
@@ -166,25 +183,18 @@ def noise_model(time_s: FloatArray, residual: FloatArray, regressors: FloatArray
         fitted = float(np.linalg.slogdet(products[:-1, :-1])[1])
         # The determinant with the residual over the one without it is the sum of squares that is left.
         left = float(np.linalg.slogdet(products)[1]) - fitted
-        freedom = len(time_s) - int(basis.shape[1])
         return freedom * left + whitening.log_determinant + fitted
 
-    def at(point: FloatArray) -> float:
-        share = _LARGEST_SHARE / (1.0 + math.exp(-min(max(point[0], -30.0), 30.0)))
-        memory = math.exp(min(max(point[1], math.log(shortest)), math.log(span)))
-        return deviance(NoiseModel(share, memory))
-
-    memories = np.geomspace(shortest, span, _MEMORIES)
-    starts = [(share, float(memory)) for share in _SHARES for memory in memories]
-    share, memory = min(starts, key=lambda start: deviance(NoiseModel(*start)))
-    first = np.array([math.log(share / (_LARGEST_SHARE - share)), math.log(memory)])
-    found = minimize(at, first, method="Nelder-Mead", options={"maxfev": 80, "xatol": 0.02, "fatol": 0.02})
-    if deviance(WHITE) - float(found.fun) < SIGNIFICANT_GAIN:
-        return WHITE
-    return NoiseModel(
-        share=_LARGEST_SHARE / (1.0 + math.exp(-min(max(float(found.x[0]), -30.0), 30.0))),
-        memory_s=math.exp(min(max(float(found.x[1]), math.log(shortest)), math.log(span))),
-    )
+    memories = np.geomspace(np.median(np.diff(time_s)), time_s[-1] - time_s[0], _MEMORIES).tolist()
+    shapes = [WHITE, *(NoiseModel(share, memory) for share in _SHARES for memory in memories)]
+    odds = np.array([_WHITE_ODDS] + [(1.0 - _WHITE_ODDS) / (len(shapes) - 1)] * (len(shapes) - 1))
+    deviances = np.array([deviance(shape) for shape in shapes])
+    weights = odds * np.exp(-(deviances - deviances.min()) / 2.0)
+    weights /= weights.sum()
+    kept = [(shape, float(weight)) for shape, weight in zip(shapes, weights, strict=True) if weight > _NEGLIGIBLE]
+    total = sum(weight for _, weight in kept)
+    kept.sort(key=lambda entry: -entry[1])
+    return NoiseModels(tuple((shape, weight / total) for shape, weight in kept))
 
 
 def effective_samples(noise: NoiseModel, time_s: FloatArray) -> float:

@@ -23,7 +23,7 @@ from loopdoc.engineering.model_fit import (
     fit,
     squares_by_lag,
 )
-from loopdoc.engineering.noise import WHITE, Whitening, effective_samples, noise_model
+from loopdoc.engineering.noise import WHITE, Whitening, effective_samples, noise_models
 from loopdoc.register.quantity import display_number
 
 FloatArray = NDArray[np.float64]
@@ -151,7 +151,7 @@ def _without_drift(known: Confidence) -> float | None:
         return None
     nuisance = Nuisance(drift=False, start=known.fit.nuisance.start)
     without = fit(known.test, known.fit.structure, nuisance, known.noise)
-    return Confidence(known.test, without, known.noise).gain().doubt
+    return Confidence(known.test, without, known.noises).gain().doubt
 
 
 def cautions(known: Confidence, leftover: Leftover, rivals: Sequence[Fit], *, unseen_s: float) -> Iterator[str]:
@@ -234,22 +234,19 @@ def _down_over_up(known: Confidence) -> float | None:
     changes = np.diff(held.value)
     if len(changes) > CROWDED / 3.0 * len(known.test.time_s) or not (changes.min() < 0.0 < changes.max()):
         return None
-    parts = []
-    for kept in (np.maximum(changes, 0.0), np.minimum(changes, 0.0)):
-        part = HeldInput(held.time_s, np.concatenate(([0.0], np.cumsum(kept))))
-        parts.append(
-            unit_response(
-                part,
-                lags_s=known.fit.lags_s,
-                integrating=known.fit.structure.integrating,
-                dead_time_s=known.fit.dead_time_s,
-                time_s=known.test.time_s,
-            ).value
-        )
+    down = HeldInput(held.time_s, np.concatenate(([0.0], np.cumsum(np.minimum(changes, 0.0)))))
+    response = unit_response(
+        down,
+        lags_s=known.fit.lags_s,
+        integrating=known.fit.structure.integrating,
+        dead_time_s=known.fit.dead_time_s,
+        time_s=known.test.time_s,
+    )
     # The other parameters move along: what the second gain explains beyond all of them is what counts. The noise
     # is found anew beside it, or a correlated disturbance would stand for what the two gains explain.
-    columns = np.column_stack((known.fit.jacobian, parts[1]))
-    noise = WHITE if known.fit.exact else noise_model(known.test.time_s, known.residual, columns)
+    seen = np.any(known.fit.jacobian != 0.0, axis=0)
+    columns = np.column_stack((known.fit.jacobian[:, seen], response.value))
+    noise = WHITE if known.fit.exact else noise_models(known.test.time_s, known.residual, columns).best
     whitening = Whitening(noise, known.test.time_s)
     columns, residual = whitening(columns), whitening(known.residual)
     scale = np.linalg.norm(columns, axis=0)
