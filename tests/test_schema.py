@@ -808,3 +808,15 @@ def test_a_mapping_of_very_many_unknown_keys_is_told_in_time() -> None:
     many = {f"key_{n}": n for n in range(20_000)}
     found = schema_faults(read(json.dumps(many)), root=False)
     assert len(found) == len(many)
+
+
+def test_a_sentence_cut_by_a_comma_in_braces_is_told_as_such() -> None:
+    text = read_text(
+        b'loops:\n  LI-1001:\n    unit: "10"\n    service: Level\n    measurement: {}\n'
+        b"    alarms:\n      high: {limit: 85 %, cause: Feed is too high, or the outlet is shut.}\n",
+        "units/10.yaml",
+    )
+    assert isinstance(text, TextFile)
+    (fault,) = schema_faults(text, root=False)
+    assert (fault.place.line, fault.place.column) == (7, 52)
+    assert fault.remedy == "put the text before it in quotes: inside `{...}` a comma ends a value"

@@ -167,12 +167,18 @@ class _Refused:
             yield Fault(
                 self.file.place((*self.path, key), key=True),
                 f"the key `{meant}` has a stray space" if stray else f"`{_shown(key)}` is not a key of {owner}",
-                f"write `{meant}`" if meant else self._remedy(key, below),
+                f"write `{meant}`" if meant else self._split_text(key, value) or self._remedy(key, below),
                 _pointer((*self.path, key)),
             )
         for key in missing:
             example = f"{key}: {_flow(below[key].examples[0])}"
             yield self._fault(f"{self._name()} has no `{key}`", f"add it, as in `{example}`", key=True)
+
+    def _split_text(self, key: str, value: dict[str, Any]) -> str:
+        """What to write where a comma inside `{...}` has cut a sentence in two, and its rest looks like a key."""
+        if value[key] is None and " " in key:
+            return "put the text before it in quotes: inside `{...}` a comma ends a value"
+        return ""
 
     def _stands_near(self, key: str) -> bool:
         """Whether a missing key stands where it is unknown, one level down or up, and a fault there says so."""
