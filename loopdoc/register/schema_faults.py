@@ -174,7 +174,7 @@ class _Refused:
             example = f"{key}: {_flow(below[key].examples[0])}"
             yield self._fault(f"{self._name()} has no `{key}`", f"add it, as in `{example}`", key=True)
 
-    def _split_text(self, key: str, value: dict[str, Any]) -> str:
+    def _split_text(self, key: str, value: Mapping[str, Any]) -> str:
         """What to write where a comma inside `{...}` has cut a sentence in two, and its rest looks like a key."""
         if value[key] is None and " " in key:
             return "put the text before it in quotes: inside `{...}` a comma ends a value"
