@@ -123,7 +123,7 @@ def identify(
     chosen = fits[0]
     known = Confidence(test, chosen, noises)
     leftover = known.leftover()
-    reasons = tuple(refusals(known))
+    reasons = tuple(refusals(known, fits[1:]))
     said: tuple[str, ...] = ()
     if not reasons:
         changed = np.flatnonzero(np.diff(moved))

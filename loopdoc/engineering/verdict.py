@@ -54,6 +54,9 @@ UNLIKE = 0.1
 UNDECIDED = 2.0
 """Difference of the Bayesian information criterion below which another form fits as well.
 Source: R. E. Kass, A. E. Raftery, "Bayes factors", J. American Statistical Association 90:773-795, 1995."""
+SETTLES = 6.0
+"""Difference of the criterion by which a form that settles must stand before one that ramps: strong evidence, since
+the gain hangs on it. Source: as above."""
 
 
 def without_a_fit(time_s: FloatArray, moved: FloatArray, measurement: FloatArray) -> Iterator[str]:
@@ -73,11 +76,12 @@ def without_a_fit(time_s: FloatArray, moved: FloatArray, measurement: FloatArray
         yield "the measurement never changes; the signal may be frozen, or the step too small for its resolution"
 
 
-def refusals(known: Confidence) -> Iterator[str]:
+def refusals(known: Confidence, rivals: Sequence[Fit]) -> Iterator[str]:
     """Why the record does not support the model: the first cause alone, since others follow from it."""
     test, found = known.test, known.fit
     after, time = test.after_s, known.response_time()
     doubt = known.gain().doubt
+    ramps = [rival for rival in rivals if rival.structure.integrating and rival.bayes - found.bayes < SETTLES]
     if _null_is_as_good(known):
         yield (
             "the measurement does not answer the output by more than its noise and drift; make a larger step, "
@@ -101,6 +105,11 @@ def refusals(known: Confidence) -> Iterator[str]:
         yield (
             f"the test is too short to tell whether the measurement settles: it lasts {_duration(after)} after the "
             f"first step, and a lag of {_duration(least)} fits as well as a ramp; record longer"
+        )
+    elif not found.structure.integrating and ramps:
+        yield (
+            f"the test is too short to tell whether the measurement settles: it lasts {_duration(after)} after the "
+            f"first step, and the form `{ramps[0].structure.name}` fits nearly as well; record longer"
         )
     elif not found.structure.integrating and time.doubt > TIME_REFUSED:
         yield (
