@@ -12,10 +12,12 @@ import pytest
 from loopdoc.documents import pdf
 from loopdoc.documents.basis import Basis
 from loopdoc.documents.issue import issue, write_whole
+from loopdoc.documents.responses import difference_unit
 from loopdoc.documents.titleblock import CAUTIONS, fingerprint
 from loopdoc.engineering.dynamics import Dynamics
 from loopdoc.engineering.pairing import Plant
 from loopdoc.register.load import Loaded, load
+from loopdoc.register.quantity import parse_range
 from loopdoc.register.starter import starter_files
 from loopdoc.rules.check import check
 
@@ -182,3 +184,11 @@ def test_a_failed_write_leaves_what_was_there(tmp_path: Path, monkeypatch: pytes
         write_whole(file, b"new")
     assert file.read_bytes() == b"old"
     assert list(tmp_path.iterdir()) == [file]
+
+
+@pytest.mark.parametrize(
+    ("written", "unit"),
+    [("0 to 1 barg", "bar"), ("0 to 300 kPaa", "kPa"), ("60 to 120 degC", "K"), ("0 to 15 t/h", "t/h")],
+)
+def test_a_change_of_a_measurement_has_the_unit_of_a_difference(written: str, unit: str) -> None:
+    assert difference_unit(parse_range(written)) == unit

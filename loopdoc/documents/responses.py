@@ -22,6 +22,7 @@ from loopdoc.engineering.simulation import Response
 from loopdoc.engineering.stages import measured_range
 from loopdoc.register.model import known
 from loopdoc.register.quantity import Range, display_number
+from loopdoc.register.units import unit
 
 ALARM_NAMES = {"high_high": "HH", "high": "H", "low": "L", "low_low": "LL"}
 COLUMNS = 4
@@ -115,7 +116,7 @@ def section(basis: Basis, dynamics: ChainDynamics, *, several: bool) -> dict[str
         "margins": margin_rows(dynamics),
         "speed_ratio": number(dynamics.speed_ratio) if dynamics.speed_ratio is not None else "",
         "not_simulated": compared.reason if isinstance(compared, NotSimulated) else "",
-        "unit": measured_range(chain.lead).unit.display,
+        "unit": difference_unit(measured_range(chain.lead)),
         "rows": metric_rows(comparison) if comparison else [],
         "single": comparison is not None and comparison.single is not None,
         "figure": basis.drawn(dynamics, _svg),
@@ -283,8 +284,14 @@ def _step(percent: float, own: Range) -> str:
 
 
 def difference_unit(own: Range) -> str:
-    """The unit in which a change of a measurement is printed: kelvin for degrees Celsius."""
-    return "K" if own.unit.symbol == "degC" else own.unit.display
+    """The unit in which a change of a measurement is printed: kelvin for degrees Celsius, bar for bar gauge."""
+    symbol = own.unit.symbol
+    if symbol == "degC":
+        return "K"
+    if own.unit.kind in ("gauge pressure", "absolute pressure"):
+        return unit(symbol[:-1]).display
+    return own.unit.display
+
 
 
 def _with_unit(value: float, unit: str) -> str:
