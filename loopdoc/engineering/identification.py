@@ -109,14 +109,14 @@ def identify(
     whole = record(time_s, moved, measurement)
     step = -(-len(time_s) // MOST_FITTED)
     test = Record(whole.time_s[::step], whole.measurement[::step], whole.held)
-    plain = [_fitted(test, structure, WHITE, ()) for structure in structures]
+    starts = (False, True) if _from_elsewhere(test) else (False,)
+    plain = [_fitted(test, structure, WHITE, starts, ()) for structure in structures]
     closest = min((entry for pair in plain for entry in pair), key=lambda entry: entry.squares)
     noises, pairs = SURELY_WHITE, plain
     if not closest.exact:
         noises = noise_models(test.time_s, test.measurement - closest.fitted, closest.jacobian)
     if not noises.best.white:
-        pairs = [_fitted(test, form, noises.best, pair) for form, pair in zip(structures, plain, strict=True)]
-    # Akaike's criterion is the readier to keep a start away from rest, whose lack would bias the rest.
+        pairs = [_fitted(test, form, noises.best, starts, pair) for form, pair in zip(structures, plain, strict=True)]
     fits = sorted((min(pair, key=lambda entry: entry.akaike) for pair in pairs), key=lambda entry: entry.bayes)
     lag_seen = any(entry.structure == ONE_LAG and entry.lags_s[0] > test.interval_s for entry in fits)
     fits = [entry for entry in fits if not (lag_seen and entry.structure == NO_LAG)]
@@ -142,10 +142,21 @@ def identify(
     )
 
 
-def _fitted(test: Record, structure: Structure, noise: NoiseModel, near: tuple[Fit, ...]) -> tuple[Fit, ...]:
-    """One structure fitted from rest, and where it has a lag also from a start away from rest."""
+def _from_elsewhere(test: Record) -> bool:
+    """Whether a start away from rest is worth trying: whether it helps the form with one lag.
+
+    Akaike's criterion decides, the readier to keep such a start, whose lack would bias the rest.
+    """
+    at_rest, away = (fit(test, ONE_LAG, Nuisance(drift=True, start=start), WHITE) for start in (False, True))
+    return away.akaike < at_rest.akaike
+
+
+def _fitted(
+    test: Record, structure: Structure, noise: NoiseModel, starts: tuple[bool, ...], near: tuple[Fit, ...]
+) -> tuple[Fit, ...]:
+    """One structure fitted from rest, and where it has a lag and that is worth trying also from elsewhere."""
     found = []
-    for i, start in enumerate((False, True) if structure.lags else (False,)):
+    for i, start in enumerate(starts if structure.lags else (False,)):
         nuisance = Nuisance(drift=True, start=start)
         found.append(fit(test, structure, nuisance, noise, near=near[i] if near else None))
     return tuple(found)
