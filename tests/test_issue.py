@@ -161,8 +161,9 @@ def test_text_of_the_register_is_no_markup(tmp_path: Path) -> None:
     for file in (tmp_path / "out").rglob("*.html"):
         content = file.read_text(encoding="utf-8")
         assert "<script>alert" not in content, file
-        assert "49" not in content or "{{ 7*7 }}" in content, file
-    assert "&lt;script&gt;" in (tmp_path / "out" / "loop-sheets" / "LIC-1001.html").read_text(encoding="utf-8")
+    sheet = (tmp_path / "out" / "loop-sheets" / "LIC-1001.html").read_text(encoding="utf-8")
+    assert "&lt;script&gt;" in sheet
+    assert "{{ 7*7 }}" in sheet
 
 
 def test_the_fingerprint_follows_content_and_names_but_not_line_ends() -> None:

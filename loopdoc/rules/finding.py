@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import hashlib
 from collections import Counter
 from dataclasses import dataclass, field
 from enum import IntEnum
@@ -87,8 +86,3 @@ class CheckResult:
     def about(self, tags: set[str]) -> tuple[Finding, ...]:
         """Open findings about any of these tags."""
         return tuple(finding for finding in self.findings if finding.tag in tags)
-
-
-def fingerprint(finding: Finding, ordinal: int) -> str:
-    """A stable name of a finding: rule, tag and ordinal, never its line (a moved line is not a new finding)."""
-    return hashlib.sha256(f"{finding.rule}\0{finding.tag}\0{ordinal}".encode()).hexdigest()[:32]
