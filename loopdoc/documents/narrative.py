@@ -15,6 +15,7 @@ from loopdoc.documents.page_fit import foot
 from loopdoc.documents.scheme_story import SchemeStory, headline
 from loopdoc.documents.values import HOLD
 from loopdoc.documents.view import Block, Figure, Paragraph, Section, Steps, table
+from loopdoc.documents.whereabouts import file_name, mover, unit_numbers, unit_of
 from loopdoc.documents.wording import (
     Prose,
     Run,
@@ -30,7 +31,7 @@ from loopdoc.documents.wording import (
     value,
 )
 from loopdoc.engineering.failure import FailureAnalysis
-from loopdoc.engineering.pairing import Plant, Scheme
+from loopdoc.engineering.pairing import Scheme
 from loopdoc.engineering.spreading import transmitter_of
 from loopdoc.register.model import FinalElement, Function, HeldValue, Instrument, Interlock, Loop, UnitText, known
 from loopdoc.rules.finding import Finding
@@ -39,9 +40,6 @@ from loopdoc.rules.references import defined_tags
 _P = TypeVar("_P", Loop, FinalElement, Instrument, Function, Interlock)
 
 FOLDER = "narratives"
-NO_UNIT = "00"
-"""Unit under which parts are told whose unit the register does not give."""
-
 _LONGEST_NAME = 60
 """Characters; what stands before a colon is the name of an upset up to this length."""
 
@@ -67,7 +65,7 @@ def narratives(basis: Basis, supplements: Mapping[str, Supplement] | None = None
         frozenset(defined.tag for defined in defined_tags(register)),
         supplements or {},
     )
-    for number in _units(basis.plant):
+    for number in unit_numbers(basis.plant):
         unit = register.units.get(number)
         name = known(unit.name) if unit else None
         builder = _Narrative(basis, shared, number)
@@ -86,24 +84,6 @@ def narratives(basis: Basis, supplements: Mapping[str, Supplement] | None = None
             "foot": foot(document),
         }
         yield Page(FOLDER, file_name(number), document, "narrative.html", view)
-
-
-def file_name(number: str) -> str:
-    """Name of a unit's narrative without its ending."""
-    return f"unit-{re.sub(r'[^A-Za-z0-9.-]+', '-', number)}"
-
-
-def _units(plant: Plant) -> tuple[str, ...]:
-    """Numbers of the units, as declared; then those that only a part names."""
-    register = plant.register
-    found = dict.fromkeys(register.units)
-    sections: tuple[Mapping[str, Loop | FinalElement | Instrument | Function | Interlock], ...] = (
-        register.loops, register.final_elements, register.instruments, register.functions, register.interlocks,
-    )  # fmt: skip
-    for section in sections:
-        for part in section.values():
-            found.setdefault(known(part.unit) or NO_UNIT)
-    return tuple(found)
 
 
 @dataclass(frozen=True, slots=True)
@@ -139,7 +119,7 @@ class _Narrative:
         self._setter = Setter(register, shared.tags, self._target)
 
     def _own(self, parts: Mapping[str, _P]) -> list[_P]:
-        return [part for part in parts.values() if (known(part.unit) or NO_UNIT) == self._number]
+        return [part for part in parts.values() if unit_of(part) == self._number]
 
     def _own_schemes(self) -> list[tuple[Scheme, tuple[Loop, ...]]]:
         """Schemes with a controller in this unit, each with the loops that are told here."""
@@ -286,7 +266,7 @@ class _Narrative:
         """Where the whole scheme is told, when only a part of it stands in this unit."""
         if lead.tag in {loop.tag for loop in loops}:
             return ""
-        unit = known(lead.unit) or NO_UNIT
+        unit = unit_of(lead)
         which = self._register.numbering.replace("{unit}", unit).replace("{kind}", "CN").replace("{serial}", "001")
         those = "It" if len(loops) == 1 else "They"
         belongs = "belongs" if len(loops) == 1 else "belong"
@@ -440,26 +420,12 @@ class _Narrative:
             anchor = f"interlock-{_slug(tag)}"
             if protection_story.bare(interlock):
                 anchor = "interlocks"
-            unit = known(interlock.unit) or NO_UNIT
+            unit = unit_of(interlock)
             if unit == self._number:
                 return Target(anchor=anchor)
             return Target(sheet=f"{quote(file_name(unit))}.html#{anchor}")
-        loop = register.loops.get(tag) or self._plant.loop_of_transmitter.get(tag) or self._mover(tag)
+        loop = register.loops.get(tag) or self._plant.loop_of_transmitter.get(tag) or mover(self._plant, tag)
         return Target(sheet=f"../loop-sheets/{quote(loop.tag)}.html") if loop else Target()
-
-    def _mover(self, tag: str) -> Loop | None:
-        """The loop on whose sheet a final element or a function is drawn."""
-        loops = self._register.loops
-        waiting, seen = [tag], {tag}
-        while waiting:
-            for commander in self._plant.commanders.get(waiting.pop(0), ()):
-                if commander in loops:
-                    return loops[commander]
-                if commander not in seen:
-                    seen.add(commander)
-                    waiting.append(commander)
-        function = self._register.functions.get(tag)
-        return loops.get(known(function.to) or "") if function else None
 
 
 def _these(interlocks: Sequence[Interlock]) -> str:

@@ -1,0 +1,84 @@
+"""Where things stand: in which unit a part belongs, and which document of the issue tells of a tag."""
+
+from __future__ import annotations
+
+import re
+from collections.abc import Mapping
+from urllib.parse import quote
+
+from loopdoc.documents.wording import Target
+from loopdoc.engineering.pairing import Plant
+from loopdoc.register.model import FinalElement, Function, Instrument, Interlock, Loop, known
+
+NO_UNIT = "00"
+"""Unit under which parts are told whose unit the register does not give; also that of plant-wide documents."""
+
+LOOP_SHEETS = "loop-sheets"
+CHARTS = "cause-and-effect"
+INSTRUMENT_LISTS = "instrument-lists"
+
+Part = Loop | FinalElement | Instrument | Function | Interlock
+
+
+def unit_of(part: Part) -> str:
+    """Number of the unit that a part belongs to."""
+    return known(part.unit) or NO_UNIT
+
+
+def unit_numbers(plant: Plant) -> tuple[str, ...]:
+    """Numbers of the units, as declared; then those that only a part names."""
+    register = plant.register
+    found = dict.fromkeys(register.units)
+    sections: tuple[Mapping[str, Part], ...] = (
+        register.loops, register.final_elements, register.instruments, register.functions, register.interlocks,
+    )  # fmt: skip
+    for section in sections:
+        for part in section.values():
+            found.setdefault(unit_of(part))
+    return tuple(found)
+
+
+def file_name(number: str) -> str:
+    """Name of a unit's document without its ending."""
+    return f"unit-{re.sub(r'[^A-Za-z0-9.-]+', '-', number)}"
+
+
+def anchor(tag: str) -> str:
+    """Name of the place in a document at which a tag is told."""
+    return f"tag-{re.sub(r'[^A-Za-z0-9]+', '-', tag).strip('-')}"
+
+
+def mover(plant: Plant, tag: str) -> Loop | None:
+    """The loop on whose sheet a final element or a function is drawn."""
+    loops = plant.register.loops
+    waiting, seen = [tag], {tag}
+    while waiting:
+        for commander in plant.commanders.get(waiting.pop(0), ()):
+            if commander in loops:
+                return loops[commander]
+            if commander not in seen:
+                seen.add(commander)
+                waiting.append(commander)
+    function = plant.register.functions.get(tag)
+    return loops.get(known(function.to) or "") if function else None
+
+
+def told_at(plant: Plant, tag: str) -> Target:
+    """The document, seen from the folder of another one, that tells of a tag."""
+    register = plant.register
+    loop = register.loops.get(tag) or plant.loop_of_transmitter.get(tag) or mover(plant, tag)
+    if loop is not None:
+        return Target(sheet=f"../{LOOP_SHEETS}/{quote(loop.tag)}.html")
+    for part, folder in (
+        (register.interlocks.get(tag), CHARTS),
+        (register.instruments.get(tag) or register.final_elements.get(tag), INSTRUMENT_LISTS),
+    ):
+        if part is not None:
+            return Target(sheet=f"../{folder}/{quote(file_name(unit_of(part)))}.html#{anchor(tag)}")
+    return Target()
+
+
+def natural(tag: str) -> tuple[tuple[int, int, str], ...]:
+    """Key that sorts numbers inside names by their value: AI-2-9 before AI-2-10."""
+    pieces = re.split(r"(\d+)", tag)
+    return tuple((0, int(piece), piece) if piece.isdigit() else (1, 0, piece.casefold()) for piece in pieces if piece)
