@@ -58,6 +58,7 @@ loops:
       signal: 4-20 mA
       on_fault: reads high
       filter: 2 s
+      tolerance: 0.3 degC
       channel: AI-2-07
     operating: {low: 80 degC, normal: 84.5 degC, high: 90 degC}
     controller:
@@ -105,7 +106,7 @@ final_elements:
             characteristic: equal percentage, stroke_time: 6 s, backlash: 0.5 %, resolution: 0.2 %}
 instruments:
   PT-2021A: {unit: "20", service: Column pressure, variable: pressure, sensor: diaphragm, element: tapping,
-             characteristic: linear, range: 0 to 2.5 barg, signal: 4-20 mA, on_fault: reads high, filter: 1 s,
+             characteristic: linear, range: 0 to 2.5 barg, signal: 4-20 mA, on_fault: reads high, filter: 1 s, tolerance: 0.5 %,
              channel: SI-1-01}
 functions:
   FY-2031: {kind: ratio, unit: "20", service: Reflux to feed ratio, inputs: [FT-2001], to: FIC-2031,
@@ -125,6 +126,7 @@ interlocks:
     process_safety_time: 90 s
     response_time: 8 s
     proof_test: 12 months
+    bypass: {permitted: "for the test of one transmitter at a time", approved_by: Shift supervisor, limit: 8 h}
     cause: Loss of cooling water
     consequence: Relief valve lifts
 deviations:
@@ -292,6 +294,7 @@ CLASSES = {
     "function": model.Function,
     "initiator": model.Initiator,
     "action": model.InterlockAction,
+    "bypass": model.Bypass,
     "interlock": model.Interlock,
     "site": model.Site,
     "revision": model.Revision,

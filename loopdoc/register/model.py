@@ -86,6 +86,8 @@ class Measurement(Part):
     """reads high, reads low, holds, unknown."""
     filter: Quantity | Hold | None
     """Time constant of the measurement filter."""
+    tolerance: Quantity | Hold | None
+    """Largest error that a loop check accepts: percent of span, or a difference in a unit of the range."""
     channel: str | Hold | None
 
 
@@ -343,6 +345,18 @@ class InterlockAction(Part):
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
+class Bypass(Part):
+    """Whether and how an interlock may be taken out of action for a time."""
+
+    permitted: str | Hold | None
+    """What for and how, such as `for the test of one transmitter at a time`; `no` where it never is."""
+    approved_by: str | Hold | None
+    """Who permits each bypass."""
+    limit: Quantity | Hold | None
+    """Time after which it ends or is permitted anew."""
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
 class Interlock(Part):
     """Initiators, voting, actions and reset."""
 
@@ -360,6 +374,7 @@ class Interlock(Part):
     process_safety_time: Quantity | Hold | None
     response_time: Quantity | Hold | None
     proof_test: Quantity | Hold | None
+    bypass: Bypass | Hold | None
     cause: str | Hold | None
     consequence: str | Hold | None
 
@@ -471,6 +486,11 @@ class Register:
             if measurement and transmitter:
                 found.setdefault(transmitter, measurement)
         return found
+
+    @cached_property
+    def held(self) -> frozenset[tuple[str, tuple[str | int, ...]]]:
+        """Tag and path under the tag of every hold; tells a mapping on hold from one that is not given."""
+        return frozenset((held.tag, held.path) for held in self.holds)
 
     def defined_at(self, tag: str) -> Place | None:
         """Place of the key under which a tag is defined; None for a tag the register does not define."""

@@ -13,6 +13,10 @@ def _limit(default: float, *, unit: str, meaning: str, source: str) -> Any:
     return field(default=default, metadata={"unit": unit, "meaning": meaning, "source": source})
 
 
+_DEADBAND = "ANSI/ISA-18.2-2009 (R2016), clause 10, starting values by type of signal, after EEMUA 191 (from memory)"
+_DELAY = _DEADBAND
+
+
 @dataclass(frozen=True, slots=True)
 class Limits:
     """The thresholds in force for one register."""
@@ -88,6 +92,108 @@ class Limits:
         unit="response time per process safety time",
         meaning="above this share the response of an interlock is called slow",
         source="common practice; IEC 61511-1:2016 wants the response within the process safety time (from memory)",
+    )
+    loop_check_tolerance: float = _limit(
+        0.5,
+        unit="% of span",
+        meaning="above this error of a reading a loop check fails, where the measurement states no tolerance of its own",
+        source="common practice",
+    )
+    travel_tolerance: float = _limit(
+        2.0,
+        unit="% of travel",
+        meaning="above this error of a final element's opening its stroke test fails",
+        source="common practice",
+    )
+    alarm_deadband_flow: float = _limit(
+        5.0,
+        unit="% of the measurement range",
+        meaning="the usual dead band of an alarm on a flow",
+        source=_DEADBAND,
+    )
+    alarm_deadband_level: float = _limit(
+        5.0,
+        unit="% of the measurement range",
+        meaning="the usual dead band of an alarm on a level",
+        source=_DEADBAND,
+    )
+    alarm_deadband_pressure: float = _limit(
+        2.0,
+        unit="% of the measurement range",
+        meaning="the usual dead band of an alarm on a pressure or differential pressure",
+        source=_DEADBAND,
+    )
+    alarm_deadband_temperature: float = _limit(
+        1.0,
+        unit="% of the measurement range",
+        meaning="the usual dead band of an alarm on a temperature",
+        source=_DEADBAND,
+    )
+    alarm_deadband_low: float = _limit(
+        0.4,
+        unit="dead band per usual dead band",
+        meaning="below this share of the usual dead band an alarm without the usual delay is said to chatter",
+        source="common practice; published tables of the usual dead band differ by this factor",
+    )
+    alarm_deadband_high: float = _limit(
+        4.0,
+        unit="dead band per usual dead band",
+        meaning="above this multiple of the usual dead band an alarm is said to stand too long",
+        source="common practice",
+    )
+    alarm_delay_flow: float = _limit(
+        15.0,
+        unit="s",
+        meaning="the usual delay of an alarm on a flow",
+        source=_DELAY,
+    )
+    alarm_delay_level: float = _limit(
+        60.0,
+        unit="s",
+        meaning="the usual delay of an alarm on a level",
+        source=_DELAY,
+    )
+    alarm_delay_pressure: float = _limit(
+        15.0,
+        unit="s",
+        meaning="the usual delay of an alarm on a pressure or differential pressure",
+        source=_DELAY,
+    )
+    alarm_delay_temperature: float = _limit(
+        60.0,
+        unit="s",
+        meaning="the usual delay of an alarm on a temperature",
+        source=_DELAY,
+    )
+    alarm_delay_high: float = _limit(
+        4.0,
+        unit="delay per usual delay",
+        meaning="above this multiple of the usual delay an alarm is said to come late",
+        source="common practice",
+    )
+    alarm_mix_count: float = _limit(
+        20.0,
+        unit="alarms of one unit",
+        meaning="below this number of alarms the shares of the priorities are not judged",
+        source="common practice: with fewer, one alarm is more than the 5 % that are to be of high priority",
+    )
+    alarm_share_high: float = _limit(
+        10.0,
+        unit="% of the alarms of one unit",
+        meaning="above this share of alarms of high or critical priority the priorities say too little",
+        source="twice the 5 % of ANSI/ISA-18.2-2016 Table 6 and EEMUA 191; the factor is common practice",
+    )
+    alarm_share_raised: float = _limit(
+        40.0,
+        unit="% of the alarms of one unit",
+        meaning="above this share of alarms of more than low priority the priorities say too little",
+        source="twice the 20 % of ANSI/ISA-18.2-2016 Table 6 and EEMUA 191; the factor is common practice",
+    )
+    bypass_time: float = _limit(
+        72.0,
+        unit="h",
+        meaning="above this limit in time a bypass of an interlock is called as good as unlimited",
+        source="common practice: three days, after which a bypass is a change of the plant",
     )
 
 

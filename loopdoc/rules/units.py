@@ -205,6 +205,10 @@ def _of_loop(loop: Loop, plant: Plant) -> Iterator[_Value]:
         name = f"the {alarm.kind.replace('_', '-')} alarm"
         yield _against_range(f"the limit of {name}", alarm, "limit", loop, alarm.kind == "deviation")
         yield _against_range(f"the dead band of {name}", alarm, "deadband", loop, True)
+    measurement = known(loop.measurement)
+    tolerance = known(measurement.tolerance) if measurement else None
+    if measurement and tolerance and tolerance.unit != _PERCENT:
+        yield _against_range("the tolerance", measurement, "tolerance", loop, True)
     for disturbance in loop.disturbances.values():
         yield _of_disturbance(loop, disturbance)
     if loop.tag in plant.controlled:
