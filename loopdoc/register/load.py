@@ -14,6 +14,7 @@ from pathlib import Path
 from types import UnionType
 from typing import Any, TypeVar, Union, cast, get_args, get_origin, get_type_hints
 
+from loopdoc.register.files import ROOT_NAME, Files, FolderFiles, included, located, read_file
 from loopdoc.register.model import (
     Alarm,
     Deviation,
@@ -49,11 +50,10 @@ from loopdoc.register.quantity import (
     parse_range,
 )
 from loopdoc.register.schema import schema_faults
-from loopdoc.register.text import Spot, TextFile, read_text
+from loopdoc.register.tag_grammar import TagGrammar, unbounded
+from loopdoc.register.text import Spot, TextFile
 from loopdoc.register.units import unit
 
-ROOT_NAME = "register.yaml"
-MAX_FILES = 5_000
 DEFAULT_NUMBERING = "{unit}-{kind}-{serial}"
 P = TypeVar("P", bound=Part)
 _SECTIONS = ("loops", "final_elements", "instruments", "functions", "interlocks", "texts", "units")
@@ -65,6 +65,8 @@ class Unreadable:
     """Why a folder or file cannot be read as a register."""
 
     faults: tuple[Fault, ...]
+    sources: Mapping[str, bytes]
+    """Content of each file read, by its name."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -79,7 +81,7 @@ class Loaded:
 
 def load(path: Path) -> Loaded | Unreadable:
     """Read the register in a folder, or the one whose root file is ``path``."""
-    folder, root_name = (path.parent, path.name) if path.is_file() else (path, ROOT_NAME)
+    folder, root_name = located(path)
     if not path.exists():
         return _unreadable(Place(str(path), 1, 1), "there is no such file or folder", "name the register's folder")
     if not (folder / root_name).is_file():
@@ -88,96 +90,49 @@ def load(path: Path) -> Loaded | Unreadable:
             f"the folder has no `{ROOT_NAME}`",
             "name the register's folder, or make one: loopdoc new",
         )
+    return load_files(FolderFiles(folder), root_name)
+
+
+def load_files(files: Files, root_name: str = ROOT_NAME) -> Loaded | Unreadable:
+    """Read a register from its files, wherever they are kept; the root file must be among them."""
     sources: dict[str, bytes] = {}
-    root = _read(folder, root_name, sources)
+    root = read_file(files, root_name, sources)
     if isinstance(root, Fault):
-        return Unreadable((root,))
+        return Unreadable((root,), sources)
     if not isinstance(root.data, dict):
         return _unreadable(
             root.place(()),
             "a register is a mapping of keys; this is something else",
             "begin with `format: 1` and `site:`",
+            sources,
         )
-    names, include_faults = _included(folder, root)
-    files: list[TextFile] = [root]
+    names, include_faults = included(files, root)
+    texts: list[TextFile] = [root]
     unreadable = list(include_faults)
     for name in names:
-        file = _read(folder, name, sources)
-        if isinstance(file, Fault):
-            unreadable.append(file)
-        elif not isinstance(file.data, dict):
+        text = read_file(files, name, sources)
+        if isinstance(text, Fault):
+            unreadable.append(text)
+        elif not isinstance(text.data, dict):
             unreadable.append(
                 Fault(
-                    file.place(()),
+                    text.place(()),
                     "an included file is a mapping of keys; this is something else",
                     "begin with `loops:`",
                 )
             )
         else:
-            files.append(file)
+            texts.append(text)
     if unreadable:
-        return Unreadable(tuple(unreadable))
-    faults = [fault for file in files for fault in schema_faults(file, root=file is root)]
+        return Unreadable(tuple(unreadable), sources)
+    faults = [fault for text in texts for fault in schema_faults(text, root=text is root)]
     reader = _Reader(faults)
-    register = reader.register(tuple(files))
+    register = reader.register(tuple(texts))
     return Loaded(register, tuple(faults), sources)
 
 
-def _unreadable(place: Place, message: str, remedy: str) -> Unreadable:
-    return Unreadable((Fault(place, message, remedy),))
-
-
-def _read(folder: Path, name: str, sources: dict[str, bytes]) -> TextFile | Fault:
-    try:
-        content = (folder / name).read_bytes()
-    except OSError as error:
-        return Fault(Place(name, 1, 1), f"the file cannot be read ({error.strerror})", "check its name and permissions")
-    sources[name] = content
-    return read_text(content, name)
-
-
-def _included(folder: Path, root: TextFile) -> tuple[list[str], list[Fault]]:
-    """Names of the included files in order, and a fault for each pattern that leads nowhere or outside."""
-    assert isinstance(root.data, dict)
-    patterns = root.data.get("include", [])
-    if not isinstance(patterns, list):
-        return [], [Fault(root.place(("include",)), "`include` is not a list", "write `include: [units/*.yaml]`")]
-    inside = folder.resolve()
-    names: dict[str, None] = {}
-    faults = []
-    for index, pattern in enumerate(patterns):
-        place = root.place(("include", index))
-        if not isinstance(pattern, str) or not pattern:
-            faults.append(Fault(place, "an `include` entry is not a file name", "write `include: [units/*.yaml]`"))
-            continue
-        if Path(pattern).is_absolute() or ".." in Path(pattern).parts:
-            faults.append(
-                Fault(
-                    place,
-                    f"`{pattern}` leads outside the register's folder",
-                    "include files inside the folder only",
-                )
-            )
-            continue
-        found = sorted(file for file in folder.glob(pattern) if file.is_file() and file.name != root.name)
-        outside = [file for file in found if not file.resolve().is_relative_to(inside)]
-        if outside:
-            faults.append(
-                Fault(
-                    place,
-                    f"`{outside[0].relative_to(folder).as_posix()}` is a link that leads outside the register's folder",
-                    "include files inside the folder only",
-                )
-            )
-        elif not found:
-            faults.append(Fault(place, f"no file matches `{pattern}`", "correct the name, or remove the entry"))
-        for file in found:
-            names[file.relative_to(folder).as_posix()] = None
-    if len(names) > MAX_FILES:
-        faults.append(
-            Fault(root.place(("include",)), f"more than {MAX_FILES} files are included", "include fewer files")
-        )
-    return list(names), faults
+def _unreadable(place: Place, message: str, remedy: str, sources: Mapping[str, bytes] | None = None) -> Unreadable:
+    return Unreadable((Fault(place, message, remedy),), sources or {})
 
 
 # ---------------------------------------------------------------- from plain data to parts
@@ -458,7 +413,7 @@ class _Reader:
             holds=tuple(hold for file in files for hold in _holds(file)),
         )
 
-    def _tag_pattern(self, root: TextFile) -> re.Pattern[str] | None:
+    def _tag_pattern(self, root: TextFile) -> TagGrammar | None:
         assert isinstance(root.data, dict)
         written = root.data.get("tags")
         if not isinstance(written, str):
@@ -469,6 +424,15 @@ class _Reader:
         except re.error as error:
             self._fault(origin, ("tags",), f"`tags` is not a regular expression ({error})", "correct the expression")
             return None
+        reason = unbounded(written)
+        if reason:
+            self._fault(
+                origin,
+                ("tags",),
+                f"`tags` is an expression that could be matched without end: {reason}",
+                "state how many characters each part of a tag has, as in `[A-Z]{2,5}` and `\\d{2}`",
+            )
+            return None
         missing = [group for group in ("letters", "unit", "serial") if group not in pattern.groupindex]
         if missing:
             self._fault(
@@ -478,7 +442,7 @@ class _Reader:
                 "name it, as in `(?P<letters>[A-Z]+)`",
             )
             return None
-        return pattern
+        return TagGrammar(pattern)
 
 
 def _holds(file: TextFile) -> Iterator[HeldValue]:

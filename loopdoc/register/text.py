@@ -8,6 +8,7 @@ same file see two different plants.
 from __future__ import annotations
 
 import re
+from bisect import bisect_right
 from collections.abc import Callable
 from dataclasses import dataclass
 from functools import lru_cache
@@ -81,6 +82,22 @@ class TextFile:
         if key:
             return Place(self.name, spot.key_line, spot.key_column)
         return Place(self.name, spot.line, spot.column)
+
+    def path_at(self, line: int, column: int) -> tuple[str | int, ...]:
+        """Path of the value (or of the key) at a place; the inverse of `place`.
+
+        A mapping in lines of its own begins where its first key does; the place is then taken for the mapping's.
+        """
+        path: tuple[str | int, ...] = ()
+        spot = self.spot
+        while spot.inside and (spot.line, spot.column) != (line, column):
+            steps = list(spot.inside) if isinstance(spot.inside, dict) else range(len(spot.inside))
+            spots = list(spot.inside.values()) if isinstance(spot.inside, dict) else spot.inside
+            index = bisect_right(spots, (line, column), key=lambda inner: (inner.key_line, inner.key_column)) - 1
+            if index < 0:
+                break
+            path, spot = (*path, steps[index]), spots[index]
+        return path
 
 
 class _Refused(Exception):
