@@ -10,6 +10,7 @@ from loopdoc.documents.titleblock import Document, document
 from loopdoc.engineering.comparison import Comparison, NotSimulated, compare
 from loopdoc.engineering.dynamics import ChainDynamics, Dynamics
 from loopdoc.engineering.pairing import Plant
+from loopdoc.engineering.time_to_act import TimeToAct
 from loopdoc.rules.finding import CheckResult
 
 
@@ -22,8 +23,13 @@ class Basis:
     sources: Mapping[str, bytes]
     """Content of the register's files by name."""
     dynamics: Dynamics
+    times: TimeToAct = field(init=False)
+    """From alarm to trip under each upset, calculated at the first question."""
     _compared: dict[ChainDynamics, Comparison | NotSimulated] = field(default_factory=dict, repr=False)
     _drawn: dict[ChainDynamics, str] = field(default_factory=dict, repr=False)
+
+    def __post_init__(self) -> None:
+        object.__setattr__(self, "times", TimeToAct(self.plant))
 
     def comparison(self, chain: ChainDynamics) -> Comparison | NotSimulated:
         """Time responses of a chain, or why there is none, simulated once for all documents."""

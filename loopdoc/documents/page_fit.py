@@ -79,6 +79,12 @@ def room(document: Document) -> float:
 
 def title_block_height(document: Document) -> float:
     """Height of the title block of templates/base.html [pt]."""
+    cautions = paragraph_height(document.cautions, PAGE_WIDTH - 2 * MM, 6.2, 1.15) + 1.0 * MM + 0.4
+    return title_table_height(document) + cautions
+
+
+def title_table_height(document: Document) -> float:
+    """Height of the title block without the cautions, which stand beside it on a landscape page [pt]."""
     revision = document.revision
     draft = f" (DRAFT: {document.draft})" if document.draft else ""
     # Each cell as text, columns of six, and whether it is bold.
@@ -104,7 +110,7 @@ def title_block_height(document: Document) -> float:
             line_count(content, span * PAGE_WIDTH / 6 - 2 * MM - 0.8, 7.6, bold=bold) for content, span, bold in row
         )
         height += 6.6 + lines * 1.15 * 7.6 + 1.0 * MM + 0.4
-    return height + paragraph_height(document.cautions, PAGE_WIDTH - 2 * MM, 6.2, 1.15) + 1.0 * MM + 0.4
+    return height
 
 
 def _plain(content: str) -> str:
