@@ -6,7 +6,6 @@ Nothing here is computed; what follows from several facts together is in ``loopd
 
 from __future__ import annotations
 
-import re
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 from functools import cached_property
@@ -14,6 +13,7 @@ from typing import TypeVar
 
 from loopdoc.register.place import Place
 from loopdoc.register.quantity import Gain, Quantity, Range
+from loopdoc.register.tag_grammar import TagGrammar
 from loopdoc.register.text import TextFile
 
 T = TypeVar("T")
@@ -461,7 +461,7 @@ class Register:
     """Earlier revisions, as written (oldest first)."""
     numbering: str
     """Pattern of document numbers with {unit}, {kind} and {serial}."""
-    tag_pattern: re.Pattern[str] | None
+    tag_pattern: TagGrammar | None
     policy: dict[str, float]
     """Thresholds that the register sets; the others keep their defaults (see ``loopdoc.rules.policy``)."""
     units: dict[str, PlantUnit]

@@ -9,11 +9,13 @@ from dataclasses import replace
 from typing import Any
 
 from loopdoc.engineering.dynamics import Dynamics
+from loopdoc.engineering.failure import FailureAnalysis
 from loopdoc.engineering.pairing import Plant
 from loopdoc.engineering.time_to_act import TimeToAct
 from loopdoc.register.model import Deviation, known
 from loopdoc.register.place import Fault
 from loopdoc.rules.catalogue import RULES
+from loopdoc.rules.baseline import with_paths
 from loopdoc.rules.finding import CheckResult, Coverage, Finding, Level
 from loopdoc.rules.policy import limits_from
 from loopdoc.rules.rule import Draft, NotApplicable, NotChecked, Rule
@@ -45,6 +47,7 @@ def check(
         tuple(rule.id for rule in rules),
         dynamics or Dynamics(plant),
         TimeToAct(plant),
+        FailureAnalysis(plant),
     )
     found: list[Finding] = []
     coverage: dict[str, Coverage] = {}
@@ -52,7 +55,7 @@ def check(
         if not only or rule.id in only:
             coverage[rule.id] = Coverage()
             found.extend(_findings(rule, scope, coverage[rule.id]))
-    accepted, still_open = _accept(found, register.deviations, today or _today())
+    accepted, still_open = _accept(with_paths(found, register.files), register.deviations, today or _today())
     return CheckResult(
         tuple(sorted(still_open, key=lambda finding: finding.order)),
         tuple(sorted(accepted, key=lambda finding: finding.order)),

@@ -7,9 +7,10 @@ from dataclasses import dataclass
 from typing import Any
 
 from loopdoc.engineering.dynamics import Dynamics
+from loopdoc.engineering.failure import FailureAnalysis
 from loopdoc.engineering.pairing import CascadeLink, ControlledLoop, LoopAlarm, Plant, Trip
 from loopdoc.engineering.time_to_act import TimeToAct
-from loopdoc.register.model import FinalElement, Function, HeldValue, Instrument, Interlock, Loop
+from loopdoc.register.model import FinalElement, Function, HeldValue, Instrument, Interlock, Loop, PlantUnit
 from loopdoc.register.place import Fault, Place
 from loopdoc.register.text import TextFile
 from loopdoc.rules.policy import Limits
@@ -33,6 +34,7 @@ class Scope:
     rule_ids: tuple[str, ...]
     dynamics: Dynamics
     times: TimeToAct
+    failures: FailureAnalysis
 
 
 SUBJECTS: Mapping[type, Callable[[Scope], Iterable[Any]]] = {
@@ -50,6 +52,7 @@ SUBJECTS: Mapping[type, Callable[[Scope], Iterable[Any]]] = {
     Function: lambda scope: scope.plant.register.functions.values(),
     Interlock: lambda scope: scope.plant.register.interlocks.values(),
     Trip: lambda scope: scope.plant.trips,
+    PlantUnit: lambda scope: scope.plant.register.units.values(),
 }
 """What a rule may visit (its first parameter), and where one check finds it."""
 
@@ -59,6 +62,7 @@ BESIDES: Mapping[type, Callable[[Scope], Any]] = {
     Faults: lambda scope: scope.faults,
     Dynamics: lambda scope: scope.dynamics,
     TimeToAct: lambda scope: scope.times,
+    FailureAnalysis: lambda scope: scope.failures,
 }
 """What a rule may ask for besides its subject (its further parameters)."""
 
@@ -76,6 +80,8 @@ def tag_of(subject: Any) -> str:
             return subject.loop.tag
         case Trip():
             return subject.interlock.tag
+        case PlantUnit():
+            return subject.number
         case _:
             return str(subject.tag)
 
