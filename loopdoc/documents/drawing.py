@@ -6,7 +6,6 @@ One unit of the drawing is one point on paper. Symbols: ISA-5.1-1984, clauses 6.
 
 from __future__ import annotations
 
-import re
 from collections.abc import Iterable, Sequence
 from dataclasses import dataclass, field
 from functools import lru_cache
@@ -15,6 +14,7 @@ from io import BytesIO
 from itertools import pairwise
 
 from loopdoc.documents.rendering import font
+from loopdoc.register.tag_grammar import TagGrammar
 
 SIZE = 6.4
 """Type size of a note [pt]."""
@@ -94,7 +94,7 @@ def _cut(line: str, width: float, size: float) -> str:
     return f"{line.rstrip()}…"
 
 
-def tag_lines(tag: str, pattern: re.Pattern[str] | None) -> tuple[str, str]:
+def tag_lines(tag: str, pattern: TagGrammar | None) -> tuple[str, str]:
     """The function letters of a tag, and the rest of it, as a bubble shows them."""
     found = pattern.fullmatch(tag) if pattern else None
     letters = found.groupdict().get("letters") if found else None

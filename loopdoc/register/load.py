@@ -6,7 +6,6 @@ that could be built, so that one bad value does not hide the rest of the plant f
 
 from __future__ import annotations
 
-import re
 from collections.abc import Hashable, Iterator, Mapping
 from dataclasses import dataclass, fields
 from functools import cache
@@ -50,7 +49,7 @@ from loopdoc.register.quantity import (
     parse_range,
 )
 from loopdoc.register.schema import schema_faults
-from loopdoc.register.tag_grammar import TagGrammar, unbounded
+from loopdoc.register.tag_grammar import GrammarFault, TagGrammar, read_grammar
 from loopdoc.register.text import Spot, TextFile
 from loopdoc.register.units import unit
 
@@ -418,31 +417,11 @@ class _Reader:
         written = root.data.get("tags")
         if not isinstance(written, str):
             return None
-        origin = Origin(root, ())
-        try:
-            pattern = re.compile(written)
-        except re.error as error:
-            self._fault(origin, ("tags",), f"`tags` is not a regular expression ({error})", "correct the expression")
+        grammar = read_grammar(written)
+        if isinstance(grammar, GrammarFault):
+            self._fault(Origin(root, ()), ("tags",), grammar.message, grammar.remedy)
             return None
-        reason = unbounded(written)
-        if reason:
-            self._fault(
-                origin,
-                ("tags",),
-                f"`tags` is an expression that could be matched without end: {reason}",
-                "state how many characters each part of a tag has, as in `[A-Z]{2,5}` and `\\d{2}`",
-            )
-            return None
-        missing = [group for group in ("letters", "unit", "serial") if group not in pattern.groupindex]
-        if missing:
-            self._fault(
-                origin,
-                ("tags",),
-                f"`tags` has no group named {' or '.join(missing)}",
-                "name it, as in `(?P<letters>[A-Z]+)`",
-            )
-            return None
-        return TagGrammar(pattern)
+        return grammar
 
 
 def _holds(file: TextFile) -> Iterator[HeldValue]:
