@@ -2,8 +2,7 @@
 
 from __future__ import annotations
 
-import math
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from functools import cached_property
 from typing import TYPE_CHECKING
 
@@ -11,7 +10,7 @@ from loopdoc.engineering.pairing import Plant
 
 # What calculates is loaded at the first question, so that a check without one starts without numpy.
 if TYPE_CHECKING:
-    from loopdoc.engineering.frequency import LoopStage, Margins
+    from loopdoc.engineering.frequency import Margins
     from loopdoc.engineering.stages import Chain, Lacking
 
 
@@ -47,19 +46,6 @@ class LoopDynamics:
         return max(self.chains, key=lambda found: found.margins[-1].max_sensitivity, default=None)
 
 
-def _quotable(margins: Margins, stage: LoopStage) -> Margins:
-    """Margins without a gain margin that would be read above a quarter of the sampling frequency.
-
-    There half an interval of dead time no longer stands for the sampling: a held output is 10 % smaller at that
-    quarter already and a loop without dead time turns unstable at half the sampling frequency, which no delay tells.
-    Source: K. J. Astrom, B. Wittenmark, Computer-Controlled Systems, 3rd ed. 1997, ch. 7 (from memory).
-    """
-    quarter_rad_per_s = math.pi / 2.0 / stage.controller.interval_s if stage.controller.interval_s else math.inf
-    if margins.stable and margins.phase_crossover_rad_per_s > quarter_rad_per_s:
-        return replace(margins, gain_margin=math.nan, phase_crossover_rad_per_s=math.nan)
-    return margins
-
-
 class Dynamics:
     """Dynamics of a whole plant, calculated together at the first question."""
 
@@ -92,16 +78,12 @@ class Dynamics:
 
     @cached_property
     def _by_tag(self) -> dict[str, LoopDynamics]:
-        from loopdoc.engineering.frequency import analyse_chains
+        from loopdoc.engineering.sampled import quoted_margins
         from loopdoc.engineering.stages import Lacking, chains
 
         resolved = {tag: chains(self._plant, controlled) for tag, controlled in self._plant.controlled.items()}
         flat = [chain for found in resolved.values() if not isinstance(found, Lacking) for chain in found]
-        analysed = analyse_chains([chain.stages for chain in flat])
-        margins = iter(
-            tuple(_quotable(one, level.stage) for one, level in zip(found, chain.levels, strict=True))
-            for chain, found in zip(flat, analysed, strict=True)
-        )
+        margins = iter(quoted_margins([chain.stages for chain in flat]))
         by_tag: dict[str, LoopDynamics] = {}
         for tag in self._plant.register.loops:
             found = resolved.get(tag, Lacking(f"{tag} has no controller"))
