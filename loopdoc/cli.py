@@ -6,7 +6,7 @@ import argparse
 import gc
 import os
 import sys
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from pathlib import Path
 from typing import TYPE_CHECKING, TextIO
 
@@ -15,6 +15,7 @@ from loopdoc import __version__
 if TYPE_CHECKING:
     from loopdoc.documents.basis import Basis
     from loopdoc.register.load import Loaded
+    from loopdoc.rules.finding import CheckResult, Level
 
 EXIT_CLEAN, EXIT_FOUND, EXIT_UNREADABLE = 0, 1, 2
 IDENTIFY_HELP = """\
@@ -86,7 +87,15 @@ def _parser() -> argparse.ArgumentParser:
     check = command("check", _check, "check a register and print the findings")
     _add_register(check)
     check.add_argument(
-        "--format", choices=("text", "json"), default="text", help="form of the output (default: text)"
+        "--format",
+        choices=("text", "json", "sarif", "junit", "markdown", "code-quality"),
+        default="text",
+        help="form of the output (default: text); the last four name files as from the current folder",
+    )
+    check.add_argument(
+        "--since",
+        metavar="REVISION",
+        help="report only what is new since this git revision, and judge the exit code by that",
     )
     check.add_argument(
         "--fail-on", choices=("error", "warning", "note", "never"), default="error",
@@ -141,10 +150,23 @@ def _parser() -> argparse.ArgumentParser:
         help="write the model and its source into the register; the rest stays as it is",
     )
 
+    attest = command("attest", _attest, "tell whether issued PDF files are what the register says")
+    attest.add_argument(
+        "paths",
+        type=Path,
+        nargs="+",
+        metavar="FILE.pdf",
+        help="issued files, or folders of them; and a register, if they are to be compared with one",
+    )
+    attest.add_argument("--format", choices=("text", "json"), default="text", help="form of the output (default: text)")
+
     explain = command("explain", _explain, "explain a rule: what it means, why, and what it cannot see")
     explain.add_argument("rule", metavar="RULE", help="id of a rule, as in a finding")
     command("rules", _rules, "list the rules and the thresholds of the policy")
-    command("schema", _schema, "print the JSON Schema of the register format")
+    schema = command("schema", _schema, "print the JSON Schema of the register format")
+    schema.add_argument(
+        "--included", action="store_true", help="that of the files which register.yaml includes, not its own"
+    )
     return parser
 
 
@@ -173,22 +195,85 @@ def _new(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
 
 def _check(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
     from loopdoc.engineering.pairing import Plant
-    from loopdoc.exchange.findings import as_json, as_text
+    from loopdoc.exchange.findings import unreadable_result, unreadable_text
+    from loopdoc.register.load import Unreadable, load
     from loopdoc.rules.check import check
     from loopdoc.rules.finding import Level
 
     unknown = _unknown_rule(arguments.only, stderr)
     if unknown:
         return unknown
-    loaded = _load(arguments.register, stderr)
-    if loaded is None:
+    least = None if arguments.fail_on == "never" else Level[arguments.fail_on.upper()]
+    loaded = load(arguments.register)
+    if isinstance(loaded, Unreadable):
+        stderr.write(unreadable_text(loaded.faults, loaded.sources, colour=_colour(stderr)))
+        result = unreadable_result(loaded.faults, loaded.sources)
+        if arguments.format != "text" and result.findings:
+            stdout.write(_told(result, arguments, loaded.sources, least, colour=False))
         return EXIT_UNREADABLE
     result = check(Plant(loaded.register), loaded.faults, only=arguments.only)
-    stdout.write(as_json(result) if arguments.format == "json" else as_text(result))
-    if arguments.fail_on == "never":
-        return EXIT_CLEAN
-    least = Level[arguments.fail_on.upper()]
-    return EXIT_FOUND if any(finding.level >= least for finding in result.findings) else EXIT_CLEAN
+    if arguments.since is not None:
+        from loopdoc.exchange.escaping import for_terminal
+        from loopdoc.revisions.git import GitError
+        from loopdoc.revisions.since import since
+
+        try:
+            result = since(result, arguments.register, arguments.since, only=arguments.only)
+        except GitError as error:
+            stderr.write(for_terminal(f"loopdoc: {error}\n"))
+            return EXIT_UNREADABLE
+    stdout.write(_told(result, arguments, loaded.sources, least, colour=_colour(stdout)))
+    return EXIT_FOUND if least and any(finding.level >= least for finding in result.findings) else EXIT_CLEAN
+
+
+def _told(
+    result: CheckResult, arguments: argparse.Namespace, sources: Mapping[str, bytes], least: Level | None, *, colour: bool
+) -> str:
+    """The result of a check in the form asked for; each form is imported only where it is."""
+    folder = _from_here(arguments.register)
+    match arguments.format:
+        case "text":
+            from loopdoc.exchange.findings import as_text
+
+            return as_text(result, sources, colour=colour)
+        case "json":
+            from loopdoc.exchange.findings import as_json
+
+            return as_json(result)
+        case "sarif":
+            from loopdoc.exchange.sarif import as_sarif
+
+            return as_sarif(result, folder=folder)
+        case "junit":
+            from loopdoc.exchange.junit import as_junit
+
+            return as_junit(result, folder=folder, least=least)
+        case "markdown":
+            from loopdoc.exchange.markdown import as_markdown
+
+            return as_markdown(result, folder=folder)
+        case _:
+            from loopdoc.exchange.code_quality import as_code_quality
+
+            return as_code_quality(result, folder=folder)
+
+
+def _from_here(register: Path) -> str:
+    """What stands before a file's name to name it from the current folder; nothing for a register elsewhere."""
+    folder = (register.parent if register.is_file() else register).resolve()
+    here = Path.cwd()
+    if folder == here or not folder.is_relative_to(here):
+        return ""
+    return f"{folder.relative_to(here).as_posix()}/"
+
+
+def _colour(stream: TextIO) -> bool:
+    """Whether a stream is shown in colour: on a terminal, unless the environment says otherwise."""
+    if os.environ.get("NO_COLOR"):
+        return False
+    if os.environ.get("FORCE_COLOR"):
+        return True
+    return stream.isatty() and os.environ.get("TERM") != "dumb"
 
 
 def _issue(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
@@ -226,7 +311,9 @@ def _issue(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int
 
 def _response(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
     from loopdoc.engineering.comparison import Comparison, NotSimulated, compare
+    from loopdoc.engineering.tuning_review import review, reviewed_loops
     from loopdoc.exchange.responses import response_json, response_text
+    from loopdoc.rules.policy import limits_from
 
     basis = _basis(arguments.register, stderr)
     if basis is None:
@@ -254,19 +341,21 @@ def _response(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> 
         except ValueError as error:
             stderr.write(f"loopdoc: {error}\n")
             return EXIT_UNREADABLE
-    stdout.write((response_json if arguments.format == "json" else response_text)(loop, comparisons))
+    reviews = [review(basis.dynamics.loop(tag)) for tag in reviewed_loops(loop)]
+    as_asked = response_json if arguments.format == "json" else response_text
+    stdout.write(as_asked(loop, comparisons, reviews, limits_from(basis.plant.register.policy)))
     return EXIT_CLEAN
 
 
 def _identify(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
     from loopdoc.engineering.stages import Lacking
-    from loopdoc.exchange.findings import escape
+    from loopdoc.exchange.escaping import for_terminal
     from loopdoc.exchange.identified import identified, identified_json, identified_text, write_into
     from loopdoc.exchange.step_test import MAX_BYTES, read_step_test
     from loopdoc.register.place import Fault, Place
 
     def unreadable(message: str) -> int:
-        stderr.write(escape(f"loopdoc: {message}\n"))
+        stderr.write(for_terminal(f"loopdoc: {message}\n"))
         return EXIT_UNREADABLE
 
     if arguments.register is None and arguments.write:
@@ -276,7 +365,7 @@ def _identify(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> 
     with arguments.data.open("rb") as file:
         test = read_step_test(file.read(MAX_BYTES + 1), arguments.data.name)
     if isinstance(test, Fault):
-        stderr.write(escape(f"{test.place}: error: {test.message}\n    remedy: {test.remedy}\n"))
+        stderr.write(for_terminal(f"{test.place}: error: {test.message}\n    remedy: {test.remedy}\n"))
         return EXIT_UNREADABLE
     loaded = _load(arguments.register, stderr) if arguments.register is not None else None
     if loaded is None and arguments.register is not None:
@@ -314,6 +403,43 @@ def _identify(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> 
     return EXIT_CLEAN if found.result.model is not None else EXIT_FOUND
 
 
+def _attest(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
+    from loopdoc.documents.attest import Answer, Attestation, NotIssued
+    from loopdoc.documents.attest_report import report_json, report_text
+    from loopdoc.documents.pdf import PdfError
+    from loopdoc.exchange.escaping import for_terminal
+    from loopdoc.register.files import is_register
+
+    registers = [path for path in arguments.paths if is_register(path)]
+    files = [
+        file
+        for path in arguments.paths
+        if path not in registers
+        for file in (sorted(path.rglob("*.pdf")) if path.is_dir() else (path,))
+    ]
+    if len(registers) > 1 or not files:
+        stderr.write("loopdoc: name one file or more, or folders with PDF files, and at most one register\n")
+        return EXIT_UNREADABLE
+    against = _basis(registers[0], stderr) if registers else None
+    if registers and against is None:
+        return EXIT_UNREADABLE
+    attestation = Attestation(against)
+    try:
+        answered = [(str(file), attestation.attest(file.read_bytes())) for file in files]
+    except PdfError as error:
+        stderr.write(f"loopdoc: {error}\n")
+        return EXIT_UNREADABLE
+    named = str(registers[0]) if registers else ""
+    if arguments.format == "json":
+        stdout.write(report_json(answered, against=named))
+    else:
+        stdout.write(for_terminal(report_text(answered, against=named)))
+    if any(isinstance(found, NotIssued) for _, found in answered):
+        return EXIT_UNREADABLE
+    doubted = any(Answer.NO in (one.register_whole, one.pages_unaltered, one.current) for _, one in answered)
+    return EXIT_FOUND if doubted else EXIT_CLEAN
+
+
 def _explain(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
     from loopdoc.rules.catalogue import RULES
     from loopdoc.rules.explain import explanation
@@ -335,7 +461,7 @@ def _rules(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int
 def _schema(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
     from loopdoc.register.schema import schema_text
 
-    stdout.write(schema_text())
+    stdout.write(schema_text(root=not arguments.included))
     return EXIT_CLEAN
 
 
@@ -344,13 +470,12 @@ def _schema(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> in
 
 def _load(path: Path, stderr: TextIO) -> Loaded | None:
     """The register; None, with each reason told, where the text cannot be read as one."""
-    from loopdoc.exchange.findings import as_line
+    from loopdoc.exchange.findings import unreadable_text
     from loopdoc.register.load import Unreadable, load
 
     loaded = load(path)
     if isinstance(loaded, Unreadable):
-        for fault in loaded.faults:
-            stderr.write(as_line(fault.place, fault.message, fault.remedy) + "\n")
+        stderr.write(unreadable_text(loaded.faults, loaded.sources, colour=_colour(stderr)))
         return None
     return loaded
 
@@ -360,14 +485,9 @@ def _basis(path: Path, stderr: TextIO) -> Basis | None:
     loaded = _load(path, stderr)
     if loaded is None:
         return None
-    from loopdoc.documents.basis import Basis
-    from loopdoc.engineering.dynamics import Dynamics
-    from loopdoc.engineering.pairing import Plant
-    from loopdoc.rules.check import check
+    from loopdoc.documents.basis import basis_of
 
-    plant = Plant(loaded.register)
-    dynamics = Dynamics(plant)
-    return Basis(plant, check(plant, loaded.faults, dynamics=dynamics), loaded.sources, dynamics)
+    return basis_of(loaded)
 
 
 def _unknown_rule(ids: Sequence[str], stderr: TextIO) -> int:

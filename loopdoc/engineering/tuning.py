@@ -5,7 +5,7 @@ of the process gain, so that error = setpoint - measurement is driven to zero.
 """
 
 import math
-from collections.abc import Callable, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Literal
 
@@ -29,7 +29,13 @@ class UltimatePoint:
     """Ultimate period Pu [s]."""
 
 
-def ultimate_point(process: Process, *, interval_s: float = 0.0) -> UltimatePoint:
+def ultimate_point(
+    process: Process,
+    *,
+    interval_s: float = 0.0,
+    measurement_filter_s: float = 0.0,
+    below: Sequence[LoopStage] = (),
+) -> UltimatePoint:
     """Ultimate gain and period from the exact frequency response.
 
     Parameters
@@ -38,6 +44,10 @@ def ultimate_point(process: Process, *, interval_s: float = 0.0) -> UltimatePoin
         The process.
     interval_s : float
         Execution interval of the controller [s].
+    measurement_filter_s : float
+        Measurement filter of the controller [s].
+    below : sequence of LoopStage
+        The closed loops between the controller and the process, innermost first; none of a single loop.
 
     Returns
     -------
@@ -57,7 +67,8 @@ def ultimate_point(process: Process, *, interval_s: float = 0.0) -> UltimatePoin
     gain = 1.0 / (process.gain * delay_s) if process.integrating and delay_s > 0.0 else 1.0 / process.gain
     # The margin is sharpest where the loop gain at the phase crossover is near 1.
     for _ in range(8):
-        margins = analyse_chain([LoopStage(Controller(gain, interval_s=interval_s), process)])[0]
+        proportional = Controller(gain, interval_s=interval_s, measurement_filter_s=measurement_filter_s)
+        margins = analyse_chain([*below, LoopStage(proportional, process)])[-1]
         if not math.isfinite(margins.gain_margin):
             raise ValueError(
                 "no gain makes this loop oscillate steadily: its phase never reaches -180 degrees"
@@ -224,62 +235,6 @@ def tyreus_luyben(point: UltimatePoint, actions: Literal["PI", "PID"]) -> Standa
     if actions == "PI":
         return StandardSettings(point.gain / 3.2, 2.2 * point.period_s)
     return StandardSettings(point.gain / 2.2, 2.2 * point.period_s, point.period_s / 6.3)
-
-
-@dataclass(frozen=True, slots=True)
-class Recommendation:
-    """What one published rule says for a process."""
-
-    rule: str
-    """Name of the rule and of the actions it sets."""
-    settings: StandardSettings
-    """The settings in the standard form."""
-
-
-def recommendations(process: Process, *, interval_s: float = 0.0) -> tuple[Recommendation, ...]:
-    """Return what each rule recommends; a rule that does not fit the process is left out.
-
-    Nothing is recommended for a process that does not reduce to a model with dead time.
-
-    SIMC is taken with a closed-loop time equal to the effective dead time (its default), lambda and IMC
-    with one equal to the lag (three dead times when integrating), at least the dead time.
-    """
-    try:
-        first = reduce_to_first_order(process, interval_s=interval_s)
-        second = reduce_to_second_order(process, interval_s=interval_s)
-    except ValueError:
-        return ()
-    lambda_s = max(first.dead_time_s, 3.0 * first.dead_time_s if first.integrating else first.lag_s)
-    rules: list[tuple[str, Callable[[], StandardSettings]]] = [
-        ("SIMC PI", lambda: simc_pi(first, closed_loop_s=first.dead_time_s)),
-        ("SIMC PID", lambda: standard_from_series(simc_pid(second, closed_loop_s=second.dead_time_s))),
-        ("lambda PI", lambda: lambda_pi(first, lambda_s=lambda_s)),
-        ("IMC PID", lambda: imc_pid(first, lambda_s=lambda_s)),
-        ("AMIGO PI", lambda: amigo(first, "PI")),
-        ("AMIGO PID", lambda: amigo(first, "PID")),
-        ("Ziegler-Nichols PI, reaction curve", lambda: ziegler_nichols_reaction_curve(first, "PI")),
-        ("Ziegler-Nichols PID, reaction curve", lambda: ziegler_nichols_reaction_curve(first, "PID")),
-        ("Cohen-Coon PI", lambda: cohen_coon(first, "PI")),
-        ("Cohen-Coon PID", lambda: cohen_coon(first, "PID")),
-    ]
-    try:
-        point = ultimate_point(process, interval_s=interval_s)
-    except ValueError:
-        pass
-    else:
-        rules += [
-            ("Ziegler-Nichols PI, ultimate gain", lambda: ziegler_nichols_ultimate(point, "PI")),
-            ("Ziegler-Nichols PID, ultimate gain", lambda: ziegler_nichols_ultimate(point, "PID")),
-            ("Tyreus-Luyben PI", lambda: tyreus_luyben(point, "PI")),
-            ("Tyreus-Luyben PID", lambda: tyreus_luyben(point, "PID")),
-        ]
-    found = []
-    for name, rule in rules:
-        try:
-            found.append(Recommendation(name, rule()))
-        except ValueError:
-            continue
-    return tuple(found)
 
 
 # --- tuning to a robustness ----------------------------------------------------------------------
