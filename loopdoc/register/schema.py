@@ -42,7 +42,11 @@ def schema_faults(file: TextFile, *, root: bool) -> tuple[Fault, ...]:
 
 def failing_paths(data: Data, *, root: bool) -> set[Path]:
     """Paths of the values at which the schema refuses the data, each once."""
-    validator = _validator(root)
+    return refused_paths(data, _validator(root))
+
+
+def refused_paths(data: Data, validator: Draft202012Validator) -> set[Path]:
+    """Paths of the values at which a validator refuses the data, each once."""
     paths = {tuple(error.instance_path) for error in validator.iter_errors(data)}
     # The validator's paths turn keys made of digits (`"20"`, `"007"`) into numbers; its pointers, which cost
     # ten times as much, do not.
@@ -76,7 +80,11 @@ def _format(root: bool) -> Format:
 
 @cache
 def _validator(root: bool) -> Draft202012Validator:
+    return validator_of(json.loads(schema_text(root=root)))
+
+
+def validator_of(schema: Any) -> Draft202012Validator:
+    """A validator of one of the project's schemas, with the format `date` asserted."""
     from jsonschema_rs import Draft202012Validator, RegexOptions
 
-    schema = json.loads(schema_text(root=root))
     return Draft202012Validator(schema, validate_formats=True, pattern_options=RegexOptions())
