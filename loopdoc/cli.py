@@ -227,7 +227,12 @@ def _check(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int
 
 
 def _told(
-    result: CheckResult, arguments: argparse.Namespace, sources: Mapping[str, bytes], least: Level | None, *, colour: bool
+    result: CheckResult,
+    arguments: argparse.Namespace,
+    sources: Mapping[str, bytes],
+    least: Level | None,
+    *,
+    colour: bool,
 ) -> str:
     """The result of a check in the form asked for; each form is imported only where it is."""
     folder = _from_here(arguments.register)

@@ -2,54 +2,109 @@
 
 from __future__ import annotations
 
-import json
+from collections.abc import Iterator, Mapping
 from typing import Any
 
-from loopdoc.register.place import Place
-from loopdoc.rules.finding import CheckResult, Finding, Level
+from loopdoc.exchange.escaping import for_json, for_terminal
+from loopdoc.exchange.source_lines import SourceLines
+from loopdoc.register.place import Fault, Place
+from loopdoc.rules.finding import CheckResult, Coverage, Finding, Level
 
 CAUTION = (
     "These results support and do not replace review by competent persons; local codes, the hazard study and the "
     "manufacturer's data govern. Safety instrumented functions need their own lifecycle (IEC 61511)."
 )
+_COLOURS = {"error": "\x1b[1;31m", "warning": "\x1b[1;33m", "note": "\x1b[1;36m", "accepted": "\x1b[1m"}
+_PLAIN = "\x1b[0m"
 
 
-def as_text(result: CheckResult) -> str:
-    """Findings with their remedies, what deviations accept, and what was and was not checked."""
-    lines: list[str] = []
+class _Page:
+    """Lines of text for a terminal; colour is set here only, around text that is escaped already."""
+
+    def __init__(self, sources: Mapping[str, bytes], *, colour: bool) -> None:
+        self._sources = SourceLines(sources)
+        self._colour = colour
+        self.lines: list[str] = []
+
+    def say(self, text: str) -> None:
+        self.lines.append(for_terminal(text))
+
+    def head(self, place: Place, level: str, text: str) -> None:
+        self.lines.append(f"{for_terminal(str(place))}: {self._coloured(level, level)}: {for_terminal(text)}")
+
+    def source(self, place: Place, level: str) -> None:
+        excerpt = self._sources.excerpt(place)
+        if excerpt:
+            line, before = excerpt
+            self.lines.append(f"{place.line:>7} | {line}".rstrip())
+            self.lines.append(f"{'':7} | {before}{self._coloured('^', level)}")
+
+    def text(self) -> str:
+        return "\n".join(self.lines) + "\n"
+
+    def _coloured(self, text: str, level: str) -> str:
+        return f"{_COLOURS[level]}{text}{_PLAIN}" if self._colour and level in _COLOURS else text
+
+
+def as_text(result: CheckResult, sources: Mapping[str, bytes], *, colour: bool = False) -> str:
+    """Findings with their lines and remedies, what deviations accept, and what was and was not checked."""
+    page = _Page(sources, colour=colour)
     for finding in result.findings:
-        lines.extend(_finding_lines(finding))
+        level = str(finding.level)
+        page.head(finding.place, level, f"{finding.rule}: {finding.tag}: {finding.message}")
+        page.source(finding.place, level)
+        for related in finding.related:
+            page.say(f"    see {related.place}: {related.what}")
+            page.source(related.place, "")
+        page.say(f"    remedy: {finding.remedy}")
     for finding in result.accepted:
-        deviation = finding.accepted_by
-        assert deviation is not None
-        lines.append(f"{_head(finding, 'accepted')}: {finding.message}")
-        lines.append(
-            f"    deviation: {deviation.reason}; approved by {deviation.approved_by}, until {deviation.until}"
-        )
-    if lines:
-        lines.append("")
-    lines.append(summary(result))
-    unchecked = {rule: entry for rule, entry in result.coverage.items() if entry.not_checked}
+        page.head(finding.place, "accepted", f"{finding.rule}: {finding.tag}: {finding.message}")
+        page.say(f"    deviation: {accepted_why(finding)}")
+    if page.lines:
+        page.say("")
+    page.say(summary(result))
+    for told in baseline_told(result):
+        page.say(told)
+    unchecked = list(not_checked(result))
     if unchecked:
-        lines.append("Not checked, because the register lacks what the rule needs:")
-        width = max(map(len, unchecked))
-        for rule, entry in unchecked.items():
-            reason, times = entry.reasons.most_common(1)[0]
-            others = len(entry.reasons) - 1
-            more = f" and {others} other {'reason' if others == 1 else 'reasons'}" if others else ""
-            lines.append(
-                f"    {rule:<{width}}  {entry.not_checked:>4}  {reason} ({times} of {entry.not_checked}){more}"
-            )
-    lines.append(CAUTION)
-    return escape("\n".join(lines)) + "\n"
+        page.say("Not checked, because the register lacks what the rule needs:")
+        width = max(len(rule) for rule, _, _ in unchecked)
+        for rule, entry, why in unchecked:
+            page.say(f"    {rule:<{width}}  {entry.not_checked:>4}  {why}")
+    page.say(CAUTION)
+    return page.text()
+
+
+def unreadable_text(faults: tuple[Fault, ...], sources: Mapping[str, bytes], *, colour: bool = False) -> str:
+    """The faults that keep the register from being read, in the form of findings."""
+    page = _Page(sources, colour=colour)
+    for fault in faults:
+        page.head(fault.place, "error", f"schema: {fault.message}")
+        page.source(fault.place, "error")
+        page.say(f"    remedy: {fault.remedy}")
+    return page.text()
+
+
+def unreadable_result(faults: tuple[Fault, ...], sources: Mapping[str, bytes]) -> CheckResult:
+    """Those faults as findings of the rule `schema`, for programs; nothing else has been checked."""
+    findings = tuple(
+        Finding("schema", Level.ERROR, "register", fault.message, fault.remedy, fault.place, path=fault.pointer)
+        for fault in faults
+        if fault.place.file in sources
+    )
+    return CheckResult(tuple(sorted(findings, key=lambda finding: finding.order)), (), {})
+
+
+def as_line(place: Place, message: str, remedy: str) -> str:
+    """A fault that keeps the register from being read, in the form of a finding."""
+    return for_terminal(f"{place}: error: schema: {message}\n    remedy: {remedy}")
+
+
+# ---------------------------------------------------------------- parts that other forms share
 
 
 def summary(result: CheckResult) -> str:
     """One line: findings by level, deviations, checks made and not made."""
-
-    def counted(number: int, one: str) -> str:
-        return f"{number} {one}" if number == 1 else f"{number} {one}s"
-
     found = ", ".join(counted(result.count(level), str(level)) for level in sorted(Level, reverse=True))
     return (
         f"{found}; {counted(len(result.accepted), 'finding')} accepted by deviation; "
@@ -57,9 +112,44 @@ def summary(result: CheckResult) -> str:
     )
 
 
+def counted(number: int, one: str) -> str:
+    """A number with its noun in singular or plural."""
+    return f"{number} {one}" if number == 1 else f"{number} {one}s"
+
+
+def baseline_told(result: CheckResult) -> tuple[str, ...]:
+    """What is said about the earlier revision against which the findings are new; nothing without one."""
+    baseline = result.baseline
+    if baseline is None:
+        return ()
+    if baseline.unreadable:
+        return (f"Nothing is passed over: {baseline.unreadable}",)
+    return (f"New since {baseline.revision}; {counted(baseline.passed_over, 'finding')} of before passed over.",)
+
+
+def accepted_why(finding: Finding) -> str:
+    """Reason, approver and end date of the deviation that accepts a finding."""
+    deviation = finding.accepted_by
+    assert deviation is not None
+    return f"{deviation.reason}; approved by {deviation.approved_by}, until {deviation.until}"
+
+
+def not_checked(result: CheckResult) -> Iterator[tuple[str, Coverage, str]]:
+    """Rules that could not be checked somewhere: id, coverage, and the most frequent reason in words."""
+    for rule, entry in result.coverage.items():
+        if entry.not_checked:
+            reason, times = entry.reasons.most_common(1)[0]
+            others = len(entry.reasons) - 1
+            more = f" and {others} other {'reason' if others == 1 else 'reasons'}" if others else ""
+            yield rule, entry, f"{reason} ({times} of {entry.not_checked}){more}"
+
+
+# ---------------------------------------------------------------- JSON
+
+
 def as_json(result: CheckResult) -> str:
     """Findings, accepted findings and coverage as one JSON object."""
-    document = {
+    document: dict[str, Any] = {
         "findings": [_finding_object(finding) for finding in result.findings],
         "accepted": [
             _finding_object(finding)
@@ -81,23 +171,11 @@ def as_json(result: CheckResult) -> str:
         },
         "caution": CAUTION,
     }
-    return json.dumps(document, ensure_ascii=False, indent=2) + "\n"
-
-
-def as_line(place: Place, message: str, remedy: str) -> str:
-    """A fault that keeps the register from being read, in the form of a finding."""
-    return escape(f"{place}: error: schema: {message}\n    remedy: {remedy}")
-
-
-def _head(finding: Finding, level: str) -> str:
-    return f"{finding.place}: {level}: {finding.rule}: {finding.tag}"
-
-
-def _finding_lines(finding: Finding) -> list[str]:
-    lines = [f"{_head(finding, str(finding.level))}: {finding.message}"]
-    lines.extend(f"    see {related.place}: {related.what}" for related in finding.related)
-    lines.append(f"    remedy: {finding.remedy}")
-    return lines
+    if result.baseline:
+        document["since"] = {"revision": result.baseline.revision, "passed_over": result.baseline.passed_over}
+        if result.baseline.unreadable:
+            document["since"]["unreadable"] = result.baseline.unreadable
+    return for_json(document) + "\n"
 
 
 def _finding_object(finding: Finding) -> dict[str, Any]:
@@ -115,8 +193,3 @@ def _finding_object(finding: Finding) -> dict[str, Any]:
             for r in finding.related
         ],
     }
-
-
-def escape(text: str) -> str:
-    """Text that a terminal shows and does not obey: control and bidirectional characters are written out."""
-    return "".join(c if c == "\n" or (c.isprintable() or c == " ") else f"\\u{ord(c):04x}" for c in text)

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import json
 import math
 from dataclasses import dataclass
 from decimal import ROUND_HALF_EVEN, Decimal
@@ -17,7 +16,8 @@ from loopdoc.engineering.confidence import Estimate, Model
 from loopdoc.engineering.identification import Identification, identify
 from loopdoc.engineering.pairing import Plant
 from loopdoc.engineering.stages import Lacking
-from loopdoc.exchange.findings import CAUTION, as_line, escape
+from loopdoc.exchange.escaping import for_json, for_terminal
+from loopdoc.exchange.findings import CAUTION, as_line
 from loopdoc.exchange.responses import TUNING_CAUTION
 from loopdoc.exchange.step_test import StepTest
 from loopdoc.register.edit import Value, replace_file, set_values
@@ -314,7 +314,7 @@ def identified_text(found: Identified, written: Place | None = None) -> str:
     if written is not None:
         lines.append(f"wrote the process of {found.tag} at {written}; see what `loopdoc check` now says")
     lines.extend(["", f"{CAUTION} {TUNING_CAUTION}"])
-    return escape("\n".join(lines)) + "\n"
+    return for_terminal("\n".join(lines)) + "\n"
 
 
 def _record_line(found: Identified) -> str:
@@ -468,7 +468,7 @@ def identified_json(found: Identified, written: Place | None = None) -> str:
     ]
     document["written"] = None if written is None else {"file": written.file, "line": written.line}
     document["caution"] = f"{CAUTION} {TUNING_CAUTION}"
-    return json.dumps(document, ensure_ascii=False, indent=2, allow_nan=False) + "\n"
+    return for_json(document) + "\n"
 
 
 def _interval(estimate: Estimate) -> dict[str, float | None]:

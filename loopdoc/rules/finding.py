@@ -43,6 +43,8 @@ class Finding:
     related: tuple[Related, ...] = ()
     accepted_by: Deviation | None = None
     """The deviation that accepts it."""
+    path: str = ""
+    """Where it stands by keys, as `loops/TIC-2014/alarms/high`, which outlives moved lines and renamed files."""
 
     @property
     def order(self) -> tuple[str, int, int, str, str]:
@@ -62,6 +64,18 @@ class Coverage:
 
 
 @dataclass(frozen=True, slots=True)
+class Baseline:
+    """An earlier revision of the register, whose own findings a check passes over."""
+
+    revision: str
+    """As it was asked for."""
+    passed_over: int
+    """How many findings, open or accepted, that revision had already."""
+    unreadable: str = ""
+    """Why that revision could not be read as a register; every finding then counts as new."""
+
+
+@dataclass(frozen=True, slots=True)
 class CheckResult:
     """All that one check found, accepted and could not check."""
 
@@ -71,6 +85,8 @@ class CheckResult:
     """Findings accepted by a deviation in force."""
     coverage: dict[str, Coverage]
     """By rule id, in the order of the catalogue."""
+    baseline: Baseline | None = None
+    """The earlier revision against which the findings are new."""
 
     def count(self, level: Level) -> int:
         return sum(1 for finding in self.findings if finding.level is level)

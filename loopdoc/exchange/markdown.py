@@ -1,0 +1,69 @@
+"""A summary of a check in Markdown, for the comment or the job page of a pull request."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterator, Sequence
+
+from loopdoc.exchange.escaping import for_line, for_markdown
+from loopdoc.exchange.findings import CAUTION, accepted_why, baseline_told, counted, not_checked, summary
+from loopdoc.register.place import Place
+from loopdoc.rules.finding import CheckResult, Finding, Level
+
+MAX_ROWS = 200
+"""Rows of one table; forges cut a page of some 65,000 characters, and nobody reads on."""
+
+
+def as_markdown(result: CheckResult, *, folder: str) -> str:
+    """Tables of the findings by level, what deviations accept, and what was not checked.
+
+    ``folder`` is the register's own, relative to the root of the repository.
+    """
+    lines = ["## Check of the loop register", "", for_markdown(summary(result))]
+    lines += [line for told in baseline_told(result) for line in ("", for_markdown(told))]
+    for level in sorted(Level, reverse=True):
+        findings = [finding for finding in result.findings if finding.level is level]
+        if findings:
+            lines += ["", f"### {counted(len(findings), str(level).capitalize())}", ""]
+            lines += _table(findings, folder, "Remedy", lambda finding: finding.remedy)
+    if result.accepted:
+        lines += ["", f"### {counted(len(result.accepted), 'Finding')} accepted by deviation", ""]
+        lines += _table(result.accepted, folder, "Deviation", accepted_why)
+    unchecked = list(not_checked(result))
+    if unchecked:
+        lines += ["", "### Not checked", "", "| Rule | Places | Why |", "| --- | ---: | --- |"]
+        lines += [f"| {_code(rule)} | {entry.not_checked} | {for_markdown(why)} |" for rule, entry, why in unchecked]
+    return "\n".join([*lines, "", CAUTION, ""])
+
+
+def _table(
+    findings: Sequence[Finding], folder: str, last: str, answer: Callable[[Finding], str]
+) -> Iterator[str]:
+    yield f"| Place | Tag | Rule | Finding | {last} |"
+    yield "| --- | --- | --- | --- | --- |"
+    for finding in findings[:MAX_ROWS]:
+        where = [_code(f"{folder}{finding.place.file}:{finding.place.line}")]
+        where += [f"see {_code(_short(related.place, finding.place, folder))}" for related in finding.related]
+        cells = [
+            "<br>".join(where),
+            for_markdown(finding.tag),
+            _code(finding.rule),
+            for_markdown(finding.message),
+            for_markdown(answer(finding)),
+        ]
+        yield f"| {' | '.join(cells)} |"
+    if len(findings) > MAX_ROWS:
+        yield f"| | | | and {len(findings) - MAX_ROWS} more | |"
+
+
+def _short(place: Place, beside: Place, folder: str) -> str:
+    return f"line {place.line}" if place.file == beside.file else f"{folder}{place.file}:{place.line}"
+
+
+def _code(text: str) -> str:
+    """A code span that no backtick and no bar in the text can end; a mention in it is none."""
+    shown = for_line(text).replace("|", "\\|")
+    fence = "`"
+    while fence in shown:
+        fence += "`"
+    blank = " " if "`" in shown else ""
+    return f"{fence}{blank}{shown}{blank}{fence}"

@@ -1,0 +1,1 @@
+"""What changed: the register as it was at another revision."""
