@@ -55,11 +55,11 @@ def _text(written: object) -> str:
 def interlock_effects(plant: Plant, tags: Iterable[str]) -> str:
     """Which interlocks act on these final elements and controllers, in one paragraph; empty where none does."""
     own = set(tags)
-    found = ((_acts(interlock, own), interlock.tag) for interlock in plant.register.interlocks.values())
+    found = ((acts(interlock, own), interlock.tag) for interlock in plant.register.interlocks.values())
     told = []
-    for acts, (first, *others) in grouped(pair for pair in found if pair[0]).items():
+    for what, (first, *others) in grouped(pair for pair in found if pair[0]).items():
         also = f"; so {'does' if len(others) == 1 else 'do'} {listed(others)}" if others else ""
-        told.append(f"{first} {acts}{also}")
+        told.append(f"{first} {what}{also}")
     return sentences(*told)
 
 
@@ -85,7 +85,7 @@ def _alone(interlock: Interlock) -> bool:
     return voting.startswith("1oo") if voting else len(interlock.initiators) == 1
 
 
-def _acts(interlock: Interlock, only: set[str] | None = None) -> str:
+def acts(interlock: Interlock, only: set[str] | None = None) -> str:
     """What an interlock does: `closes FV-2011, stops PM-2001 and puts FIC-2011 in manual at 0 % output`."""
     positions: list[tuple[str, str]] = []
     forced: list[tuple[str, str]] = []
@@ -142,7 +142,7 @@ def trips_when(interlock: Interlock) -> str:
 
 def told(interlock: Interlock) -> str:
     """One interlock in sentences: its layer, what trips it, what it does, and why."""
-    layer, when, does = known(interlock.layer), trips_when(interlock), _acts(interlock)
+    layer, when, does = known(interlock.layer), trips_when(interlock), acts(interlock)
     who = "it" if layer else interlock.tag
     trips = f"{who} trips when {when}" if when else ""
     if trips and does:

@@ -1,0 +1,229 @@
+"""What every schedule is made of: tables on landscape paper whose cells hold a value, a HOLD or a dash with meaning."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Iterator, Sequence
+from dataclasses import dataclass, replace
+from typing import Any
+
+from loopdoc.documents.basis import Basis, Page
+from loopdoc.documents.open_points import held_name
+from loopdoc.documents.page_fit import MM, title_table_height
+from loopdoc.documents.titleblock import Document
+from loopdoc.documents.values import DASH, HOLD, shown
+from loopdoc.documents.whereabouts import NO_UNIT, file_name, told_at
+from loopdoc.documents.wording import NO_BREAK, Prose, Run, Setter, as_written, sentence, value
+from loopdoc.register.model import Hold, known
+from loopdoc.register.quantity import Quantity, Range
+from loopdoc.rules.references import defined_tags
+
+TEMPLATE = "schedule.html"
+NOT_APPLICABLE = "n/a"
+DASHES = (
+    f"{DASH} stands where the register gives nothing, {NOT_APPLICABLE} where nothing can be given; {HOLD} is a value "
+    "not yet known, with its reason under its number at the end."
+)
+"""How to read the cells of a schedule."""
+
+_EDGES = 20.0 + 10.0
+"""Left and right margin of every page [mm]."""
+_BELOW = 8.0 + 2.0
+"""Under and over the title block [mm]."""
+
+
+@dataclass(frozen=True, slots=True)
+class Paper:
+    """A sheet of paper, lying."""
+
+    name: str
+    width_mm: float
+    """Between the margins."""
+
+
+A4 = Paper("A4", 297.0 - _EDGES)
+A3 = Paper("A3", 420.0 - _EDGES)
+
+
+@dataclass(frozen=True, slots=True)
+class Cell:
+    """One cell; each line is set on a line of its own."""
+
+    lines: tuple[Prose, ...]
+    kind: str = ""
+    """strong, mark or empty."""
+    over: int = 1
+    """Columns that it covers."""
+    down: int = 1
+    """Rows that it covers."""
+
+
+@dataclass(frozen=True, slots=True)
+class Column:
+    """A column of a table."""
+
+    heading: str
+    share: float
+    """Of the width of the table [%]."""
+
+
+@dataclass(frozen=True, slots=True)
+class Row:
+    """A row; its first cell heads it."""
+
+    cells: tuple[Cell, ...]
+    anchor: str = ""
+    kind: str = ""
+    """trip, or empty."""
+
+
+@dataclass(frozen=True, slots=True)
+class Group:
+    """Rows that belong together, under a heading of their own where they have one."""
+
+    rows: tuple[Row, ...]
+    heading: Prose = ()
+
+
+@dataclass(frozen=True, slots=True)
+class Schedule:
+    """A table with its title."""
+
+    title: str
+    columns: tuple[Column, ...]
+    groups: tuple[Group, ...]
+
+
+@dataclass(frozen=True, slots=True)
+class HoldLine:
+    """A hold with its number and its reason."""
+
+    number: str
+    reason: str
+
+
+class Writer:
+    """Writes the cells of one document and counts its holds."""
+
+    def __init__(self, basis: Basis) -> None:
+        register = basis.plant.register
+        tags = [defined.tag for defined in defined_tags(register)]
+        self._setter = Setter(register, tags, lambda tag: told_at(basis.plant, tag))
+        self._reasons: dict[str, int] = {}
+        self._plant = basis.plant
+
+    def text(self, written: object) -> str:
+        """A value with its unit, HOLD with the number of its reason, a dash where nothing is given."""
+        if isinstance(written, Hold):
+            return self.held(written.reason)
+        if isinstance(written, Quantity | Range):
+            return value(written)
+        return shown(written)
+
+    def held(self, reason: str) -> str:
+        """HOLD with the number under which its reason stands."""
+        return f"{HOLD}{NO_BREAK}{self._reasons.setdefault(reason, len(self._reasons) + 1)}"
+
+    def prose(self, text: str) -> Prose:
+        """Text set with its tags and values whole."""
+        runs = self._setter.prose(text)
+        return tuple(replace(run, kind="hold") if run.text.startswith(f"{HOLD}{NO_BREAK}") else run for run in runs)
+
+    def cell(self, *lines: object, kind: str = "", over: int = 1, down: int = 1) -> Cell:
+        """A cell of values or texts."""
+        return Cell(tuple(self.prose(self.text(line)) for line in lines), kind, over, down)
+
+    def value(self, written: object, tag: str) -> Cell:
+        """A value that leads to the sheet of its tag."""
+        text = self.text(written)
+        if text.startswith((HOLD, DASH)):
+            return self.cell(text)
+        return Cell(((Run(text, "value", told_at(self._plant, tag).sheet),),))
+
+    def plain(self, text: str, *, kind: str = "", over: int = 1, down: int = 1) -> Cell:
+        """A cell whose text is set as it is, in one run."""
+        return Cell(((Run(text),),), kind, over, down)
+
+    def words(self, written: str | Hold | None) -> Cell:
+        """A sentence of the register, with a stop."""
+        return self.cell(sentence(written) if isinstance(written, str) else written)
+
+    def holds_of(self, tag: str, *under: str) -> str:
+        """What is on hold under a tag and there under one of these keys, each with its number; a dash for nothing."""
+        found = [
+            f"{held_name(hold.path)} ({self.held(hold.reason)})"
+            for hold in self._plant.register.holds
+            if hold.tag == tag and (not under or (hold.path and str(hold.path[0]) in under))
+        ]
+        return ", ".join(found) or DASH
+
+    def reason_at(self, tag: str, *path: str) -> str | None:
+        """HOLD with its number where just this value is held; None where it is not."""
+        for hold in self._plant.register.holds:
+            if hold.tag == tag and hold.path == path:
+                return self.held(hold.reason)
+        return None
+
+    @property
+    def holds(self) -> tuple[HoldLine, ...]:
+        """The reasons by number."""
+        return tuple(HoldLine(f"{HOLD}{NO_BREAK}{number}", reason) for reason, number in self._reasons.items())
+
+
+def printed(written: str | Hold | None) -> str | Hold | None:
+    """A value that the register keeps as text, as documents print it."""
+    return as_written(written) if isinstance(written, str) else written
+
+
+def unit_title(basis: Basis, number: str) -> str:
+    """`Unit 20 Rectification`."""
+    unit = basis.plant.register.units.get(number)
+    name = known(unit.name) if unit else None
+    return f"Unit {number} {name}" if name else f"Unit {number}"
+
+
+def serial(basis: Basis, number: str) -> str:
+    """Serial of a unit's only schedule of a kind; it tells the units apart where the numbering does not."""
+    return "001" if "{unit}" in basis.plant.register.numbering else number
+
+
+def page(
+    basis: Basis,
+    writer: Writer,
+    *,
+    folder: str,
+    kind: str,
+    code: str,
+    title: str,
+    extent: str,
+    unit: str = NO_UNIT,
+    paper: Paper,
+    reading: Iterable[str],
+    caution: str = "",
+    view: dict[str, Any],
+    template: str = TEMPLATE,
+) -> Page:
+    """A schedule ready for its template; ``view`` is what the template places besides."""
+    document = basis.document(
+        kind=kind, code=code, title=title, supplementary_title=extent, unit=unit, serial=serial(basis, unit)
+    )
+    whole = {
+        "paper": paper.name,
+        "foot": foot(document),
+        "reading": tuple(writer.prose(text) for text in reading),
+        "caution": caution,
+        "holds": writer.holds,
+        **view,
+    }
+    return Page(folder, file_name(unit) if unit != NO_UNIT else "plant", document, template, whole)
+
+
+def foot(document: Document) -> str:
+    """The lower margin of a landscape page, as CSS writes it."""
+    return f"{title_table_height(document) / MM + _BELOW:.1f}mm"
+
+
+def in_groups(rows: Iterable[tuple[Prose, Sequence[Row]]]) -> Iterator[Group]:
+    """Groups of the headings under which there are rows."""
+    for heading, found in rows:
+        if found:
+            yield Group(tuple(found), heading)

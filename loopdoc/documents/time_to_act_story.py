@@ -1,0 +1,197 @@
+"""Time to act in words: from an alarm to the trip behind it, against the time that the operator is given."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterable, Iterator
+from dataclasses import dataclass
+
+from loopdoc.documents.wording import NO_BREAK, grouped, listed, sentences, upper_first, value
+from loopdoc.engineering.pairing import Plant, Trip, measured_quantity
+from loopdoc.engineering.spreading import transmitter_of
+from loopdoc.engineering.time_to_act import AlarmToTrip, TimeBetween, TimeToAct
+from loopdoc.register.model import Alarm, Hold, Interlock, Loop, known, seconds
+from loopdoc.register.quantity import Quantity, display_number
+from loopdoc.rules.values import below, duration
+
+CAUTION = (
+    "Times to act are calculated from the process models of the register, from normal operation and with the loops in "
+    "manual; a real upset may be quicker. They do not show that an alarm or an interlock is enough: safety functions "
+    "are judged in their own lifecycle (IEC 61511)."
+)
+"""Stands beside every time to act."""
+
+_SIDES = {"high": "above", "high_high": "above", "low": "below", "low_low": "below"}
+
+
+@dataclass(frozen=True, slots=True)
+class Told:
+    """One statement, and whether a reader must not pass it over."""
+
+    text: str
+    strong: bool = False
+
+
+def shown_time(time_s: float) -> str:
+    """A calculated time with its unit, which no line breaks."""
+    return duration(time_s).replace(" ", NO_BREAK)
+
+
+def alarm_name(kind: str) -> str:
+    """`high-high` of `high_high`."""
+    return kind.replace("_", "-")
+
+
+# ---------------------------------------------------------------- the alarm schedule
+
+
+def times_of(plant: Plant, times: TimeToAct, loop: Loop, alarm: Alarm) -> tuple[Told, ...]:
+    """What an alarm leaves before each trip behind it, one statement for each upset."""
+    behind = times.of(loop, alarm)
+    if behind:
+        return tuple(told for entry in behind for told in _entry(entry))
+    return (Told(_without_a_trip(plant, loop, alarm)),)
+
+
+def _entry(entry: AlarmToTrip) -> Iterator[Told]:
+    given = _time(entry.alarm.time_to_respond)
+    given_s = seconds(given) if given else None
+    for time in entry.times:
+        yield _upset(entry, time, given_s)
+    if given_s is None and any(math.isfinite(time.trip_s) for time in entry.times):
+        yield Told("Not checked against the response: the time to respond is not known")
+    for upset in entry.not_decided:
+        yield Told(f"{upper_first(upset.upset)}: not checked, {upset.reason}")
+    if not entry.times and not entry.not_decided:
+        yield Told(f"No upset in the register brings it to the trip of {entry.interlock.tag}")
+
+
+def _upset(entry: AlarmToTrip, time: TimeBetween, given_s: float | None) -> Told:
+    name, interlock = upper_first(time.upset), entry.interlock.tag
+    if not math.isfinite(time.trip_s):
+        return Told(f"{name}: {interlock} is not reached")
+    if time.available_s <= 0.0:
+        return Told(f"{name}: {interlock} trips {shown_time(-time.available_s)} before the alarm", strong=True)
+    left = f"{name}: {'at least ' if time.at_least else ''}{shown_time(time.available_s)} to {interlock}"
+    if given_s is None or not below(time.available_s, given_s):
+        return Told(left)
+    if time.at_least:
+        return Told(f"{left}; not checked further, the opening in normal operation does not follow from the register")
+    return Told(f"{left}, less than the time to respond", strong=True)
+
+
+def _without_a_trip(plant: Plant, loop: Loop, alarm: Alarm) -> str:
+    side = _SIDES.get(alarm.kind)
+    trips = [trip for trip in _same_quantity(plant, loop) if known(trip.initiator.direction) == side]
+    if not trips:
+        return "No trip behind it"
+    tags = listed(dict.fromkeys(trip.interlock.tag for trip in trips))
+    if known(alarm.limit) is None:
+        return f"Not checked, the limit of the alarm is not known ({tags} trips on the same side)"
+    return f"Does not precede the trip of {tags}"
+
+
+def _same_quantity(plant: Plant, loop: Loop) -> Iterator[Trip]:
+    own, transmitter = measured_quantity(loop), transmitter_of(loop)
+    for trip in plant.trips:
+        part = trip.instrument or trip.loop
+        sensor = known(trip.measurement.transmitter) if trip.measurement else None
+        same = transmitter is not None and sensor == transmitter
+        if part is not None and (same or (own is not None and measured_quantity(part) == own)):
+            yield trip
+
+
+def response_of(interlock: Interlock) -> Told:
+    """Process safety time against response time of an interlock."""
+    given, response = _time(interlock.process_safety_time), _time(interlock.response_time)
+    if given and response and seconds(given) > 0.0:
+        share = seconds(response) / seconds(given)
+        of = f"{_percent(share)} of the process safety time of {value(given)}"
+        return Told(f"Response {value(response)}, {of}", strong=share >= 1.0)
+    told = [f"response {value(response)}"] if response else []
+    told += [f"process safety time {value(given)}"] if given else []
+    if known(interlock.layer) == "process" and interlock.process_safety_time is None:
+        return Told(upper_first(", ".join(told)) or "No time is given")
+    lacking = [name for name, time in (("process safety time", given), ("response time", response)) if time is None]
+    verb = "is" if len(lacking) == 1 else "are"
+    return Told(upper_first("; ".join([*told, f"not checked, the {listed(lacking)} {verb} not known"])))
+
+
+def _time(written: Quantity | Hold | None) -> Quantity | None:
+    """A time; None where it is held, not given or no time, of which the check tells."""
+    time = known(written)
+    return time if time is not None and time.unit.kind == "time" else None
+
+
+def _percent(share: float) -> str:
+    return f"{display_number(100 * share, 2)}{NO_BREAK}%"
+
+
+# ---------------------------------------------------------------- the narrative
+
+
+def told(plant: Plant, times: TimeToAct, loops: Iterable[Loop]) -> str:
+    """How long the operator has after the alarms of these loops, in sentences; empty where no trip follows."""
+    found = [entry for loop in loops for alarm in loop.alarms.values() for entry in times.of(loop, alarm)]
+    reached = [(entry, entry.shortest) for entry in found]
+    sayings = [_between(plant, entry, time) for entry, time in reached if time is not None]
+    idle = [
+        (entry.interlock.tag, _alarm(entry)) for entry, time in reached if time is None and not entry.not_decided
+    ]
+    sayings += [f"No upset in the register carries {listed(names, 'or')} on to the trip of {tag}"
+                for tag, names in grouped(idle).items()]  # fmt: skip
+    lacking = [
+        (f"to the trip of {entry.interlock.tag} is not checked: {upset.reason}", _alarm(entry))
+        for entry in found for upset in entry.not_decided
+    ]  # fmt: skip
+    sayings += [f"The time from {listed(names)} {reason}" for reason, names in grouped(lacking).items()]
+    return sentences(*sayings)
+
+
+def _between(plant: Plant, entry: AlarmToTrip, time: TimeBetween) -> str:
+    given = _time(entry.alarm.time_to_respond)
+    when, alarm, interlock = _when(plant, time.upset), _alarm(entry), entry.interlock.tag
+    if time.available_s <= 0.0:
+        late = shown_time(-time.available_s)
+        return f"{when}, {interlock} trips {late} before {alarm}: no response can come in time, and the trip alone acts"
+    left = f"{'at least ' if time.at_least else ''}{shown_time(time.available_s)}"
+    has = f"{when}, the operator has {left} from {alarm} to the trip of {interlock}"
+    if given is None:
+        return f"{has}; how long the response takes is not known, so that this is not checked"
+    if not below(time.available_s, seconds(given)):
+        return f"{has}; the response is given {value(given)}"
+    if time.at_least:
+        return f"{has}; whether the {value(given)} given to the response are enough is not checked"
+    return f"{has}, less than the {value(given)} given to the response"
+
+
+def _alarm(entry: AlarmToTrip) -> str:
+    return f"the {alarm_name(entry.alarm.kind)} alarm of {entry.loop.tag}"
+
+
+def _when(plant: Plant, upset: str) -> str:
+    """`If FV-1002 shuts`, or `Under the upset “cooling water lost”` of a name that the register gives."""
+    moved = upset.partition(" ")[0] in plant.register.final_elements
+    return f"If {upset}" if moved else f"Under the upset “{upset}”"
+
+
+# ---------------------------------------------------------------- the loop sheet
+
+
+def sheet_line(times: TimeToAct, loop: Loop) -> str:
+    """The shortest time after each alarm of a loop in one line; empty where no trip follows."""
+    return "; ".join(
+        f"{alarm_name(alarm.kind)} to {entry.interlock.tag} {_in_short(entry)}"
+        for alarm in loop.alarms.values()
+        for entry in times.of(loop, alarm)
+    )
+
+
+def _in_short(entry: AlarmToTrip) -> str:
+    time, given = entry.shortest, _time(entry.alarm.time_to_respond)
+    if time is None:
+        return "not checked" if entry.not_decided else "not reached"
+    if time.available_s <= 0.0:
+        return f"trips {shown_time(-time.available_s)} before the alarm ({time.upset})"
+    left = f"{'at least ' if time.at_least else ''}{shown_time(time.available_s)} ({time.upset})"
+    return f"{left}, {value(given)} given" if given else left
