@@ -256,6 +256,8 @@ def tuning_panel(loop: Loop, dynamics: LoopDynamics) -> Panel:
     sensitivity, crossover = _figure(margins.max_sensitivity), _figure(margins.crossover_rad_per_s, "\u00a0rad/s")
     rows.append((("Gain margin", gain), ("Phase margin", phase)))
     rows.append((("Ms", sensitivity), ("Crossover", crossover)))
+    if margins.sampled:
+        rows.append((("Margins", "of the loop as it is sampled"),))
     if worst.speed_ratio is not None and math.isfinite(worst.speed_ratio):
         inner = worst.chain.levels[-2].loop.tag
         rows.append((("Speed ratio", f"{inner} is {display_number(worst.speed_ratio, 2)} times as fast"),))

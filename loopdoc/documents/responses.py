@@ -14,6 +14,7 @@ from loopdoc.documents.page_fit import foot
 from loopdoc.documents.plots import Curve, Drawing, Limit, Panel, to_svg
 from loopdoc.documents.values import DASH, shown
 from loopdoc.documents.view import Figure
+from loopdoc.documents.wording import listed, sentences
 from loopdoc.engineering.comparison import UPSET_PCT, Comparison, NotSimulated, ScenarioResponses
 from loopdoc.engineering.dynamics import ChainDynamics
 from loopdoc.engineering.pairing import Scheme
@@ -114,6 +115,7 @@ def section(basis: Basis, dynamics: ChainDynamics, *, several: bool) -> dict[str
         "heading": f"From {path[0]} to {path[-1]}" if several else "",
         "path": " → ".join(path),
         "margins": margin_rows(dynamics),
+        "sampled": sampled_note(dynamics),
         "speed_ratio": number(dynamics.speed_ratio) if dynamics.speed_ratio is not None else "",
         "not_simulated": compared.reason if isinstance(compared, NotSimulated) else "",
         "unit": difference_unit(measured_range(chain.lead)),
@@ -138,6 +140,27 @@ def margin_rows(dynamics: ChainDynamics) -> list[dict[str, str]]:
         }
         for level, margins in zip(reversed(dynamics.chain.levels), reversed(dynamics.margins), strict=True)
     ]
+
+
+def sampled_note(dynamics: ChainDynamics) -> str:
+    """Which margins are those of the sampled loop, and which gain margin would need it; empty where none."""
+    levels = [
+        (level.loop.tag, margins)
+        for level, margins in zip(reversed(dynamics.chain.levels), reversed(dynamics.margins), strict=True)
+    ]
+    sampled = [tag for tag, margins in levels if margins.sampled]
+    told = [
+        f"The gain margin of {tag} would need the sampled loop: {margins.not_quoted}"
+        for tag, margins in levels
+        if margins.not_quoted
+    ]
+    if sampled:
+        told.insert(
+            0,
+            f"Above a quarter of the sampling frequency that no longer holds: the margins of {listed(sampled)} are "
+            "those of the sampled loop",
+        )
+    return sentences(*told)
 
 
 def metric_rows(comparison: Comparison) -> list[dict[str, str]]:

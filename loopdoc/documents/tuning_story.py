@@ -22,8 +22,9 @@ PROCESS_HEAD = ("Loop", "Moved", "Process gain", "Lags", "Lead", "Dead time", "S
 BASIS = (
     "Gains are in percent of output per percent of measurement span, in the standard form (ISA-TR5.9) unless a table "
     "names another. Margins come from the exact frequency response of the process models with every loop below "
-    "closed; dead time is not approximated, and an execution interval counts as half of itself in dead time; a gain "
-    "margin above a quarter of the sampling frequency is not quoted, since that no longer holds there. Ms is the "
+    "closed; dead time is not approximated, and an execution interval counts as half of itself in dead time; a loop "
+    "whose gain margin would be read above a quarter of its sampling frequency, where that no longer holds, is "
+    "analysed as it is sampled. Ms is the "
     "maximum sensitivity; the speed ratio is the crossover of the loop below over that of the loop itself."
 )
 """What every table of settings and margins rests on, told once in a document."""
@@ -102,7 +103,7 @@ def _margins(dynamics: Dynamics, tag: str) -> tuple[str, str, str, str, str]:
 
 def _figure(number: float) -> str:
     if math.isnan(number):
-        return "not quoted"  # a gain margin above a quarter of the sampling frequency
+        return "not quoted"  # where the sampled loop would be needed and is not calculated; the remarks say why
     return display_number(number, 3 if abs(number) < 100 else 4)
 
 
@@ -113,10 +114,20 @@ def remarks(loops: Sequence[ControlledLoop], dynamics: Dynamics) -> str:
     if any(len(dynamics.loop(tag).chains) > 1 for tag in calculated):
         told.append("Of a split range the branch with the larger maximum sensitivity is quoted")
     told.extend(_without_margins(loops, dynamics))
+    sampled = []
     for tag in calculated:
         worst = dynamics.loop(tag).worst
-        if worst is not None and not worst.margins[-1].stable:
+        if worst is None:
+            continue
+        margins = worst.margins[-1]
+        if not margins.stable:
             told.append(f"{tag} is not stable as tuned")
+        elif margins.not_quoted:
+            told.append(f"The gain margin of {tag} would need the sampled loop: {margins.not_quoted}")
+        elif margins.sampled:
+            sampled.append(tag)
+    if sampled:
+        told.append(f"The margins of {listed(sampled)} are those of the sampled loop")
     return sentences(*told)
 
 

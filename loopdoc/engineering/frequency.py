@@ -21,13 +21,26 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from loopdoc.engineering.open_loop import Crossings, LevelArrays, Survey, level_arrays, static_gains
+from loopdoc.engineering.open_loop import (
+    Crossings,
+    IntArray,
+    LevelArrays,
+    OpenLoop,
+    Survey,
+    level_arrays,
+    static_gains,
+)
 from loopdoc.engineering.pid import Controller
 from loopdoc.engineering.process import FloatArray, Process
 
 METHOD = (
     "exact frequency response, dead time as exp(-jwL), execution interval as half of itself in dead "
     "time, stability by the Nyquist criterion"
+)
+
+METHOD_SAMPLED = (
+    "exact frequency response of the sampled loop as it is executed, between zero and half the sampling "
+    "frequency, stability by the Nyquist criterion on the unit circle"
 )
 
 # Chains analysed together: large enough for numpy, small enough for the processor's cache.
@@ -67,11 +80,16 @@ class Margins:
     """First frequency where |L/(1+L)| is 3 dB below its static value [rad/s]; infinite if never, nan
     when unstable."""
     delay_margin_s: float
-    """Smallest added dead time that makes the loop unstable [s]; infinite if none, 0 when unstable."""
+    """Smallest added dead time that makes the loop unstable [s]; infinite if none, 0 when unstable. Of a
+    sampled loop the same quotient, phase over crossover, which is exact for whole intervals."""
+    sampled: bool
+    """True where the figures are those of the sampled loop, False where an interval counts as half in dead time."""
     method: str
     """How the figures were found."""
     grid: str
     """Number and span of the frequencies before refinement."""
+    not_quoted: str = ""
+    """Why the gain margin is not quoted; empty where it is."""
 
 
 def _nearest(size: int, roots: Crossings, value: FloatArray) -> tuple[FloatArray, FloatArray]:
@@ -84,19 +102,39 @@ def _nearest(size: int, roots: Crossings, value: FloatArray) -> tuple[FloatArray
     return least, where
 
 
-def _analyse_level(survey: Survey, level: int, below: FloatArray) -> tuple[FloatArray, list[Margins]]:
-    size = len(survey.w)
-    gain_roots = survey.gain_crossings(level)
-    axis_roots, direction = survey.real_axis_crossings(level)
-    growing = survey.unstable_poles(level, below, axis_roots, direction)
-    poles, leading = static_gains(survey.levels)[level]
+@dataclass(frozen=True, slots=True, eq=False)
+class LevelSurvey:
+    """What is known of one level of n chains before its margins are read off; arrays are (n,)."""
+
+    open_loop: OpenLoop
+    axis_roots: Crossings
+    """Where L crosses the negative real axis."""
+    growing: FloatArray
+    """Growing modes of the closed loop."""
+    sensitivity: FloatArray
+    """Ms over the frequencies above zero [dimensionless]."""
+    complementary: FloatArray
+    """Mt over the frequencies above zero [dimensionless]."""
+    poles: IntArray
+    """Poles of L at frequency zero."""
+    leading: FloatArray
+    """What L s**poles is at frequency zero."""
+    sampled: bool
+    """True where L is that of the sampled loop."""
+
+
+def read_margins(survey: LevelSurvey) -> list[Margins]:
+    """Return the margins of one level of n chains."""
+    loop, axis_roots, poles = survey.open_loop, survey.axis_roots, survey.poles
+    size = len(loop.w)
+    gain_roots = loop.gain_crossings()
     with np.errstate(divide="ignore", invalid="ignore"):
-        static_sensitivity = np.where(poles > 0, 0.0, 1.0 / np.abs(1.0 + leading))
-        static_complementary = np.where(poles > 0, 1.0, np.abs(leading / (1.0 + leading)))
-    sensitivity = np.maximum(survey.peak(level, complementary=False), static_sensitivity)
-    complementary = np.maximum(survey.peak(level, complementary=True), static_complementary)
+        static_sensitivity = np.where(poles > 0, 0.0, 1.0 / np.abs(1.0 + survey.leading))
+        static_complementary = np.where(poles > 0, 1.0, np.abs(survey.leading / (1.0 + survey.leading)))
+    sensitivity = np.maximum(survey.sensitivity, static_sensitivity)
+    complementary = np.maximum(survey.complementary, static_complementary)
     # On the stability limit itself the loop passes through -1 and no mode can be counted.
-    stable = (growing == 0.0) & (sensitivity < 1e7)
+    stable = (survey.growing == 0.0) & (sensitivity < 1e7)
 
     factor = -1.0 / axis_roots.loop.real
     raising, raising_w = _nearest(size, axis_roots, np.where(factor > 1.0, factor, math.inf))
@@ -112,9 +150,9 @@ def _analyse_level(survey: Survey, level: int, below: FloatArray) -> tuple[Float
     np.fmax.at(crossover, gain_roots.row, gain_roots.w)
     phase_deg = np.where(stable, 1.0, -1.0) * np.degrees(phase)
     static = np.where(poles > 0, 1.0, static_complementary)
-    width = survey.bandwidths(level, static / math.sqrt(2.0))
-    points = survey.w.shape[1]
-    return growing, [
+    width = loop.bandwidths(static / math.sqrt(2.0))
+    points = loop.w.shape[1]
+    return [
         Margins(
             stable=bool(stable[i]),
             gain_margin=float(gain_margin[i]),
@@ -125,11 +163,28 @@ def _analyse_level(survey: Survey, level: int, below: FloatArray) -> tuple[Float
             phase_crossover_rad_per_s=float(at[i]),
             bandwidth_rad_per_s=float(width[i]) if stable[i] else math.nan,
             delay_margin_s=float(delay[i]) if stable[i] else 0.0,
-            method=METHOD,
-            grid=f"{points} frequencies, {survey.w[i, 0]:.3g} to {survey.w[i, -1]:.3g} rad/s, refined",
+            sampled=survey.sampled,
+            method=METHOD_SAMPLED if survey.sampled else METHOD,
+            grid=f"{points} frequencies, {loop.w[i, 0]:.3g} to {loop.w[i, -1]:.3g} rad/s, refined",
         )
         for i in range(size)
     ]
+
+
+def _survey_level(survey: Survey, level: int, below: FloatArray) -> LevelSurvey:
+    loop = survey.open_loop(level)
+    axis_roots, direction = loop.real_axis_crossings()
+    poles, leading = static_gains(survey.levels)[level]
+    return LevelSurvey(
+        open_loop=loop,
+        axis_roots=axis_roots,
+        growing=survey.growing_modes(level, below, axis_roots, direction),
+        sensitivity=survey.peak(level, complementary=False),
+        complementary=survey.peak(level, complementary=True),
+        poles=poles,
+        leading=leading,
+        sampled=False,
+    )
 
 
 def _stage_arrays(stages: Sequence[LoopStage]) -> LevelArrays:
@@ -177,8 +232,9 @@ def analyse_chains(chains: Sequence[Sequence[LoopStage]]) -> tuple[tuple[Margins
         survey = Survey([_stage_arrays([chains[i][level] for i in members]) for level in range(depth)])
         growing = np.zeros(len(members))
         for level in range(depth):
-            growing, margins = _analyse_level(survey, level, growing)
-            for position, found in zip(members, margins, strict=True):
+            surveyed = _survey_level(survey, level, growing)
+            growing = surveyed.growing
+            for position, found in zip(members, read_margins(surveyed), strict=True):
                 results[position] = (*results[position], found)
     return tuple(results)
 
@@ -206,7 +262,9 @@ def maximum_sensitivities(loops: Sequence[LoopStage]) -> FloatArray:
     found = np.empty(len(loops))
     for members in _chunks([1] * len(loops)):
         survey = Survey([_stage_arrays([loops[i] for i in members])])
-        growing = survey.unstable_poles(0, np.zeros(len(members)), *survey.real_axis_crossings(0))
+        growing = survey.growing_modes(
+            0, np.zeros(len(members)), *survey.open_loop(0).real_axis_crossings()
+        )
         poles, leading = static_gains(survey.levels)[0]
         with np.errstate(divide="ignore"):
             static = np.where(poles > 0, 0.0, 1.0 / np.abs(1.0 + leading))

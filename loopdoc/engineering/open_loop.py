@@ -6,6 +6,8 @@ Arrays run over chains first and frequencies second. See `frequency` for the equ
 import math
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
+from functools import partial
+from typing import TypeAlias
 
 import numpy as np
 from numpy.typing import NDArray
@@ -14,6 +16,8 @@ from loopdoc.engineering.pid import Controller
 from loopdoc.engineering.process import ComplexArray, FloatArray, Process
 
 IntArray = NDArray[np.intp]
+LoopAt: TypeAlias = Callable[[IntArray], Callable[[FloatArray], ComplexArray]]
+"""For k chosen chains, their open loop as a function of ln w, (k,) or (k, m)."""
 
 _POINTS_PER_DECADE = 40
 # Largest change of phase by dead time between two points of the grid [rad].
@@ -144,7 +148,7 @@ def static_gains(levels: Sequence[LevelArrays]) -> list[tuple[IntArray, FloatArr
     return found
 
 
-def _frequency_span(levels: Sequence[LevelArrays]) -> tuple[FloatArray, FloatArray]:
+def frequency_span(levels: Sequence[LevelArrays]) -> tuple[FloatArray, FloatArray]:
     """(n,) lowest and highest frequency [rad/s]: well outside every break and crossover."""
     rates: list[FloatArray] = []
     with np.errstate(divide="ignore", invalid="ignore"):
@@ -180,7 +184,7 @@ def _spread(low: FloatArray, high: FloatArray, count: int) -> FloatArray:
 
 def _frequency_grid(levels: Sequence[LevelArrays]) -> FloatArray:
     """(n, m) increasing frequencies [rad/s]: even per decade, and even where dead time turns the phase."""
-    low, high = _frequency_span(levels)
+    low, high = frequency_span(levels)
     decades = float(np.log10(high / low).max())
     coarse = _spread(low, high, 12 * math.ceil(decades) + 2)
     parts = [_spread(low, high, math.ceil(_POINTS_PER_DECADE * decades) + 2)]
@@ -212,7 +216,14 @@ def _inverse(loop: ComplexArray) -> ComplexArray:
     return inverse
 
 
-def _zoom_to_maximum(
+def around_resonance(sharpness: FloatArray) -> FloatArray:
+    """(n, k) offsets in ln w that resolve a peak whose height is one over the (n,) sharpness."""
+    half = np.minimum(sharpness, 0.1)[:, None] * np.array([0.05, 0.15, 0.3, 0.6, 1.0, 1.7, 3.0, 6.0])
+    offsets: FloatArray = np.concatenate([-half, np.zeros((len(half), 1)), half], axis=1)
+    return offsets
+
+
+def zoom_to_maximum(
     value: Callable[[FloatArray], FloatArray], low: FloatArray, high: FloatArray
 ) -> tuple[FloatArray, FloatArray]:
     """Place and height of the maximum of ``value`` of ln w, for (k,) brackets at once."""
@@ -233,7 +244,7 @@ def _zoom_to_maximum(
     return x[rows, best] + shift * 0.5 * (high - low), height
 
 
-def _find_root(value: Callable[[FloatArray], FloatArray], low: FloatArray, high: FloatArray) -> FloatArray:
+def find_root(value: Callable[[FloatArray], FloatArray], low: FloatArray, high: FloatArray) -> FloatArray:
     """Roots of ``value`` of ln w in (k,) brackets whose ends differ in sign, by false position (Illinois)."""
     f_low, f_high = value(low), value(high)
     x = low
@@ -264,8 +275,108 @@ class Crossings:
     """(k,) open loop there [dimensionless]."""
 
 
+class OpenLoop:
+    """The open loop of one level of n chains on a grid of frequencies, with refinement of what is found there."""
+
+    def __init__(self, w: FloatArray, loop: ComplexArray, at: LoopAt) -> None:
+        """Take the (n, m) frequencies [rad/s], the loop there, and what gives it anywhere for chosen chains."""
+        self.w = w
+        self.loop = loop
+        self.at = at
+
+    def _refine(
+        self,
+        bracket: tuple[IntArray, IntArray],
+        value: Callable[[ComplexArray], FloatArray],
+    ) -> Crossings:
+        """Refine the crossings between the grid points ``columns`` and ``columns + 1`` of ``rows``."""
+        rows, columns = bracket
+        if not len(rows):
+            return Crossings(rows, np.zeros(0), np.zeros(0, dtype=np.complex128))
+        loop = self.at(rows)
+        x = find_root(
+            lambda x: value(loop(x)), np.log(self.w[rows, columns]), np.log(self.w[rows, columns + 1])
+        )
+        return Crossings(rows, np.exp(x), loop(x))
+
+    def gain_crossings(self) -> Crossings:
+        """Where |L| passes through 1."""
+        above = np.abs(self.loop) > 1.0
+        rows, columns = np.nonzero(above[:, 1:] != above[:, :-1])
+        return self._refine((rows, columns), lambda loop: np.log(np.abs(loop)))
+
+    def real_axis_crossings(self) -> tuple[Crossings, IntArray]:
+        """Where L crosses the negative real axis, and +1 where it does so downward, -1 upward.
+
+        Of the crossings inside the unit circle only the outermost few are refined: the rest bear on
+        no margin.
+        """
+        loop = self.loop
+        above = loop.imag >= 0.0
+        left = np.minimum(loop.real[:, 1:], loop.real[:, :-1]) < 0.0
+        rows, columns = np.nonzero((above[:, 1:] != above[:, :-1]) & left)
+        size = np.maximum(np.abs(loop[rows, columns]), np.abs(loop[rows, columns + 1]))
+        outermost = np.zeros(len(loop))
+        np.maximum.at(outermost, rows, np.where(size < 1.0, size, 0.0))
+        needed = (size >= 1.0) | (size >= 0.5 * outermost[rows])
+        rows, columns = rows[needed], columns[needed]
+        roots = self._refine((rows, columns), lambda loop: loop.imag / np.abs(loop))
+        direction = np.where(above[rows, columns], 1, -1)
+        kept = roots.loop.real < 0.0
+        return Crossings(roots.row[kept], roots.w[kept], roots.loop[kept]), direction[kept]
+
+    def bandwidths(self, floor: FloatArray) -> FloatArray:
+        """(n,) first frequency where |L/(1+L)| falls below ``floor`` (n,), infinite if never."""
+        loop = self.loop
+        under = np.abs(loop / (1.0 + loop)) < floor[:, None]
+        rows = np.nonzero(under.any(axis=1) & ~under[:, 0])[0]
+        columns = np.argmax(under[rows], axis=1) - 1
+        roots = self._refine((rows, columns), lambda loop: np.log(np.abs(loop / (1.0 + loop)) / floor[rows]))
+        width = np.full(len(floor), math.inf)
+        width[roots.row] = roots.w
+        return width
+
+    def peak(self, *, complementary: bool) -> FloatArray:
+        """(n,) largest |1/(1+L)| or |L/(1+L)| = |1/(1+1/L)| over the frequencies above zero."""
+        curve = _inverse(self.loop) if complementary else self.loop
+        distance = np.abs(1.0 + curve)
+        nearest = distance.min(axis=1)
+        inside = (distance[:, 1:-1] <= distance[:, :-2]) & (distance[:, 1:-1] < distance[:, 2:])
+        # Between grid points the curve can come nearer than they do by half a step of it at most.
+        step = np.abs(curve[:, 1:] - curve[:, :-1])
+        reach = distance[:, 1:-1] - 0.6 * np.maximum(step[:, 1:], step[:, :-1])
+        rows, columns = np.nonzero(inside & (reach < nearest[:, None]))
+        if len(rows):
+            loop = self.at(rows)
+
+            def height(x: FloatArray) -> FloatArray:
+                found = _inverse(loop(x)) if complementary else loop(x)
+                value: FloatArray = -np.log(np.abs(1.0 + found))
+                return value
+
+            low, high = np.log(self.w[rows, columns]), np.log(self.w[rows, columns + 2])
+            np.minimum.at(nearest, rows, np.exp(-zoom_to_maximum(height, low, high)[1]))
+        largest: FloatArray = 1.0 / nearest
+        return largest
+
+    def growing_modes(
+        self, poles: IntArray, below: FloatArray, crossed: Crossings, direction: IntArray, end_angle: FloatArray
+    ) -> FloatArray:
+        """(n,) growing modes of the closed loop by the argument principle.
+
+        With P growing modes ``below``, m ``poles`` of L at the origin (or at z = 1), and D the change of the angle of
+        1 + L from frequency zero to its end, at ``end_angle``, there are P + m/2 - D/pi.
+        """
+        turns = np.zeros(len(self.w))
+        encircling = crossed.loop.real < -1.0
+        np.add.at(turns, crossed.row[encircling], direction[encircling])
+        change = end_angle - np.angle(1.0 + self.loop[:, 0]) + 2.0 * math.pi * turns
+        modes: FloatArray = np.maximum(np.round(below + poles / 2.0 - change / math.pi), 0.0)
+        return modes
+
+
 class Survey:
-    """The open loops of one chunk of chains on their grid, with refinement of what is found there."""
+    """The open loops of one chunk of chains on their grid."""
 
     def __init__(self, levels: Sequence[LevelArrays]) -> None:
         self.levels = levels
@@ -283,20 +394,17 @@ class Survey:
             return
         rows = np.arange(len(self.w))
         top = np.clip(np.argmax(sensitivity, axis=1), 1, self.w.shape[1] - 2)
-        loop = self.loop_at(level, rows)
-        x, height = _zoom_to_maximum(
+        loop = self._loop_at(level, rows)
+        x, height = zoom_to_maximum(
             lambda x: -np.log(np.abs(1.0 + loop(x))),
             np.log(self.w[rows, top - 1]),
             np.log(self.w[rows, top + 1]),
         )
-        half = np.minimum(np.exp(-height), 0.1)[:, None] * np.array(
-            [0.05, 0.15, 0.3, 0.6, 1.0, 1.7, 3.0, 6.0]
-        )
-        extra = np.exp(x[:, None] + np.concatenate([-half, np.zeros((len(rows), 1)), half], axis=1))
+        extra = np.exp(x[:, None] + around_resonance(np.exp(-height)))
         self.w = np.sort(np.concatenate([self.w, extra], axis=1), axis=1)
         self.loops = open_loops(self.levels, self.w)
 
-    def loop_at(self, level: int, rows: IntArray) -> Callable[[FloatArray], ComplexArray]:
+    def _loop_at(self, level: int, rows: IntArray) -> Callable[[FloatArray], ComplexArray]:
         """Open loop of a level as a function of ln w, (k,) or (k, m), for the given k chains."""
         taken = [one.take(rows) for one in self.levels[: level + 1]]
 
@@ -305,102 +413,26 @@ class Survey:
 
         return loop
 
-    def _refine(
-        self,
-        level: int,
-        bracket: tuple[IntArray, IntArray],
-        value: Callable[[ComplexArray], FloatArray],
-    ) -> Crossings:
-        """Refine the crossings between the grid points ``columns`` and ``columns + 1`` of ``rows``."""
-        rows, columns = bracket
-        if not len(rows):
-            return Crossings(rows, np.zeros(0), np.zeros(0, dtype=np.complex128))
-        loop = self.loop_at(level, rows)
-        x = _find_root(
-            lambda x: value(loop(x)), np.log(self.w[rows, columns]), np.log(self.w[rows, columns + 1])
-        )
-        return Crossings(rows, np.exp(x), loop(x))
-
-    def gain_crossings(self, level: int) -> Crossings:
-        """Where |L| passes through 1."""
-        above = np.abs(self.loops[level]) > 1.0
-        rows, columns = np.nonzero(above[:, 1:] != above[:, :-1])
-        return self._refine(level, (rows, columns), lambda loop: np.log(np.abs(loop)))
-
-    def real_axis_crossings(self, level: int) -> tuple[Crossings, IntArray]:
-        """Where L crosses the negative real axis, and +1 where it does so downward, -1 upward.
-
-        Of the crossings inside the unit circle only the outermost few are refined: the rest bear on
-        no margin.
-        """
-        loop = self.loops[level]
-        above = loop.imag >= 0.0
-        left = np.minimum(loop.real[:, 1:], loop.real[:, :-1]) < 0.0
-        rows, columns = np.nonzero((above[:, 1:] != above[:, :-1]) & left)
-        size = np.maximum(np.abs(loop[rows, columns]), np.abs(loop[rows, columns + 1]))
-        outermost = np.zeros(len(loop))
-        np.maximum.at(outermost, rows, np.where(size < 1.0, size, 0.0))
-        needed = (size >= 1.0) | (size >= 0.5 * outermost[rows])
-        rows, columns = rows[needed], columns[needed]
-        roots = self._refine(level, (rows, columns), lambda loop: loop.imag / np.abs(loop))
-        direction = np.where(above[rows, columns], 1, -1)
-        kept = roots.loop.real < 0.0
-        return Crossings(roots.row[kept], roots.w[kept], roots.loop[kept]), direction[kept]
-
-    def bandwidths(self, level: int, floor: FloatArray) -> FloatArray:
-        """(n,) first frequency where |L/(1+L)| falls below ``floor`` (n,), infinite if never."""
-        loop = self.loops[level]
-        under = np.abs(loop / (1.0 + loop)) < floor[:, None]
-        rows = np.nonzero(under.any(axis=1) & ~under[:, 0])[0]
-        columns = np.argmax(under[rows], axis=1) - 1
-        roots = self._refine(
-            level, (rows, columns), lambda loop: np.log(np.abs(loop / (1.0 + loop)) / floor[rows])
-        )
-        width = np.full(len(floor), math.inf)
-        width[roots.row] = roots.w
-        return width
+    def open_loop(self, level: int) -> OpenLoop:
+        """Return the open loop of one level."""
+        return OpenLoop(self.w, self.loops[level], partial(self._loop_at, level))
 
     def peak(self, level: int, *, complementary: bool) -> FloatArray:
-        """(n,) largest |1/(1+L)| or |L/(1+L)| = |1/(1+1/L)| over the frequencies above zero."""
-        curve, far = self.loops[level], self.far[level]
-        if complementary:
-            curve, far = _inverse(curve), _inverse(far)
-        distance = np.abs(1.0 + curve)
-        nearest = np.minimum(distance.min(axis=1), np.abs(1.0 + far).min(axis=1))
-        inside = (distance[:, 1:-1] <= distance[:, :-2]) & (distance[:, 1:-1] < distance[:, 2:])
-        # Between grid points the curve can come nearer than they do by half a step of it at most.
-        step = np.abs(curve[:, 1:] - curve[:, :-1])
-        reach = distance[:, 1:-1] - 0.6 * np.maximum(step[:, 1:], step[:, :-1])
-        rows, columns = np.nonzero(inside & (reach < nearest[:, None]))
-        if len(rows):
-            loop = self.loop_at(level, rows)
-
-            def height(x: FloatArray) -> FloatArray:
-                found = _inverse(loop(x)) if complementary else loop(x)
-                value: FloatArray = -np.log(np.abs(1.0 + found))
-                return value
-
-            low, high = np.log(self.w[rows, columns]), np.log(self.w[rows, columns + 2])
-            np.minimum.at(nearest, rows, np.exp(-_zoom_to_maximum(height, low, high)[1]))
-        largest: FloatArray = 1.0 / nearest
+        """(n,) largest |1/(1+L)| or |L/(1+L)| over the frequencies above zero, what never rolls off included."""
+        far = _inverse(self.far[level]) if complementary else self.far[level]
+        at_infinity = 1.0 / np.abs(1.0 + far).min(axis=1)
+        largest: FloatArray = np.maximum(self.open_loop(level).peak(complementary=complementary), at_infinity)
         return largest
 
-    def unstable_poles(
+    def growing_modes(
         self, level: int, below: FloatArray, crossed: Crossings, direction: IntArray
     ) -> FloatArray:
-        """(n,) growing modes of the closed loop, infinite where gain above 1 meets dead time forever.
-
-        With P growing modes below, m poles of L at the origin, and D the change of the angle of 1 + L
-        from frequency zero to infinity, the argument principle gives P + m/2 - D/pi.
-        """
+        """(n,) growing modes of the closed loop, infinite where gain above 1 meets dead time forever."""
         poles, _ = static_gains(self.levels)[level]
-        loop = self.loops[level]
-        turns = np.zeros(len(self.w))
-        encircling = crossed.loop.real < -1.0
-        np.add.at(turns, crossed.row[encircling], direction[encircling])
         delay = np.sum([one.delay_s[:, 0] for one in self.levels[: level + 1]], axis=0)
         far_gain = np.abs(self.far[level]).max(axis=1)
-        end = np.where((far_gain > _ROLLED_OFF) & (delay == 0.0), np.angle(1.0 + loop[:, -1]), 0.0)
-        change = end - np.angle(1.0 + loop[:, 0]) + 2.0 * math.pi * turns
-        count = np.maximum(np.round(below + poles / 2.0 - change / math.pi), 0.0)
+        end = np.where(
+            (far_gain > _ROLLED_OFF) & (delay == 0.0), np.angle(1.0 + self.loops[level][:, -1]), 0.0
+        )
+        count = self.open_loop(level).growing_modes(poles, below, crossed, direction, end)
         return np.where((far_gain >= 1.0) & (delay > 0.0), math.inf, count)

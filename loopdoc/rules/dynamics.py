@@ -38,7 +38,8 @@ def loop_unstable(controlled: ControlledLoop, dynamics: Dynamics) -> Iterator[Dr
         its two integrations outrun its dead time; an action that drives the measurement away.
     Holds:
         No mode of the closed loop grows, the loops below closed as they are tuned; dead time counts in full
-        and the execution interval as half of itself.
+        and the execution interval as half of itself. A loop that turns over faster than that holds is judged
+        as it is sampled.
     What this check cannot see:
         A process that is not as the register says. A loop is judged only when those below it are stable.
     """
@@ -101,8 +102,8 @@ def margin_low(controlled: ControlledLoop, dynamics: Dynamics, limits: Limits) -
             remedy="lower the gain, or lengthen the reset time",
             at=_gain_place(controlled.controller),
         )
-    elif math.isnan(worst.margins[-1].gain_margin):
-        not_checked("the gain margin lies above a quarter of the sampling frequency and is not calculated")
+    elif worst.margins[-1].not_quoted:
+        not_checked(f"the gain margin would need the sampled loop: {worst.margins[-1].not_quoted}")
 
 
 def _margin_faults(margins: Margins, limits: Limits) -> Iterator[str]:
