@@ -153,6 +153,24 @@ class Plant:
         return tuple(LoopAlarm(loop, alarm) for loop in self.register.loops.values() for alarm in loop.alarms.values())
 
     @cached_property
+    def alarms_of_unit(self) -> dict[str, tuple[LoopAlarm, ...]]:
+        """The alarms of each process unit, by its number."""
+        found: dict[str, list[LoopAlarm]] = {}
+        for entry in self.alarms:
+            number = known(entry.loop.unit)
+            if number is not None:
+                found.setdefault(number, []).append(entry)
+        return {number: tuple(alarms) for number, alarms in found.items()}
+
+    @cached_property
+    def trips_of(self) -> dict[str, tuple[Trip, ...]]:
+        """The initiators of each interlock, by its tag."""
+        found: dict[str, list[Trip]] = {tag: [] for tag in self.register.interlocks}
+        for trip in self.trips:
+            found[trip.interlock.tag].append(trip)
+        return {tag: tuple(trips) for tag, trips in found.items()}
+
+    @cached_property
     def trips(self) -> tuple[Trip, ...]:
         found = []
         for interlock in self.register.interlocks.values():
@@ -180,6 +198,41 @@ class Plant:
         return {tag: loops[0] for tag, loops in self.loops_on.items()}
 
     @cached_property
+    def measuring(self) -> dict[tuple[str, str, str], tuple[Loop | Instrument, ...]]:
+        """The loops, then the instruments, that measure each quantity, in the order of the register."""
+        found: dict[tuple[str, str, str], list[Loop | Instrument]] = {}
+        for part in (*self.register.loops.values(), *self.register.instruments.values()):
+            quantity = measured_quantity(part)
+            if quantity is not None:
+                found.setdefault(quantity, []).append(part)
+        return {quantity: tuple(parts) for quantity, parts in found.items()}
+
+    def loops_watching(self, part: Loop | Instrument) -> tuple[Loop, ...]:
+        """Every loop that measures what a loop or instrument measures, with its transmitter or another."""
+        measurement = known(part.measurement)
+        transmitter = known(measurement.transmitter) if measurement else None
+        quantity = measured_quantity(part)
+        on_it = self.loops_on.get(transmitter, ()) if transmitter else ()
+        alike = self.measuring.get(quantity, ()) if quantity else ()
+        found = {loop.tag: loop for loop in (*on_it, *alike) if isinstance(loop, Loop)}
+        return tuple(found.values())
+
+    @cached_property
+    def position(self) -> dict[str, int]:
+        """Where each loop stands in the register, counted from 0."""
+        return {tag: index for index, tag in enumerate(self.register.loops)}
+
+    @cached_property
+    def moved_by(self) -> dict[str, tuple[ControlledLoop, ...]]:
+        """The controllers whose output moves each final element, directly or through functions."""
+        found: dict[str, dict[str, ControlledLoop]] = {}
+        for controlled in self.controlled.values():
+            for route in controlled.routes:
+                if isinstance(route.end, FinalElement):
+                    found.setdefault(route.end.tag, {})[controlled.tag] = controlled
+        return {tag: tuple(loops.values()) for tag, loops in found.items()}
+
+    @cached_property
     def commanders(self) -> dict[str, tuple[str, ...]]:
         """Tags of the loops and functions that command each tag directly."""
         found: dict[str, list[str]] = {}
@@ -187,6 +240,15 @@ class Plant:
             for target in targets:
                 found.setdefault(target, []).append(tag)
         return {tag: tuple(commanders) for tag, commanders in found.items()}
+
+    @cached_property
+    def interlocked(self) -> frozenset[str]:
+        """Tags on which an interlock acts."""
+        return frozenset(tag for interlock in self.register.interlocks.values() for tag in interlock.actions)
+
+    def targets(self, tag: str) -> tuple[str, ...]:
+        """What a loop or a function commands directly, as written (unknown tags included)."""
+        return self._targets.get(tag, ())
 
     @cached_property
     def cycles(self) -> tuple[tuple[str, ...], ...]:

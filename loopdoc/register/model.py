@@ -488,9 +488,12 @@ class Register:
         return found
 
     @cached_property
-    def held(self) -> frozenset[tuple[str, tuple[str | int, ...]]]:
-        """Tag and path under the tag of every hold; tells a mapping on hold from one that is not given."""
-        return frozenset((held.tag, held.path) for held in self.holds)
+    def held(self) -> dict[str, frozenset[tuple[str | int, ...]]]:
+        """Paths under each tag that are on hold; tells a mapping on hold from one that is not given."""
+        found: dict[str, set[tuple[str | int, ...]]] = {}
+        for held in self.holds:
+            found.setdefault(held.tag, set()).add(held.path)
+        return {tag: frozenset(paths) for tag, paths in found.items()}
 
     def defined_at(self, tag: str) -> Place | None:
         """Place of the key under which a tag is defined; None for a tag the register does not define."""
