@@ -17,7 +17,7 @@ _LOG_COMMAND = re.compile(r"^([ \t]*):(?=:)|#(?=#[\w-]*\[)", re.MULTILINE)
 _MARKDOWN = re.compile(
     r"(?P<entity>[<>&])|(?P<markup>[\\`*_\[\]|~$^{}])"
     # A mention, a reference by number and the start of a link that a forge makes of plain text.
-    r"|[@#!%]|:(?=//|\w+:)|(?<=\w)\.(?=[a-z]{2})|(?<=GH)-(?=\d)",
+    r"|[@#!%]|:(?=//|\w+:)|(?<=www)\.|(?<=GH)-(?=\d)",
     re.IGNORECASE,
 )
 _ENTITIES = {"<": "&lt;", ">": "&gt;", "&": "&amp;"}
@@ -48,17 +48,30 @@ def for_xml(text: str) -> str:
 
 
 def for_markdown(text: str) -> str:
-    """Text in one line of Markdown, or in a cell of a table, that is shown as it stands."""
-    shown = for_line(text)
+    """Text in a cell of a Markdown table that is shown as it stands; what is in backticks is set as code."""
+    pieces = for_line(text).split("`")
+    if len(pieces) % 2 == 0:  # one of them has no partner
+        return _inert("`".join(pieces))
+    return "".join(as_code(piece) if index % 2 and piece else _inert(piece) for index, piece in enumerate(pieces))
 
-    def inert(found: re.Match[str]) -> str:
+
+def as_code(text: str) -> str:
+    """A code span in a cell of a Markdown table, which nothing in the text can end; a mention in it is none."""
+    shown = for_line(text).replace("|", "\\|")
+    fence = "`" * (1 + max(map(len, re.findall("`+", shown)), default=0))
+    # One blank at each end is not shown; without it a backtick at an end would join the fence.
+    return f"{fence} {shown} {fence}" if "`" in shown or not shown.strip() else f"{fence}{shown}{fence}"
+
+
+def _inert(text: str) -> str:
+    def written(found: re.Match[str]) -> str:
         character = found[0]
         plain = _ENTITIES.get(character) or (f"\\{character}" if found["markup"] else character)
-        after = shown[found.end() : found.end() + 1]
+        after = text[found.end() : found.end() + 1]
         refers = character in "@#!%&~$" and (after.isalnum() or after in ('"', "_"))
         return plain + _ZERO_WIDTH if refers or character in ":.-" else plain
 
-    return _MARKDOWN.sub(inert, shown)
+    return _MARKDOWN.sub(written, text)
 
 
 def _written_out(run: re.Match[str]) -> str:

@@ -131,7 +131,7 @@ def accepted_why(finding: Finding) -> str:
     """Reason, approver and end date of the deviation that accepts a finding."""
     deviation = finding.accepted_by
     assert deviation is not None
-    return f"{deviation.reason}; approved by {deviation.approved_by}, until {deviation.until}"
+    return f"{str(deviation.reason).rstrip('. ')}; approved by {deviation.approved_by}, until {deviation.until}"
 
 
 def not_checked(result: CheckResult) -> Iterator[tuple[str, Coverage, str]]:

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Iterator, Sequence
 
-from loopdoc.exchange.escaping import for_line, for_markdown
+from loopdoc.exchange.escaping import as_code, for_markdown
 from loopdoc.exchange.findings import CAUTION, accepted_why, baseline_told, counted, not_checked, summary
 from loopdoc.register.place import Place
 from loopdoc.rules.finding import CheckResult, Finding, Level
@@ -31,7 +31,7 @@ def as_markdown(result: CheckResult, *, folder: str) -> str:
     unchecked = list(not_checked(result))
     if unchecked:
         lines += ["", "### Not checked", "", "| Rule | Places | Why |", "| --- | ---: | --- |"]
-        lines += [f"| {_code(rule)} | {entry.not_checked} | {for_markdown(why)} |" for rule, entry, why in unchecked]
+        lines += [f"| {as_code(rule)} | {entry.not_checked} | {for_markdown(why)} |" for rule, entry, why in unchecked]
     return "\n".join([*lines, "", CAUTION, ""])
 
 
@@ -41,12 +41,12 @@ def _table(
     yield f"| Place | Tag | Rule | Finding | {last} |"
     yield "| --- | --- | --- | --- | --- |"
     for finding in findings[:MAX_ROWS]:
-        where = [_code(f"{folder}{finding.place.file}:{finding.place.line}")]
-        where += [f"see {_code(_short(related.place, finding.place, folder))}" for related in finding.related]
+        where = [as_code(f"{folder}{finding.place.file}:{finding.place.line}")]
+        where += [f"see {_beside(related.place, finding.place, folder)}" for related in finding.related]
         cells = [
             "<br>".join(where),
             for_markdown(finding.tag),
-            _code(finding.rule),
+            as_code(finding.rule),
             for_markdown(finding.message),
             for_markdown(answer(finding)),
         ]
@@ -55,15 +55,5 @@ def _table(
         yield f"| | | | and {len(findings) - MAX_ROWS} more | |"
 
 
-def _short(place: Place, beside: Place, folder: str) -> str:
-    return f"line {place.line}" if place.file == beside.file else f"{folder}{place.file}:{place.line}"
-
-
-def _code(text: str) -> str:
-    """A code span that no backtick and no bar in the text can end; a mention in it is none."""
-    shown = for_line(text).replace("|", "\\|")
-    fence = "`"
-    while fence in shown:
-        fence += "`"
-    blank = " " if "`" in shown else ""
-    return f"{fence}{blank}{shown}{blank}{fence}"
+def _beside(place: Place, other: Place, folder: str) -> str:
+    return f"line {place.line}" if place.file == other.file else as_code(f"{folder}{place.file}:{place.line}")
