@@ -70,7 +70,7 @@ class JudgedRecord:
     @property
     def verdict(self) -> Verdict:
         """Fail where anything failed as it was left, not done where anything is lacking, else pass."""
-        return worst(part.final for part in (*self.readings, *self.functions))
+        return worst((*(one.final for one in self.readings), *(one.final for one in self.functions)))
 
     @property
     def corrected(self) -> tuple[JudgedReading, ...]:
