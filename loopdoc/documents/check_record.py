@@ -396,7 +396,7 @@ def _function_table(checks: LoopChecks, judged: JudgedRecord | None) -> Iterator
     rows = []
     for check in checks.functions:
         expect = check.expect or "Not stated in the register"
-        row = (check.key[0].upper() + check.key[1:], check.do, expect, "", "", "")
+        row: tuple[str, ...] = (check.key[0].upper() + check.key[1:], check.do, expect, "", "", "")
         if judged:
             one = done[check.key]
             last = f"{one.result} before a change" if one.changed else str(one.result)

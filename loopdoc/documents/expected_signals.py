@@ -3,11 +3,11 @@
 from __future__ import annotations
 
 import math
-import re
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 
 from loopdoc.documents.values import DASH
+from loopdoc.engineering.loop_check import command_pct, is_pt100, opening_pct, thermocouple_type
 from loopdoc.engineering.pairing import Plant, Route
 from loopdoc.engineering.scaling import (
     CHECK_POINTS_PCT,
@@ -18,13 +18,11 @@ from loopdoc.engineering.scaling import (
 )
 from loopdoc.engineering.thermocouple import thermocouple_emf_mv
 from loopdoc.register.model import FinalElement, Loop, Measurement, known
-from loopdoc.register.quantity import Range
 from loopdoc.register.units import UnitError, convert
 
 _SIGNAL_ENDS = {"4-20 mA": (4.0, 20.0, "mA"), "0-20 mA": (0.0, 20.0, "mA"), "1-5 V": (1.0, 5.0, "V")}
 """Analogue signals: what they are at 0 and at 100 %."""
 _DECIMALS = {"mA": 2, "V": 3}
-_THERMOCOUPLE = re.compile(r"\b[Tt]hermocouple,? (?:type )?(?P<kind>[BEJKNRST])\b")
 _SPEEDS = ("variable-speed drive", "motor")
 
 
@@ -88,41 +86,32 @@ def _sensor_row(measurement: Measurement, points: Sequence[CheckPoint]) -> Expec
     Thermocouples with the reference junction at 0 degC.
     """
     measured = known(measurement.range)
-    sensor = known(measurement.sensor) or ""
-    couple = _THERMOCOUPLE.search(sensor)
-    if measured is None or not (sensor.startswith("Pt100") or couple):
+    couple = thermocouple_type(measurement)
+    if measured is None or not (is_pt100(measurement) or couple):
         return None
     try:
         temperatures = [convert(point.value, measured.unit, "degC") for point in points]
-        if couple is None:
+        if not couple:
             ohms = tuple(f"{pt100_resistance_ohm(temperature):.2f}" for temperature in temperatures)
             return ExpectedRow("Pt100 resistance", "Ω", ohms)
-        emf = [thermocouple_emf_mv(couple["kind"], temperature) for temperature in temperatures]
+        emf = [thermocouple_emf_mv(couple, temperature) for temperature in temperatures]
     except (UnitError, ValueError):
         return None
-    return ExpectedRow(f"Type {couple['kind']} at 0\u00a0°C reference", "mV", tuple(_signed(f"{mv:.3f}") for mv in emf))
+    return ExpectedRow(f"Type {couple} at 0\u00a0°C reference", "mV", tuple(_signed(f"{mv:.3f}") for mv in emf))
 
 
 def _element_rows(element: FinalElement, route: Route) -> Iterator[ExpectedRow]:
     """Signal and opening of a final element at each step of the controller's output."""
-    commands = [_command_pct(step, route.branch) for step in CHECK_POINTS_PCT]
+    commands = [command_pct(step, route.branch) for step in CHECK_POINTS_PCT]
     signals = [100.0 - command if known(element.output_block) == "reversed" else command for command in commands]
     ends = _SIGNAL_ENDS.get(known(element.signal) or "")
     if ends:
         yield _signal_row(f"Signal to {element.tag}", ends, signals)
-    opens_on = known(element.opens_on)
-    if opens_on is not None:
-        openings = [signal if opens_on == "rising signal" else 100.0 - signal for signal in signals]
+    openings = [opening for step in CHECK_POINTS_PCT if (opening := opening_pct(step, element, route)) is not None]
+    if openings:
         kind = known(element.kind)
         what = "speed" if kind in _SPEEDS else "power" if kind == "heater bank" else "opening"
         yield ExpectedRow(f"{element.tag} {what}", "%", tuple(_plain(opening) for opening in openings))
-
-
-def _command_pct(output_pct: float, branch: Range | None) -> float:
-    """What a controller's output asks of one final element of a split range; the output itself elsewhere."""
-    if branch is None or branch.low == branch.high:
-        return output_pct
-    return min(100.0, max(0.0, 100.0 * (output_pct - branch.low) / (branch.high - branch.low)))
 
 
 def _signal_row(what: str, ends: tuple[float, float, str], percents: Sequence[float]) -> ExpectedRow:
