@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import datetime
-import os
 from collections.abc import Collection, Iterable, Iterator
 from dataclasses import replace
 from typing import Any
@@ -12,11 +11,12 @@ from loopdoc.engineering.dynamics import Dynamics
 from loopdoc.engineering.failure import FailureAnalysis
 from loopdoc.engineering.pairing import Plant
 from loopdoc.engineering.time_to_act import TimeToAct
-from loopdoc.register.model import Deviation, known
+from loopdoc.register.model import known
 from loopdoc.register.place import Fault
-from loopdoc.rules.catalogue import RULES
+from loopdoc.rules.acceptance import DeviationUse, accept, date
 from loopdoc.rules.baseline import with_paths
-from loopdoc.rules.finding import CheckResult, Coverage, Finding, Level
+from loopdoc.rules.catalogue import RULES
+from loopdoc.rules.finding import CheckResult, Coverage, Finding, Level, Ran
 from loopdoc.rules.policy import limits_from
 from loopdoc.rules.rule import Draft, NotApplicable, NotChecked, Rule
 from loopdoc.rules.subjects import Faults, Scope, name_of, place_of, tag_of
@@ -36,8 +36,9 @@ def check(
 ) -> CheckResult:
     """Check a plant by all rules, or by the ones named in ``only``.
 
-    ``faults`` are what the reader of the text found; they become findings of the rule `schema`. ``dynamics`` are
-    those of the plant, where whoever asks for the check needs them as well.
+    ``faults`` are what the reader of the text found; they become findings of the rule `schema`. ``today`` is the day
+    on which deviations are judged: the date of the revision where it is not given, so that a register says the same
+    whenever it is looked at. ``dynamics`` are those of the plant, where whoever asks for the check needs them as well.
     """
     register = plant.register
     scope = Scope(
@@ -49,18 +50,33 @@ def check(
         TimeToAct(plant),
         FailureAnalysis(plant),
     )
-    found: list[Finding] = []
-    coverage: dict[str, Coverage] = {}
-    for rule in rules:
-        if not only or rule.id in only:
-            coverage[rule.id] = Coverage()
-            found.extend(_findings(rule, scope, coverage[rule.id]))
-    accepted, still_open = _accept(with_paths(found, register.files), register.deviations, today or _today())
+    asked = [rule for rule in rules if not only or rule.id in only]
+    coverage = {rule.id: Coverage() for rule in asked}
+
+    def found(scope: Scope, *, on_deviations: bool) -> list[Finding]:
+        runs = [rule for rule in asked if (DeviationUse in rule.subjects) is on_deviations]
+        findings = [finding for rule in runs for finding in _findings(rule, scope, coverage[rule.id])]
+        return with_paths(findings, register.files)
+
+    outcome = accept(
+        found(scope, on_deviations=False),
+        register.deviations,
+        today or _date_of_revision(plant),
+        never=(INTERNAL,),
+        files={file.name: file for file in register.files},
+    )
+    # What came of the deviations is judged last, and by no deviation.
+    on_deviations = found(replace(scope, uses=outcome.uses, ran=Ran(coverage)), on_deviations=True)
     return CheckResult(
-        tuple(sorted(still_open, key=lambda finding: finding.order)),
-        tuple(sorted(accepted, key=lambda finding: finding.order)),
+        tuple(sorted((*outcome.still_open, *on_deviations), key=lambda finding: finding.order)),
+        tuple(sorted(outcome.accepted, key=lambda finding: finding.order)),
         coverage,
     )
+
+
+def _date_of_revision(plant: Plant) -> datetime.date | None:
+    revision = plant.register.revision
+    return date(known(revision.date)) if revision else None
 
 
 def _findings(rule: Rule, scope: Scope, counts: Coverage) -> Iterator[Finding]:
@@ -100,41 +116,6 @@ def _by_file(faults: Iterable[Fault]) -> Faults:
     for fault in faults:
         by_file.setdefault(fault.place.file, []).append(fault)
     return Faults({name: tuple(found) for name, found in by_file.items()})
-
-
-def _accept(
-    findings: list[Finding], deviations: tuple[Deviation, ...], today: datetime.date
-) -> tuple[list[Finding], list[Finding]]:
-    """Findings that a deviation in force accepts, and those that stay open."""
-    in_force = {
-        (known(deviation.rule), known(deviation.at)): deviation
-        for deviation in deviations
-        if known(deviation.approved_by) and (until := _date(known(deviation.until))) and until >= today
-    }
-    accepted, still_open = [], []
-    for finding in findings:
-        deviation = in_force.get((finding.rule, finding.tag))
-        if deviation is None or finding.rule == INTERNAL:
-            still_open.append(finding)
-        else:
-            accepted.append(replace(finding, accepted_by=deviation))
-    return accepted, still_open
-
-
-def _date(written: str | None) -> datetime.date | None:
-    try:
-        return datetime.date.fromisoformat(written) if written else None
-    except ValueError:
-        return None  # the schema has said so
-
-
-def _today() -> datetime.date:
-    """Today; or the day of SOURCE_DATE_EPOCH, so that a document can be made again as it was."""
-    epoch = os.environ.get("SOURCE_DATE_EPOCH", "")
-    try:
-        return datetime.datetime.fromtimestamp(int(epoch), datetime.UTC).date()
-    except (ValueError, OverflowError, OSError):  # not set, or no date
-        return datetime.date.today()
 
 
 def _internal_error(rule: Rule, subject: Any, error: Exception, scope: Scope) -> Finding:

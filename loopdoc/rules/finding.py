@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections import Counter
+from collections.abc import Mapping
 from dataclasses import dataclass, field
 from enum import IntEnum
 
@@ -45,6 +46,8 @@ class Finding:
     """The deviation that accepts it."""
     path: str = ""
     """Where it stands by keys, as `loops/TIC-2014/alarms/high`, which outlives moved lines and renamed files."""
+    touches: tuple[str, ...] = ()
+    """Of an accepted finding: every tag under which it or a related place stands, so that no document is without it."""
 
     @property
     def order(self) -> tuple[str, int, int, str, str]:
@@ -61,6 +64,14 @@ class Coverage:
     """Why it was not checked, in words, each with its count."""
     where: list[tuple[str, str]] = field(default_factory=list)
     """Tag and reason of each check that was not made."""
+
+
+@dataclass(frozen=True, slots=True)
+class Ran:
+    """What the rules of one check could look at, for the rules that judge what came of the others."""
+
+    coverage: Mapping[str, Coverage]
+    """By the id of each rule that was run."""
 
 
 @dataclass(frozen=True, slots=True)

@@ -1,11 +1,11 @@
-"""Rules on who commands whom, and in which mode."""
+"""Rules on who commands whom."""
 
 from __future__ import annotations
 
 from collections.abc import Iterator
 from itertools import pairwise
 
-from loopdoc.engineering.pairing import ControlledLoop, Plant
+from loopdoc.engineering.pairing import Plant
 from loopdoc.register.model import FinalElement, Function, Loop, known
 from loopdoc.register.place import Place
 from loopdoc.rules.finding import Level
@@ -13,8 +13,6 @@ from loopdoc.rules.rule import Draft, draft, need, only_if, rule
 
 _SEVERAL = ("high select", "low select", "sum")
 """Functions that are there to take in more than one commander."""
-_COMMANDING = ("automatic", "cascade")
-"""Modes in which a controller moves its own output."""
 
 
 @rule(level=Level.ERROR, source="common practice")
@@ -38,9 +36,9 @@ def pairing_cycle(plant: Plant) -> Iterator[Draft]:
             ring[0],
             f"the outputs run in a ring: {ring[0]} commands {round_again}" if others else "it commands itself",
             remedy="lead one of these outputs to the final element that it is to move",
-            at=_place_of_command(plant, *first),
+            at=place_of_command(plant, *first),
             related=tuple(
-                (_place_of_command(plant, tag, target), f"{tag} commands {target}") for tag, target in others
+                (place_of_command(plant, tag, target), f"{tag} commands {target}") for tag, target in others
             ),
         )
 
@@ -70,81 +68,67 @@ def pairing_two_primaries(commanded: Loop | FinalElement | Function, plant: Plan
         commanded.tag,
         f"commanded by {names}, and nothing chooses between them",
         remedy="lead them to a low select, a high select or a sum, and its result to this one",
-        at=_place_of_command(plant, second, commanded.tag),
+        at=place_of_command(plant, second, commanded.tag),
         related=tuple(
-            (_place_of_command(plant, tag, commanded.tag), f"{tag} commands it") for tag in commanders if tag != second
+            (place_of_command(plant, tag, commanded.tag), f"{tag} commands it") for tag in commanders if tag != second
         ),
     )
 
 
-@rule(level=Level.ERROR, source="common practice; cascade mode as in IEC 61804-2, MODE_BLK (from memory)")
-def mode_normal_conflict(secondary: ControlledLoop, plant: Plant) -> Iterator[Draft]:
-    """The normal modes of a primary and its secondary do not go together.
+@rule(level=Level.ERROR, source="common practice")
+def pairing_without_controller(commander: Loop | Function, plant: Plant) -> Iterator[Draft]:
+    """An output leads to a loop that has no controller.
 
     Why:
-        A primary in automatic over a secondary that is not in cascade commands nothing: its output tracks or
-        winds up while the operators believe that it controls. A secondary in cascade under nobody has no
-        setpoint.
+        An indicator takes no setpoint. The output moves nothing, and the controller that sends it winds up; most often
+        the output was to go to another loop, or the secondary's controller was never entered.
     Breaks:
-        TIC-2014 with `normal: automatic` over FIC-2011 with `normal: automatic`; FIC-2011 with
-        `normal: cascade` where no output leads to it.
+        TIC-2014 with `output: {to: FI-3004}`.
     Holds:
-        Under a primary whose normal mode is automatic or cascade, or under a function, the secondary's
-        normal mode is cascade; and a loop in cascade has a commander.
+        Every loop that is commanded has a `controller`.
     What this check cannot see:
-        The modes at start-up, which belong in the narrative.
+        A controller outside the register: enter it with its loop.
     """
-    modes = secondary.controller.modes
-    commanders = plant.commanders.get(secondary.tag, ())
-    if not commanders and modes is None:
-        return
-    written = need(modes, "the modes")
-    normal = need(written.normal, "the normal mode")
-    place = written.origin.place("normal")
-    if not commanders:
-        if normal == "cascade":
+    targets = plant.targets(commander.tag)
+    only_if(targets)
+    for target in targets:
+        loop = plant.register.loops.get(target)
+        if loop is not None and loop.controller is None:
             yield draft(
-                secondary.tag,
-                "its normal mode is cascade, but nothing commands it",
-                remedy=f"lead the output of its primary to {secondary.tag}, or write `normal: automatic`",
-                at=place,
+                commander.tag,
+                f"its output goes to {target}, which has no controller and takes no setpoint",
+                remedy=f"lead the output to the loop that is to follow, or write the controller of {target}",
+                at=place_of_command(plant, commander.tag, target),
+                related=((loop.origin.key(), f"{target}, an indicator"),),
             )
-        return
-    if normal == "cascade":
-        return
-    links = plant.links_to.get(secondary.tag, ())
-    commanding = next((link.primary for link in links if _normal_mode(link.primary) in _COMMANDING), None)
-    if commanding is not None:
+
+
+@rule(level=Level.WARNING, source="common practice")
+def final_element_unmoved(element: FinalElement, plant: Plant) -> Iterator[Draft]:
+    """No controller and no interlock moves a final element that is there to be set.
+
+    Why:
+        A control valve that nothing moves is most often one whose loop was given another tag, or one that was taken
+        out of use and left in the register; its loop sheet and its interlocks are then missing.
+    Breaks:
+        `FV-2012` of kind control valve, where no output and no action of an interlock names it.
+    Holds:
+        Every control valve, damper, drive and heater is the destination of an output or the subject of an interlock.
+        On-off valves and motors may be worked by hand from the operator station.
+    What this check cannot see:
+        A drive that runs at one speed for good: accept it by a deviation.
+    """
+    only_if(known(element.kind) in ("control valve", "damper", "variable-speed drive", "heater bank"))
+    if element.tag not in plant.commanders and element.tag not in plant.interlocked:
         yield draft(
-            secondary.tag,
-            f"its normal mode is {normal}, but {commanding.tag}, with normal mode {_normal_mode(commanding)}, "
-            "commands it; it follows in cascade only",
-            remedy=f"write `normal: cascade`, or another normal mode for {commanding.tag}",
-            at=place,
-            related=((_mode_place(commanding), f"the normal mode of {commanding.tag}"),),
+            element.tag,
+            f"it is a {known(element.kind)}, but no output leads to it and no interlock acts on it",
+            remedy="lead the output that moves it to this tag, or take it out of the register",
+            at=element.origin.key(),
         )
-    elif not links:
-        yield draft(
-            secondary.tag,
-            f"its normal mode is {normal}, but {commanders[0]} commands it; it follows in cascade only",
-            remedy="write `normal: cascade`",
-            at=place,
-            related=((_place_of_command(plant, commanders[0], secondary.tag), f"{commanders[0]} commands it"),),
-        )
-    for link in links:
-        need(need(link.primary.controller.modes, "the primary's modes").normal, "the primary's normal mode")
 
 
-def _normal_mode(controlled: ControlledLoop) -> str | None:
-    modes = known(controlled.controller.modes)
-    return known(modes.normal) if modes else None
-
-
-def _mode_place(controlled: ControlledLoop) -> Place:
-    return controlled.controller.origin.place("modes", "normal")
-
-
-def _place_of_command(plant: Plant, commander: str, target: str) -> Place:
+def place_of_command(plant: Plant, commander: str, target: str) -> Place:
     """Where a loop or a function says that it commands a tag."""
     loop = plant.register.loops.get(commander)
     if loop is not None:

@@ -39,6 +39,12 @@ class Limits:
         meaning="above this width a band of a split range in which two elements move is told",
         source="common practice",
     )
+    low_flow: float = _limit(
+        25.0,
+        unit="% of the range",
+        meaning="below this part of its range a flow measured by differential pressure is called poorly resolved",
+        source="common practice: a turndown of 4 to 1; figures run from 25 to 30 %",
+    )
     cascade_speed_ratio: float = _limit(
         4.0,
         unit="crossover of the secondary per crossover of the primary",

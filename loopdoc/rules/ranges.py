@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
-from itertools import pairwise
 
 from loopdoc.engineering.demand import Demand, demand
 from loopdoc.engineering.direction import Undecided
@@ -373,65 +372,49 @@ def _excess(asked: Range, band: Range) -> str:
     return " and ".join(parts)
 
 
-@rule(level=Level.WARNING, source="common practice; see policy split_range_gap")
-def split_range_gap(function: Function, limits: Limits) -> Iterator[Draft]:
-    """A band of a split range's output moves no final element.
+# ---------------------------------------------------------------- resolution
+
+_BY_PRESSURE = ("orifice", "venturi", "nozzle", "wedge", "pitot", "cone meter")
+"""Primary elements that measure flow by a differential pressure, as they stand in `element`."""
+
+
+@rule(level=Level.WARNING, source="common practice (turndown of a flow meter); see policy low_flow")
+def operating_poor_resolution(loop: Loop, limits: Limits) -> Iterator[Draft]:
+    """A flow is to be held where its differential pressure is too small to measure it.
 
     Why:
-        Inside the band the controller integrates and nothing happens: the loop has a dead zone, and the
-        measurement drifts across it before the next valve answers.
+        The differential pressure goes with the square of the flow: at 25 % of the range it is 6 % of its own span,
+        and an error of 0.1 % of that span, which is 0.05 % of the flow at the top, is 0.8 % of the flow there. Below
+        about a quarter of the range the controller follows noise, and a total reckoned from it is wrong.
     Breaks:
-        `outputs: {PV-3001A: 60 to 100 %, PV-3001B: 40 to 0 %}`: between 40 and 60 % both valves stand still.
+        `operating: {low: 3 t/h}` on an orifice plate of 0 to 15 t/h, 20 % of the range.
     Holds:
-        The branches meet (`50 to 100 %` and `50 to 0 %`), or leave no more than the policy allows.
+        The lowest operating value of such a meter lies at or above `low_flow` of its range. Meters of another
+        principle are not judged.
     What this check cannot see:
-        A gap that is wanted, so that two opposed valves are never open together: accept it by a deviation.
+        A second transmitter for the low range, or a meter whose maker promises a wider turndown.
     """
-    only_if(known(function.kind) == "split range" and len(function.outputs) > 1)
-    for (lower, _, top), (upper, bottom, _) in pairwise(_branches(function)):
-        if above(bottom - top, limits.split_range_gap):
+    measurement = known(loop.measurement)
+    element = (known(measurement.element) or "").casefold() if measurement else ""
+    only_if(
+        measurement
+        and known(measurement.variable) == "flow"
+        and (known(measurement.characteristic) == "square root" or any(word in element for word in _BY_PRESSURE))
+    )
+    band = measured_range(loop)
+    operating = need(loop.operating, "the operating band")
+    key = "low" if operating.low is not None else "normal"
+    need(getattr(operating, key), f"the operating {key}")
+    for lowest in readings(operating, (key,), scale_in(band.unit, loop), "operating"):
+        share = 100 * (lowest.value - band.low) / band.span
+        if below(share, limits.low_flow):
+            most = amount(band.low + 100 * (lowest.value - band.low) / limits.low_flow, band.unit)
             yield draft(
-                function.tag,
-                f"between {top:g} and {bottom:g} % of the output neither {lower} nor {upper} moves",
-                remedy=f"let {upper} begin where {lower} ends, or accept the gap by a deviation with its reason",
-                at=function.origin.place("outputs", upper),
-                related=((function.origin.place("outputs", lower), f"where {lower} ends"),),
+                loop.tag,
+                f"operating {lowest.name}, {lowest.told}, is {share:.3g} % of the range, {band}, where the "
+                f"differential pressure is {max(share, 0) ** 2 / 100:.2g} % of its own; "
+                f"the limit is {limits.low_flow:g} %",
+                remedy=f"let the range end at {most}, add a transmitter for low flow, or choose another kind of meter",
+                at=lowest.place,
+                related=((range_place(loop), f"the measurement range, {band}"),),
             )
-
-
-@rule(level=Level.WARNING, source="common practice; see policy split_range_overlap")
-def split_range_overlap(function: Function, limits: Limits) -> Iterator[Draft]:
-    """Two final elements of a split range move together over a band of the output.
-
-    Why:
-        Where the branches overlap both elements move: the gain of the loop is the sum of the two there, and two
-        opposed valves work against each other.
-    Breaks:
-        `outputs: {PV-3001A: 40 to 100 %, PV-3001B: 60 to 0 %}`: between 40 and 60 % both move.
-    Holds:
-        The branches meet, or overlap by no more than the policy allows.
-    What this check cannot see:
-        An overlap that is wanted, as to keep a small valve from shutting before the large one opens: accept it by
-        a deviation.
-    """
-    only_if(known(function.kind) == "split range" and len(function.outputs) > 1)
-    for (lower, _, top), (upper, bottom, _) in pairwise(_branches(function)):
-        if above(top - bottom, limits.split_range_overlap):
-            yield draft(
-                function.tag,
-                f"between {bottom:g} and {top:g} % of the output {lower} and {upper} both move",
-                remedy=f"let {upper} begin where {lower} ends, or accept the overlap by a deviation with its reason",
-                at=function.origin.place("outputs", upper),
-                related=((function.origin.place("outputs", lower), f"where {lower} ends"),),
-            )
-
-
-def _branches(function: Function) -> list[tuple[str, float, float]]:
-    """The branches of a split range in order: element, and the output in percent over which it moves."""
-    found = []
-    for element, branch in function.outputs.items():
-        if branch.unit.kind != "fraction":
-            not_checked(f"the branch of {element} is not in percent of the output")
-        span = branch.to("%")
-        found.append((element, min(span.low, span.high), max(span.low, span.high)))
-    return sorted(found, key=lambda one: one[1:])

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Iterable, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Any
 
 from loopdoc.engineering.dynamics import Dynamics
@@ -13,7 +13,10 @@ from loopdoc.engineering.time_to_act import TimeToAct
 from loopdoc.register.model import FinalElement, Function, HeldValue, Instrument, Interlock, Loop, PlantUnit
 from loopdoc.register.place import Fault, Place
 from loopdoc.register.text import TextFile
+from loopdoc.rules.acceptance import DeviationUse
+from loopdoc.rules.finding import Ran
 from loopdoc.rules.policy import Limits
+from loopdoc.rules.prose import KnownTags, Prose, known_tags, proses
 from loopdoc.rules.references import DefinedTag, Reference, defined_tags, references
 
 
@@ -35,6 +38,9 @@ class Scope:
     dynamics: Dynamics
     times: TimeToAct
     failures: FailureAnalysis
+    uses: tuple[DeviationUse, ...] = ()
+    """What became of each deviation; none before the other rules have been run."""
+    ran: Ran = field(default_factory=lambda: Ran({}))
 
 
 SUBJECTS: Mapping[type, Callable[[Scope], Iterable[Any]]] = {
@@ -42,7 +48,9 @@ SUBJECTS: Mapping[type, Callable[[Scope], Iterable[Any]]] = {
     Plant: lambda scope: (scope.plant,),
     DefinedTag: lambda scope: defined_tags(scope.plant.register),
     Reference: lambda scope: references(scope.plant, scope.rule_ids),
+    Prose: lambda scope: proses(scope.plant.register),
     HeldValue: lambda scope: scope.plant.register.holds,
+    DeviationUse: lambda scope: scope.uses,
     Loop: lambda scope: scope.plant.register.loops.values(),
     ControlledLoop: lambda scope: scope.plant.controlled.values(),
     CascadeLink: lambda scope: scope.plant.links,
@@ -60,6 +68,8 @@ BESIDES: Mapping[type, Callable[[Scope], Any]] = {
     Plant: lambda scope: scope.plant,
     Limits: lambda scope: scope.limits,
     Faults: lambda scope: scope.faults,
+    KnownTags: lambda scope: known_tags(scope.plant.register),
+    Ran: lambda scope: scope.ran,
     Dynamics: lambda scope: scope.dynamics,
     TimeToAct: lambda scope: scope.times,
     FailureAnalysis: lambda scope: scope.failures,
@@ -104,7 +114,7 @@ def place_of(subject: Any, plant: Plant) -> Place:
     match subject:
         case TextFile():
             return subject.place(())
-        case DefinedTag() | Reference() | HeldValue():
+        case DefinedTag() | Reference() | HeldValue() | Prose():
             return subject.place
         case _:
             return plant.register.defined_at(tag_of(subject)) or plant.register.root.place(())
