@@ -11,6 +11,9 @@ from loopdoc.engineering.comparison import Comparison, NotSimulated, compare
 from loopdoc.engineering.dynamics import ChainDynamics, Dynamics
 from loopdoc.engineering.pairing import Plant
 from loopdoc.engineering.time_to_act import TimeToAct
+from loopdoc.register.load import Loaded
+from loopdoc.register.records import LoopRecord
+from loopdoc.rules.check import check
 from loopdoc.rules.finding import CheckResult
 
 
@@ -21,8 +24,10 @@ class Basis:
     plant: Plant
     result: CheckResult
     sources: Mapping[str, bytes]
-    """Content of the register's files by name."""
+    """Content of the register's files by name, the root file first."""
     dynamics: Dynamics
+    records: Mapping[str, tuple[LoopRecord, ...]] = field(default_factory=dict)
+    """Results of loop checks kept beside the register, by tag, each loop's oldest first."""
     times: TimeToAct = field(init=False)
     """From alarm to trip under each upset, calculated at the first question."""
     _compared: dict[ChainDynamics, Comparison | NotSimulated] = field(default_factory=dict, repr=False)
@@ -52,6 +57,13 @@ class Basis:
             self.plant, self.result, self.sources,
             kind=kind, code=code, title=title, supplementary_title=supplementary_title, unit=unit, serial=serial,
         )  # fmt: skip
+
+
+def basis_of(loaded: Loaded, records: Mapping[str, tuple[LoopRecord, ...]] | None = None) -> Basis:
+    """A register as read, resolved, checked and made ready to be calculated with, and the results of loop checks."""
+    plant = Plant(loaded.register)
+    dynamics = Dynamics(plant)
+    return Basis(plant, check(plant, loaded.faults, dynamics=dynamics), loaded.sources, dynamics, records or {})
 
 
 @dataclass(frozen=True, slots=True)

@@ -4,16 +4,18 @@ from __future__ import annotations
 
 import os
 import tempfile
-from collections.abc import Callable, Collection, Iterator
+from collections.abc import Callable, Collection, Iterator, Sequence
 from concurrent.futures import ProcessPoolExecutor
 from dataclasses import dataclass
 from pathlib import Path
 
 from loopdoc.documents.basis import Basis, Page
+from loopdoc.documents.check_record import check_records
+from loopdoc.documents.enclosures import enclosures
 from loopdoc.documents.index import index_page
 from loopdoc.documents.loop_sheet import loop_sheets
 from loopdoc.documents.narrative import narratives
-from loopdoc.documents.pdf import ensure_available, to_pdf
+from loopdoc.documents.pdf import Enclosure, ensure_available, to_pdf
 from loopdoc.documents.rendering import render, web_style_sheet
 from loopdoc.documents.responses import responses, supplements
 
@@ -21,6 +23,7 @@ KINDS: dict[str, Callable[[Basis], Iterator[Page]]] = {
     "narrative": lambda basis: narratives(basis, supplements(basis)),
     "loop-sheet": loop_sheets,
     "response": responses,
+    "check-record": check_records,
 }
 """Document kinds by the name that `loopdoc issue --documents` takes."""
 
@@ -59,7 +62,8 @@ def issue(
     """
     if "pdf" in formats:
         ensure_available()
-    pages = [page for kind in KINDS if kind in kinds for page in KINDS[kind](basis)]
+    issued = [(kind, page) for kind in KINDS if kind in kinds for page in KINDS[kind](basis)]
+    pages = [page for _, page in issued]
     files: list[str] = []
     done, total = 0, len(pages) * len(formats)
     if "html" in formats:
@@ -73,8 +77,7 @@ def issue(
             progress(done, total)
     if "pdf" in formats:
         names = [f"{page.folder}/{page.name}.pdf" for page in pages]
-        sources = (_html(page, stylesheet="") for page in pages)
-        for name, content in zip(names, _pdfs(sources, jobs), strict=True):
+        for name, content in zip(names, _pdfs(basis, issued, jobs), strict=True):
             write_whole(out / name, content)
             files.append(name)
             done += 1
@@ -90,12 +93,27 @@ def _html(page: Page, *, stylesheet: str) -> str:
     return render(page.template, document=page.document, stylesheet=stylesheet, **page.view)
 
 
-def _pdfs(sources: Iterator[str], jobs: int) -> Iterator[bytes]:
+def pdf_of(basis: Basis, kind: str, page: Page) -> bytes:
+    """One document as PDF/A with the register inside."""
+    return _to_pdf(_pdf_source(basis, kind, page))
+
+
+def _pdfs(basis: Basis, issued: Sequence[tuple[str, Page]], jobs: int) -> Iterator[bytes]:
+    sources = (_pdf_source(basis, kind, page) for kind, page in issued)
     if jobs == 1:
-        yield from map(to_pdf, sources)
+        yield from map(_to_pdf, sources)
         return
     with ProcessPoolExecutor(jobs) as pool:
-        yield from pool.map(to_pdf, sources, chunksize=FILES_PER_BATCH)
+        yield from pool.map(_to_pdf, sources, chunksize=FILES_PER_BATCH)
+
+
+def _pdf_source(basis: Basis, kind: str, page: Page) -> tuple[str, tuple[Enclosure, ...], str]:
+    return _html(page, stylesheet=""), enclosures(basis, kind, page), page.document.dated
+
+
+def _to_pdf(source: tuple[str, tuple[Enclosure, ...], str]) -> bytes:
+    html, enclosed, dated = source
+    return to_pdf(html, enclosed, dated=dated)
 
 
 def write_whole(path: Path, content: bytes) -> None:

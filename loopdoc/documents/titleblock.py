@@ -5,6 +5,7 @@ from __future__ import annotations
 import hashlib
 from collections.abc import Mapping
 from dataclasses import dataclass
+from datetime import date
 
 from loopdoc import __version__
 from loopdoc.documents.values import DASH, shown
@@ -49,6 +50,8 @@ class Document:
     revision: RevisionRow
     history: tuple[RevisionRow, ...]
     """Latest revision first."""
+    dated: str
+    """ISO date of the revision; empty where the register gives none. The date of the file, not that of the clock."""
     fingerprint: str
     """First 12 hexadecimal digits of the register's SHA-256."""
     check_state: str
@@ -94,6 +97,7 @@ def document(
         number=register.numbering.replace("{unit}", unit).replace("{kind}", code).replace("{serial}", serial),
         revision=_row(revision),
         history=tuple(_row(entry) for entry in ((revision,) if revision else ()) + tuple(reversed(register.history))),
+        dated=_iso_date(known(revision.date) if revision else None),
         fingerprint=fingerprint(sources)[:12],
         check_state=check_state(plant, result),
         draft=draft_reason(plant, result),
@@ -128,6 +132,13 @@ def draft_reason(plant: Plant, result: CheckResult) -> str:
     if plant.register.holds and status not in HOLDS_PERMITTED:
         return f"holds open at status {status or 'unknown'}"
     return ""
+
+
+def _iso_date(written: str | None) -> str:
+    try:
+        return date.fromisoformat(written).isoformat() if written else ""
+    except ValueError:
+        return ""
 
 
 def _row(revision: Revision | None) -> RevisionRow:

@@ -72,6 +72,11 @@ def located(path: Path) -> tuple[Path, str]:
     return (path.parent, path.name) if path.is_file() else (path, ROOT_NAME)
 
 
+def is_register(path: Path) -> bool:
+    """Whether a path names a register: its folder, or a root file."""
+    return (path / ROOT_NAME).is_file() or (path.is_file() and path.suffix in (".yaml", ".yml"))
+
+
 def matching(pattern: str, names: Iterable[str]) -> list[str]:
     """The names that a pattern of `include` matches, as a folder's `glob` finds and orders them."""
     parts = PurePosixPath(pattern).parts

@@ -1,0 +1,169 @@
+"""Is this PDF what the register says? Read back from what every issued PDF carries inside.
+
+A file that still has the bytes which its own register gives has been altered nowhere, on no page. Files bear no
+signature: who made one from a register of his own cannot be told from its owner. That is said with every answer.
+"""
+
+from __future__ import annotations
+
+import io
+import json
+import logging
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass, fields
+from enum import Enum
+
+import pypdf
+from pypdf.errors import PyPdfError
+
+from loopdoc import __version__
+from loopdoc.documents.basis import Basis, basis_of
+from loopdoc.documents.enclosures import REGISTER_FOLDER, STATEMENT_NAME, Statement, statement
+from loopdoc.documents.issue import KINDS, pdf_of
+from loopdoc.documents.titleblock import fingerprint
+from loopdoc.register.files import HeldFiles
+from loopdoc.register.load import Unreadable, load_files
+
+# What a damaged file lacks is answered here, and need not be told on the terminal as well.
+logging.getLogger("pypdf").setLevel(logging.CRITICAL)
+
+MAX_BYTES = 200_000_000
+"""A larger file is not one of ours."""
+
+
+@dataclass(frozen=True, slots=True)
+class Enclosed:
+    """What a PDF carries inside."""
+
+    statement: Statement
+    sources: Mapping[str, bytes]
+    """Files of the register by name, the root file first."""
+
+
+@dataclass(frozen=True, slots=True)
+class NotIssued:
+    """Why a file is none that loopdoc issued, or can no longer be read as one."""
+
+    reason: str
+
+
+class Answer(Enum):
+    """Answer to one question about a file."""
+
+    YES = "yes"
+    NO = "no"
+    NOT_CHECKED = "not checked"
+
+
+@dataclass(frozen=True, slots=True)
+class Attested:
+    """What was found out about one file."""
+
+    statement: Statement
+    register_whole: Answer
+    pages_unaltered: Answer
+    current: Answer
+    """Whether the register given says what the document says; not checked without a register."""
+    remarks: tuple[str, ...]
+    """The reasons, one for each answer that is not yes."""
+
+
+def enclosed_in(content: bytes) -> Enclosed | NotIssued:
+    """What an issued PDF carries."""
+    try:
+        attachments = pypdf.PdfReader(io.BytesIO(content)).attachments
+        files = {name: attachments[name][0] for name in attachments}
+        told = json.loads(files.pop(STATEMENT_NAME))
+        found = Statement(**{field.name: str(told[field.name]) for field in fields(Statement)})
+    # A file from outside may be damaged anywhere, and the reader has an exception for each way.
+    except (PyPdfError, KeyError, ValueError, TypeError, AttributeError, IndexError, RecursionError, OSError):
+        return NotIssued("it is no PDF that loopdoc issued, or is damaged: it states no register")
+    sources = {
+        name.removeprefix(REGISTER_FOLDER): body for name, body in files.items() if name.startswith(REGISTER_FOLDER)
+    }
+    if found.root not in sources:
+        return NotIssued(f"the register's file `{found.root}` is missing in it")
+    return Enclosed(found, {found.root: sources.pop(found.root), **sources})
+
+
+class Attestation:
+    """Attests files, one register and its pages being worked out once for all of them."""
+
+    def __init__(self, register: Basis | None = None) -> None:
+        self._register = register
+        self._current: dict[str, dict[tuple[str, str], Statement]] = {}
+        self._issued_from: dict[str, Basis | Unreadable] = {}
+
+    def attest(self, content: bytes) -> Attested | NotIssued:
+        """Find out about one file.
+
+        Raises
+        ------
+        PdfError
+            PDF cannot be made on this machine, so that pages cannot be compared.
+        """
+        if len(content) > MAX_BYTES:
+            return NotIssued(f"it is larger than {MAX_BYTES // 1_000_000} MB")
+        enclosed = enclosed_in(content)
+        if isinstance(enclosed, NotIssued):
+            return enclosed
+        questions: tuple[Callable[[Enclosed, bytes], tuple[Answer, str]], ...] = (
+            self._register_whole,
+            self._pages_unaltered,
+            self._still_current,
+        )
+        answers = [ask(enclosed, content) for ask in questions]
+        (whole, _), (unaltered, _), (current, _) = answers
+        return Attested(enclosed.statement, whole, unaltered, current, tuple(why for _, why in answers if why))
+
+    def _register_whole(self, enclosed: Enclosed, content: bytes) -> tuple[Answer, str]:
+        if fingerprint(enclosed.sources) == enclosed.statement.fingerprint:
+            return Answer.YES, ""
+        return Answer.NO, "the register inside is not the one whose fingerprint the document states"
+
+    def _pages_unaltered(self, enclosed: Enclosed, content: bytes) -> tuple[Answer, str]:
+        told = enclosed.statement
+        if told.program != f"loopdoc {__version__}":
+            reason = f"it was issued by {told.program}, and only that version makes the same bytes again"
+            return Answer.NOT_CHECKED, reason
+        basis = self._basis_of(enclosed)
+        if isinstance(basis, Unreadable):
+            return Answer.NO, "the register inside cannot be read"
+        pages = KINDS[told.kind](basis) if told.kind in KINDS else ()
+        page = next((page for page in pages if (page.folder, page.name) == (told.folder, told.name)), None)
+        if page is None:
+            return Answer.NO, "the register inside gives no such document"
+        if pdf_of(basis, told.kind, page) == content:
+            return Answer.YES, ""
+        return Answer.NO, "its bytes are not those that the register inside gives: it was altered or saved anew"
+
+    def _basis_of(self, enclosed: Enclosed) -> Basis | Unreadable:
+        key = fingerprint(enclosed.sources)
+        if key not in self._issued_from:
+            loaded = load_files(HeldFiles(enclosed.sources), enclosed.statement.root)
+            self._issued_from[key] = loaded if isinstance(loaded, Unreadable) else basis_of(loaded)
+        return self._issued_from[key]
+
+    def _still_current(self, enclosed: Enclosed, content: bytes) -> tuple[Answer, str]:
+        told = enclosed.statement
+        if self._register is None:
+            return Answer.NOT_CHECKED, ""
+        now = self._statements(self._register, told.kind).get((told.folder, told.name))
+        if now is None:
+            return Answer.NO, "the register no longer has what this document tells of"
+        if now.fingerprint == told.fingerprint or now.content == told.content:
+            return Answer.YES, ""
+        if told.program != now.program:
+            return Answer.NOT_CHECKED, f"it was issued by {told.program}, which may word the same facts otherwise"
+        if now.revision != told.revision:
+            return Answer.NO, f"stale: the register is at revision {now.revision}, the document at {told.revision}"
+        return Answer.NO, f"stale: the register has changed since, still at revision {now.revision}"
+
+    def _statements(self, register: Basis, kind: str) -> Mapping[tuple[str, str], Statement]:
+        """What the register given would state in every document of a kind."""
+        if kind not in self._current:
+            self._current[kind] = {
+                (page.folder, page.name): statement(kind, page, register.sources)
+                for page in (KINDS[kind](register) if kind in KINDS else ())
+            }
+        return self._current[kind]

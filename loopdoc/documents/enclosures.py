@@ -1,0 +1,86 @@
+"""What an issued PDF carries inside: the register that it was made from, and a statement of what it is.
+
+`loopdoc attest` reads them back: a document handed over years ago still tells which register it said the truth of.
+"""
+
+from __future__ import annotations
+
+import hashlib
+import json
+from collections.abc import Mapping
+from dataclasses import asdict, dataclass, replace
+
+from loopdoc import __version__
+from loopdoc.documents.basis import Basis, Page
+from loopdoc.documents.pdf import Enclosure
+from loopdoc.documents.rendering import render
+from loopdoc.documents.titleblock import fingerprint
+
+STATEMENT_NAME = "loopdoc.json"
+REGISTER_FOLDER = "register/"
+"""Before the names of the register's files, so that none of them can be taken for the statement."""
+
+
+@dataclass(frozen=True, slots=True)
+class Statement:
+    """What a PDF says of itself."""
+
+    root: str
+    """Name of the register's root file."""
+    folder: str
+    """Folder of the document among those issued with it, such as `loop-sheets`."""
+    name: str
+    """File name without its ending."""
+    kind: str
+    """Kind of document as `loopdoc issue --documents` takes it."""
+    number: str
+    title: str
+    revision: str
+    date: str
+    status: str
+    draft: str
+    """Why it is a draft; empty where it is not."""
+    fingerprint: str
+    """SHA-256 of the register, all 64 hexadecimal digits."""
+    content: str
+    """SHA-256 of what the document says, without the register's fingerprint and the state of its check."""
+    program: str
+
+
+def statement(kind: str, page: Page, sources: Mapping[str, bytes]) -> Statement:
+    """What a document issued from these files, the root file first, says of itself."""
+    document = page.document
+    return Statement(
+        root=next(iter(sources)),
+        folder=page.folder,
+        name=page.name,
+        kind=kind,
+        number=document.number,
+        title=document.title,
+        revision=document.revision.code,
+        date=document.revision.date,
+        status=document.revision.status,
+        draft=document.draft,
+        fingerprint=fingerprint(sources),
+        content=_content(page),
+        program=f"loopdoc {__version__}",
+    )
+
+
+def enclosures(basis: Basis, kind: str, page: Page) -> tuple[Enclosure, ...]:
+    """The register's files and the statement of one document."""
+    told = json.dumps(asdict(statement(kind, page, basis.sources)), indent=2, ensure_ascii=False) + "\n"
+    return (
+        *(
+            Enclosure(REGISTER_FOLDER + name, basis.sources[name], "application/yaml", f"Register file {name}")
+            for name in sorted(basis.sources)
+        ),
+        Enclosure(STATEMENT_NAME, told.encode(), "application/json", "What this document is and was made from"),
+    )
+
+
+def _content(page: Page) -> str:
+    """A change elsewhere in the register alters the fingerprint and the check, not what this document says."""
+    document = replace(page.document, fingerprint="", check_state="", generator="")
+    html = render(page.template, document=document, stylesheet="", **page.view)
+    return hashlib.sha256(html.encode()).hexdigest()

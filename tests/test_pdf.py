@@ -1,0 +1,84 @@
+"""Every issued PDF against PDF/A-3a and PDF/UA-1: by an independent validator, and by its structure."""
+
+from __future__ import annotations
+
+import io
+import re
+from collections.abc import Iterator
+from pathlib import Path
+
+import page as validator
+import pypdf
+import pytest
+
+from loopdoc.documents.basis import Basis, basis_of
+from loopdoc.documents.issue import KINDS, pdf_of
+from loopdoc.register.load import Loaded, load
+
+ROOT = Path(__file__).parent.parent
+
+
+def documents() -> Iterator[tuple[str, bytes]]:
+    """Of both examples, the first two documents of each kind."""
+    for example in ("tarn-hollow", "tennessee-eastman"):
+        loaded = load(ROOT / "examples" / example)
+        assert isinstance(loaded, Loaded)
+        basis: Basis = basis_of(loaded)
+        for kind, pages in KINDS.items():
+            for _, page in zip(range(2), pages(basis), strict=False):
+                yield f"{example} {page.folder}/{page.name}", pdf_of(basis, kind, page)
+
+
+@pytest.fixture(scope="module")
+def issued() -> dict[str, bytes]:
+    return dict(documents())
+
+
+def stream_lengths(content: bytes) -> Iterator[tuple[int, bytes]]:
+    """Stated length of each stream, and what stands after so many bytes."""
+    for found in re.finditer(rb"/Length (\d+)[^\0]{0,200}?>>\s*stream\r?\n", content):
+        length = int(found[1])
+        yield length, content[found.end() + length : found.end() + length + 12]
+
+
+@pytest.mark.parametrize("profile", [validator.ValidationProfile.PDF_A_3A, validator.ValidationProfile.PDF_UA_1])
+def test_the_validator_finds_nothing(issued: dict[str, bytes], profile: validator.ValidationProfile) -> None:
+    for name, content in issued.items():
+        report = validator.validate_pdf_bytes(content, profile=profile)
+        # Version 0.11 counts a carriage return that ends compressed data as an end of line; the next test counts.
+        failures = [one for one in report.failures if not one.rule_id.endswith("STREAM-LENGTH-001")]
+        assert not failures, (name, [(one.rule_id, one.message) for one in failures])
+
+
+def test_every_stream_is_as_long_as_it_states(issued: dict[str, bytes]) -> None:
+    for name, content in issued.items():
+        lengths = list(stream_lengths(content))
+        assert len(lengths) > 5, name
+        assert all(after.startswith(b"\nendstream") for _, after in lengths), name
+
+
+def test_the_register_is_inside_once_as_source(issued: dict[str, bytes]) -> None:
+    for name, content in issued.items():
+        example = name.split()[0]
+        folder = ROOT / "examples" / example
+        catalog = pypdf.PdfReader(io.BytesIO(content)).trailer["/Root"]
+        files = [entry.get_object() for entry in catalog["/AF"]]
+        names = [file["/UF"] for file in files]
+        assert len(names) == len(set(names))
+        for file in files:
+            assert file["/AFRelationship"] == "/Source"
+            embedded = file["/EF"]["/F"].get_object()
+            if file["/UF"].startswith("register/"):
+                assert embedded["/Subtype"] == "/application/yaml"
+                assert embedded.get_data() == (folder / file["/UF"].removeprefix("register/")).read_bytes()
+            else:
+                assert (file["/UF"], embedded["/Subtype"]) == ("loopdoc.json", "/application/json")
+        held = {path.relative_to(folder).as_posix() for path in folder.rglob("*.yaml")}
+        assert {name.removeprefix("register/") for name in names} - {"loopdoc.json"} == held
+
+
+def test_narratives_have_bookmarks(issued: dict[str, bytes]) -> None:
+    narratives = [content for name, content in issued.items() if "narratives/" in name]
+    for content in narratives:
+        outline = pypdf.PdfReader(io.BytesIO(content)).outline
+        assert len([entry for entry in outline if not isinstance(entry, list)]) >= 1
