@@ -69,6 +69,7 @@ loops:
       rate: 0 s
       derivative_filter: 10
       setpoint_weight: 1
+      rate_on: measurement
       interval: 1 s
       setpoint: {low: 78 degC, normal: 84.5 degC, high: 92 degC}
       output: {to: FIC-2011, span: 0 to 12 t/h, low: 2 t/h, high: 10.5 t/h}
@@ -113,6 +114,9 @@ functions:
             span: 0.2 to 0.8, normal: 0.45}
   LY-3001: {kind: sum, inputs: [FT-3002], weights: {FT-3002: 1.0}, to: FIC-3001}
   PY-3001: {kind: split range, outputs: {PV-3001A: 50 to 100 %, PV-3001B: 50 to 0 %}}
+  FY-3002: {kind: lead-lag, inputs: [FT-3002], lead: 30 s, lag: 10 s, to: LY-3001}
+  FY-3003: {kind: characteriser, to: FIC-3001, normal_input: 45 %,
+            curve: [{at: 0 %, gives: 0 t/h}, {at: 100 %, gives: 12 t/h}]}
 interlocks:
   IS-2001:
     unit: "20"
@@ -292,6 +296,7 @@ CLASSES = {
     "loop": model.Loop,
     "final_element": model.FinalElement,
     "function": model.Function,
+    "curve_point": model.CurvePoint,
     "initiator": model.Initiator,
     "action": model.InterlockAction,
     "bypass": model.Bypass,
@@ -455,8 +460,8 @@ SAID = {
     loop("controller: {dead-time: 2 s}"): (
         "6:18", "`dead-time` is not a key of the controller",
         "write one of `action`, `form`, `gain`, `proportional_band`, `reset`, `repeats`, `rate`, `derivative_filter`, "
-        "`setpoint_weight`, `interval`, `setpoint`, `output`, `modes`, `on_bad_measurement` or `when_not_followed`, "
-        "or remove it"),
+        "`setpoint_weight`, `rate_on`, `interval`, `setpoint`, `output`, `modes`, `on_bad_measurement` or "
+        "`when_not_followed`, or remove it"),
     loop("process: {dead-time: 2 s}"): ("6:15", "`dead-time` is not a key of the process", "write `dead_time`"),
     loop('"hazard ": high'): ("6:5", "the key `hazard` has a stray space", "write `hazard`"),
     loop("'x` \u00e9': 1"): (

@@ -16,6 +16,7 @@ from typing import Any, TypeVar, Union, cast, get_args, get_origin, get_type_hin
 from loopdoc.register.files import ROOT_NAME, Files, FolderFiles, included, located, read_file
 from loopdoc.register.model import (
     Alarm,
+    CurvePoint,
     Deviation,
     Disturbance,
     FinalElement,
@@ -288,8 +289,26 @@ class _Reader:
             weights=weights,
             outputs=outputs,
             span=self._ratio_span(origin, value),
+            curve=self._curve(origin, value),
         )
         return function if isinstance(function, Function) else None
+
+    def _curve(self, origin: Origin, value: Any) -> tuple[CurvePoint, ...] | Hold:
+        """The points of a characteriser's curve; a hold where one of them is not known."""
+        written = value.get("curve")
+        if written is None:
+            return ()
+        if isinstance(written, dict) and "hold" in written:
+            return Hold(str(written["hold"]))
+        if not isinstance(written, list):
+            return _UNREADABLE
+        points = []
+        for index, entry in enumerate(written):
+            point = self._part(Origin(origin.source, (*origin.path, "curve", index)), entry, CurvePoint)
+            if isinstance(point, Hold):
+                return point
+            points.append(point)
+        return tuple(points)
 
     def _ratio_span(self, origin: Origin, value: Any) -> Range | Hold | None:
         """The span of a ratio setting: two numbers, as a rule without a unit."""

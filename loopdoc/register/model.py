@@ -171,6 +171,8 @@ class Controller(Part):
     """Ratio of the rate time to the time constant of its filter; 10 where not given (common practice)."""
     setpoint_weight: float | Hold | None
     """Weight of the setpoint in the proportional part; 1 where not given."""
+    rate_on: str | Hold | None
+    """What the rate acts on: measurement (where not given) or error."""
     interval: Quantity | Hold | None
     """Execution interval."""
     setpoint: Setpoint | Hold | None
@@ -293,6 +295,16 @@ class FinalElement(Part):
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
+class CurvePoint(Part):
+    """One point of a characteriser's curve."""
+
+    at: Quantity | Hold | None
+    """What enters."""
+    gives: Quantity | Hold | None
+    """What comes out of it."""
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
 class Function(Part):
     """A computing element between loops."""
 
@@ -314,6 +326,14 @@ class Function(Part):
     """Ratio: the span of the ratio setting."""
     normal: float | Hold | None
     """Ratio: the ratio in normal operation."""
+    lead: Quantity | Hold | None
+    """Lead-lag: its lead time; none where not given."""
+    lag: Quantity | Hold | None
+    """Lead-lag: its lag time."""
+    curve: tuple[CurvePoint, ...] | Hold
+    """Characteriser: points in rising order of what enters, with straight lines between them; empty where not given."""
+    normal_input: Quantity | Hold | None
+    """Characteriser: what enters in normal operation; where not given, what the secondary's normal value asks for."""
 
 
 # ---------------------------------------------------------------- interlocks
