@@ -75,6 +75,7 @@ def test_json_says_the_same_in_visible_characters(document: object) -> None:
     text = for_json(document)
     assert json.loads(text) == document
     assert {unicodedata.category(character) for character in text.replace("\n", "")} & OBEYED == set()
+    assert "##vso[" not in for_json("##vso[task.x]")
 
 
 @given(ANY_TEXT)

@@ -36,8 +36,8 @@ def for_line(text: str) -> str:
 
 
 def for_json(document: Any) -> str:
-    """A JSON document with every character written out that a terminal might obey."""
-    text = json.dumps(document, ensure_ascii=False, indent=2, allow_nan=False)
+    """A JSON document in which all is written out that a terminal or a build log might obey."""
+    text = _LOG_COMMAND.sub(_log_command, json.dumps(document, ensure_ascii=False, indent=2, allow_nan=False))
     return _SUSPECT.sub(lambda run: "".join(c if c.isprintable() else json.dumps(c)[1:-1] for c in run[0]), text)
 
 
