@@ -393,7 +393,7 @@ def _identify(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> 
             fitted=found.result.fitted,
         )
         try:
-            save(drawing, arguments.plot)
+            save([drawing], arguments.plot)
         except ValueError as error:
             return unreadable(str(error))
     written: Place | str | None = None

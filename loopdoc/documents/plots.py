@@ -1,4 +1,4 @@
-"""Time responses as figures: from simulated curves to SVG, through matplotlib's object interface.
+"""Curves as figures: from numbers to SVG, PDF or PNG, through matplotlib's object interface.
 
 Black on white, told apart by line style, so that a photocopy says the same as the screen.
 """
@@ -6,8 +6,10 @@ Black on white, told apart by line style, so that a photocopy says the same as t
 from __future__ import annotations
 
 import io
+import math
 import re
-from collections.abc import Iterator
+import textwrap
+from collections.abc import Iterator, Sequence
 from contextlib import contextmanager
 from dataclasses import dataclass
 from functools import lru_cache
@@ -19,7 +21,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 if TYPE_CHECKING:
-    from matplotlib.figure import Figure
+    from matplotlib.figure import Figure, SubFigure
 
 FONT_FILES = ("IBMPlexSansCondensed-Regular.ttf", "IBMPlexSansCondensed-Bold.ttf")
 FONT_FAMILY = "IBM Plex Sans Condensed"
@@ -32,6 +34,10 @@ MOST_TICKS = 4
 """Steps of an axis; more numbers would touch one another in a panel of a third of the width."""
 POINTS_DRAWN = 400
 """Points of one curve in a figure: finer than a printer's dot at this width."""
+_PERIOD_IN = 0.34
+"""Height of a second axis above the panels [in]."""
+_CAPTION_LINE_IN, _CAPTION_CHARACTERS = 0.125, 172
+"""Height of a line of a caption [in], and what fits on one."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -54,6 +60,18 @@ class Limit:
 
 
 @dataclass(frozen=True, slots=True)
+class Mark:
+    """A vertical stroke from a curve to what it is measured against, with its name; a dot where both are one."""
+
+    label: str
+    x: float
+    y: float
+    to: float
+    is_left: bool = False
+    """True where the name stands on the left of it."""
+
+
+@dataclass(frozen=True, slots=True)
 class Panel:
     """One set of axes."""
 
@@ -62,6 +80,17 @@ class Panel:
     y_label: str
     curves: tuple[Curve, ...]
     limits: tuple[Limit, ...] = ()
+    marks: tuple[Mark, ...] = ()
+    guides: tuple[float, ...] = ()
+    """Places on the horizontal axis at which a thin line stands."""
+    x_is_log: bool = False
+    y_is_log: bool = False
+    y_view: tuple[float, float] | None = None
+    """Ends of the vertical axis; by the curves where none are given."""
+    y_step: float | None = None
+    """Distance of the numbers of the vertical axis; by its length where none is given."""
+    period: tuple[str, float] | None = None
+    """Of a frequency axis in rad/s: name of a second axis of periods, and how many seconds its unit has."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -71,12 +100,15 @@ class Drawing:
     title: str
     """What the figure shows, for those who cannot see it."""
     rows: tuple[tuple[Panel, ...], ...]
+    caption: str = ""
+    """Scenario and assumptions; written below a figure that stands alone. A document sets it as its own text."""
 
 
 def to_svg(drawing: Drawing) -> str:
     """The drawing as SVG text for a page: text stays text, and the same drawing gives the same bytes."""
     with _style(drawing.title) as figure:
-        _draw(figure, drawing)
+        figure.set_size_inches(WIDTH_IN, _height_in(drawing))
+        _draw(figure, drawing, _height_in(drawing))
         buffer = io.StringIO()
         figure.savefig(buffer, format="svg", metadata={"Date": None, "Creator": None})
     text = buffer.getvalue()
@@ -91,8 +123,8 @@ def to_svg(drawing: Drawing) -> str:
     )
 
 
-def save(drawing: Drawing, path: Path) -> None:
-    """Write the drawing as .svg, .png or .pdf.
+def save(drawings: Sequence[Drawing], path: Path) -> None:
+    """Write drawings with their captions: as .pdf a page for each, as .svg or .png one above the other.
 
     Raises
     ------
@@ -101,9 +133,45 @@ def save(drawing: Drawing, path: Path) -> None:
     """
     if path.suffix not in (".svg", ".png", ".pdf"):
         raise ValueError(f"a plot is written as .svg, .png or .pdf, not as `{path.suffix or path.name}`")
-    with _style(drawing.title) as figure:
-        _draw(figure, drawing)
-        figure.savefig(path, dpi=200)
+    with _style(drawings[0].title) as figure:
+        if path.suffix == ".pdf":
+            from matplotlib.backends.backend_pdf import PdfPages
+
+            title = ", ".join(drawing.title for drawing in drawings)
+            # No creation date: the same drawing gives the same bytes.
+            with PdfPages(path, metadata={"CreationDate": None, "Title": title}) as pages:
+                for drawing in drawings:
+                    figure.clear()
+                    height_in = _height_in(drawing) + _caption_in(drawing)
+                    figure.set_size_inches(WIDTH_IN, height_in)
+                    _draw(figure, drawing, height_in)
+                    pages.savefig(figure)
+            return
+        heights = [_height_in(drawing) + _caption_in(drawing) for drawing in drawings]
+        figure.set_size_inches(WIDTH_IN, sum(heights))
+        parts = figure.subfigures(len(drawings), 1, squeeze=False, height_ratios=heights)[:, 0]
+        for part, drawing, height_in in zip(parts, drawings, heights, strict=True):
+            _draw(part, drawing, height_in)
+        metadata = {"Date": None} if path.suffix == ".svg" else {"Software": None}
+        figure.savefig(path, dpi=200, metadata=metadata, facecolor="white")
+
+
+def _height_in(drawing: Drawing) -> float:
+    rows = len(drawing.rows)
+    return _top_in(drawing) + rows * _PANEL_IN + (rows - 1) * _BETWEEN_IN + _BOTTOM_IN
+
+
+def _top_in(drawing: Drawing) -> float:
+    return _TOP_IN + (_PERIOD_IN if any(panel.period for panel in drawing.rows[0]) else 0.0)
+
+
+def _caption_lines(drawing: Drawing) -> list[str]:
+    return textwrap.wrap(drawing.caption, _CAPTION_CHARACTERS)
+
+
+def _caption_in(drawing: Drawing) -> float:
+    lines = len(_caption_lines(drawing))
+    return _CAPTION_LINE_IN * (lines + 1) if lines else 0.0
 
 
 @lru_cache(maxsize=1)
@@ -127,6 +195,7 @@ def _style(salt: str) -> Iterator[Figure]:
         "svg.hashsalt": salt,
         "font.family": FONT_FAMILY,
         "font.size": 7.5,
+        "pdf.fonttype": 42,
         "figure.facecolor": "none",
         "axes.facecolor": "none",
         "axes.linewidth": 0.5,
@@ -145,26 +214,36 @@ def _style(salt: str) -> Iterator[Figure]:
         yield Figure()
 
 
-def _draw(figure: Figure, drawing: Drawing) -> None:
+def _draw(figure: Figure | SubFigure, drawing: Drawing, height_in: float) -> None:
+    """Draw into a figure of this height, its caption in what is below the panels and the legend."""
     rows, columns = len(drawing.rows), len(drawing.rows[0])
-    height_in = _TOP_IN + rows * _PANEL_IN + (rows - 1) * _BETWEEN_IN + _BOTTOM_IN
-    figure.set_size_inches(WIDTH_IN, height_in)
+    caption_in = height_in - _height_in(drawing)
     # Set by hand: an automatic layout measures every text several times and takes as long as all the rest.
     figure.subplots_adjust(
         left=_LEFT_IN / WIDTH_IN,
         right=1.0 - _RIGHT_IN / WIDTH_IN,
-        top=1.0 - _TOP_IN / height_in,
-        bottom=_BOTTOM_IN / height_in,
+        top=1.0 - _top_in(drawing) / height_in,
+        bottom=(_BOTTOM_IN + caption_in) / height_in,
         wspace=0.34,
         hspace=_BETWEEN_IN / _PANEL_IN,
     )
+    if caption_in:
+        left, top = _LEFT_IN / WIDTH_IN / 4.0, caption_in / height_in
+        text = "\n".join(_caption_lines(drawing))
+        figure.text(left, top, text, va="top", ha="left", fontsize=6.5, linespacing=1.2)
     axes = figure.subplots(rows, columns, squeeze=False, sharex="col")
     for row, panels in enumerate(drawing.rows):
         for column, panel in enumerate(panels):
             _draw_panel(axes[row][column], panel, last_row=row == rows - 1)
-    handles, labels = axes[0][0].get_legend_handles_labels()
-    if len(handles) > 1:
-        figure.legend(handles, labels, loc="lower center", ncols=len(handles))
+    entries: dict[str, Any] = {}
+    for row in axes:
+        for handle, label in zip(*row[0].get_legend_handles_labels(), strict=True):
+            entries.setdefault(label, handle)
+    if len(entries) > 1:
+        figure.legend(
+            list(entries.values()), list(entries), loc="lower center", ncols=len(entries),
+            bbox_to_anchor=(0.5, caption_in / height_in),
+        )  # fmt: skip
 
 
 def _draw_panel(axes: Any, panel: Panel, *, last_row: bool) -> None:
@@ -181,6 +260,12 @@ def _draw_panel(axes: Any, panel: Panel, *, last_row: bool) -> None:
             curve.x[::step], curve.y[::step], linestyle=line, linewidth=width, color=colour, label=curve.label,
             marker="." if curve.style == "points" else "none", markersize=2.5,
         )  # fmt: skip
+    if panel.x_is_log:
+        axes.set_xscale("log")
+    if panel.y_is_log:
+        axes.set_yscale("log")
+    if panel.y_view:
+        axes.set_ylim(*panel.y_view)
     low, high = axes.get_ylim()
     for limit in panel.limits:
         # A limit far off would flatten the curves; it is named in the caption's table instead.
@@ -193,16 +278,64 @@ def _draw_panel(axes: Any, panel: Panel, *, last_row: bool) -> None:
                 xytext=(-2, -1.5 if is_high else 1.5), textcoords="offset points",
                 ha="right", va="top" if is_high else "bottom", fontsize=6.5,
             )  # fmt: skip
-    axes.locator_params(nbins=MOST_TICKS)
+    for guide in panel.guides:
+        axes.axvline(guide, linewidth=0.5, color="#000000", dashes=(1, 2))
+    for mark in panel.marks:
+        _draw_mark(axes, mark)
+    _draw_scales(axes, panel)
     axes.margins(x=0)
     axes.grid(visible=True)
     axes.set_axisbelow(True)
-    axes.ticklabel_format(axis="y", useOffset=False)
     if panel.title:
-        axes.set_title(panel.title, loc="left")
+        # Set by hand, like all places here: an automatic one measures every text above the panel.
+        axes.set_title(panel.title, loc="left", y=1.0 + (_PERIOD_IN / _PANEL_IN if panel.period else 0.0))
     axes.set_ylabel(panel.y_label)
     if last_row:
         axes.set_xlabel(panel.x_label)
+
+
+def _draw_mark(axes: Any, mark: Mark) -> None:
+    if mark.y == mark.to:
+        axes.plot([mark.x], [mark.y], marker="o", markersize=3.0, color="#000000", linestyle="none")
+    else:
+        axes.plot([mark.x, mark.x], [mark.y, mark.to], marker="_", markersize=5.0, linewidth=1.6, color="#000000")
+    middle = math.sqrt(mark.y * mark.to) if axes.get_yscale() == "log" else (mark.y + mark.to) / 2.0
+    is_dot = mark.y == mark.to
+    axes.annotate(
+        mark.label, (mark.x, middle), xytext=(0, 4) if is_dot else (-4 if mark.is_left else 4, 0),
+        textcoords="offset points", ha="right" if mark.is_left else "left", va="bottom" if is_dot else "center",
+        fontsize=6.5,
+    )  # fmt: skip
+
+
+def _draw_scales(axes: Any, panel: Panel) -> None:
+    """Numbers of both axes; of a logarithmic one the decades, in plain figures."""
+    from matplotlib.ticker import FuncFormatter, MultipleLocator, NullLocator
+
+    for axis, is_log in ((axes.xaxis, panel.x_is_log), (axes.yaxis, panel.y_is_log)):
+        if is_log:
+            axis.set_major_formatter(FuncFormatter(lambda value, _: f"{value:g}"))
+            # Each small stroke costs as much as a curve.
+            axis.set_minor_locator(NullLocator())
+    if not panel.x_is_log:
+        axes.locator_params(axis="x", nbins=MOST_TICKS)
+    if not panel.y_is_log:
+        axes.locator_params(axis="y", nbins=MOST_TICKS)
+        axes.ticklabel_format(axis="y", useOffset=False)
+    if panel.y_step:
+        axes.yaxis.set_major_locator(MultipleLocator(panel.y_step))
+    if panel.period:
+        name, unit_s = panel.period
+
+        def turned(values: NDArray[np.float64]) -> NDArray[np.float64]:
+            """Period of a frequency, and frequency of a period."""
+            return 2.0 * math.pi / unit_s / np.maximum(values, 1e-300)
+
+        above = axes.secondary_xaxis("top", functions=(turned, turned))
+        above.set_xlabel(name)
+        above.xaxis.set_major_formatter(FuncFormatter(lambda value, _: f"{value:g}"))
+        above.xaxis.set_minor_locator(NullLocator())
+        above.tick_params(labelsize=6.5)
 
 
 def _as_attributes(style: re.Match[str]) -> str:

@@ -27,7 +27,6 @@ from loopdoc.engineering.pid import (
 from loopdoc.engineering.process import Process, frequency_response
 from loopdoc.engineering.reduction import ReducedModel, reduce_to_first_order, reduce_to_second_order
 from loopdoc.engineering.sampled import quoted_margins
-from loopdoc.engineering.sampled import quoted_margins
 from loopdoc.engineering.stages import settings_of
 from loopdoc.engineering.tuning import (
     UltimatePoint,
@@ -456,7 +455,7 @@ def _worst_margins(loop: LoopDynamics, stage: LoopStage, wanted: Sequence[Standa
             # One controller moves every branch of a split range: the same change of its gain reaches all of them.
             gain = own.controller.gain * settings.gain / stage.controller.gain
             tried = replace(own.controller, gain=gain, reset_s=settings.reset_s, rate_s=settings.rate_s)
-            trials.append([*below, LoopStage(tried, own.process)])
+            trials.append([*below, replace(own, controller=tried)])
     analysed = [found[-1] for found in quoted_margins(trials)]
     for start in range(0, len(analysed), len(loop.chains)):
         yield max(analysed[start : start + len(loop.chains)], key=lambda margins: margins.max_sensitivity)

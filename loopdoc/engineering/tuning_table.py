@@ -195,7 +195,10 @@ def _basis(review: TuningReview) -> Iterator[str]:
         )
     rules = [rule for rule in review.rules if isinstance(rule, RuleSettings)]
     if any(rule.margins.sampled for rule in (review.configured, *rules)):
-        yield "Where a gain margin lies above a quarter of the sampling frequency, the margins are of the loop as sampled."
+        yield (
+            "Where a gain margin lies above a quarter of the sampling frequency, the margins are those of the loop as "
+            "it is sampled."
+        )
     loop = review.dynamics.chain.lead.loop
     measurement = known(loop.measurement)
     variable = known(measurement.variable) if measurement else None
