@@ -80,7 +80,7 @@ def _ratios(rivals: Sequence[Rival]) -> FloatArray:
     depth = len(rivals[0].stages)
     levels = [
         level_arrays(
-            [rival.stages[k].controller for rival in rivals], [rival.stages[k].process for rival in rivals]
+            [rival.stages[k].controller for rival in rivals], [rival.stages[k].path for rival in rivals]
         )
         for k in range(depth)
     ]

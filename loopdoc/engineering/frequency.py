@@ -4,7 +4,7 @@ Dead time is exp(-jwL) and an execution interval counts as half of itself in dea
 of a held output); nothing is approximated by a rational function. A chain of loops is given innermost
 first. Level k has the loop
 
-    L = C F G T      F measurement filter, G process, T the closed loop below (1 for a final element)
+    L = C F G T      F measurement filter, G process with lead-lags in front of it, T the closed loop below (1 for a final element)
 
 and, as seen by the level above, the closed loop
 
@@ -17,10 +17,11 @@ unfiltered measurement, while every controller sees its own measurement filtered
 import math
 from collections import defaultdict
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
+from loopdoc.engineering.lead_lag import LeadLag
 from loopdoc.engineering.open_loop import (
     Crossings,
     IntArray,
@@ -55,6 +56,17 @@ class LoopStage:
     """Its output is in percent of the final element, or of the secondary's measurement range."""
     process: Process
     """From the final element, or the secondary's measurement, to this level's measurement."""
+    lead_lags: tuple[LeadLag, ...] = ()
+    """Between the controller's output and what it commands."""
+
+    @property
+    def path(self) -> Process:
+        """The process with the lead-lags in front of it: what the controller's output goes through."""
+        return replace(
+            self.process,
+            lags_s=self.process.lags_s + tuple(one.lag_s for one in self.lead_lags),
+            leads_s=self.process.leads_s + tuple(one.lead_s for one in self.lead_lags),
+        )
 
 
 @dataclass(frozen=True, slots=True)
@@ -188,7 +200,7 @@ def _survey_level(survey: Survey, level: int, below: FloatArray) -> LevelSurvey:
 
 
 def _stage_arrays(stages: Sequence[LoopStage]) -> LevelArrays:
-    return level_arrays([stage.controller for stage in stages], [stage.process for stage in stages])
+    return level_arrays([stage.controller for stage in stages], [stage.path for stage in stages])
 
 
 def _chunks(depths: Sequence[int]) -> list[list[int]]:

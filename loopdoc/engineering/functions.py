@@ -12,6 +12,7 @@ from dataclasses import dataclass
 from itertools import pairwise
 
 from loopdoc.engineering.direction import Undecided
+from loopdoc.engineering.lead_lag import LeadLag
 from loopdoc.engineering.pairing import Plant
 from loopdoc.register.model import Function, Hold, known
 from loopdoc.register.quantity import Range
@@ -104,29 +105,23 @@ def _unread(function: Function) -> str:
     return f"a point of the curve of {function.tag} is on hold or could not be read"
 
 
-@dataclass(frozen=True, slots=True)
-class LeadLag:
-    """A lead-lag, (1 + lead s)/(1 + lag s), of steady gain one."""
-
-    lead_s: float
-    """Lead [s]."""
-    lag_s: float
-    """Lag [s] > 0."""
-
-
 def lead_lag_of(function: Function) -> LeadLag | Undecided:
     """The times of a lead-lag; a lead-lag without lead is a lag alone."""
     times = []
     for name, written in (("lead", function.lead), ("lag", function.lag)):
         if isinstance(written, Hold):
             return Undecided(f"the {name} of {function.tag} is on hold or could not be read")
-        times.append(written.to("s") if written is not None else 0.0)
+        try:
+            times.append(written.to("s") if written is not None else 0.0)
+        except UnitError:
+            return Undecided(f"the {name} of {function.tag} is no time")
     lead_s, lag_s = times
-    if function.lag is None or lag_s <= 0.0:
-        return Undecided(f"the lag of {function.tag} is not given: a lead alone cannot be built")
-    if lead_s < 0.0:
-        return Undecided(f"the lead of {function.tag} is negative")
-    return LeadLag(lead_s, lag_s)
+    if function.lag is None:
+        return Undecided(f"the lag of {function.tag} is not given")
+    try:
+        return LeadLag(lead_s, lag_s)
+    except ValueError as error:
+        return Undecided(f"{function.tag} is no lead-lag: {error}")
 
 
 def feeds_forward(plant: Plant, function: Function) -> bool:

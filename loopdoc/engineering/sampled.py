@@ -189,8 +189,8 @@ class SampledChain:
 
     def __init__(self, stages: Sequence[LoopStage]) -> None:
         """Take a chain, innermost first, in which each interval is a whole number of times the one below."""
-        self._controllers = [stage.controller for stage in stages]
-        base = self._controllers[0].interval_s
+        self._stages = stages
+        base = stages[0].controller.interval_s
         self._pulses = [
             pulse_response([stage.process for stage in stages[: level + 1]], step_s=base)
             for level in range(len(stages))
@@ -198,7 +198,7 @@ class SampledChain:
 
     def loop(self, level: int, w: FloatArray) -> ComplexArray:
         """Open loop of a level at frequencies of any shape [rad/s]."""
-        feedback, _ = controller_response(self._controllers[level], w)
+        feedback, _ = self._controller(level, w)
         found: ComplexArray = feedback * self._response(level, level, w)
         return found
 
@@ -206,19 +206,31 @@ class SampledChain:
         """Measurement of one level over the held output of another, sampled at the interval of the latter."""
         if moved == 0:
             return self._pulses[measured].at(w)
-        interval, below = self._controllers[moved].interval_s, self._controllers[moved - 1]
-        scans = round(interval / below.interval_s)
+        interval, shorter = (self._stages[level].controller.interval_s for level in (moved, moved - 1))
+        scans = round(interval / shorter)
         if scans == 1:
             return self._closed(moved - 1, w) * self._response(measured, moved - 1, w)
         folded = w[..., None] + 2.0 * math.pi / interval * np.arange(-(scans // 2), scans - scans // 2)
-        held = np.expm1(-1j * w * interval)[..., None] / np.expm1(-1j * folded * below.interval_s)
+        held = np.expm1(-1j * w * interval)[..., None] / np.expm1(-1j * folded * shorter)
         each = held * self._closed(moved - 1, folded) * self._response(measured, moved - 1, folded)
         total: ComplexArray = each.sum(axis=-1) / scans
         return total
 
+    def _controller(self, level: int, w: FloatArray) -> tuple[ComplexArray, ComplexArray]:
+        """A controller with the lead-lags behind it, executed together."""
+        stage = self._stages[level]
+        feedback, forward = controller_response(stage.controller, w)
+        for one in stage.lead_lags:
+            # The lag is exact for an input that is held, as the measurement filter is.
+            share = -math.expm1(-stage.controller.interval_s / one.lag_s)
+            lagged = share / (1.0 - (1.0 - share) * np.exp(-1j * w * stage.controller.interval_s))
+            led = one.lead_s / one.lag_s + (1.0 - one.lead_s / one.lag_s) * lagged
+            feedback, forward = feedback * led, forward * led
+        return feedback, forward
+
     def _closed(self, level: int, w: FloatArray) -> ComplexArray:
         """Output of a controller over its setpoint, its loop closed."""
-        _, forward = controller_response(self._controllers[level], w)
+        _, forward = self._controller(level, w)
         closed: ComplexArray = forward / (1.0 + self.loop(level, w))
         return closed
 
@@ -248,7 +260,7 @@ def _grid(stages: Sequence[LoopStage], sharp: Sequence[tuple[float, float]]) -> 
     """(m,) frequencies up to half the sampling frequency of the outermost level [rad/s]."""
     interval = stages[-1].controller.interval_s
     high = math.pi / interval
-    arrays = [level_arrays([stage.controller], [stage.process]) for stage in stages]
+    arrays = [level_arrays([stage.controller], [stage.path]) for stage in stages]
     low = min(float(frequency_span(arrays)[0][0]), 1e-3 * high)
     delay = math.fsum(stage.process.dead_time_s + stage.controller.interval_s for stage in stages)
     evenly = min(math.ceil(high * delay / _PHASE_STEP) + 1, _PHASE_POINTS)
@@ -346,7 +358,7 @@ def _survey(
     level = len(stages) - 1
     loop = SampledLoop(_grid(stages, sharp), lambda w: chain.loop(level, w))
     roots, direction = loop.real_axis_crossings()
-    poles, leading = static_gains([level_arrays([stage.controller], [stage.process]) for stage in stages])[level]
+    poles, leading = static_gains([level_arrays([stage.controller], [stage.path]) for stage in stages])[level]
     return LevelSurvey(
         open_loop=loop,
         axis_roots=roots,
