@@ -4,13 +4,23 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterator, Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 from loopdoc.documents.basis import Basis, Page
+from loopdoc.documents.check_record_fit import (
+    SIZES,
+    TWO_PAGES,
+    Rows,
+    filled_height,
+    frame_height,
+    labelled_height,
+    words_height,
+)
 from loopdoc.documents.check_record_list import elements_of, loop_checks
 from loopdoc.documents.expected_signals import ExpectedRow, expected_commands, expected_readings
 from loopdoc.documents.loop_panels import cell, hold_lines, joined, related_interlocks
 from loopdoc.documents.loop_sheet import serial
+from loopdoc.documents.page_fit import room
 from loopdoc.documents.values import DASH, HOLD, shown
 from loopdoc.documents.wording import NO_BREAK, counted, listed, sentence, value
 from loopdoc.engineering.failure import FailureAnalysis
@@ -38,6 +48,10 @@ TEMPLATE = "check-record.html"
 SAFETY_NOTE = (
     "A safety interlock is proved by its own procedure (IEC 61511); what is tried here does not take its place."
 )
+FUNCTIONS = "Functions"
+ORDER_OF_WORK = "Order of work (each only after the one before it has passed)"
+HALF = 0.45
+"""Of a page: with less before them, the functions begin on the first page."""
 _SPEEDS = ("variable-speed drive", "motor")
 
 
@@ -84,6 +98,8 @@ class RecordView:
     tables: tuple[CheckTable, ...]
     notes: tuple[str, ...]
     holds: tuple[str, ...]
+    classes: str = ""
+    """Classes of the page."""
 
 
 def check_records(basis: Basis) -> Iterator[Page]:
@@ -102,7 +118,7 @@ def check_records(basis: Basis) -> Iterator[Page]:
             unit=number or "00",
             serial=serial(plant, loop),
         )
-        view = record_view(plant, limits, analysis, loop, basis.records)
+        view = _fitted(record_view(plant, limits, analysis, loop, basis.records), room(document))
         yield Page(FOLDER, loop.tag, document, TEMPLATE, {"record": view})
 
 
@@ -144,6 +160,33 @@ def record_view(
         notes=(*_missing(loop, checks), *((SAFETY_NOTE,) if safety else ())),
         holds=tuple(hold_lines(plant, tags, loop.tag)),
     )
+
+
+def _fitted(view: RecordView, height: float) -> RecordView:
+    """The record with the highest rows that one page takes; else on two pages, the functions on the second."""
+    for sizes in SIZES:
+        if record_height(view, sizes) <= height:
+            return replace(view, classes=sizes.name)
+    before = sum(_table_height(table, TWO_PAGES) for table in view.tables if table.title != FUNCTIONS)
+    apart = " apart" if before > HALF * height else ""
+    return replace(view, classes=f"{TWO_PAGES.name}{apart}")
+
+
+def record_height(view: RecordView, sizes: Rows) -> float:
+    """Height of a record on one page [pt]."""
+    height = frame_height(f"{view.tag} {view.service}")
+    height += sum(labelled_height([fact for _, fact in row], sizes) for row in view.facts)
+    order = "; ".join(f"{index}. {tag} ({word})" for index, (tag, word) in enumerate(view.order, 1))
+    lines = [f"{ORDER_OF_WORK}: {order}"] if view.order else []
+    lines += [" ".join(view.last)] if view.last else []
+    lines += [*view.notes, *(f"HOLD    {line}" for line in view.holds)]
+    height += sum(words_height(line, sizes) for line in lines)
+    return height + sum(_table_height(table, sizes) for table in view.tables)
+
+
+def _table_height(table: CheckTable, sizes: Rows) -> float:
+    head = [column.heading for column in table.columns]
+    return filled_height(table.title, head, table.rows, [column.share for column in table.columns], table.note, sizes)
 
 
 # ---------------------------------------------------------------- head
@@ -301,9 +344,7 @@ def _measurement_note(measurement: Measurement) -> str:
     return ". ".join(notes) + "." if notes else ""
 
 
-def _travel_tables(
-    plant: Plant, loop: Loop, checks: LoopChecks, judged: JudgedRecord | None
-) -> Iterator[CheckTable]:
+def _travel_tables(plant: Plant, loop: Loop, checks: LoopChecks, judged: JudgedRecord | None) -> Iterator[CheckTable]:
     signals = {row.what: row for row in expected_commands(plant, loop)}
     for element in elements_of(plant, loop):
         found = [one for one in checks.readings if one.group == "travel" and one.tag == element.tag]
@@ -330,9 +371,7 @@ def _travel_tables(
         yield CheckTable(f"{title}{f' ({named})' if named else ''}", tuple(columns), tuple(rows))
 
 
-def _point_table(
-    plant: Plant, loop: Loop, checks: LoopChecks, judged: JudgedRecord | None
-) -> Iterator[CheckTable]:
+def _point_table(plant: Plant, loop: Loop, checks: LoopChecks, judged: JudgedRecord | None) -> Iterator[CheckTable]:
     """Stroke times, alarms and trips: one figure each."""
     found = [one for one in checks.readings if one.group in ("stroke time", "alarm", "trip")]
     kinds = {element.tag: known(element.kind) for element in elements_of(plant, loop)}
@@ -407,7 +446,7 @@ def _function_table(checks: LoopChecks, judged: JudgedRecord | None) -> Iterator
         Column("Pass", 6, blank=True), Column("Fail", 6, blank=True), Column("Remarks", 20, blank=True),
         *((Column("Last", 9),) if judged else ()),
     )  # fmt: skip
-    yield CheckTable("Functions", columns, tuple(rows))
+    yield CheckTable(FUNCTIONS, columns, tuple(rows))
 
 
 def _blanks(judged: JudgedRecord | None) -> list[Column]:
@@ -490,4 +529,3 @@ def _number(figure: float, digits: int) -> str:
 
 def _with_unit(figure: float, unit: Unit) -> str:
     return display_quantity(Quantity(figure, unit))
-

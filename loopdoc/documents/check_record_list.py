@@ -38,9 +38,7 @@ _VERBS = {
 
 def loop_checks(plant: Plant, limits: Limits, analysis: FailureAnalysis, loop: Loop) -> LoopChecks:
     """All that is checked on one loop."""
-    measured = readings(
-        plant, loop, tolerance_pct=limits.loop_check_tolerance, travel_pct=limits.travel_tolerance
-    )
+    measured = readings(plant, loop, tolerance_pct=limits.loop_check_tolerance, travel_pct=limits.travel_tolerance)
     return LoopChecks(loop.tag, measured, tuple(_functions(plant, analysis, loop)))
 
 
