@@ -29,16 +29,16 @@ from loopdoc.documents.schedules import (
 from loopdoc.documents.time_to_act_story import response_of
 from loopdoc.documents.values import DASH
 from loopdoc.documents.whereabouts import anchor, natural, unit_numbers, unit_of
-from loopdoc.documents.wording import NO_BREAK, counted, listed, sentence, upper_first, value
+from loopdoc.documents.wording import counted, listed, sentence, upper_first, value
 from loopdoc.engineering.pairing import Trip
 from loopdoc.register.model import Interlock, InterlockAction, known
 
 FOLDER = "cause-and-effect"
 TEMPLATE = "cause-and-effect.html"
 
-NARROWEST_EFFECT_MM = 6.8
+NARROWEST_EFFECT_MM = 6.35
 """Width of the column of an effect with two lines in its head."""
-CAUSE_SHARES = (("Interlock", 36.0), ("Voting", 11.0), ("Cause", 58.0), ("Trips", 28.0), ("Delay", 12.0))
+CAUSE_SHARES = (("Interlock", 35.0), ("Voting", 10.5), ("Cause", 53.0), ("Trips", 27.0), ("Delay", 10.0))
 """Heads of a row with their widths [mm]."""
 HEAD_TYPE_PT = 7.2
 HEAD_LEADING_PT = 8.2
@@ -47,16 +47,19 @@ _SHORTEST_HEAD_MM = 26.0
 _LONGEST_LINE_MM = 62.0
 """A longer service is broken in the head of its column."""
 
-MARKS = {"closed": "C", "open": "O", "stopped": "S", "started": "R"}
-"""Mark of each position into which an interlock brings a final element."""
-FORCED = "F"
+MARKS = {"closed": ("C", "closes it"), "open": ("O", "opens it"), "stopped": ("S", "stops it"),
+         "started": ("R", "starts it (runs)")}  # fmt: skip
+"""Mark of each position into which an interlock brings a final element, and what it means."""
+MODES = {
+    "manual": "M", "automatic": "A", "cascade": "K", "initialisation": "I", "remote output": "RO",
+    "out of service": "OS",
+}  # fmt: skip
+"""Mark of each mode into which an interlock forces a controller."""
+UNKNOWN = "?"
 
 READING = (
-    "Causes go down, effects go across; a mark says what the interlock of the row does to the tag of the column: C "
-    "closes it, O opens it, S stops it, R starts it (runs), F forces the controller to the mode and output under the "
-    f"marks (M manual, A automatic), ? something that is on {'HOLD'}. Where several causes stand under one interlock, "
-    "the voting says how many of them trip it.",
-    DASHES,
+    "Causes go down, effects go across; a mark says what the interlock of the row does to the tag of the column. Where "
+    "several causes stand under one interlock, the voting says how many of them trip it."
 )
 CAUTION = (
     "The chart repeats what the register says and does not show that an interlock is enough. Process safety times and "
@@ -117,7 +120,7 @@ class _Charts:
         by_layer = {layer: [one for one in self._interlocks if self._layer(one) == layer] for layer in layers}
         heads = {tag: self._head(tag) for tag in _targets(self._interlocks)}
         lines = max((len(head.lines) for head in heads.values()), default=0)
-        column_mm = max(NARROWEST_EFFECT_MM, lines * HEAD_LEADING_PT / _MM + 1.0)
+        column_mm = max(NARROWEST_EFFECT_MM, lines * HEAD_LEADING_PT / _MM + 0.5)
         widest = max(len(_targets(found)) for found in by_layer.values())
         paper = A4 if _most_effects(A4, column_mm) >= widest else A3
         charts = tuple(
@@ -134,7 +137,7 @@ class _Charts:
             folder=FOLDER, kind="Cause and effect chart", code="CE", unit=self._number, paper=paper,
             title=unit_title(self._basis, self._number),
             extent=upper_first(listed(counted(count, noun) for count, noun in counts if count)),
-            reading=(*READING, *self._from_elsewhere()), caution=CAUTION, template=TEMPLATE,
+            reading=(f"{READING} {self._marks()}", DASHES, *self._from_elsewhere()), caution=CAUTION, template=TEMPLATE,
             view={"charts": charts, "schedules": (self._interlock_table(),)},
         )  # fmt: skip
 
@@ -220,14 +223,23 @@ class _Charts:
         write = self._writer
         if action is None:
             return write.plain("", kind="mark")
-        position, mode, output = known(action.position), known(action.mode), known(action.output)
-        if position:
-            return write.plain(MARKS.get(position, position), kind="mark")
-        if mode or output:
-            how = [{"manual": "M", "automatic": "A"}.get(mode, mode)] if mode else []
-            at = [value(output).replace(NO_BREAK, "")] if output else []
-            return Cell((write.plain(FORCED).lines[0], write.plain(" ".join([*how, *at])).lines[0]), "mark forced")
-        return write.plain("?", kind="mark")
+        mark = _mark(action)
+        output = known(action.output)
+        if output is None:
+            return write.plain(mark, kind="mark")
+        return Cell((write.plain(mark).lines[0], write.plain(value(output)).lines[0]), "mark forced")
+
+    def _marks(self) -> str:
+        """What the marks mean that stand in these charts."""
+        actions = [action for one in self._interlocks for action in one.actions.values()]
+        used = dict.fromkeys(_mark(action) for action in actions)
+        told = [f"{mark} {meaning}" for mark, meaning in MARKS.values() if mark in used]
+        told += [f"{mark} forces the controller to {mode}" for mode, mark in MODES.items() if mark in used]
+        if any(known(action.output) for action in actions):
+            told.append("a percentage is the output to which it is forced")
+        if UNKNOWN in used:
+            told.append(f"{UNKNOWN} stands where the action is not known")
+        return sentence(f"{told[0]}{''.join(f'; {one}' for one in told[1:])}") if told else ""
 
     # -- what stands behind the grid
 
@@ -251,6 +263,16 @@ class _Charts:
 def _most_effects(paper: Paper, column_mm: float) -> int:
     """Effects that a sheet takes beside the heads of the rows."""
     return int((paper.width_mm - sum(share for _, share in CAUSE_SHARES)) / column_mm)
+
+
+def _mark(action: InterlockAction) -> str:
+    """The mark of an action; of a controller forced to an output only, none but that."""
+    position, mode = known(action.position), known(action.mode)
+    if position:
+        return MARKS.get(position, (UNKNOWN, ""))[0]
+    if mode:
+        return MODES.get(mode, UNKNOWN)
+    return "" if known(action.output) else UNKNOWN
 
 
 def _width_mm(head: Effect) -> float:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Iterator, Sequence
+from collections.abc import Callable, Iterable, Sequence
 from dataclasses import dataclass, replace
 from typing import Any
 
@@ -12,7 +12,7 @@ from loopdoc.documents.page_fit import MM, title_table_height
 from loopdoc.documents.titleblock import Document
 from loopdoc.documents.values import DASH, HOLD, shown
 from loopdoc.documents.whereabouts import NO_UNIT, file_name, told_at
-from loopdoc.documents.wording import NO_BREAK, Prose, Run, Setter, as_written, sentence, value
+from loopdoc.documents.wording import NO_BREAK, Prose, Run, Setter, sentence, value
 from loopdoc.register.model import Hold, known
 from loopdoc.register.quantity import Quantity, Range
 from loopdoc.rules.references import defined_tags
@@ -147,12 +147,12 @@ class Writer:
         """A sentence of the register, with a stop."""
         return self.cell(sentence(written) if isinstance(written, str) else written)
 
-    def holds_of(self, tag: str, *under: str) -> str:
-        """What is on hold under a tag and there under one of these keys, each with its number; a dash for nothing."""
+    def holds_of(self, tag: str, concerns: Callable[[Sequence[str | int]], bool]) -> str:
+        """What is on hold under a tag and concerns the schedule, each with its number; a dash for nothing."""
         found = [
             f"{held_name(hold.path)} ({self.held(hold.reason)})"
             for hold in self._plant.register.holds
-            if hold.tag == tag and (not under or (hold.path and str(hold.path[0]) in under))
+            if hold.tag == tag and concerns(hold.path)
         ]
         return ", ".join(found) or DASH
 
@@ -167,11 +167,6 @@ class Writer:
     def holds(self) -> tuple[HoldLine, ...]:
         """The reasons by number."""
         return tuple(HoldLine(f"{HOLD}{NO_BREAK}{number}", reason) for reason, number in self._reasons.items())
-
-
-def printed(written: str | Hold | None) -> str | Hold | None:
-    """A value that the register keeps as text, as documents print it."""
-    return as_written(written) if isinstance(written, str) else written
 
 
 def unit_title(basis: Basis, number: str) -> str:
@@ -220,10 +215,3 @@ def page(
 def foot(document: Document) -> str:
     """The lower margin of a landscape page, as CSS writes it."""
     return f"{title_table_height(document) / MM + _BELOW:.1f}mm"
-
-
-def in_groups(rows: Iterable[tuple[Prose, Sequence[Row]]]) -> Iterator[Group]:
-    """Groups of the headings under which there are rows."""
-    for heading, found in rows:
-        if found:
-            yield Group(tuple(found), heading)
