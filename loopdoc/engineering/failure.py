@@ -49,7 +49,7 @@ from loopdoc.engineering.spreading import (
     upward,
     ways_to,
 )
-from loopdoc.register.model import FinalElement, Function, Hold, Interlock, Loop, Measurement, known
+from loopdoc.register.model import FinalElement, Function, Hold, Instrument, Interlock, Loop, Measurement, known
 
 _ELECTRIC = ("variable-speed drive", "motor", "heater bank")
 _LESS, _MORE = ("closed", "stopped"), ("open", "started")
@@ -95,7 +95,8 @@ class Consequence:
     """Alarms on it, by a sensor that has not failed, in the direction in which it goes. Where it is left to
     itself: in the directions that hurt."""
     trips: tuple[Trip, ...]
-    """The same for initiators of interlocks."""
+    """The same for initiators of interlocks, of a safety system's own transmitters too, where the interlock moves
+    a final element that has not failed."""
     opposed_by: tuple[str, ...]
     """Loops that go on working against it: the other candidates of a selector, the other terms of a sum."""
 
@@ -175,12 +176,21 @@ class FailureAnalysis:
         Told by the unit, the variable and the service up to its first comma: `Drum level` and `Drum level,
         second transmitter`. Where a register does not write it so, nothing is assumed.
         """
-        own = transmitter_of(loop)
-        return tuple(
-            other
-            for other in self._by_quantity.get(measured_quantity(loop) or ("", "", ""), ())
-            if other is not loop and transmitter_of(other) not in (None, own)
+        return tuple(other for other in self._alike(loop) if isinstance(other, Loop))
+
+    def sensors_beside(self, loop: Loop) -> tuple[str, ...]:
+        """Transmitters beside a loop's own that measure the same thing, those of no loop (a safety system's) too."""
+        found = (
+            transmitter_of(other) if isinstance(other, Loop) else other.tag for other in self._alike(loop)
         )
+        return tuple(dict.fromkeys(tag for tag in found if tag))
+
+    def _alike(self, loop: Loop) -> Iterator[Loop | Instrument]:
+        own, quantity = transmitter_of(loop), measured_quantity(loop)
+        for other in self.plant.measuring.get(quantity, ()) if quantity else ():
+            tag = transmitter_of(other) if isinstance(other, Loop) else other.tag
+            if other is not loop and tag not in (None, own):
+                yield other
 
     def trips_on(self, transmitter: str | None) -> tuple[Trip, ...]:
         """The initiators that watch a transmitter."""
@@ -190,15 +200,6 @@ class FailureAnalysis:
         """The functions that a loop's measurement enters, each with the tag by which it does."""
         tags = (loop.tag, transmitter_of(loop))
         return tuple((function, tag) for tag in tags if tag for function in self._readers.get(tag, ()))
-
-    @cached_property
-    def _by_quantity(self) -> dict[tuple[str, str, str], list[Loop]]:
-        found: dict[tuple[str, str, str], list[Loop]] = {}
-        for loop in self.plant.register.loops.values():
-            key = measured_quantity(loop)
-            if key is not None:
-                found.setdefault(key, []).append(loop)
-        return found
 
     @cached_property
     def _trips(self) -> dict[str, tuple[Trip, ...]]:
@@ -352,6 +353,7 @@ class _Effects:
         sensor = transmitter_of(failed)
         sensors = {sensor} if seen and sensor else set()
         alarms_stand = failure is not Failure.CONTROL_POWER_LOST
+        lost = set() if seen else {move.element.tag for move in moves.elements}
         unfollowed = self._plant.primaries_of(failed.tag) if seen == "bad" else ()
         reading = {"high": "above", "low": "below"}.get(seen, "")
         return FailureEffect(
@@ -365,7 +367,7 @@ class _Effects:
             setpoints=tuple(moves.setpoints),
             elements=tuple(moves.elements),
             consequences=tuple(
-                self._consequence(loop, direction, sensors, moves, alarms_stand)
+                self._consequence(loop, direction, sensors, lost, moves, alarms_stand)
                 for loop, direction in self._directions(failed, moves)
             ),
             unfollowed=tuple(Unfollowed(one, known(one.controller.when_not_followed) or "") for one in unfollowed),
@@ -389,7 +391,7 @@ class _Effects:
         return [(loops[tag], found[tag]) for tag in ordered]
 
     def _consequence(
-        self, loop: Loop, direction: Direction, failed: set[str], moves: Moves, alarms_stand: bool
+        self, loop: Loop, direction: Direction, failed: set[str], lost: set[str], moves: Moves, alarms_stand: bool
     ) -> Consequence:
         hurts = {"high": (1,), "low": (-1,), "both": (1, -1), "none": ()}.get(known(loop.hazard) or "")
         moved = direction if isinstance(direction, int) and direction else None
@@ -404,6 +406,8 @@ class _Effects:
             for one in (loop, *self._analysis.same_quantity(loop))
             if transmitter_of(one) is not None and transmitter_of(one) not in failed
         ]
+        own = transmitter_of(loop)
+        sensors = [tag for tag in (own, *self._analysis.sensors_beside(loop)) if tag and tag not in failed]
         alarms = tuple(
             LoopAlarm(watcher, watcher.alarms[kind])
             for sign in watched
@@ -414,18 +418,33 @@ class _Effects:
         trips = tuple(
             trip
             for sign in watched
-            for trip in self._voting(watchers, "above" if sign > 0 else "below")
-            if alarms_stand or known(trip.interlock.layer) == "safety"
+            for trip in self._voting(sensors, "above" if sign > 0 else "below")
+            if (alarms_stand or known(trip.interlock.layer) == "safety") and self._moves_another(trip.interlock, lost)
         )
         opposed_by = moves.opposed.get(loop.tag, ())
         return Consequence(loop, direction, hazardous, alarms if alarms_stand else (), trips, opposed_by)
 
-    def _voting(self, watchers: Sequence[Loop], side: str) -> Iterator[Trip]:
-        """Initiators on these measurements that are enough together to trip their interlock."""
+    def _moves_another(self, interlock: Interlock, lost: set[str]) -> bool:
+        """Whether an interlock moves a final element beside those that are lost; taken so where it says nothing.
+
+        A controller that it forces moves nothing but the controller's own final elements.
+        """
+        if not lost or not interlock.actions:
+            return True
+        moved: set[str] = set()
+        for tag in interlock.actions:
+            if tag in self._plant.register.loops:
+                moved.update(element.tag for element in final_elements_of(self._plant, tag))
+            else:
+                moved.add(tag)
+        return not moved <= lost
+
+    def _voting(self, sensors: Sequence[str], side: str) -> Iterator[Trip]:
+        """Initiators on these transmitters that are enough together to trip their interlock."""
         found = [
             trip
-            for watcher in watchers
-            for trip in self._analysis.trips_on(transmitter_of(watcher))
+            for sensor in sensors
+            for trip in self._analysis.trips_on(sensor)
             if known(trip.initiator.direction) == side
         ]
         for trip in found:

@@ -8,6 +8,7 @@ from loopdoc.engineering.direction import PathSign, Undecided, path_sign, proces
 from loopdoc.engineering.pairing import ControlledLoop, Route
 from loopdoc.register.model import FinalElement, Hold, Process, known
 from loopdoc.register.place import Place
+from loopdoc.register.quantity import Range
 from loopdoc.rules.finding import Level
 from loopdoc.rules.rule import Draft, draft, need, not_checked, only_if, rule
 
@@ -59,9 +60,9 @@ def action_undecided(controlled: ControlledLoop) -> Iterator[Draft]:
         automatic.
     Breaks:
         No `action`, no `process`, an `effect` on hold, `effect: rises` with a negative gain, a final element without
-        `opens_on`, the two branches of a split range with opposite products.
+        `opens_on`.
     Holds:
-        Each step of each path has its sign, and all paths of one controller have the same.
+        Each step of each path has its sign.
     What this check cannot see:
         Whether the signs are true.
     """
@@ -85,19 +86,49 @@ def action_undecided(controlled: ControlledLoop) -> Iterator[Draft]:
             remedy=f"write `action: {path.action}`, as the controller is configured",
             at=controlled.controller.origin,
         )
-    if len(signs) > 1:
-        process = known(controlled.loop.process)
-        routes = zip(controlled.routes, paths, strict=True)
-        each = "; ".join(
-            f"{path.action} for {route.end.tag}: {path}" for route, path in routes if isinstance(path, PathSign)
-        )
+
+
+@rule(level=Level.ERROR, source="sign algebra; common practice for split ranges")
+def split_range_direction(controlled: ControlledLoop) -> Iterator[Draft]:
+    """The branches of a split range need opposite actions of their one controller.
+
+    Why:
+        Whichever action the controller has, one of the two elements then drives the measurement away from the
+        setpoint: the loop works on one side of the split and runs off on the other.
+    Breaks:
+        Nitrogen that raises the pressure on 50 to 100 % and a vent that lowers it on 50 to 100 % too.
+    Holds:
+        The product of the signs is the same along every branch. Of two elements with opposite effects one opens as
+        the output rises and the other as it falls (`PV-3001A: 50 to 100 %`, `PV-3001B: 50 to 0 %`).
+    What this check cannot see:
+        An effect that is stated wrongly.
+    """
+    only_if(len(controlled.routes) > 1)
+    paths = _paths(controlled)
+    decided = [(route, path) for route, path in zip(controlled.routes, paths, strict=True) if isinstance(path, PathSign)]
+    action = known(controlled.controller.action)
+    wanted = action if action in {path.action for _, path in decided} else decided[0][1].action if decided else None
+    for route, path in decided:
+        if path.action == wanted:
+            continue
+        other = next(path for _, path in decided if path.action == wanted)
+        splitter = next((function for function in route.via if route.end.tag in function.outputs), None)
+        at = splitter.origin.place("outputs", route.end.tag) if splitter else controlled.loop.origin.place("process")
+        turned = f"`{route.end.tag}: {_turned(route.branch)}`" if route.branch else "the other direction"
         yield draft(
             controlled.tag,
-            f"no action serves all that it moves ({each})",
-            remedy="turn round the range of one branch (`50 to 0 %`), or correct the step that is not so",
-            at=process.origin.place("branches") if process else controlled.loop.origin,
+            f"it needs {path.action} action for {route.end.tag}: {path}; but {wanted} action for the rest: {other}",
+            remedy=f"turn the branch round ({turned}), or correct the step that is not so",
+            at=at,
             related=tuple(_places(controlled)),
         )
+    if len(decided) < len(paths):
+        not_checked("the direction of a branch does not follow from the register")
+
+
+def _turned(branch: Range) -> Range:
+    """A branch the other way round on its own side of the output."""
+    return Range(branch.high, branch.low, branch.unit)
 
 
 def _paths(controlled: ControlledLoop) -> list[PathSign | Undecided]:

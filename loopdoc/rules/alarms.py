@@ -9,6 +9,7 @@ from loopdoc.engineering.pairing import LoopAlarm
 from loopdoc.engineering.time_to_act import AlarmToTrip, TimeBetween, TimeToAct
 from loopdoc.register.model import ALARM_ORDER, Hold, Loop, known
 from loopdoc.register.quantity import Quantity
+from loopdoc.rules.alarm_design import NAMES, SIDES
 from loopdoc.rules.finding import Level
 from loopdoc.rules.rule import Draft, draft, need, not_checked, only_if, rule
 from loopdoc.rules.values import (
@@ -23,8 +24,6 @@ from loopdoc.rules.values import (
     scale_in,
     time_s,
 )
-
-_NAMES = {"low_low": "low-low", "low": "low", "high": "high", "high_high": "high-high", "deviation": "deviation"}
 
 
 @rule(level=Level.ERROR, source="common practice; alarm types as in ANSI/ISA-18.2-2016 (from memory)")
@@ -46,19 +45,19 @@ def alarm_order(loop: Loop) -> Iterator[Draft]:
     limits = [(alarm, limit) for alarm in alarms if (limit := known(alarm.limit)) is not None]
     for (lower, low), (upper, high) in pairwise(limits):
         scale = scale_in(high.unit, loop)
-        value = reading(low, scale, f"the limit of the {_NAMES[lower.kind]} alarm")
+        value = reading(low, scale, f"the limit of the {NAMES[lower.kind]} alarm")
         if below(value, high.value):
             continue
         relation = "equals" if equal(value, high.value) else "is below"
         yield draft(
             loop.tag,
-            f"the {_NAMES[upper.kind]} alarm at {high} {relation} the {_NAMES[lower.kind]} alarm at {scale.told(low)}",
-            remedy=f"set the {_NAMES[upper.kind]} alarm above the {_NAMES[lower.kind]} alarm, or leave one of them out",
+            f"the {NAMES[upper.kind]} alarm at {high} {relation} the {NAMES[lower.kind]} alarm at {scale.told(low)}",
+            remedy=f"set the {NAMES[upper.kind]} alarm above the {NAMES[lower.kind]} alarm, or leave one of them out",
             at=upper.origin.place("limit"),
-            related=((lower.origin.place("limit"), f"the {_NAMES[lower.kind]} alarm, {low}"),),
+            related=((lower.origin.place("limit"), f"the {NAMES[lower.kind]} alarm, {low}"),),
         )
     for alarm in alarms:
-        need(alarm.limit, f"the limit of the {_NAMES[alarm.kind]} alarm")
+        need(alarm.limit, f"the limit of the {NAMES[alarm.kind]} alarm")
 
 
 @rule(level=Level.ERROR, source="common practice; a signal that saturates cannot pass a limit at its end")
@@ -81,7 +80,7 @@ def alarm_outside_range(subject: LoopAlarm) -> Iterator[Draft]:
     loop, alarm = subject.loop, subject.alarm
     limit = need(alarm.limit, "the alarm limit")
     band = measured_range(loop)
-    name = _NAMES[alarm.kind]
+    name = NAMES[alarm.kind]
     related = ((range_place(loop), f"the range, {band}"),)
     if alarm.kind == "deviation":
         if limit.unit.difference_kind != band.unit.difference_kind:
@@ -108,6 +107,46 @@ def alarm_outside_range(subject: LoopAlarm) -> Iterator[Draft]:
         remedy="set the limit inside the range, or give the transmitter a range that reaches beyond it",
         at=alarm.origin.place("limit"),
         related=related,
+    )
+
+
+@rule(
+    level=Level.WARNING,
+    source="ANSI/ISA-18.2-2016, definition of alarm: an abnormal condition that asks for a response (from memory)",
+)
+def alarm_inside_operating(subject: LoopAlarm) -> Iterator[Draft]:
+    """An alarm sounds while the plant runs as it should.
+
+    Why:
+        An alarm inside the operating band calls the operator to a state that is normal. It stands for hours, is
+        ignored, and takes the others with it.
+    Breaks:
+        A high alarm at 89 degC, or at 90 degC exactly, where normal running reaches to 90 degC.
+    Holds:
+        The high and high-high alarms lie above the high end of the operating band, the low and low-low alarms
+        below its low end. A deviation alarm is not judged.
+    What this check cannot see:
+        Whether the operating band is the one in which the plant really runs; other bands, such as those of start-up.
+    """
+    loop, alarm = subject.loop, subject.alarm
+    only_if(alarm.kind != "deviation")
+    side = "high" if alarm.kind in SIDES["high"] else "low"
+    operating = need(loop.operating, "the operating band")
+    end = need(operating.high if side == "high" else operating.low, f"the {side} end of the operating band")
+    limit = need(alarm.limit, "the alarm limit")
+    scale = scale_in(end.unit, loop)
+    value = reading(limit, scale, "the alarm limit")
+    if above(value, end.value) if side == "high" else below(value, end.value):
+        return
+    where = "lies at the very end of" if equal(value, end.value) else "lies inside"
+    yield draft(
+        loop.tag,
+        f"the {NAMES[alarm.kind]} alarm at {scale.told(limit)} {where} the operating band, "
+        f"which reaches {'up' if side == 'high' else 'down'} to {end}",
+        remedy=f"set the alarm {'above' if side == 'high' else 'below'} {end} with room for the noise, "
+        "or correct the operating band",
+        at=alarm.origin.place("limit"),
+        related=((operating.origin.place(side), f"the {side} end of the operating band, {end}"),),
     )
 
 
@@ -154,7 +193,7 @@ def alarm_time_short(subject: LoopAlarm, times: TimeToAct) -> Iterator[Draft]:
 
 def _too_short(entry: AlarmToTrip, time: TimeBetween, given: Quantity) -> Draft:
     alarm, trip = entry.alarm, entry.trips[0]
-    name = f"the {_NAMES[alarm.kind]} alarm at {known(alarm.limit)}{_delayed(alarm.delay)}"
+    name = f"the {NAMES[alarm.kind]} alarm at {known(alarm.limit)}{_delayed(alarm.delay)}"
     limit = f"{known(trip.initiator.direction)} {known(trip.initiator.limit)}{_delayed(trip.initiator.delay)}"
     order = "before" if time.available_s > 0 else "after"
     return draft(

@@ -1,15 +1,17 @@
-"""Rules on interlocks and their trip limits."""
+"""Rules on what trips an interlock: its limits, its voting, the alarms before it, its time."""
 
 from __future__ import annotations
 
 import math
+import re
 from collections.abc import Iterator
 
-from loopdoc.engineering.pairing import Plant, Trip
-from loopdoc.register.model import Interlock, Loop, known
+from loopdoc.engineering.pairing import Plant, Trip, measured_quantity
+from loopdoc.register.model import Hold, Interlock, Loop, known
+from loopdoc.rules.alarm_design import SIDES, alarms_held
 from loopdoc.rules.finding import Level
 from loopdoc.rules.policy import Limits
-from loopdoc.rules.rule import Draft, draft, need, only_if, rule
+from loopdoc.rules.rule import Draft, draft, need, not_checked, only_if, rule
 from loopdoc.rules.values import Scale, above, below, equal, measured_range, range_place, reading, scale_in, time_s
 
 
@@ -118,6 +120,248 @@ def trip_outside_range(trip: Trip) -> Iterator[Draft]:
         at=trip.initiator.origin.place("trips"),
         related=((range_place(owner), f"the range of {trip.initiator.tag}, {band}"),),
     )
+
+
+@rule(level=Level.ERROR, source="common practice; the trip limit stands outside what the plant does in normal running")
+def trip_inside_operating(trip: Trip, plant: Plant) -> Iterator[Draft]:
+    """An interlock trips while the plant runs as it should.
+
+    Why:
+        The first swing to the end of the operating band shuts the plant down. Interlocks that trip for nothing
+        are bypassed.
+    Breaks:
+        A trip above 89 degC, or above 90 degC exactly, where normal running reaches to 90 degC.
+    Holds:
+        A trip above a limit lies above the high end of the operating band of every loop on its transmitter, a trip
+        below a limit below its low end.
+    What this check cannot see:
+        The operating band of a transmitter that belongs to no loop; bands that the plant passes at start-up.
+    """
+    loops = _loops_on(trip, plant)
+    only_if(loops)
+    direction = need(trip.initiator.direction, "the direction of the trip")
+    limit = need(trip.initiator.limit, "the trip limit")
+    side = "high" if direction == "above" else "low"
+    banded = [(loop, operating) for loop in loops if (operating := known(loop.operating)) is not None]
+    if not banded:
+        need(loops[0].operating, f"the operating band of {loops[0].tag}")
+    for loop, operating in banded:
+        end = need(operating.high if side == "high" else operating.low, f"the {side} end of the operating band")
+        scale = scale_in(end.unit, loop)
+        value = reading(limit, scale, "the trip limit")
+        if above(value, end.value) if side == "high" else below(value, end.value):
+            continue
+        where = "at the very end of" if equal(value, end.value) else "inside"
+        yield draft(
+            trip.interlock.tag,
+            f"it trips {direction} {scale.told(limit)} on {trip.initiator.tag}, {where} the operating band of "
+            f"{loop.tag}, which reaches {'up' if side == 'high' else 'down'} to {end}",
+            remedy=f"set the trip {'above' if side == 'high' else 'below'} {end}, or correct the operating band",
+            at=trip.initiator.origin.place("trips"),
+            related=((operating.origin.place(side), f"the {side} end of the operating band of {loop.tag}, {end}"),),
+        )
+
+
+@rule(
+    level=Level.WARNING,
+    source="common practice; ANSI/ISA-18.2-2016: the operator is told before the plant is tripped (from memory)",
+)
+def trip_without_alarm(interlock: Interlock, plant: Plant) -> Iterator[Draft]:
+    """An interlock trips on a measurement that no alarm watches on the way there.
+
+    Why:
+        The operator could often have kept the plant running with a word in time. Without an alarm the trip is the
+        first he hears of it.
+    Breaks:
+        A trip above 100 degC on a transmitter, or on a quantity, without a high or high-high alarm.
+    Holds:
+        For each quantity and direction that trips, a loop that measures it, with the same transmitter or another,
+        has an alarm on that side. Whether it comes in time is the business of other rules.
+    What this check cannot see:
+        An alarm on another quantity that warns of the same trip: say so in a deviation.
+    """
+    trips = [trip for trip in plant.trips_of[interlock.tag] if trip.instrument or trip.loop]
+    only_if(trips)
+    told: set[tuple[object, str]] = set()
+    lacking = ""
+    for trip in trips:
+        owner = trip.instrument or trip.loop
+        direction = known(trip.initiator.direction)
+        if owner is None or direction not in ("above", "below"):
+            lacking = lacking or "the direction of a trip is not given"
+            continue
+        side = "high" if direction == "above" else "low"
+        key = (measured_quantity(owner) or trip.initiator.tag, side)
+        watching = plant.loops_watching(owner)
+        if key in told or any(kind in loop.alarms for loop in watching for kind in SIDES[side]):
+            continue
+        if any(alarms_held(loop, plant) for loop in watching):
+            lacking = lacking or "the alarms are on hold"
+            continue
+        told.add(key)
+        limit = known(trip.initiator.limit)
+        yield draft(
+            interlock.tag,
+            f"it trips {direction} {limit or 'a limit'} on {trip.initiator.tag}, but no {side} alarm comes before: "
+            f"{_none_there(watching)}",
+            remedy=f"write a `{side}` alarm {'below' if side == 'high' else 'above'} {limit or 'the limit'} on a loop "
+            "that measures this, or say in a deviation what warns of it",
+            at=trip.initiator.origin.place("trips"),
+            related=tuple((loop.origin.key(), f"{loop.tag} measures it") for loop in watching),
+        )
+    if lacking:
+        not_checked(lacking)
+
+
+def _none_there(watching: tuple[Loop, ...]) -> str:
+    if not watching:
+        return "no loop measures it"
+    tags = [loop.tag for loop in watching]
+    return f"{' and '.join(tags)} {'measures' if len(tags) == 1 else 'measure'} it, without one"
+
+
+@rule(
+    level=Level.ERROR,
+    source="IEC 61511-1:2016, MooN architecture (from memory); arithmetic",
+)
+def interlock_voting(interlock: Interlock, plant: Plant) -> Iterator[Draft]:
+    """The voting of an interlock does not agree with its initiators.
+
+    Why:
+        Two of three with two transmitters is either one of two or two of two: the one trips on every fault, the
+        other on none. The cause and effect chart, the logic and the test all start from this line.
+    Breaks:
+        `voting: 2oo3` with two initiators; `3oo2`; two of the votes from one transmitter, under the tag of its loop
+        and under its own.
+    Holds:
+        As many initiators as the voting counts, each on a transmitter of its own, and no more votes asked for than
+        there are. A single initiator needs no voting.
+    What this check cannot see:
+        Votes of votes, such as two of three pressures or a low flow: write them as two interlocks.
+    """
+    trips = plant.trips_of[interlock.tag]
+    paths = plant.register.held.get(interlock.tag, frozenset())
+    if ("initiators",) in paths:
+        not_checked("the initiators are on hold")
+    count = len(interlock.initiators) + sum(1 for path in paths if path[:1] == ("initiators",) and len(path) == 2)
+    only_if(interlock.voting is not None or count > 1)
+    written = need(interlock.voting, "the voting")
+    votes = _VOTING.fullmatch(written)
+    if votes is None:
+        not_checked("the voting could not be read")
+    needed, of = int(votes[1]), int(votes[2])
+    at = interlock.origin.place("voting")
+    if needed > of:
+        yield draft(
+            interlock.tag,
+            f"its voting is {written}: {needed} votes of {of} never come",
+            remedy=f"write `{min(needed, of)}oo{max(needed, of)}`, as the logic is built",
+            at=at,
+        )
+    elif of != count:
+        yield draft(
+            interlock.tag,
+            f"its voting is {written}, but it has {count} initiator{'' if count == 1 else 's'}",
+            remedy=f"write `voting: {min(needed, count)}oo{count}`, or add or strike out initiators",
+            at=at,
+            related=((interlock.origin.key("initiators"), f"{count} initiator{'' if count == 1 else 's'}"),),
+        )
+    first: dict[tuple[str, str | Hold | None], Trip] = {}
+    for trip in trips:
+        transmitter = known(trip.measurement.transmitter) if trip.measurement else None
+        if transmitter is None:
+            continue
+        same = first.setdefault((transmitter, trip.initiator.direction), trip)
+        if same is not trip:
+            yield draft(
+                interlock.tag,
+                f"{same.initiator.tag} and {trip.initiator.tag} both vote, but are one transmitter, {transmitter}",
+                remedy="strike out one of them and correct the voting, or name the transmitter that is meant",
+                at=trip.initiator.origin.key(),
+                related=((same.initiator.origin.key(), "the other vote"),),
+            )
+
+
+_VOTING = re.compile(r"([1-9])oo([1-9])")
+
+
+@rule(level=Level.WARNING, source="common practice; IEC 61511-1:2016, redundant sensors of one function (from memory)")
+def interlock_limits_differ(interlock: Interlock, plant: Plant) -> Iterator[Draft]:
+    """Redundant initiators of an interlock trip at different limits.
+
+    Why:
+        Transmitters of one quantity vote on one fact. With different limits one of them votes late or early, and two
+        of three is no longer what was calculated; mostly it is a typing error.
+    Breaks:
+        Three pressures of one vessel, two of them above 1.2 barg and one above 12 barg.
+    Holds:
+        The initiators of one interlock that measure one quantity and trip in one direction have one limit, in
+        whatever unit.
+    What this check cannot see:
+        Transmitters at different heights, whose limits differ by the head between them: write so in their service,
+        which then is no longer the same up to its first comma.
+    """
+    groups: dict[tuple[tuple[str, str, str], str], list[Trip]] = {}
+    for trip in plant.trips_of[interlock.tag]:
+        owner, direction = trip.instrument or trip.loop, known(trip.initiator.direction)
+        quantity = measured_quantity(owner) if owner else None
+        if quantity is not None and direction is not None:
+            groups.setdefault((quantity, direction), []).append(trip)
+    alike = [trips for trips in groups.values() if len(trips) > 1]
+    only_if(alike)
+    for first, *others in alike:
+        limit = need(first.initiator.limit, "the trip limit")
+        scale = scale_in(limit.unit, first.instrument or first.loop)
+        for other in others:
+            its = need(other.initiator.limit, "the trip limit")
+            if equal(reading(its, scale, "the trip limit"), limit.value):
+                continue
+            direction = known(first.initiator.direction)
+            yield draft(
+                interlock.tag,
+                f"{other.initiator.tag} trips {direction} {scale.told(its)}, {first.initiator.tag}, which measures the "
+                f"same, {direction} {limit}",
+                remedy="write one limit for both",
+                at=other.initiator.origin.place("trips"),
+                related=((first.initiator.origin.place("trips"), f"{first.initiator.tag}, {direction} {limit}"),),
+            )
+
+
+@rule(
+    level=Level.WARNING,
+    source="IEC 61511-1:2016, clause 11.3, behaviour on detection of a fault (from memory); common practice: fail to the "
+    "trip side",
+)
+def trip_fault_blind(trip: Trip) -> Iterator[Draft]:
+    """The transmitter of a trip fails to the side on which it does not trip.
+
+    Why:
+        A trip that its own transmitter's fault disarms is missing from then on, and the plant runs on as if it were
+        there.
+    Breaks:
+        `trips: above 1.6 barg` on a transmitter with `on_fault: reads low`; one that `holds`.
+    Holds:
+        What trips above a limit reads high on a fault, what trips below a limit reads low.
+    What this check cannot see:
+        A logic that counts a bad signal as a vote to trip, or that alarms it and allows a limited time for the
+        repair: where that is so, say it in a deviation.
+    """
+    only_if(trip.measurement is not None)
+    assert trip.measurement is not None
+    direction = need(trip.initiator.direction, "the direction of the trip")
+    on_fault = need(trip.measurement.on_fault, "what the transmitter does on a fault")
+    if on_fault == "unknown":
+        not_checked("what the transmitter does on a fault is unknown")
+    towards = "reads high" if direction == "above" else "reads low"
+    if on_fault != towards:
+        yield draft(
+            trip.interlock.tag,
+            f"it trips {direction} {known(trip.initiator.limit) or 'a limit'}, but on a fault {trip.initiator.tag} "
+            f"{on_fault}: the trip is then blind",
+            remedy=f"set the transmitter so that it {towards} on a fault, and write `on_fault: {towards}`",
+            at=trip.measurement.origin.place("on_fault"),
+            related=((trip.initiator.origin.place("trips"), f"{trip.interlock.tag} trips {direction} its limit"),),
+        )
 
 
 @rule(
