@@ -35,9 +35,7 @@ def as_markdown(result: CheckResult, *, folder: str) -> str:
     return "\n".join([*lines, "", CAUTION, ""])
 
 
-def _table(
-    findings: Sequence[Finding], folder: str, last: str, answer: Callable[[Finding], str]
-) -> Iterator[str]:
+def _table(findings: Sequence[Finding], folder: str, last: str, answer: Callable[[Finding], str]) -> Iterator[str]:
     yield f"| Place | Tag | Rule | Finding | {last} |"
     yield "| --- | --- | --- | --- | --- |"
     for finding in findings[:MAX_ROWS]:
