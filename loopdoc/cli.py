@@ -39,6 +39,28 @@ Exit code: 0 where the test supports a model, 1 where it is refused, 2 where som
 """
 
 
+RECORD_HELP = """\
+RESULTS is a workbook that `--blank` wrote and somebody filled in, or YAML (`schemas/record.schema.json`):
+
+  format: 1
+  checks:
+    - tag: TIC-2014
+      date: 2026-11-30
+      by: A. Meyer
+      instrument: Decade box DB-7
+      readings:
+        measurement 25 %: {as_found: 75.1 degC, as_found_falling: 74.9 degC}
+      functions:
+        controller action: {result: pass}
+
+The names of readings and functions are those of the check record. What a check does not tell has not been done,
+and what has not been done has not passed.
+
+Exit code: 0 where nothing is out of tolerance as it was left, 1 where something is or a function failed, 2 where
+something cannot be read or written.
+"""
+
+
 def main() -> int:
     """Entry point of the `loopdoc` command."""
     # A large register is many small objects that live to the end: collecting among them only costs time.
@@ -111,7 +133,7 @@ def _parser() -> argparse.ArgumentParser:
         nargs="+",
         metavar="KIND",
         default=[],
-        help="narrative, loop-sheet, response (default: all)",
+        help="narrative, loop-sheet, response, check-record (default: all)",
     )
     issue.add_argument("--formats", default="pdf,html", metavar="LIST", help="pdf, html or pdf,html (default)")
     issue.add_argument(
@@ -128,7 +150,12 @@ def _parser() -> argparse.ArgumentParser:
     response.add_argument(
         "--format", choices=("text", "json"), default="text", help="form of the output (default: text)"
     )
-    response.add_argument("--plot", type=Path, metavar="FILE", help="also draw the responses, as .svg, .png or .pdf")
+    response.add_argument(
+        "--plot",
+        type=Path,
+        metavar="FILE",
+        help="also draw the responses over time and over frequency: .pdf (a page each), .svg or .png (in one figure)",
+    )
 
     identify = command("identify", _identify, "fit a process model to a recorded step or bump test")
     identify.formatter_class = argparse.RawDescriptionHelpFormatter
@@ -159,6 +186,22 @@ def _parser() -> argparse.ArgumentParser:
         help="issued files, or folders of them; and a register, if they are to be compared with one",
     )
     attest.add_argument("--format", choices=("text", "json"), default="text", help="form of the output (default: text)")
+
+    record = command("record", _record, "judge the results of loop checks, or write the workbook for them")
+    record.formatter_class = argparse.RawDescriptionHelpFormatter
+    record.epilog = RECORD_HELP
+    _add_register(record)
+    record.add_argument(
+        "results", type=Path, nargs="*", metavar="RESULTS", help="filled workbooks (.xlsx) or YAML files of results"
+    )
+    record.add_argument("--blank", type=Path, metavar="FILE.xlsx", help="write a workbook to fill in, a sheet a loop")
+    record.add_argument("--only", nargs="+", metavar="TAG", default=[], help="with --blank: these loops only")
+    record.add_argument(
+        "--format", choices=("text", "json"), default="text", help="form of the output (default: text)"
+    )
+    record.add_argument(
+        "--write", action="store_true", help="keep the results beside the register, in records/TAG.yaml"
+    )
 
     explain = command("explain", _explain, "explain a rule: what it means, why, and what it cannot see")
     explain.add_argument("rule", metavar="RULE", help="id of a rule, as in a finding")
@@ -296,7 +339,7 @@ def _issue(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int
     if arguments.jobs < 1:
         stderr.write("loopdoc: --jobs takes 1 or more\n")
         return EXIT_UNREADABLE
-    basis = _basis(arguments.register, stderr)
+    basis = _basis(arguments.register, stderr, with_records="check-record" in kinds)
     if basis is None:
         return EXIT_UNREADABLE
     status = EXIT_CLEAN
@@ -315,7 +358,7 @@ def _issue(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int
 
 
 def _response(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
-    from loopdoc.engineering.comparison import Comparison, NotSimulated, compare
+    from loopdoc.engineering.comparison import compare
     from loopdoc.engineering.tuning_review import review, reviewed_loops
     from loopdoc.exchange.responses import response_json, response_text
     from loopdoc.rules.policy import limits_from
@@ -333,16 +376,14 @@ def _response(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> 
     loop = basis.dynamics.loop(arguments.tag)
     comparisons = [compare(chain) for chain in loop.chains]
     if arguments.plot is not None:
-        drawn = next((found for found in comparisons if isinstance(found, Comparison)), None)
-        if drawn is None:
-            reasons = [loop.reason, *(found.reason for found in comparisons if isinstance(found, NotSimulated))]
-            stderr.write(f"loopdoc: nothing to draw for {loop.tag}: {next(filter(None, reasons))}\n")
+        if loop.reason:
+            stderr.write(f"loopdoc: nothing to draw for {loop.tag}: {loop.reason}\n")
             return EXIT_UNREADABLE
         from loopdoc.documents.plots import save
-        from loopdoc.documents.responses import figure
+        from loopdoc.documents.responses import drawings
 
         try:
-            save(figure(drawn), arguments.plot)
+            save(drawings(basis.plant, loop.chains, comparisons), arguments.plot)
         except ValueError as error:
             stderr.write(f"loopdoc: {error}\n")
             return EXIT_UNREADABLE
@@ -445,6 +486,56 @@ def _attest(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> in
     return EXIT_FOUND if doubted else EXIT_CLEAN
 
 
+def _record(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
+    from loopdoc.documents.check_record_list import guide, plant_checks
+    from loopdoc.documents.issue import write_whole
+    from loopdoc.engineering.pairing import Plant
+    from loopdoc.engineering.record_verdict import JudgedRecord, Verdict
+    from loopdoc.exchange.escaping import for_terminal
+    from loopdoc.exchange.record_report import faults_text, judged_records, kept, report_json, report_text
+    from loopdoc.exchange.record_workbook import blank_workbook
+    from loopdoc.exchange.results import read_results
+
+    if bool(arguments.results) == (arguments.blank is not None) or (arguments.only and not arguments.blank):
+        stderr.write("loopdoc: name files of results, or --blank FILE.xlsx and with it --only TAG\n")
+        return EXIT_UNREADABLE
+    loaded = _load(arguments.register, stderr)
+    if loaded is None:
+        return EXIT_UNREADABLE
+    plant = Plant(loaded.register)
+    unknown = [tag for tag in arguments.only if tag not in plant.register.loops]
+    if unknown:
+        stderr.write(for_terminal(f"loopdoc: the register has no loop {unknown[0]}\n"))
+        return EXIT_UNREADABLE
+    checks = plant_checks(plant)
+    if arguments.blank is not None:
+        chosen = [checks[tag] for tag in arguments.only or checks]
+        write_whole(arguments.blank, blank_workbook(chosen, guide=guide(plant, loaded.sources)))
+        stdout.write(f"wrote {arguments.blank}: {len(chosen)} {'loop' if len(chosen) == 1 else 'loops'}\n")
+        return EXIT_CLEAN
+    found = read_results(arguments.results, plant.register.loops)
+    judged = found if isinstance(found, str) else judged_records(found, checks, plant.register.loops)
+    if isinstance(judged, str):
+        stderr.write(judged)
+        return EXIT_UNREADABLE
+    results = [one for one in judged if isinstance(one, JudgedRecord)]
+    if len(results) < len(judged):
+        stderr.write(faults_text(one for one in judged if not isinstance(one, JudgedRecord)))
+        return EXIT_UNREADABLE
+    told = report_json if arguments.format == "json" else report_text
+    stdout.write(told(results, len(plant.register.loops)))
+    if arguments.write:
+        folder = arguments.register.parent if arguments.register.is_file() else arguments.register
+        contents = kept(folder, [one.record for one in results])
+        if isinstance(contents, str):
+            stderr.write(for_terminal(f"loopdoc: nothing was written: {contents}\n"))
+            return EXIT_UNREADABLE
+        for name, content in contents.items():
+            write_whole(folder / name, content)
+            stderr.write(f"wrote {name}\n")
+    return EXIT_FOUND if any(one.verdict is Verdict.FAIL for one in results) else EXIT_CLEAN
+
+
 def _explain(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
     from loopdoc.rules.catalogue import RULES
     from loopdoc.rules.explain import explanation
@@ -485,14 +576,26 @@ def _load(path: Path, stderr: TextIO) -> Loaded | None:
     return loaded
 
 
-def _basis(path: Path, stderr: TextIO) -> Basis | None:
-    """The register read, resolved, checked and calculated; None, with each reason told, where it cannot be read."""
+def _basis(path: Path, stderr: TextIO, *, with_records: bool = False) -> Basis | None:
+    """The register read, resolved, checked and calculated; None, with each reason told, where it cannot be read.
+
+    With the results of loop checks kept beside it, where they are asked for.
+    """
     loaded = _load(path, stderr)
     if loaded is None:
         return None
     from loopdoc.documents.basis import basis_of
 
-    return basis_of(loaded)
+    if not with_records:
+        return basis_of(loaded)
+    from loopdoc.exchange.record_report import faults_text
+    from loopdoc.register.records import load_records
+
+    records = load_records(path.parent if path.is_file() else path)
+    if isinstance(records, tuple):
+        stderr.write(faults_text(records))
+        return None
+    return basis_of(loaded, records)
 
 
 def _unknown_rule(ids: Sequence[str], stderr: TextIO) -> int:

@@ -2,12 +2,13 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Iterator, Sequence
+from collections.abc import Iterable, Iterator, Mapping, Sequence
 
 from loopdoc.documents.failure_story import FailureStory
 from loopdoc.documents.loop_panels import related_interlocks
 from loopdoc.documents.loop_rows import action_words, acts_on
 from loopdoc.documents.naming import Names, moves_by_itself, power_of
+from loopdoc.documents.titleblock import fingerprint
 from loopdoc.documents.values import HOLD, shown
 from loopdoc.documents.wording import NO_BREAK, as_written, listed, sentence, sentences, value
 from loopdoc.engineering.failure import Failure, FailureAnalysis, FailureEffect
@@ -25,7 +26,7 @@ from loopdoc.engineering.scaling import FAILURE_HIGH_MA, FAILURE_LOW_MA
 from loopdoc.engineering.spreading import transmitter_of
 from loopdoc.register.model import FinalElement, Function, Hold, Initiator, Interlock, InterlockAction, Loop, known
 from loopdoc.register.quantity import Quantity, Range, display_number
-from loopdoc.rules.policy import Limits
+from loopdoc.rules.policy import Limits, limits_from
 
 _MODES = ("manual", "automatic", "cascade")
 _VERBS = {
@@ -40,6 +41,28 @@ def loop_checks(plant: Plant, limits: Limits, analysis: FailureAnalysis, loop: L
     """All that is checked on one loop."""
     measured = readings(plant, loop, tolerance_pct=limits.loop_check_tolerance, travel_pct=limits.travel_tolerance)
     return LoopChecks(loop.tag, measured, tuple(_functions(plant, analysis, loop)))
+
+
+def plant_checks(plant: Plant) -> dict[str, LoopChecks]:
+    """All that is checked on every loop, by tag."""
+    limits, analysis = limits_from(plant.register.policy), FailureAnalysis(plant)
+    return {tag: loop_checks(plant, limits, analysis, loop) for tag, loop in plant.register.loops.items()}
+
+
+def guide(plant: Plant, sources: Mapping[str, bytes]) -> tuple[str, ...]:
+    """The first page of a workbook of blanks: what it was made from and how it is filled in."""
+    register = plant.register
+    site, revision = register.site, register.revision
+    return (
+        f"Loop check results, {shown(site.name if site else None)}",
+        f"Register at revision {shown(revision.code if revision else None)}, fingerprint {fingerprint(sources)[:12]}",
+        "",
+        "One sheet a loop. Date and who tested are needed; sheets without results are passed over.",
+        "Readings: numbers in the unit of their row. As found is before, as left after an adjustment; leave as left "
+        "empty where nothing was adjusted.",
+        "Functions: pass, fail or not done. What is left empty has not been done, and has not passed.",
+        "Tags, names, figures and columns of the blank stay as they are: by them the results are read back.",
+    )
 
 
 def elements_of(plant: Plant, loop: Loop) -> tuple[FinalElement, ...]:

@@ -7,7 +7,8 @@ without a new revision of every document.
 from __future__ import annotations
 
 import json
-from collections.abc import Callable, Mapping
+import re
+from collections.abc import Callable, Iterable, Mapping
 from dataclasses import dataclass, field
 from functools import cache
 from importlib.resources import files
@@ -32,6 +33,9 @@ CONDITIONS = ("ambient", "reference_junction")
 """Temperatures that a check may carry."""
 _SCHEMA = "record.schema.json"
 MAX_FILES = 20_000
+# Text that YAML reads as it stands without quotes: it begins as a word or as a number with its unit.
+_PLAIN = re.compile(r"(?:[A-Za-z]|[-+]?[0-9.]+ [A-Za-z%])[A-Za-z0-9 .,;%/()+_-]*(?<! )")
+_WORDS = ("true", "false", "null", "yes", "no", "on", "off")
 
 
 @dataclass(frozen=True, slots=True)
@@ -177,3 +181,40 @@ def _format() -> Format:
 @cache
 def _validator() -> Draft202012Validator:
     return validator_of(json.loads(schema_text()))
+
+
+# ---------------------------------------------------------------- writing
+
+
+def records_text(records: Iterable[LoopRecord]) -> str:
+    """Checks as a record file holds them, one fact a line."""
+    return "format: 1\nchecks:\n" + "".join(map(entry_text, records))
+
+
+def entry_text(record: LoopRecord) -> str:
+    """One check as an entry of a record file."""
+    lines = [f"  - tag: {_scalar(record.tag)}", f"    date: {record.date}", f"    by: {_scalar(record.by)}"]
+    for key in ("witnessed_by", "instrument", "calibration", *CONDITIONS, "remarks"):
+        value = getattr(record, key)
+        if value:
+            lines.append(f"    {key}: {_scalar(str(value))}")
+    if record.readings:
+        lines.append("    readings:")
+    for name, reading in record.readings.items():
+        lines.append(f"      {_scalar(name)}:")
+        for key in ("expected", "accept", *RESULTS):
+            value = getattr(reading, key)
+            if value is not None:
+                lines.append(f"        {key}: {_scalar(str(value))}")
+    if record.functions:
+        lines.append("    functions:")
+    for name, function in record.functions.items():
+        lines.append(f"      {_scalar(name)}:")
+        told = {key: getattr(function, key) for key in ("against", "result", "remark")}
+        lines += [f"        {key}: {_scalar(text)}" for key, text in told.items() if text]
+    return "\n".join(lines) + "\n"
+
+
+def _scalar(text: str) -> str:
+    """A text as YAML: plain where that is read back as it stands, else in quotes."""
+    return text if _PLAIN.fullmatch(text) and text.casefold() not in _WORDS else json.dumps(text, ensure_ascii=False)
