@@ -7,6 +7,7 @@ import gc
 import os
 import sys
 from collections.abc import Callable, Mapping, Sequence
+from io import TextIOWrapper
 from pathlib import Path
 from typing import TYPE_CHECKING, TextIO
 
@@ -65,6 +66,9 @@ def main() -> int:
     """Entry point of the `loopdoc` command."""
     # A large register is many small objects that live to the end: collecting among them only costs time.
     gc.set_threshold(50_000, 20, 50)
+    for stream in (sys.stdout, sys.stderr):
+        if isinstance(stream, TextIOWrapper):
+            stream.reconfigure(errors="backslashreplace")  # a terminal that knows no degree sign is no reason to fail
     try:
         return run(sys.argv[1:], sys.stdout, sys.stderr)
     except BrokenPipeError:  # the reader of our output has gone, as in `loopdoc check . | head`

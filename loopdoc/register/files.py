@@ -41,10 +41,9 @@ class FolderFiles:
         return (self.folder / name).read_bytes()
 
     def matching(self, pattern: str) -> list[str]:
-        try:
-            found = sorted(file for file in self.folder.glob(pattern) if file.is_file())
-        except (ValueError, NotImplementedError, IndexError):  # no pattern, as `a**` or `.`
+        if not _names_files(pattern):
             return []
+        found = sorted(file for file in self.folder.glob(pattern) if file.is_file())
         return [file.relative_to(self.folder).as_posix() for file in found]
 
     def leads_outside(self, name: str) -> bool:
@@ -80,7 +79,15 @@ def is_register(path: Path) -> bool:
 def matching(pattern: str, names: Iterable[str]) -> list[str]:
     """The names that a pattern of `include` matches, as a folder's `glob` finds and orders them."""
     parts = PurePosixPath(pattern).parts
+    if not _names_files(pattern):
+        return []
     return sorted((name for name in names if _matches(parts, PurePosixPath(name).parts)), key=PurePosixPath)
+
+
+def _names_files(pattern: str) -> bool:
+    """Whether a pattern means the same to every version of Python: `a**` and a last `**` do not."""
+    parts = PurePosixPath(pattern).parts
+    return bool(parts) and parts[-1] != "**" and all("**" not in part or part == "**" for part in parts)
 
 
 def _matches(pattern: tuple[str, ...], name: tuple[str, ...]) -> bool:
