@@ -3,33 +3,29 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from typing import Any
 
-import numpy as np
-
 from loopdoc.documents.basis import Basis, Page
+from loopdoc.documents.frequency_plot import frequency_caption, frequency_drawing
+from loopdoc.documents.magnitudes import difference_unit, duration, number, with_unit
 from loopdoc.documents.narrative import Supplement
 from loopdoc.documents.page_fit import foot
-from loopdoc.documents.plots import Curve, Drawing, Limit, Panel, to_svg
+from loopdoc.documents.plots import Drawing, to_svg
+from loopdoc.documents.response_figure import caption, figure
+from loopdoc.documents.upset_story import declared_upsets, single_loop_assumption, told_of, upset_name
 from loopdoc.documents.values import DASH, shown
 from loopdoc.documents.view import Figure
 from loopdoc.documents.wording import listed, sentences
-from loopdoc.engineering.comparison import UPSET_PCT, Comparison, NotSimulated, ScenarioResponses
+from loopdoc.engineering.comparison import Comparison, NotSimulated
 from loopdoc.engineering.dynamics import ChainDynamics
-from loopdoc.engineering.pairing import Scheme
-from loopdoc.engineering.process import FloatArray
-from loopdoc.engineering.simulation import Response
+from loopdoc.engineering.pairing import Plant, Scheme
 from loopdoc.engineering.stages import measured_range
+from loopdoc.engineering.tuning_review import NotReviewed, TuningReview, review
+from loopdoc.engineering.tuning_table import CAUTION, Wanted, tuning_table
 from loopdoc.register.model import known
-from loopdoc.register.quantity import Range, display_number
-from loopdoc.register.units import unit
-
-ALARM_NAMES = {"high_high": "HH", "high": "H", "low": "L", "low_low": "LL"}
-COLUMNS = 4
-"""Upsets side by side in a figure."""
-TIME_UNITS = ((7200.0, 3600.0, "h"), (600.0, 60.0, "min"), (0.0, 1.0, "s"))
-"""From this duration on [s], divide by this and write that."""
+from loopdoc.register.quantity import Range
+from loopdoc.rules.policy import limits_from
 
 
 def responses(basis: Basis) -> Iterator[Page]:
@@ -48,10 +44,14 @@ def supplements(basis: Basis) -> dict[str, Supplement]:
         compared = [comparison for comparison in all_chains if isinstance(comparison, Comparison)]
         if compared:
             found[scheme.lead.tag] = Supplement(
-                " ".join(sentence for comparison in compared if (sentence := benefit(comparison))),
-                tuple(Figure(basis.drawn(found.dynamics, _svg), caption(found)) for found in compared),
+                " ".join(told for comparison in compared for told in told_of(comparison) if told),
+                tuple(Figure(_drawn(basis, found.dynamics), caption(found)) for found in compared),
             )
     return found
+
+
+def _drawn(basis: Basis, dynamics: ChainDynamics) -> str:
+    return basis.drawn(dynamics, lambda comparison: to_svg(figure(basis.plant, comparison)))
 
 
 def _chains(basis: Basis, scheme: Scheme) -> list[ChainDynamics]:
@@ -63,27 +63,6 @@ def _chains(basis: Basis, scheme: Scheme) -> list[ChainDynamics]:
         if not any(dynamics.loop(primary.tag).chains for primary in plant.primaries_of(loop.tag))
         for chain in dynamics.loop(loop.tag).chains
     ]
-
-
-def benefit(comparison: Comparison) -> str:
-    """What a cascade gains on an upset at its innermost loop, in a sentence; empty where nothing is compared."""
-    entry = next((entry for entry in comparison.scenarios if entry.scenario.disturbances), None)
-    if comparison.single is None or entry is None or entry.single is None:
-        return ""
-    lead = comparison.dynamics.chain.lead
-    own = measured_range(lead)
-    unit = difference_unit(own)
-    peaks = [abs(found.metrics.peak_pct) * own.span / 100.0 for found in (entry.single, entry.tuned)]
-    ratio = entry.ratio("iae_pct_s")
-    integral = ""
-    if ratio is not None and ratio < 1:
-        integral = f" The integral of the absolute error is {display_number(100.0 * ratio, 2)} % of the single loop's."
-    upset = upset_name(comparison, entry)
-    return (
-        f"With the cascade, {upset[0].lower()}{upset[1:]} moves {lead.tag} by {_with_unit(peaks[1], unit)} at most; a "
-        f"single loop on {comparison.dynamics.chain.final_element.tag}, tuned by SIMC to the same Ms, would let it "
-        f"move by {_with_unit(peaks[0], unit)}.{integral}"
-    )
 
 
 def _page(basis: Basis, scheme: Scheme, chains: list[ChainDynamics]) -> Page:
@@ -101,7 +80,11 @@ def _page(basis: Basis, scheme: Scheme, chains: list[ChainDynamics]) -> Page:
         unit=unit,
         serial=f"{match['letters']}{serial}" if match else serial,
     )
-    view = {"sections": [section(basis, chain, several=len(chains) > 1) for chain in chains], "foot": foot(document)}
+    view = {
+        "sections": [section(basis, chain, several=len(chains) > 1) for chain in chains],
+        **review_section(basis, scheme),
+        "foot": foot(document),
+    }
     return Page("responses", lead.tag, document, "responses.html", view)
 
 
@@ -121,8 +104,49 @@ def section(basis: Basis, dynamics: ChainDynamics, *, several: bool) -> dict[str
         "unit": difference_unit(measured_range(chain.lead)),
         "rows": metric_rows(comparison) if comparison else [],
         "single": comparison is not None and comparison.single is not None,
-        "figure": basis.drawn(dynamics, _svg),
+        "figure": _drawn(basis, dynamics),
         "caption": caption(comparison) if comparison else "",
+        "declared": declared_upsets(dynamics, compared),
+        "assumption": single_loop_assumption(comparison) if comparison else "",
+        "frequency_figure": to_svg(frequency_drawing(dynamics)),
+        "frequency_caption": frequency_caption(dynamics),
+    }
+
+
+def drawings(
+    plant: Plant, chains: Sequence[ChainDynamics], comparisons: Sequence[Comparison | NotSimulated]
+) -> list[Drawing]:
+    """What is drawn of a loop alone: of each chain the time responses, where there are any, and the open loops."""
+    found: list[Drawing] = []
+    for dynamics, comparison in zip(chains, comparisons, strict=True):
+        if isinstance(comparison, Comparison):
+            found.append(figure(plant, comparison))
+        found.append(frequency_drawing(dynamics))
+    return found
+
+
+def review_section(basis: Basis, scheme: Scheme) -> dict[str, Any]:
+    """View of the tuning review: a table for each loop of a scheme (each branch of a split range), or why none."""
+    limits = limits_from(basis.plant.register.policy)
+    wanted = Wanted(limits.gain_margin, limits.phase_margin, limits.max_sensitivity)
+    reviews = [
+        found
+        for loop in scheme.loops
+        if loop.tag in basis.plant.controlled
+        for found in review(basis.dynamics.loop(loop.tag))
+    ]
+    tables = [(found.form, tuning_table(found, wanted)) for found in reviews if isinstance(found, TuningReview)]
+    return {
+        "reviews": [{"form": form, "table": table} for form, table in tables],
+        "not_reviewed": [
+            {"tag": found.tag, "reason": found.reason} for found in reviews if isinstance(found, NotReviewed)
+        ],
+        "review_sources": list(dict.fromkeys(source for _, table in tables for source in table.sources)),
+        "review_policy": (
+            f"Outside the policy: a gain margin below {number(wanted.gain_margin)}, a phase margin below "
+            f"{number(wanted.phase_margin_deg)}°, Ms above {number(wanted.max_sensitivity)}."
+        ),
+        "review_caution": CAUTION,
     }
 
 
@@ -134,8 +158,8 @@ def margin_rows(dynamics: ChainDynamics) -> list[dict[str, str]]:
             "gain_margin": number(margins.gain_margin),
             "phase_margin": f"{number(margins.phase_margin_deg)}°",
             "max_sensitivity": number(margins.max_sensitivity),
-            "crossover": _with_unit(margins.crossover_rad_per_s, "rad/s"),
-            "period": _duration(2 * math.pi / margins.crossover_rad_per_s),
+            "crossover": with_unit(margins.crossover_rad_per_s, "rad/s"),
+            "period": duration(2 * math.pi / margins.crossover_rad_per_s),
             "model": shown(known(level.loop.loop.process).source) if known(level.loop.loop.process) else DASH,  # type: ignore[union-attr]
         }
         for level, margins in zip(reversed(dynamics.chain.levels), reversed(dynamics.margins), strict=True)
@@ -171,161 +195,18 @@ def metric_rows(comparison: Comparison) -> list[dict[str, str]]:
             "upset": upset_name(comparison, entry),
             "peak": _eu(entry.tuned.metrics.peak_pct, own),
             "iae": _eu(entry.tuned.metrics.iae_pct_s / 60.0, own),
-            "settling": _duration(entry.tuned.metrics.settling_s),
+            "settling": duration(entry.tuned.metrics.settling_s),
             "travel": f"{number(entry.tuned.metrics.valve_travel_pct)} %",
             "single_peak": _eu(entry.single.metrics.peak_pct, own) if entry.single else DASH,
             "single_iae": _eu(entry.single.metrics.iae_pct_s / 60.0, own) if entry.single else DASH,
-            "single_settling": _duration(entry.single.metrics.settling_s) if entry.single else DASH,
-            "iae_ratio": number(ratio) if (ratio := entry.ratio("iae_pct_s")) is not None else DASH,
+            "single_settling": duration(entry.single.metrics.settling_s) if entry.single else DASH,
+            "peak_ratio": number(entry.ratio("peak_pct")),
+            "iae_ratio": number(entry.ratio("iae_pct_s")),
+            "settling_ratio": number(entry.ratio("settling_s")),
         }
         for entry in comparison.scenarios
     ]
 
 
-def upset_name(comparison: Comparison, entry: ScenarioResponses) -> str:
-    """What upsets the loop, with its size in engineering units."""
-    levels = comparison.dynamics.chain.levels
-    if entry.scenario.setpoint_step_pct:
-        lead = comparison.dynamics.chain.lead
-        return f"Setpoint of {lead.tag} up by {_step(entry.scenario.setpoint_step_pct, measured_range(lead))}"
-    moved = entry.scenario.disturbances[0]
-    loop = levels[moved.level].loop
-    if moved.path is not None:
-        return f"{entry.scenario.name[:1].upper()}{entry.scenario.name[1:]}, declared at {loop.tag}"
-    size = _step(moved.size_pct, measured_range(loop))
-    integrating = known(loop.loop.process).integrating if known(loop.loop.process) else False  # type: ignore[union-attr]
-    return f"An upset of {size} at {loop.tag}" + (" at its process input" if integrating else "")
-
-
-def figure(comparison: Comparison) -> Drawing:
-    """Above, the outermost measurement in engineering units; below, the final element; a column for each upset."""
-    chain = comparison.dynamics.chain
-    lead = chain.lead
-    own = measured_range(lead)
-    alarms = tuple(
-        Limit(f"{ALARM_NAMES[kind]} {shown(limit)}", limit.to(own.unit.symbol))
-        for kind, alarm in lead.loop.alarms.items()
-        if kind in ALARM_NAMES and (limit := known(alarm.limit)) is not None
-    )
-    above: list[Panel] = []
-    below: list[Panel] = []
-    for entry in _drawn(comparison):
-        last = float(entry.tuned.time_s[-1])
-        _, divisor, time_unit = next(unit for unit in TIME_UNITS if last >= unit[0])
-        shown_names = ("cascade", "single loop") if entry.single else ("as tuned", "")
-        curves = [Curve("setpoint", "dotted", *_xy(entry.tuned, _setpoint(entry.tuned, own), divisor))]
-        valves = []
-        for name, style, response in (
-            (shown_names[0], "solid", entry.tuned),
-            (shown_names[1], "dashed", entry.single),
-        ):
-            if response is not None:
-                curves.append(
-                    Curve(name, style, *_xy(response, _eu_curve(response.measurement_pct[-1], own), divisor))
-                )
-                valves.append(Curve(name, style, *_xy(response, response.travel_pct, divisor)))
-        ordinate = f"{lead.tag}, {own.unit.display}" if not above else ""
-        above.append(Panel(_short_name(comparison, entry), "", ordinate, tuple(curves), alarms))
-        below.append(
-            Panel("", f"time, {time_unit}", f"{chain.final_element.tag}, %" if not below else "", tuple(valves))
-        )
-    return Drawing(f"Time responses of {lead.tag} with {chain.final_element.tag}", (tuple(above), tuple(below)))
-
-
-def _drawn(comparison: Comparison) -> list[ScenarioResponses]:
-    """The upsets that a figure has room for: the setpoint step, then those that the register declares."""
-    step, *others = comparison.scenarios
-    declared = [entry for entry in others if entry.scenario.disturbances[0].path is not None]
-    return [step, *declared, *(entry for entry in others if entry not in declared)][:COLUMNS]
-
-
-def _svg(comparison: Comparison) -> str:
-    return to_svg(figure(comparison))
-
-
-def caption(comparison: Comparison) -> str:
-    """What is shown and under which assumptions."""
-    chain = comparison.dynamics.chain
-    stroke = known(chain.final_element.stroke_time)
-    parts = [
-        f"Response of {chain.lead.tag} to a step of {number(UPSET_PCT)} % of span in its setpoint and, through the lag "
-        f"of the process concerned, at each measurement.",
-        "Upsets that the register declares come with their own size and lag."
-        if any(entry.scenario.disturbances and entry.scenario.disturbances[0].path for entry in comparison.scenarios)
-        else "",
-        "Linear models about the normal values, simulated scan by scan as executed, with output limits"
-        + (f" and a stroke time of {shown(stroke)}" if stroke else "")
-        + "; every measurement starts at its normal value and the final element in the middle of its output limits.",
-    ]
-    if comparison.single is not None:
-        settings = comparison.single.settings
-        parts.append(
-            f"Single loop: one controller on {chain.final_element.tag} in place of the cascade, tuned by SIMC "
-            f"to the same maximum sensitivity, Ms {number(comparison.single.max_sensitivity)} "
-            f"(gain {number(abs(settings.gain))}, reset {_duration(settings.reset_s)})."
-        )
-    elif len(chain.levels) > 1:
-        parts.append(
-            "No single loop on the same final element reaches the same maximum sensitivity by SIMC; none is drawn."
-        )
-    return " ".join(part for part in parts if part)
-
-
-def number(value: float | None) -> str:
-    """A calculated number to three digits; a dash where there is none."""
-    return DASH if value is None or math.isnan(value) else display_number(value, 3)
-
-
-def _short_name(comparison: Comparison, entry: ScenarioResponses) -> str:
-    if entry.scenario.setpoint_step_pct:
-        return "Setpoint step"
-    if entry.scenario.disturbances[0].path is not None:
-        return f"{entry.scenario.name[:1].upper()}{entry.scenario.name[1:]}"
-    return f"Upset at {comparison.dynamics.chain.levels[entry.scenario.disturbances[0].level].loop.tag}"
-
-
-def _setpoint(response: Response, own: Range) -> FloatArray:
-    setpoint = response.setpoint_pct[-1]
-    assert setpoint is not None
-    return _eu_curve(setpoint, own)
-
-
-def _eu_curve(percent: FloatArray, own: Range) -> FloatArray:
-    return own.low + percent * own.span / 100.0
-
-
-def _xy(response: Response, values: FloatArray, divisor: float) -> tuple[FloatArray, FloatArray]:
-    return np.asarray(response.time_s / divisor), values
-
-
 def _eu(percent: float, own: Range) -> str:
     return number(percent * own.span / 100.0)
-
-
-def _step(percent: float, own: Range) -> str:
-    return _with_unit(percent * own.span / 100.0, difference_unit(own))
-
-
-def difference_unit(own: Range) -> str:
-    """The unit in which a change of a measurement is printed: kelvin for degrees Celsius, bar for bar gauge."""
-    symbol = own.unit.symbol
-    if symbol == "degC":
-        return "K"
-    if own.unit.kind in ("gauge pressure", "absolute pressure"):
-        return unit(symbol[:-1]).display
-    return own.unit.display
-
-
-
-def _with_unit(value: float, unit: str) -> str:
-    return DASH if math.isnan(value) else f"{number(value)}\u00a0{unit}"
-
-
-def _duration(seconds: float) -> str:
-    """A time in the unit an operator would say it in."""
-    if math.isnan(seconds):
-        return DASH
-    if math.isinf(seconds):
-        return "not within the time shown"
-    _, divisor, unit = next(unit for unit in TIME_UNITS if seconds >= unit[0])
-    return _with_unit(seconds / divisor, unit)

@@ -13,8 +13,8 @@ from loopdoc.engineering.open_loop import level_arrays, open_loops
 from loopdoc.engineering.process import FloatArray
 from loopdoc.engineering.sampled import SampledChain
 
-POINTS = 500
-"""Frequencies of a curve: two neighbours differ by about 1 %."""
+POINTS = 300
+"""Frequencies of a curve: two neighbours differ by about 2 %."""
 _BELOW, _ABOVE = 50.0, 20.0
 """The curves reach from so far below the lowest crossover to so far above the highest."""
 
@@ -51,7 +51,7 @@ def loop_curves(stages: Sequence[LoopStage], margins: Margins) -> LoopCurves:
     Returns
     -------
     LoopCurves
-        Arrays of shape (500,) [rad/s], [dimensionless], [deg].
+        Arrays of shape (300,) [rad/s], [dimensionless], [deg].
 
     Source: K. J. Astrom, R. M. Murray, Feedback Systems, 2nd ed. 2020, ch. 10 and 12 (loop transfer function,
     sensitivity functions).
