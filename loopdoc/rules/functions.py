@@ -37,8 +37,8 @@ def function_incomplete(function: Function, plant: Plant) -> Iterator[Draft]:
     kind = need(function.kind, "the kind of the function")
     entering = len(plant.commanders.get(function.tag, ())) + len(function.inputs)
     if function.to is None and not function.outputs:
-        if kind == "split range" and _written(function, "outputs"):
-            not_checked("the outputs could not be read")
+        if function.origin.place("outputs") != function.origin.key():
+            not_checked("the outputs are on hold")
         yield draft(
             function.tag,
             f"it is a {kind} that leads nowhere",
@@ -53,7 +53,7 @@ def function_incomplete(function: Function, plant: Plant) -> Iterator[Draft]:
             remedy="add the other final element, or lead the controller to this one",
             at=function.origin.place("outputs"),
         )
-    if not function.inputs and _written(function, "inputs"):
+    if function.inputs_held:
         not_checked("the inputs are on hold")
     lacking = ""
     if kind in (*_SELECTORS, "sum") and entering < 2:
@@ -71,11 +71,6 @@ def function_incomplete(function: Function, plant: Plant) -> Iterator[Draft]:
             remedy="lead the missing output to it, or name the measurement under `inputs`; or take the function out",
             at=function.origin.key(),
         )
-
-
-def _written(function: Function, key: str) -> bool:
-    """Whether something stands under a key that was not read as what it should be."""
-    return function.origin.place(key) != function.origin.key()
 
 
 # ---------------------------------------------------------------- ratio stations

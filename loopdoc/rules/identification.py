@@ -102,9 +102,10 @@ def tag_variable_mismatch(part: Loop | Instrument | FinalElement | Function, pla
     if isinstance(part, Loop | Instrument):
         yield from _of_measurement(part, plant)
         return
+    related = plant.commanders.get(part.tag, ())
     if isinstance(part, FinalElement):
         only_if(known(part.kind) in _VALVES)
-    related = plant.commanders.get(part.tag, ())
+        related = (*(loop.tag for loop in plant.moved_by.get(part.tag, ())), *related)
     if isinstance(part, Function):
         to = known(part.to)
         related = (*related, *part.inputs, *part.outputs, *((to,) if to else ()))
@@ -117,7 +118,7 @@ def tag_variable_mismatch(part: Loop | Instrument | FinalElement | Function, pla
     named, letter = next(iter(firsts.items()))
     yield draft(
         part.tag,
-        f"it begins with {_told(own.first)}, but {_related(part, named, plant)} {named} begins with {_told(letter)}",
+        f"it begins with {_told(own.first)}, but {named}, {_related(part, named, plant)}, begins with {_told(letter)}",
         remedy=f"begin the tag with {letter}, or correct the one of {named}",
         at=part.origin.key(),
         related=((plant.register.defined_at(named) or part.origin.key(), f"{named}"),),
@@ -126,9 +127,11 @@ def tag_variable_mismatch(part: Loop | Instrument | FinalElement | Function, pla
 
 def _related(part: FinalElement | Function, named: str, plant: Plant) -> str:
     """How a tag belongs to a final element or a function, in words."""
+    if isinstance(part, FinalElement):
+        return "which moves it"
     if named in plant.commanders.get(part.tag, ()):
-        return "it is moved by" if isinstance(part, FinalElement) else "it is commanded by"
-    return "its input" if isinstance(part, Function) and named in part.inputs else "it commands"
+        return "which commands it"
+    return "its input" if named in part.inputs else "which it commands"
 
 
 def _of_measurement(part: Loop | Instrument, plant: Plant) -> Iterator[Draft]:

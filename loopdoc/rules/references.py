@@ -200,6 +200,8 @@ def _of_deviations(register: Register, rule_ids: Collection[str]) -> Iterator[Re
     anything = Names("a tag of the register", {*tags, *register.measurements, *register.units, *SECTIONS, *files})
     for deviation in register.deviations:
         at, rule = known(deviation.at), known(deviation.rule)
+        if at is not None and at not in anything.tags:
+            at = at.partition("/")[0]  # it goes on to a place below the tag
         whose = at or "deviations"
         if rule is not None:
             where = "the rule of a deviation"
