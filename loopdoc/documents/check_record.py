@@ -8,8 +8,8 @@ from dataclasses import dataclass, replace
 
 from loopdoc.documents.basis import Basis, Page
 from loopdoc.documents.check_record_fit import (
+    LONGER,
     SIZES,
-    TWO_PAGES,
     Rows,
     filled_height,
     frame_height,
@@ -30,6 +30,7 @@ from loopdoc.engineering.loop_check import (
     LoopChecks,
     Reading,
     pt100_class,
+    reading_digits,
     sensor_tolerances,
     thermocouple_signals_mv,
     thermocouple_type,
@@ -167,9 +168,12 @@ def _fitted(view: RecordView, height: float) -> RecordView:
     for sizes in SIZES:
         if record_height(view, sizes) <= height:
             return replace(view, classes=sizes.name)
-    before = sum(_table_height(table, TWO_PAGES) for table in view.tables if table.title != FUNCTIONS)
-    apart = " apart" if before > HALF * height else ""
-    return replace(view, classes=f"{TWO_PAGES.name}{apart}")
+    for sizes in SIZES:
+        functions = sum(_table_height(table, sizes) for table in view.tables if table.title == FUNCTIONS)
+        before = record_height(view, sizes) - functions
+        if HALF * height < before <= height and functions <= height:
+            return replace(view, classes=f"{sizes.name} apart")
+    return replace(view, classes=LONGER.name)
 
 
 def record_height(view: RecordView, sizes: Rows) -> float:
@@ -358,11 +362,11 @@ def _travel_tables(plant: Plant, loop: Loop, checks: LoopChecks, judged: JudgedR
             columns.append(Column(f"Signal to {element.tag}, {signal.unit}", 11))
         columns += [Column(f"{what.capitalize()}, %", 10), Column("Accept, %", 14), *_blanks(judged)]
         rows = []
+        digits = _digits(found)
         for index, reading in enumerate(found):
             cells = [reading.at.replace(" ", NO_BREAK)]
             if signal:
                 cells.append(signal.values[index])
-            digits = 0 if all(float(one.expected).is_integer() for one in found) else 1
             cells += [_number(reading.expected, digits), _limits(reading, digits)]
             rows.append((*cells, *_results(reading, judged)))
         facts = [known(element.service), kind, f"channel {known(element.channel)}" if known(element.channel) else None]
@@ -503,11 +507,8 @@ def _missing(loop: Loop, checks: LoopChecks) -> Iterator[str]:
 
 
 def _digits(found: Sequence[Reading]) -> int:
-    """Decimals that show the width of what is accepted to two digits."""
-    width = min((one.high - one.low) / 2 for one in found)
-    if width <= 0:
-        return 3
-    digits = max(0, 1 - math.floor(math.log10(width)))
+    """Decimals for readings that stand below each other."""
+    digits = max(reading_digits(one.low, one.high) for one in found)
     # A last digit that is nought everywhere says nothing.
     while digits and all(_shorter(figure, digits) for one in found for figure in (one.expected, one.low, one.high)):
         digits -= 1

@@ -32,8 +32,8 @@ class Rows:
 
 SIZES = (Rows("roomy", 7.8, 6.6 * MM), Rows("normal", 7.4, 5.4 * MM), Rows("dense", 7.0, 4.5 * MM))
 """From the largest to the smallest."""
-TWO_PAGES = SIZES[1]
-"""Where one page does not take it, the functions begin the second."""
+LONGER = SIZES[1]
+"""Where neither one page takes it, nor two with the functions on the second."""
 
 
 def filled_height(

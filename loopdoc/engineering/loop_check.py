@@ -12,6 +12,7 @@ Assumptions
 
 from __future__ import annotations
 
+import math
 import re
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
@@ -79,6 +80,12 @@ class Reading:
     """Whether it is read with the signal rising and again falling."""
     tag: str = ""
     """The final element or interlock that it belongs to; empty for the loop's own."""
+
+
+def reading_digits(low: float, high: float) -> int:
+    """Decimals that show half the width of what is accepted to two digits: with them limits are printed and judged."""
+    half = (high - low) / 2.0
+    return max(0, 1 - math.floor(math.log10(half))) if half > 0.0 else 3
 
 
 @dataclass(frozen=True, slots=True)
@@ -237,6 +244,12 @@ def _is_root(measurement: Measurement) -> bool:
     return known(measurement.characteristic) == "square root"
 
 
+def _printed(expected: float, low: float, high: float) -> tuple[float, float, float]:
+    """The figures as they are printed, so that who reads the paper and who judges go by the same limits."""
+    digits = reading_digits(low, high)
+    return round(expected, digits), round(low, digits), round(high, digits)
+
+
 def _of_measurement(loop: Loop, tolerance_pct: float) -> Iterator[Reading]:
     usable = _usable(loop, tolerance_pct)
     if usable is None:
@@ -247,7 +260,7 @@ def _of_measurement(loop: Loop, tolerance_pct: float) -> Iterator[Reading]:
         at = f"{point.signal_pct:g} %"
         low, high = accepted(point.value, measured, tolerance, square_root=root)
         yield Reading(
-            f"measurement {at}", "measurement", "range", at, measured.unit, point.value, low, high,
+            f"measurement {at}", "measurement", "range", at, measured.unit, *_printed(point.value, low, high),
             both_ways=point.signal_pct < CHECK_POINTS_PCT[-1],
         )  # fmt: skip
 
@@ -265,7 +278,7 @@ def _of_travel(controlled: ControlledLoop | None, travel_pct: float) -> Iterator
                 at = f"{step:g} %"
                 low, high = max(0.0, opening - travel_pct), min(100.0, opening + travel_pct)
                 yield Reading(
-                    f"{element.tag} travel {at}", "travel", "travel", at, PERCENT, opening, low, high,
+                    f"{element.tag} travel {at}", "travel", "travel", at, PERCENT, *_printed(opening, low, high),
                     both_ways=step < CHECK_POINTS_PCT[-1], tag=element.tag,
                 )  # fmt: skip
         time = known(element.stroke_time)
@@ -315,7 +328,7 @@ def _point(
         low, high = low - measured.low, high - measured.low
     else:
         low, high = accepted(limit, measured, tolerance, square_root=_is_root(measurement))
-    yield Reading(key, group, subject, key, measured.unit, limit, low, high, tag=tag)
+    yield Reading(key, group, subject, key, measured.unit, *_printed(limit, low, high), tag=tag)
 
 
 def _alarm_limit(alarm: Alarm, measured: Range) -> float | None:

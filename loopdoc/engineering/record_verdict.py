@@ -88,9 +88,16 @@ def worst(verdicts: Iterable[Verdict]) -> Verdict:
 
 def judge(checks: LoopChecks, record: LoopRecord) -> JudgedRecord:
     """Every check that the register asks for, with what the record says of it."""
+    readings = [_judged_reading(reading, record.readings.get(reading.key)) for reading in checks.readings]
+    if any(one.changed == "range" for one in readings):
+        # A tolerance in percent of span changes with the range; what has really changed is told.
+        readings = [
+            replace(one, changed="range") if one.changed == "tolerance" and one.reading.group != "travel" else one
+            for one in readings
+        ]
     return JudgedRecord(
         record,
-        tuple(_judged_reading(reading, record.readings.get(reading.key)) for reading in checks.readings),
+        tuple(readings),
         tuple(_judged_function(check, record.functions.get(check.key)) for check in checks.functions),
     )
 
