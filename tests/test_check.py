@@ -231,7 +231,7 @@ def test_a_rule_that_fails_is_told_and_the_others_still_run(tmp_path: Path) -> N
     assert internal.place == loaded.register.final_elements["FV-3003"].origin.key()
     assert "fails-at-one-tag" in internal.message
     assert "ZeroDivisionError: of something" in internal.message
-    assert result.coverage["fails-at-one-tag"].checked == 4, "the other final elements"
+    assert result.coverage["fails-at-one-tag"].checked == 5, "the other final elements"
     assert "output-limit-outside-setpoint" in {finding.rule for finding in result.findings}
 
 
@@ -286,6 +286,7 @@ def test_a_held_range_is_counted_and_not_judged(tmp_path: Path) -> None:
         "operating-outside-range": 1,
         "setpoint-limit-outside-range": 1,
         "alarm-outside-range": 2,
+        "alarm-deadband": 2,
         "trip-outside-range": 1,
         "alarm-time-short": 2,
         "loop-unstable": 1,

@@ -35,7 +35,7 @@ def measurement_fault_unsafe(controlled: ControlledLoop, failures: FailureAnalys
         It is a note where the reading must first go wrong within its range; a warning where the transmitter's own
         declared fault does it, or where an interlock trips on this very transmitter and is blind with it.
     Holds:
-        Where a reading that is too high, too low or failed drives a measurement to its hazard, there is at least one
+        Where a reading that is too high, too low or failed drives its own measurement to its hazard, there is at least one
         alarm or trip with another sensor on something that the failure moves, an interlock with other sensors that
         moves the final element back, or another controller that works against it.
     What this check cannot see:
@@ -46,19 +46,18 @@ def measurement_fault_unsafe(controlled: ControlledLoop, failures: FailureAnalys
     hazard = need(loop.hazard, "the hazard")
     sensor = need(known(loop.measurement) and transmitter_of(loop), "the transmitter")
     effects = [effect for effect in failures.effects(loop.tag) if effect.failure in _READINGS]
-    told: set[tuple[str, int]] = set()
+    only_if(hazard != "none")
+    told: set[int] = set()
     lacking = ""
     for effect in effects:
-        for consequence in effect.consequences:
+        # What the failure does to other measurements, their own alarms tell, or `alarm-missing-for-hazard`.
+        for consequence in (one for one in effect.consequences if one.loop is loop):
             direction = consequence.direction
             if isinstance(direction, Undecided):
                 lacking = lacking or direction.reason
-                continue
-            if not consequence.hazardous or (consequence.loop.tag, direction) in told or _opposed(effect, consequence):
-                continue
-            told.add((consequence.loop.tag, direction))
-            yield _unopposed(controlled, sensor, effect, consequence, failures)
-    only_if(hazard != "none" or told)
+            elif consequence.hazardous and direction not in told and not _opposed(effect, consequence):
+                told.add(direction)
+                yield _unopposed(controlled, sensor, effect, consequence, failures)
     if lacking:
         not_checked(lacking)
 
@@ -81,9 +80,7 @@ def _unopposed(
     blind = [
         trip
         for trip in failures.trips_on(sensor)
-        if trip.loop is not None
-        and transmitter_of(loop) == sensor
-        and known(trip.initiator.direction) == ("above" if side == "high" else "below")
+        if known(trip.initiator.direction) == ("above" if side == "high" else "below")
     ]
     moves = [f"{move.element.tag} {_moves(move)}" for move in effect.elements if move.direction in (1, -1)]
     blinded = f"; {blind[0].interlock.tag} trips on the same transmitter and is blind with it" if blind else ""

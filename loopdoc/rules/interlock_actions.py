@@ -46,7 +46,7 @@ def interlock_action_unsafe(interlock: Interlock, plant: Plant) -> Iterator[Draf
     only_if(moved)
     for action, element in moved:
         position, safe = known(action.position), known(element.safe)
-        if position not in ("closed", "stopped", "open") or safe is None or safe == "last":
+        if position not in ("closed", "stopped", "open") or safe not in _OPENING:
             continue
         if _OPENING[position] != _OPENING[safe]:
             yield draft(
@@ -167,7 +167,7 @@ def trip_output_mismatch(interlock: Interlock, plant: Plant) -> Iterator[Draft]:
     lacking = ""
     for controlled, action, route in forced:
         output, position = known(action.output), known(interlock.actions[route.end.tag].position)
-        if output is None or position is None or output.unit.kind != "fraction":
+        if output is None or position not in _OPENING or output.unit.kind != "fraction":
             lacking = lacking or f"the output of {controlled.tag}, or the position of {route.end.tag}, is not known"
             continue
         stands = _opening_at(route, output.to("%"))

@@ -301,14 +301,15 @@ def interlock_limits_differ(interlock: Interlock, plant: Plant) -> Iterator[Draf
         Transmitters at different heights, whose limits differ by the head between them: write so in their service,
         which then is no longer the same up to its first comma.
     """
-    groups: dict[tuple[tuple[str, str, str], str], list[Trip]] = {}
+    groups: dict[tuple[tuple[str, str, str], str | None], list[Trip]] = {}
     for trip in plant.trips_of[interlock.tag]:
         owner, direction = trip.instrument or trip.loop, known(trip.initiator.direction)
         quantity = measured_quantity(owner) if owner else None
-        if quantity is not None and direction is not None:
+        if quantity is not None:
             groups.setdefault((quantity, direction), []).append(trip)
-    alike = [trips for trips in groups.values() if len(trips) > 1]
-    only_if(alike)
+    held = [trips for (_, direction), trips in groups.items() if direction is None]
+    alike = [trips for (_, direction), trips in groups.items() if direction is not None and len(trips) > 1]
+    only_if(alike or held)
     for first, *others in alike:
         limit = need(first.initiator.limit, "the trip limit")
         scale = scale_in(limit.unit, first.instrument or first.loop)
@@ -325,6 +326,8 @@ def interlock_limits_differ(interlock: Interlock, plant: Plant) -> Iterator[Draf
                 at=other.initiator.origin.place("trips"),
                 related=((first.initiator.origin.place("trips"), f"{first.initiator.tag}, {direction} {limit}"),),
             )
+    if held:
+        need(held[0][0].initiator.limit, "the trip limit")
 
 
 @rule(
