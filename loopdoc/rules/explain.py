@@ -4,8 +4,10 @@ from __future__ import annotations
 
 import ast
 import inspect
+import sys
 import textwrap
 from collections.abc import Callable
+from functools import cache
 from typing import Any
 
 from loopdoc.rules.catalogue import RULES
@@ -36,8 +38,9 @@ def as_markdown(rule: Rule) -> str:
         parts += [f"## {heading}", _plain(rule.sections[heading])]
     limits = thresholds(rule)
     if limits:
-        parts += ["## Policy", "\n".join(f"- {_plain(told)}" for told in limits)]
-    parts += ["## Source", _plain(f"{rule.source}. Since version {rule.since}.")]
+        parts += ["## Policy", "\n".join(f"- {threshold_in_markdown(told)}" for told in limits)]
+    source = f"{rule.source[:1].upper()}{rule.source[1:]}. Since version {rule.since}."
+    parts += ["## Source", _plain(source)]
     return "\n\n".join(parts) + "\n"
 
 
@@ -45,7 +48,7 @@ def overview() -> str:
     """Every rule with its level and statement, then every threshold with its default and source."""
     width = max(len(rule.id) for rule in RULES)
     lines = [f"{rule.id:<{width}}  {rule.level!s:<7}  {rule.statement}" for rule in RULES]
-    lines += ["", "Thresholds (change them under `policy:` in register.yaml):", *_thresholds().values()]
+    lines += ["", "Thresholds (change them under `policy:` in register.yaml):", *all_thresholds()]
     return "\n".join(lines) + "\n"
 
 
@@ -53,6 +56,17 @@ def thresholds(rule: Rule) -> tuple[str, ...]:
     """The thresholds by which a rule judges, each with its default, unit, meaning and source."""
     asked = _limits_asked(rule.function, set())
     return tuple(told for name, told in _thresholds().items() if name in asked)
+
+
+def all_thresholds() -> tuple[str, ...]:
+    """Every threshold with its default, unit, meaning and source."""
+    return tuple(_thresholds().values())
+
+
+def threshold_in_markdown(told: str) -> str:
+    """One of the thresholds in Markdown."""
+    name, _, about = told.partition(":")
+    return f"`{name}`:{_plain(about)}"
 
 
 def _thresholds() -> dict[str, str]:
@@ -67,7 +81,7 @@ def _limits_asked(function: Callable[..., Any], seen: set[Callable[..., Any]]) -
     """Names of the limits that a rule's function, and the functions of the rules that it calls, look at."""
     seen.add(function)
     asked: set[str] = set()
-    for node in ast.walk(ast.parse(textwrap.dedent(inspect.getsource(function)))):
+    for node in ast.walk(_functions(function.__module__)[function.__name__]):
         if isinstance(node, ast.Attribute) and isinstance(node.value, ast.Name) and node.value.id == "limits":
             asked.add(node.attr)
         elif isinstance(node, ast.Name):
@@ -75,6 +89,13 @@ def _limits_asked(function: Callable[..., Any], seen: set[Callable[..., Any]]) -
             if inspect.isfunction(called) and called.__module__.startswith("loopdoc.rules") and called not in seen:
                 asked |= _limits_asked(called, seen)
     return asked
+
+
+@cache
+def _functions(module: str) -> dict[str, ast.AST]:
+    """The functions of a module by name, as written."""
+    tree = ast.parse(inspect.getsource(sys.modules[module]))
+    return {node.name: node for node in tree.body if isinstance(node, ast.FunctionDef)}
 
 
 def _plain(text: str) -> str:
