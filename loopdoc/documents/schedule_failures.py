@@ -137,7 +137,9 @@ class _Failures:
     def _sees(self, effect: FailureEffect) -> str:
         failed = self._failed(effect)
         fault = fault_reading(failed.measurement) if failed and effect.seen == "bad" else None
-        return f"{UNDECIDED}: {fault.reason}" if isinstance(fault, Undecided) else _SEEN.get(effect.seen, NOT_APPLICABLE)
+        if isinstance(fault, Undecided):
+            return f"{UNDECIDED}: {fault.reason}."
+        return _SEEN.get(effect.seen, NOT_APPLICABLE)
 
     def _own(self, effect: FailureEffect) -> Iterator[str]:
         """What the controller does whose measurement fails."""
