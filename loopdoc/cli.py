@@ -137,7 +137,8 @@ def _parser() -> argparse.ArgumentParser:
         nargs="+",
         metavar="KIND",
         default=[],
-        help="narrative, loop-sheet, response, check-record (default: all)",
+        help="narrative, loop-sheet, response, check-record, alarm-schedule, cause-and-effect, tuning-schedule, "
+        "failure-effects, channel-list, instrument-list (default: all)",
     )
     issue.add_argument("--formats", default="pdf,html", metavar="LIST", help="pdf, html or pdf,html (default)")
     issue.add_argument(

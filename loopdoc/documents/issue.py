@@ -18,12 +18,23 @@ from loopdoc.documents.narrative import narratives
 from loopdoc.documents.pdf import Enclosure, ensure_available, to_pdf
 from loopdoc.documents.rendering import render, web_style_sheet
 from loopdoc.documents.responses import responses, supplements
+from loopdoc.documents.schedule_alarms import alarm_schedules
+from loopdoc.documents.schedule_effects import cause_and_effect_charts
+from loopdoc.documents.schedule_failures import failure_schedules
+from loopdoc.documents.schedule_lists import channel_lists, instrument_lists
+from loopdoc.documents.schedule_tuning import tuning_schedules
 
 KINDS: dict[str, Callable[[Basis], Iterator[Page]]] = {
     "narrative": lambda basis: narratives(basis, supplements(basis)),
     "loop-sheet": loop_sheets,
     "response": responses,
     "check-record": check_records,
+    "alarm-schedule": alarm_schedules,
+    "cause-and-effect": cause_and_effect_charts,
+    "tuning-schedule": tuning_schedules,
+    "failure-effects": failure_schedules,
+    "channel-list": channel_lists,
+    "instrument-list": instrument_lists,
 }
 """Document kinds by the name that `loopdoc issue --documents` takes."""
 

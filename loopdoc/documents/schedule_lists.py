@@ -268,7 +268,8 @@ def _element_row(write: Writer, plant: Plant, element: FinalElement) -> Row:
             write.cell(element.characteristic if element.characteristic or is_valve else NOT_APPLICABLE),
             write.cell(element.opens_on), write.cell(element.output_block or "direct"), write.cell(element.signal),
             write.cell(element.fails), write.cell(element.safe), write.cell(element.stroke_time),
-            write.cell(element.channel), write.cell(element.drawing), write.cell(listed(_movers(plant, element)) or None),
+            write.cell(element.channel), write.cell(element.drawing),
+            write.cell(listed(_movers(plant, element)) or None),
         ),
         anchor(element.tag),
     )  # fmt: skip
