@@ -21,7 +21,7 @@ from loopdoc.documents.expected_signals import ExpectedRow, expected_commands, e
 from loopdoc.documents.loop_panels import cell, hold_lines, joined, related_interlocks
 from loopdoc.documents.loop_sheet import serial
 from loopdoc.documents.page_fit import room
-from loopdoc.documents.values import DASH, HOLD, shown
+from loopdoc.documents.values import DASH, shown
 from loopdoc.documents.wording import NO_BREAK, counted, listed, sentence, value
 from loopdoc.engineering.failure import FailureAnalysis
 from loopdoc.engineering.loop_check import (
@@ -51,6 +51,12 @@ SAFETY_NOTE = (
 )
 FUNCTIONS = "Functions"
 ORDER_OF_WORK = "Order of work (each only after the one before it has passed)"
+NOT_TRIED = (
+    ("process",),
+    ("disturbances",),
+    *(("controller", key) for key in ("form", "gain", "proportional_band", "reset", "repeats", "rate", "interval")),
+)
+"""What of the register no loop check touches."""
 HALF = 0.45
 """Of a page: with less before them, the functions begin on the first page."""
 _SPEEDS = ("variable-speed drive", "motor")
@@ -159,7 +165,7 @@ def record_view(
         last=tuple(_last(judged)) if judged else (),
         tables=tuple(tables),
         notes=(*_missing(loop, checks), *((SAFETY_NOTE,) if safety else ())),
-        holds=tuple(hold_lines(plant, tags, loop.tag)),
+        holds=tuple(hold_lines(plant, tags, loop.tag, without=NOT_TRIED)),
     )
 
 
@@ -202,6 +208,7 @@ def _facts(plant: Plant, loop: Loop, limits: Limits) -> tuple[tuple[tuple[str, s
     if measurement is None:
         return ((*first, ("Measurement", cell(loop.measurement))),)
     sensors = [cell(part) for part in (measurement.element, measurement.sensor) if part is not None]
+    signals = [cell(part) for part in (measurement.signal, measurement.channel) if part is not None]
     measured = cell(measurement.range)
     if known(measurement.characteristic) == "square root":
         measured = joined([measured, "square root in the control system"])
@@ -209,7 +216,7 @@ def _facts(plant: Plant, loop: Loop, limits: Limits) -> tuple[tuple[tuple[str, s
         (*first, ("Transmitter", cell(measurement.transmitter)), ("Element and sensor", joined(sensors))),
         (
             ("Range", measured),
-            ("Signal and channel", joined([cell(measurement.signal), cell(measurement.channel)])),
+            ("Signal and channel", joined(signals)),
             ("Filter", cell(measurement.filter)),
             ("Tolerance of a reading", _tolerance(measurement, limits)),
         ),
@@ -394,8 +401,8 @@ def _point_table(plant: Plant, loop: Loop, checks: LoopChecks, judged: JudgedRec
     for kind, alarm in loop.alarms.items():
         name = f"{kind.replace('_', '-')} alarm"
         if checks.reading(name) is None:
-            lacking = HOLD if isinstance(alarm.limit, Hold) else "not stated"
-            row = (name.capitalize(), lacking, DASH, shown(alarm.delay), "", "")
+            limit = "not stated" if alarm.limit is None else shown(alarm.limit)
+            row = (name.capitalize(), limit, DASH, shown(alarm.delay), "", "")
             rows.append((*row, DASH) if judged else row)
     if not rows:
         return

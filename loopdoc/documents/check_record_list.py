@@ -87,7 +87,7 @@ def _functions(plant: Plant, analysis: FailureAnalysis, loop: Loop) -> Iterator[
         yield from _element(element, told.effects)
     interlocks = related_interlocks(plant, loop, elements)
     for interlock in interlocks:
-        yield from _interlock(interlock, loop, elements)
+        yield from _interlock(plant, interlock, loop, elements)
 
 
 class _Told:
@@ -343,15 +343,20 @@ def _moves(effects: Sequence[FailureEffect], failure: Failure, element: FinalEle
 # ---------------------------------------------------------------- interlocks
 
 
-def _interlock(interlock: Interlock, loop: Loop, elements: Sequence[FinalElement]) -> Iterator[FunctionCheck]:
+def _interlock(
+    plant: Plant, interlock: Interlock, loop: Loop, elements: Sequence[FinalElement]
+) -> Iterator[FunctionCheck]:
     own = acts_on(interlock, [*(element.tag for element in elements), loop.tag])
     acts = listed(f"{action.tag} {action_words(action)}" for action in own or tuple(interlock.actions.values()))
     voting = known(interlock.voting)
+    held = isinstance(interlock.voting, Hold) or any(
+        hold.tag == interlock.tag and hold.path == ("actions",) for hold in plant.register.holds
+    )
     for initiator in interlock.initiators.values():
         yield FunctionCheck(
             f"{interlock.tag} by {initiator.tag}",
             _drive(initiator),
-            HOLD if isinstance(interlock.voting, Hold) else _acts(voting, len(interlock.initiators), acts),
+            HOLD if held else _acts(voting, len(interlock.initiators), acts),
             "; ".join((shown(voting), shown(initiator.direction), _limit_words(initiator.limit), _actions(own))),
         )
     yield FunctionCheck(

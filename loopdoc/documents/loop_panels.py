@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterable, Iterator
+from collections.abc import Collection, Iterable, Iterator
 from dataclasses import dataclass
 from typing import Any
 
@@ -480,12 +480,14 @@ def revision_table(revisions: Iterable[RevisionRow]) -> Table | None:
 # ---------------------------------------------------------------- holds
 
 
-def hold_lines(plant: Plant, tags: Iterable[str], own: str) -> Iterator[str]:
-    """The holds of these tags, those with one reason together."""
+def hold_lines(
+    plant: Plant, tags: Iterable[str], own: str, *, without: Collection[tuple[str, ...]] = ()
+) -> Iterator[str]:
+    """The holds of these tags, those with one reason together; ``without`` are beginnings of paths to leave out."""
     wanted = set(tags)
     by_reason: dict[str, list[str]] = {}
     for hold in plant.register.holds:
-        if hold.tag in wanted:
+        if hold.tag in wanted and not any(hold.path[: len(path)] == path for path in without):
             what = held_name(hold.path)
             by_reason.setdefault(hold.reason, []).append(what if hold.tag == own else f"{hold.tag} {what}")
     for reason, values in by_reason.items():
