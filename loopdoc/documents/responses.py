@@ -22,7 +22,7 @@ from loopdoc.engineering.dynamics import ChainDynamics
 from loopdoc.engineering.pairing import Plant, Scheme
 from loopdoc.engineering.stages import measured_range
 from loopdoc.engineering.tuning_review import NotReviewed, TuningReview, review
-from loopdoc.engineering.tuning_table import CAUTION, Wanted, tuning_table
+from loopdoc.engineering.tuning_table import CAUTION, Wanted, legend, tuning_table
 from loopdoc.register.model import known
 from loopdoc.register.quantity import Range
 from loopdoc.rules.policy import limits_from
@@ -142,10 +142,7 @@ def review_section(basis: Basis, scheme: Scheme) -> dict[str, Any]:
             {"tag": found.tag, "reason": found.reason} for found in reviews if isinstance(found, NotReviewed)
         ],
         "review_sources": list(dict.fromkeys(source for _, table in tables for source in table.sources)),
-        "review_policy": (
-            f"Outside the policy: a gain margin below {number(wanted.gain_margin)}, a phase margin below "
-            f"{number(wanted.phase_margin_deg)}°, Ms above {number(wanted.max_sensitivity)}."
-        ),
+        "review_policy": legend(wanted),
         "review_caution": CAUTION,
     }
 

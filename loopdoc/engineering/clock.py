@@ -143,8 +143,9 @@ def _choose_for(
     if not stable:
         return Clock(clock.step_s, min(clock.steps, _STEPS_UNSTABLE))
     if clock.step_s * clock.steps < min(horizon_s, 2.0 * open_loop_s):
+        slowest = f"{open_loop_s / 3600.0:.3g} h" if open_loop_s >= 7200.0 else f"{open_loop_s:.3g} s"
         return Unsuited(
-            f"its slowest part takes {open_loop_s:.3g} s and its fastest loop needs steps of {clock.step_s:.3g} s: "
+            f"its slowest part takes {slowest} and its fastest loop needs steps of {clock.step_s:.3g} s: "
             "they are too far apart to be simulated together"
         )
     return clock

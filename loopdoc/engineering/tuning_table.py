@@ -48,7 +48,7 @@ class TableRow:
     max_sensitivity: str
     crossover: str
     remark: str
-    """not stable, or which margins are below the policy; empty where there is nothing to say."""
+    """not stable, or which margins are outside the policy (see `legend`); empty where there is nothing to say."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -160,13 +160,21 @@ def remark(margins: Margins, wanted: Wanted) -> str:
     low = [
         name
         for name, is_low in (
-            ("gain margin", margins.gain_margin < wanted.gain_margin),
-            ("phase margin", margins.phase_margin_deg < wanted.phase_margin_deg),
+            ("GM", margins.gain_margin < wanted.gain_margin),
+            ("PM", margins.phase_margin_deg < wanted.phase_margin_deg),
             ("Ms", margins.max_sensitivity > wanted.max_sensitivity),
         )
         if is_low
     ]
-    return f"outside the policy: {', '.join(low)}" if low else ""
+    return f"outside: {', '.join(low)}" if low else ""
+
+
+def legend(wanted: Wanted) -> str:
+    """What `remark` means by outside, in a sentence."""
+    return (
+        f"Outside the policy: a gain margin (GM) below {_shown(wanted.gain_margin)}, a phase margin (PM) below "
+        f"{_shown(wanted.phase_margin_deg)}°, a maximum sensitivity Ms above {_shown(wanted.max_sensitivity)}."
+    )
 
 
 def _not_applied(review: TuningReview) -> Iterator[str]:

@@ -8,7 +8,7 @@ from typing import Any
 
 from loopdoc.engineering.frequency import Margins
 from loopdoc.engineering.tuning_review import NotApplicable, NotReviewed, RuleSettings, TuningReview
-from loopdoc.engineering.tuning_table import Wanted, remark, setting_units, tuning_table
+from loopdoc.engineering.tuning_table import Wanted, legend, remark, setting_units, tuning_table
 from loopdoc.rules.policy import Limits
 
 Reviews = Sequence[tuple[TuningReview | NotReviewed, ...]]
@@ -118,6 +118,7 @@ def review_lines(reviews: Reviews, limits: Limits) -> Iterator[str]:
         yield ""
         sources |= dict.fromkeys(table.sources)
     if sources:
+        yield legend(wanted_by(limits))
         yield "sources of the rules:"
         yield from (f"  {source}" for source in sources)
         yield ""

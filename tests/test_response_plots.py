@@ -1,0 +1,256 @@
+"""Plots of a loop: curves over frequency against closed forms and python-control, what is marked, what is written."""
+
+from __future__ import annotations
+
+import io
+import math
+import re
+from pathlib import Path
+
+import control
+import numpy as np
+import pypdf
+import pytest
+
+from loopdoc.cli import run
+from loopdoc.documents.frequency_plot import frequency_caption, frequency_drawing
+from loopdoc.documents.plots import Curve, Drawing, Panel, save, to_svg
+from loopdoc.documents.response_figure import figure
+from loopdoc.documents.upset_story import benefit, declared_upsets, single_loop_assumption
+from loopdoc.engineering.comparison import Comparison, compare
+from loopdoc.engineering.dynamics import ChainDynamics, Dynamics
+from loopdoc.engineering.frequency import LoopStage, analyse_chain
+from loopdoc.engineering.loop_curves import loop_curves
+from loopdoc.engineering.pairing import Plant
+from loopdoc.engineering.pid import Controller
+from loopdoc.engineering.process import Process
+from loopdoc.engineering.sampled import quoted_margins
+from loopdoc.register.load import Loaded, load
+from loopdoc.register.starter import starter_files
+
+EXAMPLE = Path(__file__).parent.parent / "examples" / "tarn-hollow"
+
+
+@pytest.fixture(scope="module")
+def plant() -> Plant:
+    loaded = load(EXAMPLE)
+    assert isinstance(loaded, Loaded)
+    return Plant(loaded.register)
+
+
+@pytest.fixture(scope="module")
+def cascade(plant: Plant) -> ChainDynamics:
+    return Dynamics(plant).loop("TIC-2014").chains[0]
+
+
+@pytest.fixture(scope="module")
+def compared(cascade: ChainDynamics) -> Comparison:
+    found = compare(cascade)
+    assert isinstance(found, Comparison)
+    return found
+
+
+# --- curves over frequency -----------------------------------------------------------------------
+
+
+def test_an_integrator_with_dead_time_follows_its_closed_form() -> None:
+    """L = a exp(-jwL)/(jwL) with a = 0.5: |L| = a/(wL), phase -90 degrees less wL without a jump."""
+    stages = [LoopStage(Controller(0.5), Process(1.0, (), 1.0, integrating=True))]
+    curves = loop_curves(stages, analyse_chain(stages)[0])
+    w = curves.w_rad_per_s
+    assert curves.magnitude == pytest.approx(0.5 / w, rel=1e-12)
+    # Rounding of the angle, some 30 turns on at most.
+    assert curves.phase_deg == pytest.approx(-90.0 - np.degrees(w), abs=1e-9 * 360 * 30)
+    assert curves.phase_margin_at == pytest.approx((0.5, -90.0 - math.degrees(0.5)), rel=1e-4)
+    loop = 0.5 * np.exp(-1j * w) / (1j * w)
+    assert curves.sensitivity == pytest.approx(np.abs(1 / (1 + loop)), rel=1e-9)
+    assert curves.complementary == pytest.approx(np.abs(loop / (1 + loop)), rel=1e-9)
+    assert w[0] < 0.5 / 40
+    assert w[-1] > math.pi / 2 * 15
+
+
+def test_the_outer_loop_of_a_cascade_is_that_of_python_control() -> None:
+    inner = LoopStage(Controller(2.0, 5.0), Process(1.0, (5.0, 1.0)))
+    outer = LoopStage(Controller(1.5, 60.0), Process(1.0, (60.0, 8.0)))
+    margins = analyse_chain([inner, outer])
+    curves = loop_curves([inner, outer], margins[1])
+    s = control.tf("s")
+    closed = control.feedback(2.0 * (1 + 1 / (5 * s)) / ((5 * s + 1) * (s + 1)), 1)
+    loop = 1.5 * (1 + 1 / (60 * s)) * closed / ((60 * s + 1) * (8 * s + 1))
+    expected = loop(1j * curves.w_rad_per_s)
+    assert curves.magnitude == pytest.approx(np.abs(expected), rel=1e-9)
+    # The phase is continued, so that it is compared on the circle.
+    assert np.exp(1j * np.radians(curves.phase_deg)) == pytest.approx(expected / np.abs(expected), rel=1e-9)
+    # The largest of 300 points lies close below the peak that the margins quote: neighbours differ by 3 %.
+    assert curves.sensitivity.max() == pytest.approx(margins[1].max_sensitivity, rel=1e-3)
+    assert curves.phase_margin_at is not None
+    assert curves.phase_margin_at[1] + 180.0 == pytest.approx(margins[1].phase_margin_deg, abs=0.01)
+
+
+def test_curves_end_at_half_the_sampling_frequency_and_are_sampled_where_the_margins_are() -> None:
+    """Lag of 6 s at 3 s: P control in z, K (1 - b)/(z - b) with b = exp(-h/T), after one more interval of nothing."""
+    stages = [LoopStage(Controller(1.0, interval_s=3.0), Process(1.0, (6.0,)))]
+    margins = quoted_margins([stages])[0][0]
+    assert margins.sampled
+    curves = loop_curves(stages, margins)
+    assert curves.w_rad_per_s[-1] == pytest.approx(math.pi / 3.0)
+    decay = math.exp(-3.0 / 6.0)
+    z = np.exp(1j * curves.w_rad_per_s * 3.0)
+    assert curves.magnitude == pytest.approx(np.abs((1 - decay) / (z - decay)), rel=1e-9)
+
+
+# --- the figure ----------------------------------------------------------------------------------
+
+
+def marks(panel: Panel) -> list[str]:
+    return [mark.label for mark in panel.marks]
+
+
+def test_each_loop_of_a_cascade_has_its_column_with_margins_and_peaks(cascade: ChainDynamics) -> None:
+    drawing = frequency_drawing(cascade)
+    assert [panel.title for panel in drawing.rows[0]] == ["TIC-2014", "FIC-2011"]
+    for column, margins in zip(zip(*drawing.rows, strict=True), reversed(cascade.margins), strict=True):
+        gain, phase, sensitivities = column
+        # Three digits are printed.
+        assert float(marks(gain)[0].removeprefix("GM ")) == pytest.approx(margins.gain_margin, rel=5e-3)
+        assert float(marks(phase)[0][3:-1]) == pytest.approx(margins.phase_margin_deg, rel=5e-3)
+        assert float(marks(sensitivities)[0].removeprefix("Ms ")) == pytest.approx(margins.max_sensitivity, rel=5e-3)
+        # The stroke of the gain margin reaches from the curve to 1, that of the phase margin from -180 degrees.
+        stroke = gain.marks[0]
+        curve = gain.curves[0]
+        read = np.exp(np.interp(np.log(stroke.x), np.log(curve.x), np.log(curve.y)))
+        assert stroke.to == pytest.approx(read, rel=1e-3)  # read between two of 300 points
+        assert (stroke.y, phase.marks[0].y) == (1.0, -180.0)
+        assert gain.period is not None
+        assert "rad/s" in sensitivities.x_label
+
+
+def test_an_unstable_loop_is_named_so_and_has_no_peaks(cascade: ChainDynamics) -> None:
+    stages = [LoopStage(Controller(20.0, 5.0), Process(1.0, (5.0,), 2.0))]
+    unstable = ChainDynamics(
+        type(cascade.chain)((type(cascade.chain.levels[0])(
+            cascade.chain.levels[0].loop, cascade.chain.levels[0].route, stages[0]
+        ),)),
+        analyse_chain(stages),
+    )  # fmt: skip
+    drawing = frequency_drawing(unstable)
+    assert "NOT STABLE" in drawing.rows[0][0].title
+    assert drawing.rows[2][0].marks == ()
+
+
+def test_the_caption_states_the_assumptions(cascade: ChainDynamics, plant: Plant, compared: Comparison) -> None:
+    told = frequency_caption(cascade)
+    for words in ("exact dead time", "linear process models", "every loop below it closed", "half of itself"):
+        assert words in told
+    told = figure(plant, compared).caption
+    for words in ("10 % of span", "normal value", "output limits", "stroke time", "one controller on FV-2011"):
+        assert words in told
+
+
+def test_alarms_trips_and_output_limits_are_in_the_time_responses(plant: Plant) -> None:
+    compared = compare(Dynamics(plant).loop("PIC-2021").chains[0])
+    assert isinstance(compared, Comparison)
+    above, below = figure(plant, compared).rows
+    names = {limit.label.split()[0] for limit in above[0].limits}
+    register = plant.register
+    assert {"H", "L"} & names
+    trips = {trip.interlock.tag for trip in plant.trips if (trip.loop or trip.instrument) is not None}
+    assert names & trips, "the trips on what PIC-2021 measures"
+    for limit in above[0].limits:
+        tag = limit.label.split()[0]
+        if tag in register.interlocks:
+            limits = [one.limit.to("barg") for one in register.interlocks[tag].initiators.values()]  # type: ignore[union-attr]
+            assert limit.value in limits
+    assert [limit.value for limit in below[0].limits] == [0.0, 100.0]
+
+
+# --- files ---------------------------------------------------------------------------------------
+
+
+def starter(folder: Path) -> Path:
+    for name, content in starter_files().items():
+        file = folder / name
+        file.parent.mkdir(parents=True, exist_ok=True)
+        file.write_bytes(content)
+    return folder
+
+
+def plotted(folder: Path, tag: str, file: Path) -> bytes:
+    out, err = io.StringIO(), io.StringIO()
+    assert run(["response", str(folder), tag, "--plot", str(file)], out, err) == 0, err.getvalue()
+    return file.read_bytes()
+
+
+def test_a_pdf_has_a_page_over_time_and_one_over_frequency(tmp_path: Path) -> None:
+    folder = starter(tmp_path / "plant")
+    first = plotted(folder, "LIC-1001", tmp_path / "a.pdf")
+    pages = [page.extract_text() for page in pypdf.PdfReader(tmp_path / "a.pdf").pages]
+    assert len(pages) == 2
+    assert "time, " in pages[0]
+    assert "frequency, rad/s" in pages[1]
+    assert "period, " in pages[1]
+    assert first == plotted(folder, "LIC-1001", tmp_path / "b.pdf")
+
+
+@pytest.mark.parametrize("ending", ["svg", "png"])
+def test_one_figure_holds_both_and_has_the_same_bytes_again(tmp_path: Path, ending: str) -> None:
+    folder = starter(tmp_path / "plant")
+    first = plotted(folder, "FIC-1002", tmp_path / f"a.{ending}")
+    assert first == plotted(folder, "FIC-1002", tmp_path / f"b.{ending}")
+    if ending == "svg":
+        text = first.decode()
+        assert "frequency, rad/s" in text
+        assert "time, " in text
+
+
+def test_a_loop_that_is_not_simulated_is_drawn_over_frequency(plant: Plant, tmp_path: Path) -> None:
+    assert not isinstance(compare(Dynamics(plant).loop("DIC-1012").chains[0]), Comparison)
+    plotted(EXAMPLE, "DIC-1012", tmp_path / "plot.svg")
+    assert "time, " not in (tmp_path / "plot.svg").read_text(encoding="utf-8")
+
+
+def test_a_log_axis_has_plain_numbers_and_nothing_is_a_path(tmp_path: Path) -> None:
+    x = np.geomspace(0.001, 10.0, 50)
+    drawing = Drawing("x", ((Panel("", "x", "y", (Curve("", "solid", x, x),), x_is_log=True, y_is_log=True),),))
+    texts = re.findall(r">([^<>]+)</text>", to_svg(drawing))
+    assert {"0.001", "0.1", "10"} <= set(texts)
+    with pytest.raises(ValueError, match=r"\.svg, \.png or \.pdf"):
+        save([drawing], tmp_path / "plot.jpg")
+
+
+# --- told in sentences ---------------------------------------------------------------------------
+
+
+def test_a_declared_upset_is_told(cascade: ChainDynamics, compared: Comparison) -> None:
+    told = declared_upsets(cascade, compared)
+    assert told.startswith("Steam pressure falls (declared at FIC-2011) moves the measurement of FIC-2011 by")
+    assert "through a lag of 15" in told
+    assert "TIC-2014 then departs by" in told
+    assert "with the single loop by" in told
+
+
+def test_a_declared_upset_at_a_process_input_names_the_process(tmp_path: Path) -> None:
+    folder = starter(tmp_path)
+    file = folder / "units" / "10-feed.yaml"
+    text = file.read_text(encoding="utf-8")
+    upset = "disturbances: {feed is cut: {size: -1 m3/h, at: process input}}"
+    file.write_text(text.replace("  LIC-1001:\n", f"  LIC-1001:\n    {upset}\n"), encoding="utf-8")
+    loaded = load(folder)
+    assert isinstance(loaded, Loaded)
+    dynamics = Dynamics(Plant(loaded.register)).loop("LIC-1001").chains[0]
+    told = declared_upsets(dynamics, compare(dynamics))
+    assert told.startswith("Feed is cut (declared at LIC-1001) moves what commands LIC-1001 (FIC-1002) by")
+    assert "through the process of LIC-1001" in told
+    assert "LIC-1001 then departs by" in told
+
+
+def test_what_a_cascade_is_compared_with_stands_beside_the_ratios(compared: Comparison) -> None:
+    assert "tuned by SIMC" in benefit(compared)
+    told = single_loop_assumption(compared)
+    assert "maximum sensitivity of TIC-2014" in told
+    assert "FV-2011" in told
+    entry = next(entry for entry in compared.scenarios if entry.single is not None)
+    ratio = entry.ratio("iae_pct_s")
+    assert ratio is not None
+    assert entry.single is not None
+    assert ratio == pytest.approx(entry.tuned.metrics.iae_pct_s / entry.single.metrics.iae_pct_s)
