@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import argparse
+import datetime
 import gc
 import os
 import sys
@@ -128,6 +129,12 @@ def _parser() -> argparse.ArgumentParser:
         help="exit 1 when a finding of this level or above is open (default: error)",
     )  # fmt: skip
     check.add_argument("--only", nargs="+", metavar="RULE", default=[], help="check by these rules only")
+    check.add_argument(
+        "--date",
+        type=_date,
+        metavar="YYYY-MM-DD",
+        help="the day by which deviations are judged (default: today); documents judge by the date of their revision",
+    )
 
     issue = command("issue", _issue, "issue the documents of a register")
     _add_register(issue)
@@ -222,6 +229,22 @@ def _add_register(parser: argparse.ArgumentParser) -> None:
     parser.add_argument("register", type=Path, metavar="REGISTER", help="folder that holds register.yaml")
 
 
+def _date(written: str) -> datetime.date:
+    """A day as `--date` takes it."""
+    try:
+        return datetime.date.fromisoformat(written)
+    except ValueError:
+        raise argparse.ArgumentTypeError(f"`{written}` is no day; write it as in 2026-11-20") from None
+
+
+def _today() -> datetime.date:
+    """Today; or the day of SOURCE_DATE_EPOCH, so that a check can be made again as it was."""
+    try:
+        return datetime.datetime.fromtimestamp(int(os.environ.get("SOURCE_DATE_EPOCH", "")), datetime.UTC).date()
+    except (ValueError, OverflowError, OSError):  # not set, or no date
+        return datetime.date.today()
+
+
 # ---------------------------------------------------------------- commands
 
 
@@ -259,14 +282,15 @@ def _check(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int
         if arguments.format != "text" and result.findings:
             stdout.write(_told(result, arguments, loaded.sources, least, colour=False))
         return EXIT_UNREADABLE
-    result = check(Plant(loaded.register), loaded.faults, only=arguments.only)
+    today = arguments.date or _today()
+    result = check(Plant(loaded.register), loaded.faults, only=arguments.only, today=today)
     if arguments.since is not None:
         from loopdoc.exchange.escaping import for_terminal
         from loopdoc.revisions.git import GitError
         from loopdoc.revisions.since import since
 
         try:
-            result = since(result, arguments.register, arguments.since, only=arguments.only)
+            result = since(result, arguments.register, arguments.since, only=arguments.only, today=today)
         except GitError as error:
             stderr.write(for_terminal(f"loopdoc: {error}\n"))
             return EXIT_UNREADABLE

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import datetime
+import io
 import json
 import random
 from collections.abc import Iterator
@@ -12,6 +13,7 @@ from typing import Any
 import pytest
 import yaml
 
+from loopdoc.cli import run
 from loopdoc.engineering.pairing import ControlledLoop, Plant
 from loopdoc.register.load import Loaded, Unreadable, load
 from loopdoc.register.model import FinalElement, Loop
@@ -163,13 +165,29 @@ def test_a_deviation_that_is_not_in_force_accepts_nothing(changes: dict[str, str
     assert result.accepted == ()
 
 
-def test_the_day_of_the_source_is_today(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+def test_without_a_day_deviations_are_judged_by_the_date_of_the_revision(tmp_path: Path) -> None:
     loaded = read(tmp_path, with_deviation())
     assert isinstance(loaded, Loaded)
-    monkeypatch.setenv("SOURCE_DATE_EPOCH", "1795132800")  # 2026-11-20T00:00Z, by `date -u -d @1795132800`
     assert len(check(Plant(loaded.register), ()).accepted) == 1
-    monkeypatch.setenv("SOURCE_DATE_EPOCH", "1795219200")  # a day later
+    loaded = read(tmp_path, with_deviation().replace("date: 2026-11-20", "date: 2026-11-21"))
+    assert isinstance(loaded, Loaded)
     assert len(check(Plant(loaded.register), ()).accepted) == 0
+
+
+def test_the_day_of_the_source_is_today_for_the_command(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    read(tmp_path, with_deviation())
+
+    def accepted(*options: str) -> int:
+        out = io.StringIO()
+        run(["check", str(tmp_path), "--format", "json", *options], out, io.StringIO())
+        return len(json.loads(out.getvalue())["accepted"])
+
+    monkeypatch.setenv("SOURCE_DATE_EPOCH", "1795132800")  # 2026-11-20T00:00Z, by `date -u -d @1795132800`
+    assert accepted() == 1
+    assert accepted("--date", "2026-11-21") == 0
+    monkeypatch.setenv("SOURCE_DATE_EPOCH", "1795219200")  # a day later
+    assert accepted() == 0
+    assert accepted("--date", "2026-11-20") == 1
 
 
 @pytest.mark.parametrize("epoch", ["", "yesterday", "9" * 30])
@@ -177,9 +195,42 @@ def test_a_day_of_the_source_that_is_none_is_left_aside(
     epoch: str, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
 ) -> None:
     monkeypatch.setenv("SOURCE_DATE_EPOCH", epoch)
-    loaded = read(tmp_path, BASE)
-    assert isinstance(loaded, Loaded)
-    assert check(Plant(loaded.register), ()).findings == ()
+    read(tmp_path, BASE)
+    assert run(["check", str(tmp_path), "--fail-on", "note"], io.StringIO(), io.StringIO()) == 0
+
+
+def test_a_day_that_is_none_is_refused(tmp_path: Path, capsys: pytest.CaptureFixture[str]) -> None:
+    with pytest.raises(SystemExit) as left:
+        run(["check", str(tmp_path), "--date", "tomorrow"], io.StringIO(), io.StringIO())
+    assert left.value.code == 2
+    assert "`tomorrow` is no day; write it as in 2026-11-20" in capsys.readouterr().err
+
+
+def test_an_accepted_finding_touches_every_tag_that_it_speaks_of(tmp_path: Path) -> None:
+    (accepted,) = checked(tmp_path, with_deviation()).accepted
+    # the primary's output limit, and the setpoint limit of the secondary that it passes
+    assert accepted.touches == ("TIC-2014", "FIC-2011")
+
+
+def test_findings_at_one_place_are_one_for_a_deviation_and_those_in_two_steps_are_not(tmp_path: Path) -> None:
+    text = BASE.replace('  "30":\n    overview', '  "30":\n    upsets: [Cut FIC-9901 and FIC-9902., Cut FIC-9903.]\n    overview')
+    deviation = "deviations:\n  - {rule: text-tag-unknown, at: %s, reason: r, approved_by: a, until: 2026-11-20}\n"
+    result = checked(tmp_path, text + deviation % '"30/upsets/0"')
+    assert [finding.message.split(" names ")[1].split(",")[0] for finding in result.accepted] == ["FIC-9901", "FIC-9902"]
+    assert [finding.rule for finding in result.findings] == ["text-tag-unknown"]
+    result = checked(tmp_path, text + deviation % '"30"')
+    assert result.accepted == ()
+    (told,) = [finding for finding in result.findings if finding.rule == "deviation-ambiguous"]
+    assert "30/upsets/0 or 30/upsets/1" in told.message
+
+
+def test_no_deviation_accepts_what_is_found_of_deviations(tmp_path: Path) -> None:
+    entry = "{rule: %s, at: TIC-2014, reason: r, approved_by: a, until: 2026-11-20}"
+    rules = ("margin-low", "deviation-unused")
+    text = BASE + "deviations:\n" + "".join(f"  - {entry % rule}\n" for rule in rules)
+    result = checked(tmp_path, text)
+    assert result.accepted == ()
+    assert [finding.rule for finding in result.findings] == ["deviation-unused", "deviation-unused"]
 
 
 # ---------------------------------------------------------------- the machinery
@@ -296,7 +347,7 @@ def test_a_held_range_is_counted_and_not_judged(tmp_path: Path) -> None:
         "cascade-too-slow": 1,
         "cascade-no-benefit": 1,
     }
-    assert result.not_checked == 16
+    assert result.not_checked == 18
 
 
 def test_a_policy_moves_a_threshold(tmp_path: Path) -> None:

@@ -335,6 +335,11 @@ class Function(Part):
     normal_input: Quantity | Hold | None
     """Characteriser: what enters in normal operation; where not given, what the secondary's normal value asks for."""
 
+    @property
+    def inputs_held(self) -> bool:
+        """Whether something stands under `inputs` that names no tags, as a hold does."""
+        return not self.inputs and self.origin.place("inputs") != self.origin.key()
+
 
 # ---------------------------------------------------------------- interlocks
 
@@ -374,6 +379,11 @@ class Bypass(Part):
     """Who permits each bypass."""
     limit: Quantity | Hold | None
     """Time after which it ends or is permitted anew."""
+
+    @property
+    def never(self) -> bool:
+        """Whether the register says that there is no bypass."""
+        return (known(self.permitted) or "").strip(" .").casefold() in ("no", "none", "never", "not permitted")
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import datetime
 from collections.abc import Collection
 from dataclasses import replace
 from pathlib import Path
@@ -15,8 +16,10 @@ from loopdoc.rules.check import check
 from loopdoc.rules.finding import Baseline, CheckResult
 
 
-def since(result: CheckResult, path: Path, revision: str, *, only: Collection[str]) -> CheckResult:
-    """The findings of a check that the register at an earlier revision had not, checked by the same rules.
+def since(
+    result: CheckResult, path: Path, revision: str, *, only: Collection[str], today: datetime.date | None = None
+) -> CheckResult:
+    """The findings of a check that the register at an earlier revision had not, by the same rules and on the same day.
 
     Where that revision has no register that can be read, all of them are new, and that is said. Raises GitError.
     """
@@ -29,4 +32,4 @@ def since(result: CheckResult, path: Path, revision: str, *, only: Collection[st
         first = loaded.faults[0]
         why = f"the revision {revision} cannot be read as a register ({first.place}: {first.message})"
         return replace(result, baseline=Baseline(revision, 0, f"{why}, so that every finding counts as new."))
-    return new_since(result, check(Plant(loaded.register), loaded.faults, only=only), revision)
+    return new_since(result, check(Plant(loaded.register), loaded.faults, only=only, today=today), revision)
