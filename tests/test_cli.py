@@ -4,11 +4,15 @@ from __future__ import annotations
 
 import io
 import json
+import re
+import shlex
 from pathlib import Path
 
+import jsonschema
 import pytest
 
 from loopdoc.cli import run
+from loopdoc.register.load import Loaded, load
 from loopdoc.register.starter import starter_files
 
 TARN_HOLLOW = Path(__file__).parent.parent / "examples" / "tarn-hollow"
@@ -155,6 +159,34 @@ def test_explain_and_rules_and_schema() -> None:
         assert heading in page
     assert "secondary_range_ratio: 1.5" in call("rules")[1]
     assert json.loads(call("schema")[1])["$schema"] == "https://json-schema.org/draft/2020-12/schema"
+
+
+@pytest.mark.parametrize(
+    "example", sorted((TARN_HOLLOW.parent).glob("*/register.yaml")), ids=lambda path: path.parent.name
+)
+def test_the_schemas_printed_for_an_editor_accept_the_files_of_the_examples(example: Path) -> None:
+    schemas = [json.loads(call("schema", *more)[1]) for more in ([], ["--included"])]
+    assert schemas[0]["$ref"] != schemas[1]["$ref"]
+    loaded = load(example.parent)
+    assert isinstance(loaded, Loaded)
+    for file in loaded.register.files:
+        is_root = file is loaded.register.root
+        own, other = (jsonschema.Draft202012Validator(schemas[which]) for which in (not is_root, is_root))
+        assert [error.message for error in own.iter_errors(file.data)] == []
+        assert not other.is_valid(file.data), "each kind of file has a schema of its own"
+
+
+@pytest.mark.parametrize("page", ["README.md", "docs/ci.md"])
+def test_commands_in_the_documentation_are_commands(page: str) -> None:
+    from loopdoc.cli import _parser
+
+    text = (TARN_HOLLOW.parent.parent / page).read_text(encoding="utf-8")
+    blocks = re.findall(r"^```\w*\n(.*?)^```", text, re.MULTILINE | re.DOTALL)
+    commands = re.findall(r"^(?:[ \w]*run: |[ ]*- |[ ]*)(loopdoc [a-z].*)", "\n".join(blocks), re.MULTILINE)
+    assert len(commands) > 2
+    for command in commands:
+        words = shlex.split(re.sub(r" >.*", "", command), comments=True)
+        _parser().parse_args(words[1:])  # exits where it is none
 
 
 def test_response_json_gives_engineering_units_and_seconds(starter: Path) -> None:
