@@ -9,12 +9,13 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 from loopdoc.engineering.direction import Undecided
+from loopdoc.engineering.functions import SELECTORS, curve_of, fed_by, steady_band
 from loopdoc.engineering.pairing import CascadeLink, Plant
 from loopdoc.register.model import Function, Loop, known
 from loopdoc.register.quantity import Range
 from loopdoc.register.units import Unit, UnitError, convert_difference, same_kind
 
-_PASSING = ("high select", "low select", "lead-lag")
+_PASSING = (*SELECTORS, "lead-lag")
 """Functions that leave a steady signal within the span it has; a lead-lag has a steady gain of one."""
 
 
@@ -45,14 +46,17 @@ def _asked(link: CascadeLink, output: Range, unit: Unit, plant: Plant) -> Demand
     # The band as numbers: a ratio setting until it has met its input, setpoints of the secondary otherwise.
     setting = any(known(function.kind) == "ratio" for function in link.via)
     sums = any(known(function.kind) == "sum" for function in link.via)
-    if setting and sums:
-        return Undecided("a sum and a ratio stand one behind the other")
+    shaped = sum(known(function.kind) == "characteriser" for function in link.via)
+    if setting + sums + shaped > 1:
+        return Undecided("a sum, a ratio or a characteriser stand one behind the other")
     if setting:
         band = output.to("fraction")
         low, high = band.low, band.high
     elif sums:
         low = convert_difference(output.low, output.unit, unit)
         high = convert_difference(output.high, output.unit, unit)
+    elif shaped:
+        low, high = output.low, output.high
     else:
         band = output.to(unit.symbol)
         low, high = band.low, band.high
@@ -65,15 +69,22 @@ def _asked(link: CascadeLink, output: Range, unit: Unit, plant: Plant) -> Demand
                 return added
             low, high, step = added
             steps.append(step)
+        elif kind == "characteriser":
+            curve = curve_of(function, given=output.unit, gives=unit)
+            if isinstance(curve, Undecided):
+                return curve
+            low, high = curve.band(low, high)
+            steps.append(f"{function.tag} by its curve")
         elif kind == "ratio":
-            factor = _bands(function, unit, plant)
+            factor = _bands(function, commander, unit, plant)
             if isinstance(factor, Undecided):
                 return factor
             if len(factor) != 1:
                 return Undecided(f"{function.tag} does not have one input to multiply")
             corners = [setting_end * end for setting_end in (low, high) for end in (factor[0].low, factor[0].high)]
             low, high = min(corners), max(corners)
-            steps.append(f"{function.tag} multiplies by {function.inputs[0]} ({factor[0]} in operation)")
+            wild = fed_by(plant, function, commander)[0]
+            steps.append(f"{function.tag} multiplies by {wild} ({factor[0]} in operation)")
         elif kind not in _PASSING:
             return Undecided(f"the register does not say what {function.tag} makes of a signal")
         commander = function.tag
@@ -83,16 +94,17 @@ def _asked(link: CascadeLink, output: Range, unit: Unit, plant: Plant) -> Demand
 def _sum(
     function: Function, commander: str, band: tuple[float, float], unit: Unit, plant: Plant
 ) -> tuple[float, float, str] | Undecided:
-    others = [tag for tag in plant.commanders.get(function.tag, ()) if tag != commander]
+    feeding = fed_by(plant, function, commander)
+    others = [tag for tag in plant.commanders.get(function.tag, ()) if tag != commander and tag not in feeding]
     if others:
         return Undecided(f"{function.tag} adds the output of {others[0]} as well")
-    bands = _bands(function, unit, plant)
+    bands = _bands(function, commander, unit, plant)
     if isinstance(bands, Undecided):
         return bands
     weight = function.weights.get(commander, 1.0)
     low, high = sorted((weight * band[0], weight * band[1]))
     words = []
-    for tag, added in zip(function.inputs, bands, strict=True):
+    for tag, added in zip(feeding, bands, strict=True):
         weight = function.weights.get(tag, 1.0)
         ends = sorted((weight * added.low, weight * added.high))
         low, high = low + ends[0], high + ends[1]
@@ -101,14 +113,21 @@ def _sum(
     return low, high, f"{function.tag} adds {' and '.join(words)}" if words else f"{function.tag} adds nothing"
 
 
-def _bands(function: Function, unit: Unit, plant: Plant) -> tuple[Range, ...] | Undecided:
-    """The operating band of each measurement that enters a function, in the given unit."""
-    found = []
-    for tag in function.inputs:
+def _bands(function: Function, commander: str, unit: Unit, plant: Plant) -> tuple[Range, ...] | Undecided:
+    """The operating band of each measurement that enters a function, as it arrives there, in the given unit."""
+
+    def of_measurement(tag: str) -> Range | Undecided:
         loop = plant.register.loops.get(tag) or plant.loop_of_transmitter.get(tag)
         band = operating_band(loop) if loop else None
-        if band is None:
-            return Undecided(f"the operating band of {tag} is not given")
+        return band if band is not None else Undecided(f"the operating band of {tag} is not given")
+
+    if function.inputs_held:
+        return Undecided(f"the inputs of {function.tag} are on hold")
+    found = []
+    for tag in fed_by(plant, function, commander):
+        band = steady_band(plant, tag, of_measurement)
+        if isinstance(band, Undecided):
+            return band
         if not same_kind(band.unit, unit):
             return Undecided(f"{tag} and the secondary have units of different kinds")
         found.append(band.to(unit.symbol))

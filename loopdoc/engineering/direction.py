@@ -10,9 +10,10 @@ memory); the algebra is elementary.
 from __future__ import annotations
 
 from dataclasses import dataclass
+from itertools import pairwise
 
 from loopdoc.engineering.pairing import ControlledLoop, Route
-from loopdoc.register.model import FinalElement, Process, known
+from loopdoc.register.model import FinalElement, Function, Hold, Process, known
 
 
 @dataclass(frozen=True, slots=True)
@@ -60,6 +61,12 @@ def path_sign(controlled: ControlledLoop, route: Route) -> PathSign | Undecided:
         weight = function.weights.get(commander, 1.0)
         if weight < 0:
             steps.append(SignStep(f"{function.tag} subtracts it", -1))
+        if known(function.kind) == "characteriser":
+            curve = curve_sign(function)
+            if isinstance(curve, Undecided):
+                return curve
+            if curve < 0:
+                steps.append(SignStep(f"the curve of {function.tag} falls", -1))
     if isinstance(route.end, FinalElement):
         if route.branch is not None and route.branch.low > route.branch.high:
             steps.append(SignStep(f"{route.end.tag} is driven by the falling output", -1))
@@ -77,6 +84,19 @@ def path_sign(controlled: ControlledLoop, route: Route) -> PathSign | Undecided:
     verb = "rises" if effect > 0 else "falls"
     steps.append(SignStep(f"the measurement of {loop.tag} {verb} when {what} {_increases(route)}", effect))
     return PathSign(tuple(steps))
+
+
+def curve_sign(function: Function) -> int | Undecided:
+    """+1 where the curve of a characteriser rises all the way, -1 where it falls; +1 where none is given."""
+    points = () if isinstance(function.curve, Hold) else function.curve
+    outputs = [known(point.gives) for point in points]
+    values = [out.value for out in outputs if out is not None]
+    steps = [right - left for left, right in pairwise(values)]
+    if all(step >= 0.0 for step in steps):
+        return 1
+    if all(step <= 0.0 for step in steps):
+        return -1
+    return Undecided(f"the curve of {function.tag} both rises and falls")
 
 
 def element_sign(element: FinalElement) -> PathSign | Undecided:

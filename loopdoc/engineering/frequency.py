@@ -4,7 +4,8 @@ Dead time is exp(-jwL) and an execution interval counts as half of itself in dea
 of a held output); nothing is approximated by a rational function. A chain of loops is given innermost
 first. Level k has the loop
 
-    L = C F G T      F measurement filter, G process with lead-lags in front of it, T the closed loop below (1 for a final element)
+    L = C F G T      F measurement filter, G process behind its lead-lags, T the closed loop below (1 for a
+                     final element)
 
 and, as seen by the level above, the closed loop
 

@@ -64,14 +64,6 @@ class Curve:
         return found.pop() if len(found) == 1 else None
 
     @property
-    def sign(self) -> int | None:
-        """+1 where it rises all the way, -1 where it falls, None where it does neither."""
-        slopes = self._slopes
-        if all(slope >= 0.0 for slope in slopes) and any(slopes):
-            return 1
-        return -1 if all(slope <= 0.0 for slope in slopes) and any(slopes) else None
-
-    @property
     def _slopes(self) -> tuple[float, ...]:
         return tuple(
             (high - low) / (right - left)

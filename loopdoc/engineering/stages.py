@@ -8,12 +8,14 @@ controller from its written action, so that a wrong action shows as an unstable 
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import TypeAlias, TypeVar
 
 from loopdoc.engineering.direction import Undecided, element_sign, process_on
 from loopdoc.engineering.frequency import LoopStage
-from loopdoc.engineering.pairing import ControlledLoop, Plant, Route
+from loopdoc.engineering.functions import SELECTORS, Curve, curve_of, fed_by, lead_lag_of, steady_band
+from loopdoc.engineering.lead_lag import LeadLag
+from loopdoc.engineering.pairing import ControlledLoop, Plant, Route, normal_value
 from loopdoc.engineering.pid import (
     Controller,
     ParallelSettings,
@@ -29,7 +31,7 @@ from loopdoc.engineering.process import Process
 from loopdoc.register import model
 from loopdoc.register.model import FinalElement, Hold, known
 from loopdoc.register.quantity import Quantity, Range
-from loopdoc.register.units import UnitError
+from loopdoc.register.units import UNITS, UnitError
 
 T = TypeVar("T")
 
@@ -93,7 +95,7 @@ def chains(plant: Plant, lead: ControlledLoop) -> tuple[Chain, ...] | Lacking:
         return tuple(
             Chain(
                 tuple(
-                    Level(loop, route, LoopStage(_controller(plant, loop, route), _process(loop, route)))
+                    Level(loop, route, _stage(plant, loop, route))
                     for loop, route in way
                 )
             )
@@ -131,7 +133,12 @@ def _below(plant: Plant, loop: ControlledLoop, above: tuple[str, ...]) -> list[W
 # ---------------------------------------------------------------- controller
 
 
-def _controller(plant: Plant, loop: ControlledLoop, route: Route) -> Controller:
+def _stage(plant: Plant, loop: ControlledLoop, route: Route) -> LoopStage:
+    controller, lead_lags = _controller(plant, loop, route)
+    return LoopStage(controller, _process(loop, route), lead_lags)
+
+
+def _controller(plant: Plant, loop: ControlledLoop, route: Route) -> tuple[Controller, tuple[LeadLag, ...]]:
     written, tag = loop.controller, loop.tag
     action = _need(written.action, f"the action of {tag}")
     measurement = _need(loop.loop.measurement, f"the measurement of {tag}")
@@ -150,6 +157,7 @@ def _controller(plant: Plant, loop: ControlledLoop, route: Route) -> Controller:
             rate_s=settings.rate_s,
             derivative_filter=known(written.derivative_filter) or DERIVATIVE_FILTER,
             setpoint_weight=1.0 if weight is None else weight,
+            derivative_setpoint_weight=1.0 if known(written.rate_on) == "error" else 0.0,
             interval_s=_seconds(written.interval),
             measurement_filter_s=_seconds(measurement.filter),
             output_low_pct=low,
@@ -214,77 +222,165 @@ def _output_limits(output: model.Output | None, route: Route, tag: str) -> tuple
     return _percent_of(low, span, 0.0), _percent_of(high, span, 100.0)
 
 
-def _on_commanded(plant: Plant, controller: Controller, loop: ControlledLoop, route: Route) -> Controller:
-    """The controller with its output in percent of what it commands: opening, or the secondary's range."""
+@dataclass(frozen=True, slots=True)
+class _Asked:
+    """What becomes of a controller's output on its way, as a straight line through the normal point."""
+
+    at_0: float
+    """What 0 % of the output asks for."""
+    at_100: float
+    """What 100 % of the output asks for."""
+    low: float
+    """What the lower output limit asks for; on the line but for a characteriser."""
+    high: float
+    """What the upper output limit asks for."""
+
+    def mapped(self, factor: float, added: float) -> _Asked:
+        """The same times a factor, plus something added."""
+        ends = (factor * value + added for value in (self.at_0, self.at_100, self.low, self.high))
+        return _Asked(*ends)
+
+    def through(self, curve: Curve, normal: float) -> _Asked:
+        """The same through a characteriser: by its slope at the normal input, the limits by the curve itself."""
+        slope, out = curve.slope(normal), curve.at(normal)
+        return _Asked(
+            out + slope * (self.at_0 - normal),
+            out + slope * (self.at_100 - normal),
+            curve.at(self.low),
+            curve.at(self.high),
+        )
+
+
+def _on_commanded(
+    plant: Plant, controller: Controller, loop: ControlledLoop, route: Route
+) -> tuple[Controller, tuple[LeadLag, ...]]:
+    """The controller with its output in percent of what it commands, and the lead-lags on the way there."""
     if isinstance(route.end, FinalElement):
         element = element_sign(route.end)
         if isinstance(element, Undecided):
             raise _Lacking(element.reason)
-        if route.branch is not None:
-            # The element goes from shut to fully open over its branch: its opening moves that much faster.
-            start, width = route.branch.to("%").low, route.branch.to("%").span
-            controller = _rescaled(
-                controller, at_0=-100.0 * start / width, at_100=100.0 * (100.0 - start) / width
-            )
-        return controller if element.sign > 0 else _rescaled(controller, at_0=100.0, at_100=0.0)
-    measurement = _need(route.end.measurement, f"the measurement of {route.end.tag}")
-    own = _need(measurement.range, f"the range of {route.end.tag}")
+        turns = element.sign < 0
+        own = Range(0.0, 100.0, UNITS["%"])
+        asked = _Asked(0.0, 100.0, controller.output_low_pct, controller.output_high_pct)
+    else:
+        turns = False
+        measurement = _need(route.end.measurement, f"the measurement of {route.end.tag}")
+        own = _need(measurement.range, f"the range of {route.end.tag}")
+        asked = _asked_in_units(controller, loop, route, own)
+    lead_lags = []
+    commander = loop.tag
+    for function in route.via:
+        if known(function.kind) == "lead-lag":
+            lead_lags.append(_decided(lead_lag_of(function)))
+        else:
+            asked = _through(plant, function, commander, loop, route, own, asked)
+        commander = function.tag
+    if turns:
+        asked = asked.mapped(-1.0, 100.0)
+    asked = asked.mapped(100.0 / own.span, -100.0 * own.low / own.span)
+    moved = on_secondary_range(controller, span_low_pct=asked.at_0, span_high_pct=asked.at_100)
+    low, high = sorted((asked.low, asked.high))
+    return replace(moved, output_low_pct=low, output_high_pct=high), tuple(lead_lags)
+
+
+def _asked_in_units(controller: Controller, loop: ControlledLoop, route: Route, own: Range) -> _Asked:
+    """The output span of a primary as it enters the first function, in the unit that counts there."""
     output = known(loop.controller.output)
     span = _need(output.span if output else None, f"the output span of {loop.tag}")
-    is_ratio = any(known(function.kind) == "ratio" for function in route.via)
+    kinds = [known(function.kind) for function in route.via]
     try:
-        if is_ratio:
+        if "characteriser" in kinds:
+            low, high = span.low, span.high
+        elif "ratio" in kinds:
             low, high = span.to("fraction").low, span.to("fraction").high
-        elif route.via:  # a sum may add a span on both sides of zero: it is a difference, not a reading
-            low, high = (
-                Quantity(end, span.unit).difference_in(own.unit.symbol) for end in (span.low, span.high)
-            )
+        elif "sum" in kinds:  # it may add a span on both sides of zero: a difference, not a reading
+            low, high = (Quantity(end, span.unit).difference_in(own.unit.symbol) for end in (span.low, span.high))
         else:
             low, high = span.to(own.unit.symbol).low, span.to(own.unit.symbol).high
     except UnitError as error:
         raise _Lacking(
             f"the output span of {loop.tag} and the range of {route.end.tag} are of different kinds"
         ) from error
-    commander = loop.tag
-    for function in route.via:
-        low, high = _through(plant, function, commander, own, low, high)
-        commander = function.tag
-    return _rescaled(
-        controller, at_0=100.0 * (low - own.low) / own.span, at_100=100.0 * (high - own.low) / own.span
-    )
+    limits = (low + (high - low) * limit / 100.0 for limit in (controller.output_low_pct, controller.output_high_pct))
+    return _Asked(low, high, *limits)
 
 
 def _through(
-    plant: Plant, function: model.Function, commander: str, own: Range, low: float, high: float
-) -> tuple[float, float]:
-    """What a function makes of the ends of a primary's span, its other inputs at their normal values."""
+    plant: Plant,
+    function: model.Function,
+    commander: str,
+    loop: ControlledLoop,
+    route: Route,
+    own: Range,
+    asked: _Asked,
+) -> _Asked:
+    """What a function makes of what a controller asks for, its other inputs at their normal values."""
     kind = known(function.kind)
-    if kind in ("high select", "low select", "lead-lag"):
-        return low, high
-    if kind not in ("ratio", "sum"):
-        raise _Lacking(
-            f"what {function.tag} makes of the output of {commander} does not follow from the register"
-        )
-    inputs = {tag: _normal(plant, tag, own) for tag in function.inputs}
-    if kind == "ratio":
-        factor = math.prod(inputs.values())
-        return low * factor, high * factor
+    to_element = isinstance(route.end, FinalElement)
+    if kind in SELECTORS:
+        return asked
+    if kind == "characteriser":
+        return asked.through(*_characterised(function, loop, route, own))
+    if kind == "split range" and to_element and route.branch is not None:
+        # The element goes from shut to fully open over its branch: its opening moves that much faster.
+        start, width = route.branch.to("%").low, route.branch.to("%").span
+        return asked.mapped(100.0 / width, -100.0 * start / width)
     weight = function.weights.get(commander, 1.0)
-    added = sum(function.weights.get(tag, 1.0) * value for tag, value in inputs.items())
-    return weight * low + added, weight * high + added
+    if kind == "sum" and to_element:
+        return asked.mapped(weight, 0.0)  # what it adds shifts the opening and changes no gain
+    if kind not in ("ratio", "sum") or to_element:
+        raise _Lacking(f"what {function.tag} makes of the output of {commander} does not follow from the register")
+    inputs = {tag: _normal(plant, tag, own) for tag in fed_by(plant, function, commander)}
+    if kind == "ratio":
+        return asked.mapped(math.prod(inputs.values()), 0.0)
+    return asked.mapped(weight, math.fsum(function.weights.get(tag, 1.0) * value for tag, value in inputs.items()))
+
+
+def _characterised(
+    function: model.Function, loop: ControlledLoop, route: Route, own: Range
+) -> tuple[Curve, float]:
+    """The curve of a characteriser in a loop's path, and its input at the normal point."""
+    kinds = [known(part.kind) for part in route.via]
+    if kinds.count("characteriser") > 1 or "ratio" in kinds or "sum" in kinds:
+        raise _Lacking(f"{function.tag}, a characteriser, stands in one path with a {_other(kinds)}")
+    output = known(loop.controller.output)
+    span = known(output.span) if output else None
+    given = UNITS["%"] if isinstance(route.end, FinalElement) or span is None else span.unit
+    curve = _decided(curve_of(function, given=given, gives=own.unit))
+    written = _need_not_held(function.normal_input, f"the normal input of {function.tag}")
+    normal = None
+    if written is not None:
+        normal = written.to(given.symbol)
+    elif not isinstance(route.end, FinalElement):
+        wanted = normal_value(route.end)
+        normal = curve.input_for(wanted.to(own.unit.symbol)) if wanted is not None else None
+    if normal is None:
+        raise _Lacking(f"the normal input of {function.tag} is not given")
+    if curve.slope(normal) == 0.0:
+        raise _Lacking(f"the curve of {function.tag} is level at its normal input, where {loop.tag} moves nothing")
+    return curve, normal
+
+
+def _other(kinds: list[str | None]) -> str:
+    return next((kind for kind in kinds if kind in ("ratio", "sum")), "second characteriser")
 
 
 def _normal(plant: Plant, tag: str, own: Range) -> float:
-    """Normal value of a measurement that enters a function, in the secondary's unit."""
-    loop = plant.register.loops.get(tag) or plant.loop_of_transmitter.get(tag)
-    operating = known(loop.operating) if loop else None
-    normal = _need(operating.normal if operating else None, f"the normal value of {tag}")
-    return normal.to(own.unit.symbol)
+    """Normal value of what enters a function, in the secondary's unit."""
+
+    def of_measurement(name: str) -> Range | Undecided:
+        loop = plant.register.loops.get(name) or plant.loop_of_transmitter.get(name)
+        operating = known(loop.operating) if loop else None
+        normal = _need(operating.normal if operating else None, f"the normal value of {name}")
+        return Range(normal.value, normal.value, normal.unit)
+
+    return _decided(steady_band(plant, tag, of_measurement)).to(own.unit.symbol).low
 
 
-def _rescaled(controller: Controller, *, at_0: float, at_100: float) -> Controller:
-    """The controller with 0 and 100 % of its output at these percentages of what it commands."""
-    return on_secondary_range(controller, span_low_pct=at_0, span_high_pct=at_100)
+def _decided(found: T | Undecided) -> T:
+    if isinstance(found, Undecided):
+        raise _Lacking(found.reason)
+    return found
 
 
 # ---------------------------------------------------------------- process
