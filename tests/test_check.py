@@ -213,10 +213,12 @@ def test_an_accepted_finding_touches_every_tag_that_it_speaks_of(tmp_path: Path)
 
 
 def test_findings_at_one_place_are_one_for_a_deviation_and_those_in_two_steps_are_not(tmp_path: Path) -> None:
-    text = BASE.replace('  "30":\n    overview', '  "30":\n    upsets: [Cut FIC-9901 and FIC-9902., Cut FIC-9903.]\n    overview')
+    upsets = '  "30":\n    upsets: [Cut FIC-9901 and FIC-9902., Cut FIC-9903.]\n    overview'
+    text = BASE.replace('  "30":\n    overview', upsets)
     deviation = "deviations:\n  - {rule: text-tag-unknown, at: %s, reason: r, approved_by: a, until: 2026-11-20}\n"
     result = checked(tmp_path, text + deviation % '"30/upsets/0"')
-    assert [finding.message.split(" names ")[1].split(",")[0] for finding in result.accepted] == ["FIC-9901", "FIC-9902"]
+    named = [finding.message.split(" names ")[1].split(",")[0] for finding in result.accepted]
+    assert named == ["FIC-9901", "FIC-9902"]
     assert [finding.rule for finding in result.findings] == ["text-tag-unknown"]
     result = checked(tmp_path, text + deviation % '"30"')
     assert result.accepted == ()

@@ -154,7 +154,7 @@ def _view(basis: Basis, loop: Loop, document: Document) -> SheetView:
     findings = [finding for finding in basis.result.about(tags) if finding.rule != HOLD_RULE]
     findings.sort(key=lambda finding: -finding.level)
     more = len(findings) - MOST_FINDINGS
-    accepted = [finding for finding in basis.result.accepted if finding.tag in tags]
+    accepted = [finding for finding in basis.result.accepted if not tags.isdisjoint(finding.touches)]
     return SheetView(
         tag=loop.tag,
         service=cell(loop.service),

@@ -106,7 +106,10 @@ class OpenPoints:
         for hold in holds:
             self._holds.setdefault(hold.tag, []).append(hold)
         self._findings = _by_tag(finding for finding in findings if finding.rule != HOLD_RULE)
-        self._accepted = _by_tag(accepted)
+        self._accepted: dict[str, list[Finding]] = {}
+        for finding in accepted:
+            for tag in finding.touches:
+                self._accepted.setdefault(tag, []).append(finding)
 
     def holds(self, tags: Iterable[str]) -> tuple[HeldValue, ...]:
         """Holds under these tags, in the order of the register."""
@@ -118,7 +121,7 @@ class OpenPoints:
         return _of(self._findings, tags)
 
     def accepted(self, tags: Iterable[str]) -> tuple[Finding, ...]:
-        """Findings about these tags that a deviation accepts."""
+        """Accepted findings that touch one of these tags."""
         return _of(self._accepted, tags)
 
 
@@ -130,4 +133,5 @@ def _by_tag(findings: Iterable[Finding]) -> dict[str, list[Finding]]:
 
 
 def _of(by_tag: dict[str, list[Finding]], tags: Iterable[str]) -> tuple[Finding, ...]:
-    return tuple(sorted((one for tag in set(tags) for one in by_tag.get(tag, ())), key=lambda one: one.order))
+    found = {one for tag in set(tags) for one in by_tag.get(tag, ())}
+    return tuple(sorted(found, key=lambda one: one.order))

@@ -41,6 +41,8 @@ from loopdoc.rules.dynamics import (
 )
 from loopdoc.rules.fail_safe import measurement_fault_unsafe
 from loopdoc.rules.functions import (
+    characteriser_not_monotonic,
+    characteriser_short,
     function_incomplete,
     ratio_range_short,
     selector_direction,
@@ -125,6 +127,8 @@ RULES: tuple[Rule, ...] = (
     ratio_range_short,
     selector_span_mismatch,
     selector_direction,
+    characteriser_not_monotonic,
+    characteriser_short,
     split_range_gap,
     split_range_overlap,
     # action and fail-safe

@@ -3,13 +3,14 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
+from itertools import pairwise
 
 from loopdoc.engineering.demand import operating_band
 from loopdoc.engineering.direction import Undecided, path_sign
 from loopdoc.engineering.pairing import ControlledLoop, Plant, normal_value
-from loopdoc.register.model import Function, Loop, known
-from loopdoc.register.quantity import Range
-from loopdoc.register.units import same_difference, same_kind
+from loopdoc.register.model import Function, Loop, Output, known
+from loopdoc.register.quantity import Quantity, Range
+from loopdoc.register.units import UNITS, same_difference, same_kind
 from loopdoc.rules.finding import Level
 from loopdoc.rules.policy import Limits
 from loopdoc.rules.rule import Draft, draft, need, not_checked, only_if, rule
@@ -266,6 +267,115 @@ def _candidates(function: Function, plant: Plant) -> tuple[ControlledLoop, ...]:
     """The controllers among which a selector chooses, where their outputs lead straight to it."""
     found = (plant.controlled.get(tag) for tag in plant.commanders.get(function.tag, ()))
     return tuple(controlled for controlled in found if controlled)
+
+
+# ---------------------------------------------------------------- characterisers
+
+
+@rule(level=Level.ERROR, source="common practice: a loop keeps its sign over the whole of its output")
+def characteriser_not_monotonic(function: Function, plant: Plant) -> Iterator[Draft]:
+    """The curve of a characteriser turns back, or is not in order.
+
+    Why:
+        Where the curve falls after it has risen, the loop's gain changes its sign: negative feedback becomes positive,
+        and the controller drives the measurement away. Where the curve is level (a warning) its output moves nothing.
+    Breaks:
+        `curve: [{at: 0 %, gives: 0 %}, {at: 60 %, gives: 80 %}, {at: 100 %, gives: 70 %}]` behind a controller; points
+        whose `at` does not rise from one to the next.
+    Holds:
+        What enters rises from point to point, and what comes out rises, or falls, all the way. The curve of a
+        measurement that is fed forward may turn: it stands in no loop.
+    What this check cannot see:
+        Whether the curve is that of the plant.
+    """
+    only_if(known(function.kind) == "characteriser")
+    points = need(function.curve or None, f"the curve of {function.tag}")
+    entering = [need(point.at, "a point of the curve") for point in points]
+    leaving = [need(point.gives, "a point of the curve") for point in points]
+    commanded = any(tag in plant.controlled for tag in plant.commanders.get(function.tag, ()))
+    turned = 0.0
+    for (point, left, right), (low, high) in zip(
+        zip(points[1:], entering, entering[1:], strict=False), pairwise(leaving), strict=True
+    ):
+        if not same_kind(left.unit, right.unit) or not same_kind(low.unit, high.unit):
+            not_checked("the points of the curve have units of different kinds")
+        if not below(left.value, right.to(left.unit.symbol)):
+            yield draft(
+                function.tag,
+                f"its curve goes from {left} to {right}: what enters does not rise from point to point",
+                remedy="put the points in rising order of `at`, each once",
+                at=point.origin.place("at"),
+            )
+            return
+        rise = high.to(low.unit.symbol) - low.value
+        if equal(rise, 0.0) and commanded:
+            yield draft(
+                function.tag,
+                f"from {left} to {right} its curve stays at {low}: the output of the controller moves nothing there",
+                remedy="let the curve rise, or limit the controller's output to the part that does",
+                at=point.origin.place("gives"),
+                level=Level.WARNING,
+            )
+        elif turned * rise < 0 and commanded:
+            yield draft(
+                function.tag,
+                f"its curve turns at {left}: from {low} it goes {'down' if rise < 0 else 'up'} to {high}, and the loop's "
+                "gain changes its sign there",
+                remedy=f"let the curve {'rise' if turned > 0 else 'fall'} all the way",
+                at=point.origin.place("gives"),
+            )
+            return
+        turned = turned or rise
+
+
+@rule(level=Level.WARNING, source="common practice (reset wind-up)")
+def characteriser_short(function: Function, plant: Plant) -> Iterator[Draft]:
+    """The curve of a characteriser ends inside the output limits of the controller that passes through it.
+
+    Why:
+        Beyond its ends a curve is level: the output moves on and nothing follows it, and the controller winds up.
+    Breaks:
+        A curve from 0 to 80 % behind an output with limits of 0 and 100 %.
+    Holds:
+        The points reach from the low to the high output limit (the ends of the output span, or 0 and 100 %, where none
+        are given).
+    What this check cannot see:
+        A curve that is level at its end on purpose: accept it by a deviation.
+    """
+    only_if(known(function.kind) == "characteriser")
+    commanders = _candidates(function, plant)
+    only_if(commanders)
+    points = need(function.curve or None, f"the curve of {function.tag}")
+    first, last = (need(points[index].at, "a point of the curve") for index in (0, -1))
+    for controlled in commanders:
+        output = need(controlled.controller.output, f"the output of {controlled.tag}")
+        for end, point, outside in (("low", first, below), ("high", last, above)):
+            limit = _output_end(output, end)
+            if not same_kind(limit.unit, point.unit):
+                not_checked(f"the curve and the output of {controlled.tag} are in units of different kinds")
+            if outside(limit.to(point.unit.symbol), point.value):
+                yield draft(
+                    function.tag,
+                    f"its curve {'begins' if end == 'low' else 'ends'} at {point}, but the output of {controlled.tag} goes "
+                    f"{'down' if end == 'low' else 'up'} to {limit}",
+                    remedy=f"give the curve a point at {limit}, or limit the output to {point}",
+                    at=points[0 if end == "low" else -1].origin.place("at"),
+                    related=(
+                        (output.origin.place(end if getattr(output, end) else "span"), f"the output of {controlled.tag}"),
+                    ),
+                )
+
+
+def _output_end(output: Output, end: str) -> Quantity:
+    """The output limit at one end: as written, or the end of the output span, or 0 and 100 %."""
+    limit = getattr(output, end)
+    if limit is not None:
+        written: Quantity = need(limit, f"the {end} output limit")
+        return written
+    if output.span is None:
+        return Quantity(0.0 if end == "low" else 100.0, UNITS["%"])
+    span = need(output.span, "the output span")
+    return Quantity(span.low if end == "low" else span.high, span.unit)
 
 
 # ---------------------------------------------------------------- split ranges
