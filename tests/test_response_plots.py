@@ -16,7 +16,7 @@ from loopdoc.cli import run
 from loopdoc.documents.frequency_plot import frequency_caption, frequency_drawing
 from loopdoc.documents.plots import Curve, Drawing, Panel, save, to_svg
 from loopdoc.documents.response_figure import figure
-from loopdoc.documents.upset_story import benefit, declared_upsets, single_loop_assumption
+from loopdoc.documents.upset_story import benefit, declared_upsets, single_loop_assumption, upset_name
 from loopdoc.engineering.comparison import Comparison, compare
 from loopdoc.engineering.dynamics import ChainDynamics, Dynamics
 from loopdoc.engineering.frequency import LoopStage, analyse_chain
@@ -254,3 +254,15 @@ def test_what_a_cascade_is_compared_with_stands_beside_the_ratios(compared: Comp
     assert ratio is not None
     assert entry.single is not None
     assert ratio == pytest.approx(entry.tuned.metrics.iae_pct_s / entry.single.metrics.iae_pct_s)
+
+
+def test_an_upset_at_the_input_of_an_integrating_process_is_in_units_of_what_commands_it(tmp_path: Path) -> None:
+    loaded = load(starter(tmp_path))
+    assert isinstance(loaded, Loaded)
+    found = compare(Dynamics(Plant(loaded.register)).loop("LIC-1001").chains[0])
+    assert isinstance(found, Comparison)
+    names = [upset_name(found, entry) for entry in found.scenarios]
+    secondary = loaded.register.loops["FIC-1002"].measurement
+    # A tenth of the span of the secondary, which commands the level.
+    tenth = secondary.range.span / 10.0  # type: ignore[union-attr]
+    assert f"An upset of {tenth:g}\u00a0m³/h at the process input of LIC-1001" in names

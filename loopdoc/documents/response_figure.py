@@ -54,7 +54,7 @@ def figure(plant: Plant, comparison: Comparison) -> Drawing:
             Panel("", f"time, {time_unit}", f"{chain.final_element.tag}, %" if not below else "", tuple(valves), travel)
         )
     title = f"Time responses of {lead.tag} with {chain.final_element.tag}"
-    return Drawing(title, (tuple(above), tuple(below)), caption(comparison))
+    return Drawing(title, (tuple(above), tuple(below)), whole_caption(comparison))
 
 
 def _limits(plant: Plant, lead: ControlledLoop, own: Range) -> Iterator[Limit]:
@@ -101,7 +101,12 @@ def caption(comparison: Comparison) -> str:
     whose = f"at {chain.lead.tag}" if alone else "at each measurement of the cascade"
     parts = [
         f"Response of {chain.lead.tag} with {chain.final_element.tag} to a step of {number(UPSET_PCT)} % of span in "
-        f"its setpoint and, through the lags of the process concerned, {whose}.",
+        f"its setpoint and, through the lags of the process concerned, {whose}"
+        + (
+            "; of an integrating process the upset is at its input."
+            if any(stage.process.integrating for stage in chain.stages)
+            else "."
+        ),
         "Upsets that the register declares come with their own size and lag."
         if any(entry.scenario.disturbances and entry.scenario.disturbances[0].path for entry in comparison.scenarios)
         else "",
@@ -109,9 +114,13 @@ def caption(comparison: Comparison) -> str:
         + (f" and a stroke time of {shown(stroke)}" if stroke else "")
         + "; every measurement starts at its normal value and the final element in the middle of its output limits.",
         "Alarms, trips and output limits are drawn where they lie near the curves; each panel has its own scale.",
-        single_loop_assumption(comparison),
     ]
     return " ".join(part for part in parts if part)
+
+
+def whole_caption(comparison: Comparison) -> str:
+    """The caption of a figure beside which nothing else says with what a cascade is compared."""
+    return " ".join(part for part in (caption(comparison), single_loop_assumption(comparison)) if part)
 
 
 def _short_name(comparison: Comparison, entry: ScenarioResponses) -> str:

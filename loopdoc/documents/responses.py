@@ -12,7 +12,7 @@ from loopdoc.documents.magnitudes import difference_unit, duration, number, with
 from loopdoc.documents.narrative import Supplement
 from loopdoc.documents.page_fit import foot
 from loopdoc.documents.plots import Drawing, to_svg
-from loopdoc.documents.response_figure import caption, figure
+from loopdoc.documents.response_figure import caption, figure, whole_caption
 from loopdoc.documents.upset_story import declared_upsets, single_loop_assumption, told_of, upset_name
 from loopdoc.documents.values import DASH, shown
 from loopdoc.documents.view import Figure
@@ -45,7 +45,7 @@ def supplements(basis: Basis) -> dict[str, Supplement]:
         if compared:
             found[scheme.lead.tag] = Supplement(
                 " ".join(told for comparison in compared for told in told_of(comparison) if told),
-                tuple(Figure(_drawn(basis, found.dynamics), caption(found)) for found in compared),
+                tuple(Figure(_drawn(basis, found.dynamics), whole_caption(found)) for found in compared),
             )
     return found
 

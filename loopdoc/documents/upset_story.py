@@ -4,14 +4,15 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 
-from loopdoc.documents.magnitudes import change, difference_unit, duration, with_unit
+from loopdoc.documents.magnitudes import change, duration, with_unit
 from loopdoc.documents.wording import listed, sentences, upper_first, value
 from loopdoc.engineering.comparison import Comparison, NotSimulated, ScenarioResponses
 from loopdoc.engineering.dynamics import ChainDynamics
-from loopdoc.engineering.stages import Lacking, Level, measured_range
+from loopdoc.engineering.stages import Lacking, Level, commanded, measured_range
 from loopdoc.engineering.upsets import declared_step
 from loopdoc.register.model import Disturbance, Process, known
 from loopdoc.register.quantity import display_number
+from loopdoc.register.units import unit
 
 
 def upset_name(comparison: Comparison, entry: ScenarioResponses) -> str:
@@ -24,9 +25,13 @@ def upset_name(comparison: Comparison, entry: ScenarioResponses) -> str:
     loop = levels[moved.level].loop
     if moved.path is not None:
         return f"{upper_first(entry.scenario.name)}, declared at {loop.tag}"
-    size = change(moved.size_pct, measured_range(loop))
-    process = known(loop.loop.process)
-    return f"An upset of {size} at {loop.tag}" + (" at its process input" if process and process.integrating else "")
+    level = levels[moved.level]
+    if level.stage.process.integrating:
+        # There it is a share of what commands the process, not of the measurement, that is upset.
+        symbol, span = commanded(level.route)
+        size = with_unit(moved.size_pct * span / 100.0, unit(symbol).display)
+        return f"An upset of {size} at the process input of {loop.tag}"
+    return f"An upset of {change(moved.size_pct, measured_range(loop))} at {loop.tag}"
 
 
 def benefit(comparison: Comparison) -> str:
@@ -36,17 +41,16 @@ def benefit(comparison: Comparison) -> str:
         return ""
     lead = comparison.dynamics.chain.lead
     own = measured_range(lead)
-    unit = difference_unit(own)
-    peaks = [abs(found.metrics.peak_pct) * own.span / 100.0 for found in (entry.single, entry.tuned)]
+    alone, ours = (change(abs(found.metrics.peak_pct), own) for found in (entry.single, entry.tuned))
     ratio = entry.ratio("iae_pct_s")
     integral = ""
     if ratio is not None and ratio < 1:
         integral = f" The integral of the absolute error is {display_number(100.0 * ratio, 2)} % of the single loop's."
     upset = upset_name(comparison, entry)
     return (
-        f"With the cascade, {upset[0].lower()}{upset[1:]} moves {lead.tag} by {with_unit(peaks[1], unit)} at most; a "
+        f"With the cascade, {upset[0].lower()}{upset[1:]} moves {lead.tag} by {ours} at most; a "
         f"single loop on {comparison.dynamics.chain.final_element.tag}, tuned by SIMC to the same Ms, would let it "
-        f"move by {with_unit(peaks[0], unit)}.{integral}"
+        f"move by {alone}.{integral}"
     )
 
 
