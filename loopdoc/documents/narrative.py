@@ -8,7 +8,14 @@ from dataclasses import dataclass
 from typing import TypeVar
 from urllib.parse import quote
 
-from loopdoc.documents import failure_story, open_points, protection_story, settings_story, tuning_story
+from loopdoc.documents import (
+    failure_story,
+    open_points,
+    protection_story,
+    settings_story,
+    time_to_act_story,
+    tuning_story,
+)
 from loopdoc.documents.basis import Basis, Page
 from loopdoc.documents.naming import over_range, sensor
 from loopdoc.documents.page_fit import foot
@@ -253,6 +260,7 @@ class _Narrative:
             yield from table("settings", settings_story.SETTINGS_HEAD, rows, self._set, title="Modes and limits")
             yield from self._paragraphs("", waits)
         yield from self._alarm_table(loops)
+        yield from self._paragraphs("Time to act.", time_to_act_story.told(self._plant, self._basis.times, loops))
         tags = [loop.tag for loop in loops] + [part.tag for part in scheme.final_elements]
         acting = sentences(
             protection_story.initiated_by(self._plant, loops), protection_story.interlock_effects(self._plant, tags)
@@ -329,6 +337,8 @@ class _Narrative:
             ))  # fmt: skip
         yield from table("indicators", INDICATOR_HEAD, rows, self._set)
         yield from self._alarm_table(self._indicators)
+        times = time_to_act_story.told(self._plant, self._basis.times, self._indicators)
+        yield from self._paragraphs("Time to act.", times)
         told = [self._entered(loop) for loop in self._indicators]
         yield from self._paragraphs("", sentences(protection_story.initiated_by(self._plant, self._indicators), *told))
 

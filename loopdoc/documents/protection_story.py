@@ -5,9 +5,10 @@ from __future__ import annotations
 import re
 from collections.abc import Iterable, Iterator, Sequence
 
+from loopdoc.documents import time_to_act_story
 from loopdoc.documents.wording import NO_BREAK, clause, grouped, listed, number_word, sentences, value
 from loopdoc.engineering.pairing import Plant
-from loopdoc.register.model import ALARM_ORDER, Alarm, FinalElement, Initiator, Interlock, Loop, known
+from loopdoc.register.model import ALARM_ORDER, Alarm, Bypass, FinalElement, Initiator, Interlock, Loop, known
 from loopdoc.register.quantity import Quantity
 
 ALARM_HEAD = ("Alarm", "Limit", "Priority", "Likely cause", "Consequence", "Operator's response")
@@ -156,22 +157,30 @@ def told(interlock: Interlock) -> str:
 
 
 def reset(interlock: Interlock) -> str:
-    """Reset, response time against the time that the process gives, proof test."""
+    """Reset, response time against the time that the process gives, proof test, bypass."""
     written = known(interlock.reset)
     found = []
     if written:
         plain = written.split()[0].strip(",") in ("manual", "automatic")
         found.append(f"reset is {written}" if plain else f"reset: {written}")
-    response, given = known(interlock.response_time), known(interlock.process_safety_time)
-    if response and given:
-        found.append(f"it acts within {value(response)}, and the process safety time is {value(given)}")
-    elif response:
-        found.append(f"it acts within {value(response)}")
-    elif given:
-        found.append(f"the process safety time is {value(given)}")
+    found += time_to_act_story.response_told(interlock)
     test = known(interlock.proof_test)
     found.append(f"it is proof-tested every {value(test)}" if test else "")
+    found.append(bypass(known(interlock.bypass)))
     return sentences(*found)
+
+
+def bypass(written: Bypass | None) -> str:
+    """Whether an interlock may be bypassed, by whose leave and for how long; empty where the register says nothing."""
+    permitted = known(written.permitted) if written else None
+    if written is None or permitted is None:
+        return ""
+    if written.never:
+        return "no bypass is permitted"
+    who, limit = known(written.approved_by), known(written.limit)
+    told = f"a bypass is permitted {clause(permitted)}"
+    told += f", for {value(limit)} at most" if limit else ", without a limit in time"
+    return f"{told} (permitted by: {who})" if who else told
 
 
 def bare(interlock: Interlock) -> bool:

@@ -112,9 +112,13 @@ def response_of(interlock: Interlock) -> Told:
     told += [f"process safety time {value(given)}"] if given else []
     if known(interlock.layer) == "process" and interlock.process_safety_time is None:
         return Told(upper_first(", ".join(told)) or "No time is given")
-    lacking = [name for name, time in (("process safety time", given), ("response time", response)) if time is None]
-    verb = "is" if len(lacking) == 1 else "are"
-    return Told(upper_first("; ".join([*told, f"not checked, the {listed(lacking)} {verb} not known"])))
+    return Told(upper_first("; ".join([*told, f"not checked, {_lacking(given, response)}"])))
+
+
+def _lacking(given: Quantity | None, response: Quantity | None) -> str:
+    """Which of the two times of an interlock is not known."""
+    names = [name for name, time in (("process safety time", given), ("response time", response)) if time is None]
+    return f"the {listed(names)} {'is' if len(names) == 1 else 'are'} not known"
 
 
 def _time(written: Quantity | Hold | None) -> Quantity | None:
@@ -128,6 +132,9 @@ def _percent(share: float) -> str:
 
 
 # ---------------------------------------------------------------- the narrative
+
+BESIDE = "Calculated from normal operation with the loops in manual, this does not show that the interlock is enough"
+"""The caution as a narrative carries it, in one sentence."""
 
 
 def told(plant: Plant, times: TimeToAct, loops: Iterable[Loop]) -> str:
@@ -145,7 +152,24 @@ def told(plant: Plant, times: TimeToAct, loops: Iterable[Loop]) -> str:
         for entry in found for upset in entry.not_decided
     ]  # fmt: skip
     sayings += [f"The time from {listed(names)} {reason}" for reason, names in grouped(lacking).items()]
-    return sentences(*sayings)
+    return sentences(*sayings, BESIDE) if sayings else ""
+
+
+def response_told(interlock: Interlock) -> tuple[str, ...]:
+    """Process safety time against response time as sentences of a narrative; none where neither is given."""
+    given, response = _time(interlock.process_safety_time), _time(interlock.response_time)
+    if given and response and seconds(given) > 0.0:
+        share = seconds(response) / seconds(given)
+        judged = "Whether that is enough is judged in the lifecycle of the safety function"
+        if share >= 1.0:
+            return f"It acts within {value(response)}, no sooner than the process safety time of {value(given)}", judged
+        acts = f"It acts within {value(response)}, {_percent(share)} of the process safety time of {value(given)}"
+        return acts, judged
+    told = [f"It acts within {value(response)}"] if response else []
+    told += [f"The process safety time is {value(given)}"] if given else []
+    if known(interlock.layer) == "safety":
+        told.append(f"Whether it acts in time is not checked: {_lacking(given, response)}")
+    return tuple(told)
 
 
 def _between(plant: Plant, entry: AlarmToTrip, time: TimeBetween) -> str:
