@@ -432,3 +432,65 @@ def test_a_ring_of_loops_is_followed_once(tmp_path: Path) -> None:
 def test_an_unknown_loop_is_a_key_error(tarn: Plant) -> None:
     with pytest.raises(KeyError):
         FailureAnalysis(tarn).effects("FV-2011")
+
+
+# ---------------------------------------------------------------- independence
+
+HEATED = """
+format: 1
+units: {"20": {name: Test}}
+loops:
+  TIC-2001:
+    unit: "20"
+    service: Outlet temperature
+    measurement: {transmitter: TT-2001, variable: temperature, range: 0 to 200 degC, signal: 4-20 mA}
+    controller: {action: reverse, gain: 1, output: {to: TV-2001}, modes: {normal: automatic}}
+    process: {effect: rises}
+    hazard: high
+instruments:
+  TT-2002: {unit: "20", service: "Outlet temperature, safety system", variable: temperature, range: 0 to 200 degC}
+final_elements:
+  TV-2001: {unit: "20", kind: control valve, opens_on: falling signal, output_block: reversed, fails: open,
+            signal: 4-20 mA}
+  XV-2003: {unit: "20", kind: on-off valve, signal: contact}
+interlocks:
+  IS-2001: {unit: "20", layer: safety, initiators: {TT-2002: {trips: above 150 degC}}, voting: 1oo1,
+            actions: %s}
+"""
+
+
+@pytest.mark.parametrize(
+    ("actions", "stands"),
+    [
+        # The valve is stuck open without its signal or its air: what can only shut this valve does not help.
+        ("{TV-2001: closed}", False),
+        ("{TV-2001: closed, TIC-2001: {mode: manual, output: 0 %}}", False),
+        ("{TIC-2001: {mode: manual, output: 0 %}}", False),
+        ("{TV-2001: closed, XV-2003: closed}", True),
+    ],
+)
+def test_an_interlock_does_not_stand_against_the_loss_of_all_that_it_moves(
+    tmp_path: Path, actions: str, stands: bool
+) -> None:
+    plant = written(tmp_path, HEATED % actions)
+    for failure in (Failure.OUTPUT_LOST, Failure.MOTIVE_POWER_LOST, Failure.CONTROL_POWER_LOST):
+        (told,) = effect(plant, "TIC-2001", failure).consequences
+        assert (told.direction, told.hazardous) == (1, True)
+        assert [one.interlock.tag for one in told.trips] == (["IS-2001"] if stands else []), failure
+    # With a wrong reading the valve itself is sound, and the safety system shuts it by its own transmitter.
+    (told,) = effect(plant, "TIC-2001", Failure.MEASUREMENT_LOW).consequences
+    assert [one.interlock.tag for one in told.trips] == ["IS-2001"]
+
+
+def test_the_transmitters_of_the_safety_system_stand_against_a_failed_controller(tarn: Plant) -> None:
+    # PT-2021 too low: nitrogen in, vent shut, the pressure rises. PT-2023A, B and C measure it for IS-2001 (2oo3),
+    # PT-2017 for the alarm of PI-2017; PIC-2021's own alarm hangs on the failed transmitter.
+    (told,) = effect(tarn, "PIC-2021", Failure.MEASUREMENT_LOW).consequences
+    assert [trip.initiator.tag for trip in told.trips] == ["PT-2023A", "PT-2023B", "PT-2023C"]
+    assert [(one.loop.tag, one.alarm.kind) for one in told.alarms] == [("PI-2017", "high")]
+
+
+def test_a_trip_on_the_failed_transmitter_does_not_count(tarn: Plant) -> None:
+    # FT-1017 too high: the pump slows down. IS-1002 watches the circulation by the same FT-1017, and the level.
+    (told,) = effect(tarn, "FIC-1017", Failure.MEASUREMENT_HIGH).consequences
+    assert (told.direction, told.hazardous, told.alarms, told.trips) == (-1, True, (), ())

@@ -201,7 +201,8 @@ class Plant:
     def measuring(self) -> dict[tuple[str, str, str], tuple[Loop | Instrument, ...]]:
         """The loops, then the instruments, that measure each quantity, in the order of the register."""
         found: dict[tuple[str, str, str], list[Loop | Instrument]] = {}
-        for part in (*self.register.loops.values(), *self.register.instruments.values()):
+        parts: tuple[Loop | Instrument, ...] = (*self.register.loops.values(), *self.register.instruments.values())
+        for part in parts:
             quantity = measured_quantity(part)
             if quantity is not None:
                 found.setdefault(quantity, []).append(part)

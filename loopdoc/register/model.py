@@ -9,7 +9,7 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 from functools import cached_property
-from typing import TypeVar
+from typing import Any, TypeVar
 
 from loopdoc.register.place import Place
 from loopdoc.register.quantity import Gain, Quantity, Range
@@ -337,8 +337,11 @@ class Function(Part):
 
     @property
     def inputs_held(self) -> bool:
-        """Whether something stands under `inputs` that names no tags, as a hold does."""
-        return not self.inputs and self.origin.place("inputs") != self.origin.key()
+        """Whether the inputs are on hold."""
+        written: Any = self.origin.source.data
+        for step in self.origin.path:
+            written = written[step]
+        return isinstance(written.get("inputs"), dict)
 
 
 # ---------------------------------------------------------------- interlocks

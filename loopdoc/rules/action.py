@@ -105,7 +105,8 @@ def split_range_direction(controlled: ControlledLoop) -> Iterator[Draft]:
     """
     only_if(len(controlled.routes) > 1)
     paths = _paths(controlled)
-    decided = [(route, path) for route, path in zip(controlled.routes, paths, strict=True) if isinstance(path, PathSign)]
+    routes = zip(controlled.routes, paths, strict=True)
+    decided = [(route, path) for route, path in routes if isinstance(path, PathSign)]
     action = known(controlled.controller.action)
     wanted = action if action in {path.action for _, path in decided} else decided[0][1].action if decided else None
     for route, path in decided:

@@ -8,7 +8,7 @@ from loopdoc.engineering.pairing import LoopAlarm, Plant, normal_value
 from loopdoc.engineering.spreading import transmitter_of
 from loopdoc.register.model import Hold, Loop, PlantUnit, known
 from loopdoc.register.quantity import Quantity, Range
-from loopdoc.register.units import same_difference
+from loopdoc.register.units import UNITS, same_difference
 from loopdoc.rules.finding import Level
 from loopdoc.rules.policy import Limits
 from loopdoc.rules.rule import Draft, draft, need, not_checked, only_if, rule
@@ -83,8 +83,8 @@ def alarm_deadband(subject: LoopAlarm, limits: Limits) -> Iterator[Draft]:
             without = f"a delay of {known(alarm.delay)}" if delay else "no delay"
             yield draft(
                 loop.tag,
-                f"{told} with {without}; for a {_type(loop)} {usual:g} % and {duration(usual_delay)} are usual, and with "
-                f"less than {limits.alarm_deadband_low * usual:g} % the noise alone makes it chatter",
+                f"{told} with {without}; for a {_type(loop)} {usual:g} % and {duration(usual_delay)} are usual, "
+                f"and with less than {limits.alarm_deadband_low * usual:g} % the noise alone makes it chatter",
                 remedy=f"write about {_rounded(usual * band.span / 100, band)}, or a delay of {duration(usual_delay)} "
                 "where the time to respond allows it",
                 at=alarm.origin.place("deadband"),
@@ -118,7 +118,8 @@ def _clears_too_late(subject: LoopAlarm, written: Quantity, size: float, band: R
 
 @rule(
     level=Level.WARNING,
-    source="ANSI/ISA-18.2-2009 (R2016), clause 10, delays by type of signal (from memory); the multiple: common practice",
+    source="ANSI/ISA-18.2-2009 (R2016), clause 10, delays by type of signal (from memory); the multiple: common "
+    "practice",
 )
 def alarm_delay_long(subject: LoopAlarm, limits: Limits) -> Iterator[Draft]:
     """An alarm waits much longer than alarms on such a signal do.
@@ -180,8 +181,11 @@ def _usual_delay(loop: Loop, limits: Limits) -> float | None:
 
 
 def _rounded(size: float, band: Range) -> str:
-    """A dead band to write, with two significant digits."""
-    return amount(float(f"{size:.2g}"), band.unit)
+    """A dead band to write, with two significant digits; that of a pressure is neither gauge nor absolute."""
+    unit = band.unit
+    if unit.difference_kind == "pressure difference":
+        unit = UNITS.get(unit.symbol[:-1], unit)
+    return amount(float(f"{size:.2g}"), unit)
 
 
 # ---------------------------------------------------------------- rationalisation and priority
@@ -212,7 +216,7 @@ def alarm_unrationalised(subject: LoopAlarm) -> Iterator[Draft]:
         told = [key.replace("_", " ") for key in lacking]
         yield draft(
             loop.tag,
-            f"its {name} alarm states no {_listed(told, 'and no')}",
+            f"its {name} alarm states no {_listed([f'{"no " if number else ""}{word}' for number, word in enumerate(told)], 'and')}",
             remedy=f"write {_listed([f'`{key}`' for key in lacking], 'and')} as the alarm review decided, or "
             "`{hold: reason}`; what needs no response is no alarm",
             at=alarm.origin,
@@ -309,7 +313,7 @@ def alarm_priority_mix(unit: PlantUnit, plant: Plant, limits: Limits) -> Iterato
                 unit.number,
                 f"{len(raised)} of the {len(given)} alarms of this unit ({share:.0f} %) have {which} priority; "
                 f"more than {allowed:g} % is too many",
-                remedy="let the alarm review lower those whose consequence is smaller or whose time to respond is longer",
+                remedy="let the alarm review lower those with the smaller consequence or the longer time to respond",
                 at=unit.origin,
                 related=tuple(
                     (

@@ -7,7 +7,7 @@ from collections.abc import Iterator
 from loopdoc.engineering.direction import Undecided
 from loopdoc.engineering.failure import Consequence, Failure, FailureAnalysis, FailureEffect
 from loopdoc.engineering.pairing import ControlledLoop
-from loopdoc.engineering.spreading import ElementMove, transmitter_of
+from loopdoc.engineering.spreading import ElementMove
 from loopdoc.register.model import known
 from loopdoc.rules.finding import Level
 from loopdoc.rules.rule import Draft, draft, need, not_checked, only_if, rule
@@ -21,7 +21,8 @@ _READINGS = {
 
 @rule(
     level=Level.WARNING,
-    source="IEC 61511-1:2016, clauses 8.2 and 9, a failed control loop as an initiating cause (from memory); sign algebra",
+    source="IEC 61511-1:2016, clauses 8.2 and 9, a failed control loop as an initiating cause (from memory); sign "
+    "algebra",
 )
 def measurement_fault_unsafe(controlled: ControlledLoop, failures: FailureAnalysis) -> Iterator[Draft]:
     """A failed reading makes the controller drive the process to its hazard, and nothing independent stands against it.
@@ -35,16 +36,16 @@ def measurement_fault_unsafe(controlled: ControlledLoop, failures: FailureAnalys
         It is a note where the reading must first go wrong within its range; a warning where the transmitter's own
         declared fault does it, or where an interlock trips on this very transmitter and is blind with it.
     Holds:
-        Where a reading that is too high, too low or failed drives its own measurement to its hazard, there is at least one
-        alarm or trip with another sensor on something that the failure moves, an interlock with other sensors that
-        moves the final element back, or another controller that works against it.
+        Where a reading that is too high, too low or failed drives its own measurement to its hazard, there is at
+        least one alarm or trip with another sensor on something that the failure moves, an interlock with other
+        sensors that moves the final element back, or another controller that works against it.
     What this check cannot see:
         Whether that alarm or trip is reached in time, and relief valves, bunds and other layers that are no loop: say
         so in a deviation.
     """
     loop = controlled.loop
     hazard = need(loop.hazard, "the hazard")
-    sensor = need(known(loop.measurement) and transmitter_of(loop), "the transmitter")
+    sensor = need(need(loop.measurement, "the measurement").transmitter, "the transmitter")
     effects = [effect for effect in failures.effects(loop.tag) if effect.failure in _READINGS]
     only_if(hazard != "none")
     told: set[int] = set()
@@ -75,7 +76,6 @@ def _unopposed(
     controlled: ControlledLoop, sensor: str, effect: FailureEffect, hazard: Consequence, failures: FailureAnalysis
 ) -> Draft:
     loop, side = hazard.loop, "high" if hazard.direction == 1 else "low"
-    measurement = known(controlled.loop.measurement)
     declared = effect.failure is Failure.MEASUREMENT_BAD
     blind = [
         trip
@@ -89,7 +89,7 @@ def _unopposed(
         f"when {sensor} {_READINGS[effect.failure]}, {', '.join(moves)} and the measurement of {loop.tag} goes {side}, "
         f"which is its hazard; no alarm and no trip with another sensor stands against it{blinded}",
         remedy="give it an alarm or a trip on a second transmitter, or say in a deviation what stands against it",
-        at=measurement.origin.place("on_fault" if declared else "transmitter") if measurement else controlled.loop.origin,
+        at=controlled.loop.origin.place("measurement", "on_fault" if declared else "transmitter"),
         related=(
             (loop.origin.place("hazard"), f"the hazard of {loop.tag}, {known(loop.hazard)}"),
             *((trip.initiator.origin.place("trips"), f"{trip.interlock.tag} trips on {sensor}") for trip in blind),

@@ -105,9 +105,9 @@ def interlock_loop_not_forced(interlock: Interlock, plant: Plant) -> Iterator[Dr
             yield draft(
                 interlock.tag,
                 f"it {does} {element}, but {fault}",
-                remedy=f"write `{controlled.tag}: {{mode: manual, output: {_parking(controlled, element, interlock)}}}` "
-                f"under `actions`, or `when_not_followed: track` for {controlled.tag} where its output follows the "
-                "position",
+                remedy=f"write `{controlled.tag}: {{mode: manual, output: "
+                f"{_parking(controlled, element, interlock)}}}` under `actions`, or `when_not_followed: track` for "
+                f"{controlled.tag} where its output follows the position",
                 at=action.origin if action else interlock.actions[element].origin,
                 related=((controlled.loop.origin.key(), f"{controlled.tag} moves {element}"),),
             )
@@ -125,7 +125,7 @@ def _not_forced(controlled: ControlledLoop, action: InterlockAction | None) -> s
     if mode in ("automatic", "cascade", "remote output"):
         return f"forces {controlled.tag} into {mode}, where it winds up: at the reset the element follows that output"
     if mode is not None and action.output is None:
-        return f"forces {controlled.tag} into {mode} at no output: at the reset the element returns to where it stood"
+        return f"forces {controlled.tag} into {mode} without an output: at the reset the element returns to where it stood"
     return ""
 
 
@@ -155,7 +155,7 @@ def trip_output_mismatch(interlock: Interlock, plant: Plant) -> Iterator[Draft]:
         An output block that goes on holding the element after the reset until an operator moves it.
     """
     forced = [
-        (plant.controlled[tag], action, route)
+        (plant.controlled[tag], action, route, route.end)
         for tag, action in interlock.actions.items()
         if action.output is not None and tag in plant.controlled
         for route in plant.controlled[tag].routes
@@ -165,25 +165,25 @@ def trip_output_mismatch(interlock: Interlock, plant: Plant) -> Iterator[Draft]:
     ]
     only_if(forced)
     lacking = ""
-    for controlled, action, route in forced:
-        output, position = known(action.output), known(interlock.actions[route.end.tag].position)
+    for controlled, action, route, element in forced:
+        output, position = known(action.output), known(interlock.actions[element.tag].position)
         if output is None or position not in _OPENING or output.unit.kind != "fraction":
-            lacking = lacking or f"the output of {controlled.tag}, or the position of {route.end.tag}, is not known"
+            lacking = lacking or f"the output of {controlled.tag}, or the position of {element.tag}, is not known"
             continue
         stands = _opening_at(route, output.to("%"))
         if stands is None:
-            lacking = lacking or f"{route.end.tag} does not say on which signal it opens"
+            lacking = lacking or f"{element.tag} does not say on which signal it opens"
         elif not equal(stands, _OPENING[position]):
             yield draft(
                 interlock.tag,
-                f"it {_DOES[position]} {route.end.tag} and forces {controlled.tag} to {output}, at which "
-                f"{route.end.tag} stands {_stands(stands)}: it goes there at the reset",
-                remedy=f"write `output: {_parking(controlled, route.end.tag, interlock)}`, or correct the direction of "
-                f"{route.end.tag}",
+                f"it {_DOES[position]} {element.tag} and forces {controlled.tag} to {output}, at which "
+                f"{element.tag} stands {_stands(stands)}: it goes there at the reset",
+                remedy=f"write `output: {_parking(controlled, element.tag, interlock)}`, or correct the direction of "
+                f"{element.tag}",
                 at=action.origin.place("output"),
                 related=(
-                    (interlock.actions[route.end.tag].origin.place(), f"{route.end.tag}, {position}"),
-                    (route.end.origin.place("opens_on"), _direction(route.end)),
+                    (interlock.actions[element.tag].origin.place(), f"{element.tag}, {position}"),
+                    (element.origin.place("opens_on"), _direction(element)),
                 ),
             )
     if lacking:
@@ -220,7 +220,10 @@ def _direction(element: FinalElement) -> str:
 # ---------------------------------------------------------------- several interlocks on one element
 
 
-@rule(level=Level.WARNING, source="common practice; IEC 62881 (cause and effect matrix): effects with priority (from memory)")
+@rule(
+    level=Level.WARNING,
+    source="common practice; IEC 62881 (cause and effect matrix): effects with priority (from memory)",
+)
 def interlock_actions_conflict(element: FinalElement, plant: Plant, failures: FailureAnalysis) -> Iterator[Draft]:
     """Two interlocks put one final element into opposite positions.
 

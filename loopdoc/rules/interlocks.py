@@ -332,8 +332,8 @@ def interlock_limits_differ(interlock: Interlock, plant: Plant) -> Iterator[Draf
 
 @rule(
     level=Level.WARNING,
-    source="IEC 61511-1:2016, clause 11.3, behaviour on detection of a fault (from memory); common practice: fail to the "
-    "trip side",
+    source="IEC 61511-1:2016, clause 11.3, behaviour on detection of a fault (from memory); common practice: fail to "
+    "the trip side",
 )
 def trip_fault_blind(trip: Trip) -> Iterator[Draft]:
     """The transmitter of a trip fails to the side on which it does not trip.

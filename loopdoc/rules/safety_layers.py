@@ -12,8 +12,6 @@ from loopdoc.rules.policy import Limits
 from loopdoc.rules.rule import Draft, draft, need, not_checked, only_if, rule
 from loopdoc.rules.values import above, time_s
 
-_NEVER = ("no", "none", "never", "not permitted")
-
 
 def _is_safety(interlock: Interlock) -> bool:
     """Whether an interlock belongs to the safety layer; not checked where the layer is not known."""
@@ -64,7 +62,7 @@ def interlock_shared_sensor(trip: Trip, plant: Plant, failures: FailureAnalysis)
             trip.interlock.tag,
             f"it is of the safety layer and trips on {transmitter}, which the control system uses as well: "
             f"{'; '.join(what for _, _, what in uses)}",
-            remedy="give the interlock a transmitter of its own, or say in a deviation how the calculation allows for it",
+            remedy="give it a transmitter of its own, or say in a deviation how the calculation allows for it",
             at=trip.initiator.origin.key(),
             related=tuple((where, what) for _, where, what in uses),
         )
@@ -203,7 +201,7 @@ def interlock_bypass_unlimited(interlock: Interlock, limits: Limits) -> Iterator
     only_if(interlock.bypass is not None)
     bypass = need(interlock.bypass, "the bypass")
     permitted = need(bypass.permitted, "whether a bypass is permitted")
-    if permitted.strip(" .").casefold() in _NEVER:
+    if bypass.never:
         return
     if bypass.limit is None:
         yield draft(
@@ -218,7 +216,7 @@ def interlock_bypass_unlimited(interlock: Interlock, limits: Limits) -> Iterator
     if above(hours, limits.bypass_time):
         yield draft(
             interlock.tag,
-            f"its bypass may last {limit}, longer than {limits.bypass_time:g} h",
+            f"its bypass may last {limit}; the limit is {limits.bypass_time:g} h",
             remedy=f"write a limit of at most {limits.bypass_time:g} h; what lasts longer is a change of the plant",
             at=bypass.origin.place("limit"),
         )
