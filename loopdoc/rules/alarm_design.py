@@ -213,10 +213,10 @@ def alarm_unrationalised(subject: LoopAlarm) -> Iterator[Draft]:
     lacking = [name for name in _STATED if getattr(alarm, name) is None]
     name = NAMES[alarm.kind]
     if lacking:
-        told = [key.replace("_", " ") for key in lacking]
+        told = [f"no {key.replace('_', ' ')}" for key in lacking]
         yield draft(
             loop.tag,
-            f"its {name} alarm states no {_listed([f'{"no " if number else ""}{word}' for number, word in enumerate(told)], 'and')}",
+            f"its {name} alarm states {_listed(told, 'and')}",
             remedy=f"write {_listed([f'`{key}`' for key in lacking], 'and')} as the alarm review decided, or "
             "`{hold: reason}`; what needs no response is no alarm",
             at=alarm.origin,
