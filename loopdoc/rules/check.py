@@ -66,7 +66,7 @@ def check(
         files={file.name: file for file in register.files},
     )
     # What came of the deviations is judged last, and by no deviation.
-    on_deviations = found(replace(scope, uses=outcome.uses, ran=Ran(coverage)), on_deviations=True)
+    on_deviations = found(replace(scope, uses=outcome.uses, ran=Ran.of(coverage)), on_deviations=True)
     return CheckResult(
         tuple(sorted((*outcome.still_open, *on_deviations), key=lambda finding: finding.order)),
         tuple(sorted(outcome.accepted, key=lambda finding: finding.order)),

@@ -33,7 +33,7 @@ def deviation_expired(use: DeviationUse) -> Iterator[Draft]:
     if use.state is State.EXPIRED:
         yield draft(
             use.tag,
-            f"the deviation from {known(use.deviation.rule)} was accepted until {until}, and it is {on.isoformat()}",
+            f"the deviation from {known(use.deviation.rule)} ended on {until}; today is {on.isoformat()}",
             remedy="put the finding right, or have the deviation approved again until a later day",
             at=use.deviation.origin.place("until"),
         )
@@ -111,11 +111,11 @@ def deviation_unused(use: DeviationUse, ran: Ran) -> Iterator[Draft]:
     at = need(use.deviation.at, "the tag of the deviation")
     if use.state is State.ACCEPTS:
         return
-    if named not in ran.coverage:
+    if named not in ran.rules:
         not_checked("the rule of the deviation was not run")
-    for subject, reason in ran.coverage[named].where:
-        if use.tag in subject.split():
-            not_checked(f"the rule of the deviation could not be checked there: {reason}")
+    if (named, use.tag) in ran.not_checked:
+        reason = ran.not_checked[named, use.tag]
+        not_checked(f"the rule of the deviation could not be checked there: {reason}")
     if use.already:
         message = f"the deviation from {named} at {at} accepts nothing: another one accepts that finding"
     else:

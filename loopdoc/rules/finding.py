@@ -70,8 +70,21 @@ class Coverage:
 class Ran:
     """What the rules of one check could look at, for the rules that judge what came of the others."""
 
-    coverage: Mapping[str, Coverage]
-    """By the id of each rule that was run."""
+    rules: frozenset[str]
+    """Ids of the rules that were run."""
+    not_checked: Mapping[tuple[str, str], str]
+    """Why a rule could not be checked, by its id and each tag that it was about."""
+
+    @classmethod
+    def of(cls, coverage: Mapping[str, Coverage]) -> Ran:
+        """What the rules could look at, from what they counted."""
+        lacking = {
+            (rule, word): reason
+            for rule, entry in coverage.items()
+            for subject, reason in entry.where
+            for word in subject.split()
+        }
+        return cls(frozenset(coverage), lacking)
 
 
 @dataclass(frozen=True, slots=True)

@@ -59,10 +59,10 @@ def function_incomplete(function: Function, plant: Plant) -> Iterator[Draft]:
     lacking = ""
     if kind in (*_SELECTORS, "sum") and entering < 2:
         does = "to add" if kind == "sum" else "to choose between"
-        signals = f"{entering or 'no'} {'signal enters' if entering == 1 else 'signals enter'}"
-        lacking = f"{signals} it; there is nothing {does}"
+        signals = f"{'only one' if entering else 'no'} signal enters"
+        lacking = f"{signals} it: there is nothing {does}"
     elif kind == "ratio" and not function.inputs:
-        lacking = "no measurement enters it; there is nothing to multiply"
+        lacking = "no measurement enters it: there is nothing to multiply"
     elif not entering:
         lacking = "nothing enters it"
     if lacking:
@@ -79,19 +79,19 @@ def function_incomplete(function: Function, plant: Plant) -> Iterator[Draft]:
 
 @rule(level=Level.ERROR, source="common practice")
 def ratio_range_short(function: Function, plant: Plant) -> Iterator[Draft]:
-    """A ratio station cannot ask for the flow that is wanted, or asks for one that its secondary cannot measure.
+    """A ratio station cannot ask for the flow that is wanted, or asks for one that its secondary does not take.
 
     Why:
         The setpoint is the ratio times the wild flow. Where the span of the ratio times the flow as the plant runs
-        goes beyond the secondary's range, that setpoint is never reached. Where the flows in normal running stand in a
-        ratio outside the span, the station cannot hold the one to the other.
+        goes beyond the secondary's setpoint limits or its range, the ratio is not held. Where the flows in normal
+        running stand in a ratio outside the span, the station cannot hold the one to the other.
     Breaks:
         `span: 0.8 to 1.5` on 7 to 14 t/h over a secondary of 0 to 18 t/h: 21 t/h may be asked for. `normal: 1.6` with
         that span. Flows of 13.5 and 8 t/h in normal running, a ratio of 1.69.
     Holds:
-        The span times the operating band of the input lies in the secondary's range, and both the normal ratio and
-        the ratio of the two normal flows lie in the span. Where a controller sets the ratio, its output span lies in
-        the station's, and `secondary-range-short` compares the ranges.
+        The span times the operating band of the input lies in the secondary's setpoint limits (or its range, where it
+        has none), and both the normal ratio and the ratio of the two normal flows lie in the span. Where a controller
+        sets the ratio, its output span lies in the station's, and `secondary-range-short` compares the ranges.
     What this check cannot see:
         Start-up, where a ratio station is usually out of use.
     """
@@ -126,15 +126,21 @@ def ratio_range_short(function: Function, plant: Plant) -> Iterator[Draft]:
     if plant.commanders.get(function.tag):
         return
     asked = Range(span.low * flow.low, span.high * flow.high, band.unit)
-    if below(asked.low, band.low) or above(asked.high, band.high):
-        yield draft(
-            function.tag,
-            f"its span, {span.low:g} to {span.high:g}, on {tag} ({rounded(flow)} in operation) asks {to} for "
-            f"{rounded(asked)}, beyond its range, {band}",
-            remedy=f"shorten the span, or give {to} a range that covers {rounded(asked)}",
-            at=function.origin.place("span"),
-            related=((range_place(secondary.loop), f"the range of {to}, {band}"),),
-        )
+    setpoint = known(secondary.controller.setpoint)
+    for end, reached, outside in (("low", asked.low, below), ("high", asked.high, above)):
+        limit = known(getattr(setpoint, end)) if setpoint else None
+        bound = limit.to(band.unit.symbol) if limit and same_kind(limit.unit, band.unit) else getattr(band, end)
+        place = setpoint.origin.place(end) if setpoint and limit else range_place(secondary.loop)
+        what = f"the {end} {'setpoint limit' if limit else 'end of the range'} of {to}"
+        if outside(reached, bound):
+            yield draft(
+                function.tag,
+                f"its span, {span.low:g} to {span.high:g}, on {tag} ({rounded(flow)} in operation) asks {to} for "
+                f"{amount(reached, band.unit)}, beyond {what}, {amount(bound, band.unit)}",
+                remedy=f"shorten the span, or let {to} take {amount(reached, band.unit)}",
+                at=function.origin.place("span"),
+                related=((place, what),),
+            )
 
 
 def _set_beyond(function: Function, span: Range, plant: Plant) -> Iterator[Draft]:
@@ -294,9 +300,8 @@ def characteriser_not_monotonic(function: Function, plant: Plant) -> Iterator[Dr
     leaving = [need(point.gives, "a point of the curve") for point in points]
     commanded = any(tag in plant.controlled for tag in plant.commanders.get(function.tag, ()))
     turned = 0.0
-    for (point, left, right), (low, high) in zip(
-        zip(points[1:], entering, entering[1:], strict=False), pairwise(leaving), strict=True
-    ):
+    steps = zip(points[1:], pairwise(entering), pairwise(leaving), strict=True)
+    for point, (left, right), (low, high) in steps:
         if not same_kind(left.unit, right.unit) or not same_kind(low.unit, high.unit):
             not_checked("the points of the curve have units of different kinds")
         if not below(left.value, right.to(left.unit.symbol)):
@@ -319,8 +324,8 @@ def characteriser_not_monotonic(function: Function, plant: Plant) -> Iterator[Dr
         elif turned * rise < 0 and commanded:
             yield draft(
                 function.tag,
-                f"its curve turns at {left}: from {low} it goes {'down' if rise < 0 else 'up'} to {high}, and the loop's "
-                "gain changes its sign there",
+                f"its curve turns at {left}: from {low} it goes {'down' if rise < 0 else 'up'} to {high}, and the "
+                "loop's gain changes its sign there",
                 remedy=f"let the curve {'rise' if turned > 0 else 'fall'} all the way",
                 at=point.origin.place("gives"),
             )
@@ -356,14 +361,17 @@ def characteriser_short(function: Function, plant: Plant) -> Iterator[Draft]:
             if outside(limit.to(point.unit.symbol), point.value):
                 yield draft(
                     function.tag,
-                    f"its curve {'begins' if end == 'low' else 'ends'} at {point}, but the output of {controlled.tag} goes "
-                    f"{'down' if end == 'low' else 'up'} to {limit}",
+                    f"its curve {'begins' if end == 'low' else 'ends'} at {point}, but the output of {controlled.tag} "
+                    f"goes {'down' if end == 'low' else 'up'} to {limit}",
                     remedy=f"give the curve a point at {limit}, or limit the output to {point}",
                     at=points[0 if end == "low" else -1].origin.place("at"),
-                    related=(
-                        (output.origin.place(end if getattr(output, end) else "span"), f"the output of {controlled.tag}"),
-                    ),
+                    related=((output.origin.place(_end_key(output, end)), f"the output of {controlled.tag}"),),
                 )
+
+
+def _end_key(output: Output, end: str) -> str:
+    """The key that decides one end of an output."""
+    return end if getattr(output, end) is not None else "span"
 
 
 def _output_end(output: Output, end: str) -> Quantity:

@@ -40,7 +40,7 @@ class Scope:
     failures: FailureAnalysis
     uses: tuple[DeviationUse, ...] = ()
     """What became of each deviation; none before the other rules have been run."""
-    ran: Ran = field(default_factory=lambda: Ran({}))
+    ran: Ran = field(default_factory=lambda: Ran.of({}))
 
 
 SUBJECTS: Mapping[type, Callable[[Scope], Iterable[Any]]] = {
