@@ -19,6 +19,7 @@ from loopdoc.documents.naming import (
 )
 from loopdoc.documents.wording import clause, grouped, listed, number_word, sentences, told_of, value
 from loopdoc.engineering.direction import Undecided, element_sign, path_sign, process_on, process_sign
+from loopdoc.engineering.functions import fed_by, feeds_forward
 from loopdoc.engineering.pairing import ControlledLoop, Plant, Route, Scheme
 from loopdoc.engineering.spreading import PASSIVE_MODES, SELECTORS, Moves, command, feedback, normal_mode, stands_by
 from loopdoc.register.model import FinalElement, Function, Loop, known
@@ -142,7 +143,7 @@ class SchemeStory:
             return self._selects(function, "lower" if kind == "low select" else "higher", to)
         if kind == "split range":
             return self._splits(function)
-        terms = listed(self._term(function, tag) for tag in function.inputs)
+        terms = listed(self._term(function, tag) for tag in fed_by(self._plant, function, ""))
         if kind == "sum" and terms:
             own = f"the output of {loop.tag}" if loop else "its other inputs"
             return f"{function.tag} adds {terms} to {own}, and the sum is the setpoint of {to}"
@@ -155,7 +156,19 @@ class SchemeStory:
                 f"{function.tag} multiplies {terms} by {by}{f', {told}' if told else ''}; "
                 f"the product is the setpoint of {to}"
             )
+        if kind in ("lead-lag", "characteriser") and feeds_forward(self._plant, function):
+            return self._feeds_forward(function, kind, to)
         return f"{function.tag} is a {kind} between the two" if kind else ""
+
+    def _feeds_forward(self, function: Function, kind: str, to: str) -> str:
+        """A function that no controller's output goes through: feedforward."""
+        tags = fed_by(self._plant, function, "")
+        by = "through its curve"
+        if kind == "lead-lag":
+            times = [("led by", function.lead), ("lagged by", function.lag)]
+            by = listed(f"{how} {value(time)}" for how, time in times if time is not None)
+        terms = listed(self._term(function, tag) for tag in tags)
+        return f"{function.tag} feeds {terms} forward to {to}{f', {by}' if by else ''}"
 
     def _selects(self, function: Function, which: str, to: str) -> str:
         candidates = self._plant.commanders.get(function.tag, ())
@@ -175,6 +188,8 @@ class SchemeStory:
         weight = function.weights.get(tag, 1.0)
         times = "" if weight == 1.0 else f"{display_number(weight)} times "
         measurement = known(loop.measurement) if loop else None
+        if tag in self._plant.register.functions:
+            return f"{times}the output of {tag}"
         if loop is None or measurement is None:
             return f"{times}{tag}"
         return f"{times}the {quantity(loop)}{in_brackets(measurement)}"
