@@ -42,7 +42,7 @@ Exit code: 0 where the test supports a model, 1 where it is refused, 2 where som
 
 
 RECORD_HELP = """\
-RESULTS is a workbook that `--blank` wrote and somebody filled in, or YAML (`schemas/record.schema.json`):
+RESULTS is a workbook that `--blank` wrote and somebody filled in, or YAML (`loopdoc schema --records`):
 
   format: 1
   checks:
@@ -219,9 +219,11 @@ def _parser() -> argparse.ArgumentParser:
     explain.add_argument("rule", metavar="RULE", help="id of a rule, as in a finding")
     command("rules", _rules, "list the rules and the thresholds of the policy")
     schema = command("schema", _schema, "print the JSON Schema of the register format")
-    schema.add_argument(
+    which = schema.add_mutually_exclusive_group()
+    which.add_argument(
         "--included", action="store_true", help="that of the files which register.yaml includes, not its own"
     )
+    which.add_argument("--records", action="store_true", help="that of the results of loop checks")
     return parser
 
 
@@ -388,37 +390,42 @@ def _issue(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int
 
 def _response(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
     from loopdoc.engineering.comparison import compare
+    from loopdoc.engineering.dynamics import Dynamics
+    from loopdoc.engineering.pairing import Plant
     from loopdoc.engineering.tuning_review import review, reviewed_loops
     from loopdoc.exchange.responses import response_json, response_text
     from loopdoc.rules.policy import limits_from
 
-    basis = _basis(arguments.register, stderr)
-    if basis is None:
+    # The check is left out: nothing that is printed here comes from it, and it would take most of the time.
+    loaded = _load(arguments.register, stderr)
+    if loaded is None:
         return EXIT_UNREADABLE
-    if arguments.tag not in basis.plant.controlled:
+    plant = Plant(loaded.register)
+    dynamics = Dynamics(plant)
+    if arguments.tag not in plant.controlled:
         from difflib import get_close_matches
 
-        near = get_close_matches(arguments.tag, basis.plant.controlled, 1)
+        near = get_close_matches(arguments.tag, plant.controlled, 1)
         hint = f"did you mean {near[0]}?" if near else "name a loop with a controller"
         stderr.write(f"loopdoc: the register has no controller {arguments.tag}; {hint}\n")
         return EXIT_UNREADABLE
-    loop = basis.dynamics.loop(arguments.tag)
+    loop = dynamics.loop(arguments.tag)
     comparisons = [compare(chain) for chain in loop.chains]
     if arguments.plot is not None:
         if loop.reason:
             stderr.write(f"loopdoc: nothing to draw for {loop.tag}: {loop.reason}\n")
             return EXIT_UNREADABLE
         from loopdoc.documents.plots import save
-        from loopdoc.documents.responses import drawings
+        from loopdoc.documents.response_figure import drawings
 
         try:
-            save(drawings(basis.plant, loop.chains, comparisons), arguments.plot)
+            save(drawings(plant, loop.chains, comparisons), arguments.plot)
         except ValueError as error:
             stderr.write(f"loopdoc: {error}\n")
             return EXIT_UNREADABLE
-    reviews = [review(basis.dynamics.loop(tag)) for tag in reviewed_loops(loop)]
+    reviews = [review(dynamics.loop(tag)) for tag in reviewed_loops(loop)]
     as_asked = response_json if arguments.format == "json" else response_text
-    stdout.write(as_asked(loop, comparisons, reviews, limits_from(basis.plant.register.policy)))
+    stdout.write(as_asked(loop, comparisons, reviews, limits_from(loaded.register.policy)))
     return EXIT_CLEAN
 
 
@@ -495,7 +502,7 @@ def _attest(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> in
     if len(registers) > 1 or not files:
         stderr.write("loopdoc: name one file or more, or folders with PDF files, and at most one register\n")
         return EXIT_UNREADABLE
-    against = _basis(registers[0], stderr) if registers else None
+    against = _basis(registers[0], stderr, with_records=True) if registers else None
     if registers and against is None:
         return EXIT_UNREADABLE
     attestation = Attestation(against)
@@ -584,9 +591,10 @@ def _rules(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int
 
 
 def _schema(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
+    from loopdoc.register import records
     from loopdoc.register.schema import schema_text
 
-    stdout.write(schema_text(root=not arguments.included))
+    stdout.write(records.schema_text() if arguments.records else schema_text(root=not arguments.included))
     return EXIT_CLEAN
 
 

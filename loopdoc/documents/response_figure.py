@@ -2,15 +2,17 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 
 import numpy as np
 
+from loopdoc.documents.frequency_plot import frequency_drawing
 from loopdoc.documents.magnitudes import TIME_UNITS, number
 from loopdoc.documents.plots import Curve, Drawing, Limit, Panel
 from loopdoc.documents.upset_story import single_loop_assumption
 from loopdoc.documents.values import shown
-from loopdoc.engineering.comparison import UPSET_PCT, Comparison, ScenarioResponses
+from loopdoc.engineering.comparison import UPSET_PCT, Comparison, NotSimulated, ScenarioResponses
+from loopdoc.engineering.dynamics import ChainDynamics
 from loopdoc.engineering.pairing import ControlledLoop, Plant
 from loopdoc.engineering.process import FloatArray
 from loopdoc.engineering.simulation import Response
@@ -22,6 +24,18 @@ from loopdoc.register.units import UnitError
 ALARM_NAMES = {"high_high": "HH", "high": "H", "low": "L", "low_low": "LL"}
 COLUMNS = 4
 """Upsets side by side in a figure."""
+
+
+def drawings(
+    plant: Plant, chains: Sequence[ChainDynamics], comparisons: Sequence[Comparison | NotSimulated]
+) -> list[Drawing]:
+    """What is drawn of a loop alone: of each chain the time responses, where there are any, and the open loops."""
+    found: list[Drawing] = []
+    for dynamics, comparison in zip(chains, comparisons, strict=True):
+        if isinstance(comparison, Comparison):
+            found.append(figure(plant, comparison))
+        found.append(frequency_drawing(dynamics))
+    return found
 
 
 def figure(plant: Plant, comparison: Comparison) -> Drawing:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterator, Sequence
+from collections.abc import Iterator
 from typing import Any
 
 from loopdoc.documents.basis import Basis, Page
@@ -11,7 +11,7 @@ from loopdoc.documents.frequency_plot import frequency_caption, frequency_drawin
 from loopdoc.documents.magnitudes import difference_unit, duration, number, with_unit
 from loopdoc.documents.narrative import Supplement
 from loopdoc.documents.page_fit import foot
-from loopdoc.documents.plots import Drawing, to_svg
+from loopdoc.documents.plots import to_svg
 from loopdoc.documents.response_figure import caption, figure, whole_caption
 from loopdoc.documents.upset_story import declared_upsets, single_loop_assumption, told_of, upset_name
 from loopdoc.documents.values import DASH, shown
@@ -19,7 +19,7 @@ from loopdoc.documents.view import Figure
 from loopdoc.documents.wording import listed, sentences
 from loopdoc.engineering.comparison import Comparison, NotSimulated
 from loopdoc.engineering.dynamics import ChainDynamics
-from loopdoc.engineering.pairing import Plant, Scheme
+from loopdoc.engineering.pairing import Scheme
 from loopdoc.engineering.stages import measured_range
 from loopdoc.engineering.tuning_review import NotReviewed, TuningReview, review
 from loopdoc.engineering.tuning_table import CAUTION, Wanted, legend, tuning_table
@@ -111,18 +111,6 @@ def section(basis: Basis, dynamics: ChainDynamics, *, several: bool) -> dict[str
         "frequency_figure": to_svg(frequency_drawing(dynamics)),
         "frequency_caption": frequency_caption(dynamics),
     }
-
-
-def drawings(
-    plant: Plant, chains: Sequence[ChainDynamics], comparisons: Sequence[Comparison | NotSimulated]
-) -> list[Drawing]:
-    """What is drawn of a loop alone: of each chain the time responses, where there are any, and the open loops."""
-    found: list[Drawing] = []
-    for dynamics, comparison in zip(chains, comparisons, strict=True):
-        if isinstance(comparison, Comparison):
-            found.append(figure(plant, comparison))
-        found.append(frequency_drawing(dynamics))
-    return found
 
 
 def review_section(basis: Basis, scheme: Scheme) -> dict[str, Any]:
