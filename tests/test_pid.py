@@ -11,9 +11,9 @@ from scipy.signal import lfilter
 from loopdoc.engineering.pid import (
     Controller,
     ParallelSettings,
-    ScanState,
     SeriesSettings,
     StandardSettings,
+    at_rest,
     gain_from_proportional_band,
     on_secondary_range,
     parallel_from_standard,
@@ -177,11 +177,6 @@ def test_an_output_span_without_width_is_refused() -> None:
 # --- the scanned algorithm -----------------------------------------------------------------------
 
 
-def at_rest(size: int) -> ScanState:
-    zero = np.zeros(size)
-    return ScanState(zero, zero, zero, zero)
-
-
 def test_scans_equal_the_transfer_functions_of_their_parts() -> None:
     """P, I, D and the measurement filter by scipy's recursive filters, added up independently."""
     k, ti, td, n, b, c, tf, h = 1.7, 8.0, 3.0, 6.0, 0.7, 0.3, 2.0, 0.5
@@ -219,6 +214,20 @@ def test_direct_action_mirrors_reverse_action() -> None:
     assert output[1] == -output[0]
 
 
+def test_a_controller_that_is_not_due_keeps_its_memory_and_output() -> None:
+    controllers = [Controller(2.0, 10.0, 1.0, measurement_filter_s=1.5)] * 2
+    coefficients = scan_coefficients(controllers, np.array([1.0, 2.0]))
+    alone = scan_coefficients(controllers[1:], np.array([2.0]))
+    together, other = at_rest(2), at_rest(1)
+    measurement = np.random.default_rng(3).normal(size=12)
+    for k, value in enumerate(measurement):
+        due = np.array([True, k % 2 == 0])
+        output = scan(coefficients, together, np.ones(2), np.full(2, value), due=due)
+        if k % 2 == 0:
+            scan(alone, other, np.ones(1), np.full(1, value))
+        assert output[1] == other.output[0]
+
+
 @pytest.mark.parametrize("rate_s", [0.0, 4.0])
 def test_tracking_holds_the_integral_at_a_limit(rate_s: float) -> None:
     """Held at its limit by a lasting error, the output leaves it in the scan in which the error turns."""
@@ -228,7 +237,7 @@ def test_tracking_holds_the_integral_at_a_limit(rate_s: float) -> None:
     error = np.array([4.0])
     for _ in range(500):
         computed = scan(coefficients, state, error, np.zeros(1))
-        track(coefficients, state, computed, np.minimum(computed, limit))
+        track(coefficients, state, np.minimum(computed, limit))
     # At rest the tracking takes back what the integral adds: excess = K e (h/Ti)/(h/Tt).
     tracking_s = math.sqrt(ti * rate_s) if rate_s else ti
     assert computed[0] - limit == pytest.approx(k * error[0] * tracking_s / ti, rel=1e-9)

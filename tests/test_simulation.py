@@ -5,7 +5,7 @@ import warnings
 
 import numpy as np
 import pytest
-from hypothesis import given, settings
+from hypothesis import assume, given, settings
 from hypothesis import strategies as st
 from numpy.typing import NDArray
 from scipy.linalg import expm
@@ -276,8 +276,8 @@ def test_metrics_of_a_first_order_loop() -> None:
     assert metrics.iae_pct_s == pytest.approx(100.0, rel=2e-3)
     assert metrics.settling_s == pytest.approx(10.0 * math.log(50.0), rel=2e-3)
     assert metrics.overshoot_pct == 0.0
-    assert metrics.reversals == 0
     # The output jumps by 20 % and falls back.
+    assert metrics.reversals == 1
     assert metrics.valve_travel_pct == pytest.approx(40.0, rel=2e-3)
 
 
@@ -367,6 +367,8 @@ def test_dead_time_shifts_an_open_loop_response(steps: int, lag_s: float) -> Non
     kc=st.floats(0.1, 0.8),
 )
 def test_final_value(gain: float, lag_s: float, dead_time_s: float, kc: float) -> None:
+    # With the reset on the lag, PI leaves K k/(lag s) exp(-sL): well inside its limit of pi/2, half a scan added.
+    assume(kc * (dead_time_s + 0.5) / lag_s < 1.0)
     # P control settles at K k/(1 + K k) of the setpoint step, PI at all of it.
     k = kc / gain
     structures = [

@@ -125,8 +125,9 @@ def test_a_chosen_horizon_covers_the_response() -> None:
 
 
 def test_cutting_a_run_short_at_rest_changes_little() -> None:
-    clock = choose_clocks([[TIC]])[0]
-    assert isinstance(clock, Clock)
+    chosen = choose_clocks([[TIC]])[0]
+    assert not isinstance(chosen, Unsuited)
+    clock = chosen.common
     short = simulate([TIC], standard_scenarios(2))[0]
     full = simulate([TIC], standard_scenarios(2), clock=Clock(clock.step_s, 2 * clock.steps))[0]
     for one, other in zip(short, full, strict=True):
@@ -142,8 +143,9 @@ def test_a_widened_step_changes_little() -> None:
         [LoopStage(Controller(1.0, 3000.0, interval_s=1.0), Process(1.0, (3000.0,), 600.0))],
         final_element=VALVE,
     )
-    chosen = choose_clocks([[structure]])[0]
-    assert isinstance(chosen, Clock)
+    found = choose_clocks([[structure]])[0]
+    assert not isinstance(found, Unsuited)
+    chosen = found.common
     assert chosen.step_s > 1.0
     coarse = simulate([structure], standard_scenarios(1))[0]
     fine = simulate(
@@ -161,8 +163,8 @@ def test_a_fast_loop_is_stepped_within_its_interval() -> None:
         [LoopStage(Controller(0.9, 4.0, interval_s=2.0), Process(1.0, (4.0,), 1.0))], final_element=VALVE
     )
     clock = choose_clocks([[structure]])[0]
-    assert isinstance(clock, Clock)
-    assert clock.step_s < 2.0
+    assert not isinstance(clock, Unsuited)
+    assert clock.common.step_s < 2.0
     response = simulate([structure], standard_scenarios(1))[0][0]
     assert response.metrics.executed_interval_s == (2.0,)
 
@@ -224,3 +226,55 @@ def test_a_group_that_cannot_be_simulated_leaves_the_others() -> None:
 def test_what_cannot_be_simulated_is_refused(build: object, said: str) -> None:
     with pytest.raises(ValueError, match=said):
         build()  # type: ignore[operator]
+
+
+def test_figures_read_on_the_way_are_those_of_the_signals() -> None:
+    """Loops of every kind, limited, loose and slow to settle, run together and one by one."""
+    open_far = FinalElement(start_pct=85.0)
+    loops = [
+        (Controller(0.9, 4.0, interval_s=1.0), Process(1.0, (4.0,), 2.3), VALVE),
+        (Controller(4.0, 30.0, 3.0, interval_s=2.0), Process(0.9, (60.0, 8.0), 5.0), FinalElement(20.0, 2.0)),
+        (Controller(-3.0, 90.0, interval_s=1.0), Process(-0.02, (), 6.0, integrating=True), open_far),
+        (Controller(2.2, 20.0, interval_s=0.5), Process(1.0, (9.0, 3.0), 1.0, (2.0,)), FinalElement(4.0, 0.0, 1.5)),
+    ]
+    structures = [
+        cascade_structure([LoopStage(controller, process)], final_element=valve)
+        for controller, process, valve in loops
+    ]
+    scenarios = [*standard_scenarios(1), Scenario("both", -7.0, (Disturbance(0, 4.0), Disturbance(0, 3.0)))]
+    together = simulate_metrics([([structure], scenarios) for structure in structures])
+    for structure, found in zip(structures, together, strict=True):
+        assert not isinstance(found, Unsuited)
+        for response, metrics in zip(simulate([structure], scenarios)[0], found[0], strict=True):
+            one = response.metrics
+            # By blocks a valve that moves slowly is taken to be in time, late by less than a hundredth of a step.
+            assert metrics.iae_pct_s == pytest.approx(one.iae_pct_s, rel=1e-4)
+            assert metrics.peak_pct == pytest.approx(one.peak_pct, rel=1e-4)
+            assert metrics.time_to_peak_s == pytest.approx(one.time_to_peak_s, abs=one.step_s)
+            assert metrics.settling_s == pytest.approx(one.settling_s, abs=one.step_s)
+            assert metrics.overshoot_pct == pytest.approx(one.overshoot_pct, rel=1e-3, abs=1e-3)
+            assert metrics.valve_travel_pct == pytest.approx(one.valve_travel_pct, rel=1e-3)
+            assert metrics.reversals == one.reversals
+            assert (metrics.horizon_s, metrics.step_s) == (one.horizon_s, one.step_s)
+
+
+def test_resolution_is_a_staircase() -> None:
+    """A signal that ramps by 0.3 % a scan moves a valve with a resolution of 1 % at every fourth scan."""
+    # Integral action alone ramps on a measurement that has stuck: the process is too slow to be seen.
+    stage = LoopStage(Controller(1e-6, 1e-6, interval_s=1.0), Process(1.0, (1e9,)))
+    structure = cascade_structure([stage], final_element=FinalElement(resolution_pct=1.0))
+    response = simulate([structure], [Scenario("sp", setpoint_step_pct=0.3)], clock=Clock(1.0, 11))[0][0]
+    assert response.output_pct[0] is not None
+    # Signal less start: 0.3, 0.6, 0.9, 1.2 moves; then 1.5, 1.8, 2.1, 2.4 (1.2 since) moves; then 3.6.
+    np.testing.assert_allclose(response.output_pct[0] - 50.0, 0.3 * np.arange(1, 13), atol=1e-6)
+    expected = [0.0, 0.0, 0.0, 1.2, 1.2, 1.2, 1.2, 2.4, 2.4, 2.4, 2.4, 3.6]
+    np.testing.assert_allclose(response.travel_pct - 50.0, expected, atol=1e-6)
+
+
+def test_backlash_follows_what_the_resolution_has_let_through() -> None:
+    stage = LoopStage(Controller(1e-6, 1e-6, interval_s=1.0), Process(1.0, (1e9,)))
+    valve = FinalElement(backlash_pct=0.8, resolution_pct=1.0)
+    structure = cascade_structure([stage], final_element=valve)
+    response = simulate([structure], [Scenario("sp", setpoint_step_pct=0.3)], clock=Clock(1.0, 7))[0][0]
+    # Half of the backlash, from its middle, is lost of each level that the staircase reaches: 1.2 and 2.4.
+    np.testing.assert_allclose(response.travel_pct - 50.0, [0.0] * 3 + [0.8] * 4 + [2.0], atol=1e-6)

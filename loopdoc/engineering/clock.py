@@ -11,7 +11,8 @@ from loopdoc.engineering.structure import ControlStructure
 
 # Above this many steps the interval is widened as far as the loops do not notice.
 _STEPS_WANTED = 3000
-_STEPS_MOST = 40_000
+_STEPS_MOST = 40_960
+_STEPS_LEAST = 512
 # What is not stable need not be watched for long.
 _STEPS_UNSTABLE = 4096
 # A widened interval may turn the phase at any crossover by this much [rad], about one degree.
@@ -32,6 +33,23 @@ class Clock:
     """Time step [s]."""
     steps: int
     """Number of steps."""
+
+
+@dataclass(frozen=True, slots=True)
+class GroupClock:
+    """Clock of structures that are compared."""
+
+    common: Clock
+    """On which all of them can run together."""
+    steps_at_once: tuple[int, ...]
+    """Per structure, how many of these steps it can take at once where it runs by itself."""
+
+    def of(self, structure: int) -> Clock:
+        """Return the clock of one structure where it runs by itself, at least as long as the common one."""
+        at_once = self.steps_at_once[structure]
+        if at_once == 1:
+            return self.common
+        return Clock(self.common.step_s * at_once, _round_up(self.common.steps / at_once))
 
 
 @dataclass(frozen=True, slots=True)
@@ -78,9 +96,13 @@ def _common_interval_s(intervals_s: Sequence[float]) -> float:
 
 
 def _round_up(steps: float) -> int:
-    """A number of steps from a coarse series of multiples of eight, so that many runs share theirs."""
-    series = 2.0 ** (math.ceil(4.0 * math.log2(max(steps, 64.0) / HORIZON_PARTS)) / 4.0)
-    return int(HORIZON_PARTS * math.ceil(min(series, _STEPS_MOST / HORIZON_PARTS)))
+    """A number of steps from a coarse series, so that many runs share theirs and can be looked at together.
+
+    The parts of a horizon are 8 to 15 times a power of two.
+    """
+    part = min(max(steps, _STEPS_LEAST), _STEPS_MOST) / HORIZON_PARTS
+    power = 1 << (math.floor(math.log2(part)) - 3)
+    return HORIZON_PARTS * power * math.ceil(part / power)
 
 
 def _multiple(base_s: float, loops: Sequence[tuple[float, float]], *, wanted: int) -> int:
@@ -122,8 +144,9 @@ def _choose_clock(horizon_s: float, loops: Sequence[tuple[float, float]]) -> Clo
 
 def _choose_for(
     group: Sequence[ControlStructure], margins: Iterator[tuple[Margins, ...]]
-) -> Clock | Unsuited:
+) -> GroupClock | Unsuited:
     horizon_s, open_loop_s, stable, loops = 0.0, 0.0, True, []
+    alone: list[tuple[float, float] | None] = []
     for structure in group:
         chain = _controlled_chain(structure)
         found = next(margins) if chain else ()
@@ -137,26 +160,33 @@ def _choose_for(
                 open_loop = math.fsum(stage.process.lags_s) + stage.process.dead_time_s
                 speed = 1.0 / open_loop if open_loop > 0.0 else 0.0
             loops.append((stage.controller.interval_s, speed))
+        alone.append(loops[-1] if len(chain) == 1 else None)
     if horizon_s <= 0.0:
         return Unsuited("nothing in this structure takes time: there is no response to simulate")
     clock = _choose_clock(horizon_s, loops)
     if not stable:
-        return Clock(clock.step_s, min(clock.steps, _STEPS_UNSTABLE))
+        return GroupClock(Clock(clock.step_s, min(clock.steps, _STEPS_UNSTABLE)), (1,) * len(group))
     if clock.step_s * clock.steps < min(horizon_s, 2.0 * open_loop_s):
-        slowest = f"{open_loop_s / 3600.0:.3g} h" if open_loop_s >= 7200.0 else f"{open_loop_s:.3g} s"
         return Unsuited(
-            f"its slowest part takes {slowest} and its fastest loop needs steps of {clock.step_s:.3g} s: "
+            f"its slowest part takes {open_loop_s:.3g} s and its fastest loop needs steps of {clock.step_s:.3g} s: "
             "they are too far apart to be simulated together"
         )
-    return clock
+    return GroupClock(clock, tuple(1 if loop is None else _steps_of_its_own(clock, *loop) for loop in alone))
 
 
-def choose_clocks(groups: Sequence[Sequence[ControlStructure]]) -> tuple[Clock | Unsuited, ...]:
+def _steps_of_its_own(clock: Clock, interval_s: float, speed_rad_per_s: float) -> int:
+    """Steps that one loop by itself, given its interval [s] and speed [rad/s], can take at once: to its next scan."""
+    steps = round(interval_s / clock.step_s)
+    enough = steps * clock.step_s * speed_rad_per_s <= _BETWEEN_SCANS and clock.steps / max(steps, 1) >= _STEPS_LEAST
+    return steps if steps > 1 and enough else 1
+
+
+def choose_clocks(groups: Sequence[Sequence[ControlStructure]]) -> tuple[GroupClock | Unsuited, ...]:
     """Return one clock per group of structures that are to be compared, or why there is none.
 
     The step is the common execution interval; shorter where the loops are too fast for it to show; longer
     where thousands of steps would be needed and no crossover loses a degree of phase by it. The horizon
-    is several times the slowest lag or closed-loop mode, but at most 40,000 steps.
+    is several times the slowest lag or closed-loop mode, but at most 40,960 steps.
     """
     chains: list[list[LoopStage]] = []
     refused: dict[int, Unsuited] = {}
@@ -174,6 +204,8 @@ def choose_clocks(groups: Sequence[Sequence[ControlStructure]]) -> tuple[Clock |
     )
 
 
-def lasting(clock: Clock, least_s: float) -> Clock:
+def lasting(clock: GroupClock, least_s: float) -> GroupClock:
     """Return a clock of the same step that lasts at least so long, within the most steps there may be."""
-    return Clock(clock.step_s, max(clock.steps, _round_up(least_s / clock.step_s)))
+    common = clock.common
+    steps = max(common.steps, _round_up(least_s / common.step_s))
+    return GroupClock(Clock(common.step_s, steps), clock.steps_at_once)

@@ -13,13 +13,13 @@ from dataclasses import dataclass
 from functools import reduce
 
 from loopdoc.engineering.attenuation import Rival, error_ratios
-from loopdoc.engineering.clock import Unsuited, choose_clocks
+from loopdoc.engineering.clock import Unsuited
 from loopdoc.engineering.dynamics import ChainDynamics
 from loopdoc.engineering.frequency import LoopStage
 from loopdoc.engineering.pairing import normal_value
 from loopdoc.engineering.pid import Controller
 from loopdoc.engineering.process import Process, in_series
-from loopdoc.engineering.simulation import Response, simulate
+from loopdoc.engineering.simulation import Response, simulate_groups
 from loopdoc.engineering.stages import Chain, Lacking, Level, percent_of_range
 from loopdoc.engineering.structure import (
     Disturbance,
@@ -32,6 +32,7 @@ from loopdoc.engineering.structure import (
 from loopdoc.engineering.tuning import SensitivityTuning, simc_at_sensitivities
 from loopdoc.engineering.upsets import Step, declared_step
 from loopdoc.register.model import known, seconds
+from loopdoc.register.quantity import Quantity
 
 UPSET_PCT = 10.0
 """Size of the standard upsets: a tenth of the span of the measurement that they move [%]."""
@@ -75,33 +76,56 @@ class NotSimulated:
 
 def compare(dynamics: ChainDynamics) -> Comparison | NotSimulated:
     """Simulate one chain, and for a cascade the single loop in its place."""
-    chain = dynamics.chain
-    unstable = [
-        level.loop.tag for level, margins in zip(chain.levels, dynamics.margins, strict=True) if not margins.stable
-    ]
-    if unstable:
-        return NotSimulated(f"{unstable[0]} as tuned is not stable")
-    start_pct = tuple(_start_pct(level) for level in chain.levels)
-    structure = cascade_structure(chain.stages, final_element=_final_element(chain), start_pct=start_pct)
-    structures = [structure]
-    single = _single_loops([dynamics])[0] if len(chain.levels) > 1 else None
-    if single is not None:
-        structures.append(single_loop_structure(structure, _single_controller(chain, single)))
-    clock = choose_clocks([structures])[0]
-    if isinstance(clock, Unsuited):
-        return NotSimulated(clock.reason)
-    scenarios = (*standard_scenarios(len(chain.levels), size_pct=UPSET_PCT), *declared_scenarios(chain))
-    tuned, *others = simulate(structures, scenarios)
-    alone = others[0] if others else (None,) * len(scenarios)
-    return Comparison(
-        dynamics,
-        single,
-        tuple(
-            ScenarioResponses(scenario, ours, theirs)
-            for scenario, ours, theirs in zip(scenarios, tuned, alone, strict=True)
-        ),
-        start_pct,
-    )
+    return compare_all([dynamics])[0]
+
+
+def compare_all(chains: Sequence[ChainDynamics]) -> tuple[Comparison | NotSimulated, ...]:
+    """Simulate many chains together, and for each cascade the single loop in its place; see `compare`."""
+    found: dict[int, Comparison | NotSimulated] = {}
+    stable = {}
+    for position, dynamics in enumerate(chains):
+        levels = zip(dynamics.chain.levels, dynamics.margins, strict=True)
+        unstable = next((level.loop.tag for level, margins in levels if not margins.stable), None)
+        led = next((level.loop.tag for level in dynamics.chain.levels if level.stage.lead_lags), None)
+        if unstable is not None:
+            found[position] = NotSimulated(f"{unstable} as tuned is not stable")
+        elif led is not None:
+            reason = f"a lead-lag stands between {led} and what it commands, which is not simulated"
+            found[position] = NotSimulated(reason)
+        else:
+            stable[position] = dynamics
+    singles = dict(zip(stable, _single_loops(list(stable.values())), strict=True))
+    groups = []
+    for position, dynamics in stable.items():
+        chain, single = dynamics.chain, singles[position]
+        structure = cascade_structure(
+            chain.stages,
+            final_element=_final_element(chain),
+            start_pct=tuple(_start_pct(level) for level in chain.levels),
+        )
+        structures = [structure]
+        if single is not None:
+            structures.append(single_loop_structure(structure, _single_controller(chain, single)))
+        standard = standard_scenarios(len(chain.levels), size_pct=UPSET_PCT)
+        groups.append((structures, (*standard, *declared_scenarios(chain))))
+    for (position, dynamics), (structures, scenarios), responses in zip(
+        stable.items(), groups, simulate_groups(groups), strict=True
+    ):
+        if isinstance(responses, Unsuited):
+            found[position] = NotSimulated(responses.reason)
+            continue
+        tuned, *others = responses
+        alone = others[0] if others else (None,) * len(scenarios)
+        found[position] = Comparison(
+            dynamics,
+            singles[position],
+            tuple(
+                ScenarioResponses(scenario, ours, theirs)
+                for scenario, ours, theirs in zip(scenarios, tuned, alone, strict=True)
+            ),
+            structures[0].start_pct,
+        )
+    return tuple(found[position] for position in range(len(chains)))
 
 
 def declared_scenarios(chain: Chain) -> tuple[Scenario, ...]:
@@ -149,13 +173,14 @@ def _joined(chain: Chain) -> Process | None:
 
 
 def _single_loops(cascades: Sequence[ChainDynamics]) -> list[SensitivityTuning | None]:
-    """One loop on all processes in series for each cascade, as robust as its outermost loop."""
+    """One loop on all processes in series for each cascade, as robust as its outermost loop; None for a single loop."""
     found: list[SensitivityTuning | None] = [None] * len(cascades)
     processes = {
         position: process
         for position, dynamics in enumerate(cascades)
         # A loop that adds nothing to any disturbance has no tuning that is its equal.
-        if (process := _joined(dynamics.chain)) is not None and 1.0 < dynamics.margins[-1].max_sensitivity < math.inf
+        if len(dynamics.margins) > 1
+        and (process := _joined(dynamics.chain)) is not None and 1.0 < dynamics.margins[-1].max_sensitivity < math.inf
     }
     leads = [cascades[position].chain.stages[-1].controller for position in processes]
     tuned = simc_at_sensitivities(
@@ -183,21 +208,27 @@ def _single_controller(chain: Chain, single: SensitivityTuning) -> Controller:
 
 
 def _final_element(chain: Chain) -> FinalElement:
-    """The final element with stroke time and backlash, in the middle of what the innermost controller may ask of it.
+    """The final element as written, in the middle of what the innermost controller may ask of it.
 
     The register does not say how far a valve is open in normal operation, and the process models are linear: what
     the start decides is only how far the limits are away.
     """
-    backlash = known(chain.final_element.backlash)
+    element = chain.final_element
     inner = chain.stages[0].controller
     # Of a split range's branch the limits lie beyond the travel: the other branch is moved there.
     middle = (max(0.0, inner.output_low_pct) + min(100.0, inner.output_high_pct)) / 2.0
-    # `tuning-invalid` tells of a backlash that leaves no travel.
     return FinalElement(
-        stroke_time_s=seconds(chain.final_element.stroke_time),
-        backlash_pct=min(99.9, max(0.0, backlash.value)) if backlash and backlash.unit.symbol == "%" else 0.0,
+        stroke_time_s=seconds(element.stroke_time),
+        backlash_pct=_share_of_travel(known(element.backlash)),
+        resolution_pct=_share_of_travel(known(element.resolution)),
         start_pct=min(100.0, max(0.0, middle)),
     )
+
+
+def _share_of_travel(written: Quantity | None) -> float:
+    """A share of the travel [%], none where it is not given as one."""
+    # `tuning-invalid` tells of one that leaves no travel.
+    return min(99.9, max(0.0, written.value)) if written and written.unit.symbol == "%" else 0.0
 
 
 def _start_pct(level: Level) -> float:

@@ -6,11 +6,15 @@ unit of these; its rows are the signals. A block in which a limit would act is l
 """
 
 import math
+from collections.abc import Sequence
+from dataclasses import replace
 
 import numpy as np
 
+from loopdoc.engineering.disturbance_signals import KnownSignals
+from loopdoc.engineering.plant_arrays import still
 from loopdoc.engineering.process import FloatArray
-from loopdoc.engineering.scanning import Engine, FinalElementArrays, Traces
+from loopdoc.engineering.scanning import ControllerArrays, Engine, Traces
 
 # Steps of a block: long enough to win over single steps, short enough for a small matrix.
 _STEPS = 64
@@ -20,16 +24,41 @@ _BLOCKS_WORTH = 6
 _MEMORY_MOST = 1000
 
 
+def _intervals(engine: Engine) -> list[int] | None:
+    """Steps between scans of each controller; None where the columns are scanned unlike each other."""
+    every = [arrays.every for _, arrays in engine.loops.controlled]
+    alike = [one for one in every if isinstance(one, int)]
+    return alike if len(alike) == len(every) else None
+
+
+def _unlimited(arrays: ControllerArrays, columns: int) -> ControllerArrays:
+    """The controller of the first column, without its limits, in so many columns."""
+    below, above = np.full(columns, -math.inf), np.full(columns, math.inf)
+    return replace(
+        arrays.take(np.zeros(columns, dtype=np.intp)),
+        output_low_pct=below,
+        output_high_pct=above,
+        setpoint_low_pct=below,
+        setpoint_high_pct=above,
+    )
+
+
 class LinearBlocks:
     """Advances an engine, all columns of which are the same structure on the same clock, by blocks."""
 
-    def __init__(self, engine: Engine) -> None:
+    def __init__(self, engine: Engine, every: Sequence[int]) -> None:
+        """``every`` holds the steps between scans of each controller, innermost first."""
         self._engine = engine
-        # A block must find the controllers where it was made: at a step at which all are due.
-        together = math.lcm(*(arrays.every for _, arrays in engine.loops.controlled))
-        self._together = together
+        # A block must find the controllers where it was made: at a step at which all that act within it are due.
+        # Those that are scanned more seldom must not be due: what they ask for is held.
+        self._seldom = [one for one in every if one > _STEPS]
+        self._together = together = math.lcm(*(one for one in every if one <= _STEPS))
         self.steps = together * math.ceil(_STEPS / together)
-        self._disturbed = [level for level, signal in enumerate(engine.disturbances) if signal is not None]
+        self._disturbed = {
+            level: signals.rows
+            for level, signals in enumerate(engine.disturbances)
+            if isinstance(signals, KnownSignals)
+        }
         memory = len(self._memory(engine))
         columns = memory + 1 + self.steps * len(self._disturbed)
         twin = self._unlimited_twin(columns, memory)
@@ -45,31 +74,30 @@ class LinearBlocks:
         engine = self._engine
         setpoint = np.zeros(columns)
         setpoint[memory] = 1.0
-        disturbances: list[FloatArray | None] = [None] * len(engine.plants)
+        disturbances: list[KnownSignals | None] = [None] * len(engine.plants)
         for position, level in enumerate(self._disturbed):
             unit = np.zeros((self.steps + 1, columns))
             first = memory + 1 + position * self.steps
             unit[1:, first : first + self.steps] = np.eye(self.steps)
-            disturbances[level] = unit
+            disturbances[level] = KnownSignals(unit)
         controllers = dict(engine.loops.controlled)
         return Engine(
-            plants=[plant.repeated(columns) for plant in engine.plants],
+            plants=[plant.take(np.zeros(columns, dtype=np.intp)) for plant in engine.plants],
             controllers=[
-                controllers[level].unlimited(columns) if level in controllers else None
+                self._undisturbed(controllers[level], columns) if level in controllers else None
                 for level in range(len(engine.plants))
             ],
-            final_element=FinalElementArrays(
-                step_pct=np.zeros(columns),
-                travel_per_step_pct=np.full(columns, math.inf),
-                half_backlash_pct=np.zeros(columns),
-                low_pct=np.full(columns, -math.inf),
-                high_pct=np.full(columns, math.inf),
-            ),
+            final_element=still(columns),
             setpoint_step_pct=setpoint,
-            disturbances_pct=disturbances,
-            steps=self.steps,
+            disturbances=disturbances,
+            room=self.steps,
             keep_signals=True,
         )
+
+    def _undisturbed(self, arrays: ControllerArrays, columns: int) -> ControllerArrays:
+        """The controller without limits; one that is scanned seldom holds its output throughout a block."""
+        unlimited = _unlimited(arrays, columns)
+        return replace(unlimited, every=self.steps + 1) if unlimited.every in self._seldom else unlimited
 
     @staticmethod
     def _short_memory(engine: Engine) -> FloatArray:
@@ -84,21 +112,23 @@ class LinearBlocks:
     def _set_short_memory(engine: Engine, rows: FloatArray) -> None:
         values = iter(rows)
         for plant in engine.plants:
-            plant.state = [next(values) for _ in plant.state]
+            for state in plant.state:
+                np.copyto(state, next(values))
+            plant.forget_rows()
         for loop, memory in enumerate(engine.loops.memory):
-            memory.integral, memory.filtered = next(values), next(values)
-            memory.derivative, memory.derivative_input = next(values), next(values)
-            engine.loops.setpoint[loop], engine.loops.output[loop] = next(values), next(values)
-            engine.loops.computed[loop] = engine.loops.output[loop]
+            for kept in (memory.integral, memory.filtered, memory.derivative, memory.derivative_input):
+                np.copyto(kept, next(values))
+            np.copyto(engine.loops.setpoint[loop], next(values))
+            np.copyto(engine.loops.output[loop], next(values))
+            np.copyto(memory.output, engine.loops.output[loop])
 
     @staticmethod
     def _windows(engine: Engine) -> list[FloatArray]:
         """The past inputs of each process that its dead time still holds, as views."""
-        row = engine.pad + engine.step
-        sources = (engine.travel, *engine.measured[:-1])
+        sources = ((engine.travel, engine.travel_pad), *zip(engine.measured, engine.pads, strict=True))
         return [
-            source[row - int(plant.whole[0]) - 1 : row + 1]
-            for source, plant in zip(sources, engine.plants, strict=True)
+            source[pad + engine.step - int(plant.whole[0]) - 1 : pad + engine.step + 1]
+            for (source, pad), plant in zip(sources, engine.plants, strict=False)
         ]
 
     def _memory(self, engine: Engine) -> FloatArray:
@@ -111,13 +141,22 @@ class LinearBlocks:
             window[:] = rows[short : short + len(window)]
             short += len(window)
 
+    def steps_until_worth(self) -> int:
+        """Single steps to take before the next block is tried, where one could not be advanced."""
+        step = self._engine.step
+        due = [every - step % every for every in self._seldom if step % every + self.steps >= every]
+        # A controller that is scanned seldom must have been due; what is limited now will be so for a few steps.
+        return max(due, default=16)
+
     def advance(self) -> bool:
         """Advance by a block, or leave all as it is and return False where something would not be linear."""
         engine, steps = self._engine, self.steps
-        if engine.step % self._together or any(engine.loops.limited):
+        if engine.step % self._together or engine.loops.limited:
             return False
-        now, row = engine.step, engine.pad + engine.step
-        upsets = [signal[now + 1 : now + steps + 1] for signal in engine.disturbances if signal is not None]
+        if any(engine.step % every + steps >= every for every in self._seldom):
+            return False
+        now = engine.step
+        upsets = [rows[now + 1 : now + steps + 1] for rows in self._disturbed.values()]
         found = self._matrix @ np.concatenate([self._memory(engine), engine.setpoint[None], *upsets])
         levels, loops = len(engine.measured), len(engine.loops.controlled)
         count = levels + 2 * loops
@@ -133,9 +172,9 @@ class LinearBlocks:
                 return False
         if not engine.element.follows(outputs[0]):
             return False
-        for history, values in zip(engine.measured, measured, strict=True):
-            history[row + 1 : row + steps + 1] = values
-        engine.travel[row + 1 : row + steps + 1] = outputs[0]
+        for history, pad, values in zip(engine.measured, engine.pads, measured, strict=True):
+            history[pad + now + 1 : pad + now + steps + 1] = values
+        engine.travel[engine.travel_pad + now + 1 : engine.travel_pad + now + steps + 1] = outputs[0]
         for kept, values in zip(engine.kept_setpoint, setpoints, strict=False):
             kept[now + 1 : now + steps + 1] = values
         for kept, values in zip(engine.kept_output, outputs, strict=False):
@@ -151,15 +190,17 @@ class Run:
 
     def __init__(self, engine: Engine, *, one_structure: bool) -> None:
         self._engine = engine
-        may = (
-            one_structure
-            and bool(engine.loops.controlled)
+        every = _intervals(engine) if one_structure and engine.loops.controlled else None
+        self._blocks = (
+            LinearBlocks(engine, every)
+            if every is not None
+            and math.lcm(*(one for one in every if one <= _STEPS)) <= 4 * _STEPS
+            and all(one <= _STEPS or one >= 2 * _STEPS for one in every)
             and not engine.element.loose
-            and engine.steps >= _BLOCKS_WORTH * _STEPS
+            and engine.room >= _BLOCKS_WORTH * _STEPS
             and sum(int(plant.whole[0]) for plant in engine.plants) <= _MEMORY_MOST
-            and math.lcm(*(arrays.every for _, arrays in engine.loops.controlled)) <= 4 * _STEPS
+            else None
         )
-        self._blocks = LinearBlocks(engine) if may else None
 
     def to(self, step: int) -> Traces:
         """Advance the engine to a step, if it is not there yet, and return the signals up to it."""
@@ -169,8 +210,7 @@ class Run:
             if by_steps == 0 and blocks is not None and step - engine.step >= blocks.steps:
                 if blocks.advance():
                     continue
-                # What is not linear now will hardly be so in the next few steps.
-                by_steps = 16
+                by_steps = blocks.steps_until_worth()
             engine.advance()
             by_steps = max(0, by_steps - 1)
         return engine.traces(step)

@@ -12,6 +12,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 FloatArray = NDArray[np.float64]
+BoolArray = NDArray[np.bool_]
+IntArray = NDArray[np.intp]
 
 
 @dataclass(frozen=True, slots=True)
@@ -287,28 +289,24 @@ def scan_coefficients(controllers: Sequence[Controller], interval_s: FloatArray)
     )
 
 
-def repeated_coefficients(coefficients: ScanCoefficients, columns: int) -> ScanCoefficients:
-    """Return the coefficients of the first controller in so many columns."""
-
-    def repeat(values: FloatArray) -> FloatArray:
-        return np.full(columns, values[0])
-
+def taken_coefficients(coefficients: ScanCoefficients, columns: IntArray) -> ScanCoefficients:
+    """Return the coefficients of the controllers in the given columns."""
     return replace(
         coefficients,
-        gain=repeat(coefficients.gain),
-        setpoint_gain=repeat(coefficients.setpoint_gain),
-        integral_gain=repeat(coefficients.integral_gain),
-        tracking=repeat(coefficients.tracking),
-        derivative_decay=repeat(coefficients.derivative_decay),
-        derivative_gain=repeat(coefficients.derivative_gain),
-        derivative_setpoint_weight=repeat(coefficients.derivative_setpoint_weight),
-        filter_gain=repeat(coefficients.filter_gain),
+        gain=coefficients.gain[columns],
+        setpoint_gain=coefficients.setpoint_gain[columns],
+        integral_gain=coefficients.integral_gain[columns],
+        tracking=coefficients.tracking[columns],
+        derivative_decay=coefficients.derivative_decay[columns],
+        derivative_gain=coefficients.derivative_gain[columns],
+        derivative_setpoint_weight=coefficients.derivative_setpoint_weight[columns],
+        filter_gain=coefficients.filter_gain[columns],
     )
 
 
 @dataclass(slots=True, eq=False)
 class ScanState:
-    """Memory of n controllers between scans; every array is (n,) [%]."""
+    """Memory of n controllers between scans; every array is (n,) and is overwritten by the next scan."""
 
     integral: FloatArray
     """Integral part of the output [%]."""
@@ -318,39 +316,69 @@ class ScanState:
     """Derivative part of the output [%]."""
     derivative_input: FloatArray
     """c times setpoint less filtered measurement, at the last scan [%]."""
+    output: FloatArray
+    """Output of the last scan before its limits [%]."""
+    scratch: tuple[FloatArray, FloatArray]
+    """Room to work in; without meaning between scans."""
+
+
+def at_rest(controllers: int) -> ScanState:
+    """Return the memory of so many controllers that have had nothing to do."""
+    return ScanState(
+        integral=np.zeros(controllers),
+        filtered=np.zeros(controllers),
+        derivative=np.zeros(controllers),
+        derivative_input=np.zeros(controllers),
+        output=np.zeros(controllers),
+        scratch=(np.empty(controllers), np.empty(controllers)),
+    )
 
 
 def scan(
-    coefficients: ScanCoefficients, state: ScanState, setpoint: FloatArray, measurement: FloatArray
+    coefficients: ScanCoefficients,
+    state: ScanState,
+    setpoint: FloatArray,
+    measurement: FloatArray,
+    *,
+    due: BoolArray | bool = True,
 ) -> FloatArray:
-    """Advance the memory by one scan and return the (n,) output [%] before its limits.
+    """Advance the memory by one scan and return the (n,) output [%] before its limits: ``state.output``.
 
-    The caller limits the output, sees what became of it downstream, and calls `track` with that.
+    Controllers that are not due keep their memory and output. The caller limits the output, sees what
+    became of it downstream, and calls `track` with that.
     """
+    one, two = state.scratch
     if coefficients.has_filter:
-        state.filtered = state.filtered + coefficients.filter_gain * (measurement - state.filtered)
+        np.subtract(measurement, state.filtered, out=one)
+        np.multiply(one, coefficients.filter_gain, out=one)
+        np.add(state.filtered, one, out=state.filtered, where=due)
         measurement = state.filtered
-    error = setpoint - measurement
-    state.integral = state.integral + coefficients.integral_gain * error
+    np.subtract(setpoint, measurement, out=one)
+    np.multiply(one, coefficients.integral_gain, out=two)
+    np.add(state.integral, two, out=state.integral, where=due)
     if coefficients.unit_weight:
-        output = coefficients.gain * error + state.integral
+        np.multiply(one, coefficients.gain, out=one)
     else:
-        output = coefficients.setpoint_gain * setpoint - coefficients.gain * measurement + state.integral
+        np.multiply(setpoint, coefficients.setpoint_gain, out=one)
+        np.multiply(measurement, coefficients.gain, out=two)
+        np.subtract(one, two, out=one)
     if coefficients.has_rate:
-        derivative_input = coefficients.derivative_setpoint_weight * setpoint - measurement
-        state.derivative = coefficients.derivative_decay * state.derivative + coefficients.derivative_gain * (
-            derivative_input - state.derivative_input
-        )
-        state.derivative_input = derivative_input
-        output = output + state.derivative
-    return output
+        rate_input = coefficients.derivative_setpoint_weight * setpoint - measurement
+        np.subtract(rate_input, state.derivative_input, out=two)
+        np.multiply(two, coefficients.derivative_gain, out=two)
+        np.multiply(state.derivative, coefficients.derivative_decay, out=state.derivative, where=due)
+        np.add(state.derivative, two, out=state.derivative, where=due)
+        np.copyto(state.derivative_input, rate_input, where=due)
+        np.add(one, state.derivative, out=one)
+    return np.add(one, state.integral, out=state.output, where=due)
 
 
-def track(coefficients: ScanCoefficients, state: ScanState, computed: FloatArray, actual: FloatArray) -> None:
-    """Draw the integral toward what really happened, so that it does not wind up.
+def track(
+    coefficients: ScanCoefficients, state: ScanState, actual: FloatArray, columns: IntArray | slice = slice(None)
+) -> None:
+    """Draw the integral of some controllers toward what really happened, so that it does not wind up.
 
-    ``computed`` is what `scan` returned, ``actual`` what the downstream took: the limited output, or,
-    while the secondary is at a limit, the secondary's measurement. With a tracking time of Ti this
-    is external reset.
+    ``actual`` is what the downstream took of the last output: the limited output, or, while the secondary is
+    at a limit, the secondary's measurement. With a tracking time of Ti this is external reset.
     """
-    state.integral = state.integral + coefficients.tracking * (actual - computed)
+    state.integral[columns] += coefficients.tracking[columns] * (actual - state.output[columns])

@@ -48,6 +48,7 @@ class ResponseMetrics:
 
 def _reversals(travel_pct: FloatArray) -> list[int]:
     """Per column, turns of a (k, n) travel that went back by at least the counted amount."""
+    travel_pct = np.concatenate([np.zeros((1, travel_pct.shape[1])), travel_pct])  # a jump at time zero counts
     change = np.diff(travel_pct, axis=0)
     # Once the travel stays this near its end only rounding turns it.
     settled = np.abs(travel_pct - travel_pct[-1]) < 1e-3 * REVERSAL_PCT

@@ -2,46 +2,26 @@
 
 All signals are deviations from the start, in percent. Within a scan the measurements are read, the
 controllers act from the outermost inward, the final element moves, and the processes advance. The
-output of a controller is held until its next scan; the processes are solved exactly for a held input
-(the final element) or for one that is straight between steps (a secondary measurement).
+output of a controller is held until its next scan.
 """
 
-import copy
-import math
 from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
-from loopdoc.engineering.pid import (
-    Controller,
-    ScanCoefficients,
-    ScanState,
-    repeated_coefficients,
-    scan,
-    scan_coefficients,
-    track,
-)
-from loopdoc.engineering.process import FloatArray, Process, state_space, transition
+from loopdoc.engineering.disturbance_signals import DisturbanceSignals, KnownSignals
+from loopdoc.engineering.pid import Controller, ScanCoefficients, at_rest, scan, scan_coefficients, track
+from loopdoc.engineering.pid import taken_coefficients as taken
+from loopdoc.engineering.plant_arrays import FinalElementArrays, MovingElement, ProcessArrays
+from loopdoc.engineering.process import FloatArray
 
 IntArray = NDArray[np.intp]
+BoolArray = NDArray[np.bool_]
 
-
-@dataclass(frozen=True, slots=True, eq=False)
-class FinalElementArrays:
-    """Final elements of n columns; every array is (n,), deviations from the start."""
-
-    step_pct: FloatArray
-    """Step of the final element where no controller moves it [%]."""
-    travel_per_step_pct: FloatArray
-    """Largest travel within a time step [%]; infinite where the stroke takes no time."""
-    half_backlash_pct: FloatArray
-    """Half of the backlash [%]."""
-    low_pct: FloatArray
-    """Fully closed [%]."""
-    high_pct: FloatArray
-    """Fully open [%]."""
+# Rows of signals before the start: derivatives and reversals look back at them.
+_LEAST_PAD = 2
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -49,8 +29,8 @@ class ControllerArrays:
     """Controllers of one level of n columns; every array is (n,), deviations from the start."""
 
     coefficients: ScanCoefficients
-    every: int
-    """Time steps between scans."""
+    every: int | IntArray
+    """Time steps between scans: one number where all columns have the same."""
     output_low_pct: FloatArray
     """Lower output limit [%]."""
     output_high_pct: FloatArray
@@ -59,203 +39,41 @@ class ControllerArrays:
     """Lower setpoint limit [%]."""
     setpoint_high_pct: FloatArray
     """Upper setpoint limit [%]."""
-    reverse: NDArray[np.bool_]
+    reverse: BoolArray
     """True where the output falls as the measurement rises."""
 
-    def unlimited(self, columns: int) -> "ControllerArrays":
-        """The controller of the first column, without its limits, in so many columns."""
+    def take(self, columns: IntArray) -> "ControllerArrays":
+        """Return the controllers of some columns; a column may be taken several times."""
         return ControllerArrays(
-            coefficients=repeated_coefficients(self.coefficients, columns),
-            every=self.every,
-            output_low_pct=np.full(columns, -math.inf),
-            output_high_pct=np.full(columns, math.inf),
-            setpoint_low_pct=np.full(columns, -math.inf),
-            setpoint_high_pct=np.full(columns, math.inf),
-            reverse=np.full(columns, self.reverse[0]),
+            coefficients=taken(self.coefficients, columns),
+            every=self.every if isinstance(self.every, int) else self.every[columns],
+            output_low_pct=self.output_low_pct[columns],
+            output_high_pct=self.output_high_pct[columns],
+            setpoint_low_pct=self.setpoint_low_pct[columns],
+            setpoint_high_pct=self.setpoint_high_pct[columns],
+            reverse=self.reverse[columns],
         )
 
 
 def controller_arrays(
     controllers: Sequence[Controller],
     *,
-    interval_s: FloatArray,
-    every: int,
+    step_s: FloatArray,
+    every: Sequence[int],
     output_start_pct: FloatArray,
     setpoint_start_pct: FloatArray,
 ) -> ControllerArrays:
     """Return the controllers of one level as arrays, their limits taken from the start."""
+    each = np.array(every, dtype=np.intp)
     return ControllerArrays(
-        coefficients=scan_coefficients(controllers, interval_s),
-        every=every,
+        coefficients=scan_coefficients(controllers, step_s * each),
+        every=int(each[0]) if (each == each[0]).all() else each,
         output_low_pct=np.array([c.output_low_pct for c in controllers]) - output_start_pct,
         output_high_pct=np.array([c.output_high_pct for c in controllers]) - output_start_pct,
         setpoint_low_pct=np.array([c.setpoint_low_pct for c in controllers]) - setpoint_start_pct,
         setpoint_high_pct=np.array([c.setpoint_high_pct for c in controllers]) - setpoint_start_pct,
         reverse=np.array([c.gain > 0.0 for c in controllers]),
     )
-
-
-class ProcessArrays:
-    """One process level of n columns: its state, and how the delayed input moves it within a step."""
-
-    def __init__(self, processes: Sequence[Process], step_s: FloatArray, *, held_input: bool) -> None:
-        system = state_space(processes)
-        gain = np.array([process.gain for process in processes])
-        steps = np.array([process.dead_time_s for process in processes]) / step_s
-        # A dead time of a whole number of steps stays whole in spite of the division.
-        whole = np.floor(steps + 1e-9).astype(np.intp)
-        part = np.maximum(steps - whole, 0.0)
-        part[part < 1e-9] = 0.0
-        advance, held, ramp = transition(system, step_s)
-        order = system.b.shape[1]
-        if held_input:
-            late_advance, late, _ = transition(system, (1.0 - part) * step_s)
-            _, early, _ = transition(system, part * step_s)
-            carried = np.einsum("nij,nj->ni", late_advance, early)
-            state_taps = [np.zeros_like(late), late, carried]
-            output_taps = [np.zeros_like(part), system.d, np.zeros_like(part)]
-        else:
-            share = part[:, None]
-            state_taps = [
-                ramp * (1.0 - share),
-                ramp * share + (held - ramp) * (1.0 - share),
-                (held - ramp) * share,
-            ]
-            output_taps = [system.d * (1.0 - part), system.d * part, np.zeros_like(part)]
-        self.order = order
-        self.whole = whole
-        self.state = [np.zeros(len(processes)) for _ in range(order)]
-        self._advance = [[advance[:, i, j].copy() for j in range(i + 1)] for i in range(order)]
-        self._taps = [
-            (
-                tap,
-                [(state_taps[tap][:, i] * gain) for i in range(order)],
-                output_taps[tap] * gain if output_taps[tap].any() else None,
-            )
-            for tap in range(3)
-            if state_taps[tap].any() or output_taps[tap].any()
-        ]
-        self._weights = [system.c[:, i].copy() for i in range(order)]
-        self._plain = order > 0 and bool(
-            np.all(system.c[:, :-1] == 0.0) and np.all(system.c[:, -1] == 1.0) and not system.d.any()
-        )
-        self._same = int(whole[0]) if (whole == whole[0]).all() else None
-        # Where each column finds its delayed input in the rows from the longest dead time on, laid end to end.
-        self._longest = int(whole.max())
-        self._places = (self._longest - whole) * len(processes) + np.arange(len(processes))
-
-    def repeated(self, columns: int) -> "ProcessArrays":
-        """The process of the first column, at rest, in so many columns."""
-
-        def repeat(values: FloatArray) -> FloatArray:
-            return np.full(columns, values[0])
-
-        other = copy.copy(self)
-        other.whole = np.full(columns, self.whole[0])
-        other.state = [np.zeros(columns) for _ in self.state]
-        other._advance = [[repeat(factor) for factor in row] for row in self._advance]
-        other._taps = [
-            (tap, [repeat(share) for share in state], None if through is None else repeat(through))
-            for tap, state, through in self._taps
-        ]
-        other._weights = [repeat(weight) for weight in self._weights]
-        other._same = int(self.whole[0])
-        return other
-
-    def _delayed(self, history: FloatArray, row: int, tap: int) -> FloatArray:
-        if self._same is not None:
-            view: FloatArray = history[row - self._same - tap]
-            return view
-        earliest = history[row - self._longest - tap : row - tap + 1].reshape(-1)
-        gathered: FloatArray = earliest.take(self._places)
-        return gathered
-
-    def feedthrough(self, history: FloatArray, row: int) -> FloatArray:
-        """(n,) output at ``row`` [%] while the state is at rest."""
-        output = np.zeros(len(self.whole))
-        for tap, _, through in self._taps:
-            if through is not None:
-                output = output + through * self._delayed(history, row, tap)
-        return output
-
-    def advance(self, history: FloatArray, row: int) -> FloatArray:
-        """Advance the state by one step, to ``row`` of the input history, and return the (n,) output [%]."""
-        inputs = [(self._delayed(history, row, tap), state, through) for tap, state, through in self._taps]
-        if self._plain and self.order == 1:
-            value = self._advance[0][0] * self.state[0]
-            for delayed, tap, _ in inputs:
-                value += tap[0] * delayed
-            self.state[0] = value
-            return value
-        new = []
-        for i, factors in enumerate(self._advance):
-            value = factors[0] * self.state[0]
-            for j in range(1, i + 1):
-                value = value + factors[j] * self.state[j]
-            for delayed, tap, _ in inputs:
-                value = value + tap[i] * delayed
-            new.append(value)
-        self.state = new
-        if self._plain:
-            return new[-1]
-        output = np.zeros(len(self.whole))
-        for weight, value in zip(self._weights, new, strict=True):
-            output = output + weight * value
-        for delayed, _, through in inputs:
-            if through is not None:
-                output = output + through * delayed
-        return output
-
-
-class MovingElement:
-    """Stroke rate and backlash between the signal and the travel of the final element."""
-
-    def __init__(self, arrays: FinalElementArrays, innermost: ControllerArrays | None) -> None:
-        self._arrays = arrays
-        # Output limits inside the travel leave nothing for its ends to do.
-        self._ends = innermost is None or bool(
-            np.any(innermost.output_low_pct < arrays.low_pct)
-            or np.any(innermost.output_high_pct > arrays.high_pct)
-        )
-        self._rated = bool(np.isfinite(arrays.travel_per_step_pct).any())
-        self.loose = bool((arrays.half_backlash_pct > 0.0).any())
-        self._drive = np.zeros_like(arrays.step_pct)
-        self._travel = np.zeros_like(arrays.step_pct)
-
-    def move(self, signal: FloatArray) -> FloatArray:
-        """Return the (n,) mean travel over a step whose signal is held [%]."""
-        arrays = self._arrays
-        target = signal
-        if self._ends:
-            target = np.minimum(np.maximum(signal, arrays.low_pct), arrays.high_pct)
-        mean = target
-        if self._rated:
-            most = arrays.travel_per_step_pct
-            moved = np.minimum(np.maximum(target - self._drive, -most), most)
-            # The drive runs at full speed and rests once there: mean of a ramp that may end early.
-            mean = self._drive + moved - moved * np.abs(moved) / (2.0 * most)
-            target = self._drive + moved
-        self._drive = target
-        if self.loose:
-            half = arrays.half_backlash_pct
-            mean = np.minimum(np.maximum(self._travel, mean - half), mean + half)
-            self._travel = np.minimum(np.maximum(self._travel, target - half), target + half)
-        return mean
-
-    def follows(self, signals: FloatArray) -> bool:
-        """Whether the element, tight, would do what the (k, n) signals of k steps ask, as good as at once."""
-        arrays = self._arrays
-        if self._ends and bool(((signals < arrays.low_pct) | (signals > arrays.high_pct)).any()):
-            return False
-        if not self._rated:
-            return True
-        # Moved by a fiftieth of what it could, it is late by a hundredth of a step.
-        steps = np.abs(np.diff(signals, axis=0, prepend=self._drive[None]))
-        return bool((steps <= 0.02 * arrays.travel_per_step_pct).all())
-
-    def rest_at(self, signal: FloatArray) -> None:
-        """Take over where the element has followed its signal."""
-        self._drive = signal
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -273,7 +91,10 @@ class Traces:
 
 
 class Engine:
-    """Columns of one pattern: the same processes' orders, the same levels controlled, the same scan multiples."""
+    """Columns in which the same levels are controlled, step by step.
+
+    The signals of the last steps are kept, as far back as dead times look; or all signals of all steps.
+    """
 
     def __init__(
         self,
@@ -282,20 +103,30 @@ class Engine:
         controllers: Sequence[ControllerArrays | None],
         final_element: FinalElementArrays,
         setpoint_step_pct: FloatArray,
-        disturbances_pct: Sequence[FloatArray | None],
-        steps: int,
+        disturbances: Sequence[DisturbanceSignals | KnownSignals | None],
+        room: int,
         keep_signals: bool,
     ) -> None:
-        """Lay out the signals of n columns for a number of steps; sequences run over levels, innermost first.
+        """Lay out the signals of n columns; sequences run over levels, innermost first.
 
-        ``disturbances_pct`` holds per level the (steps + 1, n) disturbance at its measurement [%].
+        ``room`` is how many steps there is room for before `roll` is needed; a run that keeps its signals
+        needs room for all.
         """
         n = len(setpoint_step_pct)
         controlled = [(level, one) for level, one in enumerate(controllers) if one is not None]
         self.plants = plants
-        self.loops = Loops(controlled, n)
-        self.element = MovingElement(final_element, controlled[0][1] if controlled else None)
-        self.disturbances = disturbances_pct
+        self.loops = Loops(controlled, n, keep_setpoints=keep_signals)
+        innermost = controlled[0][1] if controlled else None
+        self.element = MovingElement(
+            final_element,
+            # Output limits inside the travel leave nothing for its ends to do.
+            ends=innermost is None
+            or bool(
+                np.any(innermost.output_low_pct < final_element.low_pct)
+                or np.any(innermost.output_high_pct > final_element.high_pct)
+            ),
+        )
+        self.disturbances = list(disturbances)
         self.setpoint = setpoint_step_pct
         self._manual_pct = final_element.step_pct
         if controlled:
@@ -303,52 +134,98 @@ class Engine:
             self.setpoint = np.minimum(
                 np.maximum(setpoint_step_pct, outermost.setpoint_low_pct), outermost.setpoint_high_pct
             )
-        self.steps = steps
+        self.room = room
         # Rows before the start hold the rest that the dead times still look back at.
-        self.pad = pad = max(int(plant.whole.max()) for plant in plants) + 2
-        self.travel = np.zeros((pad + steps + 1, n))
-        self.measured = [np.zeros((pad + steps + 1, n)) for _ in plants]
+        back = [int(plant.whole.max()) + 3 for plant in plants]
+        self.travel_pad, self.pads = back[0], (*back[1:], _LEAST_PAD)
+        self.travel = np.zeros((self.travel_pad + room + 1, n))
+        self.measured = [np.zeros((pad + room + 1, n)) for pad in self.pads]
         kept = controlled if keep_signals else []
-        self.kept_setpoint = [np.zeros((steps + 1, n)) for _ in kept]
-        self.kept_output = [np.zeros((steps + 1, n)) for _ in kept]
+        self.kept_setpoint = [np.zeros((room + 1, n)) for _ in kept]
+        self.kept_output = [np.zeros((room + 1, n)) for _ in kept]
         for level, plant in enumerate(plants):
+            start = self.measured[level][self.pads[level]]
             if level:
-                self.measured[level][pad] = plant.feedthrough(self.measured[level - 1], pad)
-            disturbance = disturbances_pct[level]
-            if disturbance is not None:
-                self.measured[level][pad] += disturbance[0]
+                start += plant.feedthrough(self.measured[level - 1], self.pads[level - 1])
+            upset = self.disturbances[level]
+            if upset is not None:
+                start += upset.at_start(n)
         self.step = 0
+        self._base = 0
         self._act()
 
     def _act(self) -> None:
         """Execute the controllers that are due and move the final element."""
-        row = self.pad + self.step
+        at = self.step - self._base
         signal = self._manual_pct
         if self.loops.controlled:
-            signal = self.loops.execute(self.step, self.setpoint, [history[row] for history in self.measured])
+            measured = [history[pad + at] for history, pad in zip(self.measured, self.pads, strict=True)]
+            signal = self.loops.execute(self.step, self.setpoint, measured)
             for kept, value in zip(self.kept_setpoint, self.loops.setpoint, strict=False):
                 kept[self.step] = value
             for kept, value in zip(self.kept_output, self.loops.output, strict=False):
                 kept[self.step] = value
-        self.travel[row] = self.element.move(signal)
+        self.element.move(signal, self.travel[self.travel_pad + at])
 
     def advance(self) -> None:
         """Advance by one step."""
         self.step += 1
-        row = self.pad + self.step
-        source = self.travel
-        for plant, disturbance, history in zip(self.plants, self.disturbances, self.measured, strict=True):
-            value = plant.advance(source, row)
-            history[row] = value if disturbance is None else value + disturbance[self.step]
-            source = history
+        at = self.step - self._base
+        source, row = self.travel, self.travel_pad + at
+        for plant, upset, history, pad in zip(
+            self.plants, self.disturbances, self.measured, self.pads, strict=True
+        ):
+            out = history[pad + at]
+            plant.advance(source, row, out)
+            if upset is not None:
+                part = out[upset.columns]
+                np.add(part, upset.at(self.step), out=part)
+            source, row = history, pad + at
         self._act()
 
+    @property
+    def room_left(self) -> int:
+        """Steps until the signals must be rolled."""
+        return self._base + self.room - self.step
+
+    def roll(self) -> None:
+        """Make room: drop the signals that nothing looks back at any more."""
+        at = self.step - self._base
+        for history, pad in zip((self.travel, *self.measured), (self.travel_pad, *self.pads), strict=True):
+            history[: pad + 1] = history[at : at + pad + 1].copy()
+        for plant in self.plants:
+            plant.forget_rows()
+        self._base = self.step
+
+    def last(self, steps: int) -> tuple[list[FloatArray], FloatArray]:
+        """Measurements, innermost first, and travel of the last steps and the two before them [%]."""
+        at = self.step - self._base
+        return [
+            history[pad + at - steps - 1 : pad + at + 1]
+            for history, pad in zip(self.measured, self.pads, strict=True)
+        ], self.travel[self.travel_pad + at - steps - 1 : self.travel_pad + at + 1]
+
+    def keep(self, columns: IntArray) -> None:
+        """Go on with some of the columns only, given in increasing order."""
+        self.plants = [plant.take(columns) for plant in self.plants]
+        self.loops = self.loops.take(columns)
+        self.element = self.element.take(columns)
+        self.disturbances = [
+            upset.take(columns) if isinstance(upset, DisturbanceSignals) else upset
+            for upset in self.disturbances
+        ]
+        self.setpoint, self._manual_pct = self.setpoint[columns], self._manual_pct[columns]
+        # As rows in one piece, which is how delayed inputs are gathered.
+        self.travel = self.travel.take(columns, axis=1)
+        self.measured = [history.take(columns, axis=1) for history in self.measured]
+
     def traces(self, step: int) -> Traces:
-        """Return the signals from the start to a step that has been reached."""
-        end = self.pad + step + 1
+        """Return the signals from the start to a step that has been reached, of a run that keeps them."""
         return Traces(
-            measurement_pct=tuple(history[self.pad : end] for history in self.measured),
-            travel_pct=self.travel[self.pad : end],
+            measurement_pct=tuple(
+                history[pad : pad + step + 1] for history, pad in zip(self.measured, self.pads, strict=True)
+            ),
+            travel_pct=self.travel[self.travel_pad : self.travel_pad + step + 1],
             setpoint_pct=tuple(kept[: step + 1] for kept in self.kept_setpoint),
             output_pct=tuple(kept[: step + 1] for kept in self.kept_output),
         )
@@ -357,14 +234,16 @@ class Engine:
 class Loops:
     """The controllers of n columns at work, outermost last."""
 
-    def __init__(self, controlled: Sequence[tuple[int, ControllerArrays]], columns: int) -> None:
-        zero = np.zeros(columns)
+    def __init__(
+        self, controlled: Sequence[tuple[int, ControllerArrays]], columns: int, *, keep_setpoints: bool
+    ) -> None:
         self.controlled = controlled
-        self.memory = [ScanState(zero, zero, zero, zero) for _ in controlled]
-        self.setpoint = [zero for _ in controlled]
-        self.output = [zero for _ in controlled]
-        self.computed = [zero for _ in controlled]
-        self.limited = [False for _ in controlled]
+        self.memory = [at_rest(columns) for _ in controlled]
+        self.setpoint = [np.zeros(columns) for _ in controlled]
+        self.output = [np.zeros(columns) for _ in controlled]
+        self._limited = [np.zeros(columns, dtype=bool) for _ in controlled]
+        self._cut = np.zeros(columns, dtype=bool)
+        self._keep_setpoints = keep_setpoints
         # A primary whose output limits lie inside its secondary's setpoint limits needs no second limit.
         self._limit_setpoint = [
             position + 1 < len(controlled)
@@ -374,51 +253,99 @@ class Loops:
             )
             for position, (_, arrays) in enumerate(controlled)
         ]
+        # What a controller may ask for in the end: its own limits, and those of the setpoint that it commands.
+        self._low = [arrays.output_low_pct for _, arrays in controlled]
+        self._high = [arrays.output_high_pct for _, arrays in controlled]
+        for position, (_, arrays) in enumerate(controlled[:-1]):
+            self._low[position + 1] = np.maximum(self._low[position + 1], arrays.setpoint_low_pct)
+            self._high[position + 1] = np.minimum(self._high[position + 1], arrays.setpoint_high_pct)
+
+    @property
+    def limited(self) -> bool:
+        """True where a limit acts on any controller."""
+        return any(bool(limited.any()) for limited in self._limited)
+
+    def take(self, columns: IntArray) -> "Loops":
+        """Return the controllers of some columns as they stand."""
+        other = Loops(
+            [(level, arrays.take(columns)) for level, arrays in self.controlled],
+            len(columns),
+            keep_setpoints=self._keep_setpoints,
+        )
+        for old, new in zip(self.memory, other.memory, strict=True):
+            new.integral, new.filtered = old.integral[columns], old.filtered[columns]
+            new.derivative, new.derivative_input = old.derivative[columns], old.derivative_input[columns]
+            new.output = old.output[columns]
+        other.setpoint = [values[columns] for values in self.setpoint]
+        other.output = [values[columns] for values in self.output]
+        other._limited = [values[columns] for values in self._limited]
+        return other
 
     def execute(self, k: int, setpoint: FloatArray, measured: Sequence[FloatArray]) -> FloatArray:
         """Run the controllers that are due at step ``k``, outermost first, and return the valve signal [%]."""
-        due = []
+        scanned: list[tuple[int, BoolArray | bool]] = []
         for loop in reversed(range(len(self.controlled))):
             level, arrays = self.controlled[loop]
-            if k % arrays.every == 0:
-                limited = False
+            due: BoolArray | bool = (
+                k % arrays.every == 0 if isinstance(arrays.every, int) else np.remainder(k, arrays.every) == 0
+            )
+            if due is not False:
+                output, limited = self.output[loop], self._limited[loop]
+                setpoint = self._take_setpoint(loop, setpoint, due)
+                computed = scan(arrays.coefficients, self.memory[loop], setpoint, measured[level], due=due)
+                np.maximum(computed, arrays.output_low_pct, out=output)
+                np.minimum(output, arrays.output_high_pct, out=output)
+                np.not_equal(output, computed, out=limited)
                 if self._limit_setpoint[loop]:
-                    asked = setpoint
-                    setpoint = np.minimum(
-                        np.maximum(asked, arrays.setpoint_low_pct), arrays.setpoint_high_pct
-                    )
-                    limited = int(np.count_nonzero(setpoint != asked)) > 0
-                computed = scan(arrays.coefficients, self.memory[loop], setpoint, measured[level])
-                output = np.minimum(np.maximum(computed, arrays.output_low_pct), arrays.output_high_pct)
-                self.limited[loop] = limited or int(np.count_nonzero(output != computed)) > 0
-                self.setpoint[loop], self.computed[loop], self.output[loop] = setpoint, computed, output
-                due.append(loop)
+                    np.logical_or(limited, self._cut, out=limited)
+                scanned.append((loop, due))
             setpoint = self.output[loop]
-        if any(self.limited):
-            self._track(due, measured)
+        if scanned:
+            limited = self._limited[0]
+            for other in self._limited[1:]:
+                limited = limited | other
+            columns = limited.nonzero()[0]
+            if columns.size:
+                self._track(columns, dict(scanned), measured)
         return setpoint
 
-    def _track(self, due: Sequence[int], measured: Sequence[FloatArray]) -> None:
-        """Tell every controller that was due what became of its output.
+    def _take_setpoint(self, loop: int, asked: FloatArray, due: BoolArray | bool) -> FloatArray:
+        """The setpoint that a controller which is due takes of what it is asked for."""
+        if self._limit_setpoint[loop]:
+            arrays, setpoint = self.controlled[loop][1], self.setpoint[loop]
+            np.maximum(asked, arrays.setpoint_low_pct, out=setpoint, where=due)
+            np.minimum(setpoint, arrays.setpoint_high_pct, out=setpoint)
+            np.not_equal(setpoint, asked, out=self._cut)
+            return setpoint
+        if due is True and not self._keep_setpoints:
+            return asked
+        np.copyto(self.setpoint[loop], asked, where=due)
+        return self.setpoint[loop]
+
+    def _track(
+        self, columns: IntArray, scanned: dict[int, BoolArray | bool], measured: Sequence[FloatArray]
+    ) -> None:
+        """Tell the controllers of some columns that were due what became of their outputs.
 
         The setpoint that the secondary took; and while the secondary can move its measurement no
         further, that measurement, so that the primary's integral goes no further either.
         """
-        no_higher = no_lower = np.zeros(len(measured[0]), dtype=bool)
-        low, high = self.controlled[0][1].output_low_pct, self.controlled[0][1].output_high_pct
+        no_higher = no_lower = np.zeros(len(columns), dtype=bool)
         for loop, (_, arrays) in enumerate(self.controlled):
-            computed = self.computed[loop]
+            computed = self.memory[loop].output[columns]
+            low, high = self._low[loop][columns], self._high[loop][columns]
             actual = np.minimum(np.maximum(computed, low), high)
             if loop:
-                below = measured[self.controlled[loop - 1][0]]
+                below = measured[self.controlled[loop - 1][0]][columns]
                 actual = np.where(no_higher, np.minimum(actual, below), actual)
                 actual = np.where(no_lower, np.maximum(actual, below), actual)
-            if loop in due:
-                track(arrays.coefficients, self.memory[loop], computed, actual)
+            due = scanned.get(loop, False)
+            if due is True:
+                track(arrays.coefficients, self.memory[loop], actual, columns)
+            elif due is not False:
+                part = due[columns]
+                track(arrays.coefficients, self.memory[loop], actual[part], columns[part])
             at_high, at_low = (computed > high) | no_higher, (computed < low) | no_lower
-            no_higher = np.where(arrays.reverse, at_high, at_low)
-            no_lower = np.where(arrays.reverse, at_low, at_high)
-            if loop + 1 < len(self.controlled):
-                above = self.controlled[loop + 1][1]
-                low = np.maximum(above.output_low_pct, arrays.setpoint_low_pct)
-                high = np.minimum(above.output_high_pct, arrays.setpoint_high_pct)
+            reverse = arrays.reverse[columns]
+            no_higher = np.where(reverse, at_high, at_low)
+            no_lower = np.where(reverse, at_low, at_high)

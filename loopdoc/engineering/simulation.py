@@ -11,26 +11,24 @@ from dataclasses import dataclass
 import numpy as np
 
 from loopdoc.engineering.clock import HORIZON_PARTS, Clock, Unsuited, choose_clocks, lasting
+from loopdoc.engineering.columns import Column, batches, engine, outermost_has_reset, setpoint_step_pct
 from loopdoc.engineering.linear_blocks import Run
-from loopdoc.engineering.process import FloatArray, Process, state_space, transition
+from loopdoc.engineering.process import FloatArray
 from loopdoc.engineering.response_metrics import ResponseMetrics, read_metrics
-from loopdoc.engineering.scanning import (
-    ControllerArrays,
-    Engine,
-    FinalElementArrays,
-    IntArray,
-    ProcessArrays,
-    Traces,
-    controller_arrays,
-)
+from loopdoc.engineering.running_metrics import AT_REST, RunningMetrics
+from loopdoc.engineering.scanning import IntArray, Traces
 from loopdoc.engineering.structure import ControlStructure, Scenario
 
-# Numbers held at once by one run: bounds the memory of a batch to some 100 MB.
-_BATCH_NUMBERS = 12_000_000
+# Numbers held at once by a run that keeps its signals: bounds its memory to some 100 MB.
+_KEPT_NUMBERS = 12_000_000
+# Columns of a run that does not: large enough for numpy, small enough for the processor's cache.
+_COLUMNS_AT_ONCE = 3000
+# Steps between two looks at what moves still.
+_BLOCK = 64
+# Columns that have ended are dropped once only this share is left.
+_WORTH_DROPPING = 0.8
 # Up to so many columns blocks of steps are quicker than steps.
 _FEW = 24
-# A run is cut short when nothing moved by more than this share of its peak for an eighth of the horizon.
-_AT_REST = 1e-3
 # A step through a lag is within 0.3 % of its end after so many times the lag.
 _LAGS_TO_ARRIVE = 6.0
 
@@ -51,121 +49,6 @@ class Response:
     travel_pct: FloatArray
     """Final element, mean over the step that begins at each time."""
     metrics: ResponseMetrics
-
-
-@dataclass(frozen=True, slots=True)
-class _Column:
-    """One structure under one scenario: a column of the engine."""
-
-    place: tuple[int, int, int]
-    structure: ControlStructure
-    scenario: Scenario
-    clock: Clock
-
-    @property
-    def every(self) -> tuple[int, ...]:
-        """Steps between scans, per process, 0 where it is not controlled."""
-        return tuple(
-            0 if controller is None else max(1, round(controller.interval_s / self.clock.step_s))
-            for controller in self.structure.controllers
-        )
-
-    @property
-    def pattern(self) -> tuple[object, ...]:
-        """What columns must share to be run together."""
-        return (tuple(process.order for process in self.structure.processes), self.every)
-
-
-def _disturbances(
-    columns: Sequence[_Column], level: int, step_s: FloatArray, steps: int
-) -> FloatArray | None:
-    """(steps + 1, n) disturbance at the measurement of a level [%]: steps through the path of each."""
-    by_order: dict[int, list[tuple[int, Process, float]]] = defaultdict(list)
-    for position, column in enumerate(columns):
-        for disturbance in column.scenario.disturbances:
-            if disturbance.level == level and disturbance.size_pct:
-                path = disturbance.path_through(column.structure.processes[level])
-                by_order[path.order].append((position, path, disturbance.size_pct))
-    if not by_order:
-        return None
-    signal = np.zeros((steps + 1, len(columns)))
-    for members in by_order.values():
-        positions = [position for position, _, _ in members]
-        sizes = np.array([path.gain * size for _, path, size in members])
-        moved = _unit_steps([path for _, path, _ in members], step_s[positions], steps) * sizes
-        for position, one in zip(positions, moved.T, strict=True):  # a column may have several
-            signal[:, position] += one
-    return signal
-
-
-def _unit_steps(paths: Sequence[Process], step_s: FloatArray, steps: int) -> FloatArray:
-    """(steps + 1, n) response to a unit step of n paths of equal order, per unit of their gains."""
-    system = state_space(paths)
-    advance, held, _ = transition(system, step_s)
-    order = held.shape[1]
-    # With the input as a last state that stays at 1, each doubling takes all samples so far further on.
-    further = np.zeros((len(paths), order + 1, order + 1))
-    further[:, :order, :order], further[:, :order, order], further[:, order, order] = advance, held, 1.0
-    states = [np.zeros((1, len(paths))) for _ in range(order)] + [np.ones((1, len(paths)))]
-    while len(states[0]) <= steps:
-        later = [
-            sum((further[:, i, j] * states[j] for j in range(order + 1)), np.zeros_like(states[0]))
-            for i in range(order + 1)
-        ]
-        states = [np.concatenate([now, then]) for now, then in zip(states, later, strict=True)]
-        further = further @ further
-    response = np.broadcast_to(system.d, (steps + 1, len(paths)))
-    for i in range(order):
-        response = response + system.c[:, i] * states[i][: steps + 1]
-    return response
-
-
-def _engine(columns: Sequence[_Column], steps: int, *, keep_signals: bool) -> Engine:
-    structures = [column.structure for column in columns]
-    step_s = np.array([column.clock.step_s for column in columns])
-    elements = [structure.final_element for structure in structures]
-    valve_start = np.array([element.start_pct for element in elements])
-    stroke_s = np.array([element.stroke_time_s for element in elements])
-    controllers: list[ControllerArrays | None] = []
-    commanded = valve_start
-    for level, every in enumerate(columns[0].every):
-        measured = np.array([structure.start_pct[level] for structure in structures])
-        at_level = [c for c in (structure.controllers[level] for structure in structures) if c is not None]
-        if not at_level:
-            controllers.append(None)
-            continue
-        controllers.append(
-            controller_arrays(
-                at_level,
-                interval_s=step_s * every,
-                every=every,
-                output_start_pct=commanded,
-                setpoint_start_pct=measured,
-            )
-        )
-        commanded = measured
-    with np.errstate(divide="ignore"):
-        travel_per_step = 100.0 * step_s / stroke_s
-    return Engine(
-        plants=[
-            ProcessArrays(
-                [structure.processes[level] for structure in structures], step_s, held_input=level == 0
-            )
-            for level in range(len(controllers))
-        ],
-        controllers=controllers,
-        final_element=FinalElementArrays(
-            step_pct=np.array([column.scenario.final_element_step_pct for column in columns]),
-            travel_per_step_pct=travel_per_step,
-            half_backlash_pct=np.array([element.backlash_pct / 2.0 for element in elements]),
-            low_pct=0.0 - valve_start,
-            high_pct=100.0 - valve_start,
-        ),
-        setpoint_step_pct=np.array([column.scenario.setpoint_step_pct for column in columns]),
-        disturbances_pct=[_disturbances(columns, level, step_s, steps) for level in range(len(controllers))],
-        steps=steps,
-        keep_signals=keep_signals,
-    )
 
 
 class _RestWatch:
@@ -198,19 +81,18 @@ class _RestWatch:
             members = np.nonzero((windows == window) & self._going)[0]
             rest = np.ones(len(members), dtype=bool)
             for signal, peak in zip(signals, self._peaks, strict=True):
-                rest &= np.ptp(signal[-window - 1 :, members], axis=0) <= _AT_REST * peak[members]
+                rest &= np.ptp(signal[-window - 1 :, members], axis=0) <= AT_REST * peak[members]
             done = members[rest | (self._horizons[members] == step)]
             self.stops[done], self._going[done] = step, False
         return bool(self._going.any())
 
 
-def _run(columns: Sequence[_Column], *, keep_signals: bool, until_rest: bool) -> tuple[Run, IntArray]:
-    """Run columns of one pattern to the horizon, or until each is at rest; return where each ended."""
+def _run(columns: Sequence[Column], *, until_rest: bool) -> tuple[Run, IntArray]:
+    """Run columns to the horizon, or until each is at rest, with all signals; return where each ended."""
     horizons = np.array([column.clock.steps for column in columns])
-    steps = int(horizons.max())
     first = columns[0]
     run = Run(
-        _engine(columns, steps, keep_signals=keep_signals),
+        engine(columns, room=int(horizons.max()), keep_signals=True),
         one_structure=len(columns) <= _FEW
         and all((c.structure, c.clock) == (first.structure, first.clock) for c in columns),
     )
@@ -223,71 +105,86 @@ def _run(columns: Sequence[_Column], *, keep_signals: bool, until_rest: bool) ->
     return run, watch.stops
 
 
-def _accepted_step_pct(column: _Column) -> float:
-    """The setpoint step of a column after the setpoint limits, 0 without a controller."""
-    controllers = [
-        (controller, start)
-        for controller, start in zip(column.structure.controllers, column.structure.start_pct, strict=True)
-        if controller is not None
-    ]
-    if not controllers:
-        return 0.0
-    outermost, start = controllers[-1]
-    asked = start + column.scenario.setpoint_step_pct
-    return min(max(asked, outermost.setpoint_low_pct), outermost.setpoint_high_pct) - start
-
-
-def _all_metrics(columns: Sequence[_Column], traces: Traces, stops: IntArray) -> list[ResponseMetrics]:
+def _all_metrics(columns: Sequence[Column], traces: Traces, stops: IntArray) -> list[ResponseMetrics]:
     """Read the metrics of each column up to its own stop."""
     found: dict[int, ResponseMetrics] = {}
     for stop in np.unique(stops):
         members = np.nonzero(stops == stop)[0].tolist()
         part = [columns[i] for i in members]
-        outermost = [column.structure.controllers[-1] for column in part]
         metrics = read_metrics(
             traces.measurement_pct[-1][: stop + 1, members],
             traces.travel_pct[: stop + 1, members],
             step_s=np.array([column.clock.step_s for column in part]),
-            setpoint_step_pct=np.array([_accepted_step_pct(column) for column in part]),
-            disturbed_pct=np.array(
-                [math.fsum(abs(d.size_pct) for d in column.scenario.disturbances) for column in part]
-            ),
-            has_reset=np.array([c is not None and math.isfinite(c.reset_s) for c in outermost]),
-            executed_interval_s=[
-                tuple(every * column.clock.step_s for every in column.every if every) for column in part
-            ],
+            setpoint_step_pct=np.array([setpoint_step_pct(column) for column in part]),
+            disturbed_pct=np.array([column.disturbed_pct for column in part]),
+            has_reset=np.array([outermost_has_reset(column) for column in part]),
+            executed_interval_s=[column.executed_interval_s for column in part],
         )
         found.update(zip(members, metrics, strict=True))
     return [found[i] for i in range(len(columns))]
 
 
-def _batches(columns: Sequence[_Column], signals_per_column: int) -> list[list[_Column]]:
-    """Columns that can run together, of like length, no more at once than memory should hold."""
-    by_pattern: dict[tuple[object, ...], list[_Column]] = defaultdict(list)
-    for column in columns:
-        by_pattern[column.pattern].append(column)
-    batches = []
-    for members in by_pattern.values():
-        members.sort(key=lambda column: column.clock.steps)
-        batch: list[_Column] = []
-        for column in members:
-            if batch and (len(batch) + 1) * column.clock.steps * signals_per_column > _BATCH_NUMBERS:
-                batches.append(batch)
-                batch = []
-            batch.append(column)
-        batches.append(batch)
-    return batches
+def _run_without_signals(columns: Sequence[Column]) -> list[ResponseMetrics]:
+    """Run columns until each is at rest or at its horizon, and read their metrics on the way."""
+    horizon = np.array([column.clock.steps for column in columns])
+    window = horizon // HORIZON_PARTS
+    # All windows are multiples of the largest power of two in the one that has the least of them.
+    block = min(_BLOCK, int((window & -window).min()))
+    longest = max(int(max(process.dead_time_s for process in c.structure.processes) / c.clock.step_s) for c in columns)
+    at_work = engine(columns, room=block * math.ceil(max(512, longest) / block), keep_signals=False, block=block)
+    measured, travel = at_work.last(0)
+    running = RunningMetrics(
+        setpoint_step_pct=np.array([setpoint_step_pct(column) for column in columns]),
+        disturbed_pct=np.array([column.disturbed_pct for column in columns]),
+        horizon=horizon,
+        window=window,
+        start=[signal[-1] for signal in (*measured, travel)],
+    )
+    found: list[ResponseMetrics | None] = [None] * len(columns)
+    here = np.arange(len(columns))
+    going = np.ones(len(columns), dtype=bool)
+    while True:
+        if at_work.room_left < block:
+            at_work.roll()
+        for _ in range(block):
+            at_work.advance()
+        measured, travel = at_work.last(block)
+        signals = (*measured, travel)
+        running.take_in(signals, at_work.step)
+        done = (running.ended(at_work.step) & going).nonzero()[0]
+        if done.size:
+            part = [columns[i] for i in here[done].tolist()]
+            metrics = running.read(
+                done,
+                step=at_work.step,
+                last=[signal[-1] for signal in signals],
+                step_s=np.array([column.clock.step_s for column in part]),
+                executed_interval_s=[column.executed_interval_s for column in part],
+            )
+            for i, one in zip(here[done].tolist(), metrics, strict=True):
+                found[i] = one
+            going[done] = False
+            left = going.nonzero()[0]
+            if not left.size:
+                return [one for one in found if one is not None]
+            running.begin_windows(at_work.step, signals)
+            if len(left) < _WORTH_DROPPING * len(going):
+                at_work.keep(left)
+                running.keep(left)
+                here, going = here[left], going[left]
+        else:
+            running.begin_windows(at_work.step, signals)
 
 
 def _columns(
-    group: int, structures: Sequence[ControlStructure], scenarios: Sequence[Scenario], clock: Clock
-) -> list[_Column]:
+    group: int, structures: Sequence[ControlStructure], scenarios: Sequence[Scenario], clocks: Sequence[Clock]
+) -> list[Column]:
     for scenario in scenarios:
         for disturbance in scenario.disturbances:
             if any(not 0 <= disturbance.level < len(structure.processes) for structure in structures):
                 raise ValueError(f"scenario {scenario.name}: there is no level {disturbance.level}")
     return [
-        _Column((group, i, j), structure, scenario, clock)
+        Column((group, i, j), structure, scenario, clocks[i])
         for i, structure in enumerate(structures)
         for j, scenario in enumerate(scenarios)
     ]
@@ -299,13 +196,13 @@ def _slowest_disturbance_s(scenarios: Sequence[Scenario]) -> float:
     return max((_LAGS_TO_ARRIVE * path.lag_sum_s for path in paths), default=0.0)
 
 
-def _response(column: _Column, traces: Traces, position: int, metrics: ResponseMetrics) -> Response:
-    """One column of the signals as a response, the start added."""
+def _response(column: Column, traces: Traces, position: int, end: int, metrics: ResponseMetrics) -> Response:
+    """One column of the signals up to a step as a response, the start added."""
     structure = column.structure
     starts = structure.start_pct
 
     def signal(values: FloatArray, start_pct: float) -> FloatArray:
-        absolute: FloatArray = values[:, position] + start_pct
+        absolute: FloatArray = values[: end + 1, position] + start_pct
         absolute.flags.writeable = False
         return absolute
 
@@ -320,7 +217,7 @@ def _response(column: _Column, traces: Traces, position: int, metrics: ResponseM
         setpoints.append(signal(traces.setpoint_pct[loop], start))
         outputs.append(signal(traces.output_pct[loop], commanded))
         commanded, loop = start, loop + 1
-    time_s: FloatArray = column.clock.step_s * np.arange(len(traces.travel_pct), dtype=np.float64)
+    time_s: FloatArray = column.clock.step_s * np.arange(end + 1, dtype=np.float64)
     time_s.flags.writeable = False
     return Response(
         scenario=column.scenario,
@@ -363,24 +260,103 @@ def simulate(
     Source: K. J. Astrom, B. Wittenmark, Computer-Controlled Systems, 3rd ed. 1997, ch. 2 and 8
     (sampling of lags and dead time, digital PID; chapters from memory).
     """
-    chosen = choose_clocks([structures])[0] if clock is None else clock
-    if isinstance(chosen, Unsuited):
-        raise ValueError(chosen.reason)
-    if clock is None:
-        chosen = lasting(chosen, _slowest_disturbance_s(scenarios))
-    found: dict[tuple[int, int, int], Response] = {}
-    columns = _columns(0, structures, scenarios, chosen)
+    if clock is not None:
+        return _responses([(structures, scenarios, clock)], until_rest=False)[0]
+    found = simulate_groups([(structures, scenarios)])[0]
+    if isinstance(found, Unsuited):
+        raise ValueError(found.reason)
+    return found
+
+
+def simulate_groups(
+    groups: Sequence[tuple[Sequence[ControlStructure], Sequence[Scenario]]],
+) -> tuple[tuple[tuple[Response, ...], ...] | Unsuited, ...]:
+    """Time responses of many groups of structures at once, each as by `simulate` on a clock of its own.
+
+    Parameters
+    ----------
+    groups : sequence of (structures, scenarios)
+        Each group as in `simulate`.
+
+    Returns
+    -------
+    tuple of nested tuples of Response, or Unsuited
+        Per group, per structure, per scenario. Where a group cannot be simulated, the reason.
+
+    Raises
+    ------
+    ValueError
+        A scenario names a level that a structure does not have.
+
+    Source: as for `simulate`.
+    """
+    found: list[tuple[tuple[Response, ...], ...] | Unsuited] = []
+    waiting: list[tuple[Sequence[ControlStructure], Sequence[Scenario], Clock]] = []
+    places: list[int] = []
+    numbers = 0
+
+    def run_waiting() -> None:
+        for place, responses in zip(places, _responses(waiting, until_rest=True), strict=True):
+            found[place] = responses
+        places.clear()
+        waiting.clear()
+
+    for (structures, scenarios), clock in zip(groups, choose_clocks([one for one, _ in groups]), strict=True):
+        if isinstance(clock, Unsuited):
+            found.append(clock)
+            continue
+        common = lasting(clock, _slowest_disturbance_s(scenarios)).common
+        wanted = common.steps * len(scenarios) * sum(4 * len(structure.processes) for structure in structures)
+        if waiting and numbers + wanted > _KEPT_NUMBERS:
+            run_waiting()
+            numbers = 0
+        numbers += wanted
+        places.append(len(found))
+        waiting.append((structures, scenarios, common))
+        found.append(())
+    run_waiting()
+    return tuple(found)
+
+
+def _kept_batches(columns: Sequence[Column]) -> list[list[Column]]:
+    """Batches of runs that keep their signals: by structure where blocks of steps may serve, else together."""
+    by_structure: dict[tuple[int, int], list[Column]] = defaultdict(list)
+    together: list[Column] = []
+    for column in columns:
+        element = column.structure.final_element
+        if element.backlash_pct or element.resolution_pct:
+            together.append(column)
+        else:
+            by_structure[column.place[:2]].append(column)
+    return [*by_structure.values(), *batches(together, kept_numbers=_KEPT_NUMBERS)]
+
+
+def _responses(
+    groups: Sequence[tuple[Sequence[ControlStructure], Sequence[Scenario], Clock]], *, until_rest: bool
+) -> list[tuple[tuple[Response, ...], ...]]:
+    """Responses of groups that are simulated together, each on its clock."""
+    columns = [
+        column
+        for group, (structures, scenarios, clock) in enumerate(groups)
+        for column in _columns(group, structures, scenarios, [clock] * len(structures))
+    ]
     runs = []
-    for batch in _batches(columns, 4 * max(len(structure.processes) for structure in structures)):
-        run, stops = _run(batch, keep_signals=True, until_rest=clock is None)
+    ends = [0] * len(groups)
+    for batch in _kept_batches(columns):
+        run, stops = _run(batch, until_rest=until_rest)
         runs.append((batch, run, stops))
-    # Curves that are drawn together end together; the figures are read where each had come to rest.
-    end = max(int(stops.max()) for _, _, stops in runs)
+        for column, stop in zip(batch, stops.tolist(), strict=True):
+            ends[column.place[0]] = max(ends[column.place[0]], stop)
+    found: dict[tuple[int, int, int], Response] = {}
     for batch, run, stops in runs:
-        traces = run.to(end)
-        for position, metrics in enumerate(_all_metrics(batch, traces, stops)):
-            found[batch[position].place] = _response(batch[position], traces, position, metrics)
-    return tuple(tuple(found[0, i, j] for j in range(len(scenarios))) for i in range(len(structures)))
+        # Curves that are drawn together end together; the figures are read where each had come to rest.
+        traces = run.to(max(ends[column.place[0]] for column in batch))
+        for position, (column, metrics) in enumerate(zip(batch, _all_metrics(batch, traces, stops), strict=True)):
+            found[column.place] = _response(column, traces, position, ends[column.place[0]], metrics)
+    return [
+        tuple(tuple(found[group, i, j] for j in range(len(scenarios))) for i in range(len(structures)))
+        for group, (structures, scenarios, _) in enumerate(groups)
+    ]
 
 
 def simulate_metrics(
@@ -409,15 +385,17 @@ def simulate_metrics(
     clocks = choose_clocks([structures for structures, _ in groups])
     columns = []
     for group, ((structures, scenarios), clock) in enumerate(zip(groups, clocks, strict=True)):
-        if isinstance(clock, Clock):
+        if not isinstance(clock, Unsuited):
             chosen = lasting(clock, _slowest_disturbance_s(scenarios))
-            columns += _columns(group, structures, scenarios, chosen)
+            columns += _columns(group, structures, scenarios, [chosen.of(i) for i in range(len(structures))])
     found: dict[tuple[int, int, int], ResponseMetrics] = {}
-    widest = max(
-        (len(structure.processes) for structures, _ in groups for structure in structures), default=1
-    )
-    for batch in _batches(columns, 1 + widest):
-        run, stops = _run(batch, keep_signals=False, until_rest=True)
+    # What it settles to, or what it is measured by, is known only at the end: there the signals are kept.
+    known = [column for column in columns if outermost_has_reset(column) and column.upset_pct > 0.0]
+    others = [column for column in columns if not (outermost_has_reset(column) and column.upset_pct > 0.0)]
+    for batch in batches(known, most_columns=_COLUMNS_AT_ONCE):
+        found.update(zip((column.place for column in batch), _run_without_signals(batch), strict=True))
+    for batch in batches(others, kept_numbers=_KEPT_NUMBERS):
+        run, stops = _run(batch, until_rest=True)
         metrics = _all_metrics(batch, run.to(int(stops.max())), stops)
         found.update(zip((column.place for column in batch), metrics, strict=True))
     return tuple(

@@ -22,6 +22,12 @@ class FinalElement:
     """Time for the full travel at the full rate [s]; 0 is immediate."""
     backlash_pct: float = 0.0
     """Signal lost on a reversal [%]; the start is in the middle of it."""
+    resolution_pct: float = 0.0
+    """Change of the signal since the last movement up to which nothing moves [%].
+
+    Source: ISA-TR75.25.02, Control valve response measurement from step inputs; IEC 61298-2 (definitions of
+    resolution and dead band; from memory).
+    """
     start_pct: float = 50.0
     """Travel before the upset [%]."""
 
@@ -30,6 +36,8 @@ class FinalElement:
             raise ValueError("the stroke time must be a finite time of zero or more")
         if not 0.0 <= self.backlash_pct < 100.0:
             raise ValueError("the backlash must be zero or more, and below 100 %")
+        if not 0.0 <= self.resolution_pct < 100.0:
+            raise ValueError("the resolution must be zero or more, and below 100 %")
         if not 0.0 <= self.start_pct <= 100.0:
             raise ValueError("the final element starts outside its travel of 0 to 100 %")
 
