@@ -157,6 +157,7 @@ class FailureAnalysis:
 
     def __init__(self, plant: Plant) -> None:
         self.plant = plant
+        self._alike_by_tag: dict[str, tuple[tuple[Loop | Instrument, str], ...]] = {}
 
     def effects(self, tag: str) -> tuple[FailureEffect, ...]:
         """The effect of each failure that concerns a loop, in the order of `Failure`.
@@ -170,27 +171,39 @@ class FailureAnalysis:
         """
         return tuple(_Effects(self, self.plant.register.loops[tag]).all())
 
+    def wrong_readings(self, tag: str) -> tuple[FailureEffect, ...]:
+        """The effects of a loop's own transmitter alone: bad, too high, too low.
+
+        Raises
+        ------
+        KeyError
+            The register has no such loop.
+        """
+        return tuple(_Effects(self, self.plant.register.loops[tag]).wrong_readings())
+
     def same_quantity(self, loop: Loop) -> tuple[Loop, ...]:
         """Other loops that measure the same thing with a transmitter of their own.
 
         Told by the unit, the variable and the service up to its first comma: `Drum level` and `Drum level,
         second transmitter`. Where a register does not write it so, nothing is assumed.
         """
-        return tuple(other for other in self._alike(loop) if isinstance(other, Loop))
+        return tuple(other for other, _ in self._alike(loop) if isinstance(other, Loop))
 
     def sensors_beside(self, loop: Loop) -> tuple[str, ...]:
         """Transmitters beside a loop's own that measure the same thing, those of no loop (a safety system's) too."""
-        found = (
-            transmitter_of(other) if isinstance(other, Loop) else other.tag for other in self._alike(loop)
-        )
-        return tuple(dict.fromkeys(tag for tag in found if tag))
+        return tuple(dict.fromkeys(tag for _, tag in self._alike(loop)))
 
-    def _alike(self, loop: Loop) -> Iterator[Loop | Instrument]:
-        own, quantity = transmitter_of(loop), measured_quantity(loop)
-        for other in self.plant.measuring.get(quantity, ()) if quantity else ():
-            tag = transmitter_of(other) if isinstance(other, Loop) else other.tag
-            if other is not loop and tag not in (None, own):
-                yield other
+    def _alike(self, loop: Loop) -> tuple[tuple[Loop | Instrument, str], ...]:
+        """Other loops and instruments that measure the same thing, each with its transmitter; found once a loop."""
+        if loop.tag not in self._alike_by_tag:
+            own, quantity = transmitter_of(loop), measured_quantity(loop)
+            found = []
+            for other in self.plant.measuring.get(quantity, ()) if quantity else ():
+                tag = transmitter_of(other) if isinstance(other, Loop) else other.tag
+                if other is not loop and tag is not None and tag != own:
+                    found.append((other, tag))
+            self._alike_by_tag[loop.tag] = tuple(found)
+        return self._alike_by_tag[loop.tag]
 
     def trips_on(self, transmitter: str | None) -> tuple[Trip, ...]:
         """The initiators that watch a transmitter."""
@@ -240,9 +253,7 @@ class _Effects:
         loop = self._loop
         controlled = loop.tag in self._plant.controlled
         if controlled or self._analysis.functions_of(loop) or self._analysis.trips_on(transmitter_of(loop)):
-            yield self._failed(loop, Failure.MEASUREMENT_BAD)
-            yield self._wrong(loop, 1, Failure.MEASUREMENT_HIGH)
-            yield self._wrong(loop, -1, Failure.MEASUREMENT_LOW)
+            yield from self.wrong_readings()
             yield self._frozen(loop, Failure.MEASUREMENT_FROZEN)
         if controlled:
             secondaries = {route.end.tag: route.end for route in self._plant.controlled[loop.tag].routes}
@@ -252,6 +263,12 @@ class _Effects:
             yield from self._final_elements()
 
     # -- the measurement
+
+    def wrong_readings(self) -> Iterator[FailureEffect]:
+        loop = self._loop
+        yield self._failed(loop, Failure.MEASUREMENT_BAD)
+        yield self._wrong(loop, 1, Failure.MEASUREMENT_HIGH)
+        yield self._wrong(loop, -1, Failure.MEASUREMENT_LOW)
 
     def _failed(self, loop: Loop, failure: Failure) -> FailureEffect:
         """The fault that the transmitter itself makes; one that is not noticed is a wrong or a frozen reading."""

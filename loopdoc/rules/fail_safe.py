@@ -46,11 +46,10 @@ def measurement_fault_unsafe(controlled: ControlledLoop, failures: FailureAnalys
     loop = controlled.loop
     hazard = need(loop.hazard, "the hazard")
     sensor = need(need(loop.measurement, "the measurement").transmitter, "the transmitter")
-    effects = [effect for effect in failures.effects(loop.tag) if effect.failure in _READINGS]
     only_if(hazard != "none")
     told: set[int] = set()
     lacking = ""
-    for effect in effects:
+    for effect in failures.wrong_readings(loop.tag):
         # What the failure does to other measurements, their own alarms tell, or `alarm-missing-for-hazard`.
         for consequence in (one for one in effect.consequences if one.loop is loop):
             direction = consequence.direction
