@@ -266,3 +266,46 @@ def test_an_upset_at_the_input_of_an_integrating_process_is_in_units_of_what_com
     # A tenth of the span of the secondary, which commands the level.
     tenth = secondary.range.span / 10.0  # type: ignore[union-attr]
     assert f"An upset of {tenth:g}\u00a0m³/h at the process input of LIC-1001" in names
+
+
+# --- the issued document -------------------------------------------------------------------------
+
+
+def test_the_document_holds_review_ratios_and_both_figures(tmp_path: Path) -> None:
+    folder = starter(tmp_path / "plant")
+    out, err = io.StringIO(), io.StringIO()
+    arguments = ["issue", str(folder), "--out", str(tmp_path / "out"), "--documents", "response", "--formats", "html"]
+    assert run(arguments, out, err) == 0, err.getvalue()
+    page = (tmp_path / "out" / "responses" / "LIC-1001.html").read_text(encoding="utf-8")
+    assert "Margins decide, rules advise. Try tuning changes only under supervision." in page
+    assert page.count('role="img"') == 2
+    for words in ("Cascade over single loop", "tuned by SIMC on all processes in series", "Trans. ASME 64:759-768"):
+        assert words in page
+    tables = re.findall(r'<div class="reviewed">(.*?)</div>', page, flags=re.DOTALL)
+    assert [re.search(r"<h3>(.*?)</h3>", table)[1] for table in tables] == [  # type: ignore[index]
+        "LIC-1001, standard form",
+        "FIC-1002, standard form",
+    ]
+    for table in tables:
+        rows = re.findall(r'<tr><th scope="row">(.*?)</th>(.*?)</tr>', table)
+        assert rows[0][0] == "as configured"
+        assert len(rows) > 5
+        for rule, cells in rows:
+            # Gain, reset, rate, then the four figures of robustness: never one without the others.
+            assert all(re.findall(r'<td class="number">(.*?)</td>', cells)), rule
+            assert len(re.findall(r'<td class="number">', cells)) == 7
+
+
+def test_a_scheme_with_a_loop_on_hold_says_what_is_not_checked(tmp_path: Path) -> None:
+    folder = starter(tmp_path / "plant")
+    file = folder / "units" / "10-feed.yaml"
+    text = file.read_text(encoding="utf-8")
+    held = re.sub(r"(LIC-1001:.*?gain: )[^\n,}]+( per m3/h)", r"\1{hold: step test}", text, count=1, flags=re.DOTALL)
+    assert held != text
+    file.write_text(held, encoding="utf-8")
+    out, err = io.StringIO(), io.StringIO()
+    arguments = ["issue", str(folder), "--out", str(tmp_path / "out"), "--documents", "response", "--formats", "html"]
+    assert run(arguments, out, err) == 0, err.getvalue()
+    page = (tmp_path / "out" / "responses" / "LIC-1001.html").read_text(encoding="utf-8")
+    assert "<b>LIC-1001:</b> not checked: the process gain of LIC-1001 is on hold." in page
+    assert "FIC-1002, standard form" in page
