@@ -13,6 +13,7 @@ from loopdoc.engineering.frequency import (
     analyse_chain,
     speed_ratio,
 )
+from loopdoc.engineering.open_loop import level_arrays, open_loops
 from loopdoc.engineering.pid import Controller, SeriesSettings, standard_from_series
 from loopdoc.engineering.process import Process, in_series
 
@@ -244,6 +245,49 @@ def test_seborg_single_loop() -> None:
     margins = single(Controller(1.0), in_series(SECONDARY, PRIMARY))
     assert margins.gain_margin == pytest.approx(45.0 / 4.0, rel=1e-9)
     assert margins.phase_crossover_rad_per_s * 60.0 == pytest.approx(math.sqrt(7.0 / 8.0), rel=1e-9)
+
+
+def test_seborg_cascade_against_the_single_loop() -> None:
+    """Ratio of the limits 3.85; the secondary is five times as fast closed, 0.2 min instead of 1 min."""
+    cascade = seborg(1.0, 4.0)
+    alone = single(Controller(1.0), in_series(SECONDARY, PRIMARY))
+    assert cascade[1].gain_margin / alone.gain_margin == pytest.approx(3.85, rel=1e-9)
+    assert cascade[0].bandwidth_rad_per_s == pytest.approx(1.0 / (0.2 * 60.0), rel=1e-9)
+
+
+@pytest.mark.parametrize(
+    ("gain", "lag", "static", "closed_lag"), [(4.0, 1.0, 0.8, 0.2), (9.0, 10.0, 0.9, 1.0), (1.0, 6.0, 0.5, 3.0)]
+)
+def test_a_first_order_secondary_under_proportional_control(
+    gain: float, lag: float, static: float, closed_lag: float
+) -> None:
+    """K/(1+K) and tau/(1+K), standard algebra: the closed loop is a lag, largest at rest and 3 dB down at 1/tau."""
+    found = single(Controller(gain), Process(1.0, (lag,)))
+    assert found.max_complementary_sensitivity == pytest.approx(static, rel=1e-12)
+    assert found.bandwidth_rad_per_s == pytest.approx(1.0 / closed_lag, rel=1e-9)
+
+
+def test_a_first_order_secondary_whose_reset_is_its_lag() -> None:
+    """1/(tauc s + 1) with tauc = tau/K = 0.5 s (direct synthesis, standard algebra)."""
+    found = single(Controller(4.0, 2.0), Process(1.0, (2.0,)))
+    assert found.bandwidth_rad_per_s == pytest.approx(1.0 / 0.5, rel=1e-9)
+    assert found.max_complementary_sensitivity == pytest.approx(1.0, rel=1e-12)
+    assert found.crossover_rad_per_s == pytest.approx(1.0 / 0.5, rel=1e-9)
+
+
+@pytest.mark.parametrize(("k1", "k2", "primary_gain"), [(10.0, 4.0, 1.0), (0.5, 2.0, 3.0)])
+def test_a_secondary_upset_at_rest_under_proportional_control(k1: float, k2: float, primary_gain: float) -> None:
+    """Attenuated to 1/(1 + K2 + K1 K2 Kp1) of what it does to the open loop (standard algebra); the offset of
+    Seborg's cascade for Kc1 = 10, 0.0888889 = 4/(5 + 4 Kc1), is that times the 4 by which it comes through."""
+    levels = [
+        level_arrays([Controller(k2)], [SECONDARY]),
+        level_arrays([Controller(k1)], [Process(primary_gain, (240.0, 120.0))]),
+    ]
+    inner, outer = (loop[0, 0] for loop in open_loops(levels, np.array([[1e-9]])))
+    attenuation = abs(1.0 / ((1.0 + inner) * (1.0 + outer)))
+    assert attenuation == pytest.approx(1.0 / (1.0 + k2 + k1 * k2 * primary_gain), rel=1e-9)
+    if k1 == 10.0:
+        assert 4.0 * attenuation == pytest.approx(0.0888889, abs=5e-8)
 
 
 @pytest.mark.parametrize(

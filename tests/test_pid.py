@@ -97,6 +97,18 @@ def test_forms_keep_the_same_frequency_response(gain: float, reset: float, rate:
     np.testing.assert_allclose(product, response, rtol=1e-9)
 
 
+@given(gain=st.floats(0.01, 100.0), reset=times | st.just(math.inf), rate=st.just(0.0) | times)
+def test_series_to_standard_and_back_is_the_identity(gain: float, reset: float, rate: float) -> None:
+    """Where the reset is the longer of the two times, as every series controller is written."""
+    # At equal times the square root of 1 - 4 Td/Ti is zero and has lost its digits.
+    assume(rate <= 0.99 * reset)
+    back = series_from_standard(standard_from_series(SeriesSettings(gain, reset, rate)))
+    assert back.gain == pytest.approx(gain, rel=1e-9)
+    assert back.reset_s == pytest.approx(reset, rel=1e-9)
+    # A rate far below the reset comes out of a difference of numbers of the size of the reset.
+    assert back.rate_s == pytest.approx(rate, rel=1e-9, abs=1e-13 * reset if math.isfinite(reset) else 0.0)
+
+
 # --- units ---------------------------------------------------------------------------------------
 
 
