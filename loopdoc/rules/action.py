@@ -128,7 +128,10 @@ def split_range_direction(controlled: ControlledLoop) -> Iterator[Draft]:
 
 
 def _turned(branch: Range) -> Range:
-    """A branch the other way round on its own side of the output."""
+    """A branch that opens the other way: from the same shut end to the other side, or turned round where it stands."""
+    mirrored = 2 * branch.low - branch.high
+    if 0 <= mirrored <= 100:
+        return Range(branch.low, mirrored, branch.unit)
     return Range(branch.high, branch.low, branch.unit)
 
 

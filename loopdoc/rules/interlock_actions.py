@@ -52,7 +52,7 @@ def interlock_action_unsafe(interlock: Interlock, plant: Plant) -> Iterator[Draf
             yield draft(
                 interlock.tag,
                 f"it {_DOES[position]} {element.tag}, whose safe position is {safe}",
-                remedy=f"write `{element.tag}: {safe}`, or correct the safe position after the hazard study",
+                remedy=f"write `{element.tag}: {_ordered(element, safe)}`, or correct the safe position after the hazard study",
                 at=action.origin.place(),
                 related=((element.origin.place("safe"), f"the safe position of {element.tag}, {safe}"),),
                 level=Level.ERROR if known(interlock.layer) == "safety" else Level.WARNING,
@@ -60,6 +60,14 @@ def interlock_action_unsafe(interlock: Interlock, plant: Plant) -> Iterator[Draf
     for action, element in moved:
         if need(action.position, f"what it does to {element.tag}") != "started":
             need(element.safe, f"the safe position of {element.tag}")
+
+
+def _ordered(element: FinalElement, safe: str | None) -> str:
+    """A safe position as an action orders it: a motor is started and stopped, a valve opened and closed."""
+    opens = _OPENING[safe or ""] > 0
+    if known(element.kind) in _MACHINES:
+        return "started" if opens else "stopped"
+    return "open" if opens else "closed"
 
 
 # ---------------------------------------------------------------- the controller above a tripped element
