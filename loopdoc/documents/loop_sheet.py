@@ -8,6 +8,7 @@ from dataclasses import dataclass, replace
 
 from markupsafe import Markup
 
+from loopdoc.documents import time_to_act_story
 from loopdoc.documents.basis import Basis, Page
 from loopdoc.documents.loop_drawing import drawn_loop
 from loopdoc.documents.loop_panels import (
@@ -52,6 +53,11 @@ MOST_FINDINGS = 4
 LEGIBLE = DENSITIES[:2]
 """Type sizes at which a page still takes the figure of the response."""
 
+TIME_TO_ACT = "Time to act"
+"""Words before the line of times from alarm to trip."""
+BESIDE_TIMES = "calculated with the loops in manual, no proof that an interlock is enough"
+"""The caution that the line has room for."""
+
 OVERFULL = "overfull"
 """Class of a sheet that no type size brings onto one page: it runs on, clear of a high title block."""
 
@@ -94,6 +100,8 @@ class SheetView:
     response: str = ""
     """Figure of the setpoint response; empty where there is none or no room."""
     response_words: str = ""
+    time_to_act: str = ""
+    """From each alarm to the trip behind it, in one line; empty where there is none or no room."""
     density: str = ""
     """Classes of the page."""
 
@@ -237,6 +245,18 @@ def _accepted_point(finding: Finding, own: str) -> Point:
 
 
 def _fitted(basis: Basis, loop: Loop, view: SheetView, height: float) -> SheetView:
+    """The sheet in the largest type that one page takes, with what else it leaves room for."""
+    fitted = _with_response(basis, loop, view, height)
+    times = time_to_act_story.sheet_line(basis.times, loop)
+    line = f"{times}; {BESIDE_TIMES}" if times else ""
+    size = next((density.size for density in DENSITIES if density.name == fitted.density), DENSITIES[-1].size)
+    if not line or line_count(f"{TIME_TO_ACT} {line}", PAGE_WIDTH, size) > 1:
+        return fitted
+    told = replace(fitted, time_to_act=line)
+    return told if sheet_height(told, size) <= height else fitted
+
+
+def _with_response(basis: Basis, loop: Loop, view: SheetView, height: float) -> SheetView:
     """The sheet in the largest type that one page takes, with the response where it leaves room for it."""
     response = calculated_response(basis.dynamics.loop(loop.tag))
     if response is not None:
@@ -262,7 +282,8 @@ def sheet_height(view: SheetView, size: float) -> float:
     height += max(_left_height(view, size), sum(_panel_height(panel, size) for panel in view.controller))
     for table in (*view.tables, *((view.revisions,) if view.revisions else ())):
         height += 1.2 * MM + _listed_height(table, PAGE_WIDTH, size)
-    lines = [f"{point.kind} ({point.rule}): {point.text}" for point in view.points]
+    lines = [f"{TIME_TO_ACT} {view.time_to_act}"] if view.time_to_act else []
+    lines += [f"{point.kind} ({point.rule}): {point.text}" for point in view.points]
     lines += [*filter(None, (view.more_points,)), *(f"HOLD    {line}" for line in view.holds)]
     height += 1.2 * MM if lines else 0.0
     height += sum(paragraph_height(line, PAGE_WIDTH, size, 1.2) + 0.4 * MM for line in lines)

@@ -205,7 +205,7 @@ def _when(plant: Plant, upset: str) -> str:
 def sheet_line(times: TimeToAct, loop: Loop) -> str:
     """The shortest time after each alarm of a loop in one line; empty where no trip follows."""
     return "; ".join(
-        f"{alarm_name(alarm.kind)} to {entry.interlock.tag} {_in_short(entry)}"
+        f"{alarm_name(alarm.kind)} alarm to {entry.interlock.tag}: {_in_short(entry)}"
         for alarm in loop.alarms.values()
         for entry in times.of(loop, alarm)
     )
