@@ -107,7 +107,7 @@ def channel_signal_mismatch(part: Loop | Instrument | FinalElement) -> Iterator[
     told, way, sort = _KINDS[kind]
     out = isinstance(part, FinalElement)
     if way != ("out" if out else "in"):
-        what = f"{channel.tag} is a final element" if out else f"{channel.tag} is a measurement"
+        what = "it is a final element" if out else "it is a measurement"
         yield draft(
             channel.tag,
             f"{what}, but its channel {channel.written} is {told}",

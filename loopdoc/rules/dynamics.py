@@ -98,7 +98,7 @@ def margin_low(controlled: ControlledLoop, dynamics: Dynamics, limits: Limits) -
     if faults:
         yield draft(
             controlled.tag,
-            f"its margins are low{_through(controlled, worst)}: {' and '.join(faults)}",
+            f"its margins are low{_through(controlled, worst)}: {'; '.join(faults)}",
             remedy="lower the gain, or lengthen the reset time",
             at=_gain_place(controlled.controller),
         )
@@ -144,8 +144,8 @@ def interval_too_slow(controlled: ControlledLoop, dynamics: Dynamics, limits: Li
     if above(turned, limits.interval_crossover):
         yield draft(
             controlled.tag,
-            f"executed every {interval}, it turns {turned:.2f} rad at its crossover of {crossover:.2g} rad/s between "
-            f"two executions, which costs {math.degrees(turned / 2):.0f} deg of phase; "
+            f"it is executed every {interval}, which is {turned:.2f} rad at its crossover of {crossover:.2g} rad/s and "
+            f"costs {math.degrees(turned / 2):.0f} deg of phase; "
             f"the limit is {limits.interval_crossover:g} rad",
             remedy=f"execute it every {duration(limits.interval_crossover / crossover)} or less, or tune it slower",
             at=controlled.controller.origin.place("interval"),

@@ -115,7 +115,7 @@ def mode_not_permitted(part: ControlledLoop | Interlock, plant: Plant) -> Iterat
     if normal in _CHOSEN and normal not in permitted:
         yield draft(
             part.tag,
-            f"its normal mode is {normal}, but the permitted ones are {' and '.join(permitted)}",
+            f"its normal mode is {normal}, but {_only(permitted)} permitted",
             remedy=f"permit {normal}, or write another normal mode",
             at=modes.origin.place("normal"),
             related=((modes.origin.place("permitted"), "the permitted modes"),),
@@ -125,7 +125,7 @@ def mode_not_permitted(part: ControlledLoop | Interlock, plant: Plant) -> Iterat
     if bad and mode in _CHOSEN and mode not in permitted:
         yield draft(
             part.tag,
-            f"on a bad measurement it goes to {mode}, but the permitted modes are {' and '.join(permitted)}",
+            f"on a bad measurement it goes to {mode}, but {_only(permitted)} permitted",
             remedy=f"permit {mode}, or write another mode for a bad measurement",
             at=bad.origin.place("mode"),
             related=((modes.origin.place("permitted"), "the permitted modes"),),
@@ -144,12 +144,17 @@ def _forced(interlock: Interlock, plant: Plant) -> Iterator[Draft]:
         if modes and modes.permitted and mode in _CHOSEN and mode not in modes.permitted:
             yield draft(
                 interlock.tag,
-                f"it forces {action.tag} to {mode}, but the permitted modes there are {' and '.join(modes.permitted)}",
+                f"it forces {action.tag} to {mode}, but {_only(modes.permitted)} permitted there",
                 remedy=f"permit {mode} at {action.tag}, or force another mode",
                 at=action.origin.place("mode"),
                 related=((modes.origin.place("permitted"), f"the permitted modes of {action.tag}"),),
                 level=Level.WARNING,
             )
+
+
+def _only(permitted: tuple[str, ...]) -> str:
+    """The permitted modes as the subject of a sentence, with its verb."""
+    return f"only {' and '.join(permitted)} {'is' if len(permitted) == 1 else 'are'}"
 
 
 def _permitted(modes: Modes) -> tuple[str, ...]:
@@ -197,7 +202,7 @@ def bad_measurement_undefined(controlled: ControlledLoop) -> Iterator[Draft]:
     if mode in _COMMANDING:
         yield draft(
             controlled.tag,
-            f"on a bad measurement it goes to {mode}, and so goes on controlling by it",
+            f"on a bad measurement it goes to {mode}, and goes on controlling by what it reads",
             remedy="write `mode: manual`, with the output to hold or to go to",
             at=policy.origin.place("mode"),
         )

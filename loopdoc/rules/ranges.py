@@ -404,7 +404,7 @@ def operating_poor_resolution(loop: Loop, limits: Limits) -> Iterator[Draft]:
     band = measured_range(loop)
     operating = need(loop.operating, "the operating band")
     key = "low" if operating.low is not None else "normal"
-    need(getattr(operating, key), f"the operating {key}")
+    need(getattr(operating, key), f"operating {key}")
     for lowest in readings(operating, (key,), scale_in(band.unit, loop), "operating"):
         share = 100 * (lowest.value - band.low) / band.span
         if below(share, limits.low_flow):
@@ -412,7 +412,7 @@ def operating_poor_resolution(loop: Loop, limits: Limits) -> Iterator[Draft]:
             yield draft(
                 loop.tag,
                 f"operating {lowest.name}, {lowest.told}, is {share:.3g} % of the range, {band}, where the "
-                f"differential pressure is {max(share, 0) ** 2 / 100:.2g} % of its own; "
+                f"differential pressure is {max(share, 0) ** 2 / 100:.2g} % of its own span; "
                 f"the limit is {limits.low_flow:g} %",
                 remedy=f"let the range end at {most}, add a transmitter for low flow, or choose another kind of meter",
                 at=lowest.place,

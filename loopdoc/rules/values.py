@@ -52,6 +52,16 @@ def duration(seconds: float) -> str:
     return f"{seconds / 60:.2g} min" if abs(seconds) < 6000 else f"{seconds / 3600:.2g} h"
 
 
+def duration_beside(seconds: float, written: Quantity) -> str:
+    """A calculated time in the unit of a written one, with as many digits as it takes to tell the two apart."""
+    value = seconds / Quantity(1.0, written.unit).to("s")
+    for digits in range(3 if value >= 100 else 2, 18):
+        shown = float(f"{value:.{digits}g}")
+        if shown != written.value and (shown < written.value) == (value < written.value):
+            break
+    return str(Quantity(shown, written.unit))
+
+
 @dataclass(frozen=True, slots=True)
 class Scale:
     """The unit in which values are compared, and whether they are differences of readings."""
