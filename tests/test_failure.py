@@ -494,3 +494,15 @@ def test_a_trip_on_the_failed_transmitter_does_not_count(tarn: Plant) -> None:
     # FT-1017 too high: the pump slows down. IS-1002 watches the circulation by the same FT-1017, and the level.
     (told,) = effect(tarn, "FIC-1017", Failure.MEASUREMENT_HIGH).consequences
     assert (told.direction, told.hazardous, told.alarms, told.trips) == (-1, True, (), ())
+
+
+def test_an_alarm_beyond_what_the_primary_can_ask_does_not_come(tarn: Plant) -> None:
+    # PT-3010 too low: PIC-3010 asks for hot oil up to its output limit of 285 t/h; FIC-3011 alarms at 315 t/h.
+    told = {one.loop.tag: one for one in effect(tarn, "PIC-3010", Failure.MEASUREMENT_LOW).consequences}
+    assert told["FIC-3011"].direction == 1
+    assert told["FIC-3011"].alarms == ()
+    assert [(one.loop.tag, one.alarm.kind) for one in told["PIC-3010"].alarms] == [("PIC-3015", "high")]
+    # FT-3011 too low: nothing holds the true flow back, but its alarm hangs on the failed transmitter. LT-1010 too
+    # high: LIC-1010 asks for no less than 2 t/h; FIC-1002 alarms on the way, at 6 t/h.
+    told = {one.loop.tag: one for one in effect(tarn, "LIC-1010", Failure.MEASUREMENT_HIGH).consequences}
+    assert [one.alarm.kind for one in told["FIC-1002"].alarms] == ["low"]

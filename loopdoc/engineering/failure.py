@@ -49,7 +49,8 @@ from loopdoc.engineering.spreading import (
     upward,
     ways_to,
 )
-from loopdoc.register.model import FinalElement, Function, Hold, Instrument, Interlock, Loop, Measurement, known
+from loopdoc.register.model import Alarm, FinalElement, Function, Hold, Instrument, Interlock, Loop, Measurement, known
+from loopdoc.register.quantity import Quantity
 
 _ELECTRIC = ("variable-speed drive", "motor", "heater bank")
 _LESS, _MORE = ("closed", "stopped"), ("open", "started")
@@ -92,8 +93,8 @@ class Consequence:
     hazardous: bool | None
     """Whether that is the direction that hurts; None where the direction or the hazard is not known."""
     alarms: tuple[LoopAlarm, ...]
-    """Alarms on it, by a sensor that has not failed, in the direction in which it goes. Where it is left to
-    itself: in the directions that hurt."""
+    """Alarms on it, by a sensor that has not failed, in the direction in which it goes, and on the way to what its
+    primary can ask of it. Where it is left to itself: in the directions that hurt."""
     trips: tuple[Trip, ...]
     """The same for initiators of interlocks, of a safety system's own transmitters too, where the interlock moves
     a final element that has not failed."""
@@ -423,6 +424,8 @@ class _Effects:
             for one in (loop, *self._analysis.same_quantity(loop))
             if transmitter_of(one) is not None and transmitter_of(one) not in failed
         ]
+        # A secondary follows no further than its primary may ask.
+        asked = {move.loop.tag: move.limit for move in moves.setpoints if not move.instead}
         own = transmitter_of(loop)
         sensors = [tag for tag in (own, *self._analysis.sensors_beside(loop)) if tag and tag not in failed]
         alarms = tuple(
@@ -430,7 +433,7 @@ class _Effects:
             for sign in watched
             for watcher in watchers
             for kind in (("high", "high_high") if sign > 0 else ("low", "low_low"))
-            if kind in watcher.alarms
+            if kind in watcher.alarms and _comes(watcher.alarms[kind], asked.get(loop.tag), sign)
         )
         trips = tuple(
             trip
@@ -494,6 +497,14 @@ def _forced(controlled: ControlledLoop, mode: str, written: str) -> Direction:
     if written:
         return Undecided(f"whether {written} is more or less than before depends on the load")
     return Undecided("what the controller does with a bad measurement is not given")
+
+
+def _comes(alarm: Alarm, asked: Quantity | None, side: int) -> bool:
+    """Whether an alarm comes before a secondary is where its primary can ask it to go; taken so where not known."""
+    limit = known(alarm.limit)
+    if limit is None or asked is None or limit.unit.kind != asked.unit.kind:
+        return True
+    return side * (asked.to(limit.unit.symbol) - limit.value) >= 0
 
 
 def _trips_alone(trip: Trip) -> bool:
