@@ -133,10 +133,10 @@ def _chain_lines(dynamics: ChainDynamics, comparison: Comparison | NotSimulated)
             f"{level.loop.tag:12}{quoted_gain_margin(margins):>13}{_shown(margins.phase_margin_deg, 3) + ' deg':>14}"
             f"{_shown(margins.max_sensitivity):>7}{_shown(margins.crossover_rad_per_s) + ' rad/s':>16}{state}"
         )
-    if any(margins.sampled for margins in dynamics.margins):
-        lines.append(
-            "sampled: margins of the loop as it is executed; of the others an interval counts as half in dead time"
-        )
+    sampled = [margins.sampled for margins in dynamics.margins]
+    if any(sampled):
+        others = "" if all(sampled) else "; in the others an interval counts as half of itself in dead time"
+        lines.append(f"sampled: margins of the loop as it is executed{others}")
     lines.extend(
         f"{level.loop.tag}: the gain margin would need the sampled loop: {margins.not_quoted}"
         for level, margins in zip(chain.levels, dynamics.margins, strict=True)
