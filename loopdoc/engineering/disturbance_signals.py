@@ -91,11 +91,11 @@ class DisturbanceSignals:
         """(k,) signal of the disturbed ``columns`` at a step [%]; steps are asked for one after the other, from 1."""
         row = (step - 1) % self.block
         if row == 0:
-            self._rows = self._next_block()
+            self._rows = self.next_block()
         found: FloatArray = self._rows[row]
         return found
 
-    def _next_block(self) -> FloatArray:
+    def next_block(self) -> FloatArray:
         """(block, k) signal of the next steps [%]."""
         signal = np.zeros((self.block, self.columns.stop - self.columns.start))
         for members in self._members:
@@ -154,6 +154,7 @@ def known_throughout(signals: DisturbanceSignals, columns: int, steps: int) -> K
     """Return signals, not yet asked for, with all their steps."""
     rows = np.zeros((steps + 1, columns))
     rows[0] = signals.at_start(columns)
-    for step in range(1, steps + 1):
-        rows[step, signals.columns] = signals.at(step)
+    for first in range(1, steps + 1, signals.block):
+        block = rows[first : first + signals.block, signals.columns]
+        block += signals.next_block()[: len(block)]
     return KnownSignals(rows)

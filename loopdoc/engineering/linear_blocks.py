@@ -20,8 +20,6 @@ from loopdoc.engineering.scanning import ControllerArrays, Engine, Traces
 _STEPS = 64
 # Fewer blocks than this do not repay the making of the matrix.
 _BLOCKS_WORTH = 6
-# Dead times of so many steps would make the matrix too large.
-_MEMORY_MOST = 1000
 
 
 def _intervals(engine: Engine) -> list[int] | None:
@@ -122,14 +120,15 @@ class LinearBlocks:
             np.copyto(engine.loops.output[loop], next(values))
             np.copyto(memory.output, engine.loops.output[loop])
 
-    @staticmethod
-    def _windows(engine: Engine) -> list[FloatArray]:
-        """The past inputs of each process that its dead time still holds, as views."""
+    def _windows(self, engine: Engine) -> list[FloatArray]:
+        """The past inputs of each process that come out of its dead time within a block, as views."""
         sources = ((engine.travel, engine.travel_pad), *zip(engine.measured, engine.pads, strict=True))
-        return [
-            source[pad + engine.step - int(plant.whole[0]) - 1 : pad + engine.step + 1]
-            for (source, pad), plant in zip(sources, engine.plants, strict=False)
-        ]
+        windows = []
+        for (source, pad), plant in zip(sources, engine.plants, strict=False):
+            now = pad + engine.step
+            first = now - int(plant.whole[0]) - 1
+            windows.append(source[first : min(first + self.steps + 2, now + 1)])
+        return windows
 
     def _memory(self, engine: Engine) -> FloatArray:
         return np.concatenate([self._short_memory(engine), *self._windows(engine)])
@@ -198,7 +197,6 @@ class Run:
             and all(one <= _STEPS or one >= 2 * _STEPS for one in every)
             and not engine.element.loose
             and engine.room >= _BLOCKS_WORTH * _STEPS
-            and sum(int(plant.whole[0]) for plant in engine.plants) <= _MEMORY_MOST
             else None
         )
 
