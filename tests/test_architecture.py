@@ -149,7 +149,7 @@ def test_a_check_that_asks_for_no_dynamics_starts_without_numpy() -> None:
 
 def test_a_check_of_a_plant_without_models_starts_without_numpy(tmp_path: Path) -> None:
     register = (ROOT / "tests" / "rules" / "base-register.yaml").read_text("utf-8")
-    without = re.sub(r"\n    process:( \{.*\}|\n      branches:(\n        .*)*)", "", register)
+    without = re.sub(r"\n    (?:disturbances: \{.*\}|process:( \{.*\}|\n      branches:(\n        .*)*))", "", register)
     assert "process: {" not in without
     assert "branches" not in without
     (tmp_path / "register.yaml").write_text(without, "utf-8")

@@ -13,7 +13,8 @@ from pathlib import Path
 import pytest
 
 from loopdoc.engineering.direction import Undecided
-from loopdoc.engineering.failure import Failure, FailureAnalysis, FailureEffect, FaultReading, fault_reading
+from loopdoc.engineering.failure import Failure, FailureAnalysis, FailureEffect
+from loopdoc.engineering.faults import FaultReading, fault_reading
 from loopdoc.engineering.pairing import Plant
 from loopdoc.register.load import Loaded, load
 

@@ -8,7 +8,8 @@ from dataclasses import dataclass
 from loopdoc.documents.naming import Names, moves, moves_by_itself, power_of
 from loopdoc.documents.wording import NO_BREAK, as_written, listed, sentence, sentences, value
 from loopdoc.engineering.direction import Undecided
-from loopdoc.engineering.failure import Consequence, Failure, FailureAnalysis, FailureEffect, fault_reading
+from loopdoc.engineering.failure import Consequence, Failure, FailureAnalysis, FailureEffect
+from loopdoc.engineering.faults import fault_reading
 from loopdoc.engineering.pairing import ControlledLoop, Plant, Scheme
 from loopdoc.engineering.spreading import PASSIVE_MODES, ElementMove, SetpointMove, normal_mode, transmitter_of
 from loopdoc.register.model import FinalElement, Function, Loop, known

@@ -23,7 +23,8 @@ from loopdoc.documents.schedules import (
 from loopdoc.documents.whereabouts import anchor, natural, unit_numbers, unit_of
 from loopdoc.documents.wording import NO_BREAK, as_written, counted, grouped, listed, sentence, upper_first, value
 from loopdoc.engineering.direction import Undecided
-from loopdoc.engineering.failure import Consequence, Failure, FailureAnalysis, FailureEffect, fault_reading
+from loopdoc.engineering.failure import Consequence, Failure, FailureAnalysis, FailureEffect
+from loopdoc.engineering.faults import fault_reading
 from loopdoc.engineering.spreading import PASSIVE_MODES, ElementMove, normal_mode, transmitter_of
 from loopdoc.register.model import Loop, known
 

@@ -31,6 +31,7 @@ from enum import StrEnum
 from functools import cached_property
 
 from loopdoc.engineering.direction import Undecided
+from loopdoc.engineering.faults import ELECTRIC, LESS, MORE, fault_reading, without_motive_power, without_signal
 from loopdoc.engineering.pairing import ControlledLoop, LoopAlarm, Plant, Trip, measured_quantity
 from loopdoc.engineering.spreading import (
     PASSIVE_MODES,
@@ -49,11 +50,8 @@ from loopdoc.engineering.spreading import (
     upward,
     ways_to,
 )
-from loopdoc.register.model import Alarm, FinalElement, Function, Hold, Instrument, Interlock, Loop, Measurement, known
+from loopdoc.register.model import Alarm, Function, Instrument, Interlock, Loop, known
 from loopdoc.register.quantity import Quantity
-
-_ELECTRIC = ("variable-speed drive", "motor", "heater bank")
-_LESS, _MORE = ("closed", "stopped"), ("open", "started")
 
 
 class Failure(StrEnum):
@@ -72,16 +70,6 @@ class Failure(StrEnum):
     OUTPUT_LOST = "output signal lost"
     MOTIVE_POWER_LOST = "motive power lost"
     CONTROL_POWER_LOST = "control system power lost"
-
-
-@dataclass(frozen=True, slots=True)
-class FaultReading:
-    """How the fault of a transmitter shows in the control system."""
-
-    reads: str
-    """reads high, reads low or holds, as the register says."""
-    noticed: bool
-    """Whether the control system can tell it from a good reading."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -136,21 +124,6 @@ class FailureEffect:
     """Interlocks that the failed reading itself sets off, alone."""
     opposing: tuple[Interlock, ...]
     """Interlocks with other sensors that would move a final element back, should their limits be reached."""
-
-
-def fault_reading(measurement: Measurement | Hold | None) -> FaultReading | Undecided:
-    """How a transmitter's own fault shows, by its signal and by what it does on a fault (NAMUR NE 43)."""
-    written = known(measurement)
-    on_fault = known(written.on_fault) if written else None
-    if written is None or on_fault not in ("reads high", "reads low", "holds"):
-        return Undecided("what the transmitter does when it fails is not given")
-    if on_fault == "holds":
-        return FaultReading(on_fault, noticed=False)
-    signal = known(written.signal)
-    if signal is None:
-        return Undecided("the transmitter's signal is not given")
-    beyond = ("4-20 mA", "1-5 V", "digital", "0-20 mA") if on_fault == "reads high" else ("4-20 mA", "1-5 V", "digital")
-    return FaultReading(on_fault, noticed=signal in beyond)
 
 
 class FailureAnalysis:
@@ -330,14 +303,14 @@ class _Effects:
 
     def _final_elements(self) -> Iterator[FailureEffect]:
         ends = final_elements_of(self._plant, self._loop.tag)
-        unpowered = tuple(ElementMove(element, *_without_signal(element)) for element in ends)
+        unpowered = tuple(ElementMove(element, *without_signal(element)) for element in ends)
         for move in unpowered:
             yield self._elements_lost(Failure.OUTPUT_LOST, (move,), (move.element.tag,))
         for electric in (False, True):
             sort = tuple(
-                ElementMove(element, *_without_motive_power(element))
+                ElementMove(element, *without_motive_power(element))
                 for element in ends
-                if (known(element.kind) in _ELECTRIC) == electric
+                if (known(element.kind) in ELECTRIC) == electric
             )
             if sort:
                 tags = tuple(move.element.tag for move in sort)
@@ -478,7 +451,7 @@ class _Effects:
         for move in moves.elements:
             if isinstance(move.direction, Undecided) or move.direction == 0:
                 continue
-            back = _LESS if move.direction > 0 else _MORE
+            back = LESS if move.direction > 0 else MORE
             for interlock in self._analysis.interlocks_on.get(move.element.tag, ()):
                 shares = any(
                     trip.interlock is interlock for sensor in failed for trip in self._analysis.trips_on(sensor)
@@ -527,34 +500,3 @@ def _within_reach(trip: Trip) -> bool:
     if known(trip.initiator.direction) == "above":
         return max(reach.low, reach.high) > limit.value
     return min(reach.low, reach.high) < limit.value
-
-
-def _without_signal(element: FinalElement) -> tuple[Direction, str]:
-    signal, opens_on = known(element.signal), known(element.opens_on)
-    if signal is None or signal == "digital":
-        told = "its signal is not given" if signal is None else "a digital signal has no low end"
-        return Undecided(f"where {element.tag} goes without its signal does not follow: {told}"), ""
-    kind = known(element.kind)
-    if signal == "contact" and kind in _ELECTRIC:
-        return -1, "stopped"
-    if kind in ("variable-speed drive", "motor"):
-        # Whether it stops without its speed signal or falls to its lowest speed is set in the drive.
-        if opens_on == "rising signal":
-            return -1, ""
-        return Undecided(f"what {element.tag} does without its signal is set in the drive"), ""
-    if opens_on == "rising signal":
-        return -1, "stopped" if kind == "heater bank" else "closed"
-    if opens_on == "falling signal":
-        return 1, "open"
-    return Undecided(f"{element.tag} does not say on which signal it opens"), ""
-
-
-def _without_motive_power(element: FinalElement) -> tuple[Direction, str]:
-    fails = known(element.fails)
-    if fails in _LESS:
-        return -1, fails
-    if fails == "open":
-        return 1, fails
-    if fails == "last":
-        return 0, fails
-    return Undecided(f"where {element.tag} fails to is not given"), ""
