@@ -630,3 +630,22 @@ def test_the_blank_of_the_demo_is_read_back_whole(tmp_path: Path) -> None:
     assert [(one.tag, list(one.readings)) for one in found if isinstance(one, LoopRecord)] == [
         ("PIC-2021", ["measurement 0 %"])
     ]
+
+
+def test_a_check_record_carries_its_results_and_is_stale_when_others_come(folder: Path, tmp_path: Path) -> None:
+    recorded(tmp_path, folder, GOOD, "--write")
+    out, err = io.StringIO(), io.StringIO()
+    issued = tmp_path / "issued"
+    arguments = ["issue", str(folder), "--out", str(issued), "--documents", "check-record", "--formats", "pdf"]
+    assert run([*arguments, "--jobs", "1"], out, err) == 0, err.getvalue()
+
+    def attested() -> str:
+        told = io.StringIO()
+        run(["attest", str(issued / "check-records" / "TIC-2014.pdf"), str(folder)], told, io.StringIO())
+        return told.getvalue()
+
+    assert "yes          the pages are those that it gives, byte for byte" in attested()
+    assert "stale" not in attested()
+    recorded(tmp_path, folder, GOOD.replace("2026-11-30", "2027-01-15"), "--write")
+    assert "yes          the pages are those that it gives, byte for byte" in attested()
+    assert "stale: results of loop checks have been added or changed since" in attested()

@@ -18,11 +18,19 @@ from pypdf.errors import PyPdfError
 
 from loopdoc import __version__
 from loopdoc.documents.basis import Basis, basis_of
-from loopdoc.documents.enclosures import REGISTER_FOLDER, STATEMENT_NAME, Statement, statement
+from loopdoc.documents.enclosures import (
+    REGISTER_FOLDER,
+    RESULTS_KIND,
+    RESULTS_NAME,
+    STATEMENT_NAME,
+    Statement,
+    statement,
+)
 from loopdoc.documents.issue import KINDS, pdf_of
 from loopdoc.documents.titleblock import fingerprint
 from loopdoc.register.files import HeldFiles
 from loopdoc.register.load import Unreadable, load_files
+from loopdoc.register.records import LoopRecord, by_tag, read_records
 
 # What a damaged file lacks is answered here, and need not be told on the terminal as well.
 logging.getLogger("pypdf").setLevel(logging.CRITICAL)
@@ -38,6 +46,8 @@ class Enclosed:
     statement: Statement
     sources: Mapping[str, bytes]
     """Files of the register by name, the root file first."""
+    results: bytes
+    """Results of loop checks that the document shows; empty where there are none."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -83,7 +93,7 @@ def enclosed_in(content: bytes) -> Enclosed | NotIssued:
     }
     if found.root not in sources:
         return NotIssued(f"the register's file `{found.root}` is missing in it")
-    return Enclosed(found, {found.root: sources.pop(found.root), **sources})
+    return Enclosed(found, {found.root: sources.pop(found.root), **sources}, files.get(RESULTS_NAME, b""))
 
 
 class Attestation:
@@ -92,7 +102,7 @@ class Attestation:
     def __init__(self, register: Basis | None = None) -> None:
         self._register = register
         self._current: dict[str, dict[tuple[str, str], Statement]] = {}
-        self._issued_from: dict[str, Basis | Unreadable] = {}
+        self._issued_from: dict[tuple[str, bytes], Basis | Unreadable] = {}
 
     def attest(self, content: bytes) -> Attested | NotIssued:
         """Find out about one file.
@@ -138,10 +148,12 @@ class Attestation:
         return Answer.NO, "its bytes are not those that the register inside gives: it was altered or saved anew"
 
     def _basis_of(self, enclosed: Enclosed) -> Basis | Unreadable:
-        key = fingerprint(enclosed.sources)
+        key = (fingerprint(enclosed.sources), enclosed.results)
         if key not in self._issued_from:
             loaded = load_files(HeldFiles(enclosed.sources), enclosed.statement.root)
-            self._issued_from[key] = loaded if isinstance(loaded, Unreadable) else basis_of(loaded)
+            read = read_records(enclosed.results, RESULTS_NAME) if enclosed.results else ()
+            records = by_tag(record for record in read if isinstance(record, LoopRecord))
+            self._issued_from[key] = loaded if isinstance(loaded, Unreadable) else basis_of(loaded, records)
         return self._issued_from[key]
 
     def _still_current(self, enclosed: Enclosed, content: bytes) -> tuple[Answer, str]:
@@ -151,10 +163,14 @@ class Attestation:
         now = self._statements(self._register, told.kind).get((told.folder, told.name))
         if now is None:
             return Answer.NO, "the register no longer has what this document tells of"
-        if now.fingerprint == told.fingerprint or now.content == told.content:
+        same_register = now.fingerprint == told.fingerprint
+        # What a check record shows of the last results is no part of the register.
+        if now.content == told.content or (same_register and told.kind != RESULTS_KIND):
             return Answer.YES, ""
         if told.program != now.program:
             return Answer.NOT_CHECKED, f"it was issued by {told.program}, which may word the same facts otherwise"
+        if same_register:
+            return Answer.NO, "stale: results of loop checks have been added or changed since"
         if now.revision != told.revision:
             return Answer.NO, f"stale: the register is at revision {now.revision}, the document at {told.revision}"
         return Answer.NO, f"stale: the register has changed since, still at revision {now.revision}"

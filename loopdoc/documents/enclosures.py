@@ -7,7 +7,7 @@ from __future__ import annotations
 
 import hashlib
 import json
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping
 from dataclasses import asdict, dataclass, replace
 
 from loopdoc import __version__
@@ -15,10 +15,15 @@ from loopdoc.documents.basis import Basis, Page
 from loopdoc.documents.pdf import Enclosure
 from loopdoc.documents.rendering import render
 from loopdoc.documents.titleblock import fingerprint
+from loopdoc.register.records import records_text
 
 STATEMENT_NAME = "loopdoc.json"
 REGISTER_FOLDER = "register/"
 """Before the names of the register's files, so that none of them can be taken for the statement."""
+RESULTS_KIND = "check-record"
+"""The kind of document that shows results of loop checks."""
+RESULTS_NAME = "results.yaml"
+"""Results of loop checks that a check record shows; they are no part of the register and its fingerprint."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -75,8 +80,19 @@ def enclosures(basis: Basis, kind: str, page: Page) -> tuple[Enclosure, ...]:
             Enclosure(REGISTER_FOLDER + name, basis.sources[name], "application/yaml", f"Register file {name}")
             for name in sorted(basis.sources)
         ),
+        *_results(basis, kind, page),
         Enclosure(STATEMENT_NAME, told.encode(), "application/json", "What this document is and was made from"),
     )
+
+
+def _results(basis: Basis, kind: str, page: Page) -> Iterator[Enclosure]:
+    """What a check record shows of the last checks: its own loop's, and those of the other loops of its cascade."""
+    if kind != RESULTS_KIND:
+        return
+    tags = dict.fromkeys([page.name, *(tag for tag, _ in page.view["record"].order)])
+    shown = [record for tag in tags for record in basis.records.get(tag, ())]
+    if shown:
+        yield Enclosure(RESULTS_NAME, records_text(shown).encode(), "application/yaml", "Results of loop checks")
 
 
 def _content(page: Page) -> str:

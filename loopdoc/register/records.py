@@ -117,7 +117,7 @@ def read_records(content: bytes, name: str) -> tuple[LoopRecord, ...] | tuple[Re
 
 def load_records(folder: Path) -> dict[str, tuple[LoopRecord, ...]] | tuple[RecordFault, ...]:
     """The checks kept beside the register in a folder, by tag, each loop's oldest first; or what cannot be read."""
-    found: dict[str, list[LoopRecord]] = {}
+    found: list[LoopRecord] = []
     faults: list[RecordFault] = []
     names = sorted(folder.joinpath(FOLDER).glob("*.yaml"))
     if len(names) > MAX_FILES:
@@ -133,10 +133,16 @@ def load_records(folder: Path) -> dict[str, tuple[LoopRecord, ...]] | tuple[Reco
             if isinstance(one, RecordFault):
                 faults.append(one)
             else:
-                found.setdefault(one.tag, []).append(one)
-    if faults:
-        return tuple(faults)
-    return {tag: tuple(sorted(records, key=lambda record: record.date)) for tag, records in found.items()}
+                found.append(one)
+    return tuple(faults) or by_tag(found)
+
+
+def by_tag(records: Iterable[LoopRecord]) -> dict[str, tuple[LoopRecord, ...]]:
+    """Checks by the tag of their loop, each loop's oldest first."""
+    found: dict[str, list[LoopRecord]] = {}
+    for record in records:
+        found.setdefault(record.tag, []).append(record)
+    return {tag: tuple(sorted(checks, key=lambda record: record.date)) for tag, checks in found.items()}
 
 
 def _record(file: TextFile, index: int, check: dict[str, Any], faults: list[RecordFault]) -> LoopRecord:
