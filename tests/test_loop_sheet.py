@@ -110,7 +110,7 @@ class SetPage:
 
     def broken_words(self) -> set[str]:
         """Words on the page that are no words of the text: torn apart because a cell is too narrow."""
-        words = set(text_of(self.source).split(" "))
+        words = {*text_of(self.source).split(" "), "1", "of"}  # 1 of 1: the page number stands in no source
         words |= {piece for word in words for piece in re.findall(r"[^-/]+[-/]?|[-/]", word)}
         shown = {word for text in self.texts for word in text[4].strip().split(" ")}
         return {word for word in shown if word and word not in words}

@@ -178,7 +178,7 @@ def _view(basis: Basis, loop: Loop, document: Document) -> SheetView:
             *(_open_point(finding, loop.tag) for finding in findings[:MOST_FINDINGS]),
             *(_accepted_point(finding, loop.tag) for finding in accepted),
         ),
-        more_points=f"{more} more findings about this loop stand in the index of documents" if more > 0 else "",
+        more_points=_more(more),
         holds=tuple(hold_lines(plant, {*tags, *(interlock.tag for interlock in interlocks)}, loop.tag)),
         revisions=revision_table(document.history[:REVISIONS]),
     )
@@ -222,6 +222,14 @@ def _commands(plant: Plant, tag: str) -> str:
     if not ends:
         return DASH
     return f"{ends} through {through}" if through else ends
+
+
+def _more(number: int) -> str:
+    """Where the findings stand for which a sheet has no room; empty where it tells all."""
+    if number < 1:
+        return ""
+    told = "1 more finding about this loop stands" if number == 1 else f"{number} more findings about this loop stand"
+    return f"{told} in the index of documents"
 
 
 def _open_point(finding: Finding, own: str) -> Point:

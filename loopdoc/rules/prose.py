@@ -12,6 +12,7 @@ from loopdoc.register.pointer import POINTER
 from loopdoc.register.tag_grammar import TagGrammar
 from loopdoc.rules.references import Names, defined_tags
 
+_DIGIT = re.compile(r"\d")
 _WORD = re.compile(r"[^\W_](?:[\w./-]*\w)?")
 
 
@@ -39,8 +40,9 @@ class Prose:
     @property
     def words(self) -> tuple[str, ...]:
         """Words outside the braces that hold a digit, as every tag does; once each, in their order."""
-        plain = POINTER.sub(" ", self.text)
-        return tuple(dict.fromkeys(word for word in _WORD.findall(plain) if any(map(str.isdigit, word))))
+        plain = POINTER.sub(" ", self.text) if "{" in self.text else self.text
+        likely = (piece for piece in plain.split() if not piece.isalpha() and _DIGIT.search(piece))
+        return tuple(dict.fromkeys(word for piece in likely for word in _WORD.findall(piece) if _DIGIT.search(word)))
 
 
 @dataclass(frozen=True, slots=True)
