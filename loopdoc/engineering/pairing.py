@@ -288,6 +288,8 @@ class Plant:
             for target in targets:
                 neighbours.setdefault(tag, set()).add(target)
                 neighbours.setdefault(target, set()).add(tag)
+        functions = {tag: index for index, tag in enumerate(self.register.functions)}
+        elements = {tag: index for index, tag in enumerate(self.register.final_elements)}
         seen: set[str] = set()
         schemes = []
         for first in self.register.loops:
@@ -301,14 +303,22 @@ class Plant:
                     waiting.append(tag)
             seen |= together
             register = self.register
-            loops = [loop for tag, loop in register.loops.items() if tag in together]
+            loops = [
+                register.loops[tag] for tag in sorted(together & register.loops.keys(), key=self.position.__getitem__)
+            ]
             # A loop that commands more levels stands further out; the order of the register decides among equals.
             loops.sort(key=lambda loop: -self.depth(loop.tag))
             schemes.append(
                 Scheme(
                     tuple(loops),
-                    tuple(part for tag, part in register.functions.items() if tag in together),
-                    tuple(part for tag, part in register.final_elements.items() if tag in together),
+                    tuple(
+                        register.functions[tag]
+                        for tag in sorted(together & functions.keys(), key=functions.__getitem__)
+                    ),
+                    tuple(
+                        register.final_elements[tag]
+                        for tag in sorted(together & elements.keys(), key=elements.__getitem__)
+                    ),
                 )
             )
         return tuple(schemes)

@@ -16,7 +16,7 @@ from functools import cached_property
 from typing import TYPE_CHECKING
 
 from loopdoc.engineering.pairing import Plant, Trip, measured_quantity, normal_value
-from loopdoc.register.model import Alarm, Interlock, Loop, Measurement, known, seconds
+from loopdoc.register.model import Alarm, Instrument, Interlock, Loop, Measurement, known, seconds
 from loopdoc.register.quantity import Quantity
 from loopdoc.register.units import UnitError
 
@@ -26,6 +26,9 @@ if TYPE_CHECKING:
 _SIDES = {"high": 1, "high_high": 1, "low": -1, "low_low": -1}
 _VOTING = re.compile("([1-9])oo[1-9]")
 _SIGNS = {"above": 1, "below": -1}
+
+_Measured = str | tuple[str, str, str]
+"""A transmitter, or a quantity."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -100,7 +103,14 @@ class TimeToAct:
 
     def of(self, loop: Loop, alarm: Alarm) -> tuple[AlarmToTrip, ...]:
         """What follows an alarm: one entry for each interlock that it precedes."""
-        return tuple(found for found in self.all if found.loop is loop and found.alarm is alarm)
+        return self._by_alarm.get((loop.tag, alarm.kind), ())
+
+    @cached_property
+    def _by_alarm(self) -> dict[tuple[str, str], tuple[AlarmToTrip, ...]]:
+        found: dict[tuple[str, str], list[AlarmToTrip]] = {}
+        for entry in self.all:
+            found.setdefault((entry.loop.tag, entry.alarm.kind), []).append(entry)
+        return {key: tuple(entries) for key, entries in found.items()}
 
     @cached_property
     def all(self) -> tuple[AlarmToTrip, ...]:
@@ -129,14 +139,28 @@ class TimeToAct:
 
     def _watching(self, loop: Loop) -> Iterator[Trip]:
         """The initiators that measure what the loop measures."""
-        own, transmitter = measured_quantity(loop), _transmitter(known(loop.measurement))
-        for trip in self._plant.trips:
+        at = {number for key in _measured(loop, known(loop.measurement)) for number in self._trips_on.get(key, ())}
+        return (self._plant.trips[number] for number in sorted(at))
+
+    @cached_property
+    def _trips_on(self) -> dict[_Measured, list[int]]:
+        """Numbers of the trips on each transmitter and on each quantity."""
+        found: dict[_Measured, list[int]] = {}
+        for number, trip in enumerate(self._plant.trips):
             part = trip.instrument or trip.loop
-            if part is None:
-                continue
-            same = transmitter is not None and _transmitter(trip.measurement) == transmitter
-            if same or (own is not None and measured_quantity(part) == own):
-                yield trip
+            for key in _measured(part, trip.measurement) if part else ():
+                found.setdefault(key, []).append(number)
+        return found
+
+    @cached_property
+    def _moved_on(self) -> dict[_Measured, Loop]:
+        """The first loop of the register with upsets on each transmitter and for each quantity."""
+        found: dict[_Measured, Loop] = {}
+        for loop in self._plant.register.loops.values():
+            if self._has_upsets(loop):
+                for key in _measured(loop, known(loop.measurement)):
+                    found.setdefault(key, loop)
+        return found
 
     def _pair(
         self, loop: Loop, alarm: Alarm, side: int, limit: Quantity, trips: tuple[Trip, ...]
@@ -179,12 +203,9 @@ class TimeToAct:
         """The loop itself where the register says what moves it, else one that measures the same quantity."""
         if self._has_upsets(loop):
             return loop
-        quantity, transmitter = measured_quantity(loop), _transmitter(known(loop.measurement))
-        for other in self._plant.register.loops.values():
-            same = transmitter is not None and _transmitter(known(other.measurement)) == transmitter
-            if (same or (quantity is not None and measured_quantity(other) == quantity)) and self._has_upsets(other):
-                return other
-        return None
+        keys = _measured(loop, known(loop.measurement))
+        found = [other for key in keys if (other := self._moved_on.get(key)) is not None]
+        return min(found, key=lambda other: self._plant.position[other.tag], default=None)
 
     def _has_upsets(self, loop: Loop) -> bool:
         return bool(loop.disturbances) or (loop.process is not None and loop.tag in self._plant.controlled)
@@ -214,18 +235,14 @@ class TimeToAct:
                     ramps.append(upset.ramp_s)
                     limits.append(distance)
         times = iter(
-            crossing_times(
-                paths, size_pct=np.array(sizes), ramp_s=np.array(ramps), limit_pct=np.array(limits)
-            ).tolist()
+            crossing_times(paths, size_pct=np.array(sizes), ramp_s=np.array(ramps), limit_pct=np.array(limits)).tolist()
             if paths
             else ()
         )
         return [_assembled(pair, upsets[pair.moved_by.tag], times) for pair in pairs]
 
 
-def _assembled(
-    pair: _Pair, upsets: tuple[Upset | UndecidedUpset, ...], times: Iterator[float]
-) -> AlarmToTrip:
+def _assembled(pair: _Pair, upsets: tuple[Upset | UndecidedUpset, ...], times: Iterator[float]) -> AlarmToTrip:
     from loopdoc.engineering.upsets import UndecidedUpset
 
     between: list[TimeBetween] = []
@@ -252,6 +269,11 @@ def _readings(pair: _Pair) -> Iterator[tuple[Measurement | None, float]]:
 def _trip_normal(trip: Trip, of_alarm: Quantity) -> Quantity:
     """Normal value of what an initiator measures; that of the alarm's loop where it has none of its own."""
     return (normal_value(trip.loop) if trip.loop else None) or of_alarm
+
+
+def _measured(part: Loop | Instrument, measurement: Measurement | None) -> tuple[_Measured, ...]:
+    """By what two parts are told to measure the same: their transmitter, and the quantity that they name."""
+    return tuple(key for key in (_transmitter(measurement), measured_quantity(part)) if key is not None)
 
 
 def _transmitter(measurement: Measurement | None) -> str | None:
