@@ -15,13 +15,14 @@ from functools import reduce
 from loopdoc.engineering.attenuation import Rival, error_ratios
 from loopdoc.engineering.clock import Unsuited
 from loopdoc.engineering.dynamics import ChainDynamics
-from loopdoc.engineering.frequency import LoopStage
+from loopdoc.engineering.frequency import LoopStage, Margins
 from loopdoc.engineering.pairing import normal_value
 from loopdoc.engineering.pid import Controller
 from loopdoc.engineering.process import Process, in_series
 from loopdoc.engineering.simulation import Response, simulate_groups
 from loopdoc.engineering.stages import Chain, Lacking, Level, percent_of_range
 from loopdoc.engineering.structure import (
+    ControlStructure,
     Disturbance,
     FinalElement,
     Scenario,
@@ -98,14 +99,10 @@ def compare_all(chains: Sequence[ChainDynamics]) -> tuple[Comparison | NotSimula
     groups = []
     for position, dynamics in stable.items():
         chain, single = dynamics.chain, singles[position]
-        structure = cascade_structure(
-            chain.stages,
-            final_element=_final_element(chain),
-            start_pct=tuple(_start_pct(level) for level in chain.levels),
-        )
+        structure = structure_of(chain)
         structures = [structure]
         if single is not None:
-            structures.append(single_loop_structure(structure, _single_controller(chain, single)))
+            structures.append(single_loop_structure(structure, _single_controller(chain.stages, single)))
         standard = standard_scenarios(len(chain.levels), size_pct=UPSET_PCT)
         groups.append((structures, (*standard, *declared_scenarios(chain))))
     for (position, dynamics), (structures, scenarios), responses in zip(
@@ -154,38 +151,45 @@ def cascade_error_ratios(cascades: Sequence[ChainDynamics]) -> tuple[float | Lac
     rivals: dict[int, Rival] = {}
     for position, (dynamics, single) in enumerate(zip(cascades, _single_loops(cascades), strict=True)):
         chain = dynamics.chain
-        process = _joined(chain)
+        process = _joined(chain.stages)
         if not all(margins.stable for margins in dynamics.margins):
             found[position] = Lacking(f"{chain.lead.tag} as tuned, or a loop below it, is not stable")
         elif single is not None and process is not None:
-            rivals[position] = Rival(chain.stages, LoopStage(_single_controller(chain, single), process))
+            rivals[position] = Rival(chain.stages, LoopStage(_single_controller(chain.stages, single), process))
     for position, ratio in zip(rivals, error_ratios(list(rivals.values())).tolist(), strict=True):
         found[position] = Lacking("the error after an upset does not die out") if math.isnan(ratio) else ratio
     return tuple(found)
 
 
-def _joined(chain: Chain) -> Process | None:
+def _joined(stages: Sequence[LoopStage]) -> Process | None:
     """All processes in series; None for two integrators, on which no rule tunes one loop."""
     try:
-        return reduce(in_series, (stage.process for stage in chain.stages))
+        return reduce(in_series, (stage.process for stage in stages))
     except ValueError:
         return None
 
 
 def _single_loops(cascades: Sequence[ChainDynamics]) -> list[SensitivityTuning | None]:
     """One loop on all processes in series for each cascade, as robust as its outermost loop; None for a single loop."""
-    found: list[SensitivityTuning | None] = [None] * len(cascades)
+    return _single_tunings([c.chain.stages for c in cascades], [c.margins for c in cascades])
+
+
+def _single_tunings(
+    chains: Sequence[Sequence[LoopStage]], margins: Sequence[Sequence[Margins]]
+) -> list[SensitivityTuning | None]:
+    found: list[SensitivityTuning | None] = [None] * len(chains)
     processes = {
         position: process
-        for position, dynamics in enumerate(cascades)
+        for position, (stages, of_levels) in enumerate(zip(chains, margins, strict=True))
         # A loop that adds nothing to any disturbance has no tuning that is its equal.
-        if len(dynamics.margins) > 1
-        and (process := _joined(dynamics.chain)) is not None and 1.0 < dynamics.margins[-1].max_sensitivity < math.inf
+        if len(stages) > 1
+        and (process := _joined(stages)) is not None
+        and 1.0 < of_levels[-1].max_sensitivity < math.inf
     }
-    leads = [cascades[position].chain.stages[-1].controller for position in processes]
+    leads = [chains[position][-1].controller for position in processes]
     tuned = simc_at_sensitivities(
         list(processes.values()),
-        target_ms=[cascades[position].margins[-1].max_sensitivity for position in processes],
+        target_ms=[margins[position][-1].max_sensitivity for position in processes],
         interval_s=[lead.interval_s for lead in leads],
         measurement_filter_s=[lead.measurement_filter_s for lead in leads],
     )
@@ -194,8 +198,22 @@ def _single_loops(cascades: Sequence[ChainDynamics]) -> list[SensitivityTuning |
     return found
 
 
-def _single_controller(chain: Chain, single: SensitivityTuning) -> Controller:
-    lead = chain.stages[-1].controller
+def single_loops(
+    chains: Sequence[Sequence[LoopStage]], margins: Sequence[Sequence[Margins]]
+) -> tuple[Controller | None, ...]:
+    """Return the controller of the single loop in the place of each cascade, tuned by SIMC to the same Ms.
+
+    ``chains`` and their ``margins`` are innermost level first; None for a single loop, and where no tuning has
+    that Ms.
+    """
+    return tuple(
+        None if tuning is None else _single_controller(stages, tuning)
+        for stages, tuning in zip(chains, _single_tunings(chains, margins), strict=True)
+    )
+
+
+def _single_controller(stages: Sequence[LoopStage], single: SensitivityTuning) -> Controller:
+    lead = stages[-1].controller
     return Controller(
         single.settings.gain,
         single.settings.reset_s,
@@ -204,6 +222,15 @@ def _single_controller(chain: Chain, single: SensitivityTuning) -> Controller:
         measurement_filter_s=lead.measurement_filter_s,
         setpoint_low_pct=lead.setpoint_low_pct,
         setpoint_high_pct=lead.setpoint_high_pct,
+    )
+
+
+def structure_of(chain: Chain) -> ControlStructure:
+    """Return a chain of the register as the structure that is simulated, at its normal values."""
+    return cascade_structure(
+        chain.stages,
+        final_element=_final_element(chain),
+        start_pct=tuple(_start_pct(level) for level in chain.levels),
     )
 
 
