@@ -498,3 +498,14 @@ def test_the_view_holds_text_only() -> None:
         value for panel in (view.measurement, *view.controller) for row in panel.rows for pair in row for value in pair
     ]
     assert all(isinstance(value, str) for value in printed)
+
+
+def test_a_deviation_stands_on_every_sheet_that_it_touches() -> None:
+    deviations = {
+        page.name: {point.rule for point in page.view["sheet"].points if point.kind == "Deviation"}
+        for page in pages_of("tarn-hollow")
+    }
+    # The range of TIC-2014 is judged against the output span of AIC-2015; the gap is one in the output of PIC-2021.
+    touched = {tag for tag, rules in deviations.items() if "secondary-range-wide" in rules}
+    assert touched == {"TIC-2014", "AIC-2015"}
+    assert {tag for tag, rules in deviations.items() if "split-range-gap" in rules} == {"PIC-2021"}
