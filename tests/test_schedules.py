@@ -337,6 +337,11 @@ def _is_draft_mark(word: tuple[float, float, float, float, str]) -> bool:
     return text in "DRAFT" and min(right - left, bottom - top) > 20
 
 
+def _is_turned(word: tuple[float, float, float, float, str]) -> bool:
+    left, top, right, bottom, text = word
+    return len(text) > 3 and bottom - top > right - left
+
+
 def on_paper(page: Page, folder: Path) -> None:
     """No word beyond the margins, none on top of another, the heads of a table on each of its pages."""
     content = to_pdf(html(page))  # raises on any line that WeasyPrint logs
@@ -355,8 +360,8 @@ def on_paper(page: Page, folder: Path) -> None:
                 across = min(right, other[2]) - max(left, other[0])
                 down = min(bottom, other[3]) - max(top, other[1])
                 # A word's box is as high as its line, so that lines touch: a third of a line is an overlap.
-                turned = bottom - top > right - left and other[3] - other[1] > other[2] - other[0]
-                along, apart = (down, across) if turned and len(word) > 1 < len(other[4]) else (across, down)
+                turned = _is_turned((left, top, right, bottom, word)) or _is_turned(other)
+                along, apart = (down, across) if turned else (across, down)
                 assert along < 0.5 or apart < 3.0, (page.name, number, word, other[4])
 
 
