@@ -28,6 +28,7 @@ import statistics
 import time
 import warnings
 from concurrent.futures import ProcessPoolExecutor
+from itertools import chain
 from pathlib import Path
 
 import numpy as np
@@ -77,10 +78,11 @@ def by_loopdoc(cascades: list[ControlStructure]) -> tuple[Found, Seconds]:
         if controller is not None:
             compared[-1].append(single_loop_structure(cascade, controller))
     clock.append(time.process_time())
-    figures: list[list[list[ResponseMetrics]]] = []
     scenarios = standard_scenarios(2)
-    for found in simulate_metrics([(structures, scenarios) for structures in compared]):
-        figures.append([] if isinstance(found, Unsuited) else [list(row) for row in found])
+    figures: list[list[list[ResponseMetrics]]] = [
+        [] if isinstance(found, Unsuited) else [list(row) for row in found]
+        for found in simulate_metrics([(structures, scenarios) for structures in compared])
+    ]
     clock.append(time.process_time())
     parts = ("margins", "single loops", "responses")
     return (margins, compared, figures), dict(zip(parts, np.diff(clock).tolist(), strict=True))
@@ -147,20 +149,19 @@ def by_control(structures: list[ControlStructure], clock: Clock) -> tuple[list[t
 def sampled_difference(count: int, seed: int) -> float:
     """Largest difference of setpoint responses from the exact sampled system, as a share of the step."""
     rng = np.random.default_rng(seed)
-    worst = 0.0
+    worst, h = 0.0, 0.5
+    z = control.tf([1, 0], [1], h)
+
+    def pi(stage: LoopStage) -> control.TransferFunction:
+        return stage.controller.gain * (1 + h / stage.controller.reset_s * z / (z - 1))
+
     for _ in range(count):
-        h = 0.5
         lag2, lag1, dead2, dead1 = rng.uniform(2, 8), rng.uniform(40, 120), rng.integers(1, 5), rng.integers(4, 30)
         inner = LoopStage(Controller(rng.uniform(0.3, 0.6), lag2, interval_s=h), Process(1.0, (lag2,), dead2 * h))
         outer = LoopStage(Controller(rng.uniform(0.5, 1.0), lag1, interval_s=h), Process(1.2, (lag1,), dead1 * h))
         stages = [LoopStage(unlimited(stage.controller), stage.process) for stage in (inner, outer)]
         structure = cascade_structure(stages, final_element=FinalElement())
         response = simulate([structure], [standard_scenarios(2, size_pct=5.0)[0]], clock=Clock(h, 800))[0][0]
-        z = control.tf([1, 0], [1], h)
-
-        def pi(stage: LoopStage, z: control.TransferFunction = z) -> control.TransferFunction:
-            return stage.controller.gain * (1 + h / stage.controller.reset_s * z / (z - 1))
-
         plant2 = control.sample_system(control.tf(1, [lag2, 1]), h, "zoh") / z ** int(dead2)
         # The secondary measurement is straight between scans: a first-order hold.
         a = math.exp(-h / lag1)
@@ -214,8 +215,8 @@ def of_register(folder: Path) -> list[ControlStructure]:
     if not isinstance(loaded, Loaded):
         raise SystemExit(f"{folder} cannot be read")
     dynamics = Dynamics(Plant(loaded.register))
-    chains = (chain.chain for tag in loaded.register.loops for chain in dynamics.loop(tag).chains)
-    return [structure_of(chain) for chain in chains if len(chain.levels) == 2]
+    found = (one.chain for tag in loaded.register.loops for one in dynamics.loop(tag).chains)
+    return [structure_of(one) for one in found if len(one.levels) == 2]
 
 
 def main() -> None:
@@ -240,7 +241,8 @@ def main() -> None:
         cascades = varied_cascades(max(options.sample, 1), seed=options.seed)
     wall_s = time.perf_counter() - start
     count = sum(share[0] for share in shares)
-    print(f"{count} cascades, {2 * count} loops, {sum(share[1] for share in shares)} responses, {len(shares)} processes")
+    responses = sum(share[1] for share in shares)
+    print(f"{count} cascades, {2 * count} loops, {responses} responses, {len(shares)} processes")
     print(f"wall time                {wall_s:10.2f} s     {1e3 * wall_s / count:8.3f} ms a cascade")
     work_s = 0.0
     for part in shares[0][2]:
@@ -249,7 +251,7 @@ def main() -> None:
         print(f"  {part:20} {part_s:12.2f} s of processor time, {1e3 * part_s / count:.3f} ms a cascade")
     print(f"peak memory              {max(share[3] for share in shares):10.0f} MB a process")
 
-    (margins, compared, figures), _ = by_loopdoc(cascades[: options.sample])
+    (_, compared, figures), _ = by_loopdoc(cascades[: options.sample])
     times, difference = [], 0.0
     for structures, rows in zip(compared, figures, strict=True):
         if not rows:
@@ -259,15 +261,18 @@ def main() -> None:
         begun = time.process_time()
         _, errors = by_control(structures, clock)
         times.append(time.process_time() - begun)
-        straight = [abs(one.iae_pct_s / error - 1.0) for one, error in zip(sum(rows, []), errors, strict=True)]
-        difference = max(difference, statistics.median(straight))
+        ours = [one.iae_pct_s for one in chain.from_iterable(rows)]
+        apart = [abs(one / error - 1.0) for one, error in zip(ours, errors, strict=True)]
+        difference = max(difference, statistics.median(apart))
     each_s = statistics.mean(times)
+    one, as_run = each_s * count / work_s, each_s * count / wall_s
+    exact, bare = sampled_difference(5, options.seed), delay_free_difference(cascades[: options.sample])
     print(f"python-control           {1e3 * each_s:10.1f} ms of processor time a cascade (mean of {len(times)})")
-    print(f"ratio                    {each_s * count / work_s:10.0f} for one process, {each_s * count / wall_s:.0f} as run")
-    print(f"lean loop of numpy       {floor_ns():10.1f} ns a step and column (one lag, PI, a limit): the floor")
-    print(f"error integrals          {difference:10.2g} largest median difference from the Pade models, limits included")
-    print(f"exact sampled cascades   {sampled_difference(5, options.seed):10.2g} of the step, largest difference")
-    print(f"margins without delay    {delay_free_difference(cascades[: options.sample]):10.2g} relative, largest difference")
+    print(f"ratio                    {one:10.0f} for one process by processor time, {as_run:.0f} as run by wall time")
+    print(f"lean loop of numpy       {floor_ns():10.1f} ns a step and column: one lag, PI and a limit, the floor")
+    print(f"error integrals          {difference:10.2g} of the Pade model's: median difference of the worst cascade")
+    print(f"exact sampled cascades   {exact:10.2g} of the step: largest difference")
+    print(f"margins without delay    {bare:10.2g} relative: largest difference")
 
 
 if __name__ == "__main__":

@@ -1,16 +1,21 @@
 """Scenarios, chosen clocks, blocks of steps and batches of simulated responses."""
 
 import math
+import shutil
 from dataclasses import replace
+from pathlib import Path
 
 import numpy as np
 import pytest
 
 from loopdoc.engineering.clock import Clock, Unsuited, choose_clocks
+from loopdoc.engineering.comparison import structure_of
+from loopdoc.engineering.dynamics import Dynamics
 from loopdoc.engineering.frequency import LoopStage
+from loopdoc.engineering.pairing import Plant
 from loopdoc.engineering.pid import Controller
 from loopdoc.engineering.process import Process
-from loopdoc.engineering.simulation import simulate, simulate_metrics
+from loopdoc.engineering.simulation import simulate, simulate_groups, simulate_metrics
 from loopdoc.engineering.structure import (
     ControlStructure,
     Disturbance,
@@ -20,6 +25,7 @@ from loopdoc.engineering.structure import (
     single_loop_structure,
     standard_scenarios,
 )
+from loopdoc.register.load import Loaded, load
 
 VALVE = FinalElement()
 
@@ -210,6 +216,7 @@ def test_a_group_that_cannot_be_simulated_leaves_the_others() -> None:
         (lambda: ControlStructure((LEVEL,), (None,), VALVE, (50.0, 50.0)), "one start per process"),
         (lambda: FinalElement(stroke_time_s=-1.0), "stroke time"),
         (lambda: FinalElement(backlash_pct=100.0), "backlash"),
+        (lambda: FinalElement(resolution_pct=-1.0), "resolution"),
         (lambda: FinalElement(start_pct=101.0), "outside its travel"),
         (
             lambda: simulate([TIC], [Scenario("d", disturbances=(Disturbance(2, 1.0),))]),
@@ -278,3 +285,45 @@ def test_backlash_follows_what_the_resolution_has_let_through() -> None:
     response = simulate([structure], [Scenario("sp", setpoint_step_pct=0.3)], clock=Clock(1.0, 7))[0][0]
     # Half of the backlash, from its middle, is lost of each level that the staircase reaches: 1.2 and 2.4.
     np.testing.assert_allclose(response.travel_pct - 50.0, [0.0] * 3 + [0.8] * 4 + [2.0], atol=1e-6)
+
+
+def test_what_is_too_far_apart_is_said_in_numbers() -> None:
+    refused = choose_clocks([[TOO_WIDE]])[0]
+    assert isinstance(refused, Unsuited)
+    # 100,000 s of lag and 10,000 s of dead time are 30.6 h; twice that in steps of its fastest loop.
+    assert "30.6 h" in refused.reason
+    assert "40,960" in refused.reason
+
+
+def test_groups_simulated_together_are_those_simulated_alone() -> None:
+    loose = replace(TIC, final_element=FinalElement(stroke_time_s=6.0, backlash_pct=1.0, resolution_pct=0.5))
+    groups = [
+        ([TIC, SINGLE], standard_scenarios(2)),
+        ([TOO_WIDE], standard_scenarios(2)),
+        ([loose, replace(SINGLE, final_element=loose.final_element)], standard_scenarios(2)),
+    ]
+    together = simulate_groups(groups)
+    assert isinstance(together[1], Unsuited)
+    for place in (0, 2):
+        found = together[place]
+        assert not isinstance(found, Unsuited)
+        for ours, theirs in zip(found, simulate(*groups[place]), strict=True):
+            for one, other in zip(ours, theirs, strict=True):
+                np.testing.assert_array_equal(one.time_s, other.time_s)
+                # The same sums in another order.
+                np.testing.assert_allclose(one.measurement_pct[-1], other.measurement_pct[-1], atol=1e-9)
+
+
+def test_backlash_and_resolution_come_from_the_register(tmp_path: Path) -> None:
+    folder = tmp_path / "plant"
+    shutil.copytree(Path(__file__).parent.parent / "examples" / "tarn-hollow", folder)
+    file = folder / "units" / "20-rectification.yaml"
+    text = file.read_text(encoding="utf-8")
+    file.write_text(
+        text.replace("\n  FV-2011:\n", "\n  FV-2011:\n    backlash: 1.2 %\n    resolution: 0.4 %\n"), encoding="utf-8"
+    )
+    loaded = load(folder)
+    assert isinstance(loaded, Loaded)
+    chain = Dynamics(Plant(loaded.register)).loop("FIC-2011").chains[0].chain
+    element = structure_of(chain).final_element
+    assert (element.backlash_pct, element.resolution_pct) == (1.2, 0.4)

@@ -142,6 +142,10 @@ def _choose_clock(horizon_s: float, loops: Sequence[tuple[float, float]]) -> Clo
     return Clock(step_s=step, steps=_round_up(horizon_s / step))
 
 
+def _in_hours(time_s: float) -> str:
+    return f"{time_s / 3600.0:.3g} h" if time_s >= 7200.0 else f"{time_s:.3g} s"
+
+
 def _choose_for(
     group: Sequence[ControlStructure], margins: Iterator[tuple[Margins, ...]]
 ) -> GroupClock | Unsuited:
@@ -167,9 +171,11 @@ def _choose_for(
     if not stable:
         return GroupClock(Clock(clock.step_s, min(clock.steps, _STEPS_UNSTABLE)), (1,) * len(group))
     if clock.step_s * clock.steps < min(horizon_s, 2.0 * open_loop_s):
+        needed = 2.0 * open_loop_s / clock.step_s
         return Unsuited(
-            f"its slowest part takes {open_loop_s:.3g} s and its fastest loop needs steps of {clock.step_s:.3g} s: "
-            "they are too far apart to be simulated together"
+            f"lags and dead time of its slowest process add up to {_in_hours(open_loop_s)}, and its fastest loop must "
+            f"be followed every {clock.step_s:.3g} s: that would take {needed:,.0f} steps, where {_STEPS_MOST:,} are the "
+            "most; they are too far apart to be simulated together (margins need no simulation, and hold)"
         )
     return GroupClock(clock, tuple(1 if loop is None else _steps_of_its_own(clock, *loop) for loop in alone))
 
