@@ -11,7 +11,7 @@ from dataclasses import dataclass
 
 from loopdoc.documents.basis import Basis, Page
 from loopdoc.documents.drawing import text_width
-from loopdoc.documents.protection_story import acts
+from loopdoc.documents.protection_story import acts, bypass
 from loopdoc.documents.schedules import (
     A3,
     A4,
@@ -31,7 +31,7 @@ from loopdoc.documents.values import DASH
 from loopdoc.documents.whereabouts import anchor, natural, unit_numbers, unit_of
 from loopdoc.documents.wording import counted, listed, sentence, upper_first, value
 from loopdoc.engineering.pairing import Trip
-from loopdoc.register.model import Interlock, InterlockAction, known
+from loopdoc.register.model import Hold, Interlock, InterlockAction, known
 
 FOLDER = "cause-and-effect"
 TEMPLATE = "cause-and-effect.html"
@@ -67,9 +67,9 @@ CAUTION = (
 )
 LAYERS = ("safety", "process")
 INTERLOCKS = (
-    Column("Interlock", 6.5), Column("Service", 12), Column("Layer", 5.5), Column("Likely cause", 16),
-    Column("Consequence without it", 17), Column("Reset", 14), Column("Response against process safety time", 17),
-    Column("Proof test", 6), Column("Drawing", 6),
+    Column("Interlock", 6.5), Column("Service", 10), Column("Layer", 5), Column("Likely cause", 14.5),
+    Column("Consequence without it", 15), Column("Reset", 12.5), Column("Response against process safety time", 12.5),
+    Column("Proof test", 5.5), Column("Bypass", 12.5), Column("Drawing", 6),
 )  # fmt: skip
 
 
@@ -249,11 +249,15 @@ class _Charts:
             Row((
                 write.cell(one.tag), write.cell(one.service), write.cell(one.layer), write.words(one.cause),
                 write.words(one.consequence), write.words(one.reset), self._response(one), write.cell(one.proof_test),
-                write.cell(one.drawing),
+                self._bypass(one), write.cell(one.drawing),
             ))
             for one in self._interlocks
         )  # fmt: skip
         return Schedule("Interlocks", INTERLOCKS, (Group(rows),))
+
+    def _bypass(self, interlock: Interlock) -> Cell:
+        told = bypass(known(interlock.bypass))
+        return self._writer.words(told or (interlock.bypass if isinstance(interlock.bypass, Hold) else None))
 
     def _response(self, interlock: Interlock) -> Cell:
         told = response_of(interlock)

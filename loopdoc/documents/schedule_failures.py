@@ -170,8 +170,9 @@ class _Failures:
             if isinstance(move.direction, Undecided):
                 yield sentence(f"Setpoint of {tag}: {_lower(UNDECIDED)}, {move.direction.reason}")
             elif move.direction:
-                to = f", at most to {value(move.limit)}" if move.limit is not None and not move.instead else ""
-                yield sentence(f"{move.by} {'raises' if move.direction > 0 else 'lowers'} the setpoint of {tag}{to}")
+                raises = move.direction > 0
+                end = f", to {value(move.limit)} at the {'highest' if raises else 'lowest'}" if move.limit else ""
+                yield sentence(f"{move.by} {'raises' if raises else 'lowers'} the setpoint of {tag}{end}")
             elif move.instead and move.selector:
                 yield sentence(f"{move.selector.tag} goes on passing the demand of {listed(move.instead, 'or')}")
 

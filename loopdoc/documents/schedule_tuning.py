@@ -72,7 +72,8 @@ class _Tuning:
             self._basis, self._writer,
             folder=FOLDER, kind="Tuning schedule", code="TS", unit=number, paper=A3,
             title=unit_title(self._basis, number),
-            extent=f"{upper_first(counted(len(loops), 'controller'))}, {number_word(quoted)} with margins",
+            extent=f"{upper_first(counted(len(loops), 'controller'))}, "
+                   f"{number_word(quoted) if quoted else 'none'} with margins",
             reading=(BASIS, DASHES), caution=CAUTION, view={"schedules": (Schedule("", COLUMNS, (Group(rows),)),)},
         )  # fmt: skip
 
@@ -140,7 +141,9 @@ class _Tuning:
 
     def _told(self, model: Process) -> str:
         write = self._writer
-        parts = [] if model.effect is None else [write.text(model.effect)]
+        parts = [] if known(model.effect) is None else [write.text(model.effect)]
+        if isinstance(model.effect, Hold):
+            parts.append(f"effect {write.text(model.effect)}")
         if model.gain is not None:
             parts.append(f"gain {write.text(model.gain)}".replace(" per ", f"{NO_BREAK}per{NO_BREAK}"))
         if model.integrating:
