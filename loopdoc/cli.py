@@ -486,7 +486,7 @@ def _identify(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> 
 
 
 def _attest(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
-    from loopdoc.documents.attest import Answer, Attestation, NotIssued
+    from loopdoc.documents.attest import Attestation, Attested, NotIssued
     from loopdoc.documents.attest_report import report_json, report_text
     from loopdoc.documents.pdf import PdfError
     from loopdoc.exchange.escaping import for_terminal
@@ -518,8 +518,7 @@ def _attest(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> in
         stdout.write(for_terminal(report_text(answered, against=named)))
     if any(isinstance(found, NotIssued) for _, found in answered):
         return EXIT_UNREADABLE
-    doubted = any(Answer.NO in (one.register_whole, one.pages_unaltered, one.current) for _, one in answered)
-    return EXIT_FOUND if doubted else EXIT_CLEAN
+    return EXIT_FOUND if any(isinstance(one, Attested) and one.doubted for _, one in answered) else EXIT_CLEAN
 
 
 def _record(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:

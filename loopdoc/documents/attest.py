@@ -77,6 +77,11 @@ class Attested:
     remarks: tuple[str, ...]
     """The reasons, one for each answer that is not yes."""
 
+    @property
+    def doubted(self) -> bool:
+        """Whether any question was answered with no."""
+        return Answer.NO in (self.register_whole, self.pages_unaltered, self.current)
+
 
 def enclosed_in(content: bytes) -> Enclosed | NotIssued:
     """What an issued PDF carries."""
