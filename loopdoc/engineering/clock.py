@@ -174,8 +174,8 @@ def _choose_for(
         needed = 2.0 * open_loop_s / clock.step_s
         return Unsuited(
             f"lags and dead time of its slowest process add up to {_in_hours(open_loop_s)}, and its fastest loop must "
-            f"be followed every {clock.step_s:.3g} s: that would take {needed:,.0f} steps, where {_STEPS_MOST:,} are the "
-            "most; they are too far apart to be simulated together (margins need no simulation, and hold)"
+            f"be followed every {clock.step_s:.3g} s: that would take {needed:,.0f} steps, where {_STEPS_MOST:,} are "
+            "the most; they are too far apart to be simulated together (margins need no simulation, and hold)"
         )
     return GroupClock(clock, tuple(1 if loop is None else _steps_of_its_own(clock, *loop) for loop in alone))
 
