@@ -339,7 +339,7 @@ def _is_draft_mark(word: tuple[float, float, float, float, str]) -> bool:
 
 def _is_turned(word: tuple[float, float, float, float, str]) -> bool:
     left, top, right, bottom, text = word
-    return len(text) > 3 and bottom - top > right - left
+    return len(text) > 3 and bottom - top > 1.4 * (right - left)
 
 
 def on_paper(page: Page, folder: Path) -> None:
