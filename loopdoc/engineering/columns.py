@@ -15,7 +15,7 @@ from loopdoc.engineering.scanning import ControllerArrays, Engine, controller_ar
 from loopdoc.engineering.structure import ControlStructure, Scenario
 
 # So many columns that are alike repay a run of their own.
-_WORTH_A_RUN = 600
+_WORTH_A_RUN = 3000
 # Steps of a disturbance that are found at once where it is wanted in full.
 _BLOCK = 64
 

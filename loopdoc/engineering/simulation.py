@@ -22,7 +22,7 @@ from loopdoc.engineering.structure import ControlStructure, Scenario
 # Numbers held at once by a run that keeps its signals: bounds its memory to some 100 MB.
 _KEPT_NUMBERS = 12_000_000
 # Columns of a run that does not: large enough for numpy, small enough for the processor's cache.
-_COLUMNS_AT_ONCE = 3000
+_COLUMNS_AT_ONCE = 5000
 # Steps between two looks at what moves still.
 _BLOCK = 64
 # Columns that have ended are dropped once only this share is left.
