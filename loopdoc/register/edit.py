@@ -21,8 +21,8 @@ from yaml._yaml import CParser
 from loopdoc.register.place import Fault, Place
 from loopdoc.register.text import read_text
 
-Value = str | bool | int | float | list[str] | dict[str, Any]
-"""A scalar, a list of text, or a mapping of such values."""
+Value = str | bool | int | float | list[Any] | dict[str, Any]
+"""A scalar, a list, or a mapping of such values."""
 
 LONGEST_LINE = 120
 """Characters after which a flow mapping continues on a line of its own."""
@@ -197,7 +197,7 @@ def _inline(value: Value, *, flow: bool, quote: str = "") -> str:
     if isinstance(value, dict):
         return "{" + ", ".join(f"{key}: {_inline(inner, flow=True)}" for key, inner in value.items()) + "}"
     if isinstance(value, list):
-        return "[" + ", ".join(_scalar(item, flow=True) for item in value) + "]"
+        return "[" + ", ".join(_inline(item, flow=True) for item in value) + "]"
     return _scalar(value, flow=flow, quote=quote)
 
 
