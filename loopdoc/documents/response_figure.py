@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator, Sequence
+from dataclasses import replace
 
 import numpy as np
 
@@ -41,34 +42,39 @@ def drawings(
 def figure(plant: Plant, comparison: Comparison) -> Drawing:
     """Above, the outermost measurement in engineering units; below, the final element; a column for each upset."""
     chain = comparison.dynamics.chain
+    columns = [panels(plant, comparison, entry) for entry in _drawn(comparison)]
+    # The columns share what the vertical axes are named.
+    columns = columns[:1] + [(replace(up, y_label=""), replace(down, y_label="")) for up, down in columns[1:]]
+    title = f"Time responses of {chain.lead.tag} with {chain.final_element.tag}"
+    rows = (tuple(up for up, _ in columns), tuple(down for _, down in columns))
+    return Drawing(title, rows, whole_caption(comparison))
+
+
+def panels(plant: Plant, comparison: Comparison, entry: ScenarioResponses) -> tuple[Panel, Panel]:
+    """The outermost measurement and the final element under one upset."""
+    chain = comparison.dynamics.chain
     lead = chain.lead
     own = measured_range(lead)
-    limits = tuple(_limits(plant, lead, own))
-    travel = tuple(_travel_limits(chain))
-    above: list[Panel] = []
-    below: list[Panel] = []
-    for entry in _drawn(comparison):
-        last = float(entry.tuned.time_s[-1])
-        _, divisor, time_unit = next(unit for unit in TIME_UNITS if last >= unit[0])
-        shown_names = ("cascade", "single loop") if entry.single else ("as tuned", "")
-        curves = [Curve("setpoint", "dotted", *_xy(entry.tuned, _setpoint(entry.tuned, own), divisor))]
-        valves = []
-        for name, style, response in (
-            (shown_names[0], "solid", entry.tuned),
-            (shown_names[1], "dashed", entry.single),
-        ):
-            if response is not None:
-                curves.append(
-                    Curve(name, style, *_xy(response, _eu_curve(response.measurement_pct[-1], own), divisor))
-                )
-                valves.append(Curve(name, style, *_xy(response, response.travel_pct, divisor)))
-        ordinate = f"{lead.tag}, {own.unit.display}" if not above else ""
-        above.append(Panel(_short_name(comparison, entry), "", ordinate, tuple(curves), limits))
-        below.append(
-            Panel("", f"time, {time_unit}", f"{chain.final_element.tag}, %" if not below else "", tuple(valves), travel)
-        )
-    title = f"Time responses of {lead.tag} with {chain.final_element.tag}"
-    return Drawing(title, (tuple(above), tuple(below)), whole_caption(comparison))
+    last = float(entry.tuned.time_s[-1])
+    _, divisor, time_unit = next(unit for unit in TIME_UNITS if last >= unit[0])
+    shown_names = ("cascade", "single loop") if entry.single else ("as tuned", "")
+    curves = [Curve("setpoint", "dotted", *_xy(entry.tuned, _setpoint(entry.tuned, own), divisor))]
+    valves = []
+    for name, style, response in (
+        (shown_names[0], "solid", entry.tuned),
+        (shown_names[1], "dashed", entry.single),
+    ):
+        if response is not None:
+            curves.append(Curve(name, style, *_xy(response, _eu_curve(response.measurement_pct[-1], own), divisor)))
+            valves.append(Curve(name, style, *_xy(response, response.travel_pct, divisor)))
+    above = Panel(
+        _short_name(comparison, entry), "", f"{lead.tag}, {own.unit.display}", tuple(curves),
+        tuple(_limits(plant, lead, own)),
+    )  # fmt: skip
+    below = Panel(
+        "", f"time, {time_unit}", f"{chain.final_element.tag}, %", tuple(valves), tuple(_travel_limits(chain))
+    )
+    return above, below
 
 
 def _limits(plant: Plant, lead: ControlledLoop, own: Range) -> Iterator[Limit]:

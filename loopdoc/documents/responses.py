@@ -31,7 +31,7 @@ from loopdoc.rules.policy import limits_from
 def responses(basis: Basis) -> Iterator[Page]:
     """One document for each scheme of which a loop's dynamics follow from the register."""
     for scheme in basis.plant.schemes:
-        chains = _chains(basis, scheme)
+        chains = scheme_chains(basis, scheme)
         if chains:
             yield _page(basis, scheme, chains)
 
@@ -40,7 +40,7 @@ def supplements(basis: Basis) -> dict[str, Supplement]:
     """For the narrative, by the lead of each scheme: what its cascades gain, and how it answers upsets."""
     found = {}
     for scheme in basis.plant.schemes:
-        all_chains = [basis.comparison(chain) for chain in _chains(basis, scheme)]
+        all_chains = [basis.comparison(chain) for chain in scheme_chains(basis, scheme)]
         compared = [comparison for comparison in all_chains if isinstance(comparison, Comparison)]
         if compared:
             found[scheme.lead.tag] = Supplement(
@@ -54,7 +54,7 @@ def _drawn(basis: Basis, dynamics: ChainDynamics) -> str:
     return basis.drawn(dynamics, lambda comparison: to_svg(figure(basis.plant, comparison)))
 
 
-def _chains(basis: Basis, scheme: Scheme) -> list[ChainDynamics]:
+def scheme_chains(basis: Basis, scheme: Scheme) -> list[ChainDynamics]:
     """The chains of a scheme from the outermost loops whose dynamics are known."""
     dynamics, plant = basis.dynamics, basis.plant
     return [

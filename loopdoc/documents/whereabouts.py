@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import hashlib
 import re
 from collections.abc import Mapping
 from urllib.parse import quote
@@ -16,6 +17,9 @@ NO_UNIT = "00"
 LOOP_SHEETS = "loop-sheets"
 CHARTS = "cause-and-effect"
 INSTRUMENT_LISTS = "instrument-lists"
+
+_LONGEST_NAME = 200
+"""Bytes; file systems take names of 255, and an ending and a temporary mark come to it."""
 
 Part = Loop | FinalElement | Instrument | Function | Interlock
 
@@ -43,6 +47,14 @@ def file_name(number: str) -> str:
     return f"unit-{re.sub(r'[^A-Za-z0-9.-]+', '-', number)}"
 
 
+def document_name(tag: str) -> str:
+    """Name of a tag's document without its ending: the tag, without what a path or a file system would obey."""
+    name = re.sub(r"[^\w ()+,.-]", lambda found: quote(found[0], safe=""), tag)
+    if len(name.encode()) <= _LONGEST_NAME:
+        return name
+    return f"{name[: _LONGEST_NAME // 4]}-{hashlib.sha256(tag.encode()).hexdigest()[:16]}"
+
+
 def anchor(tag: str) -> str:
     """Name of the place in a document at which a tag is told."""
     return f"tag-{re.sub(r'[^A-Za-z0-9]+', '-', tag).strip('-')}"
@@ -68,7 +80,7 @@ def told_at(plant: Plant, tag: str) -> Target:
     register = plant.register
     loop = register.loops.get(tag) or plant.loop_of_transmitter.get(tag) or mover(plant, tag)
     if loop is not None:
-        return Target(sheet=f"../{LOOP_SHEETS}/{quote(loop.tag)}.html")
+        return Target(sheet=f"../{LOOP_SHEETS}/{quote(document_name(loop.tag))}.html")
     for part, folder in (
         (register.interlocks.get(tag), CHARTS),
         (register.instruments.get(tag) or register.final_elements.get(tag), INSTRUMENT_LISTS),
