@@ -8,6 +8,7 @@ import gc
 import os
 import sys
 from collections.abc import Callable, Mapping, Sequence
+from dataclasses import replace
 from io import TextIOWrapper
 from pathlib import Path
 from typing import TYPE_CHECKING, TextIO
@@ -167,6 +168,21 @@ def _parser() -> argparse.ArgumentParser:
         type=Path,
         metavar="FILE",
         help="also draw the responses over time and over frequency: .pdf (a page each), .svg or .png (in one figure)",
+    )
+
+    compare = command("compare", _compare, "tell what changed between two revisions, and what that does to the plant")
+    _add_register(compare)
+    compare.add_argument("old", metavar="OLD", help="a git revision, or a folder that holds a register")
+    compare.add_argument(
+        "new", metavar="NEW", nargs="?", default="", help="another of them (default: the register as it stands)"
+    )
+    compare.add_argument(
+        "--format", choices=("text", "json", "markdown"), default="text", help="form of the output (default: text)"
+    )
+    compare.add_argument(
+        "--documents",
+        action="store_true",
+        help="tell also which documents change; both sides are built for that, which takes its time",
     )
 
     identify = command("identify", _identify, "fit a process model to a recorded step or bump test")
@@ -429,6 +445,28 @@ def _response(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> 
     return EXIT_CLEAN
 
 
+def _compare(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
+    from loopdoc.documents.basis import basis_of
+    from loopdoc.exchange.comparison import comparison_json, comparison_markdown, comparison_text
+    from loopdoc.revisions.compare import compared
+
+    sides = []
+    for named in (arguments.old, arguments.new):
+        loaded = _at_revision(arguments.register, named, stderr)
+        if loaded is None:
+            return EXIT_UNREADABLE
+        sides.append(basis_of(loaded))
+    old, new = sides
+    found = compared(old, new, old_named=arguments.old, new_named=arguments.new or str(arguments.register))
+    if arguments.documents:
+        from loopdoc.documents.affected import documents_between
+
+        found = replace(found, documents=documents_between(old, new))
+    told = {"json": comparison_json, "markdown": comparison_markdown}.get(arguments.format, comparison_text)
+    stdout.write(told(found))
+    return EXIT_FOUND if found.differs else EXIT_CLEAN
+
+
 def _identify(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
     from loopdoc.engineering.stages import Lacking
     from loopdoc.exchange.escaping import for_terminal
@@ -607,6 +645,28 @@ def _load(path: Path, stderr: TextIO) -> Loaded | None:
 
     loaded = load(path)
     if isinstance(loaded, Unreadable):
+        stderr.write(unreadable_text(loaded.faults, loaded.sources, colour=_colour(stderr)))
+        return None
+    return loaded
+
+
+def _at_revision(path: Path, named: str, stderr: TextIO) -> Loaded | None:
+    """The register at a revision or in another folder; None, with each reason told, where there is none."""
+    from loopdoc.exchange.escaping import for_terminal
+    from loopdoc.exchange.findings import unreadable_text
+    from loopdoc.register.load import Unreadable
+    from loopdoc.revisions.earlier import at_revision
+    from loopdoc.revisions.git import GitError
+
+    if not named:
+        return _load(path, stderr)
+    try:
+        loaded = at_revision(path, named)
+    except GitError as error:
+        stderr.write(for_terminal(f"loopdoc: {error}\n"))
+        return None
+    if isinstance(loaded, Unreadable):
+        stderr.write(for_terminal(f"loopdoc: {named} cannot be read as a register\n"))
         stderr.write(unreadable_text(loaded.faults, loaded.sources, colour=_colour(stderr)))
         return None
     return loaded

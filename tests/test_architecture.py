@@ -20,11 +20,11 @@ RANK = {
     "register": 0,
     "engineering": 1,
     "rules": 2,
-    "documents": 3,
-    "exchange": 3,
     "revisions": 3,
-    "cli": 4,
-    "__main__": 5,
+    "documents": 4,
+    "exchange": 4,
+    "cli": 5,
+    "__main__": 6,
 }
 # The package's own __init__ (the version) stands below every stage.
 BELOW_ALL = "__init__"

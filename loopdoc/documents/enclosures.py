@@ -67,7 +67,7 @@ def statement(kind: str, page: Page, sources: Mapping[str, bytes]) -> Statement:
         status=document.revision.status,
         draft=document.draft,
         fingerprint=fingerprint(sources),
-        content=_content(page),
+        content=content(page),
         program=f"loopdoc {__version__}",
     )
 
@@ -95,8 +95,11 @@ def _results(basis: Basis, kind: str, page: Page) -> Iterator[Enclosure]:
         yield Enclosure(RESULTS_NAME, records_text(shown).encode(), "application/yaml", "Results of loop checks")
 
 
-def _content(page: Page) -> str:
-    """A change elsewhere in the register alters the fingerprint and the check, not what this document says."""
+def content(page: Page) -> str:
+    """SHA-256 of what a document says.
+
+    A change elsewhere in the register alters the fingerprint and the check, not what this document says.
+    """
     document = replace(page.document, fingerprint="", check_state="", generator="")
     html = render(page.template, document=document, stylesheet="", **page.view)
     return hashlib.sha256(html.encode()).hexdigest()
