@@ -101,6 +101,8 @@ def _sum(
     bands = _bands(function, commander, unit, plant)
     if isinstance(bands, Undecided):
         return bands
+    if not bands:
+        return Undecided(f"nothing is added in {function.tag}")
     weight = function.weights.get(commander, 1.0)
     low, high = sorted((weight * band[0], weight * band[1]))
     words = []
@@ -110,7 +112,7 @@ def _sum(
         low, high = low + ends[0], high + ends[1]
         times = "" if weight == 1 else f"{weight:g} times "
         words.append(f"{times}{tag} ({added} in operation)")
-    return low, high, f"{function.tag} adds {' and '.join(words)}" if words else f"{function.tag} adds nothing"
+    return low, high, f"{function.tag} adds {' and '.join(words)}"
 
 
 def _bands(function: Function, commander: str, unit: Unit, plant: Plant) -> tuple[Range, ...] | Undecided:

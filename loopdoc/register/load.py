@@ -187,7 +187,8 @@ class _Reader:
         if kind is float:
             return float(value) if isinstance(value, int | float) and not isinstance(value, bool) else _UNREADABLE
         if kind is str:
-            return value if isinstance(value, str) else _UNREADABLE
+            refused = origin.place(*steps) in self._told  # a word that the schema does not know
+            return value if isinstance(value, str) and not refused else _UNREADABLE
         if kind is bool:
             return value if isinstance(value, bool) else False
         return self._part(Origin(origin.source, (*origin.path, *steps)), value, kind)

@@ -86,11 +86,12 @@ class TextFile:
     def path_at(self, line: int, column: int) -> tuple[str | int, ...]:
         """Path of the value (or of the key) at a place; the inverse of `place`.
 
-        A mapping in lines of its own begins where its first key does; the place is then taken for the mapping's.
+        A mapping in lines of its own begins where its first key does; the place is then taken for the key's, but for
+        the keys of a mapping that is an entry of a list: that is known by where it begins.
         """
         path: tuple[str | int, ...] = ()
         spot = self.spot
-        while spot.inside and (spot.line, spot.column) != (line, column):
+        while spot.inside and (spot.key_line, spot.key_column) != (line, column):
             steps = list(spot.inside) if isinstance(spot.inside, dict) else range(len(spot.inside))
             spots = list(spot.inside.values()) if isinstance(spot.inside, dict) else spot.inside
             index = bisect_right(spots, (line, column), key=lambda inner: (inner.key_line, inner.key_column)) - 1

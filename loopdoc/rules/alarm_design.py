@@ -60,7 +60,10 @@ def alarm_deadband(subject: LoopAlarm, limits: Limits) -> Iterator[Draft]:
     if not same_difference(written.unit, band.unit):
         not_checked("the dead band has a unit of another kind")
     size = abs(written.difference_in(band.unit.symbol))
-    yield from _clears_too_late(subject, written, size, band)
+    late = _clears_too_late(subject, written, size, band)
+    if late is not None:
+        yield late
+        return
     usual = _usual_deadband(loop, limits)
     if usual is None:
         return
@@ -92,21 +95,22 @@ def alarm_deadband(subject: LoopAlarm, limits: Limits) -> Iterator[Draft]:
             )
 
 
-def _clears_too_late(subject: LoopAlarm, written: Quantity, size: float, band: Range) -> Iterator[Draft]:
-    """An alarm that clears only when the measurement is beyond its normal value."""
+def _clears_too_late(subject: LoopAlarm, written: Quantity, size: float, band: Range) -> Draft | None:
+    """A finding where an alarm beyond the normal value clears only when the measurement is back past that value."""
     loop, alarm = subject.loop, subject.alarm
     limit, normal = known(alarm.limit), normal_value(loop)
     scale = scale_in(band.unit, loop)
     if alarm.kind == "deviation" or limit is None or normal is None:
-        return
+        return None
     if not scale.takes(limit.unit) or not scale.takes(normal.unit):
-        return
+        return None
     is_high = alarm.kind in SIDES["high"]
-    clears = scale.value(limit) + (-size if is_high else size)
-    usual = scale.value(normal)
-    if above(clears, usual) if is_high else below(clears, usual):
-        return
-    yield draft(
+    comes, usual = scale.value(limit), scale.value(normal)
+    clears = comes + (-size if is_high else size)
+    beyond = above if is_high else below
+    if beyond(clears, usual) or not beyond(comes, usual):  # a limit that is not beyond is the fault, not its dead band
+        return None
+    return draft(
         loop.tag,
         f"its {NAMES[alarm.kind]} alarm at {scale.told(limit)} with a dead band of {written} clears at "
         f"{amount(clears, band.unit)}, but {scale.told(normal)} is normal: it stands while the plant runs as it should",

@@ -35,13 +35,14 @@ def loop_unstable(controlled: ControlledLoop, dynamics: Dynamics) -> Iterator[Dr
         operator takes it out or an interlock trips.
     Breaks:
         A gain above the one at which the loop oscillates steadily; a level loop with so short a reset that
-        its two integrations outrun its dead time; an action that drives the measurement away.
+        its two integrations outrun its dead time.
     Holds:
         No mode of the closed loop grows, the loops below closed as they are tuned; dead time counts in full
         and the execution interval as half of itself. A loop that turns over faster than that holds is judged
         as it is sampled.
     What this check cannot see:
-        A process that is not as the register says. A loop is judged only when those below it are stable.
+        A process that is not as the register says. A loop is judged only when those below it are stable, and one whose
+        action drives the measurement away only by `action-wrong` and `split-range-direction`.
     """
     for chain in _chains(controlled, dynamics):
         _need_stable_below(chain)
@@ -51,13 +52,7 @@ def loop_unstable(controlled: ControlledLoop, dynamics: Dynamics) -> Iterator[Dr
         stage, tuned = chain.chain.stages[-1], controlled.controller
         through = _through(controlled, chain)
         if stage.controller.gain * stage.process.gain < 0:
-            yield draft(
-                controlled.tag,
-                f"it is unstable{through}: with {known(tuned.action)} action the feedback is positive",
-                remedy="correct the action, the effect of the process or the way the final element moves",
-                at=tuned.origin.place("action"),
-            )
-            continue
+            not_checked(f"with {known(tuned.action)} action the feedback is positive{through}")
         factor = margins.gain_margin
         if math.isfinite(factor):
             fault = f"it oscillates steadily already at {factor:.3g} times its gain"
@@ -239,6 +234,7 @@ def cascade_interval_order(link: CascadeLink) -> Iterator[Draft]:
     primary, secondary = link.primary.controller, link.secondary.controller
     own = need(secondary.interval, "the interval of the secondary")
     of_primary = need(primary.interval, "the interval of the primary")
+    only_if(of_primary.value > 0)  # else `tuning-invalid` says so
     if above(time_s(own, "the interval of the secondary"), time_s(of_primary, "the interval of the primary")):
         yield draft(
             link.secondary.tag,
@@ -272,6 +268,8 @@ def cascade_too_slow(link: CascadeLink, dynamics: Dynamics, limits: Limits) -> I
         if chain.chain.levels[-2].loop.tag != secondary.tag:
             continue
         _need_stable_below(chain)
+        if not chain.margins[-1].stable:
+            not_checked(f"{primary.tag} is itself unstable")
         ratio = chain.speed_ratio
         if ratio is None or math.isnan(ratio):
             slow = secondary if math.isnan(chain.margins[-2].crossover_rad_per_s) else primary

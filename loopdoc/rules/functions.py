@@ -17,21 +17,29 @@ from loopdoc.rules.rule import Draft, draft, need, not_checked, only_if, rule
 from loopdoc.rules.values import above, amount, below, equal, forward, measured_range, range_place, rounded
 
 _SELECTORS = ("high select", "low select")
+_NEEDED = {
+    "ratio": (("span", "its span"),),
+    "characteriser": (("curve", "its curve"),),
+    "lead-lag": (("lag", "its lag"),),
+}
+"""What each kind of function needs besides its signals: key, and what it is in words."""
 
 
 @rule(level=Level.WARNING, source="common practice")
 def function_incomplete(function: Function, plant: Plant) -> Iterator[Draft]:
-    """A function lacks an input or a destination without which it has nothing to do.
+    """A function lacks an input, a destination or a value without which it does nothing.
 
     Why:
         A selector with one candidate selects nothing, and a ratio without its flow has nothing to multiply: either a
-        controller's output leads past the function, or the function is left over from an earlier scheme.
+        controller's output leads past the function, or the function is left over from an earlier scheme. Without its
+        curve, its lag or its span nobody can build it, and no rule can follow a signal through it.
     Breaks:
-        A low select to which one output leads; a sum with one input; a ratio without `inputs`; a function without
-        `to` or `outputs` (an error: whoever commands it moves nothing).
+        A low select to which one output leads; a sum with one input; a ratio without `inputs` or without `span`; a
+        characteriser without `curve`; a lead-lag without `lag`; a function without `to` or `outputs` (an error: whoever
+        commands it moves nothing).
     Holds:
-        A selector or a sum takes in two signals or more, a ratio one flow, a split range has two final elements, and
-        each function leads somewhere.
+        A selector or a sum takes in two signals or more, a ratio one flow, a split range has two final elements, each
+        function leads somewhere, and what its kind needs is given.
     What this check cannot see:
         A candidate that is a constant, such as a fixed limit: write a deviation that says so.
     """
@@ -54,6 +62,14 @@ def function_incomplete(function: Function, plant: Plant) -> Iterator[Draft]:
             remedy="add the other final element, or lead the controller to this one",
             at=function.origin.place("outputs"),
         )
+    for key, what in _NEEDED.get(kind, ()):
+        if getattr(function, key) in (None, ()):
+            yield draft(
+                function.tag,
+                f"it is a {kind}, but {what} is not given",
+                remedy=f"write `{key}:`, or `{{hold: reason}}` until it is known",
+                at=function.origin.key(),
+            )
     if function.inputs_held:
         not_checked("the inputs are on hold")
     lacking = ""
@@ -98,7 +114,8 @@ def ratio_range_short(function: Function, plant: Plant) -> Iterator[Draft]:
     only_if(known(function.kind) == "ratio")
     span = forward(need(function.span, "the span of the ratio"), "the span of the ratio").to("fraction")
     normal = known(function.normal)
-    if normal is not None and (below(normal, span.low) or above(normal, span.high)):
+    is_outside = normal is not None and (below(normal, span.low) or above(normal, span.high))
+    if is_outside:
         yield draft(
             function.tag,
             f"its normal ratio, {normal:g}, lies outside its span, {span.low:g} to {span.high:g}",
@@ -122,7 +139,8 @@ def ratio_range_short(function: Function, plant: Plant) -> Iterator[Draft]:
     if not same_kind(flow.unit, band.unit):
         not_checked(f"{tag} and {to} have units of different kinds")
     flow = flow.to(band.unit.symbol)
-    yield from _of_normal_flows(function, span, wild, secondary)
+    if not is_outside:  # else the normal flows only say the same again
+        yield from _of_normal_flows(function, span, wild, secondary)
     if plant.commanders.get(function.tag):
         return
     asked = Range(span.low * flow.low, span.high * flow.high, band.unit)

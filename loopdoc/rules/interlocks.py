@@ -232,7 +232,7 @@ def interlock_voting(interlock: Interlock, plant: Plant) -> Iterator[Draft]:
         other on none. The cause and effect chart, the logic and the test all start from this line.
     Breaks:
         `voting: 2oo3` with two initiators; `3oo2`; two of the votes from one transmitter, under the tag of its loop
-        and under its own.
+        and under its own. Two initiators without `voting` (a warning).
     Holds:
         As many initiators as the voting counts, each on a transmitter of its own, and no more votes asked for than
         there are. A single initiator needs no voting.
@@ -245,6 +245,15 @@ def interlock_voting(interlock: Interlock, plant: Plant) -> Iterator[Draft]:
         not_checked("the initiators are on hold")
     count = len(interlock.initiators) + sum(1 for path in paths if path[:1] == ("initiators",) and len(path) == 2)
     only_if(interlock.voting is not None or count > 1)
+    if interlock.voting is None:
+        yield draft(
+            interlock.tag,
+            f"it has {count} initiators, but how they vote is not given",
+            remedy=f"write `voting:`, as in `voting: 1oo{count}` where each trips by itself",
+            at=interlock.origin.key("initiators"),
+            level=Level.WARNING,
+        )
+        return
     written = need(interlock.voting, "the voting")
     votes = _VOTING.fullmatch(written)
     if votes is None:

@@ -167,15 +167,29 @@ def operating_outside_range(loop: Loop) -> Iterator[Draft]:
 
 def _outside(loop: Loop, group: Part, name: str) -> Iterator[Draft]:
     band = measured_range(loop)
-    for value in readings(group, ("low", "normal", "high"), scale_in(band.unit, loop), name):
-        if above(value.value, band.high) or below(value.value, band.low):
-            yield draft(
-                loop.tag,
-                f"{name} {value.name}, {value.told}, lies outside the measurement range, {band}",
-                remedy=f"bring it into {band}, or give the transmitter a range that holds it",
-                at=value.place,
-                related=((range_place(loop), f"the measurement range, {band}"),),
-            )
+    found, lacking = [], None
+    try:
+        for value in readings(group, ("low", "normal", "high"), scale_in(band.unit, loop), name):
+            if above(value.value, band.high) or below(value.value, band.low):
+                found.append(value)
+    except NotChecked as reason:
+        lacking = reason
+    if found:
+        told = [f"{value.name}, {value.told}," for value in found]
+        listed = told[0] if len(told) == 1 else f"{' '.join(told[:-1])} and {told[-1]}"
+        it = "it" if len(found) == 1 else "them"
+        yield draft(
+            loop.tag,
+            f"{name} {listed} {'lies' if len(found) == 1 else 'lie'} outside the measurement range, {band}",
+            remedy=f"bring {it} into {band}, or give the transmitter a range that holds {it}",
+            at=found[0].place,
+            related=(
+                (range_place(loop), f"the measurement range, {band}"),
+                *((value.place, f"{name} {value.name}, {value.told}") for value in found[1:]),
+            ),
+        )
+    if lacking:
+        raise lacking
 
 
 # ---------------------------------------------------------------- a primary against its secondary

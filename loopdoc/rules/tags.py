@@ -28,7 +28,7 @@ def tag_grammar(defined: DefinedTag, plant: Plant) -> Iterator[Draft]:
     Holds:
         Each whole tag matches the expression under `tags`, and the `unit` written under it is the one that
         the expression reads from it. Transmitters are held to the grammar, but may stand in another unit
-        than the loop they serve.
+        than the loop they serve. A unit that is not under `units` is told by `reference-unknown`.
     What this check cannot see:
         Whether the tag is the one on the drawing.
     """
@@ -43,7 +43,7 @@ def tag_grammar(defined: DefinedTag, plant: Plant) -> Iterator[Draft]:
             related=((plant.register.root.place(("tags",)), "the site's tag grammar"),),
         )
         return
-    if defined.unit is not None and defined.unit != parts["unit"]:
+    if defined.unit not in (None, parts["unit"]) and defined.unit in plant.register.units:
         yield draft(
             defined.tag,
             f"the tag is of unit {parts['unit']}, but the register puts it in unit {defined.unit}",
@@ -99,6 +99,23 @@ def _second_description(
     measurement = known(loop.measurement)
     assert measurement is not None
     differing = [key for key in _OF_THE_TRANSMITTER if _differ(getattr(first, key), getattr(measurement, key))]
+    if not _same_number(plant, loop.tag, first_tag):
+        keys = [f"`{key}`" for key in differing]
+        others = f"{', '.join(keys[:-1])} and {keys[-1]}" if len(keys) > 1 else "".join(keys)
+        yield draft(
+            loop.tag,
+            f"it measures with {transmitter}, which is "
+            + ("an instrument of its own" if first_tag == transmitter else f"the transmitter of {first_tag} already")
+            + (f", and describes it with another {others}" if others else ""),
+            remedy=f"name the transmitter of {loop.tag}; if the two share it on purpose, write "
+            + ("the same in both and a deviation" if others else "a deviation"),
+            at=measurement.origin.place("transmitter"),
+            related=(
+                (first.origin.place("transmitter"), f"where {transmitter} is described first"),
+                *((first.origin.place(key), f"`{key}: {getattr(first, key)}`") for key in differing),
+            ),
+        )
+        return
     for key in differing:
         yield draft(
             loop.tag,
@@ -107,15 +124,6 @@ def _second_description(
             remedy="write the same in both, or name the transmitter that is meant",
             at=measurement.origin.place(key),
             related=((first.origin.place(key), f"what {first_tag} says of {transmitter}"),),
-        )
-    if not differing and not _same_number(plant, loop.tag, first_tag):
-        yield draft(
-            loop.tag,
-            f"it measures with {transmitter}, which is "
-            + ("an instrument of its own" if first_tag == transmitter else f"the transmitter of {first_tag} already"),
-            remedy=f"name the transmitter of {loop.tag}; if the two share it on purpose, write a deviation",
-            at=measurement.origin.place("transmitter"),
-            related=((first.origin.place("transmitter"), f"where {transmitter} is described first"),),
         )
 
 
