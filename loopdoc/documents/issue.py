@@ -12,7 +12,6 @@ from pathlib import Path
 from loopdoc.documents.basis import Basis, Page
 from loopdoc.documents.check_record import check_records
 from loopdoc.documents.enclosures import enclosures
-from loopdoc.documents.index import index_page
 from loopdoc.documents.loop_sheet import loop_sheets
 from loopdoc.documents.narrative import narratives
 from loopdoc.documents.pdf import Enclosure, ensure_available, to_pdf
@@ -23,6 +22,8 @@ from loopdoc.documents.schedule_effects import cause_and_effect_charts
 from loopdoc.documents.schedule_failures import failure_schedules
 from loopdoc.documents.schedule_lists import channel_lists, instrument_lists
 from loopdoc.documents.schedule_tuning import tuning_schedules
+from loopdoc.documents.site import Frame, Site
+from loopdoc.documents.site_places import path_of
 
 KINDS: dict[str, Callable[[Basis], Iterator[Page]]] = {
     "narrative": lambda basis: narratives(basis, supplements(basis)),
@@ -80,28 +81,31 @@ def issue(
     if "html" in formats:
         write_whole(out / STYLE_SHEET, web_style_sheet().encode())
         files.append(STYLE_SHEET)
-        for page in pages:
-            name = f"{page.folder}/{page.name}.html"
-            write_whole(out / name, _html(page, stylesheet=f"../{STYLE_SHEET}").encode())
-            files.append(name)
+        site = Site(basis, issued, formats)
+        for kind, page in issued:
+            files.append(_write_page(out, page, site.frame(kind, page)))
             done += 1
             progress(done, total)
     if "pdf" in formats:
-        names = [f"{page.folder}/{page.name}.pdf" for page in pages]
+        names = [f"{path_of(page)}.pdf" for page in pages]
         for name, content in zip(names, _pdfs(basis, issued, jobs), strict=True):
             write_whole(out / name, content)
             files.append(name)
             done += 1
             progress(done, total)
     if "html" in formats:
-        index = index_page(basis, pages, formats)
-        write_whole(out / "index.html", _html(index, stylesheet=STYLE_SHEET).encode())
-        files.append("index.html")
+        files.extend(_write_page(out, page, frame) for page, frame in site.pages())
     return Issued(out, len(pages), tuple(files))
 
 
-def _html(page: Page, *, stylesheet: str) -> str:
-    return render(page.template, document=page.document, stylesheet=stylesheet, **page.view)
+def _write_page(out: Path, page: Page, frame: Frame) -> str:
+    """Write a page of the site; returns its path below the folder."""
+    name = f"{path_of(page)}.html"
+    html = render(
+        page.template, document=page.document, stylesheet=f"{frame.root}{STYLE_SHEET}", site=frame, **page.view
+    )
+    write_whole(out / name, html.encode())
+    return name
 
 
 def pdf_of(basis: Basis, kind: str, page: Page) -> bytes:
@@ -119,7 +123,8 @@ def _pdfs(basis: Basis, issued: Sequence[tuple[str, Page]], jobs: int) -> Iterat
 
 
 def _pdf_source(basis: Basis, kind: str, page: Page) -> tuple[str, tuple[Enclosure, ...], str]:
-    return _html(page, stylesheet=""), enclosures(basis, kind, page), page.document.dated
+    html = render(page.template, document=page.document, stylesheet="", **page.view)
+    return html, enclosures(basis, kind, page), page.document.dated
 
 
 def _to_pdf(source: tuple[str, tuple[Enclosure, ...], str]) -> bytes:

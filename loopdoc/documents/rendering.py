@@ -36,6 +36,7 @@ def _environment() -> SandboxedEnvironment:
         lstrip_blocks=True,
     )
     environment.globals.pop("lipsum", None)
+    environment.globals["site"] = None  # a page of the site puts its frame in the place of this
     return environment
 
 
@@ -73,4 +74,4 @@ def web_style_sheet() -> str:
         f"src: url('data:font/ttf;base64,{base64.b64encode(font(name)).decode()}') format('truetype') }}"
         for (family, style, weight), name in FONTS.items()
     )
-    return faces + "\n" + template_text("style.css")
+    return "\n".join((faces, template_text("style.css"), template_text("site.css")))

@@ -8,7 +8,7 @@ from dataclasses import dataclass
 from urllib.parse import quote, unquote
 
 from loopdoc.documents.basis import Page
-from loopdoc.documents.view import Section
+from loopdoc.documents.view import Section, Table
 from loopdoc.documents.whereabouts import anchor, document_name
 
 PER_LOOP = {"loop-sheet": "sheet", "check-record": "check record", "response": "responses"}
@@ -98,6 +98,6 @@ def _sections_by_tag(page: Page) -> Iterator[tuple[str, Section]]:
             yield from ((run.text, part) for run in part.tags if run.kind == "tag")
         if section.anchor == "indicators":
             for block in section.blocks:
-                if block.kind == "table":
+                if isinstance(block, Table):
                     for row in block.rows:
                         yield from ((run.text, section) for run in row[0] if run.kind == "tag")

@@ -25,7 +25,10 @@ def plot_data(plant: Plant, comparison: Comparison) -> dict[str, Any]:
     return {
         "tag": comparison.dynamics.chain.lead.tag,
         "upsets": [
-            {"name": upset_name(comparison, entry), "panels": [_panel(panel) for panel in panels(plant, comparison, entry)]}
+            {
+                "name": upset_name(comparison, entry),
+                "panels": [_panel(panel) for panel in panels(plant, comparison, entry)],
+            }
             for entry in comparison.scenarios
         ],
     }
@@ -56,13 +59,13 @@ def _curve(curve: Curve, x: FloatArray, y: FloatArray, height: float, digits: in
         "name": curve.label,
         "style": curve.style,
         "x": [float(f"{value:.6g}") for value in x[kept]],
-        "y": [round(float(value), digits + 1) for value in y[kept]],
+        "y": [round(float(value), digits + 2) for value in y[kept]],
     }
 
 
 def _digits(height: float) -> int:
     """Digits after the point with which a curve of this height is read."""
-    return max(0, 3 - math.floor(math.log10(height))) if height > 0.0 else 3
+    return max(0, 2 - math.floor(math.log10(height))) if height > 0.0 else 2
 
 
 def thinned(x: FloatArray, y: FloatArray, tolerance: float) -> list[int]:

@@ -1,0 +1,124 @@
+"use strict";
+(() => {
+  // Finds, filters and sorts the rows of one table. Without this script the whole table stands there.
+  const PAGE = 200;
+  const form = document.querySelector(".finder form");
+  if (!form) return;
+  const table = document.getElementById(form.dataset.for);
+  const body = table.tBodies[0];
+  const also = JSON.parse(document.getElementById("site-data").textContent).also;
+  const said = form.querySelector(".found");
+  const more = document.querySelector(".more");
+  const filters = [...form.querySelectorAll("select")];
+  const find = form.elements.find;
+  // Hyphens and blanks inside a tag do not matter: tic2014 finds TIC-2014.
+  const plain = (text) => text.toLowerCase().replace(/[-\u2010-\u2015_/.]/g, "");
+  const rows = [...body.rows].map((row, index) => ({
+    row, index, shown: plain(row.textContent), also: also[index] || "", all: plain(row.textContent + " " + (also[index] || "")),
+  }));
+  let order = rows;
+  let limit = PAGE;
+
+  function fits(entry, words) {
+    for (const filter of filters) {
+      const wanted = filter.value;
+      if (!wanted) continue;
+      const has = entry.row.dataset[filter.name] || "";
+      if (filter.name === "state" ? !has.split(" ").includes(wanted) : has !== wanted) return false;
+    }
+    return words.every((word) => entry.all.includes(word));
+  }
+
+  // What a row was found by, where the row itself does not show it.
+  function tell(entry, words) {
+    const old = entry.row.querySelector(".match");
+    if (old) old.remove();
+    const hidden = words.filter((word) => !entry.shown.includes(word));
+    if (!hidden.length) return;
+    const lines = entry.also.split("\n");
+    const line = lines.find((text) => hidden.every((word) => plain(text).includes(word))) ||
+      lines.find((text) => hidden.some((word) => plain(text).includes(word)));
+    if (!line) return;
+    const note = document.createElement("span");
+    note.className = "match";
+    note.textContent = line.length > 160 ? line.slice(0, 160) + " …" : line;
+    entry.row.cells[1].append(note);
+  }
+
+  function show() {
+    const words = find.value.trim().split(/\s+/).map(plain).filter(Boolean);
+    let count = 0;
+    for (const entry of order) {
+      const found = fits(entry, words);
+      if (found) count += 1;
+      const beyond = found && count > limit;
+      entry.row.hidden = !found || beyond;
+      entry.row.classList.toggle("paged", beyond);
+      if (found && !beyond) tell(entry, words);
+    }
+    const noun = form.dataset.noun;
+    said.textContent = `${count} of ${rows.length} ${noun}` + (count > limit ? `, the first ${limit} shown` : "");
+    more.hidden = count <= limit;
+  }
+
+  function remember() {
+    const parts = [find, ...filters].filter((field) => field.value)
+      .map((field) => `${field.name}=${encodeURIComponent(field.value)}`);
+    history.replaceState(null, "", parts.length ? `#${parts.join("&")}` : location.pathname.split("/").pop() || "#");
+  }
+
+  function recall() {
+    for (const part of location.hash.slice(1).split("&")) {
+      const [name, value] = part.split("=");
+      const field = form.elements[name];
+      if (!field || value === undefined) continue;
+      try { field.value = decodeURIComponent(value); } catch { field.value = ""; }
+    }
+  }
+
+  const heads = [...table.tHead.rows[0].cells];
+  const compare = new Intl.Collator("en", { numeric: true }).compare;
+  heads.forEach((head, column) => {
+    if ("plain" in head.dataset) return;
+    const button = document.createElement("button");
+    button.type = "button";
+    button.textContent = head.textContent;
+    head.replaceChildren(button);
+    button.addEventListener("click", () => {
+      const was = head.getAttribute("aria-sort");
+      // Counts are asked for from the top, names from the start; a third press gives the order of the register.
+      const first = rows.some((entry) => entry.row.cells[column].matches(".number, [data-sort]")) ? "descending" : "ascending";
+      const second = first === "ascending" ? "descending" : "ascending";
+      const now = !was ? first : was === first ? second : null;
+      heads.forEach((other) => other.removeAttribute("aria-sort"));
+      order = [...rows];
+      if (now) {
+        head.setAttribute("aria-sort", now);
+        const keys = rows.map((entry) => {
+          const cell = entry.row.cells[column];
+          return cell.dataset.sort ?? cell.textContent.trim();
+        });
+        const turn = now === "ascending" ? 1 : -1;
+        // Rows that say nothing stand last whichever way.
+        order.sort((a, b) => (!keys[a.index] - !keys[b.index]) || turn * compare(keys[a.index], keys[b.index]) || a.index - b.index);
+      }
+      body.append(...order.map((entry) => entry.row));
+      show();
+    });
+  });
+
+  let waiting = 0;
+  function changed() {
+    limit = PAGE;
+    show();
+    remember();
+  }
+  form.addEventListener("input", () => { clearTimeout(waiting); waiting = setTimeout(changed, rows.length > 2000 ? 150 : 0); });
+  form.addEventListener("submit", (event) => event.preventDefault());
+  form.addEventListener("reset", () => setTimeout(changed));
+  more.querySelector("button").addEventListener("click", () => { limit += PAGE; show(); });
+  addEventListener("hashchange", () => { recall(); show(); });
+  recall();
+  form.parentElement.hidden = false;
+  show();
+})();
