@@ -507,3 +507,44 @@ def test_an_alarm_beyond_what_the_primary_can_ask_does_not_come(tarn: Plant) -> 
     # high: LIC-1010 asks for no less than 2 t/h; FIC-1002 alarms on the way, at 6 t/h.
     told = {one.loop.tag: one for one in effect(tarn, "LIC-1010", Failure.MEASUREMENT_HIGH).consequences}
     assert [one.alarm.kind for one in told["FIC-1002"].alarms] == ["low"]
+
+
+# ---------------------------------------------------------------- functions on the way, by hand
+
+FED_FORWARD = """
+format: 1
+site: {{name: Fellside}}
+revision: {{code: A, date: 2026-11-20, status: issued for review}}
+units: {{"30": {{name: Steam}}}}
+loops:
+  FI-3002: {{unit: "30", measurement: {{transmitter: FT-3002, variable: flow, range: 0 to 20 t/h}}}}
+  FIC-3003:
+    unit: "30"
+    measurement: {{transmitter: FT-3003, variable: flow, range: 0 to 25 t/h}}
+    controller: {{action: reverse, output: {{to: FY-3005}}, modes: {{normal: cascade}}}}
+    process: {{effect: rises}}
+final_elements:
+  FV-3003: {{unit: "30", kind: control valve, opens_on: rising signal}}
+functions:
+  FY-3001: {{kind: lead-lag, inputs: [FT-3002], lag: 5 s, to: FY-3002}}
+  FY-3002: {{kind: characteriser, to: FY-3003, curve: [{{at: 0 t/h, gives: {low}}}, {{at: 20 t/h, gives: {high}}}]}}
+  FY-3003: {{kind: sum, weights: {{FY-3002: {weight}}}, to: FIC-3003}}
+  FY-3005: {{kind: characteriser, to: FV-3003, curve: [{{at: 0 %, gives: {shut}}}, {{at: 100 %, gives: {open}}}]}}
+"""
+
+
+@pytest.mark.parametrize("weight", [1.0, -0.5])
+@pytest.mark.parametrize(("low", "high"), [("0 t/h", "18 t/h"), ("18 t/h", "0 t/h")])
+@pytest.mark.parametrize(("shut", "open_"), [("0 %", "100 %"), ("100 %", "0 %")])
+def test_a_reading_is_followed_through_every_function_behind_it(
+    weight: float, low: str, high: str, shut: str, open_: str, tmp_path: Path
+) -> None:
+    plant = written(tmp_path, FED_FORWARD.format(weight=weight, low=low, high=high, shut=shut, open=open_))
+    found = effect(plant, "FI-3002", Failure.MEASUREMENT_HIGH)
+
+    asked = (1 if weight > 0 else -1) * (1 if low == "0 t/h" else -1)
+    (setpoint,) = found.setpoints
+    assert (setpoint.loop.tag, setpoint.by, setpoint.direction) == ("FIC-3003", "FY-3003", asked)
+    (move,) = found.elements
+    # The flow controller raises its output for a higher setpoint; a falling curve shuts the valve by it.
+    assert (move.element.tag, move.direction) == ("FV-3003", asked * (1 if shut == "0 %" else -1))

@@ -156,16 +156,26 @@ loops:
     measurement: {range: 32 to 212 degF}
     controller: {output: {to: TIC-2014, span: 60 to 120 degC}}
   TI-2061: {unit: "20", measurement: {range: 0 to 100 degC}}
+  FIC-2071: {unit: "20", measurement: {range: 0 to 15 t/h}, controller: {output: {to: FY-2071}}}
+  TIC-2081: {unit: "20", measurement: {range: 0 to 9 degC}, controller: {output: {to: FY-2081, span: 0 to 100 %}}}
+  FIC-2091: {unit: "20", measurement: {range: 0 to 15 t/h}, controller: {output: {to: FY-2091}}}
 final_elements:
   FV-2011: {unit: "20", kind: control valve, opens_on: rising signal}
   FV-2012: {unit: "20", kind: control valve, opens_on: falling signal}
   FV-2013: {unit: "20", kind: control valve}
+  FV-2071: {unit: "20", kind: control valve, opens_on: rising signal}
+  FV-2091: {unit: "20", kind: control valve, opens_on: rising signal}
   PV-2031A: {unit: "20", kind: control valve, opens_on: falling signal, output_block: reversed}
   PV-2031B: {unit: "20", kind: control valve, opens_on: rising signal}
 functions:
   FY-2021: {kind: sum, inputs: [FT-2011], weights: {LIC-2021: -0.5}, to: FIC-2011}
   PY-2031: {kind: split range, outputs: {PV-2031A: 40 to 0 %, PV-2031B: 60 to 100 %}}
   FY-2041: {kind: ratio, inputs: [FT-2011], to: FIC-2011}
+  FY-2071: {kind: characteriser, to: FV-2071,
+            curve: [{at: 0 %, gives: 100 %}, {at: 50 %, gives: 20 %}, {at: 100 %, gives: 0 %}]}
+  FY-2081: {kind: characteriser, to: FIC-2011,
+            curve: [{at: 0 %, gives: 0 t/h}, {at: 50 %, gives: 4 t/h}, {at: 100 %, gives: 12 t/h}]}
+  FY-2091: {kind: characteriser, to: FV-2091}
 """
 
 
@@ -202,6 +212,9 @@ TAKEN = [
     ("PIC-2031", "output", [70.0, 80.0], "%", "PV-2031B", [25.0, 50.0], "%"),
     ("TIC-2051", "output", [0.0, 50.0], "%", "TIC-2014", [60.0, 90.0], "degC"),
     ("TIC-2051", "secondary", [140.0, 194.0], "degF", "TIC-2014", [60.0, 90.0], "degC"),
+    ("FIC-2071", "output", [25.0, 75.0], "%", "FV-2071", [60.0, 10.0], "%"),  # halfway along each line of its curve
+    ("TIC-2081", "output", [25.0, 75.0], "%", "FIC-2011", [2.0, 8.0], "t/h"),
+    ("TIC-2081", "output", [0.25, 0.75], "fraction", "FIC-2011", [2.0, 8.0], "t/h"),
 ]
 
 
@@ -213,7 +226,7 @@ def test_an_output_becomes_what_the_process_is_stated_for(
     assert isinstance(found, Commanded), found
     assert (found.tag, str(found.unit)) == (end, end_unit)
     assert found.moved == pytest.approx(values, abs=1e-9)
-    assert found.reversed is ((tag == "FIC-2012" and recorded == "output") or end == "PV-2031A")
+    assert found.reversed is ((tag == "FIC-2012" and recorded == "output") or end in ("PV-2031A", "FV-2071"))
     assert found.branch is (tag == "PIC-2031")
 
 
@@ -236,6 +249,7 @@ LACKING = [
     ("TIC-2014", "output", "degC", "in `t/h` or in `%`"),
     ("TIC-2014", "secondary", "degC", "write the record in `t/h`"),
     ("PIC-2031", "opening", "%", "name the column `output`"),
+    ("FIC-2091", "output", "%", "the curve of FY-2091 is not given; record the `opening` of FV-2091"),
     ("TIC-2041", "output", "%", "what FY-2041 makes of the output of TIC-2041 does not follow"),
 ]
 

@@ -14,7 +14,8 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from loopdoc.engineering.direction import Undecided, element_sign
+from loopdoc.engineering.direction import Undecided, curve_sign, element_sign
+from loopdoc.engineering.functions import curve_of
 from loopdoc.engineering.pairing import ControlledLoop, Plant, Route
 from loopdoc.engineering.stages import Lacking
 from loopdoc.register.model import FinalElement, Function, Loop, known
@@ -134,8 +135,7 @@ def _opening(loop: ControlledLoop, recorded: str, moved: FloatArray, unit: Unit)
         (route,) = loop.routes
         if recorded == OPENING:
             return route, percent
-        weight = _weight(loop, route)
-        return route, _turned(route, weight * percent)
+        return route, _turned(route, _carried(loop, route, percent, UNITS["%"], UNITS["%"]))
     if recorded == OPENING:
         raise _Lacking(f"{loop.tag} moves {tags}: name the column `output`, so that its split range says which moved")
     openings = [(route, _turned(route, _in_branch(route, percent))) for route in loop.routes]
@@ -166,7 +166,8 @@ def _is_reversed(route: Route) -> bool:
     if isinstance(sign, Undecided):
         raise _Lacking(f"{sign.reason}; write it, or record the `opening`")
     downwards = route.branch is not None and route.branch.low > route.branch.high
-    return (sign.sign < 0) != downwards
+    falling = sum(known(function.kind) == "characteriser" and curve_sign(function) == -1 for function in route.via)
+    return ((sign.sign < 0) != downwards) != (falling % 2 == 1)
 
 
 def _turned(route: Route, percent: FloatArray) -> FloatArray:
@@ -193,40 +194,60 @@ def _secondary(
         )
     if recorded == SECONDARY:
         return _reading(moved, unit, own, f"the measurement of {tag}"), own.unit
-    weight = _weight(loop, route)
-    if unit.symbol != "%":
-        if not same_kind(unit, own.unit):
-            raise _Lacking(f"{loop.tag} commands {tag} in `{own.unit}`; write its output in `{own.unit}` or in `%`")
-        return weight * _mapped(moved, lambda value: convert(value, unit, own.unit)), own.unit
+    _need_followed(loop, route)
     output = known(loop.controller.output)
     span = known(output.span) if output else None
-    if span is None or span.unit.difference_kind != own.unit.difference_kind:
+    shaped = any(known(function.kind) == "characteriser" for function in route.via)
+    asked_in = span.unit if shaped and span else own.unit  # a curve takes what enters it in a unit of its own
+    if unit.symbol != "%":
+        if not same_kind(unit, asked_in):
+            raise _Lacking(f"{loop.tag} commands {tag} in `{asked_in}`; write its output in `{asked_in}` or in `%`")
+        written = _mapped(moved, lambda value: convert(value, unit, asked_in))
+        return _carried(loop, route, written, asked_in, own.unit), own.unit
+    if span is None or (span.unit.difference_kind != own.unit.difference_kind and not shaped):
         raise _Lacking(
             f"the output span of {loop.tag} does not say what a percent of output asks of {tag}; record that as "
             f"`secondary [{own.unit}]`"
         )
     asked = span.low + moved * span.span / 100.0
     through_sum = any(known(function.kind) == "sum" for function in route.via)
-    if through_sum or span.unit.kind != own.unit.kind:  # an amount that is added is a difference of readings
-        return weight * _mapped(asked, lambda value: convert_difference(value, span.unit, own.unit)), own.unit
-    return weight * _mapped(asked, lambda value: convert(value, span.unit, own.unit)), own.unit
+    if not shaped and (through_sum or span.unit.kind != own.unit.kind):
+        # An amount that is added is a difference of readings.
+        added = _mapped(asked, lambda value: convert_difference(value, span.unit, own.unit))
+        return _carried(loop, route, added, own.unit, own.unit), own.unit
+    asked = _mapped(asked, lambda value: convert(value, span.unit, asked_in))
+    return _carried(loop, route, asked, asked_in, own.unit), own.unit
 
 
-def _weight(loop: ControlledLoop, route: Route) -> float:
-    """By what the functions on the way multiply a change of the output."""
-    weight, commander = 1.0, loop.tag
+def _carried(loop: ControlledLoop, route: Route, values: FloatArray, unit: Unit, end: Unit) -> FloatArray:
+    """What the functions on the way make of an output in a unit, in the unit of the end."""
+    _need_followed(loop, route)
+    commander = loop.tag
     for function in route.via:
         kind = known(function.kind)
         if kind == "sum":
-            weight *= function.weights.get(commander, 1.0)
-        elif not (_is_selector(function) or kind == "split range"):
-            instead = "the `opening`" if isinstance(route.end, FinalElement) else "the `secondary`"
+            values = function.weights.get(commander, 1.0) * values
+        elif kind == "characteriser":
+            curve = curve_of(function, given=unit, gives=end)
+            if isinstance(curve, Undecided):
+                raise _Lacking(f"{curve.reason}; record {_instead(route)}")
+            values, unit = np.interp(values, curve.inputs, curve.outputs), end
+        commander = function.tag
+    return values
+
+
+def _need_followed(loop: ControlledLoop, route: Route) -> None:
+    """Refuse a way through a function of which the register does not say what it makes of an output."""
+    for function in route.via:
+        if not (_is_selector(function) or known(function.kind) in ("sum", "characteriser", "split range")):
             raise _Lacking(
                 f"what {function.tag} makes of the output of {loop.tag} does not follow from the register; record "
-                f"{instead} of {route.end.tag}"
+                f"{_instead(route)}"
             )
-        commander = function.tag
-    return weight
+
+
+def _instead(route: Route) -> str:
+    return f"the {'`opening`' if isinstance(route.end, FinalElement) else '`secondary`'} of {route.end.tag}"
 
 
 def _is_selector(function: Function) -> bool:

@@ -10,7 +10,7 @@ from __future__ import annotations
 from collections.abc import Iterable
 from dataclasses import dataclass, field
 
-from loopdoc.engineering.direction import Undecided, element_sign, process_on, process_sign
+from loopdoc.engineering.direction import Undecided, curve_sign, element_sign, process_on, process_sign
 from loopdoc.engineering.pairing import ControlledLoop, Plant, Route
 from loopdoc.register.model import FinalElement, Function, Loop, known
 from loopdoc.register.quantity import Quantity
@@ -138,7 +138,7 @@ def command(plant: Plant, controlled: ControlledLoop, output: Direction, moves: 
         selector: Function | None = None
         instead: tuple[str, ...] = ()
         for function in route.via:
-            direction = times(direction, 1 if function.weights.get(by, 1.0) >= 0 else -1)
+            direction = times(direction, _turn(function, by))
             takes = SELECTORS.get(known(function.kind) or "")
             others = tuple(tag for tag in plant.commanders.get(function.tag, ()) if tag != by)
             if takes is not None and others and direction != takes:
@@ -164,6 +164,13 @@ def command(plant: Plant, controlled: ControlledLoop, output: Direction, moves: 
             _follow(plant, secondary, direction, moves)
 
 
+def _turn(function: Function, entry: str) -> Direction:
+    """+1 where what comes out of a function rises with what enters it, -1 where it falls."""
+    if known(function.kind) == "characteriser":
+        return curve_sign(function)
+    return 1 if function.weights.get(entry, 1.0) >= 0 else -1
+
+
 def ways_to(
     plant: Plant, controlled: ControlledLoop, element: str, opening: Direction
 ) -> list[tuple[ControlledLoop, Route, Direction]]:
@@ -175,15 +182,21 @@ def ways_to(
 
 
 def through_function(plant: Plant, function: Function, entry: str, reading: Direction, moves: Moves) -> None:
-    """Follow a reading that enters a function to the setpoint which the function makes."""
+    """Follow a reading that enters a function, and those behind it, to the setpoint that is made of it."""
+    passed = {function.tag}
+    while True:
+        if known(function.kind) in ("sum", "ratio", "lead-lag", "characteriser"):
+            reading = times(reading, _turn(function, entry))
+        else:
+            reading = Undecided(f"what {function.tag} makes of {entry} does not follow from the register")
+        behind = plant.register.functions.get(known(function.to) or "")
+        if behind is None or behind.tag in passed:
+            break
+        entry, function = function.tag, behind
+        passed.add(function.tag)
     secondary = plant.controlled.get(known(function.to) or "")
     if secondary is None:
         return
-    kind = known(function.kind)
-    if kind == "sum":
-        reading = times(reading, 1 if function.weights.get(entry, 1.0) >= 0 else -1)
-    elif kind not in ("ratio", "lead-lag"):
-        reading = Undecided(f"what {function.tag} makes of {entry} does not follow from the register")
     heard = reading if normal_mode(secondary) in (None, "cascade") else 0
     moves.setpoints.append(SetpointMove(secondary, function.tag, heard, None, None, ()))
     for corrector in plant.commanders.get(function.tag, ()):

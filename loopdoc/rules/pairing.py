@@ -120,6 +120,11 @@ def final_element_unmoved(element: FinalElement, plant: Plant) -> Iterator[Draft
     """
     only_if(known(element.kind) in ("control valve", "damper", "variable-speed drive", "heater bank"))
     if element.tag not in plant.commanders and element.tag not in plant.interlocked:
+        for loop in plant.register.loops.values():
+            controller = known(loop.controller)
+            output = known(controller.output) if controller else None
+            if output is not None:
+                need(output.to or "", f"the destination of {loop.tag}")
         yield draft(
             element.tag,
             f"it is a {known(element.kind)}, but no output leads to it and no interlock acts on it",

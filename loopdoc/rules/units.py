@@ -66,6 +66,8 @@ class _Value:
     """The measurement range, of which a percentage may have been meant."""
     owner: Loop | Instrument | None = None
     """Whose range has the unit that is wanted."""
+    group: str = ""
+    """What it is one of several values of, which were written in one unit and are told together."""
 
 
 @rule(level=Level.ERROR, source="BIPM SI Brochure, 9th edition (2019): only quantities of one kind can be compared")
@@ -96,6 +98,7 @@ def unit_incompatible(part: Loop | Instrument | Function | Interlock | Trip, pla
         yield in_another_kind
         return  # which of the two is wrong decides what all the others must agree with
     lacking = ""
+    told: dict[str, Unit] = {}
     for value in _values(part, plant):
         if value.written is None:
             continue
@@ -105,10 +108,12 @@ def unit_incompatible(part: Loop | Instrument | Function | Interlock | Trip, pla
             lacking = lacking or f"{value.against} is not known"
         else:
             fault = _fault(value.written.unit, value.wanted, value.is_difference)
-            if fault:
+            if fault and told.get(value.group) != value.written.unit:
                 yield _draft(tag, value, fault)
+            if fault and value.group:
+                told[value.group] = value.written.unit
     if isinstance(part, Loop):
-        yield from _gains(part, plant)
+        yield from _gains(part, plant, told.get("output"))
         process = known(part.process)
         lacking = lacking or ("the process gain is on hold" if process and isinstance(process.gain, Hold) else "")
     if lacking:
@@ -200,7 +205,7 @@ def _of_loop(loop: Loop, plant: Plant) -> Iterator[_Value]:
     for name, group in (("operating", known(loop.operating)), ("setpoint", setpoint)):
         for key in ("low", "normal", "high") if group else ():
             assert group is not None
-            yield _against_range(f"{name} {key}", group, key, loop)
+            yield replace(_against_range(f"{name} {key}", group, key, loop), group=name)
     for alarm in loop.alarms.values():
         name = f"the {alarm.kind.replace('_', '-')} alarm"
         yield _against_range(f"the limit of {name}", alarm, "limit", loop, alarm.kind == "deviation")
@@ -248,12 +253,15 @@ def _of_output(controlled: ControlledLoop) -> Iterator[_Value]:
     if output is None or not controlled.routes:
         return
     route = controlled.routes[0]
+    if isinstance(route.end, Loop) and route.end.controller is None:
+        return  # an indicator takes no setpoint, of which `pairing-without-controller` tells
     unit, against = _commanded(route)
     is_difference = any(known(function.kind) == "sum" for function in route.via)
     owner = route.end if isinstance(route.end, Loop) else None
     for key in ("span", "low", "high"):
         what = "the output span" if key == "span" else f"the {key} output limit"
-        yield _Value(what, getattr(output, key), output.origin, (key,), unit, against, is_difference, owner=owner)
+        value = _Value(what, getattr(output, key), output.origin, (key,), unit, against, is_difference, owner=owner)
+        yield replace(value, group="output")
 
 
 def _commanded(route: Route) -> tuple[Unit | None, str]:
@@ -287,17 +295,20 @@ def _of_trip(trip: Trip) -> Iterator[_Value]:
 # ---------------------------------------------------------------- process gains
 
 
-def _gains(loop: Loop, plant: Plant) -> Iterator[Draft]:
+def _gains(loop: Loop, plant: Plant, mistaken: Unit | None) -> Iterator[Draft]:
+    """Findings on process gains; ``mistaken`` is the unit of an output of which it was told already."""
     controlled = plant.controlled.get(loop.tag)
     for route in controlled.routes if controlled else ():
         assert controlled is not None
         process = process_on(controlled, route)
         gain = known(process.gain) if process else None
         if process is not None and gain is not None:
-            yield from _gain(controlled, route, process, gain)
+            yield from _gain(controlled, route, process, gain, mistaken)
 
 
-def _gain(controlled: ControlledLoop, route: Route, process: Process, gain: Gain) -> Iterator[Draft]:
+def _gain(
+    controlled: ControlledLoop, route: Route, process: Process, gain: Gain, mistaken: Unit | None
+) -> Iterator[Draft]:
     loop = controlled.loop
     place = process.origin.place("gain")
     unit = measured_range(loop).unit
@@ -326,6 +337,8 @@ def _gain(controlled: ControlledLoop, route: Route, process: Process, gain: Gain
             related=((range_place(loop), f"the measurement range, in {unit}"),),
         )
     wanted, against = _moved(route)
+    if mistaken is not None and not _fault(gain.denominator, mistaken, is_difference=True):
+        return
     if wanted is not None and (fault := _fault(gain.denominator, wanted, is_difference=True)):
         yield draft(
             loop.tag,
@@ -339,4 +352,6 @@ def _gain(controlled: ControlledLoop, route: Route, process: Process, gain: Gain
 def _moved(route: Route) -> tuple[Unit | None, str]:
     if not isinstance(route.end, Loop):
         return _PERCENT, f"the opening of {route.end.tag}"
+    if route.end.controller is None:
+        return None, ""
     return _unit(route.end), f"the measurement of {route.end.tag}"
