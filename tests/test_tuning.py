@@ -122,6 +122,16 @@ def test_a_lead_beyond_every_lag(lead: float, gain: float) -> None:
         assert (reduced.gain, reduced.lag_s) == (1.0, gain)
 
 
+def test_a_lead_is_joined_with_a_smaller_lag_that_is_close_to_it() -> None:
+    """Skogestad 2003, section 2 (from memory): below 1.6 times the smaller lag, and nearer to it than to the larger."""
+    # T1 with the lag of 30 s, not below the dead time: the gain rises by 40/30, and the larger lag stays whole.
+    reduced = reduce_to_first_order(Process(0.75, (300.0, 30.0), 20.0, (40.0,)))
+    assert (reduced.gain, reduced.lag_s, reduced.dead_time_s) == pytest.approx((1.0, 300.0, 20.0), rel=1e-12)
+    # 50/30 is not close, and 40/30 is further than 50/40: then the larger lag is taken, which T3 shortens or T2 drops.
+    for process in (Process(0.75, (300.0, 30.0), 20.0, (50.0,)), Process(0.75, (50.0, 30.0), 20.0, (40.0,))):
+        assert reduce_to_first_order(process).lag_s < 150.0
+
+
 def test_a_lead_on_an_integration_alone_is_refused() -> None:
     with pytest.raises(ValueError, match="lead on an integration"):
         reduce_to_first_order(Process(1.0, (), 2.0, (1.0,), integrating=True))

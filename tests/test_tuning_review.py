@@ -237,7 +237,7 @@ def test_settings_in_the_units_of_the_register(tmp_path: Path) -> None:
 
 
 def test_what_is_unstable_on_the_whole_process_is_marked(tmp_path: Path) -> None:
-    """Three lags far apart, on which the ultimate gain rules ask too much; the closed loop's poles by python-control."""
+    """Three lags far apart, on which the ultimate gain rules ask too much; closed loop's poles by python-control."""
     review = shown(tmp_path, STANDARD, "gain: 1 degC per %, lags: [100 s, 10 s, 1 s]")
     s = control.tf("s")
     process = 1.0 / ((100 * s + 1) * (10 * s + 1) * (s + 1))
@@ -249,6 +249,24 @@ def test_what_is_unstable_on_the_whole_process_is_marked(tmp_path: Path) -> None
         assert ("not stable" in row["remark"]) == (not row["stable"])
         seen.add(row["stable"])
     assert seen == {True, False}
+
+
+def test_what_an_integrating_process_is_given_reads_as_a_slope(tmp_path: Path) -> None:
+    # 0.6 % of span a minute for each percent of output, as the register has it on a span of 100 degC.
+    review = shown(tmp_path, STANDARD, "gain: 0.6 degC/min per %, integrating: true, dead_time: 2 s")
+    assert "slope 0.01 %/s per %, dead time 2 s" in review["basis"][0]
+
+
+def test_a_gain_margin_that_is_not_there_is_none(tmp_path: Path) -> None:
+    """With the wrong action no factor on the gain is the limit of stability: that is not the same as not quoted."""
+    written = REGISTER.replace("action: reverse", "action: direct")
+    process = "gain: 1 degC per %, lag: 100 s, dead_time: 5 s"
+    (tmp_path / "register.yaml").write_text(written.format(controller=STANDARD, process=process), encoding="utf-8")
+    out = io.StringIO()
+    assert run(["response", str(tmp_path), "TIC-1001"], out, io.StringIO()) == 0
+    row = next(line for line in out.getvalue().splitlines() if line.startswith("as configured"))
+    assert "not quoted" not in row
+    assert row.endswith("not stable")
 
 
 def test_rules_that_do_not_apply_say_why(tmp_path: Path) -> None:

@@ -19,7 +19,7 @@ _STEPS_UNSTABLE = 4096
 _PHASE_UNNOTICED = 0.02
 # Longest step, as a share of the inverse of the fastest crossover: of a controller that is meant to be
 # continuous, and of processes between the scans of one that is not.
-_CONTINUOUS = 0.1
+_CONTINUOUS = 0.02
 _BETWEEN_SCANS = 0.35
 # Horizons are checked for rest at their eighths, so that numbers of steps are multiples of eight.
 HORIZON_PARTS = 8

@@ -88,11 +88,17 @@ def compare_all(chains: Sequence[ChainDynamics]) -> tuple[Comparison | NotSimula
         levels = zip(dynamics.chain.levels, dynamics.margins, strict=True)
         unstable = next((level.loop.tag for level, margins in levels if not margins.stable), None)
         led = next((level.loop.tag for level in dynamics.chain.levels if level.stage.lead_lags), None)
+        at_once = next((level.loop.tag for level in dynamics.chain.levels if _answers_at_once(level.stage)), None)
         if unstable is not None:
             found[position] = NotSimulated(f"{unstable} as tuned is not stable")
         elif led is not None:
             reason = f"a lead-lag stands between {led} and what it commands, which is not simulated"
             found[position] = NotSimulated(reason)
+        elif at_once is not None:
+            found[position] = NotSimulated(
+                f"the process of {at_once} answers at once, so that its response hangs on the execution interval, "
+                "which the register does not give"
+            )
         else:
             stable[position] = dynamics
     singles = dict(zip(stable, _single_loops(list(stable.values())), strict=True))
@@ -123,6 +129,13 @@ def compare_all(chains: Sequence[ChainDynamics]) -> tuple[Comparison | NotSimula
             structures[0].start_pct,
         )
     return tuple(found[position] for position in range(len(chains)))
+
+
+def _answers_at_once(stage: LoopStage) -> bool:
+    """Whether nothing in a loop takes time: no lag that a lead does not undo, no dead time, no execution interval."""
+    process = stage.process
+    followed = process.order > sum(lead != 0.0 for lead in process.leads_s)
+    return not (followed or process.dead_time_s or stage.controller.interval_s)
 
 
 def declared_scenarios(chain: Chain) -> tuple[Scenario, ...]:

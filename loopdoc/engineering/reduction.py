@@ -5,6 +5,9 @@ from dataclasses import dataclass
 
 from loopdoc.engineering.process import Process
 
+# A smaller lag is close to a lead up to this ratio of the lead to it.
+_CLOSE = 1.6
+
 
 @dataclass(frozen=True, slots=True)
 class ReducedModel:
@@ -37,8 +40,7 @@ def _without_leads(process: Process, closed_loop_s: float) -> tuple[float, list[
     for lead in sorted((lead for lead in process.leads_s if lead > 0.0), reverse=True):
         if not lags:
             raise ValueError("a lead on an integration alone cannot be reduced to a model with dead time")
-        larger = [lag for lag in lags if lag >= lead]
-        lag = min(larger) if larger else max(lags)
+        lag = _partner(lead, lags)
         lags.remove(lag)
         if lead >= lag:
             gain *= max(lead, closed_loop_s) / max(lag, closed_loop_s)
@@ -50,6 +52,18 @@ def _without_leads(process: Process, closed_loop_s: float) -> tuple[float, list[
             lags.append(shortened - lead)
         lags.sort(reverse=True)
     return gain, lags
+
+
+def _partner(lead: float, lags: list[float]) -> float:
+    """The lag that a lead is joined with: the next larger one, or the next smaller where that is closer."""
+    larger = [lag for lag in lags if lag >= lead]
+    smaller = [lag for lag in lags if lag < lead]
+    if not larger:
+        return max(smaller)
+    above, below = min(larger), max(smaller, default=0.0)
+    # At the limit itself the larger is taken, as the example E2 of the source does.
+    is_close = lead < (1.0 - 1e-9) * _CLOSE * below and lead / below < above / lead
+    return below if is_close else above
 
 
 def _reduce_from(process: Process, order: int, fixed_s: float, start_s: float) -> ReducedModel:

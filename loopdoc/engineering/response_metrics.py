@@ -22,7 +22,8 @@ class ResponseMetrics:
     """What is read off the outermost measurement and the final element after an upset."""
 
     iae_pct_s: float
-    """Integral of the absolute deviation from the setpoint [% s]."""
+    """Integral of the absolute deviation from the setpoint [% s]; infinite where an offset of more than 2 % of the
+    causing step stays, for want of integral action."""
     peak_pct: float
     """Furthest departure from the start, with its sign [% of span]."""
     time_to_peak_s: float
@@ -120,6 +121,8 @@ def read_metrics(
     final = np.where(has_reset, setpoint, measurement[-1])
     cause = np.where(setpoint != 0.0, np.abs(setpoint), disturbed_pct)
     cause = np.where(cause > 0.0, cause, np.abs(peak))
+    # The integral over a lasting offset grows for ever: what it has come to depends on the horizon alone.
+    iae = np.where(~has_reset & (absolute[-1] > SETTLING_BAND * cause), math.inf, iae)
     outside = np.abs(measurement - final) > SETTLING_BAND * cause
     last = len(measurement) - 1 - np.argmax(outside[::-1], axis=0)
     last = np.where(outside.any(axis=0), last, -1)

@@ -7,7 +7,7 @@ from collections.abc import Iterator
 from dataclasses import dataclass
 
 from loopdoc.engineering.frequency import Margins
-from loopdoc.engineering.pid import proportional_band_from_gain
+from loopdoc.engineering.pid import proportional_band_from_gain, repeats_from_reset
 from loopdoc.engineering.process import Process
 from loopdoc.engineering.tuning_review import (
     FormSettings,
@@ -86,7 +86,7 @@ class SettingUnits:
         reset: float | None = None
         if math.isfinite(settings.reset_s):
             reset = (
-                convert(1.0 / settings.reset_s, unit("1/s"), self.reset)
+                convert(repeats_from_reset(settings.reset_s), unit("1/s"), self.reset)
                 if self.as_repeats
                 else convert(settings.reset_s, unit("s"), self.reset)
             )
@@ -141,7 +141,7 @@ def _row(entry: RuleSettings, units: SettingUnits, wanted: Wanted) -> TableRow:
         rule=entry.rule,
         settings=(_shown(gain), NO_ACTION if reset is None else _shown(reset), _shown(rate) if rate else NO_ACTION),
         gain_margin=quoted_gain_margin(margins),
-        phase_margin="none" if math.isinf(margins.phase_margin_deg) else _shown(margins.phase_margin_deg),
+        phase_margin=quoted_phase_margin(margins),
         max_sensitivity=_shown(margins.max_sensitivity),
         crossover="none" if math.isnan(margins.crossover_rad_per_s) else _shown(margins.crossover_rad_per_s),
         remark=remark(margins, wanted),
@@ -149,8 +149,15 @@ def _row(entry: RuleSettings, units: SettingUnits, wanted: Wanted) -> TableRow:
 
 
 def quoted_gain_margin(margins: Margins) -> str:
-    """A gain margin, or that it is not quoted: the sampled loop that it needs is not calculated."""
-    return "not quoted" if math.isnan(margins.gain_margin) else _shown(margins.gain_margin)
+    """A gain margin; none where no gain brings an unstable loop to its limit, not quoted where the sampled one lacks."""
+    if math.isnan(margins.gain_margin):
+        return "not quoted" if margins.not_quoted else "none"
+    return _shown(margins.gain_margin)
+
+
+def quoted_phase_margin(margins: Margins) -> str:
+    """A phase margin in degrees, or that there is none: the gain never crosses 1."""
+    return "none" if math.isinf(margins.phase_margin_deg) else _shown(margins.phase_margin_deg)
 
 
 def remark(margins: Margins, wanted: Wanted) -> str:
@@ -238,7 +245,7 @@ def _models(review: TuningReview) -> Iterator[str]:
             else f"The closed loop of {below} is taken as {stands}, equal to it in magnitude and phase {where}."
         )
     model_text = (
-        f"slope {_slope(first.gain)} % per %, dead time {_time(first.dead_time_s)}"
+        f"slope {_slope(first.gain)} per %, dead time {_time(first.dead_time_s)}"
         if first.integrating
         else f"gain {_shown(first.gain)} % per %, lag {_time(first.lag_s)}, dead time {_time(first.dead_time_s)}"
     )

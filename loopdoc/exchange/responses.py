@@ -4,14 +4,16 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterator, Sequence
+from itertools import pairwise
 from typing import Any
 
-from loopdoc.engineering.comparison import Comparison, NotSimulated, ScenarioResponses
+from loopdoc.engineering.comparison import UPSET_PCT, Comparison, NotSimulated, ScenarioResponses
 from loopdoc.engineering.dynamics import ChainDynamics, LoopDynamics
+from loopdoc.engineering.frequency import speed_ratio
 from loopdoc.engineering.response_metrics import ResponseMetrics
 from loopdoc.engineering.stages import measured_range
 from loopdoc.engineering.tuning_table import CAUTION as REVIEW_CAUTION
-from loopdoc.engineering.tuning_table import quoted_gain_margin
+from loopdoc.engineering.tuning_table import quoted_gain_margin, quoted_phase_margin
 from loopdoc.exchange.escaping import for_json
 from loopdoc.exchange.findings import CAUTION
 from loopdoc.exchange.tuning_review import Reviews, margins_object, number, review_lines, reviews_object
@@ -100,6 +102,7 @@ def _metrics_object(metrics: ResponseMetrics, own: Range) -> dict[str, Any]:
         "peak": number(metrics.peak_pct * per_pct),
         "settling_s": number(metrics.settling_s),
         "time_to_peak_s": number(metrics.time_to_peak_s),
+        "overshoot_pct": number(metrics.overshoot_pct),
         "valve_travel_pct": number(metrics.valve_travel_pct),
         "reversals": metrics.reversals,
     }
@@ -125,13 +128,15 @@ def _chain_lines(dynamics: ChainDynamics, comparison: Comparison | NotSimulated)
     path = " > ".join([level.loop.tag for level in reversed(chain.levels)] + [chain.final_element.tag])
     lines = [
         path,
-        f"{'':12}{'gain margin':>13}{'phase margin':>14}{'Ms':>7}{'crossover':>16}",
+        f"{'':12}{'gain margin':>13}{'phase margin':>14}{'Ms':>7}{'Mt':>7}{'crossover':>16}{'bandwidth':>16}",
     ]
     for level, margins in zip(reversed(chain.levels), reversed(dynamics.margins), strict=True):
         state = ("   sampled" if margins.sampled else "") + ("" if margins.stable else "   NOT STABLE")
         lines.append(
-            f"{level.loop.tag:12}{quoted_gain_margin(margins):>13}{_shown(margins.phase_margin_deg, 3) + ' deg':>14}"
-            f"{_shown(margins.max_sensitivity):>7}{_shown(margins.crossover_rad_per_s) + ' rad/s':>16}{state}"
+            f"{level.loop.tag:12}{quoted_gain_margin(margins):>13}{_with_unit(quoted_phase_margin(margins), 'deg'):>14}"
+            f"{_shown(margins.max_sensitivity):>7}{_shown(margins.max_complementary_sensitivity):>7}"
+            f"{_with_unit(_shown(margins.crossover_rad_per_s), 'rad/s'):>16}"
+            f"{_with_unit(_shown(margins.bandwidth_rad_per_s), 'rad/s'):>16}{state}"
         )
     sampled = [margins.sampled for margins in dynamics.margins]
     if any(sampled):
@@ -142,8 +147,11 @@ def _chain_lines(dynamics: ChainDynamics, comparison: Comparison | NotSimulated)
         for level, margins in zip(chain.levels, dynamics.margins, strict=True)
         if margins.not_quoted
     )
-    if dynamics.speed_ratio is not None:
-        lines.append(f"speed ratio of the crossovers, secondary over primary: {_shown(dynamics.speed_ratio)}")
+    levels = list(zip(chain.levels, dynamics.margins, strict=True))
+    lines.extend(
+        f"speed ratio of the crossovers, {inner.loop.tag} over {outer.loop.tag}: {_shown(speed_ratio(fast, slow))}"
+        for (outer, slow), (inner, fast) in pairwise(reversed(levels))
+    )
     if isinstance(comparison, NotSimulated):
         return [*lines, f"no time responses: {comparison.reason}"]
     return [*lines, "", *_scenario_lines(comparison)]
@@ -152,7 +160,10 @@ def _chain_lines(dynamics: ChainDynamics, comparison: Comparison | NotSimulated)
 def _scenario_lines(comparison: Comparison) -> Iterator[str]:
     own = measured_range(comparison.dynamics.chain.lead)
     unit = own.unit.symbol
-    heads = f"{f'peak, {unit}':>14}{f'IAE, {unit} s':>16}{'settling, s':>14}{'valve travel, %':>18}"
+    heads = (
+        f"{f'peak, {unit}':>14}{'at, s':>9}{f'IAE, {unit} s':>16}{'settling, s':>14}{'overshoot, %':>14}"
+        f"{'valve travel, %':>17}{'turns':>7}"
+    )
     width = max(24, *(len(entry.scenario.name) + 2 for entry in comparison.scenarios))
     yield f"{'upset':{width}}{'':16}{heads}"
     for entry in comparison.scenarios:
@@ -162,14 +173,44 @@ def _scenario_lines(comparison: Comparison) -> Iterator[str]:
             per_pct = own.span / 100.0
             yield (
                 f"{entry.scenario.name if name == 'as tuned' else '':{width}}{name:16}"
-                f"{_shown(metrics.peak_pct * per_pct):>14}{_shown(metrics.iae_pct_s * per_pct, 4):>16}"
-                f"{_shown(metrics.settling_s, 4):>14}{_shown(metrics.valve_travel_pct):>18}"
+                f"{_shown(metrics.peak_pct * per_pct):>14}{_peak_time(entry, metrics):>9}"
+                f"{_shown(metrics.iae_pct_s * per_pct, 4):>16}{_shown(metrics.settling_s, 4):>14}"
+                f"{_shown(metrics.overshoot_pct):>14}{_shown(metrics.valve_travel_pct):>17}{metrics.reversals:>7}"
             )
         if entry.single:
             peak, iae, settling = (_ratio(entry.ratio(of)) for of in RATIOS.values())
-            yield f"{'':{width}}{'cascade/single':16}{peak:>14}{iae:>16}{settling:>14}"
+            yield f"{'':{width}}{'cascade/single':16}{peak:>14}{'':9}{iae:>16}{settling:>14}"
+    yield from _upsets_told(comparison)
     if len(comparison.dynamics.chain.levels) > 1:
         yield single_assumption(comparison)
+
+
+def _upsets_told(comparison: Comparison) -> Iterator[str]:
+    """What the rows of the scenarios mean."""
+    own = measured_range(comparison.dynamics.chain.lead)
+    step = f"{_shown(UPSET_PCT * own.span / 100.0)} {own.unit.symbol}"
+    yield (
+        f"setpoint step: {_shown(UPSET_PCT)} % of span, {step}, within the setpoint limits; the other upsets that the "
+        f"register does not declare: a step of {_shown(UPSET_PCT)} % of span at that measurement, through the lags of "
+        f"its process, or a load of {_shown(UPSET_PCT)} % at the input of an integrating one"
+    )
+    yield (
+        "settling: to within 2 % of the step that upsets, 0 where that band is never left, ∞ where it is not seen to "
+        "stay; overshoot: beyond the new setpoint, else to the other side in percent of the peak"
+    )
+    if any(math.isinf(entry.tuned.metrics.iae_pct_s) for entry in comparison.scenarios):
+        yield f"IAE ∞: an offset stays, since {comparison.dynamics.chain.lead.tag} has no reset"
+
+
+def _peak_time(entry: ScenarioResponses, metrics: ResponseMetrics) -> str:
+    """When the peak is reached; nothing after a setpoint step that is only approached, which is nearest at the end."""
+    only_approached = entry.scenario.setpoint_step_pct != 0.0 and metrics.overshoot_pct < 0.5
+    return "-" if only_approached else _shown(metrics.time_to_peak_s)
+
+
+def _with_unit(figure: str, symbol: str) -> str:
+    """A figure with its unit, which what is told in words, or is infinite, has none of."""
+    return f"{figure} {symbol}" if figure[-1].isdigit() else figure
 
 
 def _ratio(value: float | None) -> str:

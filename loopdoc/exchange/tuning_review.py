@@ -80,13 +80,17 @@ def _rule_object(
 
 
 def margins_object(margins: Margins) -> dict[str, Any]:
-    """Stability, margins and crossover of one loop."""
+    """Stability, margins, crossovers and bandwidth of one loop."""
     return {
         "stable": margins.stable,
         "gain_margin": number(margins.gain_margin),
         "phase_margin_deg": number(margins.phase_margin_deg),
+        "delay_margin_s": number(margins.delay_margin_s),
         "max_sensitivity": number(margins.max_sensitivity),
+        "max_complementary_sensitivity": number(margins.max_complementary_sensitivity),
         "crossover_rad_per_s": number(margins.crossover_rad_per_s),
+        "phase_crossover_rad_per_s": number(margins.phase_crossover_rad_per_s),
+        "bandwidth_rad_per_s": number(margins.bandwidth_rad_per_s),
     }
 
 
