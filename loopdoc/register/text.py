@@ -12,10 +12,11 @@ from bisect import bisect_right
 from collections.abc import Callable
 from dataclasses import dataclass
 from functools import lru_cache
-from typing import Any
+from typing import Any, NamedTuple
 
 import yaml
 from yaml._yaml import CParser
+from yaml.events import AliasEvent, MappingEndEvent, MappingStartEvent, ScalarEvent, SequenceEndEvent, StreamEndEvent
 
 from loopdoc.register.place import Fault, Place
 
@@ -43,8 +44,7 @@ _WORDS: dict[str, bool | None] = {
 Data = dict[str, Any] | list[Any] | str | int | float | bool | None
 
 
-@dataclass(frozen=True, slots=True)
-class Spot:
+class Spot(NamedTuple):
     """Where one value of the text stands: its key, itself, and what is inside it. Lines and columns from 1."""
 
     key_line: int
@@ -200,11 +200,12 @@ class _Builder:
     def __init__(self, text: str, name: str) -> None:
         self._next: Callable[[], Any] = CParser(text).get_event
         self._name = name
+        self._good_keys: set[str] = set()
 
     def build(self) -> TextFile:
         self._next()  # stream start
         event = self._next()
-        if isinstance(event, yaml.StreamEndEvent):
+        if isinstance(event, StreamEndEvent):
             raise _Refused(1, 1, "the file is empty", "write the register's mapping, or leave the file out")
         if event.version or event.tags:
             line, column = event.start_mark.line + 1, event.start_mark.column + 1
@@ -212,7 +213,7 @@ class _Builder:
         data, spot = self._node(self._next(), None, 1)
         self._next()  # document end
         event = self._next()
-        if not isinstance(event, yaml.StreamEndEvent):
+        if not isinstance(event, StreamEndEvent):
             mark = event.start_mark
             raise _Refused(
                 mark.line + 1, mark.column + 1, "a second document begins here (`---`)", "use one document a file"
@@ -222,7 +223,8 @@ class _Builder:
     def _node(self, event: Any, key: tuple[int, int] | None, depth: int) -> tuple[Data, Spot]:
         mark = event.start_mark
         line, column = mark.line + 1, mark.column + 1
-        if isinstance(event, yaml.AliasEvent):
+        kind = type(event)
+        if kind is AliasEvent:
             raise _Refused(line, column, f"`*{_short(str(event.anchor))}` repeats another value", "write the value out")
         if event.anchor is not None:
             raise _Refused(line, column, f"`&{_short(event.anchor)}` names a value for repetition", "remove the anchor")
@@ -232,19 +234,24 @@ class _Builder:
         if depth > MAX_DEPTH:
             raise _Refused(line, column, f"nested deeper than {MAX_DEPTH} levels", "flatten the structure")
         key_line, key_column = key or (line, column)
-        if isinstance(event, yaml.ScalarEvent):
-            if len(event.value) > MAX_SCALAR_CHARACTERS:
+        if kind is ScalarEvent:
+            written = event.value
+            if len(written) > MAX_SCALAR_CHARACTERS:
                 raise _Refused(line, column, f"a value of more than {MAX_SCALAR_CHARACTERS} characters", "shorten it")
-            value = event.value if event.style else _resolve_or_refuse(event.value, line, column)
-            if event.style and _FORBIDDEN.search(event.value):
+            if not event.style:
+                value, message, remedy = _resolve(written)
+                if message:
+                    raise _Refused(line, column, message, remedy)
+                return value, Spot(key_line, key_column, line, column, None)
+            if _FORBIDDEN.search(written):
                 raise _Refused(line, column, "a control character stands in the value", "delete the character")
-            return value, Spot(key_line, key_column, line, column, None)
-        if isinstance(event, yaml.MappingStartEvent):
+            return written, Spot(key_line, key_column, line, column, None)
+        if kind is MappingStartEvent:
             mapping, spots = self._mapping(depth)
             return mapping, Spot(key_line, key_column, line, column, spots)
         items: list[Any] = []
         item_spots: list[Spot] = []
-        while not isinstance(event := self._next(), yaml.SequenceEndEvent):
+        while type(event := self._next()) is not SequenceEndEvent:
             item, spot = self._node(event, None, depth + 1)
             items.append(item)
             item_spots.append(spot)
@@ -253,31 +260,31 @@ class _Builder:
     def _mapping(self, depth: int) -> tuple[dict[str, Any], dict[str, Spot]]:
         mapping: dict[str, Any] = {}
         spots: dict[str, Spot] = {}
-        while not isinstance(event := self._next(), yaml.MappingEndEvent):
+        get_event = self._next
+        while type(event := get_event()) is not MappingEndEvent:
             mark = event.start_mark
             line, column = mark.line + 1, mark.column + 1
-            if not isinstance(event, yaml.ScalarEvent) or event.anchor is not None or event.tag is not None:
+            if type(event) is not ScalarEvent or event.anchor is not None or event.tag is not None:
                 raise _Refused(line, column, "a key is not plain text", "write `key: value`")
             key = event.value
-            if len(key) > MAX_SCALAR_CHARACTERS:
-                raise _Refused(line, column, f"a key of more than {MAX_SCALAR_CHARACTERS} characters", "shorten it")
-            if key == "<<":
-                raise _Refused(line, column, "`<<` merges another mapping", "write the keys out")
-            if not key or _FORBIDDEN.search(key):
-                raise _Refused(line, column, "a key is empty or has control characters", "write `key: value`")
+            if key not in self._good_keys:
+                self._refuse_bad(key, line, column)
             if key in mapping:
                 first = spots[key].key_line
                 message = f"the key `{_short(key)}` stands twice (first in line {first})"
                 raise _Refused(line, column, message, "keep one of them")
-            mapping[key], spots[key] = self._node(self._next(), (line, column), depth + 1)
+            mapping[key], spots[key] = self._node(get_event(), (line, column), depth + 1)
         return mapping, spots
 
-
-def _resolve_or_refuse(written: str, line: int, column: int) -> Data:
-    value, message, remedy = _resolve(written)
-    if message:
-        raise _Refused(line, column, message, remedy)
-    return value
+    def _refuse_bad(self, key: str, line: int, column: int) -> None:
+        """Refuse a key that no mapping may have; note one that any may, since most keys stand thousands of times."""
+        if len(key) > MAX_SCALAR_CHARACTERS:
+            raise _Refused(line, column, f"a key of more than {MAX_SCALAR_CHARACTERS} characters", "shorten it")
+        if key == "<<":
+            raise _Refused(line, column, "`<<` merges another mapping", "write the keys out")
+        if not key or _FORBIDDEN.search(key):
+            raise _Refused(line, column, "a key is empty or has control characters", "write `key: value`")
+        self._good_keys.add(key)
 
 
 @lru_cache(maxsize=200_000)
