@@ -6,6 +6,7 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
+from numpy.typing import NDArray
 
 from loopdoc.engineering.process import FloatArray, Process, StateSpace, state_space, transition
 
@@ -27,15 +28,31 @@ class _Steps:
     """Gain times size over the limit."""
     ramp_s: FloatArray
     horizon_s: FloatArray
+    arrived: FloatArray
+    """(n, m) state when the whole step has arrived."""
+
+    def take(self, rows: NDArray[np.intp]) -> "_Steps":
+        """Return the steps of the given rows."""
+        return _Steps(
+            self.system.take(rows), self.scale[rows], self.ramp_s[rows], self.horizon_s[rows], self.arrived[rows]
+        )
 
     def at(self, time_s: FloatArray) -> FloatArray:
         """(n,) response at one time for each path [limit = 1]."""
-        rising_s = np.minimum(time_s, self.ramp_s)
-        arrived = np.divide(rising_s, self.ramp_s, out=np.ones_like(time_s), where=self.ramp_s > 0.0)
-        _, _, ramped = transition(self.system, rising_s)
-        advance, held, _ = transition(self.system, time_s - rising_s)
-        state = np.einsum("nij,nj->ni", advance, ramped * arrived[:, None]) + held
-        response: FloatArray = self.scale * ((self.system.c * state).sum(axis=1) + self.system.d * arrived)
+        response = np.empty_like(time_s)
+        arriving = time_s < self.ramp_s
+        for rows in (np.flatnonzero(arriving), np.flatnonzero(~arriving)):
+            if not len(rows):
+                continue
+            part, since_s = self.take(rows), time_s[rows]
+            if arriving[rows[0]]:
+                share = since_s / part.ramp_s
+                state = transition(part.system, since_s)[2] * share[:, None]
+            else:
+                share = np.ones(len(rows))
+                advance, held, _ = transition(part.system, since_s - part.ramp_s)
+                state = np.einsum("nij,nj->ni", advance, part.arrived) + held
+            response[rows] = part.scale * ((part.system.c * state).sum(axis=1) + part.system.d * share)
         return response
 
 
@@ -78,7 +95,9 @@ def crossing_times(
         at = np.array(members)
         group = [paths[i] for i in members]
         scale = np.array([path.gain for path in group]) * size_pct[at] / limit_pct[at]
-        steps = _Steps(state_space(group), scale, ramp_s[at], _horizons(group, scale, ramp_s[at]))
+        system = state_space(group)
+        arrived = transition(system, ramp_s[at])[2]
+        steps = _Steps(system, scale, ramp_s[at], _horizons(group, scale, ramp_s[at]), arrived)
         found[at] = _first_passage(steps) + np.array([path.dead_time_s for path in group])
     return found
 
@@ -101,28 +120,31 @@ def _first_passage(steps: _Steps) -> FloatArray:
     shares = np.concatenate(([0.0], np.logspace(-_DECADES, 0.0, _DECADES * _PER_DECADE + 1)))
     low, high = np.zeros_like(steps.scale), np.full_like(steps.scale, math.inf)
     before = np.zeros_like(steps.scale)
+    waiting = np.arange(len(high))
     for share in shares.tolist():
         time_s = share * steps.horizon_s
-        reached = (steps.at(time_s) >= 1.0) & np.isinf(high)
+        passed = steps.take(waiting).at(time_s[waiting]) >= 1.0
+        reached, waiting = waiting[passed], waiting[~passed]
         low[reached], high[reached] = before[reached], time_s[reached]
         before = time_s
-    open_ones = np.isfinite(high)
     found = high.copy()
-    high = np.where(open_ones, high, 0.0)
-    over_low, over_high = steps.at(low) - 1.0, steps.at(high) - 1.0
-    moved_high = moved_low = np.zeros_like(open_ones)
+    rows = np.flatnonzero(np.isfinite(high))
+    part, low, high = steps.take(rows), low[rows], high[rows]
+    over_low, over_high = part.at(low) - 1.0, part.at(high) - 1.0
+    moved_high = moved_low = np.zeros(len(rows), dtype=np.bool_)
     for _ in range(_STEPS_MOST):
-        if not open_ones.any():
+        if not len(rows):
             break
         width = over_high - over_low
         time_s = np.where(width > 0.0, high - over_high * (high - low) / np.where(width > 0.0, width, 1.0), high)
-        over = steps.at(time_s) - 1.0
-        found = np.where(open_ones, time_s, found)
+        over = part.at(time_s) - 1.0
+        found[rows] = time_s
         after = over >= 0.0
         # The Illinois rule: an end that stays where it was for the second time counts half.
         over_low = np.where(after, np.where(moved_high, 0.5 * over_low, over_low), over)
         over_high = np.where(after, over, np.where(moved_low, 0.5 * over_high, over_high))
         low, high = np.where(after, low, time_s), np.where(after, time_s, high)
-        moved_high, moved_low = after, ~after
-        open_ones &= (np.abs(over) > 1e-12) & (high - low > 1e-13 * high)
+        left = np.flatnonzero((np.abs(over) > 1e-12) & (high - low > 1e-13 * high))
+        rows, part, moved_high, moved_low = rows[left], part.take(left), after[left], ~after[left]
+        low, high, over_low, over_high = low[left], high[left], over_low[left], over_high[left]
     return found

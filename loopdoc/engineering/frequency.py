@@ -63,6 +63,8 @@ class LoopStage:
     @property
     def path(self) -> Process:
         """The process with the lead-lags in front of it: what the controller's output goes through."""
+        if not self.lead_lags:
+            return self.process
         return replace(
             self.process,
             lags_s=self.process.lags_s + tuple(one.lag_s for one in self.lead_lags),

@@ -24,6 +24,8 @@ _POINTS_PER_DECADE = 40
 _DEAD_TIME_STEP = 0.25
 # Beyond this phase of dead time [rad] a loop that has not rolled off yet is not resolved further.
 _DEAD_TIME_REACH = 80.0
+# Frequencies of all chains that are worked on at once: what is in hand stays in the processor's cache.
+_CACHED = 8192
 # Below this loop gain the phase does not matter to any margin that is quoted.
 _ROLLED_OFF = 0.005
 
@@ -55,7 +57,7 @@ class LevelArrays:
     filter_s: FloatArray
     """Measurement filter [s]."""
 
-    def take(self, rows: IntArray) -> "LevelArrays":
+    def take(self, rows: IntArray | slice) -> "LevelArrays":
         """Return the chains of the given rows."""
         return LevelArrays(
             gain=self.gain[rows],
@@ -102,33 +104,61 @@ def level_arrays(controllers: Sequence[Controller], processes: Sequence[Process]
 
 def open_loops(levels: Sequence[LevelArrays], w: FloatArray) -> list[ComplexArray]:
     """Open-loop response of every level at (n, m) frequencies [rad/s], innermost first."""
+    count, points = w.shape
+    loops: list[ComplexArray] = [np.empty(w.shape, dtype=np.complex128) for _ in levels]
+    at_once = max(1, _CACHED // points)
+    for start in range(0, count, at_once):
+        rows = slice(start, start + at_once)
+        taken = levels if count <= at_once else [level.take(rows) for level in levels]
+        _fill(taken, w[rows], [loop[rows] for loop in loops])
+    return loops
+
+
+def _fill(levels: Sequence[LevelArrays], w: FloatArray, loops: Sequence[ComplexArray]) -> None:
+    """Write the open loop of every level, in place throughout: fetching new memory would take most of the time."""
     s = 1j * w
     per_s = -1j / w
-    below = np.ones((1, 1), dtype=np.complex128)
-    loops: list[ComplexArray] = []
-    for level in levels:
-        plant: ComplexArray = level.gain * below
+    below: ComplexArray = np.ones((1, 1), dtype=np.complex128)
+    factor, product = np.empty_like(s), np.empty_like(s)
+    for level, loop in zip(levels, loops, strict=True):
+        plant = np.empty_like(s)
+        np.multiply(level.gain, below, out=plant)
         if level.delay_s.any():
-            plant = plant * np.exp(-level.delay_s * s)
+            angle = level.delay_s * w
+            np.cos(angle, out=factor.real)
+            np.sin(np.negative(angle, out=angle), out=factor.imag)
+            plant *= factor
         for lead in level.leads_s:
-            plant = plant * (1.0 + lead * s)
+            plant *= _first_order(lead, s, factor)
+        # Multiplied first, since dividing costs most.
+        product.fill(1.0)
         for lag in level.lags_s:
-            plant = plant / (1.0 + lag * s)
+            product *= _first_order(lag, s, factor)
+        plant /= product
         if level.integrating.any():
-            plant = plant * np.where(level.integrating, per_s, 1.0)
+            plant *= np.where(level.integrating, per_s, 1.0)
         integral = level.repeats_per_s * per_s
-        feedback, forward = 1.0 + integral, level.setpoint_weight + integral
+        feedback = np.add(integral, 1.0, out=loop)
         if level.rate_s.any():
             derivative = level.rate_s * s / (1.0 + level.smoothing_s * s)
-            feedback = feedback + derivative
-            forward = forward + level.derivative_setpoint_weight * derivative
-        loop: ComplexArray = plant * feedback
+            feedback += derivative
+        feedback *= plant
         if level.filter_s.any():
-            loop = loop / (1.0 + level.filter_s * s)
-        loops.append(loop)
-        if len(loops) < len(levels):
-            below = plant * forward / (1.0 + loop)
-    return loops
+            loop /= _first_order(level.filter_s, s, factor)
+        if level is not levels[-1]:
+            forward = np.add(integral, level.setpoint_weight, out=integral)
+            if level.rate_s.any():
+                forward += level.derivative_setpoint_weight * derivative
+            forward *= plant
+            forward /= np.add(loop, 1.0, out=factor)
+            below = forward
+
+
+def _first_order(time_s: FloatArray, s: ComplexArray, out: ComplexArray) -> ComplexArray:
+    """1 + T s, written into ``out``."""
+    np.multiply(time_s, s, out=out)
+    out += 1.0
+    return out
 
 
 def static_gains(levels: Sequence[LevelArrays]) -> list[tuple[IntArray, FloatArray]]:

@@ -58,7 +58,7 @@ class Controller:
             raise ValueError("the rate time must be a finite time of zero or more")
         if not self.derivative_filter > 0.0:
             raise ValueError("the derivative filter factor N must be above zero")
-        if not all(math.isfinite(w) for w in (self.setpoint_weight, self.derivative_setpoint_weight)):
+        if not (math.isfinite(self.setpoint_weight) and math.isfinite(self.derivative_setpoint_weight)):
             raise ValueError("setpoint weights must be finite numbers")
         if not (math.isfinite(self.interval_s) and self.interval_s >= 0.0):
             raise ValueError("the execution interval must be a finite time of zero or more")

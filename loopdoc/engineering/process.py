@@ -33,19 +33,21 @@ class Process:
     def __post_init__(self) -> None:
         if not math.isfinite(self.gain) or self.gain == 0.0:
             raise ValueError("the process gain must be a finite number other than zero")
-        if not all(math.isfinite(lag) and lag >= 0.0 for lag in self.lags_s):
-            raise ValueError("every lag must be a finite time of zero or more")
+        for lag in self.lags_s:
+            if not 0.0 <= lag < math.inf:
+                raise ValueError("every lag must be a finite time of zero or more")
         if not math.isfinite(self.dead_time_s) or self.dead_time_s < 0.0:
             raise ValueError("the dead time must be a finite time of zero or more")
-        if not all(math.isfinite(lead) for lead in self.leads_s):
-            raise ValueError("every lead must be a finite time")
-        if sum(lead != 0.0 for lead in self.leads_s) > self.order:
+        for lead in self.leads_s:
+            if not math.isfinite(lead):
+                raise ValueError("every lead must be a finite time")
+        if self.leads_s and sum(lead != 0.0 for lead in self.leads_s) > self.order:
             raise ValueError("a process cannot have more leads than lags (an integration counts as one)")
 
     @property
     def order(self) -> int:
         """Number of states: the lags that are not zero, and the integration."""
-        return sum(lag > 0.0 for lag in self.lags_s) + int(self.integrating)
+        return len([lag for lag in self.lags_s if lag > 0.0]) + self.integrating
 
     @property
     def lag_sum_s(self) -> float:
@@ -104,6 +106,10 @@ class StateSpace:
     """(n, m) output vector [dimensionless]."""
     d: FloatArray
     """(n,) direct feedthrough [dimensionless]."""
+
+    def take(self, rows: NDArray[np.intp]) -> "StateSpace":
+        """Return the processes of the given rows."""
+        return StateSpace(self.a[rows], self.b[rows], self.c[rows], self.d[rows])
 
 
 def state_space(processes: Sequence[Process]) -> StateSpace:
