@@ -132,12 +132,13 @@ class Plant:
 
     @cached_property
     def links(self) -> tuple[CascadeLink, ...]:
-        """Every pair of primary and secondary; a chain of three levels gives two links."""
+        """Every pair of primary and secondary; a chain of three levels gives two links, and a ring of outputs none."""
         return tuple(
             CascadeLink(primary, self.controlled[route.end.tag], route.via)
             for primary in self.controlled.values()
             for route in primary.routes
             if isinstance(route.end, Loop) and route.end.tag in self.controlled
+            if not any(primary.tag in ring and route.end.tag in ring for ring in self.cycles)
         )
 
     @cached_property

@@ -38,6 +38,7 @@ def mode_normal_conflict(secondary: ControlledLoop, plant: Plant) -> Iterator[Dr
     What this check cannot see:
         The modes at start-up, which belong in the narrative.
     """
+    only_if(not any(secondary.tag in ring for ring in plant.cycles))  # nobody commands first in a ring
     modes = secondary.controller.modes
     commanders = plant.commanders.get(secondary.tag, ())
     if not commanders and modes is None:
@@ -267,7 +268,7 @@ def _in_output_units(fallback: Quantity, output: Output) -> Quantity:
 
 
 @rule(level=Level.WARNING, source="ISA-TR5.9-2023, anti-reset windup and initialisation (from memory)")
-def tracking_missing(controlled: ControlledLoop) -> Iterator[Draft]:
+def tracking_missing(controlled: ControlledLoop, plant: Plant) -> Iterator[Draft]:
     """A primary does nothing, or nothing is said of what it does, while its secondary does not follow.
 
     Why:
@@ -283,7 +284,7 @@ def tracking_missing(controlled: ControlledLoop) -> Iterator[Draft]:
         Whether the control system is configured so.
     """
     commands = any(isinstance(route.end, Loop) for route in controlled.routes)
-    only_if(commands and not _selectors(controlled))
+    only_if(commands and not _selectors(controlled) and not any(controlled.tag in ring for ring in plant.cycles))
     written = controlled.controller.when_not_followed
     ends = " and ".join(dict.fromkeys(route.end.tag for route in controlled.routes))
     if written is None:

@@ -169,9 +169,8 @@ def _outside(loop: Loop, group: Part, name: str) -> Iterator[Draft]:
     band = measured_range(loop)
     found, lacking = [], None
     try:
-        for value in readings(group, ("low", "normal", "high"), scale_in(band.unit, loop), name):
-            if above(value.value, band.high) or below(value.value, band.low):
-                found.append(value)
+        read = readings(group, ("low", "normal", "high"), scale_in(band.unit, loop), name)
+        found.extend(value for value in read if above(value.value, band.high) or below(value.value, band.low))
     except NotChecked as reason:
         lacking = reason
     if found:
