@@ -10,12 +10,16 @@ from pathlib import Path
 import page as validator
 import pypdf
 import pytest
+import weasyprint
 
+from loopdoc.documents import pdf
 from loopdoc.documents.basis import Basis, basis_of
 from loopdoc.documents.issue import KINDS, pdf_of
 from loopdoc.register.load import Loaded, load
 
 ROOT = Path(__file__).parent.parent
+SLOW = ("narrative", "response", "failure-effects", "channel-list")
+"""Kinds whose documents have many pages."""
 
 
 def documents() -> Iterator[tuple[str, bytes]]:
@@ -82,3 +86,25 @@ def test_narratives_have_bookmarks(issued: dict[str, bytes]) -> None:
     for content in narratives:
         outline = pypdf.PdfReader(io.BytesIO(content)).outline
         assert len([entry for entry in outline if not isinstance(entry, list)]) >= 1
+
+
+def test_pages_read_as_xml_are_those_that_a_parser_of_html_reads(monkeypatch: pytest.MonkeyPatch) -> None:
+    """The same bytes either way, for a page of each kind."""
+    loaded = load(ROOT / "examples" / "tarn-hollow")
+    assert isinstance(loaded, Loaded)
+    basis = basis_of(loaded)
+    quick = {kind: page for kind in KINDS if kind not in SLOW for page in list(KINDS[kind](basis))[:1]}
+    read_as_xml = {kind: pdf_of(basis, kind, page) for kind, page in quick.items()}
+
+    def read_as_html(html: str, fetcher: object) -> weasyprint.HTML:
+        return weasyprint.HTML(string=html, url_fetcher=fetcher)
+
+    monkeypatch.setattr(pdf, "_parsed", read_as_html)
+    for kind, page in quick.items():
+        assert pdf_of(basis, kind, page) == read_as_xml[kind], kind
+
+
+@pytest.mark.parametrize("body", ["<p>one<p>two", "<p>a&nbsp;b</p>", "<table><tr><td>1<td>2</table>"])
+def test_a_page_that_is_no_xml_is_set_all_the_same(body: str) -> None:
+    page = f"<!doctype html><html lang=en><head><title>t</title></head><body>{body}</body></html>"
+    assert pdf.to_pdf(page).startswith(b"%PDF")

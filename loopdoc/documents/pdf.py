@@ -7,6 +7,7 @@ the two standards ask for: ISO 19005-3 (PDF/A-3) and ISO 14289-1 (PDF/UA-1), as 
 from __future__ import annotations
 
 import logging
+import re
 import warnings
 import zlib
 from collections.abc import Sequence
@@ -14,6 +15,7 @@ from dataclasses import dataclass
 from datetime import UTC, datetime
 from functools import lru_cache
 from typing import Any
+from xml.etree import ElementTree
 
 from loopdoc.documents.rendering import font, style_sheet
 
@@ -39,6 +41,10 @@ _UA_MARK = b"""\
 </rdf:li></rdf:Seq></pdfaSchema:property>
 </rdf:li></rdf:Bag></pdfaExtension:schemas></rdf:Description>
 """
+
+
+_VOID = re.compile(r"<((?:br|col|hr|img|link|meta)\b[^<>]*?)/?>")
+"""Elements without an end in HTML; text has no bare angle bracket, and attributes of ours have none either."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -123,7 +129,7 @@ def to_pdf(html: str, enclosures: Sequence[Enclosure] = (), *, dated: str = "") 
     try:
         with warnings.catch_warnings():
             warnings.simplefilter("ignore", ResourceWarning)  # its colour profile is read and not closed
-            written = weasyprint.HTML(string=html, url_fetcher=fetcher).write_pdf(
+            written = _parsed(html, fetcher).write_pdf(
                 stylesheets=[css],
                 font_config=fonts,
                 pdf_variant="pdf/a-3a",
@@ -135,6 +141,45 @@ def to_pdf(html: str, enclosures: Sequence[Enclosure] = (), *, dated: str = "") 
     if complaints:
         raise PdfError(f"the page could not be set as written: {complaints[0]}")
     return bytes(written)
+
+
+def _parsed(html: str, fetcher: Any) -> Any:
+    """The page as a tree. Pages of ours are well-formed XML, which is read fifty times as fast as HTML at large."""
+    weasyprint = _weasyprint()
+    try:
+        tree = _tree(html)
+    except ElementTree.ParseError:  # a template of the site's own, which browsers forgive
+        return weasyprint.HTML(string=html, url_fetcher=fetcher)
+    import cssselect2
+
+    page = weasyprint.HTML(string="<title></title>", url_fetcher=fetcher)
+    page.etree_element = tree
+    page.wrapper_element = cssselect2.ElementWrapper.from_html_root(tree, content_language=None)
+    return page
+
+
+def _tree(html: str) -> ElementTree.Element:
+    """What a parser of HTML makes of a well-formed page.
+
+    Raises
+    ------
+    ElementTree.ParseError
+        The page is not well-formed.
+    """
+    tree = ElementTree.fromstring(_VOID.sub(r"<\1/>", html.removeprefix("<!doctype html>")))
+    for table in list(tree.iter("table")):  # HTML puts bare rows into a body
+        parts: list[ElementTree.Element] = []
+        for part in table:
+            if part.tag != "tr":
+                parts.append(part)
+            elif parts and parts[-1].tag == "tbody" and parts[-1] not in table:
+                parts[-1].append(part)
+            else:
+                body = ElementTree.Element("tbody")
+                body.append(part)
+                parts.append(body)
+        table[:] = parts
+    return tree
 
 
 def _finish(pdf: Any, enclosures: Sequence[Enclosure]) -> None:
