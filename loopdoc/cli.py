@@ -148,6 +148,12 @@ def _parser() -> argparse.ArgumentParser:
         help="narrative, loop-sheet, response, check-record, alarm-schedule, cause-and-effect, tuning-schedule, "
         "failure-effects, channel-list, instrument-list (default: all)",
     )
+    issue.add_argument(
+        "--against",
+        default="",
+        metavar="OLD",
+        help="bars beside what differs from a git revision or from another folder's register, and a revision summary",
+    )
     issue.add_argument("--formats", default="pdf,html", metavar="LIST", help="pdf, html or pdf,html (default)")
     issue.add_argument(
         "--jobs",
@@ -386,7 +392,10 @@ def _issue(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int
     if arguments.jobs < 1:
         stderr.write("loopdoc: --jobs takes 1 or more\n")
         return EXIT_UNREADABLE
-    basis = _basis(arguments.register, stderr, with_records="check-record" in kinds)
+    if arguments.documents == ["revision-summary"] and not arguments.against:
+        stderr.write("loopdoc: a revision summary needs --against OLD\n")
+        return EXIT_UNREADABLE
+    basis = _basis(arguments.register, stderr, with_records="check-record" in kinds, against=arguments.against)
     if basis is None:
         return EXIT_UNREADABLE
     status = EXIT_CLEAN
@@ -455,8 +464,9 @@ def _compare(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> i
         loaded = _at_revision(arguments.register, named, stderr)
         if loaded is None:
             return EXIT_UNREADABLE
-        sides.append(basis_of(loaded))
-    old, new = sides
+        sides.append(loaded)
+    old = basis_of(sides[0])
+    new = basis_of(sides[1], against=old)
     found = compared(old, new, old_named=arguments.old, new_named=arguments.new or str(arguments.register))
     if arguments.documents:
         from loopdoc.documents.affected import documents_between
@@ -672,18 +682,20 @@ def _at_revision(path: Path, named: str, stderr: TextIO) -> Loaded | None:
     return loaded
 
 
-def _basis(path: Path, stderr: TextIO, *, with_records: bool = False) -> Basis | None:
+def _basis(path: Path, stderr: TextIO, *, with_records: bool = False, against: str = "") -> Basis | None:
     """The register read, resolved, checked and calculated; None, with each reason told, where it cannot be read.
 
-    With the results of loop checks kept beside it, where they are asked for.
+    With the results of loop checks kept beside it, and with the register at an earlier revision, where they are
+    asked for.
     """
     loaded = _load(path, stderr)
-    if loaded is None:
+    earlier = _at_revision(path, against, stderr) if loaded is not None and against else None
+    if loaded is None or (against and earlier is None):
         return None
     from loopdoc.documents.basis import basis_of
 
     if not with_records:
-        return basis_of(loaded)
+        return basis_of(loaded, against=basis_of(earlier) if earlier else None)
     from loopdoc.exchange.record_report import faults_text
     from loopdoc.register.records import load_records
 
@@ -691,7 +703,7 @@ def _basis(path: Path, stderr: TextIO, *, with_records: bool = False) -> Basis |
     if isinstance(records, tuple):
         stderr.write(faults_text(records))
         return None
-    return basis_of(loaded, records)
+    return basis_of(loaded, records, against=basis_of(earlier, records) if earlier else None)
 
 
 def _unknown_rule(ids: Sequence[str], stderr: TextIO) -> int:

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 
+from loopdoc.documents.against import WITHOUT_BARS
 from loopdoc.documents.basis import Basis, Page
 from loopdoc.documents.change_bars import blocks, difference
 from loopdoc.documents.enclosures import content
@@ -18,9 +19,9 @@ def documents_between(old: Basis, new: Basis) -> tuple[DocumentChange, ...]:
 
 
 def _changes(old: Basis, new: Basis) -> Iterator[DocumentChange]:
-    for build in KINDS.values():
-        before = {(page.folder, page.name): page for page in build(old)}
-        after = {(page.folder, page.name): page for page in build(new)}
+    for kind in (kind for kind in KINDS if kind not in WITHOUT_BARS):
+        before, after = ({(page.folder, page.name): page for page in side.pages(kind, KINDS[kind])}
+                         for side in (old, new))  # fmt: skip
         for key, page in after.items():
             if key not in before:
                 yield _change("new", page, len(blocks(_html(page))), 0)

@@ -10,7 +10,7 @@ import io
 import json
 import logging
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass, fields
+from dataclasses import MISSING, dataclass, fields
 from enum import Enum
 
 import pypdf
@@ -19,6 +19,7 @@ from pypdf.errors import PyPdfError
 from loopdoc import __version__
 from loopdoc.documents.basis import Basis, basis_of
 from loopdoc.documents.enclosures import (
+    AGAINST_FOLDER,
     REGISTER_FOLDER,
     RESULTS_KIND,
     RESULTS_NAME,
@@ -26,10 +27,10 @@ from loopdoc.documents.enclosures import (
     Statement,
     statement,
 )
-from loopdoc.documents.issue import KINDS, pdf_of
+from loopdoc.documents.issue import KINDS, pages_of, pdf_of
 from loopdoc.documents.titleblock import fingerprint
 from loopdoc.register.files import HeldFiles
-from loopdoc.register.load import Unreadable, load_files
+from loopdoc.register.load import Loaded, Unreadable, load_files
 from loopdoc.register.records import LoopRecord, by_tag, read_records
 
 # What a damaged file lacks is answered here, and need not be told on the terminal as well.
@@ -48,6 +49,8 @@ class Enclosed:
     """Files of the register by name, the root file first."""
     results: bytes
     """Results of loop checks that the document shows; empty where there are none."""
+    against: Mapping[str, bytes]
+    """Files of the earlier register whose differences bear bars; empty where there are none."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -89,16 +92,21 @@ def enclosed_in(content: bytes) -> Enclosed | NotIssued:
         attachments = pypdf.PdfReader(io.BytesIO(content)).attachments
         files = {name: attachments[name][0] for name in attachments}
         told = json.loads(files.pop(STATEMENT_NAME))
-        found = Statement(**{field.name: str(told[field.name]) for field in fields(Statement)})
+        # What a later version states besides may be missing.
+        stated = [field.name for field in fields(Statement) if field.name in told or field.default is MISSING]
+        found = Statement(**{name: str(told[name]) for name in stated})
     # A file from outside may be damaged anywhere, and the reader has an exception for each way.
     except (PyPdfError, KeyError, ValueError, TypeError, AttributeError, IndexError, RecursionError, OSError):
         return NotIssued("it is no PDF that loopdoc issued, or is damaged: it states no register")
-    sources = {
-        name.removeprefix(REGISTER_FOLDER): body for name, body in files.items() if name.startswith(REGISTER_FOLDER)
-    }
+    sources, against = (
+        {name.removeprefix(folder): body for name, body in files.items() if name.startswith(folder)}
+        for folder in (REGISTER_FOLDER, AGAINST_FOLDER)
+    )
     if found.root not in sources:
         return NotIssued(f"the register's file `{found.root}` is missing in it")
-    return Enclosed(found, {found.root: sources.pop(found.root), **sources}, files.get(RESULTS_NAME, b""))
+    if found.against in against:
+        against = {found.against: against.pop(found.against), **against}
+    return Enclosed(found, {found.root: sources.pop(found.root), **sources}, files.get(RESULTS_NAME, b""), against)
 
 
 class Attestation:
@@ -107,7 +115,7 @@ class Attestation:
     def __init__(self, register: Basis | None = None) -> None:
         self._register = register
         self._current: dict[str, dict[tuple[str, str], Statement]] = {}
-        self._issued_from: dict[tuple[str, bytes], Basis | Unreadable] = {}
+        self._issued_from: dict[tuple[str, str, bytes], Basis | Unreadable] = {}
 
     def attest(self, content: bytes) -> Attested | NotIssued:
         """Find out about one file.
@@ -144,7 +152,7 @@ class Attestation:
         basis = self._basis_of(enclosed)
         if isinstance(basis, Unreadable):
             return Answer.NO, "the register inside cannot be read"
-        pages = KINDS[told.kind](basis) if told.kind in KINDS else ()
+        pages = pages_of(basis, told.kind) if told.kind in KINDS else ()
         page = next((page for page in pages if (page.folder, page.name) == (told.folder, told.name)), None)
         if page is None:
             return Answer.NO, "the register inside gives no such document"
@@ -153,13 +161,23 @@ class Attestation:
         return Answer.NO, "its bytes are not those that the register inside gives: it was altered or saved anew"
 
     def _basis_of(self, enclosed: Enclosed) -> Basis | Unreadable:
-        key = (fingerprint(enclosed.sources), enclosed.results)
+        key = (fingerprint(enclosed.sources), fingerprint(enclosed.against), enclosed.results)
         if key not in self._issued_from:
-            loaded = load_files(HeldFiles(enclosed.sources), enclosed.statement.root)
-            read = read_records(enclosed.results, RESULTS_NAME) if enclosed.results else ()
-            records = by_tag(record for record in read if isinstance(record, LoopRecord))
-            self._issued_from[key] = loaded if isinstance(loaded, Unreadable) else basis_of(loaded, records)
+            self._issued_from[key] = self._read_anew(enclosed)
         return self._issued_from[key]
+
+    def _read_anew(self, enclosed: Enclosed) -> Basis | Unreadable:
+        told = enclosed.statement
+        read = read_records(enclosed.results, RESULTS_NAME) if enclosed.results else ()
+        records = by_tag(record for record in read if isinstance(record, LoopRecord))
+        before: Basis | None = None
+        if told.against:
+            loaded = load_files(HeldFiles(enclosed.against), told.against) if told.against in enclosed.against else None
+            if not isinstance(loaded, Loaded):
+                return loaded or Unreadable((), {})
+            before = basis_of(loaded, records)
+        now = load_files(HeldFiles(enclosed.sources), told.root)
+        return now if isinstance(now, Unreadable) else basis_of(now, records, against=before)
 
     def _still_current(self, enclosed: Enclosed, content: bytes) -> tuple[Answer, str]:
         told = enclosed.statement
@@ -184,7 +202,7 @@ class Attestation:
         """What the register given would state in every document of a kind."""
         if kind not in self._current:
             self._current[kind] = {
-                (page.folder, page.name): statement(kind, page, register.sources)
+                (page.folder, page.name): statement(kind, page, register.sources, None)
                 for page in (KINDS[kind](register) if kind in KINDS else ())
             }
         return self._current[kind]

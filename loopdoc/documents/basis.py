@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass, field
 from typing import Any
 
@@ -28,10 +28,13 @@ class Basis:
     dynamics: Dynamics
     records: Mapping[str, tuple[LoopRecord, ...]] = field(default_factory=dict)
     """Results of loop checks kept beside the register, by tag, each loop's oldest first."""
+    against: Basis | None = None
+    """The register at the earlier revision against which the documents are issued."""
     times: TimeToAct = field(init=False)
     """From alarm to trip under each upset, calculated at the first question."""
     _compared: dict[ChainDynamics, Comparison | NotSimulated] = field(default_factory=dict, repr=False)
     _drawn: dict[ChainDynamics, str] = field(default_factory=dict, repr=False)
+    _pages: dict[str, tuple[Page, ...]] = field(default_factory=dict, repr=False)
 
     def __post_init__(self) -> None:
         object.__setattr__(self, "times", TimeToAct(self.plant))
@@ -39,15 +42,33 @@ class Basis:
     def comparison(self, chain: ChainDynamics) -> Comparison | NotSimulated:
         """Time responses of a chain, or why there is none, simulated once for all documents."""
         if chain not in self._compared:
-            self._compared[chain] = compare(chain)
+            twin = self._unchanged(chain)
+            self._compared[chain] = self.against.comparison(twin) if self.against and twin else compare(chain)
         return self._compared[chain]
 
     def drawn(self, chain: ChainDynamics, draw: Callable[[Comparison], str]) -> str:
         """The figure of a chain's time responses, drawn once for all documents; empty where there is none."""
         if chain not in self._drawn:
-            comparison = self.comparison(chain)
-            self._drawn[chain] = draw(comparison) if isinstance(comparison, Comparison) else ""
+            comparison, twin = self.comparison(chain), self._unchanged(chain)
+            if self.against and twin:
+                self._drawn[chain] = self.against.drawn(twin, draw)
+            else:
+                self._drawn[chain] = draw(comparison) if isinstance(comparison, Comparison) else ""
         return self._drawn[chain]
+
+    def _unchanged(self, chain: ChainDynamics) -> ChainDynamics | None:
+        """The same chain at the earlier revision, where nothing in it has changed: it is calculated once for both."""
+        before = self.against
+        tag = chain.chain.lead.tag
+        if before is None or tag not in before.plant.controlled:
+            return None
+        return next((one for one in before.dynamics.loop(tag).chains if one.chain == chain.chain), None)
+
+    def pages(self, kind: str, build: Callable[[Basis], Iterator[Page]]) -> tuple[Page, ...]:
+        """The documents of one kind, built once for all that asks for them."""
+        if kind not in self._pages:
+            self._pages[kind] = tuple(build(self))
+        return self._pages[kind]
 
     def document(
         self, *, kind: str, code: str, title: str, supplementary_title: str, unit: str, serial: str
@@ -59,11 +80,17 @@ class Basis:
         )  # fmt: skip
 
 
-def basis_of(loaded: Loaded, records: Mapping[str, tuple[LoopRecord, ...]] | None = None) -> Basis:
+def basis_of(
+    loaded: Loaded,
+    records: Mapping[str, tuple[LoopRecord, ...]] | None = None,
+    *,
+    against: Basis | None = None,
+) -> Basis:
     """A register as read, resolved, checked and made ready to be calculated with, and the results of loop checks."""
     plant = Plant(loaded.register)
     dynamics = Dynamics(plant)
-    return Basis(plant, check(plant, loaded.faults, dynamics=dynamics), loaded.sources, dynamics, records or {})
+    result = check(plant, loaded.faults, dynamics=dynamics)
+    return Basis(plant, result, loaded.sources, dynamics, records or {}, against)
 
 
 @dataclass(frozen=True, slots=True)
@@ -78,3 +105,5 @@ class Page:
     template: str
     view: Mapping[str, Any]
     """What the template places: text with units, tables, drawings. No numbers to compute with."""
+    earlier: Page | None = None
+    """The same document at the revision against which it is issued: what differs gets a bar."""

@@ -181,6 +181,7 @@ def _is_passed_over(tag: str, attributes: dict[str, str | None]) -> bool:
     return (
         tag in ("nav", "head")
         or "title-block" in classes
+        or "bars-note" in classes
         or "revisions" in classes
         or attributes.get("aria-label") == _REVISIONS
     )

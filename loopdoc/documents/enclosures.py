@@ -18,6 +18,8 @@ from loopdoc.documents.titleblock import fingerprint
 from loopdoc.register.records import records_text
 
 STATEMENT_NAME = "loopdoc.json"
+AGAINST_FOLDER = "against/"
+"""The same for the earlier register, without which the bars could not be set again."""
 REGISTER_FOLDER = "register/"
 """Before the names of the register's files, so that none of them can be taken for the statement."""
 RESULTS_KIND = "check-record"
@@ -50,10 +52,12 @@ class Statement:
     content: str
     """SHA-256 of what the document says, without the register's fingerprint and the state of its check."""
     program: str
+    against: str = ""
+    """Name of the root file of the earlier register against which bars were set; empty where there is none."""
 
 
-def statement(kind: str, page: Page, sources: Mapping[str, bytes]) -> Statement:
-    """What a document issued from these files, the root file first, says of itself."""
+def statement(kind: str, page: Page, sources: Mapping[str, bytes], against: Mapping[str, bytes] | None) -> Statement:
+    """What a document issued from these files, the root file first, and against those of before says of itself."""
     document = page.document
     return Statement(
         root=next(iter(sources)),
@@ -69,16 +73,22 @@ def statement(kind: str, page: Page, sources: Mapping[str, bytes]) -> Statement:
         fingerprint=fingerprint(sources),
         content=content(page),
         program=f"loopdoc {__version__}",
+        against=next(iter(against or ()), ""),
     )
 
 
 def enclosures(basis: Basis, kind: str, page: Page) -> tuple[Enclosure, ...]:
     """The register's files and the statement of one document."""
-    told = json.dumps(asdict(statement(kind, page, basis.sources)), indent=2, ensure_ascii=False) + "\n"
+    against = basis.against.sources if basis.against else {}
+    told = json.dumps(asdict(statement(kind, page, basis.sources, against)), indent=2, ensure_ascii=False) + "\n"
     return (
         *(
             Enclosure(REGISTER_FOLDER + name, basis.sources[name], "application/yaml", f"Register file {name}")
             for name in sorted(basis.sources)
+        ),
+        *(
+            Enclosure(AGAINST_FOLDER + name, against[name], "application/yaml", f"Earlier register file {name}")
+            for name in sorted(against)
         ),
         *_results(basis, kind, page),
         Enclosure(STATEMENT_NAME, told.encode(), "application/json", "What this document is and was made from"),
@@ -100,6 +110,6 @@ def content(page: Page) -> str:
 
     A change elsewhere in the register alters the fingerprint and the check, not what this document says.
     """
-    document = replace(page.document, fingerprint="", check_state="", generator="")
+    document = replace(page.document, fingerprint="", check_state="", generator="", bars="")
     html = render(page.template, document=document, stylesheet="", **page.view)
     return hashlib.sha256(html.encode()).hexdigest()

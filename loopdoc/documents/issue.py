@@ -9,13 +9,14 @@ from concurrent.futures import ProcessPoolExecutor
 from dataclasses import dataclass
 from pathlib import Path
 
+from loopdoc.documents.against import page_html, pages_against
 from loopdoc.documents.basis import Basis, Page
 from loopdoc.documents.check_record import check_records
 from loopdoc.documents.enclosures import enclosures
 from loopdoc.documents.loop_sheet import loop_sheets
 from loopdoc.documents.narrative import narratives
 from loopdoc.documents.pdf import Enclosure, ensure_available, to_pdf
-from loopdoc.documents.rendering import render, web_style_sheet
+from loopdoc.documents.rendering import web_style_sheet
 from loopdoc.documents.responses import responses, supplements
 from loopdoc.documents.schedule_alarms import alarm_schedules
 from loopdoc.documents.schedule_effects import cause_and_effect_charts
@@ -74,7 +75,7 @@ def issue(
     """
     if "pdf" in formats:
         ensure_available()
-    issued = [(kind, page) for kind in KINDS if kind in kinds for page in KINDS[kind](basis)]
+    issued = [(kind, page) for kind in KINDS if kind in kinds for page in pages_of(basis, kind)]
     pages = [page for _, page in issued]
     files: list[str] = []
     done, total = 0, len(pages) * len(formats)
@@ -98,12 +99,15 @@ def issue(
     return Issued(out, len(pages), tuple(files))
 
 
+def pages_of(basis: Basis, kind: str) -> tuple[Page, ...]:
+    """The documents of one kind as they are issued: with bars where the register stands against an earlier one."""
+    return pages_against(basis, kind, KINDS[kind])
+
+
 def _write_page(out: Path, page: Page, frame: Frame) -> str:
     """Write a page of the site; returns its path below the folder."""
     name = f"{path_of(page)}.html"
-    html = render(
-        page.template, document=page.document, stylesheet=f"{frame.root}{STYLE_SHEET}", site=frame, **page.view
-    )
+    html = page_html(page, stylesheet=f"{frame.root}{STYLE_SHEET}", site=frame)
     write_whole(out / name, html.encode())
     return name
 
@@ -123,8 +127,7 @@ def _pdfs(basis: Basis, issued: Sequence[tuple[str, Page]], jobs: int) -> Iterat
 
 
 def _pdf_source(basis: Basis, kind: str, page: Page) -> tuple[str, tuple[Enclosure, ...], str]:
-    html = render(page.template, document=page.document, stylesheet="", **page.view)
-    return html, enclosures(basis, kind, page), page.document.dated
+    return page_html(page, stylesheet=""), enclosures(basis, kind, page), page.document.dated
 
 
 def _to_pdf(source: tuple[str, tuple[Enclosure, ...], str]) -> bytes:

@@ -59,6 +59,8 @@ class Document:
     """Why DRAFT stands across the page; empty where it does not."""
     cautions: str = CAUTIONS
     language: str = "en"
+    bars: str = ""
+    """What the bars beside the text mark, or that the document is new; empty where it bears none."""
     generator: str = f"loopdoc {__version__}"
 
 
