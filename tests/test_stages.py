@@ -270,6 +270,7 @@ def test_a_gain_margin_is_that_of_the_sampled_loop_where_half_an_interval_is_not
         ("      gain: 1.8\n", "", "the gain of TIC-2014 is not given"),
         ("opens_on: rising signal, ", "", "FV-2011 does not say on which signal it opens"),
         ("reset: 9 min", "reset: {hold: to be tuned}", "the reset of TIC-2014 is on hold"),
+        ("span: 0 to 12 t/h", "span: {hold: range of the meter}", "the output span of TIC-2014 is on hold"),
         (
             "gain: 1.8",
             "form: series\n      rate: 8 min\n      gain: 0",

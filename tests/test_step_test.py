@@ -377,6 +377,19 @@ def test_a_model_is_written_in_the_units_that_the_register_has(folder: Path) -> 
     )
 
 
+def test_a_lead_goes_with_the_model_that_it_belonged_to(folder: Path) -> None:
+    """The model that is written was fitted without a lead: with the old one it would be another process."""
+    lead = REGISTER.replace("      lag: 4 s ", "      lead: 3 s\n      lag: 4 s ")
+    assert lead != REGISTER
+    (folder / "register.yaml").write_text(lead, "utf-8")
+    data = a_file(folder, "time,output [%],measurement [t/h]", (40.0, 50.0), 0.15, 20.0)
+    status, out, _ = called("identify", folder, data, "--tag", "FIC-2011", "--write")
+    assert status == 0
+    assert "lead 3 s" in out
+    assert "caution: no form with a lead is fitted" in out
+    assert "lead" not in (folder / "register.yaml").read_text("utf-8")
+
+
 def test_a_branch_of_a_split_range_is_written_into_that_branch(folder: Path) -> None:
     # The output falls from 30 to 10 %: the nitrogen valve opens from 25 to 75 %; 0.01 barg per % of opening.
     data = a_file(folder, "time,output [%],measurement [barg]", (30.0, 10.0), -0.025, 60.0)

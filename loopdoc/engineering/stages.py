@@ -212,7 +212,7 @@ def settings_of(written: model.Controller, tag: str) -> StandardSettings:
 
 def _output_limits(output: model.Output | None, route: Route, tag: str) -> tuple[float, float]:
     """Output limits in percent of the output span."""
-    span = known(output.span) if output else None
+    span = _need_not_held(output.span, f"the output span of {tag}") if output else None
     low = known(output.low) if output else None
     high = known(output.high) if output else None
     if span is None:

@@ -149,7 +149,7 @@ def _row(entry: RuleSettings, units: SettingUnits, wanted: Wanted) -> TableRow:
 
 
 def quoted_gain_margin(margins: Margins) -> str:
-    """A gain margin; none where no gain brings an unstable loop to its limit, not quoted where the sampled one lacks."""
+    """A gain margin; none where no gain brings an unstable loop to its limit, not quoted for want of a sampled one."""
     if math.isnan(margins.gain_margin):
         return "not quoted" if margins.not_quoted else "none"
     return _shown(margins.gain_margin)

@@ -247,6 +247,7 @@ def register_values(found: Identified) -> dict[str, Value | None]:
         "gain": figures.gain.quantity,
         "lag": lags[0] if len(lags) == 1 else None,
         "lags": lags if len(lags) > 1 else None,
+        "lead": None,  # no form that is fitted has one
         "dead_time": figures.dead_time.quantity,
         "integrating": True if model.integrating else None,
         "source": f"{found.test_name}, 95 % intervals {_intervals(figures)}",
@@ -397,12 +398,20 @@ def _register_lines(found: Identified) -> list[str]:
         parts.append(f"gain {gain}")
     if lags:
         parts.append(f"{'lag' if len(lags) == 1 else 'lags'} {' and '.join(map(str, lags))}")
+    lead = known(process.lead)
+    if lead is not None:
+        parts.append(f"lead {lead}")
     if dead_time is not None:
         parts.append(f"dead time {dead_time}")
     if process.integrating:
         parts.append("integrating")
     source = known(process.source)
     lines = [f"the register holds: {', '.join(parts) or 'no figures'}{f' ({source})' if source else ''}"]
+    if lead is not None:
+        lines.append(
+            f"caution: no form with a lead is fitted: what is found stands for the lead of {lead} as well, by its lags "
+            "and dead time, and takes its place"
+        )
     effect = known(process.effect)
     if effect in ("rises", "falls") and (effect == "rises") != (model.gain.value > 0.0):
         lines.append(
