@@ -27,7 +27,7 @@ DEFINITIONS = SCHEMA["$defs"]
 
 ROOT = """\
 format: 1
-site: {name: Tarn Hollow Solvent Recovery, owner: Process control group}
+site: {name: Tarn Hollow Solvent Recovery, owner: Process control group, language: en}
 revision: {code: B, date: 2026-11-20, status: issued for construction, summary: Second issue,
            prepared_by: Process control, checked_by: Instrumentation, approved_by: {hold: on leave}}
 history:

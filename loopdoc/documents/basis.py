@@ -6,6 +6,7 @@ from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass, field
 from typing import Any
 
+from loopdoc.documents.language import ENGLISH, Language
 from loopdoc.documents.titleblock import Document, document
 from loopdoc.engineering.comparison import Comparison, NotSimulated, compare
 from loopdoc.engineering.dynamics import ChainDynamics, Dynamics
@@ -28,6 +29,14 @@ class Basis:
     dynamics: Dynamics
     records: Mapping[str, tuple[LoopRecord, ...]] = field(default_factory=dict)
     """Results of loop checks kept beside the register, by tag, each loop's oldest first."""
+<<<<<<< /tmp/rv/ours
+    language: Language = ENGLISH
+    """Of those documents that have a catalogue in it; the others are in English."""
+    times: TimeToAct = field(init=False)
+    """From alarm to trip under each upset, calculated at the first question."""
+    _compared: dict[ChainDynamics, Comparison | NotSimulated] = field(default_factory=dict, repr=False)
+    _drawn: dict[tuple[ChainDynamics, str], str] = field(default_factory=dict, repr=False)
+=======
     against: Basis | None = None
     """The register at the earlier revision against which the documents are issued."""
     times: TimeToAct = field(init=False)
@@ -35,6 +44,7 @@ class Basis:
     _compared: dict[ChainDynamics, Comparison | NotSimulated] = field(default_factory=dict, repr=False)
     _drawn: dict[ChainDynamics, str] = field(default_factory=dict, repr=False)
     _pages: dict[str, tuple[Page, ...]] = field(default_factory=dict, repr=False)
+>>>>>>> /tmp/rv/theirs
 
     def __post_init__(self) -> None:
         object.__setattr__(self, "times", TimeToAct(self.plant))
@@ -46,8 +56,17 @@ class Basis:
             self._compared[chain] = self.against.comparison(twin) if self.against and twin else compare(chain)
         return self._compared[chain]
 
-    def drawn(self, chain: ChainDynamics, draw: Callable[[Comparison], str]) -> str:
+    def drawn(
+        self, chain: ChainDynamics, draw: Callable[[Comparison], str], language: Language = ENGLISH
+    ) -> str:
         """The figure of a chain's time responses, drawn once for all documents; empty where there is none."""
+<<<<<<< /tmp/rv/ours
+        key = chain, language.code
+        if key not in self._drawn:
+            comparison = self.comparison(chain)
+            self._drawn[key] = draw(comparison) if isinstance(comparison, Comparison) else ""
+        return self._drawn[key]
+=======
         if chain not in self._drawn:
             comparison, twin = self.comparison(chain), self._unchanged(chain)
             if self.against and twin:
@@ -55,6 +74,7 @@ class Basis:
             else:
                 self._drawn[chain] = draw(comparison) if isinstance(comparison, Comparison) else ""
         return self._drawn[chain]
+>>>>>>> /tmp/rv/theirs
 
     def _unchanged(self, chain: ChainDynamics) -> ChainDynamics | None:
         """The same chain at the earlier revision, where nothing in it has changed: it is calculated once for both."""
@@ -71,12 +91,21 @@ class Basis:
         return self._pages[kind]
 
     def document(
-        self, *, kind: str, code: str, title: str, supplementary_title: str, unit: str, serial: str
+        self,
+        *,
+        kind: str,
+        code: str,
+        title: str,
+        supplementary_title: str,
+        unit: str,
+        serial: str,
+        language: Language = ENGLISH,
     ) -> Document:
-        """Title block of one document of this register."""
+        """Title block of one document of this register; ``kind`` is its English name."""
         return document(
             self.plant, self.result, self.sources,
             kind=kind, code=code, title=title, supplementary_title=supplementary_title, unit=unit, serial=serial,
+            language=language,
         )  # fmt: skip
 
 

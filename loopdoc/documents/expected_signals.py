@@ -6,6 +6,7 @@ import math
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 
+from loopdoc.documents.language import ENGLISH, Language
 from loopdoc.documents.values import DASH
 from loopdoc.engineering.loop_check import command_pct, is_pt100, opening_pct, thermocouple_type
 from loopdoc.engineering.pairing import Plant, Route
@@ -23,7 +24,6 @@ from loopdoc.register.units import UnitError, convert
 _SIGNAL_ENDS = {"4-20 mA": (4.0, 20.0, "mA"), "0-20 mA": (0.0, 20.0, "mA"), "1-5 V": (1.0, 5.0, "V")}
 """Analogue signals: what they are at 0 and at 100 %."""
 _DECIMALS = {"mA": 2, "V": 3}
-_SPEEDS = ("variable-speed drive", "motor")
 
 
 @dataclass(frozen=True, slots=True)
@@ -39,7 +39,7 @@ STEPS = tuple(f"{percent:g}\u00a0%" for percent in CHECK_POINTS_PCT)
 """The steps of a loop check, in percent of the signal or of the output."""
 
 
-def expected_readings(loop: Loop) -> tuple[ExpectedRow, ...]:
+def expected_readings(loop: Loop, language: Language = ENGLISH) -> tuple[ExpectedRow, ...]:
     """What the display should show when the transmitter's signal is applied, sensor signals included."""
     measurement = known(loop.measurement)
     measured = known(measurement.range) if measurement else None
@@ -47,40 +47,47 @@ def expected_readings(loop: Loop) -> tuple[ExpectedRow, ...]:
         return ()
     root = known(measurement.characteristic) == "square root"
     points = check_points(low=measured.low, high=measured.high, square_root=root)
-    rows = [*_signal_rows(measurement, points, root=root)]
-    rows.append(ExpectedRow(f"{loop.tag} shows", measured.unit.display, _rounded([point.value for point in points])))
+    rows = [*_signal_rows(measurement, points, language, root=root)]
+    readings = _rounded([point.value for point in points], language)
+    rows.append(ExpectedRow(language.shows(loop.tag), language.unit(measured.unit.display), readings))
     return tuple(rows)
 
 
-def expected_commands(plant: Plant, loop: Loop) -> tuple[ExpectedRow, ...]:
+def expected_commands(plant: Plant, loop: Loop, language: Language = ENGLISH) -> tuple[ExpectedRow, ...]:
     """What the output should do at each step: the signal and the opening, or the secondary's setpoint."""
     controlled = plant.controlled.get(loop.tag)
     rows: list[ExpectedRow] = []
     for route in controlled.routes if controlled else ():
         if isinstance(route.end, FinalElement):
-            rows.extend(_element_rows(route.end, route))
+            rows.extend(_element_rows(route.end, route, language))
         elif not route.via:
             output = known(controlled.controller.output) if controlled else None
             span = known(output.span) if output else None
             if span is not None and span.low != span.high:
                 asked = [value_from_percent(step, low=span.low, high=span.high) for step in CHECK_POINTS_PCT]
-                rows.append(ExpectedRow(f"{route.end.tag} setpoint", span.unit.display, _rounded(asked)))
+                what, unit = language.setpoint_of(route.end.tag), language.unit(span.unit.display)
+                rows.append(ExpectedRow(what, unit, _rounded(asked, language)))
     return tuple(rows)
 
 
-def _signal_rows(measurement: Measurement, points: Sequence[CheckPoint], *, root: bool) -> Iterator[ExpectedRow]:
-    sensor = _sensor_row(measurement, points)
+def _signal_rows(
+    measurement: Measurement, points: Sequence[CheckPoint], language: Language, *, root: bool
+) -> Iterator[ExpectedRow]:
+    sensor = _sensor_row(measurement, points, language)
     if sensor:
         yield sensor
     if root:
-        shares = tuple(f"{point.signal_pct:g}" for point in points)
-        yield ExpectedRow("Differential pressure", "%", shares)
+        shares = tuple(language.digits(f"{point.signal_pct:g}") for point in points)
+        yield ExpectedRow(language.label("Differential pressure"), "%", shares)
     ends = _SIGNAL_ENDS.get(known(measurement.signal) or "")
     if ends:
-        yield _signal_row(f"Signal of {known(measurement.transmitter) or DASH}", ends, CHECK_POINTS_PCT)
+        what = language.signal_of(known(measurement.transmitter) or DASH)
+        yield _signal_row(what, ends, CHECK_POINTS_PCT, language)
 
 
-def _sensor_row(measurement: Measurement, points: Sequence[CheckPoint]) -> ExpectedRow | None:
+def _sensor_row(
+    measurement: Measurement, points: Sequence[CheckPoint], language: Language
+) -> ExpectedRow | None:
     """What a resistance thermometer or thermocouple gives at each step; None for another sensor, or outside its range.
 
     Thermocouples with the reference junction at 0 degC.
@@ -92,39 +99,40 @@ def _sensor_row(measurement: Measurement, points: Sequence[CheckPoint]) -> Expec
     try:
         temperatures = [convert(point.value, measured.unit, "degC") for point in points]
         if not couple:
-            ohms = tuple(f"{pt100_resistance_ohm(temperature):.2f}" for temperature in temperatures)
-            return ExpectedRow("Pt100 resistance", "Ω", ohms)
+            ohms = tuple(language.digits(f"{pt100_resistance_ohm(temperature):.2f}") for temperature in temperatures)
+            return ExpectedRow(language.pt100(), "Ω", ohms)
         emf = [thermocouple_emf_mv(couple, temperature) for temperature in temperatures]
     except (UnitError, ValueError):
         return None
-    return ExpectedRow(f"Type {couple} at 0\u00a0°C reference", "mV", tuple(_signed(f"{mv:.3f}") for mv in emf))
+    return ExpectedRow(language.thermocouple(couple), "mV", tuple(language.digits(_signed(f"{mv:.3f}")) for mv in emf))
 
 
-def _element_rows(element: FinalElement, route: Route) -> Iterator[ExpectedRow]:
+def _element_rows(element: FinalElement, route: Route, language: Language) -> Iterator[ExpectedRow]:
     """Signal and opening of a final element at each step of the controller's output."""
     commands = [command_pct(step, route.branch) for step in CHECK_POINTS_PCT]
     signals = [100.0 - command if known(element.output_block) == "reversed" else command for command in commands]
     ends = _SIGNAL_ENDS.get(known(element.signal) or "")
     if ends:
-        yield _signal_row(f"Signal to {element.tag}", ends, signals)
+        yield _signal_row(language.signal_to(element.tag), ends, signals, language)
     openings = [opening for step in CHECK_POINTS_PCT if (opening := opening_pct(step, element, route)) is not None]
     if openings:
-        kind = known(element.kind)
-        what = "speed" if kind in _SPEEDS else "power" if kind == "heater bank" else "opening"
-        yield ExpectedRow(f"{element.tag} {what}", "%", tuple(_plain(opening) for opening in openings))
+        what = language.position_of(element.tag, known(element.kind) or "")
+        yield ExpectedRow(what, "%", tuple(language.digits(_plain(opening)) for opening in openings))
 
 
-def _signal_row(what: str, ends: tuple[float, float, str], percents: Sequence[float]) -> ExpectedRow:
+def _signal_row(
+    what: str, ends: tuple[float, float, str], percents: Sequence[float], language: Language
+) -> ExpectedRow:
     low, high, unit = ends
     values = (value_from_percent(percent, low=low, high=high) for percent in percents)
-    return ExpectedRow(what, unit, tuple(f"{value:.{_DECIMALS[unit]}f}" for value in values))
+    return ExpectedRow(what, unit, tuple(language.digits(f"{value:.{_DECIMALS[unit]}f}") for value in values))
 
 
-def _rounded(values: Sequence[float]) -> tuple[str, ...]:
+def _rounded(values: Sequence[float], language: Language) -> tuple[str, ...]:
     """Readings with one number of decimals, so that the largest has four digits."""
     largest = max(abs(value) for value in values)
     decimals = max(0, 3 - math.floor(math.log10(largest)))
-    return tuple(_signed(f"{value:.{decimals}f}") for value in values)
+    return tuple(language.digits(_signed(f"{value:.{decimals}f}")) for value in values)
 
 
 def _signed(number: str) -> str:

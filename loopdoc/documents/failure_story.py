@@ -5,8 +5,10 @@ from __future__ import annotations
 from collections.abc import Iterable, Iterator, Sequence
 from dataclasses import dataclass
 
-from loopdoc.documents.naming import Names, moves, moves_by_itself, power_of
-from loopdoc.documents.wording import NO_BREAK, as_written, listed, sentence, sentences, value
+from loopdoc.documents.language import ENGLISH, Language
+from loopdoc.documents.language.facts import Moves, Way
+from loopdoc.documents.naming import Names
+from loopdoc.documents.wording import sentence, sentences
 from loopdoc.engineering.direction import Undecided
 from loopdoc.engineering.failure import Consequence, Failure, FailureAnalysis, FailureEffect
 from loopdoc.engineering.faults import fault_reading
@@ -14,20 +16,14 @@ from loopdoc.engineering.pairing import ControlledLoop, Plant, Scheme
 from loopdoc.engineering.spreading import PASSIVE_MODES, ElementMove, SetpointMove, normal_mode, transmitter_of
 from loopdoc.register.model import FinalElement, Function, Loop, known
 
-ASSUMPTIONS = (
-    "They are judged one at a time, by the signs and modes in the register. A transmitter signals its own fault "
-    "by a current of at most 3.6 mA or at least 21 mA (NAMUR NE 43); its controller then does what is set for a bad "
-    "measurement. A reading that is merely wrong is taken as good, at the worst at the end of its range. One that "
-    "stands still is taken as good too, and only another measurement can tell. With the power of the control system "
-    "go its alarms and its process interlocks; the safety layer stands. Only what another sensor drives counts as "
-    "standing against a failure."
-)
-"""What every table of failures rests on, told once in a document."""
+ASSUMPTIONS = ENGLISH.failure_assumptions()
+"""What every table of failures rests on, in English."""
+NOTHING = ENGLISH.nothing_against()
+"""Where no alarm and no trip stands against a hazard, in English."""
 
 HEAD = ("Failure", "What the control does", "What the process does", "What stands against it")
-NOTHING = "Nothing independent in the register"
 
-_WRONG = {Failure.MEASUREMENT_HIGH: "reads too high", Failure.MEASUREMENT_LOW: "reads too low"}
+_WRONG = {Failure.MEASUREMENT_HIGH: "high", Failure.MEASUREMENT_LOW: "low"}
 _LOST = (Failure.OUTPUT_LOST, Failure.MOTIVE_POWER_LOST, Failure.CONTROL_POWER_LOST)
 _HURTS = ("high", "low", "both")
 
@@ -42,31 +38,32 @@ class FailureRow:
     against: str
 
 
-def hazards(loops: Iterable[Loop], names: Names) -> str:
+def hazards(loops: Iterable[Loop], names: Names, language: Language) -> str:
     """Which directions are hazards, in one sentence; empty where none is declared."""
-    found = []
-    for loop in loops:
-        hazard = known(loop.hazard)
-        if hazard in ("high", "low"):
-            found.append(f"a {hazard} {names.bare(loop)}")
-        elif hazard == "both":
-            found.append(f"a {names.bare(loop)} too high or too low")
-    if not found:
-        return ""
-    return sentence(f"The {'hazard is' if len(found) == 1 else 'hazards are'} {listed(found)}")
+    found = [
+        (names.bare(loop), hazard) for loop in loops if (hazard := known(loop.hazard)) in ("high", "low", "both")
+    ]
+    return language.hazards(found) if found else ""
 
 
 class FailureStory:
     """The failures of one scheme, or of those of its loops that stand in one unit."""
 
     def __init__(
-        self, plant: Plant, analysis: FailureAnalysis, scheme: Scheme, loops: Sequence[Loop], names: Names
+        self,
+        plant: Plant,
+        analysis: FailureAnalysis,
+        scheme: Scheme,
+        loops: Sequence[Loop],
+        names: Names,
+        language: Language = ENGLISH,
     ) -> None:
         self._plant = plant
         self._analysis = analysis
         self._scheme = scheme
         self._loops = tuple(plant.controlled[loop.tag] for loop in loops if loop.tag in plant.controlled)
         self._names = names
+        self._language = language
         self._in_scheme = {loop.tag for loop in scheme.loops}
 
     def rows(self) -> tuple[FailureRow, ...]:
@@ -82,69 +79,76 @@ class FailureStory:
         sensor = transmitter_of(loop.loop)
         leads_anywhere = loop.routes or self._analysis.functions_of(loop.loop) or self._analysis.trips_on(sensor)
         for effect in self._analysis.effects(loop.tag) if sensor and leads_anywhere else ():
-            fails = _fails(loop.loop, effect.failure)
+            fails = self._fails(sensor or "", loop.loop, effect.failure)
             if fails:
                 control = sentences(*self._control(effect, loop))
                 idle = normal_mode(loop) in PASSIVE_MODES
                 own = [] if idle else self._told(effect.consequences, effect)
-                yield FailureRow(f"{sensor} {fails}", control, self._process(own, effect), self._against(own, effect))
+                yield FailureRow(fails, control, self._process(own, effect), self._against(own, effect))
 
     def _control(self, effect: FailureEffect, loop: ControlledLoop) -> Iterator[str]:
         """What the controllers do, in sentences."""
+        language = self._language
         if effect.seen == "bad":
-            yield _goes(effect, loop)
+            yield self._goes(effect, loop)
             tracking = [one.loop.tag for one in effect.unfollowed if one.policy == "track"]
             if tracking:
-                yield f"{listed(tracking)} {'tracks' if len(tracking) == 1 else 'track'}"
+                yield language.track_too(tracking)
         elif normal_mode(loop) in PASSIVE_MODES:
-            yield f"{loop.tag} is {_idle(loop)} and does nothing"
+            yield language.does_nothing(loop.tag, normal_mode(loop) or "")
         elif effect.seen == "frozen":
-            yield f"{loop.tag} goes on by the old value"
+            yield language.goes_on(loop.tag)
         elif isinstance(effect.output, Undecided):
-            yield f"What {loop.tag} does cannot be told: {effect.output.reason}"
+            yield language.cannot_be_told(loop.tag, language.reason(effect.output.reason))
         else:
             yield from self._asks(effect, loop, effect.output)
         for move in effect.setpoints:
             if move.by in self._plant.register.functions and not _sign(move):
-                yield f"What {move.by} then does is not in the register"
+                yield language.function_undefined(move.by)
         tripped = list(dict.fromkeys(trip.interlock.tag for trip in effect.initiated))
         if tripped:
-            yield f"{listed(tripped)} {'trips' if len(tripped) == 1 else 'trip'} on it"
+            yield language.trips_on_it(tripped)
+
+    def _goes(self, effect: FailureEffect, loop: ControlledLoop) -> str:
+        """What a controller does with a bad measurement."""
+        if not effect.mode and not effect.forced_output:
+            return self._language.bad_undefined(loop.tag)
+        output = "" if effect.forced_output in ("", "hold") else self._language.as_written(effect.forced_output)
+        return self._language.goes(loop.tag, effect.mode, output, _moved(effect.elements))
 
     def _asks(self, effect: FailureEffect, loop: ControlledLoop, output: int) -> Iterator[str]:
         """`TIC-2014 asks for a lower flow (down to 1.0 t/h) and FIC-2011 closes FV-2011`."""
         functions = self._plant.register.functions
         by_loops = [move for move in effect.setpoints if move.by not in functions]
         by_functions = [move for move in effect.setpoints if move.by in functions and _sign(move)]
-        told: list[str] = []
-        for move in by_loops:
-            way = _sign(move) or output
-            asked = f"for a {'higher' if way > 0 else 'lower'} {self._names.bare(move.loop.loop)}"
-            told.append(f"{move.by} {asked}" if told else f"{move.by} asks {asked}{self._as_far_as(move, way)}")
+        asked = [
+            (move.by, move.loop.tag, self._names.bare(move.loop.loop), (_sign(move) or output) > 0)
+            for move in by_loops
+        ]
+        reach = self._as_far_as(by_loops[0], _sign(by_loops[0]) or output) if by_loops else ""
         beside = {route.end.tag for move in by_functions for route in move.loop.routes}
-        moved = [move for move in effect.elements if _sign(move) and move.element.tag not in beside]
-        if moved:
+        moved = _moved(move for move in effect.elements if move.element.tag not in beside)
+        if asked or moved:
             mover = by_loops[-1].loop.tag if by_loops else loop.tag
-            told.append(f"{mover} {listed(moves(move.element, _sign(move)) for move in moved)}")
-        if told:
-            yield listed(told)
+            yield self._language.demands(asked, reach, mover, moved)
         passed: list[SetpointMove | ElementMove] = [*by_loops, *effect.elements]
         for candidate in passed:
             if candidate.instead and not _sign(candidate) and candidate.selector:
-                asks = "" if told else f"{loop.tag} asks for {'more' if output > 0 else 'less'}. "
-                yield f"{asks}{candidate.selector.tag} goes on passing the demand of {listed(candidate.instead, 'or')}"
+                wanted = None if asked or moved else output > 0
+                yield self._language.goes_on_passing(loop.tag, wanted, candidate.selector.tag, candidate.instead)
         for move in by_functions:
-            wanted = "higher" if _sign(move) > 0 else "lower"
-            yield f"{move.by} asks {move.loop.tag} for a {wanted} {Names((move.loop.loop,)).bare(move.loop.loop)}"
+            name = Names((move.loop.loop,), self._language).bare(move.loop.loop)
+            yield self._language.asks_of(move.by, move.loop.tag, name, up=_sign(move) > 0)
 
     def _as_far_as(self, move: SetpointMove, way: int) -> str:
         """How far the first demand goes, in brackets; of a term in a sum, by how much."""
         if move.limit is None:
             return ""
+        limit = self._language.value(move.limit)
         via = [function for route in self._plant.controlled[move.by].routes for function in route.via]
         if any(known(function.kind) == "sum" for function in via):
-            return f" (by up to {value(move.limit).lstrip('−')})"
-        return f" ({'up' if way > 0 else 'down'} to {value(move.limit)})"
+            return self._language.reach_by(limit.lstrip("−"))
+        return self._language.reach_to(limit, up=way > 0)
 
     # -- measurements of other loops that enter a function of the scheme
 
@@ -163,21 +167,19 @@ class FailureStory:
         for effect in self._analysis.effects(loop.tag):
             asked = [move for move in effect.setpoints if move.by == function.tag]
             if effect.failure is Failure.MEASUREMENT_BAD and asked and effect.seen == "bad":
-                told = sentence(f"What {function.tag} then does is not in the register")
-                yield FailureRow(f"{sensor} signals a fault", told, "", "")
+                told = sentence(self._language.function_undefined(function.tag))
+                yield FailureRow(self._language.transmitter_fails(sensor or "", "fault"), told, "", "")
             for move in asked if effect.failure in _WRONG else ():
                 if not _sign(move):
                     continue
-                way = "higher" if _sign(move) > 0 else "lower"
                 ends = {route.end.tag for route in move.loop.routes}
-                moved = [one for one in effect.elements if one.element.tag in ends and _sign(one)]
-                told = f"{function.tag} asks for a {way} {self._names.bare(move.loop.loop)}"
-                if moved:
-                    told += f" and {move.loop.tag} {listed(moves(one.element, _sign(one)) for one in moved)}"
+                moved = _moved(one for one in effect.elements if one.element.tag in ends)
+                name = self._names.bare(move.loop.loop)
+                told = self._language.asks_and_moves(function.tag, move.loop.tag, name, _sign(move) > 0, moved)
                 own = [one for one in effect.consequences if one.loop.tag in self._in_scheme]
                 yield FailureRow(
-                    f"{sensor} {_WRONG[effect.failure]}", sentence(told), self._process(own, effect),
-                    self._against(own, effect),
+                    self._language.transmitter_fails(sensor or "", _WRONG[effect.failure]), sentence(told),
+                    self._process(own, effect), self._against(own, effect),
                 )  # fmt: skip
 
     # -- final elements
@@ -200,11 +202,21 @@ class FailureStory:
             effect = effects[0]
             own = [one for one in effect.consequences if one.loop.tag in self._in_scheme]
             yield FailureRow(
-                _losses(effects),
-                sentence(listed(_settles(move) for move in effect.elements)),
+                self._losses(effects),
+                sentence(self._language.settles([(one.element, _sign(one), one.position) for one in effect.elements])),
                 self._process(own, effect),
                 self._against(own, effect),
             )
+
+    def _losses(self, effects: Sequence[FailureEffect]) -> str:
+        """`FV-2011 loses its signal or its air, or the control system its power`."""
+        by_subject: dict[tuple[str, ...], list[FinalElement | None]] = {}
+        for effect in effects:
+            if effect.failure is not Failure.CONTROL_POWER_LOST:
+                signal = effect.failure is Failure.OUTPUT_LOST
+                by_subject.setdefault(effect.at, []).append(None if signal else effect.elements[0].element)
+        power = any(effect.failure is Failure.CONTROL_POWER_LOST for effect in effects)
+        return self._language.losses(list(by_subject.items()), power)
 
     # -- the process, and what stands against it
 
@@ -223,134 +235,93 @@ class FailureStory:
         ]
 
     def _process(self, consequences: Sequence[Consequence], effect: FailureEffect) -> str:
+        language = self._language
         moved = [one for one in consequences if isinstance(one.direction, int) and one.direction]
         unknown = [one for one in consequences if isinstance(one.direction, Undecided)]
         told = []
         hurt = [one for one in moved if one.hazardous]
         if hurt:
-            each = {1: "", 2: "both "}.get(len(hurt), "all ")
-            told.append(f"{self._ways(hurt)}, {each}towards the hazard")
+            told.append(language.towards_the_hazard(self._ways(hurt)))
         # That a flow falls when its valve closes need not be told beside what matters.
         others = [one for one in moved if not one.hazardous]
-        told.append(self._ways([one for one in others if not hurt or one.loop is not effect.loop]))
+        beside = [one for one in others if not hurt or one.loop is not effect.loop]
+        told.append(language.process_ways(self._ways(beside)))
         if not moved:
             told.append(self._still(consequences, effect))
         if unknown:
-            names = [self._names.the(one.loop) for one in unknown]
+            names = [self._names.bare(one.loop) for one in unknown]
             load = any(str(one.direction).find("depends on the load") >= 0 for one in unknown)
-            goes = f"{listed(names)} {'goes' if len(names) == 1 else 'go'}"
-            told.append(f"which way {goes} depends on the load" if load else f"which way {goes} cannot be told")
+            told.append(language.way_unknown(names, by_load=load))
         for one in moved:
             rivals = [tag for tag in one.opposed_by if tag != one.loop.tag]
             if rivals:
-                told.append(f"{listed(rivals, 'or')} takes over at its own setpoint")
+                told.append(language.takes_over(rivals))
             if one.loop.tag in one.opposed_by:
-                told.append(f"{one.loop.tag} makes up for it as far as its output limits allow")
+                told.append(language.makes_up(one.loop.tag))
         return sentences(*dict.fromkeys(told))
 
     def _still(self, consequences: Sequence[Consequence], effect: FailureEffect) -> str:
-        still = [self._names.the(one.loop) for one in consequences if one.direction == 0]
+        still = [self._names.bare(one.loop) for one in consequences if one.direction == 0]
         passed_over = any(move.instead for move in effect.setpoints) or any(move.instead for move in effect.elements)
-        if still and passed_over:
-            return f"nothing moves, but {listed(still)} {'is' if len(still) == 1 else 'are'} no longer limited"
         if not still:
             return ""
-        return f"{listed(still)} {'is left to itself' if len(still) == 1 else 'are left to themselves'}"
+        return self._language.unlimited(still) if passed_over else self._language.left(still)
 
-    def _ways(self, found: Sequence[Consequence]) -> str:
-        """`the level and the flow fall`, `the temperature falls and the methanol content rises`."""
-        by_way: dict[bool, list[str]] = {}
-        for one in found:
-            by_way.setdefault(one.direction == 1, []).append(self._names.the(one.loop))
-        return listed(
-            f"{listed(names)} {'rise' if rises else 'fall'}{'s' if len(names) == 1 else ''}"
-            for rises, names in by_way.items()
-        )
+    def _ways(self, found: Sequence[Consequence]) -> list[Way]:
+        return [Way(self._names.bare(one.loop), one.direction == 1) for one in found]
 
     def _against(self, consequences: Sequence[Consequence], effect: FailureEffect) -> str:
-        alarms: dict[str, list[str]] = {}
+        language = self._language
+        alarms: dict[str, list[tuple[str, str]]] = {}
         for found in (found for one in consequences for found in one.alarms):
             limit = known(found.alarm.limit)
-            kind = found.alarm.kind.replace("_", "-")
-            alarms.setdefault(found.loop.tag, []).append(f"{kind}{NO_BREAK}{value(limit)}" if limit else kind)
-        told = [f"{tag} alarm{'' if len(kinds) == 1 else 's'} ({', '.join(kinds)})" for tag, kinds in alarms.items()]
+            alarms.setdefault(found.loop.tag, []).append((found.alarm.kind, language.value(limit) if limit else ""))
+        told = [language.alarms_against(tag, kinds) for tag, kinds in alarms.items()]
         tripping: dict[str, str] = {}
         for trip in (trip for one in consequences for trip in one.trips):
             limit, side = known(trip.initiator.limit), known(trip.initiator.direction)
-            tripping.setdefault(trip.interlock.tag, f" ({side} {value(limit)})" if limit and side else "")
-        told.extend(f"{tag}{limit}" for tag, limit in tripping.items())
+            known_limit = language.value(limit) if limit else ""
+            tripping.setdefault(
+                trip.interlock.tag, language.trip_against(trip.interlock.tag, side or "", known_limit)
+            )
+        told.extend(tripping.values())
         if told:
             return sentence("; ".join(told))
         if not any(one.hazardous or (one.direction == 0 and known(one.loop.hazard) in _HURTS) for one in consequences):
             return ""
-        return sentences(NOTHING, _moved_back(effect))
+        return sentences(language.nothing_against(), self._moved_back(effect))
+
+    def _moved_back(self, effect: FailureEffect) -> str:
+        """Interlocks on something else that can still move a final element back."""
+        told = []
+        for interlock in effect.opposing:
+            back = tuple(
+                (move.element, -_sign(move))
+                for move in effect.elements
+                if _sign(move) and move.element.tag in interlock.actions
+            )
+            told.append(self._language.moved_back(interlock.tag, back))
+        return self._language.listed(told)
+
+    def _fails(self, sensor: str, loop: Loop, failure: Failure) -> str:
+        """What the transmitter does; empty where the register does not say, or where another row says it."""
+        language, fault = self._language, fault_reading(loop.measurement)
+        own = "" if isinstance(fault, Undecided) or fault.noticed else fault.reads
+        if failure is Failure.MEASUREMENT_BAD:
+            if isinstance(fault, Undecided):
+                return ""
+            if fault.noticed:
+                return language.transmitter_fails(sensor, "fault")
+            return language.transmitter_fails(sensor, "holds") if own == "holds" else ""
+        wrong = _WRONG.get(failure, "")
+        return language.transmitter_fails(sensor, wrong, as_when_it_fails=own == f"reads {wrong}") if wrong else ""
 
 
-def _moved_back(effect: FailureEffect) -> str:
-    """Interlocks on something else that can still move a final element back."""
-    told = []
-    for interlock in effect.opposing:
-        back = [move for move in effect.elements if _sign(move) and move.element.tag in interlock.actions]
-        told.append(f"{interlock.tag} {listed(moves(move.element, -_sign(move)) for move in back)} at its own limit")
-    return listed(told)
+def _moved(found: Iterable[ElementMove]) -> Moves:
+    """Final elements that move in a known direction."""
+    return tuple((move.element, _sign(move)) for move in found if _sign(move))
 
 
 def _sign(move: ElementMove | SetpointMove) -> int:
     """The direction of a movement, 0 where it is not known."""
     return move.direction if isinstance(move.direction, int) else 0
-
-
-def _fails(loop: Loop, failure: Failure) -> str:
-    """What the transmitter does; empty where the register does not say, or where another row says it."""
-    fault = fault_reading(loop.measurement)
-    own = "" if isinstance(fault, Undecided) or fault.noticed else fault.reads
-    if failure is Failure.MEASUREMENT_BAD:
-        if isinstance(fault, Undecided):
-            return ""
-        if fault.noticed:
-            return "signals a fault"
-        return "fails and holds its last value" if own == "holds" else ""
-    wrong = _WRONG.get(failure, "")
-    return f"{wrong}, as when it fails" if wrong and own == wrong.replace("too ", "") else wrong
-
-
-def _idle(loop: ControlledLoop) -> str:
-    mode = normal_mode(loop)
-    return "kept in manual" if mode == "manual" else str(mode)
-
-
-def _goes(effect: FailureEffect, loop: ControlledLoop) -> str:
-    """What a controller does with a bad measurement."""
-    if not effect.mode and not effect.forced_output:
-        return f"What {loop.tag} does is not in the register"
-    to = f"{loop.tag} goes to {effect.mode}" if effect.mode else f"{loop.tag} stays in its mode"
-    if effect.forced_output in ("", "hold"):
-        return f"{to} and holds its output"
-    ends = listed(moves_by_itself(move.element, _sign(move)) for move in effect.elements if _sign(move))
-    return f"{to} with its output at {as_written(effect.forced_output)}{f', and {ends}' if ends else ''}"
-
-
-def _losses(effects: Sequence[FailureEffect]) -> str:
-    """`FV-2011 loses its signal or its air, or the control system its power`."""
-    by_subject: dict[tuple[str, ...], list[str]] = {}
-    for effect in effects:
-        if effect.failure is not Failure.CONTROL_POWER_LOST:
-            signal = effect.failure is Failure.OUTPUT_LOST
-            what = "signal" if signal else power_of(effect.elements[0].element)
-            by_subject.setdefault(effect.at, []).append(f"{'its' if len(effect.at) == 1 else 'their'} {what}")
-    told = [f"{listed(at)} lose{'s' if len(at) == 1 else ''} {listed(what, 'or')}" for at, what in by_subject.items()]
-    if any(effect.failure is Failure.CONTROL_POWER_LOST for effect in effects):
-        same = len(by_subject) == 1 and len(next(iter(by_subject))) == 1
-        told.append("the control system its power" if same else "the control system loses its power")
-    return ", or ".join(told) if any(" or " in part for part in told) else listed(told, "or")
-
-
-def _settles(move: ElementMove) -> str:
-    """Where a final element comes to rest."""
-    if move.direction == 0:
-        return f"{move.element.tag} stays where it is"
-    if move.position == "stopped":
-        return f"{move.element.tag} stops"
-    if not move.position:
-        return f"{move.element.tag} stops or falls to its lowest speed, as it is set"
-    return moves_by_itself(move.element, _sign(move))

@@ -10,6 +10,7 @@ from dataclasses import dataclass
 from itertools import pairwise
 
 from loopdoc.documents.drawing import BLOCK, BUBBLE, DIAMOND, LEADING, Sheet, tag_lines, wrapped
+from loopdoc.documents.language import Language
 from loopdoc.documents.loop_rows import (
     BESIDE_DISTANCE,
     INPUT_DISTANCE,
@@ -30,11 +31,12 @@ from loopdoc.documents.loop_rows import (
     forcing_height,
     forcing_lines,
     initiated_lines,
+    kind_words,
     measurement_words,
     rows_of,
     transmitter_of,
 )
-from loopdoc.documents.values import DASH, HOLD, shown
+from loopdoc.documents.values import DASH, HOLD
 from loopdoc.engineering.pairing import Plant
 from loopdoc.register.model import ALARM_ORDER, FinalElement, Function, Hold, Loop, Measurement, known
 from loopdoc.register.quantity import Range
@@ -63,8 +65,6 @@ _SYMBOLS = {
     "characteriser": "f(x)",
     "lead-lag": "f(t)",
 }
-_ALARM_LETTERS = {"high_high": "HH", "high": "H", "low": "L", "low_low": "LL", "deviation": "DEV"}
-_FAIL_LETTERS = {"closed": "FC", "open": "FO", "last": "FL", "stopped": "stops"}
 _DRIVES = ("variable-speed drive", "motor")
 
 
@@ -79,7 +79,7 @@ class DrawnLoop:
     elements: tuple[FinalElement, ...]
 
 
-def drawn_loop(plant: Plant, tag: str) -> DrawnLoop:
+def drawn_loop(plant: Plant, tag: str, language: Language) -> DrawnLoop:
     """Draw a loop.
 
     Raises
@@ -88,13 +88,13 @@ def drawn_loop(plant: Plant, tag: str) -> DrawnLoop:
         The register has no such loop.
     """
     loop = plant.register.loops[tag]
-    rows = rows_of(plant, loop)
+    rows = rows_of(plant, loop, language)
     parts = [row.part for row in rows]
     height = rows[-1].y + rows[-1].below + 4
     way = ", ".join(filter(None, (_tag_of(part) for part in parts)))
     elements = (part.element for part in parts if isinstance(part, Element | Secondary))
     return DrawnLoop(
-        svg=_Drawing(plant, loop, rows).sheet(height).svg(height, f"Drawn loop {tag}, from top to bottom: {way}"),
+        svg=_Drawing(plant, loop, rows, language).sheet(height).svg(height, language.drawing_title(tag, way)),
         height=height,
         functions=tuple(part.function for part in parts if isinstance(part, Block)),
         elements=tuple(element for element in elements if element),
@@ -123,11 +123,12 @@ def _half_height(part: Part) -> float:
 class _Drawing:
     """Puts the rows of one loop on a sheet."""
 
-    def __init__(self, plant: Plant, loop: Loop, rows: tuple[Row, ...]) -> None:
+    def __init__(self, plant: Plant, loop: Loop, rows: tuple[Row, ...], language: Language) -> None:
         self._plant = plant
         self._register = plant.register
         self._loop = loop
         self._rows = rows
+        self._language = language
         self._sheet = Sheet(WIDTH)
 
     def sheet(self, height: float) -> Sheet:
@@ -135,7 +136,7 @@ class _Drawing:
             self._draw(row)
         for above, below in pairwise(self._rows):
             self._link(above, below)
-        self._sheet.frame(height, LANES)
+        self._sheet.frame(height, [(self._language.label(name), left, right) for name, left, right in LANES])
         return self._sheet
 
     def _draw(self, row: Row) -> None:
@@ -159,6 +160,12 @@ class _Drawing:
             case Elsewhere():
                 self._sheet.connector(_CONNECTOR, row.y, row.part.to, to_the_left=True)
 
+    def _shown(self, written: object) -> str:
+        return self._language.shown(written)
+
+    def _word(self, kind: str, written: str | Hold) -> str:
+        return self._language.term(kind, written) if isinstance(written, str) else HOLD
+
     def _lines(self, tag: str) -> tuple[str, str]:
         return tag_lines(tag, self._register.tag_pattern)
 
@@ -180,7 +187,7 @@ class _Drawing:
     def _draw_words(self, loop: Loop, y: float) -> None:
         """Service and measurement of a neighbour, to the right of it."""
         width = _RIGHT - _MAIN_NOTE
-        self._note_beside(_MAIN_NOTE, y, (*wrapped(shown(loop.service), width, 2), self._measured(loop)), width)
+        self._note_beside(_MAIN_NOTE, y, (*wrapped(self._shown(loop.service), width, 2), self._measured(loop)), width)
 
     def _note_beside(
         self, x: float, y: float, lines: tuple[str, ...], width: float, *, bold_first: bool = False
@@ -191,7 +198,7 @@ class _Drawing:
 
     def _measured(self, loop: Loop) -> str:
         measurement = known(loop.measurement)
-        measured = shown(measurement.range if measurement else loop.measurement)
+        measured = self._shown(measurement.range if measurement else loop.measurement)
         return f"{transmitter_of(loop)}, {measured}" if transmitter_of(loop) else measured
 
     def _draw_secondary(self, part: Secondary, y: float) -> None:
@@ -213,7 +220,7 @@ class _Drawing:
         for index, tag in enumerate(function.inputs):
             self._draw_input(function, tag, y, index)
         if not part.beside:
-            words = block_words(function, _RIGHT - _MAIN_NOTE)
+            words = block_words(function, _RIGHT - _MAIN_NOTE, self._language)
             self._note_beside(_MAIN_NOTE, y, words, _RIGHT - _MAIN_NOTE, bold_first=True)
             return
         drawn = part.beside[:MOST_BESIDE]
@@ -221,7 +228,7 @@ class _Drawing:
         half = 3.5 * (len(drawn) - 1)
         x, width = _MAIN + BLOCK + 3, _GATE - _MAIN - BLOCK - 7
         self._sheet.note(x, y - 6 - half, (function.tag,), width=width, bold_first=True)
-        self._sheet.note(x, y + 10 + half, (shown(function.kind),), width=width)
+        self._sheet.note(x, y + 10 + half, (kind_words(function, self._language),), width=width)
         for index, tag in enumerate(drawn):
             offset = index - (len(drawn) - 1) / 2
             more = len(part.beside) - MOST_BESIDE + 1 if index == MOST_BESIDE - 1 else 1
@@ -237,7 +244,7 @@ class _Drawing:
         elif tag in self._register.functions:
             function = self._register.functions[tag]
             sheet.function_block(_SIDE, y, _symbol(function))
-            self._note_beside(_SIDE_NOTE, y, (tag, shown(function.kind)), width, bold_first=True)
+            self._note_beside(_SIDE_NOTE, y, (tag, kind_words(function, self._language)), width, bold_first=True)
             left = _SIDE - BLOCK
         else:
             loop = self._register.loops[tag]
@@ -266,7 +273,7 @@ class _Drawing:
             self._sheet.software((start, at), (x, at), (x, into), (edge, into))
         weight = function.weights.get(tag, 1.0)
         if weight != 1.0:
-            self._sheet.note(edge - 6 - 5 * count, at + 8.5, (f"× {shown(weight)}",), width=36, anchor="end")
+            self._sheet.note(edge - 6 - 5 * count, at + 8.5, (f"× {self._shown(weight)}",), width=36, anchor="end")
 
     # -- field and wiring
 
@@ -277,8 +284,8 @@ class _Drawing:
         sheet.field_instrument(_FIELD, y, self._lines(tag), strong=strong)
         sheet.electric((_FIELD + BUBBLE, y), (_TERMINALS - 7, y))
         self._wire(y, measurement.signal)
-        sheet.channel(_CHANNEL, y, shown(measurement.channel))
-        sheet.note(_FIELD_NOTE, y + 8.5, measurement_words(measurement), width=NOTE_WIDTH)
+        sheet.channel(_CHANNEL, y, self._shown(measurement.channel))
+        sheet.note(_FIELD_NOTE, y + 8.5, measurement_words(measurement, self._language), width=NOTE_WIDTH)
         if known(measurement.characteristic) != "square root":
             return _CHANNEL + 21
         sheet.software((_CHANNEL + 21, y), (_ROOT - 5.5, y), arrow=False)
@@ -290,27 +297,27 @@ class _Drawing:
         self._sheet.electric((_TERMINALS + 7, y), (_CHANNEL - 21, y))
         self._sheet.terminals(_TERMINALS, y)
         if signal is not None:
-            self._sheet.note(_FIELD_NOTE, y - 2.8, (shown(signal),), width=NOTE_WIDTH)
+            self._sheet.note(_FIELD_NOTE, y - 2.8, (self._word("signal", signal),), width=NOTE_WIDTH)
 
     def _draw_element(self, element: FinalElement, branch: Range | None, y: float) -> None:
         sheet = self._sheet
         kind, fails = known(element.kind) or "", element.fails
         sheet.final_element(_FIELD, y, kind, known(fails) or "")
         if fails is not None:
-            letters = HOLD if isinstance(fails, Hold) else _FAIL_LETTERS.get(fails, fails)
+            letters = HOLD if isinstance(fails, Hold) else self._language.fail_letters(fails)
             x, baseline = (_FIELD - 11, y + 21.2) if kind in _DRIVES else (_FIELD - 4, y + 11.4)
             sheet.note(x, baseline, (letters,), width=24, anchor="end")
         sheet.electric((_TERMINALS - 7, y), (_FIELD + 9.5, y), arrow=True)
         self._wire(y, element.signal)
-        sheet.channel(_CHANNEL, y, shown(element.channel))
-        sheet.note(_FIELD_NOTE, y + 9, element_words(element), width=NOTE_WIDTH, bold_first=True)
+        sheet.channel(_CHANNEL, y, self._shown(element.channel))
+        sheet.note(_FIELD_NOTE, y + 9, element_words(element, self._language), width=NOTE_WIDTH, bold_first=True)
         if branch is not None:
-            sheet.note(_CHANNEL + 27, y - 3.5, (shown(branch),), width=56)
+            sheet.note(_CHANNEL + 27, y - 3.5, (self._shown(branch),), width=56)
         if known(element.output_block) == "reversed":
-            sheet.note(_CHANNEL + 27, y + 8.5, ("reversed",), width=56)
-        lines = element_forcing_lines(self._plant, element)
+            sheet.note(_CHANNEL + 27, y + 8.5, (self._language.term("output block", "reversed"),), width=56)
+        lines = element_forcing_lines(self._plant, element, self._language)
         if lines:
-            middle = y - (forcing_height(self._plant, element) + 10) / 2
+            middle = y - (forcing_height(self._plant, element, self._language) + 10) / 2
             sheet.electric((_FIELD, middle + DIAMOND), (_FIELD, y - 5.5), arrow=True)
             sheet.interlock(_FIELD, middle)
             self._note_beside(_FIELD + DIAMOND + 4, middle, lines, NOTE_WIDTH + 12)
@@ -334,10 +341,10 @@ class _Drawing:
         sheet.shared_display(_MAIN, y, self._lines(loop.tag), strong=True)
         controller = known(loop.controller)
         if controller and controller.action is not None:
-            sheet.note(_MAIN - BUBBLE - 3, y + 11.5, (shown(controller.action),), width=56, anchor="end")
+            sheet.note(_MAIN - BUBBLE - 3, y + 11.5, (self._word("action", controller.action),), width=56, anchor="end")
         self._draw_alarms(y)
         width = _RIGHT - _FORCE - DIAMOND - 3
-        forced = forcing_lines(self._plant, loop.tag, width, 4)
+        forced = forcing_lines(self._plant, loop.tag, width, 4, self._language)
         if forced:
             sheet.interlock(_FORCE, y)
             self._note_beside(_FORCE + DIAMOND + 3, y, forced, width)
@@ -351,7 +358,7 @@ class _Drawing:
         places = [(kind, y - 5 - LEADING * (len(highs) - 1 - index)) for index, kind in enumerate(highs)]
         places += [(kind, y + 9.5 + LEADING * index) for index, kind in enumerate(lows)]
         for kind, baseline in places:
-            words = f"{_ALARM_LETTERS[kind]} {shown(alarms[kind].limit)}"
+            words = f"{self._language.alarm_letters(kind)} {self._shown(alarms[kind].limit)}"
             self._sheet.note(_MAIN_NOTE, baseline, (words,), width=_FORCE - DIAMOND - 4 - _MAIN_NOTE)
 
     # -- links between rows

@@ -10,10 +10,10 @@ from typing import Any
 from markupsafe import Markup
 
 from loopdoc.documents.expected_signals import STEPS, expected_commands, expected_readings
+from loopdoc.documents.language import ENGLISH, Language
 from loopdoc.documents.loop_rows import action_words, acts_on
-from loopdoc.documents.open_points import held_name
 from loopdoc.documents.titleblock import RevisionRow
-from loopdoc.documents.values import DASH, HOLD, shown
+from loopdoc.documents.values import DASH, HOLD
 from loopdoc.engineering.direction import Undecided, path_sign
 from loopdoc.engineering.dynamics import LoopDynamics
 from loopdoc.engineering.pairing import ControlledLoop, Plant, Trip
@@ -31,7 +31,7 @@ from loopdoc.register.model import (
     Setpoint,
     known,
 )
-from loopdoc.register.quantity import Quantity, QuantityError, Range, display_number, parse_quantity
+from loopdoc.register.quantity import Quantity, QuantityError, Range, parse_quantity
 
 Pair = tuple[str, str]
 """A label and its value."""
@@ -73,9 +73,14 @@ class Table:
     rows: tuple[tuple[str, ...], ...]
 
 
-def cell(value: Any) -> str:
+def cell(value: Any, language: Language = ENGLISH) -> str:
     """A value as text for a table, a hold marked."""
-    return Markup('<span class="hold">{}</span>').format(HOLD) if isinstance(value, Hold) else shown(value)
+    return Markup('<span class="hold">{}</span>').format(HOLD) if isinstance(value, Hold) else language.shown(value)
+
+
+def term(kind: str, written: str | Hold | None, language: Language) -> str:
+    """A word of one of the register's closed lists as text for a table, a hold marked."""
+    return language.term(kind, written) if isinstance(written, str) else cell(written, language)
 
 
 def joined(parts: Iterable[str], separator: str = ", ") -> str:
@@ -87,75 +92,92 @@ def joined(parts: Iterable[str], separator: str = ", ") -> str:
 # ---------------------------------------------------------------- measurement
 
 
-def measurement_panel(loop: Loop) -> Panel:
+def measurement_panel(loop: Loop, language: Language) -> Panel:
     """What a loop measures."""
-    measurement = known(loop.measurement)
+    measurement, label = known(loop.measurement), language.label
+    title = label("Measurement")
     if measurement is None:
-        return Panel("Measurement", ((("Measurement", cell(loop.measurement)),),))
+        return Panel(title, (((title, cell(loop.measurement, language)),),))
     rows: list[tuple[Pair, ...]] = [
-        (("Transmitter", cell(measurement.transmitter)), ("Variable", cell(measurement.variable))),
-        (("Element" if measurement.element is not None else "Sensor", _sensor(measurement)),),
-        (("Range", _range(measurement)),),
-        (("Signal", cell(measurement.signal)), ("Channel", cell(measurement.channel))),
-        (("On fault", cell(measurement.on_fault)), ("Filter", cell(measurement.filter))),
-        (("Operating", _band(loop.operating)),),
+        (
+            (label("Transmitter"), cell(measurement.transmitter, language)),
+            (label("Variable"), term("variable", measurement.variable, language)),
+        ),
+        ((label("Element" if measurement.element is not None else "Sensor"), _sensor(measurement, language)),),
+        ((label("Range"), _range(measurement, language)),),
+        (
+            (label("Signal"), term("signal", measurement.signal, language)),
+            (label("Channel"), cell(measurement.channel, language)),
+        ),
+        (
+            (label("On fault"), term("on fault", measurement.on_fault, language)),
+            (label("Filter"), cell(measurement.filter, language)),
+        ),
+        ((label("Operating"), _band(loop.operating, language)),),
     ]
-    return Panel("Measurement", tuple(rows))
+    return Panel(title, tuple(rows))
 
 
-def _sensor(measurement: Measurement) -> str:
-    found = [cell(part) for part in (measurement.element, measurement.sensor) if part is not None]
-    return joined(found)
+def _sensor(measurement: Measurement, language: Language) -> str:
+    return joined(cell(part, language) for part in (measurement.element, measurement.sensor) if part is not None)
 
 
-def _range(measurement: Measurement) -> str:
-    extra = [] if measurement.characteristic is None else [cell(measurement.characteristic)]
-    return joined([cell(measurement.range), *extra])
+def _range(measurement: Measurement, language: Language) -> str:
+    root = measurement.characteristic
+    extra = [] if root is None else [term("characteristic", root, language)]
+    return joined([cell(measurement.range, language), *extra])
 
 
-def _band(band: Operating | Setpoint | Hold | None) -> str:
+def _band(band: Operating | Setpoint | Hold | None, language: Language) -> str:
     """Low and high end with the normal value."""
     if band is None or isinstance(band, Hold):
-        return cell(band)
-    parts = [_ends(band.low, band.high)] if band.low is not None or band.high is not None else []
+        return cell(band, language)
+    parts = [_ends(band.low, band.high, language)] if band.low is not None or band.high is not None else []
     if band.normal is not None:
-        parts.append(Markup("normally {}").format(cell(band.normal)))
+        parts.append(Markup(language.normally("{}")).format(cell(band.normal, language)))
     return joined(parts)
 
 
-def _ends(low: Quantity | Hold | None, high: Quantity | Hold | None) -> str:
+def _ends(low: Quantity | Hold | None, high: Quantity | Hold | None, language: Language) -> str:
     if isinstance(low, Quantity) and isinstance(high, Quantity) and low.unit == high.unit:
-        return shown(Range(low.value, high.value, low.unit, low.written, high.written))
+        return language.shown(Range(low.value, high.value, low.unit, low.written, high.written))
     if low is None:
-        return Markup("up to {}").format(cell(high))
+        return Markup(language.up_to("{}")).format(cell(high, language))
     if high is None:
-        return Markup("from {}").format(cell(low))
-    return Markup("{} to {}").format(cell(low), cell(high))
+        return Markup(language.at_least("{}")).format(cell(low, language))
+    return Markup(language.between("{}", "{}")).format(cell(low, language), cell(high, language))
 
 
 # ---------------------------------------------------------------- controller
 
 
-def controller_panel(plant: Plant, loop: Loop, controller: Controller) -> Panel:
+def controller_panel(plant: Plant, loop: Loop, controller: Controller, language: Language) -> Panel:
     """How the controller is configured."""
-    gain: Pair = ("Gain", _gain(controller.gain))
+    label = language.label
+    gain: Pair = (label("Gain"), _gain(controller.gain, language))
     if controller.gain is None and controller.proportional_band is not None:
-        gain = ("Prop. band", cell(controller.proportional_band))
-    reset: Pair = ("Reset", cell(controller.reset))
+        gain = (label("Prop. band"), cell(controller.proportional_band, language))
+    reset: Pair = (label("Reset"), cell(controller.reset, language))
     if controller.reset is None and controller.repeats is not None:
-        reset = ("Repeats", cell(controller.repeats))
+        reset = (label("Repeats"), cell(controller.repeats, language))
     rows: list[tuple[Pair, ...]] = [
-        (("Action", cell(controller.action)), ("Form", cell(controller.form or "standard"))),
+        (
+            (label("Action"), term("action", controller.action, language)),
+            (label("Form"), term("form", controller.form or "standard", language)),
+        ),
         (gain, reset),
-        (("Rate", cell(controller.rate)), ("Interval", cell(controller.interval))),
-        (("Setpoint", _band(controller.setpoint)),),
-        (("Output", _output(controller)),),
-        (("Modes", _modes(controller)),),
-        (("Bad meas.", _bad_measurement(controller)), ("Not followed", cell(controller.when_not_followed))),
+        ((label("Rate"), cell(controller.rate, language)), (label("Interval"), cell(controller.interval, language))),
+        ((label("Setpoint"), _band(controller.setpoint, language)),),
+        ((label("Output"), _output(controller, language)),),
+        ((label("Modes"), _modes(controller, language)),),
+        (
+            (label("Bad meas."), _bad_measurement(controller, language)),
+            (label("Not followed"), term("not followed", controller.when_not_followed, language)),
+        ),
     ]
     extra = [
-        (label, cell(value))
-        for label, value in (
+        (label(name), cell(value, language))
+        for name, value in (
             ("SP weight", controller.setpoint_weight),
             ("Rate filter", controller.derivative_filter),
         )
@@ -163,67 +185,70 @@ def controller_panel(plant: Plant, loop: Loop, controller: Controller) -> Panel:
     ]
     if extra:
         rows.insert(3, tuple(extra))
-    rows.append((("Sign path", _sign(plant.controlled[loop.tag])),))
-    return Panel("Controller", tuple(rows))
+    rows.append(((label("Sign path"), _sign(plant.controlled[loop.tag], language)),))
+    return Panel(label("Controller"), tuple(rows))
 
 
-def _gain(gain: float | Hold | None) -> str:
-    return cell(gain) if gain is None or isinstance(gain, Hold) else f"{shown(gain)}\u00a0%/%"
+def _gain(gain: float | Hold | None, language: Language) -> str:
+    return cell(gain, language) if gain is None or isinstance(gain, Hold) else f"{language.shown(gain)}\u00a0%/%"
 
 
-def _output(controller: Controller) -> str:
+def _output(controller: Controller, language: Language) -> str:
     output = known(controller.output)
     if output is None:
-        return cell(controller.output)
-    parts = [] if output.low is None and output.high is None else [_ends(output.low, output.high)]
+        return cell(controller.output, language)
+    parts = [] if output.low is None and output.high is None else [_ends(output.low, output.high, language)]
     if output.span is not None:
-        parts.append(Markup("0 to 100\u00a0% = {}").format(cell(output.span)))
+        parts.append(Markup(language.percent_is("{}")).format(cell(output.span, language)))
     if output.to is not None:
-        parts.append(Markup("to {}").format(cell(output.to)))
+        parts.append(Markup(language.output_to("{}")).format(cell(output.to, language)))
     return joined(parts)
 
 
-def _modes(controller: Controller) -> str:
+def _modes(controller: Controller, language: Language) -> str:
     modes = known(controller.modes)
     if modes is None:
-        return cell(controller.modes)
-    parts: list[str] = [] if modes.normal is None else [Markup("normally {}").format(cell(modes.normal))]
+        return cell(controller.modes, language)
+    parts: list[str] = []
+    if modes.normal is not None:
+        parts.append(Markup(language.normally("{}")).format(term("mode", modes.normal, language)))
     if modes.permitted:
-        parts.append(f"permitted: {', '.join(modes.permitted)}")
+        parts.append(language.permitted([language.term("mode", mode) for mode in modes.permitted]))
     return joined(parts, "; ")
 
 
-def _bad_measurement(controller: Controller) -> str:
+def _bad_measurement(controller: Controller, language: Language) -> str:
     bad = known(controller.on_bad_measurement)
     if bad is None:
-        return cell(controller.on_bad_measurement)
-    parts = [] if bad.mode is None else [cell(bad.mode)]
+        return cell(controller.on_bad_measurement, language)
+    parts = [] if bad.mode is None else [term("mode", bad.mode, language)]
     if bad.output is not None:
-        parts.append(_forced_output(bad.output))
+        parts.append(_forced_output(bad.output, language))
     return joined(parts)
 
 
-def _forced_output(output: str | Hold) -> str:
+def _forced_output(output: str | Hold, language: Language) -> str:
     """`hold`, or a quantity, which the register keeps as it is written."""
     if output == "hold":
-        return "hold output"
+        return language.hold_output()
     try:
-        return cell(output) if isinstance(output, Hold) else shown(parse_quantity(output))
+        return cell(output, language) if isinstance(output, Hold) else language.shown(parse_quantity(output))
     except QuantityError:
-        return cell(output)
+        return cell(output, language)
 
 
-def _sign(controlled: ControlledLoop) -> str:
+def _sign(controlled: ControlledLoop, language: Language) -> str:
     """Why the loop needs its action, one statement for each way of its output."""
     found: list[str] = []
     for route in controlled.routes:
         sign = path_sign(controlled, route)
         if isinstance(sign, Undecided):
             reason = sign.reason.replace("`", "").removeprefix(f"{controlled.tag}: ")
-            words = f"not decided: {reason}"
+            words = language.sign_undecided(language.reason(reason))
         else:
-            steps = ", ".join(f"{step.what} ({'+' if step.sign > 0 else '−'})" for step in sign.steps)
-            words = f"{steps}: {'+' if sign.sign > 0 else '−'} in all, needs {sign.action} action"
+            steps = ", ".join(f"{language.sign_step(step.what)} ({'+' if step.sign > 0 else '−'})"
+                              for step in sign.steps)  # fmt: skip
+            words = language.sign_path(steps, "+" if sign.sign > 0 else "−", sign.action)
         if words not in found:
             found.append(words)
     return "; ".join(found) or DASH
@@ -232,67 +257,71 @@ def _sign(controlled: ControlledLoop) -> str:
 # ---------------------------------------------------------------- tuning
 
 
-def tuning_panel(loop: Loop, dynamics: LoopDynamics) -> Panel:
+def tuning_panel(loop: Loop, dynamics: LoopDynamics, language: Language) -> Panel:
     """Process model and margins."""
-    process = known(loop.process)
+    process, label = known(loop.process), language.label
+    title = label("Process and tuning")
     rows: list[tuple[Pair, ...]] = []
     if process is None:
-        rows.append((("Process", cell(loop.process)),))
+        rows.append(((label("Process"), cell(loop.process, language)),))
     elif process.branches:
-        rows.extend(((tag, _model(branch)),) for tag, branch in process.branches.items())
+        rows.extend(((tag, _model(branch, language)),) for tag, branch in process.branches.items())
     else:
-        rows.append((("Process", _model(process)),))
+        rows.append(((label("Process"), _model(process, language)),))
     if process is not None:
-        rows.append((("Source", cell(process.source)),))
+        rows.append(((label("Source"), cell(process.source, language)),))
     worst = dynamics.worst
     if worst is None:
-        rows.append((("Margins", f"not calculated: {dynamics.reason}"),))
-        return Panel("Process and tuning", tuple(rows))
+        rows.append(((label("Margins"), language.margins_not_calculated(language.reason(dynamics.reason))),))
+        return Panel(title, tuple(rows))
     margins = worst.margins[-1]
     if not margins.stable:
-        rows.append((("Margins", "the loop is unstable as written"),))
-        return Panel("Process and tuning", tuple(rows))
-    gain, phase = _figure(margins.gain_margin), _figure(margins.phase_margin_deg, "°")
-    sensitivity, crossover = _figure(margins.max_sensitivity), _figure(margins.crossover_rad_per_s, "\u00a0rad/s")
-    rows.append((("Gain margin", gain), ("Phase margin", phase)))
-    rows.append((("Ms", sensitivity), ("Crossover", crossover)))
+        rows.append(((label("Margins"), language.unstable()),))
+        return Panel(title, tuple(rows))
+    gain, phase = _figure(margins.gain_margin, language), _figure(margins.phase_margin_deg, language, "°")
+    crossover = _figure(margins.crossover_rad_per_s, language, "\u00a0rad/s")
+    rows.append(((label("Gain margin"), gain), (label("Phase margin"), phase)))
+    rows.append(((label("Ms"), _figure(margins.max_sensitivity, language)), (label("Crossover"), crossover)))
     if margins.sampled:
-        rows.append((("Margins", "of the loop as it is sampled"),))
+        rows.append(((label("Margins"), language.as_sampled()),))
     if worst.speed_ratio is not None and math.isfinite(worst.speed_ratio):
         inner = worst.chain.levels[-2].loop.tag
-        rows.append((("Speed ratio", f"{inner} is {display_number(worst.speed_ratio, 2)} times as fast"),))
-    return Panel("Process and tuning", tuple(rows))
+        faster = language.times_as_fast(inner, language.number(worst.speed_ratio, 2))
+        rows.append(((label("Speed ratio"), faster),))
+    return Panel(title, tuple(rows))
 
 
-def _model(process: Process) -> str:
-    parts = [] if process.effect is None else [cell(process.effect)]
+def _model(process: Process, language: Language) -> str:
+    parts = [] if process.effect is None else [term("effect", process.effect, language)]
     if process.gain is not None:
-        parts.append(Markup("gain {}").format(cell(process.gain)))
+        parts.append(Markup(language.model_gain("{}")).format(cell(process.gain, language)))
     if process.integrating:
-        parts.append("integrating")
+        parts.append(language.integrating())
     lags = process.lags
     if isinstance(lags, Hold):
-        parts.append(Markup("lag {}").format(cell(lags)))
+        parts.append(Markup(language.model_lags(["{}"])).format(cell(lags, language)))
     elif lags:
-        parts.append(f"{'lag' if len(lags) == 1 else 'lags'} {' and '.join(shown(lag) for lag in lags)}")
+        parts.append(language.model_lags([language.shown(lag) for lag in lags]))
     if process.lead is not None:
-        parts.append(Markup("lead {}").format(cell(process.lead)))
+        parts.append(Markup(language.model_lead("{}")).format(cell(process.lead, language)))
     if process.dead_time is not None:
-        parts.append(Markup("dead time {}").format(cell(process.dead_time)))
+        parts.append(Markup(language.model_dead_time("{}")).format(cell(process.dead_time, language)))
     return joined(parts)
 
 
-def _figure(value: float, unit: str = "") -> str:
+def _figure(value: float, language: Language, unit: str = "") -> str:
     """A calculated figure to three digits; a dash where there is none, such as a crossover never reached."""
     if math.isnan(value):
         return DASH
-    return display_number(value, 3) if math.isinf(value) else f"{display_number(value, 3)}{unit}"
+    return language.number(value, 3) if math.isinf(value) else f"{language.number(value, 3)}{unit}"
 
 
 # ---------------------------------------------------------------- final elements
 
 
-def element_table(plant: Plant, loop: Loop, elements: Iterable[FinalElement]) -> Table | None:
+def element_table(
+    plant: Plant, loop: Loop, elements: Iterable[FinalElement], language: Language
+) -> Table | None:
     """Final elements on the loop's drawing; None where there are none."""
     controlled = plant.controlled.get(loop.tag)
     ends = dict.fromkeys(route.end.tag for route in controlled.routes) if controlled else {}
@@ -300,96 +329,91 @@ def element_table(plant: Plant, loop: Loop, elements: Iterable[FinalElement]) ->
     rows = tuple(
         (
             element.tag,
-            cell(element.service) if element.tag in ends else joined([cell(element.service), f"moved by {movers}"]),
-            cell(element.kind),
-            cell(element.opens_on),
-            cell(element.output_block or "direct"),
-            cell(element.fails),
-            cell(element.safe),
-            cell(element.signal),
-            cell(element.channel),
-            cell(element.characteristic),
-            cell(element.stroke_time),
+            cell(element.service, language)
+            if element.tag in ends
+            else joined([cell(element.service, language), language.moved_by(movers)]),
+            term("element", element.kind, language),
+            term("opens on", element.opens_on, language),
+            term("output block", element.output_block or "direct", language),
+            term("position", element.fails, language),
+            term("position", element.safe, language),
+            term("signal", element.signal, language),
+            cell(element.channel, language),
+            term("characteristic", element.characteristic, language),
+            cell(element.stroke_time, language),
         )
         for element in elements
     )
-    columns = (
-        Column("Final element", 9),
-        Column("Service", 15),
-        Column("Kind", 10),
-        Column("Opens on", 10),
-        Column("Output block", 8),
-        Column("Fails", 7),
-        Column("Safe position", 7),
-        Column("Signal", 7),
-        Column("Channel", 8),
-        Column("Characteristic", 12),
-        Column("Stroke time", 7),
-    )
-    return Table("Final elements", columns, rows) if rows else None
+    columns = _columns(
+        language, ("Final element", 9), ("Service", 15), ("Kind", 10), ("Opens on", 10), ("Output block", 8),
+        ("Fails", 7), ("Safe position", 7), ("Signal", 7), ("Channel", 8), ("Characteristic", 12), ("Stroke time", 7),
+    )  # fmt: skip
+    return Table(language.label("Final elements"), columns, rows) if rows else None
+
+
+def _columns(language: Language, *found: tuple[str, float]) -> tuple[Column, ...]:
+    return tuple(Column(language.label(heading), share) for heading, share in found)
 
 
 # ---------------------------------------------------------------- alarms, trips, interlocks
 
 
-def alarm_table(plant: Plant, loop: Loop) -> Table | None:
+def alarm_table(plant: Plant, loop: Loop, language: Language) -> Table | None:
     """Alarms and trips on the loop's measurement, from the highest limit to the lowest."""
     trips = [trip for trip in plant.trips if trip.loop is loop]
-    above = [_trip_row(plant, trip) for trip in trips if trip.initiator.direction == "above"]
-    rest = [_trip_row(plant, trip) for trip in trips if trip.initiator.direction != "above"]
-    alarms = {kind: _alarm_row(loop.alarms[kind]) for kind in _HIGH_FIRST if kind in loop.alarms}
+    above = [_trip_row(plant, trip, language) for trip in trips if trip.initiator.direction == "above"]
+    rest = [_trip_row(plant, trip, language) for trip in trips if trip.initiator.direction != "above"]
+    alarms = {kind: _alarm_row(loop.alarms[kind], language) for kind in _HIGH_FIRST if kind in loop.alarms}
     deviation = [alarms.pop("deviation")] if "deviation" in alarms else []
     rows = (*above, *alarms.values(), *rest, *deviation)
-    columns = (
-        Column("Alarm or trip", 11),
-        Column("Limit", 12),
-        Column("Dead band", 9),
-        Column("Delay", 7),
-        Column("Priority", 7),
-        Column("Respond in", 9),
-        Column("Operator response", 45),
-    )
-    return Table("Alarms and trips", columns, rows) if rows else None
+    columns = _columns(
+        language, ("Alarm or trip", 11), ("Limit", 12), ("Dead band", 9), ("Delay", 7), ("Priority", 7),
+        ("Respond in", 9), ("Operator response", 45),
+    )  # fmt: skip
+    return Table(language.label("Alarms and trips"), columns, rows) if rows else None
 
 
-def _alarm_row(alarm: Alarm) -> tuple[str, ...]:
+def _alarm_row(alarm: Alarm, language: Language) -> tuple[str, ...]:
     return (
-        alarm.kind.replace("_", " ").capitalize(),
-        cell(alarm.limit),
-        cell(alarm.deadband),
-        cell(alarm.delay),
-        cell(alarm.priority),
-        cell(alarm.time_to_respond),
-        cell(alarm.response),
+        language.alarm_name(alarm.kind),
+        cell(alarm.limit, language),
+        cell(alarm.deadband, language),
+        cell(alarm.delay, language),
+        term("priority", alarm.priority, language),
+        cell(alarm.time_to_respond, language),
+        cell(alarm.response, language),
     )
 
 
-def _trip_row(plant: Plant, trip: Trip) -> tuple[str, ...]:
+def _trip_row(plant: Plant, trip: Trip, language: Language) -> tuple[str, ...]:
     initiator = trip.initiator
     return (
-        f"Trip {trip.interlock.tag}",
-        _limit(initiator),
+        language.trip_name(trip.interlock.tag),
+        _limit(initiator, language),
         DASH,
-        cell(initiator.delay),
+        cell(initiator.delay, language),
         DASH,
         DASH,
-        _trip_words(plant, trip.interlock),
+        _trip_words(plant, trip.interlock, language),
     )
 
 
-def _limit(initiator: Initiator) -> str:
+def _limit(initiator: Initiator, language: Language) -> str:
     if isinstance(initiator.limit, Hold) or isinstance(initiator.direction, Hold):
-        return cell(initiator.limit)
-    return " ".join(shown(part) for part in (initiator.direction, initiator.limit) if part is not None) or DASH
+        return cell(initiator.limit, language)
+    limit = "" if initiator.limit is None else language.shown(initiator.limit)
+    if initiator.direction is None:
+        return limit or DASH
+    return language.side(initiator.direction, limit).rstrip()
 
 
-def _trip_words(plant: Plant, interlock: Interlock) -> str:
+def _trip_words(plant: Plant, interlock: Interlock, language: Language) -> str:
     """What a trip does by itself."""
     held = any(hold.tag == interlock.tag and hold.path == ("actions",) for hold in plant.register.holds)
     if held:
-        return Markup("By itself: {}").format(cell(Hold("")))
-    actions = "; ".join(f"{tag} {action_words(action)}" for tag, action in interlock.actions.items())
-    return f"By itself: {actions}" if actions else DASH
+        return Markup(language.by_itself("{}")).format(cell(Hold("")))
+    actions = "; ".join(f"{tag} {action_words(action, language)}" for tag, action in interlock.actions.items())
+    return language.by_itself(actions) if actions else DASH
 
 
 def related_interlocks(plant: Plant, loop: Loop, elements: Iterable[FinalElement]) -> tuple[Interlock, ...]:
@@ -403,55 +427,54 @@ def related_interlocks(plant: Plant, loop: Loop, elements: Iterable[FinalElement
     )
 
 
-def interlock_table(interlocks: Iterable[Interlock], loop: Loop, elements: Iterable[FinalElement]) -> Table | None:
+def interlock_table(
+    interlocks: Iterable[Interlock], loop: Loop, elements: Iterable[FinalElement], language: Language
+) -> Table | None:
     """What each related interlock is and what it does to this loop."""
     tags = [*(element.tag for element in elements), loop.tag]
     rows = []
     for interlock in interlocks:
-        here = "; ".join(f"{action.tag} {action_words(action)}" for action in acts_on(interlock, tags))
+        here = "; ".join(f"{action.tag} {action_words(action, language)}" for action in acts_on(interlock, tags))
         rows.append(
             (
                 interlock.tag,
-                cell(interlock.service),
-                cell(interlock.layer),
-                _initiators(interlock),
-                here or "initiated by this loop",
-                cell(interlock.reset),
+                cell(interlock.service, language),
+                term("layer", interlock.layer, language),
+                _initiators(interlock, language),
+                here or language.initiated_here(),
+                cell(interlock.reset, language),
             )
         )
-    columns = (
-        Column("Interlock", 9),
-        Column("Service", 19),
-        Column("Layer", 7),
-        Column("Initiated by", 24),
-        Column("Acts here", 18),
-        Column("Reset", 23),
-    )
-    return Table("Interlocks", columns, tuple(rows)) if rows else None
+    columns = _columns(
+        language, ("Interlock", 9), ("Service", 19), ("Layer", 7), ("Initiated by", 24), ("Acts here", 18),
+        ("Reset", 23),
+    )  # fmt: skip
+    return Table(language.label("Interlocks"), columns, tuple(rows)) if rows else None
 
 
-def _initiators(interlock: Interlock) -> str:
+def _initiators(interlock: Interlock, language: Language) -> str:
     """Initiators with the same limit named together, after the voting."""
     groups: dict[str, list[str]] = {}
     for initiator in interlock.initiators.values():
-        groups.setdefault(_limit(initiator), []).append(initiator.tag)
+        groups.setdefault(_limit(initiator, language), []).append(initiator.tag)
     words = [Markup("{} {}").format(", ".join(tags), limit) for limit, tags in groups.items()]
-    voting = [] if interlock.voting is None else [cell(interlock.voting)]
+    voting = [] if interlock.voting is None else [cell(interlock.voting, language)]
     return joined([*voting, joined(words, "; ")], ": ") if words else joined(voting)
 
 
 # ---------------------------------------------------------------- expected signals, revisions
 
 
-def expected_table(plant: Plant, loop: Loop) -> Table | None:
+def expected_table(plant: Plant, loop: Loop, language: Language) -> Table | None:
     """What a loop check should find at each step; None where the register does not say enough."""
-    found = (*expected_readings(loop), *expected_commands(plant, loop))
+    found = (*expected_readings(loop, language), *expected_commands(plant, loop, language))
     rows = tuple((f"{row.what}, {row.unit}", *row.values) for row in found)
-    columns = (Column("Signal or output", 42), *(Column(step, 11.6, number=True) for step in STEPS))
-    return Table("Expected at the loop check", columns, rows) if rows else None
+    label = language.label
+    columns = (Column(label("Signal or output"), 42), *(Column(step, 11.6, number=True) for step in STEPS))
+    return Table(label("Expected at the loop check"), columns, rows) if rows else None
 
 
-def revision_table(revisions: Iterable[RevisionRow]) -> Table | None:
+def revision_table(revisions: Iterable[RevisionRow], language: Language) -> Table | None:
     """Revisions, the latest first; None where the register has none."""
     rows = tuple(
         (
@@ -465,30 +488,30 @@ def revision_table(revisions: Iterable[RevisionRow]) -> Table | None:
         )
         for revision in revisions
     )
-    columns = (
-        Column("Revision", 8),
-        Column("Date", 10),
-        Column("Status", 14),
-        Column("Summary", 32),
-        Column("Prepared by", 12),
-        Column("Checked by", 12),
-        Column("Approved by", 12),
-    )
-    return Table("Revisions", columns, rows) if rows else None
+    columns = _columns(
+        language, ("Revision", 8), ("Date", 10), ("Status", 14), ("Summary", 32), ("Prepared by", 12),
+        ("Checked by", 12), ("Approved by", 12),
+    )  # fmt: skip
+    return Table(language.label("Revisions"), columns, rows) if rows else None
 
 
 # ---------------------------------------------------------------- holds
 
 
 def hold_lines(
-    plant: Plant, tags: Iterable[str], own: str, *, without: Collection[tuple[str, ...]] = ()
+    plant: Plant,
+    tags: Iterable[str],
+    own: str,
+    *,
+    without: Collection[tuple[str, ...]] = (),
+    language: Language = ENGLISH,
 ) -> Iterator[str]:
     """The holds of these tags, those with one reason together; ``without`` are beginnings of paths to leave out."""
     wanted = set(tags)
     by_reason: dict[str, list[str]] = {}
     for hold in plant.register.holds:
         if hold.tag in wanted and not any(hold.path[: len(path)] == path for path in without):
-            what = held_name(hold.path)
+            what = language.held_name(hold.path)
             by_reason.setdefault(hold.reason, []).append(what if hold.tag == own else f"{hold.tag} {what}")
     for reason, values in by_reason.items():
         yield f"{', '.join(values)}: {reason}"

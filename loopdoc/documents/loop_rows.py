@@ -10,9 +10,10 @@ from collections.abc import Iterable, Iterator
 from dataclasses import dataclass, replace
 
 from loopdoc.documents.drawing import BLOCK, BUBBLE, DIAMOND, LEADING, text_width, wrapped
-from loopdoc.documents.values import DASH, shown
+from loopdoc.documents.language import ENGLISH, Language
+from loopdoc.documents.values import DASH
 from loopdoc.engineering.pairing import Plant
-from loopdoc.register.model import FinalElement, Function, Interlock, InterlockAction, Loop, Measurement, known
+from loopdoc.register.model import FinalElement, Function, Hold, Interlock, InterlockAction, Loop, Measurement, known
 from loopdoc.register.quantity import Range
 
 NOTE_WIDTH = 90.0
@@ -33,7 +34,6 @@ _FIELD_BELOW = 31.0
 _INPUT_DEPTH = 34.0
 """The same with the most words that stand beside an input of a function [pt]."""
 
-_SHUT_AND_OPEN = {"variable-speed drive": ("lowest speed", "full speed"), "heater bank": ("off", "full power")}
 _SIGNAL_ENDS = {"4-20 mA": ("4", "20", "mA"), "0-20 mA": ("0", "20", "mA"), "1-5 V": ("1", "5", "V")}
 
 
@@ -114,15 +114,15 @@ class Row:
     """Of its signal line, from the top of the drawing [pt]."""
 
 
-def rows_of(plant: Plant, loop: Loop) -> tuple[Row, ...]:
+def rows_of(plant: Plant, loop: Loop, language: Language) -> tuple[Row, ...]:
     """The rows of a loop's drawing, placed below each other."""
-    upward = _upward(plant, loop)
-    own = _own_row(plant, loop, upward[0].label if upward else "")
+    upward = _upward(plant, loop, language)
+    own = _own_row(plant, loop, language, upward[0].label if upward else "")
     # Upward, the label met last belongs to the link below the row: hand each one down.
     labels = [row.label for row in upward[1:]] + [""] if upward else []
     above = [replace(row, label=label) for row, label in zip(upward, labels, strict=True)]
     placed: list[Row] = []
-    for row in (*reversed(above), own, *_downward(plant, loop)):
+    for row in (*reversed(above), own, *_downward(plant, loop, language)):
         y = _TOP + row.above
         if placed:
             last = placed[-1]
@@ -131,7 +131,7 @@ def rows_of(plant: Plant, loop: Loop) -> tuple[Row, ...]:
     return tuple(placed)
 
 
-def _upward(plant: Plant, loop: Loop) -> list[Row]:
+def _upward(plant: Plant, loop: Loop, language: Language) -> list[Row]:
     """Rows above the loop, the nearest first; the label of each is that of the link below it."""
     register = plant.register
     rows: list[Row] = []
@@ -141,7 +141,7 @@ def _upward(plant: Plant, loop: Loop) -> list[Row]:
         main = next((tag for tag in commanders if tag in register.loops), commanders[0] if commanders else None)
         beside = tuple(tag for tag in commanders if tag != main)
         if rows and isinstance(last := rows[-1].part, Block):
-            rows[-1] = _block_row(last.function, beside, rows[-1].label)
+            rows[-1] = _block_row(last.function, beside, rows[-1].label, language)
         elif beside:
             rows.append(Row(Others(beside), 9, 9))
         if main is None:
@@ -149,22 +149,22 @@ def _upward(plant: Plant, loop: Loop) -> list[Row]:
         seen.add(main)
         if main in register.loops:
             primary = register.loops[main]
-            rows.append(Row(Primary(primary), BUBBLE + 2, BUBBLE + 2, demand_words(primary)))
+            rows.append(Row(Primary(primary), BUBBLE + 2, BUBBLE + 2, demand_words(primary, language)))
             return rows
-        rows.append(_block_row(register.functions[main], (), "setpoint"))
+        rows.append(_block_row(register.functions[main], (), language.label("setpoint"), language))
         target = main
 
 
-def _own_row(plant: Plant, loop: Loop, label: str) -> Row:
+def _own_row(plant: Plant, loop: Loop, language: Language, label: str) -> Row:
     high = sum(kind in loop.alarms for kind in ("high", "high_high"))
     low = sum(kind in loop.alarms for kind in ("low", "low_low", "deviation"))
     tapped = 30.0 if known(loop.measurement) and initiated_lines(plant, loop) else 0.0
     above = max(BUBBLE + 2, 6 + high * LEADING, tapped)
-    below = max(BUBBLE + 3, measurement_depth(known(loop.measurement)), 10 + low * LEADING)
+    below = max(BUBBLE + 3, measurement_depth(known(loop.measurement), language), 10 + low * LEADING)
     return Row(Own(loop), above, below, label)
 
 
-def _downward(plant: Plant, loop: Loop) -> Iterator[Row]:
+def _downward(plant: Plant, loop: Loop, language: Language) -> Iterator[Row]:
     """Rows below the loop."""
     register = plant.register
     controller = known(loop.controller)
@@ -172,54 +172,54 @@ def _downward(plant: Plant, loop: Loop) -> Iterator[Row]:
         return
     output = known(controller.output)
     to = output.to if output else controller.output
-    label, source, seen = demand_words(loop), loop.tag, {loop.tag}
+    label, source, seen = demand_words(loop, language), loop.tag, {loop.tag}
     while isinstance(to, str) and to in register.functions and to not in seen:
         seen.add(to)
         function = register.functions[to]
         beside = tuple(tag for tag in plant.commanders.get(to, ()) if tag != source)
-        yield _block_row(function, beside, label)
+        yield _block_row(function, beside, label, language)
         for end, branch in function.outputs.items():
             if end in register.final_elements:
-                yield _element_row(plant, Element(register.final_elements[end], branch))
+                yield _element_row(plant, Element(register.final_elements[end], branch), language)
             else:
                 yield Row(Elsewhere(end), 8, 12)
         if function.outputs:
             return
-        label, source, to = "setpoint", to, function.to
+        label, source, to = language.label("setpoint"), to, function.to
     if isinstance(to, str) and to in register.final_elements:
-        yield _element_row(plant, Element(register.final_elements[to], None))
+        yield _element_row(plant, Element(register.final_elements[to], None), language)
     elif isinstance(to, str) and to in register.loops and to not in seen:
-        yield _secondary_row(plant, register.loops[to], label)
+        yield _secondary_row(plant, register.loops[to], label, language)
     else:
-        yield Row(Elsewhere(shown(to)), 8, 12)
+        yield Row(Elsewhere(language.shown(to)), 8, 12)
 
 
-def _block_row(function: Function, beside: tuple[str, ...], label: str) -> Row:
+def _block_row(function: Function, beside: tuple[str, ...], label: str, language: Language) -> Row:
     drawn = min(len(beside), MOST_BESIDE)
     side = BUBBLE + 2 + (drawn - 1) * BESIDE_DISTANCE / 2 if drawn else 0.0
-    words = 0.0 if beside else LEADING * len(block_words(function, NOTE_WIDTH)) / 2 + 2
+    words = 0.0 if beside else LEADING * len(block_words(function, NOTE_WIDTH, language)) / 2 + 2
     inputs = _INPUT_DEPTH + (len(function.inputs) - 1) * INPUT_DISTANCE if function.inputs else 0.0
     transmitter = BUBBLE + 2 if function.inputs else 0.0
     above = max(BLOCK + 2, side, words, transmitter)
     return Row(Block(function, beside), above, max(BLOCK + 2, side, words, inputs), label)
 
 
-def _element_row(plant: Plant, part: Element) -> Row:
-    above, below = _element_extent(plant, part.element)
+def _element_row(plant: Plant, part: Element, language: Language) -> Row:
+    above, below = _element_extent(plant, part.element, language)
     return Row(part, above, below)
 
 
-def _element_extent(plant: Plant, element: FinalElement) -> tuple[float, float]:
-    words = 5 + LEADING * len(element_words(element))
-    return max(12.0, forcing_height(plant, element)), max(28.0, words)
+def _element_extent(plant: Plant, element: FinalElement, language: Language) -> tuple[float, float]:
+    words = 5 + LEADING * len(element_words(element, language))
+    return max(12.0, forcing_height(plant, element, language)), max(28.0, words)
 
 
-def _secondary_row(plant: Plant, loop: Loop, label: str) -> Row:
+def _secondary_row(plant: Plant, loop: Loop, label: str, language: Language) -> Row:
     controller = known(loop.controller)
     output = known(controller.output) if controller else None
     to = known(output.to) if output else None
     element = plant.register.final_elements.get(to) if to else None
-    above, below = _element_extent(plant, element) if element else (0.0, 0.0)
+    above, below = _element_extent(plant, element, language) if element else (0.0, 0.0)
     part = Secondary(loop, element, "" if element else to or "")
     return Row(part, max(BUBBLE + 2, above), max(BUBBLE + 3, below), label)
 
@@ -233,52 +233,59 @@ def transmitter_of(loop: Loop) -> str:
     return (known(measurement.transmitter) if measurement else None) or ""
 
 
-def demand_words(loop: Loop) -> str:
+def demand_words(loop: Loop, language: Language) -> str:
     """What 0 and 100 % of a controller's output ask for."""
     controller = known(loop.controller)
     output = known(controller.output) if controller else None
-    return f"0 to 100\u00a0% = {shown(output.span)}" if output and output.span is not None else ""
+    return language.percent_is(language.shown(output.span)) if output and output.span is not None else ""
 
 
-def block_words(function: Function, width: float) -> tuple[str, ...]:
+def block_words(function: Function, width: float, language: Language) -> tuple[str, ...]:
     """Tag, kind, settings and service of a function."""
-    words = [function.tag, shown(function.kind)]
+    words = [function.tag, kind_words(function, language)]
     if function.span is not None:
         # The span of a ratio is a plain number, which the register reads as a fraction.
-        span = shown(function.span).removesuffix("\u00a0fraction")
-        words.append(span if function.normal is None else f"{span}, normally {shown(function.normal)}")
+        span = language.shown(function.span).removesuffix("\u00a0fraction")
+        normal = language.normally(language.shown(function.normal)) if function.normal is not None else ""
+        words.append(f"{span}, {normal}" if normal else span)
     if isinstance(function.service, str):
         words.extend(wrapped(function.service, width, 2))
     return tuple(words)
 
 
-def measurement_words(measurement: Measurement) -> tuple[str, ...]:
+def kind_words(function: Function, language: Language) -> str:
+    """What a function computes."""
+    kind = function.kind
+    return language.term("function", kind) if isinstance(kind, str) else language.shown(kind)
+
+
+def measurement_words(measurement: Measurement, language: Language) -> tuple[str, ...]:
     """Range and element of a measurement, as they stand beside its transmitter."""
     element = measurement.element or measurement.sensor
-    return (shown(measurement.range), *(wrapped(shown(element), NOTE_WIDTH, 3) if element is not None else ()))
+    told = wrapped(language.shown(element), NOTE_WIDTH, 3) if element is not None else ()
+    return (language.shown(measurement.range), *told)
 
 
-def measurement_depth(measurement: Measurement | None) -> float:
+def measurement_depth(measurement: Measurement | None, language: Language) -> float:
     """Height that a transmitter needs below its signal, with its words and what it is connected to [pt]."""
-    return max(_FIELD_BELOW, 5 + LEADING * len(measurement_words(measurement))) if measurement else 0.0
+    return max(_FIELD_BELOW, 5 + LEADING * len(measurement_words(measurement, language))) if measurement else 0.0
 
 
-def element_words(element: FinalElement) -> tuple[str, ...]:
+def element_words(element: FinalElement, language: Language) -> tuple[str, ...]:
     """Tag, service and signal of a final element."""
-    ends = _signal_ends(element)
-    return (element.tag, *wrapped(shown(element.service), NOTE_WIDTH, 2), *((ends,) if ends else ()))
+    ends = _signal_ends(element, language)
+    return (element.tag, *wrapped(language.shown(element.service), NOTE_WIDTH, 2), *((ends,) if ends else ()))
 
 
-def _signal_ends(element: FinalElement) -> str:
+def _signal_ends(element: FinalElement, language: Language) -> str:
     """At which ends of the signal a final element is shut and open."""
     ends = _SIGNAL_ENDS.get(known(element.signal) or "")
     opens_on = known(element.opens_on)
     if ends is None or opens_on is None:
         return ""
     low, high, unit = ends
-    shut, opened = _SHUT_AND_OPEN.get(known(element.kind) or "", ("shut", "open"))
     first, last = (low, high) if opens_on == "rising signal" else (high, low)
-    return f"{first}\u00a0{unit} {shut}, {last}\u00a0{unit} {opened}"
+    return language.signal_ends(f"{first}\u00a0{unit}", f"{last}\u00a0{unit}", known(element.kind) or "")
 
 
 def initiated_lines(plant: Plant, loop: Loop) -> tuple[str, ...]:
@@ -288,10 +295,10 @@ def initiated_lines(plant: Plant, loop: Loop) -> tuple[str, ...]:
     return wrapped(", ".join(initiated), 74, 3) if initiated else ()
 
 
-def forcing_lines(plant: Plant, tag: str, width: float, most: int) -> tuple[str, ...]:
+def forcing_lines(plant: Plant, tag: str, width: float, most: int, language: Language) -> tuple[str, ...]:
     """Interlocks that act on a tag, each with what it does there; those beyond the most lines are counted."""
     entries = [
-        f"{interlock.tag}: {action_words(interlock.actions[tag])}"
+        f"{interlock.tag}: {action_words(interlock.actions[tag], language)}"
         for interlock in plant.register.interlocks.values()
         if tag in interlock.actions
     ]
@@ -299,26 +306,31 @@ def forcing_lines(plant: Plant, tag: str, width: float, most: int) -> tuple[str,
     if len(lines) <= most:
         return tuple(lines)
     kept = [entry for entry in entries if text_width(entry) <= width][: most - 1]
-    return (*kept, f"and {len(entries) - len(kept)} more")
+    return (*kept, language.and_more(len(entries) - len(kept)))
 
 
-def element_forcing_lines(plant: Plant, element: FinalElement) -> tuple[str, ...]:
+def element_forcing_lines(plant: Plant, element: FinalElement, language: Language) -> tuple[str, ...]:
     """Interlocks that act on a final element, as they stand beside its diamond."""
-    return forcing_lines(plant, element.tag, NOTE_WIDTH + 4, 6)
+    return forcing_lines(plant, element.tag, NOTE_WIDTH + 4, 6, language)
 
 
-def forcing_height(plant: Plant, element: FinalElement) -> float:
+def forcing_height(plant: Plant, element: FinalElement, language: Language) -> float:
     """Height above a final element's signal for the interlocks that act on it [pt]."""
-    lines = len(element_forcing_lines(plant, element))
+    lines = len(element_forcing_lines(plant, element, language))
     return 11.0 + max(2 * DIAMOND, lines * LEADING) if lines else 0.0
 
 
-def action_words(action: InterlockAction) -> str:
+def action_words(action: InterlockAction, language: Language = ENGLISH) -> str:
     """What an interlock does to one final element or controller."""
     if action.position is not None:
-        return shown(action.position)
-    parts = [shown(part) for part in (action.mode, action.output) if part is not None]
+        return _word("position", action.position, language)
+    parts = [_word("mode", action.mode, language)] if action.mode is not None else []
+    parts += [language.shown(action.output)] if action.output is not None else []
     return ", ".join(parts) or DASH
+
+
+def _word(kind: str, written: str | Hold, language: Language) -> str:
+    return language.term(kind, written) if isinstance(written, str) else language.shown(written)
 
 
 def acts_on(interlock: Interlock, tags: Iterable[str]) -> tuple[InterlockAction, ...]:

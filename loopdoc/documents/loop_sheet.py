@@ -10,6 +10,7 @@ from markupsafe import Markup
 
 from loopdoc.documents import time_to_act_story
 from loopdoc.documents.basis import Basis, Page
+from loopdoc.documents.language import Language
 from loopdoc.documents.loop_drawing import drawn_loop
 from loopdoc.documents.loop_panels import (
     Panel,
@@ -24,6 +25,7 @@ from loopdoc.documents.loop_panels import (
     measurement_panel,
     related_interlocks,
     revision_table,
+    term,
     tuning_panel,
 )
 from loopdoc.documents.open_points import HOLD_RULE
@@ -40,6 +42,7 @@ from loopdoc.documents.response_plot import HEIGHT as PLOT_HEIGHT
 from loopdoc.documents.response_plot import calculated_response, response_plot, response_words
 from loopdoc.documents.titleblock import Document
 from loopdoc.documents.values import DASH
+from loopdoc.documents.wording import upper_first
 from loopdoc.engineering.pairing import Plant
 from loopdoc.register.model import Loop, known
 from loopdoc.rules.finding import Finding
@@ -55,9 +58,6 @@ LEGIBLE = DENSITIES[:2]
 
 TIME_TO_ACT = "Time to act"
 """Words before the line of times from alarm to trip."""
-BESIDE_TIMES = "calculated with the loops in manual, no proof that an interlock is enough"
-"""The caution that the line has room for."""
-
 OVERFULL = "overfull"
 """Class of a sheet that no type size brings onto one page: it runs on, clear of a high title block."""
 
@@ -113,9 +113,10 @@ def loop_sheets(basis: Basis) -> Iterator[Page]:
             kind="Loop sheet",
             code="LS",
             title=" ".join(part for part in (loop.tag, known(loop.service)) if part),
-            supplementary_title=f"Unit {_unit_words(basis.plant, loop)}",
+            supplementary_title=basis.language.unit_title(_unit_words(basis.plant, loop), ""),
             unit=known(loop.unit) or "00",
             serial=serial(basis.plant, loop),
+            language=basis.language,
         )
         view = _fitted(basis, loop, _view(basis, loop, document), room(document))
         yield Page(FOLDER, loop.tag, document, TEMPLATE, {"sheet": view})
@@ -141,8 +142,8 @@ def serial(plant: Plant, loop: Loop) -> str:
 
 
 def _view(basis: Basis, loop: Loop, document: Document) -> SheetView:
-    plant = basis.plant
-    drawn = drawn_loop(plant, loop.tag)
+    plant, language = basis.plant, basis.language
+    drawn = drawn_loop(plant, loop.tag, language)
     interlocks = related_interlocks(plant, loop, drawn.elements)
     tags = {loop.tag, *(function.tag for function in drawn.functions), *(element.tag for element in drawn.elements)}
     measurement = known(loop.measurement)
@@ -152,11 +153,11 @@ def _view(basis: Basis, loop: Loop, document: Document) -> SheetView:
     panels: tuple[Panel, ...] = ()
     if controller is not None:
         dynamics = basis.dynamics.loop(loop.tag)
-        panels = (controller_panel(plant, loop, controller), tuning_panel(loop, dynamics))
+        panels = (controller_panel(plant, loop, controller, language), tuning_panel(loop, dynamics, language))
     tables = (
-        element_table(plant, loop, drawn.elements),
-        alarm_table(plant, loop),
-        interlock_table(interlocks, loop, drawn.elements),
+        element_table(plant, loop, drawn.elements, language),
+        alarm_table(plant, loop, language),
+        interlock_table(interlocks, loop, drawn.elements, language),
     )
     # Open holds are told one by one below, with their reasons.
     findings = [finding for finding in basis.result.about(tags) if finding.rule != HOLD_RULE]
@@ -165,22 +166,24 @@ def _view(basis: Basis, loop: Loop, document: Document) -> SheetView:
     accepted = [finding for finding in basis.result.accepted if not tags.isdisjoint(finding.touches)]
     return SheetView(
         tag=loop.tag,
-        service=cell(loop.service),
-        purpose=cell(loop.purpose),
-        facts=_facts(plant, loop),
+        service=cell(loop.service, language),
+        purpose=cell(loop.purpose, language),
+        facts=_facts(plant, loop, language),
         drawing=Markup(drawn.svg),
         drawing_height=drawn.height,
-        measurement=measurement_panel(loop),
+        measurement=measurement_panel(loop, language),
         controller=panels,
-        expected=expected_table(plant, loop),
+        expected=expected_table(plant, loop, language),
         tables=tuple(table for table in tables if table),
         points=(
-            *(_open_point(finding, loop.tag) for finding in findings[:MOST_FINDINGS]),
-            *(_accepted_point(finding, loop.tag) for finding in accepted),
+            *(_open_point(finding, loop.tag, language) for finding in findings[:MOST_FINDINGS]),
+            *(_accepted_point(finding, loop.tag, language) for finding in accepted),
         ),
-        more_points=_more(more),
-        holds=tuple(hold_lines(plant, {*tags, *(interlock.tag for interlock in interlocks)}, loop.tag)),
-        revisions=revision_table(document.history[:REVISIONS]),
+        more_points=language.more_findings(more) if more > 0 else "",
+        holds=tuple(
+            hold_lines(plant, {*tags, *(interlock.tag for interlock in interlocks)}, loop.tag, language=language)
+        ),
+        revisions=revision_table(document.history[:REVISIONS], language),
     )
 
 
@@ -191,62 +194,59 @@ def _unit_words(plant: Plant, loop: Loop) -> str:
     return " ".join(part for part in (number, name) if part) or DASH
 
 
-def _facts(plant: Plant, loop: Loop) -> tuple[tuple[str, str], ...]:
+def _facts(plant: Plant, loop: Loop, language: Language) -> tuple[tuple[str, str], ...]:
+    label = language.label
     facts = [
-        ("Unit", _unit_words(plant, loop)),
-        ("Drawing", cell(loop.drawing)),
-        ("Hazard direction", cell(loop.hazard)),
+        (label("Unit"), _unit_words(plant, loop)),
+        (label("Drawing"), cell(loop.drawing, language)),
+        (label("Hazard direction"), term("hazard", loop.hazard, language)),
     ]
     if loop.tag in plant.controlled:
-        facts.append(("Commanded by", _commanded_by(plant, loop.tag)))
-        facts.append(("Commands", _commands(plant, loop.tag)))
+        facts.append((label("Commanded by"), _commanded_by(plant, loop.tag, language)))
+        facts.append((label("Commands"), _commands(plant, loop.tag, language)))
     return tuple(facts)
 
 
-def _commanded_by(plant: Plant, tag: str) -> str:
+def _commanded_by(plant: Plant, tag: str, language: Language) -> str:
     """The loops and functions that set a loop's setpoint; the operator where there are none."""
     links = plant.links_to.get(tag, ())
     through = dict.fromkeys(function.tag for link in links for function in link.via)
     direct = [commander for commander in plant.commanders.get(tag, ()) if commander not in through]
     words = ", ".join(dict.fromkeys([*(link.primary.tag for link in links), *direct]))
     if not words:
-        return "the operator"
-    return f"{words} through {', '.join(through)}" if through else words
+        return language.the_operator()
+    return language.through(words, ", ".join(through)) if through else words
 
 
-def _commands(plant: Plant, tag: str) -> str:
+def _commands(plant: Plant, tag: str, language: Language) -> str:
     """Where a loop's output ends."""
     routes = plant.controlled[tag].routes
     ends = ", ".join(dict.fromkeys(route.end.tag for route in routes))
     through = ", ".join(dict.fromkeys(function.tag for route in routes for function in route.via))
     if not ends:
         return DASH
-    return f"{ends} through {through}" if through else ends
+    return language.through(ends, through) if through else ends
 
 
-def _more(number: int) -> str:
-    """Where the findings stand for which a sheet has no room; empty where it tells all."""
-    if number < 1:
-        return ""
-    told = "1 more finding about this loop stands" if number == 1 else f"{number} more findings about this loop stand"
-    return f"{told} in the index of documents"
-
-
-def _open_point(finding: Finding, own: str) -> Point:
+def _open_point(finding: Finding, own: str, language: Language) -> Point:
     subject = "" if finding.tag == own else f"{finding.tag}: "
     # On a page, words of the register stand in quotation marks and not in the back ticks of a terminal.
     message = re.sub(r"`([^`]*)`", "“\\1”", finding.message)
-    return Point(str(finding.level).capitalize(), finding.rule, f"{subject}{message}.")
+    level = language.term("level", str(finding.level))
+    return Point(upper_first(level), finding.rule, f"{subject}{language.finding_clause(message)}")
 
 
-def _accepted_point(finding: Finding, own: str) -> Point:
+def _accepted_point(finding: Finding, own: str, language: Language) -> Point:
     deviation = finding.accepted_by
     assert deviation is not None
     subject = "" if finding.tag == own else f"{finding.tag}: "
-    words = Markup("{}{} Approved by {}, until {}.").format(
-        subject, cell(deviation.reason), cell(deviation.approved_by), cell(deviation.until)
+    until = cell(deviation.until, language)
+    words = Markup(language.accepted("{}", "{}", "{}")).format(
+        cell(deviation.reason, language),
+        cell(deviation.approved_by, language),
+        until if isinstance(until, Markup) else language.date(until),
     )
-    return Point("Deviation", finding.rule, words)
+    return Point(language.label("Deviation"), finding.rule, Markup("{}{}").format(subject, words))
 
 
 # ---------------------------------------------------------------- one page
@@ -255,10 +255,10 @@ def _accepted_point(finding: Finding, own: str) -> Point:
 def _fitted(basis: Basis, loop: Loop, view: SheetView, height: float) -> SheetView:
     """The sheet in the largest type that one page takes, with what else it leaves room for."""
     fitted = _with_response(basis, loop, view, height)
-    times = time_to_act_story.sheet_line(basis.times, loop)
-    line = f"{times}; {BESIDE_TIMES}" if times else ""
+    times = time_to_act_story.sheet_line(basis.times, loop, basis.language)
+    line = f"{times}; {basis.language.times_line_caution()}" if times else ""
     size = next((density.size for density in DENSITIES if density.name == fitted.density), DENSITIES[-1].size)
-    if not line or line_count(f"{TIME_TO_ACT} {line}", PAGE_WIDTH, size) > 1:
+    if not line or line_count(f"{basis.language.label(TIME_TO_ACT)} {line}", PAGE_WIDTH, size) > 1:
         return fitted
     told = replace(fitted, time_to_act=line)
     return told if sheet_height(told, size) <= height else fitted
@@ -268,10 +268,10 @@ def _with_response(basis: Basis, loop: Loop, view: SheetView, height: float) -> 
     """The sheet in the largest type that one page takes, with the response where it leaves room for it."""
     response = calculated_response(basis.dynamics.loop(loop.tag))
     if response is not None:
-        words = response_words(response)
+        words = response_words(response, basis.language)
         for density in LEGIBLE:
             if sheet_height(replace(view, response_words=words), density.size) <= height:
-                figure = Markup(response_plot(loop.tag, response))
+                figure = Markup(response_plot(loop.tag, response, basis.language))
                 return replace(view, response=figure, response_words=words, density=density.name)
     for density in DENSITIES:
         if sheet_height(view, density.size) <= height:

@@ -17,7 +17,7 @@ from loopdoc.documents import (
     tuning_story,
 )
 from loopdoc.documents.basis import Basis, Page
-from loopdoc.documents.naming import over_range, sensor
+from loopdoc.documents.language import LANGUAGES
 from loopdoc.documents.page_fit import foot
 from loopdoc.documents.scheme_story import SchemeStory, headline
 from loopdoc.documents.values import HOLD
@@ -28,14 +28,8 @@ from loopdoc.documents.wording import (
     Run,
     Setter,
     Target,
-    band,
-    counted,
-    listed,
     sentence,
     sentences,
-    told_of,
-    upper_first,
-    value,
 )
 from loopdoc.engineering.failure import FailureAnalysis
 from loopdoc.engineering.pairing import Scheme
@@ -75,15 +69,17 @@ def narratives(basis: Basis, supplements: Mapping[str, Supplement] | None = None
     for number in unit_numbers(basis.plant):
         unit = register.units.get(number)
         name = known(unit.name) if unit else None
+        language = basis.language
         builder = _Narrative(basis, shared, number)
         sections = builder.sections()
         document = basis.document(
             kind="Control narrative",
             code="CN",
-            title=f"Unit {number} {name}" if name else f"Unit {number}",
+            title=language.unit_title(number, name or ""),
             supplementary_title=builder.extent(),
             unit=number,
             serial="001",
+            language=language,
         )
         view = {
             "reading": builder.reading(sections),
@@ -110,6 +106,7 @@ class _Narrative:
         self._basis = basis
         self._plant = basis.plant
         self._register = basis.plant.register
+        self._language = basis.language
         self._analysis = shared.analysis
         self._points = shared.points
         self._supplements = shared.supplements
@@ -123,7 +120,9 @@ class _Narrative:
         self._schemes = self._own_schemes()
         self._indicators = [loop for loop in self._loops if loop.tag not in self._plant.controlled]
         self._told_findings: set[int] = set()
-        self._setter = Setter(register, shared.tags, self._target)
+        site = register.site
+        written = LANGUAGES.get((site.language if site else None) or "en", self._language).as_written
+        self._setter = Setter(register, shared.tags, self._target, written)
 
     def _own(self, parts: Mapping[str, _P]) -> list[_P]:
         return [part for part in parts.values() if unit_of(part) == self._number]
@@ -143,22 +142,15 @@ class _Narrative:
 
     def extent(self) -> str:
         """How much the narrative covers, for the title block."""
-        counts = (
-            (len(self._schemes), "control scheme"),
-            (len(self._indicators), "indicator"),
-            (len(self._interlocks), "interlock"),
-        )
-        return upper_first(listed(counted(number, noun) for number, noun in counts if number)) or "Overview"
+        return self._language.extent(len(self._schemes), len(self._indicators), len(self._interlocks))
 
     def reading(self, sections: Sequence[Section]) -> Prose:
         """How to read it, in two lines."""
         site = self._register.site
         owner = known(site.owner) if site else None
-        keeper = f", which {owner} keeps," if owner and len(owner) < 60 else ""
         open_ = next((section.number for section in sections if section.anchor == "open-points"), "")
-        held = f"What is not yet known is on hold and listed in section {open_}" if open_ and self._holds() else ""
-        changed = f"Every value stands in the register{keeper} or is calculated from it, and is changed only there"
-        return self._set(sentences(changed, held))
+        held = open_ if open_ and self._holds() else ""
+        return self._set(self._language.reading(owner if owner and len(owner) < 60 else "", held))
 
     def sections(self) -> tuple[Section, ...]:
         """The numbered sections; one that would be empty is left out and takes no number."""
@@ -186,7 +178,7 @@ class _Narrative:
                 below = tuple(self._interlock_sections(number))
                 blocks = tuple(self._bare_interlocks())
             if blocks or below:
-                found.append(Section(number, title, anchor, blocks, below))
+                found.append(Section(number, self._language.label(title), anchor, blocks, below))
         return tuple(found)
 
     # -- overview, upsets
@@ -195,7 +187,8 @@ class _Narrative:
         unit = self._register.units.get(self._number)
         purpose = known(unit.purpose) if unit else None
         if purpose:
-            yield self._paragraph(told_of(f"Unit {self._number}", purpose))
+            subject = self._language.unit_subject(self._number)
+            yield self._paragraph(self._language.purpose(subject, purpose))
         text = self._register.texts.get(self._number)
         for part in re.split(r"\n+", (known(text.overview) or "") if text else ""):
             if part.strip():
@@ -220,12 +213,12 @@ class _Narrative:
 
     def _scheme_basis(self) -> Iterator[Block]:
         """What holds for all schemes, told once."""
-        yield self._paragraph(failure_story.ASSUMPTIONS, "Failures.")
-        yield self._paragraph(tuning_story.BASIS, "Tuning.")
+        yield self._paragraph(self._language.failure_assumptions(), "Failures.")
+        yield self._paragraph(self._language.tuning_basis(), "Tuning.")
 
     def _scheme_sections(self, number: str) -> Iterator[Section]:
         for ordinal, (scheme, loops) in enumerate(self._schemes):
-            story = SchemeStory(self._plant, scheme, loops, ordinal)
+            story = SchemeStory(self._plant, scheme, loops, ordinal, self._language)
             yield Section(
                 f"{number}.{ordinal + 1}",
                 headline(loops),
@@ -240,8 +233,8 @@ class _Narrative:
         whole = len(loops) == sum(loop.tag in self._plant.controlled for loop in scheme.loops)
         tags += [part.tag for part in parts if whole or known(part.unit) == self._number]
         drawings = dict.fromkeys(drawing for loop in loops if (drawing := known(loop.drawing)))
-        drawn = f"drawing{'' if len(drawings) == 1 else 's'} {listed(drawings)}"
-        return f"{', '.join(tags)} ({drawn})" if drawings else ", ".join(tags)
+        told = ", ".join(tags)
+        return f"{told} ({self._language.drawings(list(drawings))})" if drawings else told
 
     def _scheme_blocks(
         self, scheme: Scheme, loops: Sequence[Loop], story: SchemeStory, ordinal: int
@@ -252,18 +245,21 @@ class _Narrative:
         if purpose:
             yield Paragraph(self._set(purpose), keep=True)
         yield from self._paragraphs("How it works.", story.course(), story.rising())
-        waits = settings_story.not_followed(controlled, ordinal)
+        waits = settings_story.not_followed(controlled, ordinal, self._language)
         if len(controlled) == 1:
-            yield from self._paragraphs("Modes and limits.", sentences(settings_story.settings(controlled[0]), waits))
+            told = settings_story.settings(controlled[0], self._language)
+            yield from self._paragraphs("Modes and limits.", sentences(told, waits))
         else:
-            rows = settings_story.settings_rows(self._plant, controlled)
-            yield from table("settings", settings_story.SETTINGS_HEAD, rows, self._set, title="Modes and limits")
+            rows = settings_story.settings_rows(self._plant, controlled, self._language)
+            yield from self._table("settings", settings_story.SETTINGS_HEAD, rows, title="Modes and limits")
             yield from self._paragraphs("", waits)
         yield from self._alarm_table(loops)
-        yield from self._paragraphs("Time to act.", time_to_act_story.told(self._plant, self._basis.times, loops))
+        times = time_to_act_story.told(self._plant, self._basis.times, loops, self._language)
+        yield from self._paragraphs("Time to act.", times)
         tags = [loop.tag for loop in loops] + [part.tag for part in scheme.final_elements]
         acting = sentences(
-            protection_story.initiated_by(self._plant, loops), protection_story.interlock_effects(self._plant, tags)
+            protection_story.initiated_by(self._plant, loops, self._language),
+            protection_story.interlock_effects(self._plant, tags, self._language),
         )
         yield from self._paragraphs("Interlocks.", acting)
         yield from self._failures(scheme, loops, story)
@@ -276,46 +272,51 @@ class _Narrative:
             return ""
         unit = unit_of(lead)
         which = self._register.numbering.replace("{unit}", unit).replace("{kind}", "CN").replace("{serial}", "001")
-        those = "It" if len(loops) == 1 else "They"
-        belongs = "belongs" if len(loops) == 1 else "belong"
-        return f"{those} {belongs} to the scheme led by {lead.tag}, which {which} tells as a whole (unit {unit})."
+        return self._language.led_elsewhere(len(loops), lead.tag, which, unit)
 
     def _failures(self, scheme: Scheme, loops: Sequence[Loop], story: SchemeStory) -> Iterator[Block]:
-        found = failure_story.FailureStory(self._plant, self._analysis, scheme, loops, story.names).rows()
+        told = failure_story.FailureStory(
+            self._plant, self._analysis, scheme, loops, story.names, self._language
+        )
+        found = told.rows()
         rows = [(row.failure, row.control, row.process, row.against) for row in found]
-        hazards = failure_story.hazards(loops, story.names) if rows else ""
+        hazards = failure_story.hazards(loops, story.names, self._language) if rows else ""
         title = "When something fails"
         if hazards:
-            yield Paragraph(self._set(hazards), f"{title}.", keep=True)
-        yield from table("failures", failure_story.HEAD, rows, self._set, title="" if hazards else title)
+            yield Paragraph(self._set(hazards), self._language.label(f"{title}."), keep=True)
+        yield from self._table("failures", failure_story.HEAD, rows, title="" if hazards else title)
 
     def _tuning(self, lead: Loop, story: SchemeStory) -> Iterator[Block]:
         dynamics = self._basis.dynamics
-        settings = tuning_story.settings_rows(story.controlled, dynamics)
-        yield from table("tuning", tuning_story.SETTINGS_HEAD, settings, self._set, title="Tuning")
-        models = list(tuning_story.process_rows(story.controlled))
+        settings = tuning_story.settings_rows(story.controlled, dynamics, self._language)
+        yield from self._table("tuning", tuning_story.SETTINGS_HEAD, settings, title="Tuning")
+        models = list(tuning_story.process_rows(story.controlled, self._language))
         if any(cell not in ("", HOLD) for row in models for cell in row[2:-1]):
-            yield from table("process", tuning_story.PROCESS_HEAD, models, self._set)
+            yield from self._table("process", tuning_story.PROCESS_HEAD, models)
         supplement = self._supplements.get(lead.tag, Supplement())
-        yield from self._paragraphs("", tuning_story.remarks(story.controlled, dynamics), supplement.benefit)
+        remarks = tuning_story.remarks(story.controlled, dynamics, self._language)
+        yield from self._paragraphs("", remarks, supplement.benefit)
         yield from supplement.figures
 
     def _alarm_table(self, loops: Iterable[Loop]) -> Iterator[Block]:
-        rows = protection_story.alarm_rows(loops)
-        yield from table("alarms", protection_story.ALARM_HEAD, rows, self._set, title="Alarms")
+        rows = protection_story.alarm_rows(loops, self._language)
+        yield from self._table("alarms", protection_story.ALARM_HEAD, rows, title="Alarms")
 
     def _scheme_open(self, tags: Sequence[str], functions: Sequence[str]) -> Iterator[Block]:
         whole = {*tags, *functions}
         holds, accepted = self._points.holds(whole), self._points.accepted(whole)
-        told = sentences(open_points.held_in_a_sentence(holds), open_points.accepted_in_a_sentence(accepted))
+        told = sentences(
+            open_points.held_in_a_sentence(holds, self._language),
+            open_points.accepted_in_a_sentence(accepted, self._language),
+        )
         yield from self._paragraphs("Open points.", told)
         findings = self._points.findings(whole)
         self._told_findings.update(id(finding) for finding in findings)
         yield from self._finding_table(findings)
 
     def _finding_table(self, findings: Sequence[Finding]) -> Iterator[Block]:
-        rows = open_points.finding_rows(findings)
-        yield from table("open-findings", open_points.FINDING_HEAD, rows, self._set, title="Open findings")
+        rows = open_points.finding_rows(findings, self._language)
+        yield from self._table("open-findings", open_points.FINDING_HEAD, rows, title="Open findings")
 
     # -- indicators
 
@@ -325,27 +326,32 @@ class _Narrative:
             measurement = known(loop.measurement)
             operating = known(loop.operating)
             usual = known(operating.normal) if operating else None
-            limits = band(operating.low, operating.high) if operating else ""
-            normal = value(usual) if usual else ""
-            kind = sensor(measurement) if measurement else ""
+            limits = self._language.band(operating.low, operating.high) if operating else ""
+            normal = self._language.value(usual) if usual else ""
+            if limits and normal:
+                limits = f"{limits}, {self._language.normally(normal)}"
+            kind = self._language.sensor(measurement) if measurement else ""
             tag = (known(measurement.transmitter) or "") if measurement else ""
             rows.append((
                 loop.tag, known(loop.service) or "", f"{tag}, {kind}" if kind else tag,
-                over_range(measurement).removeprefix(" over ") if measurement else "",
-                f"{limits}, normally {normal}" if limits and normal else limits or normal,
+                self._language.range_of(measurement) if measurement else "",
+                limits or normal,
                 known(loop.purpose) or "",
             ))  # fmt: skip
-        yield from table("indicators", INDICATOR_HEAD, rows, self._set)
+        yield from self._table("indicators", INDICATOR_HEAD, rows)
         yield from self._alarm_table(self._indicators)
-        times = time_to_act_story.told(self._plant, self._basis.times, self._indicators)
+        times = time_to_act_story.told(self._plant, self._basis.times, self._indicators, self._language)
         yield from self._paragraphs("Time to act.", times)
         told = [self._entered(loop) for loop in self._indicators]
-        yield from self._paragraphs("", sentences(protection_story.initiated_by(self._plant, self._indicators), *told))
+        trips = sentences(
+            protection_story.initiated_by(self._plant, self._indicators, self._language), *told
+        )
+        yield from self._paragraphs("", trips)
 
     def _entered(self, loop: Loop) -> str:
         """Which functions an indicator's measurement enters."""
         entered = [function.tag for function, _ in self._analysis.functions_of(loop)]
-        return f"{transmitter_of(loop) or loop.tag} also enters {listed(entered)}" if entered else ""
+        return self._language.also_enters(transmitter_of(loop) or loop.tag, entered) if entered else ""
 
     # -- interlocks
 
@@ -353,7 +359,9 @@ class _Narrative:
         told = [interlock for interlock in self._interlocks if not protection_story.bare(interlock)]
         for ordinal, interlock in enumerate(told, 1):
             service = known(interlock.service)
-            told_and_reset = (protection_story.told(interlock), protection_story.reset(interlock))
+            told_and_reset = (
+                protection_story.told(interlock, self._language), protection_story.reset(interlock, self._language),
+            )  # fmt: skip
             blocks = (*self._paragraphs("", *told_and_reset), *self._sensors(interlock))
             if blocks:
                 title = f"{interlock.tag} {service}" if service else interlock.tag
@@ -366,29 +374,30 @@ class _Narrative:
             instrument = self._register.instruments.get(tag)
             if instrument:
                 measurement = instrument.measurement
+                fault = known(measurement.on_fault)
                 rows.append((
-                    tag, known(instrument.service) or "", over_range(measurement).removeprefix(" over "),
-                    known(measurement.on_fault) or "",
+                    tag, known(instrument.service) or "", self._language.range_of(measurement),
+                    self._language.term("on fault", fault) if fault else "",
                 ))  # fmt: skip
-        yield from table("sensors", INSTRUMENT_HEAD, rows, self._set)
+        yield from self._table("sensors", INSTRUMENT_HEAD, rows)
 
     def _bare_interlocks(self) -> Iterator[Block]:
         found = [interlock for interlock in self._interlocks if protection_story.bare(interlock)]
         if found:
-            told = sentence(f"Of {_these(found)} the register gives no more than what trips it")
+            told = sentence(self._language.only_limits(found[0].tag if len(found) == 1 else ""))
             yield Paragraph(self._set(told), keep=True)
-        rows = protection_story.bare_rows(found)
-        yield from table("bare-interlocks", protection_story.BARE_HEAD, rows, self._set)
+        rows = protection_story.bare_rows(found, self._language)
+        yield from self._table("bare-interlocks", protection_story.BARE_HEAD, rows)
         watching = {tag for interlock in self._register.interlocks.values() for tag in interlock.initiators}
         idle = [one for one in self._instruments if one.tag not in watching]
         if idle:
-            yield from self._paragraphs("", sentence(f"No interlock uses {listed(one.tag for one in idle)}"))
+            yield from self._paragraphs("", sentence(self._language.unused_by_interlocks([one.tag for one in idle])))
 
     # -- final elements, open points
 
     def _element_blocks(self) -> Iterator[Block]:
-        rows = protection_story.element_rows(self._plant, self._elements)
-        yield from table("elements", protection_story.ELEMENT_HEAD, rows, self._set)
+        rows = protection_story.element_rows(self._plant, self._elements, self._language)
+        yield from self._table("elements", protection_story.ELEMENT_HEAD, rows)
 
     def _unit_tags(self) -> set[str]:
         parts: list[Loop | FinalElement | Interlock | Instrument | Function] = [
@@ -401,9 +410,10 @@ class _Narrative:
 
     def _open_blocks(self) -> Iterator[Block]:
         tags = self._unit_tags()
-        yield from table("holds", open_points.HOLD_HEAD, open_points.hold_rows(self._holds()), self._set, title="Holds")
-        rows = open_points.deviation_rows(self._points.accepted(tags))
-        yield from table("deviations", open_points.DEVIATION_HEAD, rows, self._set, title="Accepted deviations")
+        holds = open_points.hold_rows(self._holds(), self._language)
+        yield from self._table("holds", open_points.HOLD_HEAD, holds, title="Holds")
+        rows = open_points.deviation_rows(self._points.accepted(tags), self._language)
+        yield from self._table("deviations", open_points.DEVIATION_HEAD, rows, title="Accepted deviations")
         findings = self._points.findings(tags)
         yield from self._finding_table([one for one in findings if id(one) not in self._told_findings])
 
@@ -413,7 +423,12 @@ class _Narrative:
         return self._setter.prose(text)
 
     def _paragraph(self, text: str, label: str = "") -> Paragraph:
-        return Paragraph(self._set(text), label)
+        return Paragraph(self._set(text), self._language.label(label) if label else "")
+
+    def _table(
+        self, name: str, head: Sequence[str], rows: Iterable[Sequence[str]], *, title: str = ""
+    ) -> tuple[Block, ...]:
+        return table(name, head, rows, self._set, label=self._language.label, title=title)
 
     def _paragraphs(self, label: str, *texts: str) -> Iterator[Paragraph]:
         """Paragraphs, the first with the label; nothing where all are empty."""
@@ -436,10 +451,6 @@ class _Narrative:
             return Target(sheet=f"{quote(file_name(unit))}.html#{anchor}")
         loop = register.loops.get(tag) or self._plant.loop_of_transmitter.get(tag) or mover(self._plant, tag)
         return Target(sheet=f"../loop-sheets/{quote(loop.tag)}.html") if loop else Target()
-
-
-def _these(interlocks: Sequence[Interlock]) -> str:
-    return interlocks[0].tag if len(interlocks) == 1 else "each of these"
 
 
 def _slug(tag: str) -> str:

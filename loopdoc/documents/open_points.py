@@ -4,8 +4,8 @@ from __future__ import annotations
 
 from collections.abc import Iterable, Iterator, Sequence
 
-from loopdoc.documents.values import shown
-from loopdoc.documents.wording import grouped, listed, sentence, upper_first
+from loopdoc.documents.language import ENGLISH, Language
+from loopdoc.documents.wording import sentence, upper_first
 from loopdoc.register.model import HeldValue
 from loopdoc.rules.finding import Finding
 
@@ -16,86 +16,53 @@ HOLD_HEAD = ("On hold", "Of", "Reason")
 DEVIATION_HEAD = ("Rule and tag", "Finding", "Reason", "Approved by", "Until")
 FINDING_HEAD = ("Level", "Rule and tag", "Finding", "Remedy")
 
-_NAMES = {
-    ("measurement", "on_fault"): "fault reading",
-    ("measurement",): "measurement",
-    ("controller", "on_bad_measurement"): "response to a bad measurement",
-    ("controller",): "controller",
-    ("process", "gain"): "process gain",
-    ("process", "effect"): "process effect",
-    ("process", "dead_time"): "dead time",
-    ("process", "lag"): "lag",
-    ("process", "lags"): "lags",
-    ("process",): "process model",
-    ("hazard",): "hazard",
-    ("fails",): "fail position",
-    ("safe",): "safe position",
-    ("to",): "destination",
-}
-
 
 def held_name(path: Sequence[str | int]) -> str:
-    """What is held, in words: `process gain`, `range`, `high alarm limit`."""
-    steps = tuple(str(step) for step in path)
-    if steps in _NAMES:
-        return _NAMES[steps]
-    words = [step.replace("_", " ") for step in steps]
-    if len(steps) > 1 and steps[0] == "alarms":
-        return f"{steps[1].replace('_', '-')} alarm {' '.join(words[2:])}".strip()
-    if len(steps) > 1 and steps[0] == "disturbances":
-        return f"{words[2]} of the disturbance {steps[1]}" if len(steps) > 2 else f"disturbance {steps[1]}"
-    if len(steps) > 1 and steps[0] == "process" and steps[1] == "branches":
-        return f"process {' of '.join(reversed(words[2:]))}"
-    if len(steps) > 1 and steps[0] in ("setpoint", "output", "operating"):
-        return " ".join(words)
-    return " ".join(words[1:]) if len(words) > 1 and steps[0] in ("measurement", "controller") else " ".join(words)
+    """What is held, in English: `process gain`, `range`, `high alarm limit`."""
+    return ENGLISH.held_name(path)
 
 
-def held_in_a_sentence(holds: Iterable[HeldValue]) -> str:
+def held_in_a_sentence(holds: Iterable[HeldValue], language: Language) -> str:
     """`Still on hold: the hazard of A, B and C; the process gain of A`; empty where nothing is held."""
-    tags_of = grouped((held_name(hold.path), hold.tag) for hold in holds)
-    names_of = grouped((listed(tags), name) for name, tags in tags_of.items())
-    parts = [f"the {listed(names)} of {tags}" for tags, names in names_of.items()]
-    return sentence(f"Still on hold: {'; '.join(parts)}") if parts else ""
+    return language.still_on_hold([(language.held_name(hold.path), hold.tag) for hold in holds])
 
 
-def hold_rows(holds: Iterable[HeldValue]) -> Iterator[tuple[str, ...]]:
+def hold_rows(holds: Iterable[HeldValue], language: Language) -> Iterator[tuple[str, ...]]:
     """Holds of one value for one reason in one row, as `HOLD_HEAD` names the columns."""
     by_value: dict[tuple[str, str], list[str]] = {}
     for hold in holds:
-        tags = by_value.setdefault((held_name(hold.path), hold.reason), [])
+        tags = by_value.setdefault((language.held_name(hold.path), hold.reason), [])
         if hold.tag not in tags:
             tags.append(hold.tag)
     for (name, reason), tags in by_value.items():
-        yield upper_first(name), listed(tags), sentence(reason)
+        yield upper_first(name), language.listed(tags), sentence(reason)
 
 
-def deviation_rows(accepted: Iterable[Finding]) -> Iterator[tuple[str, ...]]:
+def deviation_rows(accepted: Iterable[Finding], language: Language) -> Iterator[tuple[str, ...]]:
     """Accepted findings with who approved them, why and until when."""
     for finding in accepted:
         deviation = finding.accepted_by
         if deviation is not None:
             yield (
                 f"{finding.rule}, {finding.tag}",
-                sentence(finding.message),
-                sentence(shown(deviation.reason)),
-                shown(deviation.approved_by),
-                shown(deviation.until),
+                language.finding_text(finding.message),
+                sentence(language.shown(deviation.reason)),
+                language.shown(deviation.approved_by),
+                language.date(language.shown(deviation.until)),
             )
 
 
-def accepted_in_a_sentence(accepted: Sequence[Finding]) -> str:
+def accepted_in_a_sentence(accepted: Sequence[Finding], language: Language) -> str:
     """Which deviations stand; empty where none does."""
     found = [f"{finding.tag} ({finding.rule})" for finding in accepted]
-    if not found:
-        return ""
-    return sentence(f"{'a deviation stands' if len(found) == 1 else 'deviations stand'} at {listed(found)}")
+    return language.deviations_stand(found) if found else ""
 
 
-def finding_rows(findings: Iterable[Finding]) -> Iterator[tuple[str, ...]]:
+def finding_rows(findings: Iterable[Finding], language: Language) -> Iterator[tuple[str, ...]]:
     """Findings as `FINDING_HEAD` names the columns."""
     for finding in findings:
-        yield str(finding.level), f"{finding.rule}, {finding.tag}", sentence(finding.message), sentence(finding.remedy)
+        message, remedy = language.finding_text(finding.message), language.finding_text(finding.remedy)
+        yield language.term("level", str(finding.level)), f"{finding.rule}, {finding.tag}", message, remedy
 
 
 class OpenPoints:

@@ -6,77 +6,71 @@ import re
 from collections.abc import Iterable, Iterator, Sequence
 
 from loopdoc.documents import time_to_act_story
-from loopdoc.documents.wording import NO_BREAK, clause, grouped, listed, number_word, sentences, value
+from loopdoc.documents.language import ENGLISH, Language
+from loopdoc.documents.wording import NO_BREAK, grouped, sentences
 from loopdoc.engineering.pairing import Plant
-from loopdoc.register.model import ALARM_ORDER, Alarm, Bypass, FinalElement, Initiator, Interlock, Loop, known
+from loopdoc.register.model import ALARM_ORDER, Bypass, FinalElement, Hold, Initiator, Interlock, Loop, known
 from loopdoc.register.quantity import Quantity
 
 ALARM_HEAD = ("Alarm", "Limit", "Priority", "Likely cause", "Consequence", "Operator's response")
 
 _HIGH_FIRST = (*reversed(ALARM_ORDER), "deviation")
-_DOES = {"closed": "closes", "open": "opens", "stopped": "stops", "started": "starts"}
 
 
-def alarm_rows(loops: Iterable[Loop]) -> Iterator[tuple[str, ...]]:
+def alarm_rows(loops: Iterable[Loop], language: Language) -> Iterator[tuple[str, ...]]:
     """One row for each alarm, as `ALARM_HEAD` names the columns; the highest limit of a loop first."""
     for loop in loops:
         for kind in sorted(loop.alarms, key=lambda kind: _HIGH_FIRST.index(kind) if kind in _HIGH_FIRST else -1):
             alarm = loop.alarms[kind]
+            time = known(alarm.time_to_respond)
             yield (
-                f"{loop.tag} {kind.replace('_', '-')}",
-                _limit(alarm),
-                _text(alarm.priority),
-                _text(alarm.cause),
-                _text(alarm.consequence),
-                _response(alarm),
+                language.alarm_heading(loop.tag, kind),
+                language.alarm_limit(
+                    _value(alarm.limit, language), _value(alarm.deadband, language), _value(alarm.delay, language)
+                ),
+                _term("priority", alarm.priority, language),
+                _value(alarm.cause, language),
+                _value(alarm.consequence, language),
+                language.alarm_response(_value(alarm.response, language), language.value(time) if time else ""),
             )
 
 
-def _limit(alarm: Alarm) -> str:
-    parts = [_text(alarm.limit)]
-    if alarm.deadband is not None:
-        parts.append(f"deadband {_text(alarm.deadband)}")
-    if alarm.delay is not None:
-        parts.append(f"after {_text(alarm.delay)}")
-    return ", ".join(part for part in parts if part)
+def _value(written: object, language: Language) -> str:
+    return "" if written is None else language.value(written)
 
 
-def _response(alarm: Alarm) -> str:
-    time = known(alarm.time_to_respond)
-    return sentences(_text(alarm.response), f"within {value(time)}" if time else "")
-
-
-def _text(written: object) -> str:
-    return "" if written is None else value(written)
+def _term(kind: str, written: str | Hold | None, language: Language) -> str:
+    return language.term(kind, written) if isinstance(written, str) else _value(written, language)
 
 
 # ---------------------------------------------------------------- interlocks
 
 
-def interlock_effects(plant: Plant, tags: Iterable[str]) -> str:
+def interlock_effects(plant: Plant, tags: Iterable[str], language: Language) -> str:
     """Which interlocks act on these final elements and controllers, in one paragraph; empty where none does."""
     own = set(tags)
-    found = ((acts(interlock, own), interlock.tag) for interlock in plant.register.interlocks.values())
+    found = ((acts(interlock, own, language), interlock.tag) for interlock in plant.register.interlocks.values())
     told = []
     for what, (first, *others) in grouped(pair for pair in found if pair[0]).items():
-        also = f"; so {'does' if len(others) == 1 else 'do'} {listed(others)}" if others else ""
-        told.append(f"{first} {what}{also}")
+        told.append(language.effects(first, what, others))
     return sentences(*told)
 
 
-def initiated_by(plant: Plant, loops: Iterable[Loop]) -> str:
+def initiated_by(plant: Plant, loops: Iterable[Loop], language: Language) -> str:
     """Which interlocks these loops' transmitters trip, alone or together with others, in one paragraph."""
     own = {loop.tag for loop in loops}
     trips = [trip for trip in plant.trips if trip.loop is not None and trip.loop.tag in own]
-    alone = grouped((trip.interlock.tag, _condition(trip.initiator)) for trip in trips if _alone(trip.interlock))
+    alone = grouped(
+        (trip.interlock.tag, _condition(trip.initiator, language)) for trip in trips if _alone(trip.interlock)
+    )
     voted = grouped(
-        (f"{trip.interlock.tag} ({known(trip.interlock.voting) or 'voting not given'})",
-         _condition(trip.initiator, verb=""))
+        (trip.interlock.tag, _condition(trip.initiator, language, counted=True))
         for trip in trips if not _alone(trip.interlock)
     )  # fmt: skip
+    voting = {trip.interlock.tag: known(trip.interlock.voting) or "" for trip in trips}
     return sentences(
-        *(f"{tag} trips when {listed(conditions, 'or')}" for tag, conditions in alone.items()),
-        *(f"{tag} counts {listed(conditions)} among its conditions" for tag, conditions in voted.items()),
+        *(language.trips_alone(tag, conditions) for tag, conditions in alone.items()),
+        *(language.counts(tag, voting[tag], conditions) for tag, conditions in voted.items()),
     )
 
 
@@ -86,101 +80,83 @@ def _alone(interlock: Interlock) -> bool:
     return voting.startswith("1oo") if voting else len(interlock.initiators) == 1
 
 
-def acts(interlock: Interlock, only: set[str] | None = None) -> str:
+def acts(interlock: Interlock, only: set[str] | None = None, language: Language = ENGLISH) -> str:
     """What an interlock does: `closes FV-2011, stops PM-2001 and puts FIC-2011 in manual at 0 % output`."""
     positions: list[tuple[str, str]] = []
-    forced: list[tuple[str, str]] = []
+    forced: dict[tuple[str, str], list[str]] = {}
     for tag, action in interlock.actions.items():
         if only is not None and tag not in only:
             continue
         position, mode, output = known(action.position), known(action.mode), known(action.output)
         if position:
-            positions.append((_DOES.get(position, f"brings to {position}"), tag))
+            positions.append((position, tag))
         elif mode or output:
-            at = f" at {value(output)} output" if output else ""
-            forced.append((f"in {mode}{at}" if mode else f"to {value(output)} output", tag))
-    told = [f"{verb} {listed(tags)}" for verb, tags in grouped(positions).items()]
-    told.extend(f"puts {listed(tags)} {how}" for how, tags in grouped(forced).items())
-    return listed(told)
+            forced.setdefault((mode or "", language.value(output) if output else ""), []).append(tag)
+    return language.acts(
+        list(grouped(positions).items()), [(mode, output, tags) for (mode, output), tags in forced.items()]
+    )
 
 
-def _condition(initiator: Initiator, *, verb: str = "stands ") -> str:
+def _condition(initiator: Initiator, language: Language, *, counted: bool = False) -> str:
     side, limit, delay = known(initiator.direction), known(initiator.limit), known(initiator.delay)
-    if not side or not limit:
-        return f"{initiator.tag} passes its limit, which is on hold"
-    lasting = f" for {value(delay)}" if delay and delay.value else ""
-    return f"{initiator.tag} {verb}{side} {value(limit)}{lasting}"
+    return language.condition(
+        initiator.tag, side or "", language.value(limit) if limit else "",
+        language.value(delay) if delay and delay.value else "", counted=counted,
+    )  # fmt: skip
 
 
-def trips_when(interlock: Interlock) -> str:
+def trips_when(interlock: Interlock, language: Language) -> str:
     """What trips an interlock, as a clause; empty where no initiator is given."""
     initiators = list(interlock.initiators.values())
     if not initiators:
         return ""
     votes = re.fullmatch(r"([1-9])oo([1-9])", known(interlock.voting) or "")
-    needed, of = votes.groups() if votes else ("", "")
+    needed, of = (int(vote) for vote in votes.groups()) if votes else (0, 0)
     alike = {(one.direction, one.limit, one.delay) for one in initiators}
-    several = len(initiators) > 1
-    if several and len(alike) == 1 and isinstance(initiators[0].limit, Quantity):
-        names = listed(one.tag for one in initiators)
-        rest = _condition(initiators[0]).partition(" stands ")[2]
-        if not needed:
-            return f"{names} stand {rest}; the voting is not given"
-        if needed == of:
-            return f"all of {names} stand {rest}"
-        if needed == "1":
-            return f"any of {names} stands {rest}"
-        return f"{number_word(int(needed))} of {names} stand {rest}"
-    conditions = [_condition(one) for one in initiators]
-    if not several or needed == "1":
-        return listed(conditions, "or")
-    if needed and needed == of:
-        return listed(conditions, "and")
-    if needed:
-        return f"{number_word(int(needed))} of these hold: {listed(conditions)}"
-    return f"{listed(conditions, 'or')}; the voting is not given"
+    first = initiators[0]
+    side, limit, delay = known(first.direction), first.limit, known(first.delay)
+    if len(initiators) > 1 and len(alike) == 1 and isinstance(limit, Quantity) and side and of in (0, len(initiators)):
+        return language.trips_when_alike(
+            [one.tag for one in initiators], needed, side, language.value(limit),
+            language.value(delay) if delay and delay.value else "",
+        )  # fmt: skip
+    return language.trips_when([_condition(one, language) for one in initiators], needed, of)
 
 
-def told(interlock: Interlock) -> str:
+def told(interlock: Interlock, language: Language) -> str:
     """One interlock in sentences: its layer, what trips it, what it does, and why."""
-    layer, when, does = known(interlock.layer), trips_when(interlock), acts(interlock)
-    who = "it" if layer else interlock.tag
-    trips = f"{who} trips when {when}" if when else ""
-    if trips and does:
-        trips = f"{trips}. It then {does}" if ";" in trips or ":" in trips else f"{trips}, and then {does}"
-    elif does:
-        trips = f"{who} {does}"
-    belongs = f"{interlock.tag} belongs to the {layer} layer" if layer else ""
-    cause, consequence = known(interlock.cause), known(interlock.consequence)
-    without = f"{'Without it, ' if does else 'Consequence: '}{clause(consequence)}" if consequence else ""
-    return sentences(belongs, *trips.split(". "), f"Likely cause: {clause(cause)}" if cause else "", without)
+    return language.interlock_told(
+        interlock.tag,
+        known(interlock.layer) or "",
+        trips_when(interlock, language),
+        acts(interlock, None, language),
+        known(interlock.cause) or "",
+        known(interlock.consequence) or "",
+    )
 
 
-def reset(interlock: Interlock) -> str:
+def reset(interlock: Interlock, language: Language = ENGLISH) -> str:
     """Reset, response time against the time that the process gives, proof test, bypass."""
     written = known(interlock.reset)
     found = []
     if written:
-        plain = written.split()[0].strip(",") in ("manual", "automatic")
-        found.append(f"reset is {written}" if plain else f"reset: {written}")
-    found += time_to_act_story.response_told(interlock)
+        found.append(language.reset_is(written, plain=written.split()[0].strip(",") in ("manual", "automatic")))
+    found += time_to_act_story.response_told(interlock, language)
     test = known(interlock.proof_test)
-    found.append(f"it is proof-tested every {value(test)}" if test else "")
-    found.append(bypass(known(interlock.bypass)))
+    found.append(language.proof_tested(language.value(test)) if test else "")
+    found.append(bypass(known(interlock.bypass), language))
     return sentences(*found)
 
 
-def bypass(written: Bypass | None) -> str:
+def bypass(written: Bypass | None, language: Language = ENGLISH) -> str:
     """Whether an interlock may be bypassed, by whose leave and for how long; empty where the register says nothing."""
     permitted = known(written.permitted) if written else None
     if written is None or permitted is None:
         return ""
     if written.never:
-        return "no bypass is permitted"
+        return language.no_bypass()
     who, limit = known(written.approved_by), known(written.limit)
-    told = f"a bypass is permitted {clause(permitted)}"
-    told += f", for {value(limit)} at most" if limit else ", without a limit in time"
-    return f"{told} (permitted by: {who})" if who else told
+    return language.bypass(permitted, who or "", language.value(limit) if limit else "")
 
 
 def bare(interlock: Interlock) -> bool:
@@ -191,10 +167,10 @@ def bare(interlock: Interlock) -> bool:
 BARE_HEAD = ("Interlock", "Service", "Trips when", "Consequence")
 
 
-def bare_rows(interlocks: Sequence[Interlock]) -> Iterator[tuple[str, ...]]:
+def bare_rows(interlocks: Sequence[Interlock], language: Language) -> Iterator[tuple[str, ...]]:
     """One row for each interlock of which only the limits are known."""
-    for interlock in interlocks:
-        yield interlock.tag, known(interlock.service) or "", trips_when(interlock), _text(interlock.consequence)
+    for one in interlocks:
+        yield one.tag, known(one.service) or "", trips_when(one, language), _value(one.consequence, language)
 
 
 # ---------------------------------------------------------------- final elements
@@ -205,23 +181,26 @@ ELEMENT_HEAD = (
 )  # fmt: skip
 
 
-def element_rows(plant: Plant, elements: Iterable[FinalElement]) -> Iterator[tuple[str, ...]]:
+def element_rows(plant: Plant, elements: Iterable[FinalElement], language: Language) -> Iterator[tuple[str, ...]]:
     """One row for each final element, as `ELEMENT_HEAD` names the columns."""
     for element in elements:
-        kind, characteristic = _text(element.kind), known(element.characteristic)
+        characteristic = known(element.characteristic)
+        kind = [_term("element", element.kind, language)]
+        if characteristic:
+            kind.append(language.term("characteristic", characteristic))
         movers = [*plant.commanders.get(element.tag, ())]
         movers += [one.tag for one in plant.register.interlocks.values() if element.tag in one.actions]
         yield (
             element.tag,
-            _text(element.service),
-            f"{kind}, {characteristic}" if characteristic else kind,
-            _text(element.opens_on),
-            _text(element.output_block),
-            _text(element.signal).replace(" ", NO_BREAK),
-            _text(element.fails),
-            _text(element.safe),
-            _text(element.stroke_time),
-            _text(element.backlash),
-            _text(element.resolution),
-            listed(dict.fromkeys(movers)),
+            _value(element.service, language),
+            ", ".join(kind),
+            _term("opens on", element.opens_on, language),
+            _term("output block", element.output_block, language),
+            _term("signal", element.signal, language).replace(" ", NO_BREAK),
+            _term("position", element.fails, language),
+            _term("position", element.safe, language),
+            _value(element.stroke_time, language),
+            _value(element.backlash, language),
+            _value(element.resolution, language),
+            language.listed(dict.fromkeys(movers)),
         )

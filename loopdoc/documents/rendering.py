@@ -11,6 +11,8 @@ from typing import Any
 from jinja2 import FunctionLoader, StrictUndefined, select_autoescape
 from jinja2.sandbox import SandboxedEnvironment
 
+from loopdoc.documents.language import ENGLISH, LANGUAGES
+
 FONTS = {
     ("loopdoc", "normal", "400"): "IBMPlexSans-Regular.ttf",
     ("loopdoc", "normal", "700"): "IBMPlexSans-Bold.ttf",
@@ -42,7 +44,8 @@ def _environment() -> SandboxedEnvironment:
 
 def render(template: str, **view: Any) -> str:
     """The HTML of one document."""
-    return _environment().get_template(template).render(**view)
+    language = LANGUAGES[view["document"].language] if "document" in view else ENGLISH
+    return _environment().get_template(template).render(label=language.label, **view)
 
 
 @lru_cache(maxsize=1)

@@ -7,9 +7,9 @@ import math
 import numpy as np
 
 from loopdoc.documents.drawing import Sheet
+from loopdoc.documents.language import Language
 from loopdoc.engineering.dynamics import LoopDynamics
 from loopdoc.engineering.step_response import SetpointResponse, setpoint_response
-from loopdoc.register.quantity import display_number
 
 WIDTH, HEIGHT = 251.0, 56.0
 """Of the figure [pt]."""
@@ -30,7 +30,7 @@ def calculated_response(dynamics: LoopDynamics) -> SetpointResponse | None:
     return setpoint_response(worst.chain.stages, pace_rad_per_s=max(paces)) if paces else None
 
 
-def response_plot(tag: str, response: SetpointResponse) -> str:
+def response_plot(tag: str, response: SetpointResponse, language: Language) -> str:
     """The figure as SVG text: setpoint and measurement over time, in shares of the step."""
     end_s = max(1.4 * response.settling_s, float(response.time_s[8]))
     _, divisor, unit = next(entry for entry in _TIME_UNITS if end_s >= entry[0])
@@ -47,7 +47,7 @@ def response_plot(tag: str, response: SetpointResponse) -> str:
     for index in range(count + 1):
         x, y = at(index * step * divisor, 0.0)
         sheet.polyline([(x, y), (x, y + 2.0)], width=0.6)
-        label = display_number(index * step) + (f"\u00a0{unit}" if index == count else "")
+        label = language.number(index * step) + (f"\u00a0{unit}" if index == count else "")
         sheet.text(x, y + 8.5, label, size=5.8, anchor="end" if index == count else "middle")
     for share, name in ((0.0, "0"), (1.0, "1")):
         sheet.text(_LEFT - 3, at(0.0, share)[1] + 2, name, size=5.8, anchor="end")
@@ -55,18 +55,18 @@ def response_plot(tag: str, response: SetpointResponse) -> str:
     times = np.linspace(0.0, end_s, _POINTS)
     curve = np.interp(times, response.time_s, response.measurement)
     sheet.polyline([at(float(time), float(share)) for time, share in zip(times, curve, strict=True)], width=1.1)
-    return sheet.svg(HEIGHT, f"Calculated setpoint response of {tag}: {response_words(response)}")
+    return sheet.svg(HEIGHT, language.sheet_response_title(tag, response_words(response, language)))
 
 
-def response_words(response: SetpointResponse) -> str:
+def response_words(response: SetpointResponse, language: Language) -> str:
     """What the figure shows, in figures."""
     _, divisor, unit = next(entry for entry in _TIME_UNITS if response.settling_s >= entry[0])
-    settles = f"settles within 2\u00a0% in {display_number(response.settling_s / divisor, 2)}\u00a0{unit}"
-    over = f"overshoot {display_number(100 * response.overshoot, 2)}\u00a0%"
-    overshoot = over if response.overshoot >= 0.005 else "no overshoot"
     offset = abs(1.0 - response.final)
-    stays = f", {display_number(100 * offset, 2)}\u00a0% short of the setpoint" if offset >= 0.005 else ""
-    return f"{overshoot}, {settles}{stays}.".capitalize()
+    return language.sheet_response(
+        language.number(100 * response.overshoot, 2) if response.overshoot >= 0.005 else "",
+        f"{language.number(response.settling_s / divisor, 2)}\u00a0{unit}",
+        language.number(100 * offset, 2) if offset >= 0.005 else "",
+    )
 
 
 def _tick(end: float) -> float:

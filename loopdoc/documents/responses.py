@@ -8,6 +8,7 @@ from typing import Any
 
 from loopdoc.documents.basis import Basis, Page
 from loopdoc.documents.frequency_plot import frequency_caption, frequency_drawing
+from loopdoc.documents.language import ENGLISH, Language
 from loopdoc.documents.magnitudes import difference_unit, duration, number, with_unit
 from loopdoc.documents.narrative import Supplement
 from loopdoc.documents.page_fit import foot
@@ -44,14 +45,17 @@ def supplements(basis: Basis) -> dict[str, Supplement]:
         compared = [comparison for comparison in all_chains if isinstance(comparison, Comparison)]
         if compared:
             found[scheme.lead.tag] = Supplement(
-                " ".join(told for comparison in compared for told in told_of(comparison) if told),
-                tuple(Figure(_drawn(basis, found.dynamics), whole_caption(found)) for found in compared),
+                " ".join(told for comparison in compared for told in told_of(comparison, basis.language) if told),
+                tuple(
+                    Figure(_drawn(basis, one.dynamics, basis.language), whole_caption(one, basis.language))
+                    for one in compared
+                ),
             )
     return found
 
 
-def _drawn(basis: Basis, dynamics: ChainDynamics) -> str:
-    return basis.drawn(dynamics, lambda comparison: to_svg(figure(basis.plant, comparison)))
+def _drawn(basis: Basis, dynamics: ChainDynamics, language: Language = ENGLISH) -> str:
+    return basis.drawn(dynamics, lambda comparison: to_svg(figure(basis.plant, comparison, language)), language)
 
 
 def scheme_chains(basis: Basis, scheme: Scheme) -> list[ChainDynamics]:

@@ -5,8 +5,10 @@ from __future__ import annotations
 import math
 from collections.abc import Iterable, Iterator
 from dataclasses import dataclass
+from typing import TypeVar
 
-from loopdoc.documents.wording import NO_BREAK, grouped, listed, sentences, upper_first, value
+from loopdoc.documents.language import Language
+from loopdoc.documents.wording import NO_BREAK, listed, sentences, upper_first, value
 from loopdoc.engineering.pairing import Plant, Trip, measured_quantity
 from loopdoc.engineering.spreading import transmitter_of
 from loopdoc.engineering.time_to_act import AlarmToTrip, TimeBetween, TimeToAct
@@ -20,6 +22,8 @@ CAUTION = (
     "are judged in their own lifecycle (IEC 61511)."
 )
 """Stands beside every time to act."""
+
+_K = TypeVar("_K")
 
 _SIDES = {"high": "above", "high_high": "above", "low": "below", "low_low": "below"}
 
@@ -133,89 +137,83 @@ def _percent(share: float) -> str:
 
 # ---------------------------------------------------------------- the narrative
 
-BESIDE = "Calculated from normal operation with the loops in manual, this does not show that the interlock is enough"
-"""The caution as a narrative carries it, in one sentence."""
 
-
-def told(plant: Plant, times: TimeToAct, loops: Iterable[Loop]) -> str:
+def told(plant: Plant, times: TimeToAct, loops: Iterable[Loop], language: Language) -> str:
     """How long the operator has after the alarms of these loops, in sentences; empty where no trip follows."""
     found = [entry for loop in loops for alarm in loop.alarms.values() for entry in times.of(loop, alarm)]
     reached = [(entry, entry.shortest) for entry in found]
-    sayings = [_between(plant, entry, time) for entry, time in reached if time is not None]
-    idle = [
-        (entry.interlock.tag, _alarm(entry)) for entry, time in reached if time is None and not entry.not_decided
-    ]
-    sayings += [f"No upset in the register carries {listed(names, 'or')} on to the trip of {tag}"
-                for tag, names in grouped(idle).items()]  # fmt: skip
+    sayings = [_between(plant, entry, time, language) for entry, time in reached if time is not None]
+    idle = [(entry.interlock.tag, entry) for entry, time in reached if time is None and not entry.not_decided]
+    sayings += [language.not_carried_on(alarms, trip) for trip, alarms in _alarms_by(idle).items()]
     lacking = [
-        (f"to the trip of {entry.interlock.tag} is not checked: {upset.reason}", _alarm(entry))
+        ((entry.interlock.tag, upset.reason), entry)
         for entry in found for upset in entry.not_decided
     ]  # fmt: skip
-    sayings += [f"The time from {listed(names)} {reason}" for reason, names in grouped(lacking).items()]
-    return sentences(*sayings, BESIDE) if sayings else ""
+    sayings += [
+        language.time_not_checked(alarms, trip, language.reason(reason))
+        for (trip, reason), alarms in _alarms_by(lacking).items()
+    ]
+    return sentences(*sayings, language.times_caution()) if sayings else ""
 
 
-def response_told(interlock: Interlock) -> tuple[str, ...]:
+def _alarms_by(found: Iterable[tuple[_K, AlarmToTrip]]) -> dict[_K, list[tuple[str, str]]]:
+    """Tag and kind of the alarms under each key, none twice."""
+    by_key: dict[_K, list[tuple[str, str]]] = {}
+    for key, entry in found:
+        alarms = by_key.setdefault(key, [])
+        if _alarm(entry) not in alarms:
+            alarms.append(_alarm(entry))
+    return by_key
+
+
+def response_told(interlock: Interlock, language: Language) -> tuple[str, ...]:
     """Process safety time against response time as sentences of a narrative; none where neither is given."""
     given, response = _time(interlock.process_safety_time), _time(interlock.response_time)
     if given and response and seconds(given) > 0.0:
         share = seconds(response) / seconds(given)
-        judged = "Whether that is enough is judged in the lifecycle of the safety function"
-        if share >= 1.0:
-            return f"It acts within {value(response)}, no sooner than the process safety time of {value(given)}", judged
-        acts = f"It acts within {value(response)}, {_percent(share)} of the process safety time of {value(given)}"
-        return acts, judged
-    told = [f"It acts within {value(response)}"] if response else []
-    told += [f"The process safety time is {value(given)}"] if given else []
+        of = f"{language.number(100 * share, 2)}{NO_BREAK}%"
+        return language.acts_within(language.value(response), of, language.value(given), late=share >= 1.0)
+    told = [*language.acts_within(language.value(response), "", "", late=False)] if response else []
+    told += [language.safety_time(language.value(given))] if given else []
     if known(interlock.layer) == "safety":
-        told.append(f"Whether it acts in time is not checked: {_lacking(given, response)}")
+        told.append(language.not_checked_in_time(safety_time=given is None, response=response is None))
     return tuple(told)
 
 
-def _between(plant: Plant, entry: AlarmToTrip, time: TimeBetween) -> str:
+def _between(plant: Plant, entry: AlarmToTrip, time: TimeBetween, language: Language) -> str:
     given = _time(entry.alarm.time_to_respond)
-    when, alarm, interlock = _when(plant, time.upset), _alarm(entry), entry.interlock.tag
+    # An upset is told as `FV-1002 shuts`, or by the name that the register gives it.
+    moved = time.upset.partition(" ")[0] in plant.register.final_elements
+    when, alarm, trip = language.upset_if(time.upset, moved=moved), _alarm(entry), entry.interlock.tag
     if time.available_s <= 0.0:
-        late = shown_time(-time.available_s)
-        return f"{when}, {interlock} trips {late} before {alarm}: no response can come in time, and the trip alone acts"
-    left = f"{'at least ' if time.at_least else ''}{shown_time(time.available_s)}"
-    has = f"{when}, the operator has {left} from {alarm} to the trip of {interlock}"
-    if given is None:
-        return f"{has}; how long the response takes is not known, so that this is not checked"
-    if not below(time.available_s, seconds(given)):
-        return f"{has}; the response is given {value(given)}"
-    if time.at_least:
-        return f"{has}; whether the {value(given)} given to the response are enough is not checked"
-    return f"{has}, less than the {value(given)} given to the response"
+        return language.trips_before(when, trip, language.rough_duration(-time.available_s), alarm)
+    return language.operator_has(
+        when, language.rough_duration(time.available_s), alarm, trip, language.value(given) if given else "",
+        least=time.at_least, short=given is not None and below(time.available_s, seconds(given)),
+    )  # fmt: skip
 
 
-def _alarm(entry: AlarmToTrip) -> str:
-    return f"the {alarm_name(entry.alarm.kind)} alarm of {entry.loop.tag}"
-
-
-def _when(plant: Plant, upset: str) -> str:
-    """`If FV-1002 shuts`, or `Under the upset “cooling water lost”` of a name that the register gives."""
-    moved = upset.partition(" ")[0] in plant.register.final_elements
-    return f"If {upset}" if moved else f"Under the upset “{upset}”"
+def _alarm(entry: AlarmToTrip) -> tuple[str, str]:
+    return entry.loop.tag, entry.alarm.kind
 
 
 # ---------------------------------------------------------------- the loop sheet
 
 
-def sheet_line(times: TimeToAct, loop: Loop) -> str:
+def sheet_line(times: TimeToAct, loop: Loop, language: Language) -> str:
     """The shortest time after each alarm of a loop in one line; empty where no trip follows."""
     return "; ".join(
-        f"{alarm_name(alarm.kind)} alarm to {entry.interlock.tag}: {_in_short(entry)}"
+        language.alarm_to_trip(alarm.kind, entry.interlock.tag, _in_short(entry, language))
         for alarm in loop.alarms.values()
         for entry in times.of(loop, alarm)
     )
 
 
-def _in_short(entry: AlarmToTrip) -> str:
+def _in_short(entry: AlarmToTrip, language: Language) -> str:
     time, given = entry.shortest, _time(entry.alarm.time_to_respond)
     if time is None:
-        return "not checked" if entry.not_decided else "not reached"
+        return language.not_reached(checked=not entry.not_decided)
     if time.available_s <= 0.0:
-        return f"trips {shown_time(-time.available_s)} before the alarm ({time.upset})"
-    left = f"{'at least ' if time.at_least else ''}{shown_time(time.available_s)} ({time.upset})"
-    return f"{left}, {value(given)} given" if given else left
+        return language.before_the_alarm(language.rough_duration(-time.available_s), time.upset)
+    left = language.rough_duration(time.available_s)
+    return language.time_left(left, time.upset, language.value(given) if given else "", least=time.at_least)

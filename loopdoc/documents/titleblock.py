@@ -8,7 +8,8 @@ from dataclasses import dataclass
 from datetime import date
 
 from loopdoc import __version__
-from loopdoc.documents.values import DASH, shown
+from loopdoc.documents.language import ENGLISH, Language
+from loopdoc.documents.values import DASH
 from loopdoc.engineering.pairing import Plant
 from loopdoc.register.model import Revision, known
 from loopdoc.rules.finding import CheckResult, Level
@@ -16,11 +17,8 @@ from loopdoc.rules.finding import CheckResult, Level
 HOLDS_PERMITTED = ("issued for review", "issued for information")
 """Statuses at which a document may still carry holds."""
 
-CAUTIONS = (
-    "This document supports and does not replace review by licensed or competent persons. Local codes, the hazard "
-    "study and the manufacturer's data govern. Safety instrumented functions need their own lifecycle (IEC 61511). "
-    "Try tuning changes only under supervision."
-)
+CAUTIONS = ENGLISH.cautions()
+"""What every document says of itself, in English."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -85,54 +83,53 @@ def document(
     supplementary_title: str,
     unit: str,
     serial: str,
+    language: Language = ENGLISH,
 ) -> Document:
     """The title block of a document; ``code`` is its kind in the document number, such as `CN`."""
     register = plant.register
     site = register.site
     revision = register.revision
     return Document(
-        owner=shown(site.owner if site else None),
-        site=shown(site.name if site else None),
-        kind=kind,
+        owner=language.shown(site.owner if site else None),
+        site=language.shown(site.name if site else None),
+        kind=language.label(kind),
         title=title,
         supplementary_title=supplementary_title,
         number=register.numbering.replace("{unit}", unit).replace("{kind}", code).replace("{serial}", serial),
-        revision=_row(revision),
-        history=tuple(_row(entry) for entry in ((revision,) if revision else ()) + tuple(reversed(register.history))),
+        revision=_row(revision, language),
+        history=tuple(
+            _row(entry, language) for entry in ((revision,) if revision else ()) + tuple(reversed(register.history))
+        ),
         dated=_iso_date(known(revision.date) if revision else None),
         fingerprint=fingerprint(sources)[:12],
-        check_state=check_state(plant, result),
-        draft=draft_reason(plant, result),
+        check_state=check_state(plant, result, language),
+        draft=draft_reason(plant, result, language),
+        cautions=language.cautions(),
+        language=language.code,
     )
 
 
-def check_state(plant: Plant, result: CheckResult) -> str:
+def check_state(plant: Plant, result: CheckResult, language: Language = ENGLISH) -> str:
     """The state of the register's check in one line."""
-
-    def counted(number: int, one: str, many: str) -> str:
-        return f"{number} {one if number == 1 else many}"
-
-    return ", ".join(
-        (
-            counted(result.count(Level.ERROR), "error", "errors"),
-            counted(result.count(Level.WARNING), "warning", "warnings"),
-            counted(result.count(Level.NOTE), "note", "notes"),
-            counted(len(result.accepted), "deviation", "deviations"),
-            counted(len(plant.register.holds), "hold", "holds"),
-            counted(result.not_checked, "check not made", "checks not made"),
-        )
+    return language.check_state(
+        result.count(Level.ERROR),
+        result.count(Level.WARNING),
+        result.count(Level.NOTE),
+        len(result.accepted),
+        len(plant.register.holds),
+        result.not_checked,
     )
 
 
-def draft_reason(plant: Plant, result: CheckResult) -> str:
+def draft_reason(plant: Plant, result: CheckResult, language: Language = ENGLISH) -> str:
     """Why documents of this register are drafts; empty where they are not."""
     revision = plant.register.revision
     status = known(revision.status) if revision else None
     errors = result.count(Level.ERROR)
     if errors:
-        return f"{errors} {'error' if errors == 1 else 'errors'} open"
+        return language.errors_open(errors)
     if plant.register.holds and status not in HOLDS_PERMITTED:
-        return f"holds open at status {status or 'unknown'}"
+        return language.holds_open(language.term("status", status) if status else "")
     return ""
 
 
@@ -143,15 +140,16 @@ def _iso_date(written: str | None) -> str:
         return ""
 
 
-def _row(revision: Revision | None) -> RevisionRow:
+def _row(revision: Revision | None, language: Language) -> RevisionRow:
     if revision is None:
         return RevisionRow(*(DASH,) * 7)
+    status = revision.status
     return RevisionRow(
-        shown(revision.code),
-        shown(revision.date),
-        shown(revision.status),
-        shown(revision.summary),
-        shown(revision.prepared_by),
-        shown(revision.checked_by),
-        shown(revision.approved_by),
+        language.shown(revision.code),
+        language.date(language.shown(revision.date)),
+        language.term("status", status) if isinstance(status, str) else language.shown(status),
+        language.shown(revision.summary),
+        language.shown(revision.prepared_by),
+        language.shown(revision.checked_by),
+        language.shown(revision.approved_by),
     )

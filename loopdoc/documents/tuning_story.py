@@ -6,12 +6,13 @@ import math
 import re
 from collections.abc import Iterator, Sequence
 
-from loopdoc.documents.values import HOLD, shown
-from loopdoc.documents.wording import NO_BREAK, grouped, listed, sentences, value
+from loopdoc.documents.language import ENGLISH, Language
+from loopdoc.documents.values import HOLD
+from loopdoc.documents.wording import NO_BREAK, grouped, sentences
 from loopdoc.engineering.dynamics import Dynamics
 from loopdoc.engineering.pairing import ControlledLoop
 from loopdoc.register.model import Controller, Hold, Process, known
-from loopdoc.register.quantity import Quantity, display_number
+from loopdoc.register.quantity import Gain
 
 SETTINGS_HEAD = (
     "Controller", "Form", "Gain", "Proportional band", "Reset", "Repeats", "Rate", "Rate filter", "Setpoint weight",
@@ -19,101 +20,101 @@ SETTINGS_HEAD = (
 )  # fmt: skip
 PROCESS_HEAD = ("Loop", "Moved", "Process gain", "Lags", "Lead", "Dead time", "Source")
 
-BASIS = (
-    "Gains are in percent of output per percent of measurement span, in the standard form (ISA-TR5.9) unless a table "
-    "names another. Margins come from the exact frequency response of the process models with every loop below "
-    "closed; dead time is not approximated, and an execution interval counts as half of itself in dead time; a loop "
-    "whose gain margin would be read above a quarter of its sampling frequency, where that no longer holds, is "
-    "analysed as it is sampled. Ms is the "
-    "maximum sensitivity; the speed ratio is the crossover of the loop below over that of the loop itself."
-)
-"""What every table of settings and margins rests on, told once in a document."""
+BASIS = ENGLISH.tuning_basis()
+"""What every table of settings and margins rests on, in English."""
 
 
-def settings_rows(loops: Sequence[ControlledLoop], dynamics: Dynamics) -> Iterator[tuple[str, ...]]:
+def settings_rows(
+    loops: Sequence[ControlledLoop], dynamics: Dynamics, language: Language
+) -> Iterator[tuple[str, ...]]:
     """One row for each controller, as `SETTINGS_HEAD` names the columns; empty where nothing is given."""
     for loop in loops:
         written = loop.controller
         measurement = known(loop.loop.measurement)
-        form = _given(written.form)
+        form = known(written.form)
+        weight = written.setpoint_weight
         yield (
             loop.tag,
-            "" if form == "standard" else form,
-            _given(written.gain),
-            _given(written.proportional_band),
-            _given(written.reset) or ("none" if _proportional_only(written) else ""),
-            _given(written.repeats),
-            _given(written.rate),
-            _given(written.derivative_filter),
-            _given(written.setpoint_weight),
-            _given(measurement.filter) if measurement else "",
-            _given(written.interval),
-            *_margins(dynamics, loop.tag),
+            "" if form == "standard" else _term("form", written.form, language),
+            _given(written.gain, language),
+            _given(written.proportional_band, language),
+            _given(written.reset, language) or (language.label("none") if _proportional_only(written) else ""),
+            _given(written.repeats, language),
+            _given(written.rate, language),
+            _given(written.derivative_filter, language),
+            _term("weight", weight, language) if isinstance(weight, str) else _given(weight, language),
+            _given(measurement.filter, language) if measurement else "",
+            _given(written.interval, language),
+            *_margins(dynamics, loop.tag, language),
         )
+
+
+def _term(kind: str, written: str | Hold | None, language: Language) -> str:
+    return language.term(kind, written) if isinstance(written, str) else _given(written, language)
 
 
 def _proportional_only(written: Controller) -> bool:
     return written.reset is None and written.repeats is None and known(written.gain) is not None
 
 
-def process_rows(loops: Sequence[ControlledLoop]) -> Iterator[tuple[str, ...]]:
+def process_rows(loops: Sequence[ControlledLoop], language: Language) -> Iterator[tuple[str, ...]]:
     """One row for each process model, as `PROCESS_HEAD` names the columns."""
     for loop in loops:
         process = loop.loop.process
         models: list[tuple[str, Process | Hold | None]] = [("", process)]
         if isinstance(process, Process) and process.branches:
             models = list(process.branches.items())
-        source = _given(process.source) if isinstance(process, Process) else ""
+        source = _given(process.source, language) if isinstance(process, Process) else ""
         for branch, model in models:
-            yield loop.tag, branch or _commanded(loop), *_model(model), source
+            yield loop.tag, branch or _commanded(loop, language), *_model(model, language), source
 
 
-def _commanded(loop: ControlledLoop) -> str:
-    return listed(dict.fromkeys(route.end.tag for route in loop.routes))
+def _commanded(loop: ControlledLoop, language: Language) -> str:
+    return language.listed(dict.fromkeys(route.end.tag for route in loop.routes))
 
 
-def _model(model: Process | Hold | None) -> tuple[str, str, str, str]:
+def _model(model: Process | Hold | None, language: Language) -> tuple[str, str, str, str]:
     """Gain, lags, lead and dead time of a model."""
     if isinstance(model, Hold):
         return HOLD, "", "", ""
     if model is None:
         return "", "", "", ""
-    gain = _given(model.gain)
-    lags = HOLD if isinstance(model.lags, Hold) else listed(value(lag) for lag in model.lags)
-    return gain, lags, _given(model.lead), _given(model.dead_time)
+    lags = HOLD if isinstance(model.lags, Hold) else language.listed(language.value(lag) for lag in model.lags)
+    return _given(model.gain, language), lags, _given(model.lead, language), _given(model.dead_time, language)
 
 
-def _margins(dynamics: Dynamics, tag: str) -> tuple[str, str, str, str, str]:
+def _margins(dynamics: Dynamics, tag: str, language: Language) -> tuple[str, str, str, str, str]:
     worst = dynamics.loop(tag).worst
     if worst is None:
         return ("",) * 5
     margins = worst.margins[-1]
     if not margins.stable:
-        return "unstable", "", "", "", ""
+        return language.label("unstable"), "", "", "", ""
     ratio = worst.speed_ratio
     crossover = margins.crossover_rad_per_s
     return (
-        _figure(margins.gain_margin),
-        f"{_figure(margins.phase_margin_deg)}°" if math.isfinite(margins.phase_margin_deg) else "∞",
-        _figure(margins.max_sensitivity),
-        f"{_figure(crossover)}{NO_BREAK}rad/s" if math.isfinite(crossover) else "none",
-        _figure(ratio) if ratio is not None and math.isfinite(ratio) else "",
+        _figure(margins.gain_margin, language),
+        f"{_figure(margins.phase_margin_deg, language)}°" if math.isfinite(margins.phase_margin_deg) else "∞",
+        _figure(margins.max_sensitivity, language),
+        f"{_figure(crossover, language)}{NO_BREAK}rad/s" if math.isfinite(crossover) else language.label("none"),
+        _figure(ratio, language) if ratio is not None and math.isfinite(ratio) else "",
     )
 
 
-def _figure(number: float) -> str:
+def _figure(number: float, language: Language) -> str:
     if math.isnan(number):
-        return "not quoted"  # where the sampled loop would be needed and is not calculated; the remarks say why
-    return display_number(number, 3 if abs(number) < 100 else 4)
+        # Where the sampled loop would be needed and is not calculated; the remarks say why.
+        return language.label("not quoted")
+    return language.number(number, 3 if abs(number) < 100 else 4)
 
 
-def remarks(loops: Sequence[ControlledLoop], dynamics: Dynamics) -> str:
+def remarks(loops: Sequence[ControlledLoop], dynamics: Dynamics, language: Language) -> str:
     """What the tables do not say: which margins cannot be calculated and why, what is unstable."""
     told: list[str] = []
     calculated = [loop.tag for loop in loops if dynamics.loop(loop.tag).worst is not None]
     if any(len(dynamics.loop(tag).chains) > 1 for tag in calculated):
-        told.append("Of a split range the branch with the larger maximum sensitivity is quoted")
-    told.extend(_without_margins(loops, dynamics))
+        told.append(language.larger_branch())
+    told.extend(_without_margins(loops, dynamics, language))
     sampled = []
     for tag in calculated:
         worst = dynamics.loop(tag).worst
@@ -121,17 +122,17 @@ def remarks(loops: Sequence[ControlledLoop], dynamics: Dynamics) -> str:
             continue
         margins = worst.margins[-1]
         if not margins.stable:
-            told.append(f"{tag} is not stable as tuned")
+            told.append(language.not_stable(tag))
         elif margins.not_quoted:
-            told.append(f"The gain margin of {tag} would need the sampled loop: {margins.not_quoted}")
+            told.append(language.gain_margin_sampled(tag, language.reason(margins.not_quoted)))
         elif margins.sampled:
             sampled.append(tag)
     if sampled:
-        told.append(f"The margins of {listed(sampled)} are those of the sampled loop")
+        told.append(language.margins_sampled(sampled))
     return sentences(*told)
 
 
-def _without_margins(loops: Sequence[ControlledLoop], dynamics: Dynamics) -> Iterator[str]:
+def _without_margins(loops: Sequence[ControlledLoop], dynamics: Dynamics, language: Language) -> Iterator[str]:
     """Why the margins of some loops cannot be calculated; loops that lack the same are named together."""
     lacking = [(loop.tag, reason) for loop in loops if (reason := dynamics.loop(loop.tag).reason)]
     own = [
@@ -140,18 +141,16 @@ def _without_margins(loops: Sequence[ControlledLoop], dynamics: Dynamics) -> Ite
         if (found := re.fullmatch(rf"the (.+) of {re.escape(tag)} is on hold", reason))
     ]
     for what, tags in grouped(own).items():
-        yield f"No margins can be calculated for {listed(tags)}, whose {what} is on hold"
+        yield language.no_margins_held(tags, what)
     named = {tag for _, tag in own}
     for reason, tags in grouped((reason, tag) for tag, reason in lacking if tag not in named).items():
-        yield f"No margins can be calculated for {listed(tags)}: {reason}"
+        yield language.no_margins(tags, language.reason(reason))
 
 
-def _given(written: object) -> str:
+def _given(written: object, language: Language) -> str:
     """A value, HOLD where it is held, nothing where it is not given."""
     if written is None:
         return ""
-    if isinstance(written, float):
-        return display_number(written)
-    if isinstance(written, Quantity):
-        return value(written)
-    return shown(written).replace(" per ", f"{NO_BREAK}per{NO_BREAK}")
+    if isinstance(written, Gain):
+        return language.shown(written).replace(" ", NO_BREAK)
+    return language.number(written) if isinstance(written, float) else language.value(written)

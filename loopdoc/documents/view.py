@@ -73,10 +73,12 @@ def table(
     rows: Iterable[Sequence[str]],
     prose: Callable[[str], Prose],
     *,
+    label: Callable[[str], str],
     title: str = "",
 ) -> tuple[Table, ...]:
     """A table without the columns of which no row says anything; nothing at all where no row is left.
 
+    Headings and title come by their English names; ``label`` gives them in the language of the document.
     A column in which everything said is on hold says nothing: the holds are listed by themselves.
     """
     found = [tuple(row) for row in rows]
@@ -88,7 +90,8 @@ def table(
     if not found:
         return ()
     cells = tuple(tuple(prose(row[column]) for column in kept) for row in found)
-    return (Table(name, tuple((_class(head[column]), head[column]) for column in kept), cells, title),)
+    heads = tuple((_class(head[column]), label(head[column])) for column in kept)
+    return (Table(name, heads, cells, label(title) if title else ""),)
 
 
 def _class(heading: str) -> str:

@@ -102,7 +102,7 @@ def sentence(text: str) -> str:
     tidy = re.sub(r"[ \t\n]+", " ", text).strip(" ")
     if not tidy:
         return ""
-    return upper_first(tidy if tidy[-1] in ".!?" or tidy.endswith((".”", '."')) else f"{tidy.rstrip(',;:')}.")
+    return upper_first(tidy if tidy[-1] in ".!?" or tidy.endswith((".”", ".“", '."')) else f"{tidy.rstrip(',;:')}.")
 
 
 def sentences(*texts: str) -> str:
@@ -208,10 +208,18 @@ _PIECE = re.compile(
 class Setter:
     """Sets prose: finds its pointers, tags and values, so that none is broken or misspelt."""
 
-    def __init__(self, register: Register, tags: Iterable[str], target: Callable[[str], Target]) -> None:
+    def __init__(
+        self,
+        register: Register,
+        tags: Iterable[str],
+        target: Callable[[str], Target],
+        written: Callable[[str | float], str] | None = None,
+    ) -> None:
         self._register = register
         self._tags = frozenset(tags)
         self._target = target
+        self._written = written or as_written
+        """How values that the register's prose points at are printed: in the language of that prose."""
 
     def prose(self, text: str) -> Prose:
         """Set one text; a pointer that leads nowhere shows as it was written."""
@@ -230,10 +238,10 @@ class Setter:
             runs.append(Run(f"{{{pointer}}}", "unresolved"))
         elif isinstance(found, Hold):
             runs.append(Run(HOLD, "hold"))
-        elif isinstance(found, str) and " " in as_written(found):
+        elif isinstance(found, str) and " " in self._written(found):
             self._plain(found, runs)  # a text, not a value: it may be broken like any other
         else:
-            runs.append(Run(as_written(found), "value"))
+            runs.append(Run(self._written(found), "value"))
 
     def _plain(self, text: str, runs: list[Run]) -> None:
         for piece in _PIECE.finditer(with_printed_units(text)):

@@ -239,6 +239,8 @@ class Alarm(Part):
     consequence: str | Hold | None
     response: str | Hold | None
     time_to_respond: Quantity | Hold | None
+    warns_of: dict[str, str]
+    """Hazards of other loops that this alarm tells of as well: high or low, by tag of the loop."""
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -421,6 +423,8 @@ class Site(Part):
 
     name: str | Hold | None
     owner: str | Hold | None
+    language: str | None
+    """ISO 639-1 code of the language in which the register is written and its documents are issued."""
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

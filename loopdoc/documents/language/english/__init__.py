@@ -1,0 +1,12 @@
+"""The English catalogue: how everything that documents say is said in English."""
+
+from __future__ import annotations
+
+from loopdoc.documents.language.english.dynamics import EnglishDynamics
+from loopdoc.documents.language.english.protection import EnglishProtection
+from loopdoc.documents.language.english.scheme import EnglishScheme
+from loopdoc.documents.language.english.sheet import EnglishSheet
+
+
+class English(EnglishScheme, EnglishProtection, EnglishDynamics, EnglishSheet):
+    """English; also the measure of a catalogue: another language has the same members with the same parameters."""
