@@ -29,22 +29,15 @@ class Basis:
     dynamics: Dynamics
     records: Mapping[str, tuple[LoopRecord, ...]] = field(default_factory=dict)
     """Results of loop checks kept beside the register, by tag, each loop's oldest first."""
-<<<<<<< /tmp/rv/ours
     language: Language = ENGLISH
     """Of those documents that have a catalogue in it; the others are in English."""
-    times: TimeToAct = field(init=False)
-    """From alarm to trip under each upset, calculated at the first question."""
-    _compared: dict[ChainDynamics, Comparison | NotSimulated] = field(default_factory=dict, repr=False)
-    _drawn: dict[tuple[ChainDynamics, str], str] = field(default_factory=dict, repr=False)
-=======
     against: Basis | None = None
     """The register at the earlier revision against which the documents are issued."""
     times: TimeToAct = field(init=False)
     """From alarm to trip under each upset, calculated at the first question."""
     _compared: dict[ChainDynamics, Comparison | NotSimulated] = field(default_factory=dict, repr=False)
-    _drawn: dict[ChainDynamics, str] = field(default_factory=dict, repr=False)
+    _drawn: dict[tuple[ChainDynamics, str], str] = field(default_factory=dict, repr=False)
     _pages: dict[str, tuple[Page, ...]] = field(default_factory=dict, repr=False)
->>>>>>> /tmp/rv/theirs
 
     def __post_init__(self) -> None:
         object.__setattr__(self, "times", TimeToAct(self.plant))
@@ -60,21 +53,14 @@ class Basis:
         self, chain: ChainDynamics, draw: Callable[[Comparison], str], language: Language = ENGLISH
     ) -> str:
         """The figure of a chain's time responses, drawn once for all documents; empty where there is none."""
-<<<<<<< /tmp/rv/ours
         key = chain, language.code
         if key not in self._drawn:
-            comparison = self.comparison(chain)
-            self._drawn[key] = draw(comparison) if isinstance(comparison, Comparison) else ""
-        return self._drawn[key]
-=======
-        if chain not in self._drawn:
             comparison, twin = self.comparison(chain), self._unchanged(chain)
             if self.against and twin:
-                self._drawn[chain] = self.against.drawn(twin, draw)
+                self._drawn[key] = self.against.drawn(twin, draw, language)
             else:
-                self._drawn[chain] = draw(comparison) if isinstance(comparison, Comparison) else ""
-        return self._drawn[chain]
->>>>>>> /tmp/rv/theirs
+                self._drawn[key] = draw(comparison) if isinstance(comparison, Comparison) else ""
+        return self._drawn[key]
 
     def _unchanged(self, chain: ChainDynamics) -> ChainDynamics | None:
         """The same chain at the earlier revision, where nothing in it has changed: it is calculated once for both."""
@@ -119,7 +105,7 @@ def basis_of(
     plant = Plant(loaded.register)
     dynamics = Dynamics(plant)
     result = check(plant, loaded.faults, dynamics=dynamics)
-    return Basis(plant, result, loaded.sources, dynamics, records or {}, against)
+    return Basis(plant, result, loaded.sources, dynamics, records or {}, against=against)
 
 
 @dataclass(frozen=True, slots=True)
