@@ -50,8 +50,10 @@ from loopdoc.engineering.spreading import (
     upward,
     ways_to,
 )
-from loopdoc.register.model import Alarm, Function, Instrument, Interlock, Loop, known
+from loopdoc.register.model import Alarm, Function, Interlock, Loop, known
 from loopdoc.register.quantity import Quantity
+
+_VOTING = re.compile("([1-9])oo[1-9]")
 
 
 class Failure(StrEnum):
@@ -82,7 +84,8 @@ class Consequence:
     """Whether that is the direction that hurts; None where the direction or the hazard is not known."""
     alarms: tuple[LoopAlarm, ...]
     """Alarms on it, by a sensor that has not failed, in the direction in which it goes, and on the way to what its
-    primary can ask of it. Where it is left to itself: in the directions that hurt."""
+    primary can ask of it; and those on other quantities that are said to warn of it. Where it is left to itself: in the
+    directions that hurt."""
     trips: tuple[Trip, ...]
     """The same for initiators of interlocks, of a safety system's own transmitters too, where the interlock moves
     a final element that has not failed."""
@@ -126,12 +129,21 @@ class FailureEffect:
     """Interlocks with other sensors that would move a final element back, should their limits be reached."""
 
 
+@dataclass(frozen=True, slots=True)
+class _Alike:
+    """What measures the same thing as a loop, with a transmitter of its own."""
+
+    loops: tuple[Loop, ...]
+    sensors: tuple[str, ...]
+    """The transmitters of these loops and of instruments that belong to no loop."""
+
+
 class FailureAnalysis:
     """The failure effects of a plant; what the questions share is resolved once."""
 
     def __init__(self, plant: Plant) -> None:
         self.plant = plant
-        self._alike_by_tag: dict[str, tuple[tuple[Loop | Instrument, str], ...]] = {}
+        self._alike_by_tag: dict[str, _Alike] = {}
 
     def effects(self, tag: str) -> tuple[FailureEffect, ...]:
         """The effect of each failure that concerns a loop, in the order of `Failure`.
@@ -161,22 +173,25 @@ class FailureAnalysis:
         Told by the unit, the variable and the service up to its first comma: `Drum level` and `Drum level,
         second transmitter`. Where a register does not write it so, nothing is assumed.
         """
-        return tuple(other for other, _ in self._alike(loop) if isinstance(other, Loop))
+        return self._alike(loop).loops
 
     def sensors_beside(self, loop: Loop) -> tuple[str, ...]:
         """Transmitters beside a loop's own that measure the same thing, those of no loop (a safety system's) too."""
-        return tuple(dict.fromkeys(tag for _, tag in self._alike(loop)))
+        return self._alike(loop).sensors
 
-    def _alike(self, loop: Loop) -> tuple[tuple[Loop | Instrument, str], ...]:
-        """Other loops and instruments that measure the same thing, each with its transmitter; found once a loop."""
+    def _alike(self, loop: Loop) -> _Alike:
+        """Other loops and instruments that measure the same thing; found once a loop."""
         if loop.tag not in self._alike_by_tag:
             own, quantity = transmitter_of(loop), measured_quantity(loop)
-            found = []
+            loops: list[Loop] = []
+            sensors: dict[str, None] = {}
             for other in self.plant.measuring.get(quantity, ()) if quantity else ():
                 tag = transmitter_of(other) if isinstance(other, Loop) else other.tag
                 if other is not loop and tag is not None and tag != own:
-                    found.append((other, tag))
-            self._alike_by_tag[loop.tag] = tuple(found)
+                    sensors[tag] = None
+                    if isinstance(other, Loop):
+                        loops.append(other)
+            self._alike_by_tag[loop.tag] = _Alike(tuple(loops), tuple(sensors))
         return self._alike_by_tag[loop.tag]
 
     def trips_on(self, transmitter: str | None) -> tuple[Trip, ...]:
@@ -392,10 +407,13 @@ class _Effects:
         elif hurts is not None and moved is not None:
             hazardous = moved in hurts
         watched = (moved,) if moved is not None else hurts or ()
+        opposed_by = moves.opposed.get(loop.tag, ())
+        if not watched:
+            return Consequence(loop, direction, hazardous, (), (), opposed_by)
         watchers = [
             one
             for one in (loop, *self._analysis.same_quantity(loop))
-            if transmitter_of(one) is not None and transmitter_of(one) not in failed
+            if (transmitter := transmitter_of(one)) is not None and transmitter not in failed
         ]
         # A secondary follows no further than its primary may ask.
         asked = {move.loop.tag: move.limit for move in moves.setpoints if not move.instead}
@@ -407,6 +425,11 @@ class _Effects:
             for watcher in watchers
             for kind in (("high", "high_high") if sign > 0 else ("low", "low_low"))
             if kind in watcher.alarms and _comes(watcher.alarms[kind], asked.get(loop.tag), sign)
+        ) + tuple(
+            entry
+            for sign in watched
+            for entry in self._plant.warning_of.get((loop.tag, "high" if sign > 0 else "low"), ())
+            if transmitter_of(entry.loop) is not None and transmitter_of(entry.loop) not in failed
         )
         trips = tuple(
             trip
@@ -414,7 +437,6 @@ class _Effects:
             for trip in self._voting(sensors, "above" if sign > 0 else "below")
             if (alarms_stand or known(trip.interlock.layer) == "safety") and self._moves_another(trip.interlock, lost)
         )
-        opposed_by = moves.opposed.get(loop.tag, ())
         return Consequence(loop, direction, hazardous, alarms if alarms_stand else (), trips, opposed_by)
 
     def _moves_another(self, interlock: Interlock, lost: set[str]) -> bool:
@@ -487,7 +509,7 @@ def _trips_alone(trip: Trip) -> bool:
 
 def _needed(interlock: Interlock) -> int | None:
     """How many initiators trip an interlock; None where the voting is not known."""
-    votes = re.fullmatch(r"([1-9])oo[1-9]", known(interlock.voting) or "")
+    votes = _VOTING.fullmatch(known(interlock.voting) or "")
     return int(votes[1]) if votes else None
 
 

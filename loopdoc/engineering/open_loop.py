@@ -116,12 +116,13 @@ def open_loops(levels: Sequence[LevelArrays], w: FloatArray) -> list[ComplexArra
 
 def _fill(levels: Sequence[LevelArrays], w: FloatArray, loops: Sequence[ComplexArray]) -> None:
     """Write the open loop of every level, in place throughout: fetching new memory would take most of the time."""
-    s = 1j * w
+    s: ComplexArray = 1j * w
     per_s = -1j / w
     below: ComplexArray = np.ones((1, 1), dtype=np.complex128)
-    factor, product = np.empty_like(s), np.empty_like(s)
+    factor: ComplexArray = np.empty_like(s)
+    product: ComplexArray = np.empty_like(s)
     for level, loop in zip(levels, loops, strict=True):
-        plant = np.empty_like(s)
+        plant: ComplexArray = np.empty_like(s)
         np.multiply(level.gain, below, out=plant)
         if level.delay_s.any():
             angle = level.delay_s * w
@@ -129,11 +130,11 @@ def _fill(levels: Sequence[LevelArrays], w: FloatArray, loops: Sequence[ComplexA
             np.sin(np.negative(angle, out=angle), out=factor.imag)
             plant *= factor
         for lead in level.leads_s:
-            plant *= _first_order(lead, s, factor)
+            np.multiply(plant, _first_order(lead, s, factor), out=plant)
         # Multiplied first, since dividing costs most.
         product.fill(1.0)
         for lag in level.lags_s:
-            product *= _first_order(lag, s, factor)
+            np.multiply(product, _first_order(lag, s, factor), out=product)
         plant /= product
         if level.integrating.any():
             plant *= np.where(level.integrating, per_s, 1.0)

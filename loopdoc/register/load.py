@@ -167,6 +167,8 @@ class _Reader:
     def __init__(self, faults: list[Fault]) -> None:
         self._faults = faults
         self._told = {fault.place for fault in faults}
+        self._faulty = {fault.place.file for fault in faults}
+        """Files in which the schema refuses something: elsewhere no place has to be looked up."""
 
     # -- values
 
@@ -187,7 +189,8 @@ class _Reader:
         if kind is float:
             return float(value) if isinstance(value, int | float) and not isinstance(value, bool) else _UNREADABLE
         if kind is str:
-            refused = origin.place(*steps) in self._told  # a word that the schema does not know
+            # A word that the schema does not know is refused.
+            refused = origin.source.name in self._faulty and origin.place(*steps) in self._told
             return value if isinstance(value, str) and not refused else _UNREADABLE
         if kind is bool:
             return value if isinstance(value, bool) else False
@@ -207,6 +210,8 @@ class _Reader:
             if many:
                 items = written if isinstance(written, list) else []
                 read[name] = tuple(item for item in items if isinstance(item, str))
+            elif written is None:  # as most are
+                read[name] = False if inner is bool else None
             else:
                 read[name] = self._value(origin, (name,), written, inner)
                 if inner is bool:
@@ -231,7 +236,8 @@ class _Reader:
     def _loop(self, origin: Origin, tag: str, value: Any) -> Loop | None:
         alarms = {}
         for kind, entry, where in self._below(origin, value, "alarms"):
-            alarm = self._part(where, entry, Alarm, kind=kind)
+            warns_of = {loop: side for loop, side, _ in self._below(where, entry, "warns_of") if isinstance(side, str)}
+            alarm = self._part(where, entry, Alarm, kind=kind, warns_of=warns_of)
             if isinstance(alarm, Alarm):
                 alarms[kind] = alarm
         disturbances = {}

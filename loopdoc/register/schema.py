@@ -24,13 +24,20 @@ _FILE = "register.schema.json"
 
 def schema_text(*, root: bool = True) -> str:
     """The JSON Schema of the root file, or of an included file, as text."""
-    text = (files("loopdoc.schemas") / _FILE).read_text(encoding="utf-8")
     if root:
-        return text
-    schema = json.loads(text)
+        return (files("loopdoc.schemas") / _FILE).read_text(encoding="utf-8")
+    return json.dumps(_schema(root), indent=2, ensure_ascii=False) + "\n"
+
+
+@cache
+def _schema(root: bool) -> dict[str, Any]:
+    """The JSON Schema of the root file, or of an included file."""
+    if root:
+        schema: dict[str, Any] = json.loads(schema_text())
+        return schema
+    schema = _schema(True)
     told = {word: schema["$defs"]["included"][word] for word in ("title", "description")}
-    included = {**schema, **told, "$ref": "#/$defs/included"}
-    return json.dumps(included, indent=2, ensure_ascii=False) + "\n"
+    return {**schema, **told, "$ref": "#/$defs/included"}
 
 
 def schema_faults(file: TextFile, *, root: bool) -> tuple[Fault, ...]:
@@ -75,12 +82,12 @@ def _path(data: Any, pointer: str) -> Path:
 
 @cache
 def _format(root: bool) -> Format:
-    return Format(json.loads(schema_text(root=root)))
+    return Format(_schema(root))
 
 
 @cache
 def _validator(root: bool) -> Draft202012Validator:
-    return validator_of(json.loads(schema_text(root=root)))
+    return validator_of(_schema(root))
 
 
 def validator_of(schema: Any) -> Draft202012Validator:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import datetime
-from collections.abc import Collection, Iterable, Iterator
+from collections.abc import Collection, Iterable
 from dataclasses import replace
 from typing import Any
 
@@ -18,7 +18,7 @@ from loopdoc.rules.baseline import with_paths
 from loopdoc.rules.catalogue import RULES
 from loopdoc.rules.finding import CheckResult, Coverage, Finding, Level, Ran
 from loopdoc.rules.policy import limits_from
-from loopdoc.rules.rule import Draft, NotApplicable, NotChecked, Rule
+from loopdoc.rules.rule import NotApplicable, NotChecked, Rule
 from loopdoc.rules.subjects import Faults, Scope, name_of, place_of, tag_of
 
 INTERNAL = "internal-error"
@@ -79,20 +79,26 @@ def _date_of_revision(plant: Plant) -> datetime.date | None:
     return date(known(revision.date)) if revision else None
 
 
-def _findings(rule: Rule, scope: Scope, counts: Coverage) -> Iterator[Finding]:
+def _findings(rule: Rule, scope: Scope, counts: Coverage) -> list[Finding]:
     """What one rule finds in the whole plant, counting what it checked and what it could not."""
+    findings: list[Finding] = []
     try:
         asked = rule.asks(scope)
         for subject in rule.visits(scope):
-            yield from _in_subject(rule, subject, asked, scope, counts)
+            _judge(rule, subject, asked, scope, counts, findings)
     except Exception as error:  # one broken rule must not silence the others
-        yield _internal_error(rule, scope.plant, error, scope)
+        findings.append(_internal_error(rule, scope.plant, error, scope))
+    return findings
 
 
-def _in_subject(rule: Rule, subject: Any, asked: tuple[Any, ...], scope: Scope, counts: Coverage) -> Iterator[Finding]:
+def _judge(
+    rule: Rule, subject: Any, asked: tuple[Any, ...], scope: Scope, counts: Coverage, findings: list[Finding]
+) -> None:
+    """Add what one rule finds in one subject, and count whether it could be checked."""
     try:
         for found in rule.function(subject, *asked):
-            yield _finding(rule, found)
+            level = found.level or rule.level
+            findings.append(Finding(rule.id, level, found.tag, found.message, found.remedy, found.place, found.related))
     except NotApplicable:
         return
     except NotChecked as lacking:
@@ -101,14 +107,9 @@ def _in_subject(rule: Rule, subject: Any, asked: tuple[Any, ...], scope: Scope, 
         counts.where.append((name_of(subject), str(lacking)))
         return
     except Exception as error:
-        yield _internal_error(rule, subject, error, scope)
+        findings.append(_internal_error(rule, subject, error, scope))
         return
     counts.checked += 1
-
-
-def _finding(rule: Rule, found: Draft) -> Finding:
-    level = found.level or rule.level
-    return Finding(rule.id, level, found.tag, found.message, found.remedy, found.place, found.related)
 
 
 def _by_file(faults: Iterable[Fault]) -> Faults:

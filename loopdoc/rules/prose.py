@@ -40,6 +40,8 @@ class Prose:
     @property
     def words(self) -> tuple[str, ...]:
         """Words outside the braces that hold a digit, as every tag does; once each, in their order."""
+        if not _DIGIT.search(self.text):
+            return ()
         plain = POINTER.sub(" ", self.text) if "{" in self.text else self.text
         likely = (piece for piece in plain.split() if not piece.isalpha() and _DIGIT.search(piece))
         return tuple(dict.fromkeys(word for piece in likely for word in _WORD.findall(piece) if _DIGIT.search(word)))

@@ -15,6 +15,7 @@ from loopdoc.register.model import (
     Instrument,
     Interlock,
     Loop,
+    Measurement,
     Origin,
     Part,
     Process,
@@ -122,6 +123,8 @@ def unit_incompatible(part: Loop | Instrument | Function | Interlock | Trip, pla
 
 def _fault(unit: Unit, wanted: Unit, is_difference: bool) -> str:
     """Why one unit does not serve for another, as ``message; remedy``; empty where it does."""
+    if (unit.difference_kind == wanted.difference_kind) if is_difference else (unit.kind == wanted.kind):
+        return ""
     try:
         if is_difference:
             convert_difference(1.0, unit, wanted)
@@ -166,7 +169,7 @@ def _measured_in_another_kind(part: _Visited) -> Draft | None:
     measurement = known(part.measurement)
     band = known(measurement.range) if measurement else None
     variable = known(measurement.variable) if measurement else None
-    kinds = _KINDS_OF_VARIABLE.get(variable or "")
+    kinds = _kinds_measured(measurement)
     if measurement is None or band is None or kinds is None or band.unit.kind in kinds:
         return None
     if band.unit.kind == "pressure difference":
@@ -205,47 +208,59 @@ def _of_loop(loop: Loop, plant: Plant) -> Iterator[_Value]:
     for name, group in (("operating", known(loop.operating)), ("setpoint", setpoint)):
         for key in ("low", "normal", "high") if group else ():
             assert group is not None
-            yield replace(_against_range(f"{name} {key}", group, key, loop), group=name)
+            yield from _against_range(f"{name} {key}", group, key, loop, group=name)
     for alarm in loop.alarms.values():
         name = f"the {alarm.kind.replace('_', '-')} alarm"
-        yield _against_range(f"the limit of {name}", alarm, "limit", loop, alarm.kind == "deviation")
-        yield _against_range(f"the dead band of {name}", alarm, "deadband", loop, True)
+        yield from _against_range(f"the limit of {name}", alarm, "limit", loop, alarm.kind == "deviation")
+        yield from _against_range(f"the dead band of {name}", alarm, "deadband", loop, True)
     measurement = known(loop.measurement)
     tolerance = known(measurement.tolerance) if measurement else None
     if measurement and tolerance and tolerance.unit != _PERCENT:
-        yield _against_range("the tolerance", measurement, "tolerance", loop, True)
+        yield from _against_range("the tolerance", measurement, "tolerance", loop, True)
     for disturbance in loop.disturbances.values():
-        yield _of_disturbance(loop, disturbance)
+        yield from _of_disturbance(loop, disturbance)
     if loop.tag in plant.controlled:
         yield from _of_output(plant.controlled[loop.tag])
 
 
-def _of_disturbance(loop: Loop, disturbance: Disturbance) -> _Value:
+def _of_disturbance(loop: Loop, disturbance: Disturbance) -> Iterator[_Value]:
     """Its size must agree with the measurement, or with what the process gain is per unit of."""
     what = f"the disturbance `{disturbance.name}`"
     if known(disturbance.at) != "process input":
-        return _against_range(what, disturbance, "size", loop, is_difference=True)
+        yield from _against_range(what, disturbance, "size", loop, is_difference=True)
+        return
     process = known(loop.process)
     gains = [known(one.gain) for one in (process, *process.branches.values())] if process else []
     wanted = next((gain.denominator for gain in gains if gain), None)
     against = "the process input" if wanted else "the unit of the process input"
-    return _Value(what, disturbance.size, disturbance.origin, ("size",), wanted, against, is_difference=True)
+    yield _Value(what, disturbance.size, disturbance.origin, ("size",), wanted, against, is_difference=True)
 
 
-def _against_range(what: str, part: Part, key: str, owner: Loop | Instrument, is_difference: bool = False) -> _Value:
-    """A value that stands under a key and must agree with a measurement range."""
+def _against_range(
+    what: str, part: Part, key: str, owner: Loop | Instrument, is_difference: bool = False, group: str = ""
+) -> Iterator[_Value]:
+    """A value that stands under a key, where it is given, and must agree with a measurement range."""
+    written = getattr(part, key)
+    if written is None:
+        return
     unit = _unit(owner)
     measurement = known(owner.measurement)
     band = known(measurement.range) if measurement else None
     against = "the measurement range" if unit else "the unit of the measurement"
-    return _Value(what, getattr(part, key), part.origin, (key,), unit, against, is_difference, band, owner)
+    yield _Value(what, written, part.origin, (key,), unit, against, is_difference, band, owner, group)
 
 
 def _unit(part: Loop | Instrument) -> Unit | None:
     """The unit of a measurement; None where its range is not known, or is not one of what is measured."""
     measurement = known(part.measurement)
     band = known(measurement.range) if measurement else None
-    return band.unit if band and _measured_in_another_kind(part) is None else None
+    kinds = _kinds_measured(measurement)
+    return band.unit if band and (kinds is None or band.unit.kind in kinds) else None
+
+
+def _kinds_measured(measurement: Measurement | None) -> tuple[str, ...] | None:
+    """The kinds of unit in which a measured variable can be given; None where it says nothing of that."""
+    return _KINDS_OF_VARIABLE.get(known(measurement.variable) or "") if measurement else None
 
 
 def _of_output(controlled: ControlledLoop) -> Iterator[_Value]:
@@ -289,7 +304,8 @@ def _of_trip(trip: Trip) -> Iterator[_Value]:
     owner, initiator = trip.instrument or trip.loop, trip.initiator
     if owner is not None:
         what = f"the trip limit of {initiator.tag}"
-        yield replace(_against_range(what, initiator, "limit", owner), steps=("trips",))
+        for value in _against_range(what, initiator, "limit", owner):
+            yield replace(value, steps=("trips",))
 
 
 # ---------------------------------------------------------------- process gains
