@@ -52,7 +52,8 @@ def interlock_action_unsafe(interlock: Interlock, plant: Plant) -> Iterator[Draf
             yield draft(
                 interlock.tag,
                 f"it {_DOES[position]} {element.tag}, whose safe position is {safe}",
-                remedy=f"write `{element.tag}: {_ordered(element, safe)}`, or correct the safe position after the hazard study",
+                remedy=f"write `{element.tag}: {_ordered(element, safe)}`, or correct the safe position after the hazard "
+                "study",
                 at=action.origin.place(),
                 related=((element.origin.place("safe"), f"the safe position of {element.tag}, {safe}"),),
                 level=Level.ERROR if known(interlock.layer) == "safety" else Level.WARNING,
@@ -133,7 +134,9 @@ def _not_forced(controlled: ControlledLoop, action: InterlockAction | None) -> s
     if mode in ("automatic", "cascade", "remote output"):
         return f"forces {controlled.tag} into {mode}, where it winds up: at the reset the element follows that output"
     if mode is not None and action.output is None:
-        return f"forces {controlled.tag} into {mode} without an output: at the reset the element returns to where it stood"
+        return (
+            f"forces {controlled.tag} into {mode} without an output: at the reset the element returns to where it stood"
+        )
     return ""
 
 

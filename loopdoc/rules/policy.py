@@ -102,7 +102,8 @@ class Limits:
     loop_check_tolerance: float = _limit(
         0.5,
         unit="% of span",
-        meaning="above this error of a reading a loop check fails, where the measurement states no tolerance of its own",
+        meaning="above this error of a reading a loop check fails, where the measurement states no tolerance of its "
+        "own",
         source="common practice",
     )
     travel_tolerance: float = _limit(
