@@ -9,9 +9,10 @@ import os
 import sys
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import replace
+from functools import partial
 from io import TextIOWrapper
 from pathlib import Path
-from typing import TYPE_CHECKING, TextIO
+from typing import TYPE_CHECKING, Any, TextIO
 
 from loopdoc import __version__
 
@@ -139,7 +140,14 @@ def _parser() -> argparse.ArgumentParser:
 
     issue = command("issue", _issue, "issue the documents of a register")
     _add_register(issue)
-    issue.add_argument("--out", type=Path, required=True, metavar="FOLDER", help="where the documents are written")
+    where = issue.add_mutually_exclusive_group(required=True)
+    where.add_argument("--out", type=Path, metavar="FOLDER", help="where the documents are written")
+    where.add_argument(
+        "--package",
+        type=Path,
+        metavar="FOLDER",
+        help="one folder to hand over, and one archive FOLDER.zip: documents, index with fingerprints, register",
+    )
     issue.add_argument(
         "--documents",
         nargs="+",
@@ -217,7 +225,7 @@ def _parser() -> argparse.ArgumentParser:
         type=Path,
         nargs="+",
         metavar="FILE.pdf",
-        help="issued files, or folders of them; and a register, if they are to be compared with one",
+        help="issued files, folders of them, or packages (folder or .zip); and a register, to compare with",
     )
     attest.add_argument("--format", choices=("text", "json"), default="text", help="form of the output (default: text)")
 
@@ -400,15 +408,26 @@ def _issue(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int
         return EXIT_UNREADABLE
     status = EXIT_CLEAN
     progress = _progress(stderr)
+
+    def write(formats: Sequence[str]) -> str:
+        settings: Any = {"kinds": kinds, "formats": formats, "jobs": arguments.jobs, "progress": progress}
+        if arguments.package:
+            from loopdoc.documents.package import package
+
+            made = package(basis, arguments.package, **settings)
+            return f"{made.documents} documents in {made.folder} and {made.archive} ({made.files} files).\n"
+        issued = issue(basis, arguments.out, **settings)
+        return f"{issued.documents} documents in {issued.folder} ({len(issued.files)} files).\n"
+
     try:
-        issued = issue(basis, arguments.out, kinds=kinds, formats=formats, jobs=arguments.jobs, progress=progress)
+        told = write(formats)
     except PdfError as error:
         stderr.write(f"loopdoc: {error}\n")
-        if "html" not in formats:
+        if "html" not in formats or arguments.package:
             return EXIT_UNREADABLE
         status = EXIT_FOUND
-        issued = issue(basis, arguments.out, kinds=kinds, formats=["html"], jobs=1, progress=progress)
-    stdout.write(f"{issued.documents} documents in {issued.folder} ({len(issued.files)} files).\n")
+        told = write(["html"])
+    stdout.write(told)
     stdout.write(f"Check of the register: {summary(basis.result)}\n")
     return status
 
@@ -534,39 +553,49 @@ def _identify(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> 
 
 
 def _attest(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
-    from loopdoc.documents.attest import Attestation, Attested, NotIssued
-    from loopdoc.documents.attest_report import report_json, report_text
+    from loopdoc.documents.attest import Attestation, NotIssued
+    from loopdoc.documents.attest_package import is_package, open_package, verify
+    from loopdoc.documents.attest_report import packages_text, report_json, report_text
     from loopdoc.documents.pdf import PdfError
     from loopdoc.exchange.escaping import for_terminal
     from loopdoc.register.files import is_register
 
     registers = [path for path in arguments.paths if is_register(path)]
-    files = [
-        file
+    packages = {str(path): open_package(path) for path in arguments.paths if is_package(path)}
+    files: list[tuple[str, Callable[[], bytes]]] = [
+        (str(file), file.read_bytes)
         for path in arguments.paths
-        if path not in registers
+        if path not in registers and str(path) not in packages
         for file in (sorted(path.rglob("*.pdf")) if path.is_dir() else (path,))
     ]
-    if len(registers) > 1 or not files:
-        stderr.write("loopdoc: name one file or more, or folders with PDF files, and at most one register\n")
+    for path, opened in packages.items():
+        if not isinstance(opened, NotIssued):
+            inside = (name for name in opened.names if name.endswith(".pdf"))
+            files += [(f"{path}/{name}", partial(opened.read, name)) for name in inside]
+    if len(registers) > 1 or not (files or packages):
+        stderr.write("loopdoc: name one file or more, packages or folders with PDF files, and at most one register\n")
         return EXIT_UNREADABLE
     against = _basis(registers[0], stderr, with_records=True) if registers else None
     if registers and against is None:
         return EXIT_UNREADABLE
+    verified = [
+        (path, opened if isinstance(opened, NotIssued) else verify(opened)) for path, opened in packages.items()
+    ]
     attestation = Attestation(against)
     try:
-        answered = [(str(file), attestation.attest(file.read_bytes())) for file in files]
+        answered = [(name, attestation.attest(read())) for name, read in files]
     except PdfError as error:
         stderr.write(f"loopdoc: {error}\n")
         return EXIT_UNREADABLE
     named = str(registers[0]) if registers else ""
     if arguments.format == "json":
-        stdout.write(report_json(answered, against=named))
+        stdout.write(report_json(answered, against=named, verified=verified))
     else:
-        stdout.write(for_terminal(report_text(answered, against=named)))
-    if any(isinstance(found, NotIssued) for _, found in answered):
+        stdout.write(for_terminal(packages_text(verified) + report_text(answered, against=named)))
+    if any(isinstance(found, NotIssued) for _, found in (*verified, *answered)):
         return EXIT_UNREADABLE
-    return EXIT_FOUND if any(isinstance(one, Attested) and one.doubted for _, one in answered) else EXIT_CLEAN
+    doubted = any(not isinstance(found, NotIssued) and found.doubted for _, found in (*verified, *answered))
+    return EXIT_FOUND if doubted else EXIT_CLEAN
 
 
 def _record(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:

@@ -20,6 +20,7 @@ from loopdoc import __version__
 from loopdoc.documents.basis import Basis, basis_of
 from loopdoc.documents.enclosures import (
     AGAINST_FOLDER,
+    PACKAGE_INDEX_KIND,
     REGISTER_FOLDER,
     RESULTS_KIND,
     RESULTS_NAME,
@@ -149,6 +150,8 @@ class Attestation:
         if told.program != f"loopdoc {__version__}":
             reason = f"it was issued by {told.program}, and only that version makes the same bytes again"
             return Answer.NOT_CHECKED, reason
+        if told.kind == PACKAGE_INDEX_KIND:
+            return Answer.NOT_CHECKED, "it lists the files of a package: attest the package's folder or archive"
         basis = self._basis_of(enclosed)
         if isinstance(basis, Unreadable):
             return Answer.NO, "the register inside cannot be read"
@@ -183,6 +186,9 @@ class Attestation:
         told = enclosed.statement
         if self._register is None:
             return Answer.NOT_CHECKED, ""
+        if told.kind == PACKAGE_INDEX_KIND:
+            same = fingerprint(self._register.sources) == told.fingerprint
+            return (Answer.YES, "") if same else (Answer.NO, "stale: the register is no longer that of the package")
         now = self._statements(self._register, told.kind).get((told.folder, told.name))
         if now is None:
             return Answer.NO, "the register no longer has what this document tells of"

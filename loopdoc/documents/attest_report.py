@@ -7,6 +7,7 @@ from collections.abc import Sequence
 from dataclasses import asdict
 
 from loopdoc.documents.attest import Answer, Attested, NotIssued
+from loopdoc.documents.attest_package import Verified
 
 CAUTION = (
     "A file bears no signature: this tells a file that was altered or is out of date, not who issued it. It does not "
@@ -20,6 +21,21 @@ _QUESTIONS = (
 
 Answered = tuple[str, Attested | NotIssued]
 """Name of a file and what was found out about it."""
+
+
+def packages_text(verified: Sequence[tuple[str, Verified | NotIssued]]) -> str:
+    """One paragraph a package, with every file that is not as listed."""
+    lines = []
+    for name, found in verified:
+        if isinstance(found, NotIssued):
+            lines += [f"{name}: {found.reason}", ""]
+            continue
+        state = "not as written" if found.doubted else "every file is as listed"
+        lines.append(f"{name}: package of {found.files} files, {state}")
+        for word, files in (("missing", found.missing), ("altered", found.altered), ("not listed", found.unlisted)):
+            lines += [f"    {word:11}  {file}" for file in files]
+        lines.append("")
+    return "\n".join((*lines, ""))
 
 
 def report_text(answered: Sequence[Answered], *, against: str) -> str:
@@ -44,8 +60,16 @@ def report_text(answered: Sequence[Answered], *, against: str) -> str:
     return "\n".join((*lines, CAUTION, ""))
 
 
-def report_json(answered: Sequence[Answered], *, against: str) -> str:
-    """One object a file under `files`."""
+def report_json(
+    answered: Sequence[Answered], *, against: str, verified: Sequence[tuple[str, Verified | NotIssued]] = ()
+) -> str:
+    """One object a file under `files`, and one a package under `packages`."""
+    packages = [
+        {"file": name, "issued": False, "reason": found.reason}
+        if isinstance(found, NotIssued)
+        else {"file": name, "issued": True, **asdict(found)}
+        for name, found in verified
+    ]
     files = [
         {"file": name, "issued": False, "reason": found.reason}
         if isinstance(found, NotIssued)
@@ -58,4 +82,5 @@ def report_json(answered: Sequence[Answered], *, against: str) -> str:
         }
         for name, found in answered
     ]
-    return json.dumps({"register": against or None, "files": files, "caution": CAUTION}, indent=2) + "\n"
+    told = {"register": against or None, "packages": packages, "files": files, "caution": CAUTION}
+    return json.dumps(told, indent=2) + "\n"

@@ -24,6 +24,8 @@ REGISTER_FOLDER = "register/"
 """Before the names of the register's files, so that none of them can be taken for the statement."""
 RESULTS_KIND = "check-record"
 """The kind of document that shows results of loop checks."""
+PACKAGE_INDEX_KIND = "document-index"
+"""The kind of the index of a package, which no register gives without the files that it lists."""
 RESULTS_NAME = "results.yaml"
 """Results of loop checks that a check record shows; they are no part of the register and its fingerprint."""
 
