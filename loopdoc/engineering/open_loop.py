@@ -116,7 +116,7 @@ def open_loops(levels: Sequence[LevelArrays], w: FloatArray) -> list[ComplexArra
 
 def _fill(levels: Sequence[LevelArrays], w: FloatArray, loops: Sequence[ComplexArray]) -> None:
     """Write the open loop of every level, in place throughout: fetching new memory would take most of the time."""
-    s: ComplexArray = 1j * w
+    s: ComplexArray = np.multiply(1j, w)
     per_s = -1j / w
     below: ComplexArray = np.ones((1, 1), dtype=np.complex128)
     factor: ComplexArray = np.empty_like(s)

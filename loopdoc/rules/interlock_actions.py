@@ -52,8 +52,8 @@ def interlock_action_unsafe(interlock: Interlock, plant: Plant) -> Iterator[Draf
             yield draft(
                 interlock.tag,
                 f"it {_DOES[position]} {element.tag}, whose safe position is {safe}",
-                remedy=f"write `{element.tag}: {_ordered(element, safe)}`, or correct the safe position after the hazard "
-                "study",
+                remedy=f"write `{element.tag}: {_ordered(element, safe)}`, or correct the safe position after the "
+                "hazard study",
                 at=action.origin.place(),
                 related=((element.origin.place("safe"), f"the safe position of {element.tag}, {safe}"),),
                 level=Level.ERROR if known(interlock.layer) == "safety" else Level.WARNING,
