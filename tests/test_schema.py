@@ -86,7 +86,7 @@ loops:
     alarms:
       high_high: {limit: 97 degC}
       high: {limit: 94 degC, deadband: 0.6 degC, delay: 10 s, priority: medium, cause: Steam valve open,
-             consequence: {hold: hazard study}, response: Close FV-2011, time_to_respond: 10 min}
+             consequence: {hold: hazard study}, response: Close FV-2011, time_to_respond: 10 min, warns_of: {FIC-3003: high}}
       low: {limit: 80 degC}
       low_low: {limit: 76 degC}
       deviation: {limit: 3 degC}

@@ -1,4 +1,4 @@
-"""One fault a register, put into the example registers: each is found by the rule that is meant for it, and by it alone.
+"""One fault a register, put into the examples: each is found by the rule that is meant for it, and by it alone.
 
 A fault is a change of values, named by tag and JSON Pointer (`FIC-1002/measurement/range`), so that it stays where it
 is when lines move. What the check finds beyond the unchanged register must be the finding that is meant, at its place,

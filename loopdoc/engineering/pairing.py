@@ -154,6 +154,15 @@ class Plant:
         return tuple(LoopAlarm(loop, alarm) for loop in self.register.loops.values() for alarm in loop.alarms.values())
 
     @cached_property
+    def warning_of(self) -> dict[tuple[str, str], tuple[LoopAlarm, ...]]:
+        """The alarms of other loops that are said to tell of a hazard, by the tag of the loop and the side."""
+        found: dict[tuple[str, str], list[LoopAlarm]] = {}
+        for entry in self.alarms:
+            for hazard in entry.alarm.warns_of.items():
+                found.setdefault(hazard, []).append(entry)
+        return {hazard: tuple(alarms) for hazard, alarms in found.items()}
+
+    @cached_property
     def alarms_of_unit(self) -> dict[str, tuple[LoopAlarm, ...]]:
         """The alarms of each process unit, by its number."""
         found: dict[str, list[LoopAlarm]] = {}

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 
-from loopdoc.engineering.direction import PathSign, Undecided, path_sign, process_on
+from loopdoc.engineering.direction import PathSign, Undecided, curve_sign, path_sign, process_on
 from loopdoc.engineering.pairing import ControlledLoop, Route
 from loopdoc.register.model import FinalElement, Hold, Process, known
 from loopdoc.register.place import Place
@@ -68,7 +68,15 @@ def action_undecided(controlled: ControlledLoop) -> Iterator[Draft]:
     """
     paths = _paths(controlled)
     told = set()
+    turning = {
+        function.tag
+        for route in controlled.routes
+        for function in route.via
+        if known(function.kind) == "characteriser" and isinstance(curve_sign(function), Undecided)
+    }
     for route, path in zip(controlled.routes, paths, strict=True):
+        if turning & {function.tag for function in route.via}:
+            continue  # `characteriser-not-monotonic` tells of it, at the curve
         if isinstance(path, Undecided) and path.reason not in told:
             told.add(path.reason)
             yield draft(

@@ -347,9 +347,10 @@ def alarm_missing_for_hazard(loop: Loop, plant: Plant) -> Iterator[Draft]:
         `hazard: high` with a low alarm only; `hazard: both` with one of the two.
     Holds:
         A high or high-high alarm for a hazard of high, a low or low-low alarm for one of low, on this loop or on
-        another that measures the same quantity. A deviation alarm moves with the setpoint and does not count.
+        another that measures the same quantity; or an alarm on another quantity that says so (`warns_of: {AIC-2015:
+        high}`). A deviation alarm moves with the setpoint and does not count.
     What this check cannot see:
-        An alarm on another quantity that tells of the same hazard: say so in a deviation.
+        Whether an alarm on another quantity that is said to warn of the hazard comes in time.
     """
     hazard = need(loop.hazard, "the hazard")
     only_if(hazard != "none")
@@ -358,6 +359,7 @@ def alarm_missing_for_hazard(loop: Loop, plant: Plant) -> Iterator[Draft]:
         side
         for side in (SIDES if hazard == "both" else (hazard,))
         if not any(kind in one.alarms for one in watching for kind in SIDES.get(side, ()))
+        and (loop.tag, side) not in plant.warning_of
     ]
     if lacking and any(alarms_held(one, plant) for one in watching):
         not_checked("the alarms are on hold")
@@ -365,7 +367,8 @@ def alarm_missing_for_hazard(loop: Loop, plant: Plant) -> Iterator[Draft]:
         yield draft(
             loop.tag,
             f"a {side} value is a hazard, but no {side} alarm tells of it",
-            remedy=f"write a `{side}` alarm with its response, or say in a deviation what else warns of it",
+            remedy=f"write a `{side}` alarm with its response, or `warns_of: {{{loop.tag}: {side}}}` at the alarm that "
+            "tells of it",
             at=loop.origin.place("hazard"),
         )
 

@@ -37,8 +37,9 @@ def measurement_fault_unsafe(controlled: ControlledLoop, failures: FailureAnalys
         declared fault does it, or where an interlock trips on this very transmitter and is blind with it.
     Holds:
         Where a reading that is too high, too low or failed drives its own measurement to its hazard, there is at
-        least one alarm or trip with another sensor on something that the failure moves, an interlock with other
-        sensors that moves the final element back, or another controller that works against it.
+        least one alarm or trip with another sensor on something that the failure moves, an alarm that says that it
+        `warns_of` this hazard, an interlock with other sensors that moves the final element back, or another controller
+        that works against it.
     What this check cannot see:
         Whether that alarm or trip is reached in time, and relief valves, bunds and other layers that are no loop: say
         so in a deviation.
@@ -87,7 +88,8 @@ def _unopposed(
         controlled.tag,
         f"when {sensor} {_READINGS[effect.failure]}, {', '.join(moves)} and the measurement of {loop.tag} goes {side}, "
         f"which is its hazard; no alarm and no trip with another sensor stands against it{blinded}",
-        remedy="give it an alarm or a trip on a second transmitter, or say in a deviation what stands against it",
+        remedy=f"give it an alarm or a trip on a second transmitter, write `warns_of: {{{loop.tag}: {side}}}` at the "
+        "alarm that tells of it, or say in a deviation what stands against it",
         at=controlled.loop.origin.place("measurement", "on_fault" if declared else "transmitter"),
         related=(
             (loop.origin.place("hazard"), f"the hazard of {loop.tag}, {known(loop.hazard)}"),

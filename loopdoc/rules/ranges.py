@@ -15,6 +15,7 @@ from loopdoc.rules.finding import Level
 from loopdoc.rules.policy import Limits
 from loopdoc.rules.rule import Draft, NotChecked, draft, need, not_checked, only_if, rule
 from loopdoc.rules.values import (
+    Reading,
     Scale,
     above,
     amount,
@@ -167,7 +168,8 @@ def operating_outside_range(loop: Loop) -> Iterator[Draft]:
 
 def _outside(loop: Loop, group: Part, name: str) -> Iterator[Draft]:
     band = measured_range(loop)
-    found, lacking = [], None
+    found: list[Reading] = []
+    lacking = None
     try:
         read = readings(group, ("low", "normal", "high"), scale_in(band.unit, loop), name)
         found.extend(value for value in read if above(value.value, band.high) or below(value.value, band.low))

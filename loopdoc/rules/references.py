@@ -158,6 +158,11 @@ def _of_loop(loop: Loop, plant: Plant, commanded: Names) -> Iterator[Reference]:
     if output is not None and to is not None:
         where = "the destination of the output"
         yield Reference(loop.tag, where, to, commanded, output.origin, ("to",), False)
+    loops = Names("a loop", plant.register.loops)
+    for alarm in loop.alarms.values():
+        for tag in alarm.warns_of:
+            where = f"what the {alarm.kind.replace('_', '-')} alarm warns of"
+            yield Reference(loop.tag, where, tag, loops, alarm.origin, ("warns_of", tag), True)
     process = known(loop.process)
     if process is not None and process.branches and loop.tag in plant.controlled:
         routes = plant.controlled[loop.tag].routes
