@@ -14,9 +14,12 @@
   // Hyphens and blanks inside a tag do not matter: tic2014 finds TIC-2014.
   const plain = (text) => text.toLowerCase().replace(/[-\u2010-\u2015_/.]/g, "");
   const rows = [...body.rows].map((row, index) => ({
-    row, index, shown: plain(row.textContent), also: also[index] || "", all: plain(row.textContent + " " + (also[index] || "")),
+    row, index, name: plain(row.cells[0].textContent), shown: plain(row.textContent), also: also[index] || "",
+    own: plain((also[index] || "").split("\n")[0]), all: plain(row.textContent + " " + (also[index] || "")),
   }));
   let order = rows;
+  let sorted = false;
+  let inOrder = true;
   let limit = PAGE;
 
   function fits(entry, words) {
@@ -45,20 +48,34 @@
     entry.row.cells[1].append(note);
   }
 
+  // What is asked for by name stands first, what only mentions it last.
+  function rank(entry, words) {
+    const at = ["name", "shown", "own"].findIndex((where) => words.every((word) => entry[where].includes(word)));
+    return at < 0 ? 3 : at;
+  }
+
   function show() {
     const words = find.value.trim().split(/\s+/).map(plain).filter(Boolean);
-    let count = 0;
-    for (const entry of order) {
-      const found = fits(entry, words);
-      if (found) count += 1;
-      const beyond = found && count > limit;
-      entry.row.hidden = !found || beyond;
-      entry.row.classList.toggle("paged", beyond);
-      if (found && !beyond) tell(entry, words);
+    let found = order.filter((entry) => fits(entry, words));
+    if (words.length && !sorted) {
+      found.forEach((entry) => { entry.rank = rank(entry, words); });
+      found = found.sort((a, b) => a.rank - b.rank || a.index - b.index);
+    }
+    const seen = new Set(found.slice(0, limit));
+    const beyond = new Set(found.slice(limit));
+    // Only what is seen is moved: a large table takes long to put together anew.
+    if (!inOrder) body.append(...order.map((entry) => entry.row));
+    inOrder = !words.length || sorted;
+    if (!inOrder) body.prepend(...[...seen].map((entry) => entry.row));
+    for (const entry of rows) {
+      const hidden = !seen.has(entry);
+      if (entry.row.hidden !== hidden) entry.row.hidden = hidden;
+      if (hidden && entry.row.classList.contains("paged") !== beyond.has(entry)) entry.row.classList.toggle("paged");
+      if (!hidden) tell(entry, words);
     }
     const noun = form.dataset.noun;
-    said.textContent = `${count} of ${rows.length} ${noun}` + (count > limit ? `, the first ${limit} shown` : "");
-    more.hidden = count <= limit;
+    said.textContent = `${found.length} of ${rows.length} ${noun}` + (beyond.size ? `, the first ${limit} shown` : "");
+    more.hidden = !beyond.size;
   }
 
   function remember() {
@@ -92,6 +109,8 @@
       const now = !was ? first : was === first ? second : null;
       heads.forEach((other) => other.removeAttribute("aria-sort"));
       order = [...rows];
+      sorted = Boolean(now);
+      inOrder = false;
       if (now) {
         head.setAttribute("aria-sort", now);
         const keys = rows.map((entry) => {
@@ -102,7 +121,6 @@
         // Rows that say nothing stand last whichever way.
         order.sort((a, b) => (!keys[a.index] - !keys[b.index]) || turn * compare(keys[a.index], keys[b.index]) || a.index - b.index);
       }
-      body.append(...order.map((entry) => entry.row));
       show();
     });
   });

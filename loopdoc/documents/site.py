@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import re
-from collections.abc import Collection, Iterator, Mapping, Sequence
+from collections.abc import Collection, Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from itertools import pairwise
 from typing import Any
@@ -275,12 +275,23 @@ class Site:
         names = {number: known(unit.name) or "" for number, unit in register.units.items()}
         view = {
             "rows": rows,
+            "first_of_unit": {
+                index: f"unit={unit}" for unit, index in _first(row.unit for row in rows).items() if unit
+            },
             "units": choices((row.unit, f"{row.unit} {names.get(row.unit, '')}".strip()) for row in rows if row.unit),
             "kinds": choices((row.kind, row.kind) for row in rows),
             "documents": len(self._places.issued),
         }
         page = Page("", INDEX, document, "index.html", view)
         return page, self._frame(INDEX, page, data={"also": [row.also for row in rows]})
+
+
+def _first(values: Iterable[str]) -> dict[str, int]:
+    """Where each value stands first, counted from 0."""
+    found: dict[str, int] = {}
+    for index, value in enumerate(values):
+        found.setdefault(value, index)
+    return found
 
 
 def _escaped(found: re.Match[str]) -> str:

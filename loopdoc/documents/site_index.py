@@ -106,7 +106,7 @@ class _Rows:
             unit = next((number for number in self._plant.register.units if file_name(number) == one.page.name), "")
             yield Row(
                 Link(document.number, address(one.path, ending=f".{form}")), document.title, unit, document.kind,
-                None, None, tuple(self._files(one, "")), document.supplementary_title,
+                None, None, tuple(self._files(one, "")[1:]), document.supplementary_title,
             )  # fmt: skip
 
     def _name(self, tag: str, kind: str, name: str, at: str = "") -> Link:
@@ -132,10 +132,12 @@ class _Rows:
             if one is not None and (kind != "response" or loop.tag in self._plant.controlled):
                 yield from self._files(one, label)
 
-    def _files(self, one: Issue, label: str) -> Iterator[Link]:
-        for form in self._places.formats:
-            said = label if label and form == "html" else form.upper()
-            yield Link(said, address(one.path, ending=f".{form}"), one.page.document.kind)
+    def _files(self, one: Issue, label: str) -> list[Link]:
+        return [
+            Link(said, address(one.path, ending=f".{form}"), one.page.document.kind)
+            for form in self._places.formats
+            for said in (label if form == "html" else form.upper(),)
+        ]
 
     def _numbers(self, loop: Loop) -> Iterator[str]:
         for kind in PER_LOOP:
