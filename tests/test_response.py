@@ -99,6 +99,25 @@ def test_a_process_that_answers_at_once_is_not_simulated_without_an_interval(tmp
     assert "scenarios" in scanned
 
 
+def test_where_a_model_comes_from_is_told(tmp_path: Path) -> None:
+    process = "gain: 1.5 degC per %, lag: 5 min, dead_time: 20 s"
+    for written, told in (
+        (", source: step test 2026-05-14", "step test 2026-05-14"),
+        (", source: {hold: test in week 12}", "on hold (test in week 12)"),
+        ("", "no source given"),
+    ):
+        found, text = response(tmp_path, "TIC-1001", heater("gain: 1, reset: 5 min", process + written))
+        assert found["process_sources"] == {"TIC-1001": told}
+        assert f"process models from: TIC-1001 {told}\n" in text
+
+
+def test_what_a_register_writes_cannot_command_a_build_log(tmp_path: Path) -> None:
+    process = 'gain: 1.5 degC per %, lag: 5 min, dead_time: 20 s, source: "##[error]test"'
+    _, text = response(tmp_path, "TIC-1001", heater("gain: 1, reset: 5 min", process))
+    assert "[error]test" in text
+    assert "##[" not in text
+
+
 # ---------------------------------------------------------------- margins
 
 

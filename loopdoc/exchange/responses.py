@@ -11,12 +11,13 @@ from loopdoc.engineering.comparison import UPSET_PCT, Comparison, NotSimulated, 
 from loopdoc.engineering.dynamics import ChainDynamics, LoopDynamics
 from loopdoc.engineering.frequency import speed_ratio
 from loopdoc.engineering.response_metrics import ResponseMetrics
-from loopdoc.engineering.stages import measured_range
+from loopdoc.engineering.stages import Chain, measured_range
 from loopdoc.engineering.tuning_table import CAUTION as REVIEW_CAUTION
 from loopdoc.engineering.tuning_table import quoted_gain_margin, quoted_phase_margin
-from loopdoc.exchange.escaping import for_json
+from loopdoc.exchange.escaping import for_json, for_terminal
 from loopdoc.exchange.findings import CAUTION
 from loopdoc.exchange.tuning_review import Reviews, margins_object, number, review_lines, reviews_object
+from loopdoc.register.model import Hold, known
 from loopdoc.register.quantity import Range, display_number
 from loopdoc.rules.policy import Limits
 
@@ -52,6 +53,7 @@ def _chain_object(dynamics: ChainDynamics, comparison: Comparison | NotSimulated
     else:
         found |= {"inner": margins[-2], "outer": margins[-1], "speed_ratio": number(dynamics.speed_ratio)}
         found["margins_by_level"] = dict(zip(levels, margins, strict=True))
+    found["process_sources"] = _model_sources(dynamics.chain)
     own = measured_range(dynamics.chain.lead)
     found["unit"] = own.unit.symbol
     if isinstance(comparison, NotSimulated):
@@ -120,7 +122,7 @@ def response_text(
         lines.append("")
     lines.extend(review_lines(reviews, limits))
     lines.append(f"{CAUTION} {REVIEW_CAUTION}")
-    return "\n".join(lines) + "\n"
+    return for_terminal("\n".join(lines)) + "\n"
 
 
 def _chain_lines(dynamics: ChainDynamics, comparison: Comparison | NotSimulated) -> list[str]:
@@ -152,9 +154,23 @@ def _chain_lines(dynamics: ChainDynamics, comparison: Comparison | NotSimulated)
         f"speed ratio of the crossovers, {inner.loop.tag} over {outer.loop.tag}: {_shown(speed_ratio(fast, slow))}"
         for (outer, slow), (inner, fast) in pairwise(reversed(levels))
     )
+    sources = [f"{tag} {source}" for tag, source in _model_sources(chain).items()]
+    lines.append(f"process models from: {'; '.join(sources)}")
     if isinstance(comparison, NotSimulated):
         return [*lines, f"no time responses: {comparison.reason}"]
     return [*lines, "", *_scenario_lines(comparison)]
+
+
+def _model_sources(chain: Chain) -> dict[str, str]:
+    """Where each process model of a chain comes from, outermost loop first."""
+    found = {}
+    for level in reversed(chain.levels):
+        process = known(level.loop.loop.process)
+        branch = process.branches.get(chain.final_element.tag) if process else None
+        source = (branch and branch.source) or (process and process.source)
+        told = f"on hold ({source.reason})" if isinstance(source, Hold) else source
+        found[level.loop.tag] = told or "no source given"
+    return found
 
 
 def _scenario_lines(comparison: Comparison) -> Iterator[str]:
