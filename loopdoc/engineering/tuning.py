@@ -361,7 +361,7 @@ def simc_at_sensitivities(
     for _ in range(5):
         if not rows:
             break
-        spread = np.array([middle[i] for i in rows])[:, None] + math.log(2.0) * np.arange(-3.0, 4.0)
+        spread = np.array([middle[i] for i in rows])[:, None] + math.log(2.0) * np.array([-3.0, -1.0, 1.0, 3.0])
         values = excess(rows, spread)
         for i, x, f in zip(list(rows), spread, values, strict=True):
             if f[0] < 0.0 or f[-1] >= 0.0:
@@ -371,18 +371,28 @@ def simc_at_sensitivities(
             low[i], f_low[i], high[i], f_high[i] = x[last], f[last], x[last + 1], f[last + 1]
             bracketed.append(i)
             rows.remove(i)
-    open_rows = bracketed
-    for _ in range(40):
-        if not open_rows:
+    at = np.array(bracketed, dtype=np.intp)
+    # By inverse quadratic interpolation where the last three points allow it, else by halving (T. R. Chandrupatla,
+    # Adv. Eng. Software 28:145-149, 1997, from memory); the first step is a straight line.
+    share = f_high[at] / (f_high[at] - f_low[at])
+    for _ in range(60):
+        if not len(at):
             break
-        at = np.array(open_rows)
-        x = high[at] - f_high[at] * (high[at] - low[at]) / (f_high[at] - f_low[at])
-        f = excess(open_rows, x[:, None])[:, 0]
-        crossed = f * f_high[at] < 0.0
-        low[at] = np.where(crossed, high[at], low[at])
-        f_low[at] = np.where(crossed, f_high[at], 0.5 * f_low[at])
-        high[at], f_high[at] = x, f
-        open_rows = [i for i, value in zip(open_rows, f, strict=True) if abs(value) > 1e-7]
+        newest, f_newest, other, f_other = high[at], f_high[at], low[at], f_low[at]
+        x = newest + share * (other - newest)
+        f = excess(at.tolist(), x[:, None])[:, 0]
+        same = f * f_newest > 0.0
+        before, f_before = np.where(same, newest, other), np.where(same, f_newest, f_other)
+        other, f_other = np.where(same, other, newest), np.where(same, f_other, f_newest)
+        high[at], f_high[at], low[at], f_low[at] = x, f, other, f_other
+        with np.errstate(divide="ignore", invalid="ignore"):
+            xi, phi = (x - other) / (before - other), (f - f_other) / (f_before - f_other)
+            bent = (phi**2 < xi) & ((1.0 - phi) ** 2 < 1.0 - xi)
+            share = f / (f_other - f) * f_before / (f_other - f_before)
+            share += (before - x) / (other - x) * f / (f_before - f) * f_other / (f_before - f_other)
+        share = np.where(bent, share, 0.5)
+        left = np.abs(f) > 1e-7
+        at, share = at[left], share[left]
     for i in bracketed:
         found[i] = loops[i].tuning(math.exp(high[i]), math.exp(target[i] + f_high[i]))
     return tuple(found)
