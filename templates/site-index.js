@@ -63,10 +63,11 @@
     }
     const seen = new Set(found.slice(0, limit));
     const beyond = new Set(found.slice(limit));
-    // Only what is seen is moved: a large table takes long to put together anew.
-    if (!inOrder) body.append(...order.map((entry) => entry.row));
-    inOrder = !words.length || sorted;
-    if (!inOrder) body.prepend(...[...seen].map((entry) => entry.row));
+    // Only what is seen is moved: to put a large table together anew takes long.
+    const ranked = words.length && !sorted;
+    if (ranked) body.prepend(...[...seen].map((entry) => entry.row));
+    else if (!inOrder) body.append(...order.map((entry) => entry.row));
+    inOrder = !ranked;
     for (const entry of rows) {
       const hidden = !seen.has(entry);
       if (entry.row.hidden !== hidden) entry.row.hidden = hidden;

@@ -202,7 +202,7 @@ def test_search_and_filters_of_the_index(site: Path, browser: Browser) -> None:
     found = shown.found
     assert shown.console == ()
     assert found["visible"]
-    assert found["tag"] == ["FIC-1002", "LIC-1001", "IS-1001"]  # itself, then what mentions it
+    assert found["tag"] == ["FIC-1002", "IS-1001", "LIC-1001"]  # itself, what acts on it, what mentions it
     assert found["service"] == ["LI-1005"]
     assert found["finding"] == ["FIC-1002"]
     assert "cascade-too-slow" in found["match"]
