@@ -208,12 +208,11 @@ def secondary_range_short(link: CascadeLink, plant: Plant) -> Iterator[Draft]:
         TIC-2014 asks for 0 to 12 t/h and FIC-2011 measures 0 to 10 t/h.
     Holds:
         The secondary's range covers the primary's output span, as it arrives through the functions between
-        them: selectors pass it on, a sum adds and a ratio multiplies by its inputs as the plant runs
-        (`operating`). Output limits do not shorten the span: they can be opened from a keyboard, a range
-        cannot.
+        them: selectors pass it on, a characteriser bends it by its curve, a sum adds and a ratio multiplies by
+        its inputs as the plant runs (`operating`). Output limits do not shorten the span: they can be opened
+        from a keyboard, a range cannot.
     What this check cannot see:
-        What a characteriser makes of the output (not checked), and whether the plant can deliver what the
-        secondary can measure.
+        Whether the plant can deliver what the secondary can measure.
     """
     primary, secondary = link.primary, link.secondary
     output = need(primary.controller.output, "the primary's output")
