@@ -129,7 +129,7 @@ def loaded_after(program: str) -> set[str]:
 
 
 # Slow to import, and of no use before a document is issued or a response computed.
-HEAVY = {"matplotlib", "weasyprint", "jinja2", "scipy", "control"}
+HEAVY = {"matplotlib", "weasyprint", "jinja2", "scipy", "control", "numba"}
 
 
 def test_the_command_line_starts_without_heavy_libraries() -> None:

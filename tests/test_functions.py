@@ -11,7 +11,8 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from loopdoc.engineering.comparison import NotSimulated, compare
+from loopdoc.engineering.clock import Clock
+from loopdoc.engineering.comparison import Comparison, compare
 from loopdoc.engineering.demand import Demand, demand
 from loopdoc.engineering.direction import PathSign, Undecided, path_sign
 from loopdoc.engineering.dynamics import Dynamics
@@ -22,7 +23,9 @@ from loopdoc.engineering.pairing import Plant
 from loopdoc.engineering.pid import Controller
 from loopdoc.engineering.process import Process
 from loopdoc.engineering.sampled import sampled_margins
+from loopdoc.engineering.simulation import simulate
 from loopdoc.engineering.stages import Chain, Lacking, chains
+from loopdoc.engineering.structure import FinalElement, Scenario, cascade_structure
 from loopdoc.register.load import Loaded, load
 
 ROOT = """\
@@ -284,11 +287,29 @@ def test_a_sampled_lead_lag_is_the_difference_equation_of_its_lag() -> None:
         assert ours.phase_margin_deg == pytest.approx(theirs.phase_margin_deg, rel=1e-9)
 
 
-def test_a_lead_lag_in_the_path_is_not_simulated_and_said_so(tmp_path: Path) -> None:
+def test_a_lead_lag_in_the_path_is_simulated(tmp_path: Path) -> None:
     dynamics = Dynamics(plant_of(tmp_path, before_valve("kind: lead-lag, lead: 3 s, lag: 1.5 s"))).loop(FLOW).chains[0]
     compared = compare(dynamics)
-    assert isinstance(compared, NotSimulated)
-    assert compared.reason == "a lead-lag stands between FIC-2011 and what it commands, which is not simulated"
+    assert isinstance(compared, Comparison)
+    step = compared.scenarios[0].tuned
+    output = step.output_pct[0]
+    assert output is not None
+    # The first of the valve's travel is lead over lag of the output's, less what the lag has gone in one scan.
+    ahead = 2.0 - (1.0 - math.exp(-0.5 / 1.5))
+    start_pct = float(step.travel_pct[0] - (output[0] - 50.0) * ahead)
+    assert start_pct == pytest.approx(50.0, abs=1e-9)
+
+
+@pytest.mark.parametrize(("lead_s", "lag_s"), [(3.0, 1.5), (0.0, 4.0), (2.0, 2.0)])
+def test_a_lead_lag_answers_a_lasting_output_as_in_closed_form(lead_s: float, lag_s: float) -> None:
+    # Proportional on a process too slow to be seen: the output steps once by 10 % and stays.
+    stage = LoopStage(Controller(1.0, interval_s=0.5), Process(1.0, (1e9,)), (LeadLag(lead_s, lag_s),))
+    structure = cascade_structure([stage], final_element=FinalElement())
+    response = simulate([structure], [Scenario("sp", setpoint_step_pct=10.0)], clock=Clock(0.5, 40))[0][0]
+    # Executed with the controller, the lag has gone its share of the way with the first scan.
+    lagged = 1.0 - np.exp(-(response.time_s + 0.5) / lag_s)
+    expected = lead_s / lag_s + (1.0 - lead_s / lag_s) * lagged
+    np.testing.assert_allclose(response.travel_pct - 50.0, 10.0 * expected, atol=1e-6)
 
 
 @pytest.mark.parametrize(("lead", "lag"), [(-1.0, 2.0), (1.0, 0.0), (math.inf, 1.0), (1.0, math.nan)])

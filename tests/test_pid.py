@@ -13,20 +13,18 @@ from loopdoc.engineering.pid import (
     ParallelSettings,
     SeriesSettings,
     StandardSettings,
-    at_rest,
     gain_from_proportional_band,
     on_secondary_range,
     parallel_from_standard,
     proportional_band_from_gain,
     repeats_from_reset,
     reset_from_repeats,
-    scan,
     scan_coefficients,
     series_from_standard,
     standard_from_parallel,
     standard_from_series,
-    track,
 )
+from loopdoc.engineering.scanning import CONTROLLER, MEMORY, Records, scan, track
 
 # --- forms ---------------------------------------------------------------------------------------
 
@@ -189,6 +187,14 @@ def test_an_output_span_without_width_is_refused() -> None:
 # --- the scanned algorithm -----------------------------------------------------------------------
 
 
+def scanned(controller: Controller, interval_s: float) -> tuple[Records, Records]:
+    """A controller and its memory as the simulation has them."""
+    records, memory = np.zeros(1, CONTROLLER), np.zeros(1, MEMORY)
+    for name, value in scan_coefficients([controller], np.array([interval_s]))._asdict().items():
+        records[name] = value
+    return records, memory
+
+
 def test_scans_equal_the_transfer_functions_of_their_parts() -> None:
     """P, I, D and the measurement filter by scipy's recursive filters, added up independently."""
     k, ti, td, n, b, c, tf, h = 1.7, 8.0, 3.0, 6.0, 0.7, 0.3, 2.0, 0.5
@@ -205,58 +211,37 @@ def test_scans_equal_the_transfer_functions_of_their_parts() -> None:
     )
     expected = k * (b * setpoint - filtered) + integral + derivative
 
-    coefficients = scan_coefficients([controller], np.array([h]))
-    state = at_rest(1)
-    found = [
-        scan(coefficients, state, setpoint[i : i + 1], measurement[i : i + 1])[0]
-        for i in range(len(setpoint))
-    ]
+    controllers, memories = scanned(controller, h)
+    found = [scan(controllers[0], memories[0], *at) for at in zip(setpoint, measurement, strict=True)]
     # The same sums in another order.
     np.testing.assert_allclose(found, expected, rtol=1e-9, atol=1e-9)
 
 
 def test_direct_action_mirrors_reverse_action() -> None:
-    controllers = [Controller(2.0, 10.0, 1.0), Controller(-2.0, 10.0, 1.0)]
-    coefficients = scan_coefficients(controllers, np.array([1.0, 1.0]))
-    state = at_rest(2)
+    parts = [scanned(Controller(gain, 10.0, 1.0), 1.0) for gain in (2.0, -2.0)]
     for _ in range(5):
-        output = scan(coefficients, state, np.zeros(2), np.ones(2))
+        output = [scan(controllers[0], memories[0], 0.0, 1.0) for controllers, memories in parts]
     # error = setpoint - measurement: with reverse action the output falls as the measurement rises.
     assert output[0] < 0.0
     assert output[1] == -output[0]
-
-
-def test_a_controller_that_is_not_due_keeps_its_memory_and_output() -> None:
-    controllers = [Controller(2.0, 10.0, 1.0, measurement_filter_s=1.5)] * 2
-    coefficients = scan_coefficients(controllers, np.array([1.0, 2.0]))
-    alone = scan_coefficients(controllers[1:], np.array([2.0]))
-    together, other = at_rest(2), at_rest(1)
-    measurement = np.random.default_rng(3).normal(size=12)
-    for k, value in enumerate(measurement):
-        due = np.array([True, k % 2 == 0])
-        output = scan(coefficients, together, np.ones(2), np.full(2, value), due=due)
-        if k % 2 == 0:
-            scan(alone, other, np.ones(1), np.full(1, value))
-        assert output[1] == other.output[0]
 
 
 @pytest.mark.parametrize("rate_s", [0.0, 4.0])
 def test_tracking_holds_the_integral_at_a_limit(rate_s: float) -> None:
     """Held at its limit by a lasting error, the output leaves it in the scan in which the error turns."""
     k, ti, h, limit = 2.0, 20.0, 1.0, 10.0
-    coefficients = scan_coefficients([Controller(k, ti, rate_s)], np.array([h]))
-    state = at_rest(1)
-    error = np.array([4.0])
+    controllers, memories = scanned(Controller(k, ti, rate_s), h)
+    error = 4.0
     for _ in range(500):
-        computed = scan(coefficients, state, error, np.zeros(1))
-        track(coefficients, state, np.minimum(computed, limit))
+        computed = scan(controllers[0], memories[0], error, 0.0)
+        track(controllers[0], memories[0], min(computed, limit))
     # At rest the tracking takes back what the integral adds: excess = K e (h/Ti)/(h/Tt).
     tracking_s = math.sqrt(ti * rate_s) if rate_s else ti
-    assert computed[0] - limit == pytest.approx(k * error[0] * tracking_s / ti, rel=1e-9)
+    assert computed - limit == pytest.approx(k * error * tracking_s / ti, rel=1e-9)
     if not rate_s:
         # With Tt = Ti this is external reset: with the next error added, the integral stands at the limit.
-        assert state.integral[0] + k * error[0] * h / ti == pytest.approx(limit, rel=1e-9)
-        assert scan(coefficients, state, np.array([-0.1]), np.zeros(1))[0] < limit
+        assert memories[0]["integral"] + k * error * h / ti == pytest.approx(limit, rel=1e-9)
+        assert scan(controllers[0], memories[0], -0.1, 0.0) < limit
 
 
 def test_an_interval_of_zero_cannot_be_scanned() -> None:

@@ -1,7 +1,7 @@
 """Time step and horizon of a simulation, chosen from the dynamics."""
 
 import math
-from collections.abc import Iterator, Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from functools import reduce
 
@@ -9,14 +9,11 @@ from loopdoc.engineering.frequency import LoopStage, Margins, analyse_chains
 from loopdoc.engineering.process import in_series
 from loopdoc.engineering.structure import ControlStructure
 
-# Above this many steps the interval is widened as far as the loops do not notice.
-_STEPS_WANTED = 3000
-_STEPS_MOST = 40_960
+# Some tens of nanoseconds each: a tenth of a second for one structure under one upset.
+_STEPS_MOST = 2_000_000
 _STEPS_LEAST = 512
 # What is not stable need not be watched for long.
 _STEPS_UNSTABLE = 4096
-# A widened interval may turn the phase at any crossover by this much [rad], about one degree.
-_PHASE_UNNOTICED = 0.02
 # Longest step, as a share of the inverse of the fastest crossover: of a controller that is meant to be
 # continuous, and of processes between the scans of one that is not.
 _CONTINUOUS = 0.02
@@ -27,29 +24,12 @@ HORIZON_PARTS = 8
 
 @dataclass(frozen=True, slots=True)
 class Clock:
-    """Time step and number of steps of a simulation."""
+    """Time step and number of steps of a simulation, for all structures that are compared."""
 
     step_s: float
     """Time step [s]."""
     steps: int
     """Number of steps."""
-
-
-@dataclass(frozen=True, slots=True)
-class GroupClock:
-    """Clock of structures that are compared."""
-
-    common: Clock
-    """On which all of them can run together."""
-    steps_at_once: tuple[int, ...]
-    """Per structure, how many of these steps it can take at once where it runs by itself."""
-
-    def of(self, structure: int) -> Clock:
-        """Return the clock of one structure where it runs by itself, at least as long as the common one."""
-        at_once = self.steps_at_once[structure]
-        if at_once == 1:
-            return self.common
-        return Clock(self.common.step_s * at_once, _round_up(self.common.steps / at_once))
 
 
 @dataclass(frozen=True, slots=True)
@@ -62,10 +42,12 @@ class Unsuited:
 def _controlled_chain(structure: ControlStructure) -> list[LoopStage]:
     """The loops of a structure, uncontrolled processes joined to the next loop out."""
     stages, waiting = [], []
-    for process, controller in zip(structure.processes, structure.controllers, strict=True):
+    for process, controller, lead_lags in zip(
+        structure.processes, structure.controllers, structure.lead_lags, strict=True
+    ):
         waiting.append(process)
         if controller is not None:
-            stages.append(LoopStage(controller, reduce(in_series, waiting)))
+            stages.append(LoopStage(controller, reduce(in_series, waiting), lead_lags))
             waiting = []
     return stages
 
@@ -96,35 +78,12 @@ def _common_interval_s(intervals_s: Sequence[float]) -> float:
 
 
 def _round_up(steps: float) -> int:
-    """A number of steps from a coarse series, so that many runs share theirs and can be looked at together.
-
-    The parts of a horizon are 8 to 15 times a power of two.
-    """
-    part = min(max(steps, _STEPS_LEAST), _STEPS_MOST) / HORIZON_PARTS
-    power = 1 << (math.floor(math.log2(part)) - 3)
-    return HORIZON_PARTS * power * math.ceil(part / power)
+    """A number of steps that has as many parts as a horizon, within what there may be."""
+    return HORIZON_PARTS * math.ceil(min(max(steps, _STEPS_LEAST), _STEPS_MOST) / HORIZON_PARTS)
 
 
-def _multiple(base_s: float, loops: Sequence[tuple[float, float]], *, wanted: int) -> int:
-    """Largest multiple of the base, up to the wanted one, at which no loop notices that it is scanned more seldom.
-
-    A loop that is scanned at a longer interval than the step needs that interval to be a multiple of it.
-    """
-    for interval, speed in loops:
-        if speed > 0.0:
-            wanted = min(wanted, int((interval + 2.0 * _PHASE_UNNOTICED / speed) / base_s))
-    longest = max(interval for interval, _ in loops)
-    if wanted * base_s >= longest:
-        return max(1, wanted)
-    for multiple in range(wanted, 1, -1):
-        ratios = [interval / (multiple * base_s) for interval, _ in loops if interval > multiple * base_s]
-        if all(math.isclose(ratio, round(ratio), rel_tol=1e-9) for ratio in ratios):
-            return multiple
-    return 1
-
-
-def _choose_clock(horizon_s: float, loops: Sequence[tuple[float, float]]) -> Clock:
-    """The clock of loops given as execution interval [s] and speed [rad/s].
+def _step_s(horizon_s: float, loops: Sequence[tuple[float, float]]) -> float:
+    """The time step [s] of loops given as execution interval [s] and speed [rad/s].
 
     The speed of a loop is its crossover, or without one that of its open loop; 0 if that takes no time.
     """
@@ -133,27 +92,20 @@ def _choose_clock(horizon_s: float, loops: Sequence[tuple[float, float]]) -> Clo
     shortest = 1.0 / fastest if fastest > 0.0 else horizon_s / 60.0
     executed = [interval for interval, _ in loops if interval > 0.0]
     if not executed:
-        step = _CONTINUOUS * shortest
-        return Clock(step_s=step, steps=_round_up(horizon_s / step))
+        return _CONTINUOUS * shortest
     base = _common_interval_s(executed)
-    step = base / math.ceil(base / (_BETWEEN_SCANS * shortest))
-    if step == base:
-        step *= _multiple(base, loops, wanted=math.ceil(horizon_s / base / _STEPS_WANTED))
-    return Clock(step_s=step, steps=_round_up(horizon_s / step))
+    return base / math.ceil(base / (_BETWEEN_SCANS * shortest))
 
 
 def _in_hours(time_s: float) -> str:
     return f"{time_s / 3600.0:.3g} h" if time_s >= 7200.0 else f"{time_s:.3g} s"
 
 
-def _choose_for(
-    group: Sequence[ControlStructure], margins: Iterator[tuple[Margins, ...]]
-) -> GroupClock | Unsuited:
+def _choose_for(group: Sequence[ControlStructure], margins: Sequence[Sequence[Margins]]) -> Clock | Unsuited:
+    """The clock of structures that are compared, given the margins of the loops of each."""
     horizon_s, open_loop_s, stable, loops = 0.0, 0.0, True, []
-    alone: list[tuple[float, float] | None] = []
-    for structure in group:
+    for structure, found in zip(group, margins, strict=True):
         chain = _controlled_chain(structure)
-        found = next(margins) if chain else ()
         horizon_s = max(horizon_s, _horizon_s(structure, chain, found))
         for process in structure.processes:
             open_loop_s = max(open_loop_s, math.fsum(process.lags_s) + process.dead_time_s)
@@ -164,54 +116,54 @@ def _choose_for(
                 open_loop = math.fsum(stage.process.lags_s) + stage.process.dead_time_s
                 speed = 1.0 / open_loop if open_loop > 0.0 else 0.0
             loops.append((stage.controller.interval_s, speed))
-        alone.append(loops[-1] if len(chain) == 1 else None)
     if horizon_s <= 0.0:
         return Unsuited("nothing in this structure takes time: there is no response to simulate")
-    clock = _choose_clock(horizon_s, loops)
+    step_s = _step_s(horizon_s, loops)
+    clock = Clock(step_s, _round_up(horizon_s / step_s))
     if not stable:
-        return GroupClock(Clock(clock.step_s, min(clock.steps, _STEPS_UNSTABLE)), (1,) * len(group))
-    if clock.step_s * clock.steps < min(horizon_s, 2.0 * open_loop_s):
-        needed = 2.0 * open_loop_s / clock.step_s
+        return Clock(step_s, min(clock.steps, _STEPS_UNSTABLE))
+    if step_s * clock.steps < min(horizon_s, 2.0 * open_loop_s):
         return Unsuited(
             f"lags and dead time of its slowest process add up to {_in_hours(open_loop_s)}, and its fastest loop must "
-            f"be followed every {clock.step_s:.3g} s: that would take {needed:,.0f} steps, where {_STEPS_MOST:,} are "
-            "the most; they are too far apart to be simulated together (margins need no simulation, and hold)"
+            f"be followed every {step_s:.3g} s: that would take {2.0 * open_loop_s / step_s:,.0f} steps, where "
+            f"{_STEPS_MOST:,} are the most; they are too far apart to be simulated together (margins need no "
+            "simulation, and hold)"
         )
-    return GroupClock(clock, tuple(1 if loop is None else _steps_of_its_own(clock, *loop) for loop in alone))
+    return clock
 
 
-def _steps_of_its_own(clock: Clock, interval_s: float, speed_rad_per_s: float) -> int:
-    """Steps that one loop by itself, given its interval [s] and speed [rad/s], can take at once: to its next scan."""
-    steps = round(interval_s / clock.step_s)
-    enough = steps * clock.step_s * speed_rad_per_s <= _BETWEEN_SCANS and clock.steps / max(steps, 1) >= _STEPS_LEAST
-    return steps if steps > 1 and enough else 1
-
-
-def choose_clocks(groups: Sequence[Sequence[ControlStructure]]) -> tuple[GroupClock | Unsuited, ...]:
+def choose_clocks(
+    groups: Sequence[Sequence[ControlStructure]],
+    *,
+    known: Mapping[ControlStructure, Sequence[Margins]] | None = None,
+) -> tuple[Clock | Unsuited, ...]:
     """Return one clock per group of structures that are to be compared, or why there is none.
 
-    The step is the common execution interval; shorter where the loops are too fast for it to show; longer
-    where thousands of steps would be needed and no crossover loses a degree of phase by it. The horizon
-    is several times the slowest lag or closed-loop mode, but at most 40,960 steps.
+    The step is the common execution interval; shorter where the loops are too fast for it to show. The horizon
+    is several times the slowest lag or closed-loop mode, but at most two million steps. ``known`` are the margins of
+    structures, innermost loop first, that need not be analysed again.
     """
-    chains: list[list[LoopStage]] = []
+    margins: dict[ControlStructure, Sequence[Margins]] = dict(known or {})
     refused: dict[int, Unsuited] = {}
+    unknown: dict[ControlStructure, list[LoopStage]] = {}
     for position, group in enumerate(groups):
         try:
-            found = [chain for structure in group if (chain := _controlled_chain(structure))]
+            unknown.update(
+                (structure, _controlled_chain(structure)) for structure in group if structure not in margins
+            )
         except ValueError as error:
             refused[position] = Unsuited(str(error))
-        else:
-            chains += found
-    margins = iter(analyse_chains(chains))
+    margins.update((structure, ()) for structure, chain in unknown.items() if not chain)
+    chains = {structure: chain for structure, chain in unknown.items() if chain}
+    margins.update(zip(chains, analyse_chains(list(chains.values())), strict=True))
     return tuple(
-        refused[position] if position in refused else _choose_for(group, margins)
+        refused[position]
+        if position in refused
+        else _choose_for(group, [margins[structure] for structure in group])
         for position, group in enumerate(groups)
     )
 
 
-def lasting(clock: GroupClock, least_s: float) -> GroupClock:
+def lasting(clock: Clock, least_s: float) -> Clock:
     """Return a clock of the same step that lasts at least so long, within the most steps there may be."""
-    common = clock.common
-    steps = max(common.steps, _round_up(least_s / common.step_s))
-    return GroupClock(Clock(common.step_s, steps), clock.steps_at_once)
+    return Clock(clock.step_s, max(clock.steps, _round_up(least_s / clock.step_s)))

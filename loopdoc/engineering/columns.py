@@ -1,211 +1,269 @@
-"""Structures under scenarios as columns of the engine: what each consists of, and which run together."""
+"""Structures and scenarios laid out as the arrays that the simulation runs on."""
 
+import itertools
 import math
-from collections import defaultdict
-from collections.abc import Callable, Hashable, Iterator, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
+from numpy.typing import NDArray
 
 from loopdoc.engineering.clock import Clock
-from loopdoc.engineering.disturbance_signals import ArrivingStep, DisturbanceSignals, KnownSignals, known_throughout
-from loopdoc.engineering.plant_arrays import FinalElementArrays, ProcessArrays
-from loopdoc.engineering.process import FloatArray
-from loopdoc.engineering.scanning import ControllerArrays, Engine, controller_arrays
+from loopdoc.engineering.lead_lag import LeadLag
+from loopdoc.engineering.pid import Controller, scan_coefficients
+from loopdoc.engineering.process import FloatArray, Process, state_space, transition
+from loopdoc.engineering.scanning import CASE, CONTROLLER, DISTURBANCE, PROCESS, STRUCTURE, Plant, Records
 from loopdoc.engineering.structure import ControlStructure, Scenario
 
-# So many columns that are alike repay a run of their own.
-_WORTH_A_RUN = 3000
-# Steps of a disturbance that are found at once where it is wanted in full.
-_BLOCK = 64
+IntArray = NDArray[np.int64]
+
+# In the row of a measurement that is not controlled; nothing reads it.
+_NO_CONTROLLER = Controller(1.0)
 
 
 @dataclass(frozen=True, slots=True)
 class Column:
-    """One structure under one scenario: a column of the engine."""
+    """One structure under some scenarios, on its clock."""
 
-    place: tuple[int, int, int]
-    """Group, structure and scenario."""
     structure: ControlStructure
-    scenario: Scenario
+    scenarios: Sequence[Scenario]
     clock: Clock
 
     @property
     def every(self) -> tuple[int, ...]:
-        """Steps between scans, per process, 0 where it is not controlled."""
+        """Steps between scans, per process, 1 where it is not controlled."""
         return tuple(
-            0 if controller is None else max(1, round(controller.interval_s / self.clock.step_s))
+            1 if controller is None else max(1, round(controller.interval_s / self.clock.step_s))
             for controller in self.structure.controllers
         )
 
     @property
     def executed_interval_s(self) -> tuple[float, ...]:
         """Interval at which each controller is executed, innermost first [s]."""
-        return tuple(every * self.clock.step_s for every in self.every if every)
+        return tuple(
+            every * self.clock.step_s
+            for every, controller in zip(self.every, self.structure.controllers, strict=True)
+            if controller is not None
+        )
 
     @property
-    def disturbed_pct(self) -> float:
-        """Sum of the sizes of the disturbances [%]."""
-        return math.fsum(abs(disturbance.size_pct) for disturbance in self.scenario.disturbances)
+    def has_reset(self) -> bool:
+        """Whether the outermost measurement is controlled with integral action."""
+        outermost = self.structure.controllers[-1]
+        return outermost is not None and math.isfinite(outermost.reset_s)
 
-    @property
-    def upset_pct(self) -> float:
-        """Size of what its settling is measured by: an accepted setpoint step, else the disturbances [%]."""
-        return abs(setpoint_step_pct(self)) or self.disturbed_pct
-
-def setpoint_step_pct(column: Column) -> float:
-    """The setpoint step of a column after the setpoint limits, 0 without a controller."""
-    controllers = [
-        (controller, start)
-        for controller, start in zip(column.structure.controllers, column.structure.start_pct, strict=True)
-        if controller is not None
-    ]
-    if not controllers:
-        return 0.0
-    outermost, start = controllers[-1]
-    asked = start + column.scenario.setpoint_step_pct
-    return min(max(asked, outermost.setpoint_low_pct), outermost.setpoint_high_pct) - start
+    def setpoint_step_pct(self, scenario: Scenario) -> float:
+        """The setpoint step of a scenario after the setpoint limits, 0 without a controller."""
+        controlled = zip(self.structure.controllers, self.structure.start_pct, strict=True)
+        controllers = [(controller, start) for controller, start in controlled if controller is not None]
+        if not controllers:
+            return 0.0
+        outermost, start = controllers[-1]
+        asked = start + scenario.setpoint_step_pct
+        return min(max(asked, outermost.setpoint_low_pct), outermost.setpoint_high_pct) - start
 
 
-def outermost_has_reset(column: Column) -> bool:
-    """Whether the outermost measurement is controlled with integral action."""
-    outermost = column.structure.controllers[-1]
-    return outermost is not None and math.isfinite(outermost.reset_s)
+def disturbed_pct(scenario: Scenario) -> float:
+    """Sum of the sizes of the disturbances [%]."""
+    return math.fsum(abs(disturbance.size_pct) for disturbance in scenario.disturbances)
 
 
-def _shape(column: Column) -> Hashable:
-    """What columns must share to be run together at all: which levels are controlled."""
-    return tuple(controller is None for controller in column.structure.controllers)
-
-
-# What columns gain by sharing, from the most to the least: what only some have is calculated for all in a run.
-_LIKENESS: tuple[Callable[[Column], Hashable], ...] = (
-    lambda column: column.every,
-    lambda column: any(c is not None and c.rate_s > 0.0 for c in column.structure.controllers),
-    lambda column: tuple(process.order for process in column.structure.processes),
-    lambda column: (column.structure.final_element.backlash_pct, column.structure.final_element.resolution_pct)
-    == (0.0, 0.0),
-    lambda column: column.structure.final_element.stroke_time_s > 0.0,
-)
-
-
-def _alike(members: list[Column], likeness: Sequence[Callable[[Column], Hashable]]) -> Iterator[list[Column]]:
-    """Columns put with their like as long as enough are alike; the few that remain are run together."""
-    if not likeness or len(members) < _WORTH_A_RUN:
-        yield members
-        return
-    found: dict[Hashable, list[Column]] = defaultdict(list)
-    for column in members:
-        found[likeness[0](column)].append(column)
-    few: list[Column] = []
-    for part in found.values():
-        if len(part) < _WORTH_A_RUN:
-            few += part
-        else:
-            yield from _alike(part, likeness[1:])
-    if few:
-        yield from _alike(few, likeness[1:])
-
-
-def batches(
-    columns: Sequence[Column], *, most_columns: int | None = None, kept_numbers: int | None = None
-) -> list[list[Column]]:
-    """Columns that can run together, of like length; no more at once than given, or than memory should hold."""
-    by_shape: dict[Hashable, list[Column]] = defaultdict(list)
-    for column in columns:
-        by_shape[_shape(column)].append(column)
-    found = []
-    for members in (part for shaped in by_shape.values() for part in _alike(shaped, _LIKENESS)):
-        members.sort(key=lambda column: column.clock.steps)
-        batch: list[Column] = []
-        for column in members:
-            signals = 4 * len(column.structure.processes)
-            full = most_columns is not None and len(batch) >= most_columns
-            full = full or (
-                kept_numbers is not None and (len(batch) + 1) * column.clock.steps * signals > kept_numbers
-            )
-            if batch and full:
-                found.append(batch)
-                batch = []
-            batch.append(column)
-        found.append(batch)
+def _filled(records: np.dtype[np.void], **fields: object) -> Records:
+    """An array of records with the given values, all of one length."""
+    length = len(fields[next(iter(fields))])  # type: ignore[arg-type]
+    found = np.zeros(length, records)
+    for name, values in fields.items():
+        found[name] = values
     return found
 
 
-def _disturbances(columns: Sequence[Column], level: int, block: int) -> DisturbanceSignals | None:
-    """What reaches the measurement of a level from outside."""
-    arriving = [
-        ArrivingStep(
-            position,
-            disturbance.path_through(column.structure.processes[level]),
-            disturbance.size_pct,
-            column.clock.step_s,
-        )
-        for position, column in enumerate(columns)
-        for disturbance in column.scenario.disturbances
-        if disturbance.level == level and disturbance.size_pct
-    ]
-    return DisturbanceSignals(arriving, block) if arriving else None
+@dataclass(frozen=True, slots=True, eq=False)
+class _Steps:
+    """n linear systems over one time step each."""
+
+    order: IntArray
+    """(n,) number of states."""
+    matrices: FloatArray
+    """(n, m, m + 4) as `loopdoc.engineering.scanning` has them."""
+    through: FloatArray
+    """(n,) share of the input that is in the output without delay."""
 
 
-def _final_elements(columns: Sequence[Column], step_s: FloatArray) -> FinalElementArrays:
-    elements = [column.structure.final_element for column in columns]
-    start = np.array([element.start_pct for element in elements])
-    stroke_s = np.array([element.stroke_time_s for element in elements])
-    with np.errstate(divide="ignore"):
-        travel_per_step = 100.0 * step_s / stroke_s
-    return FinalElementArrays(
-        step_pct=np.array([column.scenario.final_element_step_pct for column in columns]),
-        travel_per_step_pct=travel_per_step,
-        half_backlash_pct=np.array([element.backlash_pct / 2.0 for element in elements]),
-        resolution_pct=np.array([element.resolution_pct for element in elements]),
-        low_pct=0.0 - start,
-        high_pct=100.0 - start,
+def _steps(
+    processes: Sequence[Process], step_s: FloatArray, part: FloatArray, held: NDArray[np.bool_], size: FloatArray
+) -> _Steps:
+    """Solve processes over a time step, for an input of that size, late by a part of it, held or straight between."""
+    order = np.array([process.order for process in processes], dtype=np.int64)
+    most = int(order.max(initial=0))
+    matrices, through = np.zeros((len(processes), most, most + 4)), np.zeros(len(processes))
+    for states in set(order.tolist()):
+        rows = np.nonzero(order == states)[0]
+        system = state_space([processes[row] for row in rows.tolist()])
+        late, step = part[rows], step_s[rows]
+        advance, whole, ramp = transition(system, step)
+        remaining, after, _ = transition(system, (1.0 - late) * step)
+        _, before, _ = transition(system, late * step)
+        share = late[:, None]
+        of_held = (after, np.einsum("nij,nj->ni", remaining, before), np.zeros_like(after))
+        of_straight = (ramp * (1.0 - share), ramp * share + (whole - ramp) * (1.0 - share), (whole - ramp) * share)
+        matrices[rows, :states, :states] = advance
+        for tap, (one, other) in enumerate(zip(of_held, of_straight, strict=True)):
+            matrices[rows, :states, most + tap] = np.where(held[rows, None], one, other) * size[rows, None]
+        matrices[rows, :states, most + 3] = system.c
+        through[rows] = system.d * size[rows]
+    return _Steps(order, matrices, through)
+
+
+def _processes(
+    processes: Sequence[Process], step_s: FloatArray, innermost: NDArray[np.bool_]
+) -> tuple[Records, FloatArray]:
+    dead = np.array([process.dead_time_s for process in processes]) / step_s
+    # A dead time of a whole number of steps stays whole in spite of the division.
+    whole = np.floor(dead + 1e-9)
+    part = np.maximum(dead - whole, 0.0)
+    part[part < 1e-9] = 0.0
+    steps = _steps(processes, step_s, part, innermost, np.array([process.gain for process in processes]))
+    # A held input acts from the step before, as what is held at this one is not known yet.
+    delay = whole.astype(np.int64) + innermost
+    records = _filled(
+        PROCESS,
+        through_now=np.where(innermost, steps.through, steps.through * (1.0 - part)),
+        through_before=np.where(innermost, 0.0, steps.through * part),
+        order=steps.order,
+        delay=delay,
+        # Room for what acts now and the two steps before it.
+        last=[(1 << (one + 2).bit_length()) - 1 for one in delay.tolist()],
+    )
+    return records, steps.matrices
+
+
+def _lead_lags(written: Sequence[tuple[LeadLag, ...]], interval_s: FloatArray) -> FloatArray:
+    found = np.zeros((len(written), max((len(ones) for ones in written), default=0), 2))
+    for row, ones in enumerate(written):
+        for i, one in enumerate(ones):
+            # The lag is exact for an input that is held, as the measurement filter is.
+            found[row, i] = one.lead_s / one.lag_s, -math.expm1(-interval_s[row] / one.lag_s)
+    return found
+
+
+def _controllers(
+    columns: Sequence[Column], first: Sequence[int], interval_s: FloatArray, every: Sequence[int]
+) -> Records:
+    """Controllers as records, their limits taken from the start."""
+    written = [one for column in columns for one in column.structure.controllers]
+    commanded, commanded_pct = np.full(len(written), -1), np.zeros(len(written))
+    for column, begin in zip(columns, first, strict=True):
+        below, start_pct = -1, column.structure.final_element.start_pct
+        for level, controller in enumerate(column.structure.controllers):
+            commanded[begin + level], commanded_pct[begin + level] = below, start_pct
+            if controller is not None:
+                below, start_pct = begin + level, column.structure.start_pct[level]
+    controllers = [one or _NO_CONTROLLER for one in written]
+    measured_pct = np.array([start for column in columns for start in column.structure.start_pct])
+    setpoint_low = np.array([one.setpoint_low_pct for one in controllers]) - measured_pct
+    setpoint_high = np.array([one.setpoint_high_pct for one in controllers]) - measured_pct
+    output_low = np.array([one.output_low_pct for one in controllers]) - commanded_pct
+    output_high = np.array([one.output_high_pct for one in controllers]) - commanded_pct
+    secondary = commanded >= 0
+    return _filled(
+        CONTROLLER,
+        **scan_coefficients(controllers, interval_s)._asdict(),
+        setpoint_low=setpoint_low,
+        setpoint_high=setpoint_high,
+        output_low=output_low,
+        output_high=output_high,
+        followed_low=np.where(secondary, np.maximum(output_low, setpoint_low[commanded]), output_low),
+        followed_high=np.where(secondary, np.minimum(output_high, setpoint_high[commanded]), output_high),
+        controls=[one is not None for one in written],
+        every=every,
+        reverse=[one.gain > 0.0 for one in controllers],
+        lead_lags=[len(ones) for column in columns for ones in column.structure.lead_lags],
     )
 
 
-def engine(columns: Sequence[Column], *, room: int, keep_signals: bool, block: int = _BLOCK) -> Engine:
-    """Return the engine that runs columns in which the same levels are controlled.
-
-    ``room`` is as for `Engine`, ``block`` the number of steps by which disturbances are found.
-    """
-    structures = [column.structure for column in columns]
+def _structures(columns: Sequence[Column], first: Sequence[int]) -> Records:
+    elements = [column.structure.final_element for column in columns]
+    start = np.array([element.start_pct for element in elements])
     step_s = np.array([column.clock.step_s for column in columns])
-    controllers: list[ControllerArrays | None] = []
-    commanded = np.array([structure.final_element.start_pct for structure in structures])
-    for level in range(len(structures[0].controllers)):
-        measured = np.array([structure.start_pct[level] for structure in structures])
-        at_level = [c for c in (structure.controllers[level] for structure in structures) if c is not None]
-        if not at_level:
-            controllers.append(None)
-            continue
-        controllers.append(
-            controller_arrays(
-                at_level,
-                step_s=step_s,
-                every=[column.every[level] for column in columns],
-                output_start_pct=commanded,
-                setpoint_start_pct=measured,
-            )
-        )
-        commanded = measured
-    disturbances: list[DisturbanceSignals | KnownSignals | None] = []
-    for level in range(len(controllers)):
-        signals = _disturbances(columns, level, block)
-        disturbances.append(
-            known_throughout(signals, len(columns), room) if signals and keep_signals else signals
-        )
-    return Engine(
-        plants=[
-            ProcessArrays(
-                [structure.processes[level] for structure in structures], step_s, held_input=level == 0
-            )
-            for level in range(len(controllers))
-        ],
-        controllers=controllers,
-        final_element=_final_elements(columns, step_s),
-        setpoint_step_pct=np.array([column.scenario.setpoint_step_pct for column in columns]),
+    with np.errstate(divide="ignore"):
+        travel_per_step = 100.0 * step_s / np.array([element.stroke_time_s for element in elements])
+    return _filled(
+        STRUCTURE,
+        travel_per_step=travel_per_step,
+        half_backlash=[element.backlash_pct / 2.0 for element in elements],
+        resolution=[element.resolution_pct for element in elements],
+        low=0.0 - start,
+        high=100.0 - start,
+        first=first,
+        levels=[len(column.structure.processes) for column in columns],
+        in_manual=[all(one is None for one in column.structure.controllers) for column in columns],
+    )
+
+
+def _disturbances(columns: Sequence[Column]) -> tuple[Records, FloatArray]:
+    """The disturbances of every case, case by case."""
+    arriving = [
+        (one, one.path_through(column.structure.processes[one.level]), column.clock.step_s)
+        for column in columns
+        for scenario in column.scenarios
+        for one in scenario.disturbances
+    ]
+    steps = _steps(
+        [path for _, path, _ in arriving],
+        np.array([step_s for _, _, step_s in arriving]),
+        np.zeros(len(arriving)),
+        np.ones(len(arriving), dtype=np.bool_),
+        np.array([path.gain * one.size_pct for one, path, _ in arriving]),
+    )
+    records = _filled(
+        DISTURBANCE, through=steps.through, level=[one.level for one, _, _ in arriving], order=steps.order
+    )
+    return records, steps.matrices
+
+
+def plant_of(columns: Sequence[Column]) -> Plant:
+    """Return the structures of columns, and the disturbances of their scenarios, as arrays."""
+    counts = [len(column.structure.processes) for column in columns]
+    first = [0, *itertools.accumulate(counts)][:-1]
+    innermost = np.zeros(sum(counts), dtype=np.bool_)
+    innermost[first] = True
+    step_s = np.repeat([column.clock.step_s for column in columns], counts)
+    every = [one for column in columns for one in column.every]
+    interval_s = step_s * np.array(every)
+    processes, matrices = _processes(
+        [process for column in columns for process in column.structure.processes], step_s, innermost
+    )
+    disturbances, disturbance_matrices = _disturbances(columns)
+    return Plant(
+        structures=_structures(columns, first),
+        processes=processes,
+        matrices=matrices,
+        controllers=_controllers(columns, first, interval_s, every),
+        lead_lags=_lead_lags([ones for column in columns for ones in column.structure.lead_lags], interval_s),
         disturbances=disturbances,
-        room=room,
-        keep_signals=keep_signals,
+        disturbance_matrices=disturbance_matrices,
+    )
+
+
+def cases_of(columns: Sequence[Column], *, parts: int, band: float) -> Records:
+    """Return the scenarios of columns as runs, column by column.
+
+    Runs are looked at for rest at so many ``parts`` of the horizon, 0 for not at all; settled is within ``band``, as
+    a share of what upsets it, around the setpoint.
+    """
+    scenarios = [(column, scenario) for column in columns for scenario in column.scenarios]
+    setpoint = np.array([column.setpoint_step_pct(scenario) for column, scenario in scenarios])
+    disturbed = np.array([disturbed_pct(scenario) for _, scenario in scenarios])
+    disturbances = [0, *itertools.accumulate(len(scenario.disturbances) for _, scenario in scenarios)]
+    return _filled(
+        CASE,
+        setpoint=setpoint,
+        manual=[scenario.final_element_step_pct for _, scenario in scenarios],
+        settled=setpoint,
+        band=band * np.where(setpoint != 0.0, np.abs(setpoint), disturbed),
+        structure=[place for place, column in enumerate(columns) for _ in column.scenarios],
+        disturbed_from=disturbances[:-1],
+        disturbed_to=disturbances[1:],
+        steps=[column.clock.steps for column, _ in scenarios],
+        window=[column.clock.steps // parts if parts else 0 for column, _ in scenarios],
     )

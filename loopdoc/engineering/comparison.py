@@ -11,6 +11,7 @@ import math
 from collections.abc import Sequence
 from dataclasses import dataclass
 from functools import reduce
+from typing import TYPE_CHECKING
 
 from loopdoc.engineering.attenuation import Rival, error_ratios
 from loopdoc.engineering.clock import Unsuited
@@ -19,7 +20,6 @@ from loopdoc.engineering.frequency import LoopStage, Margins
 from loopdoc.engineering.pairing import normal_value
 from loopdoc.engineering.pid import Controller
 from loopdoc.engineering.process import Process, in_series
-from loopdoc.engineering.simulation import Response, simulate_groups
 from loopdoc.engineering.stages import Chain, Lacking, Level, percent_of_range
 from loopdoc.engineering.structure import (
     ControlStructure,
@@ -34,6 +34,9 @@ from loopdoc.engineering.tuning import SensitivityTuning, simc_at_sensitivities
 from loopdoc.engineering.upsets import Step, declared_step
 from loopdoc.register.model import known, seconds
 from loopdoc.register.quantity import Quantity
+
+if TYPE_CHECKING:
+    from loopdoc.engineering.simulation import Response
 
 UPSET_PCT = 10.0
 """Size of the standard upsets: a tenth of the span of the measurement that they move [%]."""
@@ -82,18 +85,17 @@ def compare(dynamics: ChainDynamics) -> Comparison | NotSimulated:
 
 def compare_all(chains: Sequence[ChainDynamics]) -> tuple[Comparison | NotSimulated, ...]:
     """Simulate many chains together, and for each cascade the single loop in its place; see `compare`."""
+    # Loaded for responses only: a check compares cascades without simulating them.
+    from loopdoc.engineering.simulation import simulate_groups
+
     found: dict[int, Comparison | NotSimulated] = {}
     stable = {}
     for position, dynamics in enumerate(chains):
         levels = zip(dynamics.chain.levels, dynamics.margins, strict=True)
         unstable = next((level.loop.tag for level, margins in levels if not margins.stable), None)
-        led = next((level.loop.tag for level in dynamics.chain.levels if level.stage.lead_lags), None)
         at_once = next((level.loop.tag for level in dynamics.chain.levels if _answers_at_once(level.stage)), None)
         if unstable is not None:
             found[position] = NotSimulated(f"{unstable} as tuned is not stable")
-        elif led is not None:
-            reason = f"a lead-lag stands between {led} and what it commands, which is not simulated"
-            found[position] = NotSimulated(reason)
         elif at_once is not None:
             found[position] = NotSimulated(
                 f"the process of {at_once} answers at once, so that its response hangs on the execution interval, "
@@ -102,17 +104,18 @@ def compare_all(chains: Sequence[ChainDynamics]) -> tuple[Comparison | NotSimula
         else:
             stable[position] = dynamics
     singles = dict(zip(stable, _single_loops(list(stable.values())), strict=True))
-    groups = []
+    groups, known = [], {}
     for position, dynamics in stable.items():
         chain, single = dynamics.chain, singles[position]
         structure = structure_of(chain)
+        known[structure] = dynamics.margins
         structures = [structure]
         if single is not None:
             structures.append(single_loop_structure(structure, _single_controller(chain.stages, single)))
         standard = standard_scenarios(len(chain.levels), size_pct=UPSET_PCT)
         groups.append((structures, (*standard, *declared_scenarios(chain))))
     for (position, dynamics), (structures, scenarios), responses in zip(
-        stable.items(), groups, simulate_groups(groups), strict=True
+        stable.items(), groups, simulate_groups(groups, known=known), strict=True
     ):
         if isinstance(responses, Unsuited):
             found[position] = NotSimulated(responses.reason)

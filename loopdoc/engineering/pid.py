@@ -1,4 +1,4 @@
-"""The PID controller: forms, units of its settings, frequency response, and one scan of it.
+"""The PID controller: forms, units of its settings, and what one scan of it multiplies by.
 
 error = setpoint - measurement, so a positive gain is reverse action: the output falls as the
 measurement rises. Gains are per unit: percent of output per percent of measurement.
@@ -7,13 +7,12 @@ measurement rises. Gains are per unit: percent of output per percent of measurem
 import math
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
+from typing import NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
 
 FloatArray = NDArray[np.float64]
-BoolArray = NDArray[np.bool_]
-IntArray = NDArray[np.intp]
 
 
 @dataclass(frozen=True, slots=True)
@@ -205,11 +204,10 @@ def repeats_from_reset(reset_s: float) -> float:
     return 1.0 / reset_s
 
 
-# --- one scan of the algorithm, for n controllers at once ----------------------------------------
+# --- one scan of the algorithm, which `loopdoc.engineering.scanning` executes ---------------------
 
 
-@dataclass(frozen=True, slots=True, eq=False)
-class ScanCoefficients:
+class ScanCoefficients(NamedTuple):
     """What n controllers multiply by at each scan; every array is (n,)."""
 
     gain: FloatArray
@@ -228,12 +226,6 @@ class ScanCoefficients:
     """c [dimensionless]."""
     filter_gain: FloatArray
     """Share of the way the filtered measurement goes in a scan [dimensionless]; 1 for no filter."""
-    unit_weight: bool
-    """True where every controller has the setpoint weight 1."""
-    has_rate: bool
-    """True where any of the controllers has rate."""
-    has_filter: bool
-    """True where any of the controllers has a measurement filter."""
 
 
 def scan_coefficients(controllers: Sequence[Controller], interval_s: FloatArray) -> ScanCoefficients:
@@ -283,102 +275,4 @@ def scan_coefficients(controllers: Sequence[Controller], interval_s: FloatArray)
         derivative_gain=gain * rate / (smoothing + h),
         derivative_setpoint_weight=np.array([c.derivative_setpoint_weight for c in controllers]),
         filter_gain=filter_gain,
-        unit_weight=all(c.setpoint_weight == 1.0 for c in controllers),
-        has_rate=bool(np.any(rate > 0.0)),
-        has_filter=bool(np.any(filter_lag > 0.0)),
     )
-
-
-def taken_coefficients(coefficients: ScanCoefficients, columns: IntArray) -> ScanCoefficients:
-    """Return the coefficients of the controllers in the given columns."""
-    return replace(
-        coefficients,
-        gain=coefficients.gain[columns],
-        setpoint_gain=coefficients.setpoint_gain[columns],
-        integral_gain=coefficients.integral_gain[columns],
-        tracking=coefficients.tracking[columns],
-        derivative_decay=coefficients.derivative_decay[columns],
-        derivative_gain=coefficients.derivative_gain[columns],
-        derivative_setpoint_weight=coefficients.derivative_setpoint_weight[columns],
-        filter_gain=coefficients.filter_gain[columns],
-    )
-
-
-@dataclass(slots=True, eq=False)
-class ScanState:
-    """Memory of n controllers between scans; every array is (n,) and is overwritten by the next scan."""
-
-    integral: FloatArray
-    """Integral part of the output [%]."""
-    filtered: FloatArray
-    """Filtered measurement [%]."""
-    derivative: FloatArray
-    """Derivative part of the output [%]."""
-    derivative_input: FloatArray
-    """c times setpoint less filtered measurement, at the last scan [%]."""
-    output: FloatArray
-    """Output of the last scan before its limits [%]."""
-    scratch: tuple[FloatArray, FloatArray]
-    """Room to work in; without meaning between scans."""
-
-
-def at_rest(controllers: int) -> ScanState:
-    """Return the memory of so many controllers that have had nothing to do."""
-    return ScanState(
-        integral=np.zeros(controllers),
-        filtered=np.zeros(controllers),
-        derivative=np.zeros(controllers),
-        derivative_input=np.zeros(controllers),
-        output=np.zeros(controllers),
-        scratch=(np.empty(controllers), np.empty(controllers)),
-    )
-
-
-def scan(
-    coefficients: ScanCoefficients,
-    state: ScanState,
-    setpoint: FloatArray,
-    measurement: FloatArray,
-    *,
-    due: BoolArray | bool = True,
-) -> FloatArray:
-    """Advance the memory by one scan and return the (n,) output [%] before its limits: ``state.output``.
-
-    Controllers that are not due keep their memory and output. The caller limits the output, sees what
-    became of it downstream, and calls `track` with that.
-    """
-    one, two = state.scratch
-    if coefficients.has_filter:
-        np.subtract(measurement, state.filtered, out=one)
-        np.multiply(one, coefficients.filter_gain, out=one)
-        np.add(state.filtered, one, out=state.filtered, where=due)
-        measurement = state.filtered
-    np.subtract(setpoint, measurement, out=one)
-    np.multiply(one, coefficients.integral_gain, out=two)
-    np.add(state.integral, two, out=state.integral, where=due)
-    if coefficients.unit_weight:
-        np.multiply(one, coefficients.gain, out=one)
-    else:
-        np.multiply(setpoint, coefficients.setpoint_gain, out=one)
-        np.multiply(measurement, coefficients.gain, out=two)
-        np.subtract(one, two, out=one)
-    if coefficients.has_rate:
-        rate_input = coefficients.derivative_setpoint_weight * setpoint - measurement
-        np.subtract(rate_input, state.derivative_input, out=two)
-        np.multiply(two, coefficients.derivative_gain, out=two)
-        np.multiply(state.derivative, coefficients.derivative_decay, out=state.derivative, where=due)
-        np.add(state.derivative, two, out=state.derivative, where=due)
-        np.copyto(state.derivative_input, rate_input, where=due)
-        np.add(one, state.derivative, out=one)
-    return np.add(one, state.integral, out=state.output, where=due)
-
-
-def track(
-    coefficients: ScanCoefficients, state: ScanState, actual: FloatArray, columns: IntArray | slice = slice(None)
-) -> None:
-    """Draw the integral of some controllers toward what really happened, so that it does not wind up.
-
-    ``actual`` is what the downstream took of the last output: the limited output, or, while the secondary is
-    at a limit, the secondary's measurement. With a tracking time of Ti this is external reset.
-    """
-    state.integral[columns] += coefficients.tracking[columns] * (actual - state.output[columns])

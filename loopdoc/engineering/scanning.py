@@ -1,351 +1,513 @@
-"""The scan-by-scan engine: many control structures of one pattern advanced together in time.
+"""The scan-by-scan simulation itself: scalar functions, compiled, that read as the algorithm is executed.
 
-All signals are deviations from the start, in percent. Within a scan the measurements are read, the
-controllers act from the outermost inward, the final element moves, and the processes advance. The
-output of a controller is held until its next scan.
+All signals are deviations from the start, in percent. Within a time step the measurements are read, the controllers
+that are due act from the outermost inward, the final element moves, and the processes advance. The output of a
+controller is held until its next scan. A process is solved exactly for an input that is held over a step (the final
+element) or straight between steps (the measurement below).
+
+What a structure consists of stands in records, which compiled code reads by name. Every function that runs compiled
+stands in this file: the compiler keeps what it made until this file changes.
 """
 
-from collections.abc import Sequence
-from dataclasses import dataclass
+import math
+from collections.abc import Callable, Sequence
+from typing import Any, NamedTuple, TypeVar, cast
 
+import numba
 import numpy as np
 from numpy.typing import NDArray
 
-from loopdoc.engineering.disturbance_signals import DisturbanceSignals, KnownSignals
-from loopdoc.engineering.pid import Controller, ScanCoefficients, at_rest, scan, scan_coefficients, track
-from loopdoc.engineering.pid import taken_coefficients as taken
-from loopdoc.engineering.plant_arrays import FinalElementArrays, MovingElement, ProcessArrays
 from loopdoc.engineering.process import FloatArray
 
-IntArray = NDArray[np.intp]
-BoolArray = NDArray[np.bool_]
+Records = NDArray[np.void]
 
-# Rows of signals before the start: derivatives and reversals look back at them.
-_LEAST_PAD = 2
+# A run that is watched ends when no signal has moved by more than this share of its peak for a window.
+AT_REST = 1e-3
+# A reversal of the final element counts once it has moved back by this much [%].
+REVERSAL_PCT = 0.1
 
-
-@dataclass(frozen=True, slots=True, eq=False)
-class ControllerArrays:
-    """Controllers of one level of n columns; every array is (n,), deviations from the start."""
-
-    coefficients: ScanCoefficients
-    every: int | IntArray
-    """Time steps between scans: one number where all columns have the same."""
-    output_low_pct: FloatArray
-    """Lower output limit [%]."""
-    output_high_pct: FloatArray
-    """Upper output limit [%]."""
-    setpoint_low_pct: FloatArray
-    """Lower setpoint limit [%]."""
-    setpoint_high_pct: FloatArray
-    """Upper setpoint limit [%]."""
-    reverse: BoolArray
-    """True where the output falls as the measurement rises."""
-
-    def take(self, columns: IntArray) -> "ControllerArrays":
-        """Return the controllers of some columns; a column may be taken several times."""
-        return ControllerArrays(
-            coefficients=taken(self.coefficients, columns),
-            every=self.every if isinstance(self.every, int) else self.every[columns],
-            output_low_pct=self.output_low_pct[columns],
-            output_high_pct=self.output_high_pct[columns],
-            setpoint_low_pct=self.setpoint_low_pct[columns],
-            setpoint_high_pct=self.setpoint_high_pct[columns],
-            reverse=self.reverse[columns],
-        )
+Compiled = TypeVar("Compiled", bound=Callable[..., Any])
 
 
-def controller_arrays(
-    controllers: Sequence[Controller],
-    *,
-    step_s: FloatArray,
-    every: Sequence[int],
-    output_start_pct: FloatArray,
-    setpoint_start_pct: FloatArray,
-) -> ControllerArrays:
-    """Return the controllers of one level as arrays, their limits taken from the start."""
-    each = np.array(every, dtype=np.intp)
-    return ControllerArrays(
-        coefficients=scan_coefficients(controllers, step_s * each),
-        every=int(each[0]) if (each == each[0]).all() else each,
-        output_low_pct=np.array([c.output_low_pct for c in controllers]) - output_start_pct,
-        output_high_pct=np.array([c.output_high_pct for c in controllers]) - output_start_pct,
-        setpoint_low_pct=np.array([c.setpoint_low_pct for c in controllers]) - setpoint_start_pct,
-        setpoint_high_pct=np.array([c.setpoint_high_pct for c in controllers]) - setpoint_start_pct,
-        reverse=np.array([c.gain > 0.0 for c in controllers]),
-    )
+def compiled(function: Compiled) -> Compiled:
+    """Compile a function at its first call, and keep what was made for the next process where a place can be written.
 
-
-@dataclass(frozen=True, slots=True, eq=False)
-class Traces:
-    """Signals of n columns over time, deviations from the start [%]; every array is (steps + 1, n)."""
-
-    measurement_pct: tuple[FloatArray, ...]
-    """Per level, innermost first."""
-    travel_pct: FloatArray
-    """Mean travel of the final element over the step that begins at each time."""
-    setpoint_pct: tuple[FloatArray, ...]
-    """Per controlled level, innermost first; empty unless asked for."""
-    output_pct: tuple[FloatArray, ...]
-    """Per controlled level, innermost first; empty unless asked for."""
-
-
-class Engine:
-    """Columns in which the same levels are controlled, step by step.
-
-    The signals of the last steps are kept, as far back as dead times look; or all signals of all steps.
+    Divisions are numpy's and nothing is reordered: every process finds the same bytes.
     """
+    try:
+        made = numba.njit(function, cache=True, nogil=True, error_model="numpy")
+    except RuntimeError:
+        # A read-only installation without a home has nowhere to keep it.
+        made = numba.njit(function, nogil=True, error_model="numpy")
+    return cast(Compiled, made)
 
-    def __init__(
-        self,
-        *,
-        plants: Sequence[ProcessArrays],
-        controllers: Sequence[ControllerArrays | None],
-        final_element: FinalElementArrays,
-        setpoint_step_pct: FloatArray,
-        disturbances: Sequence[DisturbanceSignals | KnownSignals | None],
-        room: int,
-        keep_signals: bool,
-    ) -> None:
-        """Lay out the signals of n columns; sequences run over levels, innermost first.
 
-        ``room`` is how many steps there is room for before `roll` is needed; a run that keeps its signals
-        needs room for all.
-        """
-        n = len(setpoint_step_pct)
-        controlled = [(level, one) for level, one in enumerate(controllers) if one is not None]
-        self.plants = plants
-        self.loops = Loops(controlled, n, keep_setpoints=keep_signals)
-        innermost = controlled[0][1] if controlled else None
-        self.element = MovingElement(
-            final_element,
-            # Output limits inside the travel leave nothing for its ends to do.
-            ends=innermost is None
-            or bool(
-                np.any(innermost.output_low_pct < final_element.low_pct)
-                or np.any(innermost.output_high_pct > final_element.high_pct)
-            ),
-        )
-        self.disturbances = list(disturbances)
-        self.setpoint = setpoint_step_pct
-        self._manual_pct = final_element.step_pct
-        if controlled:
-            outermost = controlled[-1][1]
-            self.setpoint = np.minimum(
-                np.maximum(setpoint_step_pct, outermost.setpoint_low_pct), outermost.setpoint_high_pct
-            )
-        self.room = room
-        # Rows before the start hold the rest that the dead times still look back at.
-        back = [int(plant.whole.max()) + 3 for plant in plants]
-        self.travel_pad, self.pads = back[0], (*back[1:], _LEAST_PAD)
-        self.travel = np.zeros((self.travel_pad + room + 1, n))
-        self.measured = [np.zeros((pad + room + 1, n)) for pad in self.pads]
-        kept = controlled if keep_signals else []
-        self.kept_setpoint = [np.zeros((room + 1, n)) for _ in kept]
-        self.kept_output = [np.zeros((room + 1, n)) for _ in kept]
-        for level, plant in enumerate(plants):
-            start = self.measured[level][self.pads[level]]
+# --- records -----------------------------------------------------------------------------------------
+
+
+def _record(numbers: Sequence[str], counts: Sequence[str] = ()) -> np.dtype[np.void]:
+    return np.dtype([(name, np.float64) for name in numbers] + [(name, np.int64) for name in counts], align=True)
+
+
+STRUCTURE = _record(
+    [
+        "travel_per_step",  # largest travel of the final element [%]; infinite where the stroke takes no time
+        "half_backlash",  # [%]
+        "resolution",  # change of the signal that does not move the final element yet [%]
+        "low",  # final element fully closed [%]
+        "high",  # fully open [%]
+    ],
+    [
+        "first",  # row of its innermost process
+        "levels",  # number of its processes, whose rows follow each other
+        "in_manual",  # 1 where no measurement is controlled
+    ],
+)
+"""A structure on its time step."""
+
+PROCESS = _record(
+    [
+        "through_now",  # measurement per input that acts now, without delay by a lag
+        "through_before",  # per input one step before
+    ],
+    [
+        "order",  # number of states
+        "delay",  # whole steps from the input to what acts now
+        "last",  # last place of the ring of its inputs, whose size is a power of two
+    ],
+)
+"""A process; its input is the final element's travel or the measurement below.
+
+Its row of the step matrices is (m, m + 4) for states up to m: the lower triangular matrix of a step, then what the
+input does as it acts now, one step before and two steps before, then the measurement per state.
+"""
+
+CONTROLLER = _record(
+    [
+        "gain",  # the coefficients of `loopdoc.engineering.pid.ScanCoefficients`
+        "setpoint_gain",
+        "integral_gain",
+        "tracking",
+        "derivative_decay",
+        "derivative_gain",
+        "derivative_setpoint_weight",
+        "filter_gain",
+        "setpoint_low",  # limits [%]
+        "setpoint_high",
+        "output_low",
+        "output_high",
+        "followed_low",  # lowest output that what it commands takes, whose setpoint has limits too [%]
+        "followed_high",
+    ],
+    [
+        "controls",  # 1 where the measurement is controlled; of the others the rest has no meaning
+        "every",  # time steps between scans
+        "reverse",  # 1 where the output falls as the measurement rises
+        "lead_lags",  # number of lead-lags behind it
+    ],
+)
+"""The controller of a process.
+
+Its row of the lead-lags is (q, 2): the share of a lead-lag's input that passes at once, lead over lag, and the share
+of the way that its lag goes in a scan.
+"""
+
+DISTURBANCE = _record(
+    ["through"],  # share that is there at once [%]
+    [
+        "level",  # the measurement that it moves, 0 the innermost
+        "order",  # number of states
+    ],
+)
+"""A step that reaches a measurement through lags; its row of the step matrices as of a process, for the step's size."""
+
+CASE = _record(
+    [
+        "setpoint",  # step of the outermost setpoint within its limits [%]
+        "manual",  # step of the final element where no controller moves it [%]
+        "settled",  # measurement that it settles to [%]
+        "band",  # how near to that is settled [%]
+    ],
+    [
+        "structure",  # row of the structure
+        "disturbed_from",  # first of its disturbances
+        "disturbed_to",  # first that is no longer its own
+        "steps",  # most steps
+        "window",  # steps over which nothing moves at rest, so that the run ends; 0 to run to the end
+    ],
+)
+"""A run: one structure under one scenario."""
+
+READING = _record(
+    [
+        "error_sum",  # sum over the steps of the mean absolute deviation from the setpoint [%]
+        "last",  # outermost measurement at the end [%]
+        "peak",  # where it was furthest from the start [%]
+        "moved",  # sum of all movements of the final element [%]
+        "low",  # lowest outermost measurement [%]
+        "high",  # highest [%]
+    ],
+    [
+        "steps",  # steps that were run
+        "peak_step",
+        "outside_step",  # last step outside the band, -1 for none
+        "turns",  # turns of the final element that went back far enough to count
+    ],
+)
+"""What is read off a run."""
+
+MEMORY = _record(
+    [
+        "integral",  # integral part of the output [%]
+        "filtered",  # filtered measurement [%]
+        "derivative",  # derivative part of the output [%]
+        "derivative_input",  # c times setpoint less filtered measurement, at the last scan [%]
+        "setpoint",  # within its limits [%]
+        "computed",  # output before its limits [%]
+        "output",  # within its limits [%]
+        "asked",  # behind the lead-lags: what is asked of what it commands [%]
+    ],
+    ["wait"],  # steps until the next scan
+)
+"""What a controller remembers between scans."""
+
+WATCHED = _record(["low", "high", "window_low", "window_high"])
+"""Extremes of a signal since the start, and since the window began [%]."""
+
+
+class Plant(NamedTuple):
+    """Structures and what they consist of."""
+
+    structures: Records
+    """(s,) of `STRUCTURE`."""
+    processes: Records
+    """(r,) of `PROCESS`, structure by structure, innermost first."""
+    matrices: FloatArray
+    """(r, m, m + 4) step matrices of the processes."""
+    controllers: Records
+    """(r,) of `CONTROLLER`."""
+    lead_lags: FloatArray
+    """(r, q, 2) of the controllers."""
+    disturbances: Records
+    """(d,) of `DISTURBANCE`."""
+    disturbance_matrices: FloatArray
+    """(d, m, m + 4) step matrices of the disturbances."""
+
+
+# --- the controllers ---------------------------------------------------------------------------------
+
+
+@compiled
+def scan(controller: Any, memory: Any, setpoint: float, measurement: float) -> float:
+    """Advance the memory of a controller by one scan and return its output [%] before its limits.
+
+    The caller limits the output, sees what became of it downstream, and calls `track` with that.
+    """
+    memory.filtered += controller.filter_gain * (measurement - memory.filtered)
+    memory.integral += controller.integral_gain * (setpoint - memory.filtered)
+    derivative_input = controller.derivative_setpoint_weight * setpoint - memory.filtered
+    change = derivative_input - memory.derivative_input
+    memory.derivative = controller.derivative_decay * memory.derivative + controller.derivative_gain * change
+    memory.derivative_input = derivative_input
+    proportional = controller.setpoint_gain * setpoint - controller.gain * memory.filtered
+    memory.computed = proportional + memory.integral + memory.derivative
+    return float(memory.computed)
+
+
+@compiled
+def track(controller: Any, memory: Any, actual: float) -> None:
+    """Draw the integral of a controller toward what really happened, so that it does not wind up.
+
+    ``actual`` is what the downstream took of the last output: the limited output, or, while the secondary is
+    at a limit, the secondary's measurement. With a tracking time of Ti this is external reset.
+    """
+    memory.integral += controller.tracking * (actual - memory.computed)
+
+
+@compiled
+def _limit(value: float, low: float, high: float) -> float:
+    return low if value < low else high if value > high else value
+
+
+@compiled
+def _led(controller: Any, lead_lags: FloatArray, lagged: FloatArray, row: int, level: int, signal: float) -> float:
+    """A signal behind the lead-lags of a controller, which are executed with it."""
+    for i in range(controller.lead_lags):
+        lead = lead_lags[row, i, 0]
+        lagged[level, i] += lead_lags[row, i, 1] * (signal - lagged[level, i])
+        signal = lead * signal + (1.0 - lead) * lagged[level, i]
+    return signal
+
+
+@compiled
+def _execute(
+    structure: Any,
+    controllers: Records,
+    lead_lags: FloatArray,
+    memories: Records,
+    lagged: FloatArray,
+    measured: FloatArray,
+    setpoint: float,
+) -> float:
+    """Execute the controllers that are due, outermost first, and return the signal to the final element [%]."""
+    limited = False
+    for level in range(structure.levels - 1, -1, -1):
+        row = structure.first + level
+        controller, memory = controllers[row], memories[level]
+        if controller.controls:
+            if memory.wait == 0:
+                memory.setpoint = _limit(setpoint, controller.setpoint_low, controller.setpoint_high)
+                computed = scan(controller, memory, memory.setpoint, measured[level])
+                memory.output = _limit(computed, controller.output_low, controller.output_high)
+                memory.asked = _led(controller, lead_lags, lagged, row, level, memory.output)
+            if memory.computed < controller.followed_low or memory.computed > controller.followed_high:
+                limited = True
+            setpoint = memory.asked
+    if limited:
+        _track_limits(structure, controllers, memories, measured)
+    for level in range(structure.levels):
+        memory = memories[level]
+        memory.wait = (memory.wait if memory.wait else controllers[structure.first + level].every) - 1
+    return setpoint
+
+
+@compiled
+def _track_limits(structure: Any, controllers: Records, memories: Records, measured: FloatArray) -> None:
+    """Tell the controllers that were due what became of their outputs.
+
+    The setpoint that the secondary took; and while the secondary can move its measurement no further, that
+    measurement, so that the primary's integral goes no further either.
+    """
+    no_higher, no_lower, below = False, False, 0.0
+    for level in range(structure.levels):
+        controller, memory = controllers[structure.first + level], memories[level]
+        if controller.controls:
+            actual = _limit(memory.computed, controller.followed_low, controller.followed_high)
+            if no_higher:
+                actual = min(actual, below)
+            if no_lower:
+                actual = max(actual, below)
+            if memory.wait == 0:
+                track(controller, memory, actual)
+            at_high = memory.computed > controller.followed_high or no_higher
+            at_low = memory.computed < controller.followed_low or no_lower
+            no_higher, no_lower = (at_high, at_low) if controller.reverse else (at_low, at_high)
+            below = measured[level]
+
+
+# --- the final element and the processes -------------------------------------------------------------
+
+
+@compiled
+def _move(
+    structure: Any, held: float, drive: float, travel: float, signal: float
+) -> tuple[float, float, float, float]:
+    """Move the final element for a step: what it holds of its signal, its drive, its travel, and the mean travel."""
+    if abs(signal - held) > structure.resolution:
+        held = signal
+    target = _limit(held, structure.low, structure.high)
+    rate = structure.travel_per_step
+    move = _limit(target - drive, -rate, rate)
+    drive = target if move == target - drive else drive + move
+    # The drive runs at full speed and rests once there: mean of a ramp that may end early.
+    mean = drive - move * abs(move) * (0.5 / rate)
+    # The travel is left where it is within half the backlash of its drive.
+    half = structure.half_backlash
+    mean = _limit(travel, mean - half, mean + half)
+    return held, drive, _limit(travel, drive - half, drive + half), mean
+
+
+@compiled
+def _advance(
+    matrices: FloatArray, row: int, order: int, states: FloatArray, at: int, now: float, before: float, earlier: float
+) -> None:
+    """Advance one row of states by a step, given the input as it acts now, one and two steps before."""
+    first = matrices.shape[1]
+    for i in range(order - 1, -1, -1):
+        value = matrices[row, i, first] * now + matrices[row, i, first + 1] * before
+        value += matrices[row, i, first + 2] * earlier
+        for j in range(i + 1):
+            value += matrices[row, i, j] * states[at, j]
+        states[at, i] = value
+
+
+@compiled
+def _output(matrices: FloatArray, row: int, order: int, states: FloatArray, at: int) -> float:
+    """What one row of states adds up to at the measurement [%]."""
+    output = 0.0
+    for i in range(order):
+        output += matrices[row, i, matrices.shape[1] + 3] * states[at, i]
+    return output
+
+
+# --- a run -------------------------------------------------------------------------------------------
+
+
+@compiled
+def _note(watched: Any, value: float) -> None:
+    """Note the extremes of a signal."""
+    if value < watched.low:
+        watched.low = value
+    if value > watched.high:
+        watched.high = value
+    if value < watched.window_low:
+        watched.window_low = value
+    if value > watched.window_high:
+        watched.window_high = value
+
+
+@compiled
+def _begin_window(watched: Any, value: float) -> bool:
+    """Begin a window, and return whether the signal has rested in the last one, against what it had moved."""
+    rested: bool = watched.window_high - watched.window_low <= AT_REST * max(-watched.low, watched.high)
+    watched.window_low = watched.window_high = value
+    return rested
+
+
+@compiled
+def _turn(heading: float, extreme: float, travel: float) -> tuple[float, float, int]:
+    """Follow the extremes of the travel; a turn counts once it has gone back far enough from the last one."""
+    gone = travel - extreme
+    if heading != 0.0 and gone * heading >= 0.0:
+        return heading, travel, 0
+    if abs(gone) < REVERSAL_PCT:
+        return heading, extreme, 0
+    return math.copysign(1.0, gone), travel, 1 if heading != 0.0 else 0
+
+
+@compiled
+def _run_one(
+    structures: Records,
+    processes: Records,
+    matrices: FloatArray,
+    controllers: Records,
+    lead_lags: FloatArray,
+    disturbances: Records,
+    disturbance_matrices: FloatArray,
+    case: Any,
+    rings: FloatArray,
+    reading: Any,
+    trace: FloatArray,
+    stride: int,
+) -> None:
+    """Run one case to its end, or to rest, and read it."""
+    structure = structures[case.structure]
+    first, levels, begin, end = structure.first, structure.levels, case.disturbed_from, case.disturbed_to
+    setpoint, window = case.setpoint, case.window
+    memories, lagged = np.zeros(levels, MEMORY), np.zeros((levels, lead_lags.shape[1]))
+    states, measured = np.zeros((levels, matrices.shape[1])), np.zeros(levels)
+    upsets = np.zeros((end - begin, disturbance_matrices.shape[1]))
+    watched = np.zeros(levels + 1, WATCHED)
+    for level in range(levels):
+        rings[level, : processes[first + level].last + 1] = 0.0
+    held = drive = travel = mean = error = heading = extreme = 0.0
+    error_sum = moved = peak = measurement = 0.0
+    peak_step, outside_step, turns, step = 0, -1, 0, 0
+    while True:
+        # Read the measurements.
+        for level in range(levels):
+            row = first + level
+            process = processes[row]
             if level:
-                start += plant.feedthrough(self.measured[level - 1], self.pads[level - 1])
-            upset = self.disturbances[level]
-            if upset is not None:
-                start += upset.at_start(n)
-        self.step = 0
-        self._base = 0
-        self._act()
-
-    def _act(self) -> None:
-        """Execute the controllers that are due and move the final element."""
-        at = self.step - self._base
-        signal = self._manual_pct
-        if self.loops.controlled:
-            measured = [history[pad + at] for history, pad in zip(self.measured, self.pads, strict=True)]
-            signal = self.loops.execute(self.step, self.setpoint, measured)
-            for kept, value in zip(self.kept_setpoint, self.loops.setpoint, strict=False):
-                kept[self.step] = value
-            for kept, value in zip(self.kept_output, self.loops.output, strict=False):
-                kept[self.step] = value
-        self.element.move(signal, self.travel[self.travel_pad + at])
-
-    def advance(self) -> None:
-        """Advance by one step."""
-        self.step += 1
-        at = self.step - self._base
-        source, row = self.travel, self.travel_pad + at
-        for plant, upset, history, pad in zip(
-            self.plants, self.disturbances, self.measured, self.pads, strict=True
-        ):
-            out = history[pad + at]
-            plant.advance(source, row, out)
-            if upset is not None:
-                part = out[upset.columns]
-                np.add(part, upset.at(self.step), out=part)
-            source, row = history, pad + at
-        self._act()
-
-    @property
-    def room_left(self) -> int:
-        """Steps until the signals must be rolled."""
-        return self._base + self.room - self.step
-
-    def roll(self) -> None:
-        """Make room: drop the signals that nothing looks back at any more."""
-        at = self.step - self._base
-        for history, pad in zip((self.travel, *self.measured), (self.travel_pad, *self.pads), strict=True):
-            history[: pad + 1] = history[at : at + pad + 1].copy()
-        for plant in self.plants:
-            plant.forget_rows()
-        self._base = self.step
-
-    def last(self, steps: int) -> tuple[list[FloatArray], FloatArray]:
-        """Measurements, innermost first, and travel of the last steps and the two before them [%]."""
-        at = self.step - self._base
-        return [
-            history[pad + at - steps - 1 : pad + at + 1]
-            for history, pad in zip(self.measured, self.pads, strict=True)
-        ], self.travel[self.travel_pad + at - steps - 1 : self.travel_pad + at + 1]
-
-    def keep(self, columns: IntArray) -> None:
-        """Go on with some of the columns only, given in increasing order."""
-        self.plants = [plant.take(columns) for plant in self.plants]
-        self.loops = self.loops.take(columns)
-        self.element = self.element.take(columns)
-        self.disturbances = [
-            upset.take(columns) if isinstance(upset, DisturbanceSignals) else upset
-            for upset in self.disturbances
-        ]
-        self.setpoint, self._manual_pct = self.setpoint[columns], self._manual_pct[columns]
-        # As rows in one piece, which is how delayed inputs are gathered.
-        self.travel = self.travel.take(columns, axis=1)
-        self.measured = [history.take(columns, axis=1) for history in self.measured]
-
-    def traces(self, step: int) -> Traces:
-        """Return the signals from the start to a step that has been reached, of a run that keeps them."""
-        return Traces(
-            measurement_pct=tuple(
-                history[pad : pad + step + 1] for history, pad in zip(self.measured, self.pads, strict=True)
-            ),
-            travel_pct=self.travel[self.travel_pad : self.travel_pad + step + 1],
-            setpoint_pct=tuple(kept[: step + 1] for kept in self.kept_setpoint),
-            output_pct=tuple(kept[: step + 1] for kept in self.kept_output),
-        )
+                rings[level, step & process.last] = measured[level - 1]
+            at = step - process.delay
+            now, before = rings[level, at & process.last], rings[level, (at - 1) & process.last]
+            if step:
+                earlier = rings[level, (at - 2) & process.last]
+                _advance(matrices, row, process.order, states, level, now, before, earlier)
+            measurement = _output(matrices, row, process.order, states, level)
+            measurement += process.through_now * now + process.through_before * before
+            for one in range(begin, end):
+                upset = disturbances[one]
+                if upset.level == level:
+                    if step:
+                        _advance(disturbance_matrices, one, upset.order, upsets, one - begin, 1.0, 0.0, 0.0)
+                    measurement += _output(disturbance_matrices, one, upset.order, upsets, one - begin) + upset.through
+            measured[level] = measurement
+            _note(watched[level], measurement)
+        # Execute the controllers and move the final element.
+        if structure.in_manual:
+            signal = case.manual
+        else:
+            signal = _execute(structure, controllers, lead_lags, memories, lagged, measured, setpoint)
+        last_mean = mean
+        held, drive, travel, mean = _move(structure, held, drive, travel, signal)
+        rings[0, step & processes[first].last] = mean
+        _note(watched[levels], mean)
+        # Read what is asked of the response.
+        last_error, error = error, abs(setpoint - measurement)
+        if step:
+            error_sum += 0.5 * (last_error + error)
+        if abs(measurement) > abs(peak):
+            peak, peak_step = measurement, step
+        if abs(measurement - case.settled) > case.band:
+            outside_step = step
+        moved += abs(mean - last_mean)
+        heading, extreme, turned = _turn(heading, extreme, mean)
+        turns += turned
+        if trace.shape[1] and step % stride == 0:
+            point = step // stride
+            trace[0, point] = mean
+            for level in range(levels):
+                trace[1 + level, point] = measured[level]
+                trace[1 + levels + level, point] = memories[level].setpoint
+                trace[1 + 2 * levels + level, point] = memories[level].output
+        if step == case.steps:
+            break
+        if window and step % window == 0:
+            rested = _begin_window(watched[levels], mean)
+            for level in range(levels):
+                rested = _begin_window(watched[level], measured[level]) and rested
+            if rested and step > window:
+                break
+        step += 1
+    reading.steps, reading.last, reading.error_sum = step, measurement, error_sum
+    reading.peak, reading.peak_step, reading.outside_step = peak, peak_step, outside_step
+    reading.low, reading.high = watched[levels - 1].low, watched[levels - 1].high
+    reading.moved, reading.turns = moved, turns
 
 
-class Loops:
-    """The controllers of n columns at work, outermost last."""
+@compiled
+def run(
+    structures: Records,
+    processes: Records,
+    matrices: FloatArray,
+    controllers: Records,
+    lead_lags: FloatArray,
+    disturbances: Records,
+    disturbance_matrices: FloatArray,
+    cases: Records,
+    readings: Records,
+    traces: FloatArray,
+    stride: int,
+) -> None:
+    """Run cases one after the other and fill in what is read off them.
 
-    def __init__(
-        self, controlled: Sequence[tuple[int, ControllerArrays]], columns: int, *, keep_setpoints: bool
-    ) -> None:
-        self.controlled = controlled
-        self.memory = [at_rest(columns) for _ in controlled]
-        self.setpoint = [np.zeros(columns) for _ in controlled]
-        self.output = [np.zeros(columns) for _ in controlled]
-        self._limited = [np.zeros(columns, dtype=bool) for _ in controlled]
-        self._cut = np.zeros(columns, dtype=bool)
-        self._keep_setpoints = keep_setpoints
-        # A primary whose output limits lie inside its secondary's setpoint limits needs no second limit.
-        self._limit_setpoint = [
-            position + 1 < len(controlled)
-            and bool(
-                np.any(controlled[position + 1][1].output_low_pct < arrays.setpoint_low_pct)
-                or np.any(controlled[position + 1][1].output_high_pct > arrays.setpoint_high_pct)
-            )
-            for position, (_, arrays) in enumerate(controlled)
-        ]
-        # What a controller may ask for in the end: its own limits, and those of the setpoint that it commands.
-        self._low = [arrays.output_low_pct for _, arrays in controlled]
-        self._high = [arrays.output_high_pct for _, arrays in controlled]
-        for position, (_, arrays) in enumerate(controlled[:-1]):
-            self._low[position + 1] = np.maximum(self._low[position + 1], arrays.setpoint_low_pct)
-            self._high[position + 1] = np.minimum(self._high[position + 1], arrays.setpoint_high_pct)
+    Parameters
+    ----------
+    structures, processes, matrices, controllers, lead_lags, disturbances, disturbance_matrices
+        The parts of a `Plant`.
+    cases : (n,) array of CASE
+        Runs of its structures.
+    readings : (n,) array of READING
+        Overwritten.
+    traces : (n, w, k) float array
+        Overwritten with every ``stride``-th step of the signals [%]: travel, then by level the measurements, the
+        setpoints and the outputs; k = 0 where no signals are to be kept.
+    stride : int
+        Steps from one point of the traces to the next.
 
-    @property
-    def limited(self) -> bool:
-        """True where a limit acts on any controller."""
-        return any(bool(limited.any()) for limited in self._limited)
-
-    def take(self, columns: IntArray) -> "Loops":
-        """Return the controllers of some columns as they stand."""
-        other = Loops(
-            [(level, arrays.take(columns)) for level, arrays in self.controlled],
-            len(columns),
-            keep_setpoints=self._keep_setpoints,
-        )
-        for old, new in zip(self.memory, other.memory, strict=True):
-            new.integral, new.filtered = old.integral[columns], old.filtered[columns]
-            new.derivative, new.derivative_input = old.derivative[columns], old.derivative_input[columns]
-            new.output = old.output[columns]
-        other.setpoint = [values[columns] for values in self.setpoint]
-        other.output = [values[columns] for values in self.output]
-        other._limited = [values[columns] for values in self._limited]
-        return other
-
-    def execute(self, k: int, setpoint: FloatArray, measured: Sequence[FloatArray]) -> FloatArray:
-        """Run the controllers that are due at step ``k``, outermost first, and return the valve signal [%]."""
-        scanned: list[tuple[int, BoolArray | bool]] = []
-        for loop in reversed(range(len(self.controlled))):
-            level, arrays = self.controlled[loop]
-            due: BoolArray | bool = (
-                k % arrays.every == 0 if isinstance(arrays.every, int) else np.remainder(k, arrays.every) == 0
-            )
-            if due is not False:
-                output, limited = self.output[loop], self._limited[loop]
-                setpoint = self._take_setpoint(loop, setpoint, due)
-                computed = scan(arrays.coefficients, self.memory[loop], setpoint, measured[level], due=due)
-                np.maximum(computed, arrays.output_low_pct, out=output)
-                np.minimum(output, arrays.output_high_pct, out=output)
-                np.not_equal(output, computed, out=limited)
-                if self._limit_setpoint[loop]:
-                    np.logical_or(limited, self._cut, out=limited)
-                scanned.append((loop, due))
-            setpoint = self.output[loop]
-        if scanned:
-            limited = self._limited[0]
-            for other in self._limited[1:]:
-                limited = limited | other
-            columns = limited.nonzero()[0]
-            if columns.size:
-                self._track(columns, dict(scanned), measured)
-        return setpoint
-
-    def _take_setpoint(self, loop: int, asked: FloatArray, due: BoolArray | bool) -> FloatArray:
-        """The setpoint that a controller which is due takes of what it is asked for."""
-        if self._limit_setpoint[loop]:
-            arrays, setpoint = self.controlled[loop][1], self.setpoint[loop]
-            np.maximum(asked, arrays.setpoint_low_pct, out=setpoint, where=due)
-            np.minimum(setpoint, arrays.setpoint_high_pct, out=setpoint)
-            np.not_equal(setpoint, asked, out=self._cut)
-            return setpoint
-        if due is True and not self._keep_setpoints:
-            return asked
-        np.copyto(self.setpoint[loop], asked, where=due)
-        return self.setpoint[loop]
-
-    def _track(
-        self, columns: IntArray, scanned: dict[int, BoolArray | bool], measured: Sequence[FloatArray]
-    ) -> None:
-        """Tell the controllers of some columns that were due what became of their outputs.
-
-        The setpoint that the secondary took; and while the secondary can move its measurement no
-        further, that measurement, so that the primary's integral goes no further either.
-        """
-        no_higher = no_lower = np.zeros(len(columns), dtype=bool)
-        for loop, (_, arrays) in enumerate(self.controlled):
-            computed = self.memory[loop].output[columns]
-            low, high = self._low[loop][columns], self._high[loop][columns]
-            actual = np.minimum(np.maximum(computed, low), high)
-            if loop:
-                below = measured[self.controlled[loop - 1][0]][columns]
-                actual = np.where(no_higher, np.minimum(actual, below), actual)
-                actual = np.where(no_lower, np.maximum(actual, below), actual)
-            due = scanned.get(loop, False)
-            if due is True:
-                track(arrays.coefficients, self.memory[loop], actual, columns)
-            elif due is not False:
-                part = due[columns]
-                track(arrays.coefficients, self.memory[loop], actual[part], columns[part])
-            at_high, at_low = (computed > high) | no_higher, (computed < low) | no_lower
-            reverse = arrays.reverse[columns]
-            no_higher = np.where(reverse, at_high, at_low)
-            no_lower = np.where(reverse, at_low, at_high)
+    Source: K. J. Astrom, B. Wittenmark, Computer-Controlled Systems, 3rd ed. 1997, ch. 2 and 8 (sampling of lags and
+    dead time, digital PID; chapters from memory).
+    """
+    levels, last = 0, 0
+    for i in range(len(structures)):
+        levels = max(levels, structures[i].levels)
+    for i in range(len(processes)):
+        last = max(last, processes[i].last)
+    rings = np.zeros((levels, last + 1))
+    for i in range(len(cases)):
+        _run_one(
+            structures, processes, matrices, controllers, lead_lags, disturbances, disturbance_matrices,
+            cases[i], rings, readings[i], traces[i], stride,
+        )  # fmt: skip

@@ -10,6 +10,7 @@ from collections.abc import Sequence
 from dataclasses import dataclass, replace
 
 from loopdoc.engineering.frequency import LoopStage
+from loopdoc.engineering.lead_lag import LeadLag
 from loopdoc.engineering.pid import Controller
 from loopdoc.engineering.process import Process
 
@@ -53,6 +54,8 @@ class ControlStructure:
     final_element: FinalElement = FinalElement()
     start_pct: tuple[float, ...] = ()
     """Measurements, and setpoints, before the upset [%]; 50 % each if left empty."""
+    lead_lags: tuple[tuple[LeadLag, ...], ...] = ()
+    """Per process, those between its controller's output and what that commands; none if left empty."""
 
     def __post_init__(self) -> None:
         if not self.processes:
@@ -61,8 +64,12 @@ class ControlStructure:
             raise ValueError("a control structure needs one entry per process in its controllers")
         if not self.start_pct:
             object.__setattr__(self, "start_pct", (50.0,) * len(self.processes))
+        if not self.lead_lags:
+            object.__setattr__(self, "lead_lags", ((),) * len(self.processes))
         if len(self.start_pct) != len(self.processes):
             raise ValueError("a control structure needs one start per process")
+        if len(self.lead_lags) != len(self.processes):
+            raise ValueError("a control structure needs one entry per process in its lead-lags")
 
 
 def cascade_structure(
@@ -74,6 +81,7 @@ def cascade_structure(
         controllers=tuple(stage.controller for stage in stages),
         final_element=final_element,
         start_pct=start_pct,
+        lead_lags=tuple(stage.lead_lags for stage in stages),
     )
 
 
