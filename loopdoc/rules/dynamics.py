@@ -38,8 +38,8 @@ def loop_unstable(controlled: ControlledLoop, dynamics: Dynamics) -> Iterator[Dr
         its two integrations outrun its dead time.
     Holds:
         No mode of the closed loop grows, the loops below closed as they are tuned; dead time counts in full
-        and the execution interval as half of itself. A loop that turns over faster than that holds is judged
-        as it is sampled.
+        and the execution interval as half of itself. A loop too fast for that is judged as it is
+        sampled.
     What this check cannot see:
         A process that is not as the register says. A loop is judged only when those below it are stable, and one whose
         action drives the measurement away only by `action-wrong` and `split-range-direction`.

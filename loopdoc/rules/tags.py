@@ -157,7 +157,8 @@ def reference_unknown(reference: Reference, plant: Plant) -> Iterator[Draft]:
         Outputs go to loops, functions and final elements; functions take in and interlocks watch
         transmitters, instruments and the measurements of loops; interlocks act on final elements and loops;
         branches of a process are final elements that the loop moves; weights are given to what enters the
-        function; units stand under `units`.
+        function; units stand under `units`;
+        alarms warn of the hazards of loops.
     What this check cannot see:
         A tag that exists but is not the one meant.
     """
