@@ -99,6 +99,20 @@ def test_a_process_that_answers_at_once_is_not_simulated_without_an_interval(tmp
     assert "scenarios" in scanned
 
 
+@pytest.mark.parametrize(
+    ("high", "told"),
+    [
+        ("160 degC", "setpoint step: 10 % of span, 20 degC\n"),
+        ("105 degC", "setpoint step: 2.5 % of span, 5 degC, as far as the setpoint limit allows\n"),
+        ("100 degC", "setpoint step: none, since the normal setpoint stands at its limit\n"),
+    ],
+)
+def test_a_setpoint_step_goes_no_further_than_its_limit(tmp_path: Path, high: str, told: str) -> None:
+    controller = f"gain: 1, reset: 5 min, interval: 2 s, setpoint: {{normal: 100 degC, high: {high}}}"
+    _, text = response(tmp_path, "TIC-1001", heater(controller, "gain: 1.5 degC per %, lag: 5 min, dead_time: 20 s"))
+    assert told in text
+
+
 def test_where_a_model_comes_from_is_told(tmp_path: Path) -> None:
     process = "gain: 1.5 degC per %, lag: 5 min, dead_time: 20 s"
     for written, told in (

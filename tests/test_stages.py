@@ -276,6 +276,11 @@ def test_a_gain_margin_is_that_of_the_sampled_loop_where_half_an_interval_is_not
             "form: series\n      rate: 8 min\n      gain: 0",
             "the settings of TIC-2014 do not make a controller",
         ),
+        (
+            "gain: 1.8",
+            "rate: 10 s\n      derivative_filter: 0\n      gain: 1.8",
+            "the settings of TIC-2014 do not make a controller: the derivative filter factor",
+        ),
     ],
 )
 def test_what_is_lacking_is_named(tmp_path: Path, old: str, new: str, reason: str) -> None:

@@ -147,7 +147,7 @@ def _controller(plant: Plant, loop: ControlledLoop, route: Route) -> tuple[Contr
         settings = settings_of(written, tag)
         output = known(written.output)
         setpoint = known(written.setpoint)
-        weight = known(written.setpoint_weight)
+        weight, smoothing = known(written.setpoint_weight), known(written.derivative_filter)
         low, high = _output_limits(output, route, tag)
         setpoint_low = _percent_of(known(setpoint.low) if setpoint else None, own, 0.0)
         setpoint_high = _percent_of(known(setpoint.high) if setpoint else None, own, 100.0)
@@ -155,7 +155,7 @@ def _controller(plant: Plant, loop: ControlledLoop, route: Route) -> tuple[Contr
             gain=settings.gain if action == "reverse" else -settings.gain,
             reset_s=settings.reset_s,
             rate_s=settings.rate_s,
-            derivative_filter=known(written.derivative_filter) or DERIVATIVE_FILTER,
+            derivative_filter=DERIVATIVE_FILTER if smoothing is None else smoothing,
             setpoint_weight=1.0 if weight is None else weight,
             derivative_setpoint_weight=1.0 if known(written.rate_on) == "error" else 0.0,
             interval_s=_seconds(written.interval),

@@ -204,11 +204,21 @@ def _scenario_lines(comparison: Comparison) -> Iterator[str]:
 def _upsets_told(comparison: Comparison) -> Iterator[str]:
     """What the rows of the scenarios mean."""
     own = measured_range(comparison.dynamics.chain.lead)
-    step = f"{_shown(UPSET_PCT * own.span / 100.0)} {own.unit.symbol}"
+    for entry in comparison.scenarios:
+        setpoint = entry.tuned.setpoint_pct[-1]
+        if entry.scenario.setpoint_step_pct and setpoint is not None:
+            made = float(setpoint[-1]) - comparison.start_pct[-1]
+            if abs(made) < 1e-9:
+                yield "setpoint step: none, since the normal setpoint stands at its limit"
+                continue
+            limited = abs(made - entry.scenario.setpoint_step_pct) > 1e-9
+            yield (
+                f"setpoint step: {_shown(made)} % of span, {_shown(made * own.span / 100.0)} {own.unit.symbol}"
+                f"{', as far as the setpoint limit allows' if limited else ''}"
+            )
     yield (
-        f"setpoint step: {_shown(UPSET_PCT)} % of span, {step}, within the setpoint limits; the other upsets that the "
-        f"register does not declare: a step of {_shown(UPSET_PCT)} % of span at that measurement, through the lags of "
-        f"its process, or a load of {_shown(UPSET_PCT)} % at the input of an integrating one"
+        f"other upsets that the register does not declare: a step of {_shown(UPSET_PCT)} % of span at that "
+        f"measurement, through the lags of its process, or a load of {_shown(UPSET_PCT)} % at the input of an integrating one"
     )
     yield (
         "settling: to within 2 % of the step that upsets, 0 where that band is never left, ∞ where it is not seen to "
