@@ -447,7 +447,7 @@ def interlock_table(
         )
     columns = _columns(
         language, ("Interlock", 9), ("Service", 19), ("Layer", 7), ("Initiated by", 24), ("Acts here", 18),
-        ("Reset", 23),
+        ("Reset|of an interlock", 23),
     )  # fmt: skip
     return Table(language.label("Interlocks"), columns, tuple(rows)) if rows else None
 

@@ -102,6 +102,8 @@ class Drawing:
     rows: tuple[tuple[Panel, ...], ...]
     caption: str = ""
     """Scenario and assumptions; written below a figure that stands alone. A document sets it as its own text."""
+    decimal_comma: bool = False
+    """Whether the numbers of the axes have a comma in the place of the point."""
 
 
 def to_svg(drawing: Drawing) -> str:
@@ -118,6 +120,8 @@ def to_svg(drawing: Drawing) -> str:
     text = re.sub(r'style="([^"]*)"', _as_attributes, text)
     # Matplotlib numbers its groups anew in each figure; a page may hold several.
     text = re.sub(r'(<g) id="[^"]*"', r"\1", text)
+    if drawing.decimal_comma:
+        text = re.sub(r">([-−]?\d+)\.(\d+)</text>", r">\1,\2</text>", text)
     return re.sub(r"(<svg[^>]*>)", rf'\1<title>{_escaped(drawing.title)}</title>', text, count=1).replace(
         "<svg", '<svg role="img"', 1
     )

@@ -47,7 +47,7 @@ def figure(plant: Plant, comparison: Comparison, language: Language = ENGLISH) -
     columns = columns[:1] + [(replace(up, y_label=""), replace(down, y_label="")) for up, down in columns[1:]]
     title = language.response_title(chain.lead.tag, chain.final_element.tag)
     rows = (tuple(up for up, _ in columns), tuple(down for _, down in columns))
-    return Drawing(title, rows, whole_caption(comparison, language))
+    return Drawing(title, rows, whole_caption(comparison, language), language.decimal_comma)
 
 
 def panels(

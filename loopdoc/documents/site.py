@@ -11,6 +11,7 @@ from typing import Any
 from markupsafe import Markup
 
 from loopdoc.documents.basis import Basis, Page
+from loopdoc.documents.language import ENGLISH
 from loopdoc.documents.responses import scheme_chains
 from loopdoc.documents.schedule_effects import MARKS, MODES
 from loopdoc.documents.site_around import ROOT, Around, Entry, Link, is_told_apart
@@ -22,6 +23,7 @@ from loopdoc.documents.site_script import data_block, policy, script
 from loopdoc.documents.site_source import Excerpt, Marked, Sources
 from loopdoc.documents.values import shown
 from loopdoc.documents.whereabouts import anchor, file_name, unit_of
+from loopdoc.documents.wording import listed
 from loopdoc.engineering.comparison import Comparison
 from loopdoc.engineering.pairing import Scheme
 from loopdoc.register.model import FinalElement, Function, Loop, Origin, known
@@ -281,9 +283,21 @@ class Site:
             "units": choices((row.unit, f"{row.unit} {names.get(row.unit, '')}".strip()) for row in rows if row.unit),
             "kinds": choices((row.kind, row.kind) for row in rows),
             "documents": len(self._places.issued),
+            "languages": _languages(self._places.issued),
         }
         page = Page("", INDEX, document, "index.html", view)
         return page, self._frame(INDEX, page, data={"also": [row.also for row in rows]})
+
+
+def _languages(issued: Sequence[Issue]) -> str:
+    """Which kinds are not in English, in a sentence; empty where all are."""
+    kinds = dict.fromkeys(one.page.document.kind for one in issued if one.page.document.language != ENGLISH.code)
+    if not kinds:
+        return ""
+    codes = dict.fromkeys(one.page.document.language for one in issued if one.page.document.kind in kinds)
+    told = f"In the language {listed(codes)}: {listed(kinds)}"
+    rest = len(kinds) < len(dict.fromkeys(one.page.document.kind for one in issued))
+    return f"{told}. The other kinds have no catalogue in that language and are in English." if rest else f"{told}."
 
 
 def _first(values: Iterable[str]) -> dict[str, int]:

@@ -3,10 +3,12 @@
 from __future__ import annotations
 
 from loopdoc.documents.language.english import English
+from loopdoc.documents.language.german import German
 
 Language = English
 """A catalogue: the English one, or one of another language with the same members."""
 
 ENGLISH: Language = English()
-LANGUAGES: dict[str, Language] = {found.code: found for found in (ENGLISH,)}
+GERMAN: Language = German()
+LANGUAGES: dict[str, Language] = {found.code: found for found in (ENGLISH, GERMAN)}
 """Catalogues by their ISO 639-1 codes."""

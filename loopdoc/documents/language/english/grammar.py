@@ -18,12 +18,14 @@ class EnglishGrammar:
 
     code = "en"
     """ISO 639-1."""
+    decimal_comma = False
+    """Whether a comma stands in numbers where English has a point."""
 
     # -- words
 
     def label(self, text: str) -> str:
-        """A heading or label; in English it is its own name."""
-        return text
+        """A heading or label; in English its own name, without what tells two of one name apart behind a bar."""
+        return text.partition("|")[0]
 
     def term(self, kind: str, word: str) -> str:
         """A word of one of the register's closed lists, such as a mode or a fail position."""

@@ -38,11 +38,11 @@ _NUMBER = re.compile(r"(?<![\w.,])(\d+)(?:\.(\d+))?")
 _NUMBERS = ("kein", "ein", "zwei", "drei", "vier", "fünf", "sechs", "sieben", "acht", "neun", "zehn", "elf", "zwölf")
 _UNITS = {
     "week": "Woche", "weeks": "Wochen", "month": "Monat", "months": "Monate", "year": "Jahr", "years": "Jahre",
-    "rpm": "1/min", "gal": "gal (US)",
+    "rpm": "1/min", "wt%": "Gew.-%", "vol%": "Vol.-%", "mol%": "Mol-%",
 }  # fmt: skip
 _COUNTED = {
     # noun: gender, singular, plural
-    "control scheme": ("m", "Regelkreisverbund", "Regelkreisverbünde"),
+    "control scheme": ("f", "Regelung", "Regelungen"),
     "indicator": ("f", "Anzeige", "Anzeigen"),
     "interlock": ("f", "Verriegelung", "Verriegelungen"),
     "loop": ("m", "Regelkreis", "Regelkreise"),
@@ -64,6 +64,7 @@ class GermanGrammar(EnglishGrammar):
     """Lists, articles, values and the words of the register's closed lists."""
 
     code = "de"
+    decimal_comma = True
 
     # -- words
 

@@ -6,9 +6,10 @@ a German noun that carries article and case.
 
 from __future__ import annotations
 
+from loopdoc.documents.language.english.grammar import NO_BREAK
 from loopdoc.documents.language.english.naming import DRIVES, EnglishNaming, stem
 from loopdoc.documents.language.facts import Moves
-from loopdoc.documents.language.german.grammar import NO_BREAK, GermanGrammar, with_article
+from loopdoc.documents.language.german.grammar import GermanGrammar, with_article
 from loopdoc.documents.language.noun import Noun
 from loopdoc.register.model import FinalElement, Loop, known
 

@@ -55,7 +55,8 @@ _PATTERNS = (
     (r"the output follows whatever error was left", "der Ausgang folgt der verbliebenen Regeldifferenz"),
     (r"its lag is on hold", "seine Zeitkonstante ist noch offen (HOLD)"),
     (r"its lag could not be read", "seine Zeitkonstante ist nicht lesbar"),
-    (rf"its size, or the range of ({_TAG}), is not known", r"seine Größe oder der Messbereich von \1 ist nicht bekannt"),
+    (rf"its size, or the range of ({_TAG}), is not known", r"seine Größe oder der Messbereich von \1 ist nicht "
+     r"bekannt"),
 )  # fmt: skip
 
 

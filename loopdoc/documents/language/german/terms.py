@@ -61,7 +61,7 @@ TERMS: dict[str, dict[str, str]] = {
     "not followed": {"track": "nachführen", "hold": "halten", "nothing": "keine Maßnahme"},
     "effect": {"rises": "steigt", "falls": "fällt"},
     "priority": {"low": "niedrig", "medium": "mittel", "high": "hoch", "critical": "kritisch"},
-    "hazard": {"high": "hoch", "low": "tief", "both": "hoch und tief", "none": "keine"},
+    "hazard": {"high": "hoch", "low": "niedrig", "both": "hoch und niedrig", "none": "keine"},
     "element": {
         "control valve": "Regelventil",
         "on-off valve": "Auf/Zu-Ventil",
