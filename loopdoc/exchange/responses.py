@@ -218,7 +218,8 @@ def _upsets_told(comparison: Comparison) -> Iterator[str]:
             )
     yield (
         f"other upsets that the register does not declare: a step of {_shown(UPSET_PCT)} % of span at that "
-        f"measurement, through the lags of its process, or a load of {_shown(UPSET_PCT)} % at the input of an integrating one"
+        f"measurement, through the lags of its process, or a load of {_shown(UPSET_PCT)} % at the input of an "
+        "integrating one"
     )
     yield (
         "settling: to within 2 % of the step that upsets, 0 where that band is never left, ∞ where it is not seen to "
