@@ -154,7 +154,8 @@ def _parser() -> argparse.ArgumentParser:
         metavar="KIND",
         default=[],
         help="narrative, loop-sheet, response, check-record, alarm-schedule, cause-and-effect, tuning-schedule, "
-        "failure-effects, channel-list, instrument-list (default: all)",
+        "failure-effects, channel-list, instrument-list, check-report, and with --against revision-summary "
+        "(default: all)",
     )
     issue.add_argument(
         "--against",
@@ -400,7 +401,7 @@ def _issue(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int
     if arguments.jobs < 1:
         stderr.write("loopdoc: --jobs takes 1 or more\n")
         return EXIT_UNREADABLE
-    if arguments.documents == ["revision-summary"] and not arguments.against:
+    if "revision-summary" in arguments.documents and not arguments.against:
         stderr.write("loopdoc: a revision summary needs --against OLD\n")
         return EXIT_UNREADABLE
     basis = _basis(arguments.register, stderr, with_records="check-record" in kinds, against=arguments.against)
@@ -489,8 +490,9 @@ def _compare(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> i
     found = compared(old, new, old_named=arguments.old, new_named=arguments.new or str(arguments.register))
     if arguments.documents:
         from loopdoc.documents.affected import documents_between
+        from loopdoc.documents.issue import KINDS
 
-        found = replace(found, documents=documents_between(old, new))
+        found = replace(found, documents=documents_between(old, new, KINDS))
     told = {"json": comparison_json, "markdown": comparison_markdown}.get(arguments.format, comparison_text)
     stdout.write(told(found))
     return EXIT_FOUND if found.differs else EXIT_CLEAN

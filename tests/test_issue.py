@@ -63,7 +63,7 @@ def test_every_page_carries_title_block_cautions_and_page_number(issued: Path) -
     files = sorted(issued.rglob("*.pdf"))
     assert {file.parent.name for file in files} == {
         "narratives", "loop-sheets", "responses", "check-records", "alarm-schedules", "cause-and-effect",
-        "tuning-schedules", "failure-effects", "channel-lists", "instrument-lists",
+        "tuning-schedules", "failure-effects", "channel-lists", "instrument-lists", "check-report",
     }  # fmt: skip
     for file in files:
         pages = pypdf.PdfReader(file).pages

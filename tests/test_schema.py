@@ -27,9 +27,11 @@ DEFINITIONS = SCHEMA["$defs"]
 
 ROOT = """\
 format: 1
-site: {name: Tarn Hollow Solvent Recovery, owner: Process control group, language: en}
+site: {name: Tarn Hollow Solvent Recovery, owner: Process control group, language: en, department: Process control,
+       technical_reference: A. Meyer, classification: Internal}
 revision: {code: B, date: 2026-11-20, status: issued for construction, summary: Second issue,
-           prepared_by: Process control, checked_by: Instrumentation, approved_by: {hold: on leave}}
+           prepared_by: Process control, checked_by: Instrumentation, approved_by: {hold: on leave},
+           distribution: [Operations, Maintenance]}
 history:
   - {code: A, date: 2026-09-01, status: issued for review, summary: First issue for review,
      prepared_by: Process control, checked_by: Instrumentation, approved_by: Operations}

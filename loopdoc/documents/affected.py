@@ -2,25 +2,26 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator, Mapping
 
 from loopdoc.documents.against import WITHOUT_BARS
 from loopdoc.documents.basis import Basis, Page
 from loopdoc.documents.change_bars import blocks, difference
 from loopdoc.documents.enclosures import content
-from loopdoc.documents.issue import KINDS
 from loopdoc.documents.rendering import render
 from loopdoc.revisions.compare import DocumentChange
 
+Kinds = Mapping[str, Callable[[Basis], Iterator[Page]]]
 
-def documents_between(old: Basis, new: Basis) -> tuple[DocumentChange, ...]:
+
+def documents_between(old: Basis, new: Basis, kinds: Kinds) -> tuple[DocumentChange, ...]:
     """The documents that come, go or say something else than their title block's revision, in the order of an issue."""
-    return tuple(_changes(old, new))
+    return tuple(_changes(old, new, kinds))
 
 
-def _changes(old: Basis, new: Basis) -> Iterator[DocumentChange]:
-    for kind in (kind for kind in KINDS if kind not in WITHOUT_BARS):
-        before, after = ({(page.folder, page.name): page for page in side.pages(kind, KINDS[kind])}
+def _changes(old: Basis, new: Basis, kinds: Kinds) -> Iterator[DocumentChange]:
+    for kind in (kind for kind in kinds if kind not in WITHOUT_BARS):
+        before, after = ({(page.folder, page.name): page for page in side.pages(kind, kinds[kind])}
                          for side in (old, new))  # fmt: skip
         for key, page in after.items():
             if key not in before:

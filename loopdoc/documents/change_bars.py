@@ -21,6 +21,7 @@ REMOVED_BEFORE = "removed-before"
 _BLOCKS = ("p", "li", "tr", "h1", "h2", "h3", "h4", "figure", "svg")
 _HEADINGS = ("h1", "h2", "h3", "h4")
 _CELLS = ("td", "th")
+_NEXT_CELL = "\u241f"
 _VOID = frozenset({"br", "col", "hr", "img", "input", "link", "meta", "wbr"})
 _REVISIONS = "Revisions"
 _HOLD_NUMBER = re.compile("HOLD[\u00a0 ][0-9]+")
@@ -138,7 +139,7 @@ class _Reader(HTMLParser):
             self._block = (self._offset(), tag, len(text), depth)
             self._words = []
         elif self._block and tag in _CELLS:
-            self._words.append("\x1f")
+            self._words.append(_NEXT_CELL)
 
     def handle_startendtag(self, tag: str, attrs: Sequence[tuple[str, str | None]]) -> None:
         """An element of a drawing that closes itself: nothing opens."""
@@ -164,11 +165,11 @@ class _Reader(HTMLParser):
     def _key(self, name: str, start: int, end: int) -> str:
         if name in ("figure", "svg"):
             drawn = _NAMES.sub("", self._html[start:end])
-            return f"{name}\x1e{hashlib.sha256(drawn.encode()).hexdigest()}"
+            return f"{name}\u241e{hashlib.sha256(drawn.encode()).hexdigest()}"
         said = _HOLD_NUMBER.sub("HOLD", " ".join("".join(self._words).split()))
         if name in _HEADINGS:
             said = _SECTION_NUMBER.sub("", said)
-        return f"{name}\x1e{said}"
+        return f"{name}\u241e{said}"
 
     def _offset(self) -> int:
         line, column = self.getpos()

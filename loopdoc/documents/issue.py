@@ -12,12 +12,14 @@ from pathlib import Path
 from loopdoc.documents.against import page_html, pages_against
 from loopdoc.documents.basis import Basis, Page
 from loopdoc.documents.check_record import check_records
+from loopdoc.documents.check_report import check_reports
 from loopdoc.documents.enclosures import enclosures
 from loopdoc.documents.loop_sheet import loop_sheets
 from loopdoc.documents.narrative import narratives
 from loopdoc.documents.pdf import Enclosure, ensure_available, to_pdf
 from loopdoc.documents.rendering import web_style_sheet
 from loopdoc.documents.responses import responses, supplements
+from loopdoc.documents.revision_summary import revision_summaries
 from loopdoc.documents.schedule_alarms import alarm_schedules
 from loopdoc.documents.schedule_effects import cause_and_effect_charts
 from loopdoc.documents.schedule_failures import failure_schedules
@@ -37,6 +39,8 @@ KINDS: dict[str, Callable[[Basis], Iterator[Page]]] = {
     "failure-effects": failure_schedules,
     "channel-list": channel_lists,
     "instrument-list": instrument_lists,
+    "check-report": check_reports,
+    "revision-summary": lambda basis: revision_summaries(basis, KINDS),
 }
 """Document kinds by the name that `loopdoc issue --documents` takes."""
 

@@ -103,6 +103,7 @@ def title_table_height(document: Document) -> float:
             (f"{document.site}, {document.owner}", 2, False),
         ),
         ((document.check_state, 4, False), (f"{document.fingerprint}, {document.generator}", 2, False)),
+        *(tuple((content, span, False) for _, content, span in row) for row in document.further),
     )
     height = 2.0
     for row in rows:

@@ -11,7 +11,7 @@ from loopdoc import __version__
 from loopdoc.documents.language import ENGLISH, Language
 from loopdoc.documents.values import DASH
 from loopdoc.engineering.pairing import Plant
-from loopdoc.register.model import Revision, known
+from loopdoc.register.model import Hold, Revision, known
 from loopdoc.rules.finding import CheckResult, Level
 
 HOLDS_PERMITTED = ("issued for review", "issued for information")
@@ -57,9 +57,31 @@ class Document:
     """Why DRAFT stands across the page; empty where it does not."""
     cautions: str = CAUTIONS
     language: str = "en"
+    department: str = ""
+    """Of this and the next three: empty where the register does not give it."""
+    technical_reference: str = ""
+    classification: str = ""
+    distribution: str = ""
     bars: str = ""
     """What the bars beside the text mark, or that the document is new; empty where it bears none."""
     generator: str = f"loopdoc {__version__}"
+
+    @property
+    def further(self) -> tuple[tuple[tuple[str, str, int], ...], ...]:
+        """Rows of the title block for what only some registers give: label, text and columns of six of each cell."""
+        rows: list[tuple[tuple[str, str, int], ...]] = []
+        if self.department or self.technical_reference or self.classification:
+            rows.append(
+                (
+                    ("Responsible department", self.department or DASH, 2),
+                    ("Technical reference", self.technical_reference or DASH, 2),
+                    ("Classification", self.classification or DASH, 1),
+                    ("Language", self.language, 1),
+                )
+            )
+        if self.distribution:
+            rows.append((("Distribution", self.distribution, 6),))
+        return tuple(rows)
 
 
 def fingerprint(sources: Mapping[str, bytes]) -> str:
@@ -106,6 +128,10 @@ def document(
         draft=draft_reason(plant, result, language),
         cautions=language.cautions(),
         language=language.code,
+        department=_given(site.department if site else None, language),
+        technical_reference=_given(site.technical_reference if site else None, language),
+        classification=_given(site.classification if site else None, language),
+        distribution=", ".join(revision.distribution) if revision else "",
     )
 
 
@@ -131,6 +157,11 @@ def draft_reason(plant: Plant, result: CheckResult, language: Language = ENGLISH
     if plant.register.holds and status not in HOLDS_PERMITTED:
         return language.holds_open(language.term("status", status) if status else "")
     return ""
+
+
+def _given(written: str | Hold | None, language: Language) -> str:
+    """A value of the register, HOLD where it is held; empty where it is not given."""
+    return "" if written is None else language.shown(written)
 
 
 def _iso_date(written: str | None) -> str:

@@ -425,6 +425,12 @@ class Site(Part):
     owner: str | Hold | None
     language: str | None
     """ISO 639-1 code of the language in which the register is written and its documents are issued."""
+    department: str | Hold | None
+    """Who answers for the documents within the owner's organisation."""
+    technical_reference: str | Hold | None
+    """Who answers questions about their contents."""
+    classification: str | Hold | None
+    """Who may see the documents, as the owner classes them."""
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -440,6 +446,8 @@ class Revision(Part):
     prepared_by: str | Hold | None
     checked_by: str | Hold | None
     approved_by: str | Hold | None
+    distribution: tuple[str, ...]
+    """Who gets the documents of this revision."""
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

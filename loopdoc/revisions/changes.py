@@ -125,6 +125,11 @@ _Key = tuple[str, str]
 def changes_between(old: Register, new: Register) -> tuple[TagChange, ...]:
     """What the new register says differently from the old one, in the order of sections and tags."""
     before, after = _entries(old), _entries(new)
+    # That the revision compared with has become a line of the history is how revisions go, and no change.
+    revision = before["register", "register"].data.get("revision")
+    code = told(revision.get("code")) if isinstance(revision, Mapping) else ""
+    if code not in before["register", "register"].data["history"]:
+        after["register", "register"].data["history"].pop(code, None)
     names = [
         found
         for section in ("interlocks", "loops", "final_elements", "instruments", "functions")

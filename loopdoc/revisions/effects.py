@@ -216,6 +216,7 @@ def _told(effect: FailureEffect) -> str:
     parts = []
     if effect.mode:
         parts.append(f"controller to {effect.mode}{f', output {effect.forced_output}' if effect.forced_output else ''}")
+    parts += [f"sets off {trip.interlock.tag}" for trip in effect.initiated]
     parts += [_moved(move) for move in effect.elements]
     for one in effect.consequences:
         hazard = " to its hazard" if one.hazardous else ""
