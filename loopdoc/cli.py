@@ -165,6 +165,11 @@ def _parser() -> argparse.ArgumentParser:
     )
     issue.add_argument("--formats", default="pdf,html", metavar="LIST", help="pdf, html or pdf,html (default)")
     issue.add_argument(
+        "--language",
+        choices=("en", "de"),
+        help="language of the narratives and loop sheets; other kinds are in English (default: that of the register)",
+    )
+    issue.add_argument(
         "--jobs",
         type=int,
         default=os.cpu_count() or 1,
@@ -387,7 +392,9 @@ def _colour(stream: TextIO) -> bool:
 
 
 def _issue(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
+    from loopdoc.documents.house import HouseError
     from loopdoc.documents.issue import FORMATS, KINDS, issue
+    from loopdoc.documents.language import LANGUAGES
     from loopdoc.documents.pdf import PdfError
     from loopdoc.exchange.findings import summary
 
@@ -407,6 +414,8 @@ def _issue(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int
     basis = _basis(arguments.register, stderr, with_records="check-record" in kinds, against=arguments.against)
     if basis is None:
         return EXIT_UNREADABLE
+    if arguments.language:
+        basis = basis.in_language(LANGUAGES[arguments.language])
     status = EXIT_CLEAN
     progress = _progress(stderr)
 
@@ -422,9 +431,9 @@ def _issue(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int
 
     try:
         told = write(formats)
-    except PdfError as error:
+    except (HouseError, PdfError) as error:
         stderr.write(f"loopdoc: {error}\n")
-        if "html" not in formats or arguments.package:
+        if isinstance(error, HouseError) or "html" not in formats or arguments.package:
             return EXIT_UNREADABLE
         status = EXIT_FOUND
         told = write(["html"])
@@ -558,6 +567,7 @@ def _attest(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> in
     from loopdoc.documents.attest import Attestation, NotIssued
     from loopdoc.documents.attest_package import is_package, open_package, verify
     from loopdoc.documents.attest_report import packages_text, report_json, report_text
+    from loopdoc.documents.house import HouseError
     from loopdoc.documents.pdf import PdfError
     from loopdoc.exchange.escaping import for_terminal
     from loopdoc.register.files import is_register
@@ -586,7 +596,7 @@ def _attest(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> in
     attestation = Attestation(against)
     try:
         answered = [(name, attestation.attest(read())) for name, read in files]
-    except PdfError as error:
+    except (HouseError, PdfError) as error:
         stderr.write(f"loopdoc: {error}\n")
         return EXIT_UNREADABLE
     named = str(registers[0]) if registers else ""
@@ -716,25 +726,30 @@ def _at_revision(path: Path, named: str, stderr: TextIO) -> Loaded | None:
 def _basis(path: Path, stderr: TextIO, *, with_records: bool = False, against: str = "") -> Basis | None:
     """The register read, resolved, checked and calculated; None, with each reason told, where it cannot be read.
 
-    With the results of loop checks kept beside it, and with the register at an earlier revision, where they are
-    asked for.
+    With the site's own files beside it, the results of loop checks where they are asked for, and the register at an
+    earlier revision where one is named.
     """
     loaded = _load(path, stderr)
     earlier = _at_revision(path, against, stderr) if loaded is not None and against else None
     if loaded is None or (against and earlier is None):
         return None
     from loopdoc.documents.basis import basis_of
-
-    if not with_records:
-        return basis_of(loaded, against=basis_of(earlier) if earlier else None)
+    from loopdoc.documents.house import HouseError, read_house
     from loopdoc.exchange.record_report import faults_text
     from loopdoc.register.records import load_records
 
-    records = load_records(path.parent if path.is_file() else path)
+    folder = path.parent if path.is_file() else path
+    try:
+        house = read_house(folder)
+    except HouseError as error:
+        stderr.write(f"loopdoc: {error}\n")
+        return None
+    records = load_records(folder) if with_records else {}
     if isinstance(records, tuple):
         stderr.write(faults_text(records))
         return None
-    return basis_of(loaded, records, against=basis_of(earlier, records) if earlier else None)
+    before = basis_of(earlier, records, house=house) if earlier else None
+    return basis_of(loaded, records, against=before, house=house)
 
 
 def _unknown_rule(ids: Sequence[str], stderr: TextIO) -> int:

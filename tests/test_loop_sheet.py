@@ -71,7 +71,8 @@ class SetPage:
     """One sheet laid out by WeasyPrint: its boxes in points from the upper margin."""
 
     def __init__(self, page: Page) -> None:
-        fetcher, fonts, css = pdf._set_up()
+        fetcher, fonts = pdf._set_up()
+        css = pdf._css("")
         self.source = html(page)
         document = weasyprint.HTML(string=self.source, url_fetcher=fetcher).render(stylesheets=[css], font_config=fonts)
         self.count = len(document.pages)

@@ -20,14 +20,17 @@ from loopdoc import __version__
 from loopdoc.documents.basis import Basis, basis_of
 from loopdoc.documents.enclosures import (
     AGAINST_FOLDER,
+    HOUSE_FOLDER,
     PACKAGE_INDEX_KIND,
     REGISTER_FOLDER,
     RESULTS_KIND,
     RESULTS_NAME,
     STATEMENT_NAME,
     Statement,
+    house_fingerprint,
     statement,
 )
+from loopdoc.documents.house import HouseError, house_of
 from loopdoc.documents.issue import KINDS, pages_of, pdf_of
 from loopdoc.documents.titleblock import fingerprint
 from loopdoc.register.files import HeldFiles
@@ -52,6 +55,8 @@ class Enclosed:
     """Results of loop checks that the document shows; empty where there are none."""
     against: Mapping[str, bytes]
     """Files of the earlier register whose differences bear bars; empty where there are none."""
+    house: Mapping[str, bytes]
+    """Files that the site put in the place of ours."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -99,15 +104,16 @@ def enclosed_in(content: bytes) -> Enclosed | NotIssued:
     # A file from outside may be damaged anywhere, and the reader has an exception for each way.
     except (PyPdfError, KeyError, ValueError, TypeError, AttributeError, IndexError, RecursionError, OSError):
         return NotIssued("it is no PDF that loopdoc issued, or is damaged: it states no register")
-    sources, against = (
+    sources, against, house = (
         {name.removeprefix(folder): body for name, body in files.items() if name.startswith(folder)}
-        for folder in (REGISTER_FOLDER, AGAINST_FOLDER)
+        for folder in (REGISTER_FOLDER, AGAINST_FOLDER, HOUSE_FOLDER)
     )
     if found.root not in sources:
         return NotIssued(f"the register's file `{found.root}` is missing in it")
     if found.against in against:
         against = {found.against: against.pop(found.against), **against}
-    return Enclosed(found, {found.root: sources.pop(found.root), **sources}, files.get(RESULTS_NAME, b""), against)
+    sources = {found.root: sources.pop(found.root), **sources}
+    return Enclosed(found, sources, files.get(RESULTS_NAME, b""), against, house)
 
 
 class Attestation:
@@ -116,7 +122,7 @@ class Attestation:
     def __init__(self, register: Basis | None = None) -> None:
         self._register = register
         self._current: dict[str, dict[tuple[str, str], Statement]] = {}
-        self._issued_from: dict[tuple[str, str, bytes], Basis | Unreadable] = {}
+        self._issued_from: dict[tuple[str, str, str, bytes], Basis | Unreadable] = {}
 
     def attest(self, content: bytes) -> Attested | NotIssued:
         """Find out about one file.
@@ -141,6 +147,8 @@ class Attestation:
         return Attested(enclosed.statement, whole, unaltered, current, tuple(why for _, why in answers if why))
 
     def _register_whole(self, enclosed: Enclosed, content: bytes) -> tuple[Answer, str]:
+        if house_fingerprint(enclosed.house) != enclosed.statement.house:
+            return Answer.NO, "the site's own templates inside are not those whose fingerprint the document states"
         if fingerprint(enclosed.sources) == enclosed.statement.fingerprint:
             return Answer.YES, ""
         return Answer.NO, "the register inside is not the one whose fingerprint the document states"
@@ -152,6 +160,13 @@ class Attestation:
             return Answer.NOT_CHECKED, reason
         if told.kind == PACKAGE_INDEX_KIND:
             return Answer.NOT_CHECKED, "it lists the files of a package: attest the package's folder or archive"
+        try:
+            return self._same_again(enclosed, content)
+        except HouseError as error:
+            return Answer.NO, f"the site's own files inside cannot be used: {error}"
+
+    def _same_again(self, enclosed: Enclosed, content: bytes) -> tuple[Answer, str]:
+        told = enclosed.statement
         basis = self._basis_of(enclosed)
         if isinstance(basis, Unreadable):
             return Answer.NO, "the register inside cannot be read"
@@ -164,13 +179,15 @@ class Attestation:
         return Answer.NO, "its bytes are not those that the register inside gives: it was altered or saved anew"
 
     def _basis_of(self, enclosed: Enclosed) -> Basis | Unreadable:
-        key = (fingerprint(enclosed.sources), fingerprint(enclosed.against), enclosed.results)
+        sources, against, house = map(fingerprint, (enclosed.sources, enclosed.against, enclosed.house))
+        key = (sources, against, house, enclosed.results)
         if key not in self._issued_from:
             self._issued_from[key] = self._read_anew(enclosed)
         return self._issued_from[key]
 
     def _read_anew(self, enclosed: Enclosed) -> Basis | Unreadable:
         told = enclosed.statement
+        house = house_of(enclosed.house)
         read = read_records(enclosed.results, RESULTS_NAME) if enclosed.results else ()
         records = by_tag(record for record in read if isinstance(record, LoopRecord))
         before: Basis | None = None
@@ -178,9 +195,9 @@ class Attestation:
             loaded = load_files(HeldFiles(enclosed.against), told.against) if told.against in enclosed.against else None
             if not isinstance(loaded, Loaded):
                 return loaded or Unreadable((), {})
-            before = basis_of(loaded, records)
+            before = basis_of(loaded, records, house=house)
         now = load_files(HeldFiles(enclosed.sources), told.root)
-        return now if isinstance(now, Unreadable) else basis_of(now, records, against=before)
+        return now if isinstance(now, Unreadable) else basis_of(now, records, against=before, house=house)
 
     def _still_current(self, enclosed: Enclosed, content: bytes) -> tuple[Answer, str]:
         told = enclosed.statement
@@ -192,12 +209,15 @@ class Attestation:
         now = self._statements(self._register, told.kind).get((told.folder, told.name))
         if now is None:
             return Answer.NO, "the register no longer has what this document tells of"
+        same_house = now.house == told.house
         same_register = now.fingerprint == told.fingerprint
         # What a check record shows of the last results is no part of the register.
-        if now.content == told.content or (same_register and told.kind != RESULTS_KIND):
+        if now.content == told.content or (same_register and same_house and told.kind != RESULTS_KIND):
             return Answer.YES, ""
         if told.program != now.program:
             return Answer.NOT_CHECKED, f"it was issued by {told.program}, which may word the same facts otherwise"
+        if same_register and not same_house:
+            return Answer.NO, "stale: the site's own templates or words have changed since"
         if same_register:
             return Answer.NO, "stale: results of loop checks have been added or changed since"
         if now.revision != told.revision:

@@ -3,10 +3,11 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Iterator, Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import Any
 
-from loopdoc.documents.language import ENGLISH, Language
+from loopdoc.documents.house import NO_HOUSE, House
+from loopdoc.documents.language import ENGLISH, LANGUAGES, Language
 from loopdoc.documents.titleblock import Document, document
 from loopdoc.engineering.comparison import Comparison, NotSimulated, compare
 from loopdoc.engineering.dynamics import ChainDynamics, Dynamics
@@ -31,6 +32,8 @@ class Basis:
     """Results of loop checks kept beside the register, by tag, each loop's oldest first."""
     language: Language = ENGLISH
     """Of those documents that have a catalogue in it; the others are in English."""
+    house: House = NO_HOUSE
+    """What the site puts in the place of ours."""
     against: Basis | None = None
     """The register at the earlier revision against which the documents are issued."""
     times: TimeToAct = field(init=False)
@@ -41,6 +44,13 @@ class Basis:
 
     def __post_init__(self) -> None:
         object.__setattr__(self, "times", TimeToAct(self.plant))
+
+    def in_language(self, language: Language) -> Basis:
+        """The same, with its documents, and those that they are compared with, in this language."""
+        if language is self.language:
+            return self
+        before = self.against.in_language(language) if self.against else None
+        return replace(self, language=language, against=before, _pages={})
 
     def comparison(self, chain: ChainDynamics) -> Comparison | NotSimulated:
         """Time responses of a chain, or why there is none, simulated once for all documents."""
@@ -88,11 +98,13 @@ class Basis:
         language: Language = ENGLISH,
     ) -> Document:
         """Title block of one document of this register; ``kind`` is its English name."""
-        return document(
+        ours = document(
             self.plant, self.result, self.sources,
             kind=kind, code=code, title=title, supplementary_title=supplementary_title, unit=unit, serial=serial,
             language=language,
         )  # fmt: skip
+        cautions = " ".join(filter(None, (ours.cautions, self.house.cautions)))
+        return replace(ours, owner=self.house.owner or ours.owner, cautions=cautions, house=self.house)
 
 
 def basis_of(
@@ -100,12 +112,19 @@ def basis_of(
     records: Mapping[str, tuple[LoopRecord, ...]] | None = None,
     *,
     against: Basis | None = None,
+    house: House = NO_HOUSE,
 ) -> Basis:
-    """A register as read, resolved, checked and made ready to be calculated with, and the results of loop checks."""
+    """A register as read, resolved, checked and made ready to be calculated with, and the results of loop checks.
+
+    Its documents are in the language of the register.
+    """
     plant = Plant(loaded.register)
     dynamics = Dynamics(plant)
     result = check(plant, loaded.faults, dynamics=dynamics)
-    return Basis(plant, result, loaded.sources, dynamics, records or {}, against=against)
+    found = Basis(plant, result, loaded.sources, dynamics, records or {}, house=house, against=against)
+    site = loaded.register.site
+    own = site.language if site else None
+    return found.in_language(LANGUAGES[own]) if own in LANGUAGES else found
 
 
 @dataclass(frozen=True, slots=True)

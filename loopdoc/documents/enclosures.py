@@ -9,14 +9,18 @@ import hashlib
 import json
 from collections.abc import Iterator, Mapping
 from dataclasses import asdict, dataclass, replace
+from pathlib import PurePosixPath
 
 from loopdoc import __version__
 from loopdoc.documents.basis import Basis, Page
+from loopdoc.documents.house import FOLDER, House
 from loopdoc.documents.pdf import Enclosure
 from loopdoc.documents.rendering import render
 from loopdoc.documents.titleblock import fingerprint
 from loopdoc.register.records import records_text
 
+HOUSE_FOLDER = f"{FOLDER}/"
+"""Before the names of the files that the site put in the place of ours."""
 STATEMENT_NAME = "loopdoc.json"
 AGAINST_FOLDER = "against/"
 """The same for the earlier register, without which the bars could not be set again."""
@@ -56,6 +60,13 @@ class Statement:
     program: str
     against: str = ""
     """Name of the root file of the earlier register against which bars were set; empty where there is none."""
+    house: str = ""
+    """SHA-256 of the files that the site put in the place of ours; empty where there are none."""
+
+
+def house_fingerprint(house: Mapping[str, bytes]) -> str:
+    """SHA-256 of the site's own files; empty where there are none."""
+    return fingerprint(house) if house else ""
 
 
 def statement(kind: str, page: Page, sources: Mapping[str, bytes], against: Mapping[str, bytes] | None) -> Statement:
@@ -76,6 +87,7 @@ def statement(kind: str, page: Page, sources: Mapping[str, bytes], against: Mapp
         content=content(page),
         program=f"loopdoc {__version__}",
         against=next(iter(against or ()), ""),
+        house=house_fingerprint(document.house.files),
     )
 
 
@@ -92,9 +104,19 @@ def enclosures(basis: Basis, kind: str, page: Page) -> tuple[Enclosure, ...]:
             Enclosure(AGAINST_FOLDER + name, against[name], "application/yaml", f"Earlier register file {name}")
             for name in sorted(against)
         ),
+        *_house(basis.house),
         *_results(basis, kind, page),
         Enclosure(STATEMENT_NAME, told.encode(), "application/json", "What this document is and was made from"),
     )
+
+
+_MEDIA_TYPES = {".html": "text/html", ".css": "text/css", ".svg": "image/svg+xml", ".png": "image/png"}
+
+
+def _house(house: House) -> Iterator[Enclosure]:
+    for name, content in sorted(house.files.items()):
+        media_type = _MEDIA_TYPES.get(PurePosixPath(name).suffix, "application/yaml")
+        yield Enclosure(HOUSE_FOLDER + name, content, media_type, f"The site's own {name}")
 
 
 def _results(basis: Basis, kind: str, page: Page) -> Iterator[Enclosure]:

@@ -84,7 +84,7 @@ def issue(
     files: list[str] = []
     done, total = 0, len(pages) * len(formats)
     if "html" in formats:
-        write_whole(out / STYLE_SHEET, web_style_sheet().encode())
+        write_whole(out / STYLE_SHEET, web_style_sheet(basis.house.style_sheet).encode())
         files.append(STYLE_SHEET)
         site = Site(basis, issued, formats)
         for kind, page in issued:
@@ -130,13 +130,14 @@ def _pdfs(basis: Basis, issued: Sequence[tuple[str, Page]], jobs: int) -> Iterat
         yield from pool.map(_to_pdf, sources, chunksize=FILES_PER_BATCH)
 
 
-def _pdf_source(basis: Basis, kind: str, page: Page) -> tuple[str, tuple[Enclosure, ...], str]:
-    return page_html(page, stylesheet=""), enclosures(basis, kind, page), page.document.dated
+def _pdf_source(basis: Basis, kind: str, page: Page) -> tuple[str, tuple[Enclosure, ...], str, str]:
+    html = page_html(page, stylesheet="")
+    return html, enclosures(basis, kind, page), page.document.dated, basis.house.style_sheet
 
 
-def _to_pdf(source: tuple[str, tuple[Enclosure, ...], str]) -> bytes:
-    html, enclosed, dated = source
-    return to_pdf(html, enclosed, dated=dated)
+def _to_pdf(source: tuple[str, tuple[Enclosure, ...], str, str]) -> bytes:
+    html, enclosed, dated, own_style = source
+    return to_pdf(html, enclosed, dated=dated, own_style=own_style)
 
 
 def write_whole(path: Path, content: bytes) -> None:

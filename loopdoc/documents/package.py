@@ -19,7 +19,7 @@ from pathlib import Path
 
 from loopdoc.documents.against import page_html
 from loopdoc.documents.basis import Basis, Page
-from loopdoc.documents.enclosures import PACKAGE_INDEX_KIND
+from loopdoc.documents.enclosures import HOUSE_FOLDER, PACKAGE_INDEX_KIND
 from loopdoc.documents.issue import FORMATS, KINDS, STYLE_SHEET, issue, pages_of, pdf_of, write_whole
 from loopdoc.documents.page_fit import foot
 from loopdoc.documents.site_places import path_of
@@ -118,6 +118,7 @@ def basis_date(basis: Basis) -> str:
 
 def _register_files(basis: Basis) -> dict[str, bytes]:
     files = {f"{REGISTER_FOLDER}/{name}": content for name, content in basis.sources.items()}
+    files |= {f"{REGISTER_FOLDER}/{HOUSE_FOLDER}{name}": content for name, content in basis.house.files.items()}
     for tag, records in basis.records.items():
         files[f"{REGISTER_FOLDER}/{RECORDS_FOLDER}/{tag}.yaml"] = records_text(records).encode()
     return files

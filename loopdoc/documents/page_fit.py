@@ -77,6 +77,10 @@ def room(document: Document) -> float:
     return min(PAGE_HEIGHT, ABOVE_TITLE_BLOCK - title_block_height(document) - 1.0 * MM)
 
 
+LOGO_WIDTH = 33 * MM
+"""Of the title's cell, kept free for a logo [pt]."""
+
+
 def title_block_height(document: Document) -> float:
     """Height of the title block of templates/base.html [pt]."""
     cautions = paragraph_height(document.cautions, PAGE_WIDTH - 2 * MM, 6.2, 1.15) + 1.0 * MM + 0.4
@@ -89,7 +93,7 @@ def title_table_height(document: Document) -> float:
     draft = f" (DRAFT: {document.draft})" if document.draft else ""
     # Each cell as text, columns of six, and whether it is bold.
     rows = (
-        ((document.title, 3, False), (document.kind, 2, False), (document.number, 1, True)),
+        ((document.title, 3, False), (f"{document.kind}, {document.language}", 2, False), (document.number, 1, True)),
         (
             (document.supplementary_title, 3, False),
             (revision.code, 1, True),
@@ -106,9 +110,11 @@ def title_table_height(document: Document) -> float:
         *(tuple((content, span, False) for _, content, span in row) for row in document.further),
     )
     height = 2.0
-    for row in rows:
+    for number, row in enumerate(rows):
+        taken = LOGO_WIDTH if document.house.logo and number == 0 else 0.0
         lines = max(
-            line_count(content, span * PAGE_WIDTH / 6 - 2 * MM - 0.8, 7.6, bold=bold) for content, span, bold in row
+            line_count(content, span * PAGE_WIDTH / 6 - 2 * MM - 0.8 - (taken if place == 0 else 0.0), 7.6, bold=bold)
+            for place, (content, span, bold) in enumerate(row)
         )
         height += 6.6 + lines * 1.15 * 7.6 + 1.0 * MM + 0.4
     return height

@@ -76,31 +76,39 @@ def ensure_available() -> None:
 
 
 @lru_cache(maxsize=1)
-def _set_up() -> tuple[Any, Any, Any]:
-    """Fetcher, font configuration and style sheet, made once for a process: fonts are slow to load."""
-    weasyprint = _weasyprint()
+def _set_up() -> tuple[Any, Any]:
+    """Fetcher and font configuration, made once for a process: fonts are slow to load."""
+    _weasyprint()
     from weasyprint.text.fonts import FontConfiguration
     from weasyprint.urls import URLFetcher, URLFetcherResponse
 
     class PackageFetcher(URLFetcher):  # type: ignore[misc]
-        """Serves the package's fonts and refuses every other address."""
+        """Serves the package's fonts and images inside the page, and refuses every other address."""
 
         def fetch(self, url: str, headers: Any = None) -> Any:
             scheme, _, name = url.partition(":")
+            if url.startswith("data:image/"):
+                return super().fetch(url, headers)
             if scheme != "loopdoc-font":
                 raise ValueError(f"a document may not read {url}")
             return URLFetcherResponse(url, font(name), {"Content-Type": "font/ttf"})
 
     fetcher = PackageFetcher()
-    fonts = FontConfiguration()
-    css = weasyprint.CSS(string=style_sheet(), font_config=fonts, url_fetcher=fetcher)
-    return fetcher, fonts, css
+    return fetcher, FontConfiguration()
 
 
-def to_pdf(html: str, enclosures: Sequence[Enclosure] = (), *, dated: str = "") -> bytes:
+@lru_cache(maxsize=4)
+def _css(own: str) -> Any:
+    """The style sheet, read once for a process."""
+    fetcher, fonts = _set_up()
+    return _weasyprint().CSS(string=style_sheet(own), font_config=fonts, url_fetcher=fetcher)
+
+
+def to_pdf(html: str, enclosures: Sequence[Enclosure] = (), *, dated: str = "", own_style: str = "") -> bytes:
     """The PDF of one document, with files enclosed.
 
-    ``dated`` is the ISO date that the enclosures bear, if any; nothing comes from the clock.
+    ``dated`` is the ISO date that the enclosures bear, if any; nothing comes from the clock. ``own_style`` stands in
+    the place of our style sheet, where it is not empty.
 
     Raises
     ------
@@ -108,7 +116,8 @@ def to_pdf(html: str, enclosures: Sequence[Enclosure] = (), *, dated: str = "") 
         Pango is missing, or WeasyPrint complains of the HTML or CSS (no page with a silent fault is issued).
     """
     weasyprint = _weasyprint()
-    fetcher, fonts, css = _set_up()
+    fetcher, fonts = _set_up()
+    css = _css(own_style)  # what it says to screens only is passed over, as browsers do
     # Without a date, the first day that a PDF can bear.
     moment = datetime.fromisoformat(dated or "1970-01-01").replace(tzinfo=UTC)
     attachments = [
@@ -150,11 +159,9 @@ def _parsed(html: str, fetcher: Any) -> Any:
         tree = _tree(html)
     except ElementTree.ParseError:  # a template of the site's own, which browsers forgive
         return weasyprint.HTML(string=html, url_fetcher=fetcher)
-    import cssselect2
-
     page = weasyprint.HTML(string="<title></title>", url_fetcher=fetcher)
     page.etree_element = tree
-    page.wrapper_element = cssselect2.ElementWrapper.from_html_root(tree, content_language=None)
+    page.wrapper_element = type(page.wrapper_element).from_html_root(tree, content_language=None)
     return page
 
 

@@ -11,6 +11,8 @@ from typing import Any
 from jinja2 import FunctionLoader, StrictUndefined, select_autoescape
 from jinja2.sandbox import SandboxedEnvironment
 
+from loopdoc.documents.bounded import within_limits
+from loopdoc.documents.house import FOLDER, NO_HOUSE, House
 from loopdoc.documents.language import ENGLISH, LANGUAGES
 
 FONTS = {
@@ -28,10 +30,14 @@ def template_text(name: str) -> str:
     return files("loopdoc.templates").joinpath(name).read_text(encoding="utf-8")
 
 
-@lru_cache(maxsize=1)
-def _environment() -> SandboxedEnvironment:
+@lru_cache(maxsize=4)
+def _environment(house: House) -> SandboxedEnvironment:
+    def load(name: str) -> tuple[str, str, None]:
+        own = house.template(name)
+        return (template_text(name), name, None) if own is None else (own, f"{FOLDER}/{name}", None)
+
     environment = SandboxedEnvironment(
-        loader=FunctionLoader(template_text),
+        loader=FunctionLoader(load),
         autoescape=select_autoescape(default=True, default_for_string=True),
         undefined=StrictUndefined,
         trim_blocks=True,
@@ -45,11 +51,16 @@ def _environment() -> SandboxedEnvironment:
 def render(template: str, **view: Any) -> str:
     """The HTML of one document."""
     language = LANGUAGES[view["document"].language] if "document" in view else ENGLISH
-    return _environment().get_template(template).render(label=language.label, **view)
+    house = view["document"].house if "document" in view else NO_HOUSE
+
+    def page() -> str:
+        return _environment(house).get_template(template).render(label=language.label, **view)
+
+    return within_limits(page, template) if house.has_templates else page()
 
 
-@lru_cache(maxsize=1)
-def style_sheet() -> str:
+@lru_cache(maxsize=4)
+def style_sheet(own: str = "") -> str:
     """The style sheet for print: fonts through the package's own address, so the machine's fonts do not matter.
 
     Variables are put in here, since WeasyPrint would resolve them anew for every cell of every table.
@@ -59,9 +70,9 @@ def style_sheet() -> str:
         f"src: url('loopdoc-font:{name}') }}"
         for (family, style, weight), name in FONTS.items()
     )
-    css = template_text("style.css")
+    css = own or template_text("style.css")
     values = dict(re.findall(r"(--[\w-]+): ([^;}]+?)\s*[;}]", css))
-    return faces + "\n" + re.sub(r"var\((--[\w-]+)\)", lambda use: values[use[1]], css)
+    return faces + "\n" + re.sub(r"var\((--[\w-]+)\)", lambda use: values.get(use[1], use[0]), css)
 
 
 def font(name: str) -> bytes:
@@ -69,12 +80,12 @@ def font(name: str) -> bytes:
     return files("loopdoc.templates").joinpath("fonts", name).read_bytes()
 
 
-@lru_cache(maxsize=1)
-def web_style_sheet() -> str:
+@lru_cache(maxsize=4)
+def web_style_sheet(own: str = "") -> str:
     """The style sheet for the screen: one file with the fonts inside, which opens from disk anywhere."""
     faces = "\n".join(
         f"@font-face {{ font-family: '{family}'; font-style: {style}; font-weight: {weight}; "
         f"src: url('data:font/ttf;base64,{base64.b64encode(font(name)).decode()}') format('truetype') }}"
         for (family, style, weight), name in FONTS.items()
     )
-    return "\n".join((faces, template_text("style.css"), template_text("site.css")))
+    return "\n".join((faces, own or template_text("style.css"), template_text("site.css")))

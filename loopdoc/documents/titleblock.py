@@ -8,6 +8,7 @@ from dataclasses import dataclass
 from datetime import date
 
 from loopdoc import __version__
+from loopdoc.documents.house import NO_HOUSE, House
 from loopdoc.documents.language import ENGLISH, Language
 from loopdoc.documents.values import DASH
 from loopdoc.engineering.pairing import Plant
@@ -65,6 +66,8 @@ class Document:
     bars: str = ""
     """What the bars beside the text mark, or that the document is new; empty where it bears none."""
     generator: str = f"loopdoc {__version__}"
+    house: House = NO_HOUSE
+    """The site's own templates and logo."""
 
     @property
     def further(self) -> tuple[tuple[tuple[str, str, int], ...], ...]:
