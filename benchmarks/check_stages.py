@@ -5,7 +5,7 @@ Run: python benchmarks/check_stages.py [COPIES]     (250 copies of the demo regi
 A floor is what the stage cannot do without, on the same register in the same run: the bare parser for reading, the
 bare validator for the schema, one walk over the plain data for the model and for pairing, an empty rule for each
 check, and the bare frequency response of as many cascades for the dynamics. Times are processor
-times, which other work on the machine disturbs least. Small registers are timed three times, of which the median counts.
+times, which other work on the machine disturbs least. Small registers are timed three times: the median counts.
 """
 
 from __future__ import annotations
