@@ -81,19 +81,27 @@ def by_loopdoc(cascades: list[ControlStructure]) -> tuple[Found, Seconds]:
     scenarios = standard_scenarios(2)
     figures: list[list[list[ResponseMetrics]]] = [
         [] if isinstance(found, Unsuited) else [list(row) for row in found]
-        for found in simulate_metrics([(structures, scenarios) for structures in compared])
+        for found in simulate_metrics(
+            [(structures, scenarios) for structures in compared],
+            known=dict(zip(cascades, margins, strict=True)),
+        )
     ]
     clock.append(time.process_time())
     parts = ("margins", "single loops", "responses")
     return (margins, compared, figures), dict(zip(parts, np.diff(clock).tolist(), strict=True))
 
 
-def part_of_all(count: int, seed: int, jobs: int, job: int) -> tuple[int, int, Seconds, float]:
-    """One process's share: cascades done, responses simulated, times [s], and peak memory [MB]."""
-    cascades = varied_cascades(count, seed=seed)
-    (_, _, figures), seconds = by_loopdoc(cascades[job::jobs])
-    responses = sum(len(row) for group in figures for row in group)
-    return len(cascades[job::jobs]), responses, seconds, resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / 1024
+def share_of(cascades: list[ControlStructure]) -> tuple[int, int, Seconds, float, int]:
+    """Cascades done, responses simulated, times [s], peak memory [MB], and time steps."""
+    (_, _, figures), seconds = by_loopdoc(cascades)
+    read = [one for group in figures for row in group for one in row]
+    steps = sum(round(one.horizon_s / one.step_s) for one in read)
+    return len(cascades), len(read), seconds, resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / 1024, steps
+
+
+def part_of_all(count: int, seed: int, jobs: int, job: int) -> tuple[int, int, Seconds, float, int]:
+    """One process's share of the work."""
+    return share_of(varied_cascades(count, seed=seed)[job::jobs])
 
 
 def delayed(dead_time_s: float) -> control.TransferFunction:
@@ -231,9 +239,7 @@ def main() -> None:
     start = time.perf_counter()
     if options.register:
         cascades = of_register(options.register)
-        (_, _, figures), seconds = by_loopdoc(cascades)
-        responses = sum(len(row) for group in figures for row in group)
-        shares = [(len(cascades), responses, seconds, resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / 1024)]
+        shares = [share_of(cascades)]
     else:
         with ProcessPoolExecutor(options.jobs) as pool:
             arguments = [(options.cascades, options.seed, options.jobs, job) for job in range(options.jobs)]
@@ -250,6 +256,10 @@ def main() -> None:
         work_s += part_s
         print(f"  {part:20} {part_s:12.2f} s of processor time, {1e3 * part_s / count:.3f} ms a cascade")
     print(f"peak memory              {max(share[3] for share in shares):10.0f} MB a process")
+
+    steps = sum(share[4] for share in shares)
+    responses_s = sum(share[2]["responses"] for share in shares)
+    print(f"steps                    {steps:10.3g}       {1e9 * responses_s / steps:8.0f} ns a step and response")
 
     (_, compared, figures), _ = by_loopdoc(cascades[: options.sample])
     times, difference = [], 0.0

@@ -35,10 +35,10 @@ def compiled(function: Compiled) -> Compiled:
     Divisions are numpy's and nothing is reordered: every process finds the same bytes.
     """
     try:
-        made = numba.njit(function, cache=True, nogil=True, error_model="numpy")
+        made = numba.njit(function, cache=True, nogil=True, error_model="numpy", forceinline=True)
     except RuntimeError:
         # A read-only installation without a home has nowhere to keep it.
-        made = numba.njit(function, nogil=True, error_model="numpy")
+        made = numba.njit(function, nogil=True, error_model="numpy", forceinline=True)
     return cast(Compiled, made)
 
 
@@ -132,7 +132,7 @@ CASE = _record(
         "structure",  # row of the structure
         "disturbed_from",  # first of its disturbances
         "disturbed_to",  # first that is no longer its own
-        "steps",  # most steps
+        "steps",  # most steps, a multiple of the window
         "window",  # steps over which nothing moves at rest, so that the run ends; 0 to run to the end
     ],
 )
@@ -345,11 +345,7 @@ def _output(matrices: FloatArray, row: int, order: int, states: FloatArray, at: 
 
 @compiled
 def _note(watched: Any, value: float) -> None:
-    """Note the extremes of a signal."""
-    if value < watched.low:
-        watched.low = value
-    if value > watched.high:
-        watched.high = value
+    """Note the extremes of a signal within the window."""
     if value < watched.window_low:
         watched.window_low = value
     if value > watched.window_high:
@@ -357,8 +353,10 @@ def _note(watched: Any, value: float) -> None:
 
 
 @compiled
-def _begin_window(watched: Any, value: float) -> bool:
-    """Begin a window, and return whether the signal has rested in the last one, against what it had moved."""
+def _end_window(watched: Any, value: float) -> bool:
+    """End a window and begin the next, and return whether the signal has rested in it, against what it had moved."""
+    watched.low = min(watched.low, watched.window_low)
+    watched.high = max(watched.high, watched.window_high)
     rested: bool = watched.window_high - watched.window_low <= AT_REST * max(-watched.low, watched.high)
     watched.window_low = watched.window_high = value
     return rested
@@ -393,7 +391,7 @@ def _run_one(
     """Run one case to its end, or to rest, and read it."""
     structure = structures[case.structure]
     first, levels, begin, end = structure.first, structure.levels, case.disturbed_from, case.disturbed_to
-    setpoint, window = case.setpoint, case.window
+    setpoint, window_end = case.setpoint, case.window or case.steps
     memories, lagged = np.zeros(levels, MEMORY), np.zeros((levels, lead_lags.shape[1]))
     states, measured = np.zeros((levels, matrices.shape[1])), np.zeros(levels)
     upsets = np.zeros((end - begin, disturbance_matrices.shape[1]))
@@ -452,14 +450,13 @@ def _run_one(
                 trace[1 + level, point] = measured[level]
                 trace[1 + levels + level, point] = memories[level].setpoint
                 trace[1 + 2 * levels + level, point] = memories[level].output
-        if step == case.steps:
-            break
-        if window and step % window == 0:
-            rested = _begin_window(watched[levels], mean)
+        if step == window_end:
+            rested = _end_window(watched[levels], mean)
             for level in range(levels):
-                rested = _begin_window(watched[level], measured[level]) and rested
-            if rested and step > window:
+                rested = _end_window(watched[level], measured[level]) and rested
+            if step == case.steps or (rested and step > case.window):
                 break
+            window_end += case.window
         step += 1
     reading.steps, reading.last, reading.error_sum = step, measurement, error_sum
     reading.peak, reading.peak_step, reading.outside_step = peak, peak_step, outside_step
