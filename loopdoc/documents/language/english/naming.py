@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import re
 
-from loopdoc.documents.language.english.grammar import NO_BREAK, EnglishGrammar
+from loopdoc.documents.language.english.grammar import EnglishGrammar
 from loopdoc.documents.language.facts import Moves
 from loopdoc.documents.language.noun import Noun
 from loopdoc.documents.wording import lower_first, with_article
@@ -112,10 +112,6 @@ class EnglishNaming(EnglishGrammar):
         if kind in DRIVES or kind == "heater bank":
             return "electric power"
         return "air" if known(element.fails) in ("closed", "open") else "motive power"
-
-    def zero_to_hundred(self) -> str:
-        """The whole of an output."""
-        return f"0 to 100{NO_BREAK}%"
 
 
 def verbs(element: FinalElement) -> tuple[str, str]:

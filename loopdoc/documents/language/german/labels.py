@@ -6,7 +6,7 @@ LABELS = {
     # title block and document kinds
     "Title block": "Schriftfeld",
     "Title": "Titel",
-    "Document type": "Dokumentart",
+    "Document type and language": "Dokumentart und Sprache",
     "Document number": "Dokumentnummer",
     "Supplementary title": "Ergänzender Titel",
     "Revision": "Revision",
@@ -18,7 +18,6 @@ LABELS = {
     "Approved by": "Freigegeben von",
     "Site and owner": "Werk und Eigner",
     "Page": "Blatt",
-    "Language": "Sprache",
     "Check of the register": "Prüfung des Registers",
     "Register fingerprint (SHA-256) and program": "Fingerabdruck des Registers (SHA-256) und Programm",
     "Control narrative": "Regelungsbeschreibung",

@@ -6,7 +6,6 @@ a German noun that carries article and case.
 
 from __future__ import annotations
 
-from loopdoc.documents.language.english.grammar import NO_BREAK
 from loopdoc.documents.language.english.naming import DRIVES, EnglishNaming, stem
 from loopdoc.documents.language.facts import Moves
 from loopdoc.documents.language.german.grammar import GermanGrammar, with_article
@@ -71,17 +70,14 @@ class GermanNaming(GermanGrammar, EnglishNaming):
             return "elektrische Versorgung"
         return "Steuerluft" if known(element.fails) in ("closed", "open") else "Hilfsenergie"
 
-    def zero_to_hundred(self) -> str:
-        return f"0 bis 100{NO_BREAK}%"
-
     # -- word order
 
-    def moves_inverted(self, who: str, moved: Moves) -> str:
+    def _moves_inverted(self, who: str, moved: Moves) -> str:
         """The verb first: `schließt FIC-2011 das Stellglied FV-2011`."""
         (verb, thing), *others = map(_done, moved)
         return self.listed([f"{verb} {who} {thing}", *(f"{verb} {thing}" for verb, thing in others)])
 
-    def moves_last(self, who: str, moved: Moves) -> str:
+    def _moves_last(self, who: str, moved: Moves) -> str:
         """The verb last: `FIC-2011 das Stellglied FV-2011 schließt`."""
         told = self.listed(f"{thing} {verb}" for verb, thing in map(_done, moved))
         return f"{who} {told}"

@@ -225,12 +225,12 @@ class GermanScheme(GermanNaming, EnglishScheme):
     def _inverted(self, step: Asked | Moved) -> str:
         if isinstance(step, Asked):
             return f"{'erhöht' if step.up else 'senkt'} {step.by} den Sollwert von {step.of}"
-        return self.moves_inverted(step.by, step.moves)
+        return self._moves_inverted(step.by, step.moves)
 
     def _last(self, step: Asked | Moved) -> str:
         if isinstance(step, Asked):
             return f"{step.by} den Sollwert von {step.of} {'erhöht' if step.up else 'senkt'}"
-        return self.moves_last(step.by, step.moves)
+        return self._moves_last(step.by, step.moves)
 
     def _action(self, action: Action) -> str:
         who, several = self.listed(action.tags), len(action.tags) > 1
