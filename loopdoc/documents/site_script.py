@@ -39,8 +39,8 @@ def policy(name: str) -> str:
         digest = hashlib.sha256(script(name).encode()).digest()
         allowed = f"'sha256-{base64.b64encode(digest).decode()}'"
     return (
-        f"default-src 'none'; script-src {allowed}; style-src 'self' file: 'unsafe-inline'; font-src data:; img-src data:; "
-        "base-uri 'none'; form-action 'none'"
+        f"default-src 'none'; script-src {allowed}; style-src 'self' file: 'unsafe-inline'; font-src data:; "
+        "img-src data:; base-uri 'none'; form-action 'none'"
     )
 
 
