@@ -50,7 +50,7 @@ def page(body: str) -> str:
         ("<p>The limit is 94 &deg;C.</p>", "<p class='x'>The <b>limit</b> is\n 94 \u00b0C.</p>"),  # as a reader sees it
         ("<h2>3.1 FIC-2011</h2>", "<h2>3.2 FIC-2011</h2>"),
         ("<p>HOLD\u00a01</p>", "<p>HOLD\u00a02</p>"),
-        ('<table class="revisions"><tr><td>A</td></tr></table>', '<table class="revisions"><tr><td>B</td></tr></table>'),
+        ('<div class="revisions"><p>A</p></div>', '<div class="revisions"><p>B</p></div>'),
         ("<nav><ol><li>1</li></ol></nav>", "<nav><ol><li>2</li></ol></nav>"),
         ('<svg><g id="a"/><use href="#a"/></svg>', '<svg><g id="b"/><use href="#b"/></svg>'),
         ('<div class="title-block"><p>A</p></div>', '<div class="title-block"><p>B</p></div>'),

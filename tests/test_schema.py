@@ -34,7 +34,7 @@ revision: {code: B, date: 2026-11-20, status: issued for construction, summary: 
            distribution: [Operations, Maintenance]}
 history:
   - {code: A, date: 2026-09-01, status: issued for review, summary: First issue for review,
-     prepared_by: Process control, checked_by: Instrumentation, approved_by: Operations}
+     prepared_by: Process control, checked_by: Instrumentation, approved_by: Operations, distribution: [Operations]}
 numbering: "TH-{unit}-{kind}-{serial}"
 tags: '(?P<letters>[A-Z]{2,5})-(?P<unit>\\d{2})(?P<serial>\\d{2})(?P<suffix>[A-Z]?)'
 include: [units/*.yaml]

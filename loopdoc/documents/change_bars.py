@@ -23,7 +23,6 @@ _HEADINGS = ("h1", "h2", "h3", "h4")
 _CELLS = ("td", "th")
 _NEXT_CELL = "\u241f"
 _VOID = frozenset({"br", "col", "hr", "img", "input", "link", "meta", "wbr"})
-_REVISIONS = "Revisions"
 _HOLD_NUMBER = re.compile("HOLD[\u00a0 ][0-9]+")
 _SECTION_NUMBER = re.compile(r"^[0-9]+(?:\.[0-9]+)*\s+")
 _NAMES = re.compile(r"""\s(?:id="[^"]*"|(?:xlink:)?href="\#[^"]*")|url\(\#[^)]*\)""")
@@ -184,7 +183,6 @@ def _is_passed_over(tag: str, attributes: dict[str, str | None]) -> bool:
         or "title-block" in classes
         or "bars-note" in classes
         or "revisions" in classes
-        or attributes.get("aria-label") == _REVISIONS
     )
 
 

@@ -78,8 +78,7 @@ class Document:
                 (
                     ("Responsible department", self.department or DASH, 2),
                     ("Technical reference", self.technical_reference or DASH, 2),
-                    ("Classification", self.classification or DASH, 1),
-                    ("Language", self.language, 1),
+                    ("Classification", self.classification or DASH, 2),
                 )
             )
         if self.distribution:
