@@ -277,7 +277,7 @@ def words_of(page: Page) -> str:
     text = render(page.template, document=page.document, stylesheet="", **page.view)
     text = re.sub(r"<(style|head)\b.*?</\1>", "", text, flags=re.DOTALL)
     text = re.sub(r"</(p|td|th|li|h\d|text|title|figcaption)>|<br>", "\n", text)
-    return html.unescape(re.sub(r"<[^>]+>", "", text))
+    return html.unescape(re.sub(r"<[^>]+>", "", text)).replace("\u00ad", "")
 
 
 def test_the_language_is_told_and_the_number_kept(german: dict[str, tuple[Page, ...]], bases: dict[str, Basis]) -> None:
@@ -318,7 +318,7 @@ def english_words() -> set[str]:
     said = {name for name in LABELS if LABELS[name] != name} | {w for words in TERMS.values() for w in words}
     words = {word.casefold() for text in said for word in re.findall(r"[A-Za-z]{4,}", text)}
     own = {word.casefold() for text in (*LABELS.values(), *(w for words in TERMS.values() for w in words.values()))
-           for word in re.findall(r"[A-Za-zÄÖÜäöüß]{4,}", text)}  # fmt: skip
+           for word in re.findall(r"[A-Za-zÄÖÜäöüß]{4,}", text.replace("\u00ad", ""))}  # fmt: skip
     return words - own - {"register"}  # the same in both
 
 
@@ -347,7 +347,7 @@ def test_numbers_of_our_own_have_a_comma(german: dict[str, tuple[Page, ...]]) ->
             continue
         sheet = page.view["sheet"]
         cells = [value for panel in (sheet.measurement, *sheet.controller) for row in panel.rows for label, value in row
-                 if label not in ("Quelle", "Wirkungskette", "Sensor", "Messelement")]  # fmt: skip
+                 if label.replace("\u00ad", "") not in ("Quelle", "Sensor", "Messelement")]  # fmt: skip
         cells += [value for row in sheet.expected.rows for value in row] if sheet.expected else []
         assert not [cell for cell in cells if re.search(r"\d\.\d", cell)]
 

@@ -29,6 +29,7 @@ _QUANTITIES = {
     "conductivity": ("Leitfähigkeit", "f"),
     "vibration": ("Schwingung", "f"),
 }
+SOFT_HYPHEN = "\u00ad"
 _UNNAMED = ("Messwert", "m")
 
 
@@ -50,10 +51,10 @@ class GermanNaming(GermanGrammar, EnglishNaming):
 
     def element_phrase(self, element: FinalElement, told: str = "") -> str:
         kind, service = known(element.kind), stem(known(element.service) or "")
-        parts = [self.term("element", kind)] if kind else []
+        parts = [self.term("element", kind).replace(SOFT_HYPHEN, "")] if kind else []
         characteristic = known(element.characteristic)
         if characteristic and kind == "control valve":
-            parts.append(self.term("characteristic", characteristic))
+            parts.append(self.term("characteristic", characteristic).replace(SOFT_HYPHEN, ""))
         if service and service.casefold() not in told.casefold():
             parts.append(self.quoted(service))
         return f"{element.tag} ({', '.join(parts)})" if parts else element.tag

@@ -46,7 +46,7 @@ TERMS: dict[str, dict[str, str]] = {
     "characteristic": {
         "linear": "linear",
         "square root": "radiziert",
-        "equal percentage": "gleichprozentig",
+        "equal percentage": "gleich\u00adprozentig",
         "quick opening": "schnell öffnend",
     },
     "on fault": {
@@ -66,7 +66,7 @@ TERMS: dict[str, dict[str, str]] = {
         "control valve": "Regelventil",
         "on-off valve": "Auf/Zu-Ventil",
         "damper": "Klappe",
-        "variable-speed drive": "drehzahlgeregelter Antrieb",
+        "variable-speed drive": "drehzahl\u00adgeregelter Antrieb",
         "motor": "Motor",
         "heater bank": "Heizregister",
     },
