@@ -5,6 +5,7 @@ from __future__ import annotations
 import io
 import math
 import re
+import shutil
 from pathlib import Path
 
 import control
@@ -203,9 +204,17 @@ def test_one_figure_holds_both_and_has_the_same_bytes_again(tmp_path: Path, endi
         assert "time, " in text
 
 
-def test_a_loop_that_is_not_simulated_is_drawn_over_frequency(plant: Plant, tmp_path: Path) -> None:
-    assert not isinstance(compare(Dynamics(plant).loop("DIC-1012").chains[0]), Comparison)
-    plotted(EXAMPLE, "DIC-1012", tmp_path / "plot.svg")
+def test_a_loop_that_is_not_simulated_is_drawn_over_frequency(tmp_path: Path) -> None:
+    folder = tmp_path / "plant"
+    shutil.copytree(EXAMPLE, folder)
+    file = folder / "units" / "10-feed-and-evaporation.yaml"
+    text = file.read_text(encoding="utf-8")
+    assert text.count("lags: [700 min, 1 min]") == 1
+    file.write_text(text.replace("[700 min, 1 min]", "[70000 min, 1 min]"), encoding="utf-8")
+    loaded = load(folder)
+    assert isinstance(loaded, Loaded)
+    assert not isinstance(compare(Dynamics(Plant(loaded.register)).loop("DIC-1012").chains[0]), Comparison)
+    plotted(folder, "DIC-1012", tmp_path / "plot.svg")
     assert "time, " not in (tmp_path / "plot.svg").read_text(encoding="utf-8")
 
 
