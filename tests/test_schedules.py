@@ -16,6 +16,7 @@ import pytest
 from pypdf import PdfReader
 
 from loopdoc.documents.basis import Basis, Page, basis_of
+from loopdoc.documents.check_record import check_records
 from loopdoc.documents.pdf import to_pdf
 from loopdoc.documents.rendering import render
 from loopdoc.documents.schedule_alarms import alarm_schedules
@@ -387,3 +388,22 @@ def test_values_lead_to_the_loop_sheet_on_the_screen(kind: str) -> None:
     page = next(iter(KINDS[kind](example("tarn-hollow"))))
     assert re.search(r'<a class="(tag|value)" href="\.\./loop-sheets/[A-Z]+-\d+\.html">', html(page, "../style.css"))
     assert "<a " not in html(page).partition("<main>")[2]
+
+
+def test_schedules_and_check_records_show_the_deviations_that_touch_them() -> None:
+    """FIC-1017 of the demo has two; its transmitter's alarms, its tuning and its failures stand in unit 10."""
+    basis = example("tarn-hollow")
+    shown = {
+        (kind, page.name): [row[0] for row in page.view["deviations"]]
+        for kind in ("alarms", "tuning", "failures", "channels")
+        for page in KINDS[kind](basis)
+    }
+    of_loop = ["measurement-fault-unsafe, FIC-1017", "alarm-time-short, FIC-1017"]
+    for kind in ("alarms", "tuning", "failures"):
+        assert shown[kind, "unit-10"] == of_loop
+        assert shown[kind, "unit-30"] == []
+    assert shown["channels", "plant"] == []
+    notes = {page.name: page.view["record"].notes for page in check_records(basis)}
+    (note,) = (note for note in notes["FIC-1017"] if "FIC-1017 (measurement-fault-unsafe)" in note)
+    assert "FIC-1017 (alarm-time-short)" in note
+    assert not any("FIC-1017" in note for note in notes["FIC-2011"])

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping
+from collections.abc import Iterable, Iterator, Mapping
 from dataclasses import dataclass, replace
 
 from loopdoc.documents.basis import Basis, Page
@@ -24,8 +24,10 @@ from loopdoc.documents.check_record_tables import (
     point_table,
     travel_tables,
 )
+from loopdoc.documents.language import ENGLISH
 from loopdoc.documents.loop_panels import cell, hold_lines, joined, related_interlocks
 from loopdoc.documents.loop_sheet import serial
+from loopdoc.documents.open_points import accepted_in_a_sentence
 from loopdoc.documents.page_fit import room
 from loopdoc.documents.values import DASH
 from loopdoc.documents.wording import counted, listed, sentence
@@ -41,6 +43,7 @@ from loopdoc.engineering.record_verdict import JudgedRecord, Verdict, judge
 from loopdoc.register.model import Hold, Loop, Measurement, known
 from loopdoc.register.quantity import Quantity, display_quantity
 from loopdoc.register.records import LoopRecord
+from loopdoc.rules.finding import Finding
 from loopdoc.rules.policy import Limits, limits_from
 
 FOLDER = "check-records"
@@ -95,8 +98,17 @@ def check_records(basis: Basis) -> Iterator[Page]:
             unit=number or "00",
             serial=serial(plant, loop),
         )
-        view = _fitted(record_view(plant, limits, analysis, loop, basis.records), room(document))
+        view = record_view(plant, limits, analysis, loop, basis.records)
+        noted = replace(view, notes=(*view.notes, *_deviations(loop.tag, basis.result.accepted)))
+        view = _fitted(noted, room(document))
         yield Page(FOLDER, loop.tag, document, TEMPLATE, {"record": view})
+
+
+def _deviations(tag: str, accepted: Iterable[Finding]) -> Iterator[str]:
+    """One line: a record is filled in on its page, and the loop sheet tells them whole."""
+    found = accepted_in_a_sentence([finding for finding in accepted if tag in finding.touches], ENGLISH)
+    if found:
+        yield found
 
 
 def record_view(

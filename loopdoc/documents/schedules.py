@@ -7,7 +7,8 @@ from dataclasses import dataclass, replace
 from typing import Any
 
 from loopdoc.documents.basis import Basis, Page
-from loopdoc.documents.open_points import held_name
+from loopdoc.documents.language import ENGLISH
+from loopdoc.documents.open_points import DEVIATION_HEAD, deviation_rows, held_name
 from loopdoc.documents.page_fit import MM, title_table_height
 from loopdoc.documents.titleblock import Document
 from loopdoc.documents.values import DASH, HOLD, shown
@@ -207,9 +208,20 @@ def page(
         "reading": tuple(writer.prose(text) for text in reading),
         "caution": caution,
         "holds": writer.holds,
+        "deviation_head": DEVIATION_HEAD,
+        "deviations": _deviations(basis, view),
         **view,
     }
     return Page(folder, file_name(unit) if unit != NO_UNIT else "plant", document, template, whole)
+
+
+def _deviations(basis: Basis, view: dict[str, Any]) -> tuple[tuple[str, ...], ...]:
+    """The accepted findings that touch what a row of the schedule is about."""
+    groups = (group for part in (*view.get("schedules", ()), *view.get("charts", ())) for group in part.groups)
+    lines = (line for group in groups for row in group.rows for line in row.cells[0].lines)
+    tags = {run.text for line in lines for run in line if run.kind == "tag"}
+    touching = (finding for finding in basis.result.accepted if not tags.isdisjoint(finding.touches))
+    return tuple(deviation_rows(touching, ENGLISH))
 
 
 def foot(document: Document) -> str:
