@@ -4,7 +4,7 @@
 
 `issue` is all of it: reading, checking, simulating, drawing, HTML, PDF with the register inside, writing. WeasyPrint
 alone is `weasyprint.HTML(string=...).write_pdf(...)` of the same pages with the same style sheet and fonts, into
-memory, in one process. Times are processor seconds of this process and its children, which others on the machine disturb
+memory, in one process. Times are processor seconds of this process and its children, which others disturb
 least; the share of the plots is that of simulating and drawing them.
 """
 
