@@ -96,7 +96,7 @@ LABELS = {
     "Output block": "Ausgangs\u00adbaustein",
     "Signal": "Signal",
     "On failure": "Bei Hilfsenergie\u00adausfall",
-    "Safe position": "Sicherheits\u00adstellung",
+    "Safe position": "Sicher\u00adheits\u00adstellung",
     "Stroke time": "Stellzeit",
     "Backlash": "Umkehr\u00adspanne",
     "Resolution": "Auflösung",
