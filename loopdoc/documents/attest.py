@@ -32,6 +32,7 @@ from loopdoc.documents.enclosures import (
 )
 from loopdoc.documents.house import HouseError, house_of
 from loopdoc.documents.issue import KINDS, pages_of, pdf_of
+from loopdoc.documents.language import ENGLISH, LANGUAGES
 from loopdoc.documents.titleblock import fingerprint
 from loopdoc.register.files import HeldFiles
 from loopdoc.register.load import Loaded, Unreadable, load_files
@@ -121,8 +122,8 @@ class Attestation:
 
     def __init__(self, register: Basis | None = None) -> None:
         self._register = register
-        self._current: dict[str, dict[tuple[str, str], Statement]] = {}
-        self._issued_from: dict[tuple[str, str, str, bytes], Basis | Unreadable] = {}
+        self._current: dict[tuple[str, str], dict[tuple[str, str], Statement]] = {}
+        self._issued_from: dict[tuple[str, str, str, bytes, str], Basis | Unreadable] = {}
 
     def attest(self, content: bytes) -> Attested | NotIssued:
         """Find out about one file.
@@ -180,7 +181,7 @@ class Attestation:
 
     def _basis_of(self, enclosed: Enclosed) -> Basis | Unreadable:
         sources, against, house = map(fingerprint, (enclosed.sources, enclosed.against, enclosed.house))
-        key = (sources, against, house, enclosed.results)
+        key = (sources, against, house, enclosed.results, enclosed.statement.language)
         if key not in self._issued_from:
             self._issued_from[key] = self._read_anew(enclosed)
         return self._issued_from[key]
@@ -197,7 +198,10 @@ class Attestation:
                 return loaded or Unreadable((), {})
             before = basis_of(loaded, records, house=house)
         now = load_files(HeldFiles(enclosed.sources), told.root)
-        return now if isinstance(now, Unreadable) else basis_of(now, records, against=before, house=house)
+        if isinstance(now, Unreadable):
+            return now
+        issued = basis_of(now, records, against=before, house=house)
+        return issued.in_language(LANGUAGES.get(told.language, ENGLISH))
 
     def _still_current(self, enclosed: Enclosed, content: bytes) -> tuple[Answer, str]:
         told = enclosed.statement
@@ -206,7 +210,7 @@ class Attestation:
         if told.kind == PACKAGE_INDEX_KIND:
             same = fingerprint(self._register.sources) == told.fingerprint
             return (Answer.YES, "") if same else (Answer.NO, "stale: the register is no longer that of the package")
-        now = self._statements(self._register, told.kind).get((told.folder, told.name))
+        now = self._statements(self._register, told.kind, told.language).get((told.folder, told.name))
         if now is None:
             return Answer.NO, "the register no longer has what this document tells of"
         same_house = now.house == told.house
@@ -224,11 +228,13 @@ class Attestation:
             return Answer.NO, f"stale: the register is at revision {now.revision}, the document at {told.revision}"
         return Answer.NO, f"stale: the register has changed since, still at revision {now.revision}"
 
-    def _statements(self, register: Basis, kind: str) -> Mapping[tuple[str, str], Statement]:
+    def _statements(self, register: Basis, kind: str, language: str) -> Mapping[tuple[str, str], Statement]:
         """What the register given would state in every document of a kind."""
-        if kind not in self._current:
-            self._current[kind] = {
+        key = kind, language
+        if key not in self._current:
+            spoken = register.in_language(LANGUAGES.get(language, ENGLISH))
+            self._current[key] = {
                 (page.folder, page.name): statement(kind, page, register.sources, None)
-                for page in (KINDS[kind](register) if kind in KINDS else ())
+                for page in (KINDS[kind](spoken) if kind in KINDS else ())
             }
-        return self._current[kind]
+        return self._current[key]

@@ -62,6 +62,8 @@ class Statement:
     """Name of the root file of the earlier register against which bars were set; empty where there is none."""
     house: str = ""
     """SHA-256 of the files that the site put in the place of ours; empty where there are none."""
+    language: str = "en"
+    """Of the document, as an ISO 639-1 code."""
 
 
 def house_fingerprint(house: Mapping[str, bytes]) -> str:
@@ -80,7 +82,7 @@ def statement(kind: str, page: Page, sources: Mapping[str, bytes], against: Mapp
         number=document.number,
         title=document.title,
         revision=document.revision.code,
-        date=document.revision.date,
+        date=document.dated or document.revision.date,
         status=document.revision.status,
         draft=document.draft,
         fingerprint=fingerprint(sources),
@@ -88,6 +90,7 @@ def statement(kind: str, page: Page, sources: Mapping[str, bytes], against: Mapp
         program=f"loopdoc {__version__}",
         against=next(iter(against or ()), ""),
         house=house_fingerprint(document.house.files),
+        language=document.language,
     )
 
 
