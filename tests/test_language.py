@@ -13,6 +13,7 @@ from typing import Any
 import pytest
 
 from loopdoc.documents.basis import Basis, Page, basis_of
+from loopdoc.documents.enclosures import statement
 from loopdoc.documents.issue import KINDS
 from loopdoc.documents.language import ENGLISH, GERMAN, LANGUAGES, Language
 from loopdoc.documents.language.english import English
@@ -289,6 +290,11 @@ def test_the_language_is_told_and_the_number_kept(german: dict[str, tuple[Page, 
     numbers = [page.document.number for page in pages]
     assert numbers[-1] == list(loop_sheets(bases["tarn-hollow"]))[-1].document.number
     assert {page.document.kind for page in pages} == {"Regelungsbeschreibung", "Regelkreisblatt"}
+
+
+def test_a_file_states_its_language_and_its_date_as_any_other(german: dict[str, tuple[Page, ...]]) -> None:
+    stated = statement("loop-sheet", german["tarn-hollow"][-1], {"register.yaml": b""}, None)
+    assert (stated.language, stated.date) == ("de", "2026-11-20")
 
 
 def test_no_clumsy_joint_shows(german: dict[str, tuple[Page, ...]]) -> None:
