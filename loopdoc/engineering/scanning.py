@@ -230,18 +230,17 @@ def _limit(value: float, low: float, high: float) -> float:
 
 
 @compiled
-def _led(controller: Any, lead_lags: FloatArray, lagged: FloatArray, row: int, level: int, signal: float) -> float:
+def _led(controller: Any, lead_lags: FloatArray, lagged: FloatArray, level: int, signal: float) -> float:
     """A signal behind the lead-lags of a controller, which are executed with it."""
     for i in range(controller.lead_lags):
-        lead = lead_lags[row, i, 0]
-        lagged[level, i] += lead_lags[row, i, 1] * (signal - lagged[level, i])
+        lead = lead_lags[level, i, 0]
+        lagged[level, i] += lead_lags[level, i, 1] * (signal - lagged[level, i])
         signal = lead * signal + (1.0 - lead) * lagged[level, i]
     return signal
 
 
 @compiled
 def _execute(
-    structure: Any,
     controllers: Records,
     lead_lags: FloatArray,
     memories: Records,
@@ -251,36 +250,35 @@ def _execute(
 ) -> float:
     """Execute the controllers that are due, outermost first, and return the signal to the final element [%]."""
     limited = False
-    for level in range(structure.levels - 1, -1, -1):
-        row = structure.first + level
-        controller, memory = controllers[row], memories[level]
+    for level in range(len(controllers) - 1, -1, -1):
+        controller, memory = controllers[level], memories[level]
         if controller.controls:
             if memory.wait == 0:
                 memory.setpoint = _limit(setpoint, controller.setpoint_low, controller.setpoint_high)
                 computed = scan(controller, memory, memory.setpoint, measured[level])
                 memory.output = _limit(computed, controller.output_low, controller.output_high)
-                memory.asked = _led(controller, lead_lags, lagged, row, level, memory.output)
+                memory.asked = _led(controller, lead_lags, lagged, level, memory.output)
             if memory.computed < controller.followed_low or memory.computed > controller.followed_high:
                 limited = True
             setpoint = memory.asked
     if limited:
-        _track_limits(structure, controllers, memories, measured)
-    for level in range(structure.levels):
+        _track_limits(controllers, memories, measured)
+    for level in range(len(controllers)):
         memory = memories[level]
-        memory.wait = (memory.wait if memory.wait else controllers[structure.first + level].every) - 1
+        memory.wait = (memory.wait if memory.wait else controllers[level].every) - 1
     return setpoint
 
 
 @compiled
-def _track_limits(structure: Any, controllers: Records, memories: Records, measured: FloatArray) -> None:
+def _track_limits(controllers: Records, memories: Records, measured: FloatArray) -> None:
     """Tell the controllers that were due what became of their outputs.
 
     The setpoint that the secondary took; and while the secondary can move its measurement no further, that
     measurement, so that the primary's integral goes no further either.
     """
     no_higher, no_lower, below = False, False, 0.0
-    for level in range(structure.levels):
-        controller, memory = controllers[structure.first + level], memories[level]
+    for level in range(len(controllers)):
+        controller, memory = controllers[level], memories[level]
         if controller.controls:
             actual = _limit(memory.computed, controller.followed_low, controller.followed_high)
             if no_higher:
@@ -319,7 +317,7 @@ def _move(
 
 @compiled
 def _advance(
-    matrices: FloatArray, row: int, order: int, states: FloatArray, at: int, now: float, before: float, earlier: float
+    matrices: FloatArray, order: int, states: FloatArray, row: int, now: float, before: float, earlier: float
 ) -> None:
     """Advance one row of states by a step, given the input as it acts now, one and two steps before."""
     first = matrices.shape[1]
@@ -327,16 +325,16 @@ def _advance(
         value = matrices[row, i, first] * now + matrices[row, i, first + 1] * before
         value += matrices[row, i, first + 2] * earlier
         for j in range(i + 1):
-            value += matrices[row, i, j] * states[at, j]
-        states[at, i] = value
+            value += matrices[row, i, j] * states[row, j]
+        states[row, i] = value
 
 
 @compiled
-def _output(matrices: FloatArray, row: int, order: int, states: FloatArray, at: int) -> float:
+def _output(matrices: FloatArray, order: int, states: FloatArray, row: int) -> float:
     """What one row of states adds up to at the measurement [%]."""
     output = 0.0
     for i in range(order):
-        output += matrices[row, i, matrices.shape[1] + 3] * states[at, i]
+        output += matrices[row, i, matrices.shape[1] + 3] * states[row, i]
     return output
 
 
@@ -390,47 +388,50 @@ def _run_one(
 ) -> None:
     """Run one case to its end, or to rest, and read it."""
     structure = structures[case.structure]
-    first, levels, begin, end = structure.first, structure.levels, case.disturbed_from, case.disturbed_to
+    levels, first, end = structure.levels, structure.first, structure.first + structure.levels
+    processes, matrices = processes[first:end], matrices[first:end]
+    controllers, lead_lags = controllers[first:end], lead_lags[first:end]
+    disturbances = disturbances[case.disturbed_from : case.disturbed_to]
+    disturbance_matrices = disturbance_matrices[case.disturbed_from : case.disturbed_to]
     setpoint, window_end = case.setpoint, case.window or case.steps
     memories, lagged = np.zeros(levels, MEMORY), np.zeros((levels, lead_lags.shape[1]))
     states, measured = np.zeros((levels, matrices.shape[1])), np.zeros(levels)
-    upsets = np.zeros((end - begin, disturbance_matrices.shape[1]))
+    upsets = np.zeros((len(disturbances), disturbance_matrices.shape[1]))
     watched = np.zeros(levels + 1, WATCHED)
     for level in range(levels):
-        rings[level, : processes[first + level].last + 1] = 0.0
+        rings[level, : processes[level].last + 1] = 0.0
     held = drive = travel = mean = error = heading = extreme = 0.0
     error_sum = moved = peak = measurement = 0.0
     peak_step, outside_step, turns, step = 0, -1, 0, 0
     while True:
         # Read the measurements.
         for level in range(levels):
-            row = first + level
-            process = processes[row]
+            process = processes[level]
             if level:
                 rings[level, step & process.last] = measured[level - 1]
             at = step - process.delay
             now, before = rings[level, at & process.last], rings[level, (at - 1) & process.last]
             if step:
                 earlier = rings[level, (at - 2) & process.last]
-                _advance(matrices, row, process.order, states, level, now, before, earlier)
-            measurement = _output(matrices, row, process.order, states, level)
+                _advance(matrices, process.order, states, level, now, before, earlier)
+            measurement = _output(matrices, process.order, states, level)
             measurement += process.through_now * now + process.through_before * before
-            for one in range(begin, end):
+            for one in range(len(disturbances)):
                 upset = disturbances[one]
                 if upset.level == level:
                     if step:
-                        _advance(disturbance_matrices, one, upset.order, upsets, one - begin, 1.0, 0.0, 0.0)
-                    measurement += _output(disturbance_matrices, one, upset.order, upsets, one - begin) + upset.through
+                        _advance(disturbance_matrices, upset.order, upsets, one, 1.0, 0.0, 0.0)
+                    measurement += _output(disturbance_matrices, upset.order, upsets, one) + upset.through
             measured[level] = measurement
             _note(watched[level], measurement)
         # Execute the controllers and move the final element.
         if structure.in_manual:
             signal = case.manual
         else:
-            signal = _execute(structure, controllers, lead_lags, memories, lagged, measured, setpoint)
+            signal = _execute(controllers, lead_lags, memories, lagged, measured, setpoint)
         last_mean = mean
         held, drive, travel, mean = _move(structure, held, drive, travel, signal)
-        rings[0, step & processes[first].last] = mean
+        rings[0, step & processes[0].last] = mean
         _note(watched[levels], mean)
         # Read what is asked of the response.
         last_error, error = error, abs(setpoint - measurement)
