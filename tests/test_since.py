@@ -90,7 +90,14 @@ def test_only_what_the_change_brings_is_reported_and_decides_the_exit_code(repos
     assert new_rules(repository, "--since", "HEAD") == ([], passed_over + 1)
     code, out, _ = call("check", repository, "--since", "HEAD~1")
     assert code == 1
-    assert f"New since HEAD~1; {passed_over} finding" in out
+    assert f"New or changed since HEAD~1; {passed_over} finding" in out
+
+
+def test_a_finding_with_other_numbers_is_told_again(repository: Path) -> None:
+    commit(repository, WINDUP)
+    worse = ("high: 10.5 t/h}", "high: 12.6 t/h}")
+    commit(repository, worse)
+    assert new_rules(repository, "--since", "HEAD~1")[0] == ["output-limit-outside-setpoint"]
 
 
 def test_what_is_not_committed_counts_as_changed(repository: Path) -> None:
@@ -248,6 +255,13 @@ def test_a_register_that_the_older_revision_had_not_is_all_new(repository: Path)
     code, out, _ = call("check", repository / "plant", "--since", "HEAD~1")
     assert code == 1
     assert "Nothing is passed over: the revision HEAD~1 has no `plant/register.yaml`" in out
+
+
+def test_before_the_first_commit_all_is_new(repository: Path) -> None:
+    (repository / "register.yaml").write_text(BASE.replace(*WINDUP), "utf-8")
+    code, out, _ = call("check", repository, "--since", "HEAD")
+    assert code == 1
+    assert "Nothing is passed over: the repository has no commit yet, so that every finding counts as new." in out
 
 
 def test_a_missing_object_is_told(repository: Path) -> None:

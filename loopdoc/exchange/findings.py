@@ -124,7 +124,8 @@ def baseline_told(result: CheckResult) -> tuple[str, ...]:
         return ()
     if baseline.unreadable:
         return (f"Nothing is passed over: {baseline.unreadable}",)
-    return (f"New since {baseline.revision}; {counted(baseline.passed_over, 'finding')} of before passed over.",)
+    passed_over = counted(baseline.passed_over, "finding")
+    return (f"New or changed since {baseline.revision}; {passed_over} of before passed over.",)
 
 
 def accepted_why(finding: Finding) -> str:

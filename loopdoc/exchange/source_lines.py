@@ -8,9 +8,9 @@ from collections.abc import Mapping
 from loopdoc.exchange.escaping import for_line
 from loopdoc.register.place import Place
 
-SHOWN_COLUMNS = 100
-"""A longer line is shown in part, around the place."""
-_BEFORE_COLUMNS = 60
+SHOWN_COLUMNS = 88
+"""A longer line is shown in part, around the place: with line number and marks of omission 100 columns at most."""
+_BEFORE_COLUMNS = 52
 _TAB = "    "
 
 

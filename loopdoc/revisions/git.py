@@ -61,6 +61,8 @@ def commit_of(folder: Path, revision: str) -> str:
     try:
         named = _git(folder, "rev-parse", "--verify", "--quiet", "--end-of-options", f"{revision}^{{commit}}")
     except _Refused:
+        if revision == "HEAD":
+            raise NoRegister("the repository has no commit yet") from None
         raise GitError(
             f"git knows no revision `{revision}`; fetch it first (a shallow clone lacks older ones)"
         ) from None

@@ -50,20 +50,24 @@ def fingerprints(result: CheckResult) -> dict[Finding, str]:
 def new_since(result: CheckResult, earlier: CheckResult, revision: str) -> CheckResult:
     """What a check finds that the check of an earlier revision had not found.
 
-    A finding is new where the earlier revision has none of the same rule, tag and path, where it has become worse,
-    and where it was accepted by a deviation and is open now.
+    A finding is new where the earlier revision has none of the same rule, tag and path, where it says something else
+    than it did (a loop without margin has less of it) or has become worse, and where it was accepted by a deviation
+    and is open now.
     """
-    before: dict[Identity, Level] = {}
+    before: dict[Identity, tuple[Level, str]] = {}
     now = identities((*result.findings, *result.accepted))
     accepted_before = set()
     for finding, identity in identities((*earlier.findings, *earlier.accepted)).items():
-        before[identity] = finding.level
+        before[identity] = (finding.level, finding.message)
         if finding.accepted_by:
             accepted_before.add(identity)
 
     def is_new(finding: Finding) -> bool:
         identity = now[finding]
-        if identity not in before or finding.level > before[identity]:
+        if identity not in before:
+            return True
+        level, message = before[identity]
+        if finding.level > level or finding.message != message:
             return True
         return finding.accepted_by is None and identity in accepted_before
 

@@ -74,7 +74,7 @@ def tag_duplicate(plant: Plant) -> Iterator[Draft]:
     for tag, later, first in plant.register.twice:
         yield draft(
             tag,
-            f"defined a second time; only the first definition, in {first.file} line {first.line}, counts",
+            "defined a second time; only the first definition counts",
             remedy="keep one of the two, or give this one a tag of its own",
             at=later,
             related=((first, "the first definition"),),
