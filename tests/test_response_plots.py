@@ -15,10 +15,12 @@ import pytest
 
 from loopdoc.cli import run
 from loopdoc.documents.frequency_plot import frequency_caption, frequency_drawing
+from loopdoc.documents.magnitudes import duration
 from loopdoc.documents.plots import Curve, Drawing, Panel, save, to_svg
 from loopdoc.documents.response_figure import figure
+from loopdoc.documents.responses import margin_rows, movement_rows
 from loopdoc.documents.upset_story import benefit, declared_upsets, single_loop_assumption, upset_name
-from loopdoc.engineering.comparison import Comparison, compare
+from loopdoc.engineering.comparison import Comparison, ScenarioResponses, compare
 from loopdoc.engineering.dynamics import ChainDynamics, Dynamics
 from loopdoc.engineering.frequency import LoopStage, analyse_chain
 from loopdoc.engineering.loop_curves import loop_curves
@@ -26,6 +28,8 @@ from loopdoc.engineering.pairing import Plant
 from loopdoc.engineering.pid import Controller
 from loopdoc.engineering.process import Process
 from loopdoc.engineering.sampled import quoted_margins
+from loopdoc.engineering.simulation import simulate
+from loopdoc.engineering.structure import cascade_structure, standard_scenarios
 from loopdoc.register.load import Loaded, load
 from loopdoc.register.starter import starter_files
 
@@ -318,3 +322,41 @@ def test_a_scheme_with_a_loop_on_hold_says_what_is_not_checked(tmp_path: Path) -
     page = (tmp_path / "out" / "responses" / "LIC-1001.html").read_text(encoding="utf-8")
     assert "<b>LIC-1001:</b> not checked: the process gain of LIC-1001 is on hold." in page
     assert "FIC-1002, standard form" in page
+
+
+# --- the tables of the issued document -----------------------------------------------------------
+
+
+def test_movements_stand_for_the_cascade_and_the_single_loop_side_by_side(compared: Comparison) -> None:
+    rows = movement_rows(compared)
+    assert [len(row["cells"]) for row in rows] == [8] * len(compared.scenarios)
+    for row, entry in zip(rows, compared.scenarios, strict=True):
+        assert entry.single is not None
+        assert row["cells"][3] == str(entry.tuned.metrics.reversals)
+        assert row["cells"][7] == str(entry.single.metrics.reversals)
+        # The peak of an upset is where the curve that is drawn is furthest from its start, to a point of it.
+        if entry.scenario.disturbances:
+            curve = entry.single.measurement_pct[-1]
+            top = int(np.abs(curve - curve[0]).argmax())
+            assert entry.peak_time_s(entry.single) == pytest.approx(
+                entry.single.time_s[top], abs=float(entry.single.time_s[1])
+            )
+            assert row["cells"][4] == duration(entry.single.metrics.time_to_peak_s)
+
+
+def test_a_setpoint_that_is_only_approached_has_no_time_to_peak() -> None:
+    """A PI controller whose reset cancels the lag closes to a lag alone, which never passes its setpoint."""
+    found = simulate(
+        [cascade_structure([LoopStage(Controller(1.0, 50.0), Process(1.0, (50.0,)))])], standard_scenarios(1)
+    )[0]
+    step, upset = (ScenarioResponses(response.scenario, response, None) for response in found)
+    assert step.scenario.setpoint_step_pct
+    assert math.isnan(step.peak_time_s(step.tuned))
+    assert upset.peak_time_s(upset.tuned) > 0.0
+
+
+def test_margins_of_a_level_stand_with_its_peaks_and_bandwidth(cascade: ChainDynamics) -> None:
+    outer = cascade.margins[-1]
+    row = margin_rows(cascade)[0]
+    assert float(row["max_complementary"]) == pytest.approx(outer.max_complementary_sensitivity, rel=5e-3)
+    assert float(row["bandwidth"].split()[0]) == pytest.approx(outer.bandwidth_rad_per_s, rel=5e-3)

@@ -101,12 +101,14 @@ def section(basis: Basis, dynamics: ChainDynamics, *, several: bool) -> dict[str
     return {
         "heading": f"From {path[0]} to {path[-1]}" if several else "",
         "path": " → ".join(path),
+        "element": path[-1],
         "margins": margin_rows(dynamics),
         "sampled": sampled_note(dynamics),
         "speed_ratio": number(dynamics.speed_ratio) if dynamics.speed_ratio is not None else "",
         "not_simulated": compared.reason if isinstance(compared, NotSimulated) else "",
         "unit": difference_unit(measured_range(chain.lead)),
         "rows": metric_rows(comparison) if comparison else [],
+        "movements": movement_rows(comparison) if comparison else [],
         "single": comparison is not None and comparison.single is not None,
         "figure": _drawn(basis, dynamics),
         "caption": caption(comparison) if comparison else "",
@@ -147,7 +149,9 @@ def margin_rows(dynamics: ChainDynamics) -> list[dict[str, str]]:
             "gain_margin": number(margins.gain_margin),
             "phase_margin": f"{number(margins.phase_margin_deg)}°",
             "max_sensitivity": number(margins.max_sensitivity),
+            "max_complementary": number(margins.max_complementary_sensitivity),
             "crossover": with_unit(margins.crossover_rad_per_s, "rad/s"),
+            "bandwidth": with_unit(margins.bandwidth_rad_per_s, "rad/s"),
             "period": duration(2 * math.pi / margins.crossover_rad_per_s),
             "model": shown(known(level.loop.loop.process).source) if known(level.loop.loop.process) else DASH,  # type: ignore[union-attr]
         }
@@ -177,7 +181,7 @@ def sampled_note(dynamics: ChainDynamics) -> str:
 
 
 def metric_rows(comparison: Comparison) -> list[dict[str, str]]:
-    """Peak, error integral, settling and valve travel under each upset, with the single loop beside them."""
+    """Peak, error integral and settling under each upset, with the single loop beside them."""
     own = measured_range(comparison.dynamics.chain.lead)
     return [
         {
@@ -185,13 +189,36 @@ def metric_rows(comparison: Comparison) -> list[dict[str, str]]:
             "peak": _eu(entry.tuned.metrics.peak_pct, own),
             "iae": _eu(entry.tuned.metrics.iae_pct_s / 60.0, own),
             "settling": duration(entry.tuned.metrics.settling_s),
-            "travel": f"{number(entry.tuned.metrics.valve_travel_pct)} %",
             "single_peak": _eu(entry.single.metrics.peak_pct, own) if entry.single else DASH,
             "single_iae": _eu(entry.single.metrics.iae_pct_s / 60.0, own) if entry.single else DASH,
             "single_settling": duration(entry.single.metrics.settling_s) if entry.single else DASH,
             "peak_ratio": number(entry.ratio("peak_pct")),
             "iae_ratio": number(entry.ratio("iae_pct_s")),
             "settling_ratio": number(entry.ratio("settling_s")),
+        }
+        for entry in comparison.scenarios
+    ]
+
+
+def movement_rows(comparison: Comparison) -> list[dict[str, Any]]:
+    """How each upset is answered on the way: time to peak, overshoot, valve travel and its reversals.
+
+    A list of cells for the loop or cascade as tuned, and one for the single loop beside it.
+    """
+    return [
+        {
+            "upset": upset_name(comparison, entry),
+            "cells": [
+                cell
+                for response in (entry.tuned, entry.single)
+                if response is not None
+                for cell in (
+                    duration(entry.peak_time_s(response)),
+                    f"{number(response.metrics.overshoot_pct)} %",
+                    f"{number(response.metrics.valve_travel_pct)} %",
+                    str(response.metrics.reversals),
+                )
+            ],
         }
         for entry in comparison.scenarios
     ]

@@ -40,6 +40,8 @@ if TYPE_CHECKING:
 
 UPSET_PCT = 10.0
 """Size of the standard upsets: a tenth of the span of the measurement that they move [%]."""
+NO_OVERSHOOT_PCT = 0.5
+"""Overshoot that no plot shows, in percent of the step: below it a setpoint is approached, not passed."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -57,6 +59,11 @@ class ScenarioResponses:
             return None
         ours, theirs = abs(getattr(self.tuned.metrics, of)), abs(getattr(self.single.metrics, of))
         return ours / theirs if theirs > 0.0 and math.isfinite(ours) and math.isfinite(theirs) else None
+
+    def peak_time_s(self, response: Response) -> float:
+        """When a response peaks [s]; nan after a setpoint step that is only approached, which is nearest at the end."""
+        only_approached = self.scenario.setpoint_step_pct != 0.0 and response.metrics.overshoot_pct < NO_OVERSHOOT_PCT
+        return math.nan if only_approached else response.metrics.time_to_peak_s
 
 
 @dataclass(frozen=True, slots=True)

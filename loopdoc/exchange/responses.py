@@ -189,7 +189,7 @@ def _scenario_lines(comparison: Comparison) -> Iterator[str]:
             per_pct = own.span / 100.0
             yield (
                 f"{entry.scenario.name if name == 'as tuned' else '':{width}}{name:16}"
-                f"{_shown(metrics.peak_pct * per_pct):>14}{_peak_time(entry, metrics):>9}"
+                f"{_shown(metrics.peak_pct * per_pct):>14}{_peak_time(entry.peak_time_s(response)):>9}"
                 f"{_shown(metrics.iae_pct_s * per_pct, 4):>16}{_shown(metrics.settling_s, 4):>14}"
                 f"{_shown(metrics.overshoot_pct):>14}{_shown(metrics.valve_travel_pct):>17}{metrics.reversals:>7}"
             )
@@ -229,10 +229,8 @@ def _upsets_told(comparison: Comparison) -> Iterator[str]:
         yield f"IAE ∞: an offset stays, since {comparison.dynamics.chain.lead.tag} has no reset"
 
 
-def _peak_time(entry: ScenarioResponses, metrics: ResponseMetrics) -> str:
-    """When the peak is reached; nothing after a setpoint step that is only approached, which is nearest at the end."""
-    only_approached = entry.scenario.setpoint_step_pct != 0.0 and metrics.overshoot_pct < 0.5
-    return "-" if only_approached else _shown(metrics.time_to_peak_s)
+def _peak_time(seconds: float) -> str:
+    return "-" if math.isnan(seconds) else _shown(seconds)
 
 
 def _with_unit(figure: str, symbol: str) -> str:
