@@ -15,6 +15,7 @@ import pytest
 
 from loopdoc.cli import run
 from loopdoc.documents.frequency_plot import frequency_caption, frequency_drawing
+from loopdoc.documents.language import GERMAN
 from loopdoc.documents.magnitudes import duration
 from loopdoc.documents.plots import Curve, Drawing, Panel, save, to_svg
 from loopdoc.documents.response_figure import figure
@@ -29,7 +30,7 @@ from loopdoc.engineering.pid import Controller
 from loopdoc.engineering.process import Process
 from loopdoc.engineering.sampled import quoted_margins
 from loopdoc.engineering.simulation import simulate
-from loopdoc.engineering.structure import cascade_structure, standard_scenarios
+from loopdoc.engineering.structure import FinalElement, cascade_structure, standard_scenarios
 from loopdoc.register.load import Loaded, load
 from loopdoc.register.starter import starter_files
 
@@ -150,6 +151,19 @@ def test_the_caption_states_the_assumptions(cascade: ChainDynamics, plant: Plant
     told = figure(plant, compared).caption
     for words in ("10 % of span", "normal value", "output limits", "stroke time", "one controller on FV-2011"):
         assert words in told
+
+
+def test_upsets_that_a_figure_has_no_room_for_are_named_in_its_caption(plant: Plant, compared: Comparison) -> None:
+    """Three levels and a declared upset are five; the outermost loop's own has the least news and is left out."""
+    crowded = compare(Dynamics(plant).loop("AIC-2015").chains[0])
+    assert isinstance(crowded, Comparison)
+    drawing = figure(plant, crowded)
+    assert len(crowded.scenarios) == len(drawing.rows[0]) + 1
+    assert not any("AIC-2015" in panel.title for panel in drawing.rows[0])
+    assert "Not drawn for want of room: the upset at AIC-2015." in drawing.caption
+    assert "Aus Platzgründen nicht gezeichnet: die Störung an AIC-2015." in figure(plant, crowded, GERMAN).caption
+    assert len(compared.scenarios) <= len(figure(plant, compared).rows[0])
+    assert "Not drawn" not in figure(plant, compared).caption
 
 
 def test_alarms_trips_and_output_limits_are_in_the_time_responses(plant: Plant) -> None:
@@ -347,7 +361,8 @@ def test_movements_stand_for_the_cascade_and_the_single_loop_side_by_side(compar
 def test_a_setpoint_that_is_only_approached_has_no_time_to_peak() -> None:
     """A PI controller whose reset cancels the lag closes to a lag alone, which never passes its setpoint."""
     found = simulate(
-        [cascade_structure([LoopStage(Controller(1.0, 50.0), Process(1.0, (50.0,)))])], standard_scenarios(1)
+        [cascade_structure([LoopStage(Controller(1.0, 50.0), Process(1.0, (50.0,)))], final_element=FinalElement())],
+        standard_scenarios(1),
     )[0]
     step, upset = (ScenarioResponses(response.scenario, response, None) for response in found)
     assert step.scenario.setpoint_step_pct

@@ -110,10 +110,15 @@ def _travel_limits(chain: Chain, language: Language) -> Iterator[Limit]:
 
 
 def _drawn(comparison: Comparison) -> list[ScenarioResponses]:
-    """The upsets that a figure has room for: the setpoint step, then those that the register declares."""
+    """The upsets that a figure has room for."""
+    return _by_weight(comparison)[:COLUMNS]
+
+
+def _by_weight(comparison: Comparison) -> list[ScenarioResponses]:
+    """The setpoint step, then the upsets that the register declares, then the others from the innermost out."""
     step, *others = comparison.scenarios
     declared = [entry for entry in others if entry.scenario.disturbances[0].path is not None]
-    return [step, *declared, *(entry for entry in others if entry not in declared)][:COLUMNS]
+    return [step, *declared, *(entry for entry in others if entry not in declared)]
 
 
 def caption(comparison: Comparison, language: Language = ENGLISH) -> str:
@@ -130,6 +135,7 @@ def caption(comparison: Comparison, language: Language = ENGLISH) -> str:
             entry.scenario.disturbances and entry.scenario.disturbances[0].path for entry in comparison.scenarios
         ),
         stroke=language.shown(stroke) if stroke else "",
+        left_out=[_in_words(comparison, entry, language) for entry in _by_weight(comparison)[COLUMNS:]],
     )
 
 
@@ -145,6 +151,13 @@ def _short_name(comparison: Comparison, entry: ScenarioResponses, language: Lang
     if entry.scenario.disturbances[0].path is not None:
         return upper_first(entry.scenario.name)
     return language.panel_upset(comparison.dynamics.chain.levels[entry.scenario.disturbances[0].level].loop.tag)
+
+
+def _in_words(comparison: Comparison, entry: ScenarioResponses, language: Language) -> str:
+    """An upset that has no panel, as a sentence names it."""
+    if entry.scenario.disturbances[0].path is not None:
+        return entry.scenario.name
+    return language.upset_unsized(comparison.dynamics.chain.levels[entry.scenario.disturbances[0].level].loop.tag)
 
 
 def _setpoint(response: Response, own: Range) -> FloatArray:

@@ -124,9 +124,18 @@ class EnglishDynamics(EnglishGrammar):
         return f"Time responses of {lead} with {element}"
 
     def response_caption(
-        self, lead: str, element: str, size: str, *, alone: bool, integrating: bool, declared: bool, stroke: str
+        self,
+        lead: str,
+        element: str,
+        size: str,
+        *,
+        alone: bool,
+        integrating: bool,
+        declared: bool,
+        stroke: str,
+        left_out: Sequence[str],
     ) -> str:
-        """What a figure shows and under which assumptions."""
+        """What a figure shows and under which assumptions; ``left_out`` are the upsets for which it has no room."""
         whose = f"at {lead}" if alone else "at each measurement of the cascade"
         parts = [
             f"Response of {lead} with {element} to a step of {size} % of span in its setpoint and, through the lags "
@@ -138,12 +147,17 @@ class EnglishDynamics(EnglishGrammar):
             + "; every measurement starts at its normal value and the final element in the middle of its output "
             "limits.",
             "Alarms, trips and output limits are drawn where they lie near the curves; each panel has its own scale.",
+            f"Not drawn for want of room: {self.listed(left_out)}." if left_out else "",
         ]
         return " ".join(part for part in parts if part)
 
     def panel_upset(self, tag: str) -> str:
         """Heading of a panel with a standard upset."""
         return f"Upset at {tag}"
+
+    def upset_unsized(self, tag: str) -> str:
+        """A standard upset within a sentence, without its size."""
+        return f"the upset at {tag}"
 
     def panel_time(self, unit: str) -> str:
         """The time axis."""

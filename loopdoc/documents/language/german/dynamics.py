@@ -115,7 +115,16 @@ class GermanDynamics(GermanGrammar, EnglishDynamics):
         return f"Zeitverhalten von {lead} mit {element}"
 
     def response_caption(
-        self, lead: str, element: str, size: str, *, alone: bool, integrating: bool, declared: bool, stroke: str
+        self,
+        lead: str,
+        element: str,
+        size: str,
+        *,
+        alone: bool,
+        integrating: bool,
+        declared: bool,
+        stroke: str,
+        left_out: Sequence[str],
     ) -> str:
         whose = f"des Messwerts von {lead}" if alone else "jedes Messwerts der Kaskade"
         parts = [
@@ -129,11 +138,15 @@ class GermanDynamics(GermanGrammar, EnglishDynamics):
             + "; jeder Messwert beginnt bei seinem Normalwert, das Stellglied in der Mitte seiner Ausgangsgrenzen.",
             "Alarme, Auslösungen und Ausgangsgrenzen sind eingezeichnet, wo sie nahe den Kurven liegen; jedes Feld hat "
             "seinen eigenen Maßstab.",
+            f"Aus Platzgründen nicht gezeichnet: {self.listed(left_out)}." if left_out else "",
         ]
         return " ".join(part for part in parts if part)
 
     def panel_upset(self, tag: str) -> str:
         return f"Störung an {tag}"
+
+    def upset_unsized(self, tag: str) -> str:
+        return f"die Störung an {tag}"
 
     def panel_time(self, unit: str) -> str:
         return f"Zeit, {unit}"
