@@ -498,8 +498,8 @@ def _compare(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> i
     new = basis_of(sides[1], against=old)
     found = compared(old, new, old_named=arguments.old, new_named=arguments.new or str(arguments.register))
     if arguments.documents:
-        from loopdoc.documents.affected import documents_between
         from loopdoc.documents.issue import KINDS
+        from loopdoc.documents.revision.affected import documents_between
 
         found = replace(found, documents=documents_between(old, new, KINDS))
     told = {"json": comparison_json, "markdown": comparison_markdown}.get(arguments.format, comparison_text)

@@ -15,7 +15,7 @@ import pytest
 from fontTools.ttLib import TTFont
 
 from loopdoc.documents.drawing import SMALLEST, fitted, tag_lines, text_width, wrapped
-from loopdoc.documents.loop_drawing import WIDTH, drawn_loop
+from loopdoc.documents.loop_sheet.loop_drawing import WIDTH, drawn_loop
 from loopdoc.engineering.pairing import Plant
 from loopdoc.register.load import Loaded, load
 

@@ -23,7 +23,7 @@ from loopdoc.documents.language.german.labels import LABELS
 from loopdoc.documents.language.german.reasons import translated
 from loopdoc.documents.language.german.terms import TERMS
 from loopdoc.documents.language.noun import Noun
-from loopdoc.documents.loop_sheet import OVERFULL, loop_sheets
+from loopdoc.documents.loop_sheet.loop_sheet import OVERFULL, loop_sheets
 from loopdoc.documents.rendering import render
 from loopdoc.engineering.direction import Undecided, path_sign
 from loopdoc.register.load import Loaded, load
@@ -264,7 +264,7 @@ def bases() -> dict[str, Basis]:
 @pytest.fixture(scope="module")
 def german(bases: dict[str, Basis]) -> dict[str, tuple[Page, ...]]:
     # Without the figures, which take most of the time; tests of the response plots hold those.
-    from loopdoc.documents.narrative import narratives
+    from loopdoc.documents.narrative.narrative import narratives
 
     found = {}
     for name, basis in bases.items():

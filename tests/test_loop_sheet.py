@@ -16,8 +16,8 @@ from pypdf import PdfReader
 
 from loopdoc.documents import pdf
 from loopdoc.documents.basis import Basis, Page
-from loopdoc.documents.expected_signals import ExpectedRow, expected_commands, expected_readings
-from loopdoc.documents.loop_sheet import SheetView, loop_sheets, sheet_height
+from loopdoc.documents.loop_sheet.expected_signals import ExpectedRow, expected_commands, expected_readings
+from loopdoc.documents.loop_sheet.loop_sheet import SheetView, loop_sheets, sheet_height
 from loopdoc.documents.page_fit import DENSITIES, room, title_block_height
 from loopdoc.documents.rendering import render
 from loopdoc.engineering.dynamics import Dynamics

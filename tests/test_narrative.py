@@ -14,7 +14,7 @@ import yaml
 from markupsafe import Markup
 
 from loopdoc.documents.basis import Basis, Page
-from loopdoc.documents.narrative import Supplement, narratives
+from loopdoc.documents.narrative.narrative import Supplement, narratives
 from loopdoc.documents.pdf import to_pdf
 from loopdoc.documents.rendering import render
 from loopdoc.documents.view import Figure, Paragraph, Section, Steps, Table

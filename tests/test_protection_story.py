@@ -6,7 +6,7 @@ from pathlib import Path
 
 import pytest
 
-from loopdoc.documents.protection_story import reset
+from loopdoc.documents.narrative.protection_story import reset
 from loopdoc.register.load import Loaded, load
 
 INTERLOCK = """

@@ -12,12 +12,13 @@ import control
 import numpy as np
 import pypdf
 import pytest
+from numpy.typing import NDArray
 
 from loopdoc.cli import run
 from loopdoc.documents.frequency_plot import frequency_caption, frequency_drawing
 from loopdoc.documents.language import GERMAN
 from loopdoc.documents.magnitudes import duration
-from loopdoc.documents.plots import Curve, Drawing, Panel, save, to_svg
+from loopdoc.documents.plots import Curve, Drawing, Mark, Panel, save, to_svg
 from loopdoc.documents.response_figure import figure
 from loopdoc.documents.responses import margin_rows, movement_rows
 from loopdoc.documents.upset_story import benefit, declared_upsets, single_loop_assumption, upset_name
@@ -34,6 +35,7 @@ from loopdoc.engineering.structure import FinalElement, cascade_structure, stand
 from loopdoc.register.load import Loaded, load
 from loopdoc.register.starter import starter_files
 
+Array = NDArray[np.float64]
 EXAMPLE = Path(__file__).parent.parent / "examples" / "tarn-hollow"
 
 
@@ -129,6 +131,42 @@ def test_each_loop_of_a_cascade_has_its_column_with_margins_and_peaks(cascade: C
         assert (stroke.y, phase.marks[0].y) == (1.0, -180.0)
         assert gain.period is not None
         assert "rad/s" in sensitivities.x_label
+
+
+def placed(panel: Panel, mark: Mark) -> tuple[Array, Array]:
+    """Share of the panel at which the name of a mark begins and ends, by its width and height as drawn, and of the
+    curve's points: each (x, y) from the lower left corner.
+    """
+    assert panel.y_view is not None
+    curve = panel.curves[0]
+    low, high = np.log(panel.y_view)
+
+    def share(x: float | Array, y: float | Array) -> Array:
+        across = np.log(np.asarray(x) / curve.x[0]) / math.log(curve.x[-1] / curve.x[0])
+        return np.stack((across, (np.log(y) - low) / (high - low)), axis=-1)
+
+    # Two columns of 180 mm, panels 1.2 in high, letters of 6.5 pt about half as wide as high.
+    wide, tall = len(mark.label) * 3.3 / 210.0, 6.5 / 86.0
+    end = share(mark.x, min(mark.y, mark.to) if mark.is_below else math.sqrt(mark.y * mark.to))
+    left = end[0] - 4.0 / 210.0 - wide if mark.is_left else end[0] + 4.0 / 210.0
+    bottom = end[1] - 1.0 / 86.0 - tall if mark.is_below else end[1] - tall / 2.0
+    return np.array([left, left + wide, bottom, bottom + tall]), share(curve.x, curve.y)
+
+
+def test_the_name_of_a_gain_margin_lies_clear_of_its_curve(plant: Plant) -> None:
+    dynamics = Dynamics(plant)
+    sides = set()
+    for tag in plant.controlled:
+        for chain in dynamics.loop(tag).chains:
+            for panel in frequency_drawing(chain).rows[0]:
+                for mark in panel.marks:
+                    (left, right, bottom, top), curve = placed(panel, mark)
+                    assert 0.0 <= left
+                    assert bottom >= 0.0, (tag, panel.title)
+                    x, y = curve.T
+                    assert not np.any((left < x) & (x < right) & (bottom < y) & (y < top)), (tag, panel.title)
+                    sides.add(mark.is_left)
+    assert sides == {True, False}
 
 
 def test_an_unstable_loop_is_named_so_and_has_no_peaks(cascade: ChainDynamics) -> None:

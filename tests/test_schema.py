@@ -88,7 +88,8 @@ loops:
     alarms:
       high_high: {limit: 97 degC}
       high: {limit: 94 degC, deadband: 0.6 degC, delay: 10 s, priority: medium, cause: Steam valve open,
-             consequence: {hold: hazard study}, response: Close FV-2011, time_to_respond: 10 min, warns_of: {FIC-3003: high}}
+             consequence: {hold: hazard study}, response: Close FV-2011, time_to_respond: 10 min,
+              warns_of: {FIC-3003: high}}
       low: {limit: 80 degC}
       low_low: {limit: 76 degC}
       deviation: {limit: 3 degC}
@@ -109,8 +110,8 @@ final_elements:
             characteristic: equal percentage, stroke_time: 6 s, backlash: 0.5 %, resolution: 0.2 %}
 instruments:
   PT-2021A: {unit: "20", service: Column pressure, variable: pressure, sensor: diaphragm, element: tapping,
-             characteristic: linear, range: 0 to 2.5 barg, signal: 4-20 mA, on_fault: reads high, filter: 1 s, tolerance: 0.5 %,
-             channel: SI-1-01}
+             characteristic: linear, range: 0 to 2.5 barg, signal: 4-20 mA, on_fault: reads high, filter: 1 s,
+             tolerance: 0.5 %, channel: SI-1-01}
 functions:
   FY-2031: {kind: ratio, unit: "20", service: Reflux to feed ratio, inputs: [FT-2001], to: FIC-2031,
             span: 0.2 to 0.8, normal: 0.45}

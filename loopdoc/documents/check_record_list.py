@@ -4,10 +4,10 @@ from __future__ import annotations
 
 from collections.abc import Iterable, Iterator, Mapping, Sequence
 
-from loopdoc.documents.failure_story import FailureStory
-from loopdoc.documents.loop_panels import related_interlocks
-from loopdoc.documents.loop_rows import action_words, acts_on
+from loopdoc.documents.loop_sheet.loop_panels import related_interlocks
+from loopdoc.documents.loop_sheet.loop_rows import action_words, acts_on
 from loopdoc.documents.naming import Names, moves_by_itself, power_of
+from loopdoc.documents.narrative.failure_story import FailureStory
 from loopdoc.documents.titleblock import fingerprint
 from loopdoc.documents.values import HOLD, shown
 from loopdoc.documents.wording import NO_BREAK, as_written, listed, sentence, sentences, value

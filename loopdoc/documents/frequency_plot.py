@@ -68,9 +68,16 @@ def _column(tag: str, curves: LoopCurves, margins: Margins, *, is_first: bool) -
     if has_gain_margin and w[0] <= margins.phase_crossover_rad_per_s <= w[-1] * (1.0 + 1e-6):
         at = margins.phase_crossover_rad_per_s
         guides.append(at)
-        # Near the right end there is no room for a name on that side.
+        # On the right of its stroke a name stands above the falling curve. Near the right end there is no room, and
+        # of a gain margin below 1 the curve is on that side: there it stands on the left, below the curve.
         is_late = math.log(at / w[0]) > 0.75 * math.log(w[-1] / w[0])
-        gain_marks = (Mark(f"GM {_shown(margins.gain_margin)}", at, 1.0, 1.0 / margins.gain_margin, is_left=is_late),)
+        is_left = is_late or margins.gain_margin < 1.0
+        gain_marks = (
+            Mark(
+                f"GM {_shown(margins.gain_margin)}", at, 1.0, 1.0 / margins.gain_margin, is_left=is_left,
+                is_below=is_left,
+            ),
+        )  # fmt: skip
     if curves.phase_margin_at is not None and math.isfinite(margins.phase_margin_deg):
         at, phase = curves.phase_margin_at
         guides.append(at)

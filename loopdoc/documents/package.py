@@ -17,12 +17,12 @@ from dataclasses import asdict, dataclass
 from datetime import date
 from pathlib import Path
 
-from loopdoc.documents.against import page_html
 from loopdoc.documents.basis import Basis, Page
 from loopdoc.documents.enclosures import HOUSE_FOLDER, PACKAGE_INDEX_KIND
 from loopdoc.documents.issue import FORMATS, KINDS, STYLE_SHEET, issue, pages_of, pdf_of, write_whole
 from loopdoc.documents.page_fit import foot
-from loopdoc.documents.site_places import path_of
+from loopdoc.documents.revision.against import page_html
+from loopdoc.documents.site.places import path_of
 from loopdoc.documents.values import shown
 from loopdoc.register.records import FOLDER as RECORDS_FOLDER
 from loopdoc.register.records import records_text

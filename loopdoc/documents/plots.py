@@ -69,6 +69,8 @@ class Mark:
     to: float
     is_left: bool = False
     """True where the name stands on the left of it."""
+    is_below: bool = False
+    """True where the name stands below the lower end of the stroke, not beside its middle."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -303,12 +305,17 @@ def _draw_mark(axes: Any, mark: Mark) -> None:
         axes.plot([mark.x], [mark.y], marker="o", markersize=3.0, color="#000000", linestyle="none")
     else:
         axes.plot([mark.x, mark.x], [mark.y, mark.to], marker="_", markersize=5.0, linewidth=1.6, color="#000000")
-    middle = math.sqrt(mark.y * mark.to) if axes.get_yscale() == "log" else (mark.y + mark.to) / 2.0
-    is_dot = mark.y == mark.to
+    beside = -4 if mark.is_left else 4
+    if mark.y == mark.to:
+        at, offset, anchor = mark.y, (0, 4), "bottom"
+    elif mark.is_below:
+        at, offset, anchor = min(mark.y, mark.to), (beside, -1), "top"
+    else:
+        middle = math.sqrt(mark.y * mark.to) if axes.get_yscale() == "log" else (mark.y + mark.to) / 2.0
+        at, offset, anchor = middle, (beside, 0), "center"
     axes.annotate(
-        mark.label, (mark.x, middle), xytext=(0, 4) if is_dot else (-4 if mark.is_left else 4, 0),
-        textcoords="offset points", ha="right" if mark.is_left else "left", va="bottom" if is_dot else "center",
-        fontsize=6.5,
+        mark.label, (mark.x, at), xytext=offset, textcoords="offset points",
+        ha="right" if mark.is_left else "left", va=anchor, fontsize=6.5,
     )  # fmt: skip
 
 

@@ -10,7 +10,7 @@ from loopdoc.documents.basis import Basis, Page
 from loopdoc.documents.frequency_plot import frequency_caption, frequency_drawing
 from loopdoc.documents.language import ENGLISH, Language
 from loopdoc.documents.magnitudes import difference_unit, duration, number, with_unit
-from loopdoc.documents.narrative import Supplement
+from loopdoc.documents.narrative.narrative import Supplement
 from loopdoc.documents.page_fit import foot
 from loopdoc.documents.plots import to_svg
 from loopdoc.documents.response_figure import caption, figure, whole_caption

@@ -5,8 +5,9 @@ from __future__ import annotations
 from collections.abc import Iterator
 from dataclasses import dataclass
 
-from loopdoc.documents import protection_story, time_to_act_story
 from loopdoc.documents.basis import Basis, Page
+from loopdoc.documents.narrative import protection_story, time_to_act_story
+from loopdoc.documents.narrative.time_to_act_story import Told, alarm_name
 from loopdoc.documents.schedules import (
     A3,
     DASHES,
@@ -20,7 +21,6 @@ from loopdoc.documents.schedules import (
     page,
     unit_title,
 )
-from loopdoc.documents.time_to_act_story import Told, alarm_name
 from loopdoc.documents.values import DASH
 from loopdoc.documents.whereabouts import anchor, natural, unit_numbers, unit_of
 from loopdoc.documents.wording import counted, listed, upper_first

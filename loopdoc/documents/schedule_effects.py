@@ -11,7 +11,8 @@ from dataclasses import dataclass
 
 from loopdoc.documents.basis import Basis, Page
 from loopdoc.documents.drawing import text_width
-from loopdoc.documents.protection_story import acts, bypass
+from loopdoc.documents.narrative.protection_story import acts, bypass
+from loopdoc.documents.narrative.time_to_act_story import response_of
 from loopdoc.documents.schedules import (
     A3,
     A4,
@@ -26,7 +27,6 @@ from loopdoc.documents.schedules import (
     page,
     unit_title,
 )
-from loopdoc.documents.time_to_act_story import response_of
 from loopdoc.documents.values import DASH
 from loopdoc.documents.whereabouts import anchor, natural, unit_numbers, unit_of
 from loopdoc.documents.wording import counted, listed, sentence, upper_first, value

@@ -4,9 +4,9 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 
-from loopdoc.documents import failure_story
 from loopdoc.documents.basis import Basis, Page
 from loopdoc.documents.naming import moves_by_itself, power_of, quantity
+from loopdoc.documents.narrative import failure_story
 from loopdoc.documents.schedules import (
     A3,
     DASHES,

@@ -6,6 +6,7 @@ import math
 from collections.abc import Iterator, Sequence
 
 from loopdoc.documents.basis import Basis, Page
+from loopdoc.documents.narrative.tuning_story import BASIS
 from loopdoc.documents.schedules import (
     A3,
     DASHES,
@@ -19,7 +20,6 @@ from loopdoc.documents.schedules import (
     page,
     unit_title,
 )
-from loopdoc.documents.tuning_story import BASIS
 from loopdoc.documents.values import DASH
 from loopdoc.documents.whereabouts import anchor, natural, unit_numbers, unit_of
 from loopdoc.documents.wording import NO_BREAK, counted, listed, number_word, upper_first

@@ -8,7 +8,7 @@ from typing import Any
 
 from loopdoc.documents.basis import Basis, Page
 from loopdoc.documents.language import ENGLISH
-from loopdoc.documents.open_points import DEVIATION_HEAD, deviation_rows, held_name
+from loopdoc.documents.narrative.open_points import DEVIATION_HEAD, deviation_rows, held_name
 from loopdoc.documents.page_fit import MM, title_table_height
 from loopdoc.documents.titleblock import Document
 from loopdoc.documents.values import DASH, HOLD, shown

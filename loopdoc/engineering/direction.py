@@ -130,6 +130,8 @@ def process_sign(process: Process) -> int | Undecided:
     sign = 1 if effect == "rises" else -1
     if gain is not None and gain.value * sign < 0:
         return Undecided(f"`effect: {effect}` contradicts the sign of `gain: {gain}`")
+    if gain is not None and gain.value == 0:
+        return Undecided(f"`effect: {effect}` contradicts `gain: {gain}`, by which nothing moves the measurement")
     return sign
 
 

@@ -59,7 +59,7 @@ def action_undecided(controlled: ControlledLoop) -> Iterator[Draft]:
         Nobody can then check the action on paper, and a wrong one is found only when the loop is put into
         automatic.
     Breaks:
-        No `action`, no `process`, an `effect` on hold, `effect: rises` with a negative gain, a final element without
+        No `action`, no `process`, an `effect` on hold, `effect: rises` with a negative gain or a gain of 0, a final element without
         `opens_on`.
     Holds:
         Each step of each path has its sign.
@@ -157,7 +157,7 @@ def _remedy(controlled: ControlledLoop, route: Route) -> str:
         return f"write for {route.end.tag} `opens_on: rising signal` or `opens_on: falling signal`"
     process = process_on(controlled, route)
     if process and known(process.effect) and known(process.gain):
-        return "correct the effect, or the sign of the gain"
+        return "correct the effect, or the gain and its sign"
     return "write under `process` whether the measurement rises or falls, as in `effect: rises`"
 
 

@@ -162,6 +162,47 @@ def trip_inside_operating(trip: Trip, plant: Plant) -> Iterator[Draft]:
         )
 
 
+@rule(level=Level.WARNING, source="common practice: a setpoint limit keeps the operator clear of the trip")
+def setpoint_limit_beyond_trip(trip: Trip, plant: Plant) -> Iterator[Draft]:
+    """A controller accepts a setpoint at which its own transmitter trips an interlock.
+
+    Why:
+        Whoever enters that setpoint, or a primary that asks for it, brings the plant to the trip by normal control.
+        The limit of the setpoint is there to refuse it.
+    Breaks:
+        A trip above 100 degC on the transmitter of a controller with `setpoint: {high: 105 degC}`, or with 100 degC.
+    Holds:
+        Of a trip above a limit, the high setpoint limit of each controller on that transmitter lies below that limit;
+        of a trip below a limit, the low one lies above it. A setpoint limit that is not given is not judged.
+    What this check cannot see:
+        Trips on another transmitter of the same vessel, and how far the measurement swings past its setpoint.
+    """
+    direction = need(trip.initiator.direction, "the direction of the trip")
+    side = "high" if direction == "above" else "low"
+    limited = [
+        (loop, setpoint, getattr(setpoint, side))
+        for loop in _loops_on(trip, plant)
+        if (controller := known(loop.controller)) is not None and (setpoint := known(controller.setpoint)) is not None
+    ]
+    limited = [entry for entry in limited if entry[2] is not None]
+    only_if(limited)
+    limit = need(trip.initiator.limit, "the trip limit")
+    for loop, setpoint, written in limited:
+        end = need(written, f"setpoint {side} of {loop.tag}")
+        scale = scale_in(limit.unit, loop)
+        value = reading(end, scale, f"setpoint {side} of {loop.tag}")
+        if below(value, limit.value) if side == "high" else above(value, limit.value):
+            continue
+        yield draft(
+            loop.tag,
+            f"setpoint {side}, {scale.told(end)}, lies {'at' if equal(value, limit.value) else 'beyond'} the trip of "
+            f"{trip.interlock.tag} {direction} {limit}",
+            remedy=f"write a setpoint limit {'below' if side == 'high' else 'above'} {limit}, with room for a swing",
+            at=setpoint.origin.place(side),
+            related=((trip.initiator.origin.place("trips"), f"the trip of {trip.interlock.tag}"),),
+        )
+
+
 @rule(
     level=Level.WARNING,
     source="common practice; ANSI/ISA-18.2-2016: the operator is told before the plant is tripped (from memory)",

@@ -6,9 +6,9 @@ from collections.abc import Iterable, Iterator
 from dataclasses import dataclass
 
 from loopdoc.documents.basis import Basis
-from loopdoc.documents.site_around import Around, Link, is_told_apart
-from loopdoc.documents.site_places import PER_LOOP, SCHEMES, Issue, Places, address
-from loopdoc.documents.site_points import Counts, Points
+from loopdoc.documents.site.around import Around, Link, is_told_apart
+from loopdoc.documents.site.places import PER_LOOP, SCHEMES, Issue, Places, address
+from loopdoc.documents.site.points import Counts, Points
 from loopdoc.documents.values import DASH, shown
 from loopdoc.documents.whereabouts import NO_UNIT, anchor, document_name, file_name, natural, unit_of
 from loopdoc.engineering.pairing import Scheme

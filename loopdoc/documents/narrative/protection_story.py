@@ -5,8 +5,8 @@ from __future__ import annotations
 import re
 from collections.abc import Iterable, Iterator, Sequence
 
-from loopdoc.documents import time_to_act_story
 from loopdoc.documents.language import ENGLISH, Language
+from loopdoc.documents.narrative import time_to_act_story
 from loopdoc.documents.wording import NO_BREAK, grouped, sentences
 from loopdoc.engineering.pairing import Plant
 from loopdoc.register.model import ALARM_ORDER, Bypass, FinalElement, Hold, Initiator, Interlock, Loop, known

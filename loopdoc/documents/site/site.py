@@ -14,13 +14,13 @@ from loopdoc.documents.basis import Basis, Page
 from loopdoc.documents.language import ENGLISH
 from loopdoc.documents.responses import scheme_chains
 from loopdoc.documents.schedule_effects import MARKS, MODES
-from loopdoc.documents.site_around import ROOT, Around, Entry, Link, is_told_apart
-from loopdoc.documents.site_index import choices, index_rows
-from loopdoc.documents.site_places import SCHEMES, Issue, Places, address
-from loopdoc.documents.site_plot import plot_data
-from loopdoc.documents.site_points import NotMade, Point, Points, all_points
-from loopdoc.documents.site_script import data_block, policy, script
-from loopdoc.documents.site_source import Excerpt, Marked, Sources
+from loopdoc.documents.site.around import ROOT, Around, Entry, Link, is_told_apart
+from loopdoc.documents.site.index import choices, index_rows
+from loopdoc.documents.site.places import SCHEMES, Issue, Places, address
+from loopdoc.documents.site.plot import plot_data
+from loopdoc.documents.site.points import NotMade, Point, Points, all_points
+from loopdoc.documents.site.script import data_block, policy, script
+from loopdoc.documents.site.source import Excerpt, Marked, Sources
 from loopdoc.documents.values import shown
 from loopdoc.documents.whereabouts import anchor, file_name, unit_of
 from loopdoc.documents.wording import listed

@@ -11,7 +11,7 @@ from itertools import pairwise
 
 from loopdoc.documents.drawing import BLOCK, BUBBLE, DIAMOND, LEADING, Sheet, tag_lines, wrapped
 from loopdoc.documents.language import Language
-from loopdoc.documents.loop_rows import (
+from loopdoc.documents.loop_sheet.loop_rows import (
     BESIDE_DISTANCE,
     INPUT_DISTANCE,
     MOST_BESIDE,

@@ -5,10 +5,10 @@ from __future__ import annotations
 from collections.abc import Iterable, Iterator, Sequence
 from dataclasses import replace
 
-from loopdoc.documents.affected import Kinds, documents_between
 from loopdoc.documents.basis import Basis, Page
-from loopdoc.documents.check_report import SignOff
-from loopdoc.documents.revision_story import story
+from loopdoc.documents.revision.affected import Kinds, documents_between
+from loopdoc.documents.revision.check_report import SignOff
+from loopdoc.documents.revision.revision_story import story
 from loopdoc.documents.schedules import A4, Cell, Column, Group, Row, Schedule, Writer, page
 from loopdoc.documents.values import DASH
 from loopdoc.documents.wording import sentence, upper_first

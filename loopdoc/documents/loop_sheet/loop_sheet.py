@@ -8,11 +8,10 @@ from dataclasses import dataclass, replace
 
 from markupsafe import Markup
 
-from loopdoc.documents import time_to_act_story
 from loopdoc.documents.basis import Basis, Page
 from loopdoc.documents.language import Language
-from loopdoc.documents.loop_drawing import drawn_loop
-from loopdoc.documents.loop_panels import (
+from loopdoc.documents.loop_sheet.loop_drawing import drawn_loop
+from loopdoc.documents.loop_sheet.loop_panels import (
     Panel,
     Table,
     alarm_table,
@@ -28,7 +27,10 @@ from loopdoc.documents.loop_panels import (
     term,
     tuning_panel,
 )
-from loopdoc.documents.open_points import HOLD_RULE
+from loopdoc.documents.loop_sheet.response_plot import HEIGHT as PLOT_HEIGHT
+from loopdoc.documents.loop_sheet.response_plot import calculated_response, response_plot, response_words
+from loopdoc.documents.narrative import time_to_act_story
+from loopdoc.documents.narrative.open_points import HOLD_RULE
 from loopdoc.documents.page_fit import (
     DENSITIES,
     MM,
@@ -38,8 +40,6 @@ from loopdoc.documents.page_fit import (
     room,
     table_height,
 )
-from loopdoc.documents.response_plot import HEIGHT as PLOT_HEIGHT
-from loopdoc.documents.response_plot import calculated_response, response_plot, response_words
 from loopdoc.documents.titleblock import Document
 from loopdoc.documents.values import DASH
 from loopdoc.documents.wording import upper_first

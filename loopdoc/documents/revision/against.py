@@ -7,8 +7,8 @@ from dataclasses import replace
 from typing import Any
 
 from loopdoc.documents.basis import Basis, Page
-from loopdoc.documents.change_bars import with_bars
 from loopdoc.documents.rendering import render
+from loopdoc.documents.revision.change_bars import with_bars
 from loopdoc.documents.titleblock import fingerprint
 from loopdoc.register.model import known
 

@@ -8,7 +8,9 @@ from dataclasses import dataclass
 from typing import TypeVar
 from urllib.parse import quote
 
-from loopdoc.documents import (
+from loopdoc.documents.basis import Basis, Page
+from loopdoc.documents.language import LANGUAGES
+from loopdoc.documents.narrative import (
     failure_story,
     open_points,
     protection_story,
@@ -16,10 +18,8 @@ from loopdoc.documents import (
     time_to_act_story,
     tuning_story,
 )
-from loopdoc.documents.basis import Basis, Page
-from loopdoc.documents.language import LANGUAGES
+from loopdoc.documents.narrative.scheme_story import SchemeStory, headline
 from loopdoc.documents.page_fit import foot
-from loopdoc.documents.scheme_story import SchemeStory, headline
 from loopdoc.documents.values import HOLD
 from loopdoc.documents.view import Block, Figure, Paragraph, Section, Steps, table
 from loopdoc.documents.whereabouts import file_name, mover, unit_numbers, unit_of

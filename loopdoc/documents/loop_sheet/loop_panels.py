@@ -9,9 +9,9 @@ from typing import Any
 
 from markupsafe import Markup
 
-from loopdoc.documents.expected_signals import STEPS, expected_commands, expected_readings
 from loopdoc.documents.language import ENGLISH, Language
-from loopdoc.documents.loop_rows import action_words, acts_on
+from loopdoc.documents.loop_sheet.expected_signals import STEPS, expected_commands, expected_readings
+from loopdoc.documents.loop_sheet.loop_rows import action_words, acts_on
 from loopdoc.documents.titleblock import RevisionRow
 from loopdoc.documents.values import DASH, HOLD
 from loopdoc.engineering.direction import Undecided, path_sign

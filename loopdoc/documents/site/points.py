@@ -7,7 +7,7 @@ from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 
 from loopdoc.documents.basis import Basis
-from loopdoc.documents.open_points import HOLD_RULE, OpenPoints, held_name
+from loopdoc.documents.narrative.open_points import HOLD_RULE, OpenPoints, held_name
 from loopdoc.documents.values import shown
 from loopdoc.register.model import HeldValue
 from loopdoc.register.place import Place

@@ -5,8 +5,8 @@ from __future__ import annotations
 from collections.abc import Iterable, Iterator, Sequence
 from dataclasses import dataclass
 
-from loopdoc.documents.protection_story import acts
-from loopdoc.documents.site_places import PER_LOOP, SCHEMES, Issue, Places, address
+from loopdoc.documents.narrative.protection_story import acts
+from loopdoc.documents.site.places import PER_LOOP, SCHEMES, Issue, Places, address
 from loopdoc.documents.values import shown
 from loopdoc.documents.whereabouts import anchor, document_name, file_name, mover, unit_of
 from loopdoc.engineering.pairing import Plant, Scheme

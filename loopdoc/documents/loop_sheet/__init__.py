@@ -1,0 +1,1 @@
+"""The loop sheet: one page with the drawn loop and its data."""

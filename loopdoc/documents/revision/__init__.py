@@ -1,0 +1,1 @@
+"""What a revision changes, told in documents: bars, the revision summary, the check report."""
