@@ -25,7 +25,7 @@ import weasyprint
 
 from loopdoc.documents import pdf, responses
 from loopdoc.documents.basis import Basis, basis_of
-from loopdoc.documents.issue import KINDS, issue, pages_of
+from loopdoc.documents.handover.issue import KINDS, issue, pages_of
 from loopdoc.documents.revision.against import page_html
 from loopdoc.engineering import simulation
 from loopdoc.register.load import Loaded, load

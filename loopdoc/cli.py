@@ -392,8 +392,8 @@ def _colour(stream: TextIO) -> bool:
 
 
 def _issue(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
-    from loopdoc.documents.house import HouseError
-    from loopdoc.documents.issue import FORMATS, KINDS, issue
+    from loopdoc.documents.handover.house import HouseError
+    from loopdoc.documents.handover.issue import FORMATS, KINDS, issue
     from loopdoc.documents.language import LANGUAGES
     from loopdoc.documents.pdf import PdfError
     from loopdoc.exchange.findings import summary
@@ -422,7 +422,7 @@ def _issue(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int
     def write(formats: Sequence[str]) -> str:
         settings: Any = {"kinds": kinds, "formats": formats, "jobs": arguments.jobs, "progress": progress}
         if arguments.package:
-            from loopdoc.documents.package import package
+            from loopdoc.documents.handover.package import package
 
             made = package(basis, arguments.package, **settings)
             return f"{made.documents} documents in {made.folder} and {made.archive} ({made.files} files).\n"
@@ -498,7 +498,7 @@ def _compare(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> i
     new = basis_of(sides[1], against=old)
     found = compared(old, new, old_named=arguments.old, new_named=arguments.new or str(arguments.register))
     if arguments.documents:
-        from loopdoc.documents.issue import KINDS
+        from loopdoc.documents.handover.issue import KINDS
         from loopdoc.documents.revision.affected import documents_between
 
         found = replace(found, documents=documents_between(old, new, KINDS))
@@ -564,10 +564,10 @@ def _identify(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> 
 
 
 def _attest(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
-    from loopdoc.documents.attest import Attestation, NotIssued
-    from loopdoc.documents.attest_package import is_package, open_package, verify
-    from loopdoc.documents.attest_report import packages_text, report_json, report_text
-    from loopdoc.documents.house import HouseError
+    from loopdoc.documents.handover.attest import Attestation, NotIssued
+    from loopdoc.documents.handover.attest_package import is_package, open_package, verify
+    from loopdoc.documents.handover.attest_report import packages_text, report_json, report_text
+    from loopdoc.documents.handover.house import HouseError
     from loopdoc.documents.pdf import PdfError
     from loopdoc.exchange.escaping import for_terminal
     from loopdoc.register.files import is_register
@@ -611,8 +611,8 @@ def _attest(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> in
 
 
 def _record(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
-    from loopdoc.documents.check_record_list import guide, plant_checks
-    from loopdoc.documents.issue import write_whole
+    from loopdoc.documents.check_record.expected import guide, plant_checks
+    from loopdoc.documents.handover.issue import write_whole
     from loopdoc.engineering.pairing import Plant
     from loopdoc.engineering.record_verdict import JudgedRecord, Verdict
     from loopdoc.exchange.escaping import for_terminal
@@ -734,7 +734,7 @@ def _basis(path: Path, stderr: TextIO, *, with_records: bool = False, against: s
     if loaded is None or (against and earlier is None):
         return None
     from loopdoc.documents.basis import basis_of
-    from loopdoc.documents.house import HouseError, read_house
+    from loopdoc.documents.handover.house import HouseError, read_house
     from loopdoc.exchange.record_report import faults_text
     from loopdoc.register.records import load_records
 

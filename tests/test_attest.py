@@ -10,9 +10,9 @@ import pypdf
 import pytest
 
 from loopdoc.cli import run
-from loopdoc.documents.attest import Answer, Attestation, Attested, NotIssued
 from loopdoc.documents.basis import Basis, basis_of
-from loopdoc.documents.issue import issue
+from loopdoc.documents.handover.attest import Answer, Attestation, Attested, NotIssued
+from loopdoc.documents.handover.issue import issue
 from loopdoc.register.load import Loaded, load
 from loopdoc.register.starter import starter_files
 

@@ -11,9 +11,9 @@ import pypdf
 import pytest
 
 from loopdoc.cli import run
-from loopdoc.documents.attest import Answer, Attestation, Attested
 from loopdoc.documents.basis import Basis, basis_of
-from loopdoc.documents.issue import issue, page_html, pages_of, pdf_of
+from loopdoc.documents.handover.attest import Answer, Attestation, Attested
+from loopdoc.documents.handover.issue import issue, page_html, pages_of, pdf_of
 from loopdoc.documents.revision.change_bars import blocks, difference, with_bars
 from loopdoc.register.load import Loaded, load
 from loopdoc.register.starter import starter_files

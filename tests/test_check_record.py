@@ -13,10 +13,10 @@ import pytest
 from pypdf import PdfReader
 
 from loopdoc.documents.basis import Basis, Page, basis_of
-from loopdoc.documents.check_record import RecordView, check_records, record_height
-from loopdoc.documents.check_record_fit import SIZES
-from loopdoc.documents.check_record_list import plant_checks
-from loopdoc.documents.check_record_tables import CheckTable
+from loopdoc.documents.check_record.check_record import RecordView, check_records, record_height
+from loopdoc.documents.check_record.expected import plant_checks
+from loopdoc.documents.check_record.fit import SIZES
+from loopdoc.documents.check_record.tables import CheckTable
 from loopdoc.documents.page_fit import room
 from loopdoc.documents.pdf import to_pdf
 from loopdoc.documents.rendering import render

@@ -226,7 +226,8 @@ def test_a_folder_that_cannot_be_written_is_told(starter: Path, tmp_path: Path) 
 def test_a_missing_pango_leaves_the_html_and_says_what_to_install(
     starter: Path, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
 ) -> None:
-    from loopdoc.documents import issue, pdf
+    from loopdoc.documents import pdf
+    from loopdoc.documents.handover import issue
 
     def missing() -> None:
         raise pdf.PdfError(pdf.PANGO_HINT)

@@ -10,8 +10,8 @@ import pytest
 
 from loopdoc.cli import run
 from loopdoc.documents import bounded
-from loopdoc.documents.attest import Attestation, Attested
-from loopdoc.documents.house import HouseError, house_of
+from loopdoc.documents.handover.attest import Attestation, Attested
+from loopdoc.documents.handover.house import HouseError, house_of
 from loopdoc.documents.rendering import template_text
 from loopdoc.documents.titleblock import CAUTIONS
 from loopdoc.register.starter import starter_files

@@ -11,7 +11,7 @@ import pytest
 
 from loopdoc.documents import pdf
 from loopdoc.documents.basis import Basis
-from loopdoc.documents.issue import issue, write_whole
+from loopdoc.documents.handover.issue import issue, write_whole
 from loopdoc.documents.magnitudes import difference_unit
 from loopdoc.documents.titleblock import CAUTIONS, fingerprint
 from loopdoc.engineering.dynamics import Dynamics

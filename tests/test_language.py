@@ -13,8 +13,8 @@ from typing import Any
 import pytest
 
 from loopdoc.documents.basis import Basis, Page, basis_of
-from loopdoc.documents.enclosures import statement
-from loopdoc.documents.issue import KINDS
+from loopdoc.documents.handover.enclosures import statement
+from loopdoc.documents.handover.issue import KINDS
 from loopdoc.documents.language import ENGLISH, GERMAN, LANGUAGES, Language
 from loopdoc.documents.language.english import English
 from loopdoc.documents.language.facts import Action, Asked, Moved, Reason, Rise, Way

@@ -13,10 +13,10 @@ import pypdf
 import pytest
 
 from loopdoc.cli import run
-from loopdoc.documents import package as package_module
-from loopdoc.documents.attest import NotIssued
-from loopdoc.documents.attest_package import Verified, open_package, verify
-from loopdoc.documents.package import IndexRow, as_csv
+from loopdoc.documents.handover import package as package_module
+from loopdoc.documents.handover.attest import NotIssued
+from loopdoc.documents.handover.attest_package import Verified, open_package, verify
+from loopdoc.documents.handover.package import IndexRow, as_csv
 from loopdoc.register.starter import starter_files
 
 KINDS = ("loop-sheet", "channel-list")

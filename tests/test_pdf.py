@@ -14,7 +14,7 @@ import weasyprint
 
 from loopdoc.documents import pdf
 from loopdoc.documents.basis import Basis, basis_of
-from loopdoc.documents.issue import KINDS, pdf_of
+from loopdoc.documents.handover.issue import KINDS, pdf_of
 from loopdoc.register.load import Loaded, load
 
 ROOT = Path(__file__).parent.parent

@@ -17,8 +17,8 @@ from xlsxwriter import Workbook
 
 from loopdoc.cli import run
 from loopdoc.documents.basis import basis_of
-from loopdoc.documents.check_record import RecordView, check_records
-from loopdoc.documents.check_record_list import plant_checks
+from loopdoc.documents.check_record.check_record import RecordView, check_records
+from loopdoc.documents.check_record.expected import plant_checks
 from loopdoc.engineering.loop_check import LoopChecks, Reading
 from loopdoc.engineering.pairing import Plant
 from loopdoc.engineering.record_verdict import JudgedRecord, Verdict, judge

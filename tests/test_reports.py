@@ -8,12 +8,12 @@ from pathlib import Path
 import pytest
 
 from loopdoc.documents.basis import Basis, Page, basis_of
-from loopdoc.documents.issue import KINDS
+from loopdoc.documents.handover.issue import KINDS
 from loopdoc.documents.page_fit import title_table_height
 from loopdoc.documents.rendering import render
 from loopdoc.documents.revision.check_report import check_reports
 from loopdoc.documents.revision.revision_summary import revision_summaries
-from loopdoc.documents.schedules import Schedule
+from loopdoc.documents.schedules.schedule import Schedule
 from loopdoc.documents.wording import plain
 from loopdoc.register.load import Loaded, load
 from loopdoc.rules.policy import Limits

@@ -161,7 +161,7 @@ def test_the_name_of_a_gain_margin_lies_clear_of_its_curve(plant: Plant) -> None
             for panel in frequency_drawing(chain).rows[0]:
                 for mark in panel.marks:
                     (left, right, bottom, top), curve = placed(panel, mark)
-                    assert 0.0 <= left
+                    assert left >= 0.0
                     assert bottom >= 0.0, (tag, panel.title)
                     x, y = curve.T
                     assert not np.any((left < x) & (x < right) & (bottom < y) & (y < top)), (tag, panel.title)

@@ -16,14 +16,14 @@ import pytest
 from pypdf import PdfReader
 
 from loopdoc.documents.basis import Basis, Page, basis_of
-from loopdoc.documents.check_record import check_records
+from loopdoc.documents.check_record.check_record import check_records
 from loopdoc.documents.pdf import to_pdf
 from loopdoc.documents.rendering import render
-from loopdoc.documents.schedule_alarms import alarm_schedules
-from loopdoc.documents.schedule_effects import cause_and_effect_charts
-from loopdoc.documents.schedule_failures import failure_schedules
-from loopdoc.documents.schedule_lists import channel_lists, instrument_lists
-from loopdoc.documents.schedule_tuning import tuning_schedules
+from loopdoc.documents.schedules.alarms import alarm_schedules
+from loopdoc.documents.schedules.effects import cause_and_effect_charts
+from loopdoc.documents.schedules.failures import failure_schedules
+from loopdoc.documents.schedules.lists import channel_lists, instrument_lists
+from loopdoc.documents.schedules.tuning import tuning_schedules
 from loopdoc.documents.whereabouts import natural
 from loopdoc.engineering.failure import FailureAnalysis
 from loopdoc.register.load import Loaded, load

@@ -23,7 +23,7 @@ from typing import Any
 import pytest
 
 from loopdoc.documents.basis import Basis, basis_of
-from loopdoc.documents.issue import issue
+from loopdoc.documents.handover.issue import issue
 from loopdoc.register.load import Loaded, load
 from loopdoc.register.starter import starter_files
 

@@ -6,7 +6,7 @@ from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass, field, replace
 from typing import Any
 
-from loopdoc.documents.house import NO_HOUSE, House
+from loopdoc.documents.handover.house import NO_HOUSE, House
 from loopdoc.documents.language import ENGLISH, LANGUAGES, Language
 from loopdoc.documents.titleblock import Document, document
 from loopdoc.engineering.comparison import Comparison, NotSimulated, compare

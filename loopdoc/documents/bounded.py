@@ -16,7 +16,7 @@ from pathlib import Path
 
 from jinja2 import TemplateSyntaxError
 
-from loopdoc.documents.house import FOLDER, HouseError
+from loopdoc.documents.handover.house import FOLDER, HouseError
 
 MAX_SECONDS = 10
 MAX_MEMORY = 512_000_000

@@ -12,7 +12,7 @@ from jinja2 import FunctionLoader, StrictUndefined, select_autoescape
 from jinja2.sandbox import SandboxedEnvironment
 
 from loopdoc.documents.bounded import within_limits
-from loopdoc.documents.house import FOLDER, NO_HOUSE, House
+from loopdoc.documents.handover.house import FOLDER, NO_HOUSE, House
 from loopdoc.documents.language import ENGLISH, LANGUAGES
 
 FONTS = {

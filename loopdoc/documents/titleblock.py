@@ -8,7 +8,7 @@ from dataclasses import dataclass
 from datetime import date
 
 from loopdoc import __version__
-from loopdoc.documents.house import NO_HOUSE, House
+from loopdoc.documents.handover.house import NO_HOUSE, House
 from loopdoc.documents.language import ENGLISH, Language
 from loopdoc.documents.values import DASH
 from loopdoc.engineering.pairing import Plant

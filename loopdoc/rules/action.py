@@ -59,8 +59,8 @@ def action_undecided(controlled: ControlledLoop) -> Iterator[Draft]:
         Nobody can then check the action on paper, and a wrong one is found only when the loop is put into
         automatic.
     Breaks:
-        No `action`, no `process`, an `effect` on hold, `effect: rises` with a negative gain or a gain of 0, a final element without
-        `opens_on`.
+        No `action`, no `process`, an `effect` on hold, `effect: rises` with a negative gain or a gain of 0, a final
+        element without `opens_on`.
     Holds:
         Each step of each path has its sign.
     What this check cannot see:

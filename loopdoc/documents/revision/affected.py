@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Callable, Iterator, Mapping
 
 from loopdoc.documents.basis import Basis, Page
-from loopdoc.documents.enclosures import content
+from loopdoc.documents.handover.enclosures import content
 from loopdoc.documents.rendering import render
 from loopdoc.documents.revision.against import WITHOUT_BARS
 from loopdoc.documents.revision.change_bars import blocks, difference

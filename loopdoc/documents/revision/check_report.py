@@ -8,7 +8,7 @@ from dataclasses import dataclass
 from loopdoc.documents.basis import Basis, Page
 from loopdoc.documents.language import ENGLISH
 from loopdoc.documents.narrative.open_points import hold_rows
-from loopdoc.documents.schedules import A4, Column, Group, Row, Schedule, Writer, page
+from loopdoc.documents.schedules.schedule import A4, Column, Group, Row, Schedule, Writer, page
 from loopdoc.documents.values import DASH, shown
 from loopdoc.documents.wording import counted, listed, sentence, upper_first
 from loopdoc.register.model import Deviation

@@ -9,7 +9,7 @@ from loopdoc.documents.basis import Basis, Page
 from loopdoc.documents.revision.affected import Kinds, documents_between
 from loopdoc.documents.revision.check_report import SignOff
 from loopdoc.documents.revision.revision_story import story
-from loopdoc.documents.schedules import A4, Cell, Column, Group, Row, Schedule, Writer, page
+from loopdoc.documents.schedules.schedule import A4, Cell, Column, Group, Row, Schedule, Writer, page
 from loopdoc.documents.values import DASH
 from loopdoc.documents.wording import sentence, upper_first
 from loopdoc.revisions.changes import NAMED, Change, Kind, TagChange

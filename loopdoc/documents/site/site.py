@@ -13,7 +13,7 @@ from markupsafe import Markup
 from loopdoc.documents.basis import Basis, Page
 from loopdoc.documents.language import ENGLISH
 from loopdoc.documents.responses import scheme_chains
-from loopdoc.documents.schedule_effects import MARKS, MODES
+from loopdoc.documents.schedules.effects import MARKS, MODES
 from loopdoc.documents.site.around import ROOT, Around, Entry, Link, is_told_apart
 from loopdoc.documents.site.index import choices, index_rows
 from loopdoc.documents.site.places import SCHEMES, Issue, Places, address

@@ -13,7 +13,7 @@ from pathlib import PurePosixPath
 
 from loopdoc import __version__
 from loopdoc.documents.basis import Basis, Page
-from loopdoc.documents.house import FOLDER, House
+from loopdoc.documents.handover.house import FOLDER, House
 from loopdoc.documents.pdf import Enclosure
 from loopdoc.documents.rendering import render
 from loopdoc.documents.titleblock import fingerprint

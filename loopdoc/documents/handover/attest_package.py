@@ -9,8 +9,8 @@ from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from pathlib import Path
 
-from loopdoc.documents.attest import MAX_BYTES, NotIssued
-from loopdoc.documents.package import SUMS_NAME, read_sums
+from loopdoc.documents.handover.attest import MAX_BYTES, NotIssued
+from loopdoc.documents.handover.package import SUMS_NAME, read_sums
 
 MAX_FILES = 100_000
 

@@ -13,7 +13,7 @@ from loopdoc.documents.basis import Basis, Page
 from loopdoc.documents.drawing import text_width
 from loopdoc.documents.narrative.protection_story import acts, bypass
 from loopdoc.documents.narrative.time_to_act_story import response_of
-from loopdoc.documents.schedules import (
+from loopdoc.documents.schedules.schedule import (
     A3,
     A4,
     DASHES,

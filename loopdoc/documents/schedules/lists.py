@@ -6,7 +6,7 @@ from collections.abc import Iterator
 from dataclasses import dataclass
 
 from loopdoc.documents.basis import Basis, Page
-from loopdoc.documents.schedules import (
+from loopdoc.documents.schedules.schedule import (
     A3,
     A4,
     DASHES,

@@ -6,8 +6,8 @@ import json
 from collections.abc import Sequence
 from dataclasses import asdict
 
-from loopdoc.documents.attest import Answer, Attested, NotIssued
-from loopdoc.documents.attest_package import Verified
+from loopdoc.documents.handover.attest import Answer, Attested, NotIssued
+from loopdoc.documents.handover.attest_package import Verified
 
 CAUTION = (
     "A file bears no signature: this tells a file that was altered or is out of date, not who issued it. It does not "

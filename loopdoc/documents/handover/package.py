@@ -18,8 +18,8 @@ from datetime import date
 from pathlib import Path
 
 from loopdoc.documents.basis import Basis, Page
-from loopdoc.documents.enclosures import HOUSE_FOLDER, PACKAGE_INDEX_KIND
-from loopdoc.documents.issue import FORMATS, KINDS, STYLE_SHEET, issue, pages_of, pdf_of, write_whole
+from loopdoc.documents.handover.enclosures import HOUSE_FOLDER, PACKAGE_INDEX_KIND
+from loopdoc.documents.handover.issue import FORMATS, KINDS, STYLE_SHEET, issue, pages_of, pdf_of, write_whole
 from loopdoc.documents.page_fit import foot
 from loopdoc.documents.revision.against import page_html
 from loopdoc.documents.site.places import path_of

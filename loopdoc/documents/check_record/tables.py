@@ -6,7 +6,7 @@ import math
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 
-from loopdoc.documents.check_record_list import elements_of
+from loopdoc.documents.check_record.expected import elements_of
 from loopdoc.documents.loop_sheet.expected_signals import ExpectedRow, expected_commands, expected_readings
 from loopdoc.documents.values import DASH, shown
 from loopdoc.documents.wording import NO_BREAK, listed, value

@@ -10,8 +10,8 @@ from dataclasses import dataclass
 from pathlib import Path
 
 from loopdoc.documents.basis import Basis, Page
-from loopdoc.documents.check_record import check_records
-from loopdoc.documents.enclosures import enclosures
+from loopdoc.documents.check_record.check_record import check_records
+from loopdoc.documents.handover.enclosures import enclosures
 from loopdoc.documents.loop_sheet.loop_sheet import loop_sheets
 from loopdoc.documents.narrative.narrative import narratives
 from loopdoc.documents.pdf import Enclosure, ensure_available, to_pdf
@@ -20,11 +20,11 @@ from loopdoc.documents.responses import responses, supplements
 from loopdoc.documents.revision.against import page_html, pages_against
 from loopdoc.documents.revision.check_report import check_reports
 from loopdoc.documents.revision.revision_summary import revision_summaries
-from loopdoc.documents.schedule_alarms import alarm_schedules
-from loopdoc.documents.schedule_effects import cause_and_effect_charts
-from loopdoc.documents.schedule_failures import failure_schedules
-from loopdoc.documents.schedule_lists import channel_lists, instrument_lists
-from loopdoc.documents.schedule_tuning import tuning_schedules
+from loopdoc.documents.schedules.alarms import alarm_schedules
+from loopdoc.documents.schedules.effects import cause_and_effect_charts
+from loopdoc.documents.schedules.failures import failure_schedules
+from loopdoc.documents.schedules.lists import channel_lists, instrument_lists
+from loopdoc.documents.schedules.tuning import tuning_schedules
 from loopdoc.documents.site.places import path_of
 from loopdoc.documents.site.site import Frame, Site
 

@@ -6,7 +6,8 @@ from collections.abc import Iterable, Iterator, Mapping
 from dataclasses import dataclass, replace
 
 from loopdoc.documents.basis import Basis, Page
-from loopdoc.documents.check_record_fit import (
+from loopdoc.documents.check_record.expected import elements_of, loop_checks
+from loopdoc.documents.check_record.fit import (
     LONGER,
     SIZES,
     Rows,
@@ -15,8 +16,7 @@ from loopdoc.documents.check_record_fit import (
     labelled_height,
     words_height,
 )
-from loopdoc.documents.check_record_list import elements_of, loop_checks
-from loopdoc.documents.check_record_tables import (
+from loopdoc.documents.check_record.tables import (
     FUNCTIONS,
     CheckTable,
     function_table,

@@ -18,7 +18,7 @@ from pypdf.errors import PyPdfError
 
 from loopdoc import __version__
 from loopdoc.documents.basis import Basis, basis_of
-from loopdoc.documents.enclosures import (
+from loopdoc.documents.handover.enclosures import (
     AGAINST_FOLDER,
     HOUSE_FOLDER,
     PACKAGE_INDEX_KIND,
@@ -30,8 +30,8 @@ from loopdoc.documents.enclosures import (
     house_fingerprint,
     statement,
 )
-from loopdoc.documents.house import HouseError, house_of
-from loopdoc.documents.issue import KINDS, pages_of, pdf_of
+from loopdoc.documents.handover.house import HouseError, house_of
+from loopdoc.documents.handover.issue import KINDS, pages_of, pdf_of
 from loopdoc.documents.language import ENGLISH, LANGUAGES
 from loopdoc.documents.titleblock import fingerprint
 from loopdoc.register.files import HeldFiles

@@ -7,7 +7,7 @@ from collections.abc import Iterator, Sequence
 
 from loopdoc.documents.basis import Basis, Page
 from loopdoc.documents.narrative.tuning_story import BASIS
-from loopdoc.documents.schedules import (
+from loopdoc.documents.schedules.schedule import (
     A3,
     DASHES,
     NOT_APPLICABLE,

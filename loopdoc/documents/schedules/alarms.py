@@ -8,7 +8,7 @@ from dataclasses import dataclass
 from loopdoc.documents.basis import Basis, Page
 from loopdoc.documents.narrative import protection_story, time_to_act_story
 from loopdoc.documents.narrative.time_to_act_story import Told, alarm_name
-from loopdoc.documents.schedules import (
+from loopdoc.documents.schedules.schedule import (
     A3,
     DASHES,
     NOT_APPLICABLE,

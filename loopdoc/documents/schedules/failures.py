@@ -7,7 +7,7 @@ from collections.abc import Iterator
 from loopdoc.documents.basis import Basis, Page
 from loopdoc.documents.naming import moves_by_itself, power_of, quantity
 from loopdoc.documents.narrative import failure_story
-from loopdoc.documents.schedules import (
+from loopdoc.documents.schedules.schedule import (
     A3,
     DASHES,
     NOT_APPLICABLE,

@@ -1,0 +1,1 @@
+"""Schedules: alarms and trips, cause and effect, tuning, failure effects, channels, instruments."""
