@@ -124,7 +124,7 @@ def _parser() -> argparse.ArgumentParser:
     check.add_argument(
         "--since",
         metavar="REVISION",
-        help="report only what is new since this git revision, and judge the exit code by that",
+        help="report only what is new or changed since this git revision, and judge the exit code by that",
     )
     check.add_argument(
         "--fail-on", choices=("error", "warning", "note", "never"), default="error",
