@@ -153,31 +153,34 @@ def placed(panel: Panel, mark: Mark) -> tuple[Array, Array]:
     return np.array([left, left + wide, bottom, bottom + tall]), share(curve.x, curve.y)
 
 
-def test_the_name_of_a_gain_margin_lies_clear_of_its_curve(plant: Plant) -> None:
+def alone(cascade: ChainDynamics, stage: LoopStage) -> ChainDynamics:
+    """One loop, by the names of the innermost of a cascade."""
+    innermost = cascade.chain.levels[0]
+    level = type(innermost)(innermost.loop, innermost.route, stage)
+    return ChainDynamics(type(cascade.chain)((level,)), quoted_margins([[stage]])[0])
+
+
+def test_the_name_of_a_gain_margin_lies_clear_of_its_curve(plant: Plant, cascade: ChainDynamics) -> None:
     dynamics = Dynamics(plant)
-    sides = set()
-    for tag in plant.controlled:
-        for chain in dynamics.loop(tag).chains:
-            for panel in frequency_drawing(chain).rows[0]:
-                for mark in panel.marks:
-                    (left, right, bottom, top), curve = placed(panel, mark)
-                    assert left >= 0.0
-                    assert bottom >= 0.0, (tag, panel.title)
-                    x, y = curve.T
-                    assert not np.any((left < x) & (x < right) & (bottom < y) & (y < top)), (tag, panel.title)
-                    sides.add(mark.is_left)
-    assert sides == {True, False}
+    chains = [chain for tag in plant.controlled for chain in dynamics.loop(tag).chains]
+    # A lag executed twice in its time constant: the gain margin is read at half the sampling frequency.
+    late = alone(cascade, LoopStage(Controller(1.0, interval_s=3.0), Process(1.0, (6.0,))))
+    above_one = alone(cascade, LoopStage(Controller(20.0, 5.0), Process(1.0, (5.0,), 2.0)))
+    for chain in (*chains, late, above_one):
+        for panel in frequency_drawing(chain).rows[0]:
+            for mark in panel.marks:
+                (left, right, bottom, top), curve = placed(panel, mark)
+                assert min(left, bottom) >= 0.0, panel.title
+                assert max(right, top) <= 1.0, panel.title
+                x, y = curve.T
+                assert not np.any((left < x) & (x < right) & (bottom < y) & (y < top)), panel.title
+    for chain in (late, above_one):
+        (mark,) = frequency_drawing(chain).rows[0][0].marks
+        assert mark.is_left
 
 
 def test_an_unstable_loop_is_named_so_and_has_no_peaks(cascade: ChainDynamics) -> None:
-    stages = [LoopStage(Controller(20.0, 5.0), Process(1.0, (5.0,), 2.0))]
-    unstable = ChainDynamics(
-        type(cascade.chain)((type(cascade.chain.levels[0])(
-            cascade.chain.levels[0].loop, cascade.chain.levels[0].route, stages[0]
-        ),)),
-        analyse_chain(stages),
-    )  # fmt: skip
-    drawing = frequency_drawing(unstable)
+    drawing = frequency_drawing(alone(cascade, LoopStage(Controller(20.0, 5.0), Process(1.0, (5.0,), 2.0))))
     assert "NOT STABLE" in drawing.rows[0][0].title
     assert drawing.rows[2][0].marks == ()
 

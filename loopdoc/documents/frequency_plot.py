@@ -82,7 +82,12 @@ def _column(tag: str, curves: LoopCurves, margins: Margins, *, is_first: bool) -
         at, phase = curves.phase_margin_at
         guides.append(at)
         turns = 360.0 * round((phase + 180.0) / 360.0)
-        phase_marks = (Mark(f"PM {_shown(margins.phase_margin_deg)}°", at, -180.0 + turns, phase, is_left=True),)
+        # The name stands on the side of its stroke on which the curve stays higher over the width of the name.
+        before, after = (curves.phase_deg[(w >= low) & (w <= high)] for low, high in ((at / 5.0, at), (at, at * 5.0)))
+        is_left = before.min(initial=math.inf) >= after.min(initial=math.inf)
+        phase_marks = (
+            Mark(f"PM {_shown(margins.phase_margin_deg)}°", at, -180.0 + turns, phase, is_left=bool(is_left)),
+        )
     lowest = max(_LOWEST_PHASE_DEG, math.floor(min(-225.0, float(curves.phase_deg.min())) / 45.0) * 45.0)
     highest = max(-45.0, math.ceil(float(curves.phase_deg.max()) / 45.0) * 45.0)
     # A decade about 1 at least, and as far down as the gain margin is read.
