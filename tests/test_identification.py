@@ -453,6 +453,41 @@ def test_a_ramp_says_which_lag_it_excludes() -> None:
     assert any("if it ever does, its lag is above" in caution for caution in ramp.cautions)
 
 
+def short_ramp(seed: int) -> tuple[Array, Array, Array]:
+    """A level that ramps by 0.02 a second after one step, recorded for under five minutes of it under noise."""
+    return a_test(
+        np.random.default_rng(seed), step_of_integration, gain=0.004, dead_time=15.0, noise=0.6, moves=((0.7, 5.0),)
+    )  # fmt: skip
+
+
+def test_of_a_process_that_integrates_by_the_register_a_ramp_is_not_refused_for_a_slow_lag() -> None:
+    held = unsure = 0
+    for seed in range(8):
+        result = identify(*short_ramp(seed), integrates=True)
+        assert result.model is not None, result.refusals
+        assert result.model.integrating
+        assert result.candidates[0].criterion == 0.0
+        held += holds(result.model.gain, 0.004)
+        if any("what the register says" in caution for caution in result.cautions):
+            unsure += 1
+            alone = identify(*short_ramp(seed))
+            assert alone.model is None, "the record alone does not tell a ramp from a slow lag"
+            assert "record longer" in alone.refusals[0]
+    # 95 % intervals: three misses of eight come less than once in a hundred times.
+    assert held >= 6
+    assert unsure >= 6
+
+
+@pytest.mark.parametrize("seed", range(3))
+def test_a_process_that_clearly_settles_is_not_made_to_integrate_by_the_register(seed: int) -> None:
+    result = identify(*a_bump(seed), integrates=True)
+    assert result.model is not None
+    assert not result.model.integrating
+    assert holds(result.model.gain, 2.0)
+    assert any("integrates, but in the test the measurement settles" in caution for caution in result.cautions)
+    assert not any("register" in caution for caution in identify(*a_bump(seed)).cautions)
+
+
 def test_arrays_of_unlike_length_are_a_defect_of_the_caller() -> None:
     with pytest.raises(ValueError, match="differ in length"):
         identify(np.arange(30.0), np.arange(30.0), np.arange(29.0))

@@ -390,6 +390,16 @@ def test_a_lead_goes_with_the_model_that_it_belonged_to(folder: Path) -> None:
     assert "lead" not in (folder / "register.yaml").read_text("utf-8")
 
 
+def test_a_test_that_settles_contradicts_a_register_that_integrates(folder: Path) -> None:
+    gain = next(line for line in REGISTER.splitlines() if "gain: 150 kg/h per %" in line)
+    ramps = REGISTER.replace(gain, "      gain: 150 kg/h/min per %\n      integrating: true")
+    (folder / "register.yaml").write_text(ramps, "utf-8")
+    data = a_file(folder, "time,output [%],measurement [t/h]", (40.0, 50.0), 0.15, 20.0)
+    status, out, _ = called("identify", folder, data, "--tag", "FIC-2011")
+    assert status == 0
+    assert "caution: the register says that the process integrates, but in the test the measurement settles" in out
+
+
 def test_a_branch_of_a_split_range_is_written_into_that_branch(folder: Path) -> None:
     # The output falls from 30 to 10 %: the nitrogen valve opens from 25 to 75 %; 0.01 barg per % of opening.
     data = a_file(folder, "time,output [%],measurement [barg]", (30.0, 10.0), -0.025, 60.0)

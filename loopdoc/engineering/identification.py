@@ -20,7 +20,7 @@ from numpy.typing import NDArray
 from loopdoc.engineering.confidence import Confidence, Leftover, Model
 from loopdoc.engineering.model_fit import Fit, Nuisance, Record, Structure, fit, record
 from loopdoc.engineering.noise import SURELY_WHITE, WHITE, NoiseModel, noise_models
-from loopdoc.engineering.verdict import cautions, refusals, without_a_fit
+from loopdoc.engineering.verdict import SETTLES, cautions, refusals, without_a_fit
 
 FloatArray = NDArray[np.float64]
 
@@ -46,7 +46,8 @@ class Candidate:
 
     name: str
     criterion: float
-    """Bayesian information criterion less that of the chosen form [dimensionless]."""
+    """Bayesian information criterion less that of the chosen form [dimensionless]; below zero only where the register
+    made the choice."""
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -62,7 +63,7 @@ class Identification:
     leftover: Leftover | None
     """None where nothing could be fitted."""
     candidates: tuple[Candidate, ...]
-    """Best first."""
+    """The chosen form, then the others, best first."""
     time_s: FloatArray
     """(n,) times of the samples fitted [s]."""
     fitted: FloatArray | None
@@ -75,6 +76,7 @@ def identify(
     measurement: FloatArray,
     *,
     structures: tuple[Structure, ...] = STRUCTURES,
+    integrates: bool = False,
 ) -> Identification:
     """Return the process model that a step or bump test supports, or why it supports none.
 
@@ -88,6 +90,9 @@ def identify(
         In its units.
     structures : tuple of Structure
         Forms of model that may be chosen.
+    integrates : bool
+        Whether the process is known to integrate, as the register says: an integrating form is then chosen unless
+        one that settles is clearly closer.
 
     Returns
     -------
@@ -120,15 +125,17 @@ def identify(
     fits = sorted((min(pair, key=lambda entry: entry.akaike) for pair in pairs), key=lambda entry: entry.bayes)
     lag_seen = any(entry.structure == ONE_LAG and entry.lags_s[0] > test.interval_s for entry in fits)
     fits = [entry for entry in fits if not (lag_seen and entry.structure == NO_LAG)]
+    if integrates:
+        fits = _ramp_first(fits)
     chosen = fits[0]
     known = Confidence(test, chosen, noises)
     leftover = known.leftover()
-    reasons = tuple(refusals(known, fits[1:]))
+    reasons = tuple(refusals(known, fits[1:], integrates=integrates))
     said: tuple[str, ...] = ()
     if not reasons:
         changed = np.flatnonzero(np.diff(moved))
         unseen_s = float(np.max(np.diff(time_s)[changed]))
-        said = tuple(cautions(known, leftover, fits[1:], unseen_s=unseen_s))
+        said = tuple(cautions(known, leftover, fits[1:], unseen_s=unseen_s, integrates=integrates))
     if step > 1:
         said += (f"of {len(time_s)} samples each {_ordinal(step)} was fitted",)
     return Identification(
@@ -140,6 +147,14 @@ def identify(
         time_s=test.time_s,
         fitted=chosen.fitted,
     )
+
+
+def _ramp_first(fits: list[Fit]) -> list[Fit]:
+    """Fits, best first, led by the best that integrates unless one that settles is clearly better."""
+    ramp = next((entry for entry in fits if entry.structure.integrating), None)
+    if ramp is None or ramp.bayes - fits[0].bayes >= SETTLES:
+        return fits
+    return [ramp, *(entry for entry in fits if entry is not ramp)]
 
 
 def _from_elsewhere(test: Record) -> bool:

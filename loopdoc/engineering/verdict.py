@@ -76,8 +76,11 @@ def without_a_fit(time_s: FloatArray, moved: FloatArray, measurement: FloatArray
         yield "the measurement never changes; the signal may be frozen, or the step too small for its resolution"
 
 
-def refusals(known: Confidence, rivals: Sequence[Fit]) -> Iterator[str]:
-    """Why the record does not support the model: the first cause alone, since others follow from it."""
+def refusals(known: Confidence, rivals: Sequence[Fit], *, integrates: bool) -> Iterator[str]:
+    """Why the record does not support the model: the first cause alone, since others follow from it.
+
+    Of a process that ``integrates`` by the register the record need not tell that it does.
+    """
     test, found = known.test, known.fit
     after, time = test.after_s, known.response_time()
     doubt = known.gain().doubt
@@ -101,7 +104,7 @@ def refusals(known: Confidence, rivals: Sequence[Fit]) -> Iterator[str]:
         )
     elif doubt > GAIN_REFUSED:
         yield f"the gain is known only to ±{_percent(doubt)}; {_remedy(known, doubt)}"
-    elif found.structure.integrating and (least := _least_lag_s(known)) < after:
+    elif found.structure.integrating and not integrates and (least := _least_lag_s(known)) < after:
         yield (
             f"the test is too short to tell whether the measurement settles: it lasts {_duration(after)} after the "
             f"first step, and a lag of {_duration(least)} fits as well as a ramp; record longer"
@@ -163,16 +166,35 @@ def _without_drift(known: Confidence) -> float | None:
     return Confidence(known.test, without, known.noises).gain().doubt
 
 
-def cautions(known: Confidence, leftover: Leftover, rivals: Sequence[Fit], *, unseen_s: float) -> Iterator[str]:
+def cautions(
+    known: Confidence, leftover: Leftover, rivals: Sequence[Fit], *, unseen_s: float, integrates: bool
+) -> Iterator[str]:
     """What to know before the model is used."""
     test, found = known.test, known.fit
     relative, time, dead_time = known.gain().doubt, known.response_time(), known.dead_time()
     if GAIN_DOUBTFUL < relative <= GAIN_REFUSED:
         yield f"the gain is known only to ±{_percent(relative)}; {_remedy(known, relative)}"
     if found.structure.integrating:
-        least = _duration(_least_lag_s(known))
-        yield f"the measurement does not settle within the record; if it ever does, its lag is above {least}"
+        least_s = _least_lag_s(known)
+        if least_s < test.after_s:
+            yield (
+                f"that the measurement does not settle is what the register says: the record lasts "
+                f"{_duration(test.after_s)} after the first step, and a lag of {_duration(least_s)} fits as well as a "
+                "ramp; record longer to see it"
+            )
+        else:
+            yield (
+                "the measurement does not settle within the record; if it ever does, its lag is above "
+                f"{_duration(least_s)}"
+            )
     else:
+        ramps = [rival.bayes - found.bayes for rival in rivals if rival.structure.integrating]
+        if integrates and ramps:
+            yield (
+                "the register says that the process integrates, but in the test the measurement settles: the Bayesian "
+                f"information criterion of the best ramp is {display_number(min(ramps), 2)} higher, where "
+                f"{SETTLES:g} is strong evidence"
+            )
         if dead_time.half_width > DEAD_TIME_DOUBTFUL * time.value:
             yield (
                 f"the dead time is known only as {_duration(dead_time.low)} to {_duration(dead_time.high)}; "

@@ -116,7 +116,9 @@ def identified(test: StepTest, tag: str, register: Register | None) -> Identifie
     process = known(register.loops[tag].process)
     if process is not None and record.branch:
         process = process.branches.get(record.tag)
-    return Identified(tag, test, identify(test.time_s, record.moved, record.measurement), record, process)
+    integrates = process is not None and process.integrating
+    result = identify(test.time_s, record.moved, record.measurement, integrates=integrates)
+    return Identified(tag, test, result, record, process)
 
 
 # ---------------------------------------------------------------- rounding
@@ -379,12 +381,16 @@ def _residual_lines(found: Identified) -> list[str]:
             f"{_said(leftover.memory_s)}"
         )
     first, *others = found.result.candidates
-    compared = ", ".join(f"{other.name} +{display_number(other.criterion, 2)}" for other in others)
+    compared = ", ".join(f"{other.name} {_signed(other.criterion)}" for other in others)
     return [
         f"residuals: {noise} (standard deviations); Durbin-Watson {display_number(leftover.durbin_watson, 2)}, "
         f"Ljung-Box probability once whitened {display_number(leftover.white_probability, 2)}",
         f"Bayesian information criterion above that of {first.name}: {compared}",
     ]
+
+
+def _signed(value: float) -> str:
+    return f"{'+' if value >= 0.0 else ''}{display_number(value, 2)}"
 
 
 def _register_lines(found: Identified) -> list[str]:
@@ -419,9 +425,8 @@ def _register_lines(found: Identified) -> list[str]:
             "action of the controller turns round: see what test, valve and output block really do before anything is "
             "changed"
         )
-    if process.integrating != model.integrating:
-        said, seen = ("integrates", "settles") if process.integrating else ("settles", "ramps within the test")
-        lines.append(f"caution: the register says that the process {said}; in the test it {seen}")
+    if model.integrating and not process.integrating:
+        lines.append("caution: the register says that the process settles; in the test it ramps")
     return lines
 
 
