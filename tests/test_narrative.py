@@ -14,9 +14,12 @@ import yaml
 from markupsafe import Markup
 
 from loopdoc.documents.basis import Basis, Page
+from loopdoc.documents.loop_sheet.loop_sheet import loop_sheets
 from loopdoc.documents.narrative.narrative import Supplement, narratives
 from loopdoc.documents.pdf import to_pdf
 from loopdoc.documents.rendering import render
+from loopdoc.documents.revision.against import page_html
+from loopdoc.documents.site.site import Site
 from loopdoc.documents.view import Figure, Paragraph, Section, Steps, Table
 from loopdoc.documents.wording import Prose, plain
 from loopdoc.engineering.dynamics import Dynamics, LoopDynamics
@@ -341,8 +344,10 @@ def test_front_matter_and_contents(column: Page) -> None:
         assert html.count(f'id="{anchor}"') == 1, anchor
 
 
-def test_tags_lead_to_their_sheets_on_the_screen_only(column: Page) -> None:
-    screen, paper = html_of(column, "../style.css"), html_of(column, "")
+def test_tags_lead_to_their_sheets_on_the_screen_only(small: Basis, column: Page) -> None:
+    site = Site(small, [*(("loop-sheet", sheet) for sheet in loop_sheets(small)), ("narrative", column)], ["html"])
+    screen = page_html(column, stylesheet="../style.css", site=site.frame("narrative", column))
+    paper = html_of(column, "")
     assert '<a class="tag" href="../loop-sheets/TIC-2014.html">TIC-2014</a>' in screen
     assert '<a class="tag" href="../loop-sheets/TIC-2014.html">TT-2014</a>' in screen
     assert '<a class="tag" href="../loop-sheets/FIC-2011.html">FV-2011</a>' in screen
@@ -417,8 +422,8 @@ def test_every_value_has_its_unit(example: tuple[Basis, tuple[Page, ...]]) -> No
 
 
 def test_no_number_stands_outside_a_value(column: Page) -> None:
-    # All but tags, values with their units, the sensor Pt100, the drawing, the unit and the dimensionless figures
-    # of the tuning table (gain, margins).
+    # All but tags, values with their units, the sensor Pt100, the drawing, the unit (also as what a finding is about)
+    # and the dimensionless figures of the tuning table (gain, margins).
     for one in sections_of(column):
         for block in one.blocks:
             cells: list[Prose] = []
@@ -428,7 +433,7 @@ def test_no_number_stands_outside_a_value(column: Page) -> None:
                 cells = [cell for row in block.rows for cell in row]
             for prose in cells:
                 text = "".join(run.before + (run.text if run.kind == "text" else "") + run.after for run in prose)
-                assert not re.search(r"\d", re.sub(r"Pt100|Unit 20", "", text)), plain(prose)
+                assert not re.search(r"\d", re.sub(r"Pt100|Unit 20|text-tag-unknown, 20", "", text)), plain(prose)
 
 
 def test_sentences_begin_and_end_as_sentences_do(example: tuple[Basis, tuple[Page, ...]]) -> None:

@@ -17,13 +17,16 @@ from pypdf import PdfReader
 
 from loopdoc.documents.basis import Basis, Page, basis_of
 from loopdoc.documents.check_record.check_record import check_records
+from loopdoc.documents.loop_sheet.loop_sheet import loop_sheets
 from loopdoc.documents.pdf import to_pdf
 from loopdoc.documents.rendering import render
+from loopdoc.documents.revision.against import page_html
 from loopdoc.documents.schedules.alarms import alarm_schedules
 from loopdoc.documents.schedules.effects import cause_and_effect_charts
 from loopdoc.documents.schedules.failures import failure_schedules
 from loopdoc.documents.schedules.lists import channel_lists, instrument_lists
 from loopdoc.documents.schedules.tuning import tuning_schedules
+from loopdoc.documents.site.site import Site
 from loopdoc.documents.whereabouts import natural
 from loopdoc.engineering.failure import FailureAnalysis
 from loopdoc.register.load import Loaded, load
@@ -385,8 +388,11 @@ def test_forty_effects_fit_their_sheet(tmp_path: Path) -> None:
 
 @pytest.mark.parametrize("kind", KINDS)
 def test_values_lead_to_the_loop_sheet_on_the_screen(kind: str) -> None:
-    page = next(iter(KINDS[kind](example("tarn-hollow"))))
-    assert re.search(r'<a class="(tag|value)" href="\.\./loop-sheets/[A-Z]+-\d+\.html">', html(page, "../style.css"))
+    basis = example("tarn-hollow")
+    page = next(iter(KINDS[kind](basis)))
+    site = Site(basis, [*(("loop-sheet", sheet) for sheet in loop_sheets(basis)), (kind, page)], ["html"])
+    screen = page_html(page, stylesheet="../style.css", site=site.frame(kind, page))
+    assert re.search(r'<a class="(tag|value)" href="\.\./loop-sheets/[A-Z]+-\d+\.html">', screen.partition("<main")[2])
     assert "<a " not in html(page).partition("<main>")[2]
 
 

@@ -108,6 +108,7 @@ def section(basis: Basis, dynamics: ChainDynamics, *, several: bool) -> dict[str
         "not_simulated": compared.reason if isinstance(compared, NotSimulated) else "",
         "unit": difference_unit(measured_range(chain.lead)),
         "rows": metric_rows(comparison) if comparison else [],
+        "at_limit": at_limit_note(comparison) if comparison else "",
         "movements": movement_rows(comparison) if comparison else [],
         "single": comparison is not None and comparison.single is not None,
         "figure": _drawn(basis, dynamics),
@@ -198,6 +199,18 @@ def metric_rows(comparison: Comparison) -> list[dict[str, str]]:
         }
         for entry in comparison.scenarios
     ]
+
+
+def at_limit_note(comparison: Comparison) -> str:
+    """Which upsets are more than the final element can make good, so that an offset stays; empty where none is."""
+    element = comparison.dynamics.chain.final_element.tag
+    return sentences(
+        *(
+            f"{upset_name(comparison, entry)} does not settle: the output of {tag} stands at its limit, with {element} "
+            f"at {number(travel_pct)}\u00a0%; from the middle of its limits that is more than it can make good"
+            for entry, tag, travel_pct in comparison.at_limit
+        )
+    )
 
 
 def movement_rows(comparison: Comparison) -> list[dict[str, Any]]:

@@ -77,6 +77,17 @@ class Comparison:
     start_pct: tuple[float, ...]
     """Where each measurement stood before the upset, innermost first [% of range]."""
 
+    @property
+    def at_limit(self) -> tuple[tuple[ScenarioResponses, str, float], ...]:
+        """Upsets of which the loops as tuned keep an offset since an output stands at its limit: the upset, the tag of
+        the innermost such controller, and where the final element stands at the end [% of travel].
+        """
+        return tuple(
+            (entry, self.dynamics.chain.levels[level].loop.tag, float(entry.tuned.travel_pct[-1]))
+            for entry in self.scenarios
+            if (level := entry.tuned.metrics.limited_level) is not None
+        )
+
 
 @dataclass(frozen=True, slots=True)
 class NotSimulated:

@@ -19,7 +19,7 @@ class ResponseMetrics:
 
     iae_pct_s: float
     """Integral of the absolute deviation from the setpoint [% s]; infinite where an offset of more than 2 % of the
-    causing step stays, for want of integral action."""
+    causing step stays, for want of integral action or because an output stands at its limit."""
     peak_pct: float
     """Furthest departure from the start, with its sign [% of span]."""
     time_to_peak_s: float
@@ -35,6 +35,9 @@ class ResponseMetrics:
     """Sum of all movements of the final element [% of travel]."""
     reversals: int
     """Turns of the final element that went back by at least 0.1 %."""
+    limited_level: int | None
+    """Innermost level whose controller stands at an output limit at the end, so that an offset stays; None where the
+    measurement settles or no output is at a limit."""
     horizon_s: float
     """Time over which these were read [s]."""
     step_s: float
@@ -67,6 +70,8 @@ class Reading:
     """Last step outside the settling band, -1 for none."""
     turns: int
     """Turns of the final element."""
+    limited_level: int
+    """Innermost level whose controller asks for more than its limit at the end, -1 for none."""
 
 
 def read_metrics(
@@ -80,7 +85,9 @@ def read_metrics(
 ) -> ResponseMetrics:
     """Metrics of one response; ``band_pct`` is the settling band, ``has_reset`` of the outermost measurement."""
     # The integral over a lasting offset grows for ever: what it has come to depends on the horizon alone.
-    lasting = not has_reset and abs(setpoint_step_pct - met.last_pct) > band_pct
+    is_off = abs(setpoint_step_pct - met.last_pct) > band_pct
+    is_limited = is_off and met.limited_level >= 0
+    lasting = is_off and (is_limited or not has_reset)
     # A response that crosses its band on the last few steps has not been seen to stay.
     seen = met.outside_step < SEEN_TO_STAY * met.steps
     if setpoint_step_pct:
@@ -98,6 +105,7 @@ def read_metrics(
         overshoot_pct=100.0 * max(0.0, beyond) / scale if scale > 0.0 else 0.0,
         valve_travel_pct=met.moved_pct,
         reversals=met.turns,
+        limited_level=met.limited_level if is_limited else None,
         horizon_s=met.steps * step_s,
         step_s=step_s,
         executed_interval_s=executed_interval_s,

@@ -152,6 +152,7 @@ READING = _record(
         "peak_step",
         "outside_step",  # last step outside the band, -1 for none
         "turns",  # turns of the final element that went back far enough to count
+        "limited_level",  # innermost level whose controller asks for more than its limit at the end, -1 for none
     ],
 )
 """What is read off a run."""
@@ -463,6 +464,11 @@ def _run_one(
     reading.peak, reading.peak_step, reading.outside_step = peak, peak_step, outside_step
     reading.low, reading.high = watched[levels - 1].low, watched[levels - 1].high
     reading.moved, reading.turns = moved, turns
+    reading.limited_level = -1
+    for level in range(levels - 1, -1, -1):
+        controller, asked = controllers[level], memories[level].computed
+        if controller.controls and (asked < controller.followed_low or asked > controller.followed_high):
+            reading.limited_level = level
 
 
 @compiled

@@ -107,6 +107,7 @@ def _metrics_object(metrics: ResponseMetrics, own: Range) -> dict[str, Any]:
         "overshoot_pct": number(metrics.overshoot_pct),
         "valve_travel_pct": number(metrics.valve_travel_pct),
         "reversals": metrics.reversals,
+        "output_at_limit": metrics.limited_level is not None,
     }
 
 
@@ -225,7 +226,16 @@ def _upsets_told(comparison: Comparison) -> Iterator[str]:
         "settling: to within 2 % of the step that upsets, 0 where that band is never left, ∞ where it is not seen to "
         "stay; overshoot: beyond the new setpoint, else to the other side in percent of the peak"
     )
-    if any(math.isinf(entry.tuned.metrics.iae_pct_s) for entry in comparison.scenarios):
+    for entry, tag, travel_pct in comparison.at_limit:
+        yield (
+            f"{entry.scenario.name}: does not settle, since the output of {tag} stands at its limit, with "
+            f"{comparison.dynamics.chain.final_element.tag} at {_shown(travel_pct)} %: from the middle of its limits "
+            "the upset is more than it can make good"
+        )
+    if any(
+        math.isinf(metrics.iae_pct_s) and metrics.limited_level is None
+        for metrics in (entry.tuned.metrics for entry in comparison.scenarios)
+    ):
         yield f"IAE ∞: an offset stays, since {comparison.dynamics.chain.lead.tag} has no reset"
 
 
