@@ -20,7 +20,7 @@ from loopdoc.documents.language import GERMAN
 from loopdoc.documents.magnitudes import duration
 from loopdoc.documents.plots import Curve, Drawing, Mark, Panel, save, to_svg
 from loopdoc.documents.response_figure import figure
-from loopdoc.documents.responses import margin_rows, movement_rows
+from loopdoc.documents.responses import at_limit_note, margin_rows, movement_rows
 from loopdoc.documents.upset_story import benefit, declared_upsets, single_loop_assumption, upset_name
 from loopdoc.engineering.comparison import Comparison, ScenarioResponses, compare
 from loopdoc.engineering.dynamics import ChainDynamics, Dynamics
@@ -416,3 +416,18 @@ def test_margins_of_a_level_stand_with_its_peaks_and_bandwidth(cascade: ChainDyn
     row = margin_rows(cascade)[0]
     assert float(row["max_complementary"]) == pytest.approx(outer.max_complementary_sensitivity, rel=5e-3)
     assert float(row["bandwidth"].split()[0]) == pytest.approx(outer.bandwidth_rad_per_s, rel=5e-3)
+
+
+def test_an_upset_that_the_final_element_cannot_make_good_is_told(plant: Plant, compared: Comparison) -> None:
+    """5 K at 0.24 % of 50 K per % ask for 41.7 % of the fan's speed; from the middle of 20 to 100 % it has 40 %."""
+    fan = compare(Dynamics(plant).loop("TIC-3050").chains[0])
+    assert isinstance(fan, Comparison)
+    assert at_limit_note(fan) == (
+        "An upset of 5\u00a0K at TIC-3050 does not settle: the output of TIC-3050 stands at its limit, with SC-3050 at "
+        "100\u00a0%; from the middle of its limits that is more than it can make good."
+    )
+    assert at_limit_note(compared) == ""
+    out, err = io.StringIO(), io.StringIO()
+    assert run(["response", str(EXAMPLE), "TIC-3050"], out, err) == 0
+    assert "primary disturbance: does not settle, since the output of TIC-3050 stands at its limit" in out.getvalue()
+    assert "has no reset" not in out.getvalue()

@@ -179,3 +179,36 @@ def test_backlash_makes_an_integrating_loop_cycle() -> None:
     assert loose.metrics.reversals > 20
     assert np.ptp(deviation(tight)[-1000:]) < 1e-6
     assert tight.metrics.reversals < 5
+
+
+def test_an_upset_beyond_the_limit_leaves_an_offset_that_is_not_called_settled() -> None:
+    """Upset 10 %, gain 0.24: 40 % of travel make good 9.6 %, so that 0.4 % stay, more than 2 % of the upset."""
+    process = Process(0.24, (48.0,), 6.0)
+    scenario = standard_scenarios(1)[1]
+    limits = (Controller(8.0, 48.0, output_low_pct=10.0), Controller(8.0, 48.0, output_low_pct=0.0))
+    short, enough = (
+        simulate(
+            [cascade_structure([LoopStage(one, process)], final_element=FinalElement(start_pct=start))], [scenario]
+        )[0][0]
+        for one, start in zip(limits, (50.0, 60.0), strict=True)
+    )
+    # Arrived but for what a lag of 48 s leaves after the whole horizon.
+    assert deviation(short)[-1] == pytest.approx(10.0 - 0.24 * 40.0, abs=0.01)
+    assert short.metrics.limited_level == 0
+    assert math.isinf(short.metrics.settling_s)
+    assert math.isinf(short.metrics.iae_pct_s)
+    # 41.7 % of travel are asked for; here there are 60.
+    assert deviation(enough)[-1] == pytest.approx(0.0, abs=0.01)
+    assert enough.travel_pct[-1] == pytest.approx(60.0 - 10.0 / 0.24, abs=0.1)
+    assert enough.metrics.limited_level is None
+    assert math.isfinite(enough.metrics.settling_s)
+
+
+def test_of_a_cascade_the_innermost_output_at_its_limit_is_named() -> None:
+    """The secondary's valve can make good 5 of 20 %: the primary's output is not what is at its end."""
+    inner = LoopStage(Controller(1.0, 5.0, output_low_pct=45.0), Process(1.0, (5.0,)))
+    outer = LoopStage(Controller(1.0, 60.0), Process(1.0, (60.0,)))
+    structure = cascade_structure([inner, outer], final_element=VALVE)
+    response = simulate([structure], [standard_scenarios(2, size_pct=20.0)[1]])[0][0]
+    assert response.travel_pct[-1] == pytest.approx(45.0, abs=1e-6)
+    assert response.metrics.limited_level == 0
