@@ -25,7 +25,7 @@ from loopdoc.engineering.process import Process
 from loopdoc.engineering.sampled import sampled_margins
 from loopdoc.engineering.simulation import simulate
 from loopdoc.engineering.stages import Chain, Lacking, chains
-from loopdoc.engineering.structure import FinalElement, Scenario, cascade_structure
+from loopdoc.engineering.structure import FinalElement, Scenario, cascade_structure, standard_scenarios
 from loopdoc.register.load import Loaded, load
 
 ROOT = """\
@@ -310,6 +310,24 @@ def test_a_lead_lag_answers_a_lasting_output_as_in_closed_form(lead_s: float, la
     lagged = 1.0 - np.exp(-(response.time_s + 0.5) / lag_s)
     expected = lead_s / lag_s + (1.0 - lead_s / lag_s) * lagged
     np.testing.assert_allclose(response.travel_pct - 50.0, 10.0 * expected, atol=1e-6)
+
+
+def test_a_loop_with_a_lead_lag_answers_as_by_python_control() -> None:
+    """Setpoint step and upset of a continuous loop; the simulation executes it every 2 ms."""
+    stage = LoopStage(
+        Controller(0.8, 6.0), Process(1.2, (4.0, 2.0, 1.0)), (LeadLag(3.0, 1.5), LeadLag(0.0, 0.8))
+    )  # fmt: skip
+    structure = cascade_structure([stage], final_element=FinalElement())
+    setpoint, upset = simulate([structure], standard_scenarios(1), clock=Clock(0.002, 20_000))[0]
+    s = control.tf("s")
+    lags = 1 / ((4 * s + 1) * (2 * s + 1) * (s + 1))
+    loop = 0.8 * (1 + 1 / (6 * s)) * (3 * s + 1) / (1.5 * s + 1) / (0.8 * s + 1) * 1.2 * lags
+    t = setpoint.time_s[::50]
+    _, followed = control.step_response(control.feedback(loop, 1), t)
+    _, left = control.step_response(control.feedback(1, loop) * lags, t)
+    # 10 % of span; half an interval of lateness is some 1e-3 s of a response that moves by 2 % a second at most.
+    assert setpoint.measurement_pct[0][::50] - 50.0 == pytest.approx(10.0 * followed, abs=0.01)
+    assert upset.measurement_pct[0][::50] - 50.0 == pytest.approx(10.0 * left, abs=0.01)
 
 
 @pytest.mark.parametrize(("lead", "lag"), [(-1.0, 2.0), (1.0, 0.0), (math.inf, 1.0), (1.0, math.nan)])
