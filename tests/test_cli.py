@@ -255,3 +255,19 @@ def test_every_command_stands_in_the_readme() -> None:
 def test_the_demo_checks_without_errors() -> None:
     code, out, _ = call("check", TARN_HOLLOW)
     assert code == 0, out
+
+
+def test_an_included_file_is_not_taken_for_the_register(starter: Path) -> None:
+    code, out, err = call("check", str(starter / "units" / "10-feed.yaml"))
+    assert code == 2
+    assert "a file that a register includes, not the register" in out + err
+    assert out.count("error:") + err.count("error:") == 1
+
+
+def test_a_threshold_below_nought_is_refused(starter: Path) -> None:
+    """It would switch its rule off without a word."""
+    with (starter / "register.yaml").open("a", encoding="utf-8") as file:
+        file.write("policy: {cascade_speed_ratio: -1}\n")
+    code, out, _ = call("check", str(starter))
+    assert code == 1
+    assert "`cascade_speed_ratio` of the policy is the number -1, which is below 0" in out

@@ -366,6 +366,7 @@ def test_policy_tells_the_thresholds_of_the_rules() -> None:
             "title": "number",
             "description": description,
             "type": "number",
+            "minimum": 0,
             "examples": [limit.default],
         }
     assert DEFINITIONS["policy"]["properties"] == told

@@ -106,6 +106,13 @@ def load_files(files: Files, root_name: str = ROOT_NAME) -> Loaded | Unreadable:
             "begin with `format: 1` and `site:`",
             sources,
         )
+    if not root.data.keys() & {"format", "site", "revision", "include"} and root.data.keys() & set(_SECTIONS):
+        return _unreadable(
+            root.place(()),
+            "this is a file that a register includes, not the register",
+            f"name the folder that holds `{ROOT_NAME}`",
+            sources,
+        )
     names, include_faults = included(files, root)
     texts: list[TextFile] = [root]
     unreadable = list(include_faults)

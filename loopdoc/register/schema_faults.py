@@ -257,6 +257,8 @@ class _Refused:
             return self._fault(f"{message}, without a unit", wanted)
         if expected.is_free_text:
             return self._fault(message, f'write `"{value}"` in quotes')
+        if expected.title == "number" and value < 0:
+            return self._fault(f"{message}, which is below 0", wanted)
         return self._fault(message, wanted)
 
     def _of_text(self, expected: Expected, value: str) -> Fault:
