@@ -20,7 +20,7 @@ from loopdoc.documents.language import GERMAN
 from loopdoc.documents.magnitudes import duration
 from loopdoc.documents.plots import Curve, Drawing, Mark, Panel, save, to_svg
 from loopdoc.documents.response_figure import figure
-from loopdoc.documents.responses import at_limit_note, margin_rows, movement_rows
+from loopdoc.documents.responses import at_limit_note, held_note, margin_rows, movement_rows
 from loopdoc.documents.upset_story import benefit, declared_upsets, single_loop_assumption, upset_name
 from loopdoc.engineering.comparison import Comparison, ScenarioResponses, compare
 from loopdoc.engineering.dynamics import ChainDynamics, Dynamics
@@ -431,3 +431,14 @@ def test_an_upset_that_the_final_element_cannot_make_good_is_told(plant: Plant, 
     assert run(["response", str(EXAMPLE), "TIC-3050"], out, err) == 0
     assert "primary disturbance: does not settle, since the output of TIC-3050 stands at its limit" in out.getvalue()
     assert "has no reset" not in out.getvalue()
+
+
+def test_what_functions_take_in_besides_the_loops_is_said_to_stay(plant: Plant, cascade: ChainDynamics) -> None:
+    """The drum level's output meets the steam flow at the sum: an upset does not come with its feedforward."""
+    drum = Dynamics(plant).loop("LIC-3001").chains[0]
+    sums = [function for level in drum.chain.levels for function in level.route.via]
+    assert sums, "a three-element level commands through a sum"
+    told = held_note(plant, drum)
+    assert told.endswith(f" into {sums[0].tag}.")
+    assert "LIC-3001" not in told
+    assert held_note(plant, cascade) == ""

@@ -20,7 +20,8 @@ from loopdoc.documents.view import Figure
 from loopdoc.documents.wording import listed, sentences
 from loopdoc.engineering.comparison import Comparison, NotSimulated
 from loopdoc.engineering.dynamics import ChainDynamics
-from loopdoc.engineering.pairing import Scheme
+from loopdoc.engineering.functions import fed_by
+from loopdoc.engineering.pairing import Plant, Scheme
 from loopdoc.engineering.stages import measured_range
 from loopdoc.engineering.tuning_review import NotReviewed, TuningReview, review
 from loopdoc.engineering.tuning_table import CAUTION, Wanted, legend, tuning_table
@@ -114,6 +115,7 @@ def section(basis: Basis, dynamics: ChainDynamics, *, several: bool) -> dict[str
         "figure": _drawn(basis, dynamics),
         "caption": caption(comparison) if comparison else "",
         "declared": declared_upsets(dynamics, compared),
+        "held": held_note(basis.plant, dynamics) if comparison else "",
         "assumption": single_loop_assumption(comparison) if comparison else "",
         "frequency_figure": to_svg(frequency_drawing(dynamics)),
         "frequency_caption": frequency_caption(dynamics),
@@ -199,6 +201,21 @@ def metric_rows(comparison: Comparison) -> list[dict[str, str]]:
         }
         for entry in comparison.scenarios
     ]
+
+
+def held_note(plant: Plant, dynamics: ChainDynamics) -> str:
+    """What enters functions on the way besides the loops themselves, and so takes no part; empty where nothing does."""
+    told = []
+    for level in reversed(dynamics.chain.levels):
+        commander = level.loop.tag
+        for function in level.route.via:
+            entering = fed_by(plant, function, commander)
+            if entering:
+                told.append(f"{listed(entering)} into {function.tag}")
+            commander = function.tag
+    if not told:
+        return ""
+    return sentences(f"What functions take in besides stays as it is in the responses over time: {listed(told)}")
 
 
 def at_limit_note(comparison: Comparison) -> str:
