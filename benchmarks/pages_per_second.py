@@ -23,9 +23,10 @@ from typing import Any
 import pypdf
 import weasyprint
 
-from loopdoc.documents import pdf, responses
+from loopdoc.documents import pdf
 from loopdoc.documents.basis import Basis, basis_of
 from loopdoc.documents.handover.issue import KINDS, issue, pages_of
+from loopdoc.documents.responses import responses
 from loopdoc.documents.revision.against import page_html
 from loopdoc.engineering import simulation
 from loopdoc.register.load import Loaded, load

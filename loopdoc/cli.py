@@ -470,7 +470,7 @@ def _response(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> 
             stderr.write(f"loopdoc: nothing to draw for {loop.tag}: {loop.reason}\n")
             return EXIT_UNREADABLE
         from loopdoc.documents.plots import save
-        from loopdoc.documents.response_figure import drawings
+        from loopdoc.documents.responses.response_figure import drawings
 
         try:
             save(drawings(plant, loop.chains, comparisons), arguments.plot)
@@ -535,7 +535,7 @@ def _identify(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> 
         return unreadable(found.reason)
     if arguments.plot is not None:
         from loopdoc.documents.plots import save
-        from loopdoc.documents.step_test_plot import step_test_drawing
+        from loopdoc.documents.responses.step_test_plot import step_test_drawing
 
         drawing = step_test_drawing(
             found.plot_title,

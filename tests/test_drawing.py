@@ -15,6 +15,7 @@ import pytest
 from fontTools.ttLib import TTFont
 
 from loopdoc.documents.drawing import SMALLEST, fitted, tag_lines, text_width, wrapped
+from loopdoc.documents.language import ENGLISH
 from loopdoc.documents.loop_sheet.loop_drawing import WIDTH, drawn_loop
 from loopdoc.engineering.pairing import Plant
 from loopdoc.register.load import Loaded, load
@@ -187,7 +188,7 @@ def loop(tag: str, to: str, *, alarms: str = "") -> str:
 
 def test_every_loop_of_the_examples_is_drawn_without_overlap(plant: Plant) -> None:
     for tag in plant.register.loops:
-        assert not faults(drawn_loop(plant, tag).svg), tag
+        assert not faults(drawn_loop(plant, tag, ENGLISH).svg), tag
 
 
 def test_the_check_sees_what_overlaps() -> None:
@@ -213,19 +214,19 @@ def test_the_check_sees_what_overlaps() -> None:
     ],
 )
 def test_a_drawing_shows_what_the_loop_is_connected_to(tag: str, stands: list[str]) -> None:
-    root = ElementTree.fromstring(drawn_loop(example("tarn-hollow"), tag).svg)
+    root = ElementTree.fromstring(drawn_loop(example("tarn-hollow"), tag, ENGLISH).svg)
     written = [element.text for element in root.iter(f"{SVG}text")]
     assert [words for words in stands if words not in written] == []
 
 
 def test_two_commanders_of_one_valve_are_both_drawn() -> None:
-    root = ElementTree.fromstring(drawn_loop(example("tennessee-eastman"), "FIC-3010").svg)
+    root = ElementTree.fromstring(drawn_loop(example("tennessee-eastman"), "FIC-3010", ENGLISH).svg)
     assert "PIC-3013" in [element.text for element in root.iter(f"{SVG}text")]
 
 
 def test_a_drawing_says_in_words_what_it_shows(plant: Plant) -> None:
     for tag in plant.register.loops:
-        root = ElementTree.fromstring(drawn_loop(plant, tag).svg)
+        root = ElementTree.fromstring(drawn_loop(plant, tag, ENGLISH).svg)
         assert root.get("role") == "img"
         assert root[0].tag == f"{SVG}title"
         assert tag in (root[0].text or "")
@@ -238,7 +239,7 @@ def test_a_selector_of_many(tmp_path: Path) -> None:
         tmp_path, f"loops:\n{candidates}{loop('FIC-9', 'FV-9')}functions: {{FY-9: {{kind: low select, to: FIC-9}}}}\n"
     )
     for tag in plant.register.loops:
-        svg = drawn_loop(plant, tag).svg
+        svg = drawn_loop(plant, tag, ENGLISH).svg
         assert not faults(svg), tag
         assert "3 more" in svg
 
@@ -255,7 +256,7 @@ def test_a_sum_of_three_and_functions_in_series(tmp_path: Path) -> None:
         "final_elements: {FV-2: {kind: control valve}}\n",
     )
     for tag in ("FIC-1", "FIC-2"):
-        svg = drawn_loop(plant, tag).svg
+        svg = drawn_loop(plant, tag, ENGLISH).svg
         assert not faults(svg), tag
         assert "× 0.5" in svg
         assert "FT-24" in svg  # not defined, so named and not drawn
@@ -280,7 +281,7 @@ def test_every_final_element_in_a_split_range_of_three(tmp_path: Path, kind: str
             f"  IS-{n}: {{actions: {{FV-1B: closed, FIC-1: {{mode: manual, output: 100 %}}}}}}\n" for n in range(1, 9)
         ),
     )
-    svg = drawn_loop(plant, "FIC-1").svg
+    svg = drawn_loop(plant, "FIC-1", ENGLISH).svg
     assert not faults(svg)
     assert "and 3 more" in svg  # eight interlocks on the valve, six lines
 
@@ -292,7 +293,7 @@ def test_every_alarm_and_many_interlocks(tmp_path: Path) -> None:
     plant = plant_of(
         tmp_path, f"loops:\n{loop('FIC-1', 'FIC-2', alarms=alarms)}{loop('FIC-2', 'FIC-3')}interlocks:\n{interlocks}"
     )
-    svg = drawn_loop(plant, "FIC-1").svg
+    svg = drawn_loop(plant, "FIC-1", ENGLISH).svg
     assert not faults(svg)
     assert [words for words in ("HH 1234.5678", "DEV 1234.5678", "IS-1, IS-2", ">FIC-3<") if words not in svg] == []
 
@@ -302,7 +303,7 @@ def test_every_measuring_point(tmp_path: Path, variable: str) -> None:
     sensor = "a sensor of many words that go on and on"
     measured = f"{{transmitter: XT-1, variable: {variable}, range: {{hold: open}}, sensor: {sensor}}}"
     plant = plant_of(tmp_path, f"loops: {{XI-1: {{measurement: {measured}}}}}\n")
-    assert not faults(drawn_loop(plant, "XI-1").svg)
+    assert not faults(drawn_loop(plant, "XI-1", ENGLISH).svg)
 
 
 def test_an_output_that_leads_nowhere(tmp_path: Path) -> None:
@@ -312,14 +313,14 @@ def test_an_output_that_leads_nowhere(tmp_path: Path) -> None:
         "  FIC-3: {controller: {output: {to: {hold: not chosen}}}}\n  FIC-4: {controller: {action: direct}}\n",
     )
     for tag, words in (("FIC-1", "FV-404"), ("FIC-2", "FIC-2"), ("FIC-3", "HOLD"), ("FIC-4", "–")):
-        svg = drawn_loop(plant, tag).svg
+        svg = drawn_loop(plant, tag, ENGLISH).svg
         assert not faults(svg), tag
         assert f">{words}<" in svg
 
 
 def test_primaries_without_a_selector_are_all_named(tmp_path: Path) -> None:
     plant = plant_of(tmp_path, f"loops:\n{loop('FIC-1', 'FIC-3')}{loop('FIC-2', 'FIC-3')}{loop('FIC-3', 'FV-3')}")
-    svg = drawn_loop(plant, "FIC-3").svg
+    svg = drawn_loop(plant, "FIC-3", ENGLISH).svg
     assert not faults(svg)
     assert ">FIC-2<" in svg
 
@@ -332,7 +333,7 @@ def test_text_of_the_register_cannot_become_markup_and_long_text_is_kept_in(tmp_
         f"measurement: {{transmitter: '{'T' * 90}', range: 0 to 1 t/h, channel: '{'C' * 60}', signal: 4-20 mA}}, "
         f"controller: {{output: {{to: '{'V' * 70}'}}}}}}\n",
     )
-    svg = drawn_loop(plant, tag).svg
+    svg = drawn_loop(plant, tag, ENGLISH).svg
     assert not faults(svg)
     assert "<script" not in svg
     assert "<b>" not in svg

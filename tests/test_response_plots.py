@@ -15,13 +15,13 @@ import pytest
 from numpy.typing import NDArray
 
 from loopdoc.cli import run
-from loopdoc.documents.frequency_plot import frequency_caption, frequency_drawing
 from loopdoc.documents.language import GERMAN
 from loopdoc.documents.magnitudes import duration
 from loopdoc.documents.plots import Curve, Drawing, Mark, Panel, save, to_svg
-from loopdoc.documents.response_figure import figure
-from loopdoc.documents.responses import at_limit_note, held_note, margin_rows, movement_rows
-from loopdoc.documents.upset_story import benefit, declared_upsets, single_loop_assumption, upset_name
+from loopdoc.documents.responses.frequency_plot import frequency_caption, frequency_drawing
+from loopdoc.documents.responses.response_figure import figure
+from loopdoc.documents.responses.responses import at_limit_note, held_note, margin_rows, movement_rows
+from loopdoc.documents.responses.upset_story import benefit, declared_upsets, single_loop_assumption, upset_name
 from loopdoc.engineering.comparison import Comparison, ScenarioResponses, compare
 from loopdoc.engineering.dynamics import ChainDynamics, Dynamics
 from loopdoc.engineering.frequency import LoopStage, analyse_chain

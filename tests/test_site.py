@@ -21,7 +21,7 @@ from hypothesis import strategies as st
 
 from loopdoc.documents.basis import Basis, basis_of
 from loopdoc.documents.handover.issue import issue
-from loopdoc.documents.responses import scheme_chains
+from loopdoc.documents.responses.responses import scheme_chains
 from loopdoc.documents.site.plot import MOST_POINTS, TOLERANCE, plot_data, thinned
 from loopdoc.documents.site.script import data_block, policy, script
 from loopdoc.documents.whereabouts import document_name

@@ -16,7 +16,7 @@ from loopdoc.documents.loop_sheet.loop_sheet import loop_sheets
 from loopdoc.documents.narrative.narrative import narratives
 from loopdoc.documents.pdf import Enclosure, ensure_available, to_pdf
 from loopdoc.documents.rendering import web_style_sheet
-from loopdoc.documents.responses import responses, supplements
+from loopdoc.documents.responses.responses import responses, supplements
 from loopdoc.documents.revision.against import page_html, pages_against
 from loopdoc.documents.revision.check_report import check_reports
 from loopdoc.documents.revision.revision_summary import revision_summaries

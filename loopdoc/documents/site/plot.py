@@ -8,8 +8,8 @@ from typing import Any
 import numpy as np
 
 from loopdoc.documents.plots import Curve, Panel
-from loopdoc.documents.response_figure import panels
-from loopdoc.documents.upset_story import upset_name
+from loopdoc.documents.responses.response_figure import panels
+from loopdoc.documents.responses.upset_story import upset_name
 from loopdoc.engineering.comparison import Comparison
 from loopdoc.engineering.pairing import Plant
 from loopdoc.engineering.process import FloatArray

@@ -12,7 +12,7 @@ from markupsafe import Markup
 
 from loopdoc.documents.basis import Basis, Page
 from loopdoc.documents.language import ENGLISH
-from loopdoc.documents.responses import scheme_chains
+from loopdoc.documents.responses.responses import scheme_chains
 from loopdoc.documents.schedules.effects import MARKS, MODES
 from loopdoc.documents.site.around import ROOT, Around, Entry, Link, is_told_apart
 from loopdoc.documents.site.index import choices, index_rows

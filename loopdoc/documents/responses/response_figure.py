@@ -7,11 +7,11 @@ from dataclasses import replace
 
 import numpy as np
 
-from loopdoc.documents.frequency_plot import frequency_drawing
 from loopdoc.documents.language import ENGLISH, Language
 from loopdoc.documents.magnitudes import TIME_UNITS
 from loopdoc.documents.plots import Curve, Drawing, Limit, Panel
-from loopdoc.documents.upset_story import single_loop_assumption
+from loopdoc.documents.responses.frequency_plot import frequency_drawing
+from loopdoc.documents.responses.upset_story import single_loop_assumption
 from loopdoc.documents.wording import upper_first
 from loopdoc.engineering.comparison import UPSET_PCT, Comparison, NotSimulated, ScenarioResponses
 from loopdoc.engineering.dynamics import ChainDynamics

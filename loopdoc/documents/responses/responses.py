@@ -7,14 +7,14 @@ from collections.abc import Iterator
 from typing import Any
 
 from loopdoc.documents.basis import Basis, Page
-from loopdoc.documents.frequency_plot import frequency_caption, frequency_drawing
 from loopdoc.documents.language import ENGLISH, Language
 from loopdoc.documents.magnitudes import difference_unit, duration, number, with_unit
 from loopdoc.documents.narrative.narrative import Supplement
 from loopdoc.documents.page_fit import foot
 from loopdoc.documents.plots import to_svg
-from loopdoc.documents.response_figure import caption, figure, whole_caption
-from loopdoc.documents.upset_story import declared_upsets, single_loop_assumption, told_of, upset_name
+from loopdoc.documents.responses.frequency_plot import frequency_caption, frequency_drawing
+from loopdoc.documents.responses.response_figure import caption, figure, whole_caption
+from loopdoc.documents.responses.upset_story import declared_upsets, single_loop_assumption, told_of, upset_name
 from loopdoc.documents.values import DASH, shown
 from loopdoc.documents.view import Figure
 from loopdoc.documents.wording import listed, sentences

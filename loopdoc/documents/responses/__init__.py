@@ -1,0 +1,1 @@
+"""Response documents: time responses, open loops over frequency, the tuning review."""
