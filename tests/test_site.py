@@ -272,7 +272,7 @@ def test_a_data_block_is_the_same_json_and_cannot_end_its_element(content: Any) 
 
 def test_a_script_that_would_end_its_element_is_refused(monkeypatch: pytest.MonkeyPatch) -> None:
     script.cache_clear()
-    monkeypatch.setattr("loopdoc.documents.site_script.template_text", lambda name: "const end = '</script>';")
+    monkeypatch.setattr("loopdoc.documents.site.script.template_text", lambda name: "const end = '</script>';")
     with pytest.raises(ValueError, match="would end its own element"):
         script("site-other.js")
     script.cache_clear()
