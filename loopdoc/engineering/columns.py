@@ -68,7 +68,7 @@ def disturbed_pct(scenario: Scenario) -> float:
     return math.fsum(abs(disturbance.size_pct) for disturbance in scenario.disturbances)
 
 
-def _filled(records: np.dtype[np.void], **fields: object) -> Records:
+def filled(records: np.dtype[np.void], **fields: object) -> Records:
     """An array of records with the given values, all of one length."""
     length = len(fields[next(iter(fields))])  # type: ignore[arg-type]
     found = np.zeros(length, records)
@@ -78,7 +78,7 @@ def _filled(records: np.dtype[np.void], **fields: object) -> Records:
 
 
 @dataclass(frozen=True, slots=True, eq=False)
-class _Steps:
+class Steps:
     """n linear systems over one time step each."""
 
     order: IntArray
@@ -89,9 +89,9 @@ class _Steps:
     """(n,) share of the input that is in the output without delay."""
 
 
-def _steps(
+def steps_over(
     processes: Sequence[Process], step_s: FloatArray, part: FloatArray, held: NDArray[np.bool_], size: FloatArray
-) -> _Steps:
+) -> Steps:
     """Solve processes over a time step, for an input of that size, late by a part of it, held or straight between."""
     order = np.array([process.order for process in processes], dtype=np.int64)
     most = int(order.max(initial=0))
@@ -111,10 +111,10 @@ def _steps(
             matrices[rows, :states, most + tap] = np.where(held[rows, None], one, other) * size[rows, None]
         matrices[rows, :states, most + 3] = system.c
         through[rows] = system.d * size[rows]
-    return _Steps(order, matrices, through)
+    return Steps(order, matrices, through)
 
 
-def _processes(
+def process_records(
     processes: Sequence[Process], step_s: FloatArray, innermost: NDArray[np.bool_]
 ) -> tuple[Records, FloatArray]:
     dead = np.array([process.dead_time_s for process in processes]) / step_s
@@ -122,10 +122,10 @@ def _processes(
     whole = np.floor(dead + 1e-9)
     part = np.maximum(dead - whole, 0.0)
     part[part < 1e-9] = 0.0
-    steps = _steps(processes, step_s, part, innermost, np.array([process.gain for process in processes]))
+    steps = steps_over(processes, step_s, part, innermost, np.array([process.gain for process in processes]))
     # A held input acts from the step before, as what is held at this one is not known yet.
     delay = whole.astype(np.int64) + innermost
-    records = _filled(
+    records = filled(
         PROCESS,
         through_now=np.where(innermost, steps.through, steps.through * (1.0 - part)),
         through_before=np.where(innermost, 0.0, steps.through * part),
@@ -137,7 +137,7 @@ def _processes(
     return records, steps.matrices
 
 
-def _lead_lags(written: Sequence[tuple[LeadLag, ...]], interval_s: FloatArray) -> FloatArray:
+def lead_lag_shares(written: Sequence[tuple[LeadLag, ...]], interval_s: FloatArray) -> FloatArray:
     found = np.zeros((len(written), max((len(ones) for ones in written), default=0), 2))
     for row, ones in enumerate(written):
         for i, one in enumerate(ones):
@@ -165,7 +165,7 @@ def _controllers(
     output_low = np.array([one.output_low_pct for one in controllers]) - commanded_pct
     output_high = np.array([one.output_high_pct for one in controllers]) - commanded_pct
     secondary = commanded >= 0
-    return _filled(
+    return filled(
         CONTROLLER,
         **scan_coefficients(controllers, interval_s)._asdict(),
         setpoint_low=setpoint_low,
@@ -187,7 +187,7 @@ def _structures(columns: Sequence[Column], first: Sequence[int]) -> Records:
     step_s = np.array([column.clock.step_s for column in columns])
     with np.errstate(divide="ignore"):
         travel_per_step = 100.0 * step_s / np.array([element.stroke_time_s for element in elements])
-    return _filled(
+    return filled(
         STRUCTURE,
         travel_per_step=travel_per_step,
         half_backlash=[element.backlash_pct / 2.0 for element in elements],
@@ -208,14 +208,14 @@ def _disturbances(columns: Sequence[Column]) -> tuple[Records, FloatArray]:
         for scenario in column.scenarios
         for one in scenario.disturbances
     ]
-    steps = _steps(
+    steps = steps_over(
         [path for _, path, _ in arriving],
         np.array([step_s for _, _, step_s in arriving]),
         np.zeros(len(arriving)),
         np.ones(len(arriving), dtype=np.bool_),
         np.array([path.gain * one.size_pct for one, path, _ in arriving]),
     )
-    records = _filled(
+    records = filled(
         DISTURBANCE, through=steps.through, level=[one.level for one, _, _ in arriving], order=steps.order
     )
     return records, steps.matrices
@@ -230,7 +230,7 @@ def plant_of(columns: Sequence[Column]) -> Plant:
     step_s = np.repeat([column.clock.step_s for column in columns], counts)
     every = [one for column in columns for one in column.every]
     interval_s = step_s * np.array(every)
-    processes, matrices = _processes(
+    processes, matrices = process_records(
         [process for column in columns for process in column.structure.processes], step_s, innermost
     )
     disturbances, disturbance_matrices = _disturbances(columns)
@@ -239,7 +239,7 @@ def plant_of(columns: Sequence[Column]) -> Plant:
         processes=processes,
         matrices=matrices,
         controllers=_controllers(columns, first, interval_s, every),
-        lead_lags=_lead_lags([ones for column in columns for ones in column.structure.lead_lags], interval_s),
+        lead_lags=lead_lag_shares([ones for column in columns for ones in column.structure.lead_lags], interval_s),
         disturbances=disturbances,
         disturbance_matrices=disturbance_matrices,
     )
@@ -255,7 +255,7 @@ def cases_of(columns: Sequence[Column], *, parts: int, band: float) -> Records:
     setpoint = np.array([column.setpoint_step_pct(scenario) for column, scenario in scenarios])
     disturbed = np.array([disturbed_pct(scenario) for _, scenario in scenarios])
     disturbances = [0, *itertools.accumulate(len(scenario.disturbances) for _, scenario in scenarios)]
-    return _filled(
+    return filled(
         CASE,
         setpoint=setpoint,
         manual=[scenario.final_element_step_pct for _, scenario in scenarios],
