@@ -26,7 +26,7 @@ from loopdoc.engineering.structure import (
     cascade_structure,
     single_loop_structure,
 )
-from loopdoc.engineering.tuning import simc_at_sensitivity
+from loopdoc.engineering.tuning import simc_at_sensitivities
 from loopdoc.register.load import Loaded, load
 
 WIDE = {"output_low_pct": -1e9, "output_high_pct": 1e9, "setpoint_low_pct": -1e9, "setpoint_high_pct": 1e9}
@@ -124,9 +124,10 @@ def test_the_figures_of_the_rule_cases_by_simulation(tmp_path: Path, gain: str, 
     stages = tuple(replace(one, controller=replace(one.controller, **WIDE)) for one in chain.chain.stages)
     inner, outer = (stage.process for stage in stages)
     joined = Process(inner.gain * outer.gain, inner.lags_s + outer.lags_s, inner.dead_time_s + outer.dead_time_s)
-    tuned = simc_at_sensitivity(
-        joined, target_ms=chain.margins[-1].max_sensitivity, interval_s=1.0, measurement_filter_s=2.0
+    (tuned,) = simc_at_sensitivities(
+        [joined], target_ms=[chain.margins[-1].max_sensitivity], interval_s=[1.0], measurement_filter_s=[2.0]
     )
+    assert tuned is not None
     single = Controller(tuned.settings.gain, tuned.settings.reset_s, interval_s=1.0, measurement_filter_s=2.0, **WIDE)
     structure = cascade_structure(stages, final_element=FinalElement())
     upset = Scenario("secondary", disturbances=(Disturbance(0, 1.0),))

@@ -95,6 +95,11 @@ SHOWN = [
             "AMIGO PI": (1.20556, 7.76515, 0.0),
             "AMIGO PID": (2.45, 5.86667, 0.9434),
             "Tyreus-Luyben PI": (8.502425 / 3.2, 2.2 * 7.4415227, 0.0),
+            # Rivera and others 1986: (2 tau + theta)/(2 K lambda), tau + theta/2 with lambda = tau.
+            "IMC PI": (1.1, 11.0, 0.0),
+            # Seborg Table 11.3 at theta/tau = 0.2, worked out by hand.
+            "ITAE PI, load": (0.859 * 5**0.977, 10 / 0.674 * 0.2**0.68, 0.0),
+            "ITAE PID, setpoint": (0.965 * 5**0.85, 10 / 0.7667, 3.08 * 0.2**0.929),
         },
     ),
     (
@@ -275,14 +280,17 @@ def test_rules_that_do_not_apply_say_why(tmp_path: Path) -> None:
     assert "dead time above zero" in reasons["Cohen-Coon PI"]
     assert "dead time above zero" in reasons["AMIGO PI"]
     assert "-180 degrees" in reasons["Ziegler-Nichols PI, ultimate gain"]
-    assert {row["rule"] for row in review["settings"]} == {"as configured", "lambda PI", "IMC PID"}
+    assert {row["rule"] for row in review["settings"]} == {"as configured", "lambda PI", "IMC PI", "IMC PID"}
     review = shown(tmp_path, STANDARD, "gain: 1 degC per %, dead_time: 3 s")
     reasons = {entry["rule"]: entry["reason"] for entry in review["not_applied"]}
     assert "lag above zero" in reasons["AMIGO PI"]
     series = "form: series\n      gain: 1.0\n      reset: 10 s"
     review = shown(tmp_path, series, "gain: 1 degC per %, lag: 10 s, dead_time: 30 s")
+    reasons = {entry["rule"]: entry["reason"] for entry in review["not_applied"]}
     # AMIGO PID at r = 3: Ti = 20/31*30 = 19.4 s and Td = 150/19 = 7.9 s, above a quarter of it.
-    assert "no series form" in {entry["rule"]: entry["reason"] for entry in review["not_applied"]}["AMIGO PID"]
+    assert "no series form" in reasons["AMIGO PID"]
+    assert reasons["ITAE PI, load"].endswith("and this one is 3 times the lag")
+    assert "1.7 times the dead time" in reasons["IMC PI"]
 
 
 def test_a_loop_without_a_model_is_not_checked(tmp_path: Path) -> None:
@@ -311,6 +319,9 @@ def test_a_proportional_loop_is_shown_the_proportional_rules(tmp_path: Path) -> 
     assert rows["Ziegler-Nichols P, ultimate gain"]["gain"] == pytest.approx(8.502425 / 2, rel=1e-6)
     assert rows["Cohen-Coon P"]["gain"] == pytest.approx(5.3333, abs=5e-5)
     assert rows["Cohen-Coon P"]["reset"] is None
+    # Cohen and Coon (1/K)(1.25/r + 1/6), theta (6 - 2r)/(22 + 3r).
+    assert (rows["Cohen-Coon PD"]["gain"], rows["Cohen-Coon PD"]["rate"]) == pytest.approx((6.4167, 0.4956), abs=5e-5)
+    assert rows["Cohen-Coon PD"]["reset"] is None
 
 
 # --- what a controller sees ----------------------------------------------------------------------
@@ -385,7 +396,7 @@ def told(process: Process, *, interval_s: float = 0.0) -> tuple[Recommendation |
 def test_rules_keep_the_sign_of_the_process() -> None:
     rising = told(Process(2.0, (10.0, 3.0), 2.0), interval_s=0.5)
     falling = told(Process(-2.0, (10.0, 3.0), 2.0), interval_s=0.5)
-    assert len(rising) == 14
+    assert len(rising) == 19
     for one, other in zip(rising, falling, strict=True):
         assert isinstance(one, Recommendation)
         assert isinstance(other, Recommendation)

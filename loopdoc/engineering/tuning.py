@@ -150,6 +150,19 @@ def imc_pid(model: ReducedModel, *, lambda_s: float) -> StandardSettings:
     )
 
 
+def imc_pi(model: ReducedModel, *, lambda_s: float) -> StandardSettings:
+    """Return the improved internal model control PI settings for a first-order model with dead time.
+
+    Source: D. E. Rivera, M. Morari, S. Skogestad, Ind. Eng. Chem. Process Des. Dev. 25:252-265, 1986
+    (formulas and the least closed-loop time from memory).
+    """
+    _self_regulating(model)
+    if lambda_s <= 1.7 * model.dead_time_s:
+        raise ValueError("this rule needs a closed-loop time above 1.7 times the dead time")
+    twice = 2.0 * model.lag_s + model.dead_time_s
+    return StandardSettings(gain=twice / (2.0 * model.gain * lambda_s), reset_s=twice / 2.0)
+
+
 def ziegler_nichols_ultimate(point: UltimatePoint, actions: Actions) -> StandardSettings:
     """Return the Ziegler-Nichols settings from the ultimate gain and period.
 
@@ -178,11 +191,11 @@ def ziegler_nichols_reaction_curve(model: ReducedModel, actions: Actions) -> Sta
     return StandardSettings(1.2 * unit, 2.0 * dead_time, 0.5 * dead_time)
 
 
-def cohen_coon(model: ReducedModel, actions: Actions) -> StandardSettings:
+def cohen_coon(model: ReducedModel, actions: Actions | Literal["PD"]) -> StandardSettings:
     """Return the Cohen-Coon settings for a first-order model with dead time.
 
     Source: G. H. Cohen, G. A. Coon, "Theoretical consideration of retarded control", Trans. ASME
-    75:827-834, 1953.
+    75:827-834, 1953 (PD, and the reset of PI, from memory).
     """
     _self_regulating(model)
     dead_time = _dead_time(model)
@@ -193,11 +206,45 @@ def cohen_coon(model: ReducedModel, actions: Actions) -> StandardSettings:
         return StandardSettings(
             (0.9 / r + 1.0 / 12.0) / model.gain, dead_time * (30.0 + 3.0 * r) / (9.0 + 20.0 * r)
         )
+    if actions == "PD":
+        if r >= 3.0:
+            raise ValueError("this rule needs a dead time below three lags: beyond it gives no rate")
+        return StandardSettings(
+            (1.25 / r + 1.0 / 6.0) / model.gain, math.inf, dead_time * (6.0 - 2.0 * r) / (22.0 + 3.0 * r)
+        )
     return StandardSettings(
         (4.0 / (3.0 * r) + 0.25) / model.gain,
         dead_time * (32.0 + 6.0 * r) / (13.0 + 8.0 * r),
         dead_time * 4.0 / (11.0 + 2.0 * r),
     )
+
+
+def itae(
+    model: ReducedModel, actions: Literal["PI", "PID"], *, upset: Literal["load", "setpoint"]
+) -> StandardSettings:
+    """Return the settings of least time-weighted absolute error after a step of the load or of the setpoint.
+
+    Source: A. M. Lopez and others, "Tuning controllers with error-integral criteria", Instrum. Technol.
+    14(11):57-62, 1967 (load), and A. A. Rovira and others, "Tuning controllers for setpoint changes", Instrum.
+    Control Syst. 42(12):67-69, 1969 (setpoint), both cited from memory; coefficients as in D. E. Seborg and others,
+    Process Dynamics and Control, Table 11.3. The range over which they were fitted is from memory.
+    """
+    _self_regulating(model)
+    r = model.dead_time_s / model.lag_s
+    if not 0.1 <= r <= 1.0:
+        raise ValueError(
+            "this rule was fitted to dead times of a tenth of the lag to the whole of it, and this one is "
+            f"{r:.2g} times the lag"
+        )
+    if upset == "load":
+        if actions == "PI":
+            return StandardSettings(0.859 * r**-0.977 / model.gain, model.lag_s / (0.674 * r**-0.680))
+        reset_s, rate_s = model.lag_s / (0.842 * r**-0.738), 0.381 * model.lag_s * r**0.995
+        return StandardSettings(1.357 * r**-0.947 / model.gain, reset_s, rate_s)
+    if actions == "PI":
+        return StandardSettings(0.586 * r**-0.916 / model.gain, model.lag_s / (1.03 - 0.165 * r))
+    reset_s, rate_s = model.lag_s / (0.796 - 0.1465 * r), 0.308 * model.lag_s * r**0.929
+    return StandardSettings(0.965 * r**-0.85 / model.gain, reset_s, rate_s)
 
 
 def amigo(model: ReducedModel, actions: Literal["PI", "PID"]) -> StandardSettings:
@@ -396,26 +443,3 @@ def simc_at_sensitivities(
     for i in bracketed:
         found[i] = loops[i].tuning(math.exp(high[i]), math.exp(target[i] + f_high[i]))
     return tuple(found)
-
-
-def simc_at_sensitivity(
-    process: Process,
-    *,
-    target_ms: float,
-    interval_s: float,
-    measurement_filter_s: float = 0.0,
-    with_rate: bool = False,
-) -> SensitivityTuning:
-    """Return the SIMC settings that give one loop a maximum sensitivity; see `simc_at_sensitivities`."""
-    found = simc_at_sensitivities(
-        [process],
-        target_ms=[target_ms],
-        interval_s=[interval_s],
-        measurement_filter_s=[measurement_filter_s],
-        with_rate=with_rate,
-    )[0]
-    if found is None:
-        raise ValueError(
-            "SIMC cannot be tuned to that sensitivity: the process has no lag, or hardly any dead time"
-        )
-    return found

@@ -32,7 +32,9 @@ from loopdoc.engineering.tuning import (
     UltimatePoint,
     amigo,
     cohen_coon,
+    imc_pi,
     imc_pid,
+    itae,
     lambda_pi,
     simc_pi,
     simc_pid,
@@ -50,6 +52,10 @@ IMC = "D. E. Rivera, M. Morari, S. Skogestad, Ind. Eng. Chem. Process Des. Dev. 
 AMIGO = "K. J. Åström, T. Hägglund, Advanced PID Control, ISA 2006"
 ZIEGLER_NICHOLS = "J. G. Ziegler, N. B. Nichols, Trans. ASME 64:759-768, 1942"
 COHEN_COON = "G. H. Cohen, G. A. Coon, Trans. ASME 75:827-834, 1953"
+ITAE = (
+    "A. M. Lopez and others, Instrum. Technol. 14(11):57-62, 1967 (load); A. A. Rovira and others, Instrum. Control "
+    "Syst. 42(12):67-69, 1969 (setpoint)"
+)
 TYREUS_LUYBEN = "B. D. Tyreus, W. L. Luyben, Ind. Eng. Chem. Res. 31:2625-2628, 1992"
 
 
@@ -94,7 +100,7 @@ def recommendations(
 ) -> tuple[Recommendation | NotApplicable, ...]:
     """What each rule says of a process, given as its models of first and second order and its ultimate point.
 
-    The rules that set a proportional gain alone are asked for a controller without reset.
+    The rules that set no reset are asked for a controller without it.
     """
     simc_s, lambda_s = closed_loop_times(first)
     second_s, _ = closed_loop_times(second)
@@ -113,11 +119,13 @@ def recommendations(
         (curve.format("P"), ZIEGLER_NICHOLS, lambda: ziegler_nichols_reaction_curve(first, "P")),
         (oscillation.format("P"), ZIEGLER_NICHOLS, at_ultimate(lambda point: ziegler_nichols_ultimate(point, "P"))),
         ("Cohen-Coon P", COHEN_COON, lambda: cohen_coon(first, "P")),
+        ("Cohen-Coon PD", COHEN_COON, lambda: cohen_coon(first, "PD")),
     ]
     rules: list[tuple[str, str, Callable[[], StandardSettings]]] = [
         ("SIMC PI", SIMC, lambda: simc_pi(first, closed_loop_s=_positive(simc_s))),
         ("SIMC PID", SIMC, lambda: standard_from_series(_simc_with_rate(second, _positive(second_s)))),
         ("lambda PI", lambda_source, lambda: lambda_pi(first, lambda_s=lambda_s)),
+        ("IMC PI", IMC, lambda: imc_pi(first, lambda_s=lambda_s)),
         ("IMC PID", IMC, lambda: imc_pid(first, lambda_s=lambda_s)),
         ("AMIGO PI", AMIGO, lambda: amigo(first, "PI")),
         ("AMIGO PID", AMIGO, lambda: amigo(first, "PID")),
@@ -127,6 +135,10 @@ def recommendations(
         (oscillation.format("PID"), ZIEGLER_NICHOLS, at_ultimate(lambda point: ziegler_nichols_ultimate(point, "PID"))),
         ("Cohen-Coon PI", COHEN_COON, lambda: cohen_coon(first, "PI")),
         ("Cohen-Coon PID", COHEN_COON, lambda: cohen_coon(first, "PID")),
+        ("ITAE PI, load", ITAE, lambda: itae(first, "PI", upset="load")),
+        ("ITAE PID, load", ITAE, lambda: itae(first, "PID", upset="load")),
+        ("ITAE PI, setpoint", ITAE, lambda: itae(first, "PI", upset="setpoint")),
+        ("ITAE PID, setpoint", ITAE, lambda: itae(first, "PID", upset="setpoint")),
         ("Tyreus-Luyben PI", TYREUS_LUYBEN, at_ultimate(lambda point: tyreus_luyben(point, "PI"))),
         ("Tyreus-Luyben PID", TYREUS_LUYBEN, at_ultimate(lambda point: tyreus_luyben(point, "PID"))),
     ]
