@@ -109,16 +109,9 @@ def compare_all(chains: Sequence[ChainDynamics]) -> tuple[Comparison | NotSimula
     found: dict[int, Comparison | NotSimulated] = {}
     stable = {}
     for position, dynamics in enumerate(chains):
-        levels = zip(dynamics.chain.levels, dynamics.margins, strict=True)
-        unstable = next((level.loop.tag for level, margins in levels if not margins.stable), None)
-        at_once = next((level.loop.tag for level in dynamics.chain.levels if _answers_at_once(level.stage)), None)
-        if unstable is not None:
-            found[position] = NotSimulated(f"{unstable} as tuned is not stable")
-        elif at_once is not None:
-            found[position] = NotSimulated(
-                f"the process of {at_once} answers at once, so that its response hangs on the execution interval, "
-                "which the register does not give"
-            )
+        refused = not_to_be_simulated(dynamics)
+        if refused is not None:
+            found[position] = refused
         else:
             stable[position] = dynamics
     singles = dict(zip(stable, _single_loops(list(stable.values())), strict=True))
@@ -150,6 +143,21 @@ def compare_all(chains: Sequence[ChainDynamics]) -> tuple[Comparison | NotSimula
             structures[0].start_pct,
         )
     return tuple(found[position] for position in range(len(chains)))
+
+
+def not_to_be_simulated(dynamics: ChainDynamics) -> NotSimulated | None:
+    """Why a chain has no time response to show that would mean anything; None where it has one."""
+    levels = zip(dynamics.chain.levels, dynamics.margins, strict=True)
+    unstable = next((level.loop.tag for level, margins in levels if not margins.stable), None)
+    if unstable is not None:
+        return NotSimulated(f"{unstable} as tuned is not stable")
+    at_once = next((level.loop.tag for level in dynamics.chain.levels if _answers_at_once(level.stage)), None)
+    if at_once is None:
+        return None
+    return NotSimulated(
+        f"the process of {at_once} answers at once, so that its response hangs on the execution interval, which the "
+        "register does not give"
+    )
 
 
 def _answers_at_once(stage: LoopStage) -> bool:

@@ -53,6 +53,11 @@ class Curve:
         ]
         return max(beside, key=abs, default=0.0)
 
+    @property
+    def steepest(self) -> float:
+        """The largest slope, with its sign."""
+        return max(self._slopes, key=abs)
+
     def input_for(self, output: float) -> float | None:
         """The input that gives an output; None where none or more than one stretch does."""
         found: set[float] = set()

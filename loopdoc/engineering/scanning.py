@@ -515,3 +515,396 @@ def run(
             structures, processes, matrices, controllers, lead_lags, disturbances, disturbance_matrices,
             cases[i], rings, readings[i], traces[i], stride,
         )  # fmt: skip
+
+
+# --- branched structures: several final elements, several controllers for one of them -----------------
+
+TRACKS, HOLDS, WINDS_UP = 0, 1, 2
+"""What a controller does that a selector does not let through: external reset, its integral held, nothing."""
+
+BRANCHED = _record(
+    [],
+    [
+        "elements_from",  # first and last but one of its final elements
+        "elements_to",
+        "paths_from",  # of its paths
+        "paths_to",
+        "loops_from",  # of its loops
+        "loops_to",
+    ],
+)
+"""A structure of loops, innermost first, that command one another or its final elements."""
+
+ELEMENT = _record(
+    ["travel_per_step", "half_backlash", "resolution", "low", "high"],  # as of a `STRUCTURE`
+    ["corners"],  # number of points of its opening
+)
+"""A final element.
+
+Its row of the openings is (p, 2): the points of the straight lines from the output that moves it to the opening that
+this asks for, in the order of the output [%]; beyond them it is held.
+"""
+
+PATH = _record(
+    ["through_now", "through_before"],  # as of a `PROCESS`
+    [
+        "order",
+        "delay",
+        "last",
+        "source",  # place of the final element, or of the loop on whose measurement it begins
+        "from_element",  # 1 where it begins at a final element
+        "loop",  # place of the loop whose measurement it moves, innermost path first
+    ],
+)
+"""A process from a final element or a measurement to a measurement, where what several bring adds up."""
+
+
+def _names(records: np.dtype[np.void], kind: type) -> list[str]:
+    return [name for name in records.names or () if records[name] == np.dtype(kind)]
+
+
+LOOP = _record(
+    [
+        *_names(CONTROLLER, np.float64),
+        "reset_share",  # scan interval over reset time: how far the lag of an external reset goes in a scan, at most 1
+        "start_setpoint",  # setpoint less measurement at the start [%]
+        "start_integral",  # [%]
+    ],
+    [
+        *_names(CONTROLLER, np.int64),
+        "commands",  # place of the loop whose setpoint it gives; the number of loops for the final elements
+        "prefers",  # 1 where the lowest of what is asked passes, -1 where the highest does
+        "unfollowed",  # TRACKS, HOLDS or WINDS_UP
+    ],
+)
+"""A controller with what it commands; its row of the lead-lags as of a `CONTROLLER`."""
+
+BRANCHED_CASE = _record(
+    [
+        "setpoint",  # step of a setpoint within its limits [%]
+        "settled",  # measurement that it settles to [%]
+        "band",  # how near to that is settled [%]
+    ],
+    [
+        "structure",  # row of the structure
+        "read",  # place of the loop whose setpoint steps and of which it is read
+        "passes",  # step at which the disturbances pass again, -1 for never
+        "disturbed_from",
+        "disturbed_to",
+        "steps",
+        "window",
+    ],
+)
+"""A run of a branched structure; fields without a word as of a `CASE`."""
+
+SPELL = _record([], ["first", "last", "times"])
+"""When a loop commands: first and last step, -1 for never, and how many times it took command."""
+
+
+class BranchedPlant(NamedTuple):
+    """Branched structures and what they consist of."""
+
+    structures: Records
+    """(s,) of `BRANCHED`."""
+    elements: Records
+    """(e,) of `ELEMENT`."""
+    openings: FloatArray
+    """(e, p, 2) of the final elements."""
+    paths: Records
+    """(r,) of `PATH`."""
+    matrices: FloatArray
+    """(r, m, m + 4) step matrices of the paths."""
+    loops: Records
+    """(n,) of `LOOP`, structure by structure, innermost first."""
+    lead_lags: FloatArray
+    """(n, q, 2) of the loops."""
+    disturbances: Records
+    """(d,) of `DISTURBANCE`, whose level is the place of a loop."""
+    disturbance_matrices: FloatArray
+    """(d, m, m + 4) step matrices of the disturbances."""
+
+
+@compiled
+def _opening(corners: FloatArray, count: int, output: float) -> float:
+    """The opening that an output asks for [%]."""
+    if output <= corners[0, 0]:
+        return float(corners[0, 1])
+    for i in range(1, count):
+        if output < corners[i, 0]:
+            slope = (corners[i, 1] - corners[i - 1, 1]) / (corners[i, 0] - corners[i - 1, 0])
+            return float(corners[i - 1, 1] + slope * (output - corners[i - 1, 0]))
+    return float(corners[count - 1, 1])
+
+
+@compiled
+def _execute_branched(
+    loops: Records,
+    lead_lags: FloatArray,
+    memories: Records,
+    lagged: FloatArray,
+    held: FloatArray,
+    measured: FloatArray,
+    setpoints: FloatArray,
+    passed: FloatArray,
+    chosen: NDArray[np.int64],
+) -> float:
+    """Execute the loops that are due, outermost first, and return the output to the final elements [%].
+
+    Of what several ask of one thing the lowest or the highest passes; ``chosen`` becomes who asked for it.
+    """
+    for target in range(len(loops) + 1):
+        chosen[target] = -1
+    for place in range(len(loops) - 1, -1, -1):
+        loop, memory = loops[place], memories[place]
+        if memory.wait == 0:
+            setpoint = setpoints[place] if chosen[place] < 0 else passed[place]
+            memory.setpoint = _limit(setpoint, loop.setpoint_low, loop.setpoint_high)
+            held[place] = memory.integral
+            computed = scan(loop, memory, memory.setpoint, measured[place])
+            memory.output = _limit(computed, loop.output_low, loop.output_high)
+            memory.asked = _led(loop, lead_lags, lagged, place, memory.output)
+        target = loop.commands
+        if chosen[target] < 0 or (memory.asked - passed[target]) * loop.prefers < 0.0:
+            passed[target], chosen[target] = memory.asked, place
+    return float(passed[len(loops)])
+
+
+@compiled
+def _track_branched(
+    loops: Records,
+    memories: Records,
+    held: FloatArray,
+    measured: FloatArray,
+    passed: FloatArray,
+    chosen: NDArray[np.int64],
+    stuck: NDArray[np.bool_],
+) -> None:
+    """Tell the controllers that were due what became of their outputs.
+
+    The one whose output passes, as in a chain. One that a selector does not let through, what passes instead: its
+    integral goes through the lag of its reset time toward that, which is the positive feedback of an external reset.
+    ``stuck`` is (n + 1, 2): whether what a loop commands can move its measurement no higher and no lower.
+    """
+    for place in range(len(loops)):
+        loop, memory = loops[place], memories[place]
+        target = loop.commands
+        no_higher, no_lower = stuck[target, 0], stuck[target, 1]
+        if memory.wait == 0:
+            is_chosen = chosen[target] == place
+            wanted = memory.computed if is_chosen or loop.unfollowed == WINDS_UP else passed[target]
+            actual = _limit(wanted, loop.followed_low, loop.followed_high)
+            share = loop.tracking
+            if not is_chosen and loop.unfollowed == WINDS_UP:
+                actual = _limit(wanted, loop.output_low, loop.output_high)
+            else:
+                if no_higher:
+                    actual = min(actual, measured[target])
+                if no_lower:
+                    actual = max(actual, measured[target])
+                if not is_chosen:
+                    share = loop.reset_share
+            if not is_chosen and loop.unfollowed == HOLDS:
+                memory.integral = held[place]
+            else:
+                memory.integral += share * (actual - memory.computed)
+        at_high = memory.computed > loop.followed_high or no_higher
+        at_low = memory.computed < loop.followed_low or no_lower
+        stuck[place, 0], stuck[place, 1] = (at_high, at_low) if loop.reverse else (at_low, at_high)
+        memory.wait = (memory.wait if memory.wait else loop.every) - 1
+
+
+@compiled
+def _run_branched_one(
+    structure: Any,
+    elements: Records,
+    openings: FloatArray,
+    paths: Records,
+    matrices: FloatArray,
+    loops: Records,
+    lead_lags: FloatArray,
+    disturbances: Records,
+    disturbance_matrices: FloatArray,
+    case: Any,
+    rings: FloatArray,
+    reading: Any,
+    extremes: FloatArray,
+    spells: Records,
+    trace: FloatArray,
+    stride: int,
+) -> None:
+    """Run one case of a branched structure to its end, or to rest, and read it."""
+    elements = elements[structure.elements_from : structure.elements_to]
+    openings = openings[structure.elements_from : structure.elements_to]
+    paths = paths[structure.paths_from : structure.paths_to]
+    matrices = matrices[structure.paths_from : structure.paths_to]
+    loops = loops[structure.loops_from : structure.loops_to]
+    lead_lags = lead_lags[structure.loops_from : structure.loops_to]
+    disturbances = disturbances[case.disturbed_from : case.disturbed_to]
+    disturbance_matrices = disturbance_matrices[case.disturbed_from : case.disturbed_to]
+    n, moved_by, read = len(loops), len(elements), case.read
+    memories, lagged, held = np.zeros(n, MEMORY), np.zeros((n, lead_lags.shape[1])), np.zeros(n)
+    measured, setpoints, passed = np.zeros(n), np.zeros(n), np.zeros(n + 1)
+    chosen, chosen_before = np.full(n + 1, -1), np.full(n + 1, -1)
+    stuck = np.zeros((n + 1, 2), np.bool_)
+    states = np.zeros((len(paths), matrices.shape[1]))
+    upsets = np.zeros((len(disturbances), disturbance_matrices.shape[1]))
+    watched = np.zeros(moved_by + n, WATCHED)
+    signals, drives, travels, means = np.zeros(moved_by), np.zeros(moved_by), np.zeros(moved_by), np.zeros(moved_by)
+    headings, turning = np.zeros(moved_by), np.zeros(moved_by)
+    for one in range(len(paths)):
+        rings[one, : paths[one].last + 1] = 0.0
+    for place in range(n):
+        loop, memory = loops[place], memories[place]
+        setpoints[place] = loop.start_setpoint + (case.setpoint if place == read else 0.0)
+        memory.integral = loop.start_integral
+        memory.derivative_input = loop.derivative_setpoint_weight * loop.start_setpoint
+        spells[place].first = spells[place].last = -1
+        spells[place].times = 0
+    window_end = case.window or case.steps
+    error = error_sum = moved = peak = 0.0
+    peak_step, outside_step, turns, step = 0, -1, 0, 0
+    while True:
+        # Read the measurements, which paths reach innermost first.
+        coming = 1.0 if case.passes < 0 or step <= case.passes else 0.0
+        present = 0.0 if step == case.passes else coming
+        for place in range(n):
+            measured[place] = 0.0
+        one = 0
+        for place in range(n):
+            while one < len(paths) and paths[one].loop == place:
+                path = paths[one]
+                if not path.from_element:
+                    rings[one, step & path.last] = measured[path.source]
+                at = step - path.delay
+                now, before = rings[one, at & path.last], rings[one, (at - 1) & path.last]
+                if step:
+                    _advance(matrices, path.order, states, one, now, before, rings[one, (at - 2) & path.last])
+                measured[place] += _output(matrices, path.order, states, one)
+                measured[place] += path.through_now * now + path.through_before * before
+                one += 1
+            for i in range(len(disturbances)):
+                upset = disturbances[i]
+                if upset.level == place:
+                    if step:
+                        _advance(disturbance_matrices, upset.order, upsets, i, coming, 0.0, 0.0)
+                    measured[place] += _output(disturbance_matrices, upset.order, upsets, i) + present * upset.through
+            _note(watched[moved_by + place], measured[place])
+        # Execute the controllers and move the final elements.
+        signal = _execute_branched(
+            loops, lead_lags, memories, lagged, held, measured, setpoints, passed, chosen
+        )  # fmt: skip
+        _track_branched(loops, memories, held, measured, passed, chosen, stuck)
+        for place in range(n):
+            spell, target = spells[place], loops[place].commands
+            if chosen[target] == place:
+                if spell.first < 0:
+                    spell.first = step
+                if chosen_before[target] != place:
+                    spell.times += 1
+                spell.last = step
+        for target in range(n + 1):
+            chosen_before[target] = chosen[target]
+        for e in range(moved_by):
+            last_mean = means[e]
+            asked = _opening(openings[e], elements[e].corners, signal)
+            signals[e], drives[e], travels[e], means[e] = _move(elements[e], signals[e], drives[e], travels[e], asked)
+            _note(watched[e], means[e])
+            moved += abs(means[e] - last_mean)
+            headings[e], turning[e], turned = _turn(headings[e], turning[e], means[e])
+            turns += turned
+        for one in range(len(paths)):
+            if paths[one].from_element:
+                rings[one, step & paths[one].last] = means[paths[one].source]
+        # Read what is asked of the response.
+        measurement = measured[read]
+        last_error, error = error, abs(setpoints[read] - measurement)
+        if step:
+            error_sum += 0.5 * (last_error + error)
+        if abs(measurement) > abs(peak):
+            peak, peak_step = measurement, step
+        if abs(measurement - case.settled) > case.band:
+            outside_step = step
+        if trace.shape[1] and step % stride == 0:
+            point = step // stride
+            for e in range(moved_by):
+                trace[e, point] = means[e]
+            for place in range(n):
+                trace[moved_by + place, point] = measured[place]
+                trace[moved_by + n + place, point] = memories[place].setpoint
+                trace[moved_by + 2 * n + place, point] = memories[place].output
+        if step == window_end:
+            rested = True
+            for i in range(moved_by):
+                rested = _end_window(watched[i], means[i]) and rested
+            for place in range(n):
+                rested = _end_window(watched[moved_by + place], measured[place]) and rested
+            if step == case.steps or (rested and step > case.window and step > case.passes):
+                break
+            window_end += case.window
+        step += 1
+    reading.steps, reading.last, reading.error_sum = step, measured[read], error_sum
+    reading.peak, reading.peak_step, reading.outside_step = peak, peak_step, outside_step
+    reading.moved, reading.turns = moved, turns
+    for i in range(moved_by + n):
+        extremes[i, 0], extremes[i, 1] = watched[i].low, watched[i].high
+    reading.low, reading.high = watched[moved_by + read].low, watched[moved_by + read].high
+    reading.limited_level = -1
+    for place in range(n - 1, -1, -1):
+        loop, computed = loops[place], memories[place].computed
+        if chosen[loop.commands] == place and (computed < loop.followed_low or computed > loop.followed_high):
+            reading.limited_level = place
+
+
+@compiled
+def run_branched(
+    structures: Records,
+    elements: Records,
+    openings: FloatArray,
+    paths: Records,
+    matrices: FloatArray,
+    loops: Records,
+    lead_lags: FloatArray,
+    disturbances: Records,
+    disturbance_matrices: FloatArray,
+    cases: Records,
+    readings: Records,
+    extremes: FloatArray,
+    spells: Records,
+    traces: FloatArray,
+    stride: int,
+) -> None:
+    """Run cases of branched structures one after the other and fill in what is read off them.
+
+    Parameters
+    ----------
+    structures, elements, openings, paths, matrices, loops, lead_lags, disturbances, disturbance_matrices
+        The parts of a `BranchedPlant`.
+    cases : (n,) array of BRANCHED_CASE
+        Runs of its structures.
+    readings : (n,) array of READING
+        Overwritten; travel and turns are those of all final elements together.
+    extremes : (n, w, 2) float array
+        Overwritten with the lowest and highest of every final element, then of every measurement [%].
+    spells : (n, l) array of SPELL
+        Overwritten.
+    traces : (n, w, k) float array
+        Overwritten with every ``stride``-th step of the signals [%]: the travels, then by loop the measurements, the
+        setpoints and the outputs; k = 0 where no signals are to be kept.
+    stride : int
+        Steps from one point of the traces to the next.
+
+    Source: as of `run`; of external reset, F. G. Shinskey, "The power of external-reset feedback", Control, 2006, and
+    Process Control Systems, 4th ed. 1996 (integral action by positive feedback of what the selector passes through a
+    lag of the reset time; from memory).
+    """
+    most, last = 0, 0
+    for i in range(len(structures)):
+        most = max(most, structures[i].paths_to - structures[i].paths_from)
+    for i in range(len(paths)):
+        last = max(last, paths[i].last)
+    rings = np.zeros((most, last + 1))
+    for i in range(len(cases)):
+        _run_branched_one(
+            structures[cases[i].structure], elements, openings, paths, matrices, loops, lead_lags, disturbances,
+            disturbance_matrices, cases[i], rings, readings[i], extremes[i], spells[i], traces[i], stride,
+        )  # fmt: skip

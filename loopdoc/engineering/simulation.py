@@ -23,9 +23,9 @@ if TYPE_CHECKING:
     from loopdoc.engineering.scanning import Plant, Records
 
 # Points of a signal that is kept: more than can be drawn.
-_POINTS_MOST = 8000
+POINTS_MOST = 8000
 # A step through a lag is within 0.3 % of its end after so many times the lag.
-_LAGS_TO_ARRIVE = 6.0
+LAGS_TO_ARRIVE = 6.0
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -100,7 +100,7 @@ def _columns(structures: Sequence[ControlStructure], scenarios: Sequence[Scenari
 def _slowest_disturbance_s(scenarios: Sequence[Scenario]) -> float:
     """How long disturbances with a path of their own take to come through in full [s]."""
     paths = [d.path for scenario in scenarios for d in scenario.disturbances if d.path is not None]
-    return max((_LAGS_TO_ARRIVE * path.lag_sum_s for path in paths), default=0.0)
+    return max((LAGS_TO_ARRIVE * path.lag_sum_s for path in paths), default=0.0)
 
 
 def _response(
@@ -222,7 +222,7 @@ def simulate_groups(
     return tuple(
         columns
         if isinstance(columns, Unsuited)
-        else _respond(columns, stride=math.ceil(columns[0].clock.steps / _POINTS_MOST), until_rest=True)
+        else _respond(columns, stride=math.ceil(columns[0].clock.steps / POINTS_MOST), until_rest=True)
         for columns in _on_clocks(groups, known)
     )
 

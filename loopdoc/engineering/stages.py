@@ -138,7 +138,28 @@ def _stage(plant: Plant, loop: ControlledLoop, route: Route) -> LoopStage:
     return LoopStage(controller, _process(loop, route), lead_lags)
 
 
+def controller_of(loop: ControlledLoop, route: Route) -> Controller | Lacking:
+    """The controller of a loop with its output in percent of its own span."""
+    try:
+        return _own_controller(loop, route)
+    except _Lacking as lacking:
+        return Lacking(str(lacking))
+
+
 def _controller(plant: Plant, loop: ControlledLoop, route: Route) -> tuple[Controller, tuple[LeadLag, ...]]:
+    controller = _own_controller(loop, route)
+    try:
+        return _on_commanded(plant, controller, loop, route)
+    except (ValueError, ZeroDivisionError) as error:
+        raise _unmade(loop.tag, error) from error
+
+
+def _unmade(tag: str, error: Exception) -> _Lacking:
+    """Of a nonsensical setting; `tuning-invalid` and others tell it."""
+    return _Lacking(f"the settings of {tag} do not make a controller: {error}")
+
+
+def _own_controller(loop: ControlledLoop, route: Route) -> Controller:
     written, tag = loop.controller, loop.tag
     action = _need(written.action, f"the action of {tag}")
     measurement = _need(loop.loop.measurement, f"the measurement of {tag}")
@@ -151,7 +172,7 @@ def _controller(plant: Plant, loop: ControlledLoop, route: Route) -> tuple[Contr
         low, high = _output_limits(output, route, tag)
         setpoint_low = _percent_of(known(setpoint.low) if setpoint else None, own, 0.0)
         setpoint_high = _percent_of(known(setpoint.high) if setpoint else None, own, 100.0)
-        controller = Controller(
+        return Controller(
             gain=settings.gain if action == "reverse" else -settings.gain,
             reset_s=settings.reset_s,
             rate_s=settings.rate_s,
@@ -165,12 +186,8 @@ def _controller(plant: Plant, loop: ControlledLoop, route: Route) -> tuple[Contr
             setpoint_low_pct=setpoint_low,
             setpoint_high_pct=setpoint_high,
         )
-        return _on_commanded(plant, controller, loop, route)
-    except (
-        ValueError,
-        ZeroDivisionError,
-    ) as error:  # a nonsensical setting; `tuning-invalid` and others tell it
-        raise _Lacking(f"the settings of {tag} do not make a controller: {error}") from error
+    except (ValueError, ZeroDivisionError) as error:
+        raise _unmade(tag, error) from error
 
 
 def settings_of(written: model.Controller, tag: str) -> StandardSettings:
