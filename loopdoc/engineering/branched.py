@@ -113,3 +113,5 @@ class BranchedScenario:
     """Steps that reach measurements from outside; their levels are places of loops."""
     lasts_s: float = math.inf
     """Time after which the disturbances pass again [s]."""
+    origin: str = "standard"
+    """standard, declared by the register, or sized so that it shows what it is named after."""

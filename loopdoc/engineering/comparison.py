@@ -36,6 +36,7 @@ from loopdoc.register.model import known, seconds
 from loopdoc.register.quantity import Quantity
 
 if TYPE_CHECKING:
+    from loopdoc.engineering.response_metrics import ResponseMetrics
     from loopdoc.engineering.simulation import Response
 
 UPSET_PCT = 10.0
@@ -61,9 +62,14 @@ class ScenarioResponses:
         return ours / theirs if theirs > 0.0 and math.isfinite(ours) and math.isfinite(theirs) else None
 
     def peak_time_s(self, response: Response) -> float:
-        """When a response peaks [s]; nan after a setpoint step that is only approached, which is nearest at the end."""
-        only_approached = self.scenario.setpoint_step_pct != 0.0 and response.metrics.overshoot_pct < NO_OVERSHOOT_PCT
-        return math.nan if only_approached else response.metrics.time_to_peak_s
+        """When a response peaks [s]; see the function of this name."""
+        return peak_time_s(self.scenario.setpoint_step_pct, response.metrics)
+
+
+def peak_time_s(setpoint_step_pct: float, metrics: ResponseMetrics) -> float:
+    """When a response peaks [s]; nan after a setpoint step that is only approached, which is nearest at the end."""
+    only_approached = setpoint_step_pct != 0.0 and metrics.overshoot_pct < NO_OVERSHOOT_PCT
+    return math.nan if only_approached else metrics.time_to_peak_s
 
 
 @dataclass(frozen=True, slots=True)

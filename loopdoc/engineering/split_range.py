@@ -309,7 +309,7 @@ def _scenarios(split: SplitRange) -> tuple[BranchedScenario, ...]:
         found.append(BranchedScenario(scenario.name, outermost, scenario.setpoint_step_pct, disturbances))
     chain: Chain = split.chains[split.near].chain
     found.extend(
-        BranchedScenario(scenario.name, outermost, 0.0, scenario.disturbances)
+        BranchedScenario(scenario.name, outermost, 0.0, scenario.disturbances, origin="declared")
         for scenario in declared_scenarios(chain)
     )
     bring = _brought(inner, [branch.opening for branch in structure.branches])
@@ -319,5 +319,5 @@ def _scenarios(split: SplitRange) -> tuple[BranchedScenario, ...]:
         other_side = min(bring.outputs) if beyond > 0.0 else max(bring.outputs)
         there = min(abs(beyond), 0.9 * abs(other_side - bring.at(split.handover_pct)))
         size = math.copysign(abs(beyond) + there, beyond) / (path.gain if path.integrating else 1.0)
-        found.append(BranchedScenario(HANDOVER, outermost, 0.0, (Disturbance(0, size, path),)))
+        found.append(BranchedScenario(HANDOVER, outermost, 0.0, (Disturbance(0, size, path),), origin="sized"))
     return tuple(found)
