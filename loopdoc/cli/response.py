@@ -29,6 +29,7 @@ def run(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
     from loopdoc.engineering.comparison import compare
     from loopdoc.engineering.dynamics import Dynamics
     from loopdoc.engineering.pairing import Plant
+    from loopdoc.engineering.split_range import SplitRange, split_range
     from loopdoc.engineering.tuning_review import review, reviewed_loops
     from loopdoc.exchange.responses import response_json, response_text
     from loopdoc.rules.policy import limits_from
@@ -48,19 +49,24 @@ def run(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
         return EXIT_UNREADABLE
     loop = dynamics.loop(arguments.tag)
     comparisons = [compare(chain) for chain in loop.chains]
+    split = split_range(loop.chains)
     if arguments.plot is not None:
         if loop.reason:
             stderr.write(f"loopdoc: nothing to draw for {loop.tag}: {loop.reason}\n")
             return EXIT_UNREADABLE
         from loopdoc.documents.plots import save
         from loopdoc.documents.responses.response_figure import drawings
+        from loopdoc.documents.responses.split_range_story import split_figure
 
+        drawn = drawings(plant, loop.chains, comparisons)
+        if isinstance(split, SplitRange):
+            drawn.insert(0, split_figure(plant, split))
         try:
-            save(drawings(plant, loop.chains, comparisons), arguments.plot)
+            save(drawn, arguments.plot)
         except ValueError as error:
             stderr.write(f"loopdoc: {error}\n")
             return EXIT_UNREADABLE
     reviews = [review(dynamics.loop(tag)) for tag in reviewed_loops(loop)]
     as_asked = response_json if arguments.format == "json" else response_text
-    stdout.write(as_asked(loop, comparisons, reviews, limits_from(loaded.register.policy)))
+    stdout.write(as_asked(loop, comparisons, reviews, limits_from(loaded.register.policy), split=split))
     return EXIT_CLEAN

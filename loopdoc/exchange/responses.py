@@ -10,15 +10,17 @@ from typing import Any
 from loopdoc.engineering.comparison import UPSET_PCT, Comparison, NotSimulated, ScenarioResponses
 from loopdoc.engineering.dynamics import ChainDynamics, LoopDynamics
 from loopdoc.engineering.frequency import speed_ratio
-from loopdoc.engineering.response_metrics import ResponseMetrics
+from loopdoc.engineering.split_range import SplitRange
 from loopdoc.engineering.stages import Chain, measured_range
 from loopdoc.engineering.tuning_table import CAUTION as REVIEW_CAUTION
 from loopdoc.engineering.tuning_table import quoted_gain_margin, quoted_phase_margin
 from loopdoc.exchange.escaping import for_json, for_terminal
 from loopdoc.exchange.findings import CAUTION
+from loopdoc.exchange.response_metrics import metric_cells, metric_heads, metrics_object, shown
+from loopdoc.exchange.split_range import split_lines, split_object
 from loopdoc.exchange.tuning_review import Reviews, margins_object, number, review_lines, reviews_object
 from loopdoc.register.model import Hold, known
-from loopdoc.register.quantity import Range, display_number
+from loopdoc.register.quantity import Range
 from loopdoc.rules.policy import Limits
 
 TUNING_CAUTION = "Try tuning changes only under supervision."
@@ -27,11 +29,17 @@ RATIOS = {"peak": "peak_pct", "iae": "iae_pct_s", "settling": "settling_s"}
 
 
 def response_json(
-    loop: LoopDynamics, comparisons: Sequence[Comparison | NotSimulated], reviews: Reviews, limits: Limits
+    loop: LoopDynamics,
+    comparisons: Sequence[Comparison | NotSimulated],
+    reviews: Reviews,
+    limits: Limits,
+    *,
+    split: SplitRange | NotSimulated | None = None,
 ) -> str:
     """Margins, speed ratio, scenarios and tuning review of a loop; engineering units and seconds.
 
-    One comparison for each chain, one entry of reviews for each loop of the chains.
+    One comparison for each chain, one entry of reviews for each loop of the chains; ``split`` is the split range that
+    the chains are branches of.
     """
     document: dict[str, Any] = {"tag": loop.tag}
     if loop.reason:
@@ -39,6 +47,8 @@ def response_json(
     chains = [_chain_object(chain, found) for chain, found in zip(loop.chains, comparisons, strict=True)]
     # A split range has one chain for each branch; every other loop has one, and its fields stand at the top.
     document |= chains[0] if len(chains) == 1 else {"branches": chains} if chains else {}
+    if split is not None:
+        document["split_range"] = split_object(split)
     document["tuning_review"] = reviews_object(reviews, limits)
     document["caution"] = f"{CAUTION} {REVIEW_CAUTION}"
     return for_json(document) + "\n"
@@ -82,37 +92,28 @@ def single_assumption(comparison: Comparison) -> str:
     settings = comparison.single.settings
     return (
         f"single: one controller on {chain.final_element.tag} in place of the cascade, tuned by SIMC on all processes "
-        f"in series to the Ms of {chain.lead.tag}, {_shown(comparison.single.max_sensitivity)} "
-        f"(gain {_shown(abs(settings.gain))} % per %, reset {_shown(settings.reset_s)} s)"
+        f"in series to the Ms of {chain.lead.tag}, {shown(comparison.single.max_sensitivity)} "
+        f"(gain {shown(abs(settings.gain))} % per %, reset {shown(settings.reset_s)} s)"
     )
 
 
 def _scenario_object(entry: ScenarioResponses, own: Range, *, single: bool) -> dict[str, Any]:
     if single:
-        return {"loop": _metrics_object(entry.tuned.metrics, own)}
+        return {"loop": metrics_object(entry.tuned.metrics, own)}
     return {
-        "cascade": _metrics_object(entry.tuned.metrics, own),
-        "single": _metrics_object(entry.single.metrics, own) if entry.single else None,
+        "cascade": metrics_object(entry.tuned.metrics, own),
+        "single": metrics_object(entry.single.metrics, own) if entry.single else None,
         "cascade_over_single": {name: number(entry.ratio(of)) for name, of in RATIOS.items()} if entry.single else None,
     }
 
 
-def _metrics_object(metrics: ResponseMetrics, own: Range) -> dict[str, Any]:
-    per_pct = own.span / 100.0
-    return {
-        "iae": number(metrics.iae_pct_s * per_pct),
-        "peak": number(metrics.peak_pct * per_pct),
-        "settling_s": number(metrics.settling_s),
-        "time_to_peak_s": number(metrics.time_to_peak_s),
-        "overshoot_pct": number(metrics.overshoot_pct),
-        "valve_travel_pct": number(metrics.valve_travel_pct),
-        "reversals": metrics.reversals,
-        "output_at_limit": metrics.limited_level is not None,
-    }
-
-
 def response_text(
-    loop: LoopDynamics, comparisons: Sequence[Comparison | NotSimulated], reviews: Reviews, limits: Limits
+    loop: LoopDynamics,
+    comparisons: Sequence[Comparison | NotSimulated],
+    reviews: Reviews,
+    limits: Limits,
+    *,
+    split: SplitRange | NotSimulated | None = None,
 ) -> str:
     """The same for reading."""
     if loop.reason:
@@ -121,6 +122,8 @@ def response_text(
     for dynamics, comparison in zip(loop.chains, comparisons, strict=True):
         lines.extend(_chain_lines(dynamics, comparison))
         lines.append("")
+    if split is not None:
+        lines.extend((*split_lines(split), ""))
     lines.extend(review_lines(reviews, limits))
     lines.append(f"{CAUTION} {REVIEW_CAUTION}")
     return for_terminal("\n".join(lines)) + "\n"
@@ -137,9 +140,9 @@ def _chain_lines(dynamics: ChainDynamics, comparison: Comparison | NotSimulated)
         state = ("   sampled" if margins.sampled else "") + ("" if margins.stable else "   NOT STABLE")
         lines.append(
             f"{level.loop.tag:12}{quoted_gain_margin(margins):>13}{_with_unit(quoted_phase_margin(margins), 'deg'):>14}"
-            f"{_shown(margins.max_sensitivity):>7}{_shown(margins.max_complementary_sensitivity):>7}"
-            f"{_with_unit(_shown(margins.crossover_rad_per_s), 'rad/s'):>16}"
-            f"{_with_unit(_shown(margins.bandwidth_rad_per_s), 'rad/s'):>16}{state}"
+            f"{shown(margins.max_sensitivity):>7}{shown(margins.max_complementary_sensitivity):>7}"
+            f"{_with_unit(shown(margins.crossover_rad_per_s), 'rad/s'):>16}"
+            f"{_with_unit(shown(margins.bandwidth_rad_per_s), 'rad/s'):>16}{state}"
         )
     sampled = [margins.sampled for margins in dynamics.margins]
     if any(sampled):
@@ -152,7 +155,7 @@ def _chain_lines(dynamics: ChainDynamics, comparison: Comparison | NotSimulated)
     )
     levels = list(zip(chain.levels, dynamics.margins, strict=True))
     lines.extend(
-        f"speed ratio of the crossovers, {inner.loop.tag} over {outer.loop.tag}: {_shown(speed_ratio(fast, slow))}"
+        f"speed ratio of the crossovers, {inner.loop.tag} over {outer.loop.tag}: {shown(speed_ratio(fast, slow))}"
         for (outer, slow), (inner, fast) in pairwise(reversed(levels))
     )
     sources = [f"{tag} {source}" for tag, source in _model_sources(chain).items()]
@@ -177,22 +180,14 @@ def _model_sources(chain: Chain) -> dict[str, str]:
 def _scenario_lines(comparison: Comparison) -> Iterator[str]:
     own = measured_range(comparison.dynamics.chain.lead)
     unit = own.unit.symbol
-    heads = (
-        f"{f'peak, {unit}':>14}{'at, s':>9}{f'IAE, {unit} s':>16}{'settling, s':>14}{'overshoot, %':>14}"
-        f"{'valve travel, %':>17}{'turns':>7}"
-    )
     width = max(24, *(len(entry.scenario.name) + 2 for entry in comparison.scenarios))
-    yield f"{'upset':{width}}{'':16}{heads}"
+    yield f"{'upset':{width}}{'':16}{metric_heads(unit)}"
     for entry in comparison.scenarios:
         rows = [("as tuned", entry.tuned)] + ([("single", entry.single)] if entry.single else [])
         for name, response in rows:
-            metrics = response.metrics
-            per_pct = own.span / 100.0
             yield (
                 f"{entry.scenario.name if name == 'as tuned' else '':{width}}{name:16}"
-                f"{_shown(metrics.peak_pct * per_pct):>14}{_peak_time(entry.peak_time_s(response)):>9}"
-                f"{_shown(metrics.iae_pct_s * per_pct, 4):>16}{_shown(metrics.settling_s, 4):>14}"
-                f"{_shown(metrics.overshoot_pct):>14}{_shown(metrics.valve_travel_pct):>17}{metrics.reversals:>7}"
+                f"{metric_cells(response.metrics, own, entry.peak_time_s(response))}"
             )
         if entry.single:
             peak, iae, settling = (_ratio(entry.ratio(of)) for of in RATIOS.values())
@@ -214,12 +209,12 @@ def _upsets_told(comparison: Comparison) -> Iterator[str]:
                 continue
             limited = abs(made - entry.scenario.setpoint_step_pct) > 1e-9
             yield (
-                f"setpoint step: {_shown(made)} % of span, {_shown(made * own.span / 100.0)} {own.unit.symbol}"
+                f"setpoint step: {shown(made)} % of span, {shown(made * own.span / 100.0)} {own.unit.symbol}"
                 f"{', as far as the setpoint limit allows' if limited else ''}"
             )
     yield (
-        f"other upsets that the register does not declare: a step of {_shown(UPSET_PCT)} % of span at that "
-        f"measurement, through the lags of its process, or a load of {_shown(UPSET_PCT)} % at the input of an "
+        f"other upsets that the register does not declare: a step of {shown(UPSET_PCT)} % of span at that "
+        f"measurement, through the lags of its process, or a load of {shown(UPSET_PCT)} % at the input of an "
         "integrating one"
     )
     yield (
@@ -229,7 +224,7 @@ def _upsets_told(comparison: Comparison) -> Iterator[str]:
     for entry, tag, travel_pct in comparison.at_limit:
         yield (
             f"{entry.scenario.name}: does not settle, since the output of {tag} stands at its limit, with "
-            f"{comparison.dynamics.chain.final_element.tag} at {_shown(travel_pct)} %: from the middle of its limits "
+            f"{comparison.dynamics.chain.final_element.tag} at {shown(travel_pct)} %: from the middle of its limits "
             "the upset is more than it can make good"
         )
     if any(
@@ -239,18 +234,10 @@ def _upsets_told(comparison: Comparison) -> Iterator[str]:
         yield f"IAE ∞: an offset stays, since {comparison.dynamics.chain.lead.tag} has no reset"
 
 
-def _peak_time(seconds: float) -> str:
-    return "-" if math.isnan(seconds) else _shown(seconds)
-
-
 def _with_unit(figure: str, symbol: str) -> str:
     """A figure with its unit, which what is told in words, or is infinite, has none of."""
     return f"{figure} {symbol}" if figure[-1].isdigit() else figure
 
 
 def _ratio(value: float | None) -> str:
-    return "-" if value is None else _shown(value)
-
-
-def _shown(value: float, significant: int = 3) -> str:
-    return "none" if math.isnan(value) else display_number(value, significant)
+    return "-" if value is None else shown(value)

@@ -67,11 +67,11 @@ def panels(
         (language.label("single loop"), "dashed", entry.single),
     ):
         if response is not None:
-            curves.append(Curve(name, style, *_xy(response, _eu_curve(response.measurement_pct[-1], own), divisor)))
+            curves.append(Curve(name, style, *_xy(response, in_units(response.measurement_pct[-1], own), divisor)))
             valves.append(Curve(name, style, *_xy(response, response.travel_pct, divisor)))
     above = Panel(
         _short_name(comparison, entry, language), "", f"{lead.tag}, {language.unit(own.unit.display)}", tuple(curves),
-        tuple(_limits(plant, lead, own, language)),
+        tuple(loop_limits(plant, lead, own, language)),
     )  # fmt: skip
     below = Panel(
         "", language.panel_time(time_unit), f"{chain.final_element.tag}, %", tuple(valves),
@@ -80,7 +80,7 @@ def panels(
     return above, below
 
 
-def _limits(plant: Plant, lead: ControlledLoop, own: Range, language: Language) -> Iterator[Limit]:
+def loop_limits(plant: Plant, lead: ControlledLoop, own: Range, language: Language) -> Iterator[Limit]:
     """The alarms of the outermost loop, and the trips on what it measures."""
     for kind, alarm in lead.loop.alarms.items():
         if kind in ALARM_ORDER:
@@ -163,10 +163,11 @@ def _in_words(comparison: Comparison, entry: ScenarioResponses, language: Langua
 def _setpoint(response: Response, own: Range) -> FloatArray:
     setpoint = response.setpoint_pct[-1]
     assert setpoint is not None
-    return _eu_curve(setpoint, own)
+    return in_units(setpoint, own)
 
 
-def _eu_curve(percent: FloatArray, own: Range) -> FloatArray:
+def in_units(percent: FloatArray, own: Range) -> FloatArray:
+    """Percent of a range in its unit."""
     return own.low + percent * own.span / 100.0
 
 
