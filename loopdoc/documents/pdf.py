@@ -45,6 +45,7 @@ _UA_MARK = b"""\
 
 _VOID = re.compile(r"<((?:br|col|hr|img|link|meta)\b[^<>]*?)/?>")
 """Elements without an end in HTML; text has no bare angle bracket, and attributes of ours have none either."""
+_INLINE = ("a", "b", "span")
 
 
 @dataclass(frozen=True, slots=True)
@@ -159,6 +160,8 @@ def _parsed(html: str, fetcher: Any) -> Any:
         tree = _tree(html)
     except ElementTree.ParseError:  # a template of the site's own, which browsers forgive
         return weasyprint.HTML(string=html, url_fetcher=fetcher)
+    for element in list(tree.iter()):
+        _set_space_apart(element)
     page = weasyprint.HTML(string="<title></title>", url_fetcher=fetcher)
     page.etree_element = tree
     page.wrapper_element = type(page.wrapper_element).from_html_root(tree, content_language=None)
@@ -187,6 +190,25 @@ def _tree(html: str) -> ElementTree.Element:
                 parts.append(body)
         table[:] = parts
     return tree
+
+
+def _set_space_apart(element: ElementTree.Element) -> None:
+    """Give the space before an inline element an element of its own.
+
+    WeasyPrint 70 breaks a text after its first word where all of it fits the line but for the space at its end.
+    """
+    before: ElementTree.Element | None = None
+    for child in list(element):
+        text = (element.text if before is None else before.tail) or ""
+        if child.tag in _INLINE and text.endswith(" ") and not text.isspace():
+            if before is None:
+                element.text = text[:-1]
+            else:
+                before.tail = text[:-1]
+            space = ElementTree.Element("span")
+            space.text = " "
+            element.insert(list(element).index(child), space)
+        before = child
 
 
 def _finish(pdf: Any, enclosures: Sequence[Enclosure]) -> None:
