@@ -12,6 +12,7 @@ from loopdoc.documents.titleblock import Document, document
 from loopdoc.engineering.comparison import Comparison, NotSimulated, compare
 from loopdoc.engineering.dynamics import ChainDynamics, Dynamics
 from loopdoc.engineering.pairing import Plant
+from loopdoc.engineering.split_range import SplitRange, split_range
 from loopdoc.engineering.time_to_act import TimeToAct
 from loopdoc.register.load import Loaded
 from loopdoc.register.records import LoopRecord
@@ -39,7 +40,8 @@ class Basis:
     times: TimeToAct = field(init=False)
     """From alarm to trip under each upset, calculated at the first question."""
     _compared: dict[ChainDynamics, Comparison | NotSimulated] = field(default_factory=dict, repr=False)
-    _drawn: dict[tuple[ChainDynamics, str], str] = field(default_factory=dict, repr=False)
+    _split: dict[str, SplitRange | NotSimulated | None] = field(default_factory=dict, repr=False)
+    _drawn: dict[tuple[object, str], str] = field(default_factory=dict, repr=False)
     _pages: dict[str, tuple[Page, ...]] = field(default_factory=dict, repr=False)
 
     def __post_init__(self) -> None:
@@ -70,6 +72,19 @@ class Basis:
                 self._drawn[key] = self.against.drawn(twin, draw, language)
             else:
                 self._drawn[key] = draw(comparison) if isinstance(comparison, Comparison) else ""
+        return self._drawn[key]
+
+    def split_range(self, tag: str) -> SplitRange | NotSimulated | None:
+        """Responses of the split range below a loop as a whole, simulated once; None where there is none below it."""
+        if tag not in self._split:
+            self._split[tag] = split_range(self.dynamics.loop(tag).chains)
+        return self._split[tag]
+
+    def drawn_split(self, split: SplitRange, draw: Callable[[SplitRange], str], language: Language = ENGLISH) -> str:
+        """The figure of a split range as a whole, drawn once for all documents."""
+        key = split, language.code
+        if key not in self._drawn:
+            self._drawn[key] = draw(split)
         return self._drawn[key]
 
     def _unchanged(self, chain: ChainDynamics) -> ChainDynamics | None:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from typing import Any
 
 from loopdoc.documents.basis import Basis, Page
@@ -14,6 +14,7 @@ from loopdoc.documents.page_fit import foot
 from loopdoc.documents.plots import to_svg
 from loopdoc.documents.responses.frequency_plot import frequency_caption, frequency_drawing
 from loopdoc.documents.responses.response_figure import caption, figure, whole_caption
+from loopdoc.documents.responses.split_range_story import split_caption, split_figure, split_section, split_told
 from loopdoc.documents.responses.upset_story import declared_upsets, single_loop_assumption, told_of, upset_name
 from loopdoc.documents.values import DASH, shown
 from loopdoc.documents.view import Figure
@@ -22,6 +23,7 @@ from loopdoc.engineering.comparison import Comparison, NotSimulated
 from loopdoc.engineering.dynamics import ChainDynamics
 from loopdoc.engineering.functions import fed_by
 from loopdoc.engineering.pairing import Plant, Scheme
+from loopdoc.engineering.split_range import SplitRange
 from loopdoc.engineering.stages import measured_range
 from loopdoc.engineering.tuning_review import NotReviewed, TuningReview, review
 from loopdoc.engineering.tuning_table import CAUTION, Wanted, legend, tuning_table
@@ -42,21 +44,49 @@ def supplements(basis: Basis) -> dict[str, Supplement]:
     """For the narrative, by the lead of each scheme: what its cascades gain, and how it answers upsets."""
     found = {}
     for scheme in basis.plant.schemes:
-        all_chains = [basis.comparison(chain) for chain in scheme_chains(basis, scheme)]
+        chains, language = scheme_chains(basis, scheme), basis.language
+        splits = split_ranges(basis, chains)
+        whole = {dynamics for split in splits for dynamics in split.chains}
+        all_chains = [basis.comparison(chain) for chain in chains]
         compared = [comparison for comparison in all_chains if isinstance(comparison, Comparison)]
+        # Of a split range the whole is told, which its branches are parts of.
+        alone = [one for one in compared if one.dynamics not in whole]
         if compared:
+            branches = [one for one in compared if one.dynamics in whole]
             found[scheme.lead.tag] = Supplement(
-                " ".join(told for comparison in compared for told in told_of(comparison, basis.language) if told),
-                tuple(
-                    Figure(_drawn(basis, one.dynamics, basis.language), whole_caption(one, basis.language))
-                    for one in compared
+                _benefit(alone, splits, branches, language),
+                (
+                    *(Figure(_drawn(basis, one.dynamics, language), whole_caption(one, language)) for one in alone),
+                    *(Figure(_drawn_split(basis, one, language), split_caption(one, language)) for one in splits),
                 ),
             )
     return found
 
 
+def _benefit(
+    alone: Sequence[Comparison], splits: Sequence[SplitRange], branches: Sequence[Comparison], language: Language
+) -> str:
+    """What is told of the responses of a scheme: its chains, its split ranges, and what is declared to upset these."""
+    told = [sentence for comparison in alone for sentence in told_of(comparison, language)]
+    told += [split_told(split, language) for split in splits]
+    # A disturbance stands on every branch alike, and is told once.
+    told += dict.fromkeys(declared_upsets(one.dynamics, one, language) for one in branches)
+    return " ".join(filter(None, told))
+
+
 def _drawn(basis: Basis, dynamics: ChainDynamics, language: Language = ENGLISH) -> str:
     return basis.drawn(dynamics, lambda comparison: to_svg(figure(basis.plant, comparison, language)), language)
+
+
+def _drawn_split(basis: Basis, split: SplitRange, language: Language = ENGLISH) -> str:
+    return basis.drawn_split(split, lambda one: to_svg(split_figure(basis.plant, one, language)), language)
+
+
+def split_ranges(basis: Basis, chains: Sequence[ChainDynamics]) -> list[SplitRange]:
+    """The split ranges among the chains of a scheme, each as a whole, where they can be simulated."""
+    leads = dict.fromkeys(dynamics.chain.lead.tag for dynamics in chains)
+    wholes = (basis.split_range(tag) for tag in leads)
+    return [whole for whole in wholes if isinstance(whole, SplitRange)]
 
 
 def scheme_chains(basis: Basis, scheme: Scheme) -> list[ChainDynamics]:
@@ -87,6 +117,7 @@ def _page(basis: Basis, scheme: Scheme, chains: list[ChainDynamics]) -> Page:
     )
     view = {
         "sections": [section(basis, chain, several=len(chains) > 1) for chain in chains],
+        "splits": [split_section(split, _drawn_split(basis, split)) for split in split_ranges(basis, chains)],
         **review_section(basis, scheme),
         "foot": foot(document),
     }

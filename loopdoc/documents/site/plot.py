@@ -9,10 +9,12 @@ import numpy as np
 
 from loopdoc.documents.plots import Curve, Panel
 from loopdoc.documents.responses.response_figure import panels
+from loopdoc.documents.responses.split_range_story import split_panels, split_upset
 from loopdoc.documents.responses.upset_story import upset_name
 from loopdoc.engineering.comparison import Comparison
 from loopdoc.engineering.pairing import Plant
 from loopdoc.engineering.process import FloatArray
+from loopdoc.engineering.split_range import SplitRange
 
 TOLERANCE = 0.001
 """Largest distance of the points left out from the line drawn, as a share of the height of the panel's curves."""
@@ -30,6 +32,20 @@ def plot_data(plant: Plant, comparison: Comparison) -> dict[str, Any]:
                 "panels": [_panel(panel) for panel in panels(plant, comparison, entry)],
             }
             for entry in comparison.scenarios
+        ],
+    }
+
+
+def split_plot_data(plant: Plant, split: SplitRange) -> dict[str, Any]:
+    """The responses of a split range as a whole, likewise."""
+    return {
+        "tag": split.lead.tag,
+        "upsets": [
+            {
+                "name": split_upset(split, response),
+                "panels": [_panel(panel) for panel in split_panels(plant, split, response)],
+            }
+            for response in split.responses
         ],
     }
 

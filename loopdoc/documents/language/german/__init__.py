@@ -3,11 +3,12 @@
 from __future__ import annotations
 
 from loopdoc.documents.language.english import English
+from loopdoc.documents.language.german.branching import GermanBranching
 from loopdoc.documents.language.german.dynamics import GermanDynamics
 from loopdoc.documents.language.german.protection import GermanProtection
 from loopdoc.documents.language.german.scheme import GermanScheme
 from loopdoc.documents.language.german.sheet import GermanSheet
 
 
-class German(GermanScheme, GermanProtection, GermanDynamics, GermanSheet, English):
+class German(GermanScheme, GermanProtection, GermanDynamics, GermanBranching, GermanSheet, English):
     """German."""

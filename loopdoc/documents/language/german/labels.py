@@ -139,6 +139,7 @@ LABELS = {
     "cascade": "Kaskade",
     "single loop": "einschleifig",
     "as tuned": "wie eingestellt",
+    "opening": "Öffnung",
     "Setpoint step": "Sollwertsprung",
     # loop sheet
     "Identification": "Kennzeichnung",
