@@ -62,6 +62,10 @@ loops:
       filter: 2 s
       tolerance: 0.3 degC
       channel: AI-2-07
+      supply: 24 V DC over the signal pair
+      wiring:
+        - {cable: IC-2014, at: JB-2001, terminals: [5, 6, "6S"]}
+        - {cable: MC-20-01, pair: 1, at: MP-02, terminals: {hold: awaiting the cabinet's drawing}}
     operating: {low: 80 degC, normal: 84.5 degC, high: 90 degC}
     controller:
       action: reverse
@@ -107,11 +111,13 @@ loops:
 final_elements:
   FV-2011: {unit: "20", kind: control valve, service: Reboiler steam, drawing: D-20-103, opens_on: rising signal,
             output_block: direct, fails: closed, safe: closed, signal: 4-20 mA, channel: AO-1-03,
+            supply: instrument air 4 barg, wiring: [{cable: {hold: cable list}, pair: "cores 7, 8", at: MP-03}],
+            trip_solenoid: {tag: FY-2011, channel: SDO-1-01, supply: 24 V DC, wiring: {hold: vendor package}},
             characteristic: equal percentage, stroke_time: 6 s, backlash: 0.5 %, resolution: 0.2 %}
 instruments:
   PT-2021A: {unit: "20", service: Column pressure, variable: pressure, sensor: diaphragm, element: tapping,
              characteristic: linear, range: 0 to 2.5 barg, signal: 4-20 mA, on_fault: reads high, filter: 1 s,
-             tolerance: 0.5 %, channel: SI-1-01}
+             tolerance: 0.5 %, channel: SI-1-01, supply: 24 V DC, wiring: [{cable: IC-2021A, at: SP-01}]}
 functions:
   FY-2031: {kind: ratio, unit: "20", service: Reflux to feed ratio, inputs: [FT-2001], to: FIC-2031,
             span: 0.2 to 0.8, normal: 0.45}
@@ -300,6 +306,8 @@ CLASSES = {
     "final_element": model.FinalElement,
     "function": model.Function,
     "curve_point": model.CurvePoint,
+    "connection": model.Connection,
+    "trip_solenoid": model.TripSolenoid,
     "initiator": model.Initiator,
     "action": model.InterlockAction,
     "bypass": model.Bypass,

@@ -16,7 +16,6 @@ from typing import Any, TypeVar, Union, cast, get_args, get_origin, get_type_hin
 from loopdoc.register.files import ROOT_NAME, Files, FolderFiles, included, located, read_file
 from loopdoc.register.model import (
     Alarm,
-    CurvePoint,
     Deviation,
     Disturbance,
     FinalElement,
@@ -146,8 +145,8 @@ def _unreadable(place: Place, message: str, remedy: str, sources: Mapping[str, b
 
 
 @cache
-def _field_types(part: type[Any]) -> tuple[tuple[str, type, bool], ...]:
-    """For each field of a part that is read by its type alone: name, type, whether it may be a list."""
+def _field_types(part: type[Any]) -> tuple[tuple[str, type, bool, bool], ...]:
+    """For each field of a part that is read by its type alone: name, type, whether it is a list and may be held."""
     hints = get_type_hints(part)
     found = []
     for entry in fields(part):
@@ -157,11 +156,11 @@ def _field_types(part: type[Any]) -> tuple[tuple[str, type, bool], ...]:
         members = [hint]
         if get_origin(hint) in (Union, UnionType):
             members = [member for member in get_args(hint) if member not in (type(None), Hold)]
-        kind = members[0]
+        kind, may_be_held = members[0], Hold in get_args(hint)
         if kind in (str, float, bool, Quantity, Range, Gain) or (isinstance(kind, type) and issubclass(kind, Part)):
-            found.append((entry.name, kind, False))
-        elif get_origin(kind) is tuple and get_args(kind)[0] is str:
-            found.append((entry.name, str, True))
+            found.append((entry.name, kind, False, may_be_held))
+        elif get_origin(kind) is tuple and (get_args(kind)[0] is str or issubclass(get_args(kind)[0], Part)):
+            found.append((entry.name, get_args(kind)[0], True, may_be_held))
     return tuple(found)
 
 
@@ -196,9 +195,9 @@ class _Reader:
         if kind is float:
             return float(value) if isinstance(value, int | float) and not isinstance(value, bool) else _UNREADABLE
         if kind is str:
-            # A word that the schema does not know is refused.
-            refused = origin.source.name in self._faulty and origin.place(*steps) in self._told
-            return value if isinstance(value, str) and not refused else _UNREADABLE
+            # A mark, such as the number of a pair, may be a whole number; a word not known to the schema is refused.
+            is_word = isinstance(value, str) or type(value) is int
+            return str(value) if is_word and not self._refused(origin, *steps) else _UNREADABLE
         if kind is bool:
             return value if isinstance(value, bool) else False
         return self._part(Origin(origin.source, (*origin.path, *steps)), value, kind)
@@ -210,13 +209,13 @@ class _Reader:
             return Hold(str(value["hold"]))
         read: dict[str, Any] = {}
         # mypy takes a class for unhashable where it cannot tell whether its instances are.
-        for name, inner, many in _field_types(cast("Hashable", part)):
+        for name, inner, many, may_be_held in _field_types(cast("Hashable", part)):
             if name in given:
                 continue
             written = value.get(name)
             if many:
-                items = written if isinstance(written, list) else []
-                read[name] = tuple(item for item in items if isinstance(item, str))
+                found = () if written is None else self._list(origin, name, written, inner)
+                read[name] = found if may_be_held or isinstance(found, tuple) else ()
             elif written is None:  # as most are
                 read[name] = False if inner is bool else None
             else:
@@ -224,6 +223,10 @@ class _Reader:
                 if inner is bool:
                     read[name] = bool(read[name])
         return part(origin=origin, **read, **given)
+
+    def _refused(self, origin: Origin, *steps: str | int) -> bool:
+        """Whether the schema refuses a value."""
+        return origin.source.name in self._faulty and origin.place(*steps) in self._told
 
     def _fault(self, origin: Origin, steps: tuple[str | int, ...], message: str, remedy: str) -> None:
         place = origin.place(*steps)
@@ -237,6 +240,21 @@ class _Reader:
         if isinstance(section, dict) and "hold" not in section:
             for key, entry in section.items():
                 yield key, entry, Origin(origin.source, (*origin.path, name, key))
+
+    def _list(self, origin: Origin, name: str, written: Any, kind: type) -> tuple[Any, ...] | Hold:
+        """A list of texts or parts; a hold where it, or one of its parts, is not known."""
+        if isinstance(written, dict) and "hold" in written:
+            return Hold(str(written["hold"]))
+        if not isinstance(written, list):
+            return _UNREADABLE  # the schema has said so
+        if kind is str:
+            marks = ((at, item) for at, item in enumerate(written) if isinstance(item, str) or type(item) is int)
+            return tuple(
+                str(mark) for at, mark in marks if isinstance(mark, str) or not self._refused(origin, name, at)
+            )
+        within = (*origin.path, name)
+        parts = [self._part(Origin(origin.source, (*within, at)), entry, kind) for at, entry in enumerate(written)]
+        return next((part for part in parts if isinstance(part, Hold)), tuple(parts))
 
     # -- parts with more than plain fields
 
@@ -303,26 +321,8 @@ class _Reader:
             weights=weights,
             outputs=outputs,
             span=self._ratio_span(origin, value),
-            curve=self._curve(origin, value),
         )
         return function if isinstance(function, Function) else None
-
-    def _curve(self, origin: Origin, value: Any) -> tuple[CurvePoint, ...] | Hold:
-        """The points of a characteriser's curve; a hold where one of them is not known."""
-        written = value.get("curve")
-        if written is None:
-            return ()
-        if isinstance(written, dict) and "hold" in written:
-            return Hold(str(written["hold"]))
-        if not isinstance(written, list):
-            return _UNREADABLE
-        points = []
-        for index, entry in enumerate(written):
-            point = self._part(Origin(origin.source, (*origin.path, "curve", index)), entry, CurvePoint)
-            if isinstance(point, Hold):
-                return point
-            points.append(point)
-        return tuple(points)
 
     def _ratio_span(self, origin: Origin, value: Any) -> Range | Hold | None:
         """The span of a ratio setting: two numbers, as a rule without a unit."""

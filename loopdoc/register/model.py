@@ -62,6 +62,23 @@ class Part:
     origin: Origin = field(repr=False, compare=False)
 
 
+# ---------------------------------------------------------------- wiring
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Connection(Part):
+    """One cable on the way from a field device to the control system, and the terminals on which it ends."""
+
+    cable: str | Hold | None
+    """The cable that arrives from the side of the field."""
+    pair: str | Hold | None
+    """Which pair, triad or cores of that cable."""
+    at: str | Hold | None
+    """The junction box or cabinet in which the cable ends."""
+    terminals: tuple[str, ...] | Hold
+    """The terminals there, in the order plus, minus, screen; empty where not given."""
+
+
 # ---------------------------------------------------------------- measurements
 
 
@@ -89,6 +106,10 @@ class Measurement(Part):
     tolerance: Quantity | Hold | None
     """Largest error that a loop check accepts: percent of span, or a difference in a unit of the range."""
     channel: str | Hold | None
+    supply: str | Hold | None
+    """Energy source of the transmitter, with its voltage or pressure."""
+    wiring: tuple[Connection, ...] | Hold
+    """From the transmitter to the control system; empty where not given."""
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -268,6 +289,18 @@ class Loop(Part):
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
+class TripSolenoid(Part):
+    """The solenoid valve that takes the air from an actuator when an interlock trips."""
+
+    tag: str | Hold | None
+    channel: str | Hold | None
+    supply: str | Hold | None
+    """Energy source of its coil, with the voltage."""
+    wiring: tuple[Connection, ...] | Hold
+    """From the solenoid valve to the control system; empty where not given."""
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
 class FinalElement(Part):
     """What an output moves: valve, drive, heater bank."""
 
@@ -287,6 +320,11 @@ class FinalElement(Part):
     """Where the hazard study wants it: closed, open, last, stopped."""
     signal: str | Hold | None
     channel: str | Hold | None
+    supply: str | Hold | None
+    """Energy source of the actuator, with its pressure or voltage."""
+    wiring: tuple[Connection, ...] | Hold
+    """From the final element to the control system; empty where not given."""
+    trip_solenoid: TripSolenoid | Hold | None
     characteristic: str | Hold | None
     """Inherent characteristic: linear, equal percentage, quick opening."""
     stroke_time: Quantity | Hold | None
@@ -533,6 +571,17 @@ class Register:
         return found
 
     @cached_property
+    def solenoids(self) -> dict[str, TripSolenoid]:
+        """Every trip solenoid that has a tag, by it."""
+        found: dict[str, TripSolenoid] = {}
+        for element in self.final_elements.values():
+            solenoid = known(element.trip_solenoid)
+            tag = solenoid and known(solenoid.tag)
+            if solenoid and tag:
+                found.setdefault(tag, solenoid)
+        return found
+
+    @cached_property
     def held(self) -> dict[str, frozenset[tuple[str | int, ...]]]:
         """Paths under each tag that are on hold; tells a mapping on hold from one that is not given."""
         found: dict[str, set[tuple[str | int, ...]]] = {}
@@ -548,5 +597,7 @@ class Register:
         for section in sections:
             if tag in section:
                 return section[tag].origin.key()
-        measurement = self.measurements.get(tag)
-        return measurement.origin.place("transmitter") if measurement else None
+        measurement, solenoid = self.measurements.get(tag), self.solenoids.get(tag)
+        if measurement:
+            return measurement.origin.place("transmitter")
+        return solenoid.origin.place("tag") if solenoid else None

@@ -103,6 +103,7 @@ from loopdoc.rules.tags import reference_unknown, tag_duplicate, tag_grammar
 from loopdoc.rules.text import schema, text_tag_unknown
 from loopdoc.rules.tuning import tuning_invalid
 from loopdoc.rules.units import unit_incompatible
+from loopdoc.rules.wiring import cable_ends_differ, cable_pair_duplicate, terminal_duplicate
 
 RULES: tuple[Rule, ...] = (
     # text
@@ -116,6 +117,10 @@ RULES: tuple[Rule, ...] = (
     text_tag_unknown,
     channel_duplicate,
     channel_signal_mismatch,
+    # wiring
+    terminal_duplicate,
+    cable_pair_duplicate,
+    cable_ends_differ,
     # ranges
     range_reversed,
     unit_incompatible,

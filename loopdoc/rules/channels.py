@@ -7,7 +7,18 @@ from collections.abc import Iterator
 from dataclasses import dataclass
 
 from loopdoc.engineering.pairing import Plant
-from loopdoc.register.model import FinalElement, Instrument, Loop, Measurement, Part, known
+from loopdoc.register.model import (
+    Connection,
+    FinalElement,
+    Hold,
+    Instrument,
+    Loop,
+    Measurement,
+    Part,
+    Register,
+    TripSolenoid,
+    known,
+)
 from loopdoc.rules.finding import Level
 from loopdoc.rules.rule import Draft, draft, need, only_if, rule
 
@@ -31,23 +42,47 @@ _WORD = re.compile(r"(?<![A-Za-z])S?(AI|AO|DI|DO)(?![A-Za-z])")
 
 
 @dataclass(frozen=True, slots=True)
-class _Channel:
-    """A channel as one part of the register names it."""
+class Wired:
+    """A device of the field that is wired to the control system."""
 
     tag: str
-    """The transmitter or final element that is wired to it."""
-    written: str
+    """Of the transmitter, final element or solenoid valve."""
+    channel: str | None
     signal: str | None
+    wiring: tuple[Connection, ...]
     part: Part
+    """Where its channel and its wiring are written."""
 
 
-def _channel(part: Loop | Instrument | FinalElement) -> _Channel | None:
-    holder = part if isinstance(part, FinalElement) else known(part.measurement)
-    written = known(holder.channel) if holder else None
-    if holder is None or written is None:
+def wired(part: Loop | Instrument | FinalElement | TripSolenoid, tag: str) -> Wired | None:
+    """What is wired of one part of the register; None where that is not known."""
+    holder = known(part.measurement) if isinstance(part, Loop | Instrument) else part
+    if holder is None:
         return None
     transmitter = known(holder.transmitter) if isinstance(holder, Measurement) else None
-    return _Channel(transmitter or part.tag, written, known(holder.signal), holder)
+    # A solenoid valve has its coil on a contact.
+    signal = "contact" if isinstance(holder, TripSolenoid) else known(holder.signal)
+    wiring = () if isinstance(holder.wiring, Hold) else holder.wiring
+    return Wired(transmitter or tag, known(holder.channel), signal, wiring, holder)
+
+
+def all_wired(register: Register) -> Iterator[Wired]:
+    """Everything that is wired, in the order of the register's sections; a shared transmitter once for each loop."""
+    for section in (register.loops, register.instruments, register.final_elements, register.solenoids):
+        for tag, part in section.items():
+            found = wired(part, tag)
+            if found is not None:
+                yield found
+
+
+def share_a_bus(one: Wired, other: Wired) -> bool:
+    """Whether two devices may share a channel and its wires: one device itself, or several on one bus."""
+    return one.tag == other.tag or one.signal == other.signal == "digital"
+
+
+def plain(written: str) -> str:
+    """A name as names are compared: without regard to case and spacing."""
+    return " ".join(written.split()).casefold()
 
 
 @rule(level=Level.ERROR, source="common practice: one signal, one channel")
@@ -59,26 +94,22 @@ def channel_duplicate(plant: Plant) -> Iterator[Draft]:
     Breaks:
         TT-2014 and FT-2011 both with `channel: AI-2-07`.
     Holds:
-        Each channel has one transmitter or one final element. Loops that share a transmitter share its channel.
-        Digital signals may share one: several devices hang on one bus.
+        Each channel has one transmitter, one final element or one trip solenoid. Loops that share a transmitter
+        share its channel. Digital signals may share one: several devices hang on one bus.
     What this check cannot see:
         One channel written in two ways, such as `AI-2-07` and `AI-2-7`.
     """
-    register = plant.register
-    first: dict[str, _Channel] = {}
-    for section in (register.loops, register.instruments, register.final_elements):
-        for part in section.values():
-            channel = _channel(part)
-            if channel is None:
-                continue
-            other = first.setdefault(" ".join(channel.written.split()).casefold(), channel)
-            if other.tag == channel.tag or channel.signal == other.signal == "digital":
-                continue
+    first: dict[str, Wired] = {}
+    for device in all_wired(plant.register):
+        if device.channel is None:
+            continue
+        other = first.setdefault(plain(device.channel), device)
+        if not share_a_bus(device, other):
             yield draft(
-                channel.tag,
-                f"it is put on channel {channel.written}, on which {other.tag} is already",
+                device.tag,
+                f"it is put on channel {device.channel}, on which {other.tag} is already",
                 remedy="write the channel to which it is wired",
-                at=channel.part.origin.place("channel"),
+                at=device.part.origin.place("channel"),
                 related=((other.part.origin.place("channel"), f"the channel of {other.tag}"),),
             )
 
@@ -99,28 +130,42 @@ def channel_signal_mismatch(part: Loop | Instrument | FinalElement) -> Iterator[
     What this check cannot see:
         What the hardware behind the name is.
     """
-    channel = _channel(part)
-    kinds = set(_WORD.findall(channel.written)) if channel else set()
-    only_if(len(kinds) == 1)
-    assert channel is not None
-    (kind,) = kinds
+    solenoid = known(part.trip_solenoid) if isinstance(part, FinalElement) else None
+    tag = known(solenoid.tag) if solenoid else None
+    devices = (wired(part, part.tag), wired(solenoid, tag or part.tag) if solenoid else None)
+    judged = [(device, kind) for device in devices if device and (kind := _kind(device.channel))]
+    only_if(bool(judged))
+    for device, kind in judged:
+        yield from _mismatch(device, kind)
+
+
+def _kind(channel: str | None) -> str:
+    """AI, AO, DI or DO where the channel's name says one of them."""
+    kinds = set(_WORD.findall(channel or ""))
+    return kinds.pop() if len(kinds) == 1 else ""
+
+
+def _mismatch(device: Wired, kind: str) -> Iterator[Draft]:
     told, way, sort = _KINDS[kind]
-    out = isinstance(part, FinalElement)
-    if way != ("out" if out else "in"):
-        what = "it is a final element" if out else "it is a measurement"
+    is_input = isinstance(device.part, Measurement)
+    if way != ("in" if is_input else "out"):
+        what = (
+            "measurement" if is_input else "trip solenoid" if isinstance(device.part, TripSolenoid) else "final element"
+        )
         yield draft(
-            channel.tag,
-            f"{what}, but its channel {channel.written} is {told}",
-            remedy=f"write the {'output' if out else 'input'} to which it is wired",
-            at=channel.part.origin.place("channel"),
+            device.tag,
+            f"it is a {what}, but its channel {device.channel} is {told}",
+            remedy=f"write the {'input' if is_input else 'output'} to which it is wired",
+            at=device.part.origin.place("channel"),
         )
         return
-    signal = need(channel.signal, "the signal")
+    signal = need(device.signal, "the signal")
     if signal in _SORTS and _SORTS[signal] != sort:
+        is_written = not isinstance(device.part, TripSolenoid)
         yield draft(
-            channel.tag,
-            f"its signal is {signal}, but its channel {channel.written} is {told}",
-            remedy="write the channel to which it is wired, or its signal",
-            at=channel.part.origin.place("channel"),
-            related=((channel.part.origin.place("signal"), f"the signal, {signal}"),),
+            device.tag,
+            f"its signal is {signal}, but its channel {device.channel} is {told}",
+            remedy="write the channel to which it is wired" + (", or its signal" if is_written else ""),
+            at=device.part.origin.place("channel"),
+            related=((device.part.origin.place("signal"), f"the signal, {signal}"),) if is_written else (),
         )

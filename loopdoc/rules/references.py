@@ -18,6 +18,10 @@ SECTIONS = ("register", "site", "revision", "history", "texts")
 _SHORT = 4
 
 
+_NAMED_BY = {"transmitter": "transmitter", "trip solenoid": "tag"}
+"""The key under which the tag of a part stands that is no entry of a section."""
+
+
 @dataclass(frozen=True, slots=True)
 class DefinedTag:
     """A tag that the register defines."""
@@ -26,15 +30,16 @@ class DefinedTag:
     what: str
     """What it is, such as `loop` or `transmitter`."""
     part: Part
-    """The part of this tag, or the measurement that names the transmitter."""
+    """The part of this tag, or the measurement or solenoid that has the tag as a value."""
 
     @property
     def place(self) -> Place:
-        return self.part.origin.place("transmitter") if self.what == "transmitter" else self.part.origin.key()
+        key = _NAMED_BY.get(self.what)
+        return self.part.origin.place(key) if key else self.part.origin.key()
 
     @property
     def unit(self) -> str | None:
-        """The unit that the register gives it; None for a transmitter, which has no unit of its own."""
+        """The unit that the register gives it; None for what has no unit of its own."""
         return known(getattr(self.part, "unit", None))
 
 
@@ -117,6 +122,8 @@ def defined_tags(register: Register) -> Iterator[DefinedTag]:
     for tag, measurement in register.measurements.items():
         if tag not in register.instruments:
             yield DefinedTag(tag, "transmitter", measurement)
+    for tag, solenoid in register.solenoids.items():
+        yield DefinedTag(tag, "trip solenoid", solenoid)
 
 
 def what_is(register: Register, tag: str) -> str:
@@ -124,7 +131,9 @@ def what_is(register: Register, tag: str) -> str:
     for what, section in _sections(register):
         if tag in section:
             return what
-    return "transmitter" if tag in register.measurements else ""
+    if tag in register.measurements:
+        return "transmitter"
+    return "trip solenoid" if tag in register.solenoids else ""
 
 
 def references(plant: Plant, rule_ids: Collection[str]) -> Iterator[Reference]:

@@ -79,6 +79,7 @@ def tag_duplicate(plant: Plant) -> Iterator[Draft]:
             at=later,
             related=((first, "the first definition"),),
         )
+    yield from _solenoids_named_twice(plant)
     for transmitter, loops in plant.loops_on.items():
         instrument = plant.register.instruments.get(transmitter)
         first_tag, first_description = (
@@ -89,7 +90,26 @@ def tag_duplicate(plant: Plant) -> Iterator[Draft]:
             yield from _second_description(plant, transmitter, first_tag, first_description, loop)
 
 
-_OF_THE_TRANSMITTER = ("variable", "sensor", "element", "characteristic", "range", "signal", "on_fault", "channel")
+def _solenoids_named_twice(plant: Plant) -> Iterator[Draft]:
+    register = plant.register
+    for element in register.final_elements.values():
+        solenoid = known(element.trip_solenoid)
+        tag = known(solenoid.tag) if solenoid else None
+        if solenoid is None or tag is None:
+            continue
+        first = register.defined_at(tag)
+        if first is not None and first != solenoid.origin.place("tag"):
+            yield draft(
+                tag,
+                f"it is the trip solenoid of {element.tag}, but the tag is that of a {what_is(register, tag)} already",
+                remedy="give the solenoid valve a tag of its own",
+                at=solenoid.origin.place("tag"),
+                related=((first, f"{tag}, the {what_is(register, tag)}"),),
+            )
+
+
+_OF_THE_TRANSMITTER = ("variable", "sensor", "element", "characteristic", "range", "signal", "on_fault", "channel",
+                       "supply")  # fmt: skip
 """What belongs to the device; the filter belongs to each loop."""
 
 
