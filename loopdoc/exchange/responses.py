@@ -10,6 +10,7 @@ from typing import Any
 from loopdoc.engineering.comparison import UPSET_PCT, Comparison, NotSimulated, ScenarioResponses
 from loopdoc.engineering.dynamics import ChainDynamics, LoopDynamics
 from loopdoc.engineering.frequency import speed_ratio
+from loopdoc.engineering.setpoint_steps import steps_told
 from loopdoc.engineering.split_range import SplitRange
 from loopdoc.engineering.stages import Chain, measured_range
 from loopdoc.engineering.tuning_table import CAUTION as REVIEW_CAUTION
@@ -218,9 +219,11 @@ def _upsets_told(comparison: Comparison) -> Iterator[str]:
         "integrating one"
     )
     yield (
-        "settling: to within 2 % of the step that upsets, 0 where that band is never left, ∞ where it is not seen to "
-        "stay; overshoot: beyond the new setpoint, else to the other side in percent of the peak"
+        "settling: to within 2 % of the step that upsets, of the setpoint or, without reset, of the last value; 0 where "
+        "that band is never left, ∞ where it is not seen to stay; overshoot: beyond the new setpoint, else to the other "
+        "side in percent of the peak; turns: of the final element, those that went back by at least 0.1 %"
     )
+    yield from steps_told(comparison.dynamics)
     for entry, tag, travel_pct in comparison.at_limit:
         yield (
             f"{entry.scenario.name}: does not settle, since the output of {tag} stands at its limit, with "
