@@ -1,4 +1,4 @@
-"""Where a loop of a cascade gets its setpoint in steps that it answers one by one, and what the final element does then."""
+"""Where a loop of a cascade gets its setpoint in steps that it answers one by one, and what comes of that."""
 
 from __future__ import annotations
 

@@ -219,9 +219,9 @@ def _upsets_told(comparison: Comparison) -> Iterator[str]:
         "integrating one"
     )
     yield (
-        "settling: to within 2 % of the step that upsets, of the setpoint or, without reset, of the last value; 0 where "
-        "that band is never left, ∞ where it is not seen to stay; overshoot: beyond the new setpoint, else to the other "
-        "side in percent of the peak; turns: of the final element, those that went back by at least 0.1 %"
+        "settling: to within 2 % of the step that upsets, of the setpoint or, without reset, of the last value; 0 "
+        "where that band is never left, ∞ where it is not seen to stay; overshoot: beyond the new setpoint, else to "
+        "the other side in percent of the peak; turns: of the final element, those that went back by at least 0.1 %"
     )
     yield from steps_told(comparison.dynamics)
     for entry, tag, travel_pct in comparison.at_limit:
