@@ -134,9 +134,18 @@ def caption(comparison: Comparison, language: Language = ENGLISH) -> str:
         declared=any(
             entry.scenario.disturbances and entry.scenario.disturbances[0].path for entry in comparison.scenarios
         ),
+        limited=_is_limited(comparison),
         stroke=language.shown(stroke) if stroke else "",
         left_out=[_in_words(comparison, entry, language) for entry in _by_weight(comparison)[COLUMNS:]],
     )
+
+
+def _is_limited(comparison: Comparison) -> bool:
+    """Whether a limit of the setpoint cuts its step short."""
+    step = comparison.scenarios[0]
+    setpoint = step.tuned.setpoint_pct[-1]
+    assert setpoint is not None
+    return float(setpoint[-1]) - comparison.start_pct[-1] < step.scenario.setpoint_step_pct - 1e-9
 
 
 def whole_caption(comparison: Comparison, language: Language = ENGLISH) -> str:

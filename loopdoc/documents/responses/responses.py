@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterator, Sequence
+from itertools import pairwise
 from typing import Any
 
 from loopdoc.documents.basis import Basis, Page
@@ -21,12 +22,21 @@ from loopdoc.documents.view import Figure
 from loopdoc.documents.wording import listed, sentences
 from loopdoc.engineering.comparison import Comparison, NotSimulated
 from loopdoc.engineering.dynamics import ChainDynamics
+from loopdoc.engineering.frequency import speed_ratio
 from loopdoc.engineering.functions import fed_by
 from loopdoc.engineering.pairing import Plant, Scheme
 from loopdoc.engineering.split_range import SplitRange
+from loopdoc.engineering.setpoint_steps import steps_told
 from loopdoc.engineering.stages import measured_range
 from loopdoc.engineering.tuning_review import NotReviewed, TuningReview, review
-from loopdoc.engineering.tuning_table import CAUTION, Wanted, legend, tuning_table
+from loopdoc.engineering.tuning_table import (
+    CAUTION,
+    Wanted,
+    legend,
+    quoted_gain_margin,
+    quoted_phase_margin,
+    tuning_table,
+)
 from loopdoc.register.model import known
 from loopdoc.register.quantity import Range
 from loopdoc.rules.policy import limits_from
@@ -136,7 +146,7 @@ def section(basis: Basis, dynamics: ChainDynamics, *, several: bool) -> dict[str
         "element": path[-1],
         "margins": margin_rows(dynamics),
         "sampled": sampled_note(dynamics),
-        "speed_ratio": number(dynamics.speed_ratio) if dynamics.speed_ratio is not None else "",
+        "speed_ratios": speed_ratios(dynamics),
         "not_simulated": compared.reason if isinstance(compared, NotSimulated) else "",
         "unit": difference_unit(measured_range(chain.lead)),
         "rows": metric_rows(comparison) if comparison else [],
@@ -146,6 +156,7 @@ def section(basis: Basis, dynamics: ChainDynamics, *, several: bool) -> dict[str
         "figure": _drawn(basis, dynamics),
         "caption": caption(comparison) if comparison else "",
         "declared": declared_upsets(dynamics, compared),
+        "stepped": " ".join(steps_told(dynamics)) if comparison else "",
         "held": held_note(basis.plant, dynamics) if comparison else "",
         "assumption": single_loop_assumption(comparison) if comparison else "",
         "frequency_figure": to_svg(frequency_drawing(dynamics)),
@@ -180,17 +191,30 @@ def margin_rows(dynamics: ChainDynamics) -> list[dict[str, str]]:
     return [
         {
             "tag": level.loop.tag,
-            "gain_margin": number(margins.gain_margin),
-            "phase_margin": f"{number(margins.phase_margin_deg)}°",
+            "gain_margin": quoted_gain_margin(margins),
+            "phase_margin": quoted_phase_margin(margins) + ("°" if math.isfinite(margins.phase_margin_deg) else ""),
             "max_sensitivity": number(margins.max_sensitivity),
             "max_complementary": number(margins.max_complementary_sensitivity),
             "crossover": with_unit(margins.crossover_rad_per_s, "rad/s"),
-            "bandwidth": with_unit(margins.bandwidth_rad_per_s, "rad/s"),
+            "bandwidth": "none"
+            if math.isinf(margins.bandwidth_rad_per_s)
+            else with_unit(margins.bandwidth_rad_per_s, "rad/s"),
             "period": duration(2 * math.pi / margins.crossover_rad_per_s),
             "model": shown(known(level.loop.loop.process).source) if known(level.loop.loop.process) else DASH,  # type: ignore[union-attr]
         }
         for level, margins in zip(reversed(dynamics.chain.levels), reversed(dynamics.margins), strict=True)
     ]
+
+
+def speed_ratios(dynamics: ChainDynamics) -> str:
+    """How much faster each secondary is than its primary, the innermost first; empty for a single loop."""
+    levels = list(zip(dynamics.chain.levels, dynamics.margins, strict=True))
+    return listed(
+        [
+            f"{below.loop.tag} over {above.loop.tag} {number(speed_ratio(fast, slow))}"
+            for (below, fast), (above, slow) in pairwise(levels)
+        ]
+    )
 
 
 def sampled_note(dynamics: ChainDynamics) -> str:

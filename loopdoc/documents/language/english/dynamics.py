@@ -54,6 +54,10 @@ class EnglishDynamics(EnglishGrammar):
         """A step of the setpoint."""
         return f"Setpoint of {tag} up by {size}"
 
+    def setpoint_to_limit(self, tag: str, size: str) -> str:
+        """A step of the setpoint that its limit cuts short; ``size`` is empty where it leaves nothing."""
+        return f"Setpoint of {tag} up by {size}, to its limit" if size else f"Setpoint of {tag}, at its limit already"
+
     def declared_at(self, name: str, tag: str) -> str:
         """An upset that the register declares."""
         return f"{upper_first(name)}, declared at {tag}"
@@ -132,14 +136,16 @@ class EnglishDynamics(EnglishGrammar):
         alone: bool,
         integrating: bool,
         declared: bool,
+        limited: bool,
         stroke: str,
         left_out: Sequence[str],
     ) -> str:
         """What a figure shows and under which assumptions; ``left_out`` are the upsets for which it has no room."""
         whose = f"at {lead}" if alone else "at each measurement of the cascade"
         parts = [
-            f"Response of {lead} with {element} to a step of {size} % of span in its setpoint and, through the lags "
-            f"of the process concerned, {whose}"
+            f"Response of {lead} with {element} to a step of {size} % of span in its setpoint"
+            + (", or as far as its limit goes," if limited else "")
+            + f" and, through the lags of the process concerned, {whose}"
             + ("; of an integrating process the upset is at its input." if integrating else "."),
             "Upsets that the register declares come with their own size and lag." if declared else "",
             "Linear models about the normal values, simulated scan by scan as executed, with output limits"

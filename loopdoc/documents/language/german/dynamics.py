@@ -51,6 +51,11 @@ class GermanDynamics(GermanGrammar, EnglishDynamics):
     def setpoint_up(self, tag: str, size: str) -> str:
         return f"Sollwertsprung von {tag} um {size}"
 
+    def setpoint_to_limit(self, tag: str, size: str) -> str:
+        if not size:
+            return f"Sollwertsprung von {tag}, dessen Sollwert schon an seiner Grenze steht"
+        return f"Sollwertsprung von {tag} um {size} bis an seine Grenze"
+
     def declared_at(self, name: str, tag: str) -> str:
         return f"Die Störung {self.quoted(name)} an {tag}"
 
@@ -123,13 +128,15 @@ class GermanDynamics(GermanGrammar, EnglishDynamics):
         alone: bool,
         integrating: bool,
         declared: bool,
+        limited: bool,
         stroke: str,
         left_out: Sequence[str],
     ) -> str:
         whose = f"des Messwerts von {lead}" if alone else "jedes Messwerts der Kaskade"
         parts = [
-            f"Verhalten von {lead} mit {element} bei einem Sprung um {size}{NO_BREAK}% der Messspanne: des Sollwerts "
-            f"und, über die Zeitkonstanten des jeweiligen Prozesses, {whose}"
+            f"Verhalten von {lead} mit {element} bei einem Sprung um {size}{NO_BREAK}% der Messspanne: des Sollwerts"
+            + (" (nur bis an dessen Grenze)" if limited else "")
+            + f" und, über die Zeitkonstanten des jeweiligen Prozesses, {whose}"
             + ("; bei einem integrierenden Prozess greift die Störung an seinem Eingang an." if integrating else "."),
             "Im Register angegebene Störungen haben ihre eigene Größe und Zeitkonstante." if declared else "",
             "Lineare Modelle um die Normalwerte, Abtastung für Abtastung wie ausgeführt simuliert, mit "
