@@ -57,18 +57,23 @@ def panels(
     chain = comparison.dynamics.chain
     lead = chain.lead
     own = measured_range(lead)
-    last = float(entry.tuned.time_s[-1])
+    last = drawn_until_s([response for one in comparison.scenarios for response in (one.tuned, one.single) if response])
     _, divisor, time_unit = next(unit for unit in TIME_UNITS if last >= unit[0])
     name_of_tuned = language.label("cascade" if entry.single else "as tuned")
-    curves = [Curve(language.label("setpoint"), "dotted", *_xy(entry.tuned, _setpoint(entry.tuned, own), divisor))]
+
+    def curve(name: str, style: str, response: Response, values: FloatArray) -> Curve:
+        points = int(np.searchsorted(response.time_s, last, side="right"))
+        return Curve(name, style, np.asarray(response.time_s[:points] / divisor), values[:points])
+
+    curves = [curve(language.label("setpoint"), "dotted", entry.tuned, _setpoint(entry.tuned, own))]
     valves = []
     for name, style, response in (
         (name_of_tuned, "solid", entry.tuned),
         (language.label("single loop"), "dashed", entry.single),
     ):
         if response is not None:
-            curves.append(Curve(name, style, *_xy(response, in_units(response.measurement_pct[-1], own), divisor)))
-            valves.append(Curve(name, style, *_xy(response, response.travel_pct, divisor)))
+            curves.append(curve(name, style, response, in_units(response.measurement_pct[-1], own)))
+            valves.append(curve(name, style, response, response.travel_pct))
     above = Panel(
         _short_name(comparison, entry, language), "", f"{lead.tag}, {language.unit(own.unit.display)}", tuple(curves),
         tuple(loop_limits(plant, lead, own, language)),
@@ -78,6 +83,21 @@ def panels(
         tuple(_travel_limits(chain, language)),
     )  # fmt: skip
     return above, below
+
+
+def drawn_until_s(responses: Sequence[Response]) -> float:
+    """How long responses are drawn, all alike [s]: a quarter longer than any of them moves, or as long as they last.
+
+    They move while they are off their last value by more than a hundredth of what they cover.
+    """
+    until = 0.0
+    for response in responses:
+        for signal in (response.measurement_pct[-1], response.travel_pct):
+            off = np.nonzero(np.abs(signal - signal[-1]) > 0.01 * np.ptp(signal))[0]
+            if len(off):
+                until = max(until, float(response.time_s[off[-1]]))
+    end = float(responses[0].time_s[-1])
+    return min(1.25 * until, end) if until > 0.0 else end
 
 
 def loop_limits(plant: Plant, lead: ControlledLoop, own: Range, language: Language) -> Iterator[Limit]:
@@ -178,9 +198,5 @@ def _setpoint(response: Response, own: Range) -> FloatArray:
 def in_units(percent: FloatArray, own: Range) -> FloatArray:
     """Percent of a range in its unit."""
     return own.low + percent * own.span / 100.0
-
-
-def _xy(response: Response, values: FloatArray, divisor: float) -> tuple[FloatArray, FloatArray]:
-    return np.asarray(response.time_s / divisor), values
 
 

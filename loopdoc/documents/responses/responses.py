@@ -25,8 +25,8 @@ from loopdoc.engineering.dynamics import ChainDynamics
 from loopdoc.engineering.frequency import speed_ratio
 from loopdoc.engineering.functions import fed_by
 from loopdoc.engineering.pairing import Plant, Scheme
-from loopdoc.engineering.split_range import SplitRange
 from loopdoc.engineering.setpoint_steps import steps_told
+from loopdoc.engineering.split_range import SplitRange
 from loopdoc.engineering.stages import measured_range
 from loopdoc.engineering.tuning_review import NotReviewed, TuningReview, review
 from loopdoc.engineering.tuning_table import (
