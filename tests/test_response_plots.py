@@ -17,9 +17,9 @@ from numpy.typing import NDArray
 from loopdoc.cli import run
 from loopdoc.documents.language import GERMAN
 from loopdoc.documents.magnitudes import duration
-from loopdoc.documents.plots import Curve, Drawing, Mark, Panel, save, to_svg
+from loopdoc.documents.plots import POINTS_DRAWN, Curve, Drawing, Mark, Panel, save, to_svg
 from loopdoc.documents.responses.frequency_plot import frequency_caption, frequency_drawing
-from loopdoc.documents.responses.response_figure import figure
+from loopdoc.documents.responses.response_figure import drawn_until_s, figure
 from loopdoc.documents.responses.responses import at_limit_note, held_note, margin_rows, movement_rows
 from loopdoc.documents.responses.upset_story import benefit, declared_upsets, single_loop_assumption, upset_name
 from loopdoc.engineering.comparison import Comparison, ScenarioResponses, compare
@@ -205,6 +205,53 @@ def test_upsets_that_a_figure_has_no_room_for_are_named_in_its_caption(plant: Pl
     assert "Aus Platzgründen nicht gezeichnet: die Störung an AIC-2015." in figure(plant, crowded, GERMAN).caption
     assert len(compared.scenarios) <= len(figure(plant, compared).rows[0])
     assert "Not drawn" not in figure(plant, compared).caption
+
+
+def test_a_setpoint_step_is_named_as_far_as_its_limit_lets_it_go(plant: Plant) -> None:
+    """DIC-1012 stands at 1120 kg/m3 and may be set to 1150: a tenth of its span is more than that."""
+    limited, whole = (compare(Dynamics(plant).loop(tag).chains[0]) for tag in ("DIC-1012", "FIC-2031"))
+    assert isinstance(limited, Comparison)
+    assert isinstance(whole, Comparison)
+    step = limited.scenarios[0]
+    controller = plant.controlled["DIC-1012"].loop.controller
+    assert controller is not None
+    room = controller.setpoint.high.value - controller.setpoint.normal.value  # type: ignore[union-attr]
+    assert upset_name(limited, step) == f"Setpoint of DIC-1012 up by {room:g}\u00a0kg/m³, to its limit"
+    assert upset_name(limited, step, GERMAN).endswith("kg/m³ bis an seine Grenze")
+    assert "10 % of span in its setpoint, or as far as its limit goes, and" in figure(plant, limited).caption
+    assert "limit" not in upset_name(whole, whole.scenarios[0])
+    assert "as far as" not in figure(plant, whole).caption
+
+
+def test_responses_are_drawn_while_something_moves(cascade: ChainDynamics, plant: Plant, compared: Comparison) -> None:
+    """The single loop is the last to come to rest; all columns end with it, and nothing later moves by a hundredth."""
+    responses = [one for entry in compared.scenarios for one in (entry.tuned, entry.single) if one is not None]
+    until = drawn_until_s(responses)
+    assert until < responses[0].time_s[-1]
+    assert max(one.metrics.settling_s for one in responses) < until
+    for one in responses:
+        after = one.time_s > until
+        for signal in (one.measurement_pct[-1], one.travel_pct):
+            assert np.abs(signal[after] - signal[-1]).max() <= 0.01 * (signal.max() - signal.min())
+    above, below = figure(plant, compared).rows
+    ends = {curve.x[-1] for panel in (*above, *below) for curve in panel.curves}
+    assert len(ends) == 1
+
+
+def test_no_peak_is_left_out_of_a_figure() -> None:
+    """A kick of one point among thousands is drawn to its full height, and at its own time."""
+    y = np.zeros(8001)
+    y[17], y[5003] = 43.0, -7.0
+    svg = to_svg(Drawing("kick", ((Panel("", "time, s", "y", (Curve("y", "solid", np.arange(8001.0), y),)),),)))
+    path = max(re.findall(r'd="(M[^"]*)"', svg), key=len)
+    points = np.array([[float(x) for x in pair] for pair in re.findall(r"(-?[\d.]+) (-?[\d.]+)", path)])
+    assert len(points) < 2 * POINTS_DRAWN
+    across = (points[:, 0] - points[0, 0]) / (points[-1, 0] - points[0, 0]) * 8000
+    # The picture counts downward; a hundredth of a point of the page is a fiftieth of a step of time here.
+    assert across[points[:, 1].argmin()] == pytest.approx(17, abs=1)
+    assert across[points[:, 1].argmax()] == pytest.approx(5003, abs=1)
+    rest = points[0, 1]
+    assert (points[:, 1].max() - rest) / (rest - points[:, 1].min()) == pytest.approx(7 / 43, rel=1e-3)
 
 
 def test_alarms_trips_and_output_limits_are_in_the_time_responses(plant: Plant) -> None:

@@ -190,7 +190,8 @@ def _not_applied(review: TuningReview) -> Iterator[str]:
         if isinstance(rule, NotApplicable):
             by_reason.setdefault(rule.reason, []).append(rule.rule)
     for reason, rules in by_reason.items():
-        yield f"{_listed(rules)} not applied: {reason}."
+        # The name of a rule may hold a comma.
+        yield f"{'; '.join(rules)}: not applied, {reason}."
 
 
 def _basis(review: TuningReview) -> Iterator[str]:

@@ -198,5 +198,3 @@ def _setpoint(response: Response, own: Range) -> FloatArray:
 def in_units(percent: FloatArray, own: Range) -> FloatArray:
     """Percent of a range in its unit."""
     return own.low + percent * own.span / 100.0
-
-
