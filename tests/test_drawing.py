@@ -15,8 +15,9 @@ import pytest
 from fontTools.ttLib import TTFont
 
 from loopdoc.documents.drawing import SMALLEST, fitted, tag_lines, text_width, wrapped
-from loopdoc.documents.language import ENGLISH
-from loopdoc.documents.loop_sheet.loop_drawing import WIDTH, drawn_loop
+from loopdoc.documents.language import ENGLISH, GERMAN, Language
+from loopdoc.documents.loop_sheet.lanes import WIDTH
+from loopdoc.documents.loop_sheet.loop_drawing import drawn_loop
 from loopdoc.engineering.pairing import Plant
 from loopdoc.register.load import Loaded, load
 
@@ -128,8 +129,9 @@ def marks(svg: str) -> Marks:
         if element.get("class") == "symbol":
             symbols.append(around([point for part in subpaths(path) for point in part], "symbol"))
         elif element.get("class") == "line":
+            what = "frame" if element.get("stroke-dasharray") == "6 2 1 2" or "0.5 0.5" in path else "line"
             for part in subpaths(path):
-                lines += [around(list(ends), "line") for ends in pairwise(part)]
+                lines += [around(list(ends), what) for ends in pairwise(part)]
         elif element.get("fill") == "#111":
             arrows += [around(part, "arrow") for part in subpaths(path)]
     return Marks(float(root.get("viewBox", "").split()[3]), texts, tuple(symbols), tuple(lines), tuple(arrows))
@@ -147,7 +149,21 @@ def faults(svg: str) -> list[str]:
         told += [f"{text} across the edge of {symbol}" for symbol in touched if not symbol.holds(text)]
         if not touched:  # a symbol hides the lines behind it
             told += [f"{line} through {text}" for line in (*found.lines, *found.arrows) if line.meets(text)]
-    return told
+    return [*told, *crossings(found)]
+
+
+def crossings(found: Marks) -> Iterator[str]:
+    """Where two lines cross that are not the frame; what a symbol hides does not cross."""
+    own = [line for line in found.lines if line.what == "line"]
+    level = [line for line in own if line.bottom - line.top < line.right - line.left]
+    upright = [line for line in own if line.bottom - line.top > line.right - line.left]
+    for a in level:
+        for b in upright:
+            x, y = (b.left + b.right) / 2, (a.top + a.bottom) / 2
+            at = Box(x - 0.1, y - 0.1, x + 0.1, y + 0.1, "crossing")
+            crosses = a.left < x - 1 and x + 1 < a.right and b.top < y - 1 and y + 1 < b.bottom
+            if crosses and not any(symbol.holds(at) for symbol in found.symbols):
+                yield f"{a} crosses {b}"
 
 
 # ---------------------------------------------------------------- registers
@@ -186,18 +202,26 @@ def loop(tag: str, to: str, *, alarms: str = "") -> str:
 # ---------------------------------------------------------------- tests
 
 
-def test_every_loop_of_the_examples_is_drawn_without_overlap(plant: Plant) -> None:
+@pytest.mark.parametrize("language", [ENGLISH, GERMAN])
+def test_every_loop_of_the_examples_is_drawn_without_overlap(plant: Plant, language: Language) -> None:
     for tag in plant.register.loops:
-        assert not faults(drawn_loop(plant, tag, ENGLISH).svg), tag
+        assert not faults(drawn_loop(plant, tag, language).svg), tag
+
+
+@pytest.mark.parametrize("language", [ENGLISH, GERMAN])
+def test_no_drawing_of_the_examples_cuts_a_word(plant: Plant, language: Language) -> None:
+    for tag in plant.register.loops:
+        assert "…" not in drawn_loop(plant, tag, language).svg, tag
 
 
 def test_the_check_sees_what_overlaps() -> None:
     """Two texts on each other, a line through a text, and a text out of the frame."""
     svg = (
         '<svg xmlns="http://www.w3.org/2000/svg" viewBox="0 0 510 100"><path class="line" d="M10 48L90 48"/>'
+        '<path class="line" d="M70 30L70 60"/>'
         '<g><text x="20" y="50">one</text><text x="25" y="52">two</text><text x="500" y="90">outside</text></g></svg>'
     )
-    assert len(faults(svg)) == 4  # the line runs through both texts
+    assert len(faults(svg)) == 5  # the line runs through both texts, and crosses another
 
 
 @pytest.mark.parametrize(
@@ -323,6 +347,109 @@ def test_primaries_without_a_selector_are_all_named(tmp_path: Path) -> None:
     svg = drawn_loop(plant, "FIC-3", ENGLISH).svg
     assert not faults(svg)
     assert ">FIC-2<" in svg
+
+
+# ---------------------------------------------------------------- wiring
+
+
+def wiring(stops: int, *, terminals: int = 2, pair: str = "1", name: str = "JB") -> str:
+    """Wiring over some boxes, each with terminals of six characters."""
+    marks = ", ".join(f"TB{number}-{number + 10}" for number in range(1, terminals + 1))
+    cables = ", ".join(
+        f"{{cable: MC-20-{at:02}, pair: {pair}, at: {name}-20{at:02}, terminals: [{marks}]}}" for at in range(stops)
+    )
+    return f"[{cables}]"
+
+
+MEASURED_WITH_WIRES = (
+    "{transmitter: %s, variable: flow, range: 0 to 10 t/h, signal: 4-20 mA, channel: AI-1, element: orifice plate, "
+    "characteristic: square root, supply: 230 V AC from the distribution board of the unit, wiring: %s}"
+)
+
+
+@pytest.mark.parametrize("language", [ENGLISH, GERMAN])
+@pytest.mark.parametrize("stops", [0, 1, 2, 3, 5])
+@pytest.mark.parametrize("terminals", [0, 1, 2, 4, 9])
+def test_boxes_and_terminals_of_every_number(tmp_path: Path, language: Language, stops: int, terminals: int) -> None:
+    """A ratio of three flows, a select, a split range with trip solenoids and interlocks on everything."""
+
+    def wires(name: str) -> str:
+        return wiring(stops, terminals=terminals, name=name)
+
+    flows = "".join(
+        f"  FI-{n}: {{measurement: {MEASURED_WITH_WIRES % (f'FT-{n}', wires(f'J{n}'))}}}\n" for n in (21, 22, 23)
+    )
+    loops = "".join(
+        f"  FIC-{n}: {{service: A flow of a long name, measurement: {MEASURED_WITH_WIRES % (f'FT-{n}', wires('JB'))}, "
+        f"controller: {{action: reverse, output: {{to: {to}, span: 0 to 10 t/h}}}}, "
+        "alarms: {high: {limit: 9 t/h}, low: {limit: 1 t/h}}}\n"
+        for n, to in ((1, "FY-1"), (2, "FY-1"), (3, "FY-3"))
+    )
+    valve = (
+        f"{{kind: control valve, fails: closed, service: Steam, signal: 4-20 mA, channel: AO-1, supply: air, "
+        f"output_block: reversed, wiring: {wires('JB')}, "
+        f"trip_solenoid: {{tag: %s, channel: DO-1, supply: 24 V DC, wiring: {wires('JT')}}}}}"
+    )
+    acts = "FV-3A: closed, FV-3B: closed, FIC-3: {mode: manual, output: 0 %}"
+    interlocks = "".join(
+        f"  IS-{n}: {{initiators: {{FT-3: {{trips: above 5 t/h}}}}, actions: {{{acts}}}}}\n" for n in (1, 2, 3, 4, 5)
+    )
+    plant = plant_of(
+        tmp_path,
+        f"loops:\n{flows}{loops}functions:\n"
+        "  FY-1: {kind: low select, to: FY-2, service: The lower of two flows that are asked for}\n"
+        "  FY-2: {kind: ratio, inputs: [FI-21, FT-22, FI-23], span: 0.5 to 2, to: FIC-3, service: A ratio}\n"
+        "  FY-3: {kind: split range, outputs: {FV-3A: 50 to 0 %, FV-3B: 50 to 100 %}}\n"
+        f"final_elements: {{FV-3A: {valve % 'XY-3A'}, FV-3B: {valve % 'XY-3B'}}}\n"
+        f"interlocks:\n{interlocks}",
+    )
+    for tag in ("FIC-1", "FIC-3", "FI-21"):
+        assert not faults(drawn_loop(plant, tag, language).svg), tag
+
+
+def texts_of(plant: Plant, tag: str) -> dict[str, tuple[float, float]]:
+    """What is written on a drawing, each with its place."""
+    root = ElementTree.fromstring(drawn_loop(plant, tag, ENGLISH).svg)
+    return {
+        element.text or "": (float(element.get("x", "")), float(element.get("y", "")))
+        for element in root.iter(f"{SVG}text")
+    }
+
+
+def test_cables_and_terminals_stand_in_order_from_the_field_to_the_channel() -> None:
+    """The wiring of TT-2014 as the register of the example has it."""
+    written = texts_of(example("tarn-hollow"), "TIC-2014")
+    way = ("4-20 mA", "C-TT-2014", "JB-2001", "M-2001", "MC-20", "AI-2-05")
+    across = [written[words][0] for words in way]
+    assert across == sorted(across)
+    assert [written[words][0] for words in ("9", "10", "JB-2001")] == 3 * [across[2]]
+    assert written["TB1-9"][0] == written["TB1-10"][0]
+    assert "pair 5" in written
+
+
+def test_a_trip_solenoid_is_drawn_with_its_wires_and_interlock() -> None:
+    written = texts_of(example("tarn-hollow"), "FIC-2011")
+    assert [words for words in ("XY-2011", "S", "SDO-1-01", "SC-20", "IS-2001: closed") if words not in written] == []
+
+
+def test_boxes_of_one_name_stand_in_one_column(tmp_path: Path) -> None:
+    """A drive wired straight to the cabinet that the transmitter reaches over a junction box."""
+    measured = MEASURED_WITH_WIRES % ("FT-1", "[{at: JB-1, terminals: [A1]}, {at: MC-1, terminals: [A2]}]")
+    plant = plant_of(
+        tmp_path,
+        f"loops:\n  FIC-1: {{measurement: {measured}, controller: {{output: {{to: SC-1}}}}}}\n"
+        "final_elements: {SC-1: {kind: variable-speed drive, wiring: [{at: MC-1, terminals: [A3]}]}}\n",
+    )
+    written = texts_of(plant, "FIC-1")
+    assert written["A1"][0] < written["A2"][0] == written["A3"][0]
+
+
+def test_a_column_is_left_out_where_no_wiring_is_written() -> None:
+    for tag in ("TIC-2014", "TI-1014"):
+        assert "Junction box and marshalling" in texts_of(example("tarn-hollow"), tag)
+    eastman = example("tennessee-eastman")
+    for tag in eastman.register.loops:
+        assert not {"Marshalling", "Junction box and marshalling"} & set(texts_of(eastman, tag)), tag
 
 
 def test_text_of_the_register_cannot_become_markup_and_long_text_is_kept_in(tmp_path: Path) -> None:

@@ -26,6 +26,8 @@ BLOCK = 11.5
 """Half side of a function block [pt]."""
 DIAMOND = 8.0
 """Half diagonal of an interlock diamond [pt]."""
+TERMINAL = 8.0
+"""Height of one terminal in a box [pt]."""
 SMALLEST = 4.6
 """Lettering is not made smaller than this [pt]; what is still too long is cut."""
 CAP = 0.698
@@ -242,9 +244,11 @@ class Sheet:
         self._bubble(x, y, lines, path=_circle(x, y, BUBBLE), strong=strong)
 
     def shared_display(self, x: float, y: float, lines: tuple[str, str], *, strong: bool = False) -> None:
-        """A circle in a square: shared display and control."""
+        """A circle in a square, with the line of what the operator has before him: shared display and control."""
         square = _box(x - BUBBLE, y - BUBBLE, x + BUBBLE, y + BUBBLE)
         self._bubble(x, y, lines, path=square + _circle(x, y, BUBBLE), strong=strong)
+        if lines[1]:
+            self.detail(_path(((x - BUBBLE, y), (x + BUBBLE, y))))
 
     def function_block(self, x: float, y: float, symbol: str) -> None:
         """A square with the sign of what it computes."""
@@ -266,10 +270,16 @@ class Sheet:
         """A dot where lines are joined."""
         self.detail(_circle(x, y, 1.3), width=0.1, fill=_INK)
 
-    def terminals(self, x: float, y: float) -> None:
-        """A pair of terminals."""
-        ends = _circle(x - 3.2, y, 1.9) + _circle(x + 3.2, y, 1.9)
-        self.symbol(_box(x - 7, y - 4.5, x + 7, y + 4.5) + ends)
+    def terminals(self, x: float, y: float, marks: Sequence[str], *, width: float) -> None:
+        """Terminals of a box below each other with their marks; a pair of circles where they are not known."""
+        half = TERMINAL * max(1, len(marks)) / 2
+        edges = [_path(((x - width / 2, y - half + TERMINAL * place), (x + width / 2, y - half + TERMINAL * place)))
+                 for place in range(1, len(marks))]  # fmt: skip
+        if not marks:
+            edges = [_circle(x - 3.2, y, 1.9), _circle(x + 3.2, y, 1.9)]
+        self.symbol(_box(x - width / 2, y - half, x + width / 2, y + half) + "".join(edges))
+        for place, mark in enumerate(marks):
+            self.centred(x, y - half + TERMINAL * (place + 0.5), mark, width=width - 2, size=SIZE)
 
     def channel(self, x: float, y: float, content: str) -> None:
         """An input or output of the control system with its channel."""
@@ -362,6 +372,16 @@ class Sheet:
         elif fails == "last":
             bars = _path(((x - 3, y + 9), (x + 3, y + 9))) + _path(((x - 3, y + 11.4), (x + 3, y + 11.4)))
             self.detail(bars)
+
+    def solenoid(self, x: float, y: float, below: float) -> None:
+        """A solenoid valve in the air line to the actuator whose top is at ``below``."""
+        self.line(_path(((x, y + 5), (x, below))))
+        middle = (y + 5 + below) / 2
+        # Two strokes across: a pneumatic signal.
+        for place in (middle - 1.4, middle + 1.4):
+            self.detail(_path(((x - 2.6, place + 1.6), (x + 2.6, place - 1.6))), width=0.6)
+        self.symbol(_box(x - 6, y - 5, x + 6, y + 5))
+        self.centred(x, y, "S", width=9, size=7, bold=True)
 
     # -- frame
 

@@ -1,21 +1,27 @@
-"""The drawn loop: from the field through the marshalling to the control system, one row below the other.
+"""The drawn loop: from the field through boxes and cabinets to the control system and the operator, row below row.
 
-Each row has an instrument of the field at the left and what the control system does with it at the right.
-Minimum content of a loop diagram: ISA-5.4-1991, clause 5 (from memory).
+Each row has an instrument of the field at the left, then its wires, and what the control system does with it and the
+operator sees of it at the right. Content of a loop diagram: ISA-5.4-1991, clause 5 (from memory).
 """
 
 from __future__ import annotations
 
+from collections.abc import Iterator
 from dataclasses import dataclass
 from itertools import pairwise
 
-from loopdoc.documents.drawing import BLOCK, BUBBLE, DIAMOND, LEADING, Sheet, tag_lines, wrapped
+from loopdoc.documents.drawing import BLOCK, BUBBLE, DIAMOND, LEADING, Sheet, tag_lines, text_width, wrapped
 from loopdoc.documents.language import Language
+from loopdoc.documents.loop_sheet.lanes import FIELD, FIELD_NOTE, WIDTH, lanes_of
 from loopdoc.documents.loop_sheet.loop_rows import (
     BESIDE_DISTANCE,
-    INPUT_DISTANCE,
+    BLOCK_WIDTH,
+    FORCED_BELOW,
+    FORCED_WIDTH,
     MOST_BESIDE,
     NOTE_WIDTH,
+    TAPPED_WIDTH,
+    WORDS_ABOVE,
     Block,
     Element,
     Elsewhere,
@@ -26,35 +32,25 @@ from loopdoc.documents.loop_sheet.loop_rows import (
     Row,
     Secondary,
     block_words,
+    controller_forcing_lines,
     element_forcing_lines,
     element_words,
     forcing_height,
-    forcing_lines,
     initiated_lines,
+    input_offsets,
     kind_words,
+    measurement_of,
     measurement_words,
     rows_of,
+    solenoid_rise,
+    supply_words,
     transmitter_of,
 )
+from loopdoc.documents.loop_sheet.wiring_columns import Stop, Wiring, columns_of, stops_of
 from loopdoc.documents.values import DASH, HOLD
 from loopdoc.engineering.pairing import Plant
-from loopdoc.register.model import ALARM_ORDER, FinalElement, Function, Hold, Loop, Measurement, known
+from loopdoc.register.model import ALARM_ORDER, FinalElement, Function, Hold, Loop, Measurement, TripSolenoid, known
 from loopdoc.register.quantity import Range
-
-WIDTH = 510.0
-"""Of the drawing [pt]: the width between the margins of the page."""
-LANES = (("Field", 0.5, 160.0), ("Marshalling", 160.0, 208.0), ("Control system and display", 208.0, WIDTH - 0.5))
-
-# Columns [pt].
-_FIELD, _FIELD_NOTE = 38.0, 67.0
-_TERMINALS = 184.0
-_CHANNEL, _CONNECTOR = 238.0, 246.0
-_ROOT, _TAP = 276.0, 300.0
-_MAIN, _MAIN_NOTE = 338.0, 356.5
-_GATE = 412.0
-_FORCE = 422.0
-_SIDE, _SIDE_NOTE = 436.0, 454.5
-_RIGHT = WIDTH - 4
 
 _SYMBOLS = {
     "ratio": "×",
@@ -130,13 +126,15 @@ class _Drawing:
         self._rows = rows
         self._language = language
         self._sheet = Sheet(WIDTH)
+        self._columns = columns_of([stops_of(wiring, language) for wiring in _wirings(plant, rows)])
+        self._at = lanes_of(self._columns.count)
 
     def sheet(self, height: float) -> Sheet:
         for row in self._rows:
             self._draw(row)
         for above, below in pairwise(self._rows):
             self._link(above, below)
-        self._sheet.frame(height, [(self._language.label(name), left, right) for name, left, right in LANES])
+        self._sheet.frame(height, [(self._language.label(name), left, right) for name, left, right in self._at.heads])
         return self._sheet
 
     def _draw(self, row: Row) -> None:
@@ -144,7 +142,7 @@ class _Drawing:
             case Primary():
                 self._draw_primary(row.part.loop, row.y)
             case Others():
-                self._draw_connector_from_right(row.part.tags, row.y)
+                self._draw_connector_from_right(row.part.tags, row.y, self._at.display)
             case Block():
                 self._draw_block(row.part, row.y)
             case Own():
@@ -156,9 +154,9 @@ class _Drawing:
                 drawn = {_tag_of(part.part) for part in self._rows}
                 others = [tag for tag in self._plant.commanders.get(row.part.element.tag, ()) if tag not in drawn]
                 if others:
-                    self._draw_connector_from_right(tuple(others), row.y)
+                    self._draw_connector_from_right(tuple(others), row.y, self._way_out(row))
             case Elsewhere():
-                self._sheet.connector(_CONNECTOR, row.y, row.part.to, to_the_left=True)
+                self._sheet.connector(self._at.connector, row.y, row.part.to, to_the_left=True)
 
     def _shown(self, written: object) -> str:
         return self._language.shown(written)
@@ -169,32 +167,41 @@ class _Drawing:
     def _lines(self, tag: str) -> tuple[str, str]:
         return tag_lines(tag, self._register.tag_pattern)
 
-    # -- neighbours
-
-    def _draw_primary(self, loop: Loop, y: float) -> None:
-        self._sheet.shared_display(_MAIN, y, self._lines(loop.tag))
-        self._draw_words(loop, y)
-        commanders = self._plant.commanders.get(loop.tag, ())
-        if commanders:
-            self._sheet.connector(_CONNECTOR, y, _first_of(commanders))
-            self._sheet.software((_CONNECTOR + 25, y), (_MAIN - BUBBLE, y))
-
-    def _draw_connector_from_right(self, tags: tuple[str, ...], y: float) -> None:
-        """Whatever else commands the same: a fault of the register, shown as it is written."""
-        self._sheet.connector(_FORCE, y, _first_of(tags), to_the_left=True)
-        self._sheet.software((_FORCE - 25, y), (_MAIN, y), arrow=False)
-
-    def _draw_words(self, loop: Loop, y: float) -> None:
-        """Service and measurement of a neighbour, to the right of it."""
-        width = _RIGHT - _MAIN_NOTE
-        self._note_beside(_MAIN_NOTE, y, (*wrapped(self._shown(loop.service), width, 2), self._measured(loop)), width)
-
     def _note_beside(
-        self, x: float, y: float, lines: tuple[str, ...], width: float, *, bold_first: bool = False
+        self,
+        x: float,
+        y: float,
+        lines: tuple[str, ...],
+        width: float,
+        *,
+        bold_first: bool = False,
+        anchor: str = "start",
     ) -> None:
         """Lines with their middle at a height."""
         top = y - (len(lines) - 1) * LEADING / 2 + 2.2
-        self._sheet.note(x, top, lines, width=width, bold_first=bold_first)
+        self._sheet.note(x, top, lines, width=width, bold_first=bold_first, anchor=anchor)
+
+    # -- neighbours
+
+    def _draw_primary(self, loop: Loop, y: float) -> None:
+        at = self._at
+        self._sheet.shared_display(at.display, y, self._lines(loop.tag))
+        self._draw_words(loop, y)
+        commanders = self._plant.commanders.get(loop.tag, ())
+        if commanders:
+            self._sheet.connector(at.connector, y, _first_of(commanders))
+            self._sheet.software((at.connector + 25, y), (at.display - BUBBLE, y))
+
+    def _draw_connector_from_right(self, tags: tuple[str, ...], y: float, to: float) -> None:
+        """Whatever else commands the same: a fault of the register, shown as it is written."""
+        self._sheet.connector(self._at.others, y, _first_of(tags), to_the_left=True)
+        self._sheet.software((self._at.others - 25, y), (to, y), arrow=False)
+
+    def _draw_words(self, loop: Loop, y: float) -> None:
+        """Service and measurement of a neighbour, to the right of it."""
+        width = self._at.right - self._at.words
+        words = (*wrapped(self._shown(loop.service), width, 2), *wrapped(self._measured(loop), width, 2))
+        self._note_beside(self._at.words, y, words, width)
 
     def _measured(self, loop: Loop) -> str:
         measurement = known(loop.measurement)
@@ -202,189 +209,275 @@ class _Drawing:
         return f"{transmitter_of(loop)}, {measured}" if transmitter_of(loop) else measured
 
     def _draw_secondary(self, part: Secondary, y: float) -> None:
-        sheet = self._sheet
-        sheet.shared_display(_MAIN, y, self._lines(part.loop.tag))
+        sheet, at = self._sheet, self._at
+        sheet.shared_display(at.display, y, self._lines(part.loop.tag))
         self._draw_words(part.loop, y)
         if part.element:
             self._draw_element(part.element, None, y)
-            sheet.software((_MAIN - BUBBLE, y), (_CHANNEL + 21, y))
+            sheet.software((at.display - BUBBLE, y), (at.channel + 21, y))
         elif part.onward:
-            sheet.connector(_CONNECTOR, y, part.onward, to_the_left=True)
-            sheet.software((_MAIN - BUBBLE, y), (_CONNECTOR + 25, y), arrow=False)
+            sheet.connector(at.connector, y, part.onward, to_the_left=True)
+            sheet.software((at.display - BUBBLE, y), (at.connector + 25, y), arrow=False)
 
     # -- functions
 
     def _draw_block(self, part: Block, y: float) -> None:
-        function = part.function
-        self._sheet.function_block(_MAIN, y, _symbol(function))
-        for index, tag in enumerate(function.inputs):
-            self._draw_input(function, tag, y, index)
-        if not part.beside:
-            words = block_words(function, _RIGHT - _MAIN_NOTE, self._language)
-            self._note_beside(_MAIN_NOTE, y, words, _RIGHT - _MAIN_NOTE, bold_first=True)
-            return
+        function, x = part.function, self._at.block
+        self._sheet.function_block(x, y, _symbol(function))
+        words = block_words(function, BLOCK_WIDTH, self._language)
+        edge = x - BLOCK - 3.5
+        if function.inputs:
+            top = y - WORDS_ABOVE - (len(words) - 1) * LEADING
+            self._sheet.note(edge, top, words, width=BLOCK_WIDTH, bold_first=True, anchor="end")
+        else:
+            self._note_beside(edge, y, words, BLOCK_WIDTH, bold_first=True, anchor="end")
+        offsets = input_offsets(self._plant, function, self._language)
+        for index, (tag, offset) in enumerate(zip(function.inputs, offsets, strict=True)):
+            self._draw_input(function, tag, y, y + offset, index)
         drawn = part.beside[:MOST_BESIDE]
-        # Above and below the links that enter from the right.
-        half = 3.5 * (len(drawn) - 1)
-        x, width = _MAIN + BLOCK + 3, _GATE - _MAIN - BLOCK - 7
-        self._sheet.note(x, y - 6 - half, (function.tag,), width=width, bold_first=True)
-        self._sheet.note(x, y + 10 + half, (kind_words(function, self._language),), width=width)
         for index, tag in enumerate(drawn):
             offset = index - (len(drawn) - 1) / 2
             more = len(part.beside) - MOST_BESIDE + 1 if index == MOST_BESIDE - 1 else 1
-            instead = f"{more} more" if more > 1 else ""
+            instead = self._language.more(more) if more > 1 else ""
             self._draw_beside(tag, y + BESIDE_DISTANCE * offset, y + 7 * offset, instead)
 
     def _draw_beside(self, tag: str, y: float, into: float, instead: str) -> None:
         """Another commander of a function, to the right of it; ``instead`` stands for several."""
-        sheet, width = self._sheet, _RIGHT - _SIDE_NOTE
-        left = _SIDE - BUBBLE
-        if instead:
-            sheet.connector(_SIDE + 10.5, y, instead, to_the_left=True)
-        elif tag in self._register.functions:
-            function = self._register.functions[tag]
-            sheet.function_block(_SIDE, y, _symbol(function))
-            self._note_beside(_SIDE_NOTE, y, (tag, kind_words(function, self._language)), width, bold_first=True)
-            left = _SIDE - BLOCK
+        sheet, at = self._sheet, self._at
+        left, width = at.display - BUBBLE, at.right - at.words
+        if instead or tag in self._register.functions:
+            middle = left + 25
+            sheet.connector(middle, y, instead or tag, to_the_left=True)
+            if not instead:
+                kind = kind_words(self._register.functions[tag], self._language)
+                sheet.note(middle - 25, y + 14, (kind,), width=at.right - middle + 25)
         else:
-            loop = self._register.loops[tag]
-            sheet.shared_display(_SIDE, y, self._lines(tag))
-            self._note_beside(_SIDE_NOTE, y, wrapped(self._measured(loop), width, 2), width)
-        end = (_MAIN + BLOCK, into)
-        way = ((left, y), end) if y == into else ((left, y), (_GATE, y), (_GATE, into), end)
+            sheet.shared_display(at.display, y, self._lines(tag))
+            self._note_beside(at.words, y, wrapped(self._measured(self._register.loops[tag]), width, 2), width)
+        end = (at.block + BLOCK, into)
+        way = ((left, y), end) if y == into else ((left, y), (at.forced + 2, y), (at.forced + 2, into), end)
         sheet.software(*way)
 
-    def _draw_input(self, function: Function, tag: str, y: float, index: int) -> None:
+    def _draw_input(self, function: Function, tag: str, y: float, at: float, index: int) -> None:
         """A measurement that enters a function from the left: the first straight, the others from below."""
-        at, count = y + INPUT_DISTANCE * index, len(function.inputs)
-        loop = self._register.loops.get(tag)
-        measurement = self._register.measurements.get(tag) or (known(loop.measurement) if loop else None)
+        count = len(function.inputs)
+        measurement = measurement_of(self._plant, tag)
         if measurement is None:
-            self._sheet.connector(_CONNECTOR, at, tag)
-            start = _CONNECTOR + 25
+            self._sheet.connector(self._at.connector, at, tag)
+            start = self._at.connector + 25
         else:
             start = self._draw_measurement(known(measurement.transmitter) or tag, measurement, at)
-        edge = _MAIN - BLOCK
+        edge = self._at.block - BLOCK
+        apart = min(5.0, 16.0 / max(1, count - 1))
         if index == 0:
             self._sheet.software((start, at), (edge, at))
         else:
             # The lower an input, the further right it rises and the lower it enters: no two of them cross.
-            x, into = edge - 4 - 5 * (count - index), y + 10 * index / (count - 1)
+            x, into = edge - 4 - apart * (count - index), y + 10 * index / (count - 1)
             self._sheet.software((start, at), (x, at), (x, into), (edge, into))
         weight = function.weights.get(tag, 1.0)
         if weight != 1.0:
-            self._sheet.note(edge - 6 - 5 * count, at + 8.5, (f"× {self._shown(weight)}",), width=36, anchor="end")
+            words = f"× {self._shown(weight)}"
+            self._sheet.note(edge - 5 - apart * count, at + 12, (words,), width=26, anchor="end")
 
     # -- field and wiring
 
     def _draw_measurement(self, tag: str, measurement: Measurement, y: float, *, strong: bool = False) -> float:
-        """Transmitter, terminals and input of a measurement; the x at which its signal leaves to the right."""
-        sheet = self._sheet
-        sheet.measuring_point(_FIELD, y, known(measurement.variable) or "", known(measurement.element) or "")
-        sheet.field_instrument(_FIELD, y, self._lines(tag), strong=strong)
-        sheet.electric((_FIELD + BUBBLE, y), (_TERMINALS - 7, y))
-        self._wire(y, measurement.signal)
-        sheet.channel(_CHANNEL, y, self._shown(measurement.channel))
-        sheet.note(_FIELD_NOTE, y + 8.5, measurement_words(measurement, self._language), width=NOTE_WIDTH)
+        """Transmitter, wires and input of a measurement; the x at which its signal leaves to the right."""
+        sheet, at = self._sheet, self._at
+        sheet.measuring_point(FIELD, y, known(measurement.variable) or "", known(measurement.element) or "")
+        sheet.field_instrument(FIELD, y, self._lines(tag), strong=strong)
+        self._wire(FIELD + BUBBLE, y, measurement.wiring, to_the_field=False)
+        self._above_wire(y, measurement.signal, measurement.wiring)
+        sheet.channel(at.channel, y, self._shown(measurement.channel))
+        sheet.note(FIELD_NOTE, y + 8.5, measurement_words(measurement, self._language), width=NOTE_WIDTH)
         if known(measurement.characteristic) != "square root":
-            return _CHANNEL + 21
-        sheet.software((_CHANNEL + 21, y), (_ROOT - 5.5, y), arrow=False)
-        sheet.square_root(_ROOT, y)
-        return _ROOT + 5.5
+            return at.channel + 21
+        sheet.software((at.channel + 21, y), (at.root - 5.5, y), arrow=False)
+        sheet.square_root(at.root, y)
+        return at.root + 5.5
 
-    def _wire(self, y: float, signal: str | Hold | None) -> None:
-        """Terminals, the wire from there to the control system, and what the signal is."""
-        self._sheet.electric((_TERMINALS + 7, y), (_CHANNEL - 21, y))
-        self._sheet.terminals(_TERMINALS, y)
-        if signal is not None:
-            self._sheet.note(_FIELD_NOTE, y - 2.8, (self._word("signal", signal),), width=NOTE_WIDTH)
+    def _wire(self, start: float, y: float, wiring: Wiring, *, to_the_field: bool) -> None:
+        """The wires of a signal from a device to its channel, over the boxes on the way."""
+        sheet, at = self._sheet, self._at
+        stops = stops_of(wiring, self._language)
+        half, left = at.box_width / 2, start
+        for number, (stop, column) in enumerate(zip(stops, self._columns.placed(stops), strict=True)):
+            x = at.box(column)
+            self._wire_piece(left, x - half, y, arrow=to_the_field and number == 0)
+            sheet.terminals(x, y, stop.terminals, width=at.box_width)
+            sheet.centred(x, y - stop.height / 2 - 4.6, stop.name, width=at.box_width + 8, size=6.4, bold=True)
+            if number:
+                self._label_cable(left, x - half, y, stop)
+            left = x + half
+        self._wire_piece(left, at.channel - 21, y, arrow=to_the_field and not stops)
+
+    def _wire_piece(self, left: float, right: float, y: float, *, arrow: bool) -> None:
+        """A piece of wire, with the arrow of a signal to the field at its left end."""
+        self._sheet.electric((right, y), (left, y), arrow=arrow)
+
+    def _label_cable(self, left: float, right: float, y: float, stop: Stop) -> None:
+        """The cable above a piece of wire and its pair below."""
+        middle, width = (left + right) / 2, right - left - 3
+        if stop.cable:
+            self._sheet.centred(middle, y - 5.2, stop.cable, width=width, size=6.4)
+        if stop.pair:
+            self._sheet.centred(middle, y + 6.2, stop.pair, width=width, size=6.4)
+
+    def _above_wire(self, y: float, signal: str | Hold | None, wiring: Wiring) -> None:
+        """The signal above the wires in the field, and the cable that leaves the device."""
+        said = self._word("signal", signal) if signal is not None else ""
+        if said:
+            self._sheet.note(FIELD_NOTE, y - 2.8, (said,), width=NOTE_WIDTH)
+        stops = stops_of(wiring, self._language)
+        if stops:
+            cable = ", ".join(filter(None, (stops[0].cable, stops[0].pair)))
+            taken = text_width(said) + 6 if said else 0.0
+            right = self._at.field_right - 4
+            self._sheet.note(right, y - 2.8, (cable,), width=right - FIELD_NOTE - taken, anchor="end")
 
     def _draw_element(self, element: FinalElement, branch: Range | None, y: float) -> None:
-        sheet = self._sheet
+        sheet, at = self._sheet, self._at
         kind, fails = known(element.kind) or "", element.fails
-        sheet.final_element(_FIELD, y, kind, known(fails) or "")
+        sheet.final_element(FIELD, y, kind, known(fails) or "")
         if fails is not None:
             letters = HOLD if isinstance(fails, Hold) else self._language.fail_letters(fails)
-            x, baseline = (_FIELD - 11, y + 21.2) if kind in _DRIVES else (_FIELD - 4, y + 11.4)
+            x, baseline = (FIELD - 11, y + 21.2) if kind in _DRIVES else (FIELD - 4, y + 11.4)
             sheet.note(x, baseline, (letters,), width=24, anchor="end")
-        sheet.electric((_TERMINALS - 7, y), (_FIELD + 9.5, y), arrow=True)
-        self._wire(y, element.signal)
-        sheet.channel(_CHANNEL, y, self._shown(element.channel))
-        sheet.note(_FIELD_NOTE, y + 9, element_words(element, self._language), width=NOTE_WIDTH, bold_first=True)
+        self._wire(FIELD + 9.5, y, element.wiring, to_the_field=True)
+        self._above_wire(y, element.signal, element.wiring)
+        sheet.channel(at.channel, y, self._shown(element.channel))
+        sheet.note(FIELD_NOTE, y + 9, element_words(element, self._language), width=NOTE_WIDTH, bold_first=True)
+        beside, width = at.channel + 24.5, at.block - BLOCK - at.channel - 27
         if branch is not None:
-            sheet.note(_CHANNEL + 27, y - 3.5, (self._shown(branch),), width=56)
+            sheet.note(beside, y - 3.5, (self._shown(branch),), width=width)
         if known(element.output_block) == "reversed":
-            sheet.note(_CHANNEL + 27, y + 8.5, (self._language.term("output block", "reversed"),), width=56)
+            sheet.note(beside, y + 8.5, (self._language.term("output block", "reversed"),), width=width)
         lines = element_forcing_lines(self._plant, element, self._language)
-        if lines:
+        solenoid = known(element.trip_solenoid)
+        if solenoid:
+            self._draw_solenoid(solenoid, y - solenoid_rise(element, self._language), y - 4, lines)
+        elif lines:
             middle = y - (forcing_height(self._plant, element, self._language) + 10) / 2
-            sheet.electric((_FIELD, middle + DIAMOND), (_FIELD, y - 5.5), arrow=True)
-            sheet.interlock(_FIELD, middle)
-            self._note_beside(_FIELD + DIAMOND + 4, middle, lines, NOTE_WIDTH + 12)
+            sheet.electric((FIELD, middle + DIAMOND), (FIELD, y - 5.5), arrow=True)
+            sheet.interlock(FIELD, middle)
+            self._note_beside(FIELD + DIAMOND + 4, middle, lines, NOTE_WIDTH + 10)
+
+    def _draw_solenoid(self, solenoid: TripSolenoid, y: float, below: float, lines: tuple[str, ...]) -> None:
+        """A trip solenoid over its actuator, with its wires and the interlocks that act by it."""
+        sheet, at = self._sheet, self._at
+        sheet.solenoid(FIELD, y, below)
+        self._wire(FIELD + 6.5, y, solenoid.wiring, to_the_field=True)
+        self._above_wire(y, None, solenoid.wiring)
+        sheet.channel(at.channel, y, self._shown(solenoid.channel))
+        sheet.note(FIELD_NOTE, y - 2.8, (self._shown(solenoid.tag),), width=NOTE_WIDTH / 2, bold_first=True)
+        sheet.note(FIELD_NOTE, y + 8.5, supply_words(solenoid.supply, self._language)[:1], width=NOTE_WIDTH)
+        if lines:
+            x = at.channel + 46
+            sheet.interlock(x, y)
+            sheet.software((x - DIAMOND, y), (at.channel + 21, y))
+            top = y - WORDS_ABOVE - (len(lines) - 1) * LEADING
+            sheet.note(at.control + 5, top, lines, width=BLOCK_WIDTH)
 
     # -- the loop itself
 
     def _draw_own(self, y: float) -> None:
-        sheet, loop = self._sheet, self._loop
+        sheet, loop, at = self._sheet, self._loop, self._at
         measurement = known(loop.measurement)
         if measurement:
             start = self._draw_measurement(transmitter_of(loop) or DASH, measurement, y, strong=True)
             tapped = initiated_lines(self._plant, loop)
             if tapped:
-                sheet.software((start, y), (_TAP, y), arrow=False)
-                sheet.junction(_TAP, y)
-                sheet.software((_TAP, y), (_TAP, y - 13))
-                sheet.interlock(_TAP, y - 21)
-                sheet.note(_TAP - 12, y - 19 - (len(tapped) - 1) * LEADING / 2, tapped, width=74, anchor="end")
-                start = _TAP
-            sheet.software((start, y), (_MAIN - BUBBLE, y))
-        sheet.shared_display(_MAIN, y, self._lines(loop.tag), strong=True)
+                sheet.software((start, y), (at.tap, y), arrow=False)
+                sheet.junction(at.tap, y)
+                sheet.software((at.tap, y), (at.tap, y - 13))
+                sheet.interlock(at.tap, y - 21)
+                self._note_beside(at.tap - 12, y - 21, tapped, TAPPED_WIDTH, anchor="end")
+                start = at.tap
+            sheet.software((start, y), (at.display - BUBBLE, y))
+        sheet.shared_display(at.display, y, self._lines(loop.tag), strong=True)
         controller = known(loop.controller)
         if controller and controller.action is not None:
-            sheet.note(_MAIN - BUBBLE - 3, y + 11.5, (self._word("action", controller.action),), width=56, anchor="end")
+            sheet.note(at.words, y + 2.2, (self._word("action", controller.action),), width=at.right - at.words)
         self._draw_alarms(y)
-        width = _RIGHT - _FORCE - DIAMOND - 3
-        forced = forcing_lines(self._plant, loop.tag, width, 4, self._language)
+        forced = controller_forcing_lines(self._plant, loop, self._language)
         if forced:
-            sheet.interlock(_FORCE, y)
-            self._note_beside(_FORCE + DIAMOND + 3, y, forced, width)
-            sheet.software((_FORCE - DIAMOND, y), (_MAIN + BUBBLE, y))
+            middle = y + FORCED_BELOW + max(2 * DIAMOND, len(forced) * LEADING) / 2
+            sheet.interlock(at.block, middle)
+            self._note_beside(at.block - DIAMOND - 4, middle, forced, FORCED_WIDTH, anchor="end")
+            into = y + 9
+            sheet.software(
+                (at.block + DIAMOND, middle), (at.forced, middle), (at.forced, into), (at.display - BUBBLE, into)
+            )
 
     def _draw_alarms(self, y: float) -> None:
         """High alarms above the middle of the bubble, low ones below, the outermost furthest from it."""
         alarms = self._loop.alarms
         highs = [kind for kind in reversed(ALARM_ORDER) if kind in alarms and kind.startswith("high")]
         lows = [kind for kind in ("low", "low_low", "deviation") if kind in alarms]
-        places = [(kind, y - 5 - LEADING * (len(highs) - 1 - index)) for index, kind in enumerate(highs)]
-        places += [(kind, y + 9.5 + LEADING * index) for index, kind in enumerate(lows)]
+        places = [(kind, y - 7 - LEADING * (len(highs) - 1 - index)) for index, kind in enumerate(highs)]
+        places += [(kind, y + 11.5 + LEADING * index) for index, kind in enumerate(lows)]
         for kind, baseline in places:
             words = f"{self._language.alarm_letters(kind)} {self._shown(alarms[kind].limit)}"
-            self._sheet.note(_MAIN_NOTE, baseline, (words,), width=_FORCE - DIAMOND - 4 - _MAIN_NOTE)
+            self._sheet.note(self._at.words, baseline, (words,), width=self._at.right - self._at.words)
 
     # -- links between rows
+
+    def _axis(self, part: Part) -> float:
+        """Where what stands in the main column of a row stands: functions in the control system."""
+        return self._at.block if isinstance(part, Block) else self._at.display
 
     def _link(self, above: Row, below: Row) -> None:
         """The link from one row to the next; final elements are reached from the side."""
         if isinstance(below.part, Element | Elsewhere):
             self._link_out(below)
             return
-        top = below.y - _half_height(below.part)
-        joins = isinstance(below.part, Others)
-        self._sheet.software((_MAIN, above.y + _half_height(above.part)), (_MAIN, top), arrow=not joins)
+        # In the middle of what both rows leave free.
+        middle = (above.y + above.below + below.y - below.above) / 2
+        start = (self._axis(above.part), above.y + _half_height(above.part))
+        end = (self._axis(below.part), below.y - _half_height(below.part))
+        turn = () if start[0] == end[0] else ((start[0], middle), (end[0], middle))
+        self._sheet.software(start, *turn, end, arrow=not isinstance(below.part, Others))
         if below.label:
-            # In the middle of what the words of both rows leave free.
-            middle = (above.y + above.below + below.y - below.above) / 2
-            self._sheet.note(_MAIN + 5, middle + 2.2, (below.label,), width=_RIGHT - _MAIN - 5)
+            x = self._at.display + 5
+            self._sheet.note(x, middle + 2.2, (below.label,), width=self._at.right - x)
+
+    def _way_out(self, below: Row) -> float:
+        """Where the link to a final element runs down: several leave side by side, the furthest at the right."""
+        source = self._source_of(below)
+        ends = [row for row in self._rows if row.y > source.y]
+        apart = min(7.0, 21.0 / max(1, len(ends) - 1))
+        return self._axis(source.part) + (ends.index(below) - (len(ends) - 1) / 2) * apart
+
+    def _source_of(self, below: Row) -> Row:
+        """The controller, or the function on its output, that a final element or a connector follows."""
+        return next(row for row in reversed(self._rows) if row.y < below.y and isinstance(row.part, Block | Own))
 
     def _link_out(self, below: Row) -> None:
-        """From the controller, or the function on its output, to a final element or a connector."""
-        source = next(row for row in reversed(self._rows) if row.y < below.y and isinstance(row.part, Block | Own))
+        source, x, at = self._source_of(below), self._way_out(below), self._at
         start = source.y + _half_height(source.part)
-        ends = [row for row in self._rows if row.y > source.y]
-        # Several outputs leave side by side, the one that goes furthest at the right.
-        x = _MAIN + (ends.index(below) - (len(ends) - 1) / 2) * 7
-        edge = _CONNECTOR + 25 if isinstance(below.part, Elsewhere) else _CHANNEL + 21
+        edge = at.connector + 25 if isinstance(below.part, Elsewhere) else at.channel + 21
         self._sheet.software((x, start), (x, below.y), (edge, below.y), arrow=isinstance(below.part, Element))
+
+
+def _wirings(plant: Plant, rows: tuple[Row, ...]) -> Iterator[Wiring]:
+    """The wirings on a drawing."""
+    for row in rows:
+        match row.part:
+            case Own():
+                measurement = known(row.part.loop.measurement)
+                if measurement:
+                    yield measurement.wiring
+            case Block():
+                entering = (measurement_of(plant, tag) for tag in row.part.function.inputs)
+                yield from (found.wiring for found in entering if found)
+            case Element() | Secondary():
+                element = row.part.element
+                if element:
+                    yield element.wiring
+                    solenoid = known(element.trip_solenoid)
+                    if solenoid:
+                        yield solenoid.wiring
 
 
 def _symbol(function: Function) -> str:

@@ -11,13 +11,20 @@ from dataclasses import dataclass, replace
 
 from loopdoc.documents.drawing import BLOCK, BUBBLE, DIAMOND, LEADING, text_width, wrapped
 from loopdoc.documents.language import ENGLISH, Language
+from loopdoc.documents.loop_sheet.wiring_columns import stops_of, wiring_extent
 from loopdoc.documents.values import DASH
 from loopdoc.engineering.pairing import Plant
 from loopdoc.register.model import FinalElement, Function, Hold, Interlock, InterlockAction, Loop, Measurement, known
 from loopdoc.register.quantity import Range
 
-NOTE_WIDTH = 90.0
+NOTE_WIDTH = 86.0
 """Of the words beside an instrument of the field [pt]."""
+BLOCK_WIDTH = 80.0
+"""Of the words left of a function [pt]."""
+TAPPED_WIDTH = 64.0
+"""Of the words beside the interlock that a measurement initiates [pt]."""
+FORCED_WIDTH = 76.0
+"""Of the words beside the interlocks that act on the controller [pt]."""
 INPUT_DISTANCE = 46.0
 """Between two inputs of a function [pt]."""
 BESIDE_DISTANCE = 38.0
@@ -27,12 +34,17 @@ MOST_BESIDE = 3
 
 _TOP = 18.0
 _CLEAR = 13.0
-"""Least height left between two rows for the words on the link [pt]."""
+"""Least height left between two rows for the words on the link, or for the link to change its column [pt]."""
 _APART = 5.0
 _FIELD_BELOW = 31.0
 """What the pipe or vessel below a transmitter needs [pt]."""
 _INPUT_DEPTH = 34.0
 """The same with the most words that stand beside an input of a function [pt]."""
+
+WORDS_ABOVE = 10.0
+"""From a signal line to the words above it, clear of a channel and a diamond [pt]."""
+FORCED_BELOW = 10.0
+"""From a controller's measurement to what is told of the interlocks that act on it [pt]."""
 
 _SIGNAL_ENDS = {"4-20 mA": ("4", "20", "mA"), "0-20 mA": ("0", "20", "mA"), "1-5 V": ("1", "5", "V")}
 
@@ -126,7 +138,8 @@ def rows_of(plant: Plant, loop: Loop, language: Language) -> tuple[Row, ...]:
         y = _TOP + row.above
         if placed:
             last = placed[-1]
-            y = last.y + last.below + row.above + (_CLEAR if row.label else _APART)
+            turns = isinstance(last.part, Block) != isinstance(row.part, Block)
+            y = last.y + last.below + row.above + (_CLEAR if row.label or turns else _APART)
         placed.append(replace(row, y=y))
     return tuple(placed)
 
@@ -141,7 +154,7 @@ def _upward(plant: Plant, loop: Loop, language: Language) -> list[Row]:
         main = next((tag for tag in commanders if tag in register.loops), commanders[0] if commanders else None)
         beside = tuple(tag for tag in commanders if tag != main)
         if rows and isinstance(last := rows[-1].part, Block):
-            rows[-1] = _block_row(last.function, beside, rows[-1].label, language)
+            rows[-1] = _block_row(plant, last.function, beside, rows[-1].label, language)
         elif beside:
             rows.append(Row(Others(beside), 9, 9))
         if main is None:
@@ -151,16 +164,21 @@ def _upward(plant: Plant, loop: Loop, language: Language) -> list[Row]:
             primary = register.loops[main]
             rows.append(Row(Primary(primary), BUBBLE + 2, BUBBLE + 2, demand_words(primary, language)))
             return rows
-        rows.append(_block_row(register.functions[main], (), language.label("setpoint"), language))
+        rows.append(_block_row(plant, register.functions[main], (), language.label("setpoint"), language))
         target = main
 
 
 def _own_row(plant: Plant, loop: Loop, language: Language, label: str) -> Row:
     high = sum(kind in loop.alarms for kind in ("high", "high_high"))
     low = sum(kind in loop.alarms for kind in ("low", "low_low", "deviation"))
-    tapped = 30.0 if known(loop.measurement) and initiated_lines(plant, loop) else 0.0
-    above = max(BUBBLE + 2, 6 + high * LEADING, tapped)
-    below = max(BUBBLE + 3, measurement_depth(known(loop.measurement), language), 10 + low * LEADING)
+    measurement = known(loop.measurement)
+    tapped = 30.0 if measurement and initiated_lines(plant, loop) else 0.0
+    wires = wiring_extent(stops_of(measurement.wiring, language)) if measurement else (0.0, 0.0)
+    forced = len(controller_forcing_lines(plant, loop, language))
+    above = max(BUBBLE + 2, 8 + high * LEADING, tapped, wires[0])
+    below = max(BUBBLE + 3, measurement_depth(measurement, language), 12 + low * LEADING, wires[1])
+    if forced:
+        below = max(below, FORCED_BELOW + max(2 * DIAMOND, forced * LEADING) + 3)
     return Row(Own(loop), above, below, label)
 
 
@@ -177,7 +195,7 @@ def _downward(plant: Plant, loop: Loop, language: Language) -> Iterator[Row]:
         seen.add(to)
         function = register.functions[to]
         beside = tuple(tag for tag in plant.commanders.get(to, ()) if tag != source)
-        yield _block_row(function, beside, label, language)
+        yield _block_row(plant, function, beside, label, language)
         for end, branch in function.outputs.items():
             if end in register.final_elements:
                 yield _element_row(plant, Element(register.final_elements[end], branch), language)
@@ -194,14 +212,41 @@ def _downward(plant: Plant, loop: Loop, language: Language) -> Iterator[Row]:
         yield Row(Elsewhere(language.shown(to)), 8, 12)
 
 
-def _block_row(function: Function, beside: tuple[str, ...], label: str, language: Language) -> Row:
+def _block_row(plant: Plant, function: Function, beside: tuple[str, ...], label: str, language: Language) -> Row:
     drawn = min(len(beside), MOST_BESIDE)
     side = BUBBLE + 2 + (drawn - 1) * BESIDE_DISTANCE / 2 if drawn else 0.0
-    words = 0.0 if beside else LEADING * len(block_words(function, NOTE_WIDTH, language)) / 2 + 2
-    inputs = _INPUT_DEPTH + (len(function.inputs) - 1) * INPUT_DISTANCE if function.inputs else 0.0
-    transmitter = BUBBLE + 2 if function.inputs else 0.0
-    above = max(BLOCK + 2, side, words, transmitter)
-    return Row(Block(function, beside), above, max(BLOCK + 2, side, words, inputs), label)
+    words = LEADING * len(block_words(function, BLOCK_WIDTH, language))
+    if not function.inputs:
+        return Row(Block(function, beside), *2 * (max(BLOCK + 2, side, words / 2 + 2),), label)
+    entering = [measurement_of(plant, tag) for tag in function.inputs]
+    wires = [wiring_extent(stops_of(found.wiring, language)) if found else (0.0, 0.0) for found in entering]
+    inputs = input_offsets(plant, function, language)[-1] + max(_input_depth(entering[-1], language), wires[-1][1])
+    above = max(BUBBLE + 2, side, words + WORDS_ABOVE, wires[0][0])
+    return Row(Block(function, beside), above, max(BLOCK + 2, side, inputs), label)
+
+
+def input_offsets(plant: Plant, function: Function, language: Language) -> tuple[float, ...]:
+    """How far below the line of a function each of its inputs runs [pt]."""
+    offsets: list[float] = []
+    last: Measurement | None = None
+    for tag in function.inputs:
+        found = measurement_of(plant, tag)
+        wires = wiring_extent(stops_of(found.wiring, language)) if found else (0.0, 0.0)
+        below = wiring_extent(stops_of(last.wiring, language))[1] if last else 0.0
+        needed = max(_input_depth(last, language), below) + max(BUBBLE + 2, wires[0])
+        offsets.append(offsets[-1] + max(INPUT_DISTANCE, needed) if offsets else 0.0)
+        last = found
+    return tuple(offsets)
+
+
+def _input_depth(measurement: Measurement | None, language: Language) -> float:
+    return max(_INPUT_DEPTH, measurement_depth(measurement, language) + 2)
+
+
+def measurement_of(plant: Plant, tag: str) -> Measurement | None:
+    """The measurement that a function names by its transmitter or its loop."""
+    loop = plant.register.loops.get(tag)
+    return plant.register.measurements.get(tag) or (known(loop.measurement) if loop else None)
 
 
 def _element_row(plant: Plant, part: Element, language: Language) -> Row:
@@ -211,7 +256,22 @@ def _element_row(plant: Plant, part: Element, language: Language) -> Row:
 
 def _element_extent(plant: Plant, element: FinalElement, language: Language) -> tuple[float, float]:
     words = 5 + LEADING * len(element_words(element, language))
-    return max(12.0, forcing_height(plant, element, language)), max(28.0, words)
+    wires = wiring_extent(stops_of(element.wiring, language))
+    forced = forcing_height(plant, element, language)
+    solenoid = known(element.trip_solenoid)
+    if solenoid:
+        forced = solenoid_rise(element, language) + max(
+            12.0, WORDS_ABOVE + LEADING * len(element_forcing_lines(plant, element, language)),
+            wiring_extent(stops_of(solenoid.wiring, language))[0],
+        )  # fmt: skip
+    return max(12.0, forced, wires[0]), max(28.0, words, wires[1])
+
+
+def solenoid_rise(element: FinalElement, language: Language) -> float:
+    """How far the line of a trip solenoid runs above that of its final element [pt]."""
+    solenoid = known(element.trip_solenoid)
+    below = wiring_extent(stops_of(solenoid.wiring, language))[1] if solenoid else 0.0
+    return max(29.0, below + wiring_extent(stops_of(element.wiring, language))[0] + 1)
 
 
 def _secondary_row(plant: Plant, loop: Loop, label: str, language: Language) -> Row:
@@ -249,7 +309,7 @@ def block_words(function: Function, width: float, language: Language) -> tuple[s
         normal = language.normally(language.shown(function.normal)) if function.normal is not None else ""
         words.append(f"{span}, {normal}" if normal else span)
     if isinstance(function.service, str):
-        words.extend(wrapped(function.service, width, 2))
+        words.extend(wrapped(function.service, width, 4))
     return tuple(words)
 
 
@@ -263,7 +323,12 @@ def measurement_words(measurement: Measurement, language: Language) -> tuple[str
     """Range and element of a measurement, as they stand beside its transmitter."""
     element = measurement.element or measurement.sensor
     told = wrapped(language.shown(element), NOTE_WIDTH, 3) if element is not None else ()
-    return (language.shown(measurement.range), *told)
+    return (language.shown(measurement.range), *told, *supply_words(measurement.supply, language))
+
+
+def supply_words(supply: str | Hold | None, language: Language) -> tuple[str, ...]:
+    """The energy source of a device."""
+    return () if supply is None else wrapped(language.supplied_by(language.shown(supply)), NOTE_WIDTH, 2)
 
 
 def measurement_depth(measurement: Measurement | None, language: Language) -> float:
@@ -274,7 +339,8 @@ def measurement_depth(measurement: Measurement | None, language: Language) -> fl
 def element_words(element: FinalElement, language: Language) -> tuple[str, ...]:
     """Tag, service and signal of a final element."""
     ends = _signal_ends(element, language)
-    return (element.tag, *wrapped(language.shown(element.service), NOTE_WIDTH, 2), *((ends,) if ends else ()))
+    service = wrapped(language.shown(element.service), NOTE_WIDTH, 2)
+    return (element.tag, *service, *((ends,) if ends else ()), *supply_words(element.supply, language))
 
 
 def _signal_ends(element: FinalElement, language: Language) -> str:
@@ -292,7 +358,7 @@ def initiated_lines(plant: Plant, loop: Loop) -> tuple[str, ...]:
     """Interlocks that a loop's measurement initiates, in at most three lines."""
     tags = {loop.tag, transmitter_of(loop)}
     initiated = [interlock.tag for interlock in plant.register.interlocks.values() if tags & set(interlock.initiators)]
-    return wrapped(", ".join(initiated), 74, 3) if initiated else ()
+    return wrapped(", ".join(initiated), TAPPED_WIDTH, 3) if initiated else ()
 
 
 def forcing_lines(plant: Plant, tag: str, width: float, most: int, language: Language) -> tuple[str, ...]:
@@ -311,7 +377,13 @@ def forcing_lines(plant: Plant, tag: str, width: float, most: int, language: Lan
 
 def element_forcing_lines(plant: Plant, element: FinalElement, language: Language) -> tuple[str, ...]:
     """Interlocks that act on a final element, as they stand beside its diamond."""
-    return forcing_lines(plant, element.tag, NOTE_WIDTH + 4, 6, language)
+    width = BLOCK_WIDTH if known(element.trip_solenoid) else NOTE_WIDTH
+    return forcing_lines(plant, element.tag, width, 6, language)
+
+
+def controller_forcing_lines(plant: Plant, loop: Loop, language: Language) -> tuple[str, ...]:
+    """Interlocks that act on a controller, as they stand beside its diamond."""
+    return forcing_lines(plant, loop.tag, FORCED_WIDTH, 4, language)
 
 
 def forcing_height(plant: Plant, element: FinalElement, language: Language) -> float:

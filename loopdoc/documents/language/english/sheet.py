@@ -126,7 +126,7 @@ class EnglishSheet(EnglishGrammar):
         stand = "1 more finding about this loop stands" if number == 1 else (
             f"{number} more findings about this loop stand"
         )
-        return f"{stand} in the index of documents"
+        return f"{stand} in the check report"
 
     def accepted(self, reason: str, approved_by: str, until: str) -> str:
         """An accepted finding on a sheet."""
@@ -262,6 +262,18 @@ class EnglishSheet(EnglishGrammar):
         ends = {"variable-speed drive": ("lowest speed", "full speed"), "heater bank": ("off", "full power")}
         shut, opened = ends.get(kind, ("shut", "open"))
         return f"{first} {shut}, {last} {opened}"
+
+    def more(self, number: int) -> str:
+        """What a drawing counts in the place of drawing it."""
+        return f"{number} more"
+
+    def pair(self, mark: str) -> str:
+        """A pair of a cable by its number, or as the register marks it in words."""
+        return f"pair {mark}" if mark.isdigit() else mark
+
+    def supplied_by(self, supply: str) -> str:
+        """The energy source of a device."""
+        return f"supply: {supply}"
 
     def and_more(self, number: int) -> str:
         """Entries that a drawing has no room for."""

@@ -331,5 +331,14 @@ class GermanSheet(GermanGrammar, EnglishSheet):
         shut, opened = ends.get(kind, ("zu", "auf"))
         return f"{first} {shut}, {last} {opened}"
 
+    def more(self, number: int) -> str:
+        return f"{number} weitere"
+
+    def pair(self, mark: str) -> str:
+        return f"Paar {mark}" if mark.isdigit() else mark
+
+    def supplied_by(self, supply: str) -> str:
+        return f"Speisung: {supply}"
+
     def and_more(self, number: int) -> str:
         return f"und {number} weitere"
