@@ -8,6 +8,7 @@ import re
 import shutil
 import subprocess
 from collections import Counter
+from dataclasses import replace
 from functools import cache
 from html.parser import HTMLParser
 from pathlib import Path
@@ -28,7 +29,8 @@ from loopdoc.documents.schedules.lists import channel_lists, instrument_lists
 from loopdoc.documents.schedules.tuning import tuning_schedules
 from loopdoc.documents.site.site import Site
 from loopdoc.documents.whereabouts import natural
-from loopdoc.engineering.failure import FailureAnalysis
+from loopdoc.documents.wording import listed
+from loopdoc.engineering.failure import Failure, FailureAnalysis
 from loopdoc.register.load import Loaded, load
 
 EXAMPLES = Path(__file__).parents[1] / "examples"
@@ -91,7 +93,7 @@ class _Rows(HTMLParser):
 
 def rows_of(page: Page) -> list[list[str]]:
     parser = _Rows()
-    parser.feed(html(page).partition("<main>")[2])
+    parser.feed(html(page).partition("<main>")[2].partition('<table class="data sign-off"')[0])
     return parser.rows
 
 
@@ -172,12 +174,70 @@ def test_every_transmitter_and_final_element_stands_in_one_list(name: str) -> No
 
 
 @pytest.mark.parametrize("name", NAMES)
-def test_every_failure_of_every_loop_has_its_row(name: str) -> None:
+def test_every_failure_has_one_row_in_each_unit_that_it_reaches(name: str) -> None:
+    """What fails, and how, of every loop's own analysis against the first cells of the table of all failures."""
     basis = example(name)
     analysis = FailureAnalysis(basis.plant)
-    rows = [row for row in all_rows("failures", basis) if len(row) == 8 and row[0] != "Loop"]
-    wanted = Counter({tag: len(analysis.effects(tag)) for tag in basis.plant.register.loops})
-    assert Counter(row[0] for row in rows) == +wanted
+    happens = {
+        Failure.MEASUREMENT_BAD: "fails", Failure.SECONDARY_LOST: "fails", Failure.MEASUREMENT_HIGH: "high",
+        Failure.MEASUREMENT_LOW: "low", Failure.MEASUREMENT_FROZEN: "stands still", Failure.OUTPUT_LOST: "signal",
+        Failure.MOTIVE_POWER_LOST: "air|motive power|electric power", Failure.CONTROL_POWER_LOST: "system",
+    }  # fmt: skip
+    for page in failure_schedules(basis):
+        rows = [row for row in rows_of(page) if len(row) == 6 and row[0] != "What fails"]
+        unit = page.name.removeprefix("unit-")
+        own = [loop for loop in basis.plant.register.loops.values() if loop.unit == unit]
+        wanted = set()
+        for loop in own:
+            for effect in analysis.effects(loop.tag):
+                at = effect.at or tuple(move.element.tag for move in effect.elements)
+                wanted.add((at, happens[effect.failure]))
+        assert wanted
+        for at, how in wanted:
+            told = [row for row in rows if re.match(rf"{listed(at)} ", row[0]) and re.search(how, row[0])]
+            assert len(told) == 1, (unit, at, how, told)
+
+
+@pytest.mark.parametrize("name", NAMES)
+def test_loops_agree_on_the_effect_of_a_failure_that_they_share(name: str) -> None:
+    """A row tells it once for all of them, which holds only where each sees the same directions and protection."""
+    plant = example(name).plant
+    analysis = FailureAnalysis(plant)
+    seen: dict[tuple[object, ...], dict[str, object]] = {}
+    shared = 0
+    for tag in plant.register.loops:
+        for effect in analysis.effects(tag):
+            bad = effect.failure is Failure.SECONDARY_LOST
+            elements = tuple(move.element.tag for move in effect.elements)
+            key = (Failure.MEASUREMENT_BAD if bad else effect.failure, effect.at or elements or tag)
+            effects = {one.loop.tag: replace(one, loop=None) for one in effect.consequences}
+            shared += key in seen
+            assert seen.setdefault(key, effects) == effects, (tag, key)
+    assert shared > 10
+
+
+def test_what_nothing_stands_against_comes_first(tmp_path: Path) -> None:
+    basis = written(tmp_path, """
+loops:
+  TIC-1: {unit: "10", service: Vessel temperature, hazard: high,
+          measurement: {transmitter: TT-1, variable: temperature, range: 0 to 100 degC, signal: 4-20 mA,
+                        on_fault: reads high},
+          controller: {action: reverse, gain: 1, output: {to: TV-1}, modes: {normal: automatic},
+                       on_bad_measurement: {mode: manual, output: 0 %}},
+          process: {effect: rises, gain: 1 degC per %}}
+final_elements:
+  TV-1: {unit: "10", kind: control valve, service: Steam, opens_on: rising signal, fails: closed, signal: 4-20 mA}
+""")
+    rows = rows_of(next(failure_schedules(basis)))
+    bare = [row for row in rows if len(row) == 5 and row[0] != "What fails"]
+    # Too low a reading opens the steam valve; a reading that stands still lets the temperature go either way.
+    assert [(row[0], row[3]) for row in bare] == [
+        ("TT-1 reads too low", "Yes: TIC-1"),
+        ("TT-1 stands still", "Not decided: TIC-1 may go either way"),
+    ]
+    assert all(row[4] == "Nothing independent in the register." for row in bare)
+    whole = {row[0]: row for row in rows if len(row) == 6}
+    assert whole["TV-1 loses its signal or its air"][2:5] == ["TV-1 closes fully.", "Falls: TIC-1.", "No"]
 
 
 @pytest.mark.parametrize("name", NAMES)
@@ -400,7 +460,7 @@ def test_schedules_and_check_records_show_the_deviations_that_touch_them() -> No
     """FIC-1017 of the demo has two; its transmitter's alarms, its tuning and its failures stand in unit 10."""
     basis = example("tarn-hollow")
     shown = {
-        (kind, page.name): [row[0] for row in page.view["deviations"]]
+        (kind, page.name): [row[0] for row in rows_of(page) if len(row) == 5 and row[0].endswith("FIC-1017")]
         for kind in ("alarms", "tuning", "failures", "channels")
         for page in KINDS[kind](basis)
     }

@@ -3,12 +3,11 @@
 from __future__ import annotations
 
 from collections.abc import Iterator, Sequence
-from dataclasses import dataclass
 
 from loopdoc.documents.basis import Basis, Page
 from loopdoc.documents.language import ENGLISH
 from loopdoc.documents.narrative.open_points import hold_rows
-from loopdoc.documents.schedules.schedule import A4, Column, Group, Row, Schedule, Writer, page
+from loopdoc.documents.schedules.schedule import A4, Column, Group, Row, Schedule, ScheduleKind, Writer, page
 from loopdoc.documents.values import DASH, shown
 from loopdoc.documents.wording import counted, listed, sentence, upper_first
 from loopdoc.register.model import Deviation
@@ -17,8 +16,10 @@ from loopdoc.rules.catalogue import RULES
 from loopdoc.rules.finding import Coverage, Finding, Level
 from loopdoc.rules.policy import Limits, limits_from, policy_entries
 
-FOLDER = "check-report"
-TEMPLATE = "report.html"
+KIND = ScheduleKind(
+    "check-report", "Check report", "QR", A4,
+    ("Findings reviewed by", "Date", "Deviations and holds accepted by", "Date", "Remarks"),
+)
 FINDINGS = (
     Column("Tag", 9), Column("Rule", 14), Column("Place", 15), Column("Finding", 34), Column("Remedy", 28),
 )  # fmt: skip
@@ -35,7 +36,6 @@ POLICY = (
     Column("Threshold", 15), Column("In force", 8), Column("Default", 8), Column("Unit", 15), Column("Meaning", 28),
     Column("Source of the default", 26),
 )  # fmt: skip
-SIGNATURES = ("Findings reviewed by", "Date", "Deviations and holds accepted by", "Date", "Remarks")
 NAMED_PLACES = 6
 """Tags named beside a reason; of more the number is told."""
 
@@ -47,13 +47,6 @@ CAUTION = (
     "A register without findings is not thereby right, and a plant is not thereby well controlled: rules see what is "
     "written. Safety functions are judged in their own lifecycle (IEC 61511)."
 )
-
-
-@dataclass(frozen=True, slots=True)
-class SignOff:
-    """Lines for those who sign: the label of each cell."""
-
-    labels: tuple[str, ...]
 
 
 def check_reports(basis: Basis) -> Iterator[Page]:
@@ -71,15 +64,13 @@ class _Report:
         self._limits = limits_from(basis.plant.register.policy)
 
     def page(self) -> Page:
-        schedules = [
+        schedules = (
             *self._findings(), *self._accepted(), *self._holds(), *self._coverage(), *self._policy(),
-        ]  # fmt: skip
+        )  # fmt: skip
+        site = self._basis.plant.register.site
         return page(
-            self._basis, self._writer,
-            folder=FOLDER, kind="Check report", code="QR", title="Check of the register",
-            extent=shown(self._basis.plant.register.site.name if self._basis.plant.register.site else None), paper=A4,
-            reading=(self._summary(), READING), caution=CAUTION, template=TEMPLATE,
-            view={"schedules": tuple(schedules), "sign_off": SignOff(SIGNATURES), "lead": ()},
+            self._basis, self._writer, KIND, title="Check of the register", extent=shown(site.name if site else None),
+            reading=(self._summary(), READING), caution=CAUTION, schedules=schedules, view={"deviations": ()},
         )  # fmt: skip
 
     def _summary(self) -> str:

@@ -7,17 +7,18 @@ from dataclasses import replace
 
 from loopdoc.documents.basis import Basis, Page
 from loopdoc.documents.revision.affected import Kinds, documents_between
-from loopdoc.documents.revision.check_report import SignOff
 from loopdoc.documents.revision.revision_story import story
-from loopdoc.documents.schedules.schedule import A4, Cell, Column, Group, Row, Schedule, Writer, page
+from loopdoc.documents.schedules.schedule import A4, Cell, Column, Group, Row, Schedule, ScheduleKind, Writer, page
 from loopdoc.documents.values import DASH
 from loopdoc.documents.wording import sentence, upper_first
 from loopdoc.revisions.changes import NAMED, Change, Kind, TagChange
 from loopdoc.revisions.compare import RegisterComparison, compared
 from loopdoc.revisions.effects import MarginChange
 
-FOLDER = "revision-summary"
-TEMPLATE = "report.html"
+KIND = ScheduleKind(
+    "revision-summary", "Revision summary", "RS", A4,
+    ("Change reviewed by", "Date", "Accepted for the plant by", "Date", "Remarks"),
+)
 CHANGES = (Column("Tag", 12), Column("Value", 24), Column("Was", 24), Column("Is", 28), Column("Place", 12))
 FINDINGS = (
     Column("Tag", 9), Column("Rule", 14), Column("What becomes of it", 13), Column("Finding", 36), Column("Remedy", 28),
@@ -33,7 +34,6 @@ DOCUMENTS = (
     Column("Document number", 16), Column("Type", 18), Column("Title", 28), Column("Part", 20),
     Column("What becomes of it", 18),
 )  # fmt: skip
-SIGNATURES = ("Change reviewed by", "Date", "Accepted for the plant by", "Date", "Remarks")
 
 READING = (
     "Changes are told by what they mean: a value in other units, a moved line or a renamed file is none. Margins, "
@@ -66,16 +66,9 @@ class _Summary:
     def page(self) -> Page:
         found = self._found
         return page(
-            self._basis, self._writer,
-            folder=FOLDER, kind="Revision summary", code="RS",
-            title=f"Revision {found.new} against {found.old}",
-            extent="What changes, and what that does to the plant", paper=A4,
-            reading=(READING,), caution=CAUTION, template=TEMPLATE,
-            view={
-                "lead": tuple(self._writer.prose(text) for text in story(found)),
-                "schedules": tuple(self._schedules()),
-                "sign_off": SignOff(SIGNATURES),
-            },
+            self._basis, self._writer, KIND, title=f"Revision {found.new} against {found.old}",
+            extent="What changes, and what that does to the plant", reading=(READING,), caution=CAUTION,
+            lead=story(found), schedules=tuple(self._schedules()),
         )  # fmt: skip
 
     def _schedules(self) -> Iterator[Schedule]:

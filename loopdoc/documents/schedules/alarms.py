@@ -9,7 +9,6 @@ from loopdoc.documents.basis import Basis, Page
 from loopdoc.documents.narrative import protection_story, time_to_act_story
 from loopdoc.documents.narrative.time_to_act_story import Told, alarm_name
 from loopdoc.documents.schedules.schedule import (
-    A3,
     DASHES,
     NOT_APPLICABLE,
     Cell,
@@ -17,18 +16,23 @@ from loopdoc.documents.schedules.schedule import (
     Group,
     Row,
     Schedule,
+    ScheduleKind,
     Writer,
+    extent,
     page,
-    unit_title,
 )
 from loopdoc.documents.values import DASH
 from loopdoc.documents.whereabouts import anchor, natural, unit_numbers, unit_of
-from loopdoc.documents.wording import counted, listed, upper_first
+from loopdoc.documents.wording import upper_first
 from loopdoc.engineering.pairing import Trip
 from loopdoc.register.model import ALARM_ORDER, Alarm, Loop, known
 from loopdoc.register.units import UnitError
 
-FOLDER = "alarm-schedules"
+KIND = ScheduleKind(
+    "alarm-schedules", "Alarm and trip schedule", "AS",
+    signatures=("Reviewed by, for process control", "For operations", "For process safety", "Date of the review",
+                "Remarks"),
+)  # fmt: skip
 COLUMNS = (
     Column("Tag", 5.2), Column("Service", 8.6), Column("Alarm or trip", 6.6), Column("Limit", 5.8),
     Column("Dead band", 4.6), Column("Delay", 3.6), Column("Priority", 4.6), Column("Likely cause", 13.0),
@@ -99,14 +103,9 @@ class _Alarms:
         groups = tuple(Group(tuple(self._rows(sensor))) for sensor in sensors)
         alarms = sum(len(sensor.loop.alarms) for sensor in sensors if sensor.loop)
         trips = sum(len(sensor.trips) for sensor in sensors)
-        counts = ((alarms, "alarm"), (trips, "trip"))
         return page(
-            self._basis, self._writer,
-            folder=FOLDER, kind="Alarm and trip schedule", code="AS", unit=number, paper=A3,
-            title=unit_title(self._basis, number),
-            extent=upper_first(listed(counted(count, noun) for count, noun in counts if count)),
-            reading=READING, caution=time_to_act_story.CAUTION,
-            view={"schedules": (Schedule("", COLUMNS, groups),)},
+            self._basis, self._writer, KIND, unit=number, extent=extent((alarms, "alarm"), (trips, "trip")),
+            reading=READING, caution=time_to_act_story.CAUTION, schedules=(Schedule("", COLUMNS, groups),),
         )  # fmt: skip
 
     def _rows(self, sensor: _Sensor) -> Iterator[Row]:

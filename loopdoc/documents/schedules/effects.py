@@ -7,7 +7,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterator, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 from loopdoc.documents.basis import Basis, Page
 from loopdoc.documents.drawing import text_width
@@ -23,17 +23,22 @@ from loopdoc.documents.schedules.schedule import (
     Paper,
     Row,
     Schedule,
+    ScheduleKind,
     Writer,
+    extent,
     page,
-    unit_title,
 )
 from loopdoc.documents.values import DASH
 from loopdoc.documents.whereabouts import anchor, natural, unit_numbers, unit_of
-from loopdoc.documents.wording import counted, listed, sentence, upper_first, value
+from loopdoc.documents.wording import sentence, upper_first, value
 from loopdoc.engineering.pairing import Trip
 from loopdoc.register.model import Hold, Interlock, InterlockAction, known
 
-FOLDER = "cause-and-effect"
+KIND = ScheduleKind(
+    "cause-and-effect", "Cause and effect chart", "CE",
+    signatures=("Reviewed by, for process safety", "For operations", "For instrumentation", "Date of the review",
+                "Remarks"),
+)  # fmt: skip
 TEMPLATE = "cause-and-effect.html"
 
 NARROWEST_EFFECT_MM = 6.35
@@ -131,14 +136,11 @@ class _Charts:
         )
         causes = sum(len(one.initiators) for one in self._interlocks)
         effects = len(_targets(self._interlocks))
-        counts = ((len(self._interlocks), "interlock"), (causes, "cause"), (effects, "effect"))
         return page(
-            self._basis, self._writer,
-            folder=FOLDER, kind="Cause and effect chart", code="CE", unit=self._number, paper=paper,
-            title=unit_title(self._basis, self._number),
-            extent=upper_first(listed(counted(count, noun) for count, noun in counts if count)),
+            self._basis, self._writer, replace(KIND, paper=paper), unit=self._number,
+            extent=extent((len(self._interlocks), "interlock"), (causes, "cause"), (effects, "effect")),
             reading=(f"{READING} {self._marks()}", DASHES, *self._from_elsewhere()), caution=CAUTION, template=TEMPLATE,
-            view={"charts": charts, "schedules": (self._interlock_table(),)},
+            schedules=(self._interlock_table(),), view={"charts": charts},
         )  # fmt: skip
 
     def _layer(self, interlock: Interlock) -> str:

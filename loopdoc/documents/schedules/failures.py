@@ -1,14 +1,14 @@
-"""The schedule of failure effects of each unit: one row for every loop and every failure that concerns it."""
+"""The schedule of failure effects of each unit: every failure once, and first those that nothing stands against."""
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterable, Iterator, Sequence
+from dataclasses import dataclass
 
 from loopdoc.documents.basis import Basis, Page
-from loopdoc.documents.naming import moves_by_itself, power_of, quantity
+from loopdoc.documents.naming import moves_by_itself, power_of
 from loopdoc.documents.narrative import failure_story
 from loopdoc.documents.schedules.schedule import (
-    A3,
     DASHES,
     NOT_APPLICABLE,
     Cell,
@@ -16,73 +16,122 @@ from loopdoc.documents.schedules.schedule import (
     Group,
     Row,
     Schedule,
+    ScheduleKind,
     Writer,
+    extent,
     page,
-    unit_title,
 )
 from loopdoc.documents.whereabouts import anchor, natural, unit_numbers, unit_of
-from loopdoc.documents.wording import NO_BREAK, as_written, counted, grouped, listed, sentence, upper_first, value
+from loopdoc.documents.wording import (
+    NO_BREAK,
+    as_written,
+    grouped,
+    listed,
+    number_word,
+    sentence,
+    value,
+)
 from loopdoc.engineering.direction import Undecided
 from loopdoc.engineering.failure import Consequence, Failure, FailureAnalysis, FailureEffect
+from loopdoc.engineering.failure_gathering import failures_once
 from loopdoc.engineering.faults import fault_reading
 from loopdoc.engineering.spreading import PASSIVE_MODES, ElementMove, normal_mode, transmitter_of
 from loopdoc.register.model import Loop, known
 
-FOLDER = "failure-effects"
-COLUMNS = (
-    Column("Loop", 5.2), Column("Failure", 12.5), Column("What the controller sees", 11.0),
-    Column("What the control does", 19.5), Column("Where the final element goes", 13.0),
-    Column("Where the process goes", 15.0), Column("Towards the hazard?", 8.8),
-    Column("What stands against it", 15.0),
+KIND = ScheduleKind(
+    "failure-effects", "Failure effects", "FE",
+    signatures=("Reviewed by, for process control", "For operations", "For process safety", "Date of the review",
+                "Remarks"),
 )  # fmt: skip
+COLUMNS = (
+    Column("What fails", 13.5), Column("What the control does", 22.0), Column("Where the final element goes", 13.0),
+    Column("Where the process goes", 17.5), Column("Towards the hazard?", 14.0),
+    Column("What stands against it", 20.0),
+)  # fmt: skip
+READING = (
+    "Each failure stands once, at the loop nearest to it; its effects are those on every loop that it reaches. "
+    "Failures with the same effect share a row."
+)
+CAUTION = (
+    "The effects follow from signs and modes alone, one failure at a time, without how far or how fast. They support "
+    "a hazard study and do not replace one."
+)
+UNPOWERED = "The control system loses its power, with it its alarms and the interlocks of the process layer"
 UNDECIDED = "Not decided"
 NOTHING = "Nothing."
-_SEEN = {
-    "bad": "A bad measurement", "high": "Too high, taken as good", "low": "Too low, taken as good",
-    "frozen": "The old value, taken as good",
-}  # fmt: skip
-_WAYS = {1: "rises", -1: "falls", 0: "is left to itself"}
+_OUTPUT = {1: "rises", -1: "falls", 0: "stays"}
+_ORDER = {failure: rank for rank, failure in enumerate(Failure)}
+_PROCESS = {1: "Rises", -1: "Falls", 0: "Left to itself"}
+
+
+@dataclass(frozen=True, slots=True)
+class _Told:
+    """One failure as its row tells it."""
+
+    what: str
+    """What fails, such as `FV-2011`."""
+    how: str
+    """What happens to it, such as `loses its air`."""
+    cells: tuple[Cell, ...]
+    """What follows."""
+    bare: bool
+    """Whether it goes or may go towards a hazard and nothing stands against it."""
+    hurts: bool
+    """Whether it surely goes towards a hazard."""
 
 
 def failure_schedules(basis: Basis) -> Iterator[Page]:
     """The schedule of each unit that has a loop whose failures lead anywhere."""
     analysis = FailureAnalysis(basis.plant)
     for number in unit_numbers(basis.plant):
-        own = [loop for loop in basis.plant.register.loops.values() if unit_of(loop) == number]
-        found = [(loop, effects) for loop in sorted(own, key=lambda loop: natural(loop.tag))
-                 if (effects := analysis.effects(loop.tag))]  # fmt: skip
+        loops = [loop for loop in basis.plant.register.loops.values() if unit_of(loop) == number]
+        found = failures_once(analysis, sorted(loops, key=lambda loop: natural(loop.tag)))
         if found:
-            yield _Failures(basis, analysis).page(number, found)
+            yield _Failures(basis, analysis, number).page(found)
 
 
 class _Failures:
     """The schedule of one unit while it is written."""
 
-    def __init__(self, basis: Basis, analysis: FailureAnalysis) -> None:
+    def __init__(self, basis: Basis, analysis: FailureAnalysis, number: str) -> None:
         self._basis = basis
         self._plant = basis.plant
         self._analysis = analysis
+        self._number = number
         self._writer = Writer(basis)
 
-    def page(self, number: str, found: list[tuple[Loop, tuple[FailureEffect, ...]]]) -> Page:
-        groups = tuple(
-            Group(
-                tuple(self._row(effect, "" if index else anchor(loop.tag)) for index, effect in enumerate(effects)),
-                self._writer.prose(self._heading(loop)),
-            )
-            for loop, effects in found
-        )
-        effects = sum(len(effects) for _, effects in found)
+    def page(self, found: Sequence[FailureEffect]) -> Page:
+        power = Failure.CONTROL_POWER_LOST
+        own: dict[str, list[FailureEffect]] = {}
+        from_elsewhere: list[FailureEffect] = []
+        for effect in found:
+            if effect.failure is not power:
+                here = unit_of(effect.loop) == self._number
+                (own.setdefault(effect.loop.tag, []) if here else from_elsewhere).append(effect)
+        groups = [
+            (self._heading(self._plant.register.loops[tag]), anchor(tag), own[tag]) for tag in sorted(own, key=natural)
+        ]
+        groups += [("Failures in other units that reach this one", "", from_elsewhere)] if from_elsewhere else []
+        unpowered = [effect for effect in found if effect.failure is power]
+        groups += [(UNPOWERED, "", unpowered)] if unpowered else []
+        told = [(self._writer.prose(heading), at, self._told(effects)) for heading, at, effects in groups]
+        bare = [one for _, _, several in told for one in several if one.bare]
+        certain, possible = [one for one in bare if one.hurts], [one for one in bare if not one.hurts]
+        first = Schedule("What nothing independent stands against", COLUMNS[:1] + COLUMNS[2:], tuple(
+            Group(tuple(self._row(one, first=True) for one in several), self._writer.prose(heading))
+            for heading, several in (("Towards a hazard", certain), ("May go towards a hazard", possible))
+            if several
+        ))  # fmt: skip
+        whole = Schedule("All failures", COLUMNS, tuple(
+            Group(tuple(self._row(one, at="" if index else at) for index, one in enumerate(several)), heading)
+            for heading, at, several in told
+        ))  # fmt: skip
         return page(
-            self._basis, self._writer,
-            folder=FOLDER, kind="Failure effects", code="FE", unit=number, paper=A3,
-            title=unit_title(self._basis, number),
-            extent=upper_first(f"{counted(len(found), 'loop')}, {counted(effects, 'failure')}"),
-            reading=(failure_story.ASSUMPTIONS.replace("They", "Failures", 1), DASHES), caution=(
-                "The effects follow from signs and modes alone, one failure at a time, without how far or how fast. "
-                "They support a hazard study and do not replace one."
-            ),
-            view={"schedules": (Schedule("", COLUMNS, groups),)},
+            self._basis, self._writer, KIND, unit=self._number,
+            extent=extent((len(own), "loop"), (len(found), "failure")),
+            reading=(failure_story.ASSUMPTIONS.replace("They", "Failures", 1), f"{READING} {DASHES}"), caution=CAUTION,
+            lead=(_lead(sum(len(several) for _, _, several in told), len(certain), len(possible)),),
+            schedules=(first, whole) if bare else (whole,),
         )  # fmt: skip
 
     def _heading(self, loop: Loop) -> str:
@@ -99,48 +148,49 @@ class _Failures:
             parts += [f"normally {mode}"] if mode else []
         return "; ".join(parts)
 
-    def _row(self, effect: FailureEffect, at: str) -> Row:
-        write = self._writer
-        hazard, strong = self._hazard(effect)
-        return Row(
-            (
-                write.cell(effect.loop.tag), write.cell(self._failure(effect)),
-                write.cell(self._sees(effect)), write.cell(*self._control(effect)),
-                write.cell(*self._elements(effect)), write.cell(*self._process(effect)),
-                write.cell(*hazard, kind="strong" if strong else ""), self._against(effect),
-            ),
-            at,
-        )  # fmt: skip
+    def _told(self, effects: Iterable[FailureEffect]) -> tuple[_Told, ...]:
+        """Each failure, those with the same effect together."""
+        found: dict[tuple[str, tuple[Cell, ...]], _Told] = {}
+        for effect in sorted(effects, key=lambda effect: (_ORDER[effect.failure], *map(natural, effect.at))):
+            what, how = self._failure(effect)
+            hazard, hurts = self._hazard(effect)
+            against, nothing = self._against(effect)
+            write = self._writer
+            cells = (
+                write.cell(*self._control(effect)), write.cell(*self._elements(effect)),
+                write.cell(*self._process(effect)), write.cell(*hazard, kind="strong" if hurts else ""), against,
+            )  # fmt: skip
+            if (what, cells) in found:
+                how = f"{found[what, cells].how} or {how}".replace(" or loses", " or")
+            found[what, cells] = _Told(what, how, cells, nothing, hurts)
+        return tuple(found.values())
+
+    def _row(self, told: _Told, *, at: str = "", first: bool = False) -> Row:
+        head = self._writer.cell(f"{told.what} {told.how}")
+        return Row((head, *(told.cells[1:] if first else told.cells)), at)
 
     # -- what fails, what the control does
 
-    def _failure(self, effect: FailureEffect) -> str:
-        at = listed(effect.at)
+    def _failure(self, effect: FailureEffect) -> tuple[str, str]:
+        """What fails, and what happens to it."""
+        at = listed(effect.at) or "The transmitter"
         match effect.failure:
             case Failure.MEASUREMENT_BAD | Failure.SECONDARY_LOST:
-                return f"{at or 'The transmitter'} fails"
+                return at, "fails" if effect.seen == "bad" else "fails unnoticed"
             case Failure.MEASUREMENT_HIGH | Failure.MEASUREMENT_LOW:
-                way = "high" if effect.failure is Failure.MEASUREMENT_HIGH else "low"
-                return f"{at or 'The transmitter'} reads too {way}"
+                return at, f"reads too {'high' if effect.failure is Failure.MEASUREMENT_HIGH else 'low'}"
             case Failure.MEASUREMENT_FROZEN:
-                return f"{at or 'The transmitter'} stands still"
-            case Failure.OUTPUT_LOST:
-                return f"{at} {'loses its' if len(effect.at) == 1 else 'lose their'} signal"
+                return at, "stands still"
             case Failure.MOTIVE_POWER_LOST:
                 powers = listed(dict.fromkeys(power_of(move.element) for move in effect.elements), "or")
-                return f"{at} {'loses its' if len(effect.at) == 1 else 'lose their'} {powers}"
-        return "The control system loses its power"
+                return at, f"loses its {powers}" if len(effect.at) == 1 else f"lose their {powers}"
+            case Failure.OUTPUT_LOST:
+                return at, "loses its signal" if len(effect.at) == 1 else "lose their signal"
+        return listed(move.element.tag for move in effect.elements), "as the control system loses its power"
 
     def _control(self, effect: FailureEffect) -> Iterator[str]:
         told = [*self._own(effect), *self._setpoints(effect), *self._others(effect)]
         yield from told or [NOTHING if effect.seen else NOT_APPLICABLE]
-
-    def _sees(self, effect: FailureEffect) -> str:
-        failed = self._failed(effect)
-        fault = fault_reading(failed.measurement) if failed and effect.seen == "bad" else None
-        if isinstance(fault, Undecided):
-            return f"{UNDECIDED}: {fault.reason}."
-        return _SEEN.get(effect.seen, NOT_APPLICABLE)
 
     def _own(self, effect: FailureEffect) -> Iterator[str]:
         """What the controller does whose measurement fails."""
@@ -155,14 +205,15 @@ class _Failures:
                 held = effect.forced_output in ("", "hold")
                 yield sentence(f"{to}, output {'held' if held else as_written(effect.forced_output)}")
             else:
-                given = not isinstance(fault_reading(controlled.loop.measurement), Undecided)
-                yield f"{UNDECIDED}: what {tag} then does is not given." if given else f"{UNDECIDED}."
+                fault = fault_reading(controlled.loop.measurement)
+                why = fault.reason if isinstance(fault, Undecided) else f"what {tag} then does is not given"
+                yield sentence(f"{UNDECIDED}: {why}")
         elif normal_mode(controlled) in PASSIVE_MODES:
             yield sentence(f"{tag} is normally {normal_mode(controlled)} and does nothing")
         elif isinstance(effect.output, Undecided):
             yield sentence(f"{UNDECIDED}: {effect.output.reason}")
         elif effect.output:
-            yield sentence(f"The output of {tag} {_WAYS[effect.output]}")
+            yield sentence(f"The output of {tag} {_OUTPUT[effect.output]}")
 
     def _setpoints(self, effect: FailureEffect) -> Iterator[str]:
         for move in effect.setpoints:
@@ -212,12 +263,16 @@ class _Failures:
         told = {move.direction.reason for move in effect.elements if isinstance(move.direction, Undecided)}
         unknown = [(one.direction.reason, one.loop.tag) for one in effect.consequences
                    if isinstance(one.direction, Undecided)]  # fmt: skip
-        for one in effect.consequences:
-            if not isinstance(one.direction, Undecided):
-                rivals = f"; {listed(one.opposed_by, 'or')} works against it" if one.opposed_by else ""
-                yield sentence(f"{one.loop.tag}: the {quantity(one.loop)} {_WAYS[one.direction]}{rivals}")
+        for way, name in _PROCESS.items():
+            moved = [
+                f"{one.loop.tag} (against {listed(one.opposed_by, 'or')})" if one.opposed_by else one.loop.tag
+                for one in effect.consequences
+                if one.direction == way
+            ]
+            if moved:
+                yield sentence(f"{name}: {listed(moved)}")
         for reason, tags in grouped(unknown).items():
-            yield sentence(f"{listed(tags)}: {_lower(UNDECIDED)}{'' if reason in told else f', {reason}'}")
+            yield sentence(f"{UNDECIDED}: {listed(tags)}{'' if reason in told else f', {reason}'}")
         if not effect.consequences:
             yield NOT_APPLICABLE
 
@@ -237,19 +292,33 @@ class _Failures:
         told += [f"{UNDECIDED}: {listed(open_)} may go either way"] if open_ else []
         return told, False
 
-    def _against(self, effect: FailureEffect) -> Cell:
+    def _against(self, effect: FailureEffect) -> tuple[Cell, bool]:
+        """What stands against it, and whether nothing does that should."""
         alarms = [f"{found.loop.tag} {found.alarm.kind.replace('_', '-')}{_at(known(found.alarm.limit))}"
                   for one in effect.consequences for found in one.alarms]  # fmt: skip
         initiators = {trip.interlock.tag: trip.initiator for one in effect.consequences for trip in one.trips}
         trips = [f"{tag} {known(one.direction)}{_at(known(one.limit))}" for tag, one in initiators.items()]
         told = list(dict.fromkeys([*alarms, *trips]))
         if told:
-            return self._writer.cell(f"{'; '.join(told)}.")
+            return self._writer.cell(f"{'; '.join(told)}."), False
         if not any(_matters(one) for one in effect.consequences):
             unknown = any(one.hazardous is None for one in effect.consequences)
-            return self._writer.cell(f"{UNDECIDED}." if unknown else NOT_APPLICABLE)
+            return self._writer.cell(f"{UNDECIDED}." if unknown else NOT_APPLICABLE), False
         back = [f"{one.tag} would move the final element back at its own limit" for one in effect.opposing]
-        return self._writer.cell(f"{failure_story.NOTHING}.", *map(sentence, back), kind="strong")
+        return self._writer.cell(f"{failure_story.NOTHING}.", *map(sentence, back), kind="strong"), True
+
+
+def _lead(rows: int, certain: int, possible: int) -> str:
+    """How many rows nothing stands against."""
+    if not certain + possible:
+        return f"Something independent stands against each of the {rows} rows that leads towards a hazard."
+    surely = f"{number_word(certain)} {'leads' if certain == 1 else 'lead'}" if certain else ""
+    perhaps = f"{number_word(possible)} may{'' if certain else ' lead'}" if possible else ""
+    also = f" and {perhaps}" if certain and possible else ""
+    return (
+        f"Of the {rows} rows, {surely or perhaps} towards a hazard{also}, with nothing independent in the register "
+        "that stands against it. These come first, and again at their loops."
+    )
 
 
 def _matters(one: Consequence) -> bool:

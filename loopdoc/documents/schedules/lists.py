@@ -7,7 +7,6 @@ from dataclasses import dataclass
 
 from loopdoc.documents.basis import Basis, Page
 from loopdoc.documents.schedules.schedule import (
-    A3,
     A4,
     DASHES,
     NOT_APPLICABLE,
@@ -16,9 +15,10 @@ from loopdoc.documents.schedules.schedule import (
     Group,
     Row,
     Schedule,
+    ScheduleKind,
     Writer,
+    extent,
     page,
-    unit_title,
 )
 from loopdoc.documents.values import shown
 from loopdoc.documents.whereabouts import anchor, natural, unit_numbers, unit_of
@@ -27,8 +27,8 @@ from loopdoc.engineering.pairing import Plant
 from loopdoc.register.model import FinalElement, Hold, Instrument, Loop, Measurement, known
 from loopdoc.register.quantity import Range
 
-CHANNEL_FOLDER = "channel-lists"
-INSTRUMENT_FOLDER = "instrument-lists"
+CHANNEL_LIST = ScheduleKind("channel-lists", "Channel list", "CL", A4)
+INSTRUMENT_LIST = ScheduleKind("instrument-lists", "Instrument list", "IL")
 
 CHANNELS = (
     Column("Channel", 10), Column("Tag", 9), Column("Service", 27), Column("Unit", 5), Column("Direction", 8),
@@ -192,11 +192,8 @@ def _channel_page(basis: Basis, signals: list[_Signal]) -> Page:
     counts += [f"{counted(len(without), 'signal')} without a channel"] if without else []
     site = basis.plant.register.site
     return page(
-        basis, write,
-        folder=CHANNEL_FOLDER, kind="Channel list", code="CL", paper=A4,
-        title=shown(site.name if site else None),
-        extent=upper_first(listed(counts)),
-        reading=CHANNEL_READING, view={"schedules": (Schedule("", CHANNELS, tuple(groups)),)},
+        basis, write, CHANNEL_LIST, title=shown(site.name if site else None), extent=upper_first(listed(counts)),
+        reading=CHANNEL_READING, schedules=(Schedule("", CHANNELS, tuple(groups)),),
     )  # fmt: skip
 
 
@@ -224,13 +221,10 @@ def _instrument_page(basis: Basis, number: str, sensors: list[_Sensor], elements
     if elements:
         rows = tuple(_element_row(write, basis.plant, element) for element in elements)
         schedules.append(Schedule("Final elements", ELEMENTS, (Group(rows),)))
-    counts = ((len(sensors), "transmitter"), (len(elements), "final element"))
     return page(
-        basis, write,
-        folder=INSTRUMENT_FOLDER, kind="Instrument list", code="IL", unit=number, paper=A3,
-        title=unit_title(basis, number),
-        extent=upper_first(listed(counted(count, noun) for count, noun in counts if count)),
-        reading=INSTRUMENT_READING, view={"schedules": tuple(schedules)},
+        basis, write, INSTRUMENT_LIST, unit=number,
+        extent=extent((len(sensors), "transmitter"), (len(elements), "final element")),
+        reading=INSTRUMENT_READING, schedules=schedules,
     )  # fmt: skip
 
 

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterable, Sequence
+from collections.abc import Callable, Iterable, Mapping, Sequence
 from dataclasses import dataclass, replace
 from typing import Any
 
@@ -13,7 +13,7 @@ from loopdoc.documents.page_fit import MM, title_table_height
 from loopdoc.documents.titleblock import Document
 from loopdoc.documents.values import DASH, HOLD, shown
 from loopdoc.documents.whereabouts import NO_UNIT, file_name, told_at
-from loopdoc.documents.wording import NO_BREAK, Prose, Run, Setter, sentence, value
+from loopdoc.documents.wording import NO_BREAK, Prose, Run, Setter, counted, listed, sentence, upper_first, value
 from loopdoc.register.model import Hold, known
 from loopdoc.register.quantity import Quantity, Range
 from loopdoc.rules.references import defined_tags
@@ -94,6 +94,9 @@ class Schedule:
     groups: tuple[Group, ...]
 
 
+DEVIATIONS = tuple(map(Column, DEVIATION_HEAD, (16.0, 29.0, 32.0, 14.0, 9.0)))
+
+
 @dataclass(frozen=True, slots=True)
 class HoldLine:
     """A hold with its number and its reason."""
@@ -170,11 +173,29 @@ class Writer:
         return tuple(HoldLine(f"{HOLD}{NO_BREAK}{number}", reason) for reason, number in self._reasons.items())
 
 
+@dataclass(frozen=True, slots=True)
+class ScheduleKind:
+    """A kind of schedule: where it is filed, what it is called and who signs it."""
+
+    folder: str
+    name: str
+    code: str
+    """In the document number."""
+    paper: Paper = A3
+    signatures: tuple[str, ...] = ()
+    """Label of each cell of the sign-off, the widest last; empty where the title block is signature enough."""
+
+
 def unit_title(basis: Basis, number: str) -> str:
     """`Unit 20 Rectification`."""
     unit = basis.plant.register.units.get(number)
     name = known(unit.name) if unit else None
     return f"Unit {number} {name}" if name else f"Unit {number}"
+
+
+def extent(*counts: tuple[int, str]) -> str:
+    """What a schedule holds: `Three interlocks and five causes`; what it holds none of is left out."""
+    return upper_first(listed(counted(count, noun) for count, noun in counts if count))
 
 
 def serial(basis: Basis, number: str) -> str:
@@ -185,43 +206,50 @@ def serial(basis: Basis, number: str) -> str:
 def page(
     basis: Basis,
     writer: Writer,
+    kind: ScheduleKind,
     *,
-    folder: str,
-    kind: str,
-    code: str,
-    title: str,
     extent: str,
-    unit: str = NO_UNIT,
-    paper: Paper,
     reading: Iterable[str],
+    unit: str = NO_UNIT,
+    title: str = "",
     caution: str = "",
-    view: dict[str, Any],
+    lead: Iterable[str] = (),
+    schedules: Sequence[Schedule],
+    view: Mapping[str, Any] | None = None,
     template: str = TEMPLATE,
 ) -> Page:
-    """A schedule ready for its template; ``view`` is what the template places besides."""
+    """A schedule ready for its template: of a unit, or with a title of its own.
+
+    ``lead`` tells the schedule in words before its tables, ``view`` is what the template places besides.
+    """
     document = basis.document(
-        kind=kind, code=code, title=title, supplementary_title=extent, unit=unit, serial=serial(basis, unit)
-    )
+        kind=kind.name, code=kind.code, title=title or unit_title(basis, unit), supplementary_title=extent, unit=unit,
+        serial=serial(basis, unit),
+    )  # fmt: skip
     whole = {
-        "paper": paper.name,
+        "paper": kind.paper.name,
         "foot": foot(document),
         "reading": tuple(writer.prose(text) for text in reading),
         "caution": caution,
+        "lead": tuple(writer.prose(text) for text in lead),
+        "schedules": schedules,
+        "deviations": deviations(basis, writer, (*schedules, *(view or {}).get("charts", ()))),
+        "signatures": kind.signatures,
+        **(view or {}),
         "holds": writer.holds,
-        "deviation_head": DEVIATION_HEAD,
-        "deviations": _deviations(basis, view),
-        **view,
     }
-    return Page(folder, file_name(unit) if unit != NO_UNIT else "plant", document, template, whole)
+    return Page(kind.folder, file_name(unit) if unit != NO_UNIT else "plant", document, template, whole)
 
 
-def _deviations(basis: Basis, view: dict[str, Any]) -> tuple[tuple[str, ...], ...]:
-    """The accepted findings that touch what a row of the schedule is about."""
-    groups = (group for part in (*view.get("schedules", ()), *view.get("charts", ())) for group in part.groups)
-    lines = (line for group in groups for row in group.rows for line in row.cells[0].lines)
+def deviations(basis: Basis, writer: Writer, schedules: Iterable[Any]) -> tuple[Schedule, ...]:
+    """The accepted findings that touch what a row of the schedules, or a group of rows, is about."""
+    groups = [group for part in schedules for group in part.groups]
+    heads = (line for group in groups for row in group.rows for line in row.cells[0].lines)
+    lines = (*(group.heading for group in groups), *heads)
     tags = {run.text for line in lines for run in line if run.kind == "tag"}
     touching = (finding for finding in basis.result.accepted if not tags.isdisjoint(finding.touches))
-    return tuple(deviation_rows(touching, ENGLISH))
+    rows = tuple(Row(tuple(writer.cell(text) for text in row)) for row in deviation_rows(touching, ENGLISH))
+    return (Schedule("Accepted deviations", DEVIATIONS, (Group(rows),)),) if rows else ()
 
 
 def foot(document: Document) -> str:

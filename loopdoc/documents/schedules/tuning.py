@@ -8,7 +8,6 @@ from collections.abc import Iterator, Sequence
 from loopdoc.documents.basis import Basis, Page
 from loopdoc.documents.narrative.tuning_story import BASIS
 from loopdoc.documents.schedules.schedule import (
-    A3,
     DASHES,
     NOT_APPLICABLE,
     Cell,
@@ -16,9 +15,9 @@ from loopdoc.documents.schedules.schedule import (
     Group,
     Row,
     Schedule,
+    ScheduleKind,
     Writer,
     page,
-    unit_title,
 )
 from loopdoc.documents.values import DASH
 from loopdoc.documents.whereabouts import anchor, natural, unit_numbers, unit_of
@@ -27,7 +26,11 @@ from loopdoc.engineering.pairing import ControlledLoop
 from loopdoc.register.model import Hold, Process, known
 from loopdoc.register.quantity import display_number
 
-FOLDER = "tuning-schedules"
+KIND = ScheduleKind(
+    "tuning-schedules", "Tuning schedule", "TS",
+    signatures=("Settings entered by, date", "Settings verified by, date", "Accepted for operations by, date",
+                "Remarks"),
+)  # fmt: skip
 COLUMNS = (
     Column("Controller", 5.0), Column("Service", 9.4), Column("Form", 4.4), Column("Action", 4.0),
     Column("Gain or band", 5.0), Column("Reset or repeats", 4.9), Column("Rate", 3.8),
@@ -69,12 +72,10 @@ class _Tuning:
         rows = tuple(self._row(loop) for loop in loops)
         quoted = sum(self._basis.dynamics.loop(loop.tag).worst is not None for loop in loops)
         return page(
-            self._basis, self._writer,
-            folder=FOLDER, kind="Tuning schedule", code="TS", unit=number, paper=A3,
-            title=unit_title(self._basis, number),
+            self._basis, self._writer, KIND, unit=number,
             extent=f"{upper_first(counted(len(loops), 'controller'))}, "
                    f"{number_word(quoted) if quoted else 'none'} with margins",
-            reading=(BASIS, DASHES), caution=CAUTION, view={"schedules": (Schedule("", COLUMNS, (Group(rows),)),)},
+            reading=(BASIS, DASHES), caution=CAUTION, schedules=(Schedule("", COLUMNS, (Group(rows),)),),
         )  # fmt: skip
 
     def _row(self, loop: ControlledLoop) -> Row:
