@@ -313,7 +313,7 @@ def test_more_findings_than_a_sheet_takes_are_counted(tmp_path: Path) -> None:
     )
     view = page.view["sheet"]
     assert len(view.points) == 4
-    more = re.fullmatch(r"(\d+) more findings about this loop stand in the index of documents", view.more_points)
+    more = re.fullmatch(r"(\d+) more findings about this loop stand in the check report", view.more_points)
     assert more
     assert int(more[1]) >= 1
     levels = [point.kind for point in view.points]

@@ -25,8 +25,9 @@ from loopdoc.documents.check_record.tables import (
     travel_tables,
 )
 from loopdoc.documents.language import ENGLISH
-from loopdoc.documents.loop_sheet.loop_panels import cell, hold_lines, joined, related_interlocks
 from loopdoc.documents.loop_sheet.loop_sheet import serial
+from loopdoc.documents.loop_sheet.loop_tables import hold_lines, related_interlocks
+from loopdoc.documents.loop_sheet.panels import cell, joined
 from loopdoc.documents.narrative.open_points import accepted_in_a_sentence
 from loopdoc.documents.page_fit import room
 from loopdoc.documents.values import DASH

@@ -4,8 +4,8 @@ from __future__ import annotations
 
 from collections.abc import Iterable, Iterator, Mapping, Sequence
 
-from loopdoc.documents.loop_sheet.loop_panels import related_interlocks
 from loopdoc.documents.loop_sheet.loop_rows import action_words, acts_on
+from loopdoc.documents.loop_sheet.loop_tables import related_interlocks
 from loopdoc.documents.naming import Names, moves_by_itself, power_of
 from loopdoc.documents.narrative.failure_story import FailureStory
 from loopdoc.documents.titleblock import fingerprint

@@ -11,22 +11,17 @@ from markupsafe import Markup
 from loopdoc.documents.basis import Basis, Page
 from loopdoc.documents.language import Language
 from loopdoc.documents.loop_sheet.loop_drawing import drawn_loop
-from loopdoc.documents.loop_sheet.loop_panels import (
-    Panel,
-    Table,
+from loopdoc.documents.loop_sheet.loop_panels import controller_panel, measurement_panel, tuning_panel
+from loopdoc.documents.loop_sheet.loop_tables import (
     alarm_table,
-    cell,
-    controller_panel,
     element_table,
     expected_table,
     hold_lines,
     interlock_table,
-    measurement_panel,
     related_interlocks,
     revision_table,
-    term,
-    tuning_panel,
 )
+from loopdoc.documents.loop_sheet.panels import Panel, Table, cell, term
 from loopdoc.documents.loop_sheet.response_plot import HEIGHT as PLOT_HEIGHT
 from loopdoc.documents.loop_sheet.response_plot import calculated_response, response_plot, response_words
 from loopdoc.documents.narrative import time_to_act_story
