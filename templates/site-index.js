@@ -137,6 +137,9 @@
   form.addEventListener("reset", () => setTimeout(changed));
   more.querySelector("button").addEventListener("click", () => { limit += PAGE; show(); });
   addEventListener("hashchange", () => { recall(); show(); });
+  // On a narrow screen what is looked for should not stand a page below the field.
+  const folded = document.querySelector(".of-units");
+  if (folded && matchMedia("(max-width: 50rem)").matches) folded.open = false;
   recall();
   form.parentElement.hidden = false;
   show();

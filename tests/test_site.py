@@ -9,6 +9,7 @@ import hashlib
 import json
 import posixpath
 import re
+from html import unescape
 from html.parser import HTMLParser
 from pathlib import Path
 from typing import Any
@@ -135,7 +136,7 @@ def test_an_issue_in_part_has_no_links_to_the_rest(basis: Basis, tmp_path: Path,
 
 
 def test_from_every_page_the_index_is_one_link_away(site: Path) -> None:
-    for file in pages(site):
+    for file in set(pages(site)) - {site / "index.html"}:
         first = next(a for a in Elements(file).all("a") if a.get("class") != "skip")
         assert (file.parent / first["href"]).resolve() == (site / "index.html").resolve()
 
@@ -154,6 +155,30 @@ def test_the_whole_index_stands_there_without_script(site: Path, basis: Basis) -
         assert tag in index.text
     assert not any("hidden" in attributes for attributes in index.all("tr"))
     assert all("hidden" in attributes for attributes in index.all("search"))  # of no use without it
+
+
+def test_the_documents_of_each_unit_stand_above_the_rows(site: Path) -> None:
+    """All that are not of one loop, and the register's files, under the unit or the plant that they are of."""
+    html = (site / "index.html").read_text(encoding="utf-8")
+    block = re.search(r'<details class="of-units" open>(.*?)</details>', html, re.DOTALL)
+    assert block
+    of = {
+        title: set(re.findall(r'href="([^"]*)"', links))
+        for title, links in re.findall(r"<dt>(.*?)</dt><dd>(.*?)</dd>", block[1], re.DOTALL)
+    }
+    unit = {file.relative_to(site).as_posix() for file in pages(site) if file.name == "unit-10.html"}
+    assert len(unit) >= 6
+    assert of["Unit 10 Feed"] == unit
+    assert of["Register"] == {"register-text/register.yaml.html", "register-text/units-10-feed.yaml.html"}
+    assert set(of) == {"Unit 10 Feed", "Plant", "Register"}
+
+
+def test_a_page_says_of_itself_where_the_reader_is_and_has_no_link_to_itself(site: Path) -> None:
+    for file in pages(site):
+        elements = Elements(file)
+        assert [a for _, a in elements.tags if a.get("aria-current") == "page"], file
+        own = [a["href"] for a in elements.all("a") if (file.parent / unquote(a["href"])).resolve() == file.resolve()]
+        assert not own, file
 
 
 # ---------------------------------------------------------------- a loop's page
@@ -192,7 +217,35 @@ def test_a_finding_leads_to_its_line_and_the_line_to_the_finding(site: Path, bas
         line = re.search(rf'<a href="#(line-\d+-{place.line})">{re.escape(str(place))}</a>', html)
         assert line, finding
         assert re.search(rf'id="{line[1]}" class="marked"><code>.*?<a href="#point-\d+">{finding.rule}</a>', html)
-    assert "awaiting the cabinet layout" in html
+    assert "awaiting the cabinet layout" in html.lower()
+
+
+def test_the_pages_of_the_register_are_its_files_and_lead_to_what_tells_of_a_line(site: Path, basis: Basis) -> None:
+    for name, content in basis.sources.items():
+        file = site / "register-text" / f"{name.replace('/', '-')}.html"
+        html = file.read_text(encoding="utf-8")
+        shown = re.findall(r'<li value="(\d+)" id="line-(\d+)"[^>]*><code>(.*?)</code>', html, re.DOTALL)
+        assert [(int(number), int(at), unescape(text)) for number, at, text in shown] == [
+            (number, number, text) for number, text in enumerate(content.decode().splitlines(), 1)
+        ]
+    html = (site / "register-text" / "units-10-feed.yaml.html").read_text(encoding="utf-8")
+    behind = dict(re.findall(r"<code>\s*([\w-]+):[^<]*</code> <a href=\"([^\"]*)\">", html))
+    assert behind["FIC-1002"] == "../loop-sheets/FIC-1002.html"
+    assert behind["FV-1002"] == "../instrument-lists/unit-10.html#tag-FV-1002"
+    assert behind["IS-1001"] == "../cause-and-effect/unit-10.html#tag-IS-1001"
+    for finding in (*basis.result.findings, *basis.result.accepted):
+        if finding.rule != "hold-open":
+            line = re.search(rf'id="line-{finding.place.line}"[^>]*>(.*)</li>', html)
+            assert line
+            assert re.search(rf'<a href="../findings.html#point-\d+">{finding.rule}</a>', line[1])
+
+
+def test_every_finding_leads_to_the_line_of_its_file(site: Path, basis: Basis) -> None:
+    html = (site / "findings.html").read_text(encoding="utf-8")
+    for finding in (*basis.result.findings, *basis.result.accepted):
+        place = finding.place
+        page = f"register-text/{place.file.replace('/', '-')}.html#line-{place.line}"
+        assert f'<a href="{page}">{place}</a>' in html, finding
 
 
 # ---------------------------------------------------------------- what the register says is no markup

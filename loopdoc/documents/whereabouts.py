@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import hashlib
 import re
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
 from urllib.parse import quote
 
 from loopdoc.documents.wording import Target
@@ -15,6 +15,8 @@ NO_UNIT = "00"
 """Unit under which parts are told whose unit the register does not give; also that of plant-wide documents."""
 
 LOOP_SHEETS = "loop-sheets"
+REGISTER_TEXT = "register-text"
+"""Folder of the pages that show the files of the register."""
 CHARTS = "cause-and-effect"
 INSTRUMENT_LISTS = "instrument-lists"
 
@@ -58,6 +60,21 @@ def document_name(tag: str) -> str:
 def anchor(tag: str) -> str:
     """Name of the place in a document at which a tag is told."""
     return f"tag-{re.sub(r'[^A-Za-z0-9]+', '-', tag).strip('-')}"
+
+
+def register_pages(files: Iterable[str]) -> dict[str, str]:
+    """Name of the page of the site that shows a file of the register, by the file's name."""
+    found: dict[str, str] = {}
+    for file in files:
+        plain = re.sub(r"[^A-Za-z0-9._-]+", "-", file)
+        same = sum(name == plain or name.startswith(f"{plain}.copy-") for name in found.values())
+        found[file] = f"{plain}.copy-{same + 1}" if same else plain
+    return found
+
+
+def line_anchor(line: int) -> str:
+    """Name of the place of a line in the page of its file."""
+    return f"line-{line}"
 
 
 def mover(plant: Plant, tag: str) -> Loop | None:

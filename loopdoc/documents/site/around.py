@@ -23,6 +23,8 @@ class Link:
     label: str
     address: str = ""
     note: str = ""
+    current: bool = False
+    """Whether the reader is there already."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -144,18 +146,18 @@ class Around:
         path = f"{SCHEMES}/{document_name(self._plant.scheme_of(loop.tag).lead.tag)}"
         return address(path, root=ROOT, at=at) if self._places.has(f"{path}.html") else ""
 
-    def documents(self, one: Issue, label: str, at: str = "") -> Iterator[Link]:
-        """A document as a page, and as a file to print."""
+    def documents(self, one: Issue, label: str, *, here: str = "") -> Iterator[Link]:
+        """A document as a page, and as a file to print; ``here`` is the path of the page that is read."""
         if "html" in self._places.formats:
-            yield Link(label, address(one.path, root=ROOT, at=at))
+            yield Link(label, current=True) if one.path == here else Link(label, address(one.path, root=ROOT))
         if "pdf" in self._places.formats:
             yield Link(f"{label} (PDF)" if "html" not in self._places.formats else "PDF",
                        address(one.path, root=ROOT, ending=".pdf"))  # fmt: skip
 
     # -- entries
 
-    def loop(self, loop: Loop) -> tuple[Entry, ...]:
-        """Where to go from the page of a loop."""
+    def loop(self, loop: Loop, here: str) -> tuple[Entry, ...]:
+        """Where to go from a page about a loop."""
         plant = self._plant
         scheme = plant.scheme_of(loop.tag)
         page = self._scheme_address(loop)
@@ -171,7 +173,7 @@ class Around:
             ("Alarms", list(self._alarms(loop))),
             ("Narrative", list(self._narrative((loop.tag,)))),
             ("Schedules", list(self._schedules(self.tags(loop)))),
-            ("Documents", list(self._own_documents(loop, scheme))),
+            ("Documents", list(self._own_documents(loop, scheme, here))),
         )
 
     def scheme(self, scheme: Scheme) -> tuple[Entry, ...]:
@@ -216,7 +218,9 @@ class Around:
         at = next(((one, at) for one, at in self._places.rows(self.tags(loop)) if one.kind == "alarm-schedule"), None)
         for kind, alarm in loop.alarms.items():
             where = address(at[0].path, root=ROOT, at=at[1]) if at and "html" in self._places.formats else ""
-            yield Link(f"{kind.replace('_', '-')} {shown(alarm.limit)}", where, known(alarm.priority) or "")
+            priority = known(alarm.priority)
+            said = f"{priority} priority" if priority else ""
+            yield Link(f"{kind.replace('_', '-')} {shown(alarm.limit)}", where, said)
 
     def _narrative(self, tags: Iterable[str]) -> Iterator[Link]:
         seen = set()
@@ -232,11 +236,11 @@ class Around:
             for one, at in self._places.rows(tags):
                 yield Link(one.page.document.kind, address(one.path, root=ROOT, at=at))
 
-    def _own_documents(self, loop: Loop, scheme: Scheme) -> Iterator[Link]:
+    def _own_documents(self, loop: Loop, scheme: Scheme, here: str) -> Iterator[Link]:
         for kind in PER_LOOP:
             one = self._places.document(kind, loop.tag if kind != "response" else scheme.lead.tag)
             if one is not None and (kind != "response" or loop.tag in self._plant.controlled):
-                yield from self.documents(one, one.page.document.kind)
+                yield from self.documents(one, one.page.document.kind, here=here)
 
 
 def _filled(*entries: tuple[str, Sequence[Link]]) -> tuple[Entry, ...]:

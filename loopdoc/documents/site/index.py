@@ -10,7 +10,7 @@ from loopdoc.documents.site.around import Around, Link, is_told_apart
 from loopdoc.documents.site.places import PER_LOOP, SCHEMES, Issue, Places, address
 from loopdoc.documents.site.points import Counts, Points
 from loopdoc.documents.values import DASH, shown
-from loopdoc.documents.whereabouts import NO_UNIT, anchor, document_name, file_name, natural, unit_of
+from loopdoc.documents.whereabouts import NO_UNIT, anchor, document_name, file_name, natural, unit_numbers, unit_of
 from loopdoc.engineering.pairing import Scheme
 from loopdoc.register.model import FinalElement, Instrument, Interlock, Loop, known
 
@@ -65,6 +65,7 @@ class _Rows:
         self._around = around
         self._points = points
         self._covered: set[str] = set()
+        self._units = {file_name(number): number for number in unit_numbers(self._plant) if number != NO_UNIT}
 
     def loops(self) -> Iterator[Row]:
         plant = self._plant
@@ -74,7 +75,7 @@ class _Rows:
             scheme = plant.scheme_of(loop.tag)
             interlocks = [interlock.tag for interlock in self._around.interlocks(loop)]
             yield Row(
-                self._name(loop.tag, "loop-sheet", loop.tag), shown(loop.service), self._unit(loop), _loop_kind(loop),
+                self._loop_name(loop, scheme), shown(loop.service), self._unit(loop), _loop_kind(loop),
                 self._scheme(scheme), self._points.counts(tags), tuple(self._of_loop(loop, scheme)),
                 self._also(tags, (*tags, *interlocks, known(loop.purpose) or "", known(loop.drawing) or "",
                                   *self._numbers(loop))),
@@ -103,11 +104,16 @@ class _Rows:
                 continue
             document = one.page.document
             form = self._places.formats[0]
-            unit = next((number for number in self._plant.register.units if file_name(number) == one.page.name), "")
+            unit = self._units.get(one.page.name, "")
             yield Row(
                 Link(document.number, address(one.path, ending=f".{form}")), document.title, unit, document.kind,
                 None, None, tuple(self._files(one, "")[1:]), document.supplementary_title,
             )  # fmt: skip
+
+    def _loop_name(self, loop: Loop, scheme: Scheme) -> Link:
+        """The tag, leading to the first of the loop's documents."""
+        first = next(self._of_loop(loop, scheme), None)
+        return Link(loop.tag, first.address if first else "")
 
     def _name(self, tag: str, kind: str, name: str, at: str = "") -> Link:
         one = self._places.document(kind, name)

@@ -3,13 +3,13 @@
 from __future__ import annotations
 
 import posixpath
-from collections.abc import Collection, Iterator, Sequence
+from collections.abc import Collection, Iterable, Iterator, Sequence
 from dataclasses import dataclass
 from urllib.parse import quote, unquote
 
 from loopdoc.documents.basis import Page
 from loopdoc.documents.view import Section, Table
-from loopdoc.documents.whereabouts import anchor, document_name
+from loopdoc.documents.whereabouts import REGISTER_TEXT, anchor, document_name
 
 PER_LOOP = {"loop-sheet": "sheet", "check-record": "check record", "response": "responses"}
 """Kinds of which a loop (or a scheme) has one document, and what a short link to it says."""
@@ -43,11 +43,18 @@ def address(path: str, *, root: str = "", ending: str = ".html", at: str = "") -
 class Places:
     """The pages of one issue by path, by tag and by row."""
 
-    def __init__(self, issued: Sequence[tuple[str, Page]], formats: Collection[str], schemes: Collection[str]) -> None:
+    def __init__(
+        self,
+        issued: Sequence[tuple[str, Page]],
+        formats: Collection[str],
+        schemes: Iterable[str],
+        register_pages: Iterable[str],
+    ) -> None:
         self.issued = tuple(Issue(kind, page) for kind, page in issued)
         self.formats = tuple(form for form in ("html", "pdf") if form in formats)
         self._files = {f"{one.path}.{form}" for one in self.issued for form in self.formats}
         self._files.update(f"{SCHEMES}/{document_name(lead)}.html" for lead in schemes)
+        self._files.update(f"{REGISTER_TEXT}/{name}.html" for name in register_pages)
         self._by_name = {(one.kind, one.page.name): one for one in self.issued}
         self._rows: dict[str, list[tuple[Issue, str]]] = {}
         self._told: dict[str, list[tuple[Issue, str, str]]] = {}

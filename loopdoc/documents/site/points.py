@@ -9,6 +9,7 @@ from dataclasses import dataclass
 from loopdoc.documents.basis import Basis
 from loopdoc.documents.narrative.open_points import HOLD_RULE, OpenPoints, held_name
 from loopdoc.documents.values import shown
+from loopdoc.documents.wording import sentence
 from loopdoc.register.model import HeldValue
 from loopdoc.register.place import Place
 from loopdoc.rules.finding import Finding, Level
@@ -48,6 +49,8 @@ class Counts:
     accepted: int
     not_made: int
     holds: int
+    rules: tuple[str, ...]
+    """Rules that found something there, each once."""
 
     @property
     def open(self) -> str:
@@ -67,7 +70,7 @@ class Counts:
             (self.errors, "error"), (self.errors + self.warnings + self.notes, "open"), (self.accepted, "accepted"),
             (self.not_made, "not-checked"), (self.holds, "hold"),
         )  # fmt: skip
-        return " ".join(name for count, name in named if count) or "clean"
+        return " ".join((*(name for count, name in named if count), *self.rules)) or "clean"
 
 
 class Points:
@@ -99,10 +102,12 @@ class Points:
     def counts(self, tags: Iterable[str]) -> Counts:
         """How much is open about these tags."""
         own = set(tags)
-        levels = [finding.level for finding in self._open.findings(own)]
+        found, accepted = self._open.findings(own), self._open.accepted(own)
+        levels = [finding.level for finding in found]
+        rules = dict.fromkeys(finding.rule for finding in (*found, *accepted))
         return Counts(
             levels.count(Level.ERROR), levels.count(Level.WARNING), levels.count(Level.NOTE),
-            len(self._open.accepted(own)), len(self.not_made(own)), len(self._open.holds(own)),
+            len(accepted), len(self.not_made(own)), len(self._open.holds(own)), tuple(rules),
         )  # fmt: skip
 
 
@@ -120,17 +125,17 @@ def point_of(finding: Finding) -> Point:
     deviation = finding.accepted_by
     if deviation is None:
         return Point(
-            str(finding.level), finding.rule, finding.tag, _on_a_page(finding.message), _on_a_page(finding.remedy),
-            finding.place,
+            str(finding.level), finding.rule, finding.tag, sentence(_on_a_page(finding.message)),
+            sentence(_on_a_page(finding.remedy)), finding.place,
         )  # fmt: skip
-    approved = f"Approved by {shown(deviation.approved_by)}, until {shown(deviation.until)}"
-    text = f"{_on_a_page(finding.message)}. Accepted: {shown(deviation.reason).rstrip('. ')}"
+    approved = f"Approved by {shown(deviation.approved_by)}, until {shown(deviation.until)}."
+    text = f"{sentence(_on_a_page(finding.message))} Accepted: {sentence(shown(deviation.reason))}"
     return Point("deviation", finding.rule, finding.tag, text, approved, finding.place)
 
 
 def hold_point(hold: HeldValue) -> Point:
     """A value on hold."""
-    return Point("hold", held_name(hold.path), hold.tag, hold.reason, "", hold.place)
+    return Point("hold", held_name(hold.path), hold.tag, sentence(hold.reason), "", hold.place)
 
 
 def _on_a_page(message: str) -> str:

@@ -15,14 +15,14 @@ from loopdoc.documents.language import ENGLISH
 from loopdoc.documents.responses.responses import scheme_chains, split_ranges
 from loopdoc.documents.schedules.effects import MARKS, MODES
 from loopdoc.documents.site.around import ROOT, Around, Entry, Link, is_told_apart
-from loopdoc.documents.site.index import choices, index_rows
-from loopdoc.documents.site.places import SCHEMES, Issue, Places, address
+from loopdoc.documents.site.index import Choice, choices, index_rows
+from loopdoc.documents.site.places import PER_LOOP, SCHEMES, Issue, Places, address, path_of
 from loopdoc.documents.site.plot import plot_data, split_plot_data
 from loopdoc.documents.site.points import NotMade, Point, Points, all_points
 from loopdoc.documents.site.script import data_block, policy, script
 from loopdoc.documents.site.source import Excerpt, Marked, Sources
 from loopdoc.documents.values import shown
-from loopdoc.documents.whereabouts import anchor, file_name, unit_of
+from loopdoc.documents.whereabouts import REGISTER_TEXT, Part, anchor, file_name, unit_numbers, unit_of
 from loopdoc.documents.wording import listed
 from loopdoc.engineering.comparison import Comparison
 from loopdoc.engineering.pairing import Scheme
@@ -30,6 +30,8 @@ from loopdoc.register.model import FinalElement, Function, Loop, Origin, known
 from loopdoc.register.place import Place
 
 INDEX, FINDINGS = "index", "findings"
+FEW_UNITS = 12
+"""So many units have their documents listed above the rows of the index; those of more are folded away."""
 SCRIPTS = {INDEX: "site-index.js", FINDINGS: "site-index.js", "response": "site-plot.js",
            "cause-and-effect": "site-chart.js"}  # fmt: skip
 """Script of each kind of page; the others have none."""
@@ -42,7 +44,7 @@ class PointRow:
     point: Point
     anchor: str
     line: str
-    """Address of the register's line that the page shows; empty where it shows none."""
+    """Address of the register's line: on the page itself where it shows it, else on that of its file."""
     place: str
 
 
@@ -50,9 +52,11 @@ class PointRow:
 class Frame:
     """What stands around the content of a page of the site."""
 
+    kind: str
     root: str
     folder: str
     places: Places
+    sources: Sources
     policy: str
     script: Markup
     data: Markup
@@ -63,7 +67,7 @@ class Frame:
     """Tag that the page is about; empty for a document of a unit."""
     around: tuple[Entry, ...] = ()
     beside: tuple[Link, ...] = ()
-    """The loops before and after this one in the register."""
+    """The loops, or the units, before and after this one in the register."""
     points: tuple[PointRow, ...] = ()
     not_made: tuple[NotMade, ...] = ()
     excerpts: tuple[Excerpt, ...] = ()
@@ -74,6 +78,10 @@ class Frame:
         """Whether a link from this page leads to a file of the issue."""
         return self.places.leads(self.folder, link)
 
+    def line(self, place: Place) -> str:
+        """Address of a line of the register, seen from this page; empty where the register has no such file."""
+        return self.sources.address(place, self.root)
+
 
 class Site:
     """The pages around the documents of one issue, and what stands around the content of each."""
@@ -82,16 +90,18 @@ class Site:
         self._basis = basis
         plant = basis.plant
         self._schemes = {scheme.lead.tag: scheme for scheme in plant.schemes if is_told_apart(plant, scheme)}
-        self._places = Places(issued, formats, self._schemes)
+        self._sources = Sources(basis.sources)
+        self._places = Places(issued, formats, self._schemes, self._sources.pages.values())
         self._around = Around(plant, self._places)
         self._points = Points(basis)
-        self._sources = Sources(basis.sources)
         loops = list(plant.register.loops)
         self._before = {after: before for before, after in pairwise(loops)}
         self._after = dict(pairwise(loops))
         self._of_unit: dict[str, list[Issue]] = {}
+        self._units: dict[str, list[str]] = {}
         for one in self._places.issued:
             self._of_unit.setdefault(one.page.name, []).append(one)
+            self._units.setdefault(one.kind, []).append(one.page.name)
 
     # -- documents
 
@@ -109,10 +119,10 @@ class Site:
                 data = [plot_data(self._basis.plant, one) if isinstance(one, Comparison) else None for one in compared]
                 data += [split_plot_data(self._basis.plant, one) for one in split_ranges(self._basis, chains)]
             return self._frame(
-                kind, page, about=loop.tag, unit=unit_of(loop), around=self._around.loop(loop),
+                kind, page, about=loop.tag, unit=unit_of(loop), around=self._around.loop(loop, path_of(page)),
                 beside=self._neighbours(loop, kind), data=data or None,
             )  # fmt: skip
-        number = next((n for n in self._basis.plant.register.units if file_name(n) == page.name), "")
+        number = self._unit_named(page.name)
         marks = dict(MARKS.values())
         marks |= {mark: f"forces the controller to {mode}" for mode, mark in MODES.items()}
         beside = tuple(
@@ -121,8 +131,24 @@ class Site:
             if one.kind != kind
         )
         around = (Entry("Of this unit" if number else "Of the plant", beside),) if beside else ()
-        return self._frame(kind, page, unit=number, around=around,
+        return self._frame(kind, page, unit=number, around=around, beside=self._units_beside(kind, page.name),
                            data={"marks": marks} if kind == "cause-and-effect" else None)  # fmt: skip
+
+    def _unit_named(self, name: str) -> str:
+        """The unit whose documents have this name; empty for those of the plant."""
+        return next((number for number in unit_numbers(self._basis.plant) if file_name(number) == name), "")
+
+    def _units_beside(self, kind: str, name: str) -> tuple[Link, ...]:
+        """The documents of the same kind of the units before and after."""
+        names = self._units[kind]
+        at = names.index(name)
+        beside = (("Previous", names[at - 1 : at]), ("Next", names[at + 1 : at + 2]))
+        return tuple(
+            Link(f"unit {unit}" if (unit := self._unit_named(other)) else "plant", address(one.path, root=ROOT), label)
+            for label, others in beside
+            for other in others
+            if (one := self._places.document(kind, other)) is not None
+        )
 
     def _of_loop(self, loop: Loop, page: Page) -> Frame:
         around = self._around
@@ -131,7 +157,7 @@ class Site:
         parts += [(element.tag, element.origin) for element in around.elements(loop)]
         points, excerpts = self._told(around.tags(loop), parts)
         return self._frame(
-            "loop-sheet", page, about=loop.tag, unit=unit_of(loop), around=around.loop(loop),
+            "loop-sheet", page, about=loop.tag, unit=unit_of(loop), around=around.loop(loop, path_of(page)),
             beside=self._neighbours(loop, "loop-sheet"), points=points, excerpts=excerpts,
             not_made=self._points.not_made(around.tags(loop)),
         )  # fmt: skip
@@ -143,60 +169,62 @@ class Site:
         found = self._points.points(tags)
         marks: dict[Place, list[Marked]] = {}
         for index, point in enumerate(found, 1):
-            marks.setdefault(point.place, []).append(Marked(point.what, f"point-{index}"))
-        excerpts = self._sources.excerpts(parts, marks)
+            marks.setdefault(point.place, []).append(Marked(point.what, f"#point-{index}"))
+        excerpts = self._sources.excerpts(parts, marks, ROOT)
         lines = {line.anchor for excerpt in excerpts for line in excerpt.lines}
         rows = []
         for index, point in enumerate(found, 1):
             line = self._sources.anchor(point.place)
-            rows.append(PointRow(point, f"point-{index}", f"#{line}" if line in lines else "", str(point.place)))
+            there = f"#{line}" if line in lines else self._sources.address(point.place, ROOT)
+            rows.append(PointRow(point, f"point-{index}", there, str(point.place)))
         return tuple(rows), excerpts
 
     def _neighbours(self, loop: Loop, kind: str) -> tuple[Link, ...]:
         found = []
-        for label, tag in (("Before", self._before.get(loop.tag)), ("After", self._after.get(loop.tag))):
+        for label, tag in (("Previous", self._before.get(loop.tag)), ("Next", self._after.get(loop.tag))):
             one = self._places.document(kind, tag) if tag else None
             if one is not None and tag:
                 found.append(Link(tag, address(one.path, root=ROOT), label))
         return tuple(found)
 
-    def _frame(
-        self, kind: str, page: Page, *, unit: str = "", about: str = "", data: Any = None, **rest: Any
-    ) -> Frame:
+    def _frame(self, kind: str, page: Page, *, unit: str = "", about: str = "", data: Any = None, **rest: Any) -> Frame:
         name = SCRIPTS.get(kind, "")
         root = ROOT if page.folder else ""
         register = self._basis.plant.register
         site = shown(register.site.name if register.site else None)
-        trail = [Link(f"Index of {site}", f"{root}index.html")]
+        trail = [Link(f"Index of {site}", "" if kind == INDEX else f"{root}index.html")]
         if unit:
-            described = register.units.get(unit)
-            title = known(described.name) if described else None
-            trail.append(Link(f"Unit {unit} {title}" if title else f"Unit {unit}",
+            trail.append(Link(self._unit_title(unit),
                               f"{root}index.html#unit={re.sub('[^A-Za-z0-9]', _escaped, unit)}"))  # fmt: skip
-        trail.append(Link(" ".join(part for part in (page.document.kind, about) if part)))
+        if kind != INDEX:
+            trail.append(Link(" ".join(part for part in (page.document.kind, about) if part)))
         return Frame(
-            root, page.folder, self._places, policy(name), script(name) if name else Markup(""),
+            kind, root, page.folder, self._places, self._sources, policy(name), script(name) if name else Markup(""),
             data_block(data) if data is not None else Markup(""), tuple(trail), about,
             plots=tuple(one is not None for one in data) if kind == "response" and data else (), **rest,
         )  # fmt: skip
 
+    def _unit_title(self, number: str) -> str:
+        described = self._basis.plant.register.units.get(number)
+        title = known(described.name) if described else None
+        return f"Unit {number} {title}" if title else f"Unit {number}"
+
     # -- pages of the site itself
 
     def pages(self) -> Iterator[tuple[Page, Frame]]:
-        """The schemes, the findings and, last, the index."""
+        """The schemes, the register's files, the findings and, last, the index."""
         for scheme in self._schemes.values():
             yield self._scheme_page(scheme)
+        yield from self._register_pages()
         yield self._findings_page()
         yield self._index_page()
 
     def _scheme_page(self, scheme: Scheme) -> tuple[Page, Frame]:
         plant, around = self._basis.plant, self._around
         inside = {*(loop.tag for loop in scheme.loops), *(function.tag for function in scheme.functions)}
-        roots = [
-            loop.tag
-            for loop in scheme.loops
-            if not inside & set(plant.commanders.get(loop.tag, ()))
-        ] or [scheme.lead.tag]  # a ring has no outermost loop
+        roots = [loop.tag for loop in scheme.loops if not inside & set(plant.commanders.get(loop.tag, ()))] or [
+            scheme.lead.tag
+        ]  # a ring has no outermost loop
         seen: set[str] = set()
         nodes = [around.node(tag, seen=seen) for tag in roots]
         nodes += [around.node(function.tag, seen=seen) for function in scheme.functions if function.tag not in seen]
@@ -234,6 +262,39 @@ class Site:
             "open": self._points.counts(self._around.tags(loop)).open or shown(None),
         }
 
+    def _register_pages(self) -> Iterator[tuple[Page, Frame]]:
+        marks: dict[str, dict[Place, list[Marked]]] = {}
+        for place, mark in self._ways_out():
+            marks.setdefault(place.file, {}).setdefault(place, []).append(mark)
+        for number, (file, name) in enumerate(self._sources.pages.items(), 1):
+            excerpt = self._sources.whole(file, marks.get(file, {}))
+            document = self._basis.document(
+                kind="Register file", code="RF", title=file,
+                supplementary_title=f"{len(excerpt.lines)} lines", unit="00", serial=f"{number:03d}",
+            )  # fmt: skip
+            page = Page(REGISTER_TEXT, name, document, "register-file.html", {"excerpt": excerpt})
+            yield page, self._frame(REGISTER_TEXT, page)
+
+    def _ways_out(self) -> Iterator[tuple[Place, Marked]]:
+        """From the first line of each part to its document, and from lines to what was found in them."""
+        register = self._basis.plant.register
+        sections: tuple[tuple[str, Mapping[str, Part]], ...] = (
+            ("loop sheet", register.loops), ("instrument list", register.final_elements),
+            ("instrument list", register.instruments), ("control scheme", register.functions),
+            ("cause and effect chart", register.interlocks),
+        )  # fmt: skip
+        for document, section in sections:
+            for tag, part in section.items():
+                link = self._around.to(tag)
+                if link.address:
+                    yield part.origin.key(), Marked(document, link.address)
+        for unit, text in register.texts.items():
+            told = self._places.document("narrative", file_name(unit))
+            if told is not None:
+                yield text.origin.key(), Marked(told.page.document.kind.lower(), address(told.path, root=ROOT))
+        for index, point in enumerate(all_points(self._basis), 1):
+            yield point.place, Marked(point.what, f"{ROOT}{FINDINGS}.html#point-{index}")
+
     def _findings_page(self) -> tuple[Page, Frame]:
         result = self._basis.result
         register = self._basis.plant.register
@@ -246,7 +307,12 @@ class Site:
         for finding in (*result.findings, *result.accepted):
             found[finding.rule] = found.get(finding.rule, 0) + 1
         view = {
-            "points": [{"point": point, "link": self._near(point.tag), "place": str(point.place)} for point in points],
+            "points": [
+                {"point": point, "unit": self._unit_at(point.tag), "link": self._near(point.tag),
+                 "anchor": f"point-{index}", "line": self._sources.address(point.place, ""), "place": str(point.place)}
+                for index, point in enumerate(points, 1)
+            ],
+            "units": self._unit_choices(self._unit_at(point.tag) for point in points),
             "kinds": choices((point.kind, point.kind) for point in points),
             "rules": choices(sorted((point.what, point.what) for point in points if point.kind != "hold")),
             "coverage": [
@@ -263,6 +329,36 @@ class Site:
         page = Page("", FINDINGS, document, "site-findings.html", view)
         return page, self._frame(FINDINGS, page, data={"also": []})
 
+    def _unit_at(self, tag: str) -> str:
+        """Unit of what a finding is about; empty where it is the register itself."""
+        plant, register = self._basis.plant, self._basis.plant.register
+        sections: tuple[Mapping[str, Part], ...] = (
+            register.loops, plant.loop_of_transmitter, register.final_elements, register.instruments,
+            register.functions, register.interlocks,
+        )  # fmt: skip
+        unit = next((unit_of(section[tag]) for section in sections if tag in section), tag)
+        return unit if unit in register.units else ""
+
+    def _unit_choices(self, units: Iterable[str]) -> tuple[Choice, ...]:
+        return choices((unit, self._unit_title(unit).removeprefix("Unit ")) for unit in units if unit)
+
+    def _unit_documents(self) -> tuple[Entry, ...]:
+        """Documents of each unit and of the plant, those of single loops apart."""
+        titles = {file_name(number): self._unit_title(number) for number in unit_numbers(self._basis.plant)}
+        found: dict[str, list[Link]] = {}
+        for one in self._places.issued:
+            if one.kind not in PER_LOOP:
+                form = self._places.formats[0]
+                found.setdefault(titles.get(one.page.name, "Plant"), []).append(
+                    Link(one.page.document.kind, address(one.path, ending=f".{form}"))
+                )
+        found["Register"] = [
+            Link(file, address(f"{REGISTER_TEXT}/{name}")) for file, name in self._sources.pages.items()
+        ]
+        return tuple(
+            Entry(title, tuple(found[title])) for title in (*titles.values(), "Plant", "Register") if title in found
+        )
+
     def _near(self, tag: str) -> Link:
         """A link to a tag from the folder of the issue itself."""
         link = self._around.to(tag)
@@ -276,14 +372,17 @@ class Site:
             serial="001",
         )  # fmt: skip
         rows = tuple(index_rows(self._basis, self._places, self._around, self._points))
-        names = {number: known(unit.name) or "" for number, unit in register.units.items()}
+        entries = self._unit_documents()
         view = {
             "rows": rows,
+            "of_units": entries,
+            "few": len(entries) <= FEW_UNITS,
             "first_of_unit": {
                 index: f"unit={unit}" for unit, index in _first(row.unit for row in rows).items() if unit
             },
-            "units": choices((row.unit, f"{row.unit} {names.get(row.unit, '')}".strip()) for row in rows if row.unit),
+            "units": self._unit_choices(row.unit for row in rows),
             "kinds": choices((row.kind, row.kind) for row in rows),
+            "rules": choices(sorted((rule, rule) for row in rows if row.counts for rule in row.counts.rules)),
             "documents": len(self._places.issued),
             "languages": _languages(self._places.issued),
         }
