@@ -87,7 +87,7 @@ loops:
     hazard: high
     disturbances:
       steam pressure falls: {size: -2 t/h, at: process input}
-      cold reflux: {size: -3 degC, lag: 4 min}
+      cold reflux: {size: -3 degC, lag: 4 min, dead_time: 90 s, moves: {TT-2031: {size: -8 degC, lag: 5 s}}}
       feed without light ends: {hold: process study}
     alarms:
       high_high: {limit: 97 degC}
@@ -287,6 +287,7 @@ NOT_WRITTEN = {
     "action": {"tag", "position"},  # `FV-2011: closed`
     "alarm": {"kind"},
     "disturbance": {"name"},
+    "move": {"tag"},
     "plant_unit": {"number"},
     "branch": {"branches"},  # a branch has none of its own
 }
@@ -302,6 +303,7 @@ CLASSES = {
     "branch": model.Process,
     "alarm": model.Alarm,
     "disturbance": model.Disturbance,
+    "move": model.Move,
     "loop": model.Loop,
     "final_element": model.FinalElement,
     "function": model.Function,

@@ -207,6 +207,11 @@ class Plant:
         """The loop that each transmitter belongs to (the first, where several name it)."""
         return {tag: loops[0] for tag, loops in self.loops_on.items()}
 
+    def measures(self, tag: str) -> Loop | Instrument | None:
+        """The part that has a measurement: an instrument or a loop by its own tag, or the loop of a transmitter."""
+        register = self.register
+        return register.instruments.get(tag) or register.loops.get(tag) or self.loop_of_transmitter.get(tag)
+
     @cached_property
     def measuring(self) -> dict[tuple[str, str, str], tuple[Loop | Instrument, ...]]:
         """The loops, then the instruments, that measure each quantity, in the order of the register."""

@@ -28,6 +28,7 @@ from loopdoc.register.model import (
     InterlockAction,
     Loop,
     Measurement,
+    Move,
     Origin,
     Part,
     PlantUnit,
@@ -267,7 +268,9 @@ class _Reader:
                 alarms[kind] = alarm
         disturbances = {}
         for name, entry, where in self._below(origin, value, "disturbances"):
-            disturbance = self._part(where, entry, Disturbance, name=name)
+            moves = {tag: self._part(at, move, Move, tag=tag) for tag, move, at in self._below(where, entry, "moves")}
+            known_moves = {tag: move for tag, move in moves.items() if isinstance(move, Move)}
+            disturbance = self._part(where, entry, Disturbance, name=name, moves=known_moves)
             if isinstance(disturbance, Disturbance):
                 disturbances[name] = disturbance
         process = self._process(Origin(origin.source, (*origin.path, "process")), value.get("process"))

@@ -227,6 +227,18 @@ class Process(Part):
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
+class Move(Part):
+    """What a measurement does as an upset comes, so that functions may feed it forward."""
+
+    tag: str
+    """Of the transmitter, the instrument or the loop."""
+    size: Quantity | Hold | None
+    """A difference of that measurement's kind."""
+    lag: Quantity | Hold | None
+    """First-order time constant with which it comes; at once where not given."""
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
 class Disturbance(Part):
     """An upset that a loop must cope with: a step, and what it passes through on its way to the measurement."""
 
@@ -235,14 +247,20 @@ class Disturbance(Part):
     """A difference of the measurement's kind; at the process input, of the kind of what is commanded."""
     lag: Quantity | Hold | None
     """First-order time constant to the measurement; the process's own lags where not given."""
+    dead_time: Quantity | Hold | None
+    """Before it arrives, besides that of the process it may pass through."""
     at: str | Hold | None
     """measurement (where not given) or process input."""
+    moves: dict[str, Move]
+    """Measurements that move with it, by tag."""
 
 
 # ---------------------------------------------------------------- alarms, loops
 
 ALARM_ORDER = ("low_low", "low", "high", "high_high")
 """Alarm kinds on the measurement, in rising order of limit."""
+ALARM_PRIORITIES = ("low", "medium", "high", "critical")
+"""From the least to the most urgent."""
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

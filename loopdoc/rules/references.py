@@ -146,7 +146,7 @@ def references(plant: Plant, rule_ids: Collection[str]) -> Iterator[Reference]:
     measured = Names("a transmitter, an instrument or a loop", {*register.measurements, *register.loops})
     units = Names("a unit under `units`", register.units)
     for loop in register.loops.values():
-        yield from _of_loop(loop, plant, commanded)
+        yield from _of_loop(loop, plant, commanded, measured)
     for function in register.functions.values():
         yield from _of_function(function, plant, commanded, measured)
     yield from _of_interlocks(register, measured)
@@ -160,7 +160,7 @@ def references(plant: Plant, rule_ids: Collection[str]) -> Iterator[Reference]:
     yield from _of_deviations(register, rule_ids)
 
 
-def _of_loop(loop: Loop, plant: Plant, commanded: Names) -> Iterator[Reference]:
+def _of_loop(loop: Loop, plant: Plant, commanded: Names, measured: Names) -> Iterator[Reference]:
     controller = known(loop.controller)
     output = known(controller.output) if controller else None
     to = known(output.to) if output else None
@@ -172,6 +172,10 @@ def _of_loop(loop: Loop, plant: Plant, commanded: Names) -> Iterator[Reference]:
         for tag in alarm.warns_of:
             where = f"what the {alarm.kind.replace('_', '-')} alarm warns of"
             yield Reference(loop.tag, where, tag, loops, alarm.origin, ("warns_of", tag), True)
+    for disturbance in loop.disturbances.values():
+        for tag in disturbance.moves:
+            where = f"what the disturbance `{disturbance.name}` moves"
+            yield Reference(loop.tag, where, tag, measured, disturbance.origin, ("moves", tag), True)
     process = known(loop.process)
     if process is not None and process.branches and loop.tag in plant.controlled:
         routes = plant.controlled[loop.tag].routes

@@ -41,8 +41,14 @@ def tuning_invalid(part: Loop | FinalElement) -> Iterator[Draft]:
     for one in (process, *process.branches.values()) if process else ():
         yield from _times(part.tag, one)
     for disturbance in part.disturbances.values():
-        what = f"the lag of the disturbance `{disturbance.name}`"
-        yield from _positive(part.tag, disturbance, "lag", what, "leave it out for the process's own lag")
+        name = f"the disturbance `{disturbance.name}`"
+        yield from _positive(
+            part.tag, disturbance, "lag", f"the lag of {name}", "leave it out for the process's own lag"
+        )
+        yield from _not_negative(part.tag, disturbance, "dead_time", f"the dead time of {name}", "leave it out")
+        for move in disturbance.moves.values():
+            what = f"the lag of {move.tag} in {name}"
+            yield from _positive(part.tag, move, "lag", what, "leave it out where it moves at once")
     if controller and controller.proportional_band is None:
         need(controller.gain, "the gain")
     for key in ("proportional_band", "reset", "repeats", "rate", "interval") if controller else ():

@@ -87,8 +87,9 @@ def unit_incompatible(part: Loop | Instrument | Function | Interlock | Trip, pla
         Operating values, setpoints, alarm and trip limits are of the kind of the measurement range; dead
         bands and deviation limits are differences of that kind; outputs are in percent on a final element
         and of the secondary's kind on a secondary; gains are per unit of what is moved. A disturbance is a
-        difference of the measurement's kind, or at the process input of what the gain is per unit of. Units of
-        one kind may be mixed: 12 t/h and 12000 kg/h.
+        difference of the measurement's kind, or at the process input of what the gain is per unit of; what it
+        moves besides, a difference of that measurement's kind. Units of one kind may be mixed: 12 t/h and
+        12000 kg/h.
     What this check cannot see:
         A number that was converted wrongly. Units of time, frequency and percent have fixed places in the
         format, and the rule `schema` tells of them.
@@ -219,6 +220,7 @@ def _of_loop(loop: Loop, plant: Plant) -> Iterator[_Value]:
         yield from _against_range("the tolerance", measurement, "tolerance", loop, True)
     for disturbance in loop.disturbances.values():
         yield from _of_disturbance(loop, disturbance)
+        yield from _of_moves(disturbance, plant)
     if loop.tag in plant.controlled:
         yield from _of_output(plant.controlled[loop.tag])
 
@@ -234,6 +236,16 @@ def _of_disturbance(loop: Loop, disturbance: Disturbance) -> Iterator[_Value]:
     wanted = next((gain.denominator for gain in gains if gain), None)
     against = "the process input" if wanted else "the unit of the process input"
     yield _Value(what, disturbance.size, disturbance.origin, ("size",), wanted, against, is_difference=True)
+
+
+def _of_moves(disturbance: Disturbance, plant: Plant) -> Iterator[_Value]:
+    """What moves with it must agree with what measures it."""
+    for move in disturbance.moves.values():
+        moved = plant.measures(move.tag)
+        if moved is not None:  # `reference-unknown` tells of the others
+            what = f"{move.tag} in the disturbance `{disturbance.name}`"
+            for value in _against_range(what, move, "size", moved, is_difference=True):
+                yield replace(value, against=f"{value.against} of {move.tag}")
 
 
 def _against_range(

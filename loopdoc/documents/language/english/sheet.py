@@ -84,6 +84,9 @@ class EnglishSheet(EnglishGrammar):
         words = [step.replace("_", " ") for step in steps]
         if len(steps) > 1 and steps[0] == "alarms":
             return f"{steps[1].replace('_', '-')} alarm {' '.join(words[2:])}".strip()
+        if len(steps) > 3 and steps[0] == "disturbances":
+            moved = f"{steps[3]} in the disturbance {steps[1]}"
+            return f"{words[4]} of {moved}" if len(steps) > 4 else f"move of {moved}"
         if len(steps) > 1 and steps[0] == "disturbances":
             return f"{words[2]} of the disturbance {steps[1]}" if len(steps) > 2 else f"disturbance {steps[1]}"
         if len(steps) > 1 and steps[0] == "process" and steps[1] == "branches":

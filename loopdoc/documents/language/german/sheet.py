@@ -181,7 +181,15 @@ class GermanSheet(GermanGrammar, EnglishSheet):
             return f"{_OF_ALARM.get(steps[2], self.quoted(steps[2]))} für {name}" if len(steps) > 2 else name
         if steps[0] == "disturbances" and len(steps) > 1:
             disturbance = f"Störung {self.quoted(steps[1])}"
-            what = {"size": "Größe", "lag": "Zeitkonstante", "at": "Angriffspunkt"}.get(steps[-1], "Angabe")
+            what = {
+                "size": "Größe",
+                "lag": "Zeitkonstante",
+                "dead_time": "Totzeit",
+                "at": "Angriffspunkt",
+                "moves": "mitbewegte Messungen",
+            }.get(steps[-1], "Angabe")
+            if len(steps) > 3:
+                return f"{what} von {steps[3]} zu: {disturbance}"
             return f"{what} zu: {disturbance}" if len(steps) > 2 else disturbance
         if steps[:2] == ["process", "branches"] and len(steps) > 2:
             name = _HELD.get(f"process {steps[3]}", self.quoted(steps[3])) if len(steps) > 3 else _HELD["process"]
