@@ -12,8 +12,18 @@ from loopdoc.engineering.clock import Clock
 from loopdoc.engineering.lead_lag import LeadLag
 from loopdoc.engineering.pid import Controller, scan_coefficients
 from loopdoc.engineering.process import FloatArray, Process, state_space, transition
-from loopdoc.engineering.scanning import CASE, CONTROLLER, DISTURBANCE, PROCESS, STRUCTURE, Plant, Records
-from loopdoc.engineering.structure import ControlStructure, Scenario
+from loopdoc.engineering.scanning import (
+    CASE,
+    CONTROLLER,
+    DISTURBANCE,
+    FEEDFORWARD,
+    PROCESS,
+    STRUCTURE,
+    Feed,
+    Plant,
+    Records,
+)
+from loopdoc.engineering.structure import ControlStructure, Feedforward, MeasuredMove, Scenario
 
 IntArray = NDArray[np.int64]
 
@@ -61,6 +71,29 @@ class Column:
         outermost, start = controllers[-1]
         asked = start + scenario.setpoint_step_pct
         return min(max(asked, outermost.setpoint_low_pct), outermost.setpoint_high_pct) - start
+
+
+    def fed_forward(self, scenario: Scenario) -> list[tuple[int, Feedforward, MeasuredMove]]:
+        """The feedforwards that a scenario moves, each with the level that it joins, in the order of their joining."""
+        moves = {move.measurement: move for move in scenario.moves}
+        return [
+            (level, one, moves[one.measurement])
+            for level, (controller, ones) in enumerate(
+                zip(self.structure.controllers, self.structure.feedforwards, strict=True)
+            )
+            if controller is not None
+            for one in ones
+            if one.measurement in moves
+        ]
+
+    def taken_pct(self, level: int) -> tuple[float, float]:
+        """What the controller of a level may ask of the one below it, or of the final element, from the start."""
+        structure = self.structure
+        for below in range(level - 1, -1, -1):
+            controller, start = structure.controllers[below], structure.start_pct[below]
+            if controller is not None:
+                return controller.setpoint_low_pct - start, controller.setpoint_high_pct - start
+        return 0.0 - structure.final_element.start_pct, 100.0 - structure.final_element.start_pct
 
 
 def disturbed_pct(scenario: Scenario) -> float:
@@ -114,17 +147,23 @@ def steps_over(
     return Steps(order, matrices, through)
 
 
-def process_records(
-    processes: Sequence[Process], step_s: FloatArray, innermost: NDArray[np.bool_]
-) -> tuple[Records, FloatArray]:
-    dead = np.array([process.dead_time_s for process in processes]) / step_s
+def _in_steps(dead_time_s: FloatArray, step_s: FloatArray) -> tuple[IntArray, FloatArray]:
+    """Dead times as whole steps and the part of one that is left."""
+    dead = dead_time_s / step_s
     # A dead time of a whole number of steps stays whole in spite of the division.
     whole = np.floor(dead + 1e-9)
     part = np.maximum(dead - whole, 0.0)
     part[part < 1e-9] = 0.0
+    return whole.astype(np.int64), part
+
+
+def process_records(
+    processes: Sequence[Process], step_s: FloatArray, innermost: NDArray[np.bool_]
+) -> tuple[Records, FloatArray]:
+    whole, part = _in_steps(np.array([process.dead_time_s for process in processes]), step_s)
     steps = steps_over(processes, step_s, part, innermost, np.array([process.gain for process in processes]))
     # A held input acts from the step before, as what is held at this one is not known yet.
-    delay = whole.astype(np.int64) + innermost
+    delay = whole + innermost
     records = filled(
         PROCESS,
         through_now=np.where(innermost, steps.through, steps.through * (1.0 - part)),
@@ -208,17 +247,58 @@ def _disturbances(columns: Sequence[Column]) -> tuple[Records, FloatArray]:
         for scenario in column.scenarios
         for one in scenario.disturbances
     ]
+    step_s = np.array([step_s for _, _, step_s in arriving])
+    whole, part = _in_steps(np.array([one.dead_time_s for one, _, _ in arriving]), step_s)
     steps = steps_over(
         [path for _, path, _ in arriving],
-        np.array([step_s for _, _, step_s in arriving]),
-        np.zeros(len(arriving)),
+        step_s,
+        part,
         np.ones(len(arriving), dtype=np.bool_),
         np.array([path.gain * one.size_pct for one, path, _ in arriving]),
     )
     records = filled(
-        DISTURBANCE, through=steps.through, level=[one.level for one, _, _ in arriving], order=steps.order
+        DISTURBANCE,
+        through=steps.through,
+        level=[one.level for one, _, _ in arriving],
+        order=steps.order,
+        delay=whole,
+        there=whole + (part > 0.0),
     )
     return records, steps.matrices
+
+
+def _feed(columns: Sequence[Column]) -> Feed | None:
+    """What the scenarios of every case bring to the outputs of controllers, case by case; None for nothing at all."""
+    joining = [
+        (column, level, one, move)
+        for column in columns
+        for scenario in column.scenarios
+        for level, one, move in column.fed_forward(scenario)
+    ]
+    if not joining:
+        return None
+    steps = steps_over(
+        [Process(1.0, (move.lag_s,) if move.lag_s else ()) for *_, move in joining],
+        np.array([column.clock.step_s for column, *_ in joining]),
+        np.zeros(len(joining)),
+        np.ones(len(joining), dtype=np.bool_),
+        np.array([one.brings(move.size_pct) for _, _, one, move in joining]),
+    )
+    interval_s = np.array([column.every[level] * column.clock.step_s for column, level, *_ in joining])
+    taken = [column.taken_pct(level) for column, level, *_ in joining]
+    records = filled(
+        FEEDFORWARD,
+        through=steps.through,
+        factor=[0.0 if one.multiplied_pct is None else 1.0 for _, _, one, _ in joining],
+        steady=[1.0 if one.multiplied_pct is None else one.multiplied_pct for _, _, one, _ in joining],
+        taken_low=[low for low, _ in taken],
+        taken_high=[high for _, high in taken],
+        level=[level for _, level, *_ in joining],
+        order=steps.order,
+        joins=[one.joins for _, _, one, _ in joining],
+        lead_lags=[len(one.lead_lags) for _, _, one, _ in joining],
+    )
+    return Feed(records, steps.matrices, lead_lag_shares([one.lead_lags for _, _, one, _ in joining], interval_s))
 
 
 def plant_of(columns: Sequence[Column]) -> Plant:
@@ -242,6 +322,7 @@ def plant_of(columns: Sequence[Column]) -> Plant:
         lead_lags=lead_lag_shares([ones for column in columns for ones in column.structure.lead_lags], interval_s),
         disturbances=disturbances,
         disturbance_matrices=disturbance_matrices,
+        feed=_feed(columns),
     )
 
 
@@ -255,6 +336,7 @@ def cases_of(columns: Sequence[Column], *, parts: int, band: float) -> Records:
     setpoint = np.array([column.setpoint_step_pct(scenario) for column, scenario in scenarios])
     disturbed = np.array([disturbed_pct(scenario) for _, scenario in scenarios])
     disturbances = [0, *itertools.accumulate(len(scenario.disturbances) for _, scenario in scenarios)]
+    fed = [0, *itertools.accumulate(len(column.fed_forward(scenario)) for column, scenario in scenarios)]
     return filled(
         CASE,
         setpoint=setpoint,
@@ -264,6 +346,8 @@ def cases_of(columns: Sequence[Column], *, parts: int, band: float) -> Records:
         structure=[place for place, column in enumerate(columns) for _ in column.scenarios],
         disturbed_from=disturbances[:-1],
         disturbed_to=disturbances[1:],
+        fed_from=fed[:-1],
+        fed_to=fed[1:],
         steps=[column.clock.steps for column, _ in scenarios],
         window=[column.clock.steps // parts if parts else 0 for column, _ in scenarios],
     )

@@ -9,13 +9,15 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import reduce
 from typing import TYPE_CHECKING
 
 from loopdoc.engineering.attenuation import Rival, error_ratios
 from loopdoc.engineering.clock import Unsuited
+from loopdoc.engineering.direction import Undecided
 from loopdoc.engineering.dynamics import ChainDynamics
+from loopdoc.engineering.feedforward import FunctionInput
 from loopdoc.engineering.frequency import LoopStage, Margins
 from loopdoc.engineering.pairing import normal_value
 from loopdoc.engineering.pid import Controller
@@ -24,7 +26,9 @@ from loopdoc.engineering.stages import Chain, Lacking, Level, percent_of_range
 from loopdoc.engineering.structure import (
     ControlStructure,
     Disturbance,
+    Feedforward,
     FinalElement,
+    MeasuredMove,
     Scenario,
     cascade_structure,
     single_loop_structure,
@@ -32,8 +36,10 @@ from loopdoc.engineering.structure import (
 )
 from loopdoc.engineering.tuning import SensitivityTuning, simc_at_sensitivities
 from loopdoc.engineering.upsets import Step, declared_step
-from loopdoc.register.model import known, seconds
+from loopdoc.register import model
+from loopdoc.register.model import Hold, known, seconds
 from loopdoc.register.quantity import Quantity
+from loopdoc.register.units import UnitError
 
 if TYPE_CHECKING:
     from loopdoc.engineering.response_metrics import ResponseMetrics
@@ -52,14 +58,19 @@ class ScenarioResponses:
     scenario: Scenario
     tuned: Response
     single: Response | None
-    """None for a single loop, and where no tuning of equal robustness exists."""
+    """None for a single loop, and where no tuning of equal robustness exists. Nothing is fed forward to it."""
+    without_feedforward: Response | None = None
+    """The same as tuned, with all that enters its functions as it was; None where nothing is fed forward."""
 
     def ratio(self, of: str) -> float | None:
-        """A metric of the cascade over that of the single loop; None where there is nothing to compare."""
-        if self.single is None:
-            return None
-        ours, theirs = abs(getattr(self.tuned.metrics, of)), abs(getattr(self.single.metrics, of))
-        return ours / theirs if theirs > 0.0 and math.isfinite(ours) and math.isfinite(theirs) else None
+        """A metric of the cascade over that of the single loop, both without feedforward; None where there is nothing
+        to compare.
+        """
+        return _ratio(self.without_feedforward or self.tuned, self.single, of)
+
+    def feedforward_ratio(self, of: str) -> float | None:
+        """A metric with feedforward over that without; None where there is nothing to compare."""
+        return _ratio(self.tuned, self.without_feedforward, of)
 
     def peak_time_s(self, response: Response) -> float:
         """When a response peaks [s]; see the function of this name."""
@@ -70,6 +81,13 @@ def peak_time_s(setpoint_step_pct: float, metrics: ResponseMetrics) -> float:
     """When a response peaks [s]; nan after a setpoint step that is only approached, which is nearest at the end."""
     only_approached = setpoint_step_pct != 0.0 and metrics.overshoot_pct < NO_OVERSHOOT_PCT
     return math.nan if only_approached else metrics.time_to_peak_s
+
+
+def _ratio(one: Response, other: Response | None, of: str) -> float | None:
+    if other is None:
+        return None
+    ours, theirs = abs(getattr(one.metrics, of)), abs(getattr(other.metrics, of))
+    return ours / theirs if theirs > 0.0 and math.isfinite(ours) and math.isfinite(theirs) else None
 
 
 @dataclass(frozen=True, slots=True)
@@ -130,7 +148,8 @@ def compare_all(chains: Sequence[ChainDynamics]) -> tuple[Comparison | NotSimula
         if single is not None:
             structures.append(single_loop_structure(structure, _single_controller(chain.stages, single)))
         standard = standard_scenarios(len(chain.levels), size_pct=UPSET_PCT)
-        groups.append((structures, (*standard, *declared_scenarios(chain))))
+        scenarios = (*standard, *declared_scenarios(chain))
+        groups.append((structures, (*scenarios, *(replace(one, moves=()) for one in scenarios if one.moves))))
     for (position, dynamics), (structures, scenarios), responses in zip(
         stable.items(), groups, simulate_groups(groups, known=known), strict=True
     ):
@@ -139,12 +158,15 @@ def compare_all(chains: Sequence[ChainDynamics]) -> tuple[Comparison | NotSimula
             continue
         tuned, *others = responses
         alone = others[0] if others else (None,) * len(scenarios)
+        # Those without feedforward were added behind the others.
+        shown = len(scenarios) - sum(bool(scenario.moves) for scenario in scenarios)
+        without = iter(tuned[shown:])
         found[position] = Comparison(
             dynamics,
             singles[position],
             tuple(
-                ScenarioResponses(scenario, ours, theirs)
-                for scenario, ours, theirs in zip(scenarios, tuned, alone, strict=True)
+                ScenarioResponses(scenario, ours, theirs, next(without) if scenario.moves else None)
+                for scenario, ours, theirs in zip(scenarios[:shown], tuned[:shown], alone[:shown], strict=True)
             ),
             structures[0].start_pct,
         )
@@ -181,11 +203,40 @@ def declared_scenarios(chain: Chain) -> tuple[Scenario, ...]:
         for written in loop.loop.disturbances.values():
             step = declared_step(written, loop, route, stage.process)
             if isinstance(step, Step) and step.size_pct:
+                moves = _moves(written, chain)
+                # A dead time counts where something is known of the upset before it arrives.
+                dead_time_s = step.path.dead_time_s if moves else 0.0
                 # Two loops may use one name for what each of them meets.
                 taken = written.name in found or written.name in standard
                 name = f"{written.name} ({loop.tag})" if taken else written.name
-                found[name] = Scenario(name, disturbances=(Disturbance(level, step.size_pct, step.path),))
+                disturbance = Disturbance(level, step.size_pct, step.path, dead_time_s)
+                found[name] = Scenario(name, disturbances=(disturbance,), moves=moves)
     return tuple(found.values())
+
+
+def _moves(written: model.Disturbance, chain: Chain) -> tuple[MeasuredMove, ...]:
+    """What a disturbance moves that functions of the chain feed forward."""
+    found = {}
+    for one in (one for level in chain.levels for one in level.inputs):
+        move = moved_in(written, one)
+        if move is not None:
+            found[move.measurement] = move
+    return tuple(found.values())
+
+
+def moved_in(written: model.Disturbance, entering: FunctionInput) -> MeasuredMove | None:
+    """How a disturbance moves what enters a function; None where it does not, or where that does not follow."""
+    move = next((written.moves[name] for name in entering.names if name in written.moves), None)
+    if move is None or entering.range is None or isinstance(entering.path, Undecided):
+        return None
+    size = known(move.size)
+    if size is None or isinstance(move.lag, Hold):
+        return None
+    try:
+        size_pct = 100.0 * size.difference_in(entering.range.unit.symbol) / entering.range.span
+    except UnitError:  # `unit-incompatible` tells of it
+        return None
+    return MeasuredMove(entering.path.measurement, size_pct, max(0.0, seconds(move.lag))) if size_pct else None
 
 
 def cascade_error_ratios(cascades: Sequence[ChainDynamics]) -> tuple[float | Lacking, ...]:
@@ -279,6 +330,9 @@ def structure_of(chain: Chain) -> ControlStructure:
         chain.stages,
         final_element=_final_element(chain),
         start_pct=tuple(_start_pct(level) for level in chain.levels),
+        feedforwards=tuple(
+            tuple(one.path for one in level.inputs if isinstance(one.path, Feedforward)) for level in chain.levels
+        ),
     )
 
 

@@ -117,9 +117,32 @@ DISTURBANCE = _record(
     [
         "level",  # the measurement that it moves, 0 the innermost
         "order",  # number of states
+        "delay",  # whole steps until it begins to act
+        "there",  # first step at which all of it has begun to
     ],
 )
 """A step that reaches a measurement through lags; its row of the step matrices as of a process, for the step's size."""
+
+FEEDFORWARD = _record(
+    [
+        "through",  # share that is there at once, of what it brings in the end
+        "factor",  # 1 for a ratio, which multiplies the output; 0 for a sum
+        "steady",  # what a ratio normally makes of its input, counted from zero [%]; 1 for a sum, which adds
+        "taken_low",  # limits of what is commanded [%]
+        "taken_high",
+    ],
+    [
+        "level",  # the controller whose output it joins
+        "order",  # number of states
+        "joins",  # behind how many of the lead-lags of that output
+        "lead_lags",  # number of its own
+    ],
+)
+"""A measured variable that moves, on its way to the output of a controller.
+
+What it brings is in percent for a sum and a share of the normal input for a ratio. Its row of the step matrices as of
+a disturbance; its row of its lead-lags as of a controller, with which they are executed.
+"""
 
 CASE = _record(
     [
@@ -132,6 +155,8 @@ CASE = _record(
         "structure",  # row of the structure
         "disturbed_from",  # first of its disturbances
         "disturbed_to",  # first that is no longer its own
+        "fed_from",  # first of its feedforwards
+        "fed_to",  # first that is no longer its own
         "steps",  # most steps, a multiple of the window
         "window",  # steps over which nothing moves at rest, so that the run ends; 0 to run to the end
     ],
@@ -167,6 +192,10 @@ MEMORY = _record(
         "computed",  # output before its limits [%]
         "output",  # within its limits [%]
         "asked",  # behind the lead-lags: what is asked of what it commands [%]
+        "followed_low",  # those of the controller, less what is fed forward [%]
+        "followed_high",
+        "added",  # what is fed forward adds to the output [%]
+        "scaled",  # by what share it makes the output more
     ],
     ["wait"],  # steps until the next scan
 )
@@ -174,6 +203,29 @@ MEMORY = _record(
 
 WATCHED = _record(["low", "high", "window_low", "window_high"])
 """Extremes of a signal since the start, and since the window began [%]."""
+
+
+class Feed(NamedTuple):
+    """What measured variables bring to the outputs of controllers."""
+
+    joining: Records
+    """(f,) of `FEEDFORWARD`."""
+    matrices: FloatArray
+    """(f, m, m + 4) step matrices of what moves them."""
+    lead_lags: FloatArray
+    """(f, q, 2) of their own."""
+
+
+class Brought(NamedTuple):
+    """The feedforwards of one run as they are executed."""
+
+    joining: Records
+    lead_lags: FloatArray
+    """As of the `Feed`."""
+    lagged: FloatArray
+    """(f, q) signals behind the lags."""
+    values: FloatArray
+    """(f,) what moves them at this step."""
 
 
 class Plant(NamedTuple):
@@ -193,6 +245,8 @@ class Plant(NamedTuple):
     """(d,) of `DISTURBANCE`."""
     disturbance_matrices: FloatArray
     """(d, m, m + 4) step matrices of the disturbances."""
+    feed: Feed | None
+    """What is fed forward; None where nothing is, of which the compiler makes code without it."""
 
 
 # --- the controllers ---------------------------------------------------------------------------------
@@ -241,11 +295,63 @@ def _led(controller: Any, lead_lags: FloatArray, lagged: FloatArray, level: int,
 
 
 @compiled
+def _fed(
+    controller: Any,
+    memory: Any,
+    lead_lags: FloatArray,
+    lagged: FloatArray,
+    level: int,
+    feed: Any,
+) -> float:
+    """The output of a controller behind its lead-lags and what joins it on the way.
+
+    A measured variable moves the limits within which the output is followed: what it adds is no part of the output.
+    """
+    signal, added, scale, low, high = memory.output, 0.0, 1.0, 0.0, 0.0
+    for i in range(controller.lead_lags + 1):
+        for one in range(len(feed.joining)):
+            joining = feed.joining[one]
+            if joining.level == level and joining.joins == i:
+                value = _led(joining, feed.lead_lags, feed.lagged, one, feed.values[one])
+                signal += value * (joining.factor * signal + joining.steady)
+                added += value * (joining.factor * added + joining.steady)
+                scale *= 1.0 + value * joining.factor
+                low, high = joining.taken_low, joining.taken_high
+        if i < controller.lead_lags:
+            lead = lead_lags[level, i, 0]
+            lagged[level, i] += lead_lags[level, i, 1] * (signal - lagged[level, i])
+            signal = lead * signal + (1.0 - lead) * lagged[level, i]
+    # Of a ratio whose input has gone to nothing the output moves nothing, and there is nothing to follow.
+    if low < high and scale > 0.0:
+        memory.added, memory.scaled = added, scale - 1.0
+        memory.followed_low = _limit((low - added) / scale, controller.output_low, controller.output_high)
+        memory.followed_high = _limit((high - added) / scale, controller.output_low, controller.output_high)
+    return float(signal)
+
+
+@compiled
+def _followed(controller: Any, memory: Any, feed: Any) -> tuple[float, float]:
+    """The limits within which the output of a controller is followed [%]."""
+    if feed is None:
+        return controller.followed_low, controller.followed_high
+    return memory.followed_low, memory.followed_high
+
+
+@compiled
+def _asked_for(memory: Any, reached: float, feed: Any) -> float:
+    """Of what a secondary has reached, the part that the output of its primary has asked for [%]."""
+    if feed is None:
+        return reached
+    return float((reached - memory.added) / (1.0 + memory.scaled))
+
+
+@compiled
 def _execute(
     controllers: Records,
     lead_lags: FloatArray,
     memories: Records,
     lagged: FloatArray,
+    feed: Any,
     measured: FloatArray,
     setpoint: float,
 ) -> float:
@@ -258,12 +364,16 @@ def _execute(
                 memory.setpoint = _limit(setpoint, controller.setpoint_low, controller.setpoint_high)
                 computed = scan(controller, memory, memory.setpoint, measured[level])
                 memory.output = _limit(computed, controller.output_low, controller.output_high)
-                memory.asked = _led(controller, lead_lags, lagged, level, memory.output)
-            if memory.computed < controller.followed_low or memory.computed > controller.followed_high:
+                if feed is None:
+                    memory.asked = _led(controller, lead_lags, lagged, level, memory.output)
+                else:
+                    memory.asked = _fed(controller, memory, lead_lags, lagged, level, feed)
+            low, high = _followed(controller, memory, feed)
+            if memory.computed < low or memory.computed > high:
                 limited = True
             setpoint = memory.asked
     if limited:
-        _track_limits(controllers, memories, measured)
+        _track_limits(controllers, memories, feed, measured)
     for level in range(len(controllers)):
         memory = memories[level]
         memory.wait = (memory.wait if memory.wait else controllers[level].every) - 1
@@ -271,7 +381,7 @@ def _execute(
 
 
 @compiled
-def _track_limits(controllers: Records, memories: Records, measured: FloatArray) -> None:
+def _track_limits(controllers: Records, memories: Records, feed: Any, measured: FloatArray) -> None:
     """Tell the controllers that were due what became of their outputs.
 
     The setpoint that the secondary took; and while the secondary can move its measurement no further, that
@@ -281,15 +391,17 @@ def _track_limits(controllers: Records, memories: Records, measured: FloatArray)
     for level in range(len(controllers)):
         controller, memory = controllers[level], memories[level]
         if controller.controls:
-            actual = _limit(memory.computed, controller.followed_low, controller.followed_high)
+            low, high = _followed(controller, memory, feed)
+            actual = _limit(memory.computed, low, high)
+            reached = _asked_for(memory, below, feed)
             if no_higher:
-                actual = min(actual, below)
+                actual = min(actual, reached)
             if no_lower:
-                actual = max(actual, below)
+                actual = max(actual, reached)
             if memory.wait == 0:
                 track(controller, memory, actual)
-            at_high = memory.computed > controller.followed_high or no_higher
-            at_low = memory.computed < controller.followed_low or no_lower
+            at_high = memory.computed > high or no_higher
+            at_low = memory.computed < low or no_lower
             no_higher, no_lower = (at_high, at_low) if controller.reverse else (at_low, at_high)
             below = measured[level]
 
@@ -373,6 +485,16 @@ def _turn(heading: float, extreme: float, travel: float) -> tuple[float, float, 
 
 
 @compiled
+def _begin(controllers: Records, memories: Records, feed: Any, case: Any) -> Brought:
+    """Begin a run in which something is fed forward: nothing yet, and outputs are followed as those of plain loops."""
+    for level in range(len(controllers)):
+        memories[level].followed_low = controllers[level].followed_low
+        memories[level].followed_high = controllers[level].followed_high
+    joining, lead_lags = feed.joining[case.fed_from : case.fed_to], feed.lead_lags[case.fed_from : case.fed_to]
+    return Brought(joining, lead_lags, np.zeros(lead_lags.shape[:2]), np.zeros(len(joining)))
+
+
+@compiled
 def _run_one(
     structures: Records,
     processes: Records,
@@ -381,6 +503,7 @@ def _run_one(
     lead_lags: FloatArray,
     disturbances: Records,
     disturbance_matrices: FloatArray,
+    feed: Any,
     case: Any,
     rings: FloatArray,
     reading: Any,
@@ -401,6 +524,10 @@ def _run_one(
     watched = np.zeros(levels + 1, WATCHED)
     for level in range(levels):
         rings[level, : processes[level].last + 1] = 0.0
+    if feed is not None:
+        brought = _begin(controllers, memories, feed, case)
+        moved_by = feed.matrices[case.fed_from : case.fed_to]
+        moving = np.zeros((len(brought.joining), moved_by.shape[1]))
     held = drive = travel = mean = error = heading = extreme = 0.0
     error_sum = moved = peak = measurement = 0.0
     peak_step, outside_step, turns, step = 0, -1, 0, 0
@@ -419,17 +546,28 @@ def _run_one(
             measurement += process.through_now * now + process.through_before * before
             for one in range(len(disturbances)):
                 upset = disturbances[one]
-                if upset.level == level:
-                    if step:
-                        _advance(disturbance_matrices, upset.order, upsets, one, 1.0, 0.0, 0.0)
-                    measurement += _output(disturbance_matrices, upset.order, upsets, one) + upset.through
+                if upset.level == level and step >= upset.delay:
+                    if step > upset.delay:
+                        already = 1.0 if step > upset.delay + 1 else 0.0
+                        _advance(disturbance_matrices, upset.order, upsets, one, 1.0, already, 0.0)
+                    measurement += _output(disturbance_matrices, upset.order, upsets, one)
+                    if step >= upset.there:
+                        measurement += upset.through
             measured[level] = measurement
             _note(watched[level], measurement)
+        if feed is not None:
+            for one in range(len(brought.joining)):
+                joining = brought.joining[one]
+                if step:
+                    _advance(moved_by, joining.order, moving, one, 1.0, 0.0, 0.0)
+                brought.values[one] = _output(moved_by, joining.order, moving, one) + joining.through
         # Execute the controllers and move the final element.
         if structure.in_manual:
             signal = case.manual
+        elif feed is None:
+            signal = _execute(controllers, lead_lags, memories, lagged, None, measured, setpoint)
         else:
-            signal = _execute(controllers, lead_lags, memories, lagged, measured, setpoint)
+            signal = _execute(controllers, lead_lags, memories, lagged, brought, measured, setpoint)
         last_mean = mean
         held, drive, travel, mean = _move(structure, held, drive, travel, signal)
         rings[0, step & processes[0].last] = mean
@@ -466,8 +604,9 @@ def _run_one(
     reading.moved, reading.turns = moved, turns
     reading.limited_level = -1
     for level in range(levels - 1, -1, -1):
-        controller, asked = controllers[level], memories[level].computed
-        if controller.controls and (asked < controller.followed_low or asked > controller.followed_high):
+        low, high = _followed(controllers[level], memories[level], feed)
+        asked = memories[level].computed
+        if controllers[level].controls and (asked < low or asked > high):
             reading.limited_level = level
 
 
@@ -480,6 +619,7 @@ def run(
     lead_lags: FloatArray,
     disturbances: Records,
     disturbance_matrices: FloatArray,
+    feed: Any,
     cases: Records,
     readings: Records,
     traces: FloatArray,
@@ -489,7 +629,7 @@ def run(
 
     Parameters
     ----------
-    structures, processes, matrices, controllers, lead_lags, disturbances, disturbance_matrices
+    structures, processes, matrices, controllers, lead_lags, disturbances, disturbance_matrices, feed
         The parts of a `Plant`.
     cases : (n,) array of CASE
         Runs of its structures.
@@ -513,7 +653,7 @@ def run(
     for i in range(len(cases)):
         _run_one(
             structures, processes, matrices, controllers, lead_lags, disturbances, disturbance_matrices,
-            cases[i], rings, readings[i], traces[i], stride,
+            feed, cases[i], rings, readings[i], traces[i], stride,
         )  # fmt: skip
 
 
@@ -566,7 +706,7 @@ def _names(records: np.dtype[np.void], kind: type) -> list[str]:
 LOOP = _record(
     [
         *_names(CONTROLLER, np.float64),
-        "reset_share",  # scan interval over reset time: how far the lag of an external reset goes in a scan, at most 1
+        "reset_share",  # how far the lag of an external reset goes in a scan, solved backward as the integral is
         "start_setpoint",  # setpoint less measurement at the start [%]
         "start_integral",  # [%]
     ],

@@ -97,10 +97,22 @@ def _columns(structures: Sequence[ControlStructure], scenarios: Sequence[Scenari
     return [Column(structure, scenarios, clock) for structure in structures]
 
 
-def _slowest_disturbance_s(scenarios: Sequence[Scenario]) -> float:
-    """How long disturbances with a path of their own take to come through in full [s]."""
-    paths = [d.path for scenario in scenarios for d in scenario.disturbances if d.path is not None]
-    return max((LAGS_TO_ARRIVE * path.lag_sum_s for path in paths), default=0.0)
+def _slowest_disturbance_s(structures: Sequence[ControlStructure], scenarios: Sequence[Scenario]) -> float:
+    """How long disturbances with a path of their own, and what is fed forward, take to come through in full [s]."""
+    disturbances = [
+        d.dead_time_s + (LAGS_TO_ARRIVE * d.path.lag_sum_s if d.path is not None else 0.0)
+        for scenario in scenarios
+        for d in scenario.disturbances
+    ]
+    moved = {move.measurement: move.lag_s for scenario in scenarios for move in scenario.moves}
+    fed = [
+        LAGS_TO_ARRIVE * (moved[one.measurement] + math.fsum(lead_lag.lag_s for lead_lag in one.lead_lags))
+        for structure in structures
+        for ones in structure.feedforwards
+        for one in ones
+        if one.measurement in moved
+    ]
+    return max([*disturbances, *fed], default=0.0)
 
 
 def _response(
@@ -276,6 +288,6 @@ def _on_clocks(
     return [
         clock
         if isinstance(clock, Unsuited)
-        else _columns(structures, scenarios, lasting(clock, _slowest_disturbance_s(scenarios)))
+        else _columns(structures, scenarios, lasting(clock, _slowest_disturbance_s(structures, scenarios)))
         for (structures, scenarios), clock in zip(groups, clocks, strict=True)
     ]

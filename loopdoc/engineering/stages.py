@@ -12,8 +12,9 @@ from dataclasses import dataclass, replace
 from typing import TypeAlias, TypeVar
 
 from loopdoc.engineering.direction import Undecided, element_sign, process_on
+from loopdoc.engineering.feedforward import FunctionInput, inputs_on, normal_input
 from loopdoc.engineering.frequency import LoopStage
-from loopdoc.engineering.functions import SELECTORS, Curve, curve_of, fed_by, lead_lag_of, steady_band
+from loopdoc.engineering.functions import SELECTORS, Curve, curve_of, fed_by, lead_lag_of
 from loopdoc.engineering.lead_lag import LeadLag
 from loopdoc.engineering.pairing import ControlledLoop, Plant, Route, normal_value
 from loopdoc.engineering.pid import (
@@ -61,6 +62,8 @@ class Level:
     loop: ControlledLoop
     route: Route
     stage: LoopStage
+    inputs: tuple[FunctionInput, ...] = ()
+    """What functions on the route take in besides the output of the loop."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -95,7 +98,7 @@ def chains(plant: Plant, lead: ControlledLoop) -> tuple[Chain, ...] | Lacking:
         return tuple(
             Chain(
                 tuple(
-                    Level(loop, route, _stage(plant, loop, route))
+                    Level(loop, route, _stage(plant, loop, route), inputs_on(plant, loop, route))
                     for loop, route in way
                 )
             )
@@ -384,14 +387,7 @@ def _other(kinds: list[str | None]) -> str:
 
 def _normal(plant: Plant, tag: str, own: Range) -> float:
     """Normal value of what enters a function, in the secondary's unit."""
-
-    def of_measurement(name: str) -> Range | Undecided:
-        loop = plant.register.loops.get(name) or plant.loop_of_transmitter.get(name)
-        operating = known(loop.operating) if loop else None
-        normal = _need(operating.normal if operating else None, f"the normal value of {name}")
-        return Range(normal.value, normal.value, normal.unit)
-
-    return _decided(steady_band(plant, tag, of_measurement)).to(own.unit.symbol).low
+    return _decided(normal_input(plant, tag)).to(own.unit.symbol).low
 
 
 def _decided(found: T | Undecided) -> T:

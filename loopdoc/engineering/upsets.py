@@ -1,9 +1,10 @@
 """What may upset a measurement while its loops are in manual: a final element at its limit, a declared disturbance.
 
 Each upset is a step and its path to the measurement, from the process models of the register; the controllers
-take no part. A final element starts from its opening in normal operation, which the register does not give.
-It follows for a flow, which is nothing when its valve is shut: the normal flow over the process gain. Where it
-does not follow, the whole travel is taken, the quickest upset that there can be, and said to be so.
+take no part, and what functions make of measured variables reaches no final element either. A final element starts
+from its opening in normal operation, which the register does not give. It follows for a flow, which is nothing when
+its valve is shut: the normal flow over the process gain. Where it does not follow, the whole travel is taken, the
+quickest upset that there can be, and said to be so.
 """
 
 from __future__ import annotations
@@ -101,21 +102,24 @@ def _step(
     size, lag = known(written.size), written.lag
     if size is None or own is None or own.span <= 0.0:
         return Lacking(f"its size, or the range of {loop.tag}, is not known")
-    if isinstance(lag, model.Hold):
-        return Lacking("its lag is on hold" if lag.readable else "its lag could not be read")
+    for name, time in (("lag", lag), ("dead time", written.dead_time)):
+        if isinstance(time, model.Hold):
+            return Lacking(f"its {name} {'is on hold' if time.readable else 'could not be read'}")
+    dead_time_s = max(0.0, seconds(written.dead_time))
     try:
         if known(written.at) == "process input":
             if isinstance(process, Lacking):
                 return process
-            return _through(process, 100.0 * size.difference_in(input_unit) / input_span)
+            late = replace(process, dead_time_s=process.dead_time_s + dead_time_s)
+            return _through(late, 100.0 * size.difference_in(input_unit) / input_span)
         size_pct = 100.0 * size.difference_in(own.unit.symbol) / own.span
     except UnitError:
         return Lacking("its size is in a unit of another kind")
     if lag is not None:
-        return Step(size_pct, Process(1.0, (seconds(lag),)))
+        return Step(size_pct, Process(1.0, (seconds(lag),), dead_time_s))
     if isinstance(process, Lacking):
         return Lacking(f"it has no lag of its own, and {process.reason}")
-    return Step(size_pct, Process(1.0, process.lags_s))
+    return Step(size_pct, Process(1.0, process.lags_s, dead_time_s))
 
 
 def _through(process: Process, input_pct: float) -> Step:
