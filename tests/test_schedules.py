@@ -107,8 +107,8 @@ def all_rows(kind: str, basis: Basis) -> list[list[str]]:
 @pytest.mark.parametrize("name", NAMES)
 def test_every_alarm_and_every_trip_stands_once(name: str) -> None:
     basis = example(name)
-    rows = [row for row in all_rows("alarms", basis) if len(row) == 12 and row[0] != "Tag"]
-    shown = Counter((row[0], row[2].partition(",")[0].partition(" / ")[0]) for row in rows)
+    rows = [row for row in all_rows("alarms", basis) if len(row) == 13 and row[0] != "Tag"]
+    shown = Counter((row[0], row[3].partition(",")[0].partition(" / ")[0]) for row in rows)
     register = basis.plant.register
     wanted = Counter(
         (loop.tag, kind.replace("_", "-").capitalize()) for loop in register.loops.values() for kind in loop.alarms
@@ -130,21 +130,49 @@ interlocks:
   IS-1: {unit: "10", initiators: {LT-1: {trips: below 5 %}}}
   IS-2: {unit: "10", initiators: {LT-1: {trips: above 95 %}}}
 """)
-    kinds = [row[2].partition(" / ")[0] for row in all_rows("alarms", basis) if row[0] == "LI-1"]
+    kinds = [row[3].partition(" / ")[0] for row in all_rows("alarms", basis) if row[0] == "LI-1"]
     assert kinds == ["Trip IS-2", "High-high", "High", "Low", "Low-low", "Trip IS-1", "Deviation"]
+
+
+def test_an_alarm_names_the_hazard_of_another_loop_of_which_it_warns(tmp_path: Path) -> None:
+    basis = written(tmp_path, """
+loops:
+  PI-1: {unit: "10", service: Pressure, measurement: {transmitter: PT-1, variable: pressure, range: 0 to 1 barg},
+         alarms: {high: {limit: 0.8 barg, priority: high, warns_of: {TI-2: high, LI-3: low}},
+                  low: {limit: 0.1 barg, priority: low}}}
+  TI-2: {unit: "10", service: Temperature, hazard: high, measurement: {transmitter: TT-2, variable: temperature},
+         alarms: {high: {limit: 90 degC, priority: low}, low: {limit: 5 degC}}}
+  LI-3: {unit: "10", service: Level, hazard: low, measurement: {transmitter: LT-3, variable: level}}
+""")
+    page = next(alarm_schedules(basis))
+    alarms = {(row[0], row[3].partition(" / ")[0]): row[3] for row in rows_of(page) if len(row) == 13}
+    assert alarms["PI-1", "High"] == "High / warns of TI-2 high and LI-3 low"
+    assert alarms["PI-1", "Low"] == "Low"
+    assert "Alarms by priority: 1 high, 2 low and 1 without one." in html(page)
 
 
 @pytest.mark.parametrize("name", NAMES)
 def test_every_channel_stands_once_and_in_natural_order(name: str) -> None:
     basis = example(name)
     register = basis.plant.register
-    rows = [row for row in all_rows("channels", basis) if len(row) == 9 and row[0] != "Channel"]
-    parts = [*register.measurements.values(), *register.final_elements.values()]
+    rows = [row for row in all_rows("channels", basis) if len(row) in (9, 11) and row[0] != "Channel"]
+    parts = [*register.measurements.values(), *register.final_elements.values(), *register.solenoids.values()]
     given = [part.channel for part in parts if isinstance(part.channel, str)]
     shown = [row[0] for row in rows if row[0] not in ("–",) and not row[0].startswith("HOLD")]
     assert sorted(shown) == sorted(given)
     assert shown == sorted(shown, key=natural)
     assert len(rows) == len(parts)  # and what has no channel stands there too
+
+
+def test_cables_and_terminals_stand_in_the_channel_list_where_the_register_has_them() -> None:
+    rows = {row[1]: row for row in all_rows("channels", example("tarn-hollow")) if len(row) == 11}
+    assert rows["Tag"][7:9] == ["Cables", "Terminals"]
+    assert rows["TT-2014"][7:9] == ["C-TT-2014 / M-2001, pair 5", "JB-2001: 9, 10 / MC-20: TB1-9, TB1-10"]
+    assert rows["XY-2011"][2] == "Trip solenoid of FV-2011"
+    assert rows["XY-2011"][9] == "IS-2001"
+    heads = [row for row in all_rows("channels", example("tennessee-eastman")) if row[0] == "Channel"]
+    assert heads
+    assert all("Cables" not in head for head in heads)
 
 
 def test_a_channel_given_twice_is_seen(tmp_path: Path) -> None:
@@ -297,8 +325,8 @@ BETWEEN_MIN = 10 * math.log(0.75 / 0.5)
 def test_the_alarm_schedule_tells_the_time_to_act(tmp_path: Path, upset: str, respond: str, told: str) -> None:
     assert f"{BETWEEN_MIN:.2g} min" == "4.1 min"
     page = next(alarm_schedules(written(tmp_path, LAG % (upset, respond, ""))))
-    alarm = next(row for row in rows_of(page) if row[0] == "PI-1" and row[2] == "High")
-    assert alarm[11] == told
+    alarm = next(row for row in rows_of(page) if row[0] == "PI-1" and row[3] == "High")
+    assert alarm[12] == told
     assert "do not show that an alarm or an interlock is enough" in html(page)
 
 
@@ -311,7 +339,7 @@ def test_the_alarm_schedule_tells_the_time_to_act(tmp_path: Path, upset: str, re
 )
 def test_a_trip_is_shown_with_its_share_of_the_process_safety_time(tmp_path: Path, given: str, told: str) -> None:
     rows = rows_of(next(alarm_schedules(written(tmp_path, LAG % (UPSET, "", given)))))
-    assert next(row for row in rows if row[2].startswith("Trip"))[11] == told
+    assert next(row for row in rows if row[3].startswith("Trip"))[12] == told
 
 
 # ---------------------------------------------------------------- cause and effect

@@ -6,7 +6,7 @@ from collections.abc import Iterator
 
 from loopdoc.engineering.pairing import LoopAlarm, Plant, normal_value
 from loopdoc.engineering.spreading import transmitter_of
-from loopdoc.register.model import Hold, Loop, PlantUnit, known
+from loopdoc.register.model import ALARM_PRIORITIES, Hold, Loop, PlantUnit, known
 from loopdoc.register.quantity import Quantity, Range
 from loopdoc.register.units import UNITS, same_difference
 from loopdoc.rules.finding import Level
@@ -17,7 +17,6 @@ from loopdoc.rules.values import above, amount, below, duration, equal, measured
 NAMES = {"low_low": "low-low", "low": "low", "high": "high", "high_high": "high-high", "deviation": "deviation"}
 SIDES = {"high": ("high", "high_high"), "low": ("low", "low_low")}
 """The alarms that tell of each direction."""
-_PRIORITIES = ("low", "medium", "high", "critical")
 _TYPES = {"differential pressure": "pressure", "temperature difference": "temperature"}
 _STATED = ("priority", "cause", "consequence", "response", "time_to_respond")
 _NOTHING = (
@@ -267,9 +266,9 @@ def alarm_priority_order(loop: Loop) -> Iterator[Draft]:
     only_if(pairs)
     for inner, outer in pairs:
         first, second = known(inner.priority), known(outer.priority)
-        if first not in _PRIORITIES or second not in _PRIORITIES:
+        if first not in ALARM_PRIORITIES or second not in ALARM_PRIORITIES:
             continue
-        if _PRIORITIES.index(second) < _PRIORITIES.index(first):
+        if ALARM_PRIORITIES.index(second) < ALARM_PRIORITIES.index(first):
             yield draft(
                 loop.tag,
                 f"its {NAMES[outer.kind]} alarm has {second} priority, its {NAMES[inner.kind]} alarm {first}",
@@ -303,12 +302,12 @@ def alarm_priority_mix(unit: PlantUnit, plant: Plant, limits: Limits) -> Iterato
     """
     alarms = plant.alarms_of_unit.get(unit.number, ())
     only_if(alarms and not below(len(alarms), limits.alarm_mix_count))
-    given = [entry for entry in alarms if known(entry.alarm.priority) in _PRIORITIES]
+    given = [entry for entry in alarms if known(entry.alarm.priority) in ALARM_PRIORITIES]
     if below(len(given), limits.alarm_mix_count):
         not_checked("the priorities of its alarms are not given")
     for which, ranks, allowed in (
-        ("high or critical", _PRIORITIES[2:], limits.alarm_share_high),
-        ("medium, high or critical", _PRIORITIES[1:], limits.alarm_share_raised),
+        ("high or critical", ALARM_PRIORITIES[2:], limits.alarm_share_high),
+        ("medium, high or critical", ALARM_PRIORITIES[1:], limits.alarm_share_raised),
     ):
         raised = [entry for entry in given if known(entry.alarm.priority) in ranks]
         share = 100 * len(raised) / len(given)

@@ -2,8 +2,9 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
-from dataclasses import dataclass
+from collections import Counter
+from collections.abc import Iterator, Sequence
+from dataclasses import dataclass, replace
 
 from loopdoc.documents.basis import Basis, Page
 from loopdoc.documents.narrative import protection_story, time_to_act_story
@@ -23,9 +24,10 @@ from loopdoc.documents.schedules.schedule import (
 )
 from loopdoc.documents.values import DASH
 from loopdoc.documents.whereabouts import anchor, natural, unit_numbers, unit_of
-from loopdoc.documents.wording import upper_first
+from loopdoc.documents.wording import listed, upper_first
 from loopdoc.engineering.pairing import Trip
-from loopdoc.register.model import ALARM_ORDER, Alarm, Loop, known
+from loopdoc.register.model import ALARM_ORDER, ALARM_PRIORITIES, Alarm, Hold, Loop, Measurement, known
+from loopdoc.register.quantity import Range
 from loopdoc.register.units import UnitError
 
 KIND = ScheduleKind(
@@ -34,16 +36,16 @@ KIND = ScheduleKind(
                 "Remarks"),
 )  # fmt: skip
 COLUMNS = (
-    Column("Tag", 5.2), Column("Service", 8.6), Column("Alarm or trip", 6.6), Column("Limit", 5.8),
-    Column("Dead band", 4.6), Column("Delay", 3.6), Column("Priority", 4.6), Column("Likely cause", 13.0),
-    Column("Consequence", 13.0), Column("Response", 15.2), Column("Time to respond", 5.0),
-    Column("Time to act by upset", 14.8),
+    Column("Tag", 5.2), Column("Service", 8.4), Column("Range", 6.0), Column("Alarm or trip", 7.4),
+    Column("Limit", 5.8), Column("Dead band", 4.4), Column("Delay", 3.4), Column("Priority", 4.4),
+    Column("Likely cause", 12.2), Column("Consequence", 12.4), Column("Response", 14.0), Column("Time to respond", 4.4),
+    Column("Time to act by upset", 12.0),
 )  # fmt: skip
 READING = (
     "Every alarm and every trip, by tag, from the highest limit to the lowest; a trip stands on grey and acts by "
-    "itself. Dead band: how far the measurement has to come back. Delay: how long it has to stay beyond the limit. "
-    "Time to act by upset: from the alarm to the trip behind it, with both delays and filters, against the time to "
-    "respond.",
+    "itself. An alarm that warns of another loop's hazard names it. Dead band: how far the measurement has to come "
+    "back. Delay: how long it has to stay beyond the limit. Time to act by upset: from the alarm to the trip behind "
+    "it, with both delays and filters, against the time to respond.",
     DASHES,
 )
 
@@ -58,6 +60,7 @@ class _Sensor:
     service: str
     unit: str
     loop: Loop | None
+    range: Range | Hold | None
     trips: tuple[Trip, ...]
 
 
@@ -83,11 +86,16 @@ def _sensors(basis: Basis) -> Iterator[_Sensor]:
     for loop in plant.register.loops.values():
         trips = tuple(of_loop.get(loop.tag, ()))
         if loop.alarms or trips:
-            yield _Sensor(loop.tag, known(loop.service) or "", unit_of(loop), loop, trips)
+            yield _Sensor(loop.tag, known(loop.service) or "", unit_of(loop), loop, _range(loop.measurement), trips)
     for tag, found in others.items():
         instrument = found[0].instrument
         service = known(instrument.service) if instrument else None
-        yield _Sensor(tag, service or "", unit_of(instrument or found[0].interlock), None, tuple(found))
+        span = _range(instrument.measurement if instrument else None)
+        yield _Sensor(tag, service or "", unit_of(instrument or found[0].interlock), None, span, tuple(found))
+
+
+def _range(measurement: Measurement | Hold | None) -> Range | Hold | None:
+    return measurement.range if isinstance(measurement, Measurement) else measurement
 
 
 class _Alarms:
@@ -101,11 +109,12 @@ class _Alarms:
 
     def page(self, number: str, sensors: list[_Sensor]) -> Page:
         groups = tuple(Group(tuple(self._rows(sensor))) for sensor in sensors)
-        alarms = sum(len(sensor.loop.alarms) for sensor in sensors if sensor.loop)
+        alarms = [alarm for sensor in sensors if sensor.loop for alarm in sensor.loop.alarms.values()]
         trips = sum(len(sensor.trips) for sensor in sensors)
         return page(
-            self._basis, self._writer, KIND, unit=number, extent=extent((alarms, "alarm"), (trips, "trip")),
-            reading=READING, caution=time_to_act_story.CAUTION, schedules=(Schedule("", COLUMNS, groups),),
+            self._basis, self._writer, KIND, unit=number, extent=extent((len(alarms), "alarm"), (trips, "trip")),
+            reading=READING, caution=time_to_act_story.CAUTION,
+            lead=_priorities(alarms), schedules=(Schedule("", COLUMNS, groups),),
         )  # fmt: skip
 
     def _rows(self, sensor: _Sensor) -> Iterator[Row]:
@@ -130,14 +139,25 @@ class _Alarms:
         times = time_to_act_story.times_of(self._plant, self._basis.times, loop, alarm)
         return Row(
             (
-                write.cell(sensor.tag), write.cell(sensor.service),
-                write.plain(upper_first(alarm_name(alarm.kind)), kind="strong"),
+                *self._measured(sensor), self._name(alarm),
                 write.value(alarm.limit, sensor.tag), write.cell(alarm.deadband), write.cell(alarm.delay),
                 write.cell(alarm.priority), write.words(alarm.cause), write.words(alarm.consequence),
                 write.words(alarm.response), write.cell(alarm.time_to_respond), self._times(times),
             ),
             at,
         )  # fmt: skip
+
+    def _measured(self, sensor: _Sensor) -> tuple[Cell, ...]:
+        write = self._writer
+        return write.cell(sensor.tag), write.cell(sensor.service), write.cell(sensor.range)
+
+    def _name(self, alarm: Alarm) -> Cell:
+        """Which alarm it is, and of whose hazard it warns where that is another loop's."""
+        write = self._writer
+        hazards = [f"{tag} {direction}" for tag, direction in alarm.warns_of.items()]
+        name = write.plain(upper_first(alarm_name(alarm.kind)), kind="strong")
+        warns = write.cell(f"warns of {listed(hazards)}").lines if hazards else ()
+        return replace(name, lines=(*name.lines, *warns))
 
     def _trip(self, sensor: _Sensor, trip: Trip, at: str) -> Row:
         interlock, initiator, write = trip.interlock, trip.initiator, self._writer
@@ -153,7 +173,7 @@ class _Alarms:
             cause = consequence = response = write.cell(f"As at {told_by}")
         return Row(
             (
-                write.cell(sensor.tag), write.cell(sensor.service),
+                *self._measured(sensor),
                 write.cell(f"Trip {interlock.tag}{voting}", *self._layer(trip), kind="strong"),
                 write.value(f"{side} {limit}" if known(initiator.limit) and known(initiator.direction) else
                             initiator.limit, sensor.tag),
@@ -171,6 +191,15 @@ class _Alarms:
     def _times(self, told: tuple[Told, ...]) -> Cell:
         strong = any(one.strong for one in told)
         return self._writer.cell(*(one.text for one in told), kind="strong" if strong else "")
+
+
+def _priorities(alarms: Sequence[Alarm]) -> Iterator[str]:
+    """How many alarms there are of each priority, which an alarm review looks at first."""
+    found = Counter(known(alarm.priority) for alarm in alarms)
+    told = [f"{found[name]} {name}" for name in reversed(ALARM_PRIORITIES) if found[name]]
+    told += [f"{found[None]} without one"] if found[None] else []
+    if told:
+        yield f"Alarms by priority: {listed(told)}."
 
 
 def _from_high(trips: list[Trip]) -> list[Trip]:

@@ -22,9 +22,10 @@ from loopdoc.documents.schedules.schedule import (
 )
 from loopdoc.documents.values import shown
 from loopdoc.documents.whereabouts import anchor, natural, unit_numbers, unit_of
+from loopdoc.documents.wiring_words import cable_lines, terminal_lines
 from loopdoc.documents.wording import counted, listed, upper_first
 from loopdoc.engineering.pairing import Plant
-from loopdoc.register.model import FinalElement, Hold, Instrument, Loop, Measurement, known
+from loopdoc.register.model import Connection, FinalElement, Hold, Instrument, Loop, Measurement, known
 from loopdoc.register.quantity import Range
 
 CHANNEL_LIST = ScheduleKind("channel-lists", "Channel list", "CL", A4)
@@ -34,6 +35,13 @@ CHANNELS = (
     Column("Channel", 10), Column("Tag", 9), Column("Service", 27), Column("Unit", 5), Column("Direction", 8),
     Column("Signal", 9), Column("Range of the signal", 13), Column("Used by", 11), Column("Shared with", 8),
 )  # fmt: skip
+_WIRES = (Column("Cables", 13), Column("Terminals", 15))
+WIRED_CHANNELS = (
+    Column("Channel", 7.5), Column("Tag", 7), Column("Service", 18), Column("Unit", 3.5), Column("Direction", 6.5),
+    Column("Signal", 6), Column("Range of the signal", 9.5), *_WIRES, Column("Used by", 8), Column("Shared with", 6),
+)  # fmt: skip
+"""Where the register has the wiring of a signal at least."""
+WIRING_READING = "Cables and terminals run from the field device to the control system, a line for each box or cabinet."
 CHANNEL_READING = (
     "Every signal between field and control system, by channel in natural order. AI and AO carry an analogue signal, "
     "DI and DO a contact; PI counts pulses; a digital signal shares a line. Where one channel is given to several "
@@ -114,6 +122,8 @@ class _Signal:
     signal: str | Hold | None
     range: Range | Hold | str | None
     users: tuple[str, ...]
+    wiring: tuple[Connection, ...] | Hold
+    service: str | Hold | None
 
 
 def channel_lists(basis: Basis) -> Iterator[Page]:
@@ -127,21 +137,35 @@ def _signals(plant: Plant) -> Iterator[_Signal]:
     for sensor in _sensors(plant):
         measurement = sensor.measurement
         held = sensor.part.measurement if isinstance(sensor.part.measurement, Hold) else None
-        channel, signal, span = (
-            (measurement.channel, measurement.signal, measurement.range) if measurement else (held, held, held)
+        channel, signal, span, wiring = (
+            (measurement.channel, measurement.signal, measurement.range, measurement.wiring)
+            if measurement
+            else (held, held, held, held or ())
         )
-        direction = _direction(known(signal), "I")
-        yield _Signal(channel, sensor.tag, sensor.part, direction, signal, span, sensor.users(plant))
+        direction, users = _direction(known(signal), "I"), sensor.users(plant)
+        yield _Signal(channel, sensor.tag, sensor.part, direction, signal, span, users, wiring, sensor.part.service)
     for element in plant.register.final_elements.values():
         direction = _direction(known(element.signal), "O")
         movers = _movers(plant, element)
-        yield _Signal(element.channel, element.tag, element, direction, element.signal, NOT_APPLICABLE, movers)
+        yield _Signal(
+            element.channel, element.tag, element, direction, element.signal, NOT_APPLICABLE, movers, element.wiring,
+            element.service,
+        )  # fmt: skip
+        solenoid = known(element.trip_solenoid)
+        if solenoid:
+            yield _Signal(
+                solenoid.channel, known(solenoid.tag) or element.tag, element, "DO", None, NOT_APPLICABLE,
+                _interlocks_on(plant, element), solenoid.wiring, f"Trip solenoid of {element.tag}",
+            )  # fmt: skip
 
 
 def _movers(plant: Plant, element: FinalElement) -> tuple[str, ...]:
     """What commands a final element: loops and functions, then interlocks."""
-    interlocks = [one.tag for one in plant.register.interlocks.values() if element.tag in one.actions]
-    return tuple(dict.fromkeys((*plant.commanders.get(element.tag, ()), *interlocks)))
+    return tuple(dict.fromkeys((*plant.commanders.get(element.tag, ()), *_interlocks_on(plant, element))))
+
+
+def _interlocks_on(plant: Plant, element: FinalElement) -> tuple[str, ...]:
+    return tuple(one.tag for one in plant.register.interlocks.values() if element.tag in one.actions)
 
 
 def _direction(signal: str | None, way: str) -> str:
@@ -169,13 +193,21 @@ def _channel_page(basis: Basis, signals: list[_Signal]) -> Page:
         if isinstance(signal.channel, str):
             on_channel.setdefault(signal.channel, []).append(signal.tag)
 
+    wired = any(signal.wiring for signal in signals)
+
+    def wires(signal: _Signal) -> tuple[Cell, ...]:
+        if not wired:
+            return ()
+        lines = cable_lines(signal.wiring, write.text), terminal_lines(signal.wiring, write.text)
+        return tuple(write.cell(*(found or (None,))) for found in lines)
+
     def row(signal: _Signal) -> Row:
         others = [tag for tag in on_channel.get(known(signal.channel) or "", ()) if tag != signal.tag]
         return Row(
             (
-                write.cell(signal.channel), write.cell(signal.tag), write.cell(signal.part.service),
+                write.cell(signal.channel), write.cell(signal.tag), write.cell(signal.service),
                 write.cell(signal.part.unit), write.cell(signal.direction), write.cell(signal.signal),
-                write.cell(signal.range), write.cell(listed(signal.users) or NOT_APPLICABLE),
+                write.cell(signal.range), *wires(signal), write.cell(listed(signal.users) or NOT_APPLICABLE),
                 write.cell(listed(others) or "none", kind="strong" if others else ""),
             ),
             anchor(signal.tag),
@@ -193,7 +225,8 @@ def _channel_page(basis: Basis, signals: list[_Signal]) -> Page:
     site = basis.plant.register.site
     return page(
         basis, write, CHANNEL_LIST, title=shown(site.name if site else None), extent=upper_first(listed(counts)),
-        reading=CHANNEL_READING, schedules=(Schedule("", CHANNELS, tuple(groups)),),
+        reading=(*CHANNEL_READING[:1], WIRING_READING, *CHANNEL_READING[1:]) if wired else CHANNEL_READING,
+        schedules=(Schedule("", WIRED_CHANNELS if wired else CHANNELS, tuple(groups)),),
     )  # fmt: skip
 
 
