@@ -128,9 +128,10 @@ def test_a_held_integral_stays_where_it_was_as_the_selected_output_moves_on() ->
 
 
 def written_out(steps: int, h: float, size: float, lasts: int, *, reset: bool) -> tuple[FloatArray, ...]:
-    """Two PI controllers on one valve by the published form: gain times error, and a lag of the reset time.
+    """Two PI controllers on one valve: gain times error, and what the selector passes through a lag of the reset time.
 
-    With external reset the lag takes in what the selector passes; without it each its own output, as limited.
+    The lag is solved backward, so that the one that passes has the backward sum of its error for an integral. Without
+    external reset each has that sum for itself.
     """
     gains, resets, setpoints = (1.0, 1.5), (30.0, 40.0), (0.0, 10.0)
     lags, effects, delays = (20.0, 35.0), (1.0, 0.9), (4, 6)
@@ -147,15 +148,17 @@ def written_out(steps: int, h: float, size: float, lasts: int, *, reset: bool) -
             upset = decay[1] * upset + (1.0 - decay[1]) * (size if k - 1 < lasts else 0.0)
         y[:, k] = states[0], states[1] + upset
         for one in (0, 1):
-            # Positive feedback through the lag: the integral action.
             u[one, k] = gains[one] * (setpoints[one] - y[one, k]) * (1.0 + h / resets[one]) + lagged[one]
         asked = np.clip(u[:, k], -50.0, 40.0)
         passed[k] = asked.min()
         for one in (0, 1):
-            fed = passed[k] if reset else asked[one]
-            error = gains[one] * (setpoints[one] - y[one, k])
-            # Where its own output passes unlimited this is the plain sum of the error.
-            lagged[one] += h / resets[one] * (fed - u[one, k] + error)
+            share = h / resets[one]
+            if reset:
+                lagged[one] += share / (1.0 + share) * (passed[k] - lagged[one])
+            else:
+                # Each by itself: the sum of its error, drawn back from its own limit.
+                error = gains[one] * (setpoints[one] - y[one, k])
+                lagged[one] += share * error + share * (asked[one] - u[one, k])
         u[:, k] = asked
     return y[0], y[1], u[0], u[1]
 

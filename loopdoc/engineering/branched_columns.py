@@ -97,8 +97,6 @@ def _loops(columns: Sequence[BranchedColumn]) -> tuple[Records, FloatArray]:
     output_low = np.array([one.output_low_pct for one in controllers]) - commanded
     output_high = np.array([one.output_high_pct for one in controllers]) - commanded
     starts = [start_of(column, place) for column, place in places]
-    with np.errstate(divide="ignore"):
-        reset_share = np.minimum(1.0, interval_s / np.array([one.reset_s for one in controllers]))
     records = filled(
         LOOP,
         **scan_coefficients(controllers, interval_s)._asdict(),
@@ -112,7 +110,7 @@ def _loops(columns: Sequence[BranchedColumn]) -> tuple[Records, FloatArray]:
         every=[every for column in columns for every in column.every],
         reverse=[one.gain > 0.0 for one in controllers],
         lead_lags=[len(loop.lead_lags) for loop in loops],
-        reset_share=reset_share,
+        reset_share=interval_s / (interval_s + np.array([one.reset_s for one in controllers])),
         start_setpoint=[error for error, _ in starts],
         start_integral=[integral for _, integral in starts],
         commands=[
