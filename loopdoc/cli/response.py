@@ -28,6 +28,7 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
 def run(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
     from loopdoc.engineering.comparison import compare
     from loopdoc.engineering.dynamics import Dynamics
+    from loopdoc.engineering.override import override
     from loopdoc.engineering.pairing import Plant
     from loopdoc.engineering.split_range import SplitRange, split_range
     from loopdoc.engineering.tuning_review import review, reviewed_loops
@@ -50,6 +51,7 @@ def run(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
     loop = dynamics.loop(arguments.tag)
     comparisons = [compare(chain) for chain in loop.chains]
     split = split_range(loop.chains)
+    rivals = override(plant, dynamics, loop.tag)
     if arguments.plot is not None:
         if loop.reason:
             stderr.write(f"loopdoc: nothing to draw for {loop.tag}: {loop.reason}\n")
@@ -68,5 +70,6 @@ def run(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
             return EXIT_UNREADABLE
     reviews = [review(dynamics.loop(tag)) for tag in reviewed_loops(loop)]
     as_asked = response_json if arguments.format == "json" else response_text
-    stdout.write(as_asked(loop, comparisons, reviews, limits_from(loaded.register.policy), split=split))
+    limits = limits_from(loaded.register.policy)
+    stdout.write(as_asked(loop, comparisons, reviews, limits, split=split, override=rivals))
     return EXIT_CLEAN

@@ -10,6 +10,7 @@ from typing import Any
 from loopdoc.engineering.comparison import UPSET_PCT, Comparison, NotSimulated, ScenarioResponses
 from loopdoc.engineering.dynamics import ChainDynamics, LoopDynamics
 from loopdoc.engineering.frequency import speed_ratio
+from loopdoc.engineering.override import Override
 from loopdoc.engineering.setpoint_steps import steps_told
 from loopdoc.engineering.split_range import SplitRange
 from loopdoc.engineering.stages import Chain, measured_range
@@ -17,6 +18,7 @@ from loopdoc.engineering.tuning_table import CAUTION as REVIEW_CAUTION
 from loopdoc.engineering.tuning_table import quoted_gain_margin, quoted_phase_margin
 from loopdoc.exchange.escaping import for_json, for_terminal
 from loopdoc.exchange.findings import CAUTION
+from loopdoc.exchange.override import override_lines, override_object
 from loopdoc.exchange.response_metrics import metric_cells, metric_heads, metrics_object, shown
 from loopdoc.exchange.split_range import split_lines, split_object
 from loopdoc.exchange.tuning_review import Reviews, margins_object, number, review_lines, reviews_object
@@ -36,11 +38,12 @@ def response_json(
     limits: Limits,
     *,
     split: SplitRange | NotSimulated | None = None,
+    override: Override | NotSimulated | None = None,
 ) -> str:
     """Margins, speed ratio, scenarios and tuning review of a loop; engineering units and seconds.
 
     One comparison for each chain, one entry of reviews for each loop of the chains; ``split`` is the split range that
-    the chains are branches of.
+    the chains are branches of, ``override`` what the loop is a candidate of.
     """
     document: dict[str, Any] = {"tag": loop.tag}
     if loop.reason:
@@ -50,6 +53,8 @@ def response_json(
     document |= chains[0] if len(chains) == 1 else {"branches": chains} if chains else {}
     if split is not None:
         document["split_range"] = split_object(split)
+    if override is not None:
+        document["override"] = override_object(override)
     document["tuning_review"] = reviews_object(reviews, limits)
     document["caution"] = f"{CAUTION} {REVIEW_CAUTION}"
     return for_json(document) + "\n"
@@ -115,6 +120,7 @@ def response_text(
     limits: Limits,
     *,
     split: SplitRange | NotSimulated | None = None,
+    override: Override | NotSimulated | None = None,
 ) -> str:
     """The same for reading."""
     if loop.reason:
@@ -125,6 +131,8 @@ def response_text(
         lines.append("")
     if split is not None:
         lines.extend((*split_lines(split), ""))
+    if override is not None:
+        lines.extend((*override_lines(override), ""))
     lines.extend(review_lines(reviews, limits))
     lines.append(f"{CAUTION} {REVIEW_CAUTION}")
     return for_terminal("\n".join(lines)) + "\n"
