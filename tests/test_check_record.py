@@ -315,6 +315,17 @@ final_elements: {TV-2001: {unit: "20", kind: control valve, opens_on: {hold: val
     assert any("vendor" in line for line in view.holds)
 
 
+def test_a_record_names_the_terminals_where_the_register_has_them() -> None:
+    pages = {page.name: page.view["record"] for page in example_pages("tarn-hollow")}
+    assert pages["PIC-2021"].facts[-1] == (
+        ("Terminals of PT-2021", "JB-2002: 1, 2; MC-20: TB2-1, TB2-2"),
+        ("Terminals of PV-2021A", "JB-2003: 5, 6; MC-20: TB3-5, TB3-6"),
+        ("Terminals of PV-2021B", "JB-2003: 7, 8; MC-20: TB3-7, TB3-8"),
+    )
+    for page in example_pages("tennessee-eastman"):
+        assert "Terminals" not in text_of(page), page.name
+
+
 # ---------------------------------------------------------------- pages
 
 

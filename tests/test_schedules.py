@@ -474,6 +474,32 @@ def test_forty_effects_fit_their_sheet(tmp_path: Path) -> None:
     on_paper(page, tmp_path)
 
 
+@needs_poppler
+def test_heads_of_forty_effects_stand_on_every_page_of_sixty_causes(tmp_path: Path) -> None:
+    valves = [f"XV-10{number:02d}" for number in range(40)]
+    causes = [[f"PT-{20 + number}{channel:02d}" for channel in range(3)] for number in range(20)]
+    elements = "\n".join(f'  {tag}: {{unit: "10", kind: on-off valve, service: Inlet of vessel}}' for tag in valves)
+    sensors = "\n".join(
+        f'  {tag}: {{unit: "10", service: Pressure, variable: pressure, range: 0 to 10 barg}}'
+        for three in causes for tag in three
+    )  # fmt: skip
+    interlocks = "\n".join(
+        f'  IS-30{index:02d}: {{unit: "10", layer: safety, voting: 2oo3, service: Overpressure, '
+        f'initiators: {{{", ".join(f"{tag}: {{trips: above 8 barg}}" for tag in three)}}}, '
+        f'actions: {{{", ".join(f"{tag}: closed" for tag in valves[index % 5 :: 5])}}}}}'
+        for index, three in enumerate(causes)
+    )
+    basis = written(
+        tmp_path, f"final_elements:\n{elements}\ninstruments:\n{sensors}\ninterlocks:\n{interlocks}\n"
+    )
+    page = next(cause_and_effect_charts(basis))
+    sheets = words_of(to_pdf(html(page)), tmp_path)
+    with_causes = [{word[4] for word in words} for _, _, words in sheets if any(w[4] == "2oo3" for w in words)]
+    assert len(with_causes) > 1
+    assert all(set(valves) <= words for words in with_causes)
+    assert all(sum(tag in words for words in with_causes) == 1 for three in causes for tag in three)
+
+
 @pytest.mark.parametrize("kind", KINDS)
 def test_values_lead_to_the_loop_sheet_on_the_screen(kind: str) -> None:
     basis = example("tarn-hollow")

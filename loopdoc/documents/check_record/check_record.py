@@ -31,6 +31,7 @@ from loopdoc.documents.loop_sheet.panels import cell, joined
 from loopdoc.documents.narrative.open_points import accepted_in_a_sentence
 from loopdoc.documents.page_fit import room
 from loopdoc.documents.values import DASH
+from loopdoc.documents.wiring_words import terminal_lines
 from loopdoc.documents.wording import counted, listed, sentence
 from loopdoc.engineering.failure import FailureAnalysis
 from loopdoc.engineering.loop_check import (
@@ -187,9 +188,11 @@ def _table_height(table: CheckTable, sizes: Rows) -> float:
 
 def _facts(plant: Plant, loop: Loop, limits: Limits) -> tuple[tuple[tuple[str, str], ...], ...]:
     measurement = known(loop.measurement)
+    terminals = tuple(_terminals(plant, loop))
+    wires = (terminals,) if terminals else ()
     first = (("Drawing", cell(loop.drawing)), ("Hazard direction", cell(loop.hazard)))
     if measurement is None:
-        return ((*first, ("Measurement", cell(loop.measurement))),)
+        return ((*first, ("Measurement", cell(loop.measurement))), *wires)
     sensors = [cell(part) for part in (measurement.element, measurement.sensor) if part is not None]
     signals = [cell(part) for part in (measurement.signal, measurement.channel) if part is not None]
     measured = cell(measurement.range)
@@ -203,7 +206,19 @@ def _facts(plant: Plant, loop: Loop, limits: Limits) -> tuple[tuple[tuple[str, s
             ("Filter", cell(measurement.filter)),
             ("Tolerance of a reading", _tolerance(measurement, limits)),
         ),
+        *wires,
     )
+
+
+def _terminals(plant: Plant, loop: Loop) -> Iterator[tuple[str, str]]:
+    """Where a calibrator is connected: the terminals of the transmitter and of each final element."""
+    measurement = known(loop.measurement)
+    wirings = [(known(measurement.transmitter) or loop.tag, measurement.wiring)] if measurement else []
+    wirings += [(element.tag, element.wiring) for element in elements_of(plant, loop)]
+    for tag, wiring in wirings:
+        lines = terminal_lines(wiring, cell)
+        if lines:
+            yield f"Terminals of {tag}", joined(lines, "; ")
 
 
 def _tolerance(measurement: Measurement, limits: Limits) -> str:
