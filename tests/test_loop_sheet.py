@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import io
 import re
+from dataclasses import replace
 from functools import cache
 from html import unescape
 from pathlib import Path
@@ -16,6 +17,7 @@ from pypdf import PdfReader
 
 from loopdoc.documents import pdf
 from loopdoc.documents.basis import Basis, Page
+from loopdoc.documents.handover.house import house_of
 from loopdoc.documents.loop_sheet.expected_signals import ExpectedRow, expected_commands, expected_readings
 from loopdoc.documents.loop_sheet.loop_sheet import SheetView, loop_sheets, sheet_height
 from loopdoc.documents.page_fit import DENSITIES, room, title_block_height
@@ -143,6 +145,27 @@ def test_a_full_sheet_is_one_page_with_nothing_on_top_of_anything(name: str) -> 
 
 def test_every_sheet_of_the_examples_fits_its_page() -> None:
     assert [page.name for name in NAMES for page in pages_of(name) if fill(page) > 1.0] == []
+
+
+LOGO = b'<svg xmlns="http://www.w3.org/2000/svg" viewBox="0 0 320 50"><rect width="320" height="50"/></svg>'
+"""As wide and as high as a title block takes."""
+
+
+@pytest.mark.parametrize(
+    "texts",
+    [b"", b"owner: Example Works, Solvents and Intermediates\ncautions: Site procedure SP-12 applies to all work.\n"],
+)
+def test_a_logo_and_words_of_the_site_push_no_sheet_to_a_second_page(texts: bytes) -> None:
+    """The four fullest sheets, set with them: the title block is as high as reckoned and the sheet gives way."""
+    house = house_of({"logo.svg": LOGO, **({"texts.yaml": texts} if texts else {})})
+    basis = replace(basis_of(EXAMPLES / "tarn-hollow"), house=house)
+    pages = sorted(loop_sheets(basis), key=fill, reverse=True)
+    assert fill(pages[0]) <= 1.0
+    for page in pages[:4]:
+        found = SetPage(page)
+        assert 'class="logo"' in found.source
+        assert found.count == 1, page.name
+        assert title_block_height(page.document) == pytest.approx(found.title_block, abs=1.0), page.name
 
 
 @pytest.mark.parametrize(("name", "tag"), [("tarn-hollow", "FIC-1011"), ("tennessee-eastman", "PIC-3013")])
