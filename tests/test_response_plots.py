@@ -17,7 +17,9 @@ from numpy.typing import NDArray
 from loopdoc.cli import run
 from loopdoc.documents.language import GERMAN
 from loopdoc.documents.magnitudes import duration
-from loopdoc.documents.plots import POINTS_DRAWN, Curve, Drawing, Mark, Panel, save, to_svg
+from loopdoc.documents.plot_layout import POINTS_DRAWN
+from loopdoc.documents.plot_output import save, to_svg
+from loopdoc.documents.plots import Curve, Drawing, Mark, Panel
 from loopdoc.documents.responses.frequency_plot import frequency_caption, frequency_drawing
 from loopdoc.documents.responses.response_figure import drawn_until_s, figure
 from loopdoc.documents.responses.responses import at_limit_note, held_note, margin_rows, movement_rows
@@ -243,7 +245,7 @@ def test_no_peak_is_left_out_of_a_figure() -> None:
     y = np.zeros(8001)
     y[17], y[5003] = 43.0, -7.0
     svg = to_svg(Drawing("kick", ((Panel("", "time, s", "y", (Curve("y", "solid", np.arange(8001.0), y),)),),)))
-    path = max(re.findall(r'd="(M[^"]*)"', svg), key=len)
+    (path,) = re.findall(r'd="(M[^"]*)" stroke="#000000" stroke-width="1.1"', svg)
     points = np.array([[float(x) for x in pair] for pair in re.findall(r"(-?[\d.]+) (-?[\d.]+)", path)])
     assert len(points) < 2 * POINTS_DRAWN
     across = (points[:, 0] - points[0, 0]) / (points[-1, 0] - points[0, 0]) * 8000

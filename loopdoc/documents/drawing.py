@@ -109,14 +109,14 @@ def tag_lines(tag: str, pattern: TagGrammar | None) -> tuple[str, str]:
 # ---------------------------------------------------------------- the sheet
 
 
-def _n(value: float) -> str:
-    """A coordinate without binary noise."""
+def pt(value: float) -> str:
+    """A length in points as text, without binary noise."""
     shortest = f"{value:.2f}".rstrip("0").rstrip(".")
     return "0" if shortest in ("-0", "") else shortest
 
 
 def _path(points: Sequence[tuple[float, float]], *, closed: bool = False) -> str:
-    steps = " ".join(f"{'M' if index == 0 else 'L'}{_n(x)} {_n(y)}" for index, (x, y) in enumerate(points))
+    steps = " ".join(f"{'M' if index == 0 else 'L'}{pt(x)} {pt(y)}" for index, (x, y) in enumerate(points))
     return f"{steps}Z" if closed else steps
 
 
@@ -126,14 +126,14 @@ def _box(left: float, top: float, right: float, bottom: float) -> str:
 
 def _attributes(role: str, *, width: float, fill: str = "", dash: str = "") -> str:
     found = f' class="{role}"'
-    found += f' stroke-width="{_n(width)}"' if width != 0.7 else ""
+    found += f' stroke-width="{pt(width)}"' if width != 0.7 else ""
     found += f' fill="{fill}"' if fill else ""
     return found + (f' stroke-dasharray="{dash}"' if dash else "")
 
 
 def _circle(x: float, y: float, radius: float) -> str:
-    r, across = _n(radius), _n(2 * radius)
-    return f"M{_n(x - radius)} {_n(y)}a{r} {r} 0 1 0 {across} 0a{r} {r} 0 1 0 -{across} 0Z"
+    r, across = pt(radius), pt(2 * radius)
+    return f"M{pt(x - radius)} {pt(y)}a{r} {r} 0 1 0 {across} 0a{r} {r} 0 1 0 -{across} 0Z"
 
 
 @dataclass(slots=True)
@@ -159,8 +159,8 @@ class Sheet:
         """One line; ``y`` is its baseline."""
         where = "" if anchor == "start" else f' text-anchor="{anchor}"'
         weight = ' font-weight="700"' if bold else ""
-        kept = "" if size == SIZE else f' font-size="{_n(size)}"'
-        self._letters.append(f'<text x="{_n(x)}" y="{_n(y)}"{where}{weight}{kept}>{escape(content)}</text>')
+        kept = "" if size == SIZE else f' font-size="{pt(size)}"'
+        self._letters.append(f'<text x="{pt(x)}" y="{pt(y)}"{where}{weight}{kept}>{escape(content)}</text>')
 
     def note(
         self, x: float, y: float, lines: Iterable[str], *, width: float, anchor: str = "start", bold_first: bool = False
@@ -351,7 +351,7 @@ class Sheet:
         if kind == "on-off valve":
             self.symbol(_box(x - 9, y - 5, x + 9, y + 5) + _path(((x - 9, y), (x + 9, y))))
         else:
-            self.symbol(f"M{_n(x - 9)} {_n(y + 5)}a9 9 0 0 1 18 0Z")
+            self.symbol(f"M{pt(x - 9)} {pt(y + 5)}a9 9 0 0 1 18 0Z")
         self._stem(x, y, fails)
         self.process((x - 20, y + 20), (x - 9, y + 20))
         self.process((x + 9, y + 20), (x + 20, y + 20))
@@ -400,9 +400,9 @@ class Sheet:
         paths += self._symbols
         paths += [f'<path{key} d="{"".join(found)}"/>' for key, found in self._details.items()]
         return (
-            f'<svg xmlns="http://www.w3.org/2000/svg" role="img" width="{_n(self.width)}pt" height="{_n(height)}pt"'
-            f' viewBox="0 0 {_n(self.width)} {_n(height)}" fill="none" stroke="{_INK}" stroke-width="0.7">'
+            f'<svg xmlns="http://www.w3.org/2000/svg" role="img" width="{pt(self.width)}pt" height="{pt(height)}pt"'
+            f' viewBox="0 0 {pt(self.width)} {pt(height)}" fill="none" stroke="{_INK}" stroke-width="0.7">'
             f"<title>{escape(title)}</title>{''.join(paths)}"
-            f'<g fill="{_INK}" stroke="none" font-family="loopdoc narrow" font-size="{_n(SIZE)}">'
+            f'<g fill="{_INK}" stroke="none" font-family="loopdoc narrow" font-size="{pt(SIZE)}">'
             f"{''.join(self._letters)}</g></svg>"
         )

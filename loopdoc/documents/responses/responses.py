@@ -12,7 +12,7 @@ from loopdoc.documents.language import ENGLISH, Language
 from loopdoc.documents.magnitudes import difference_unit, duration, number, with_unit
 from loopdoc.documents.narrative.narrative import Supplement
 from loopdoc.documents.page_fit import foot
-from loopdoc.documents.plots import to_svg
+from loopdoc.documents.plot_output import to_svg
 from loopdoc.documents.responses.frequency_plot import frequency_caption, frequency_drawing
 from loopdoc.documents.responses.response_figure import caption, figure, whole_caption
 from loopdoc.documents.responses.split_range_story import split_caption, split_figure, split_section, split_told
