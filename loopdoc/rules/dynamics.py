@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterator
+from dataclasses import replace
 from typing import TYPE_CHECKING
 
 from loopdoc.engineering.dynamics import ChainDynamics, Dynamics
@@ -17,7 +18,7 @@ from loopdoc.register.place import Place
 from loopdoc.rules.finding import Level
 from loopdoc.rules.policy import Limits
 from loopdoc.rules.rule import Draft, draft, need, not_checked, only_if, rule
-from loopdoc.rules.values import above, below, duration, time_s
+from loopdoc.rules.values import above, below, duration, duration_beside, time_s
 
 if TYPE_CHECKING:
     from loopdoc.engineering.frequency import Margins
@@ -34,8 +35,8 @@ def loop_unstable(controlled: ControlledLoop, dynamics: Dynamics) -> Iterator[Dr
         Put in automatic it swings with growing amplitude, or runs to a limit of its output, until an
         operator takes it out or an interlock trips.
     Breaks:
-        A gain above the one at which the loop oscillates steadily; a level loop with so short a reset that
-        its two integrations outrun its dead time.
+        A gain above the one at which the loop oscillates steadily; a level loop whose reset is shorter than
+        its lags and dead time together, which no gain makes stable.
     Holds:
         No mode of the closed loop grows, the loops below closed as they are tuned; dead time counts in full
         and the execution interval as half of itself. A loop too fast for that is judged as it is
@@ -76,7 +77,9 @@ def margin_low(controlled: ControlledLoop, dynamics: Dynamics, limits: Limits) -
         A model is right to a third at best, and a valve's gain doubles between its ends. A loop without
         margin answers every upset with many swings, and one day it does not come to rest.
     Breaks:
-        A gain of four fifths of the one at which the loop oscillates steadily; a maximum sensitivity of 3.
+        A gain of four fifths of the one at which the loop oscillates steadily; a maximum sensitivity of 3. A
+        level loop with so short a reset for so low a gain that it swings slowly and long: there the reset is
+        to be lengthened, and a lower gain would make it worse.
     Holds:
         Gain margin, phase margin and maximum sensitivity Ms are all within the limits of the policy, the
         loops below closed; of several branches of a split range the worst is judged.
@@ -94,11 +97,25 @@ def margin_low(controlled: ControlledLoop, dynamics: Dynamics, limits: Limits) -
         yield draft(
             controlled.tag,
             f"its margins are low{_through(controlled, worst)}: {'; '.join(faults)}",
-            remedy="lower the gain, or lengthen the reset time",
+            remedy=_more_margin(worst),
             at=_gain_place(controlled.controller),
         )
     elif worst.margins[-1].not_quoted:
         not_checked(f"the gain margin would need the sampled loop: {worst.margins[-1].not_quoted}")
+
+
+def _more_margin(chain: ChainDynamics) -> str:
+    """What gives a loop more margin: with integral action on an integrating process a lower gain may take from it."""
+    from loopdoc.engineering.sampled import quoted_margins
+
+    *below_it, own = chain.chain.stages
+    if math.isinf(own.controller.reset_s):
+        return "lower the gain"
+    halved = replace(own, controller=replace(own.controller, gain=own.controller.gain / 2))
+    lower = quoted_margins([[*below_it, halved]])[0][-1]
+    if lower.max_sensitivity < chain.margins[-1].max_sensitivity:
+        return "lower the gain, or lengthen the reset time"
+    return "lengthen the reset time; at half the gain the margins would be lower still"
 
 
 def _margin_faults(margins: Margins, limits: Limits) -> Iterator[str]:
@@ -137,12 +154,15 @@ def interval_too_slow(controlled: ControlledLoop, dynamics: Dynamics, limits: Li
     crossover = _fastest_crossover(controlled, dynamics)
     turned = interval_s * crossover
     if above(turned, limits.interval_crossover):
+        # As many digits as it takes to tell it from the limit.
+        shown = (f"{turned:.{digits}f}" for digits in range(2, 12))
+        turned_shown = next(one for one in shown if float(one) > limits.interval_crossover)
+        most = duration_beside(limits.interval_crossover / crossover, interval)
         yield draft(
             controlled.tag,
-            f"it is executed every {interval}, which is {turned:.2f} rad at its crossover of {crossover:.2g} rad/s and "
-            f"costs {math.degrees(turned / 2):.0f} deg of phase; "
-            f"the limit is {limits.interval_crossover:g} rad",
-            remedy=f"execute it every {duration(limits.interval_crossover / crossover)} or less, or tune it slower",
+            f"it is executed every {interval}, which is {turned_shown} rad at its crossover of {crossover:.2g} rad/s "
+            f"and costs {math.degrees(turned / 2):.0f} deg of phase; the limit is {limits.interval_crossover:g} rad",
+            remedy=f"execute it every {most} or less, or tune it slower",
             at=controlled.controller.origin.place("interval"),
             related=((_gain_place(controlled.controller), "the gain"),),
         )
