@@ -56,7 +56,7 @@ def test_german_has_every_member_with_the_same_parameters() -> None:
         assert inspect.signature(found) == inspect.signature(english[name]), name
 
 
-SHARED = {"value", "band", "sensor", "with_sensor", "in_brackets", "range_of"}
+SHARED = {"value", "band", "sensor", "with_sensor", "in_brackets", "range_of", "text", "entry", "calculated", "message"}
 """Members that join what other members say, alike in every language."""
 
 

@@ -325,7 +325,7 @@ def test_a_scheme_that_another_unit_leads_is_told_there() -> None:
 
 def test_what_is_calculated_elsewhere_has_its_place(small: Basis) -> None:
     figure = Figure(Markup('<svg class="made"><title>made</title></svg>'), "Setpoint step")
-    page = next(narratives(small, {"TIC-2014": Supplement("The cascade halves the deviation.", (figure,))}))
+    page = next(narratives(small, {"TIC-2014": Supplement(lambda language: "The cascade halves the deviation.", (figure,))}))
     told = section(page, "Column temperature")
     assert "The cascade halves the deviation." in told
     html = html_of(page, "")

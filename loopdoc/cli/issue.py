@@ -47,6 +47,12 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
         help="language of the narratives and loop sheets; other kinds are in English (default: that of the register)",
     )
     parser.add_argument(
+        "--sources",
+        action="store_true",
+        help="end each narrative with an appendix: every value it states, with its line of the register or its "
+        "calculation",
+    )
+    parser.add_argument(
         "--jobs",
         type=int,
         default=os.cpu_count() or 1,
@@ -80,6 +86,8 @@ def run(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
         return EXIT_UNREADABLE
     if arguments.language:
         basis = basis.in_language(LANGUAGES[arguments.language])
+    if arguments.sources:
+        basis = basis.with_appendix_of_sources()
     status = EXIT_CLEAN
     progress = progress_on(stderr)
 

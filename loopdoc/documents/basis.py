@@ -8,7 +8,8 @@ from typing import Any
 
 from loopdoc.documents.handover.house import NO_HOUSE, House
 from loopdoc.documents.language import ENGLISH, LANGUAGES, Language
-from loopdoc.documents.titleblock import Document, document
+from loopdoc.documents.titleblock import FINGERPRINT_DIGITS, Document, document, fingerprint
+from loopdoc.documents.tracing import traced
 from loopdoc.engineering.comparison import Comparison, NotSimulated, compare
 from loopdoc.engineering.dynamics import ChainDynamics, Dynamics
 from loopdoc.engineering.pairing import Plant
@@ -35,6 +36,8 @@ class Basis:
     """Of those documents that have a catalogue in it; the others are in English."""
     house: House = NO_HOUSE
     """What the site puts in the place of ours."""
+    with_sources: bool = False
+    """Whether a narrative ends with an appendix that tells where each of its values is written."""
     against: Basis | None = None
     """The register at the earlier revision against which the documents are issued."""
     times: TimeToAct = field(init=False)
@@ -53,6 +56,15 @@ class Basis:
             return self
         before = self.against.in_language(language) if self.against else None
         return replace(self, language=language, against=before, _pages={})
+
+    def with_appendix_of_sources(self) -> Basis:
+        """The same, its narratives with the appendix of sources."""
+        return replace(self, with_sources=True, _pages={})
+
+    @property
+    def fingerprint(self) -> str:
+        """First digits of the register's fingerprint, as the title block prints them."""
+        return fingerprint(self.sources)[:FINGERPRINT_DIGITS]
 
     def comparison(self, chain: ChainDynamics) -> Comparison | NotSimulated:
         """Time responses of a chain, or why there is none, simulated once for all documents."""
@@ -133,7 +145,7 @@ def basis_of(
 
     Its documents are in the language of the register.
     """
-    plant = Plant(loaded.register)
+    plant = Plant(traced(loaded.register))
     dynamics = Dynamics(plant)
     result = check(plant, loaded.faults, dynamics=dynamics)
     found = Basis(plant, result, loaded.sources, dynamics, records or {}, house=house, against=against)

@@ -18,6 +18,9 @@ from loopdoc.rules.finding import CheckResult, Level
 HOLDS_PERMITTED = ("issued for review", "issued for information")
 """Statuses at which a document may still carry holds."""
 
+FINGERPRINT_DIGITS = 12
+"""Digits of the register's fingerprint that a document prints."""
+
 CAUTIONS = ENGLISH.cautions()
 """What every document says of itself, in English."""
 
@@ -125,7 +128,7 @@ def document(
             _row(entry, language) for entry in ((revision,) if revision else ()) + tuple(reversed(register.history))
         ),
         dated=_iso_date(known(revision.date) if revision else None),
-        fingerprint=fingerprint(sources)[:12],
+        fingerprint=fingerprint(sources)[:FINGERPRINT_DIGITS],
         check_state=check_state(plant, result, language),
         draft=draft_reason(plant, result, language),
         cautions=language.cautions(),

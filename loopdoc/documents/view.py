@@ -3,9 +3,10 @@
 from __future__ import annotations
 
 import re
-from collections.abc import Callable, Iterable, Sequence
+from collections.abc import Callable, Iterable, Iterator, Sequence
 from dataclasses import dataclass
 
+from loopdoc.documents.tracing import Source
 from loopdoc.documents.values import HOLD
 from loopdoc.documents.wording import Prose
 
@@ -65,6 +66,24 @@ class Section:
     sections: tuple[Section, ...] = ()
     tags: Prose = ()
     """The tags that it is about, under its heading."""
+
+
+def sources_in(sections: Iterable[Section]) -> Iterator[Source]:
+    """The sources of the values that sections state, in order."""
+    for section in sections:
+        for prose in (section.tags, *(prose for block in section.blocks for prose in _proses(block))):
+            yield from (run.source for run in prose if run.source is not None)
+        yield from sources_in(section.sections)
+
+
+def _proses(block: Block) -> Iterator[Prose]:
+    match block:
+        case Paragraph():
+            yield block.prose
+        case Steps():
+            yield from block.items
+        case Table():
+            yield from (cell for row in block.rows for cell in row)
 
 
 def table(

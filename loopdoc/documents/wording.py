@@ -7,9 +7,10 @@ from collections.abc import Callable, Iterable, Sequence
 from dataclasses import dataclass, replace
 from functools import lru_cache
 
+from loopdoc.documents.tracing import CLOSES, OPENS, PARTS, Ledger, Source, unmarked
 from loopdoc.documents.values import HOLD, shown
 from loopdoc.register.model import Hold, Register, known
-from loopdoc.register.pointer import POINTER, Unresolved, pointed
+from loopdoc.register.pointer import POINTER, Unresolved, origin_of, pointed
 from loopdoc.register.quantity import Quantity, QuantityError, Range, parse_gain, parse_quantity, parse_range
 from loopdoc.register.units import UNITS
 
@@ -152,7 +153,8 @@ def as_written(written: str | float) -> str:
 
 
 @lru_cache(maxsize=1)
-def _quantity_in_text() -> re.Pattern[str]:
+def quantity_in_text() -> re.Pattern[str]:
+    """A value with its unit as the register's prose writes it."""
     symbols = "|".join(re.escape(symbol) for symbol in sorted(UNITS, key=len, reverse=True) if symbol != "fraction")
     return re.compile(rf"(?<![\w./-])([-+]?\d+(?:\.\d+)?) ({symbols})(?![\w/(])")
 
@@ -163,7 +165,7 @@ def with_printed_units(text: str) -> str:
     def printed(found: re.Match[str]) -> str:
         return f"{found[1].replace('-', '−')}{NO_BREAK}{UNITS[found[2]].display}"
 
-    return _quantity_in_text().sub(printed, text)
+    return quantity_in_text().sub(printed, text)
 
 
 # ---------------------------------------------------------------- runs
@@ -184,6 +186,10 @@ class Run:
     """What stands against it in front, such as a bracket: no line is broken there."""
     after: str = ""
     """What stands against it behind, such as a comma."""
+    source: Source | None = None
+    """Where a value comes from; None for what is no value, or where the document does not trace it."""
+    note: str = ""
+    """What a pointer resting on it tells, for the screen only."""
 
 
 Prose = tuple[Run, ...]
@@ -199,8 +205,9 @@ class Target:
 
 
 _PIECE = re.compile(
-    rf"`(?P<code>[^`]+)`|(?P<value>[^\s(\[{NO_BREAK}]*(?:{NO_BREAK}[^\s{NO_BREAK}]+)+)"
-    rf"|(?P<word>[^\W_](?:[\w./-]*\w)?)|(?P<other>\s+|[^\w\s`.+−-]+|.)",
+    rf"{OPENS}(?P<source>\d+){PARTS}(?P<printed>[^{CLOSES}]*){CLOSES}|`(?P<code>[^`]+)`"
+    rf"|(?P<value>[^\s(\[{NO_BREAK}{OPENS}]*(?:{NO_BREAK}[^\s{NO_BREAK}{OPENS}]+)+)"
+    rf"|(?P<word>[^\W_](?:[\w./-]*\w)?)|(?P<other>\s+|[^\w\s`.+−{OPENS}-]+|.)",
     re.DOTALL,
 )
 
@@ -214,18 +221,27 @@ class Setter:
         tags: Iterable[str],
         target: Callable[[str], Target],
         written: Callable[[str | float], str] | None = None,
+        *,
+        ledger: Ledger | None = None,
+        sourced: Callable[[Source], tuple[str, str]] = lambda source: ("", ""),
     ) -> None:
         self._register = register
         self._tags = frozenset(tags)
         self._target = target
         self._written = written or as_written
         """How values that the register's prose points at are printed: in the language of that prose."""
+        self._ledger = ledger
+        """The sources behind the marks of a catalogue that traces."""
+        self._sourced = sourced
+        """Address and note of a source."""
 
     def prose(self, text: str) -> Prose:
-        """Set one text; a pointer that leads nowhere shows as it was written."""
+        """Set one text; a pointer that leads nowhere, or that is quoted as code, shows as it was written."""
         runs: list[Run] = []
         at = 0
         for found in POINTER.finditer(text):
+            if text.count("`", 0, found.start()) % 2:
+                continue
             self._plain(text[at : found.start()], runs)
             self._pointed(found[1], runs)
             at = found.end()
@@ -240,13 +256,23 @@ class Setter:
             runs.append(Run(HOLD, "hold"))
         elif isinstance(found, str) and " " in self._written(found):
             self._plain(found, runs)  # a text, not a value: it may be broken like any other
+        elif self._ledger and (origin := origin_of(self._register, pointer)):
+            runs.append(self._from(self._ledger.source(self._written(found), origin)))
         else:
             runs.append(Run(self._written(found), "value"))
+
+    def _from(self, source: Source) -> Run:
+        """A value that knows its source; only one of several words may be broken, if it has plain spaces."""
+        sheet, note = self._sourced(source)
+        kind = "value" if NO_BREAK in source.text else "word"
+        return Run(source.text, kind, sheet, source=source, note=note)
 
     def _plain(self, text: str, runs: list[Run]) -> None:
         for piece in _PIECE.finditer(with_printed_units(text)):
             written = piece.group()
-            if piece["code"]:
+            if piece["source"] and self._ledger:
+                runs.append(self._from(self._ledger[int(piece["source"])].printed(piece["printed"])))
+            elif piece["code"]:
                 runs.append(Run(piece["code"], "code"))
             elif piece["value"]:
                 whole = _without_punctuation(written)
@@ -282,13 +308,13 @@ def _merged(runs: Sequence[Run]) -> Prose:
         if index and merged[index - 1].kind == "text":
             text = merged[index - 1].text
             at = len(text)
-            while at and not text[at - 1].isspace():
+            while at and (text[at - 1] == NO_BREAK or not text[at - 1].isspace()):
                 at -= 1
             merged[index - 1], before = Run(text[:at]), text[at:]
         if index + 1 < len(merged) and merged[index + 1].kind == "text":
             text = merged[index + 1].text
             at = 0
-            while at < len(text) and not text[at].isspace():
+            while at < len(text) and (text[at] == NO_BREAK or not text[at].isspace()):
                 at += 1
             after, merged[index + 1] = text[:at], Run(text[at:])
         merged[index] = replace(run, before=before, after=after)
@@ -301,10 +327,9 @@ def plain(prose: Prose) -> str:
 
 
 def grouped(pairs: Iterable[tuple[str, str]]) -> dict[str, tuple[str, ...]]:
-    """What stands against each key, in order of first appearance, nothing twice."""
-    found: dict[str, list[str]] = {}
+    """What stands against each key, in order of first appearance, nothing twice; as it reads, without marks."""
+    found: dict[str, tuple[str, dict[str, str]]] = {}
     for key, item in pairs:
-        entry = found.setdefault(key, [])
-        if item not in entry:
-            entry.append(item)
-    return {key: tuple(items) for key, items in found.items()}
+        _, items = found.setdefault(unmarked(key), (key, {}))
+        items.setdefault(unmarked(item), item)
+    return {key: tuple(items.values()) for key, items in found.values()}

@@ -53,6 +53,16 @@ def pointed(register: Register, pointer: str) -> str | float | bool | Hold | Unr
     return Unresolved(f"`{below}` of {tag} is not a single value")
 
 
+def origin_of(register: Register, pointer: str) -> Origin | None:
+    """Where the value is written at which a pointer of the prose points; None for a tag that is not defined."""
+    tag, _, below = pointer.partition("/")
+    origin = _origin(register, tag)
+    if origin is None:
+        return None
+    tokens = (token.replace("~1", "/").replace("~0", "~") for token in below.split("/"))
+    return Origin(origin.source, (*origin.path, *(int(token) if token.isdecimal() else token for token in tokens)))
+
+
 def _origin(register: Register, tag: str) -> Origin | None:
     """Where the part under a tag is written; for a transmitter, its measurement."""
     sections: tuple[Mapping[str, Part], ...] = (

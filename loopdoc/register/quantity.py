@@ -5,8 +5,12 @@ import re
 from dataclasses import dataclass, field
 from decimal import ROUND_HALF_UP, Context, Decimal
 from functools import lru_cache
+from typing import TYPE_CHECKING
 
 from loopdoc.register.units import UNITS, Unit, convert, convert_difference, rate_parts, unit
+
+if TYPE_CHECKING:
+    from loopdoc.register.model import Origin
 
 
 class QuantityError(ValueError):
@@ -31,6 +35,8 @@ class Quantity:
     """The unit as written."""
     written: str = field(default="", compare=False)
     """The digits as the engineer wrote them; empty for a calculated value."""
+    origin: "Origin | None" = field(default=None, compare=False, repr=False)
+    """Where it is written, where a document traces its values; None elsewhere and for a calculated value."""
 
     def to(self, symbol: str) -> float:
         """The reading (a point on the scale) in another unit of the same kind."""
@@ -58,6 +64,8 @@ class Range:
     """The digits of the low end as written; empty when calculated."""
     written_high: str = field(default="", compare=False)
     """The digits of the high end as written; empty when calculated."""
+    origin: "Origin | None" = field(default=None, compare=False, repr=False)
+    """Where it is written, as for a quantity."""
 
     @property
     def span(self) -> float:
@@ -95,6 +103,8 @@ class Gain:
     """The unit of the change of what is moved."""
     written: str = field(default="", compare=False)
     """The digits as the engineer wrote them; empty for a calculated value."""
+    origin: "Origin | None" = field(default=None, compare=False, repr=False)
+    """Where it is written, as for a quantity."""
 
     def integrates(self, measurement: str) -> bool:
         """Whether this is a rate of change of a measurement in the given unit: `t/h per %` of one in `kg`."""

@@ -25,6 +25,7 @@ from loopdoc.documents.handover.enclosures import (
     REGISTER_FOLDER,
     RESULTS_KIND,
     RESULTS_NAME,
+    SOURCES,
     STATEMENT_NAME,
     Statement,
     house_fingerprint,
@@ -123,7 +124,7 @@ class Attestation:
     def __init__(self, register: Basis | None = None) -> None:
         self._register = register
         self._current: dict[tuple[str, str], dict[tuple[str, str], Statement]] = {}
-        self._issued_from: dict[tuple[str, str, str, bytes, str], Basis | Unreadable] = {}
+        self._issued_from: dict[tuple[str, str, str, bytes, str, str], Basis | Unreadable] = {}
 
     def attest(self, content: bytes) -> Attested | NotIssued:
         """Find out about one file.
@@ -181,7 +182,8 @@ class Attestation:
 
     def _basis_of(self, enclosed: Enclosed) -> Basis | Unreadable:
         sources, against, house = map(fingerprint, (enclosed.sources, enclosed.against, enclosed.house))
-        key = (sources, against, house, enclosed.results, enclosed.statement.language)
+        told = enclosed.statement
+        key = (sources, against, house, enclosed.results, told.language, told.appendix)
         if key not in self._issued_from:
             self._issued_from[key] = self._read_anew(enclosed)
         return self._issued_from[key]
@@ -201,6 +203,8 @@ class Attestation:
         if isinstance(now, Unreadable):
             return now
         issued = basis_of(now, records, against=before, house=house)
+        if told.appendix == SOURCES:
+            issued = issued.with_appendix_of_sources()
         return issued.in_language(LANGUAGES.get(told.language, ENGLISH))
 
     def _still_current(self, enclosed: Enclosed, content: bytes) -> tuple[Answer, str]:

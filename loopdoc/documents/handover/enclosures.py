@@ -30,6 +30,8 @@ RESULTS_KIND = "check-record"
 """The kind of document that shows results of loop checks."""
 PACKAGE_INDEX_KIND = "document-index"
 """The kind of the index of a package, which no register gives without the files that it lists."""
+SOURCES = "sources"
+"""The appendix that tells where each value is written."""
 RESULTS_NAME = "results.yaml"
 """Results of loop checks that a check record shows; they are no part of the register and its fingerprint."""
 
@@ -64,6 +66,8 @@ class Statement:
     """SHA-256 of the files that the site put in the place of ours; empty where there are none."""
     language: str = "en"
     """Of the document, as an ISO 639-1 code."""
+    appendix: str = ""
+    """`sources` where it ends with the sources of its values; else empty."""
 
 
 def house_fingerprint(house: Mapping[str, bytes]) -> str:
@@ -91,6 +95,7 @@ def statement(kind: str, page: Page, sources: Mapping[str, bytes], against: Mapp
         against=next(iter(against or ()), ""),
         house=house_fingerprint(document.house.files),
         language=document.language,
+        appendix=SOURCES if page.view.get("appendix") else "",
     )
 
 
@@ -135,8 +140,10 @@ def _results(basis: Basis, kind: str, page: Page) -> Iterator[Enclosure]:
 def content(page: Page) -> str:
     """SHA-256 of what a document says.
 
-    A change elsewhere in the register alters the fingerprint and the check, not what this document says.
+    A change elsewhere in the register alters the fingerprint, the check and the numbers of lines, not what this
+    document says.
     """
     document = replace(page.document, fingerprint="", check_state="", generator="", bars="")
-    html = render(page.template, document=document, stylesheet="", **page.view)
+    view = {**page.view, "appendix": None} if page.view.get("appendix") else page.view
+    html = render(page.template, document=document, stylesheet="", **view)
     return hashlib.sha256(html.encode()).hexdigest()

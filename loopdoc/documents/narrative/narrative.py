@@ -3,13 +3,14 @@
 from __future__ import annotations
 
 import re
-from collections.abc import Iterable, Iterator, Mapping, Sequence
+from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from typing import TypeVar
 from urllib.parse import quote
 
 from loopdoc.documents.basis import Basis, Page
-from loopdoc.documents.language import LANGUAGES
+from loopdoc.documents.language import LANGUAGES, Language
+from loopdoc.documents.language.tracing import tracing
 from loopdoc.documents.narrative import (
     failure_story,
     open_points,
@@ -20,16 +21,28 @@ from loopdoc.documents.narrative import (
 )
 from loopdoc.documents.narrative.scheme_story import SchemeStory, headline
 from loopdoc.documents.page_fit import foot
+from loopdoc.documents.tracing import Ledger, Source
 from loopdoc.documents.values import HOLD
-from loopdoc.documents.view import Block, Figure, Paragraph, Section, Steps, table
-from loopdoc.documents.whereabouts import file_name, mover, unit_numbers, unit_of
+from loopdoc.documents.view import Block, Figure, Paragraph, Section, Steps, Table, sources_in, table
+from loopdoc.documents.whereabouts import (
+    REGISTER_TEXT,
+    file_name,
+    line_anchor,
+    mover,
+    natural,
+    register_pages,
+    unit_numbers,
+    unit_of,
+)
 from loopdoc.documents.wording import (
+    NO_BREAK,
     Prose,
     Run,
     Setter,
     Target,
     sentence,
     sentences,
+    upper_first,
 )
 from loopdoc.engineering.failure import FailureAnalysis
 from loopdoc.engineering.pairing import Scheme
@@ -45,6 +58,7 @@ _LONGEST_NAME = 60
 """Characters; what stands before a colon is the name of an upset up to this length."""
 
 INDICATOR_HEAD = ("Tag", "Measures", "Transmitter", "Range", "Normal band", "What it is for")
+SOURCE_HEAD = ("Tag", "What it is", "Value", "Register line or calculation")
 INSTRUMENT_HEAD = ("Tag", "Measures", "Range", "On fault")
 
 
@@ -52,7 +66,7 @@ INSTRUMENT_HEAD = ("Tag", "Measures", "Range", "On fault")
 class Supplement:
     """What is calculated elsewhere and belongs to a scheme's tuning basis."""
 
-    benefit: str = ""
+    benefit: Callable[[Language], str] = lambda language: ""
     """What its cascade gains against a single loop, in sentences; empty where nothing is said."""
     figures: tuple[Figure, ...] = ()
 
@@ -84,6 +98,7 @@ def narratives(basis: Basis, supplements: Mapping[str, Supplement] | None = None
         view = {
             "reading": builder.reading(sections),
             "sections": sections,
+            "appendix": builder.appendix(sections) if basis.with_sources else None,
             "foot": foot(document),
         }
         yield Page(FOLDER, file_name(number), document, "narrative.html", view)
@@ -106,7 +121,8 @@ class _Narrative:
         self._basis = basis
         self._plant = basis.plant
         self._register = basis.plant.register
-        self._language = basis.language
+        self._ledger = Ledger(basis.sources)
+        self._language = tracing(basis.language, self._ledger)
         self._analysis = shared.analysis
         self._points = shared.points
         self._supplements = shared.supplements
@@ -122,7 +138,10 @@ class _Narrative:
         self._told_findings: set[int] = set()
         site = register.site
         written = LANGUAGES.get((site.language if site else None) or "en", self._language).as_written
-        self._setter = Setter(register, shared.tags, self._target, written)
+        self._pages = register_pages(basis.sources)
+        self._setter = Setter(
+            register, shared.tags, self._target, written, ledger=self._ledger, sourced=self._sourced
+        )
 
     def _own(self, parts: Mapping[str, _P]) -> list[_P]:
         return [part for part in parts.values() if unit_of(part) == self._number]
@@ -188,19 +207,20 @@ class _Narrative:
         purpose = known(unit.purpose) if unit else None
         if purpose:
             subject = self._language.unit_subject(self._number)
-            yield self._paragraph(self._language.purpose(subject, purpose))
+            yield self._paragraph(self._language.purpose(subject, self._language.text(purpose)))
         text = self._register.texts.get(self._number)
-        for part in re.split(r"\n+", (known(text.overview) or "") if text else ""):
+        overview = self._language.text(known(text.overview) or "") if text else ""
+        for part in re.split(r"\n+", overview):
             if part.strip():
                 yield self._paragraph(sentence(part))
 
     def _steps(self, steps: Sequence[str]) -> Iterator[Block]:
         if steps:
-            yield Steps(tuple(self._set(sentence(step)) for step in steps))
+            yield Steps(tuple(self._set(sentence(self._language.text(step))) for step in steps))
 
     def _upsets(self, text: UnitText | None) -> Iterator[Block]:
         items = []
-        for upset in text.upsets if text else ():
+        for upset in map(self._language.text, text.upsets if text else ()):
             name, colon, rest = upset.partition(": ")
             if colon and len(name) <= _LONGEST_NAME:
                 items.append((Run(f"{name}.", "strong"), Run(" "), *self._set(sentence(rest))))
@@ -232,9 +252,10 @@ class _Narrative:
         parts: list[Function | FinalElement] = [*scheme.functions, *scheme.final_elements]
         whole = len(loops) == sum(loop.tag in self._plant.controlled for loop in scheme.loops)
         tags += [part.tag for part in parts if whole or known(part.unit) == self._number]
-        drawings = dict.fromkeys(drawing for loop in loops if (drawing := known(loop.drawing)))
+        found = dict.fromkeys(drawing for loop in loops if (drawing := known(loop.drawing)))
+        drawings = [self._language.entry(drawing) for drawing in found]
         told = ", ".join(tags)
-        return f"{told} ({self._language.drawings(list(drawings))})" if drawings else told
+        return f"{told} ({self._language.drawings(drawings)})" if drawings else told
 
     def _scheme_blocks(
         self, scheme: Scheme, loops: Sequence[Loop], story: SchemeStory, ordinal: int
@@ -295,7 +316,7 @@ class _Narrative:
             yield from self._table("process", tuning_story.PROCESS_HEAD, models)
         supplement = self._supplements.get(lead.tag, Supplement())
         remarks = tuning_story.remarks(story.controlled, dynamics, self._language)
-        yield from self._paragraphs("", remarks, supplement.benefit)
+        yield from self._paragraphs("", remarks, supplement.benefit(self._language))
         yield from supplement.figures
 
     def _alarm_table(self, loops: Iterable[Loop]) -> Iterator[Block]:
@@ -336,7 +357,7 @@ class _Narrative:
                 loop.tag, known(loop.service) or "", f"{tag}, {kind}" if kind else tag,
                 self._language.range_of(measurement) if measurement else "",
                 limits or normal,
-                known(loop.purpose) or "",
+                self._language.text(known(loop.purpose) or ""),
             ))  # fmt: skip
         yield from self._table("indicators", INDICATOR_HEAD, rows)
         yield from self._alarm_table(self._indicators)
@@ -418,6 +439,44 @@ class _Narrative:
         yield from self._finding_table([one for one in findings if id(one) not in self._told_findings])
 
     # -- setting text
+
+    def _sourced(self, source: Source) -> tuple[str, str]:
+        """Where a value's link leads on the screen, and what a pointer resting on it tells."""
+        names = [self._what(one) for one in source.ends or (source,)]
+        note = self._basis.language.source_note(
+            self._basis.language.listed(dict.fromkeys(names)), source.tag, self._where(source)
+        )
+        return self._line(source), note
+
+    def _what(self, source: Source) -> str:
+        return source.what or self._basis.language.origin_name(source.path)
+
+    def _where(self, source: Source) -> str:
+        return f"{source.place.file}:{source.place.line}" if source.place else source.calculated
+
+    def _line(self, source: Source) -> str:
+        """Address of the register's line that holds a value; empty for a calculated one."""
+        if source.place is None:
+            return ""
+        page = quote(self._pages[source.place.file])
+        return f"../{REGISTER_TEXT}/{page}.html#{line_anchor(source.place.line)}"
+
+    def appendix(self, sections: Sequence[Section]) -> Section:
+        """Every value that these sections state, with what it is and where it comes from, in order of the tags."""
+        rows: dict[tuple[str, str, str, str], tuple[Prose, ...]] = {}
+        for source in sources_in(sections):
+            for one in source.ends or (source,):
+                what, where = self._what(one), self._where(one)
+                cells = (
+                    self._set(one.tag), (Run(upper_first(what)),), (Run(one.text, "value" if NO_BREAK in one.text else
+                    "word"),), (Run(where, "word", self._line(one)),),
+                )  # fmt: skip
+                rows.setdefault((one.tag, what, one.text, where), cells)
+        ordered = [cells for _, cells in sorted(rows.items(), key=lambda row: natural(row[0][0]))]
+        label = self._basis.language.label
+        head = tuple((f"c-{name.lower().replace(' ', '-')}", label(name)) for name in SOURCE_HEAD)
+        intro = Paragraph(self._set(self._basis.language.sources_intro(self._basis.fingerprint)))
+        return Section("", label("Sources of the values"), "sources", (intro, Table("sources", head, tuple(ordered))))
 
     def _set(self, text: str) -> Prose:
         return self._setter.prose(text)

@@ -6,7 +6,7 @@ from collections.abc import Iterable, Iterator, Sequence
 
 from loopdoc.documents.language import ENGLISH, Language
 from loopdoc.documents.wording import sentence, upper_first
-from loopdoc.register.model import HeldValue
+from loopdoc.register.model import HeldValue, known
 from loopdoc.rules.finding import Finding
 
 HOLD_RULE = "hold-open"
@@ -45,10 +45,10 @@ def deviation_rows(accepted: Iterable[Finding], language: Language) -> Iterator[
         if deviation is not None:
             yield (
                 f"{finding.rule}, {finding.tag}",
-                language.finding_text(finding.message),
-                sentence(language.shown(deviation.reason)),
-                language.shown(deviation.approved_by),
-                language.date(language.shown(deviation.until)),
+                _told(finding, finding.message, language),
+                sentence(language.value(deviation.reason)),
+                language.entry(known(deviation.approved_by) or language.shown(deviation.approved_by)),
+                language.date(until) if (until := known(deviation.until)) else language.shown(deviation.until),
             )
 
 
@@ -61,8 +61,13 @@ def accepted_in_a_sentence(accepted: Sequence[Finding], language: Language) -> s
 def finding_rows(findings: Iterable[Finding], language: Language) -> Iterator[tuple[str, ...]]:
     """Findings as `FINDING_HEAD` names the columns."""
     for finding in findings:
-        message, remedy = language.finding_text(finding.message), language.finding_text(finding.remedy)
+        message, remedy = (_told(finding, text, language) for text in (finding.message, finding.remedy))
         yield language.term("level", str(finding.level)), f"{finding.rule}, {finding.tag}", message, remedy
+
+
+def _told(finding: Finding, text: str, language: Language) -> str:
+    what, by = language.label("value in a finding"), language.by_check(finding.rule)
+    return language.message(language.finding_text(text), finding.tag, what, by)
 
 
 class OpenPoints:

@@ -67,7 +67,7 @@ def initiated_by(plant: Plant, loops: Iterable[Loop], language: Language) -> str
         (trip.interlock.tag, _condition(trip.initiator, language, counted=True))
         for trip in trips if not _alone(trip.interlock)
     )  # fmt: skip
-    voting = {trip.interlock.tag: known(trip.interlock.voting) or "" for trip in trips}
+    voting = {trip.interlock.tag: language.entry(known(trip.interlock.voting) or "") for trip in trips}
     return sentences(
         *(language.trips_alone(tag, conditions) for tag, conditions in alone.items()),
         *(language.counts(tag, voting[tag], conditions) for tag, conditions in voted.items()),
@@ -83,7 +83,7 @@ def _alone(interlock: Interlock) -> bool:
 def acts(interlock: Interlock, only: set[str] | None = None, language: Language = ENGLISH) -> str:
     """What an interlock does: `closes FV-2011, stops PM-2001 and puts FIC-2011 in manual at 0 % output`."""
     positions: list[tuple[str, str]] = []
-    forced: dict[tuple[str, str], list[str]] = {}
+    forced: dict[tuple[str, Quantity | None], list[str]] = {}
     for tag, action in interlock.actions.items():
         if only is not None and tag not in only:
             continue
@@ -91,9 +91,10 @@ def acts(interlock: Interlock, only: set[str] | None = None, language: Language 
         if position:
             positions.append((position, tag))
         elif mode or output:
-            forced.setdefault((mode or "", language.value(output) if output else ""), []).append(tag)
+            forced.setdefault((mode or "", output), []).append(tag)
     return language.acts(
-        list(grouped(positions).items()), [(mode, output, tags) for (mode, output), tags in forced.items()]
+        list(grouped(positions).items()),
+        [(mode, language.value(output) if output else "", tags) for (mode, output), tags in forced.items()],
     )
 
 
@@ -130,8 +131,8 @@ def told(interlock: Interlock, language: Language) -> str:
         known(interlock.layer) or "",
         trips_when(interlock, language),
         acts(interlock, None, language),
-        known(interlock.cause) or "",
-        known(interlock.consequence) or "",
+        language.text(known(interlock.cause) or ""),
+        language.text(known(interlock.consequence) or ""),
     )
 
 
@@ -140,7 +141,8 @@ def reset(interlock: Interlock, language: Language = ENGLISH) -> str:
     written = known(interlock.reset)
     found = []
     if written:
-        found.append(language.reset_is(written, plain=written.split()[0].strip(",") in ("manual", "automatic")))
+        plain = written.split()[0].strip(",") in ("manual", "automatic")
+        found.append(language.reset_is(language.text(written), plain=plain))
     found += time_to_act_story.response_told(interlock, language)
     test = known(interlock.proof_test)
     found.append(language.proof_tested(language.value(test)) if test else "")
@@ -156,7 +158,7 @@ def bypass(written: Bypass | None, language: Language = ENGLISH) -> str:
     if written.never:
         return language.no_bypass()
     who, limit = known(written.approved_by), known(written.limit)
-    return language.bypass(permitted, who or "", language.value(limit) if limit else "")
+    return language.bypass(language.text(permitted), who or "", language.value(limit) if limit else "")
 
 
 def bare(interlock: Interlock) -> bool:

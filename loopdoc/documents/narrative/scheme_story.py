@@ -7,6 +7,7 @@ from collections.abc import Iterator, Sequence
 from loopdoc.documents.language import Language
 from loopdoc.documents.language.facts import Action, Asked, Moved, Reason, Rise, Share
 from loopdoc.documents.naming import Names
+from loopdoc.documents.tracing import end_of
 from loopdoc.documents.wording import grouped, sentences
 from loopdoc.engineering.direction import Undecided, element_sign, path_sign, process_on, process_sign
 from loopdoc.engineering.functions import fed_by, feeds_forward
@@ -142,7 +143,10 @@ class SchemeStory:
 
     def _splits(self, function: Function) -> str:
         elements = self._plant.register.final_elements
-        shares = [Share(tag, elements.get(tag), one.low, one.high) for tag, one in function.outputs.items()]
+        shares = [
+            Share(tag, elements.get(tag), end_of(one, one.low), end_of(one, one.high))
+            for tag, one in function.outputs.items()
+        ]
         return self._language.splits(function.tag, shares, _gap(function))
 
     def _reversals(self, loop: ControlledLoop) -> Iterator[str]:
@@ -257,7 +261,8 @@ def _gap(function: Function) -> tuple[float, float, bool] | None:
     lower, upper = branches
     if not (lower.low > lower.high and upper.high > upper.low) or lower.low == upper.low:
         return None
-    return min(lower.low, upper.low), max(lower.low, upper.low), lower.low < upper.low
+    first, last = sorted((end_of(lower, lower.low), end_of(upper, upper.low)))
+    return first, last, lower.low < upper.low
 
 
 def _inputs(plant: Plant, scheme: Scheme) -> list[Loop]:

@@ -53,7 +53,7 @@ def _output(loop: ControlledLoop, language: Language) -> str:
     end = loop.routes[0].end
     if isinstance(end, FinalElement) and len(loop.routes) == 1:
         return language.output_whole(end)
-    return language.output_all()
+    return language.output_all(limits)
 
 
 def _is(limit: Quantity | Hold | None, end: float) -> bool:

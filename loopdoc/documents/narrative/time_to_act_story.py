@@ -172,6 +172,8 @@ def response_told(interlock: Interlock, language: Language) -> tuple[str, ...]:
     if given and response and seconds(given) > 0.0:
         share = seconds(response) / seconds(given)
         of = f"{language.number(100 * share, 2)}{NO_BREAK}%"
+        what, by = language.label("Share of the process safety time"), language.by_the_two_times()
+        of = language.calculated(of, interlock.tag, what, by)
         return language.acts_within(language.value(response), of, language.value(given), late=share >= 1.0)
     told = [*language.acts_within(language.value(response), "", "", late=False)] if response else []
     told += [language.safety_time(language.value(given))] if given else []
@@ -185,10 +187,14 @@ def _between(plant: Plant, entry: AlarmToTrip, time: TimeBetween, language: Lang
     # An upset is told as `FV-1002 shuts`, or by the name that the register gives it.
     moved = time.upset.partition(" ")[0] in plant.register.final_elements
     when, alarm, trip = language.upset_if(time.upset, moved=moved), _alarm(entry), entry.interlock.tag
+    left = language.calculated(
+        language.rough_duration(abs(time.available_s)), alarm[0], language.label("Time from alarm to trip"),
+        language.by_time_to_act(),
+    )  # fmt: skip
     if time.available_s <= 0.0:
-        return language.trips_before(when, trip, language.rough_duration(-time.available_s), alarm)
+        return language.trips_before(when, trip, left, alarm)
     return language.operator_has(
-        when, language.rough_duration(time.available_s), alarm, trip, language.value(given) if given else "",
+        when, left, alarm, trip, language.value(given) if given else "",
         least=time.at_least, short=given is not None and below(time.available_s, seconds(given)),
     )  # fmt: skip
 

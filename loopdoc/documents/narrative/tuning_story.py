@@ -64,7 +64,8 @@ def process_rows(loops: Sequence[ControlledLoop], language: Language) -> Iterato
         models: list[tuple[str, Process | Hold | None]] = [("", process)]
         if isinstance(process, Process) and process.branches:
             models = list(process.branches.items())
-        source = _given(process.source, language) if isinstance(process, Process) else ""
+        given = process.source if isinstance(process, Process) else None
+        source = language.entry(given) if isinstance(given, str) else _given(given, language)
         for branch, model in models:
             yield loop.tag, branch or _commanded(loop, language), *_model(model, language), source
 
@@ -92,12 +93,16 @@ def _margins(dynamics: Dynamics, tag: str, language: Language) -> tuple[str, str
         return language.label("unstable"), "", "", "", ""
     ratio = worst.speed_ratio
     crossover = margins.crossover_rad_per_s
+    phase = f"{_figure(margins.phase_margin_deg, language)}°" if math.isfinite(margins.phase_margin_deg) else "∞"
+    crosses = f"{_figure(crossover, language)}{NO_BREAK}rad/s" if math.isfinite(crossover) else language.label("none")
+    speed = _figure(ratio, language) if ratio is not None and math.isfinite(ratio) else ""
+    by = language.by_frequency_response()
     return (
-        _figure(margins.gain_margin, language),
-        f"{_figure(margins.phase_margin_deg, language)}°" if math.isfinite(margins.phase_margin_deg) else "∞",
-        _figure(margins.max_sensitivity, language),
-        f"{_figure(crossover, language)}{NO_BREAK}rad/s" if math.isfinite(crossover) else language.label("none"),
-        _figure(ratio, language) if ratio is not None and math.isfinite(ratio) else "",
+        language.calculated(_figure(margins.gain_margin, language), tag, language.label("Gain margin"), by),
+        language.calculated(phase, tag, language.label("Phase margin"), by),
+        language.calculated(_figure(margins.max_sensitivity, language), tag, language.label("Ms"), by),
+        language.calculated(crosses, tag, language.label("Crossover"), by),
+        language.calculated(speed, tag, language.label("Speed ratio"), by),
     )
 
 
@@ -152,5 +157,5 @@ def _given(written: object, language: Language) -> str:
     if written is None:
         return ""
     if isinstance(written, Gain):
-        return language.shown(written).replace(" ", NO_BREAK)
+        return language.value(written).replace(" ", NO_BREAK)
     return language.number(written) if isinstance(written, float) else language.value(written)

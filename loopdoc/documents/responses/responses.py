@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterator, Sequence
+from functools import partial
 from itertools import pairwise
 from typing import Any
 
@@ -64,7 +65,7 @@ def supplements(basis: Basis) -> dict[str, Supplement]:
         if compared:
             branches = [one for one in compared if one.dynamics in whole]
             found[scheme.lead.tag] = Supplement(
-                _benefit(alone, splits, branches, language),
+                partial(_benefit, alone, splits, branches),
                 (
                     *(Figure(_drawn(basis, one.dynamics, language), whole_caption(one, language)) for one in alone),
                     *(Figure(_drawn_split(basis, one, language), split_caption(one, language)) for one in splits),

@@ -9,6 +9,7 @@ from loopdoc.documents.language import ENGLISH, Language
 from loopdoc.documents.magnitudes import TIME_UNITS, difference_unit, duration, number
 from loopdoc.documents.plots import Curve, Drawing, Panel
 from loopdoc.documents.responses.response_figure import COLUMNS, in_units, loop_limits
+from loopdoc.documents.responses.upset_story import peak, setpoint_step, standard
 from loopdoc.documents.wording import sentences, upper_first
 from loopdoc.engineering.branched_simulation import BranchedResponse
 from loopdoc.engineering.comparison import UPSET_PCT, peak_time_s
@@ -31,7 +32,8 @@ def split_upset(split: SplitRange, response: BranchedResponse, language: Languag
     """What upsets a split range, with its size in engineering units."""
     scenario, lead = response.scenario, split.lead
     if scenario.setpoint_step_pct:
-        return language.setpoint_up(lead.tag, language.change(scenario.setpoint_step_pct, measured_range(lead)))
+        made = float(response.setpoint_pct[-1][-1] - response.measurement_pct[-1][0])
+        return setpoint_step(lead, scenario.setpoint_step_pct, made, language)
     upset = scenario.disturbances[0]
     level = split.chains[split.near].chain.levels[upset.level]
     if scenario.origin == "declared":
@@ -41,6 +43,7 @@ def split_upset(split: SplitRange, response: BranchedResponse, language: Languag
         size = language.with_unit(upset.size_pct * span / 100.0, unit(symbol).display)
     else:
         size = language.change(upset.size_pct, measured_range(level.loop))
+    size = standard(size, level.loop.tag, language)
     if scenario.name == HANDOVER:
         return language.upset_over_handover(size, level.loop.tag)
     named = language.upset_at_input if level.stage.process.integrating else language.upset_at
@@ -103,7 +106,13 @@ def split_figure(plant: Plant, split: SplitRange, language: Language = ENGLISH) 
 def standing(split: SplitRange, openings_pct: list[float], language: Language = ENGLISH) -> list[str]:
     """Where each final element stands."""
     return [
-        language.at_opening(tag, language.rounded(round(opening, 2) + 0.0))
+        language.at_opening(
+            tag,
+            language.calculated(
+                language.rounded(round(opening, 2) + 0.0), tag, language.label("Opening at the end"),
+                language.by_simulation(),
+            ),
+        )
         for tag, opening in zip(tags(split), openings_pct, strict=True)
     ]
 
@@ -140,24 +149,27 @@ def start_told(split: SplitRange, language: Language = ENGLISH) -> str:
 
 def split_told(split: SplitRange, language: Language = ENGLISH) -> str:
     """Which upsets carry the output over the handover, and the worst margins, in sentences."""
-    own, handover = measured_range(split.lead), language.rounded(split.handover_pct)
+    by, what = language.by_simulation(), language.label("Output at the handover")
+    handover = language.calculated(language.rounded(split.handover_pct), split.function.tag, what, by)
     told = [
         language.split_crosses(
             split_upset(split, response, language),
             split.lead.tag,
             standing(split, [float(travel[-1]) for travel in response.travel_pct], language),
-            language.change(abs(response.metrics.peak_pct), own),
+            peak(response.metrics.peak_pct, split.lead, language),
             handover,
         )
         for response in split.responses
         if split.crosses(response)
     ]
     worst = split.worst
+    sensitivity = language.calculated(
+        language.number(worst.margins[-1].max_sensitivity, 3), split.lead.tag, language.label("Ms"),
+        language.by_frequency_response(),
+    )  # fmt: skip
     return sentences(
         *(told or [language.split_stays(handover)]),
-        language.split_worst(
-            worst.chain.final_element.tag, language.number(worst.margins[-1].max_sensitivity, 3)
-        ),
+        language.split_worst(worst.chain.final_element.tag, sensitivity),
     )
 
 

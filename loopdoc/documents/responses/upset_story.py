@@ -8,6 +8,7 @@ from loopdoc.documents.language import ENGLISH, Language
 from loopdoc.documents.wording import sentences
 from loopdoc.engineering.comparison import Comparison, NotSimulated, ScenarioResponses
 from loopdoc.engineering.dynamics import ChainDynamics
+from loopdoc.engineering.pairing import ControlledLoop
 from loopdoc.engineering.stages import Lacking, Level, commanded, measured_range
 from loopdoc.engineering.upsets import declared_step
 from loopdoc.register.model import Disturbance, Process, known
@@ -18,8 +19,10 @@ def upset_name(comparison: Comparison, entry: ScenarioResponses, language: Langu
     """What upsets the loop, with its size in engineering units."""
     levels = comparison.dynamics.chain.levels
     if entry.scenario.setpoint_step_pct:
-        lead = comparison.dynamics.chain.lead
-        return language.setpoint_up(lead.tag, language.change(entry.scenario.setpoint_step_pct, measured_range(lead)))
+        setpoint = entry.tuned.setpoint_pct[-1]
+        assert setpoint is not None
+        made = float(setpoint[-1]) - comparison.start_pct[-1]
+        return setpoint_step(comparison.dynamics.chain.lead, entry.scenario.setpoint_step_pct, made, language)
     moved = entry.scenario.disturbances[0]
     loop = levels[moved.level].loop
     if moved.path is not None:
@@ -29,8 +32,29 @@ def upset_name(comparison: Comparison, entry: ScenarioResponses, language: Langu
         # There it is a share of what commands the process, not of the measurement, that is upset.
         symbol, span = commanded(level.route)
         size = language.with_unit(moved.size_pct * span / 100.0, unit(symbol).display)
-        return language.upset_at_input(size, loop.tag)
-    return language.upset_at(language.change(moved.size_pct, measured_range(loop)), loop.tag)
+        return language.upset_at_input(standard(size, loop.tag, language), loop.tag)
+    size = language.change(moved.size_pct, measured_range(loop))
+    return language.upset_at(standard(size, loop.tag, language), loop.tag)
+
+
+def setpoint_step(lead: ControlledLoop, asked_pct: float, made_pct: float, language: Language) -> str:
+    """A step of the setpoint with the size that its limits leave of it."""
+    if made_pct < 1e-9:
+        return language.setpoint_to_limit(lead.tag, "")
+    size = standard(language.change(made_pct, measured_range(lead)), lead.tag, language)
+    named = language.setpoint_to_limit if made_pct < asked_pct - 1e-9 else language.setpoint_up
+    return named(lead.tag, size)
+
+
+def standard(size: str, tag: str, language: Language) -> str:
+    """The size of an upset of which the register says nothing, with its source."""
+    return language.calculated(size, tag, language.label("Size of an upset"), language.by_standard_upset())
+
+
+def peak(percent: float, lead: ControlledLoop, language: Language) -> str:
+    """The largest deviation of an outermost measurement in its unit, with its source."""
+    size = language.change(abs(percent), measured_range(lead))
+    return language.calculated(size, lead.tag, language.label("Peak deviation"), language.by_simulation())
 
 
 def benefit(comparison: Comparison, language: Language = ENGLISH) -> str:
@@ -39,10 +63,11 @@ def benefit(comparison: Comparison, language: Language = ENGLISH) -> str:
     if comparison.single is None or entry is None or entry.single is None:
         return ""
     lead = comparison.dynamics.chain.lead
-    own = measured_range(lead)
-    alone, ours = (language.change(abs(found.metrics.peak_pct), own) for found in (entry.single, entry.tuned))
+    alone, ours = (peak(found.metrics.peak_pct, lead, language) for found in (entry.single, entry.tuned))
     ratio = entry.ratio("iae_pct_s")
     share = language.number(100.0 * ratio, 2) if ratio is not None and ratio < 1 else ""
+    what, by = language.label("Share of the error integral"), language.by_simulation()
+    share = language.calculated(share, lead.tag, what, by)
     upset, element = upset_name(comparison, entry, language), comparison.dynamics.chain.final_element.tag
     return language.cascade_gains(upset, lead.tag, ours, element, alone, share)
 
@@ -97,9 +122,8 @@ def _declared(
 
 def _outcome(told: str, comparison: Comparison, entry: ScenarioResponses, language: Language) -> str:
     lead = comparison.dynamics.chain.lead
-    own = measured_range(lead)
-    alone = language.change(abs(entry.single.metrics.peak_pct), own) if entry.single is not None else ""
-    return language.upset_outcome(told, lead.tag, language.change(abs(entry.tuned.metrics.peak_pct), own), alone)
+    alone = peak(entry.single.metrics.peak_pct, lead, language) if entry.single is not None else ""
+    return language.upset_outcome(told, lead.tag, peak(entry.tuned.metrics.peak_pct, lead, language), alone)
 
 
 def single_loop_assumption(comparison: Comparison, language: Language = ENGLISH) -> str:

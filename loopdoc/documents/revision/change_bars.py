@@ -183,6 +183,7 @@ def _is_passed_over(tag: str, attributes: dict[str, str | None]) -> bool:
         or "title-block" in classes
         or "bars-note" in classes
         or "revisions" in classes
+        or "appendix" in classes
     )
 
 

@@ -1,10 +1,11 @@
-"""English: responses of a split range as a whole."""
+"""English: responses of split ranges and overrides as a whole."""
 
 from __future__ import annotations
 
 from collections.abc import Sequence
 
 from loopdoc.documents.language.english.grammar import NO_BREAK, EnglishGrammar
+from loopdoc.documents.wording import upper_first
 
 
 class EnglishBranching(EnglishGrammar):
@@ -75,3 +76,81 @@ class EnglishBranching(EnglishGrammar):
     def split_worst(self, element: str, sensitivity: str) -> str:
         """The branch with the least robust margins."""
         return f"Margins hold branch by branch; the worst is that with {element}, Ms {sensitivity}"
+
+    # -- overrides
+
+    def how_followed(self, unfollowed: str) -> str:
+        """How a controller follows while a selector passes another."""
+        return {
+            "track": "with external reset", "hold": "with its integral held", "nothing": "without external reset",
+        }[unfollowed]  # fmt: skip
+
+    def setpoint_as_far(self, tag: str, limit: str, *, up: bool) -> str:
+        """A setpoint that is moved to its limit."""
+        return f"The setpoint of {tag} {'raised' if up else 'lowered'} to its limit, {limit},"
+
+    def upset_declared(self, name: str, tag: str) -> str:
+        """An upset that the register declares, before a verb."""
+        return f"{upper_first(name)} (declared at {tag})"
+
+    def panel_to_limit(self, tag: str) -> str:
+        """Heading of a panel with that upset."""
+        return f"{tag}: setpoint to its limit"
+
+    def panel_past(self, tag: str, unfollowed: str) -> str:
+        """Heading of a panel in which a controller that stands by is carried past its setpoint."""
+        return f"{tag} {self.how_followed(unfollowed)}"
+
+    def override_title(self, tags: Sequence[str], function: str) -> str:
+        """What a figure shows, for those who cannot see it."""
+        return f"Time responses of {self.listed(tags)} through {function}"
+
+    def override_stands_by(self, tag: str, distance: str, normal: str, *, below: bool) -> str:
+        """Who commands, and who stands by how far from its setpoint."""
+        return (
+            f"{normal} commands in normal operation, and {tag} stands by with its measurement {distance} "
+            f"{'below' if below else 'above'} its setpoint"
+        )
+
+    def override_stays_out(self, upset: str, tag: str) -> str:
+        """An upset that brings nobody else into command."""
+        return f"{upset} does not bring {tag} into command"
+
+    def override_nothing_given(self, tags: Sequence[str]) -> str:
+        """That the register gives no upset that would."""
+        return f"The register gives no upset that brings {self.either(tags)} into command"
+
+    def override_takes_over(self, upset: str, tag: str, after: str, past: str, how: str) -> str:
+        """An upset that does; ``how`` the controllers follow."""
+        return (
+            f"{upset} brings {tag} into command: {how} it takes over {after} after the upset, and its measurement goes "
+            f"past the setpoint by {past} at most"
+        )
+
+    def override_gives_back(self, normal: str, after: str) -> str:
+        """Control that passes back once the upset is gone."""
+        return f"Once the upset is gone again, {normal} is back in command after {after}"
+
+    def override_otherwise(self, how: str, after: str, past: str) -> str:
+        """The same with the controllers following the other way; ``after`` is empty where it never takes over."""
+        if not after:
+            return f"For comparison: {how} it would not take over, and its measurement would go past by {past}"
+        return f"For comparison: {how} it would take over after {after} and let its measurement go past by {past}"
+
+    def override_caption(self, tags: Sequence[str], function: str, *, lowest: bool) -> str:
+        """What a figure shows, and under which assumptions."""
+        return (
+            f"{self.listed(tags)} through {function}, which passes the {'lowest' if lowest else 'highest'} of what "
+            "they ask for. Above the measurement that stands by, then the one in command, below what is asked and what "
+            "passes. Linear models about the normal values, simulated scan by scan as executed, with output limits; "
+            "loops above these hold their outputs. With external reset the integral of a controller is what "
+            f"{function} passes, through a lag of the reset time; without it the integral stops at the controller's "
+            "own output limit."
+        )
+
+    def override_sized(self, tag: str, size: str, lasts: str) -> str:
+        """An upset that is sized to bring a controller in."""
+        return (
+            f"The upset at {tag}, {size}, is sized to carry its measurement a tenth of span past its setpoint, and is "
+            f"gone again after {lasts}."
+        )

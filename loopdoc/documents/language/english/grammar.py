@@ -129,6 +129,24 @@ class EnglishGrammar:
         """The normal value, behind the limits."""
         return f"normally {usual}"
 
+    # -- where it comes from: in a catalogue that traces, these carry the source
+
+    def text(self, written: str) -> str:
+        """A text of the register with its numbers."""
+        return written
+
+    def entry(self, written: str) -> str:
+        """A text of the register that is a value in itself, such as the number of a drawing."""
+        return written
+
+    def calculated(self, text: str, tag: str, what: str, by: str) -> str:
+        """A calculated value: what it is, of which tag, and by what it is calculated."""
+        return text
+
+    def message(self, text: str, tag: str, what: str, by: str) -> str:
+        """What the check says at a tag, with its numbers: what these are, and which rule gives them."""
+        return text
+
     def quoted(self, text: str) -> str:
         """Words of somebody else in quotation marks."""
         return f"“{text}”"

@@ -56,7 +56,7 @@ class EnglishNaming(EnglishGrammar):
 
     def sensor(self, measurement: Measurement) -> str:
         """Primary element and sensor as a reader wants them beside the tag; empty where nothing is given."""
-        parts = [known(measurement.element), known(measurement.sensor)]
+        parts = [self.text(known(measurement.element) or ""), self.text(known(measurement.sensor) or "")]
         if known(measurement.characteristic) == "square root":
             parts.append(self.term("characteristic", "square root"))
         return ", ".join(part for part in parts if part)

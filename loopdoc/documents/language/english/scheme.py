@@ -297,9 +297,9 @@ class EnglishScheme(EnglishNaming):
         travel = "speed range" if kind in DRIVES else "power" if kind == "heater bank" else "travel"
         return f"its output may use the whole {travel} of {element.tag}"
 
-    def output_all(self) -> str:
+    def output_all(self, limits: str) -> str:
         """An output from end to end, where it moves no single final element."""
-        return f"its output runs from 0 to {self.percent(100)}"
+        return f"its output runs {self._from(limits)}"
 
     def _from(self, limits: str) -> str:
         return limits if limits.startswith(("up to", "from")) else f"from {limits}"

@@ -7,8 +7,8 @@ from loopdoc.documents.language.german.branching import GermanBranching
 from loopdoc.documents.language.german.dynamics import GermanDynamics
 from loopdoc.documents.language.german.protection import GermanProtection
 from loopdoc.documents.language.german.scheme import GermanScheme
-from loopdoc.documents.language.german.sheet import GermanSheet
+from loopdoc.documents.language.german.sources import GermanSources
 
 
-class German(GermanScheme, GermanProtection, GermanDynamics, GermanBranching, GermanSheet, English):
+class German(GermanScheme, GermanProtection, GermanDynamics, GermanBranching, GermanSources, English):
     """German."""

@@ -1,4 +1,4 @@
-"""German: responses of a split range as a whole."""
+"""German: responses of split ranges and overrides as a whole."""
 
 from __future__ import annotations
 
@@ -68,3 +68,68 @@ class GermanBranching(GermanGrammar, EnglishBranching):
 
     def split_worst(self, element: str, sensitivity: str) -> str:
         return f"Die Reserven gelten Zweig für Zweig; am kleinsten sind sie mit {element}, Ms {sensitivity}"
+
+    # -- overrides
+
+    def how_followed(self, unfollowed: str) -> str:
+        return {
+            "track": "mit externer Integralrückführung", "hold": "mit angehaltenem Integral",
+            "nothing": "ohne externe Integralrückführung",
+        }[unfollowed]  # fmt: skip
+
+    def setpoint_as_far(self, tag: str, limit: str, *, up: bool) -> str:
+        way = "anheben" if up else "absenken"
+        return f"Den Sollwert von {tag} bis an seine Grenze, {limit}, {way}"
+
+    def upset_declared(self, name: str, tag: str) -> str:
+        return f"Die Störung {self.quoted(name)} (angegeben bei {tag})"
+
+    def panel_to_limit(self, tag: str) -> str:
+        return f"{tag}: Sollwert an die Grenze"
+
+    def panel_past(self, tag: str, unfollowed: str) -> str:
+        return f"{tag} {self.how_followed(unfollowed)}"
+
+    def override_title(self, tags: Sequence[str], function: str) -> str:
+        return f"Zeitverhalten von {self.listed(tags)} über {function}"
+
+    def override_stands_by(self, tag: str, distance: str, normal: str, *, below: bool) -> str:
+        return (
+            f"Im Normalbetrieb führt {normal}; {tag} steht bereit, sein Messwert {distance} "
+            f"{'unter' if below else 'über'} dem Sollwert"
+        )
+
+    def override_stays_out(self, upset: str, tag: str) -> str:
+        return f"{upset}: {tag} übernimmt nicht"
+
+    def override_nothing_given(self, tags: Sequence[str]) -> str:
+        return f"Das Register gibt keine Störung an, bei der {self.either(tags)} übernähme"
+
+    def override_takes_over(self, upset: str, tag: str, after: str, past: str, how: str) -> str:
+        return (
+            f"{upset}: {how} übernimmt {tag} nach {after}, und sein Messwert gerät um höchstens {past} über den "
+            "Sollwert hinaus"
+        )
+
+    def override_gives_back(self, normal: str, after: str) -> str:
+        return f"Ist die Störung wieder vorbei, führt {normal} nach {after} von neuem"
+
+    def override_otherwise(self, how: str, after: str, past: str) -> str:
+        takes = f"übernähme er nach {after}" if after else "übernähme er nicht"
+        return f"Zum Vergleich: {how} {takes}, und sein Messwert geriete um {past} über den Sollwert hinaus"
+
+    def override_caption(self, tags: Sequence[str], function: str, *, lowest: bool) -> str:
+        return (
+            f"{self.listed(tags)} über {function}, das die {'kleinste' if lowest else 'größte'} Anforderung "
+            "weitergibt. Oben der Messwert des bereitstehenden Reglers, darunter der des führenden, unten was "
+            "angefordert und was weitergegeben wird. Lineare Modelle um die Normalwerte, Abtastung für Abtastung wie "
+            "ausgeführt simuliert, mit Ausgangsbegrenzung; übergeordnete Regelkreise halten ihre Ausgänge. Mit "
+            f"externer Integralrückführung ist das Integral eines Reglers das, was {function} weitergibt, verzögert "
+            "mit der Nachstellzeit; ohne sie endet das Integral erst an der eigenen Ausgangsgrenze."
+        )
+
+    def override_sized(self, tag: str, size: str, lasts: str) -> str:
+        return (
+            f"Die Störung an {tag}, {size}, ist so bemessen, dass der Messwert um ein Zehntel der Messspanne über den "
+            f"Sollwert hinausgeriete; nach {lasts} ist sie wieder vorbei."
+        )

@@ -152,6 +152,8 @@ LABELS = {
     "single loop": "einschleifig",
     "as tuned": "wie eingestellt",
     "opening": "Öffnung",
+    "measurement": "Messwert",
+    "passed": "weitergegeben",
     "Setpoint step": "Sollwertsprung",
     # loop sheet
     "Identification": "Kennzeichnung",

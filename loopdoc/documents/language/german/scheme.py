@@ -307,8 +307,8 @@ class GermanScheme(GermanNaming, EnglishScheme):
             travel = "die ganze Leistung"
         return f"der Ausgang darf {travel} von {element.tag} nutzen"
 
-    def output_all(self) -> str:
-        return f"der Ausgang läuft von 0 bis {self.percent(100)}"
+    def output_all(self, limits: str) -> str:
+        return f"der Ausgang läuft {self._from(limits)}"
 
     def _from(self, limits: str) -> str:
         return limits if limits.startswith(("bis ", "ab ")) else f"von {limits}"

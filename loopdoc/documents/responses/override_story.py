@@ -1,0 +1,262 @@
+"""An override as a whole: its figure, the words beside it, and its table."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterator
+from dataclasses import replace
+from typing import Any
+
+import numpy as np
+
+from loopdoc.documents.language import ENGLISH, Language
+from loopdoc.documents.magnitudes import TIME_UNITS, change, duration, number
+from loopdoc.documents.plots import Curve, Drawing, Panel
+from loopdoc.documents.responses.response_figure import COLUMNS, in_units, loop_limits
+from loopdoc.documents.values import DASH
+from loopdoc.documents.wording import sentences, upper_first
+from loopdoc.engineering.branched_simulation import BranchedResponse
+from loopdoc.engineering.override import TO_THE_LIMIT, Override, OverrideResponses
+from loopdoc.engineering.pairing import Plant
+from loopdoc.engineering.stages import commanded, measured_range
+from loopdoc.register.model import FinalElement, known
+from loopdoc.register.quantity import Range
+from loopdoc.register.units import UNITS, unit
+
+WHOLE = Range(0.0, 100.0, UNITS["%"])
+"""The range of what is asked of a final element."""
+
+
+def tags(found: Override) -> list[str]:
+    """The candidates."""
+    return [loop.tag for loop in found.loops]
+
+
+def override_upset(found: Override, entry: OverrideResponses, language: Language = ENGLISH) -> str:
+    """What upsets an override, with its size in engineering units."""
+    scenario = entry.scenario
+    if scenario.name == TO_THE_LIMIT:
+        normal = found.loops[found.normal]
+        own, loop = measured_range(normal), found.structure.loops[found.below + found.normal]
+        limit = own.low + (loop.start_pct + scenario.setpoint_step_pct) * own.span / 100.0
+        told = language.with_unit(limit, own.unit.display)
+        return language.setpoint_as_far(normal.tag, told, up=scenario.setpoint_step_pct > 0.0)
+    if scenario.origin == "declared":
+        return language.upset_declared(scenario.name, _moved(found, entry))
+    tag = _moved(found, entry)
+    named = language.upset_at_input if _integrates(found, entry) else language.upset_at
+    return named(_size(found, entry, language), tag)
+
+
+def _moved(found: Override, entry: OverrideResponses) -> str:
+    """The loop on whose measurement an upset comes."""
+    at = entry.scenario.disturbances[0].level
+    return (
+        found.loops[at - found.below].tag if at >= found.below else found.candidates[0].chain.levels[at].loop.tag
+    )
+
+
+def _integrates(found: Override, entry: OverrideResponses) -> bool:
+    return found.structure.loops[entry.scenario.disturbances[0].level].processes[0].integrating
+
+
+def _size(found: Override, entry: OverrideResponses, language: Language) -> str:
+    """The size of an upset that is sized for a candidate."""
+    size_pct, place = abs(entry.scenario.disturbances[0].size_pct), entry.scenario.read - found.below
+    if _integrates(found, entry):
+        symbol, span = commanded(found.candidates[place].chain.levels[-1].route)
+        return language.with_unit(size_pct * span / 100.0, unit(symbol).display)
+    return language.change(size_pct, measured_range(found.loops[place]))
+
+
+# ---------------------------------------------------------------- figure
+
+
+def shown_responses(found: Override) -> list[tuple[OverrideResponses, bool]]:
+    """The responses that a figure has room for, and whether each is the one as written: of an upset that is sized to
+    bring a controller in both, of the others the one as written.
+    """
+    columns = [(entry, True) for entry in found.responses if entry.scenario.origin != "sized"]
+    sized = [entry for entry in found.responses if entry.scenario.origin == "sized"]
+    room = COLUMNS - 2 * min(1, len(sized))
+    columns = columns[:room]
+    for entry in sized:
+        columns += [(entry, True), (entry, False)]
+    return columns[:COLUMNS]
+
+
+def override_panels(
+    plant: Plant, found: Override, entry: OverrideResponses, language: Language = ENGLISH, *, as_written: bool = True
+) -> tuple[Panel, Panel, Panel]:
+    """The measurement that stands by, the one in command, and what is asked and passed, under one upset."""
+    response = entry.as_written if as_written else entry.otherwise
+    _, divisor, time_unit = next(one for one in TIME_UNITS if float(response.time_s[-1]) >= one[0])
+    time = response.time_s / divisor
+    read = entry.scenario.read - found.below
+    idle = read if read != found.normal else found.standing_by[0]
+    panels = []
+    for place in (idle, found.normal):
+        loop, at = found.loops[place], found.below + place
+        own = measured_range(loop)
+        curves = (
+            Curve(language.label("setpoint"), "dotted", time, in_units(response.setpoint_pct[at], own)),
+            Curve(
+                language.label("measurement"), "solid", time, in_units(response.measurement_pct[at], own)
+            ),
+        )
+        limits = tuple(loop_limits(plant, loop, own, language))
+        panels.append(Panel("", "", f"{loop.tag}, {language.unit(own.unit.display)}", curves, limits))
+    above = replace(panels[0], title=_short_name(found, entry, idle, language, as_written=as_written))
+    own = _asked_range(found)
+    asked = [
+        Curve(found.loops[place].tag, style, time, in_units(response.output_pct[found.below + place], own))
+        for place, style in ((found.normal, "dashed"), (idle, "points"))
+    ]
+    passed = Curve(language.label("passed"), "solid", time, in_units(_passed(found, response), own))
+    what = f"{found.end.tag}, {language.unit(own.unit.display)}"
+    below = Panel("", language.panel_time(time_unit), what, (*asked, passed))
+    return above, panels[1], below
+
+
+def _asked_range(found: Override) -> Range:
+    if isinstance(found.end, FinalElement):
+        return WHOLE
+    measurement = known(found.end.measurement)
+    own = known(measurement.range) if measurement else None
+    assert own is not None  # else there is no chain
+    return own
+
+
+def _passed(found: Override, response: BranchedResponse) -> Any:
+    """What the selector passes [%]: the setpoint of the loop below it, or the lowest or highest output."""
+    if found.below:
+        return response.setpoint_pct[found.below - 1]
+    outputs = np.stack(response.output_pct)
+    return outputs.min(axis=0) if found.structure.lowest else outputs.max(axis=0)
+
+
+def _short_name(
+    found: Override, entry: OverrideResponses, idle: int, language: Language, *, as_written: bool
+) -> str:
+    if entry.scenario.name == TO_THE_LIMIT:
+        return language.panel_to_limit(found.loops[found.normal].tag)
+    if entry.scenario.origin == "declared":
+        return upper_first(entry.scenario.name)
+    return language.panel_past(found.loops[idle].tag, found.follows(idle, as_written=as_written))
+
+
+def override_figure(plant: Plant, found: Override, language: Language = ENGLISH) -> Drawing:
+    """A column for each response: measurements above, what is asked and passed below."""
+    columns = [
+        override_panels(plant, found, entry, language, as_written=as_written)
+        for entry, as_written in shown_responses(found)
+    ]
+    # The columns share what the vertical axes are named; of several that stand by each names its own.
+    named = {panel.y_label for panel, _, _ in columns}
+    rows = []
+    for row in zip(*columns, strict=True):
+        unnamed = [replace(panel, y_label="") for panel in row[1:]]
+        rows.append((row[0], *(row[1:] if len(named) > 1 and row[0].title else unnamed)))
+    title = language.override_title(tags(found), found.function.tag)
+    return Drawing(title, tuple(rows), override_caption(found, language), language.decimal_comma)
+
+
+def override_caption(found: Override, language: Language = ENGLISH) -> str:
+    """What is shown and under which assumptions."""
+    sized = [
+        language.override_sized(
+            _moved(found, entry), _size(found, entry, language), language.duration(entry.scenario.lasts_s)
+        )
+        for entry in found.responses
+        if entry.scenario.origin == "sized"
+    ]
+    lowest = known(found.function.kind) == "low select"
+    return " ".join((language.override_caption(tags(found), found.function.tag, lowest=lowest), *sized))
+
+
+# ---------------------------------------------------------------- words
+
+
+def override_told(found: Override, language: Language = ENGLISH) -> str:
+    """Who stands by, what brings it into command and what comes of that, in sentences."""
+    return sentences(*_told(found, language))
+
+
+def _told(found: Override, language: Language) -> Iterator[str]:
+    normal = found.loops[found.normal].tag
+    for place in found.standing_by:
+        loop, lead = found.structure.loops[found.below + place], found.loops[place]
+        distance = language.change(abs(loop.start_error_pct), measured_range(lead))
+        yield language.override_stands_by(lead.tag, distance, normal, below=loop.start_error_pct > 0.0)
+    given = [entry for entry in found.responses if entry.scenario.origin != "sized"]
+    brought = False
+    for entry in given:
+        for place in found.standing_by:
+            if found.taken_over(entry.as_written, place).takes_over:
+                brought = True
+                yield from _takes_over(found, entry, place, language)
+            else:
+                yield language.override_stays_out(override_upset(found, entry, language), found.loops[place].tag)
+    if not brought:
+        yield language.override_nothing_given([found.loops[place].tag for place in found.standing_by])
+    for entry in found.responses:
+        place = entry.scenario.read - found.below
+        if entry.scenario.origin == "sized" and found.taken_over(entry.as_written, place).takes_over:
+            yield from _takes_over(found, entry, place, language)
+
+
+def _takes_over(found: Override, entry: OverrideResponses, place: int, language: Language) -> Iterator[str]:
+    own = measured_range(found.loops[place])
+    seen = found.taken_over(entry.as_written, place)
+    yield language.override_takes_over(
+        override_upset(found, entry, language),
+        found.loops[place].tag,
+        language.duration(seen.spell.first_s),
+        language.change(seen.past_pct, own),
+        language.how_followed(found.follows(place)),
+    )
+    if math.isfinite(seen.gives_back_s) and math.isfinite(entry.scenario.lasts_s):
+        back_s = seen.gives_back_s - entry.scenario.lasts_s
+        yield language.override_gives_back(found.loops[found.normal].tag, language.duration(max(0.0, back_s)))
+    other = found.taken_over(entry.otherwise, place)
+    yield language.override_otherwise(
+        language.how_followed(found.follows(place, as_written=False)),
+        language.duration(other.spell.first_s) if other.takes_over else "",
+        language.change(other.past_pct, own),
+    )
+
+
+# ---------------------------------------------------------------- response document
+
+
+def override_section(found: Override, svg: str) -> dict[str, Any]:
+    """View of an override as a whole, for the response document."""
+    below = [level.loop.tag for level in reversed(found.candidates[0].chain.levels[:-1])]
+    element = found.candidates[0].chain.final_element.tag
+    return {
+        "function": found.function.tag,
+        "path": " → ".join([", ".join(tags(found)), found.function.tag, *below, element]),
+        "told": override_told(found),
+        "figure": svg,
+        "caption": override_caption(found),
+        "rows": [row for entry in found.responses for row in _rows(found, entry)],
+    }
+
+
+def _rows(found: Override, entry: OverrideResponses) -> Iterator[dict[str, Any]]:
+    """A row for each candidate that stands by, as written and the other way."""
+    for place in found.standing_by:
+        own = measured_range(found.loops[place])
+        for response, as_written in ((entry.as_written, True), (entry.otherwise, False)):
+            seen = found.taken_over(response, place)
+            times = (seen.reaches_s, seen.spell.first_s, seen.gives_back_s)
+            reaches, takes_over, gives_back = (duration(time) if math.isfinite(time) else DASH for time in times)
+            yield {
+                "upset": override_upset(found, entry).rstrip(","),
+                "tag": found.loops[place].tag,
+                "follows": ENGLISH.how_followed(found.follows(place, as_written=as_written)),
+                "cells": [
+                    reaches, takes_over, change(seen.past_pct, own) if seen.past_pct > 0.0 else DASH, gives_back,
+                    f"{number(response.metrics.valve_travel_pct)} %", str(response.metrics.reversals),
+                ],
+            }
