@@ -208,6 +208,9 @@ def test_a_lead_on_an_integration_alone_is_refused() -> None:
         (itae(model(2.0, 10.0, 10.0), "PID", upset="load"), (0.6785, 10.0 / 0.842, 3.81)),
         (itae(model(2.0, 10.0, 10.0), "PID", upset="setpoint"), (0.4825, 10.0 / 0.6495, 3.08)),
         (itae(model(1.0, 10.0, 5.0), "PID", upset="setpoint"), (1.739413, 13.83604, 1.617685)),
+        # Dead time alone, to which the rule was fitted as well: 0.15/Kp and 0.35 L, 0.2/Kp and 0.4 L without rate.
+        (amigo(model(2.0, 0.0, 10.0), "PI"), (0.075, 3.5)),
+        (amigo(model(2.0, 0.0, 10.0), "PID"), (0.1, 4.0)),
         # Tyreus and Luyben 1992.
         (tyreus_luyben(UltimatePoint(10.0, 4.0), "PI"), (3.125, 8.8)),
         (tyreus_luyben(UltimatePoint(10.0, 4.0), "PID"), (4.54545, 8.8, 0.634921)),

@@ -283,7 +283,11 @@ def test_rules_that_do_not_apply_say_why(tmp_path: Path) -> None:
     assert {row["rule"] for row in review["settings"]} == {"as configured", "lambda PI", "IMC PI", "IMC PID"}
     review = shown(tmp_path, STANDARD, "gain: 1 degC per %, dead_time: 3 s")
     reasons = {entry["rule"]: entry["reason"] for entry in review["not_applied"]}
-    assert "lag above zero" in reasons["AMIGO PI"]
+    assert "lag above zero" in reasons["Cohen-Coon PI"]
+    # AMIGO holds for dead time alone: 0.15 (1 + 1/(0.35 L s)) exp(-Ls) has an Ms of 1.3520, by hand on a fine grid.
+    amigo_pi = by_rule(review)["AMIGO PI"]
+    assert (amigo_pi["gain"], amigo_pi["reset"]) == pytest.approx((0.15, 0.35 * 3.0))
+    assert amigo_pi["max_sensitivity"] == pytest.approx(1.3520346, rel=1e-4)
     series = "form: series\n      gain: 1.0\n      reset: 10 s"
     review = shown(tmp_path, series, "gain: 1 degC per %, lag: 10 s, dead_time: 30 s")
     reasons = {entry["rule"]: entry["reason"] for entry in review["not_applied"]}

@@ -258,7 +258,7 @@ def amigo(model: ReducedModel, actions: Literal["PI", "PID"]) -> StandardSetting
         if actions == "PI":
             return StandardSettings(0.35 * unit, 13.4 * dead_time)
         return StandardSettings(0.45 * unit, 8.0 * dead_time, 0.5 * dead_time)
-    _self_regulating(model)
+    # Fitted from dead time alone to integration: no lag is needed.
     lag = model.lag_s
     if actions == "PI":
         weight = 0.35 - dead_time * lag / (dead_time + lag) ** 2
