@@ -70,6 +70,26 @@ def result_of(folder: Path) -> CheckResult:
     return check(Plant(loaded.register), loaded.faults)
 
 
+# ---------------------------------------------------------------- many holds of one reason
+
+
+def test_many_holds_of_one_reason_are_told_together_to_people_and_one_by_one_to_programs(tmp_path: Path) -> None:
+    """Four valves of one vendor and one of another: the four share a head, the one keeps its line and caret."""
+    valves = [f"FV-200{number}" for number in range(4)]
+    elements = [f"  {tag}: {{kind: control valve, stroke_time: {{hold: asked of the vendor}}}}" for tag in valves]
+    elements += ["  FV-2004: {kind: control valve, fails: {hold: hazard study}}"]
+    (tmp_path / "register.yaml").write_text("\n".join(["format: 1", "final_elements:", *elements, ""]), "utf-8")
+    text = call("check", tmp_path, "--only", "hold-open")[1]
+    assert text.count("hold-open") == 2
+    assert "register.yaml:3:34: note: hold-open: 4 values on hold: asked of the vendor\n" in text
+    assert f"    stroke_time: {', '.join(valves)}\n" in text
+    assert "register.yaml:7:34: note: hold-open: FV-2004: `fails` is on hold: hazard study\n      7 |" in text
+    table = call("check", tmp_path, "--only", "hold-open", "--format", "markdown")[1]
+    assert f"4 values on hold: asked of the vendor<br>`stroke_time`: {', '.join(valves)} |" in table.replace("\\", "")
+    found = json.loads(call("check", tmp_path, "--only", "hold-open", "--format", "json")[1])["findings"]
+    assert [one["tag"] for one in found] == [*valves, "FV-2004"]
+
+
 # ---------------------------------------------------------------- text: line and caret
 
 

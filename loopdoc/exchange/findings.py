@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping
+from collections.abc import Iterator, Mapping, Sequence
 from typing import Any
 
 from loopdoc.exchange.escaping import for_json, for_terminal
@@ -14,6 +14,8 @@ CAUTION = (
     "These results support and do not replace review by competent persons; local codes, the hazard study and the "
     "manufacturer's data govern. Safety instrumented functions need their own lifecycle (IEC 61511)."
 )
+TOLD_TOGETHER = 4
+"""From so many on, findings that share what they say are told together."""
 _COLOURS = {"error": "\x1b[1;31m", "warning": "\x1b[1;33m", "note": "\x1b[1;36m", "accepted": "\x1b[1m"}
 _PLAIN = "\x1b[0m"
 
@@ -49,7 +51,8 @@ class _Page:
 def as_text(result: CheckResult, sources: Mapping[str, bytes], *, colour: bool = False) -> str:
     """Findings with their lines and remedies, what deviations accept, and what was and was not checked."""
     page = _Page(sources, colour=colour)
-    for finding in result.findings:
+    alone, told_together = gathered(result.findings)
+    for finding in alone:
         level = str(finding.level)
         page.head(finding.place, level, f"{finding.rule}: {finding.tag}: {finding.message}")
         page.source(finding.place, level)
@@ -57,6 +60,12 @@ def as_text(result: CheckResult, sources: Mapping[str, bytes], *, colour: bool =
             page.say(f"    see {related.place}: {related.what}")
             page.source(related.place, "")
         page.say(f"    remedy: {finding.remedy}")
+    for together in told_together:
+        first = together[0]
+        page.head(first.place, str(first.level), f"{first.rule}: {len(together)} {shared_by(together)}")
+        for what, tags in by_what(together).items():
+            page.say(f"    {what}: {', '.join(tags)}")
+        page.say(f"    remedy: {first.remedy}")
     for finding in result.accepted:
         page.head(finding.place, "accepted", f"{finding.rule}: {finding.tag}: {finding.message}")
         page.say(f"    deviation: {accepted_why(finding)}")
@@ -101,6 +110,33 @@ def as_line(place: Place, message: str, remedy: str) -> str:
 
 
 # ---------------------------------------------------------------- parts that other forms share
+
+
+def gathered(findings: Sequence[Finding]) -> tuple[list[Finding], list[list[Finding]]]:
+    """Findings to be told one by one, then those of which many share what they say, each such lot together."""
+    found: dict[tuple[str, str], list[Finding]] = {}
+    for finding in findings:
+        if finding.alike:
+            found.setdefault((finding.rule, finding.alike.shared), []).append(finding)
+    lots = [lot for lot in found.values() if len(lot) >= TOLD_TOGETHER]
+    among = {id(finding) for lot in lots for finding in lot}
+    return [finding for finding in findings if id(finding) not in among], lots
+
+
+def shared_by(together: Sequence[Finding]) -> str:
+    """What findings that are told together share."""
+    alike = together[0].alike
+    assert alike is not None
+    return alike.shared
+
+
+def by_what(together: Sequence[Finding]) -> dict[str, list[str]]:
+    """The tags of findings that are told together, by what is found at them."""
+    found: dict[str, list[str]] = {}
+    for finding in together:
+        assert finding.alike is not None
+        found.setdefault(finding.alike.what or "the whole of it", []).append(finding.tag)
+    return found
 
 
 def summary(result: CheckResult) -> str:

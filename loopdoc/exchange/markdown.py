@@ -5,7 +5,17 @@ from __future__ import annotations
 from collections.abc import Callable, Iterator, Sequence
 
 from loopdoc.exchange.escaping import as_code, for_markdown
-from loopdoc.exchange.findings import CAUTION, accepted_why, baseline_told, counted, not_checked, summary
+from loopdoc.exchange.findings import (
+    CAUTION,
+    accepted_why,
+    baseline_told,
+    by_what,
+    counted,
+    gathered,
+    not_checked,
+    shared_by,
+    summary,
+)
 from loopdoc.register.place import Place
 from loopdoc.rules.finding import CheckResult, Finding, Level
 
@@ -38,7 +48,8 @@ def as_markdown(result: CheckResult, *, folder: str) -> str:
 def _table(findings: Sequence[Finding], folder: str, last: str, answer: Callable[[Finding], str]) -> Iterator[str]:
     yield f"| Place | Tag | Rule | Finding | {last} |"
     yield "| --- | --- | --- | --- | --- |"
-    for finding in findings[:MAX_ROWS]:
+    alone, lots = gathered(findings)
+    for finding in alone[:MAX_ROWS]:
         where = [as_code(f"{folder}{finding.place.file}:{finding.place.line}")]
         where += [f"see {_beside(related.place, finding.place, folder)}" for related in finding.related]
         cells = [
@@ -49,8 +60,19 @@ def _table(findings: Sequence[Finding], folder: str, last: str, answer: Callable
             for_markdown(answer(finding)),
         ]
         yield f"| {' | '.join(cells)} |"
-    if len(findings) > MAX_ROWS:
-        yield f"| | | | and {len(findings) - MAX_ROWS} more | |"
+    if len(alone) > MAX_ROWS:
+        yield f"| | | | and {len(alone) - MAX_ROWS} more | |"
+    for lot in lots:
+        first = lot[0]
+        tags = [f"{as_code(what)}: {for_markdown(', '.join(tags))}" for what, tags in by_what(lot).items()]
+        cells = [
+            f"{as_code(f'{folder}{first.place.file}:{first.place.line}')} and {len(lot) - 1} more",
+            "",
+            as_code(first.rule),
+            "<br>".join([for_markdown(f"{len(lot)} {shared_by(lot)}"), *tags]),
+            for_markdown(answer(first)),
+        ]
+        yield f"| {' | '.join(cells)} |"
 
 
 def _beside(place: Place, other: Place, folder: str) -> str:

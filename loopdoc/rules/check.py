@@ -98,7 +98,11 @@ def _judge(
     try:
         for found in rule.function(subject, *asked):
             level = found.level or rule.level
-            findings.append(Finding(rule.id, level, found.tag, found.message, found.remedy, found.place, found.related))
+            findings.append(
+                Finding(
+                    rule.id, level, found.tag, found.message, found.remedy, found.place, found.related, found.alike
+                )
+            )
     except NotApplicable:
         return
     except NotChecked as lacking:

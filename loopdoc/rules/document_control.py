@@ -8,7 +8,7 @@ from itertools import pairwise
 from loopdoc.engineering.pairing import Plant
 from loopdoc.register.model import FinalElement, HeldValue, Interlock, Loop, Revision, known
 from loopdoc.rules.acceptance import date
-from loopdoc.rules.finding import Level
+from loopdoc.rules.finding import Alike, Level
 from loopdoc.rules.rule import Draft, draft, need, not_checked, only_if, rule
 
 _FOR_REVIEW = "issued for review"
@@ -37,6 +37,7 @@ def hold_open(held: HeldValue) -> Iterator[Draft]:
         f"`{what}` is on hold: {held.reason}" if what else f"on hold: {held.reason}",
         remedy="write the value when it is known, in place of the hold",
         at=held.place,
+        alike=Alike(what, f"values on hold: {held.reason}"),
     )
 
 

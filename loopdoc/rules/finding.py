@@ -31,6 +31,16 @@ class Related:
 
 
 @dataclass(frozen=True, slots=True)
+class Alike:
+    """What lets findings of one rule be told together, where there are many."""
+
+    what: str
+    """What the finding itself is about, such as `measurement/range`."""
+    shared: str
+    """What it shares with the others, such as the reason of a hold."""
+
+
+@dataclass(frozen=True, slots=True)
 class Finding:
     """One result of the check."""
 
@@ -42,6 +52,8 @@ class Finding:
     remedy: str
     place: Place
     related: tuple[Related, ...] = ()
+    alike: Alike | None = None
+    """None where a finding is always told by itself."""
     accepted_by: Deviation | None = None
     """The deviation that accepts it."""
     path: str = ""

@@ -10,7 +10,7 @@ from typing import Any, NoReturn, TypeVar, get_args, get_origin, get_type_hints
 
 from loopdoc.register.model import Hold, Origin
 from loopdoc.register.place import Place
-from loopdoc.rules.finding import Level, Related
+from loopdoc.rules.finding import Alike, Level, Related
 from loopdoc.rules.subjects import BESIDES, SUBJECTS, Scope
 
 T = TypeVar("T")
@@ -29,6 +29,8 @@ class Draft:
     related: tuple[Related, ...]
     level: Level | None = None
     """Where this one is worse, or less, than the rule as a whole."""
+    alike: Alike | None = None
+    """Where many of the rule's findings may be told together."""
 
 
 class NotChecked(Exception):
@@ -50,10 +52,11 @@ def draft(
     at: Place | Origin,
     related: tuple[tuple[Place | Origin, str], ...] = (),
     level: Level | None = None,
+    alike: Alike | None = None,
 ) -> Draft:
     """A finding about ``tag``; ``related`` are further places, each with what stands there."""
     others = tuple(Related(_place(where), what) for where, what in related)
-    return Draft(tag, message, remedy, _place(at), others, level)
+    return Draft(tag, message, remedy, _place(at), others, level, alike)
 
 
 def _place(where: Place | Origin) -> Place:

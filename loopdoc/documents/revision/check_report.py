@@ -6,7 +6,7 @@ from collections.abc import Iterator, Sequence
 
 from loopdoc.documents.basis import Basis, Page
 from loopdoc.documents.language import ENGLISH
-from loopdoc.documents.narrative.open_points import hold_rows
+from loopdoc.documents.narrative.open_points import HOLD_RULE, hold_rows
 from loopdoc.documents.schedules.schedule import A4, Column, Group, Row, Schedule, ScheduleKind, Writer, page
 from loopdoc.documents.values import DASH, shown
 from loopdoc.documents.wording import counted, listed, sentence, upper_first
@@ -32,6 +32,7 @@ COVERAGE = (
     Column("Rule", 15), Column("What it finds", 30), Column("Level", 6), Column("Checked", 6), Column("Not checked", 7),
     Column("Found", 5), Column("Why it could not be checked, and where", 31),
 )  # fmt: skip
+WHOLE = (Column("Rule", 19), Column("What it finds", 66), Column("Level", 7), Column("Checked", 8))
 POLICY = (
     Column("Threshold", 15), Column("In force", 8), Column("Default", 8), Column("Unit", 15), Column("Meaning", 28),
     Column("Source of the default", 26),
@@ -84,9 +85,13 @@ class _Report:
     def _findings(self) -> Iterator[Schedule]:
         groups = []
         for level in sorted(Level, reverse=True):
-            rows = tuple(self._finding(one) for one in self._result.findings if one.level is level)
-            if rows:
-                groups.append(Group(rows, self._writer.prose(upper_first(counted(len(rows), str(level))))))
+            found = [one for one in self._result.findings if one.level is level]
+            rows = tuple(self._finding(one) for one in found if one.rule != HOLD_RULE)
+            holds = len(found) - len(rows)
+            listed_below = f"; {holds} of them on values on hold, which are listed below" if holds else ""
+            if found:
+                heading = self._writer.prose(f"{upper_first(counted(len(found), str(level)))}{listed_below}")
+                groups.append(Group(rows, heading))
         if groups:
             yield Schedule("Open findings", FINDINGS, tuple(groups))
 
@@ -119,17 +124,27 @@ class _Report:
             yield Schedule("Values on hold", HOLDS, (Group(rows),))
 
     def _coverage(self) -> Iterator[Schedule]:
+        """Rules with something to tell first, then those that looked everywhere and found nothing."""
         found = (*self._result.findings, *self._result.accepted)
         by_id = {rule.id: rule for rule in RULES}
-        rows = []
+        open_: list[Row] = []
+        whole: list[Row] = []
+        idle: list[Row] = []
         for rule, entry in self._result.coverage.items():
-            write = self._writer
-            rows.append(Row((
-                write.plain(rule), write.plain(by_id[rule].statement), write.plain(str(by_id[rule].level)),
-                write.plain(str(entry.checked)), write.plain(str(entry.not_checked)),
-                write.plain(str(sum(one.rule == rule for one in found))), write.cell(*_reasons(entry)),
-            )))  # fmt: skip
-        yield Schedule("What was checked", COVERAGE, (Group(tuple(rows)),))
+            write, count = self._writer, sum(one.rule == rule for one in found)
+            head = (write.plain(rule), write.plain(by_id[rule].statement), write.plain(str(by_id[rule].level)),
+                    write.plain(str(entry.checked)))  # fmt: skip
+            if entry.not_checked or count:
+                counts = write.plain(str(entry.not_checked)), write.plain(str(count))
+                open_.append(Row((*head, *counts, write.cell(*_reasons(entry)))))
+            else:
+                (whole if entry.checked else idle).append(Row(head))
+        if open_:
+            yield Schedule("Checks that found something, or could not all be made", COVERAGE, (Group(tuple(open_)),))
+        quiet = (("Made wherever they apply", whole), ("Nothing in the register to which they apply", idle))
+        groups = tuple(Group(tuple(rows), self._writer.prose(heading)) for heading, rows in quiet if rows)
+        if groups:
+            yield Schedule("Checks without a finding", WHOLE, groups)
 
     def _policy(self) -> Iterator[Schedule]:
         """Thresholds that the register sets first, each strong where it is not the default."""
