@@ -3,7 +3,7 @@
   // Draws the time responses of each chain from their data: choose the upset, read the values at any time.
   const data = JSON.parse(document.getElementById("site-data").textContent);
   const SVG = "http://www.w3.org/2000/svg";
-  const WIDEST = 980, NARROWEST = 320, LEFT = 70, RIGHT = 14, TOP = 10, HEIGHTS = [250, 130], GAP = 34, BELOW = 34;
+  const WIDEST = 980, NARROWEST = 320, LEFT = 70, RIGHT = 14, TOP = 10, FIRST = 250, NEXT = 130, GAP = 34, BELOW = 34;
   const STEPS = 500;
 
   function make(parent, name, attributes, text) {
@@ -89,7 +89,8 @@
     function draw() {
       const upset = chosen();
       width = Math.min(WIDEST, Math.max(NARROWEST, plot.clientWidth));
-      const height = TOP + HEIGHTS[0] + GAP + HEIGHTS[1] + BELOW;
+      const last = upset.panels.length - 1;
+      const height = TOP + FIRST + last * (GAP + NEXT) + BELOW;
       drawing.replaceChildren();
       drawing.setAttribute("viewBox", `0 0 ${width} ${height}`);
       drawing.setAttribute("aria-label", `${upset.name}. The values stand in the table below, at the time chosen.`);
@@ -97,7 +98,7 @@
       const toX = (time) => LEFT + (width - LEFT - RIGHT) * time / end;
       const scales = [];
       upset.panels.forEach((panel, index) => {
-        const top = TOP + (index ? HEIGHTS[0] + GAP : 0), bottom = top + HEIGHTS[index];
+        const top = TOP + (index ? FIRST + GAP + (index - 1) * (NEXT + GAP) : 0), bottom = top + (index ? NEXT : FIRST);
         const curves = panel.curves.filter(isShown);
         // The scale is that of all curves: hiding one does not move the others.
         let low = Math.min(...panel.curves.flatMap((curve) => curve.y)), high = Math.max(...panel.curves.flatMap((curve) => curve.y));
@@ -113,7 +114,7 @@
         }
         for (const [value, text] of ticks(0, end)) {
           make(drawing, "line", { class: "grid", x1: toX(value), x2: toX(value), y1: top, y2: bottom });
-          if (index) make(drawing, "text", { x: toX(value), y: bottom + 16, "text-anchor": "middle" }, text);
+          if (index === last) make(drawing, "text", { x: toX(value), y: bottom + 16, "text-anchor": "middle" }, text);
         }
         make(drawing, "path", { class: "axis", d: `M${LEFT} ${top}V${bottom}H${width - RIGHT}` });
         make(drawing, "text", { x: 13, y: (top + bottom) / 2, "text-anchor": "middle", transform: `rotate(-90 13 ${(top + bottom) / 2})` }, panel.y);
@@ -127,7 +128,7 @@
           make(drawing, "path", { class: `curve ${curve.style}`, d: `M${points.join("L")}` });
         }
       });
-      cursor = { end, toX, scales, group: make(drawing, "g", {}), height, unit: upset.panels[1].x.replace(/^[^,]*,\s*/, "") };
+      cursor = { end, toX, scales, group: make(drawing, "g", {}), height, unit: upset.panels[last].x.replace(/^[^,]*,\s*/, "") };
       read();
     }
 

@@ -28,7 +28,7 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
 def run(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
     from loopdoc.engineering.comparison import compare
     from loopdoc.engineering.dynamics import Dynamics
-    from loopdoc.engineering.override import override
+    from loopdoc.engineering.override import Override, override
     from loopdoc.engineering.pairing import Plant
     from loopdoc.engineering.split_range import SplitRange, split_range
     from loopdoc.engineering.tuning_review import review, reviewed_loops
@@ -57,12 +57,15 @@ def run(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
             stderr.write(f"loopdoc: nothing to draw for {loop.tag}: {loop.reason}\n")
             return EXIT_UNREADABLE
         from loopdoc.documents.plot_output import save
+        from loopdoc.documents.responses.override_story import override_figure
         from loopdoc.documents.responses.response_figure import drawings
         from loopdoc.documents.responses.split_range_story import split_figure
 
         drawn = drawings(plant, loop.chains, comparisons)
         if isinstance(split, SplitRange):
             drawn.insert(0, split_figure(plant, split))
+        if isinstance(rivals, Override):
+            drawn.insert(0, override_figure(plant, rivals))
         try:
             save(drawn, arguments.plot)
         except ValueError as error:

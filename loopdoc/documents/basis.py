@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass, field, replace
-from typing import Any
+from typing import Any, TypeVar
 
 from loopdoc.documents.handover.house import NO_HOUSE, House
 from loopdoc.documents.language import ENGLISH, LANGUAGES, Language
@@ -12,6 +12,7 @@ from loopdoc.documents.titleblock import FINGERPRINT_DIGITS, Document, document,
 from loopdoc.documents.tracing import traced
 from loopdoc.engineering.comparison import Comparison, NotSimulated, compare
 from loopdoc.engineering.dynamics import ChainDynamics, Dynamics
+from loopdoc.engineering.override import Override, override, selector_of
 from loopdoc.engineering.pairing import Plant
 from loopdoc.engineering.split_range import SplitRange, split_range
 from loopdoc.engineering.time_to_act import TimeToAct
@@ -19,6 +20,8 @@ from loopdoc.register.load import Loaded
 from loopdoc.register.records import LoopRecord
 from loopdoc.rules.check import check
 from loopdoc.rules.finding import CheckResult
+
+Whole = TypeVar("Whole", SplitRange, Override)
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -44,6 +47,7 @@ class Basis:
     """From alarm to trip under each upset, calculated at the first question."""
     _compared: dict[ChainDynamics, Comparison | NotSimulated] = field(default_factory=dict, repr=False)
     _split: dict[str, SplitRange | NotSimulated | None] = field(default_factory=dict, repr=False)
+    _override: dict[str, Override | NotSimulated | None] = field(default_factory=dict, repr=False)
     _drawn: dict[tuple[object, str], str] = field(default_factory=dict, repr=False)
     _pages: dict[str, tuple[Page, ...]] = field(default_factory=dict, repr=False)
 
@@ -92,11 +96,21 @@ class Basis:
             self._split[tag] = split_range(self.dynamics.loop(tag).chains)
         return self._split[tag]
 
-    def drawn_split(self, split: SplitRange, draw: Callable[[SplitRange], str], language: Language = ENGLISH) -> str:
-        """The figure of a split range as a whole, drawn once for all documents."""
-        key = split, language.code
+    def override(self, tag: str) -> Override | NotSimulated | None:
+        """Responses of the override that a loop is a candidate of, simulated once; None where it is of none."""
+        controlled = self.plant.controlled.get(tag)
+        selector = selector_of(controlled) if controlled else None
+        if selector is None:
+            return None
+        if selector.tag not in self._override:
+            self._override[selector.tag] = override(self.plant, self.dynamics, tag)
+        return self._override[selector.tag]
+
+    def drawn_whole(self, whole: Whole, draw: Callable[[Whole], str], language: Language = ENGLISH) -> str:
+        """The figure of a split range or an override, drawn once for all documents."""
+        key = whole, language.code
         if key not in self._drawn:
-            self._drawn[key] = draw(split)
+            self._drawn[key] = draw(whole)
         return self._drawn[key]
 
     def _unchanged(self, chain: ChainDynamics) -> ChainDynamics | None:

@@ -13,6 +13,7 @@ from loopdoc.documents.language import ENGLISH, Language
 from loopdoc.documents.magnitudes import TIME_UNITS, change, duration, number
 from loopdoc.documents.plots import Curve, Drawing, Panel
 from loopdoc.documents.responses.response_figure import COLUMNS, in_units, loop_limits
+from loopdoc.documents.responses.upset_story import standard
 from loopdoc.documents.values import DASH
 from loopdoc.documents.wording import sentences, upper_first
 from loopdoc.engineering.branched_simulation import BranchedResponse
@@ -39,13 +40,13 @@ def override_upset(found: Override, entry: OverrideResponses, language: Language
         normal = found.loops[found.normal]
         own, loop = measured_range(normal), found.structure.loops[found.below + found.normal]
         limit = own.low + (loop.start_pct + scenario.setpoint_step_pct) * own.span / 100.0
-        told = language.with_unit(limit, own.unit.display)
+        told = standard(language.with_unit(limit, own.unit.display), normal.tag, language)
         return language.setpoint_as_far(normal.tag, told, up=scenario.setpoint_step_pct > 0.0)
     if scenario.origin == "declared":
         return language.upset_declared(scenario.name, _moved(found, entry))
     tag = _moved(found, entry)
     named = language.upset_at_input if _integrates(found, entry) else language.upset_at
-    return named(_size(found, entry, language), tag)
+    return named(standard(_size(found, entry, language), tag, language), tag)
 
 
 def _moved(found: Override, entry: OverrideResponses) -> str:
@@ -110,10 +111,10 @@ def override_panels(
     own = _asked_range(found)
     asked = [
         Curve(found.loops[place].tag, style, time, in_units(response.output_pct[found.below + place], own))
-        for place, style in ((found.normal, "dashed"), (idle, "points"))
+        for place, style in ((found.normal, "dashed"), (idle, "dotted"))
     ]
     passed = Curve(language.label("passed"), "solid", time, in_units(_passed(found, response), own))
-    what = f"{found.end.tag}, {language.unit(own.unit.display)}"
+    what = language.asked_of(found.end.tag, language.unit(own.unit.display))
     below = Panel("", language.panel_time(time_unit), what, (*asked, passed))
     return above, panels[1], below
 
@@ -186,7 +187,10 @@ def _told(found: Override, language: Language) -> Iterator[str]:
     normal = found.loops[found.normal].tag
     for place in found.standing_by:
         loop, lead = found.structure.loops[found.below + place], found.loops[place]
-        distance = language.change(abs(loop.start_error_pct), measured_range(lead))
+        distance = language.calculated(
+            language.change(abs(loop.start_error_pct), measured_range(lead)), lead.tag,
+            language.label("Distance from the setpoint"), language.by_simulation(),
+        )  # fmt: skip
         yield language.override_stands_by(lead.tag, distance, normal, below=loop.start_error_pct > 0.0)
     given = [entry for entry in found.responses if entry.scenario.origin != "sized"]
     brought = False
@@ -206,23 +210,32 @@ def _told(found: Override, language: Language) -> Iterator[str]:
 
 
 def _takes_over(found: Override, entry: OverrideResponses, place: int, language: Language) -> Iterator[str]:
-    own = measured_range(found.loops[place])
+    own, tag, by = measured_range(found.loops[place]), found.loops[place].tag, language.by_simulation()
+
+    def time(seconds: float) -> str:
+        return language.calculated(language.duration(seconds), tag, language.label("Time to take over"), by)
+
+    def past(percent: float) -> str:
+        return language.calculated(language.change(percent, own), tag, language.label("Past the setpoint"), by)
+
     seen = found.taken_over(entry.as_written, place)
     yield language.override_takes_over(
         override_upset(found, entry, language),
-        found.loops[place].tag,
-        language.duration(seen.spell.first_s),
-        language.change(seen.past_pct, own),
+        tag,
+        time(seen.spell.first_s),
+        past(seen.past_pct),
         language.how_followed(found.follows(place)),
     )
     if math.isfinite(seen.gives_back_s) and math.isfinite(entry.scenario.lasts_s):
         back_s = seen.gives_back_s - entry.scenario.lasts_s
-        yield language.override_gives_back(found.loops[found.normal].tag, language.duration(max(0.0, back_s)))
+        back = language.duration(max(0.0, back_s))
+        back = language.calculated(back, tag, language.label("Time to give back"), by)
+        yield language.override_gives_back(found.loops[found.normal].tag, back)
     other = found.taken_over(entry.otherwise, place)
     yield language.override_otherwise(
         language.how_followed(found.follows(place, as_written=False)),
-        language.duration(other.spell.first_s) if other.takes_over else "",
-        language.change(other.past_pct, own),
+        time(other.spell.first_s) if other.takes_over else "",
+        past(other.past_pct),
     )
 
 

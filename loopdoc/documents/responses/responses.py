@@ -15,6 +15,12 @@ from loopdoc.documents.narrative.narrative import Supplement
 from loopdoc.documents.page_fit import foot
 from loopdoc.documents.plot_output import to_svg
 from loopdoc.documents.responses.frequency_plot import frequency_caption, frequency_drawing
+from loopdoc.documents.responses.override_story import (
+    override_caption,
+    override_figure,
+    override_section,
+    override_told,
+)
 from loopdoc.documents.responses.response_figure import caption, figure, whole_caption
 from loopdoc.documents.responses.split_range_story import split_caption, split_figure, split_section, split_told
 from loopdoc.documents.responses.upset_story import declared_upsets, single_loop_assumption, told_of, upset_name
@@ -25,6 +31,7 @@ from loopdoc.engineering.comparison import Comparison, NotSimulated
 from loopdoc.engineering.dynamics import ChainDynamics
 from loopdoc.engineering.frequency import speed_ratio
 from loopdoc.engineering.functions import fed_by
+from loopdoc.engineering.override import Override
 from loopdoc.engineering.pairing import Plant, Scheme
 from loopdoc.engineering.setpoint_steps import steps_told
 from loopdoc.engineering.split_range import SplitRange
@@ -56,7 +63,7 @@ def supplements(basis: Basis) -> dict[str, Supplement]:
     found = {}
     for scheme in basis.plant.schemes:
         chains, language = scheme_chains(basis, scheme), basis.language
-        splits = split_ranges(basis, chains)
+        splits, rivals = split_ranges(basis, chains), overrides(basis, scheme)
         whole = {dynamics for split in splits for dynamics in split.chains}
         all_chains = [basis.comparison(chain) for chain in chains]
         compared = [comparison for comparison in all_chains if isinstance(comparison, Comparison)]
@@ -65,23 +72,29 @@ def supplements(basis: Basis) -> dict[str, Supplement]:
         if compared:
             branches = [one for one in compared if one.dynamics in whole]
             found[scheme.lead.tag] = Supplement(
-                partial(_benefit, alone, splits, branches),
+                partial(_benefit, alone, splits, branches, rivals),
                 (
                     *(Figure(_drawn(basis, one.dynamics, language), whole_caption(one, language)) for one in alone),
                     *(Figure(_drawn_split(basis, one, language), split_caption(one, language)) for one in splits),
+                    *(Figure(_drawn_override(basis, one, language), override_caption(one, language)) for one in rivals),
                 ),
             )
     return found
 
 
 def _benefit(
-    alone: Sequence[Comparison], splits: Sequence[SplitRange], branches: Sequence[Comparison], language: Language
+    alone: Sequence[Comparison],
+    splits: Sequence[SplitRange],
+    branches: Sequence[Comparison],
+    rivals: Sequence[Override],
+    language: Language,
 ) -> str:
-    """What is told of the responses of a scheme: its chains, its split ranges, and what is declared to upset these."""
+    """What is told of the responses of a scheme: its chains, its split ranges and their upsets, its overrides."""
     told = [sentence for comparison in alone for sentence in told_of(comparison, language)]
     told += [split_told(split, language) for split in splits]
     # A disturbance stands on every branch alike, and is told once.
     told += dict.fromkeys(declared_upsets(one.dynamics, one, language) for one in branches)
+    told += [override_told(found, language) for found in rivals]
     return " ".join(filter(None, told))
 
 
@@ -90,7 +103,11 @@ def _drawn(basis: Basis, dynamics: ChainDynamics, language: Language = ENGLISH) 
 
 
 def _drawn_split(basis: Basis, split: SplitRange, language: Language = ENGLISH) -> str:
-    return basis.drawn_split(split, lambda one: to_svg(split_figure(basis.plant, one, language)), language)
+    return basis.drawn_whole(split, lambda one: to_svg(split_figure(basis.plant, one, language)), language)
+
+
+def _drawn_override(basis: Basis, found: Override, language: Language = ENGLISH) -> str:
+    return basis.drawn_whole(found, lambda one: to_svg(override_figure(basis.plant, one, language)), language)
 
 
 def split_ranges(basis: Basis, chains: Sequence[ChainDynamics]) -> list[SplitRange]:
@@ -98,6 +115,23 @@ def split_ranges(basis: Basis, chains: Sequence[ChainDynamics]) -> list[SplitRan
     leads = dict.fromkeys(dynamics.chain.lead.tag for dynamics in chains)
     wholes = (basis.split_range(tag) for tag in leads)
     return [whole for whole in wholes if isinstance(whole, SplitRange)]
+
+
+def overrides(basis: Basis, scheme: Scheme) -> list[Override]:
+    """The overrides of a scheme, each as a whole, where they can be simulated."""
+    found = {
+        whole.function.tag: whole
+        for loop in scheme.loops
+        if isinstance(whole := basis.override(loop.tag), Override)
+    }
+    return list(found.values())
+
+
+def _not_whole(basis: Basis, scheme: Scheme) -> list[str]:
+    """Why a split range or an override of a scheme is not simulated as a whole, in sentences."""
+    wholes = [whole for loop in scheme.loops for whole in (basis.split_range(loop.tag), basis.override(loop.tag))]
+    reasons = dict.fromkeys(whole.reason for whole in wholes if isinstance(whole, NotSimulated))
+    return [sentences(f"No response is drawn of the whole: {reason}") for reason in reasons]
 
 
 def scheme_chains(basis: Basis, scheme: Scheme) -> list[ChainDynamics]:
@@ -129,6 +163,8 @@ def _page(basis: Basis, scheme: Scheme, chains: list[ChainDynamics]) -> Page:
     view = {
         "sections": [section(basis, chain, several=len(chains) > 1) for chain in chains],
         "splits": [split_section(split, _drawn_split(basis, split)) for split in split_ranges(basis, chains)],
+        "overrides": [override_section(one, _drawn_override(basis, one)) for one in overrides(basis, scheme)],
+        "not_whole": _not_whole(basis, scheme),
         **review_section(basis, scheme),
         "foot": foot(document),
     }

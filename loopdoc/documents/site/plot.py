@@ -7,11 +7,14 @@ from typing import Any
 
 import numpy as np
 
+from loopdoc.documents.language import ENGLISH
 from loopdoc.documents.plots import Curve, Panel
+from loopdoc.documents.responses.override_story import override_panels, override_upset
 from loopdoc.documents.responses.response_figure import panels
 from loopdoc.documents.responses.split_range_story import split_panels, split_upset
 from loopdoc.documents.responses.upset_story import upset_name
 from loopdoc.engineering.comparison import Comparison
+from loopdoc.engineering.override import Override
 from loopdoc.engineering.pairing import Plant
 from loopdoc.engineering.process import FloatArray
 from loopdoc.engineering.split_range import SplitRange
@@ -46,6 +49,22 @@ def split_plot_data(plant: Plant, split: SplitRange) -> dict[str, Any]:
                 "panels": [_panel(panel) for panel in split_panels(plant, split, response)],
             }
             for response in split.responses
+        ],
+    }
+
+
+def override_plot_data(plant: Plant, found: Override) -> dict[str, Any]:
+    """The responses of an override as a whole, as written and the other way."""
+    return {
+        "tag": found.function.tag,
+        "upsets": [
+            {
+                "name": f"{override_upset(found, entry).rstrip(',')}, "
+                f"{ENGLISH.how_followed(found.follows(found.normal, as_written=as_written))}",
+                "panels": [_panel(panel) for panel in override_panels(plant, found, entry, as_written=as_written)],
+            }
+            for entry in found.responses
+            for as_written in (True, False)
         ],
     }
 

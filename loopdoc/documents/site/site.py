@@ -12,12 +12,12 @@ from markupsafe import Markup
 
 from loopdoc.documents.basis import Basis, Page
 from loopdoc.documents.language import ENGLISH
-from loopdoc.documents.responses.responses import scheme_chains, split_ranges
+from loopdoc.documents.responses.responses import overrides, scheme_chains, split_ranges
 from loopdoc.documents.schedules.effects import MARKS, MODES
 from loopdoc.documents.site.around import ROOT, Around, Entry, Link, is_told_apart
 from loopdoc.documents.site.index import Choice, choices, index_rows
 from loopdoc.documents.site.places import PER_LOOP, SCHEMES, Issue, Places, address, path_of
-from loopdoc.documents.site.plot import plot_data, split_plot_data
+from loopdoc.documents.site.plot import override_plot_data, plot_data, split_plot_data
 from loopdoc.documents.site.points import NotMade, Point, Points, all_points
 from loopdoc.documents.site.script import data_block, policy, script
 from loopdoc.documents.site.source import Excerpt, Marked, Sources
@@ -118,6 +118,7 @@ class Site:
                 compared = [self._basis.comparison(chain) for chain in chains]
                 data = [plot_data(self._basis.plant, one) if isinstance(one, Comparison) else None for one in compared]
                 data += [split_plot_data(self._basis.plant, one) for one in split_ranges(self._basis, chains)]
+                data += [override_plot_data(self._basis.plant, one) for one in overrides(self._basis, scheme)]
             return self._frame(
                 kind, page, about=loop.tag, unit=unit_of(loop), around=self._around.loop(loop, path_of(page)),
                 beside=self._neighbours(loop, kind), data=data or None,

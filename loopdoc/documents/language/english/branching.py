@@ -117,8 +117,10 @@ class EnglishBranching(EnglishGrammar):
         return f"{upset} does not bring {tag} into command"
 
     def override_nothing_given(self, tags: Sequence[str]) -> str:
-        """That the register gives no upset that would."""
-        return f"The register gives no upset that brings {self.either(tags)} into command"
+        """That nothing in the register does, before an upset that is sized to do it."""
+        return (
+            f"Nothing that the register gives brings {self.either(tags)} into command; the next upset is sized to do it"
+        )
 
     def override_takes_over(self, upset: str, tag: str, after: str, past: str, how: str) -> str:
         """An upset that does; ``how`` the controllers follow."""
@@ -136,6 +138,10 @@ class EnglishBranching(EnglishGrammar):
         if not after:
             return f"For comparison: {how} it would not take over, and its measurement would go past by {past}"
         return f"For comparison: {how} it would take over after {after} and let its measurement go past by {past}"
+
+    def asked_of(self, tag: str, unit: str) -> str:
+        """The axis of what is asked of a loop or a final element."""
+        return f"asked of {tag}, {unit}"
 
     def override_caption(self, tags: Sequence[str], function: str, *, lowest: bool) -> str:
         """What a figure shows, and under which assumptions."""

@@ -103,7 +103,10 @@ class GermanBranching(GermanGrammar, EnglishBranching):
         return f"{upset}: {tag} übernimmt nicht"
 
     def override_nothing_given(self, tags: Sequence[str]) -> str:
-        return f"Das Register gibt keine Störung an, bei der {self.either(tags)} übernähme"
+        return (
+            f"Nichts, was das Register angibt, lässt {self.either(tags)} übernehmen; die folgende Störung ist dafür "
+            "bemessen"
+        )
 
     def override_takes_over(self, upset: str, tag: str, after: str, past: str, how: str) -> str:
         return (
@@ -117,6 +120,9 @@ class GermanBranching(GermanGrammar, EnglishBranching):
     def override_otherwise(self, how: str, after: str, past: str) -> str:
         takes = f"übernähme er nach {after}" if after else "übernähme er nicht"
         return f"Zum Vergleich: {how} {takes}, und sein Messwert geriete um {past} über den Sollwert hinaus"
+
+    def asked_of(self, tag: str, unit: str) -> str:
+        return f"Vorgabe an {tag}, {unit}"
 
     def override_caption(self, tags: Sequence[str], function: str, *, lowest: bool) -> str:
         return (
