@@ -36,6 +36,7 @@ from loopdoc.documents.loop_sheet.loop_rows import (
     element_forcing_lines,
     element_words,
     forcing_height,
+    height_of,
     initiated_lines,
     input_offsets,
     kind_words,
@@ -86,7 +87,7 @@ def drawn_loop(plant: Plant, tag: str, language: Language) -> DrawnLoop:
     loop = plant.register.loops[tag]
     rows = rows_of(plant, loop, language)
     parts = [row.part for row in rows]
-    height = rows[-1].y + rows[-1].below + 4
+    height = height_of(rows)
     way = ", ".join(filter(None, (_tag_of(part) for part in parts)))
     elements = (part.element for part in parts if isinstance(part, Element | Secondary))
     return DrawnLoop(

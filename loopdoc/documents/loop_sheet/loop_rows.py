@@ -36,6 +36,8 @@ _TOP = 18.0
 _CLEAR = 13.0
 """Least height left between two rows for the words on the link, or for the link to change its column [pt]."""
 _APART = 5.0
+_CHANNEL_ABOVE, _CHANNEL_BELOW = 10.0, 15.0
+"""What a channel needs with the words above and below its signal [pt]."""
 _FIELD_BELOW = 31.0
 """What the pipe or vessel below a transmitter needs [pt]."""
 _INPUT_DEPTH = 34.0
@@ -117,9 +119,11 @@ class Row:
 
     part: Part
     above: float
-    """Height that it needs above its signal line [pt]."""
+    """Height that it needs above its signal line in the control system and at the operator's station [pt]."""
     below: float
-    """Height that it needs below [pt]."""
+    """Height that it needs below, there [pt]."""
+    field: tuple[float, float] | None = None
+    """The same above and below in the field and at the boxes; None where it has nothing there [pt]."""
     label: str = ""
     """Words on the link from the row above."""
     y: float = 0.0
@@ -134,14 +138,23 @@ def rows_of(plant: Plant, loop: Loop, language: Language) -> tuple[Row, ...]:
     labels = [row.label for row in upward[1:]] + [""] if upward else []
     above = [replace(row, label=label) for row, label in zip(upward, labels, strict=True)]
     placed: list[Row] = []
+    field_end = _TOP - _APART
     for row in (*reversed(above), own, *_downward(plant, loop, language)):
         y = _TOP + row.above
         if placed:
             last = placed[-1]
             turns = isinstance(last.part, Block) != isinstance(row.part, Block)
             y = last.y + last.below + row.above + (_CLEAR if row.label or turns else _APART)
+        if row.field:
+            y = max(y, field_end + _APART + row.field[0])
+            field_end = y + row.field[1]
         placed.append(replace(row, y=y))
     return tuple(placed)
+
+
+def height_of(rows: tuple[Row, ...]) -> float:
+    """Height of a drawing with these rows [pt]."""
+    return max(row.y + max(row.below, row.field[1] if row.field else 0.0) for row in rows) + 4
 
 
 def _upward(plant: Plant, loop: Loop, language: Language) -> list[Row]:
@@ -162,7 +175,7 @@ def _upward(plant: Plant, loop: Loop, language: Language) -> list[Row]:
         seen.add(main)
         if main in register.loops:
             primary = register.loops[main]
-            rows.append(Row(Primary(primary), BUBBLE + 2, BUBBLE + 2, demand_words(primary, language)))
+            rows.append(Row(Primary(primary), BUBBLE + 2, BUBBLE + 2, label=demand_words(primary, language)))
             return rows
         rows.append(_block_row(plant, register.functions[main], (), language.label("setpoint"), language))
         target = main
@@ -175,11 +188,12 @@ def _own_row(plant: Plant, loop: Loop, language: Language, label: str) -> Row:
     tapped = 30.0 if measurement and initiated_lines(plant, loop) else 0.0
     wires = wiring_extent(stops_of(measurement.wiring, language)) if measurement else (0.0, 0.0)
     forced = len(controller_forcing_lines(plant, loop, language))
-    above = max(BUBBLE + 2, 8 + high * LEADING, tapped, wires[0])
-    below = max(BUBBLE + 3, measurement_depth(measurement, language), 12 + low * LEADING, wires[1])
+    above = max(BUBBLE + 2, 8 + high * LEADING, tapped)
+    below = max(BUBBLE + 3, 12 + low * LEADING)
     if forced:
         below = max(below, FORCED_BELOW + max(2 * DIAMOND, forced * LEADING) + 3)
-    return Row(Own(loop), above, below, label)
+    field = (max(BUBBLE + 2, wires[0]), max(measurement_depth(measurement, language), wires[1]))
+    return Row(Own(loop), above, below, field if measurement else None, label)
 
 
 def _downward(plant: Plant, loop: Loop, language: Language) -> Iterator[Row]:
@@ -217,12 +231,14 @@ def _block_row(plant: Plant, function: Function, beside: tuple[str, ...], label:
     side = BUBBLE + 2 + (drawn - 1) * BESIDE_DISTANCE / 2 if drawn else 0.0
     words = LEADING * len(block_words(function, BLOCK_WIDTH, language))
     if not function.inputs:
-        return Row(Block(function, beside), *2 * (max(BLOCK + 2, side, words / 2 + 2),), label)
+        extent = max(BLOCK + 2, side, words / 2 + 2)
+        return Row(Block(function, beside), extent, extent, label=label)
     entering = [measurement_of(plant, tag) for tag in function.inputs]
     wires = [wiring_extent(stops_of(found.wiring, language)) if found else (0.0, 0.0) for found in entering]
-    inputs = input_offsets(plant, function, language)[-1] + max(_input_depth(entering[-1], language), wires[-1][1])
-    above = max(BUBBLE + 2, side, words + WORDS_ABOVE, wires[0][0])
-    return Row(Block(function, beside), above, max(BLOCK + 2, side, inputs), label)
+    last = input_offsets(plant, function, language)[-1]
+    below = max(BLOCK + 2, side, last + _CHANNEL_BELOW)
+    field = (max(BUBBLE + 2, wires[0][0]), last + max(_input_depth(entering[-1], language), wires[-1][1]))
+    return Row(Block(function, beside), max(side, words + WORDS_ABOVE), below, field, label)
 
 
 def input_offsets(plant: Plant, function: Function, language: Language) -> tuple[float, ...]:
@@ -250,21 +266,30 @@ def measurement_of(plant: Plant, tag: str) -> Measurement | None:
 
 
 def _element_row(plant: Plant, part: Element, language: Language) -> Row:
-    above, below = _element_extent(plant, part.element, language)
-    return Row(part, above, below)
+    return Row(
+        part,
+        *_element_in_the_system(plant, part.element, language),
+        _element_in_the_field(plant, part.element, language),
+    )
 
 
-def _element_extent(plant: Plant, element: FinalElement, language: Language) -> tuple[float, float]:
+def _element_in_the_field(plant: Plant, element: FinalElement, language: Language) -> tuple[float, float]:
+    """Height above and below the signal of a final element in the field and at the boxes [pt]."""
     words = 5 + LEADING * len(element_words(element, language))
     wires = wiring_extent(stops_of(element.wiring, language))
-    forced = forcing_height(plant, element, language)
-    solenoid = known(element.trip_solenoid)
+    above, solenoid = forcing_height(plant, element, language), known(element.trip_solenoid)
     if solenoid:
-        forced = solenoid_rise(element, language) + max(
-            12.0, WORDS_ABOVE + LEADING * len(element_forcing_lines(plant, element, language)),
-            wiring_extent(stops_of(solenoid.wiring, language))[0],
-        )  # fmt: skip
-    return max(12.0, forced, wires[0]), max(28.0, words, wires[1])
+        wires_of_it = wiring_extent(stops_of(solenoid.wiring, language))
+        above = solenoid_rise(element, language) + max(12.0, wires_of_it[0])
+    return max(12.0, above, wires[0]), max(28.0, words, wires[1])
+
+
+def _element_in_the_system(plant: Plant, element: FinalElement, language: Language) -> tuple[float, float]:
+    """The same in the control system [pt]."""
+    if not known(element.trip_solenoid):
+        return _CHANNEL_ABOVE, _CHANNEL_BELOW
+    forced = WORDS_ABOVE + LEADING * len(element_forcing_lines(plant, element, language))
+    return solenoid_rise(element, language) + forced, _CHANNEL_BELOW
 
 
 def solenoid_rise(element: FinalElement, language: Language) -> float:
@@ -279,9 +304,10 @@ def _secondary_row(plant: Plant, loop: Loop, label: str, language: Language) -> 
     output = known(controller.output) if controller else None
     to = known(output.to) if output else None
     element = plant.register.final_elements.get(to) if to else None
-    above, below = _element_extent(plant, element, language) if element else (0.0, 0.0)
+    above, below = _element_in_the_system(plant, element, language) if element else (0.0, 0.0)
+    field = _element_in_the_field(plant, element, language) if element else None
     part = Secondary(loop, element, "" if element else to or "")
-    return Row(part, max(BUBBLE + 2, above), max(BUBBLE + 3, below), label)
+    return Row(part, max(BUBBLE + 2, above), max(BUBBLE + 3, below), field, label)
 
 
 # ---------------------------------------------------------------- words
