@@ -14,6 +14,7 @@ from markdown_it import MarkdownIt
 from markdown_it.token import Token
 
 from loopdoc.exchange.escaping import as_code, for_json, for_line, for_markdown, for_terminal, for_xml
+from loopdoc.register.quantity import display_number
 
 # Cc control, Cf format (with the bidirectional marks), Cs surrogates, Co private use, Cn not a character, Zl and Zp.
 OBEYED = {"Cc", "Cf", "Cs", "Co", "Cn", "Zl", "Zp"}
@@ -49,6 +50,11 @@ def test_a_line_is_one_line_of_visible_text(text: str) -> None:
     assert {unicodedata.category(character) for character in shown} & OBEYED == set()
     assert len(shown.splitlines()) <= 1
     assert for_line(shown) == shown
+
+
+def test_a_power_of_ten_is_shown_as_it_is_printed() -> None:
+    assert for_terminal(f"IAE {display_number(1.2e13, 3)} %") == "IAE 1.2 × 10¹³ %"
+    assert for_terminal("5\u00a0t/h") == "5\\u00a0t/h"
 
 
 def test_plain_text_in_any_script_stays_as_it_is() -> None:

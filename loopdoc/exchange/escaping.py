@@ -12,6 +12,8 @@ import re
 from typing import Any
 
 _SUSPECT = re.compile(r"[^\n -~]+")
+# As a calculated number is printed; the spaces that keep a document from breaking it have no meaning in a terminal.
+_POWER_OF_TEN = re.compile("(?<=\\d)\u00a0×\u00a0(?=10)")
 # Build servers take these for commands in any line that is printed, wherever in the line the second one stands.
 _LOG_COMMAND = re.compile(r"^([ \t]*):(?=:)|#(?=#[\w-]*\[)", re.MULTILINE)
 _MARKDOWN = re.compile(
@@ -27,7 +29,8 @@ _ZERO_WIDTH = "&#8203;"
 
 def for_terminal(text: str) -> str:
     """Text in lines that a terminal or a build log shows and does not obey."""
-    return _LOG_COMMAND.sub(_log_command, _SUSPECT.sub(_written_out, text))
+    plain = _POWER_OF_TEN.sub(" × ", text)
+    return _LOG_COMMAND.sub(_log_command, _SUSPECT.sub(_written_out, plain))
 
 
 def for_line(text: str) -> str:

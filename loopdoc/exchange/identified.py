@@ -384,9 +384,13 @@ def _residual_lines(found: Identified) -> list[str]:
     compared = ", ".join(f"{other.name} {_signed(other.criterion)}" for other in others)
     return [
         f"residuals: {noise} (standard deviations); Durbin-Watson {display_number(leftover.durbin_watson, 2)}, "
-        f"Ljung-Box probability once whitened {display_number(leftover.white_probability, 2)}",
+        f"Ljung-Box probability once whitened {_probability(leftover.white_probability)}",
         f"Bayesian information criterion above that of {first.name}: {compared}",
     ]
+
+
+def _probability(value: float) -> str:
+    return display_number(value, 2) if value >= 0.001 else "below 0.001"
 
 
 def _signed(value: float) -> str:
