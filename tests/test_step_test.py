@@ -5,6 +5,7 @@ from __future__ import annotations
 import io
 import json
 import math
+import re
 from pathlib import Path
 
 import numpy as np
@@ -482,3 +483,11 @@ def test_the_plot_is_drawn(folder: Path) -> None:
     title = "TIC-2014: step test 2026-05-14, file a.csv"
     for words in (title, "residual, °C", "measurement, °C", "FIC-2011, t/h", "fit"):
         assert f">{words}<" in drawn
+    _, out, _ = called("identify", folder, data, "--tag", "TIC-2014")
+    gain = next(line for line in out.splitlines() if line.startswith("    gain")).split()
+    told = " ".join(re.sub(r"<[^>]*>", " ", drawn).split())
+    assert f"One lag: gain {gain[1]} degC per t/h, lag" in told
+    assert f"95 % intervals: gain {gain[5]} to {gain[7]} degC per t/h, lag" in told
+    still = a_file(folder, "time,output [%],measurement [degC]", (30.0, 30.0), 0.55, 60.0)
+    called("identify", folder, still, "--tag", "TIC-2014", "--plot", folder / "b.svg")
+    assert "No model: the output never moves" in (folder / "b.svg").read_text("utf-8")

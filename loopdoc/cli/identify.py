@@ -55,7 +55,7 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
 def run(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
     from loopdoc.engineering.stages import Lacking
     from loopdoc.exchange.escaping import for_terminal
-    from loopdoc.exchange.identified import identified, identified_json, identified_text, write_into
+    from loopdoc.exchange.identified import identified, identified_json, identified_text, plot_caption, write_into
     from loopdoc.exchange.step_test import MAX_BYTES, read_step_test
     from loopdoc.register.place import Fault, Place
 
@@ -84,6 +84,7 @@ def run(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
 
         drawing = step_test_drawing(
             found.plot_title,
+            plot_caption(found),
             time_s=test.time_s,
             measurement=found.measurement,
             measurement_unit=found.measurement_unit.display,

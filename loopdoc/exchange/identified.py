@@ -288,6 +288,21 @@ def _line_of(content: bytes, name: str, path: tuple[str, ...]) -> tuple[int, int
     return place.line, place.column
 
 
+def plot_caption(found: Identified) -> str:
+    """The model with its intervals, or why there is none, for the plot."""
+    result = found.result
+    if result.model is None:
+        return f"No model: {'; '.join(result.refusals)}."
+    figures, noise = _figures(found, result.model), result.leftover.noise if result.leftover else 0.0
+    values = [f"gain {figures.gain.quantity}", *(f"lag {lag.quantity}" for lag in figures.lags)]
+    values.append(f"dead time {figures.dead_time.quantity}")
+    return (
+        f"{result.model.name[0].upper()}{result.model.name[1:]}: {', '.join(values)}; 95 % intervals: "
+        f"{_intervals(figures)}. Noise {display_number(noise, 2)} {_difference(found.measurement_unit)} (standard "
+        "deviation); a drift is fitted with the model. What was moved holds until the next sample."
+    )
+
+
 def _intervals(figures: _Figures) -> str:
     parts = [f"gain {figures.gain.interval}"]
     parts += [f"lag {lag.interval}" for lag in figures.lags]

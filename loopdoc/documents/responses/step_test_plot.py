@@ -14,6 +14,7 @@ TIME_UNITS = ((7200.0, 3600.0, "h"), (600.0, 60.0, "min"), (0.0, 1.0, "s"))
 
 def step_test_drawing(
     title: str,
+    caption: str,
     *,
     time_s: FloatArray,
     measurement: FloatArray,
@@ -40,4 +41,4 @@ def step_test_drawing(
     corners = np.concatenate(([0], np.repeat(changes, 2), [len(moved) - 1]))
     held = np.concatenate(([moved[0]], np.column_stack((moved[changes - 1], moved[changes])).ravel(), [moved[-1]]))
     below = (Panel("", axis, moved_label, (Curve("", "solid", t[corners], held),)),)
-    return Drawing(title, (above, *residual, below))
+    return Drawing(title, (above, *residual, below), caption)
