@@ -241,6 +241,33 @@ def test_ultimate_points(process: Process, gain: float, period: float) -> None:
     assert (point.gain, point.period_s) == pytest.approx((gain, period), rel=5e-7)
 
 
+@pytest.mark.parametrize(
+    ("process", "pi", "pid"),
+    [
+        (Process(1.0, (1.0, 1.0, 1.0)), (3.6, 3.023), (4.8, 1.8138, 0.45345)),
+        # Seborg prints Kcu = 7.88 and Pu = 11.6 for it (from memory).
+        (Process(2.0, (10.0, 5.0), 1.0), (3.54405, 9.71656), (4.7254, 5.82994, 1.45748)),
+        (Process(1.0, (10.0,), 2.0), (3.82609, 6.20127), (5.10145, 3.72076, 0.93019)),
+    ],
+)
+def test_ziegler_nichols_from_the_process(
+    process: Process, pi: tuple[float, ...], pid: tuple[float, ...]
+) -> None:
+    point = ultimate_point(process)
+    # Five decimals, or four digits.
+    assert values(ziegler_nichols_ultimate(point, "PI")) == pytest.approx(pi, abs=6e-6, rel=5e-5)
+    assert values(ziegler_nichols_ultimate(point, "PID")) == pytest.approx(pid, abs=6e-6, rel=5e-5)
+
+
+def test_margins_of_tyreus_luyben_on_an_integrator_with_dead_time() -> None:
+    # exp(-s)/s: Ku = pi/2, Pu = 4; the margins of its PI computed from the frequency response (four digits).
+    process = Process(1.0, (), 1.0, integrating=True)
+    settings = tyreus_luyben(ultimate_point(process), "PI")
+    margins = analyse_chain([LoopStage(Controller(settings.gain, settings.reset_s), process)])[0]
+    found = (margins.gain_margin, margins.phase_margin_deg, margins.max_sensitivity)
+    assert found == pytest.approx((3.037, 48.44, 1.672), rel=3e-4)
+
+
 def test_a_process_that_never_oscillates_has_no_ultimate_point() -> None:
     with pytest.raises(ValueError, match="never reaches -180 degrees"):
         ultimate_point(Process(1.0, (10.0, 2.0)))
