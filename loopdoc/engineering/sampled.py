@@ -372,26 +372,10 @@ def _survey(
 
 
 def quoted_margins(chains: Sequence[Sequence[LoopStage]]) -> tuple[tuple[Margins, ...], ...]:
-    """Margins of every level of many chains, from the sampled loop where half an interval does not stand for it.
+    """Margins as `loopdoc.engineering.frequency.analyse_chains`, sampled where half an interval does not stand for it.
 
-    As `loopdoc.engineering.frequency.analyse_chains`. A level whose gain margin is read above a quarter of its
-    sampling frequency is analysed as it is executed; where that cannot be done the gain margin is nan, with the
-    reason in ``not_quoted``.
-
-    Parameters
-    ----------
-    chains : sequence of sequences of LoopStage
-        Each chain innermost level first, at least one level; depths may differ.
-
-    Returns
-    -------
-    tuple of tuples of Margins
-        One tuple per chain in the given order, one `Margins` per level, innermost first.
-
-    Raises
-    ------
-    ValueError
-        A chain has no level.
+    A level whose gain margin is read above a quarter of its sampling frequency is analysed as it is executed; where
+    that cannot be done the gain margin is nan, with the reason in ``not_quoted``.
 
     Source: K. J. Astrom, B. Wittenmark, Computer-Controlled Systems, 3rd ed. 1997, ch. 7 (how far a delay stands for
     the sampling; from memory).
