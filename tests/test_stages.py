@@ -22,36 +22,7 @@ units:
   "20": {name: Test unit}
 """
 
-CASCADE = """\
-loops:
-  TIC-2014:
-    unit: "20"
-    service: Tray temperature
-    measurement: {transmitter: TT-2014, variable: temperature, range: 60 to 120 degC, filter: 6 s}
-    controller:
-      action: reverse
-      gain: 1.8
-      reset: 9 min
-      interval: 1 s
-      setpoint: {low: 78 degC, normal: 84 degC, high: 96 degC}
-      output: {to: FIC-2011, span: 0 to 12 t/h, low: 3 t/h, high: 10.5 t/h}
-      modes: {normal: automatic, permitted: [manual, automatic]}
-    process: {effect: rises, gain: 5.5 degC per t/h, lag: 9 min, dead_time: 1.5 min}
-  FIC-2011:
-    unit: "20"
-    service: Steam flow
-    measurement: {transmitter: FT-2011, variable: flow, range: 0 to 15 t/h}
-    controller:
-      action: reverse
-      gain: 0.5
-      reset: 12 s
-      interval: 0.5 s
-      output: {to: FV-2011, low: 0 %, high: 100 %}
-      modes: {normal: cascade, permitted: [manual, automatic, cascade]}
-    process: {effect: rises, gain: 0.18 t/h per %, lag: 4 s, dead_time: 1 s}
-final_elements:
-  FV-2011: {unit: "20", kind: control valve, opens_on: rising signal, fails: closed, safe: closed}
-"""
+CASCADE = (Path(__file__).parent / "data" / "steam-cascade.yaml").read_text("utf-8")
 
 
 def plant_of(folder: Path, text: str) -> Plant:
