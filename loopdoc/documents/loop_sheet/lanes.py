@@ -16,7 +16,7 @@ _CHANNEL, _CONNECTOR, _ROOT, _TAP, _BLOCK, _FORCED = 26.0, 30.0, 59.0, 82.0, 100
 _DISPLAY, _WORDS, _OTHERS = 21.0, 39.5, 66.0
 # Right edge of the field, and widths of the first box's column, of each further one's and of the control system, by
 # the number of columns [pt].
-_SHARES = ((164.0, 0.0, 0.0, 128.0), (158.0, 40.0, 0.0, 124.0), (147.0, 40.0, 65.0, 120.0), (143.0, 36.0, 54.0, 118.0))
+_SHARES = ((172.0, 0.0, 0.0, 132.0), (158.0, 40.0, 0.0, 124.0), (147.0, 40.0, 65.0, 120.0), (143.0, 36.0, 54.0, 118.0))
 
 
 @dataclass(frozen=True, slots=True)

@@ -165,6 +165,10 @@ class _Drawing:
     def _word(self, kind: str, written: str | Hold) -> str:
         return self._language.term(kind, written) if isinstance(written, str) else HOLD
 
+    def _channel(self, channel: str | Hold | None, way: str) -> str:
+        """What stands in the box of a channel: what it is at least where the register does not name it."""
+        return self._language.label(way) if channel is None else self._shown(channel)
+
     def _lines(self, tag: str) -> tuple[str, str]:
         return tag_lines(tag, self._register.tag_pattern)
 
@@ -290,7 +294,7 @@ class _Drawing:
         sheet.field_instrument(FIELD, y, self._lines(tag), strong=strong)
         self._wire(FIELD + BUBBLE, y, measurement.wiring, to_the_field=False)
         self._above_wire(y, measurement.signal, measurement.wiring)
-        sheet.channel(at.channel, y, self._shown(measurement.channel))
+        sheet.channel(at.channel, y, self._channel(measurement.channel, "Input"))
         sheet.note(FIELD_NOTE, y + 8.5, measurement_words(measurement, self._language), width=NOTE_WIDTH)
         if known(measurement.characteristic) != "square root":
             return at.channel + 21
@@ -347,7 +351,7 @@ class _Drawing:
             sheet.note(x, baseline, (letters,), width=24, anchor="end")
         self._wire(FIELD + 9.5, y, element.wiring, to_the_field=True)
         self._above_wire(y, element.signal, element.wiring)
-        sheet.channel(at.channel, y, self._shown(element.channel))
+        sheet.channel(at.channel, y, self._channel(element.channel, "Output"))
         sheet.note(FIELD_NOTE, y + 9, element_words(element, self._language), width=NOTE_WIDTH, bold_first=True)
         beside, width = at.channel + 24.5, at.block - BLOCK - at.channel - 27
         if branch is not None:
@@ -370,7 +374,7 @@ class _Drawing:
         sheet.solenoid(FIELD, y, below)
         self._wire(FIELD + 6.5, y, solenoid.wiring, to_the_field=True)
         self._above_wire(y, None, solenoid.wiring)
-        sheet.channel(at.channel, y, self._shown(solenoid.channel))
+        sheet.channel(at.channel, y, self._channel(solenoid.channel, "Output"))
         sheet.note(FIELD_NOTE, y - 2.8, (self._shown(solenoid.tag),), width=NOTE_WIDTH / 2, bold_first=True)
         sheet.note(FIELD_NOTE, y + 8.5, supply_words(solenoid.supply, self._language)[:1], width=NOTE_WIDTH)
         if lines:

@@ -80,6 +80,7 @@ class SheetView:
     tag: str
     service: str
     purpose: str
+    """Empty where the register gives none."""
     facts: tuple[tuple[str, str], ...]
     drawing: Markup
     drawing_height: float
@@ -162,7 +163,7 @@ def _view(basis: Basis, loop: Loop, document: Document) -> SheetView:
     return SheetView(
         tag=loop.tag,
         service=cell(loop.service, language),
-        purpose=cell(loop.purpose, language),
+        purpose=cell(loop.purpose, language) if loop.purpose is not None else "",
         facts=_facts(plant, loop, language),
         drawing=Markup(drawn.svg),
         drawing_height=drawn.height,
@@ -278,7 +279,8 @@ def sheet_height(view: SheetView, size: float) -> float:
     """Height of a sheet with its tables in a type size [pt]."""
     title = f"{view.tag} {view.service}"
     height = line_count(title, PAGE_WIDTH, 12.0, bold=True, narrow=False) * 13.5 * 1.15 + 0.6 * MM
-    height += paragraph_height(view.purpose, PAGE_WIDTH, 8.4, 1.25, narrow=False) + 1.0 * MM
+    if view.purpose:
+        height += paragraph_height(view.purpose, PAGE_WIDTH, 8.4, 1.25, narrow=False) + 1.0 * MM
     share = PAGE_WIDTH / len(view.facts)
     height += table_height([[(value, share, False) for _, value in view.facts]], size, label=True)
     height += 1.0 * MM + view.drawing_height

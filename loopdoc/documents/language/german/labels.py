@@ -209,6 +209,7 @@ LABELS = {
     "Junction box and marshalling": "Klemmenkasten und Rangierung",
     "Control system": "Leitsystem",
     "Operator's station": "Bedienstation",
+    "Input": "Eingang",
     "Loop check": "Loop-Check",
     "Loop check tested by": "Loop-Check durchgeführt von",
     "Witnessed by": "Bezeugt von",
