@@ -12,7 +12,7 @@ import numpy as np
 from loopdoc.documents.language import ENGLISH, Language
 from loopdoc.documents.magnitudes import TIME_UNITS, change, duration, number
 from loopdoc.documents.plots import Curve, Drawing, Panel
-from loopdoc.documents.responses.response_figure import COLUMNS, in_units, loop_limits
+from loopdoc.documents.responses.response_figure import in_units, loop_limits
 from loopdoc.documents.responses.upset_story import standard
 from loopdoc.documents.values import DASH
 from loopdoc.documents.wording import sentences, upper_first
@@ -24,6 +24,8 @@ from loopdoc.register.model import FinalElement, known
 from loopdoc.register.quantity import Range
 from loopdoc.register.units import UNITS, unit
 
+COLUMNS = 3
+"""Responses side by side in a figure of three rows."""
 WHOLE = Range(0.0, 100.0, UNITS["%"])
 """The range of what is asked of a final element."""
 
@@ -77,13 +79,18 @@ def shown_responses(found: Override) -> list[tuple[OverrideResponses, bool]]:
     """The responses that a figure has room for, and whether each is the one as written: of an upset that is sized to
     bring a controller in both, of the others the one as written.
     """
-    columns = [(entry, True) for entry in found.responses if entry.scenario.origin != "sized"]
+    given = [entry for entry in found.responses if entry.scenario.origin != "sized"]
+    given.sort(key=lambda entry: not _brings_in(found, entry))
     sized = [entry for entry in found.responses if entry.scenario.origin == "sized"]
-    room = COLUMNS - 2 * min(1, len(sized))
-    columns = columns[:room]
+    columns = [(entry, True) for entry in given[: COLUMNS - 2]]
     for entry in sized:
         columns += [(entry, True), (entry, False)]
     return columns[:COLUMNS]
+
+
+def _brings_in(found: Override, entry: OverrideResponses) -> bool:
+    """Whether an upset brings one that stands by into command."""
+    return any(found.taken_over(entry.as_written, place).takes_over for place in found.standing_by)
 
 
 def override_panels(
@@ -93,8 +100,7 @@ def override_panels(
     response = entry.as_written if as_written else entry.otherwise
     _, divisor, time_unit = next(one for one in TIME_UNITS if float(response.time_s[-1]) >= one[0])
     time = response.time_s / divisor
-    read = entry.scenario.read - found.below
-    idle = read if read != found.normal else found.standing_by[0]
+    idle = _drawn_idle(found, entry)
     panels = []
     for place in (idle, found.normal):
         loop, at = found.loops[place], found.below + place
@@ -107,7 +113,7 @@ def override_panels(
         )
         limits = tuple(loop_limits(plant, loop, own, language))
         panels.append(Panel("", "", f"{loop.tag}, {language.unit(own.unit.display)}", curves, limits))
-    above = replace(panels[0], title=_short_name(found, entry, idle, language, as_written=as_written))
+    above = replace(panels[0], title=_short_name(found, entry, language, as_written=as_written))
     own = _asked_range(found)
     asked = [
         Curve(found.loops[place].tag, style, time, in_units(response.output_pct[found.below + place], own))
@@ -136,13 +142,20 @@ def _passed(found: Override, response: BranchedResponse) -> Any:
     return outputs.min(axis=0) if found.structure.lowest else outputs.max(axis=0)
 
 
+def _drawn_idle(found: Override, entry: OverrideResponses) -> int:
+    """Place of the candidate that stands by and is drawn under an upset."""
+    read = entry.scenario.read - found.below
+    return read if read != found.normal else found.standing_by[0]
+
+
 def _short_name(
-    found: Override, entry: OverrideResponses, idle: int, language: Language, *, as_written: bool
+    found: Override, entry: OverrideResponses, language: Language, *, as_written: bool = True
 ) -> str:
     if entry.scenario.name == TO_THE_LIMIT:
         return language.panel_to_limit(found.loops[found.normal].tag)
     if entry.scenario.origin == "declared":
         return upper_first(entry.scenario.name)
+    idle = _drawn_idle(found, entry)
     return language.panel_past(found.loops[idle].tag, found.follows(idle, as_written=as_written))
 
 
@@ -171,8 +184,11 @@ def override_caption(found: Override, language: Language = ENGLISH) -> str:
         for entry in found.responses
         if entry.scenario.origin == "sized"
     ]
+    drawn = [entry for entry, _ in shown_responses(found)]
+    left_out = [_short_name(found, entry, language) for entry in found.responses if entry not in drawn]
     lowest = known(found.function.kind) == "low select"
-    return " ".join((language.override_caption(tags(found), found.function.tag, lowest=lowest), *sized))
+    told = language.override_caption(tags(found), found.function.tag, lowest=lowest)
+    return " ".join((told, *sized, *([language.not_drawn(left_out)] if left_out else ())))
 
 
 # ---------------------------------------------------------------- words
@@ -193,15 +209,13 @@ def _told(found: Override, language: Language) -> Iterator[str]:
         )  # fmt: skip
         yield language.override_stands_by(lead.tag, distance, normal, below=loop.start_error_pct > 0.0)
     given = [entry for entry in found.responses if entry.scenario.origin != "sized"]
-    brought = False
     for entry in given:
         for place in found.standing_by:
             if found.taken_over(entry.as_written, place).takes_over:
-                brought = True
                 yield from _takes_over(found, entry, place, language)
             else:
                 yield language.override_stays_out(override_upset(found, entry, language), found.loops[place].tag)
-    if not brought:
+    if not any(_brings_in(found, entry) for entry in given):
         yield language.override_nothing_given([found.loops[place].tag for place in found.standing_by])
     for entry in found.responses:
         place = entry.scenario.read - found.below

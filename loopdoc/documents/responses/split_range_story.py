@@ -122,6 +122,8 @@ def split_caption(split: SplitRange, language: Language = ENGLISH) -> str:
     strokes = [
         (element.tag, language.shown(stroke)) for element in split.elements if (stroke := known(element.stroke_time))
     ]
+    drawn = drawn_responses(split)
+    left_out = [_short_name(split, response, language) for response in split.responses if response not in drawn]
     processes = [stage.process for dynamics in split.chains for stage in dynamics.chain.stages]
     return " ".join(
         (
@@ -132,6 +134,7 @@ def split_caption(split: SplitRange, language: Language = ENGLISH) -> str:
             ),
             start_told(split, language),
             language.split_assumptions(strokes),
+            *([language.not_drawn(left_out)] if left_out else ()),
         )
     )  # fmt: skip
 

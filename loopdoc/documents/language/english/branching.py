@@ -23,6 +23,10 @@ class EnglishBranching(EnglishGrammar):
         """Heading of a panel with that upset."""
         return "Across the handover"
 
+    def not_drawn(self, upsets: Sequence[str]) -> str:
+        """Upsets for which a figure has no room."""
+        return f"Not drawn for want of room: {self.listed(upsets)}."
+
     def split_title(self, lead: str, elements: Sequence[str]) -> str:
         """What a figure shows, for those who cannot see it."""
         return f"Time responses of {lead} with {self.listed(elements)} together"
@@ -99,7 +103,8 @@ class EnglishBranching(EnglishGrammar):
 
     def panel_past(self, tag: str, unfollowed: str) -> str:
         """Heading of a panel in which a controller that stands by is carried past its setpoint."""
-        return f"{tag} {self.how_followed(unfollowed)}"
+        how = {"track": "external reset", "hold": "integral held", "nothing": "no external reset"}[unfollowed]
+        return f"{tag}: {how}"
 
     def override_title(self, tags: Sequence[str], function: str) -> str:
         """What a figure shows, for those who cannot see it."""

@@ -21,6 +21,9 @@ class GermanBranching(GermanGrammar, EnglishBranching):
     def panel_handover(self) -> str:
         return "Über den Übergang"
 
+    def not_drawn(self, upsets: Sequence[str]) -> str:
+        return f"Aus Platzgründen nicht gezeichnet: {self.listed(upsets)}."
+
     def split_title(self, lead: str, elements: Sequence[str]) -> str:
         return f"Zeitverhalten von {lead} mit {self.listed(elements)} gemeinsam"
 
@@ -88,7 +91,8 @@ class GermanBranching(GermanGrammar, EnglishBranching):
         return f"{tag}: Sollwert an die Grenze"
 
     def panel_past(self, tag: str, unfollowed: str) -> str:
-        return f"{tag} {self.how_followed(unfollowed)}"
+        how = {"track": "mit Rückführung", "hold": "Integral angehalten", "nothing": "ohne Rückführung"}[unfollowed]
+        return f"{tag}: {how}"
 
     def override_title(self, tags: Sequence[str], function: str) -> str:
         return f"Zeitverhalten von {self.listed(tags)} über {function}"
@@ -115,7 +119,7 @@ class GermanBranching(GermanGrammar, EnglishBranching):
         )
 
     def override_gives_back(self, normal: str, after: str) -> str:
-        return f"Ist die Störung wieder vorbei, führt {normal} nach {after} von neuem"
+        return f"Ist die Störung vorbei, führt {normal} nach {after} wieder"
 
     def override_otherwise(self, how: str, after: str, past: str) -> str:
         takes = f"übernähme er nach {after}" if after else "übernähme er nicht"
