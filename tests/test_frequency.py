@@ -417,6 +417,14 @@ def test_speed_ratio_is_the_ratio_of_crossovers() -> None:
     assert speed_ratio(inner, outer) == pytest.approx(10.0, rel=1e-10)
 
 
+def test_loops_that_swing_have_no_speed_to_compare() -> None:
+    # The gain of an integrator with a dead time of 1 s may be pi/2 at most.
+    inner, outer = (single(Controller(gain), Process(1.0, (), 1.0, integrating=True)) for gain in (1.6, 0.1))
+    assert not inner.stable
+    assert math.isnan(speed_ratio(inner, outer))
+    assert math.isnan(speed_ratio(outer, inner))
+
+
 def test_an_empty_chain_is_refused() -> None:
     with pytest.raises(ValueError, match="at least one loop"):
         analyse_chain([])

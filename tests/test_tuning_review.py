@@ -316,6 +316,12 @@ def test_the_text_gives_no_settings_without_margins_and_cautions(tmp_path: Path)
     assert "Trans. ASME 64:759-768, 1942" in text
 
 
+def test_what_rounding_leaves_of_a_difference_is_not_printed(tmp_path: Path) -> None:
+    # A second lag of 0.01 ms turns the phase by 1e-4 deg at most where it matters.
+    text = shown(tmp_path, STANDARD, "gain: 1 degC per %, lags: [10 s, 0.00001 s], dead_time: 2 s", "--format", "text")
+    assert "this model is as large and lags as much; the margins do not rest on it." in text
+
+
 def test_a_proportional_loop_is_shown_the_proportional_rules(tmp_path: Path) -> None:
     rows = by_rule(shown(tmp_path, "gain: 1.0", "gain: 1 degC per %, lag: 10 s, dead_time: 2 s"))
     # Ziegler and Nichols T/(K L) and Ku/2; Cohen and Coon (1/K)(1/r + 1/3).

@@ -289,5 +289,7 @@ def maximum_sensitivities(loops: Sequence[LoopStage]) -> FloatArray:
 
 
 def speed_ratio(inner: Margins, outer: Margins) -> float:
-    """Return how many times faster the inner loop is: the ratio of the gain crossovers; nan without one."""
+    """Return how many times faster the inner loop is, by the gain crossovers; nan where one has none or is unstable."""
+    if not (inner.stable and outer.stable):
+        return math.nan
     return inner.crossover_rad_per_s / outer.crossover_rad_per_s

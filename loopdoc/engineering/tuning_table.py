@@ -257,8 +257,8 @@ def _models(review: TuningReview) -> Iterator[str]:
     else:
         yield f"The process is a model for the rules as it stands: {model_text}{f' ({interval})' if interval else ''}."
     if seen.is_reduced and math.isfinite(seen.gain_error):
-        size = f"{display_number(abs(100.0 * seen.gain_error), 2)} % {'larger' if seen.gain_error > 0.0 else 'smaller'}"
-        lag = f"{display_number(abs(seen.phase_error_deg), 2)}° {'less' if seen.phase_error_deg > 0.0 else 'more'}"
+        size = _off(100.0 * seen.gain_error, " %", "larger", "smaller") or "as large"
+        lag = _off(seen.phase_error_deg, "°", "less", "more") or "as much"
         yield f"Against the exact response {where} this model is {size} and lags {lag}; the margins do not rest on it."
     if seen.second.second_lag_s > 0.0 and not math.isinf(seen.second.second_lag_s):
         lags = (
@@ -269,6 +269,13 @@ def _models(review: TuningReview) -> Iterator[str]:
         yield f"SIMC PID takes two: {lags}, dead time {_time(seen.second.dead_time_s)}."
     if _is_inverse(process):
         yield "The inverse response counts as dead time in the models."
+
+
+def _off(error: float, unit_shown: str, above: str, below: str) -> str:
+    """How far a model is off, empty where that is nothing but rounding."""
+    if abs(error) < 0.05:
+        return ""
+    return f"{display_number(abs(error), 2)}{unit_shown} {above if error > 0.0 else below}"
 
 
 def _is_inverse(process: Process) -> bool:
