@@ -391,7 +391,8 @@ class Function(Part):
     curve: tuple[CurvePoint, ...] | Hold
     """Characteriser: points in rising order of what enters, with straight lines between them; empty where not given."""
     normal_input: Quantity | Hold | None
-    """Characteriser: what enters in normal operation; where not given, what the secondary's normal value asks for."""
+    """Characteriser: what enters in normal operation; where not given, what the secondary's normal value asks for.
+    Split range: the output that enters in normal operation, from which its responses start."""
 
     @property
     def inputs_held(self) -> bool:
