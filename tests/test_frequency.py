@@ -417,6 +417,19 @@ def test_speed_ratio_is_the_ratio_of_crossovers() -> None:
     assert speed_ratio(inner, outer) == pytest.approx(10.0, rel=1e-10)
 
 
+def test_an_unstable_loop_has_a_phase_margin_only_where_a_crossover_is_beyond() -> None:
+    """An integrator with a dead time of 1 s under a gain a crosses over at a rad/s, at -90 deg less a."""
+    alone = single(Controller(1.8), Process(1.0, (), 1.0, integrating=True))
+    assert alone.phase_margin_deg == pytest.approx(90.0 - math.degrees(1.8), rel=1e-10)
+    # The outer loop crosses over a thousand times slower, at 0.001 rad/s and 90 deg short of -1: it swings for the
+    # inner one.
+    inner = LoopStage(Controller(1.8), Process(1.0, (), 1.0, integrating=True))
+    _, outer = analyse_chain([inner, LoopStage(Controller(0.001), INTEGRATOR)])
+    assert not outer.stable
+    assert outer.crossover_rad_per_s == pytest.approx(0.001, rel=1e-3)
+    assert outer.phase_margin_deg == math.inf
+
+
 def test_loops_that_swing_have_no_speed_to_compare() -> None:
     # The gain of an integrator with a dead time of 1 s may be pi/2 at most.
     inner, outer = (single(Controller(gain), Process(1.0, (), 1.0, integrating=True)) for gain in (1.6, 0.1))

@@ -82,7 +82,8 @@ class Margins:
     """Smallest factor on the gain that makes the loop unstable, infinite if none [dimensionless]. Of an
     unstable loop the largest factor below 1 at which it oscillates steadily, nan if there is none."""
     phase_margin_deg: float
-    """Smallest angle to -1 over all gain crossovers, infinite if none [deg]; negative when unstable."""
+    """Smallest angle to -1 over all gain crossovers, infinite if none [deg]. Of an unstable loop the smallest by which
+    one lies beyond -1, negative; infinite where none does."""
     max_sensitivity: float
     """Ms, largest |1/(1+L)| [dimensionless]; infinite when unstable."""
     max_complementary_sensitivity: float
@@ -159,11 +160,14 @@ def read_margins(survey: LevelSurvey) -> list[Margins]:
     at = np.where(np.isfinite(np.where(stable, raising, lowering)), at, math.nan)
 
     lag_to_go = np.mod(math.pi + np.angle(gain_roots.loop), 2.0 * math.pi)
-    phase, _ = _nearest(size, gain_roots, np.minimum(lag_to_go, 2.0 * math.pi - lag_to_go))
+    beyond = 2.0 * math.pi - lag_to_go
+    # Of an unstable loop a crossover short of -1 says nothing: what swings lies below it or at another crossover.
+    short = np.where(stable[gain_roots.row], lag_to_go, math.inf)
+    phase, _ = _nearest(size, gain_roots, np.minimum(short, np.where(lag_to_go > math.pi, beyond, math.inf)))
     delay, _ = _nearest(size, gain_roots, lag_to_go / gain_roots.w)
     crossover = np.full(size, math.nan)
     np.fmax.at(crossover, gain_roots.row, gain_roots.w)
-    phase_deg = np.where(stable, 1.0, -1.0) * np.degrees(phase)
+    phase_deg = np.where(stable | np.isinf(phase), 1.0, -1.0) * np.degrees(phase)
     static = np.where(poles > 0, 1.0, static_complementary)
     width = loop.bandwidths(static / math.sqrt(2.0))
     points = loop.w.shape[1]
