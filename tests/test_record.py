@@ -632,6 +632,20 @@ def test_the_blank_of_the_demo_is_read_back_whole(tmp_path: Path) -> None:
     ]
 
 
+def test_functions_of_a_workbook_were_checked_against_the_register_as_it_is(tmp_path: Path) -> None:
+    """FIC-2011 of the demo: its interlock acts on two tags, whose printed values hold blanks that no workbook keeps."""
+    shutil.copytree(DEMO, tmp_path / "demo")
+    checks = checks_of(tmp_path / "demo")
+    rows = rows_of(checks["FIC-2011"])
+    passed = {f"E{rows[one.key]}": "pass" for one in checks["FIC-2011"].functions}
+    content = filled(blank(tmp_path / "demo", tmp_path), "FIC-2011", HEADS | passed)
+    (record,) = read_workbook(content, "b.xlsx", list(checks))
+    assert isinstance(record, LoopRecord)
+    judged = judge(checks["FIC-2011"], record)
+    assert len(judged.functions) == len(checks["FIC-2011"].functions) > 10
+    assert all(one.final is Verdict.PASS for one in judged.functions)
+
+
 def test_a_check_record_carries_its_results_and_is_stale_when_others_come(folder: Path, tmp_path: Path) -> None:
     recorded(tmp_path, folder, GOOD, "--write")
     out, err = io.StringIO(), io.StringIO()

@@ -10,7 +10,7 @@ from loopdoc.documents.naming import Names, moves_by_itself, power_of
 from loopdoc.documents.narrative.failure_story import FailureStory
 from loopdoc.documents.titleblock import fingerprint
 from loopdoc.documents.values import HOLD, shown
-from loopdoc.documents.wording import NO_BREAK, as_written, listed, sentence, sentences, value
+from loopdoc.documents.wording import NO_BREAK, listed, sentence, sentences, value, with_printed_units
 from loopdoc.engineering.failure import Failure, FailureAnalysis, FailureEffect
 from loopdoc.engineering.loop_check import (
     FunctionCheck,
@@ -368,7 +368,8 @@ def _interlock(
 
 
 def _actions(actions: Iterable[InterlockAction]) -> str:
-    return ", ".join(f"{action.tag} {action_words(action)}" for action in actions)
+    """What an interlock does, with plain blanks: a workbook gives back no others."""
+    return ", ".join(f"{action.tag} {action_words(action)}" for action in actions).replace(NO_BREAK, " ")
 
 
 def _drive(initiator: Initiator) -> str:
@@ -395,5 +396,5 @@ def _resets(reset: str | None) -> str:
     if reset is None:
         return ""
     if reset.startswith("manual"):
-        return sentence(f"Nothing moves before the reset ({as_written(reset)})")
-    return sentence(f"Reset: {as_written(reset)}")
+        return sentence(f"Nothing moves before the reset ({with_printed_units(reset)})")
+    return sentence(f"Reset: {with_printed_units(reset)}")

@@ -68,7 +68,7 @@ def measurement_table(loop: Loop, checks: LoopChecks, judged: JudgedRecord | Non
         return
     applied = list(_applied(loop, measurement))
     unit = found[0].unit
-    columns = [Column("Step", 6), *(Column(f"{row.what}, {row.unit}", 9) for row in applied)]
+    columns = [Column("Step", 7), *(Column(f"{row.what}, {row.unit}", 10) for row in applied)]
     columns += [Column(f"{loop.tag} shows, {unit.display}", 10), Column(f"Accept, {unit.display}", 14)]
     sensor = sensor_tolerances(measurement)
     if sensor:
@@ -127,7 +127,7 @@ def travel_tables(plant: Plant, loop: Loop, checks: LoopChecks, judged: JudgedRe
         kind = known(element.kind)
         what = "speed" if kind in _SPEEDS else "power" if kind == "heater bank" else "opening"
         signal = signals.get(f"Signal to {element.tag}")
-        columns = [Column("Output", 6)]
+        columns = [Column("Output", 7)]
         if signal:
             columns.append(Column(f"Signal to {element.tag}, {signal.unit}", 11))
         columns += [Column(f"{what.capitalize()}, %", 10), Column("Accept, %", 14), *_blanks(judged)]
@@ -231,7 +231,7 @@ def _blanks(judged: JudgedRecord | None) -> list[Column]:
         Column("As left, rising", 10, blank=True),
         Column("As left, falling", 10, blank=True),
     ]
-    return [*columns, Column("Last", 15)] if judged else columns
+    return [*columns, Column("Last", 12)] if judged else columns
 
 
 def _results(reading: Reading, judged: JudgedRecord | None, *, single: bool = False) -> tuple[str, ...]:
@@ -254,7 +254,8 @@ def _read_last(one: JudgedReading) -> str:
         values = (recorded.as_left, recorded.as_left_falling)
     given = [reading for reading in values if reading is not None]
     same_unit = all(reading.unit == one.reading.unit for reading in given)
-    told = "; ".join(shown(reading).partition(NO_BREAK)[0] if same_unit else value(reading) for reading in given)
+    digits = _digits([one.reading])
+    told = "; ".join(_at_least(reading, digits) if same_unit else value(reading) for reading in given)
     if one.changed:
         return f"{told or DASH}, before the change of {one.changed}"
     mark = {Verdict.FAIL: " FAIL", Verdict.NOT_DONE: " not done"}.get(one.final, "")
@@ -284,6 +285,12 @@ def _limits(reading: Reading, digits: int) -> str:
 def _number(figure: float, digits: int) -> str:
     written = f"{figure:.{digits}f}"
     return written.lstrip("-") if float(written) == 0 else written.replace("-", "−")
+
+
+def _at_least(reading: Quantity, digits: int) -> str:
+    """What was read, with the decimals of what it is held against, or its own where it has more."""
+    written = shown(reading).partition(NO_BREAK)[0]
+    return written if len(written.partition(".")[2]) >= digits else _number(reading.value, digits)
 
 
 def _with_unit(figure: float, unit: Unit) -> str:
