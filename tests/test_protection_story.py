@@ -22,8 +22,8 @@ interlocks:
     [
         (
             "{permitted: for the test of one transmitter at a time, approved_by: Shift supervisor, limit: 8 h}",
-            "A bypass is permitted for the test of one transmitter at a time, for 8 h at most "
-            "(permitted by: Shift supervisor).",
+            "A bypass is permitted for the test of one transmitter at a time, for 8 h at most; "
+            "each one is approved by: Shift supervisor.",
         ),
         ("{permitted: for tests}", "A bypass is permitted for tests, without a limit in time."),
         ("{permitted: no}", "No bypass is permitted."),

@@ -340,7 +340,8 @@ def test_a_log_axis_has_plain_numbers_and_nothing_is_a_path(tmp_path: Path) -> N
 
 def test_a_declared_upset_is_told(cascade: ChainDynamics, compared: Comparison) -> None:
     told = declared_upsets(cascade, compared)
-    assert told.startswith("Steam pressure falls (declared at FIC-2011) moves the measurement of FIC-2011 by")
+    declared = "The upset “steam pressure falls” (declared at FIC-2011) moves the measurement of FIC-2011 by"
+    assert told.startswith(declared)
     assert "through a lag of 15" in told
     assert "TIC-2014 then departs by" in told
     assert "with the single loop by" in told
@@ -356,7 +357,7 @@ def test_a_declared_upset_at_a_process_input_names_the_process(tmp_path: Path) -
     assert isinstance(loaded, Loaded)
     dynamics = Dynamics(Plant(loaded.register)).loop("LIC-1001").chains[0]
     told = declared_upsets(dynamics, compare(dynamics))
-    assert told.startswith("Feed is cut (declared at LIC-1001) moves what commands LIC-1001 (FIC-1002) by")
+    assert told.startswith("The upset “feed is cut” (declared at LIC-1001) moves what commands LIC-1001 (FIC-1002) by")
     assert "through the process of LIC-1001" in told
     assert "LIC-1001 then departs by" in told
 

@@ -164,9 +164,15 @@ class Ledger:
 
     def source(self, text: str, origin: Origin) -> Source:
         """The source of a printed value, or of a number inside a text of the register."""
-        depth = 1 if origin.path and origin.path[0] in _SECTIONS else 0
-        tag = str(origin.path[depth]) if depth < len(origin.path) else ""
-        return Source(text, tag, origin.path[depth + 1 :], self._line(text, origin.place()))
+        section, *below = origin.path or ("",)
+        if section == "deviations":  # a list, each entry of which names its tag
+            path = (section, *below[1:])
+            written = origin.source.data
+            entry = written["deviations"][below[0]] if isinstance(written, dict) and below else {}
+            tag = str(entry.get("at", ""))
+        else:
+            tag, path = str(below[0]) if below else "", tuple(below[1:])
+        return Source(text, tag, path, self._line(text, origin.place()))
 
     def mark(self, text: str, source: Source) -> str:
         """A printed value with its source."""

@@ -237,13 +237,13 @@ class _Narrative:
         yield self._paragraph(self._language.tuning_basis(), "Tuning.")
 
     def _scheme_sections(self, number: str) -> Iterator[Section]:
-        for ordinal, (scheme, loops) in enumerate(self._schemes):
-            story = SchemeStory(self._plant, scheme, loops, ordinal, self._language)
+        for ordinal, (scheme, loops) in enumerate(self._schemes, 1):
+            story = SchemeStory(self._plant, scheme, loops, self._language)
             yield Section(
-                f"{number}.{ordinal + 1}",
+                f"{number}.{ordinal}",
                 headline(loops),
                 f"scheme-{_slug(loops[0].tag)}",
-                tuple(self._scheme_blocks(scheme, loops, story, ordinal)),
+                tuple(self._scheme_blocks(scheme, loops, story)),
                 tags=self._set(self._scheme_tags(scheme, loops)),
             )
 
@@ -257,16 +257,14 @@ class _Narrative:
         told = ", ".join(tags)
         return f"{told} ({self._language.drawings(drawings)})" if drawings else told
 
-    def _scheme_blocks(
-        self, scheme: Scheme, loops: Sequence[Loop], story: SchemeStory, ordinal: int
-    ) -> Iterator[Block]:
+    def _scheme_blocks(self, scheme: Scheme, loops: Sequence[Loop], story: SchemeStory) -> Iterator[Block]:
         controlled = story.controlled
         lead = next(loop for loop in scheme.loops if loop.tag in self._plant.controlled)
         purpose = sentences(story.purpose(), self._elsewhere(lead, loops))
         if purpose:
             yield Paragraph(self._set(purpose), keep=True)
         yield from self._paragraphs("How it works.", story.course(), story.rising())
-        waits = settings_story.not_followed(controlled, ordinal, self._language)
+        waits = settings_story.not_followed(controlled, self._language)
         if len(controlled) == 1:
             told = settings_story.settings(controlled[0], self._language)
             yield from self._paragraphs("Modes and limits.", sentences(told, waits))
@@ -314,13 +312,15 @@ class _Narrative:
         models = list(tuning_story.process_rows(story.controlled, self._language))
         if any(cell not in ("", HOLD) for row in models for cell in row[2:-1]):
             yield from self._table("process", tuning_story.PROCESS_HEAD, models)
-        supplement = self._supplements.get(lead.tag, Supplement())
+        # Of a scheme that another unit's narrative tells as a whole, what it does as a whole stands there.
+        whole = any(loop.loop is lead for loop in story.controlled)
+        supplement = self._supplements.get(lead.tag, Supplement()) if whole else Supplement()
         remarks = tuning_story.remarks(story.controlled, dynamics, self._language)
         yield from self._paragraphs("", remarks, supplement.benefit(self._language))
         yield from supplement.figures
 
     def _alarm_table(self, loops: Iterable[Loop]) -> Iterator[Block]:
-        rows = protection_story.alarm_rows(loops, self._language)
+        rows = protection_story.alarm_rows(self._plant, loops, self._language)
         yield from self._table("alarms", protection_story.ALARM_HEAD, rows, title="Alarms")
 
     def _scheme_open(self, tags: Sequence[str], functions: Sequence[str]) -> Iterator[Block]:
@@ -367,7 +367,7 @@ class _Narrative:
         trips = sentences(
             protection_story.initiated_by(self._plant, self._indicators, self._language), *told
         )
-        yield from self._paragraphs("", trips)
+        yield from self._paragraphs("Interlocks." if trips else "", trips)
 
     def _entered(self, loop: Loop) -> str:
         """Which functions an indicator's measurement enters."""

@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterable, Iterator, Sequence
 
 from loopdoc.documents.language import ENGLISH, Language
-from loopdoc.documents.wording import sentence, upper_first
+from loopdoc.documents.wording import grouped, sentence, upper_first
 from loopdoc.register.model import HeldValue, known
 from loopdoc.rules.finding import Finding
 
@@ -54,7 +54,8 @@ def deviation_rows(accepted: Iterable[Finding], language: Language) -> Iterator[
 
 def accepted_in_a_sentence(accepted: Sequence[Finding], language: Language) -> str:
     """Which deviations stand; empty where none does."""
-    found = [f"{finding.tag} ({finding.rule})" for finding in accepted]
+    by_tag = grouped((finding.tag, finding.rule) for finding in accepted)
+    found = [f"{tag} ({', '.join(rules)})" for tag, rules in by_tag.items()]
     return language.deviations_stand(found) if found else ""
 
 

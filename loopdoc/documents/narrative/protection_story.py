@@ -6,10 +6,11 @@ import re
 from collections.abc import Iterable, Iterator, Sequence
 
 from loopdoc.documents.language import ENGLISH, Language
+from loopdoc.documents.language.noun import Noun
 from loopdoc.documents.narrative import time_to_act_story
 from loopdoc.documents.wording import NO_BREAK, grouped, sentences
 from loopdoc.engineering.pairing import Plant
-from loopdoc.register.model import ALARM_ORDER, Bypass, FinalElement, Hold, Initiator, Interlock, Loop, known
+from loopdoc.register.model import ALARM_ORDER, Alarm, Bypass, FinalElement, Hold, Initiator, Interlock, Loop, known
 from loopdoc.register.quantity import Quantity
 
 ALARM_HEAD = ("Alarm", "Limit", "Priority", "Likely cause", "Consequence", "Operator's response")
@@ -17,7 +18,7 @@ ALARM_HEAD = ("Alarm", "Limit", "Priority", "Likely cause", "Consequence", "Oper
 _HIGH_FIRST = (*reversed(ALARM_ORDER), "deviation")
 
 
-def alarm_rows(loops: Iterable[Loop], language: Language) -> Iterator[tuple[str, ...]]:
+def alarm_rows(plant: Plant, loops: Iterable[Loop], language: Language) -> Iterator[tuple[str, ...]]:
     """One row for each alarm, as `ALARM_HEAD` names the columns; the highest limit of a loop first."""
     for loop in loops:
         for kind in sorted(loop.alarms, key=lambda kind: _HIGH_FIRST.index(kind) if kind in _HIGH_FIRST else -1):
@@ -30,9 +31,19 @@ def alarm_rows(loops: Iterable[Loop], language: Language) -> Iterator[tuple[str,
                 ),
                 _term("priority", alarm.priority, language),
                 _value(alarm.cause, language),
-                _value(alarm.consequence, language),
+                language.alarm_consequence(_value(alarm.consequence, language), _warned(plant, alarm, language)),
                 language.alarm_response(_value(alarm.response, language), language.value(time) if time else ""),
             )
+
+
+def _warned(plant: Plant, alarm: Alarm, language: Language) -> list[tuple[str, Noun, str]]:
+    """Hazards of other loops that an alarm tells of."""
+    loops = plant.register.loops
+    return [
+        (tag, language.short_quantity(loops[tag]), side)
+        for tag, side in alarm.warns_of.items()
+        if tag in loops and side in ("high", "low")
+    ]
 
 
 def _value(written: object, language: Language) -> str:

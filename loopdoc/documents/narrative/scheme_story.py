@@ -20,7 +20,7 @@ class SchemeStory:
     """One scheme, or those of its loops that stand in one unit, in words."""
 
     def __init__(
-        self, plant: Plant, scheme: Scheme, loops: Sequence[Loop], ordinal: int, language: Language
+        self, plant: Plant, scheme: Scheme, loops: Sequence[Loop], language: Language
     ) -> None:
         self._plant = plant
         self._scheme = scheme
@@ -29,8 +29,6 @@ class SchemeStory:
         self.acting = tuple(loop for loop in self.controlled if normal_mode(loop) not in PASSIVE_MODES)
         self.names = Names((*scheme.loops, *_inputs(plant, scheme)), language)
         self._language = language
-        self._ordinal = ordinal
-        """Which story of the document it is: neighbouring stories are not told in the same words."""
 
     def purpose(self) -> str:
         """What the loops are for, as the register says it."""
@@ -74,8 +72,7 @@ class SchemeStory:
         if self._plant.links_to.get(loop.tag):
             return language.holds(loop.tag, what, how, measurement)
         limits = any(known(function.kind) in SELECTORS and stands_by(loop, function) for function in _functions(loop))
-        turned = (self._ordinal + position) % 2 == 1
-        return language.measured_and_held(loop.tag, what, how, measurement, limits=limits, turned=turned)
+        return language.measured_and_held(loop.tag, what, how, measurement, limits=limits)
 
     def _how(self, loop: ControlledLoop) -> str:
         """`by moving FV-2011, an equal percentage control valve`."""
@@ -177,7 +174,7 @@ class SchemeStory:
             rises.append(Rise(loop.tag, self.names.bare(loop.loop), tuple(steps), bool(steps) and shape in followed))
             followed.append(shape)
         actions, told = self._actions()
-        return self._language.rising([rise for rise in rises if rise.steps], actions, told, self._ordinal % 3)
+        return self._language.rising([rise for rise in rises if rise.steps], actions, told)
 
     def _steps(self, loop: ControlledLoop) -> list[Asked | Moved]:
         """Who asks for what, and who moves what, when a measurement rises; none where a sign is not known."""

@@ -75,7 +75,7 @@ def settings_rows(plant: Plant, loops: Sequence[ControlledLoop], language: Langu
         yield (
             loop.tag,
             language.term("mode", usual) if usual else "",
-            language.listed(language.term("mode", mode) for mode in permitted(controller)),
+            language.either(language.term("mode", mode) for mode in permitted(controller)),
             _setpoint(plant, loop, language),
             language.band(setpoint.low, setpoint.high) if setpoint else "",
             ", ".join(part for part in (to or "", language.value(span) if span else "") if part),
@@ -101,7 +101,7 @@ SETTINGS_HEAD = (
 # ---------------------------------------------------------------- when the output is not followed
 
 
-def not_followed(loops: Sequence[ControlledLoop], ordinal: int, language: Language) -> str:
+def not_followed(loops: Sequence[ControlledLoop], language: Language) -> str:
     """What a commanding loop does while it is not followed."""
     by_policy: dict[str, list[tuple[str, str]]] = {}
     selector = ""
@@ -112,7 +112,7 @@ def not_followed(loops: Sequence[ControlledLoop], ordinal: int, language: Langua
             continue
         by_policy.setdefault(policy, []).append((loop.tag, below.end.tag))
         selector = selector or next((part.tag for part in below.via if known(part.kind) in SELECTORS), "")
-    told = [_tracking(by_policy["track"], selector, ordinal, language)] if "track" in by_policy else []
+    told = [_tracking(by_policy["track"], selector, language)] if "track" in by_policy else []
     for policy in ("hold", "nothing"):
         pairs = by_policy.get(policy, [])
         if pairs:
@@ -121,11 +121,11 @@ def not_followed(loops: Sequence[ControlledLoop], ordinal: int, language: Langua
     return sentences(*told)
 
 
-def _tracking(pairs: Sequence[tuple[str, str]], selector: str, ordinal: int, language: Language) -> str:
+def _tracking(pairs: Sequence[tuple[str, str]], selector: str, language: Language) -> str:
     uppers, lowers = [upper for upper, _ in pairs], {lower for _, lower in pairs}
     if selector and len(uppers) > 1 and len(lowers) == 1:
         return language.tracks_selected(uppers, selector, pairs[0][1])
     if len(pairs) > 1:
         return language.track(pairs)
     upper, lower = pairs[0]
-    return language.tracks(upper, lower, ordinal % 3)
+    return language.tracks(upper, lower)

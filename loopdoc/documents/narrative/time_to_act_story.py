@@ -174,8 +174,9 @@ def response_told(interlock: Interlock, language: Language) -> tuple[str, ...]:
         of = f"{language.number(100 * share, 2)}{NO_BREAK}%"
         what, by = language.label("Share of the process safety time"), language.by_the_two_times()
         of = language.calculated(of, interlock.tag, what, by)
-        return language.acts_within(language.value(response), of, language.value(given), late=share >= 1.0)
-    told = [*language.acts_within(language.value(response), "", "", late=False)] if response else []
+        times = language.value(response), of, language.value(given)
+        return language.acts_within(interlock.tag, *times, late=share >= 1.0)
+    told = [*language.acts_within(interlock.tag, language.value(response), "", "", late=False)] if response else []
     told += [language.safety_time(language.value(given))] if given else []
     if known(interlock.layer) == "safety":
         told.append(language.not_checked_in_time(safety_time=given is None, response=response is None))

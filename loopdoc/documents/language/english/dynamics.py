@@ -80,12 +80,12 @@ class EnglishDynamics(EnglishGrammar):
 
     def upset_not_calculated(self, name: str, tag: str, reason: str) -> str:
         """A declared upset whose size does not follow."""
-        return f"{upper_first(name)} (declared at {tag}) is not calculated: {reason}"
+        return f"The upset “{name}” (declared at {tag}) is not calculated: {reason}"
 
     def upset_moves_input(self, name: str, tag: str, end: str, size: str) -> str:
         """A declared upset at the process input."""
         return (
-            f"{upper_first(name)} (declared at {tag}) moves what commands {tag} ({end}) by {size}, "
+            f"The upset “{name}” (declared at {tag}) moves what commands {tag} ({end}) by {size}, "
             f"through the process of {tag}"
         )
 
@@ -98,7 +98,7 @@ class EnglishDynamics(EnglishGrammar):
             through = f"through the {noun} of its process, {self.listed(process_lags)}"
         else:
             through = "at once"
-        return f"{upper_first(name)} (declared at {tag}) moves the measurement of {tag} by {size}, {through}"
+        return f"The upset “{name}” (declared at {tag}) moves the measurement of {tag} by {size}, {through}"
 
     def upset_outcome(self, told: str, lead: str, peak: str, alone: str) -> str:
         """What comes of a declared upset; ``alone`` is empty where there is no single loop to compare with."""

@@ -17,7 +17,7 @@ class EnglishFailure(EnglishNaming):
     def failure_assumptions(self) -> str:
         """What every table of failures rests on, told once in a document."""
         return (
-            "They are judged one at a time, by the signs and modes in the register. A transmitter signals its own "
+            "Failures are judged one at a time, by the signs and modes in the register. A transmitter signals its own "
             "fault by a current of at most 3.6 mA or at least 21 mA (NAMUR NE 43); its controller then does what is "
             "set for a bad measurement. A reading that is merely wrong is taken as good, at the worst at the end of "
             "its range. One that stands still is taken as good too, and only another measurement can tell. With the "
@@ -31,11 +31,12 @@ class EnglishFailure(EnglishNaming):
 
     def hazards(self, found: Sequence[tuple[Noun, str]]) -> str:
         """Which directions are hazards: names with high, low or both."""
-        told = [
-            f"a {name} too high or too low" if which == "both" else f"a {which} {name}"
-            for name, which in found
-        ]
+        told = [self.hazard(name, which) for name, which in found]
         return sentence(f"The {'hazard is' if len(told) == 1 else 'hazards are'} {self.listed(told)}")
+
+    def hazard(self, name: Noun, which: str) -> str:
+        """One hazard with its article: high, low or both."""
+        return f"a {name} too high or too low" if which == "both" else f"a {which} {name}"
 
     # -- the failure
 

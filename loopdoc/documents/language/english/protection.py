@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 
 from loopdoc.documents.language.english.failure import EnglishFailure
+from loopdoc.documents.language.noun import Noun
 from loopdoc.documents.wording import clause, number_word, sentences
 
 _DOES = {"closed": "closes", "open": "opens", "stopped": "stops", "started": "starts"}
@@ -23,6 +24,13 @@ class EnglishProtection(EnglishFailure):
         """Limit, dead band and delay of an alarm; each empty where it is not given."""
         parts = [limit, f"deadband {deadband}" if deadband else "", f"after {delay}" if delay else ""]
         return ", ".join(part for part in parts if part)
+
+    def alarm_consequence(self, consequence: str, hazards: Sequence[tuple[str, Noun, str]]) -> str:
+        """What follows where nobody answers, and of which hazards at other loops (tag, what, high or low) it tells."""
+        if not hazards:
+            return consequence
+        told = self.listed(f"{self.hazard(name, side)} at {tag}" for tag, name, side in hazards)
+        return sentences(consequence, f"the alarm also warns of {told}")
 
     def alarm_response(self, response: str, time: str) -> str:
         """What the operator does, and within what time."""
@@ -115,7 +123,7 @@ class EnglishProtection(EnglishFailure):
         """When an interlock may be bypassed, by whose leave and for how long."""
         told = f"a bypass is permitted {clause(permitted)}"
         told += f", for {limit} at most" if limit else ", without a limit in time"
-        return f"{told} (permitted by: {who})" if who else told
+        return f"{told}; each one is approved by: {who}" if who else told
 
     def only_limits(self, tag: str) -> str:
         """Interlocks of which the register gives no more than the limits; the tag is empty where there are several."""
@@ -131,14 +139,14 @@ class EnglishProtection(EnglishFailure):
 
     # -- response of an interlock
 
-    def acts_within(self, response: str, share: str, given: str, *, late: bool) -> tuple[str, ...]:
+    def acts_within(self, tag: str, response: str, share: str, given: str, *, late: bool) -> tuple[str, ...]:
         """Response time against process safety time; ``share`` and ``given`` are empty where one is not known."""
         if not given:
-            return (f"It acts within {response}",)
+            return (f"{tag} acts within {response}",)
         judged = "Whether that is enough is judged in the lifecycle of the safety function"
         if late:
-            return f"It acts within {response}, no sooner than the process safety time of {given}", judged
-        return f"It acts within {response}, {share} of the process safety time of {given}", judged
+            return f"{tag} acts within {response}, no sooner than the process safety time of {given}", judged
+        return f"{tag} acts within {response}, {share} of the process safety time of {given}", judged
 
     def safety_time(self, given: str) -> str:
         """The process safety time alone."""
@@ -148,7 +156,7 @@ class EnglishProtection(EnglishFailure):
         """Which of the two times of a safety interlock is lacking."""
         names = [*(["process safety time"] if safety_time else []), *(["response time"] if response else [])]
         lacking = f"the {self.listed(names)} {'is' if len(names) == 1 else 'are'} not known"
-        return f"Whether it acts in time is not checked: {lacking}"
+        return f"Whether the interlock acts in time is not checked: {lacking}"
 
     # -- time to act
 

@@ -4,10 +4,10 @@ from __future__ import annotations
 
 from collections.abc import Iterable, Sequence
 
-from loopdoc.documents.language.english.naming import DRIVES, EnglishNaming, verbs
+from loopdoc.documents.language.english.naming import DRIVES, EnglishNaming
 from loopdoc.documents.language.facts import Action, Asked, Moved, Reason, Rise, Share
 from loopdoc.documents.language.noun import Noun
-from loopdoc.documents.wording import clause, number_word, sentences, told_of
+from loopdoc.documents.wording import number_word, sentences, told_of
 from loopdoc.register.model import FinalElement, Measurement, known
 
 
@@ -82,18 +82,10 @@ class EnglishScheme(EnglishNaming):
         """What a loop holds, and how."""
         return f"{tag} holds the {what}{self.in_brackets(measured) if measured else ''} {how}"
 
-    def measured_and_held(
-        self, tag: str, what: Noun, how: str, measured: Measurement, *, limits: bool, turned: bool
-    ) -> str:
-        """What a transmitter measures and a loop holds, or keeps from passing its setpoint (``limits``).
-
-        ``turned`` puts the loop first: neighbouring stories are not told in the same words.
-        """
+    def measured_and_held(self, tag: str, what: Noun, how: str, measured: Measurement, *, limits: bool) -> str:
+        """What a transmitter measures and a loop holds, or keeps from passing its setpoint (``limits``)."""
         by, written = self.with_sensor(measured), self.range_of(measured)
         over = f" over {written}" if written else ""
-        if turned:
-            verb, end = ("keeps", f"from passing its setpoint {how}") if limits else ("holds", how)
-            return f"{tag} {verb} the {what}, which {by} measures{over}, {end}"
         goal = "keeps it from passing its setpoint" if limits else "holds it at its setpoint"
         return f"{by} measures the {what}{over}, and {tag} {goal} {how}"
 
@@ -185,37 +177,23 @@ class EnglishScheme(EnglishNaming):
 
     # -- which way, and why
 
-    def rising(self, rises: Sequence[Rise], actions: Sequence[Action], told: Sequence[str], variant: int) -> str:
-        """What happens on a rising measurement, why each controller acts as it does, and what else is told.
-
-        Of the three variants the third gives the reason first, where a single loop stands alone.
-        """
-        if variant == 2 and len(rises) == 1 and len(actions) == 1 and rises[0].steps and not told:
-            action = actions[0]
-            if action.tags == (rises[0].tag,):
-                start = f"{action.tags[0]} is {action.action} acting"
-                follows = clause(self._rise(rises[0], variant)).replace(f"{rises[0].tag} ", "it ", 1)
-                return sentences(f"Because {self._because(action.reasons)}, {start}: {follows}")
+    def rising(self, rises: Sequence[Rise], actions: Sequence[Action], told: Sequence[str]) -> str:
+        """What happens on a rising measurement, why each controller acts as it does, and what else is told."""
         acting = "; ".join(self._action(action) for action in actions)
-        return sentences(*(self._rise(rise, variant) for rise in rises if rise.steps), acting, *told)
+        return sentences(*(self._rise(rise) for rise in rises if rise.steps), acting, *told)
 
-    def _rise(self, rise: Rise, variant: int) -> str:
+    def _rise(self, rise: Rise) -> str:
         if rise.same:
             return f"{rise.tag} does the same when the {rise.what} rises"
-        if variant == 1:
-            return f"A rising {rise.what} makes {self._chained(rise.steps, bare=True)}"
-        return f"When the {rise.what} rises, {self._chained(rise.steps, bare=False)}"
+        return f"When the {rise.what} rises, {self._chained(rise.steps)}"
 
-    def _chained(self, steps: Sequence[Asked | Moved], *, bare: bool) -> str:
+    def _chained(self, steps: Sequence[Asked | Moved]) -> str:
         """`AIC-2015 asks for a higher temperature, TIC-2014 for a higher flow, and FIC-2011 opens FV-2011`."""
         told: list[str] = []
         for index, step in enumerate(steps):
             if isinstance(step, Asked):
                 asked = f"for a {'higher' if step.up else 'lower'} {step.name}"
-                told.append(f"{step.by} {asked}" if index else f"{step.by} {'ask' if bare else 'asks'} {asked}")
-            elif bare:
-                made = [f"{verbs(element)[0 if way > 0 else 1]} {element.tag}" for element, way in step.moves]
-                told.append(f"{step.by} {self.listed(made)}")
+                told.append(f"{step.by} {asked}" if index else f"{step.by} asks {asked}")
             else:
                 told.append(f"{step.by} {self.moves(step.moves)}")
         return self.listed(told) if len(told) < 3 else f"{', '.join(told[:-1])}, and {told[-1]}"
@@ -323,14 +301,9 @@ class EnglishScheme(EnglishNaming):
         each = self.listed(f"{upper} tracks {lower}" for upper, lower in pairs)
         return f"{each} whenever the loop below is out of cascade or at a limit, so that the return is bumpless"
 
-    def tracks(self, upper: str, lower: str, variant: int) -> str:
-        """One loop that tracks the one below; neighbouring stories take different variants of the three."""
-        variants = (
-            f"While {lower} is out of cascade or at a limit, {upper} tracks it, so that the return is bumpless",
-            f"{upper} tracks {lower} while that is out of cascade or at a limit, and takes over again without a bump",
-            f"Whenever {lower} leaves cascade or meets a limit, {upper} tracks it; the return is bumpless",
-        )
-        return variants[variant]
+    def tracks(self, upper: str, lower: str) -> str:
+        """One loop that tracks the one below."""
+        return f"While {lower} is out of cascade or at a limit, {upper} tracks it, so that the return is bumpless"
 
     def does_not_track(self, uppers: Iterable[str], lower: str, policy: str) -> str:
         """Loops that hold their output, or do nothing; ``lower`` is empty where there are several below."""

@@ -69,7 +69,7 @@ class EnglishSheet(EnglishGrammar):
 
     def reading(self, owner: str, section: str) -> str:
         """How to read it; owner of the register and section of the holds may be empty."""
-        keeper = f", which {owner} keeps," if owner else ""
+        keeper = f" (kept by: {owner})" if owner else ""
         held = f"What is not yet known is on hold and listed in section {section}" if section else ""
         changed = f"Every value stands in the register{keeper} or is calculated from it, and is changed only there"
         return sentences(changed, held)

@@ -51,7 +51,7 @@ class EnglishSources(EnglishSheet):
             case ((*above, name, at)) if name in _LISTED and at.isdecimal():
                 of = f" of {above[-1]}" if "branches" in above else ""
                 return f"{_LISTED[name]} {int(at) + 1}{of}"
-            case ("deviations", _, name):
+            case ("deviations", name):
                 return f"deviation, {name.replace('_', ' ')}"
         return self.held_name(path)
 

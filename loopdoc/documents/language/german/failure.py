@@ -45,9 +45,11 @@ class GermanFailure(GermanNaming, EnglishFailure):
         return "Nichts Unabhängiges im Register"
 
     def hazards(self, found: Sequence[tuple[Noun, str]]) -> str:
-        which = {"high": 0, "low": 1, "both": 2}
-        told = [f"{_HAZARD[name.gender][which[side]]} {name}" for name, side in found]
+        told = [self.hazard(name, which) for name, which in found]
         return sentence(f"{'Gefährlich ist' if len(told) == 1 else 'Gefährlich sind'} {self.listed(told)}")
+
+    def hazard(self, name: Noun, which: str) -> str:
+        return f"{_HAZARD[name.gender][('high', 'low', 'both').index(which)]} {name}"
 
     # -- the failure
 

@@ -105,7 +105,9 @@ class GermanGrammar(EnglishGrammar):
                 low, high = display_range(written).split(" to ")
                 return f"{self.digits(low)} bis {self._with_unit(high)}"
             case Gain():
-                return self._with_unit(display_gain(written)).replace(" per ", " je ")
+                changed, _, moved = self._with_unit(display_gain(written)).partition(" per ")
+                number, space, unit = changed.partition(NO_BREAK)
+                return f"{number}{space}{self.unit(unit)} je {self.unit(moved)}"
             case bool():
                 return "ja" if written else "nein"
             case int() | float():

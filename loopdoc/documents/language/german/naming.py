@@ -78,11 +78,6 @@ class GermanNaming(GermanGrammar, EnglishNaming):
         (verb, thing), *others = map(_done, moved)
         return self.listed([f"{verb} {who} {thing}", *(f"{verb} {thing}" for verb, thing in others)])
 
-    def _moves_last(self, who: str, moved: Moves) -> str:
-        """The verb last: `FIC-2011 das Stellglied FV-2011 schließt`."""
-        told = self.listed(f"{thing} {verb}" for verb, thing in map(_done, moved))
-        return f"{who} {told}"
-
 
 def _done(move: tuple[FinalElement, int]) -> tuple[str, str]:
     """Verb and object of what somebody does who moves a final element."""

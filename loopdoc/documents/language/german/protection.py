@@ -9,6 +9,7 @@ from loopdoc.documents.language.english.protection import EnglishProtection
 from loopdoc.documents.language.german.failure import GermanFailure
 from loopdoc.documents.language.german.grammar import number_word
 from loopdoc.documents.language.german.scheme import into_mode
+from loopdoc.documents.language.noun import Noun
 from loopdoc.documents.wording import sentences
 
 _DOES = {
@@ -48,6 +49,12 @@ class GermanProtection(GermanFailure, EnglishProtection):
     def alarm_limit(self, limit: str, deadband: str, delay: str) -> str:
         parts = [limit, f"Hysterese {deadband}" if deadband else "", f"nach {delay}" if delay else ""]
         return ", ".join(part for part in parts if part)
+
+    def alarm_consequence(self, consequence: str, hazards: Sequence[tuple[str, Noun, str]]) -> str:
+        if not hazards:
+            return consequence
+        told = self.listed(f"{self.hazard(name, side)} ({tag})" for tag, name, side in hazards)
+        return sentences(consequence, f"der Alarm zeigt auch an: {told}")
 
     def alarm_response(self, response: str, time: str) -> str:
         return sentences(response, f"innerhalb von {time}" if time else "")
@@ -146,8 +153,8 @@ class GermanProtection(GermanFailure, EnglishProtection):
 
     # -- response of an interlock
 
-    def acts_within(self, response: str, share: str, given: str, *, late: bool) -> tuple[str, ...]:
-        acts = f"Die Verriegelung wirkt innerhalb von {response}"
+    def acts_within(self, tag: str, response: str, share: str, given: str, *, late: bool) -> tuple[str, ...]:
+        acts = f"{tag} wirkt innerhalb von {response}"
         if not given:
             return (acts,)
         judged = "Ob das genügt, wird im Lebenszyklus der Sicherheitsfunktion beurteilt"
@@ -161,7 +168,7 @@ class GermanProtection(GermanFailure, EnglishProtection):
     def not_checked_in_time(self, *, safety_time: bool, response: bool) -> str:
         names = [*(["die Prozesssicherheitszeit"] if safety_time else []), *(["die Reaktionszeit"] if response else [])]
         lacking = f"{self.listed(names)} {'ist' if len(names) == 1 else 'sind'} nicht bekannt"
-        return f"Ob sie rechtzeitig wirkt, ist nicht geprüft: {lacking}"
+        return f"Ob die Verriegelung rechtzeitig wirkt, ist nicht geprüft: {lacking}"
 
     # -- time to act
 

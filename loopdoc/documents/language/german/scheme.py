@@ -16,7 +16,6 @@ from loopdoc.register.model import FinalElement, Measurement, known
 _PRONOUN = {"m": "ihn", "f": "sie", "n": "es"}
 _RELATIVE = {"m": "den", "f": "die", "n": "das"}
 _RISING = {"m": "steigendem", "f": "steigender", "n": "steigendem"}
-_A_RISING = {"m": "Ein steigender", "f": "Eine steigende", "n": "Ein steigendes"}
 _IN_MODE = {
     "manual": "im Handbetrieb",
     "automatic": "in Automatik",
@@ -99,16 +98,9 @@ class GermanScheme(GermanNaming, EnglishScheme):
         beside = self.in_brackets(measured) if measured else ""
         return f"{tag} regelt {with_article(what, 2)}{beside} {how}".rstrip()
 
-    def measured_and_held(
-        self, tag: str, what: Noun, how: str, measured: Measurement, *, limits: bool, turned: bool
-    ) -> str:
+    def measured_and_held(self, tag: str, what: Noun, how: str, measured: Measurement, *, limits: bool) -> str:
         by, written = self.with_sensor(measured), self.range_of(measured)
         over = f" im Messbereich {written}" if written else ""
-        if turned:
-            verb = "begrenzt" if limits else "regelt"
-            on = " auf seinen Sollwert" if limits else ""
-            relative = _RELATIVE[what.gender]
-            return f"{tag} {verb} {with_article(what, 2)}, {relative} {by}{over} misst,{f' {how}' if how else ''}{on}"
         verb, end = ("begrenzt", "auf seinen Sollwert") if limits else ("hält", "auf dem Sollwert")
         held = f"{verb} {_PRONOUN[what.gender]}{f' {how}' if how else ''} {end}"
         return f"{by} misst {with_article(what, 2)}{over}, und {tag} {held}"
@@ -197,23 +189,14 @@ class GermanScheme(GermanNaming, EnglishScheme):
 
     # -- which way, and why
 
-    def rising(self, rises: Sequence[Rise], actions: Sequence[Action], told: Sequence[str], variant: int) -> str:
-        if variant == 2 and len(rises) == 1 and len(actions) == 1 and not told:
-            action, rise = actions[0], rises[0]
-            if action.tags == (rise.tag,):
-                why = self._because(action.reasons)
-                wirkt = f"wirkt {rise.tag} {self.term('action', action.action)}"
-                return sentences(f"Weil {why}, {wirkt}: {self._rise(rise, 0)}")
+    def rising(self, rises: Sequence[Rise], actions: Sequence[Action], told: Sequence[str]) -> str:
         acting = "; ".join(self._action(action) for action in actions)
-        return sentences(*(self._rise(rise, variant) for rise in rises), acting, *told)
+        return sentences(*(self._rise(rise) for rise in rises), acting, *told)
 
-    def _rise(self, rise: Rise, variant: int) -> str:
+    def _rise(self, rise: Rise) -> str:
         if rise.same:
             return f"Steigt {self.the(rise.what)}, reagiert {rise.tag} ebenso"
         first, *others = rise.steps
-        if variant == 1:
-            caused = self.listed(self._last(step) for step in rise.steps)
-            return f"{_A_RISING[rise.what.gender]} {rise.what} bewirkt, dass {caused}"
         told = [self._inverted(first), *(self._plain(step) for step in others)]
         return f"Steigt {self.the(rise.what)}, {_clauses(told)}"
 
@@ -226,11 +209,6 @@ class GermanScheme(GermanNaming, EnglishScheme):
         if isinstance(step, Asked):
             return f"{'erhöht' if step.up else 'senkt'} {step.by} den Sollwert von {step.of}"
         return self._moves_inverted(step.by, step.moves)
-
-    def _last(self, step: Asked | Moved) -> str:
-        if isinstance(step, Asked):
-            return f"{step.by} den Sollwert von {step.of} {'erhöht' if step.up else 'senkt'}"
-        return self._moves_last(step.by, step.moves)
 
     def _action(self, action: Action) -> str:
         who, several = self.listed(action.tags), len(action.tags) > 1
@@ -333,16 +311,11 @@ class GermanScheme(GermanNaming, EnglishScheme):
             "Grenze ist; die Rückkehr ist stoßfrei"
         )
 
-    def tracks(self, upper: str, lower: str, variant: int) -> str:
-        variants = (
+    def tracks(self, upper: str, lower: str) -> str:
+        return (
             f"Solange {lower} nicht in Kaskade oder an einer Grenze ist, wird {upper} nachgeführt, sodass die Rückkehr "
-            "stoßfrei ist",
-            f"{upper} wird {lower} nachgeführt, solange dieser nicht in Kaskade oder an einer Grenze ist, und "
-            "übernimmt danach stoßfrei",
-            f"Verlässt {lower} die Kaskade oder erreicht er eine Grenze, wird {upper} nachgeführt; die Rückkehr ist "
-            "stoßfrei",
+            "stoßfrei ist"
         )
-        return variants[variant]
 
     def does_not_track(self, uppers: Iterable[str], lower: str, policy: str) -> str:
         who = list(uppers)

@@ -52,7 +52,7 @@ class GermanSources(GermanSheet, EnglishSources):
             case ((*above, name, at)) if name in _LISTED and at.isdecimal():
                 of = f" für {above[-1]}" if "branches" in above else ""
                 return f"{_LISTED[name]} {int(at) + 1}{of}"
-            case ("deviations", _, name):
+            case ("deviations", name):
                 return f"Abweichung, {_DEVIATION.get(name, self.quoted(name))}"
         return self.held_name(path)
 
