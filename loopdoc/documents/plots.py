@@ -14,7 +14,7 @@ class Curve:
 
     label: str
     style: str
-    """solid, dashed, dotted, or points that no line joins."""
+    """solid, dashed, dash-dotted, dotted, or points that no line joins."""
     x: NDArray[np.float64]
     y: NDArray[np.float64]
 

@@ -239,6 +239,41 @@ def moved_in(written: model.Disturbance, entering: FunctionInput) -> MeasuredMov
     return MeasuredMove(entering.path.measurement, size_pct, max(0.0, seconds(move.lag))) if size_pct else None
 
 
+@dataclass(frozen=True, slots=True)
+class InputMoves:
+    """What a function takes in besides the loops of a chain, and which declared upsets move it in the responses."""
+
+    function: str
+    """Tag of the function."""
+    tag: str
+    """As the function takes it in."""
+    moved_by: tuple[str, ...]
+    """Names of the scenarios; under every other one it stays as it is."""
+    reason: str
+    """Why a move that the register gives is not followed; empty where none is left out."""
+
+
+def input_moves(chain: Chain) -> tuple[InputMoves, ...]:
+    """What functions on the way of a chain take in besides its loops, the outermost first."""
+    scenarios = declared_scenarios(chain)
+    written = [one for level in chain.levels for one in level.loop.loop.disturbances.values()]
+    found = []
+    for entering in (one for level in reversed(chain.levels) for one in level.inputs):
+        path, reason = entering.path, ""
+        moved: tuple[str, ...] = ()
+        if isinstance(path, Undecided):
+            named = any(name in one.moves for one in written for name in entering.names)
+            reason = path.reason if named else ""
+        else:
+            moved = tuple(
+                scenario.name
+                for scenario in scenarios
+                if any(move.measurement == path.measurement for move in scenario.moves)
+            )
+        found.append(InputMoves(entering.function, entering.tag, moved, reason))
+    return tuple(found)
+
+
 def cascade_error_ratios(cascades: Sequence[ChainDynamics]) -> tuple[float | Lacking, ...]:
     """What each cascade leaves of the error after an upset at its secondary, as a share of the single loop's.
 

@@ -7,7 +7,7 @@ from collections.abc import Iterator, Sequence
 from itertools import pairwise
 from typing import Any
 
-from loopdoc.engineering.comparison import UPSET_PCT, Comparison, NotSimulated, ScenarioResponses
+from loopdoc.engineering.comparison import UPSET_PCT, Comparison, NotSimulated, ScenarioResponses, input_moves
 from loopdoc.engineering.dynamics import ChainDynamics, LoopDynamics
 from loopdoc.engineering.frequency import speed_ratio
 from loopdoc.engineering.override import Override
@@ -75,6 +75,11 @@ def _chain_object(dynamics: ChainDynamics, comparison: Comparison | NotSimulated
     if isinstance(comparison, NotSimulated):
         found["not_simulated"] = comparison.reason
     else:
+        found["function_inputs"] = [
+            {"function": one.function, "input": one.tag, "moved_by": list(one.moved_by)}
+            | ({"not_moved": one.reason} if one.reason else {})
+            for one in input_moves(dynamics.chain)
+        ]
         found["scenarios"] = {
             entry.scenario.name: _scenario_object(entry, own, single=len(levels) == 1) for entry in comparison.scenarios
         }
@@ -104,10 +109,16 @@ def single_assumption(comparison: Comparison) -> str:
 
 
 def _scenario_object(entry: ScenarioResponses, own: Range, *, single: bool) -> dict[str, Any]:
+    name, unaided = "loop" if single else "cascade", entry.without_feedforward
+    found: dict[str, Any] = {name: metrics_object(entry.tuned.metrics, own)}
+    if unaided is not None:
+        found[f"{name}_without_feedforward"] = metrics_object(unaided.metrics, own)
+        found["with_over_without_feedforward"] = {
+            name: number(entry.feedforward_ratio(of)) for name, of in RATIOS.items()
+        }
     if single:
-        return {"loop": metrics_object(entry.tuned.metrics, own)}
-    return {
-        "cascade": metrics_object(entry.tuned.metrics, own),
+        return found
+    return found | {
         "single": metrics_object(entry.single.metrics, own) if entry.single else None,
         "cascade_over_single": {name: number(entry.ratio(of)) for name, of in RATIOS.items()} if entry.single else None,
     }
@@ -192,15 +203,17 @@ def _scenario_lines(comparison: Comparison) -> Iterator[str]:
     width = max(24, *(len(entry.scenario.name) + 2 for entry in comparison.scenarios))
     yield f"{'upset':{width}}{'':16}{metric_heads(unit)}"
     for entry in comparison.scenarios:
-        rows = [("as tuned", entry.tuned)] + ([("single", entry.single)] if entry.single else [])
-        for name, response in rows:
+        unaided = entry.without_feedforward
+        rows = [("as tuned", entry.tuned)] + ([("no feedforward", unaided)] if unaided else [])
+        for name, response in rows + ([("single", entry.single)] if entry.single else []):
             yield (
                 f"{entry.scenario.name if name == 'as tuned' else '':{width}}{name:16}"
                 f"{metric_cells(response.metrics, own, entry.peak_time_s(response))}"
             )
-        if entry.single:
-            peak, iae, settling = (_ratio(entry.ratio(of)) for of in RATIOS.values())
-            yield f"{'':{width}}{'cascade/single':16}{peak:>14}{'':9}{iae:>16}{settling:>14}"
+        for name, ratio in (("with/without", entry.feedforward_ratio), ("cascade/single", entry.ratio)):
+            if unaided if name == "with/without" else entry.single:
+                peak, iae, settling = (_ratio(ratio(of)) for of in RATIOS.values())
+                yield f"{'':{width}}{name:16}{peak:>14}{'':9}{iae:>16}{settling:>14}"
     yield from _upsets_told(comparison)
     if len(comparison.dynamics.chain.levels) > 1:
         yield single_assumption(comparison)
@@ -231,6 +244,7 @@ def _upsets_told(comparison: Comparison) -> Iterator[str]:
         "where that band is never left, ∞ where it is not seen to stay; overshoot: beyond the new setpoint, else to "
         "the other side in percent of the peak; turns: of the final element, those that went back by at least 0.1 %"
     )
+    yield from _inputs_told(comparison)
     yield from steps_told(comparison.dynamics)
     for entry, tag, travel_pct in comparison.at_limit:
         yield (
@@ -243,6 +257,20 @@ def _upsets_told(comparison: Comparison) -> Iterator[str]:
         for metrics in (entry.tuned.metrics for entry in comparison.scenarios)
     ):
         yield f"IAE ∞: an offset stays, since {comparison.dynamics.chain.lead.tag} has no reset"
+
+
+def _inputs_told(comparison: Comparison) -> Iterator[str]:
+    """What functions take in besides the loops, and what moves it."""
+    for one in input_moves(comparison.dynamics.chain):
+        named = ", ".join(one.moved_by)
+        but = f", except under: {named}" if named else f" ({one.reason})" if one.reason else ""
+        yield f"{one.tag} into {one.function}: stays as it is in the time responses{but}"
+    if any(entry.without_feedforward for entry in comparison.scenarios):
+        alone = len(comparison.dynamics.chain.levels) == 1
+        yield (
+            "no feedforward: the same upset with what enters the functions as it was; with/without: what feedforward "
+            "leaves of it" + ("" if alone else "; single and cascade/single: without feedforward on either side")
+        )
 
 
 def _with_unit(figure: str, symbol: str) -> str:

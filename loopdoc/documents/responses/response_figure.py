@@ -57,7 +57,14 @@ def panels(
     chain = comparison.dynamics.chain
     lead = chain.lead
     own = measured_range(lead)
-    last = drawn_until_s([response for one in comparison.scenarios for response in (one.tuned, one.single) if response])
+    last = drawn_until_s(
+        [
+            response
+            for one in comparison.scenarios
+            for response in (one.tuned, one.without_feedforward, one.single)
+            if response
+        ]
+    )
     _, divisor, time_unit = next(unit for unit in TIME_UNITS if last >= unit[0])
     name_of_tuned = language.label("cascade" if entry.single else "as tuned")
 
@@ -69,6 +76,7 @@ def panels(
     valves = []
     for name, style, response in (
         (name_of_tuned, "solid", entry.tuned),
+        (language.label("without feedforward"), "dash-dotted", entry.without_feedforward),
         (language.label("single loop"), "dashed", entry.single),
     ):
         if response is not None:

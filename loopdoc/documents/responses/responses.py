@@ -27,13 +27,13 @@ from loopdoc.documents.responses.upset_story import declared_upsets, single_loop
 from loopdoc.documents.values import DASH, shown
 from loopdoc.documents.view import Figure
 from loopdoc.documents.wording import listed, sentences
-from loopdoc.engineering.comparison import Comparison, NotSimulated
+from loopdoc.engineering.comparison import Comparison, NotSimulated, ScenarioResponses, input_moves
 from loopdoc.engineering.dynamics import ChainDynamics
 from loopdoc.engineering.frequency import speed_ratio
-from loopdoc.engineering.functions import fed_by
 from loopdoc.engineering.override import Override
-from loopdoc.engineering.pairing import Plant, Scheme
+from loopdoc.engineering.pairing import Scheme
 from loopdoc.engineering.setpoint_steps import steps_told
+from loopdoc.engineering.simulation import Response
 from loopdoc.engineering.split_range import SplitRange
 from loopdoc.engineering.stages import measured_range
 from loopdoc.engineering.tuning_review import NotReviewed, TuningReview, review
@@ -194,7 +194,7 @@ def section(basis: Basis, dynamics: ChainDynamics, *, several: bool) -> dict[str
         "caption": caption(comparison) if comparison else "",
         "declared": declared_upsets(dynamics, compared),
         "stepped": " ".join(steps_told(dynamics)) if comparison else "",
-        "held": held_note(basis.plant, dynamics) if comparison else "",
+        "held": held_note(dynamics) if comparison else "",
         "assumption": single_loop_assumption(comparison) if comparison else "",
         "frequency_figure": to_svg(frequency_drawing(dynamics)),
         "frequency_caption": frequency_caption(dynamics),
@@ -280,34 +280,52 @@ def metric_rows(comparison: Comparison) -> list[dict[str, str]]:
     own = measured_range(comparison.dynamics.chain.lead)
     return [
         {
-            "upset": upset_name(comparison, entry),
-            "peak": _eu(entry.tuned.metrics.peak_pct, own),
-            "iae": _eu(entry.tuned.metrics.iae_pct_s / 60.0, own),
-            "settling": duration(entry.tuned.metrics.settling_s),
-            "single_peak": _eu(entry.single.metrics.peak_pct, own) if entry.single else DASH,
-            "single_iae": _eu(entry.single.metrics.iae_pct_s / 60.0, own) if entry.single else DASH,
-            "single_settling": duration(entry.single.metrics.settling_s) if entry.single else DASH,
-            "peak_ratio": number(entry.ratio("peak_pct")),
-            "iae_ratio": number(entry.ratio("iae_pct_s")),
-            "settling_ratio": number(entry.ratio("settling_s")),
+            "upset": name,
+            "peak": _eu(ours.metrics.peak_pct, own),
+            "iae": _eu(ours.metrics.iae_pct_s / 60.0, own),
+            "settling": duration(ours.metrics.settling_s),
+            "single_peak": _eu(single.metrics.peak_pct, own) if single else DASH,
+            "single_iae": _eu(single.metrics.iae_pct_s / 60.0, own) if single else DASH,
+            "single_settling": duration(single.metrics.settling_s) if single else DASH,
+            "peak_ratio": number(entry.ratio("peak_pct")) if single else DASH,
+            "iae_ratio": number(entry.ratio("iae_pct_s")) if single else DASH,
+            "settling_ratio": number(entry.ratio("settling_s")) if single else DASH,
         }
-        for entry in comparison.scenarios
+        for entry, name, ours, single in _rows(comparison)
     ]
 
 
-def held_note(plant: Plant, dynamics: ChainDynamics) -> str:
-    """What enters functions on the way besides the loops themselves, and so takes no part; empty where nothing does."""
-    told = []
-    for level in reversed(dynamics.chain.levels):
-        commander = level.loop.tag
-        for function in level.route.via:
-            entering = fed_by(plant, function, commander)
-            if entering:
-                told.append(f"{listed(entering)} into {function.tag}")
-            commander = function.tag
-    if not told:
-        return ""
-    return sentences(f"What functions take in besides stays as it is in the responses over time: {listed(told)}")
+def _rows(comparison: Comparison) -> Iterator[tuple[ScenarioResponses, str, Response, Response | None]]:
+    """Each upset with its name and the responses that stand side by side.
+
+    With feedforward there is a row without, which the single loop stands beside: it has none either.
+    """
+    for entry in comparison.scenarios:
+        name, unaided = upset_name(comparison, entry), entry.without_feedforward
+        if unaided is None:
+            yield entry, name, entry.tuned, entry.single
+        else:
+            yield entry, name, entry.tuned, None
+            yield entry, "The same without feedforward", unaided, entry.single
+
+
+def held_note(dynamics: ChainDynamics) -> str:
+    """What enters functions on the way besides the loops themselves, and what moves it; empty where nothing does."""
+    inputs = input_moves(dynamics.chain)
+    still = [
+        f"{one.tag} into {one.function}" + (f" ({one.reason})" if one.reason else "")
+        for one in inputs
+        if not one.moved_by
+    ]
+    return sentences(
+        f"What functions take in besides stays as it is in the responses over time: {listed(still)}" if still else "",
+        *(
+            f"{one.tag} into {one.function} moves in the responses over time under {listed(one.moved_by)}, and stays "
+            "as it is under every other upset"
+            for one in inputs
+            if one.moved_by
+        ),
+    )
 
 
 def at_limit_note(comparison: Comparison) -> str:
@@ -329,21 +347,24 @@ def movement_rows(comparison: Comparison) -> list[dict[str, Any]]:
     """
     return [
         {
-            "upset": upset_name(comparison, entry),
+            "upset": name,
             "cells": [
                 cell
-                for response in (entry.tuned, entry.single)
-                if response is not None
-                for cell in (
-                    duration(entry.peak_time_s(response)),
-                    f"{number(response.metrics.overshoot_pct)} %",
-                    f"{number(response.metrics.valve_travel_pct)} %",
-                    str(response.metrics.reversals),
-                )
+                for response in (ours, *((single,) if comparison.single else ()))
+                for cell in (_movements(entry, response) if response else (DASH,) * 4)
             ],
         }
-        for entry in comparison.scenarios
+        for entry, name, ours, single in _rows(comparison)
     ]
+
+
+def _movements(entry: ScenarioResponses, response: Response) -> tuple[str, ...]:
+    return (
+        duration(entry.peak_time_s(response)),
+        f"{number(response.metrics.overshoot_pct)} %",
+        f"{number(response.metrics.valve_travel_pct)} %",
+        str(response.metrics.reversals),
+    )
 
 
 def _eu(percent: float, own: Range) -> str:

@@ -6,10 +6,10 @@ from collections.abc import Iterator
 
 from loopdoc.documents.language import ENGLISH, Language
 from loopdoc.documents.wording import sentences
-from loopdoc.engineering.comparison import Comparison, NotSimulated, ScenarioResponses
+from loopdoc.engineering.comparison import Comparison, NotSimulated, ScenarioResponses, moved_in
 from loopdoc.engineering.dynamics import ChainDynamics
 from loopdoc.engineering.pairing import ControlledLoop
-from loopdoc.engineering.stages import Lacking, Level, commanded, measured_range
+from loopdoc.engineering.stages import Chain, Lacking, commanded, measured_range
 from loopdoc.engineering.upsets import declared_step
 from loopdoc.register.model import Disturbance, Process, known
 from loopdoc.register.units import unit
@@ -81,7 +81,7 @@ def declared_upsets(
     levels = dynamics.chain.levels
     return sentences(
         *(
-            _declared(written, position, level, comparison, language)
+            _declared(written, position, dynamics, comparison, language)
             for position, level in enumerate(levels)
             for written in level.loop.loop.disturbances.values()
         )
@@ -89,8 +89,13 @@ def declared_upsets(
 
 
 def _declared(
-    written: Disturbance, position: int, level: Level, comparison: Comparison | NotSimulated, language: Language
+    written: Disturbance,
+    position: int,
+    dynamics: ChainDynamics,
+    comparison: Comparison | NotSimulated,
+    language: Language,
 ) -> str:
+    level = dynamics.chain.levels[position]
     tag = level.loop.tag
     step = declared_step(written, level.loop, level.route, level.stage.process)
     if isinstance(step, Lacking):
@@ -105,6 +110,10 @@ def _declared(
         lags = process.lags if isinstance(process, Process) and isinstance(process.lags, tuple) else ()
         own, others = language.value(lag) if lag is not None else "", [language.value(one) for one in lags]
         told = language.upset_moves(written.name, tag, language.value(size), own, others)
+    dead_time = known(written.dead_time)
+    if dead_time is not None and dead_time.value:
+        told = language.upset_late(told, language.value(dead_time))
+    told = _with_moves(told, written, dynamics.chain, language)
     if isinstance(comparison, NotSimulated):
         return told
     entry = next(
@@ -123,7 +132,42 @@ def _declared(
 def _outcome(told: str, comparison: Comparison, entry: ScenarioResponses, language: Language) -> str:
     lead = comparison.dynamics.chain.lead
     alone = peak(entry.single.metrics.peak_pct, lead, language) if entry.single is not None else ""
-    return language.upset_outcome(told, lead.tag, peak(entry.tuned.metrics.peak_pct, lead, language), alone)
+    unaided = entry.without_feedforward
+    without = peak(unaided.metrics.peak_pct, lead, language) if unaided is not None else ""
+    told = language.upset_outcome(told, lead.tag, peak(entry.tuned.metrics.peak_pct, lead, language), without, alone)
+    return sentences(told, feedforward_leaves(comparison, entry, language)) if without else told
+
+
+def feedforward_leaves(comparison: Comparison, entry: ScenarioResponses, language: Language = ENGLISH) -> str:
+    """What feedforward leaves of an upset, without the full stop; empty where there is nothing to compare."""
+    peaks, errors = entry.feedforward_ratio("peak_pct"), entry.feedforward_ratio("iae_pct_s")
+    if peaks is None or errors is None:
+        return ""
+    tag, by = comparison.dynamics.chain.lead.tag, language.by_simulation()
+    of_peak, of_error = (
+        language.calculated(language.number(100.0 * share, 2), tag, what, by)
+        for share, what in (
+            (peaks, language.label("Share of the peak without feedforward")),
+            (errors, language.label("Share of the error integral without feedforward")),
+        )
+    )
+    return language.feedforward_leaves(upset_name(comparison, entry, language), of_peak, of_error)
+
+
+def _with_moves(told: str, written: Disturbance, chain: Chain, language: Language) -> str:
+    """Which measurements move with a disturbance, and what comes of that."""
+    left = dict(written.moves)
+    for entering in (one for level in reversed(chain.levels) for one in level.inputs):
+        move = next((written.moves[name] for name in entering.names if name in written.moves), None)
+        size = known(move.size) if move is not None else None
+        if move is None or size is None or moved_in(written, entering) is None:
+            continue
+        lag = known(move.lag)
+        told = language.upset_fed_forward(
+            told, move.tag, language.value(size), language.value(lag) if lag is not None else "", entering.function
+        )
+        left.pop(move.tag, None)
+    return language.upset_not_fed_forward(told, list(left)) if left else told
 
 
 def single_loop_assumption(comparison: Comparison, language: Language = ENGLISH) -> str:

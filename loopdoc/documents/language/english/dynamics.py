@@ -100,11 +100,36 @@ class EnglishDynamics(EnglishGrammar):
             through = "at once"
         return f"The upset “{name}” (declared at {tag}) moves the measurement of {tag} by {size}, {through}"
 
-    def upset_outcome(self, told: str, lead: str, peak: str, alone: str) -> str:
-        """What comes of a declared upset; ``alone`` is empty where there is no single loop to compare with."""
+    def upset_late(self, told: str, dead_time: str) -> str:
+        """A declared upset that arrives after a dead time of its own."""
+        return f"{told}, after a dead time of {dead_time}"
+
+    def upset_fed_forward(self, told: str, tag: str, size: str, lag: str, function: str) -> str:
+        """A measurement that moves with a declared upset, at once or through a lag, and what feeds it forward."""
+        how = f"through a lag of {lag}" if lag else "at once"
+        return f"{told}; {tag} moves by {size} {how}, and {function} feeds that forward"
+
+    def upset_not_fed_forward(self, told: str, tags: Sequence[str]) -> str:
+        """Measurements that move with a declared upset and of which no function on the way makes anything."""
+        verb = "moves" if len(tags) == 1 else "move"
+        return f"{told}; {self.listed(tags)} {verb} with it, of which nothing is fed forward"
+
+    def upset_outcome(self, told: str, lead: str, peak: str, without: str, alone: str) -> str:
+        """What comes of a declared upset; ``without`` is empty where nothing is fed forward, ``alone`` where there is
+        no single loop to compare with.
+        """
+        unaided = f", without feedforward by {without}" if without else ""
         if not alone:
-            return f"{told}; as tuned, {lead} then departs by {peak} at most"
-        return f"{told}; with the cascade {lead} then departs by {peak} at most, with the single loop by {alone}"
+            return f"{told}; as tuned, {lead} then departs by {peak} at most{unaided}"
+        single = f"with the single loop{', which has none,' if without else ''} by {alone}"
+        return f"{told}; with the cascade {lead} then departs by {peak} at most{unaided}, {single}"
+
+    def feedforward_leaves(self, upset: str, share_of_peak: str, share_of_error: str) -> str:
+        """What feedforward leaves of an upset, in percent of what comes of it without."""
+        return (
+            f"Of the peak after {upset[0].lower()}{upset[1:]}, feedforward leaves {share_of_peak}{NO_BREAK}%, and of "
+            f"the integral of the absolute error {share_of_error}{NO_BREAK}%"
+        )
 
     def nothing_to_compare(self, element: str) -> str:
         """A cascade without a single loop to compare with."""

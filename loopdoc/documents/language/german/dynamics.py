@@ -94,12 +94,28 @@ class GermanDynamics(GermanGrammar, EnglishDynamics):
         named = f"Die Störung {self.quoted(name)} (angegeben bei {tag})"
         return f"{named} verändert den Messwert von {tag} um {size}, {through}"
 
-    def upset_outcome(self, told: str, lead: str, peak: str, alone: str) -> str:
+    def upset_late(self, told: str, dead_time: str) -> str:
+        return f"{told}, nach einer Totzeit von {dead_time}"
+
+    def upset_fed_forward(self, told: str, tag: str, size: str, lag: str, function: str) -> str:
+        how = f"mit der Zeitkonstante {lag}" if lag else "ohne Verzögerung"
+        return f"{told}; {tag} ändert sich dabei um {size} ({how}), was {function} als Störgröße aufschaltet"
+
+    def upset_not_fed_forward(self, told: str, tags: Sequence[str]) -> str:
+        verb = "ändert sich" if len(tags) == 1 else "ändern sich"
+        return f"{told}; {self.listed(tags)} {verb} dabei, ohne aufgeschaltet zu werden"
+
+    def upset_outcome(self, told: str, lead: str, peak: str, without: str, alone: str) -> str:
+        unaided = f", ohne Störgrößenaufschaltung um {without}" if without else ""
         if not alone:
-            return f"{told}; mit der vorliegenden Einstellung weicht {lead} dann um höchstens {peak} ab"
+            return f"{told}; mit der vorliegenden Einstellung weicht {lead} dann um höchstens {peak} ab{unaided}"
+        single = f"mit der einschleifigen Regelung{', die keine hat,' if without else ''} um {alone}"
+        return f"{told}; mit der Kaskade weicht {lead} dann um höchstens {peak} ab{unaided}, {single}"
+
+    def feedforward_leaves(self, upset: str, share_of_peak: str, share_of_error: str) -> str:
         return (
-            f"{told}; mit der Kaskade weicht {lead} dann um höchstens {peak} ab, mit der einschleifigen Regelung um "
-            f"{alone}"
+            f"{upset}: Die Störgrößenaufschaltung lässt {share_of_peak}{NO_BREAK}% der größten Abweichung und "
+            f"{share_of_error}{NO_BREAK}% des Integrals des Absolutwerts der Regeldifferenz übrig"
         )
 
     def nothing_to_compare(self, element: str) -> str:
