@@ -8,7 +8,7 @@ from typing import Any, TypeVar
 
 from loopdoc.documents.handover.house import NO_HOUSE, House
 from loopdoc.documents.language import ENGLISH, LANGUAGES, Language
-from loopdoc.documents.titleblock import FINGERPRINT_DIGITS, Document, document, fingerprint
+from loopdoc.documents.titleblock import Document, title_block
 from loopdoc.documents.tracing import traced
 from loopdoc.engineering.comparison import Comparison, NotSimulated, compare
 from loopdoc.engineering.dynamics import ChainDynamics, Dynamics
@@ -50,6 +50,7 @@ class Basis:
     _override: dict[str, Override | NotSimulated | None] = field(default_factory=dict, repr=False)
     _drawn: dict[tuple[object, str], str] = field(default_factory=dict, repr=False)
     _pages: dict[str, tuple[Page, ...]] = field(default_factory=dict, repr=False)
+    _title_blocks: dict[str, Document] = field(default_factory=dict, repr=False)
 
     def __post_init__(self) -> None:
         object.__setattr__(self, "times", TimeToAct(self.plant))
@@ -68,7 +69,7 @@ class Basis:
     @property
     def fingerprint(self) -> str:
         """First digits of the register's fingerprint, as the title block prints them."""
-        return fingerprint(self.sources)[:FINGERPRINT_DIGITS]
+        return self._title_block(ENGLISH).fingerprint
 
     def comparison(self, chain: ChainDynamics) -> Comparison | NotSimulated:
         """Time responses of a chain, or why there is none, simulated once for all documents."""
@@ -138,14 +139,25 @@ class Basis:
         serial: str,
         language: Language = ENGLISH,
     ) -> Document:
-        """Title block of one document of this register; ``kind`` is its English name."""
-        ours = document(
-            self.plant, self.result, self.sources,
-            kind=kind, code=code, title=title, supplementary_title=supplementary_title, unit=unit, serial=serial,
-            language=language,
-        )  # fmt: skip
-        cautions = " ".join(filter(None, (ours.cautions, self.house.cautions)))
-        return replace(ours, owner=self.house.owner or ours.owner, cautions=cautions, house=self.house)
+        """Title block of one document; ``kind`` is its English name, ``code`` its kind in the number, such as `CN`."""
+        numbering = self.plant.register.numbering
+        return replace(
+            self._title_block(language),
+            kind=language.label(kind),
+            title=title,
+            supplementary_title=supplementary_title,
+            number=numbering.replace("{unit}", unit).replace("{kind}", code).replace("{serial}", serial),
+        )
+
+    def _title_block(self, language: Language) -> Document:
+        """What all documents share, worked out once: the fingerprint reads the whole register."""
+        if language.code not in self._title_blocks:
+            ours = title_block(self.plant, self.result, self.sources, language)
+            cautions = " ".join(filter(None, (ours.cautions, self.house.cautions)))
+            self._title_blocks[language.code] = replace(
+                ours, owner=self.house.owner or ours.owner, cautions=cautions, house=self.house
+            )
+        return self._title_blocks[language.code]
 
 
 def basis_of(

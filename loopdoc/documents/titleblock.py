@@ -99,30 +99,20 @@ def fingerprint(sources: Mapping[str, bytes]) -> str:
     return digest.hexdigest()
 
 
-def document(
-    plant: Plant,
-    result: CheckResult,
-    sources: Mapping[str, bytes],
-    *,
-    kind: str,
-    code: str,
-    title: str,
-    supplementary_title: str,
-    unit: str,
-    serial: str,
-    language: Language = ENGLISH,
+def title_block(
+    plant: Plant, result: CheckResult, sources: Mapping[str, bytes], language: Language = ENGLISH
 ) -> Document:
-    """The title block of a document; ``code`` is its kind in the document number, such as `CN`."""
+    """What the title blocks of all documents of a register share; their own fields are empty."""
     register = plant.register
     site = register.site
     revision = register.revision
     return Document(
         owner=language.shown(site.owner if site else None),
         site=language.shown(site.name if site else None),
-        kind=language.label(kind),
-        title=title,
-        supplementary_title=supplementary_title,
-        number=register.numbering.replace("{unit}", unit).replace("{kind}", code).replace("{serial}", serial),
+        kind="",
+        title="",
+        supplementary_title="",
+        number="",
         revision=_row(revision, language),
         history=tuple(
             _row(entry, language) for entry in ((revision,) if revision else ()) + tuple(reversed(register.history))
