@@ -8,7 +8,7 @@ from functools import lru_cache
 from importlib.resources import files
 from typing import Any
 
-from jinja2 import FunctionLoader, StrictUndefined, select_autoescape
+from jinja2 import Environment, FunctionLoader, StrictUndefined, select_autoescape
 from jinja2.sandbox import SandboxedEnvironment
 
 from loopdoc.documents.bounded import within_limits
@@ -31,12 +31,13 @@ def template_text(name: str) -> str:
 
 
 @lru_cache(maxsize=4)
-def _environment(house: House) -> SandboxedEnvironment:
+def _environment(house: House) -> Environment:
     def load(name: str) -> tuple[str, str, None]:
         own = house.template(name)
         return (template_text(name), name, None) if own is None else (own, f"{FOLDER}/{name}", None)
 
-    environment = SandboxedEnvironment(
+    # Our own templates need no sandbox, which asks about every attribute and takes as long again as the page.
+    environment = (SandboxedEnvironment if house.has_templates else Environment)(
         loader=FunctionLoader(load),
         autoescape=select_autoescape(default=True, default_for_string=True),
         undefined=StrictUndefined,

@@ -6,6 +6,7 @@ import hashlib
 from collections.abc import Mapping
 from dataclasses import dataclass
 from datetime import date
+from functools import lru_cache
 
 from loopdoc import __version__
 from loopdoc.documents.handover.house import NO_HOUSE, House
@@ -91,9 +92,14 @@ class Document:
 
 def fingerprint(sources: Mapping[str, bytes]) -> str:
     """SHA-256 of the register: names and contents of its files in order of name, as hexadecimal digits."""
+    return _digest(tuple(sorted(sources.items())))
+
+
+@lru_cache(maxsize=8)  # every document asks, and a register may have many megabytes
+def _digest(files: tuple[tuple[str, bytes], ...]) -> str:
     digest = hashlib.sha256()
-    for name in sorted(sources):
-        content = sources[name].replace(b"\r\n", b"\n")  # a checkout on another system is the same register
+    for name, written in files:
+        content = written.replace(b"\r\n", b"\n")  # a checkout on another system is the same register
         digest.update(f"{name}\0{len(content)}\0".encode())
         digest.update(content)
     return digest.hexdigest()

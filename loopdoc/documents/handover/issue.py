@@ -46,7 +46,6 @@ KINDS: dict[str, Callable[[Basis], Iterator[Page]]] = {
 
 FORMATS = ("pdf", "html")
 STYLE_SHEET = "style.css"
-FILES_PER_BATCH = 4
 
 
 @dataclass(frozen=True, slots=True)
@@ -127,7 +126,7 @@ def _pdfs(basis: Basis, issued: Sequence[tuple[str, Page]], jobs: int) -> Iterat
         yield from map(_to_pdf, sources)
         return
     with ProcessPoolExecutor(jobs) as pool:
-        yield from pool.map(_to_pdf, sources, chunksize=FILES_PER_BATCH)
+        yield from pool.map(_to_pdf, sources)  # one by one: a narrative takes as long as ten loop sheets
 
 
 def _pdf_source(basis: Basis, kind: str, page: Page) -> tuple[str, tuple[Enclosure, ...], str, str]:
