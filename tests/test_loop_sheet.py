@@ -18,6 +18,7 @@ from pypdf import PdfReader
 from loopdoc.documents import pdf
 from loopdoc.documents.basis import Basis, Page
 from loopdoc.documents.handover.house import house_of
+from loopdoc.documents.language import ENGLISH, GERMAN, Language
 from loopdoc.documents.loop_sheet.expected_signals import ExpectedRow, expected_commands, expected_readings
 from loopdoc.documents.loop_sheet.loop_sheet import SheetView, loop_sheets, sheet_height
 from loopdoc.documents.page_fit import DENSITIES, room, title_block_height
@@ -42,8 +43,13 @@ def basis_of(folder: Path) -> Basis:
 
 
 @cache
-def pages_of(name: str) -> tuple[Page, ...]:
-    return tuple(loop_sheets(basis_of(EXAMPLES / name)))
+def example(name: str) -> Basis:
+    return basis_of(EXAMPLES / name)
+
+
+@cache
+def pages_of(name: str, language: Language = ENGLISH) -> tuple[Page, ...]:
+    return tuple(loop_sheets(example(name).in_language(language)))
 
 
 def page_of(name: str, tag: str) -> Page:
@@ -125,26 +131,31 @@ def fill(page: Page) -> float:
     return sheet_height(view, SIZES[view.density]) / room(page.document)
 
 
+@pytest.mark.parametrize("language", [ENGLISH, GERMAN])
 @pytest.mark.parametrize("name", NAMES)
-def test_a_full_sheet_is_one_page_with_nothing_on_top_of_anything(name: str) -> None:
-    """The sheets that fill nine tenths of their page and more, and the fullest indicator."""
-    indicators = [page for page in pages_of(name) if not page.view["sheet"].controller]
-    chosen = [page for page in pages_of(name) if fill(page) > 0.9] + [max(indicators, key=fill)]
+def test_a_full_sheet_is_one_page_with_nothing_on_top_of_anything(name: str, language: Language) -> None:
+    """The sheets that fill nine tenths of their page and more, ten at most, and the fullest indicator."""
+    pages = sorted(pages_of(name, language), key=fill, reverse=True)
+    indicator = next(page for page in pages if not page.view["sheet"].controller)
+    chosen = [indicator, *(page for page in pages[:10] if fill(page) > 0.9)]
     assert len(chosen) > 5
     for page in chosen:
         found = SetPage(page)
         view = page.view["sheet"]
         assert found.count == 1, page.name
         assert found.overlaps() == [], page.name
-        assert found.broken_words() == set(), page.name
+        assert language is GERMAN or found.broken_words() == set(), page.name  # German words break at soft hyphens
         assert found.main + found.title_block <= 277 * 72 / 25.4, page.name  # what lies between the margins
-        # The reckoned heights are those of the page, or a little more.
-        assert -0.1 < sheet_height(view, SIZES[view.density]) - found.main < 3.0, page.name
+        # The reckoned heights are those of the page, or a little more; with the German heads a line more, of 9.4 pt at
+        # most, where "Freigegeben von" just fits into its column.
+        spare = 3.0 if language is ENGLISH else 3.0 + 9.5
+        assert -0.1 < sheet_height(view, SIZES[view.density]) - found.main < spare, page.name
         assert title_block_height(page.document) == pytest.approx(found.title_block, abs=1.0), page.name
 
 
 def test_every_sheet_of_the_examples_fits_its_page() -> None:
-    assert [page.name for name in NAMES for page in pages_of(name) if fill(page) > 1.0] == []
+    for language in (ENGLISH, GERMAN):
+        assert [page.name for name in NAMES for page in pages_of(name, language) if fill(page) > 1.0] == []
 
 
 LOGO = b'<svg xmlns="http://www.w3.org/2000/svg" viewBox="0 0 320 50"><rect width="320" height="50"/></svg>'

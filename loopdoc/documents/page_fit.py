@@ -23,6 +23,7 @@ PAPER_HEIGHT = (297 - 12) * MM
 ABOVE_TITLE_BLOCK = 277 * MM
 """From the upper margin to the lower edge of the title block [pt]."""
 
+_SOFT_HYPHEN = "\u00ad"
 _LINE = 1.18
 """Line height of a table in type sizes."""
 _PADDING = 0.3 * MM
@@ -45,16 +46,21 @@ DENSITIES = (Density("roomy", 8.0), Density("normal", 7.2), Density("dense", 6.6
 
 
 def line_count(content: str, width: float, size: float, *, bold: bool = False, narrow: bool = True) -> int:
-    """Lines that a text takes when it breaks at its spaces."""
+    """Lines that a text takes when it breaks at its spaces and soft hyphens."""
     lines, used = 1, 0.0
-    space = text_width(" ", size, bold=bold, narrow=narrow)
+    space, hyphen = (text_width(letter, size, bold=bold, narrow=narrow) for letter in " -")
     for word in _plain(content).split(" "):
-        needed = text_width(word, size, bold=bold, narrow=narrow)
-        if used and used + space + needed > width:
-            lines, used = lines + 1, 0.0
-        used = used + space + needed if used else needed
-        while used > width:  # a word longer than the line is broken anywhere
-            lines, used = lines + 1, used - width
+        syllables = [text_width(part, size, bold=bold, narrow=narrow) for part in word.split(_SOFT_HYPHEN)]
+        gap = space if used else 0.0
+        if used + gap + sum(syllables) <= width:
+            used += gap + sum(syllables)
+            continue
+        for number, needed in enumerate(syllables, 1):
+            if used and used + gap + needed + (hyphen if number < len(syllables) else 0.0) > width:
+                lines, used, gap = lines + 1, 0.0, 0.0
+            used, gap = used + gap + needed, 0.0
+            while used > width:  # what is longer than the line is broken anywhere
+                lines, used = lines + 1, used - width
     return lines
 
 
