@@ -23,6 +23,7 @@ from loopdoc.rules.channels import channel_duplicate, channel_signal_mismatch
 from loopdoc.rules.deviations import deviation_ambiguous, deviation_expired, deviation_unapproved, deviation_unused
 from loopdoc.rules.document_control import (
     approval_missing,
+    check_not_independent,
     drawing_missing,
     history_disordered,
     history_missing,
@@ -201,6 +202,7 @@ RULES: tuple[Rule, ...] = (
     # document control
     hold_open,
     approval_missing,
+    check_not_independent,
     history_missing,
     history_disordered,
     drawing_missing,

@@ -75,6 +75,41 @@ def approval_missing(plant: Plant) -> Iterator[Draft]:
         )
 
 
+@rule(level=Level.WARNING, source="common practice of document control: the four-eyes principle")
+def check_not_independent(plant: Plant) -> Iterator[Draft]:
+    """Who prepared a revision has also checked or approved it.
+
+    Why:
+        A check by the one who made the document finds what he looked for, and repeats what he took for granted. The
+        three names stand in the title block so that a second pair of eyes has seen the content.
+    Breaks:
+        `prepared_by: A. Meyer` with `checked_by: A. Meyer`, in whatever spelling of capitals and blanks.
+    Holds:
+        Whoever prepared the revision is neither its checker nor its approver. One person may check and approve. Earlier
+        revisions, under `history`, are not judged.
+    What this check cannot see:
+        Two names for one person, or one department whose members check each other: write the persons, or accept it by a
+        deviation.
+    """
+    revision = need(plant.register.revision, "the revision")
+    preparer = need(revision.prepared_by, "who prepared the revision")
+    only_if(any(map(str.isalnum, preparer)))
+    for key in ("checked_by", "approved_by"):
+        other = known(getattr(revision, key))
+        if other is not None and _person(other) == _person(preparer):
+            yield draft(
+                "revision",
+                f"revision {known(revision.code) or ''} is prepared and {key[:-3]} by one name, {preparer}",
+                remedy=f"have somebody else answer for it, and write who in `{key}`",
+                at=revision.origin.place(key),
+                related=((revision.origin.place("prepared_by"), f"prepared by {preparer}"),),
+            )
+
+
+def _person(name: str) -> str:
+    return "".join(filter(str.isalnum, name)).casefold()
+
+
 @rule(level=Level.WARNING, source="ISO 7200:2004, revision index (from memory); common practice")
 def history_missing(plant: Plant) -> Iterator[Draft]:
     """The revision history lacks the revision before this one, or what a revision changed.
@@ -87,7 +122,7 @@ def history_missing(plant: Plant) -> Iterator[Draft]:
     Holds:
         Codes that are a single letter or a number follow one another without a gap (I and O may be left out), the first
         being A, 0 or 1; each entry, and this revision where it is not the first, has a summary. Of other codes only the
-        summaries are judged.
+        summaries are judged. Entries in another order are a matter of history-disordered.
     What this check cannot see:
         Whether the summary is complete.
     """
@@ -96,7 +131,7 @@ def history_missing(plant: Plant) -> Iterator[Draft]:
     issued = (*plant.register.history, revision)
     codes = [known(entry.code) or "" for entry in issued]
     first = codes[0]
-    if _before(first):
+    if _before(first) and _before(first) not in codes:
         at = issued[0].origin.place("code")
         yield draft(
             "history",
@@ -105,7 +140,7 @@ def history_missing(plant: Plant) -> Iterator[Draft]:
             at=at,
         )
     for (earlier, later), entry in zip(pairwise(codes), issued[1:], strict=True):
-        if _sort(earlier) == _sort(later) != "" and _before(later) not in ("", earlier) and later != earlier:
+        if _sort(earlier) == _sort(later) != "" and _before(later) not in ("", *codes) and later != earlier:
             if _sort(later) == "letter" and later < earlier:
                 continue
             if _sort(later) == "number" and int(later) < int(earlier):
