@@ -3,13 +3,14 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Callable, Iterable, Iterator, Mapping
+from collections.abc import Callable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, replace
 from typing import Protocol
 
 from loopdoc.engineering.direction import Undecided
 from loopdoc.engineering.dynamics import Dynamics
 from loopdoc.engineering.failure import FailureAnalysis, FailureEffect
+from loopdoc.engineering.failure_gathering import failures_once
 from loopdoc.engineering.pairing import Plant
 from loopdoc.engineering.spreading import ElementMove
 from loopdoc.engineering.time_to_act import TimeToAct
@@ -86,7 +87,7 @@ class MarginChange:
 
 @dataclass(frozen=True, slots=True)
 class FailureChange:
-    """The effect of one failure before and after, in words; empty where there is none."""
+    """What differs in the effect of one failure before and after, in words; empty where there is no effect."""
 
     tag: str
     failure: str
@@ -188,31 +189,52 @@ def _margins_of(dynamics: Dynamics, tag: str) -> LoopMargins:
 
 
 def _failures(old: Plant, new: Plant, names: Mapping[str, str]) -> Iterator[FailureChange]:
-    before, after = FailureAnalysis(old), FailureAnalysis(new)
-    earlier = {names.get(tag, tag): tag for tag in old.register.loops}
-    for tag in new.register.loops:
-        was = before.effects(earlier[tag]) if tag in earlier else ()
-        now = after.effects(tag)
-        told_was = _by_failure(was, names)
-        told_now = _by_failure(now, {})
-        for failure in dict.fromkeys((*told_now, *told_was)):
-            first, second = told_was.get(failure, ("", set())), told_now.get(failure, ("", set()))
-            if tag in earlier and first[0] != second[0]:
-                yield FailureChange(tag, failure, first[0], second[0], bool(second[1] - first[1]))
+    """Each failure once, at the loop nearest to it; those of loops that are new or gone are told with the loop."""
+    before, after = _by_failure(old, names), _by_failure(new, {})
+    kept = {names.get(tag, tag) for tag in old.register.loops} & set(new.register.loops)
+    for key in dict.fromkeys((*after, *before)):
+        tag, failure = key
+        was, now = before.get(key, _NO_EFFECT), after.get(key, _NO_EFFECT)
+        if tag in kept and set(was.parts) != set(now.parts):
+            yield FailureChange(tag, failure, _own(was, now), _own(now, was), bool(now.bare - was.bare))
 
 
-def _by_failure(effects: Iterable[FailureEffect], names: Mapping[str, str]) -> dict[str, tuple[str, set[str]]]:
-    """What each failure does in words, and the measurements that it drives to their hazard with nothing against it."""
-    found: dict[str, tuple[str, set[str]]] = {}
-    for effect in effects:
-        failure = f"{effect.failure}, {effect.at[0]}" if effect.failure == "motive power lost" and effect.at else ""
-        told = with_new_tags(_told(effect), names)
+@dataclass(frozen=True, slots=True)
+class _Effect:
+    """What one failure does."""
+
+    parts: tuple[str, ...]
+    """In words, one for each thing that moves."""
+    bare: frozenset[str]
+    """The measurements that it drives to their hazard with nothing against it."""
+
+
+_NO_EFFECT = _Effect((), frozenset())
+
+
+def _own(one: _Effect, other: _Effect) -> str:
+    """What an effect has and the other has not; empty where it is no effect at all."""
+    if not one.parts:
+        return ""
+    return "; ".join(part for part in one.parts if part not in other.parts) or "not so"
+
+
+def _by_failure(plant: Plant, names: Mapping[str, str]) -> dict[tuple[str, str], _Effect]:
+    """The effect of each failure by the loop nearest to it and the failure in words."""
+    found: dict[tuple[str, str], _Effect] = {}
+    for effect in failures_once(FailureAnalysis(plant), tuple(plant.register.loops.values())):
+        moved = () if effect.seen else effect.at or tuple(move.element.tag for move in effect.elements)
+        failure = ", ".join((str(effect.failure), *moved))
         bare = {one.loop.tag for one in effect.consequences if one.hazardous and not one.alarms and not one.trips}
-        found[with_new_tags(failure or str(effect.failure), names)] = (told, {names.get(tag, tag) for tag in bare})
+        key = names.get(effect.loop.tag, effect.loop.tag), with_new_tags(failure, names)
+        found[key] = _Effect(
+            tuple(with_new_tags(part, names) for part in _told(effect)),
+            frozenset(names.get(tag, tag) for tag in bare),
+        )
     return found
 
 
-def _told(effect: FailureEffect) -> str:
+def _told(effect: FailureEffect) -> Sequence[str]:
     parts = []
     if effect.mode:
         parts.append(f"controller to {effect.mode}{f', output {effect.forced_output}' if effect.forced_output else ''}")
@@ -225,7 +247,7 @@ def _told(effect: FailureEffect) -> str:
         stands = f" (against it: {', '.join(dict.fromkeys(against))})" if against else " (nothing stands against it)"
         way = f"{one.loop.tag} {_way(one.direction, _VALUE)}{hazard}"
         parts.append(f"{way}{stands}" if one.hazardous or against else way)
-    return "; ".join(parts)
+    return parts
 
 
 _VALUE = {1: "rises", -1: "falls", 0: "is left to itself"}
