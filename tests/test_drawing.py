@@ -432,6 +432,24 @@ def test_a_trip_solenoid_is_drawn_with_its_wires_and_interlock() -> None:
     assert [words for words in ("XY-2011", "S", "SDO-1-01", "SC-20", "IS-2001: closed") if words not in written] == []
 
 
+def test_the_terminals_are_told_to_those_who_cannot_see_the_drawing() -> None:
+    root = ElementTree.fromstring(drawn_loop(example("tarn-hollow"), "FIC-1002", ENGLISH).svg)
+    assert "FT-1002 (JB-1001: 3, 4; MC-10: TB1-3, TB1-4)" in (root[0].text or "")
+    assert "FV-1002 (JB-1003: 1, 2; MC-10: TB3-1, TB3-2)" in (root[0].text or "")
+
+
+def test_a_bus_is_a_data_link_and_a_current_an_electric_signal(tmp_path: Path) -> None:
+    """ISA-5.1-1984, 6.2: dashes for an electric signal, small circles for a data link."""
+    dashes = {}
+    for signal in ("4-20 mA", "digital"):
+        measured = f"{{transmitter: FT-1, variable: flow, signal: {signal}, wiring: [{{at: JB-1, terminals: [A1]}}]}}"
+        plant = plant_of(tmp_path, f"loops: {{FI-1: {{measurement: {measured}}}}}\n")
+        svg = drawn_loop(plant, "FI-1", ENGLISH).svg
+        assert not faults(svg), signal
+        dashes[signal] = 'stroke-dasharray="3.2 2"' in svg
+    assert dashes == {"4-20 mA": True, "digital": False}
+
+
 def test_boxes_of_one_name_stand_in_one_column(tmp_path: Path) -> None:
     """A drive wired straight to the cabinet that the transmitter reaches over a junction box."""
     measured = MEASURED_WITH_WIRES % ("FT-1", "[{at: JB-1, terminals: [A1]}, {at: MC-1, terminals: [A2]}]")

@@ -49,6 +49,7 @@ from loopdoc.documents.loop_sheet.loop_rows import (
 )
 from loopdoc.documents.loop_sheet.wiring_columns import Stop, Wiring, columns_of, stops_of
 from loopdoc.documents.values import DASH, HOLD
+from loopdoc.documents.wiring_words import terminal_lines
 from loopdoc.engineering.pairing import Plant
 from loopdoc.register.model import ALARM_ORDER, FinalElement, Function, Hold, Loop, Measurement, TripSolenoid, known
 from loopdoc.register.quantity import Range
@@ -88,7 +89,7 @@ def drawn_loop(plant: Plant, tag: str, language: Language) -> DrawnLoop:
     rows = rows_of(plant, loop, language)
     parts = [row.part for row in rows]
     height = height_of(rows)
-    way = ", ".join(filter(None, (_tag_of(part) for part in parts)))
+    way = ", ".join(filter(None, (_told(part, language) for part in parts)))
     elements = (part.element for part in parts if isinstance(part, Element | Secondary))
     return DrawnLoop(
         svg=_Drawing(plant, loop, rows, language).sheet(height).svg(height, language.drawing_title(tag, way)),
@@ -110,6 +111,19 @@ def _tag_of(part: Part) -> str:
             return ", ".join(part.tags)
         case _:
             return part.loop.tag
+
+
+def _told(part: Part, language: Language) -> str:
+    """What stands in a row, in words, with the terminals of the loop's own signals."""
+    wired, wiring = "", None
+    match part:
+        case Own():
+            measurement = known(part.loop.measurement)
+            wired, wiring = f", {transmitter_of(part.loop)}", measurement.wiring if measurement else None
+        case Element():
+            wiring = part.element.wiring
+    lines = terminal_lines(wiring, language.shown) if wiring else ()
+    return _tag_of(part) + (f"{wired} ({'; '.join(lines)})" if lines else "")
 
 
 def _half_height(part: Part) -> float:
@@ -292,7 +306,7 @@ class _Drawing:
         sheet, at = self._sheet, self._at
         sheet.measuring_point(FIELD, y, known(measurement.variable) or "", known(measurement.element) or "")
         sheet.field_instrument(FIELD, y, self._lines(tag), strong=strong)
-        self._wire(FIELD + BUBBLE, y, measurement.wiring, to_the_field=False)
+        self._wire(FIELD + BUBBLE, y, measurement.wiring, measurement.signal, to_the_field=False)
         self._above_wire(y, measurement.signal, measurement.wiring)
         sheet.channel(at.channel, y, self._channel(measurement.channel, "Input"))
         sheet.note(FIELD_NOTE, y + 8.5, measurement_words(measurement, self._language), width=NOTE_WIDTH)
@@ -302,24 +316,22 @@ class _Drawing:
         sheet.square_root(at.root, y)
         return at.root + 5.5
 
-    def _wire(self, start: float, y: float, wiring: Wiring, *, to_the_field: bool) -> None:
+    def _wire(self, start: float, y: float, wiring: Wiring, signal: str | Hold | None, *, to_the_field: bool) -> None:
         """The wires of a signal from a device to its channel, over the boxes on the way."""
         sheet, at = self._sheet, self._at
+        # A bus is a data link; every other signal is an electric one.
+        piece = sheet.software if signal == "digital" else sheet.electric
         stops = stops_of(wiring, self._language)
         half, left = at.box_width / 2, start
         for number, (stop, column) in enumerate(zip(stops, self._columns.placed(stops), strict=True)):
             x = at.box(column)
-            self._wire_piece(left, x - half, y, arrow=to_the_field and number == 0)
+            piece((x - half, y), (left, y), arrow=to_the_field and number == 0)
             sheet.terminals(x, y, stop.terminals, width=at.box_width)
             sheet.centred(x, y - stop.height / 2 - 4.6, stop.name, width=at.box_width + 8, size=6.4, bold=True)
             if number:
                 self._label_cable(left, x - half, y, stop)
             left = x + half
-        self._wire_piece(left, at.channel - 21, y, arrow=to_the_field and not stops)
-
-    def _wire_piece(self, left: float, right: float, y: float, *, arrow: bool) -> None:
-        """A piece of wire, with the arrow of a signal to the field at its left end."""
-        self._sheet.electric((right, y), (left, y), arrow=arrow)
+        piece((at.channel - 21, y), (left, y), arrow=to_the_field and not stops)
 
     def _label_cable(self, left: float, right: float, y: float, stop: Stop) -> None:
         """The cable above a piece of wire and its pair below."""
@@ -349,7 +361,7 @@ class _Drawing:
             letters = HOLD if isinstance(fails, Hold) else self._language.fail_letters(fails)
             x, baseline = (FIELD - 11, y + 21.2) if kind in _DRIVES else (FIELD - 4, y + 11.4)
             sheet.note(x, baseline, (letters,), width=24, anchor="end")
-        self._wire(FIELD + 9.5, y, element.wiring, to_the_field=True)
+        self._wire(FIELD + 9.5, y, element.wiring, element.signal, to_the_field=True)
         self._above_wire(y, element.signal, element.wiring)
         sheet.channel(at.channel, y, self._channel(element.channel, "Output"))
         sheet.note(FIELD_NOTE, y + 9, element_words(element, self._language), width=NOTE_WIDTH, bold_first=True)
@@ -372,7 +384,7 @@ class _Drawing:
         """A trip solenoid over its actuator, with its wires and the interlocks that act by it."""
         sheet, at = self._sheet, self._at
         sheet.solenoid(FIELD, y, below)
-        self._wire(FIELD + 6.5, y, solenoid.wiring, to_the_field=True)
+        self._wire(FIELD + 6.5, y, solenoid.wiring, None, to_the_field=True)
         self._above_wire(y, None, solenoid.wiring)
         sheet.channel(at.channel, y, self._channel(solenoid.channel, "Output"))
         sheet.note(FIELD_NOTE, y - 2.8, (self._shown(solenoid.tag),), width=NOTE_WIDTH / 2, bold_first=True)

@@ -6,6 +6,7 @@ secondary or the final elements.
 
 from __future__ import annotations
 
+import re
 from collections.abc import Iterable, Iterator
 from dataclasses import dataclass, replace
 
@@ -13,6 +14,7 @@ from loopdoc.documents.drawing import BLOCK, BUBBLE, DIAMOND, LEADING, text_widt
 from loopdoc.documents.language import ENGLISH, Language
 from loopdoc.documents.loop_sheet.wiring_columns import stops_of, wiring_extent
 from loopdoc.documents.values import DASH
+from loopdoc.documents.wording import NO_BREAK
 from loopdoc.engineering.pairing import Plant
 from loopdoc.register.model import FinalElement, Function, Hold, Interlock, InterlockAction, Loop, Measurement, known
 from loopdoc.register.quantity import Range
@@ -48,6 +50,7 @@ WORDS_ABOVE = 10.0
 FORCED_BELOW = 10.0
 """From a controller's measurement to what is told of the interlocks that act on it [pt]."""
 
+_NUMBER_AND_UNIT = re.compile(r"(?<=[0-9]) (?=[A-Za-z°%])")
 _SIGNAL_ENDS = {"4-20 mA": ("4", "20", "mA"), "0-20 mA": ("0", "20", "mA"), "1-5 V": ("1", "5", "V")}
 
 
@@ -354,7 +357,10 @@ def measurement_words(measurement: Measurement, language: Language) -> tuple[str
 
 def supply_words(supply: str | Hold | None, language: Language) -> tuple[str, ...]:
     """The energy source of a device."""
-    return () if supply is None else wrapped(language.supplied_by(language.shown(supply)), NOTE_WIDTH, 2)
+    if supply is None:
+        return ()
+    told = _NUMBER_AND_UNIT.sub(NO_BREAK, language.supplied_by(language.shown(supply)))
+    return wrapped(told, NOTE_WIDTH, 2)
 
 
 def measurement_depth(measurement: Measurement | None, language: Language) -> float:
