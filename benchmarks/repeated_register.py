@@ -8,6 +8,7 @@ from pathlib import Path
 DEMO = Path(__file__).resolve().parent.parent / "examples" / "tarn-hollow"
 _TAG = re.compile(r"\b([A-Z]{1,5}-)(10|20|30)(\d\d[A-Z]?\b)")
 _CHANNEL = re.compile(r"channel: (?=[A-Z]{2,3}-\d)")
+_CABINET = re.compile(r"(?<=, at: )(?=[A-Z]{2,3}-\d)")
 _QUOTED_UNIT = re.compile(r'"(10|20|30)"')
 _DEMO_UNITS = ("10", "20", "30")
 
@@ -29,6 +30,7 @@ def write_repeated(folder: Path, copies: int) -> None:
         text = file.read_text(encoding="utf-8")
         for copy, by_unit in enumerate(numbers):
             renumbered = _CHANNEL.sub(f"channel: C{copy} ", _renumbered(text, by_unit))
+            renumbered = _CABINET.sub(f"C{copy} ", renumbered)
             (folder / "units" / f"{copy:04d}-{file.name}").write_text(renumbered, encoding="utf-8")
 
 
