@@ -362,7 +362,7 @@ def test_both_languages_tell_what_moves_and_what_is_left(tmp_path: Path) -> None
     ) in told
     assert ", without feedforward by " in told
     assert "with the single loop, which has none, by " in told
-    assert "Of the peak after more feed, declared at AIC-2030, feedforward leaves " in told
+    assert " Feedforward leaves " in told
     german = declared_upsets(dynamics, found, GERMAN)
     assert (
         "nach einer Totzeit von 1\u00a0min; FT-2001 ändert sich dabei um 4\u00a0t/h (ohne Verzögerung), was FY-2031 "

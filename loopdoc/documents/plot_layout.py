@@ -105,7 +105,8 @@ def layout(drawing: Drawing, *, with_caption: bool = False) -> Layout:
         for row, panel in enumerate(panels):
             panel_top = top + row * (_PANEL + _BETWEEN)
             _lay_panel(made, panel, x, panel_top, is_last=row == rows - 1, comma=drawing.decimal_comma)
-    _lay_legend(made, [row[0] for row in drawing.rows], above)
+    first = [row[0] for row in drawing.rows]
+    _lay_legend(made, [*first, *(panel for row in drawing.rows for panel in row[1:])], above)
     for index, line in enumerate(caption):
         made.letters.append(Lettering(_LEFT / 4.0, above + _NOTE * _ASCENT + index * 1.2 * _NOTE, line, _NOTE))
     return made

@@ -151,7 +151,7 @@ def feedforward_leaves(comparison: Comparison, entry: ScenarioResponses, languag
             (errors, language.label("Share of the error integral without feedforward")),
         )
     )
-    return language.feedforward_leaves(upset_name(comparison, entry, language), of_peak, of_error)
+    return language.feedforward_leaves(of_peak, of_error)
 
 
 def _with_moves(told: str, written: Disturbance, chain: Chain, language: Language) -> str:

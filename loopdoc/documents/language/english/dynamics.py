@@ -124,11 +124,11 @@ class EnglishDynamics(EnglishGrammar):
         single = f"with the single loop{', which has none,' if without else ''} by {alone}"
         return f"{told}; with the cascade {lead} then departs by {peak} at most{unaided}, {single}"
 
-    def feedforward_leaves(self, upset: str, share_of_peak: str, share_of_error: str) -> str:
-        """What feedforward leaves of an upset, in percent of what comes of it without."""
+    def feedforward_leaves(self, share_of_peak: str, share_of_error: str) -> str:
+        """What feedforward leaves of an upset just told, in percent of what comes of it without."""
         return (
-            f"Of the peak after {upset[0].lower()}{upset[1:]}, feedforward leaves {share_of_peak}{NO_BREAK}%, and of "
-            f"the integral of the absolute error {share_of_error}{NO_BREAK}%"
+            f"Feedforward leaves {share_of_peak}{NO_BREAK}% of that peak and {share_of_error}{NO_BREAK}% of the integral "
+            "of the absolute error"
         )
 
     def nothing_to_compare(self, element: str) -> str:

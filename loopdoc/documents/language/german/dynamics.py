@@ -112,9 +112,9 @@ class GermanDynamics(GermanGrammar, EnglishDynamics):
         single = f"mit der einschleifigen Regelung{', die keine hat,' if without else ''} um {alone}"
         return f"{told}; mit der Kaskade weicht {lead} dann um höchstens {peak} ab{unaided}, {single}"
 
-    def feedforward_leaves(self, upset: str, share_of_peak: str, share_of_error: str) -> str:
+    def feedforward_leaves(self, share_of_peak: str, share_of_error: str) -> str:
         return (
-            f"{upset}: Die Störgrößenaufschaltung lässt {share_of_peak}{NO_BREAK}% der größten Abweichung und "
+            f"Die Störgrößenaufschaltung lässt davon {share_of_peak}{NO_BREAK}% der größten Abweichung und "
             f"{share_of_error}{NO_BREAK}% des Integrals des Absolutwerts der Regeldifferenz übrig"
         )
 
