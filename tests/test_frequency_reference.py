@@ -14,6 +14,7 @@ from loopdoc.engineering.frequency import (
     analyse_chains,
     maximum_sensitivities,
 )
+from loopdoc.engineering.open_loop import level_arrays
 from loopdoc.engineering.pid import Controller
 from loopdoc.engineering.process import Process, frequency_response
 
@@ -194,7 +195,8 @@ def test_maximum_sensitivities_are_those_of_the_margins() -> None:
     loops = [chain[0] for chain in REFERENCE_CHAINS.values()]
     loops.append(LoopStage(Controller(-1.0, 10.0), Process(1.0, (10.0,), 2.0)))
     expected = [single(loop.controller, loop.process).max_sensitivity for loop in loops]
-    assert list(maximum_sensitivities(loops)) == pytest.approx(expected, rel=1e-7)
+    columns = level_arrays([loop.controller for loop in loops], [loop.process for loop in loops])
+    assert list(maximum_sensitivities(columns)) == pytest.approx(expected, rel=1e-7)
 
 
 def test_process_frequency_response_agrees_with_python_control() -> None:

@@ -263,13 +263,13 @@ def analyse_chain(stages: Sequence[LoopStage]) -> tuple[Margins, ...]:
     return analyse_chains([stages])[0]
 
 
-def maximum_sensitivities(loops: Sequence[LoopStage]) -> FloatArray:
+def maximum_sensitivities(loops: LevelArrays) -> FloatArray:
     """Maximum sensitivity Ms of many single loops, without the rest of the margins.
 
     Parameters
     ----------
-    loops : sequence of n LoopStage
-        Single loops.
+    loops : LevelArrays
+        n single loops as columns.
 
     Returns
     -------
@@ -278,17 +278,17 @@ def maximum_sensitivities(loops: Sequence[LoopStage]) -> FloatArray:
 
     Source: K. J. Astrom, T. Hagglund, Advanced PID Control, ISA 2006, section 4.5 (maximum sensitivity).
     """
-    found = np.empty(len(loops))
-    for members in _chunks([1] * len(loops)):
-        survey = Survey([_stage_arrays([loops[i] for i in members])])
-        growing = survey.growing_modes(
-            0, np.zeros(len(members)), *survey.open_loop(0).real_axis_crossings()
-        )
+    size = len(loops.gain)
+    found = np.empty(size)
+    for start in range(0, size, _CHUNK):
+        part = slice(start, start + _CHUNK)
+        survey = Survey([loops.take(part)])
+        growing = survey.growing_modes(0, np.zeros(len(survey.w)), *survey.open_loop(0).real_axis_crossings())
         poles, leading = static_gains(survey.levels)[0]
         with np.errstate(divide="ignore"):
             static = np.where(poles > 0, 0.0, 1.0 / np.abs(1.0 + leading))
         peak = np.maximum(survey.peak(0, complementary=False), static)
-        found[members] = np.where((growing == 0.0) & (peak < 1e7), peak, math.inf)
+        found[part] = np.where((growing == 0.0) & (peak < 1e7), peak, math.inf)
     return found
 
 

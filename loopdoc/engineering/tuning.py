@@ -6,12 +6,13 @@ of the process gain, so that error = setpoint - measurement is driven to zero.
 
 import math
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Literal
 
 import numpy as np
 
 from loopdoc.engineering.frequency import LoopStage, analyse_chain, maximum_sensitivities
+from loopdoc.engineering.open_loop import level_arrays
 from loopdoc.engineering.pid import Controller, SeriesSettings, StandardSettings, standard_from_series
 from loopdoc.engineering.process import FloatArray, Process
 from loopdoc.engineering.reduction import ReducedModel, reduce_to_first_order, reduce_to_second_order
@@ -302,32 +303,18 @@ class _SimcLoop:
     """One loop as a function of the closed-loop time that SIMC is asked for."""
 
     def __init__(self, process: Process, interval_s: float, filter_s: float, with_rate: bool) -> None:
-        self.process = process
-        self._interval_s = interval_s
-        self._filter_s = filter_s
         self._model = (reduce_to_second_order if with_rate else reduce_to_first_order)(
             process, interval_s=interval_s
         )
         self.has_lag = self._model.lag_s > 0.0
         # The default of the rule, a closed-loop time equal to the dead time; a tenth of the lag without one.
-        lag_s = math.fsum(process.lags_s) + self._filter_s or 1.0 / abs(process.gain)
+        lag_s = math.fsum(process.lags_s) + filter_s or 1.0 / abs(process.gain)
         self.usual_wanted_s = 2.0 * self._model.dead_time_s or 0.1 * lag_s
 
     def settings(self, wanted_s: float) -> StandardSettings:
         """Settings for a closed-loop time plus dead time [s]."""
         closed_loop_s = wanted_s - self._model.dead_time_s
         return standard_from_series(simc_pid(self._model, closed_loop_s=closed_loop_s))
-
-    def stage(self, wanted_s: float) -> LoopStage:
-        settings = self.settings(wanted_s)
-        controller = Controller(
-            settings.gain,
-            settings.reset_s,
-            settings.rate_s,
-            interval_s=self._interval_s,
-            measurement_filter_s=self._filter_s,
-        )
-        return LoopStage(controller, self.process)
 
     def tuning(self, wanted_s: float, max_sensitivity: float) -> SensitivityTuning:
         return SensitivityTuning(
@@ -389,13 +376,30 @@ def simc_at_sensitivities(
     rows = list(loops)
     target = np.log(np.asarray(target_ms, dtype=np.float64))
 
+    if not rows:
+        return tuple(found)
+    # What no candidate changes is laid out once: the loops under a gain of 1.
+    place = {i: row for row, i in enumerate(rows)}
+    columns = level_arrays(
+        [Controller(1.0, interval_s=interval_s[i], measurement_filter_s=filters[i]) for i in rows],
+        [processes[i] for i in rows],
+    )
+
     def excess(members: Sequence[int], ln_wanted: FloatArray) -> FloatArray:
         """ln Ms less its target for (k, m) candidates of the closed-loop time plus dead time, at most 3."""
-        stages = [
-            loops[i].stage(math.exp(candidate))
+        tried = [
+            loops[i].settings(math.exp(candidate))
             for i, candidates in zip(members, ln_wanted, strict=True)
             for candidate in candidates
         ]
+        gain, reset_s, rate_s = (
+            np.array([getattr(one, field) for one in tried])[:, None] for field in ("gain", "reset_s", "rate_s")
+        )
+        unit = columns.take(np.repeat([place[i] for i in members], ln_wanted.shape[1]))
+        stages = replace(
+            unit, gain=gain * unit.gain, repeats_per_s=1.0 / reset_s, rate_s=rate_s,
+            smoothing_s=rate_s / Controller(1.0).derivative_filter,
+        )  # fmt: skip
         ms = maximum_sensitivities(stages).reshape(ln_wanted.shape)
         limited: FloatArray = np.minimum(np.log(ms) - target[list(members), None], 3.0)
         return limited
@@ -405,14 +409,14 @@ def simc_at_sensitivities(
     f_low, f_high = np.zeros(len(processes)), np.zeros(len(processes))
     middle = {i: math.log(loops[i].usual_wanted_s) for i in rows}
     bracketed: list[int] = []
-    for _ in range(5):
+    for _ in range(8):
         if not rows:
             break
-        spread = np.array([middle[i] for i in rows])[:, None] + math.log(2.0) * np.array([-3.0, -1.0, 1.0, 3.0])
+        spread = np.array([middle[i] for i in rows])[:, None] + math.log(2.0) * np.array([-1.0, 1.0, 3.0])
         values = excess(rows, spread)
         for i, x, f in zip(list(rows), spread, values, strict=True):
             if f[0] < 0.0 or f[-1] >= 0.0:
-                middle[i] += math.log(64.0) * (-1.0 if f[0] < 0.0 else 1.0)
+                middle[i] += math.log(16.0) * (-1.0 if f[0] < 0.0 else 1.0)
                 continue
             last = int(np.nonzero(f >= 0.0)[0][-1])
             low[i], f_low[i], high[i], f_high[i] = x[last], f[last], x[last + 1], f[last + 1]
