@@ -160,10 +160,12 @@ class Ledger:
     def written(self, text: str, written: Any) -> str:
         """A printed value with a mark, where the value knows its origin."""
         origin = getattr(written, "origin", None)
-        return self.mark(text, self.source(text, origin)) if isinstance(origin, Origin) and text else text
+        if not isinstance(origin, Origin) or not text:
+            return text
+        return self.mark(text, self.source(text, origin, inside=isinstance(written, Word)))
 
-    def source(self, text: str, origin: Origin) -> Source:
-        """The source of a printed value, or of a number inside a text of the register."""
+    def source(self, text: str, origin: Origin, *, inside: bool = False) -> Source:
+        """The source of a printed value, or of a number ``inside`` a text of the register."""
         section, *below = origin.path or ("",)
         if section == "deviations":  # a list, each entry of which names its tag
             path = (section, *below[1:])
@@ -172,7 +174,8 @@ class Ledger:
             tag = str(entry.get("at", ""))
         else:
             tag, path = str(below[0]) if below else "", tuple(below[1:])
-        return Source(text, tag, path, self._line(text, origin.place()))
+        place = origin.place()
+        return Source(text, tag, path, self._line(text, place) if inside else place)
 
     def mark(self, text: str, source: Source) -> str:
         """A printed value with its source."""
@@ -180,7 +183,7 @@ class Ledger:
         return f"{OPENS}{len(self._sources) - 1}{PARTS}{unmarked(text)}{CLOSES}"
 
     def _line(self, text: str, place: Place) -> Place:
-        """The line that holds a value: a text of several lines has its numbers further down."""
+        """The line that holds a number of a text: one of several lines has its numbers further down."""
         if place.file not in self._lines:
             written = self._files.get(place.file, b"").decode("utf-8-sig", "replace")
             self._lines[place.file] = written.replace("\r\n", "\n").split("\n")
