@@ -20,6 +20,7 @@
   let order = rows;
   let sorted = false;
   let inOrder = true;
+  let printed = rows;
   let limit = PAGE;
 
   function fits(entry, words) {
@@ -64,10 +65,11 @@
     const seen = new Set(found.slice(0, limit));
     const beyond = new Set(found.slice(limit));
     // Only what is seen is moved: to put a large table together anew takes long.
-    const ranked = words.length && !sorted;
-    if (ranked) body.prepend(...[...seen].map((entry) => entry.row));
-    else if (!inOrder) body.append(...order.map((entry) => entry.row));
-    inOrder = !ranked;
+    const moved = words.length || sorted;
+    if (moved) body.prepend(...[...seen].map((entry) => entry.row));
+    else if (!inOrder) body.append(...rows.map((entry) => entry.row));
+    inOrder = !moved;
+    printed = moved ? found : rows;
     for (const entry of rows) {
       const hidden = !seen.has(entry);
       if (entry.row.hidden !== hidden) entry.row.hidden = hidden;
@@ -111,7 +113,6 @@
       heads.forEach((other) => other.removeAttribute("aria-sort"));
       order = [...rows];
       sorted = Boolean(now);
-      inOrder = false;
       if (now) {
         head.setAttribute("aria-sort", now);
         const keys = rows.map((entry) => {
@@ -136,6 +137,8 @@
   form.addEventListener("submit", (event) => event.preventDefault());
   form.addEventListener("reset", () => setTimeout(changed));
   more.querySelector("button").addEventListener("click", () => { limit += PAGE; show(); });
+  // On paper stand those rows too that the screen leaves for later, in the same order.
+  addEventListener("beforeprint", () => { if (!inOrder) body.prepend(...printed.map((entry) => entry.row)); });
   addEventListener("hashchange", () => { recall(); show(); });
   // On a narrow screen what is looked for should not stand a page below the field.
   const folded = document.querySelector(".of-units");
