@@ -131,6 +131,29 @@ def test_the_same_in_other_units_or_terms_is_no_difference(tmp_path: Path) -> No
     assert found["margins"] == []
 
 
+def test_an_alarm_that_goes_is_one_change_and_not_one_of_each_value(tmp_path: Path) -> None:
+    start = BASE.index("      high_high:\n")
+    alarm = BASE[start : BASE.index("  FIC-2011:\n")]
+    _, found = compared(tmp_path, (alarm, ""))
+    (gone,) = (one for entry in found["tags"] for one in entry["changes"])
+    assert (gone["kind"], gone["pointer"], gone["new"]) == ("removed", "/alarms/high_high", None)
+    assert gone["old"].startswith("limit 97 degC; deadband 0.6 degC; priority high; ")
+    assert gone["impact"] == "alarms"
+
+
+def test_a_failure_that_several_loops_share_is_told_once_with_what_differs(tmp_path: Path) -> None:
+    """FV-2011 of the base register stands under TIC-2014 and FIC-2011; only the flow's own hazard is another."""
+    old = "    process: {effect: rises, gain: 0.15 t/h per %, lag: 4 s, dead_time: 1 s}\n    hazard: none"
+    _, found = compared(tmp_path, (old, old.replace("hazard: none", "hazard: low")))
+    lost = [one for one in found["failure_effects"] if one["failure"].startswith("output signal lost")]
+    assert [(one["tag"], one["failure"], one["worse"]) for one in lost] == [
+        ("FIC-2011", "output signal lost, FV-2011", True)
+    ]
+    assert (lost[0]["before"], lost[0]["after"]) == (
+        "FIC-2011 falls", "FIC-2011 falls to its hazard (nothing stands against it)",
+    )  # fmt: skip
+
+
 def test_a_value_rounded_in_another_unit_is_told_in_the_old_one_too(tmp_path: Path) -> None:
     _, found = compared(tmp_path, ("stroke_time: 6 s", "stroke_time: 0.11 min"))
     (change,) = next(one for one in found["tags"] if one["tag"] == "FV-2011")["changes"]

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterable, Iterator
+from collections.abc import Iterable, Iterator, Sequence
 from typing import Any
 
 from loopdoc.exchange.escaping import as_code, for_json, for_markdown, for_terminal
@@ -244,7 +244,32 @@ def comparison_markdown(found: RegisterComparison) -> str:
                      f"{' | '.join(for_markdown(one) for one in told)} |")  # fmt: skip
     if len(rows) > MAX_ROWS:
         lines.append(f"| | | and {len(rows) - MAX_ROWS} more | | |")
+    tables: dict[str, tuple[Sequence[str], Sequence[Sequence[str]]]] = {
+        "Margins": (("Loop", *(name.capitalize() if name != "Ms" else name for name in _FIGURES), "State"),
+                    [_margin_cells(one) for one in found.effects.margins]),
+        "Failure effects": (("Loop", "Failure", "Was", "Is"),
+                            [(one.tag, f"{one.failure}{', worse' if one.worse else ''}", one.before or "no effect",
+                              one.after or "no effect") for one in found.effects.failures]),
+    }  # fmt: skip
     for title, effects in _effects(found):
-        lines += ["", f"### {title}", "", *(f"- {for_markdown(line.strip())}" for line in effects[:MAX_ROWS])]
+        lines += ["", f"### {title}", ""]
+        if title in tables:
+            lines += _markdown_table(*tables[title])
+            continue
+        lines += [f"- {for_markdown(line.strip())}" for line in effects[:MAX_ROWS]]
         lines += [f"- and {len(effects) - MAX_ROWS} more"] if len(effects) > MAX_ROWS else []
     return "\n".join([*lines, "", CAUTION, ""])
+
+
+def _markdown_table(head: Sequence[str], rows: Sequence[Sequence[str]]) -> Iterator[str]:
+    yield f"| {' | '.join(head)} |"
+    yield f"|{' --- |' * len(head)}"
+    for row in rows[:MAX_ROWS]:
+        yield f"| {' | '.join(map(for_markdown, row))} |"
+    if len(rows) > MAX_ROWS:
+        yield f"| and {len(rows) - MAX_ROWS} more |{' |' * (len(head) - 1)}"
+
+
+def _margin_cells(one: MarginChange) -> Sequence[str]:
+    pairs = (*zip(one.before.figures, one.after.figures, strict=True), (_state(one.before), _state(one.after)))
+    return (one.tag, *(before if before == after else f"{before} → {after}" for before, after in pairs))

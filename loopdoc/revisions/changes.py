@@ -210,6 +210,13 @@ def _changes(section: str, before: Leaves, after: Leaves, old: _Entry | None, ne
     def change(kind: Kind, path: Path, was: str, now: str, remark: str = "") -> Change:
         return Change(kind, _pointer(path), was, now, impact_of(section, path), place(path), remark)
 
+    def whole(kind: Kind, path: Path, found: Leaves, entry: _Entry) -> Change:
+        """A part that came or went with all that it holds."""
+        held = "; ".join(f"{' '.join(map(str, leaf[len(path) :]))} {told(one)}" for leaf, one in found.items())
+        impact = max(impact_of(section, leaf) for leaf in found)
+        texts = ("", held) if kind is Kind.ADDED else (held, "")
+        return Change(kind, _pointer(path), *texts, impact, entry.place(path))
+
     paired_old: set[Path] = set()
     paired_new: set[Path] = set()
     for here, there, equal in values.alternatives(before, after):
@@ -217,7 +224,16 @@ def _changes(section: str, before: Leaves, after: Leaves, old: _Entry | None, ne
         paired_new.add(there)
         kind = Kind.REWRITTEN if equal else Kind.CHANGED
         yield change(kind, there, _term(here, before), _term(there, after))
+    gathered: set[Path] = set()
+    if old and new:
+        sides = ((Kind.ADDED, after, before, paired_new, new), (Kind.REMOVED, before, after, paired_old, old))
+        for kind, here_only, other, paired, entry in sides:
+            for part, found in _whole_parts(here_only, other, paired).items():
+                gathered.update(found)
+                yield whole(kind, part, found, entry)
     for path in dict.fromkeys((*after, *before)):
+        if path in gathered:
+            continue
         was, now = path in before and path not in paired_old, path in after and path not in paired_new
         if was and now:
             yield from _value_changes(change, path, before[path], after[path])
@@ -225,6 +241,17 @@ def _changes(section: str, before: Leaves, after: Leaves, old: _Entry | None, ne
             yield change(Kind.ADDED, path, "", told(after[path]))
         elif was:
             yield change(Kind.REMOVED, path, told(before[path]), "")
+
+
+def _whole_parts(here: Leaves, other: Leaves, paired: set[Path]) -> dict[Path, Leaves]:
+    """Parts of several values of which the other side has none, such as an alarm, each with its values."""
+    known_there = {path[:end] for path in other for end in range(1, len(path) + 1)}
+    found: dict[Path, Leaves] = {}
+    for path, value in here.items():
+        part = next((path[:end] for end in range(1, len(path)) if path[:end] not in known_there), None)
+        if part is not None and path not in paired:
+            found.setdefault(part, {})[path] = value
+    return {part: values for part, values in found.items() if len(values) > 1}
 
 
 def _term(path: Path, data: Leaves) -> str:

@@ -19,7 +19,7 @@ KIND = ScheduleKind(
     "revision-summary", "Revision summary", "RS", A4,
     ("Change reviewed by", "Date", "Accepted for the plant by", "Date", "Remarks"),
 )
-CHANGES = (Column("Tag", 12), Column("Value", 24), Column("Was", 24), Column("Is", 28), Column("Place", 12))
+CHANGES = (Column("Tag", 9), Column("Value", 19), Column("Was", 27), Column("Is", 27), Column("Place", 18))
 FINDINGS = (
     Column("Tag", 9), Column("Rule", 14), Column("What becomes of it", 13), Column("Finding", 36), Column("Remedy", 28),
 )  # fmt: skip
