@@ -403,4 +403,7 @@ def _start_pct(level: Level) -> float:
     normal = normal_value(loop)
     if own is None or normal is None:
         return 50.0
-    return min(100.0, max(0.0, percent_of_range(normal, own)))
+    try:
+        return min(100.0, max(0.0, percent_of_range(normal, own)))
+    except UnitError:  # `unit-incompatible` tells it
+        return 50.0

@@ -37,10 +37,11 @@ from loopdoc.engineering.dynamics import ChainDynamics, Dynamics
 from loopdoc.engineering.functions import SELECTORS, fed_by
 from loopdoc.engineering.pairing import ControlledLoop, Plant, Route
 from loopdoc.engineering.process import Process
-from loopdoc.engineering.spreading import stands_by
+from loopdoc.engineering.spreading import PASSIVE_MODES, normal_mode, stands_by
 from loopdoc.engineering.stages import Chain, measured_range, percent_of_range
 from loopdoc.engineering.structure import Disturbance
 from loopdoc.register.model import FinalElement, Function, Loop, known
+from loopdoc.register.units import UnitError
 
 if TYPE_CHECKING:
     from loopdoc.engineering.branched_simulation import BranchedResponse, Spell
@@ -165,7 +166,13 @@ def override(plant: Plant, dynamics: Dynamics, tag: str) -> Override | NotSimula
             f"{listed} would command by the normal values at {function.tag}: who stands by has a normal value "
             "(`operating`) apart from its normal setpoint, on the side from which it does not ask"
         )
-    return _simulated(_laid_out(function, tuple(candidates), busy[0]))
+    starts = []
+    for place, dynamics_of in enumerate(candidates):
+        start = None if place == busy[0] else _normal_measurement_pct(dynamics_of.chain)
+        if isinstance(start, NotSimulated):
+            return start
+        starts.append(start)
+    return _simulated(_laid_out(function, tuple(candidates), busy[0], starts))
 
 
 def _unlike(plant: Plant, function: Function, rivals: Sequence[ControlledLoop]) -> str:
@@ -175,6 +182,9 @@ def _unlike(plant: Plant, function: Function, rivals: Sequence[ControlledLoop]) 
     for loop in rivals:
         if len(loop.routes) != 1:
             return f"{function.tag} stands before a split range"
+        mode = normal_mode(loop)
+        if mode in PASSIVE_MODES:
+            return f"{loop.tag} stands in {mode} in normal operation"
         (route,) = loop.routes
         if sum(known(part.kind) in SELECTORS for part in route.via) > 1:
             return f"the output of {loop.tag} passes several selectors"
@@ -215,8 +225,10 @@ def _turned(function: Function, route: Route) -> int:
     return sign
 
 
-def _laid_out(function: Function, candidates: tuple[ChainDynamics, ...], normal: int) -> Override:
-    """The structure of the candidates, at its start."""
+def _laid_out(
+    function: Function, candidates: tuple[ChainDynamics, ...], normal: int, starts_pct: Sequence[float | None]
+) -> Override:
+    """The structure of the candidates, at its start; that of the one in command is where its setpoint is."""
     chain = candidates[0].chain
     plain = structure_of(chain)
     loops = [
@@ -227,12 +239,10 @@ def _laid_out(function: Function, candidates: tuple[ChainDynamics, ...], normal:
         for place, stage in enumerate(chain.stages[:-1])
     ]  # fmt: skip
     below = len(loops) - 1 if loops else None
-    for place, dynamics in enumerate(candidates):
+    for dynamics, apart in zip(candidates, starts_pct, strict=True):
         stage, loop = dynamics.chain.stages[-1], dynamics.chain.lead
-        start = structure_of(dynamics.chain).start_pct[-1]
-        setpoint = start
-        if place != normal:
-            start = _normal_measurement_pct(dynamics.chain)
+        setpoint = structure_of(dynamics.chain).start_pct[-1]
+        start = setpoint if apart is None else apart
         written = known(loop.controller.when_not_followed)
         loops.append(
             BranchedLoop(
@@ -253,12 +263,15 @@ def _laid_out(function: Function, candidates: tuple[ChainDynamics, ...], normal:
     return Override(function, candidates, normal, structure, replace(structure, loops=turned_loops), ())
 
 
-def _normal_measurement_pct(chain: Chain) -> float:
+def _normal_measurement_pct(chain: Chain) -> float | NotSimulated:
     """Where the measurement of a candidate that stands by is in normal operation [% of range]."""
     operating = known(chain.lead.loop.operating)
     normal = known(operating.normal) if operating else None
     assert normal is not None  # else it would not be known to stand by
-    return percent_of_range(normal, measured_range(chain.lead))
+    try:
+        return percent_of_range(normal, measured_range(chain.lead))
+    except UnitError:
+        return NotSimulated(f"the normal value of {chain.lead.tag} is in a unit of another kind than its range")
 
 
 def _simulated(laid_out: Override) -> Override | NotSimulated:

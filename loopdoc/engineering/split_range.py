@@ -84,8 +84,11 @@ def split_range(chains: Sequence[ChainDynamics]) -> SplitRange | NotSimulated | 
     """Simulate the chains of a loop together; None where they are not branches of one split range."""
     from loopdoc.engineering.branched_simulation import clock_of, simulate_branched
 
-    if len(chains) < 2:
+    if len(chains) < 2 or len({tuple(level.loop.tag for level in one.chain.levels) for one in chains}) > 1:
         return None
+    splits = [_splits(dynamics.chain.levels[0].route) for dynamics in chains]
+    if any(len(found) != 1 or found != splits[0] for found in splits):
+        return NotSimulated(f"the way from {chains[0].chain.levels[0].loop.tag} parts more than once")
     refused = next(filter(None, map(not_to_be_simulated, chains)), None)
     if refused is not None:
         return refused
@@ -103,7 +106,7 @@ def _laid_out(chains: Sequence[ChainDynamics]) -> SplitRange | Lacking:
     """The structure of the chains, at its start."""
     inner = chains[0].chain.levels[0].loop
     routes = [dynamics.chain.levels[0].route for dynamics in chains]
-    function = next(part for part in routes[0].via if known(part.kind) == "split range")
+    (function,) = _splits(routes[0])
     controller = controller_of(inner, routes[0])
     if isinstance(controller, Lacking):
         return controller
@@ -184,19 +187,20 @@ _Points = list[tuple[float, float]]
 """Output of the controller and what has become of it, joined by straight lines."""
 
 
-def _split_place(route: Route) -> int:
-    return next(place for place, part in enumerate(route.via) if known(part.kind) == "split range")
+def _splits(route: Route) -> list[Function]:
+    """The split ranges on a route."""
+    return [part for part in route.via if known(part.kind) == "split range"]
 
 
 def _after_split(route: Route) -> tuple[Function, ...]:
     """The split range and what stands on its branch."""
-    return route.via[_split_place(route) :]
+    return route.via[route.via.index(_splits(route)[0]) :]
 
 
 def _as_it_enters(route: Route, commander: str, limits_pct: tuple[float, float]) -> _Points:
     """What enters the split range; what a sum adds shifts the output and is left out, as in the margins."""
     points = [(limit, limit) for limit in limits_pct]
-    for function in route.via[: _split_place(route)]:
+    for function in route.via[: -len(_after_split(route))]:
         if known(function.kind) == "sum":
             weight = function.weights.get(commander, 1.0)
             points = [(output, weight * value) for output, value in points]
@@ -223,7 +227,10 @@ def _through(points: _Points, curve: Curve) -> _Points:
             reverse=next_value < value,
         )
         for corner in corners:
-            refined.append((output + (corner - value) * (next_output - output) / (next_value - value), corner))
+            at = output + (corner - value) * (next_output - output) / (next_value - value)
+            # A corner within a rounding of a point is that point.
+            if refined[-1][0] < at < next_output:
+                refined.append((at, corner))
         refined.append((next_output, next_value))
     return [(output, curve.at(value)) for output, value in refined]
 
