@@ -148,7 +148,8 @@ def told(value: Any) -> str:
         case float():
             return repr(value).removesuffix(".0")
         case list():
-            return ", ".join(map(told, value)) or "nothing"
+            parted = any(isinstance(one, Mapping) for one in value)
+            return ("; " if parted else ", ").join(map(told, value)) or "nothing"
         case Mapping():
             if "hold" in value:
                 return f"HOLD ({told(value['hold'])})"
