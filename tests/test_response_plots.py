@@ -17,9 +17,7 @@ from numpy.typing import NDArray
 from loopdoc.cli import run
 from loopdoc.documents.language import GERMAN
 from loopdoc.documents.magnitudes import duration
-from loopdoc.documents.plot_layout import POINTS_DRAWN
-from loopdoc.documents.plot_output import save, to_svg
-from loopdoc.documents.plots import Curve, Drawing, Mark, Panel
+from loopdoc.documents.plots import POINTS_DRAWN, Curve, Drawing, Limit, Mark, Panel, save, to_svg
 from loopdoc.documents.responses.frequency_plot import frequency_caption, frequency_drawing
 from loopdoc.documents.responses.response_figure import drawn_until_s, figure
 from loopdoc.documents.responses.responses import at_limit_note, held_note, margin_rows, movement_rows
@@ -245,7 +243,7 @@ def test_no_peak_is_left_out_of_a_figure() -> None:
     y = np.zeros(8001)
     y[17], y[5003] = 43.0, -7.0
     svg = to_svg(Drawing("kick", ((Panel("", "time, s", "y", (Curve("y", "solid", np.arange(8001.0), y),)),),)))
-    (path,) = re.findall(r'd="(M[^"]*)" stroke="#000000" stroke-width="1.1"', svg)
+    path = max(re.findall(r'd="(M[^"]*)"', svg), key=len)
     points = np.array([[float(x) for x in pair] for pair in re.findall(r"(-?[\d.]+) (-?[\d.]+)", path)])
     assert len(points) < 2 * POINTS_DRAWN
     across = (points[:, 0] - points[0, 0]) / (points[-1, 0] - points[0, 0]) * 8000
@@ -333,6 +331,33 @@ def test_a_log_axis_has_plain_numbers_and_nothing_is_a_path(tmp_path: Path) -> N
     assert {"0.001", "0.1", "10"} <= set(texts)
     with pytest.raises(ValueError, match=r"\.svg, \.png or \.pdf"):
         save([drawing], tmp_path / "plot.jpg")
+
+
+def one_panel(x: list[float], y: list[float], **more: object) -> Drawing:
+    curve = Curve("a", "solid", np.array(x), np.array(y))
+    return Drawing("one", ((Panel("", "time, s", "y", (curve,), **more),),))  # type: ignore[arg-type]
+
+
+def test_a_limit_far_off_does_not_flatten_the_curve() -> None:
+    limits = (Limit("H 12", 12.0), Limit("HH 100", 100.0))
+    texts = re.findall(r">([^<>]+)</text>", to_svg(one_panel([0, 1], [0, 10], limits=limits)))
+    assert "H 12" in texts
+    assert "HH 100" not in texts
+    assert "100" not in texts
+
+
+def test_numbers_of_an_axis_stand_where_their_values_are() -> None:
+    """At the same places along the axis as the corners of a curve that turns at them."""
+    svg = to_svg(one_panel([0, 10, 20, 30, 40], [0, 9, 1, 8, 0]))
+    corners = [float(x) for x in re.findall(r"[ML] ([\d.]+) [\d.]+", max(re.findall(r'd="(M[^"]*)"', svg), key=len))]
+    numbers = {text: float(x) for x, text in re.findall(r'<text[^>]* x="([\d.]+)"[^>]*>([^<>]+)</text>', svg)}
+    assert [numbers[text] for text in ("0", "10", "20", "30", "40")] == pytest.approx(corners, abs=0.01)
+
+
+def test_words_that_look_like_formulas_are_written_as_they_are(tmp_path: Path) -> None:
+    drawing = Drawing("$x$", ((Panel("$a_b$", "x", "y", (Curve("", "solid", np.arange(2.0), np.arange(2.0)),)),),))
+    save([drawing], tmp_path / "a.pdf")
+    assert "$a_b$" in pypdf.PdfReader(tmp_path / "a.pdf").pages[0].extract_text()
 
 
 # --- told in sentences ---------------------------------------------------------------------------

@@ -79,7 +79,7 @@ def run(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
     if isinstance(found, Lacking):
         return unreadable(found.reason)
     if arguments.plot is not None:
-        from loopdoc.documents.plot_output import save
+        from loopdoc.documents.plots import save
         from loopdoc.documents.responses.step_test_plot import step_test_drawing
 
         drawing = step_test_drawing(

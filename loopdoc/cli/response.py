@@ -56,7 +56,7 @@ def run(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
         if loop.reason:
             stderr.write(f"loopdoc: nothing to draw for {loop.tag}: {loop.reason}\n")
             return EXIT_UNREADABLE
-        from loopdoc.documents.plot_output import save
+        from loopdoc.documents.plots import save
         from loopdoc.documents.responses.override_story import override_figure
         from loopdoc.documents.responses.response_figure import drawings
         from loopdoc.documents.responses.split_range_story import split_figure

@@ -13,7 +13,7 @@ from loopdoc.documents.language import ENGLISH, Language
 from loopdoc.documents.magnitudes import difference_unit, duration, number, with_unit
 from loopdoc.documents.narrative.narrative import Supplement
 from loopdoc.documents.page_fit import foot
-from loopdoc.documents.plot_output import to_svg
+from loopdoc.documents.plots import to_svg
 from loopdoc.documents.responses.frequency_plot import frequency_caption, frequency_drawing
 from loopdoc.documents.responses.override_story import (
     override_caption,
