@@ -11,11 +11,12 @@ import pytest
 from numpy.typing import NDArray
 from scipy.linalg import expm
 
+from loopdoc.documents.responses.split_range_story import split_caption
 from loopdoc.engineering.branched import Branch, BranchedLoop, BranchedScenario, BranchedStructure
 from loopdoc.engineering.branched_simulation import BranchedResponse, simulate_branched
 from loopdoc.engineering.clock import Clock
 from loopdoc.engineering.comparison import NotSimulated
-from loopdoc.engineering.dynamics import Dynamics
+from loopdoc.engineering.dynamics import Dynamics, inputs_beside
 from loopdoc.engineering.functions import Curve
 from loopdoc.engineering.pairing import Plant
 from loopdoc.engineering.pid import Controller
@@ -23,6 +24,7 @@ from loopdoc.engineering.process import Process
 from loopdoc.engineering.simulation import simulate
 from loopdoc.engineering.split_range import HANDOVER, SplitRange, split_range
 from loopdoc.engineering.structure import ControlStructure, Disturbance, FinalElement, Scenario
+from loopdoc.exchange.split_range import split_lines
 from loopdoc.register.load import Loaded, load
 
 ROOT = Path(__file__).parents[1]
@@ -273,6 +275,24 @@ def test_a_characteriser_on_a_branch_opens_it_by_its_curve(tmp_path: Path, regis
     assert isinstance(split, SplitRange), split
     # Half of the part gives a fifth of the opening.
     assert split.structure.branches[1].opening == Curve((0.0, 55.0, 77.5, 100.0), (0.0, 0.0, 20.0, 100.0))
+
+
+def test_what_a_sum_adds_before_the_split_shifts_nothing_and_is_told(tmp_path: Path, register_with: Reading) -> None:
+    plain = register_with(tmp_path / "plain")
+    split = register_with(
+        tmp_path / "summed",
+        ("output: {to: PY-2021,", "output: {to: FY-2025,"),
+        (
+            "  FY-2031:\n",
+            "  FY-2025: {kind: sum, unit: \"20\", service: Vapour ahead, inputs: [FT-2001], to: PY-2021}\n  FY-2031:\n",
+        ),
+    )
+    assert isinstance(plain, SplitRange)
+    assert isinstance(split, SplitRange), split
+    assert split.structure == plain.structure
+    assert inputs_beside(split.chains) == (("FT-2001", "FY-2025"),)
+    assert "What FT-2001 brings into FY-2025 stays as it is in these responses." in split_caption(split)
+    assert "FT-2001 into FY-2025: stays as it is in these responses" in list(split_lines(split))
 
 
 @pytest.mark.parametrize(

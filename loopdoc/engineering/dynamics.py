@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 from functools import cached_property
 from typing import TYPE_CHECKING
@@ -28,6 +29,12 @@ class ChainDynamics:
         from loopdoc.engineering.frequency import speed_ratio
 
         return speed_ratio(self.margins[-2], self.margins[-1]) if len(self.margins) > 1 else None
+
+
+def inputs_beside(chains: Sequence[ChainDynamics]) -> tuple[tuple[str, str], ...]:
+    """What functions on the way of chains take in besides the loops: its tag, and that of the function."""
+    levels = [level for dynamics in chains for level in dynamics.chain.levels]
+    return tuple(dict.fromkeys((one.tag, one.function) for level in levels for one in level.inputs))
 
 
 @dataclass(frozen=True, slots=True)

@@ -8,6 +8,7 @@ from typing import Any
 
 from loopdoc.engineering.branched_simulation import BranchedResponse
 from loopdoc.engineering.comparison import NotSimulated
+from loopdoc.engineering.dynamics import inputs_beside
 from loopdoc.engineering.override import TO_THE_LIMIT, Override, OverrideResponses
 from loopdoc.engineering.stages import measured_range
 from loopdoc.exchange.response_metrics import shown
@@ -152,6 +153,8 @@ def _told(found: Override) -> Iterator[str]:
                     "from the setpoint and a tenth of span beyond, through the lags of its process"
                 )
             yield f"{entry.scenario.name}: {size}; gone again after {shown(entry.scenario.lasts_s, 4)} s"
+    for tag, function in inputs_beside(found.candidates):
+        yield f"{tag} into {function}: stays as it is in these responses"
     yield f"external reset: the integral is what {found.function.tag} passes, through a lag of the reset time"
 
 

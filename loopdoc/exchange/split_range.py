@@ -7,6 +7,7 @@ from typing import Any
 
 from loopdoc.engineering.branched_simulation import BranchedResponse
 from loopdoc.engineering.comparison import NotSimulated, peak_time_s
+from loopdoc.engineering.dynamics import inputs_beside
 from loopdoc.engineering.split_range import HANDOVER, SplitRange
 from loopdoc.engineering.stages import measured_range
 from loopdoc.exchange.response_metrics import metric_cells, metric_heads, metrics_object, shown
@@ -70,6 +71,8 @@ def split_lines(split: SplitRange | NotSimulated) -> Iterator[str]:
         yield from _openings(split, response, width)
     if not any(split.crosses(response) for response in split.responses):
         yield f"none of these carries the output over the handover at {shown(split.handover_pct)} %"
+    for tag, function in inputs_beside(split.chains):
+        yield f"{tag} into {function}: stays as it is in these responses"
     yield "valve travel and turns: of all final elements together; each opening by its own linear process model"
     for response in split.responses:
         if response.scenario.name == HANDOVER:

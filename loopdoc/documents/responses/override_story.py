@@ -17,6 +17,7 @@ from loopdoc.documents.responses.upset_story import standard
 from loopdoc.documents.values import DASH
 from loopdoc.documents.wording import sentences, upper_first
 from loopdoc.engineering.branched_simulation import BranchedResponse
+from loopdoc.engineering.dynamics import inputs_beside
 from loopdoc.engineering.override import TO_THE_LIMIT, Override, OverrideResponses
 from loopdoc.engineering.pairing import Plant
 from loopdoc.engineering.stages import commanded, measured_range
@@ -188,7 +189,15 @@ def override_caption(found: Override, language: Language = ENGLISH) -> str:
     left_out = [_short_name(found, entry, language) for entry in found.responses if entry not in drawn]
     lowest = known(found.function.kind) == "low select"
     told = language.override_caption(tags(found), found.function.tag, lowest=lowest)
-    return " ".join((told, *sized, *([language.not_drawn(left_out)] if left_out else ())))
+    inputs = inputs_beside(found.candidates)
+    return " ".join(
+        (
+            told,
+            *sized,
+            *([language.inputs_stay(inputs)] if inputs else ()),
+            *([language.not_drawn(left_out)] if left_out else ()),
+        )
+    )
 
 
 # ---------------------------------------------------------------- words

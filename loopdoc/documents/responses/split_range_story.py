@@ -13,6 +13,7 @@ from loopdoc.documents.responses.upset_story import peak, setpoint_step, standar
 from loopdoc.documents.wording import sentences, upper_first
 from loopdoc.engineering.branched_simulation import BranchedResponse
 from loopdoc.engineering.comparison import UPSET_PCT, peak_time_s
+from loopdoc.engineering.dynamics import inputs_beside
 from loopdoc.engineering.pairing import Plant
 from loopdoc.engineering.split_range import HANDOVER, SplitRange
 from loopdoc.engineering.stages import commanded, measured_range
@@ -124,6 +125,7 @@ def split_caption(split: SplitRange, language: Language = ENGLISH) -> str:
     ]
     drawn = drawn_responses(split)
     left_out = [_short_name(split, response, language) for response in split.responses if response not in drawn]
+    inputs = inputs_beside(split.chains)
     processes = [stage.process for dynamics in split.chains for stage in dynamics.chain.stages]
     return " ".join(
         (
@@ -134,6 +136,7 @@ def split_caption(split: SplitRange, language: Language = ENGLISH) -> str:
             ),
             start_told(split, language),
             language.split_assumptions(strokes),
+            *([language.inputs_stay(inputs)] if inputs else ()),
             *([language.not_drawn(left_out)] if left_out else ()),
         )
     )  # fmt: skip

@@ -27,6 +27,11 @@ class EnglishBranching(EnglishGrammar):
         """Upsets for which a figure has no room."""
         return f"Not drawn for want of room: {self.listed(upsets)}."
 
+    def inputs_stay(self, inputs: Sequence[tuple[str, str]]) -> str:
+        """Measurements that functions take in, and that no upset of a figure moves."""
+        told = self.listed(f"what {tag} brings into {function}" for tag, function in inputs)
+        return f"{upper_first(told)} stays as it is in these responses."
+
     def split_title(self, lead: str, elements: Sequence[str]) -> str:
         """What a figure shows, for those who cannot see it."""
         return f"Time responses of {lead} with {self.listed(elements)} together"

@@ -24,6 +24,10 @@ class GermanBranching(GermanGrammar, EnglishBranching):
     def not_drawn(self, upsets: Sequence[str]) -> str:
         return f"Aus Platzgründen nicht gezeichnet: {self.listed(upsets)}."
 
+    def inputs_stay(self, inputs: Sequence[tuple[str, str]]) -> str:
+        told = self.listed(f"{tag} (an {function})" for tag, function in inputs)
+        return f"Was Funktionen sonst aufnehmen, bleibt in diesen Verläufen unverändert: {told}."
+
     def split_title(self, lead: str, elements: Sequence[str]) -> str:
         return f"Zeitverhalten von {lead} mit {self.listed(elements)} gemeinsam"
 
