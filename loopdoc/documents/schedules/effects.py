@@ -72,9 +72,9 @@ CAUTION = (
 )
 LAYERS = ("safety", "process")
 INTERLOCKS = (
-    Column("Interlock", 6.5), Column("Service", 10), Column("Layer", 5), Column("Likely cause", 14.5),
-    Column("Consequence without it", 15), Column("Reset", 12.5), Column("Response against process safety time", 12.5),
-    Column("Proof test", 5.5), Column("Bypass", 12.5), Column("Drawing", 6),
+    Column("Interlock", 6.0), Column("Service", 9.0), Column("Layer", 4.5), Column("Likely cause", 14.5),
+    Column("Consequence without it", 15.0), Column("Reset", 12.5), Column("Response against process safety time", 12.0),
+    Column("Proof test", 5.5), Column("Bypass", 15.5), Column("Drawing", 5.5),
 )  # fmt: skip
 
 
@@ -139,7 +139,7 @@ class _Charts:
         return page(
             self._basis, self._writer, replace(KIND, paper=paper), unit=self._number,
             extent=extent((len(self._interlocks), "interlock"), (causes, "cause"), (effects, "effect")),
-            reading=(f"{READING} {self._marks()}", DASHES, *self._from_elsewhere()), caution=CAUTION, template=TEMPLATE,
+            reading=(f"{READING} {self._marks()} {DASHES}", *self._from_elsewhere()), caution=CAUTION, template=TEMPLATE,
             schedules=(self._interlock_table(),), view={"charts": charts},
         )  # fmt: skip
 
