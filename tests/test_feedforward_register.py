@@ -10,7 +10,9 @@ import pytest
 
 from loopdoc.cli import run
 from loopdoc.documents.language import ENGLISH, GERMAN
+from loopdoc.documents.narrative.time_to_act_story import told as told_times
 from loopdoc.documents.responses.responses import held_note, metric_rows, movement_rows
+from loopdoc.documents.responses.split_range_story import split_caption
 from loopdoc.documents.responses.upset_story import declared_upsets
 from loopdoc.engineering.clock import Clock
 from loopdoc.engineering.comparison import Comparison, compare, declared_scenarios, input_moves, structure_of
@@ -20,9 +22,12 @@ from loopdoc.engineering.feedforward import FunctionInput
 from loopdoc.engineering.lead_lag import LeadLag
 from loopdoc.engineering.pairing import Plant
 from loopdoc.engineering.simulation import simulate
+from loopdoc.engineering.split_range import SplitRange, split_range
 from loopdoc.engineering.stages import Chain, Lacking, chains
 from loopdoc.engineering.structure import Feedforward, MeasuredMove
+from loopdoc.engineering.time_to_act import TimeToAct
 from loopdoc.engineering.upsets import Upset, upsets_of
+from loopdoc.exchange.split_range import split_lines
 from loopdoc.register.load import Loaded, load
 
 DRUM = """\
@@ -295,6 +300,66 @@ def test_in_manual_nothing_is_fed_forward(tmp_path: Path) -> None:
     unmoved = {one.name: one for one in upsets_of(bare, bare.register.loops["LIC-3001"]) if isinstance(one, Upset)}
     assert moved == unmoved
     assert "steam demand rises" in moved
+
+
+ALARMED = DRUM.replace(
+    "      blowdown opens: {size: -1 t/h, at: process input}\n",
+    "    alarms: {low: {limit: 35 %, deadband: 5 %, priority: high, time_to_respond: 2 min}}\n",
+).replace("size: -3 t/h", "size: -15 t/h") + """\
+interlocks:
+  IS-3001:
+    unit: "30"
+    service: Low level
+    layer: process
+    initiators: {LT-3001: {trips: below 20 %}}
+    voting: 1oo1
+    actions: {FV-3003: open}
+"""  # fmt: skip
+
+
+@pytest.mark.parametrize("measured", [True, False])
+def test_times_to_act_say_that_nothing_is_fed_forward_in_manual(tmp_path: Path, measured: bool) -> None:
+    text = ALARMED if measured else ALARMED.replace(", moves: {FI-3002: {size: 3000 kg/h, lag: 4 s}}", "")
+    plant = plant_of(tmp_path, text)
+    level = plant.register.loops["LIC-3001"]
+    (entry,) = TimeToAct(plant).of(level, level.alarms["low"])
+    # 15 % at 15 t/h x 0.2 %/min per t/h take 5 min, whatever the steam flow shows.
+    assert entry.shortest is not None
+    assert entry.shortest.upset == "steam demand rises"
+    assert entry.shortest.available_s == pytest.approx(5.0 * 60.0, rel=1e-6)
+    for language, told in ((ENGLISH, "where nothing is fed forward either"), (GERMAN, "ohne Störgrößenaufschaltung")):
+        said = told_times(plant, TimeToAct(plant), [level], language)
+        assert (told in said) == measured
+
+
+SPLIT = (
+    TO_A_VALVE.replace("to: TV-2040}", "to: TY-2041}")
+    .replace("controller: {action: direct", "controller: {action: reverse")
+    .replace(
+        "process: {effect: falls, gain: -1.6 degC per %, lag: 80 s, dead_time: 10 s}",
+        "process: {branches: {TV-2041A: {effect: rises, gain: 1.2 degC per %, lag: 80 s, dead_time: 10 s},"
+        " TV-2041B: {effect: falls, gain: -1.6 degC per %, lag: 60 s, dead_time: 8 s}}}",
+    )
+    .replace(
+        '  TV-2040: {unit: "20", kind: control valve, opens_on: falling signal}\n',
+        '  TV-2041A: {unit: "20", kind: control valve, opens_on: rising signal}\n'
+        '  TV-2041B: {unit: "20", kind: control valve, opens_on: rising signal}\n',
+    )
+    + '  TY-2041: {unit: "20", service: Split, kind: split range,'
+    " outputs: {TV-2041A: 50 to 100 %, TV-2041B: 50 to 0 %}}\n"
+)
+
+
+def test_branches_of_a_split_range_are_fed_forward_and_the_whole_says_that_it_is_not(tmp_path: Path) -> None:
+    """Half of the output opens a valve all the way, so that 1 % added moves it by 0.7 x 2 %."""
+    plant = plant_of(tmp_path, SPLIT)
+    found = Dynamics(plant).loop("TIC-2040").chains
+    paths = [one.path for dynamics in found for one in dynamics.chain.levels[0].inputs]
+    assert paths == [Feedforward("ZT-2041", pytest.approx(1.4)), Feedforward("ZT-2041", pytest.approx(-1.4))]
+    whole = split_range(found)
+    assert isinstance(whole, SplitRange), whole
+    assert "ZT-2041 into TY-2040: stays as it is in these responses" in list(split_lines(whole))
+    assert "What ZT-2041 brings into TY-2040 stays as it is in these responses." in split_caption(whole)
 
 
 # --- what is said --------------------------------------------------------------------------------

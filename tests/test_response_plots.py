@@ -382,7 +382,7 @@ def test_a_declared_upset_at_a_process_input_names_the_process(tmp_path: Path) -
     assert isinstance(loaded, Loaded)
     dynamics = Dynamics(Plant(loaded.register)).loop("LIC-1001").chains[0]
     told = declared_upsets(dynamics, compare(dynamics))
-    assert told.startswith("The upset “feed is cut” (declared at LIC-1001) moves what commands LIC-1001 (FIC-1002) by")
+    assert told.startswith("The upset “feed is cut” (declared at LIC-1001) acts on LIC-1001 as a change of FIC-1002 by")
     assert "through the process of LIC-1001" in told
     assert "LIC-1001 then departs by" in told
 

@@ -18,8 +18,8 @@ from loopdoc.rules.values import below, duration
 
 CAUTION = (
     "Times to act are calculated from the process models of the register, from normal operation and with the loops in "
-    "manual; a real upset may be quicker. They do not show that an alarm or an interlock is enough: safety functions "
-    "are judged in their own lifecycle (IEC 61511)."
+    "manual, where nothing is fed forward either; a real upset may be quicker. They do not show that an alarm or an "
+    "interlock is enough: safety functions are judged in their own lifecycle (IEC 61511)."
 )
 """Stands beside every time to act."""
 
@@ -153,7 +153,15 @@ def told(plant: Plant, times: TimeToAct, loops: Iterable[Loop], language: Langua
         language.time_not_checked(alarms, trip, language.reason(reason))
         for (trip, reason), alarms in _alarms_by(lacking).items()
     ]
-    return sentences(*sayings, language.times_caution()) if sayings else ""
+    measured = {
+        name
+        for loop in plant.register.loops.values()
+        for upset in loop.disturbances.values()
+        if upset.moves
+        for name in (upset.name, f"{upset.name} ({loop.tag})")
+    }
+    fed = any(time is not None and time.upset in measured for _, time in reached)
+    return sentences(*sayings, language.times_caution(measured=fed)) if sayings else ""
 
 
 def _alarms_by(found: Iterable[tuple[_K, AlarmToTrip]]) -> dict[_K, list[tuple[str, str]]]:

@@ -85,7 +85,7 @@ class EnglishDynamics(EnglishGrammar):
     def upset_moves_input(self, name: str, tag: str, end: str, size: str) -> str:
         """A declared upset at the process input."""
         return (
-            f"The upset “{name}” (declared at {tag}) moves what commands {tag} ({end}) by {size}, "
+            f"The upset “{name}” (declared at {tag}) acts on {tag} as a change of {end} by {size} would, "
             f"through the process of {tag}"
         )
 
@@ -127,8 +127,8 @@ class EnglishDynamics(EnglishGrammar):
     def feedforward_leaves(self, share_of_peak: str, share_of_error: str) -> str:
         """What feedforward leaves of an upset just told, in percent of what comes of it without."""
         return (
-            f"Feedforward leaves {share_of_peak}{NO_BREAK}% of that peak and {share_of_error}{NO_BREAK}% of the integral "
-            "of the absolute error"
+            f"Feedforward leaves {share_of_peak}{NO_BREAK}% of that peak and {share_of_error}{NO_BREAK}% of the "
+            "integral of the absolute error"
         )
 
     def nothing_to_compare(self, element: str) -> str:

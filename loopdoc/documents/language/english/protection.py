@@ -160,11 +160,13 @@ class EnglishProtection(EnglishFailure):
 
     # -- time to act
 
-    def times_caution(self) -> str:
-        """The caution as a narrative carries it, in one sentence."""
+    def times_caution(self, *, measured: bool) -> str:
+        """The caution as a narrative carries it, in one sentence; ``measured`` where a function would feed an upset
+        forward.
+        """
+        manual = "in manual, where nothing is fed forward either" if measured else "in manual"
         return (
-            "Calculated from normal operation with the loops in manual, this does not show that the interlock is "
-            "enough"
+            f"Calculated from normal operation with the loops {manual}, this does not show that the interlock is enough"
         )
 
     def the_alarm(self, tag: str, kind: str) -> str:

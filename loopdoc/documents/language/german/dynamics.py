@@ -78,8 +78,8 @@ class GermanDynamics(GermanGrammar, EnglishDynamics):
 
     def upset_moves_input(self, name: str, tag: str, end: str, size: str) -> str:
         return (
-            f"Die Störung {self.quoted(name)} (angegeben bei {tag}) verstellt die Führung von {tag} ({end}) um {size} "
-            f"und wirkt über den Prozess von {tag}"
+            f"Die Störung {self.quoted(name)} (angegeben bei {tag}) wirkt auf {tag} wie eine Änderung von {end} um "
+            f"{size}, über den Prozess von {tag}"
         )
 
     def upset_moves(self, name: str, tag: str, size: str, lag: str, process_lags: Sequence[str]) -> str:

@@ -172,10 +172,11 @@ class GermanProtection(GermanFailure, EnglishProtection):
 
     # -- time to act
 
-    def times_caution(self) -> str:
+    def times_caution(self, *, measured: bool) -> str:
+        without = " und ohne Störgrößenaufschaltung" if measured else ""
         return (
-            "Gerechnet ist vom Normalbetrieb aus, mit den Regelkreisen im Handbetrieb; das zeigt nicht, dass die "
-            "Verriegelung genügt"
+            f"Gerechnet ist vom Normalbetrieb aus, mit den Regelkreisen im Handbetrieb{without}; das zeigt nicht, dass "
+            "die Verriegelung genügt"
         )
 
     def the_alarm(self, tag: str, kind: str) -> str:
