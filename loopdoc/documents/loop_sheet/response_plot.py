@@ -13,7 +13,7 @@ from loopdoc.engineering.step_response import SetpointResponse, setpoint_respons
 
 WIDTH, HEIGHT = 251.0, 56.0
 """Of the figure [pt]."""
-_LEFT, _RIGHT, _TOP, _BOTTOM = 14.0, 246.0, 4.0, 44.0
+_LEFT, _RIGHT, _TOP, _BOTTOM = 24.0, 246.0, 4.0, 44.0
 _POINTS = 140
 _TIME_UNITS = ((7200.0, 3600.0, "h"), (300.0, 60.0, "min"), (0.0, 1.0, "s"))
 """From this duration on [s], divide by this and write that."""
@@ -31,7 +31,7 @@ def calculated_response(dynamics: LoopDynamics) -> SetpointResponse | None:
 
 
 def response_plot(tag: str, response: SetpointResponse, language: Language) -> str:
-    """The figure as SVG text: setpoint and measurement over time, in shares of the step."""
+    """The figure as SVG text: setpoint and measurement over time, in percent of the step."""
     end_s = max(1.4 * response.settling_s, float(response.time_s[8]))
     _, divisor, unit = next(entry for entry in _TIME_UNITS if end_s >= entry[0])
     step = _tick(end_s / divisor)
@@ -49,7 +49,7 @@ def response_plot(tag: str, response: SetpointResponse, language: Language) -> s
         sheet.polyline([(x, y), (x, y + 2.0)], width=0.6)
         label = language.number(index * step) + (f"\u00a0{unit}" if index == count else "")
         sheet.text(x, y + 8.5, label, size=5.8, anchor="end" if index == count else "middle")
-    for share, name in ((0.0, "0"), (1.0, "1")):
+    for share, name in ((0.0, "0\u00a0%"), (1.0, "100\u00a0%")):
         sheet.text(_LEFT - 3, at(0.0, share)[1] + 2, name, size=5.8, anchor="end")
     sheet.polyline([at(0.0, 1.0), at(end_s, 1.0)], width=0.5, dash="2 1.6")
     times = np.linspace(0.0, end_s, _POINTS)
