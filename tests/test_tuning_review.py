@@ -316,6 +316,17 @@ def test_the_text_gives_no_settings_without_margins_and_cautions(tmp_path: Path)
     assert "Trans. ASME 64:759-768, 1942" in text
 
 
+def test_figures_of_any_size_stand_apart(tmp_path: Path) -> None:
+    process = "gain: 0.001 degC per %, lag: 60 s, dead_time: 2 s"
+    text = shown(tmp_path, "gain: 0.0001\n      reset: 1 h", process, "--format", "text")
+    row = next(line for line in text.splitlines() if line.startswith("TIC-1001  "))
+    # K k/Ti for both: 1e-4 x 1e-3/3600 s.
+    assert row.endswith(" 1  2.78 × 10⁻¹¹ rad/s  2.78 × 10⁻¹¹ rad/s")
+    assert "this one is 0.033 times the lag" in text
+    configured = next(line for line in text.splitlines() if line.startswith("as configured"))
+    assert configured.endswith(" 1  2.78 × 10⁻¹¹")
+
+
 def test_what_rounding_leaves_of_a_difference_is_not_printed(tmp_path: Path) -> None:
     # A second lag of 0.01 ms turns the phase by 1e-4 deg at most where it matters.
     text = shown(tmp_path, STANDARD, "gain: 1 degC per %, lags: [10 s, 0.00001 s], dead_time: 2 s", "--format", "text")

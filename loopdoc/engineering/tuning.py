@@ -16,6 +16,7 @@ from loopdoc.engineering.open_loop import level_arrays
 from loopdoc.engineering.pid import Controller, SeriesSettings, StandardSettings, standard_from_series
 from loopdoc.engineering.process import FloatArray, Process
 from loopdoc.engineering.reduction import ReducedModel, reduce_to_first_order, reduce_to_second_order
+from loopdoc.register.quantity import display_number
 
 Actions = Literal["P", "PI", "PID"]
 
@@ -235,7 +236,7 @@ def itae(
     if not 0.1 <= r <= 1.0:
         raise ValueError(
             "this rule was fitted to dead times of a tenth of the lag to the whole of it, and this one is "
-            f"{r:.2g} times the lag"
+            f"{display_number(r, 2)} times the lag"
         )
     if upset == "load":
         if actions == "PI":

@@ -154,15 +154,15 @@ def _chain_lines(dynamics: ChainDynamics, comparison: Comparison | NotSimulated)
     path = " > ".join([level.loop.tag for level in reversed(chain.levels)] + [chain.final_element.tag])
     lines = [
         path,
-        f"{'':12}{'gain margin':>13}{'phase margin':>14}{'Ms':>7}{'Mt':>7}{'crossover':>16}{'bandwidth':>16}",
+        f"{'':12}{'gain margin':>13}{'phase margin':>14}{'Ms':>7}{'Mt':>7}{'crossover':>20}{'bandwidth':>20}",
     ]
     for level, margins in zip(reversed(chain.levels), reversed(dynamics.margins), strict=True):
         state = ("   sampled" if margins.sampled else "") + ("" if margins.stable else "   NOT STABLE")
         lines.append(
             f"{level.loop.tag:12}{quoted_gain_margin(margins):>13}{_with_unit(quoted_phase_margin(margins), 'deg'):>14}"
             f"{shown(margins.max_sensitivity):>7}{shown(margins.max_complementary_sensitivity):>7}"
-            f"{_with_unit(shown(margins.crossover_rad_per_s), 'rad/s'):>16}"
-            f"{_with_unit(shown(margins.bandwidth_rad_per_s), 'rad/s'):>16}{state}"
+            f"{_with_unit(shown(margins.crossover_rad_per_s), 'rad/s'):>20}"
+            f"{_with_unit(shown(margins.bandwidth_rad_per_s), 'rad/s'):>20}{state}"
         )
     sampled = [margins.sampled for margins in dynamics.margins]
     if any(sampled):

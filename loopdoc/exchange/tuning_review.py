@@ -110,12 +110,12 @@ def review_lines(reviews: Reviews, limits: Limits) -> Iterator[str]:
         table = tuning_table(review, wanted_by(limits))
         yield f"tuning review of {table.heading}, {review.form} form"
         heads = "".join(f"{head:>16}" for head in table.heads)
-        yield f"{'':37}{heads}{'gain margin':>13}{'phase, deg':>12}{'Ms':>7}{'rad/s':>10}"
+        yield f"{'':37}{heads}{'gain margin':>13}{'phase, deg':>12}{'Ms':>7}{'rad/s':>14}"
         for row in table.rows:
             settings = "".join(f"{cell:>16}" for cell in row.settings)
             yield (
                 f"{row.rule:37}{settings}{row.gain_margin:>13}{row.phase_margin:>12}{row.max_sensitivity:>7}"
-                f"{row.crossover:>10}{f'  {row.remark}' if row.remark else ''}"
+                f"{row.crossover:>14}{f'  {row.remark}' if row.remark else ''}"
             )
         yield from table.not_applied
         yield from table.basis
