@@ -363,11 +363,9 @@ class _Narrative:
         yield from self._alarm_table(self._indicators)
         times = time_to_act_story.told(self._plant, self._basis.times, self._indicators, self._language)
         yield from self._paragraphs("Time to act.", times)
-        told = [self._entered(loop) for loop in self._indicators]
-        trips = sentences(
-            protection_story.initiated_by(self._plant, self._indicators, self._language), *told
-        )
-        yield from self._paragraphs("Interlocks." if trips else "", trips)
+        trips = protection_story.initiated_by(self._plant, self._indicators, self._language)
+        yield from self._paragraphs("Interlocks.", trips)
+        yield from self._paragraphs("", sentences(*map(self._entered, self._indicators)))
 
     def _entered(self, loop: Loop) -> str:
         """Which functions an indicator's measurement enters."""

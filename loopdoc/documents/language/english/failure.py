@@ -17,7 +17,7 @@ class EnglishFailure(EnglishNaming):
     def failure_assumptions(self) -> str:
         """What every table of failures rests on, told once in a document."""
         return (
-            "Failures are judged one at a time, by the signs and modes in the register. A transmitter signals its own "
+            "Each is judged by itself, from the signs and modes in the register. A transmitter signals its own "
             "fault by a current of at most 3.6 mA or at least 21 mA (NAMUR NE 43); its controller then does what is "
             "set for a bad measurement. A reading that is merely wrong is taken as good, at the worst at the end of "
             "its range. One that stands still is taken as good too, and only another measurement can tell. With the "

@@ -313,7 +313,7 @@ class EnglishScheme(EnglishNaming):
         if policy == "hold":
             does = "holds its output" if one else "hold their outputs"
         else:
-            does = "goes on calculating all the same" if one else "go on calculating all the same"
+            does = "goes on calculating and may wind up" if one else "go on calculating and may wind up"
         return f"While {below} is out of cascade or at a limit, {self.listed(who)} {does}"
 
 

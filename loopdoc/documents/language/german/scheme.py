@@ -324,7 +324,8 @@ class GermanScheme(GermanNaming, EnglishScheme):
         if policy == "hold":
             does = f"{'hält' if one else 'halten'} {self.listed(who)} {'seinen Ausgang' if one else 'ihre Ausgänge'}"
         else:
-            does = f"{'rechnet' if one else 'rechnen'} {self.listed(who)} unverändert weiter"
+            goes, may = ("rechnet", "kann") if one else ("rechnen", "können")
+            does = f"{goes} {self.listed(who)} weiter und {may} auflaufen (Wind-up)"
         return f"Solange {below} nicht in Kaskade oder an einer Grenze ist, {does}"
 
 

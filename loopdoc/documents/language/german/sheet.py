@@ -23,6 +23,7 @@ _HELD = {
     "measurement signal": "Messsignal",
     "measurement filter": "Filterzeit",
     "measurement channel": "Kanal",
+    "measurement supply": "Speisung",
     "measurement tolerance": "Toleranz",
     "controller": "Regler",
     "controller action": "Wirksinn",
@@ -64,6 +65,11 @@ _HELD = {
     "kind": "Art",
     "signal": "Signal",
     "channel": "Kanal",
+    "supply": "Speisung",
+    "trip_solenoid": "Magnetventil",
+    "trip_solenoid tag": "Kennzeichen des Magnetventils",
+    "trip_solenoid channel": "Kanal des Magnetventils",
+    "trip_solenoid supply": "Speisung des Magnetventils",
     "range": "Messbereich",
     "on_fault": "Verhalten bei Ausfall",
     "variable": "Messgröße",
@@ -93,6 +99,7 @@ _HELD = {
     "cause": "Ursache",
     "consequence": "Folge",
 }
+_OF_CABLE = {"cable": "Nummer", "pair": "Paar", "at": "Klemmenkasten", "terminals": "Klemmen"}
 _OF_ALARM = {
     "limit": "Grenzwert",
     "deadband": "Hysterese",
@@ -176,6 +183,11 @@ class GermanSheet(GermanGrammar, EnglishSheet):
         whole = " ".join(steps)
         if whole in _HELD:
             return _HELD[whole]
+        if "wiring" in steps:
+            cable, *of_it = steps[steps.index("wiring") + 1 :] or ("",)
+            wired = f"Kabel {int(cable) + 1}" if cable else "Verdrahtung"
+            wired = f"{_OF_CABLE.get(of_it[0], self.quoted(of_it[0]))} von {wired}" if of_it else wired
+            return f"{wired} des Magnetventils" if steps[0] == "trip_solenoid" else wired
         if steps[0] == "alarms" and len(steps) > 1 and steps[1] in ALARMS:
             name = ALARMS[steps[1]]
             return f"{_OF_ALARM.get(steps[2], self.quoted(steps[2]))} für {name}" if len(steps) > 2 else name
