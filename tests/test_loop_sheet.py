@@ -294,6 +294,29 @@ def test_holds_are_marked_and_told_with_their_reasons() -> None:
     assert "FV-3010 safe position: no hazard study published" in written
 
 
+@pytest.mark.parametrize(
+    ("language", "said"),
+    [
+        (ENGLISH, ["terminals of cable 2", "FV-1 wiring", "FV-1 box of cable 1 of the trip solenoid"]),
+        (GERMAN, ["Klemmen von Kabel 2", "FV-1 Verdrahtung", "FV-1 Klemmenkasten von Kabel 1 des Magnetventils"]),
+    ],
+)
+def test_what_is_held_of_a_wiring_is_named(tmp_path: Path, language: Language, said: list[str]) -> None:
+    text = (
+        "loops:\n  FIC-1:\n    measurement:\n      transmitter: FT-1\n"
+        "      wiring: [{at: JB-1}, {at: MC-1, terminals: {hold: one}}]\n"
+        "    controller: {output: {to: FV-1}}\n"
+        "final_elements:\n  FV-1: {kind: control valve, wiring: {hold: two}, "
+        "trip_solenoid: {tag: XY-1, wiring: [{at: {hold: three}}]}}\n"
+    )
+    (tmp_path / "register.yaml").write_text(f"format: 1\n{text}", encoding="utf-8")
+    (page,) = loop_sheets(basis_of(tmp_path).in_language(language))
+    assert [f"{words}: {reason}" for words, reason in zip(said, ("one", "two", "three"), strict=True)] == [
+        line for line in page.view["sheet"].holds if line.rpartition(" ")[2] in ("one", "two", "three")
+    ]
+    assert "HOLD" in page.view["sheet"].drawing
+
+
 def test_no_cell_is_empty_but_those_to_be_signed() -> None:
     for name in NAMES:
         for page in pages_of(name):

@@ -7,6 +7,8 @@ from collections.abc import Sequence
 from loopdoc.documents.language.english.grammar import NO_BREAK, EnglishGrammar
 from loopdoc.documents.wording import grouped, sentence, sentences, upper_first
 
+_OF_CABLE = {"cable": "number", "at": "box"}
+"""What is said of one cable of a wiring, where the key does not say it."""
 _HELD = {
     ("measurement", "on_fault"): "fault reading",
     ("measurement",): "measurement",
@@ -82,6 +84,11 @@ class EnglishSheet(EnglishGrammar):
         if steps in _HELD:
             return _HELD[steps]
         words = [step.replace("_", " ") for step in steps]
+        if "wiring" in steps:
+            cable, *what = steps[steps.index("wiring") + 1 :] or ("",)
+            name = f"cable {int(cable) + 1}" if cable else "wiring"
+            name = f"{_OF_CABLE.get(what[0], what[0])} of {name}" if what else name
+            return f"{name} of the trip solenoid" if steps[0] == "trip_solenoid" else name
         if len(steps) > 1 and steps[0] == "alarms":
             return f"{steps[1].replace('_', '-')} alarm {' '.join(words[2:])}".strip()
         if len(steps) > 3 and steps[0] == "disturbances":
