@@ -417,6 +417,21 @@ def test_speed_ratio_is_the_ratio_of_crossovers() -> None:
     assert speed_ratio(inner, outer) == pytest.approx(10.0, rel=1e-10)
 
 
+def test_every_crossover_counts_where_a_loop_below_resonates() -> None:
+    """By the loop written out on two million frequencies: crossovers at 0.1839, 0.6178 and 0.6709 rad/s, with 0.9,
+    103.8 and 47.5 deg to -1.
+    """
+    inner = LoopStage(Controller(2.7, 20.0, interval_s=1.0), Process(1.0, (5.0,), 2.0))
+    outer = LoopStage(Controller(16.0, 300.0, interval_s=1.0), Process(0.8, (60.0,), 6.0))
+    below, above = analyse_chain([inner, outer])
+    assert (below.crossovers, above.crossovers) == (1, 3)
+    # Four digits of the grid.
+    assert above.crossover_rad_per_s == pytest.approx(0.6709, abs=1e-4)
+    assert above.phase_margin_deg == pytest.approx(0.918, abs=1e-3)
+    assert above.max_sensitivity == pytest.approx(134.6, rel=1e-3)
+    assert single(Controller(0.3), Process(1.0, (5.0,), 2.0)).crossovers == 0
+
+
 def test_an_unstable_loop_has_a_phase_margin_only_where_a_crossover_is_beyond() -> None:
     """An integrator with a dead time of 1 s under a gain a crosses over at a rad/s, at -90 deg less a."""
     alone = single(Controller(1.8), Process(1.0, (), 1.0, integrating=True))

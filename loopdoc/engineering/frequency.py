@@ -90,6 +90,8 @@ class Margins:
     """Mt, largest |L/(1+L)| [dimensionless]; infinite when unstable."""
     crossover_rad_per_s: float
     """Highest frequency with |L| = 1 [rad/s]; nan if the gain never crosses 1."""
+    crossovers: int
+    """Frequencies at which the gain crosses 1; more than one where a loop below resonates."""
     phase_crossover_rad_per_s: float
     """Frequency at which the gain margin is read [rad/s]; nan if there is none."""
     bandwidth_rad_per_s: float
@@ -165,6 +167,7 @@ def read_margins(survey: LevelSurvey) -> list[Margins]:
     short = np.where(stable[gain_roots.row], lag_to_go, math.inf)
     phase, _ = _nearest(size, gain_roots, np.minimum(short, np.where(lag_to_go > math.pi, beyond, math.inf)))
     delay, _ = _nearest(size, gain_roots, lag_to_go / gain_roots.w)
+    crossings = np.bincount(gain_roots.row, minlength=size)
     crossover = np.full(size, math.nan)
     np.fmax.at(crossover, gain_roots.row, gain_roots.w)
     phase_deg = np.where(stable | np.isinf(phase), 1.0, -1.0) * np.degrees(phase)
@@ -179,6 +182,7 @@ def read_margins(survey: LevelSurvey) -> list[Margins]:
             max_sensitivity=float(sensitivity[i]) if stable[i] else math.inf,
             max_complementary_sensitivity=float(complementary[i]) if stable[i] else math.inf,
             crossover_rad_per_s=float(crossover[i]),
+            crossovers=int(crossings[i]),
             phase_crossover_rad_per_s=float(at[i]),
             bandwidth_rad_per_s=float(width[i]) if stable[i] else math.nan,
             delay_margin_s=float(delay[i]) if stable[i] else 0.0,

@@ -6,6 +6,7 @@ import math
 from collections.abc import Iterator
 from dataclasses import dataclass
 
+from loopdoc.engineering.dynamics import ChainDynamics
 from loopdoc.engineering.frequency import Margins
 from loopdoc.engineering.pid import proportional_band_from_gain, repeats_from_reset
 from loopdoc.engineering.process import Process
@@ -158,6 +159,16 @@ def quoted_gain_margin(margins: Margins) -> str:
 def quoted_phase_margin(margins: Margins) -> str:
     """A phase margin in degrees, or that there is none: the gain never crosses 1."""
     return "none" if math.isinf(margins.phase_margin_deg) else _shown(margins.phase_margin_deg)
+
+
+def several_crossovers(dynamics: ChainDynamics) -> Iterator[str]:
+    """For each loop whose gain crosses 1 more than once, outermost first, which crossover is told; a sentence each."""
+    for level, margins in zip(reversed(dynamics.chain.levels), reversed(dynamics.margins), strict=True):
+        if margins.crossovers > 1:
+            yield (
+                f"The gain of {level.loop.tag} crosses 1 at {margins.crossovers} frequencies: the crossover told is "
+                "the highest of them, the phase margin the least of them all."
+            )
 
 
 def remark(margins: Margins, wanted: Wanted) -> str:

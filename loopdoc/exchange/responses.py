@@ -15,7 +15,7 @@ from loopdoc.engineering.setpoint_steps import steps_told
 from loopdoc.engineering.split_range import SplitRange
 from loopdoc.engineering.stages import Chain, measured_range
 from loopdoc.engineering.tuning_table import CAUTION as REVIEW_CAUTION
-from loopdoc.engineering.tuning_table import quoted_gain_margin, quoted_phase_margin
+from loopdoc.engineering.tuning_table import quoted_gain_margin, quoted_phase_margin, several_crossovers
 from loopdoc.exchange.escaping import for_json, for_terminal
 from loopdoc.exchange.findings import CAUTION
 from loopdoc.exchange.override import override_lines, override_object
@@ -173,6 +173,7 @@ def _chain_lines(dynamics: ChainDynamics, comparison: Comparison | NotSimulated)
         for level, margins in zip(chain.levels, dynamics.margins, strict=True)
         if margins.not_quoted
     )
+    lines.extend(several_crossovers(dynamics))
     levels = list(zip(chain.levels, dynamics.margins, strict=True))
     lines.extend(
         f"speed ratio of the crossovers, {inner.loop.tag} over {outer.loop.tag}: {shown(speed_ratio(fast, slow))}"

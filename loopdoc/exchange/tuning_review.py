@@ -89,6 +89,7 @@ def margins_object(margins: Margins) -> dict[str, Any]:
         "max_sensitivity": number(margins.max_sensitivity),
         "max_complementary_sensitivity": number(margins.max_complementary_sensitivity),
         "crossover_rad_per_s": number(margins.crossover_rad_per_s),
+        "crossovers": margins.crossovers,
         "phase_crossover_rad_per_s": number(margins.phase_crossover_rad_per_s),
         "bandwidth_rad_per_s": number(margins.bandwidth_rad_per_s),
     }

@@ -43,6 +43,7 @@ from loopdoc.engineering.tuning_table import (
     legend,
     quoted_gain_margin,
     quoted_phase_margin,
+    several_crossovers,
     tuning_table,
 )
 from loopdoc.register.model import known
@@ -255,7 +256,7 @@ def speed_ratios(dynamics: ChainDynamics) -> str:
 
 
 def sampled_note(dynamics: ChainDynamics) -> str:
-    """Which margins are those of the sampled loop, and which gain margin would need it; empty where none."""
+    """Which margins are those of the sampled loop, which would need it, and where the gain crosses 1 more than once."""
     levels = [
         (level.loop.tag, margins)
         for level, margins in zip(reversed(dynamics.chain.levels), reversed(dynamics.margins), strict=True)
@@ -266,6 +267,7 @@ def sampled_note(dynamics: ChainDynamics) -> str:
         for tag, margins in levels
         if margins.not_quoted
     ]
+    told.extend(several_crossovers(dynamics))
     if sampled:
         told.insert(
             0,
