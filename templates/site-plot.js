@@ -22,6 +22,9 @@
     return element;
   }
 
+  // How a curve is drawn, beside its name.
+  const key = (parent, style) => html(parent, "span", { className: `key ${style}` }).setAttribute("aria-hidden", "true");
+
   // Steps of 1, 2 or 5 times a power of ten, about five of them.
   function ticks(low, high) {
     const rough = (high - low) / 5 || 1;
@@ -50,7 +53,9 @@
 
   for (const figure of document.querySelectorAll("figure[data-plot]")) {
     const chain = data[Number(figure.dataset.plot)];
-    const names = [...new Set(chain.upsets.flatMap((upset) => upset.panels.flatMap((panel) => panel.curves.map((curve) => curve.name))))];
+    const curves = chain.upsets.flatMap((upset) => upset.panels.flatMap((panel) => panel.curves));
+    const styles = Object.fromEntries(curves.map((curve) => [curve.name, curve.style]));
+    const names = Object.keys(styles);
     const plot = document.createElement("figure");
     plot.className = "plot";
     plot.setAttribute("aria-label", `Time responses of ${chain.tag}`);
@@ -68,6 +73,7 @@
     for (const name of names) {
       const label = html(compared, "label", {});
       html(label, "input", { type: "checkbox", name: `${id}-curve`, value: name, checked: true });
+      key(label, styles[name]);
       label.append(name);
     }
     const drawing = make(plot, "svg", { role: "img" });
@@ -152,7 +158,7 @@
         if (!found.some(Boolean)) continue;
         const row = html(body, "tr", {});
         const cell = html(row, "th", { scope: "row" });
-        html(cell, "span", { className: `key ${found.find(Boolean).style}` }).setAttribute("aria-hidden", "true");
+        key(cell, styles[name]);
         cell.append(name);
         found.forEach((curve, index) => {
           const value = curve ? at(curve, time) : null;

@@ -22,6 +22,7 @@ from hypothesis import strategies as st
 
 from loopdoc.documents.basis import Basis, basis_of
 from loopdoc.documents.handover.issue import issue
+from loopdoc.documents.language import LANGUAGES
 from loopdoc.documents.responses.responses import scheme_chains
 from loopdoc.documents.site.plot import MOST_POINTS, TOLERANCE, plot_data, thinned
 from loopdoc.documents.site.script import data_block, policy, script
@@ -246,6 +247,24 @@ def test_every_finding_leads_to_the_line_of_its_file(site: Path, basis: Basis) -
         place = finding.place
         page = f"register-text/{place.file.replace('/', '-')}.html#line-{place.line}"
         assert f'<a href="{page}">{place}</a>' in html, finding
+
+
+def test_a_german_document_stands_in_a_german_frame(basis: Basis, tmp_path: Path) -> None:
+    german = basis.in_language(LANGUAGES["de"])
+    issue(german, tmp_path, kinds=["narrative", "loop-sheet", "alarm-schedule"], formats=["html"])
+    sheet = Elements(tmp_path / "loop-sheets" / "FIC-1002.html").text
+    narrative = Elements(tmp_path / "narratives" / "unit-10.html").text
+    schedule = Elements(tmp_path / "alarm-schedules" / "unit-10.html").text
+    for text in (sheet, narrative):
+        assert "Zum Inhalt springen" in text
+        assert "Übersicht New plant" in text
+        assert "Befunde" in text
+    for told in ("Geführt von", "Befunde, Abweichungen und HOLDs bei FIC-1002", "Zeilen des Registers"):
+        assert told in sheet
+    for english in ("Skip to", "Commanded by", "Lines of the register", "puts FIC-1002", "Deviation", "Not checked"):
+        assert english not in sheet
+    assert "Skip to the content" in schedule
+    assert_every_link_leads_somewhere(tmp_path)
 
 
 # ---------------------------------------------------------------- what the register says is no markup

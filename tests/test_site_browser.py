@@ -47,6 +47,7 @@ const report = (found) => {
 KINDS_OF_PAGE = (
     "index", "findings", "loop-sheets/FIC-1002", "schemes/LIC-1001", "responses/LIC-1001", "cause-and-effect/unit-10",
     "narratives/unit-10", "check-records/FIC-1002", "alarm-schedules/unit-10", "failure-effects/unit-10",
+    "register-text/units-10-feed.yaml",
 )  # fmt: skip
 """A page of every sort."""
 
@@ -68,7 +69,9 @@ class Browser:
     def __init__(self, profile: Path) -> None:
         self._profile = profile
 
-    def show(self, page: Path, *, driver: str = "", fragment: str = "", size: str = "1366,900") -> Shown:
+    def show(
+        self, page: Path, *, driver: str = "", fragment: str = "", size: str = "1366,900", flags: tuple[str, ...] = ()
+    ) -> Shown:
         """Open a page, with a driver that calls ``report(value)`` once and a fragment behind its address."""
         opened = page
         if driver:
@@ -77,7 +80,10 @@ class Browser:
         address = opened.resolve().as_uri() + (f"#{fragment}" if fragment else "")
         assert CHROMIUM is not None
         run = subprocess.run(
-            [CHROMIUM, *FLAGS, f"--window-size={size}", f"--user-data-dir={self._profile}", "--dump-dom", address],
+            [
+                CHROMIUM, *FLAGS, *flags, f"--window-size={size}", f"--user-data-dir={self._profile}", "--dump-dom",
+                address,
+            ],
             capture_output=True, text=True, encoding="utf-8", timeout=120, check=True,
         )  # fmt: skip
         if driver:
@@ -191,6 +197,7 @@ def test_search_and_filters_of_the_index(site: Path, browser: Browser) -> None:
   await ask("open", { state: "open" });
   await ask("accepted", { state: "accepted" });
   await ask("hold", { state: "hold" });
+  await ask("rule", { state: "cascade-no-benefit" });
   await ask("interlock", { kind: "Interlock" });
   await ask("unit and kind", { unit: "10", kind: "Controller" });
   found.hash = location.hash;
@@ -213,10 +220,66 @@ def test_search_and_filters_of_the_index(site: Path, browser: Browser) -> None:
     assert found["open"] == ["FIC-1002"]
     assert found["accepted"] in (["LIC-1001"], ["LIC-1001", "FIC-1002"])  # and whatever else the deviation touches
     assert found["hold"] == ["FIC-1002"]
+    assert found["rule"][0] == "LIC-1001"
     assert found["interlock"] == ["IS-1001"]
     assert found["unit and kind"] == ["LIC-1001", "FIC-1002"]
     assert found["hash"] == "#unit=10&kind=Controller"
     assert len(found["again"]) == found["all"]
+
+
+def test_filters_of_the_findings(site: Path, browser: Browser) -> None:
+    found = browser.show(
+        site / "findings.html",
+        driver=_LISTED
+        + """
+(async () => {
+  const cells = () => [...document.querySelectorAll("#rows tbody tr:not([hidden])")]
+    .map((row) => [row.cells[0].textContent, row.cells[1].textContent, row.cells[2].textContent]);
+  const found = { all: cells(), units: [...form.elements.unit.options].map((option) => option.value) };
+  const ask = async (name, fields) => {
+    form.reset();
+    await later();
+    for (const [field, value] of Object.entries(fields)) set(field, value);
+    await later();
+    found[name] = cells();
+  };
+  await ask("kind", { kind: "deviation" });
+  await ask("rule", { rule: "cascade-too-slow" });
+  await ask("unit", { unit: "10" });
+  await ask("both", { kind: "hold", rule: "cascade-too-slow" });
+  await ask("word", { find: "cabinet" });
+  report(found);
+})();
+""",
+    ).found
+    assert {kind for _, kind, _ in found["all"]} >= {"deviation", "hold"}
+    assert found["units"] == ["", "10"]
+    assert found["kind"] == [one for one in found["all"] if one[1] == "deviation"]
+    assert found["rule"] == [one for one in found["all"] if one[2] == "cascade-too-slow"] != []
+    assert found["unit"] == found["all"]
+    assert found["both"] == []
+    assert [one[1] for one in found["word"]] == ["hold"]
+
+
+def test_what_has_the_focus_is_outlined(site: Path, browser: Browser) -> None:
+    """Links, fields and buttons, as a keyboard reaches them; the first is the way to the content."""
+    for name in ("index", "loop-sheets/FIC-1002", "responses/LIC-1001", "cause-and-effect/unit-10"):
+        bare, first, count = browser.show(
+            site / f"{name}.html",
+            driver="""
+const reached = [...document.querySelectorAll("a[href], button, input, select, summary, [tabindex='0']")]
+  .filter((one) => one.checkVisibility() && !one.closest(".more[hidden]"));
+const bare = reached.filter((one) => {
+  one.focus({ focusVisible: true });
+  const style = getComputedStyle(one);
+  return document.activeElement !== one || style.outlineStyle === "none" || parseFloat(style.outlineWidth) < 1.5;
+});
+report([bare.map((one) => one.outerHTML.slice(0, 100)), reached[0].getAttribute("href"), reached.length]);
+""",
+        ).found
+        assert bare == [], name
+        assert first == "#content"
+        assert count > 10
 
 
 def test_an_address_carries_its_filter(site: Path, browser: Browser) -> None:
@@ -337,7 +400,7 @@ report(found);
 
 def test_without_script_the_drawing_stands_there(site: Path) -> None:
     html = (site / "responses" / "LIC-1001.html").read_text(encoding="utf-8")
-    assert re.search(r'<figure data-plot="0"><svg role="img"', html)
+    assert re.search(r'<figure tabindex="0" data-plot="0"><svg role="img"', html)
     assert 'class="plot"' not in html
 
 
@@ -470,11 +533,27 @@ def auditor(tmp_path_factory: pytest.TempPathFactory) -> str:
     return text
 
 
-@pytest.mark.parametrize("name", ["index", "loop-sheets/FIC-1002", "responses/LIC-1001", "cause-and-effect/unit-10"])
-def test_axe_finds_nothing(site: Path, browser: Browser, auditor: str, name: str) -> None:
-    driver = auditor.replace("</script", "<\\/script") + """
-const told = (node) => node.html.slice(0, 200) + " " + (node.any[0] || {}).message;
-axe.run(document, { resultTypes: ["violations"] }).then((result) => report(result.violations.map((one) =>
-  [one.id, one.impact, one.nodes.slice(0, 3).map(told)])));
+_TOLD = """
+const told = (one) => [one.id, one.impact, one.nodes.slice(0, 3)
+  .map((node) => node.html.slice(0, 200) + " " + (node.any[0] || {}).message)];
 """
-    assert browser.show(site / f"{name}.html", driver=driver).found == []
+
+
+@pytest.mark.parametrize("name", KINDS_OF_PAGE)
+def test_axe_finds_nothing_on_a_phone(site: Path, browser: Browser, auditor: str, name: str) -> None:
+    """Every rule that is on by default, and the size of what is pointed at (WCAG 2.2, 2.5.8) besides."""
+    driver = auditor.replace("</script", "<\\/script") + _TOLD + """
+axe.run(document, { resultTypes: ["violations"], rules: { "target-size": { enabled: true } } })
+  .then((result) => report(result.violations.map(told)));
+"""
+    assert browser.show(site / f"{name}.html", driver=driver, size="390,900").found == []
+
+
+@pytest.mark.parametrize("name", ["index", "loop-sheets/FIC-1002", "responses/LIC-1001", "cause-and-effect/unit-10"])
+def test_axe_finds_contrast_enough_in_the_dark(site: Path, browser: Browser, auditor: str, name: str) -> None:
+    driver = auditor.replace("</script", "<\\/script") + _TOLD + """
+axe.run(document, { resultTypes: ["violations"], runOnly: ["color-contrast"] })
+  .then((result) => report([matchMedia("(prefers-color-scheme: dark)").matches, result.violations.map(told)]));
+"""
+    dark = ("--blink-settings=preferredColorScheme=0",)
+    assert browser.show(site / f"{name}.html", driver=driver, flags=dark).found == [True, []]

@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterable, Iterator, Sequence
 from dataclasses import dataclass
 
+from loopdoc.documents.language import ENGLISH, Language
 from loopdoc.documents.narrative.protection_story import acts
 from loopdoc.documents.site.places import PER_LOOP, SCHEMES, Issue, Places, address
 from loopdoc.documents.values import shown
@@ -156,8 +157,8 @@ class Around:
 
     # -- entries
 
-    def loop(self, loop: Loop, here: str) -> tuple[Entry, ...]:
-        """Where to go from a page about a loop."""
+    def loop(self, loop: Loop, here: str, language: Language) -> tuple[Entry, ...]:
+        """Where to go from a page about a loop, which is in this language."""
         plant = self._plant
         scheme = plant.scheme_of(loop.tag)
         page = self._scheme_address(loop)
@@ -169,9 +170,9 @@ class Around:
             ("Commanded by", [self.to(tag) for tag in commanders]),
             ("Commands", [self.to(tag) for tag in commanded]),
             ("Final element", [self.to(e.tag, note=shown(e.service)) for e in moved]),
-            ("Interlocks", [self.to(i.tag, note=self._does(i, loop)) for i in self.interlocks(loop)]),
-            ("Alarms", list(self._alarms(loop))),
-            ("Narrative", list(self._narrative((loop.tag,)))),
+            ("Interlocks", [self.to(i.tag, note=self._does(i, loop, language)) for i in self.interlocks(loop)]),
+            ("Alarms", list(self._alarms(loop, language))),
+            ("Narrative", list(self._narrative((loop.tag,), language))),
             ("Schedules", list(self._schedules(self.tags(loop)))),
             ("Documents", list(self._own_documents(loop, scheme, here))),
         )
@@ -182,7 +183,7 @@ class Around:
         response = self._places.document("response", scheme.lead.tag)
         return _filled(
             ("Interlocks", [self.to(one.tag, note=shown(one.service)) for one in interlocks.values()]),
-            ("Narrative", list(self._narrative([loop.tag for loop in scheme.loops]))),
+            ("Narrative", list(self._narrative([loop.tag for loop in scheme.loops], ENGLISH))),
             ("Responses", list(self.documents(response, "Response plots")) if response else []),
         )
 
@@ -209,26 +210,27 @@ class Around:
         part = register.functions.get(tag) or register.final_elements.get(tag)
         return known(part.kind) or "" if part else "not in the register"
 
-    def _does(self, interlock: Interlock, loop: Loop) -> str:
-        does = acts(interlock, {loop.tag, *(element.tag for element in self.moved(loop))})
+    def _does(self, interlock: Interlock, loop: Loop, language: Language) -> str:
+        does = acts(interlock, {loop.tag, *(element.tag for element in self.moved(loop))}, language)
         trips = any(one.tag == interlock.tag for one in self._initiated.get(loop.tag, ()))
-        return ", ".join(part for part in ("tripped from here" if trips else "", does) if part)
+        return ", ".join(part for part in (language.label("tripped from here") if trips else "", does) if part)
 
-    def _alarms(self, loop: Loop) -> Iterator[Link]:
+    def _alarms(self, loop: Loop, language: Language) -> Iterator[Link]:
         at = next(((one, at) for one, at in self._places.rows(self.tags(loop)) if one.kind == "alarm-schedule"), None)
         for kind, alarm in loop.alarms.items():
             where = address(at[0].path, root=ROOT, at=at[1]) if at and "html" in self._places.formats else ""
             priority = known(alarm.priority)
-            said = f"{priority} priority" if priority else ""
-            yield Link(f"{kind.replace('_', '-')} {shown(alarm.limit)}", where, said)
+            said = f"{language.label('Priority')} {language.term('priority', priority)}" if priority else ""
+            yield Link(f"{language.alarm_name(kind)} {language.shown(alarm.limit)}", where, said)
 
-    def _narrative(self, tags: Iterable[str]) -> Iterator[Link]:
+    def _narrative(self, tags: Iterable[str], language: Language) -> Iterator[Link]:
         seen = set()
         for tag in tags:
             for one, at, heading in self._places.told(tag):
                 if (one.path, at) not in seen and "html" in self._places.formats:
                     seen.add((one.path, at))
-                    yield Link(f"{one.page.name.replace('unit-', 'Unit ', 1)}, {heading}",
+                    unit = f"{language.label('Unit')} "
+                    yield Link(f"{one.page.name.replace('unit-', unit, 1)}, {heading}",
                                address(one.path, root=ROOT, at=at))  # fmt: skip
 
     def _schedules(self, tags: Sequence[str]) -> Iterator[Link]:

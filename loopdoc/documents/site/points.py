@@ -29,6 +29,14 @@ class Point:
     """What to write instead; of a deviation, who approved it and until when."""
     place: Place
 
+    @property
+    def heading(self) -> str:
+        """The kind as a label."""
+        return _HEADINGS[self.kind]
+
+
+_HEADINGS = {"error": "Error", "warning": "Warning", "note": "Note", "deviation": "Deviation", "hold": "Hold"}
+
 
 @dataclass(frozen=True, slots=True)
 class NotMade:

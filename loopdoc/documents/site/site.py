@@ -11,7 +11,7 @@ from typing import Any
 from markupsafe import Markup
 
 from loopdoc.documents.basis import Basis, Page
-from loopdoc.documents.language import ENGLISH
+from loopdoc.documents.language import ENGLISH, LANGUAGES, Language
 from loopdoc.documents.responses.responses import overrides, scheme_chains, split_ranges
 from loopdoc.documents.schedules.effects import MARKS, MODES
 from loopdoc.documents.site.around import ROOT, Around, Entry, Link, is_told_apart
@@ -120,8 +120,9 @@ class Site:
                 data += [split_plot_data(self._basis.plant, one) for one in split_ranges(self._basis, chains)]
                 data += [override_plot_data(self._basis.plant, one) for one in overrides(self._basis, scheme)]
             return self._frame(
-                kind, page, about=loop.tag, unit=unit_of(loop), around=self._around.loop(loop, path_of(page)),
-                beside=self._neighbours(loop, kind), data=data or None,
+                kind, page, about=loop.tag, unit=unit_of(loop),
+                around=self._around.loop(loop, path_of(page), language_of(page)), beside=self._neighbours(loop, kind),
+                data=data or None,
             )  # fmt: skip
         number = self._unit_named(page.name)
         marks = dict(MARKS.values())
@@ -132,20 +133,24 @@ class Site:
             if one.kind != kind
         )
         around = (Entry("Of this unit" if number else "Of the plant", beside),) if beside else ()
-        return self._frame(kind, page, unit=number, around=around, beside=self._units_beside(kind, page.name),
+        return self._frame(kind, page, unit=number, around=around, beside=self._units_beside(kind, page),
                            data={"marks": marks} if kind == "cause-and-effect" else None)  # fmt: skip
 
     def _unit_named(self, name: str) -> str:
         """The unit whose documents have this name; empty for those of the plant."""
         return next((number for number in unit_numbers(self._basis.plant) if file_name(number) == name), "")
 
-    def _units_beside(self, kind: str, name: str) -> tuple[Link, ...]:
+    def _units_beside(self, kind: str, page: Page) -> tuple[Link, ...]:
         """The documents of the same kind of the units before and after."""
-        names = self._units[kind]
-        at = names.index(name)
+        names, language = self._units[kind], language_of(page)
+        at = names.index(page.name)
         beside = (("Previous", names[at - 1 : at]), ("Next", names[at + 1 : at + 2]))
         return tuple(
-            Link(f"unit {unit}" if (unit := self._unit_named(other)) else "plant", address(one.path, root=ROOT), label)
+            Link(
+                f"{language.label('Unit')} {unit}" if (unit := self._unit_named(other)) else language.label("Plant"),
+                address(one.path, root=ROOT),
+                label,
+            )
             for label, others in beside
             for other in others
             if (one := self._places.document(kind, other)) is not None
@@ -158,7 +163,8 @@ class Site:
         parts += [(element.tag, element.origin) for element in around.elements(loop)]
         points, excerpts = self._told(around.tags(loop), parts)
         return self._frame(
-            "loop-sheet", page, about=loop.tag, unit=unit_of(loop), around=around.loop(loop, path_of(page)),
+            "loop-sheet", page, about=loop.tag, unit=unit_of(loop),
+            around=around.loop(loop, path_of(page), language_of(page)),
             beside=self._neighbours(loop, "loop-sheet"), points=points, excerpts=excerpts,
             not_made=self._points.not_made(around.tags(loop)),
         )  # fmt: skip
@@ -193,9 +199,10 @@ class Site:
         root = ROOT if page.folder else ""
         register = self._basis.plant.register
         site = shown(register.site.name if register.site else None)
-        trail = [Link(f"Index of {site}", "" if kind == INDEX else f"{root}index.html")]
+        language = language_of(page)
+        trail = [Link(f"{language.label('Index of')} {site}", "" if kind == INDEX else f"{root}index.html")]
         if unit:
-            trail.append(Link(self._unit_title(unit),
+            trail.append(Link(self._unit_title(unit, language),
                               f"{root}index.html#unit={re.sub('[^A-Za-z0-9]', _escaped, unit)}"))  # fmt: skip
         if kind != INDEX:
             trail.append(Link(" ".join(part for part in (page.document.kind, about) if part)))
@@ -205,10 +212,10 @@ class Site:
             plots=tuple(one is not None for one in data) if kind == "response" and data else (), **rest,
         )  # fmt: skip
 
-    def _unit_title(self, number: str) -> str:
+    def _unit_title(self, number: str, language: Language = ENGLISH) -> str:
         described = self._basis.plant.register.units.get(number)
         title = known(described.name) if described else None
-        return f"Unit {number} {title}" if title else f"Unit {number}"
+        return " ".join(part for part in (language.label("Unit"), number, title) if part)
 
     # -- pages of the site itself
 
@@ -389,6 +396,11 @@ class Site:
         }
         page = Page("", INDEX, document, "index.html", view)
         return page, self._frame(INDEX, page, data={"also": [row.also for row in rows]})
+
+
+def language_of(page: Page) -> Language:
+    """The language of a page's words."""
+    return LANGUAGES[page.document.language]
 
 
 def _languages(issued: Sequence[Issue]) -> str:
