@@ -422,8 +422,8 @@ def test_both_languages_tell_what_moves_and_what_is_left(tmp_path: Path) -> None
     told = declared_upsets(dynamics, found, ENGLISH)
     assert (
         "moves the measurement of AIC-2030 by −1.2\u00a0wt%, through a lag of 3\u00a0min, after a dead time of "
-        "1\u00a0min; FT-2001 moves by 4\u00a0t/h at once, and FY-2031 feeds that forward; AT-2030 moves with it, of "
-        "which nothing is fed forward; with the cascade AIC-2030 then departs by "
+        "1\u00a0min; FT-2001 moves by 4\u00a0t/h at once, and FY-2031 feeds that forward; AT-2030 moves with it, "
+        "which changes nothing in these responses; with the cascade AIC-2030 then departs by "
     ) in told
     assert ", without feedforward by " in told
     assert "with the single loop, which has none, by " in told
@@ -431,6 +431,6 @@ def test_both_languages_tell_what_moves_and_what_is_left(tmp_path: Path) -> None
     german = declared_upsets(dynamics, found, GERMAN)
     assert (
         "nach einer Totzeit von 1\u00a0min; FT-2001 ändert sich dabei um 4\u00a0t/h (ohne Verzögerung), was FY-2031 "
-        "als Störgröße aufschaltet; AT-2030 ändert sich dabei, ohne aufgeschaltet zu werden; "
+        "als Störgröße aufschaltet; AT-2030 ändert sich dabei, was in diesen Verläufen nichts bewirkt; "
     ) in german
     assert "ohne Störgrößenaufschaltung um " in german

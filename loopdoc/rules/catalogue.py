@@ -41,6 +41,7 @@ from loopdoc.rules.dynamics import (
     stroke_too_slow,
 )
 from loopdoc.rules.fail_safe import measurement_fault_unsafe
+from loopdoc.rules.feedforward import disturbance_not_fed_forward
 from loopdoc.rules.functions import (
     characteriser_not_monotonic,
     characteriser_short,
@@ -151,6 +152,7 @@ RULES: tuple[Rule, ...] = (
     pairing_two_primaries,
     pairing_without_controller,
     function_incomplete,
+    disturbance_not_fed_forward,
     final_element_unmoved,
     mode_normal_conflict,
     mode_not_permitted,

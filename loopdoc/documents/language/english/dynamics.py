@@ -110,9 +110,9 @@ class EnglishDynamics(EnglishGrammar):
         return f"{told}; {tag} moves by {size} {how}, and {function} feeds that forward"
 
     def upset_not_fed_forward(self, told: str, tags: Sequence[str]) -> str:
-        """Measurements that move with a declared upset and of which no function on the way makes anything."""
+        """Measurements that move with a declared upset and that no function brings to the loops on the way."""
         verb = "moves" if len(tags) == 1 else "move"
-        return f"{told}; {self.listed(tags)} {verb} with it, of which nothing is fed forward"
+        return f"{told}; {self.listed(tags)} {verb} with it, which changes nothing in these responses"
 
     def upset_outcome(self, told: str, lead: str, peak: str, without: str, alone: str) -> str:
         """What comes of a declared upset; ``without`` is empty where nothing is fed forward, ``alone`` where there is

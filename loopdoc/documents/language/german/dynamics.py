@@ -103,7 +103,7 @@ class GermanDynamics(GermanGrammar, EnglishDynamics):
 
     def upset_not_fed_forward(self, told: str, tags: Sequence[str]) -> str:
         verb = "ändert sich" if len(tags) == 1 else "ändern sich"
-        return f"{told}; {self.listed(tags)} {verb} dabei, ohne aufgeschaltet zu werden"
+        return f"{told}; {self.listed(tags)} {verb} dabei, was in diesen Verläufen nichts bewirkt"
 
     def upset_outcome(self, told: str, lead: str, peak: str, without: str, alone: str) -> str:
         unaided = f", ohne Störgrößenaufschaltung um {without}" if without else ""
