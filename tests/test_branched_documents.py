@@ -128,13 +128,16 @@ def test_sentences_tell_who_stands_by_and_what_a_takeover_comes_to(rivals: Overr
     told = plain(override_told(rivals))
     entry, (place,) = rivals.responses[-1], rivals.standing_by
     ours, theirs = rivals.taken_over(entry.as_written, place), rivals.taken_over(entry.otherwise, place)
+    late, later = (seen.spell.first_s - seen.reaches_s for seen in (ours, theirs))
+    assert 0.0 < late < later
     for words in (
         "PDIC-2016 stands by with its measurement 50 mbar below its setpoint",
         "The setpoint of FIC-2001 raised to its limit, 14.2 t/h, does not bring PDIC-2016 into command",
         "Nothing that the register gives brings PDIC-2016 into command",
-        f"with external reset it takes over {ours.spell.first_s:g} s after the upset",
+        f"with external reset it takes over {late:g} s after its measurement has passed its setpoint",
+        f"({ours.spell.first_s:g} s after the upset)",
         f"past the setpoint by {3.0 * ours.past_pct:.1f} mbar at most",
-        f"without external reset it would take over after {theirs.spell.first_s:g} s",
+        f"without external reset it would take over {later:g} s after its measurement",
     ):
         assert words in told, words
     german = plain(override_told(rivals, GERMAN))

@@ -18,7 +18,7 @@ from loopdoc.documents.values import DASH
 from loopdoc.documents.wording import sentences, upper_first
 from loopdoc.engineering.branched_simulation import BranchedResponse
 from loopdoc.engineering.dynamics import inputs_beside
-from loopdoc.engineering.override import TO_THE_LIMIT, Override, OverrideResponses
+from loopdoc.engineering.override import TO_THE_LIMIT, Override, OverrideResponses, Takeover
 from loopdoc.engineering.pairing import Plant
 from loopdoc.engineering.stages import commanded, measured_range
 from loopdoc.register.model import FinalElement, known
@@ -235,8 +235,15 @@ def _told(found: Override, language: Language) -> Iterator[str]:
 def _takes_over(found: Override, entry: OverrideResponses, place: int, language: Language) -> Iterator[str]:
     own, tag, by = measured_range(found.loops[place]), found.loops[place].tag, language.by_simulation()
 
-    def time(seconds: float) -> str:
-        return language.calculated(language.duration(seconds), tag, language.label("Time to take over"), by)
+    def at(takeover: Takeover) -> str:
+        late_s = takeover.spell.first_s - takeover.reaches_s
+        after, late = (
+            language.calculated(language.duration(seconds), tag, language.label("Time to take over"), by)
+            if seconds >= 0.0
+            else ""
+            for seconds in (takeover.spell.first_s, late_s)
+        )
+        return language.takeover_at(after, late)
 
     def past(percent: float) -> str:
         return language.calculated(language.change(percent, own), tag, language.label("Past the setpoint"), by)
@@ -245,7 +252,7 @@ def _takes_over(found: Override, entry: OverrideResponses, place: int, language:
     yield language.override_takes_over(
         override_upset(found, entry, language),
         tag,
-        time(seen.spell.first_s),
+        at(seen),
         past(seen.past_pct),
         language.how_followed(found.follows(place)),
     )
@@ -257,7 +264,7 @@ def _takes_over(found: Override, entry: OverrideResponses, place: int, language:
     other = found.taken_over(entry.otherwise, place)
     yield language.override_otherwise(
         language.how_followed(found.follows(place, as_written=False)),
-        time(other.spell.first_s) if other.takes_over else "",
+        at(other) if other.takes_over else "",
         past(other.past_pct),
     )
 

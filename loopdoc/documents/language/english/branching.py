@@ -132,22 +132,30 @@ class EnglishBranching(EnglishGrammar):
             f"Nothing that the register gives brings {self.either(tags)} into command; the next upset is sized to do it"
         )
 
-    def override_takes_over(self, upset: str, tag: str, after: str, past: str, how: str) -> str:
-        """An upset that does; ``how`` the controllers follow."""
+    def takeover_at(self, after: str, late: str) -> str:
+        """When a controller takes over: after the upset, and ``late`` after its measurement has passed its setpoint;
+        empty where it is before that.
+        """
+        if not late:
+            return f"{after} after the upset, before its measurement has passed its setpoint"
+        return f"{late} after its measurement has passed its setpoint ({after} after the upset)"
+
+    def override_takes_over(self, upset: str, tag: str, at: str, past: str, how: str) -> str:
+        """An upset that does, with what `takeover_at` says; ``how`` the controllers follow."""
         return (
-            f"{upset} brings {tag} into command: {how} it takes over {after} after the upset, and its measurement goes "
-            f"past the setpoint by {past} at most"
+            f"{upset} brings {tag} into command: {how} it takes over {at}, and its measurement goes past the setpoint "
+            f"by {past} at most"
         )
 
     def override_gives_back(self, normal: str, after: str) -> str:
         """Control that passes back once the upset is gone."""
         return f"Once the upset is gone again, {normal} is back in command after {after}"
 
-    def override_otherwise(self, how: str, after: str, past: str) -> str:
-        """The same with the controllers following the other way; ``after`` is empty where it never takes over."""
-        if not after:
+    def override_otherwise(self, how: str, at: str, past: str) -> str:
+        """The same with the controllers following the other way; ``at`` is empty where it never takes over."""
+        if not at:
             return f"For comparison: {how} it would not take over, and its measurement would go past by {past}"
-        return f"For comparison: {how} it would take over after {after} and let its measurement go past by {past}"
+        return f"For comparison: {how} it would take over {at} and let its measurement go past by {past}"
 
     def asked_of(self, tag: str, unit: str) -> str:
         """The axis of what is asked of a loop or a final element."""

@@ -116,18 +116,22 @@ class GermanBranching(GermanGrammar, EnglishBranching):
             "bemessen"
         )
 
-    def override_takes_over(self, upset: str, tag: str, after: str, past: str, how: str) -> str:
+    def takeover_at(self, after: str, late: str) -> str:
+        if not late:
+            return f"{after} nach der Störung, noch bevor sein Messwert den Sollwert passiert hat,"
+        return f"{late}, nachdem sein Messwert den Sollwert passiert hat ({after} nach der Störung),"
+
+    def override_takes_over(self, upset: str, tag: str, at: str, past: str, how: str) -> str:
         return (
-            f"{upset}: {how} übernimmt {tag} nach {after}, und sein Messwert gerät um höchstens {past} über den "
-            "Sollwert hinaus"
+            f"{upset}: {how} übernimmt {tag} {at} und sein Messwert gerät um höchstens {past} über den Sollwert hinaus"
         )
 
     def override_gives_back(self, normal: str, after: str) -> str:
         return f"Ist die Störung vorbei, führt {normal} nach {after} wieder"
 
-    def override_otherwise(self, how: str, after: str, past: str) -> str:
-        takes = f"übernähme er nach {after}" if after else "übernähme er nicht"
-        return f"Zum Vergleich: {how} {takes}, und sein Messwert geriete um {past} über den Sollwert hinaus"
+    def override_otherwise(self, how: str, at: str, past: str) -> str:
+        takes = f"übernähme er {at}" if at else "übernähme er nicht,"
+        return f"Zum Vergleich: {how} {takes} und sein Messwert geriete um {past} über den Sollwert hinaus"
 
     def asked_of(self, tag: str, unit: str) -> str:
         return f"Vorgabe an {tag}, {unit}"
