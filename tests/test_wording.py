@@ -251,6 +251,13 @@ def test_a_pointer_that_leads_nowhere_is_shown_and_stops_nothing(
     assert run.text == f"{{{pointer}}}"
 
 
+def test_braces_quoted_as_code_are_no_pointer(setter: Setter) -> None:
+    """As the remedies of findings quote what to write."""
+    told = setter.prose("Write `warns_of: {TIC-2014: high}` at the alarm, as at {TIC-2014/measurement/range}.")
+    assert [run.text for run in told if run.kind == "code"] == ["warns_of: {TIC-2014: high}"]
+    assert not [run for run in told if run.kind == "unresolved"]
+
+
 # RFC 6901, section 5, on a register instead of the RFC's own document: escapes, list entries, whole parts.
 def test_pointers_follow_the_standard(tmp_path: Path) -> None:
     (tmp_path / "register.yaml").write_text(
