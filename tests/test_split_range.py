@@ -205,7 +205,7 @@ def register_with() -> Callable[..., SplitRange | NotSimulated | None]:
         for path in sorted(EXAMPLE.rglob("*.yaml"))
     }
 
-    def read(folder: Path, *changes: tuple[str, str]) -> SplitRange | NotSimulated | None:
+    def read(folder: Path, *changes: tuple[str, str], tag: str = "PIC-2021") -> SplitRange | NotSimulated | None:
         for name, text in files.items():
             if name.name == "20-rectification.yaml":
                 for old, new in changes:
@@ -215,7 +215,7 @@ def register_with() -> Callable[..., SplitRange | NotSimulated | None]:
             (folder / name).write_text(text, encoding="utf-8")
         loaded = load(folder)
         assert isinstance(loaded, Loaded)
-        return split_range(Dynamics(Plant(loaded.register)).loop("PIC-2021").chains)
+        return split_range(Dynamics(Plant(loaded.register)).loop(tag).chains)
 
     return read
 
@@ -321,6 +321,37 @@ def test_what_cannot_be_simulated_is_told(
     tmp_path: Path, register_with: Reading, changes: tuple[tuple[str, str], ...], reason: str
 ) -> None:
     assert register_with(tmp_path, *changes) == NotSimulated(reason)
+
+
+PRIMARY = """\
+  PIC-2090:
+    unit: "20"
+    service: Overhead pressure
+    measurement: {transmitter: PT-2090, variable: pressure, range: 0 to 2 barg, signal: 4-20 mA}
+    operating: {normal: 0.5 barg}
+    controller:
+      action: reverse
+      gain: 0.6
+      reset: 400 s
+      interval: 1 s
+      setpoint: {low: 0.1 barg, normal: 0.5 barg, high: 1.5 barg}
+      output: {to: PIC-2021, span: 0.10 to 0.20 barg}
+      when_not_followed: track
+    process: {effect: rises, gain: 1.5 bar per bar, lag: 300 s, source: design estimate}
+  PIC-2021:
+"""
+
+
+def test_below_a_primary_the_split_range_is_that_of_its_secondary(tmp_path: Path, register_with: Reading) -> None:
+    split = register_with(tmp_path, ("  PIC-2021:\n", PRIMARY), tag="PIC-2090")
+    assert isinstance(split, SplitRange), split
+    assert split.lead.tag == "PIC-2090"
+    assert [loop.start_pct for loop in split.structure.loops] == pytest.approx([15.0, 25.0])
+    assert crossing(split)["secondary disturbance"]
+    response = next(one for one in split.responses if one.scenario.name == "secondary disturbance")
+    # As without the primary: in the end its measurement, and so the setpoint of the secondary, is where it was.
+    assert float(response.travel_pct[1][-1]) == pytest.approx(0.05 / 0.008, rel=0.05)
+    assert float(response.measurement_pct[1][-1]) == pytest.approx(25.0, abs=0.05)
 
 
 def test_a_single_loop_is_no_split_range(tmp_path: Path) -> None:
