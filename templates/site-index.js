@@ -134,7 +134,14 @@
     remember();
   }
   form.addEventListener("input", () => { clearTimeout(waiting); waiting = setTimeout(changed, rows.length > 2000 ? 150 : 0); });
-  form.addEventListener("submit", (event) => event.preventDefault());
+  // Enter leads to what was found.
+  form.addEventListener("submit", (event) => {
+    event.preventDefault();
+    clearTimeout(waiting);
+    changed();
+    const first = body.querySelector("tr:not([hidden]) th a");
+    if (first) first.focus();
+  });
   form.addEventListener("reset", () => setTimeout(changed));
   more.querySelector("button").addEventListener("click", () => { limit += PAGE; show(); });
   // On paper stand those rows too that the screen leaves for later, in the same order.

@@ -188,6 +188,8 @@ def test_search_and_filters_of_the_index(site: Path, browser: Browser) -> None:
     found[name + " said"] = said();
   };
   await ask("tag", { find: "fic1002" });
+  form.requestSubmit();
+  found.focus = document.activeElement.textContent;
   await ask("service", { find: "tank LEVEL pump" });
   await ask("finding", { find: "cascade-too-slow" });
   found.match = document.querySelector(".match").textContent;
@@ -210,6 +212,7 @@ def test_search_and_filters_of_the_index(site: Path, browser: Browser) -> None:
     assert shown.console == ()
     assert found["visible"]
     assert found["tag"] == ["FIC-1002", "IS-1001", "LIC-1001"]  # itself, what acts on it, what mentions it
+    assert found["focus"] == "FIC-1002"
     assert found["service"] == ["LI-1005"]
     assert found["finding"] == ["FIC-1002"]
     assert "cascade-too-slow" in found["match"]
