@@ -345,13 +345,13 @@ class _Drawing:
         """The signal above the wires in the field, and the cable that leaves the device."""
         said = self._word("signal", signal) if signal is not None else ""
         if said:
-            self._sheet.note(FIELD_NOTE, y - 2.8, (said,), width=NOTE_WIDTH)
+            self._sheet.note(FIELD_NOTE, y - 3.4, (said,), width=NOTE_WIDTH)
         stops = stops_of(wiring, self._language)
         if stops:
             cable = ", ".join(filter(None, (stops[0].cable, stops[0].pair)))
             taken = text_width(said) + 6 if said else 0.0
             right = self._at.field_right - 4
-            self._sheet.note(right, y - 2.8, (cable,), width=right - FIELD_NOTE - taken, anchor="end")
+            self._sheet.note(right, y - 3.4, (cable,), width=right - FIELD_NOTE - taken, anchor="end")
 
     def _draw_element(self, element: FinalElement, branch: Range | None, y: float) -> None:
         sheet, at = self._sheet, self._at
@@ -387,7 +387,7 @@ class _Drawing:
         self._wire(FIELD + 6.5, y, solenoid.wiring, None, to_the_field=True)
         self._above_wire(y, None, solenoid.wiring)
         sheet.channel(at.channel, y, self._channel(solenoid.channel, "Output"))
-        sheet.note(FIELD_NOTE, y - 2.8, (self._shown(solenoid.tag),), width=NOTE_WIDTH / 2, bold_first=True)
+        sheet.note(FIELD_NOTE, y - 3.4, (self._shown(solenoid.tag),), width=NOTE_WIDTH / 2, bold_first=True)
         sheet.note(FIELD_NOTE, y + 8.5, supply_words(solenoid.supply, self._language)[:1], width=NOTE_WIDTH)
         if lines:
             x = at.channel + 46

@@ -349,10 +349,11 @@ def kind_words(function: Function, language: Language) -> str:
 
 
 def measurement_words(measurement: Measurement, language: Language) -> tuple[str, ...]:
-    """Range and element of a measurement, as they stand beside its transmitter."""
+    """Range, element and supply of a measurement, as they stand beside its transmitter."""
     element = measurement.element or measurement.sensor
     told = wrapped(language.shown(element), NOTE_WIDTH, 3) if element is not None else ()
-    return (language.shown(measurement.range), *told, *supply_words(measurement.supply, language))
+    measured = () if measurement.range is None else (language.shown(measurement.range),)
+    return (*measured, *told, *supply_words(measurement.supply, language))
 
 
 def supply_words(supply: str | Hold | None, language: Language) -> tuple[str, ...]:
