@@ -5,9 +5,9 @@ from __future__ import annotations
 from collections.abc import Callable, Iterable, Iterator
 
 from loopdoc.engineering.pairing import Plant
-from loopdoc.register.model import Loop, known
+from loopdoc.register.model import Function, Loop, known
 from loopdoc.rules.finding import Level
-from loopdoc.rules.rule import Draft, draft, only_if, rule
+from loopdoc.rules.rule import Draft, draft, not_checked, only_if, rule
 
 
 @rule(level=Level.WARNING, source="common practice (feedforward control)")
@@ -28,12 +28,16 @@ def disturbance_not_fed_forward(loop: Loop, plant: Plant) -> Iterator[Draft]:
         Whether the function makes the right thing of it: the responses show what it leaves of the disturbance.
     """
     only_if(any(disturbance.moves for disturbance in loop.disturbances.values()))
-    entering = _entering(plant, loop)
+    functions = _functions(plant, loop)
+    entering = tuple(dict.fromkeys(tag for function in functions for tag in function.inputs))
     by_transmitter = {_transmitter(plant, tag) for tag in entering}
     for disturbance in loop.disturbances.values():
         for tag in disturbance.moves:
             if plant.measures(tag) is None or _transmitter(plant, tag) in by_transmitter:
                 continue  # `reference-unknown` tells of a tag that nothing measures
+            for function in functions:
+                if _lacks_an_input(plant, function):  # as `function-incomplete` tells
+                    not_checked(f"{function.tag} lacks an input, which may be {tag}")
             yield draft(
                 loop.tag,
                 f"the disturbance `{disturbance.name}` moves {tag}, which no function brings to {loop.tag} or to a "
@@ -45,12 +49,17 @@ def disturbance_not_fed_forward(loop: Loop, plant: Plant) -> Iterator[Draft]:
             )
 
 
-def _entering(plant: Plant, loop: Loop) -> tuple[str, ...]:
-    """The measurements that functions bring to a loop, to those below it and to those above, in order."""
+def _functions(plant: Plant, loop: Loop) -> tuple[Function, ...]:
+    """The functions that bring something to a loop, to those below it and to those above, in order."""
     below = _reached(loop.tag, plant.targets)
     above = {tag: None for one in below for tag in _reached(one, lambda tag: plant.commanders.get(tag, ()))}
-    functions = (plant.register.functions.get(tag) for tag in above)
-    return tuple(dict.fromkeys(tag for function in functions if function is not None for tag in function.inputs))
+    return tuple(plant.register.functions[tag] for tag in above if tag in plant.register.functions)
+
+
+def _lacks_an_input(plant: Plant, function: Function) -> bool:
+    """Whether a sum has nothing to add, or a ratio nothing to multiply."""
+    entering = len(plant.commanders.get(function.tag, ())) + len(function.inputs)
+    return entering < 2 if known(function.kind) == "sum" else known(function.kind) == "ratio" and not function.inputs
 
 
 def _reached(start: str, following: Callable[[str], Iterable[str]]) -> tuple[str, ...]:
