@@ -33,7 +33,7 @@ pytestmark = pytest.mark.skipif(CHROMIUM is None, reason="no chromium is install
 FLAGS = (
     "--headless=new", "--no-sandbox", "--disable-gpu", "--disable-background-networking", "--disable-component-update",
     "--disable-sync", "--no-first-run", "--disable-extensions", "--host-resolver-rules=MAP * ~NOTFOUND",
-    "--enable-logging=stderr", "--v=0", "--virtual-time-budget=10000",
+    "--enable-logging=stderr", "--v=0", "--virtual-time-budget=20000",
 )  # fmt: skip
 AXE = "axe-core@4.10.3"
 REPORT = """
