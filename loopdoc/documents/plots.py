@@ -125,6 +125,10 @@ def to_svg(drawing: Drawing) -> str:
     text = re.sub(r' transform="rotate\(-0 [^"]*"', "", text)
     # Matplotlib numbers its groups anew in each figure; a page may hold several.
     text = re.sub(r'(<g) id="[^"]*"', r"\1", text)
+    # Groups that set nothing cost as much in a page as what they hold.
+    count = 1
+    while count:
+        text, count = re.subn(r"<g>\s*((?:[^<]|<(?!/?g\b))*?)\s*</g>", r"\1", text)
     if drawing.decimal_comma:
         text = re.sub(r">([-−]?\d+)\.(\d+)</text>", r">\1,\2</text>", text)
     return re.sub(r"(<svg[^>]*>)", rf"\1<title>{_escaped(drawing.title)}</title>", text, count=1).replace(
@@ -257,6 +261,8 @@ def _draw(figure: Figure | SubFigure, drawing: Drawing, height_in: float) -> Non
 
 
 def _draw_panel(axes: Any, panel: Panel, *, last_row: bool) -> None:
+    # Only curves of an axis of given ends leave the panel; a page is quicker without the cut.
+    is_cut = panel.y_view is not None
     styles = {
         "solid": ("-", 1.1, "#000000"),
         "dashed": ("--", 0.9, "#444444"),
@@ -269,7 +275,7 @@ def _draw_panel(axes: Any, panel: Panel, *, last_row: bool) -> None:
         x, y = _thinned(curve)
         axes.plot(
             x, y, linestyle=line, linewidth=width, color=colour, label=curve.label,
-            marker="." if curve.style == "points" else "none", markersize=2.5,
+            marker="." if curve.style == "points" else "none", markersize=2.5, clip_on=is_cut,
         )  # fmt: skip
     if panel.x_is_log:
         axes.set_xscale("log")
@@ -281,7 +287,7 @@ def _draw_panel(axes: Any, panel: Panel, *, last_row: bool) -> None:
     for limit in panel.limits:
         # A limit far off would flatten the curves; it is named in the caption's table instead.
         if low - 0.6 * (high - low) <= limit.value <= high + 0.6 * (high - low):
-            axes.axhline(limit.value, linewidth=0.6, color="#000000", dashes=(6, 2, 1, 2))
+            axes.axhline(limit.value, linewidth=0.6, color="#000000", dashes=(6, 2, 1, 2), clip_on=is_cut)
             # The name stands on the side away from the nearer end of the axis.
             is_high = limit.value > (low + high) / 2
             axes.annotate(
@@ -290,7 +296,7 @@ def _draw_panel(axes: Any, panel: Panel, *, last_row: bool) -> None:
                 ha="right", va="top" if is_high else "bottom", fontsize=6.5,
             )  # fmt: skip
     for guide in panel.guides:
-        axes.axvline(guide, linewidth=0.5, color="#000000", dashes=(1, 2))
+        axes.axvline(guide, linewidth=0.5, color="#000000", dashes=(1, 2), clip_on=False)
     for mark in panel.marks:
         _draw_mark(axes, mark)
     _draw_scales(axes, panel, last_row=last_row)
@@ -343,7 +349,7 @@ def _draw_scales(axes: Any, panel: Panel, *, last_row: bool) -> None:
     x = _numbers(*axes.get_xlim(), is_log=panel.x_is_log)
     y = _numbers(*axes.get_ylim(), is_log=panel.y_is_log, step=panel.y_step)
     along_x, along_y = axes.get_xaxis_transform(), axes.get_yaxis_transform()
-    grid: dict[str, Any] = {"linewidth": 0.3, "color": "#999999", "zorder": 0.5}
+    grid: dict[str, Any] = {"linewidth": 0.3, "color": "#999999", "zorder": 0.5, "clip_on": False}
     axes.vlines(list(x), 0.0, 1.0, transform=along_x, **grid)
     axes.hlines(list(y), 0.0, 1.0, transform=along_y, **grid)
     _draw_scale(axes, x if last_row else dict.fromkeys(x, ""), panel.x_label if last_row else "", side="bottom")
