@@ -9,10 +9,10 @@ from __future__ import annotations
 
 import re
 from collections.abc import Mapping
-from dataclasses import dataclass, fields, replace
+from dataclasses import dataclass, replace
 from typing import Any, TypeVar
 
-from loopdoc.register.model import Alarm, Hold, Initiator, InterlockAction, Origin, Part, Process, Register
+from loopdoc.register.model import Alarm, Initiator, InterlockAction, Origin, Part, Process, Register
 from loopdoc.register.place import Place
 from loopdoc.register.quantity import Gain, Quantity, Range
 
@@ -69,14 +69,12 @@ def traced(register: Register) -> Register:
 
 
 def _part(part: _P) -> _P:
-    given: dict[str, Any] = {}
-    for field in fields(part):
-        value = getattr(part, field.name)
-        if field.name in _KEYS or (isinstance(part, Alarm) and field.name == "kind"):
-            continue
-        if value is not None and not isinstance(value, Hold | bool):
-            given[field.name] = _value(value, part.origin, _steps(part, field.name))
-    return replace(part, **given)
+    values = {name: getattr(part, name) for name in part.__dataclass_fields__}
+    keys = _KEYS | {"kind"} if isinstance(part, Alarm) else _KEYS
+    for name, value in values.items():
+        if value is not None and name not in keys:
+            values[name] = _value(value, part.origin, _steps(part, name))
+    return type(part)(**values)
 
 
 def _steps(part: Part, name: str) -> tuple[str | int, ...]:
@@ -85,7 +83,7 @@ def _steps(part: Part, name: str) -> tuple[str | int, ...]:
         return ("trips",)
     if isinstance(part, InterlockAction) and name == "position":
         return ()
-    if isinstance(part, Process) and name == "lags" and isinstance(part.lags, tuple) and len(part.lags) == 1:
+    if name == "lags" and isinstance(part, Process) and isinstance(part.lags, tuple) and len(part.lags) == 1:
         # `lag:` and `lags:` are one field.
         single = part.origin.place("lag") != part.origin.key()
         return ("lag",) if single else ("lags",)
@@ -93,23 +91,22 @@ def _steps(part: Part, name: str) -> tuple[str | int, ...]:
 
 
 def _value(value: Any, origin: Origin, steps: tuple[str | int, ...]) -> Any:
-    match value:
-        case Part():
-            return _part(value)
-        case Quantity() | Range() | Gain():
-            return replace(value, origin=_below(origin, steps))
-        case dict():
-            return {key: _value(inner, origin, (*steps, key)) for key, inner in value.items()}
-        case tuple() if steps == ("lag",):
+    kind = type(value)
+    if kind is str:
+        return Word(value, _below(origin, steps))
+    if kind is Quantity:
+        return Quantity(value.value, value.unit, value.written, _below(origin, steps))
+    if kind is float:
+        return Number(value, _below(origin, steps))
+    if kind is dict:
+        return {key: _value(inner, origin, (*steps, key)) for key, inner in value.items()}
+    if kind is tuple:
+        if steps == ("lag",):
             return tuple(_value(inner, origin, steps) for inner in value)
-        case tuple():
-            return tuple(_value(inner, origin, (*steps, at)) for at, inner in enumerate(value))
-        case str():
-            return Word(value, _below(origin, steps))
-        case float():
-            return Number(value, _below(origin, steps))
-        case _:
-            return value
+        return tuple(_value(inner, origin, (*steps, at)) for at, inner in enumerate(value))
+    if kind is Range or kind is Gain:
+        return replace(value, origin=_below(origin, steps))
+    return _part(value) if isinstance(value, Part) else value
 
 
 def _below(origin: Origin, steps: tuple[str | int, ...]) -> Origin:
