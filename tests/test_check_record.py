@@ -370,3 +370,17 @@ def test_names_of_the_register_are_text_and_not_markup(tmp_path: Path) -> None:
     view = written(tmp_path, "loops: {TI-2001: {unit: '20', service: '<script>x</script>'}}\n")
     page = next(iter(check_records(view)))
     assert "<script>" not in render(page.template, document=page.document, stylesheet="", **page.view)
+
+
+def test_a_value_is_not_broken_within_its_unit(tmp_path: Path) -> None:
+    """Rules of line breaking allow a break behind the stroke of `t/h`; what the register says stays text."""
+    page = next(check_records(written(tmp_path, """
+loops:
+  LIC-1: {service: Level, measurement: {transmitter: LT-1, variable: level, range: 0 to 100 %},
+          controller: {action: direct, output: {to: FIC-2, span: 0 to 6.5 t/h, low: 0 t/h, high: 6.5 t/h}}}
+  FIC-2: {service: "<i>Flow</i>", measurement: {transmitter: FT-2, variable: flow, range: 0 to 8 t/h},
+          controller: {action: reverse, output: {to: FV-2}, setpoint: {low: 0 t/h, high: 6.5 t/h}}}
+""")))
+    source = render(page.template, document=page.document, stylesheet="", **page.view)
+    assert '<span class="whole">6.5\u00a0t/h</span>' in source
+    assert "<i>" not in source

@@ -10,6 +10,7 @@ from typing import Any
 
 from jinja2 import Environment, FunctionLoader, StrictUndefined, select_autoescape
 from jinja2.sandbox import SandboxedEnvironment
+from markupsafe import Markup, escape
 
 from loopdoc.documents.bounded import within_limits
 from loopdoc.documents.handover.house import FOLDER, NO_HOUSE, House
@@ -23,6 +24,9 @@ FONTS = {
     ("loopdoc narrow", "normal", "700"): "IBMPlexSansCondensed-Bold.ttf",
 }
 """Fonts that go with the package, by family, style and weight: pages look alike on every machine."""
+
+_FRACTION = re.compile("([^\\s]+\u00a0[^\\s\u00a0/]+/[^\\s\u00a0,;.]+)")
+"""A value that a blank without a break joins to a unit with a stroke."""
 
 
 def template_text(name: str) -> str:
@@ -46,7 +50,16 @@ def _environment(house: House) -> Environment:
     )
     environment.globals.pop("lipsum", None)
     environment.globals["site"] = None  # a page of the site puts its frame in the place of this
+    environment.filters["unbroken"] = _unbroken
     return environment
+
+
+def _unbroken(text: str) -> Markup:
+    """A text as HTML in which no value is broken within its unit, as `6.5 t/h` would be behind the stroke."""
+    pieces = _FRACTION.split(text)
+    kept = (Markup('<span class="whole">{}</span>').format(piece) if index % 2 else escape(piece)
+            for index, piece in enumerate(pieces))  # fmt: skip
+    return Markup("").join(kept)
 
 
 def render(template: str, **view: Any) -> str:
