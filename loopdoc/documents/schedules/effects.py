@@ -139,8 +139,8 @@ class _Charts:
         return page(
             self._basis, self._writer, replace(KIND, paper=paper), unit=self._number,
             extent=extent((len(self._interlocks), "interlock"), (causes, "cause"), (effects, "effect")),
-            reading=(f"{READING} {self._marks()} {DASHES}", *self._from_elsewhere()), caution=CAUTION, template=TEMPLATE,
-            schedules=(self._interlock_table(),), view={"charts": charts},
+            reading=(f"{READING} {self._marks()} {DASHES}", *self._from_elsewhere()), caution=CAUTION,
+            schedules=(self._interlock_table(),), view={"charts": charts}, template=TEMPLATE,
         )  # fmt: skip
 
     def _layer(self, interlock: Interlock) -> str:
