@@ -129,7 +129,8 @@ class _Failures:
         return page(
             self._basis, self._writer, KIND, unit=self._number,
             extent=extent((len(own), "loop"), (len(found), "failure")),
-            reading=(failure_story.ASSUMPTIONS.replace("Each is", "Each failure is", 1), f"{READING} {DASHES}"), caution=CAUTION,
+            reading=(failure_story.ASSUMPTIONS.replace("Each is", "Each failure is", 1), f"{READING} {DASHES}"),
+            caution=CAUTION,
             lead=(_lead(sum(len(several) for _, _, several in told), len(certain), len(possible)),),
             schedules=(first, whole) if bare else (whole,),
         )  # fmt: skip
