@@ -168,6 +168,33 @@ def test_a_rising_measurement_in_german() -> None:
     assert told == "Steigt die Temperatur, senkt TIC-1 den Sollwert von FIC-1, und FIC-1 schließt das Stellglied FV-1."
 
 
+def test_an_alarm_says_of_which_other_hazards_it_warns() -> None:
+    assert ENGLISH.alarm_consequence("The pump runs dry", []) == "The pump runs dry"
+    assert ENGLISH.alarm_consequence("The pump runs dry", [("FIC-1", Noun("flow"), "low")]) == (
+        "The pump runs dry. The alarm also warns of a low flow at FIC-1."
+    )
+    hazards = [("FIC-1", FLOW, "low"), ("TIC-1", TEMPERATURE, "high")]
+    assert GERMAN.alarm_consequence("Die Pumpe läuft trocken", hazards) == (
+        "Die Pumpe läuft trocken. Der Alarm zeigt auch an: ein zu niedriger Durchfluss (FIC-1) und eine zu hohe "
+        "Temperatur (TIC-1)."
+    )
+
+
+def test_a_loop_that_does_not_track_may_wind_up() -> None:
+    assert ENGLISH.does_not_track(["TIC-1"], "FIC-1", "nothing") == (
+        "While FIC-1 is out of cascade or at a limit, TIC-1 goes on calculating and may wind up"
+    )
+    assert GERMAN.does_not_track(["TIC-1", "TIC-2"], "", "nothing") == (
+        "Solange der Folgeregler nicht in Kaskade oder an einer Grenze ist, rechnen TIC-1 und TIC-2 weiter und können "
+        "auflaufen (Wind-up)"
+    )
+
+
+def test_units_of_a_gain_in_german() -> None:
+    assert GERMAN.value(parse_gain("-0.08 wt% per degC")).replace("\u00a0", " ") == "−0,08 Gew.-% je °C"
+    assert GERMAN.value(parse_gain("-2.0 %/min per %")).replace("\u00a0", " ") == "−2,0 %/min je %"
+
+
 def test_why_in_german() -> None:
     reason = Reason(TEMPERATURE, False, element=DRIVE)
     rise = Rise("TIC-1", TEMPERATURE, (Moved("TIC-1", ((DRIVE, 1),)),), False)

@@ -13,6 +13,7 @@ import yaml
 from markupsafe import Markup
 
 from loopdoc.documents.basis import Basis, Page
+from loopdoc.documents.handover.issue import KINDS
 from loopdoc.documents.loop_sheet.loop_sheet import loop_sheets
 from loopdoc.documents.narrative.narrative import Supplement, narratives
 from loopdoc.documents.pdf import to_pdf
@@ -320,6 +321,10 @@ def test_a_scheme_that_another_unit_leads_is_told_there() -> None:
     assert "It belongs to the scheme led by FIC-2001, which TH-20-CN-001 tells as a whole (unit 20)." in told
     assert "FY-1011 passes the lower of the demands of FIC-2001 and PDIC-2016 on to FIC-1011." in told
     assert "FT-1011 reads too low" in section(column, "Vapour feed to rectifier")
+    # What the cascade gains is told once, with the scheme as a whole.
+    feed, column, _ = KINDS["narrative"](basis_of(ROOT / "examples/tarn-hollow"))
+    assert "With the cascade" not in section(feed, "Evaporator steam flow")
+    assert "With the cascade" in section(column, "Vapour feed to rectifier")
 
 
 def test_what_is_calculated_elsewhere_has_its_place(small: Basis) -> None:
