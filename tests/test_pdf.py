@@ -77,7 +77,9 @@ def test_the_register_is_inside_once_as_source(issued: dict[str, bytes]) -> None
                 assert embedded.get_data() == (folder / file["/UF"].removeprefix("register/")).read_bytes()
             else:
                 assert (file["/UF"], embedded["/Subtype"]) == ("loopdoc.json", "/application/json")
+        # Results of loop checks stand beside the register and are no part of it.
         held = {path.relative_to(folder).as_posix() for path in folder.rglob("*.yaml")}
+        held = {name for name in held if not name.startswith("records/")}
         assert {name.removeprefix("register/") for name in names} - {"loopdoc.json"} == held
 
 
