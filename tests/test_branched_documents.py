@@ -236,7 +236,7 @@ def test_the_command_tells_of_an_override_in_json_and_text(rivals: Override) -> 
     assert found["scenarios"]["setpoint to its limit"]["as_written"]["candidates"]["PDIC-2016"]["takes_over"] is False
     text = answered("FIC-2001")
     assert "FIC-2001 and PDIC-2016 > FY-1011 > FIC-1011 > FV-1011, low select" in text
-    assert "nothing that the register gives brings the override into command" in text
+    assert "no limit or upset that the register gives brings the override into command" in text
     assert "override" not in answered("FIC-1011")
 
 

@@ -102,8 +102,8 @@ def test_a_process_that_answers_at_once_is_not_simulated_without_an_interval(tmp
 @pytest.mark.parametrize(
     ("high", "told"),
     [
-        ("160 degC", "setpoint step: 10 % of span, 20 degC\n"),
-        ("105 degC", "setpoint step: 2.5 % of span, 5 degC, as far as the setpoint limit allows\n"),
+        ("160 degC", "setpoint step: 10 % of span, 20 K\n"),
+        ("105 degC", "setpoint step: 2.5 % of span, 5 K, as far as the setpoint limit allows\n"),
         ("100 degC", "setpoint step: none, since the normal setpoint stands at its limit\n"),
     ],
 )

@@ -5,8 +5,8 @@ from __future__ import annotations
 import math
 
 from loopdoc.documents.values import DASH
+from loopdoc.register import units
 from loopdoc.register.quantity import Range, display_number
-from loopdoc.register.units import unit
 
 TIME_UNITS = ((7200.0, 3600.0, "h"), (600.0, 60.0, "min"), (0.0, 1.0, "s"))
 """From this duration on [s], divide by this and write that."""
@@ -34,12 +34,7 @@ def duration(seconds: float) -> str:
 
 def difference_unit(own: Range) -> str:
     """The unit in which a change of a measurement is printed: kelvin for degrees Celsius, bar for bar gauge."""
-    symbol = own.unit.symbol
-    if symbol == "degC":
-        return "K"
-    if own.unit.kind in ("gauge pressure", "absolute pressure"):
-        return unit(symbol[:-1]).display
-    return own.unit.display
+    return units.difference_unit(own.unit).display
 
 
 def change(percent: float, own: Range) -> str:

@@ -76,6 +76,7 @@ class Takeover:
 
     @property
     def takes_over(self) -> bool:
+        """Whether it came into command at all."""
         return math.isfinite(self.spell.first_s)
 
 

@@ -35,7 +35,7 @@ def steps_told(dynamics: ChainDynamics) -> Iterator[str]:
         yield (
             f"{above.loop.tag} is executed once in {_time(above.stage.controller.interval_s)}, and {below.loop.tag} "
             f"answers each new setpoint before the next one comes: {element} goes there and back every time, and that "
-            f"is in its travel and reversals. A setpoint weight of {below.loop.tag} below {weight} makes less of it, "
+            f"is in its travel and reversals. A setpoint weight of {below.loop.tag} below {weight} makes this smaller, "
             f"and {above.loop.tag} slower."
         )
 

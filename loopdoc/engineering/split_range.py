@@ -66,6 +66,7 @@ class SplitRange:
 
     @property
     def elements(self) -> tuple[FinalElement, ...]:
+        """The final elements, in the order of the chains."""
         return tuple(dynamics.chain.final_element for dynamics in self.chains)
 
     @property
@@ -127,15 +128,16 @@ def _laid_out(chains: Sequence[ChainDynamics]) -> SplitRange | Lacking:
     if len(slopes) != 1:
         return Lacking(f"the branches of {function.tag} work against each other")
     parts = sorted(range(len(openings)), key=lambda place: sum(_part(openings[place])))
-    start = _declared_output(routes[0], inner.tag, limits)
-    if isinstance(start, Lacking):
-        return start
-    about = 50.0 if start is None else start
+    declared = _declared_output(routes[0], inner.tag, limits)
+    if isinstance(declared, Lacking):
+        return declared
+    about = 50.0 if declared is None else declared
     handovers = [
         ((_part(openings[lower])[1] + _part(openings[upper])[0]) / 2.0, lower, upper)
         for lower, upper in pairwise(parts)
     ]
     handover, lower, upper = min(handovers, key=lambda one: abs(one[0] - about))
+    start = declared
     if start is None:
         start = _chosen_output(bring, handover, [stage.process for stage in stages], (lower, upper))
     near, far = (lower, upper) if start < handover else (upper, lower)
@@ -154,8 +156,7 @@ def _laid_out(chains: Sequence[ChainDynamics]) -> SplitRange | Lacking:
         )
     branches = tuple(Branch(one.final_element, opening) for one, opening in zip(plain, openings, strict=True))
     structure = BranchedStructure(tuple(loops), branches, start)
-    is_declared = _declared_output(routes[0], inner.tag, limits) is not None
-    return SplitRange(tuple(chains), function, structure, near, far, handover, is_declared, ())
+    return SplitRange(tuple(chains), function, structure, near, far, handover, declared is not None, ())
 
 
 def opening_of(route: Route, commander: str, limits_pct: tuple[float, float]) -> Curve | Lacking:

@@ -47,7 +47,7 @@ from loopdoc.register.model import known
 
 SIMC = "S. Skogestad, J. Process Control 13:291-309, 2003"
 LAMBDA = "D. E. Seborg and others, Process Dynamics and Control (direct synthesis)"
-LAMBDA_INTEGRATING = "I-L. Chien, P. S. Fruehauf, Chem. Eng. Prog. 86(10):33-41, 1990"
+LAMBDA_INTEGRATING = "I-L. Chien, P. S. Fruehauf, Chem. Eng. Prog. 86(10):33-41, 1990 (integrating processes)"
 IMC = "D. E. Rivera, M. Morari, S. Skogestad, Ind. Eng. Chem. Process Des. Dev. 25:252-265, 1986"
 AMIGO = "K. J. Åström, T. Hägglund, Advanced PID Control, ISA 2006"
 ZIEGLER_NICHOLS = "J. G. Ziegler, N. B. Nichols, Trans. ASME 64:759-768, 1942"

@@ -26,7 +26,7 @@ from loopdoc.register.model import Process, Register, known
 from loopdoc.register.place import Fault, Place
 from loopdoc.register.quantity import display_number, parse_gain, parse_quantity
 from loopdoc.register.text import read_text
-from loopdoc.register.units import UNITS, Unit, convert_difference, same_difference
+from loopdoc.register.units import UNITS, Unit, convert_difference, difference_unit, same_difference
 
 FloatArray = NDArray[np.float64]
 
@@ -199,9 +199,8 @@ def _gain(found: Identified, model: Model) -> _Shown:
 
 
 def _difference(unit: Unit) -> Unit:
-    """The unit in which changes of a reading are stated: `bar` of one in `barg`."""
-    plain = UNITS.get(unit.symbol[:-1])
-    return plain if plain is not None and plain.kind == unit.difference_kind != unit.kind else unit
+    """The unit in which gains state changes of a reading: `bar` of one in `barg`, but degC as it is written."""
+    return unit if unit.kind == "temperature" else difference_unit(unit)
 
 
 @dataclass(frozen=True, slots=True)

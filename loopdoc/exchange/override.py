@@ -14,6 +14,8 @@ from loopdoc.engineering.stages import measured_range
 from loopdoc.exchange.response_metrics import shown
 from loopdoc.exchange.tuning_review import number
 from loopdoc.register.model import known
+from loopdoc.register.quantity import Range
+from loopdoc.register.units import difference_unit
 
 FOLLOWS = {
     "track": "external reset",
@@ -94,14 +96,11 @@ def _standing(found: Override) -> Iterator[str]:
     for place in found.standing_by:
         loop = found.structure.loops[found.below + place]
         own = measured_range(found.loops[place])
-        at, setpoint = (
-            own.low + percent * own.span / 100.0
-            for percent in (loop.start_pct, loop.start_pct + loop.start_error_pct)
-        )
+        at = own.low + loop.start_pct * own.span / 100.0
         side = "below" if loop.start_error_pct > 0.0 else "above"
         yield (
             f"{found.loops[place].tag} stands by, at {shown(at)} {own.unit.symbol}, "
-            f"{shown(abs(setpoint - at))} {side} its setpoint"
+            f"{_change(abs(loop.start_error_pct), own)} {side} its setpoint"
         )
 
 
@@ -111,7 +110,7 @@ def _rows(found: Override, entry: OverrideResponses, width: int) -> Iterator[str
         own = measured_range(found.loops[place])
         for response, as_written in ((entry.as_written, True), (entry.otherwise, False)):
             seen = found.taken_over(response, place)
-            past = f"{shown(seen.past_pct * own.span / 100.0)} {own.unit.symbol}" if seen.past_pct > 0.0 else "-"
+            past = _change(seen.past_pct, own) if seen.past_pct > 0.0 else "-"
             tag = found.loops[place].tag if as_written else ""
             yield (
                 f"{name:{width}}{tag:12}{FOLLOWS[found.follows(place, as_written=as_written)]:19}"
@@ -119,6 +118,10 @@ def _rows(found: Override, entry: OverrideResponses, width: int) -> Iterator[str
                 f"{shown(response.metrics.valve_travel_pct):>17}"
             )
             name = ""
+
+
+def _change(percent: float, own: Range) -> str:
+    return f"{shown(percent * own.span / 100.0)} {difference_unit(own.unit)}"
 
 
 def _at(seconds: float) -> str:
@@ -137,9 +140,9 @@ def _told(found: Override) -> Iterator[str]:
             normal = found.loops[found.normal]
             own, loop = measured_range(normal), found.structure.loops[found.below + found.normal]
             limit = own.low + (loop.start_pct + entry.scenario.setpoint_step_pct) * own.span / 100.0
-            yield f"{TO_THE_LIMIT}: that of {normal.tag}, to {shown(limit)} {own.unit.symbol}"
+            yield f"{TO_THE_LIMIT}: the setpoint of {normal.tag} is moved to its limit, {shown(limit)} {own.unit}"
     if not any(found.taken_over(entry.as_written, place).takes_over for entry in given for place in found.standing_by):
-        yield "nothing that the register gives brings the override into command; the upset below is sized to do it"
+        yield "no limit or upset that the register gives brings the override into command; the last is sized to do it"
     for entry in found.responses:
         if entry.scenario.origin == "sized":
             place = entry.scenario.read - found.below
@@ -149,8 +152,8 @@ def _told(found: Override) -> Iterator[str]:
                 size = f"a load of {shown(abs(upset.size_pct))} % at the input of its process"
             else:
                 size = (
-                    f"a disturbance of {shown(abs(upset.size_pct) * own.span / 100.0)} {own.unit.symbol}, its distance "
-                    "from the setpoint and a tenth of span beyond, through the lags of its process"
+                    f"a disturbance of {_change(abs(upset.size_pct), own)}, its distance from the setpoint and a tenth "
+                    "of span beyond, through the lags of its process"
                 )
             yield f"{entry.scenario.name}: {size}; gone again after {shown(entry.scenario.lasts_s, 4)} s"
     for tag, function in inputs_beside(found.candidates):

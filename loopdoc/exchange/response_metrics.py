@@ -29,7 +29,7 @@ def metric_heads(unit: str) -> str:
     """The heads over `metric_cells`."""
     return (
         f"{f'peak, {unit}':>14}{'at, s':>9}{f'IAE, {unit} s':>16}{'settling, s':>14}{'overshoot, %':>14}"
-        f"{'valve travel, %':>17}{'turns':>7}"
+        f"{'valve travel, %':>17}{'reversals':>11}"
     )
 
 
@@ -40,7 +40,7 @@ def metric_cells(metrics: ResponseMetrics, own: Range, peak_time_s: float) -> st
     return (
         f"{shown(metrics.peak_pct * per_pct):>14}{peak_time:>9}"
         f"{shown(metrics.iae_pct_s * per_pct, 4):>16}{shown(metrics.settling_s, 4):>14}"
-        f"{shown(metrics.overshoot_pct):>14}{shown(metrics.valve_travel_pct):>17}{metrics.reversals:>7}"
+        f"{shown(metrics.overshoot_pct):>14}{shown(metrics.valve_travel_pct):>17}{metrics.reversals:>11}"
     )
 
 

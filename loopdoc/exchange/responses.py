@@ -24,6 +24,7 @@ from loopdoc.exchange.split_range import split_lines, split_object
 from loopdoc.exchange.tuning_review import Reviews, margins_object, number, review_lines, reviews_object
 from loopdoc.register.model import Hold, known
 from loopdoc.register.quantity import Range
+from loopdoc.register.units import difference_unit
 from loopdoc.rules.policy import Limits
 
 TUNING_CAUTION = "Try tuning changes only under supervision."
@@ -200,7 +201,7 @@ def _model_sources(chain: Chain) -> dict[str, str]:
 
 def _scenario_lines(comparison: Comparison) -> Iterator[str]:
     own = measured_range(comparison.dynamics.chain.lead)
-    unit = own.unit.symbol
+    unit = difference_unit(own.unit).symbol
     width = max(24, *(len(entry.scenario.name) + 2 for entry in comparison.scenarios))
     yield f"{'upset':{width}}{'':16}{metric_heads(unit)}"
     for entry in comparison.scenarios:
@@ -232,7 +233,7 @@ def _upsets_told(comparison: Comparison) -> Iterator[str]:
                 continue
             limited = abs(made - entry.scenario.setpoint_step_pct) > 1e-9
             yield (
-                f"setpoint step: {shown(made)} % of span, {shown(made * own.span / 100.0)} {own.unit.symbol}"
+                f"setpoint step: {shown(made)} % of span, {shown(made * own.span / 100.0)} {difference_unit(own.unit)}"
                 f"{', as far as the setpoint limit allows' if limited else ''}"
             )
     yield (
@@ -241,9 +242,10 @@ def _upsets_told(comparison: Comparison) -> Iterator[str]:
         "integrating one"
     )
     yield (
-        "settling: to within 2 % of the step that upsets, of the setpoint or, without reset, of the last value; 0 "
-        "where that band is never left, ∞ where it is not seen to stay; overshoot: beyond the new setpoint, else to "
-        "the other side in percent of the peak; turns: of the final element, those that went back by at least 0.1 %"
+        "settling: until the measurement stays within 2 % of the step from the setpoint or, without reset, from its "
+        "last value; 0 where that band is never left, ∞ where it is not seen to stay; overshoot: beyond the new "
+        "setpoint in percent of the step, after another upset to the other side in percent of the peak; reversals: "
+        "turns of the final element that went back by at least 0.1 %"
     )
     yield from _inputs_told(comparison)
     yield from steps_told(comparison.dynamics)

@@ -6,12 +6,13 @@ from collections.abc import Iterator
 from typing import Any
 
 from loopdoc.engineering.branched_simulation import BranchedResponse
-from loopdoc.engineering.comparison import NotSimulated, peak_time_s
+from loopdoc.engineering.comparison import UPSET_PCT, NotSimulated, peak_time_s
 from loopdoc.engineering.dynamics import inputs_beside
 from loopdoc.engineering.split_range import HANDOVER, SplitRange
 from loopdoc.engineering.stages import measured_range
 from loopdoc.exchange.response_metrics import metric_cells, metric_heads, metrics_object, shown
 from loopdoc.exchange.tuning_review import number
+from loopdoc.register.units import difference_unit
 
 
 def split_object(split: SplitRange | NotSimulated) -> dict[str, Any]:
@@ -62,7 +63,7 @@ def split_lines(split: SplitRange | NotSimulated) -> Iterator[str]:
     own = measured_range(split.lead)
     width = max(24, *(len(response.scenario.name) + 2 for response in split.responses))
     yield ""
-    yield f"{'upset':{width}}{metric_heads(own.unit.symbol)}"
+    yield f"{'upset':{width}}{metric_heads(difference_unit(own.unit).symbol)}"
     for response in split.responses:
         peak_s = peak_time_s(response.scenario.setpoint_step_pct, response.metrics)
         yield f"{response.scenario.name:{width}}{metric_cells(response.metrics, own, peak_s)}"
@@ -73,11 +74,11 @@ def split_lines(split: SplitRange | NotSimulated) -> Iterator[str]:
         yield f"none of these carries the output over the handover at {shown(split.handover_pct)} %"
     for tag, function in inputs_beside(split.chains):
         yield f"{tag} into {function}: stays as it is in these responses"
-    yield "valve travel and turns: of all final elements together; each opening by its own linear process model"
+    yield "valve travel and reversals: of all final elements together; each opening by its own linear process model"
     for response in split.responses:
         if response.scenario.name == HANDOVER:
             size = shown(response.scenario.disturbances[0].size_pct)
-            yield f"{HANDOVER}: {size} % of what the upset at that measurement is a share of, sized to cross it"
+            yield f"{HANDOVER}: the same upset at that measurement with {size} % in place of {shown(UPSET_PCT)} %"
 
 
 def _start(split: SplitRange) -> str:

@@ -308,6 +308,14 @@ def same_difference(first: Unit | str, second: Unit | str) -> bool:
     return _resolved(first).difference_kind == _resolved(second).difference_kind
 
 
+def difference_unit(own: Unit) -> Unit:
+    """The unit in which a change of a reading is told: kelvin for degrees Celsius, bar for bar gauge."""
+    if own.symbol == "degC":
+        return UNITS["K"]
+    plain = UNITS.get(own.symbol[:-1])
+    return plain if plain is not None and plain.kind == own.difference_kind != own.kind else own
+
+
 def rate_parts(symbol: str) -> tuple[Unit, Unit] | None:
     """Take a rate of change such as `%/min` apart into what changes and the time; None where it is none."""
     changed, _, per_time = symbol.rpartition("/")

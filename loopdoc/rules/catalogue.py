@@ -213,5 +213,3 @@ RULES: tuple[Rule, ...] = (
     deviation_ambiguous,
     deviation_unused,
 )
-
-BY_ID = {rule.id: rule for rule in RULES}
