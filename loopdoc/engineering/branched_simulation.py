@@ -14,7 +14,7 @@ from loopdoc.engineering.clock import HORIZON_PARTS, Clock, Unsuited, choose_clo
 from loopdoc.engineering.pid import Controller, on_secondary_range
 from loopdoc.engineering.process import FloatArray, Process
 from loopdoc.engineering.response_metrics import SETTLING_BAND, Reading, ResponseMetrics, read_metrics
-from loopdoc.engineering.simulation import LAGS_TO_ARRIVE, POINTS_MOST
+from loopdoc.engineering.simulation import LAGS_TO_ARRIVE, POINTS_MOST, judge_at_the_end
 from loopdoc.engineering.structure import ControlStructure
 
 if TYPE_CHECKING:
@@ -145,14 +145,7 @@ def _read(columns: Sequence[BranchedColumn], plant: BranchedPlant, cases: Record
     readings, extremes, spells, _ = _run(plant, cases)
     of_case = [(column, scenario) for column in columns for scenario in column.scenarios]
     has_reset = np.array([column.has_reset(scenario) for column, scenario in of_case])
-    # What it settles to, or what that is measured by, is known only at the end: these are run again with it.
-    late = np.nonzero(~has_reset | (cases["band"] == 0.0))[0]
-    if late.size:
-        known, read = cases[late], readings[late]
-        known["settled"] = np.where(has_reset[late], known["setpoint"], read["last"])
-        known["band"] = np.where(known["band"] > 0.0, known["band"], SETTLING_BAND * np.abs(read["peak"]))
-        known["steps"], known["window"] = read["steps"], 0
-        cases[late], readings[late] = known, _run(plant, known)[0]
+    judge_at_the_end(cases, readings, has_reset, lambda known: _run(plant, known)[0])
     found = []
     for (column, scenario), case, reading, reached, commanded in zip(
         of_case, cases, readings.tolist(), extremes, spells, strict=True

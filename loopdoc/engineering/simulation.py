@@ -6,11 +6,12 @@ What runs is `loopdoc.engineering.scanning`, compiled and loaded at the first qu
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
 import numpy as np
+from numpy.typing import NDArray
 
 from loopdoc.engineering.clock import HORIZON_PARTS, Clock, Unsuited, choose_clocks, lasting
 from loopdoc.engineering.frequency import Margins
@@ -59,19 +60,28 @@ def _run(plant: Plant, cases: Records, *, points: int = 0, stride: int = 1) -> t
     return readings, traces
 
 
-def _read(columns: Sequence[Column], plant: Plant, cases: Records) -> list[ResponseMetrics]:
-    """Run the cases of columns and return their metrics, column by column."""
-    readings, _ = _run(plant, cases)
-    of_case = [column for column in columns for _ in column.scenarios]
-    has_reset = np.array([column.has_reset for column in of_case])
-    # What it settles to, or what that is measured by, is known only at the end: these are run again with it.
+def judge_at_the_end(
+    cases: Records, readings: Records, has_reset: NDArray[np.bool_], run_again: Callable[[Records], Records]
+) -> None:
+    """Run those cases again that are measured by what is known only at the end, and put their readings in place.
+
+    Without integral action a response settles to its last value; where nothing steps, the band is that of its peak.
+    """
     late = np.nonzero(~has_reset | (cases["band"] == 0.0))[0]
     if late.size:
         known, read = cases[late], readings[late]
         known["settled"] = np.where(has_reset[late], known["setpoint"], read["last"])
         known["band"] = np.where(known["band"] > 0.0, known["band"], SETTLING_BAND * np.abs(read["peak"]))
         known["steps"], known["window"] = read["steps"], 0
-        cases[late], readings[late] = known, _run(plant, known)[0]
+        cases[late], readings[late] = known, run_again(known)
+
+
+def _read(columns: Sequence[Column], plant: Plant, cases: Records) -> list[ResponseMetrics]:
+    """Run the cases of columns and return their metrics, column by column."""
+    readings, _ = _run(plant, cases)
+    of_case = [column for column in columns for _ in column.scenarios]
+    has_reset = np.array([column.has_reset for column in of_case])
+    judge_at_the_end(cases, readings, has_reset, lambda known: _run(plant, known)[0])
     return [
         read_metrics(
             Reading(*reading),
