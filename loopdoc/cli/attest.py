@@ -27,6 +27,7 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
 
 
 def run(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
+    """Tell of each file whether it is whole and what the register says; returns the exit code."""
     from loopdoc.documents.handover.attest import Attestation, NotIssued
     from loopdoc.documents.handover.attest_package import is_package, open_package, verify
     from loopdoc.documents.handover.attest_report import packages_text, report_json, report_text

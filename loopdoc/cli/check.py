@@ -46,6 +46,7 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
 
 
 def run(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
+    """Check a register and print the findings; returns the exit code."""
     from loopdoc.engineering.pairing import Plant
     from loopdoc.exchange.findings import unreadable_result, unreadable_text
     from loopdoc.register.load import Unreadable, load

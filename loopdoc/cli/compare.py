@@ -30,6 +30,7 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
 
 
 def run(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
+    """Tell what differs between two revisions; returns the exit code."""
     from loopdoc.documents.basis import basis_of
     from loopdoc.exchange.comparison import comparison_json, comparison_markdown, comparison_text
     from loopdoc.revisions.compare import compared

@@ -17,6 +17,7 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
 
 
 def run(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
+    """Print the page of a rule; returns the exit code."""
     from loopdoc.rules.catalogue import RULES
     from loopdoc.rules.explain import explanation
 

@@ -53,6 +53,7 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
 
 
 def run(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
+    """Fit a process model to a recorded test; returns the exit code."""
     from loopdoc.engineering.stages import Lacking
     from loopdoc.exchange.escaping import for_terminal
     from loopdoc.exchange.identified import identified, identified_json, identified_text, plot_caption, write_into

@@ -62,6 +62,7 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
 
 
 def run(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
+    """Write the documents of a register; returns the exit code."""
     from loopdoc.documents.handover.house import HouseError
     from loopdoc.documents.handover.issue import FORMATS, KINDS, issue
     from loopdoc.documents.language import LANGUAGES

@@ -17,6 +17,7 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
 
 
 def run(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
+    """Write a register to start from; returns the exit code."""
     from loopdoc.register.starter import starter_files
 
     folder: Path = arguments.folder

@@ -50,6 +50,7 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
 
 
 def run(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
+    """Write the workbook of the loop checks, or judge what comes back; returns the exit code."""
     from loopdoc.documents.check_record.expected import guide, plant_checks
     from loopdoc.documents.handover.issue import write_whole
     from loopdoc.engineering.pairing import Plant

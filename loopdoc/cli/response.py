@@ -26,6 +26,7 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
 
 
 def run(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
+    """Print margins, time responses and tuning review of a loop; returns the exit code."""
     from loopdoc.engineering.comparison import compare
     from loopdoc.engineering.dynamics import Dynamics
     from loopdoc.engineering.override import Override, override

@@ -15,6 +15,7 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
 
 
 def run(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
+    """List the rules and the thresholds of the policy; returns the exit code."""
     from loopdoc.rules.explain import overview
 
     stdout.write(overview())

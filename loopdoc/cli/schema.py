@@ -20,6 +20,7 @@ def add_arguments(parser: argparse.ArgumentParser) -> None:
 
 
 def run(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
+    """Print the schema of the register format; returns the exit code."""
     from loopdoc.register import records
     from loopdoc.register.schema import schema_text
 

@@ -160,6 +160,10 @@ def _in_steps(dead_time_s: FloatArray, step_s: FloatArray) -> tuple[IntArray, Fl
 def process_records(
     processes: Sequence[Process], step_s: FloatArray, innermost: NDArray[np.bool_]
 ) -> tuple[Records, FloatArray]:
+    """Return n processes as records, each for its time step [s], and their transition matrices as of `steps_over`.
+
+    ``innermost`` (n,) marks those that a final element drives, whose input is held over a step.
+    """
     whole, part = _in_steps(np.array([process.dead_time_s for process in processes]), step_s)
     steps = steps_over(processes, step_s, part, innermost, np.array([process.gain for process in processes]))
     # A held input acts from the step before, as what is held at this one is not known yet.
@@ -177,6 +181,10 @@ def process_records(
 
 
 def lead_lag_shares(written: Sequence[tuple[LeadLag, ...]], interval_s: FloatArray) -> FloatArray:
+    """Return the lead-lags of n controllers as (n, most of one, 2): lead over lag, and the share gone per interval [s].
+
+    Those that a controller has fewer of are zeros.
+    """
     found = np.zeros((len(written), max((len(ones) for ones in written), default=0), 2))
     for row, ones in enumerate(written):
         for i, one in enumerate(ones):

@@ -32,6 +32,7 @@ class Lanes:
 
     @property
     def channel(self) -> float:
+        """Middle of the channels."""
         return self.control + _CHANNEL
 
     @property
@@ -41,6 +42,7 @@ class Lanes:
 
     @property
     def root(self) -> float:
+        """Middle of the square roots."""
         return self.control + _ROOT
 
     @property
@@ -75,10 +77,12 @@ class Lanes:
 
     @property
     def right(self) -> float:
+        """Right edge of what may be drawn."""
         return WIDTH - 4
 
     @property
     def box_width(self) -> float:
+        """Of a box or cabinet."""
         return 24.0 if self.boxes == len(_SHARES) - 1 else 26.0
 
     def box(self, column: int) -> float:

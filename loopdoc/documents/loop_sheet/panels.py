@@ -38,6 +38,7 @@ class Column:
 
     @property
     def width(self) -> str:
+        """As the style sheet takes it."""
         return f"{self.share:g}%"
 
 
@@ -67,4 +68,5 @@ def joined(parts: Iterable[str], separator: str = ", ") -> str:
 
 
 def columns_with(language: Language, *found: tuple[str, float]) -> tuple[Column, ...]:
+    """Columns by their English headings and shares of the table's width [%]."""
     return tuple(Column(language.label(heading), share) for heading, share in found)

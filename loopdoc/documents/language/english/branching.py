@@ -67,8 +67,8 @@ class EnglishBranching(EnglishGrammar):
             )
         return (
             f"It starts with {stands}: the register does not say where the output stands in normal operation (normal "
-            f"input of {function}), and from there the upset carries it about as far beyond the handover at "
-            f"{handover}{NO_BREAK}% as it comes from before it."
+            f"input of {function}), and from here the upset carries it about as far beyond the handover at "
+            f"{handover}{NO_BREAK}% as it started before it."
         )
 
     def split_crosses(self, upset: str, lead: str, standing: Sequence[str], peak: str, handover: str) -> str:
