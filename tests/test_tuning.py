@@ -298,7 +298,7 @@ def test_rules_refuse_what_they_cannot_tune(rule: object) -> None:
 
 @pytest.mark.parametrize("dead_time_s", [0.99, 10.1, 0.0])
 def test_the_error_integrals_are_not_used_beyond_what_they_were_fitted_to(dead_time_s: float) -> None:
-    with pytest.raises(ValueError, match=r"fitted to dead times .* 0(\.099)? times the lag|1 times the lag"):
+    with pytest.raises(ValueError, match=r"fitted to dead times .* (0|0\.099|1\.01) times the lag"):
         itae(model(1.0, 10.0, dead_time_s), "PI", upset="setpoint")
 
 

@@ -236,7 +236,7 @@ def itae(
     if not 0.1 <= r <= 1.0:
         raise ValueError(
             "this rule was fitted to dead times of a tenth of the lag to the whole of it, and this one is "
-            f"{display_number(r, 2)} times the lag"
+            f"{display_number(r, 3)} times the lag"
         )
     if upset == "load":
         if actions == "PI":
