@@ -322,7 +322,7 @@ def test_figures_of_any_size_stand_apart(tmp_path: Path) -> None:
     row = next(line for line in text.splitlines() if line.startswith("TIC-1001  "))
     # K k/Ti for both: 1e-4 x 1e-3/3600 s.
     assert row.endswith(" 1  2.78 × 10⁻¹¹ rad/s  2.78 × 10⁻¹¹ rad/s")
-    assert "this one is 0.033 times the lag" in text
+    assert "this one is 0.0333 times the lag" in text
     configured = next(line for line in text.splitlines() if line.startswith("as configured"))
     assert configured.endswith(" 1  2.78 × 10⁻¹¹")
 
