@@ -13,16 +13,16 @@ from loopdoc.documents.language import ENGLISH, Language
 from loopdoc.documents.magnitudes import TIME_UNITS, change, duration, number
 from loopdoc.documents.plots import Curve, Drawing, Panel
 from loopdoc.documents.responses.response_figure import in_units, loop_limits
-from loopdoc.documents.responses.upset_story import standard
+from loopdoc.documents.responses.upset_story import upset_size
 from loopdoc.documents.values import DASH
 from loopdoc.documents.wording import sentences, upper_first
 from loopdoc.engineering.branched_simulation import BranchedResponse
 from loopdoc.engineering.dynamics import inputs_beside
 from loopdoc.engineering.override import TO_THE_LIMIT, Override, OverrideResponses, Takeover
-from loopdoc.engineering.pairing import Plant
+from loopdoc.engineering.pairing import ControlledLoop, Plant
 from loopdoc.engineering.stages import commanded, measured_range
 from loopdoc.register.model import FinalElement, known
-from loopdoc.register.quantity import Range
+from loopdoc.register.quantity import Quantity, Range
 from loopdoc.register.units import UNITS, unit
 
 COLUMNS = 3
@@ -41,15 +41,21 @@ def override_upset(found: Override, entry: OverrideResponses, language: Language
     scenario = entry.scenario
     if scenario.name == TO_THE_LIMIT:
         normal = found.loops[found.normal]
-        own, loop = measured_range(normal), found.structure.loops[found.below + found.normal]
-        limit = own.low + (loop.start_pct + scenario.setpoint_step_pct) * own.span / 100.0
-        told = standard(language.with_unit(limit, own.unit.display), normal.tag, language)
-        return language.setpoint_as_far(normal.tag, told, up=scenario.setpoint_step_pct > 0.0)
+        up = scenario.setpoint_step_pct > 0.0
+        return language.setpoint_as_far(normal.tag, _setpoint_end(normal, language, up=up), up=up)
     if scenario.origin == "declared":
         return language.upset_declared(scenario.name, _moved(found, entry))
     tag = _moved(found, entry)
     named = language.upset_at_input if _integrates(found, entry) else language.upset_at
-    return named(standard(_size(found, entry, language), tag, language), tag)
+    return named(upset_size(_size(found, entry, language), tag, language.by_sized_upset(), language), tag)
+
+
+def _setpoint_end(loop: ControlledLoop, language: Language, *, up: bool) -> str:
+    """How far a setpoint may go: its limit, else the end of the range."""
+    setpoint, own = known(loop.controller.setpoint), measured_range(loop)
+    limit = known(setpoint.high if up else setpoint.low) if setpoint else None
+    end = Quantity(own.high if up else own.low, own.unit, origin=own.origin)
+    return language.value(end if limit is None else limit)
 
 
 def _moved(found: Override, entry: OverrideResponses) -> str:

@@ -9,7 +9,7 @@ from loopdoc.documents.language import ENGLISH, Language
 from loopdoc.documents.magnitudes import TIME_UNITS, difference_unit, duration, number
 from loopdoc.documents.plots import Curve, Drawing, Panel
 from loopdoc.documents.responses.response_figure import COLUMNS, in_units, loop_limits
-from loopdoc.documents.responses.upset_story import peak, setpoint_step, standard
+from loopdoc.documents.responses.upset_story import peak, setpoint_step, standard, upset_size
 from loopdoc.documents.wording import sentences, upper_first
 from loopdoc.engineering.branched_simulation import BranchedResponse
 from loopdoc.engineering.comparison import UPSET_PCT, peak_time_s
@@ -44,9 +44,10 @@ def split_upset(split: SplitRange, response: BranchedResponse, language: Languag
         size = language.with_unit(upset.size_pct * span / 100.0, unit(symbol).display)
     else:
         size = language.change(upset.size_pct, measured_range(level.loop))
-    size = standard(size, level.loop.tag, language)
     if scenario.name == HANDOVER:
+        size = upset_size(size, level.loop.tag, language.by_sized_upset(), language)
         return language.upset_over_handover(size, level.loop.tag)
+    size = standard(size, level.loop.tag, language)
     named = language.upset_at_input if level.stage.process.integrating else language.upset_at
     return named(size, level.loop.tag)
 

@@ -41,14 +41,21 @@ def setpoint_step(lead: ControlledLoop, asked_pct: float, made_pct: float, langu
     """A step of the setpoint with the size that its limits leave of it."""
     if made_pct < 1e-9:
         return language.setpoint_to_limit(lead.tag, "")
-    size = standard(language.change(made_pct, measured_range(lead)), lead.tag, language)
-    named = language.setpoint_to_limit if made_pct < asked_pct - 1e-9 else language.setpoint_up
-    return named(lead.tag, size)
+    size = language.change(made_pct, measured_range(lead))
+    if made_pct < asked_pct - 1e-9:
+        by = language.by_setpoint_limit()
+        return language.setpoint_to_limit(lead.tag, upset_size(size, lead.tag, by, language))
+    return language.setpoint_up(lead.tag, standard(size, lead.tag, language))
 
 
 def standard(size: str, tag: str, language: Language) -> str:
     """The size of an upset of which the register says nothing, with its source."""
-    return language.calculated(size, tag, language.label("Size of an upset"), language.by_standard_upset())
+    return upset_size(size, tag, language.by_standard_upset(), language)
+
+
+def upset_size(size: str, tag: str, by: str, language: Language) -> str:
+    """The size of an upset with what it comes from."""
+    return language.calculated(size, tag, language.label("Size of an upset"), by)
 
 
 def peak(percent: float, lead: ControlledLoop, language: Language) -> str:

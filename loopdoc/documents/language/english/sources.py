@@ -86,6 +86,14 @@ class EnglishSources(EnglishSheet):
         """From what the size of a standard upset comes."""
         return "calculated, a tenth of the span"
 
+    def by_setpoint_limit(self) -> str:
+        """From what the size of a setpoint step comes that its limit cuts short."""
+        return "calculated, from the normal setpoint to its limit"
+
+    def by_sized_upset(self) -> str:
+        """From what the size of an upset comes that is to bring another controller or final element in."""
+        return "calculated, so that another controller or final element takes over"
+
     def by_check(self, rule: str) -> str:
         """Which rule of the check gives a value."""
         return f"check of the register, rule {rule}"

@@ -81,5 +81,11 @@ class GermanSources(GermanSheet, EnglishSources):
     def by_standard_upset(self) -> str:
         return "berechnet, ein Zehntel der Messspanne"
 
+    def by_setpoint_limit(self) -> str:
+        return "berechnet, vom normalen Sollwert bis an seine Grenze"
+
+    def by_sized_upset(self) -> str:
+        return "berechnet, so dass ein anderer Regler oder ein anderes Stellglied übernimmt"
+
     def by_check(self, rule: str) -> str:
         return f"Prüfung des Registers, Regel {rule}"
