@@ -191,7 +191,8 @@ def legend(wanted: Wanted) -> str:
     """What `remark` means by outside, in a sentence."""
     return (
         f"Outside the policy: a gain margin (GM) below {_shown(wanted.gain_margin)}, a phase margin (PM) below "
-        f"{_shown(wanted.phase_margin_deg)}°, a maximum sensitivity Ms above {_shown(wanted.max_sensitivity)}."
+        f"{_shown(wanted.phase_margin_deg)}°, a maximum sensitivity Ms above\N{NO-BREAK SPACE}"
+        f"{_shown(wanted.max_sensitivity)}."
     )
 
 

@@ -25,6 +25,8 @@ from loopdoc.register.units import UnitError
 
 COLUMNS = 4
 """Upsets side by side in a figure."""
+# A loop executed about as slowly as its process moves settles within a few steps: fewer make no curve.
+STEPS_DRAWN = 12
 
 
 def drawings(
@@ -96,7 +98,8 @@ def panels(
 def drawn_until_s(responses: Sequence[Response]) -> float:
     """How long responses are drawn, all alike [s]: a quarter longer than any of them moves, or as long as they last.
 
-    They move while they are off their last value by more than a hundredth of what they cover.
+    They move while they are off their last value by more than a hundredth of what they cover, and are drawn over
+    `STEPS_DRAWN` at least.
     """
     until = 0.0
     for response in responses:
@@ -105,7 +108,8 @@ def drawn_until_s(responses: Sequence[Response]) -> float:
             if len(off):
                 until = max(until, float(response.time_s[off[-1]]))
     end = float(responses[0].time_s[-1])
-    return min(1.25 * until, end) if until > 0.0 else end
+    least = float(responses[0].time_s[min(STEPS_DRAWN, len(responses[0].time_s) - 1)])
+    return min(max(1.25 * until, least), end) if until > 0.0 else end
 
 
 def loop_limits(plant: Plant, lead: ControlledLoop, own: Range, language: Language) -> Iterator[Limit]:
