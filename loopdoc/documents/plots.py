@@ -40,6 +40,8 @@ _NUMBER_PT, _X_NAME_PT, _Y_NAME_PT = 5.0, 15.0, 34.0
 """From the edge of a panel to the numbers of an axis, and to its name below, above or beside them [pt]."""
 _CAPTION_LINE_IN, _CAPTION_CHARACTERS = 0.125, 172
 """Height of a line of a caption [in], and what fits on one."""
+_ON_PAPER: dict[str, Any] = {"bbox": {"facecolor": "#ffffff", "edgecolor": "none", "pad": 0.2}, "zorder": 1.8}
+"""A label inside a panel covers the grid and the dotted lines, which would strike it through, but no curve."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -293,10 +295,10 @@ def _draw_panel(axes: Any, panel: Panel, *, last_row: bool) -> None:
             axes.annotate(
                 limit.label, (1.0, limit.value), xycoords=("axes fraction", "data"),
                 xytext=(-2, -1.5 if is_high else 1.5), textcoords="offset points",
-                ha="right", va="top" if is_high else "bottom", fontsize=6.5,
+                ha="right", va="top" if is_high else "bottom", fontsize=6.5, **_ON_PAPER,
             )  # fmt: skip
     for guide in panel.guides:
-        axes.axvline(guide, linewidth=0.5, color="#000000", dashes=(1, 2), clip_on=False)
+        axes.axvline(guide, linewidth=0.5, color="#000000", dashes=(1, 2), clip_on=False, zorder=1.5)
     for mark in panel.marks:
         _draw_mark(axes, mark)
     _draw_scales(axes, panel, last_row=last_row)
@@ -333,7 +335,7 @@ def _draw_mark(axes: Any, mark: Mark) -> None:
         at, offset, anchor = middle, (beside, 0), "center"
     axes.annotate(
         mark.label, (mark.x, at), xytext=offset, textcoords="offset points",
-        ha="right" if mark.is_left else "left", va=anchor, fontsize=6.5,
+        ha="right" if mark.is_left else "left", va=anchor, fontsize=6.5, **_ON_PAPER,
     )  # fmt: skip
 
 
