@@ -253,7 +253,7 @@ def test_failures_say_what_is_seen_done_and_met(column: Page) -> None:
     )
     assert rows["FT-2011 signals a fault"] == (
         "FT-2011 signals a fault | FIC-2011 goes to manual with its output at 0 %, and FV-2011 closes. TIC-2014 "
-        "tracks. | The flow and the temperature fall. | "
+        "tracks. | The flow and the temperature fall. | No declared hazard."
     )
     assert rows["FV-2011 loses its signal or its air, or the control system its power"].startswith(
         "FV-2011 loses its signal or its air, or the control system its power | FV-2011 closes. |"

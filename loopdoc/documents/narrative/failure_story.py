@@ -168,7 +168,8 @@ class FailureStory:
             asked = [move for move in effect.setpoints if move.by == function.tag]
             if effect.failure is Failure.MEASUREMENT_BAD and asked and effect.seen == "bad":
                 told = sentence(self._language.function_undefined(function.tag))
-                yield FailureRow(self._language.transmitter_fails(sensor or "", "fault"), told, "", "")
+                open_ = sentence(self._language.not_told())
+                yield FailureRow(self._language.transmitter_fails(sensor or "", "fault"), told, open_, open_)
             for move in asked if effect.failure in _WRONG else ():
                 if not _sign(move):
                     continue
@@ -205,8 +206,17 @@ class FailureStory:
                 self._losses(effects),
                 sentence(self._language.settles([(one.element, _sign(one), one.position) for one in effect.elements])),
                 self._process(own, effect),
-                self._against(own, effect),
+                self._against_each(effects),
             )
+
+    def _against_each(self, effects: Sequence[FailureEffect]) -> str:
+        """What stands against losses told in one row, and what is left of it without the control system's power."""
+        found = [[one for one in effect.consequences if one.loop.tag in self._in_scheme] for effect in effects]
+        told, guards = self._against(found[0], effects[0]), self._guards(found[0])
+        for effect, consequences in zip(effects, found, strict=True):
+            if effect.failure is Failure.CONTROL_POWER_LOST and (left := self._guards(consequences)) != guards:
+                return sentences(told, self._language.without_control_power("; ".join(left)))
+        return told
 
     def _losses(self, effects: Sequence[FailureEffect]) -> str:
         """`FV-2011 loses its signal or its air, or the control system its power`."""
@@ -271,6 +281,16 @@ class FailureStory:
         return [Way(self._names.bare(one.loop), one.direction == 1) for one in found]
 
     def _against(self, consequences: Sequence[Consequence], effect: FailureEffect) -> str:
+        told = self._guards(consequences)
+        if told:
+            return sentence("; ".join(told))
+        if not any(one.hazardous or (one.hazardous is None and known(one.loop.hazard) in _HURTS)
+                   for one in consequences):  # fmt: skip
+            return sentence(self._language.no_hazard()) if consequences else ""
+        return sentences(self._language.nothing_against(), self._moved_back(effect))
+
+    def _guards(self, consequences: Sequence[Consequence]) -> list[str]:
+        """The alarms and trips that stand against it."""
         language = self._language
         alarms: dict[str, list[tuple[str, str]]] = {}
         for found in (found for one in consequences for found in one.alarms):
@@ -285,11 +305,7 @@ class FailureStory:
                 trip.interlock.tag, language.trip_against(trip.interlock.tag, side or "", known_limit)
             )
         told.extend(tripping.values())
-        if told:
-            return sentence("; ".join(told))
-        if not any(one.hazardous or (one.direction == 0 and known(one.loop.hazard) in _HURTS) for one in consequences):
-            return ""
-        return sentences(language.nothing_against(), self._moved_back(effect))
+        return told
 
     def _moved_back(self, effect: FailureEffect) -> str:
         """Interlocks on something else that can still move a final element back."""

@@ -29,6 +29,18 @@ class EnglishFailure(EnglishNaming):
         """Where no alarm and no trip stands against a hazard."""
         return "Nothing independent in the register"
 
+    def no_hazard(self) -> str:
+        """Where the process goes towards none of the hazards that the register declares."""
+        return "No declared hazard"
+
+    def not_told(self) -> str:
+        """What does not follow from the register."""
+        return "Cannot be told"
+
+    def without_control_power(self, left: str) -> str:
+        """What still stands against a failure once the control system has lost its power; may be empty."""
+        return f"Without the control system's power: {left or 'nothing'}"
+
     def hazards(self, found: Sequence[tuple[Noun, str]]) -> str:
         """Which directions are hazards: names with high, low or both."""
         told = [self.hazard(name, which) for name, which in found]

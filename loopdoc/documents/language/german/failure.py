@@ -44,6 +44,15 @@ class GermanFailure(GermanNaming, EnglishFailure):
     def nothing_against(self) -> str:
         return "Nichts Unabhängiges im Register"
 
+    def no_hazard(self) -> str:
+        return "Keine angegebene Gefahr"
+
+    def not_told(self) -> str:
+        return "Lässt sich nicht angeben"
+
+    def without_control_power(self, left: str) -> str:
+        return f"Ohne Versorgung des Leitsystems: {left or 'nichts'}"
+
     def hazards(self, found: Sequence[tuple[Noun, str]]) -> str:
         told = [self.hazard(name, which) for name, which in found]
         return sentence(f"{'Gefährlich ist' if len(told) == 1 else 'Gefährlich sind'} {self.listed(told)}")
