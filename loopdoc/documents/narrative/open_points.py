@@ -56,7 +56,7 @@ def accepted_in_a_sentence(accepted: Sequence[Finding], language: Language) -> s
     """Which deviations stand; empty where none does."""
     by_tag = grouped((finding.tag, finding.rule) for finding in accepted)
     found = [f"{tag} ({', '.join(rules)})" for tag, rules in by_tag.items()]
-    return language.deviations_stand(found) if found else ""
+    return language.deviations_stand(found, sum(map(len, by_tag.values()))) if found else ""
 
 
 def finding_rows(findings: Iterable[Finding], language: Language) -> Iterator[tuple[str, ...]]:

@@ -109,9 +109,9 @@ class EnglishSheet(EnglishGrammar):
         parts = [f"the {self.listed(names)} of {tags}" for tags, names in names_of.items()]
         return sentence(f"Still on hold: {'; '.join(parts)}") if parts else ""
 
-    def deviations_stand(self, found: Sequence[str]) -> str:
-        """Which deviations stand."""
-        return sentence(f"{'a deviation stands' if len(found) == 1 else 'deviations stand'} at {self.listed(found)}")
+    def deviations_stand(self, found: Sequence[str], count: int) -> str:
+        """Where how many deviations stand."""
+        return sentence(f"{'a deviation stands' if count == 1 else 'deviations stand'} at {self.listed(found)}")
 
     def finding_text(self, text: str) -> str:
         """What a rule says of a finding, as a sentence."""
@@ -269,7 +269,7 @@ class EnglishSheet(EnglishGrammar):
 
     def signal_ends(self, first: str, last: str, kind: str) -> str:
         """At which ends of the signal a final element is shut and open."""
-        ends = {"variable-speed drive": ("lowest speed", "full speed"), "heater bank": ("off", "full power")}
+        ends = {"variable-speed drive": (f"0{NO_BREAK}% speed", f"100{NO_BREAK}%"), "heater bank": ("off", "full power")}
         shut, opened = ends.get(kind, ("shut", "open"))
         return f"{first} {shut}, {last} {opened}"
 

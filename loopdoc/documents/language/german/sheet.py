@@ -115,6 +115,10 @@ _STEPS = (
     (r"output block reversed", "Ausgangsbaustein umgekehrt"),
     (r"(\S+) opens on rising signal", r"\1 öffnet bei steigendem Signal"),
     (r"(\S+) opens on falling signal", r"\1 öffnet bei fallendem Signal"),
+    (r"(\S+) speeds up on rising signal", r"\1 läuft bei steigendem Signal schneller"),
+    (r"(\S+) speeds up on falling signal", r"\1 läuft bei fallendem Signal schneller"),
+    (r"(\S+) takes more power on rising signal", r"Leistung von \1 steigt mit dem Signal"),
+    (r"(\S+) takes more power on falling signal", r"Leistung von \1 steigt bei fallendem Signal"),
     (r"(\S+) subtracts it", r"\1 subtrahiert"),
     (r"the curve of (\S+) falls", r"die Kennlinie von \1 fällt"),
     (r"(\S+) is driven by the falling output", r"\1 folgt dem fallenden Ausgang"),
@@ -220,8 +224,8 @@ class GermanSheet(GermanGrammar, EnglishSheet):
         parts = [f"{self.listed(names)} ({tags})" for tags, names in names_of.items()]
         return sentence(f"Noch offen (HOLD): {'; '.join(parts)}") if parts else ""
 
-    def deviations_stand(self, found: Sequence[str]) -> str:
-        what = "Es besteht eine genehmigte Abweichung" if len(found) == 1 else "Es bestehen genehmigte Abweichungen"
+    def deviations_stand(self, found: Sequence[str], count: int) -> str:
+        what = "Es besteht eine genehmigte Abweichung" if count == 1 else "Es bestehen genehmigte Abweichungen"
         return sentence(f"{what} bei {self.listed(found)}")
 
     def finding_text(self, text: str) -> str:
@@ -347,7 +351,7 @@ class GermanSheet(GermanGrammar, EnglishSheet):
         return {"closed": "FC", "open": "FO", "last": "FL", "stopped": "aus"}.get(fails, fails)
 
     def signal_ends(self, first: str, last: str, kind: str) -> str:
-        ends = {"variable-speed drive": ("n min.", "n max."), "heater bank": ("aus", "volle Leistung")}
+        ends = {"variable-speed drive": ("Drehzahl 0\u00a0%", "100\u00a0%"), "heater bank": ("aus", "volle Leistung")}
         shut, opened = ends.get(kind, ("zu", "auf"))
         return f"{first} {shut}, {last} {opened}"
 
