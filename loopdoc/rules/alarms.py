@@ -198,7 +198,7 @@ def _too_short(entry: AlarmToTrip, time: TimeBetween, given: Quantity) -> Draft:
     order = "before" if time.available_s > 0 else "after"
     return draft(
         entry.loop.tag,
-        f"under the upset `{time.upset}` {name} comes {duration_beside(abs(time.available_s), given)} {order} "
+        f"under the upset `{time.upset}`, {name} comes {duration_beside(abs(time.available_s), given)} {order} "
         f"the trip of {entry.interlock.tag} {limit}; the operator is given {given}",
         remedy=f"move the alarm away from the trip, or write what time there is; where {entry.interlock.tag} alone is "
         "to meet this upset, say so in a deviation",
