@@ -325,7 +325,7 @@ def test_no_clumsy_joint_shows(german: dict[str, tuple[Page, ...]]) -> None:
             text = words_of(page)
             for clumsy in (r"\b(von|vom|zu|in|an) (dem|der) (von|an)\b", r"\bvon dem\b", r"\bzu dem\b", r" ,", r"\.\.",
                            r"\b(der|die|das|und|oder|von) (der|die|das|und|oder|von) [a-z]", r"„“", r"[^.]  [^ ]"):
-                found = re.search(clumsy, re.sub(r"\n[ \n]*", "\n", text).replace("\n", " ¦ "))
+                found = re.search(clumsy, re.sub(r"[ \n]*\n[ \n]*", "\n", text).replace("\n", " ¦ "))
                 assert not found, (page.name, found.group(), text[max(0, found.start() - 60) : found.end() + 40])
 
 
