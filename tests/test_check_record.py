@@ -311,7 +311,7 @@ final_elements: {TV-2001: {unit: "20", kind: control valve, opens_on: {hold: val
     assert functions["Transmitter fault"] == "HOLD"
     assert functions["TV-2001 without signal"] == "HOLD"
     assert functions["Mode transfers"] == "Not stated in the register"
-    assert view.notes == ("The readings are on HOLD with what they follow from.",)
+    assert view.notes == ("No readings are given: what they follow from is on HOLD.",)
     assert any("vendor" in line for line in view.holds)
 
 

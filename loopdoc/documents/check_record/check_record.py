@@ -300,7 +300,7 @@ def _missing(loop: Loop, checks: LoopChecks) -> Iterator[str]:
     if any(reading.group == "measurement" for reading in checks.readings):
         return
     if measurement is None or isinstance(measurement.range, Hold) or isinstance(measurement.tolerance, Hold):
-        yield "The readings are on HOLD with what they follow from."
+        yield "No readings are given: what they follow from is on HOLD."
     elif measurement.range is None:
         yield "The readings do not follow from the register: the range is not stated."
     else:

@@ -233,7 +233,8 @@ def _modes(plant: Plant, controlled: ControlledLoop) -> Iterator[FunctionCheck]:
         expect = "The output does not jump at any change"
         if "cascade" in found:
             commanders = listed(primary.tag for primary in plant.primaries_of(controlled.tag))
-            expect += f"; in cascade the setpoint follows {commanders or 'its function'}"
+            computed = listed(tag for tag, one in plant.register.functions.items() if known(one.to) == controlled.tag)
+            expect += f"; in cascade the setpoint follows {commanders or computed or 'its function'}"
         yield FunctionCheck("mode transfers", f"Change from {' to '.join(found)}, and back.", sentence(expect), against)
     barred = [mode for mode in _MODES if mode not in permitted and (mode != "cascade" or _commanded(plant, controlled))]
     if barred:
@@ -262,7 +263,7 @@ def _demand(plant: Plant, controlled: ControlledLoop) -> Iterator[FunctionCheck]
     functions = {function.tag: function for route in controlled.routes for function in route.via}
     functions |= {tag: one for tag, one in plant.register.functions.items() if known(one.to) == controlled.tag}
     for function in functions.values():
-        yield from _function(function)
+        yield from _function(plant, function)
     if not secondaries and not any(known(one.kind) in ("low select", "high select") for one in functions.values()):
         return
     policy = controller.when_not_followed
@@ -289,14 +290,15 @@ def _thirds(span: Range) -> str:
     return listed((display_number(low.value), display_number(middle.value), value(high)))
 
 
-def _function(function: Function) -> Iterator[FunctionCheck]:
+def _function(plant: Plant, function: Function) -> Iterator[FunctionCheck]:
     kind = known(function.kind)
     if kind is None or kind not in _VERBS:
         return
+    entering = len(function.inputs) + len(plant.commanders.get(function.tag, ()))
     setting = f" Normal ratio {shown(function.normal)}." if kind == "ratio" and function.normal is not None else ""
     yield FunctionCheck(
         f"{function.tag} {kind}",
-        f"Move each input of {function.tag} in turn.",
+        f"Move the input of {function.tag}." if entering == 1 else f"Move each input of {function.tag} in turn.",
         f"{function.tag} {_VERBS[kind]}.{setting}",
         "; ".join(filter(None, (kind, shown(function.normal) if kind == "ratio" else ""))),
     )
