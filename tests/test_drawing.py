@@ -467,7 +467,7 @@ def test_a_column_is_left_out_where_no_wiring_is_written() -> None:
         assert "Junction box and marshalling" in texts_of(example("tarn-hollow"), tag)
     eastman = example("tennessee-eastman")
     for tag in eastman.register.loops:
-        assert not {"Marshalling", "Junction box and marshalling"} & set(texts_of(eastman, tag)), tag
+        assert not {"Terminals", "Junction box and marshalling"} & set(texts_of(eastman, tag)), tag
 
 
 def test_text_of_the_register_cannot_become_markup_and_long_text_is_kept_in(tmp_path: Path) -> None:

@@ -108,7 +108,7 @@ def element_sign(element: FinalElement) -> PathSign | Undecided:
     return PathSign(
         (
             SignStep(f"output block {'reversed' if reversed_block else 'direct'}", -1 if reversed_block else 1),
-            SignStep(f"{element.tag} opens on {opens_on}", 1 if opens_on == "rising signal" else -1),
+            SignStep(f"{element.tag} {_acts(element)} on {opens_on}", 1 if opens_on == "rising signal" else -1),
         )
     )
 
@@ -138,7 +138,12 @@ def process_sign(process: Process) -> int | Undecided:
 def _increases(route: Route) -> str:
     if not isinstance(route.end, FinalElement):
         return "rises"
-    kind = known(route.end.kind)
+    return _acts(route.end)
+
+
+def _acts(element: FinalElement) -> str:
+    """What a final element does as it goes from its shut end to its open one."""
+    kind = known(element.kind)
     if kind in ("variable-speed drive", "motor"):
         return "speeds up"
     return "takes more power" if kind == "heater bank" else "opens"

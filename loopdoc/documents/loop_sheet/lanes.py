@@ -93,7 +93,8 @@ class Lanes:
     @property
     def heads(self) -> tuple[tuple[str, float, float], ...]:
         """Name, left and right edge of each lane; no lane of boxes where there are none."""
-        boxes = "Marshalling" if self.boxes == 1 else "Junction box and marshalling"
+        # A single box may be either; the register does not say which.
+        boxes = "Terminals" if self.boxes == 1 else "Junction box and marshalling"
         return (
             ("Field", 0.5, self.field_right),
             *(((boxes, self.field_right, self.control),) if self.boxes else ()),

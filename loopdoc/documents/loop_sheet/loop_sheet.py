@@ -23,6 +23,7 @@ from loopdoc.documents.loop_sheet.loop_tables import (
 )
 from loopdoc.documents.loop_sheet.panels import Panel, Table, cell, term
 from loopdoc.documents.loop_sheet.response_plot import HEIGHT as PLOT_HEIGHT
+from loopdoc.documents.loop_sheet.response_plot import LOW_HEIGHT as LOW_PLOT_HEIGHT
 from loopdoc.documents.loop_sheet.response_plot import calculated_response, response_plot, response_words
 from loopdoc.documents.narrative import time_to_act_story
 from loopdoc.documents.narrative.open_points import HOLD_RULE
@@ -39,6 +40,7 @@ from loopdoc.documents.titleblock import Document
 from loopdoc.documents.values import DASH
 from loopdoc.documents.wording import upper_first
 from loopdoc.engineering.pairing import Plant
+from loopdoc.engineering.step_response import SetpointResponse
 from loopdoc.register.model import Loop, known
 from loopdoc.rules.finding import Finding
 
@@ -53,6 +55,8 @@ LEGIBLE = DENSITIES[:2]
 
 TIME_TO_ACT = "Time to act"
 """Words before the line of times from alarm to trip."""
+MOST_TIME_LINES = 2
+"""Lines that the times may take; the narrative tells longer ones."""
 OVERFULL = "overfull"
 """Class of a sheet that no type size brings onto one page: it runs on, clear of a high title block."""
 
@@ -96,8 +100,10 @@ class SheetView:
     response: str = ""
     """Figure of the setpoint response; empty where there is none or no room."""
     response_words: str = ""
+    response_height: float = PLOT_HEIGHT
+    """Of the figure [pt]."""
     time_to_act: str = ""
-    """From each alarm to the trip behind it, in one line; empty where there is none or no room."""
+    """From each alarm to the trip behind it, in two lines at most; empty where there is none or no room."""
     density: str = ""
     """Classes of the page."""
 
@@ -250,29 +256,47 @@ def _accepted_point(finding: Finding, own: str, language: Language) -> Point:
 
 def _fitted(basis: Basis, loop: Loop, view: SheetView, height: float) -> SheetView:
     """The sheet in the largest type that one page takes, with what else it leaves room for."""
-    fitted = _with_response(basis, loop, view, height)
+    response = calculated_response(basis.dynamics.loop(loop.tag))
+    fitted = _in_type(loop, view, response, height, basis.language)
+    size = next((density.size for density in DENSITIES if density.name == fitted.density), DENSITIES[-1].size)
+    fitted = _with_times(basis, loop, fitted, size, height)
+    if response is None or fitted.response or fitted.density not in {density.name for density in LEGIBLE}:
+        return fitted
+    lower = _with_response(fitted, loop, response, basis.language, LOW_PLOT_HEIGHT)
+    return lower if sheet_height(lower, size) <= height else fitted
+
+
+def _with_times(basis: Basis, loop: Loop, fitted: SheetView, size: float, height: float) -> SheetView:
+    """The sheet with the times from alarm to trip, where they are short and find room."""
     times = time_to_act_story.sheet_line(basis.times, loop, basis.language)
     line = f"{times}; {basis.language.times_line_caution()}" if times else ""
-    size = next((density.size for density in DENSITIES if density.name == fitted.density), DENSITIES[-1].size)
-    if not line or line_count(f"{basis.language.label(TIME_TO_ACT)} {line}", PAGE_WIDTH, size) > 1:
+    if not line or line_count(f"{basis.language.label(TIME_TO_ACT)} {line}", PAGE_WIDTH, size) > MOST_TIME_LINES:
         return fitted
     told = replace(fitted, time_to_act=line)
     return told if sheet_height(told, size) <= height else fitted
 
 
-def _with_response(basis: Basis, loop: Loop, view: SheetView, height: float) -> SheetView:
+def _in_type(
+    loop: Loop, view: SheetView, response: SetpointResponse | None, height: float, language: Language
+) -> SheetView:
     """The sheet in the largest type that one page takes, with the response where it leaves room for it."""
-    response = calculated_response(basis.dynamics.loop(loop.tag))
     if response is not None:
-        words = response_words(response, basis.language)
+        told = _with_response(view, loop, response, language, PLOT_HEIGHT)
         for density in LEGIBLE:
-            if sheet_height(replace(view, response_words=words), density.size) <= height:
-                figure = Markup(response_plot(loop.tag, response, basis.language))
-                return replace(view, response=figure, response_words=words, density=density.name)
+            if sheet_height(told, density.size) <= height:
+                return replace(told, density=density.name)
     for density in DENSITIES:
         if sheet_height(view, density.size) <= height:
             return replace(view, density=density.name)
     return replace(view, density=f"{DENSITIES[-1].name} {OVERFULL}")
+
+
+def _with_response(
+    view: SheetView, loop: Loop, response: SetpointResponse, language: Language, plot_height: float
+) -> SheetView:
+    figure = Markup(response_plot(loop.tag, response, language, plot_height))
+    words = response_words(response, language)
+    return replace(view, response=figure, response_words=words, response_height=plot_height)
 
 
 def sheet_height(view: SheetView, size: float) -> float:
@@ -302,7 +326,7 @@ def _left_height(view: SheetView, size: float) -> float:
         # An indicator has it in the right column, beside the measurement.
         height = height + expected if view.controller else max(height, expected)
     if view.response_words:
-        height += _HEADING + PLOT_HEIGHT + paragraph_height(view.response_words, COLUMN_WIDTH, size, 1.2)
+        height += _HEADING + view.response_height + paragraph_height(view.response_words, COLUMN_WIDTH, size, 1.2)
     return height
 
 

@@ -52,7 +52,7 @@ def element_table(plant: Plant, loop: Loop, elements: Iterable[FinalElement], la
         for element in elements
     )
     columns = columns_with(
-        language, ("Final element", 9), ("Service", 15), ("Kind", 10), ("Opens on", 10), ("Output block", 8),
+        language, ("Final element", 9), ("Service", 14), ("Kind", 10), ("Opens on", 10), ("Output block", 9),
         ("Fails", 7), ("Safe position", 7), ("Signal", 7), ("Channel", 8), ("Characteristic", 12), ("Stroke time", 7),
     )  # fmt: skip
     return Table(language.label("Final elements"), columns, rows) if rows else None
@@ -70,8 +70,8 @@ def alarm_table(plant: Plant, loop: Loop, language: Language) -> Table | None:
     deviation = [alarms.pop("deviation")] if "deviation" in alarms else []
     rows = (*above, *alarms.values(), *rest, *deviation)
     columns = columns_with(
-        language, ("Alarm or trip", 11), ("Limit", 12), ("Dead band", 9), ("Delay", 7), ("Priority", 7),
-        ("Respond in", 9), ("Operator response", 45),
+        language, ("Alarm or trip", 11), ("Limit", 12), ("Dead band", 10), ("Delay", 7), ("Priority", 7),
+        ("Respond in", 9), ("Operator response", 44),
     )  # fmt: skip
     return Table(language.label("Alarms and trips"), columns, rows) if rows else None
 

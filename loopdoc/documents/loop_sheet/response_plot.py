@@ -11,9 +11,11 @@ from loopdoc.documents.language import Language
 from loopdoc.engineering.dynamics import LoopDynamics
 from loopdoc.engineering.step_response import SetpointResponse, setpoint_response
 
-WIDTH, HEIGHT = 251.0, 56.0
-"""Of the figure [pt]."""
-_LEFT, _RIGHT, _TOP, _BOTTOM = 24.0, 246.0, 4.0, 44.0
+WIDTH, HEIGHT, LOW_HEIGHT = 251.0, 56.0, 40.0
+"""Of the figure, and of a lower one where the page is short of room [pt]."""
+_LEFT, _RIGHT, _TOP = 24.0, 246.0, 4.0
+_BELOW = 12.0
+"""Below the axis of time, for its labels [pt]."""
 _POINTS = 140
 _TIME_UNITS = ((7200.0, 3600.0, "h"), (300.0, 60.0, "min"), (0.0, 1.0, "s"))
 """From this duration on [s], divide by this and write that."""
@@ -30,8 +32,9 @@ def calculated_response(dynamics: LoopDynamics) -> SetpointResponse | None:
     return setpoint_response(worst.chain.stages, pace_rad_per_s=max(paces)) if paces else None
 
 
-def response_plot(tag: str, response: SetpointResponse, language: Language) -> str:
+def response_plot(tag: str, response: SetpointResponse, language: Language, height: float = HEIGHT) -> str:
     """The figure as SVG text: setpoint and measurement over time, in percent of the step."""
+    bottom = height - _BELOW
     end_s = max(1.4 * response.settling_s, float(response.time_s[8]))
     _, divisor, unit = next(entry for entry in _TIME_UNITS if end_s >= entry[0])
     step = _tick(end_s / divisor)
@@ -40,7 +43,7 @@ def response_plot(tag: str, response: SetpointResponse, language: Language) -> s
     highest = max(1.0, response.final * (1.0 + response.overshoot)) * 1.08
 
     def at(time_s: float, share: float) -> tuple[float, float]:
-        return _LEFT + (_RIGHT - _LEFT) * time_s / end_s, _BOTTOM - (_BOTTOM - _TOP) * share / highest
+        return _LEFT + (_RIGHT - _LEFT) * time_s / end_s, bottom - (bottom - _TOP) * share / highest
 
     sheet = Sheet(WIDTH)
     sheet.polyline([at(0.0, highest), at(0.0, 0.0), at(end_s, 0.0)], width=0.6)
@@ -55,7 +58,7 @@ def response_plot(tag: str, response: SetpointResponse, language: Language) -> s
     times = np.linspace(0.0, end_s, _POINTS)
     curve = np.interp(times, response.time_s, response.measurement)
     sheet.polyline([at(float(time), float(share)) for time, share in zip(times, curve, strict=True)], width=1.1)
-    return sheet.svg(HEIGHT, language.sheet_response_title(tag, response_words(response, language)))
+    return sheet.svg(height, language.sheet_response_title(tag, response_words(response, language)))
 
 
 def response_words(response: SetpointResponse, language: Language) -> str:

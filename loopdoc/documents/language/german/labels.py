@@ -208,7 +208,7 @@ LABELS = {
     "Revisions": "Revisionen",
     "Summary": "Inhalt",
     "Field": "Feld",
-    "Marshalling": "Rangierung",
+    "Terminals": "Klemmen",
     "Junction box and marshalling": "Klemmenkasten und Rangierung",
     "Control system": "Leitsystem",
     "Operator's station": "Bedienstation",
