@@ -486,6 +486,30 @@ def test_a_setpoint_that_is_only_approached_has_no_time_to_peak() -> None:
     assert upset.peak_time_s(upset.tuned) > 0.0
 
 
+def test_a_lasting_offset_that_is_only_approached_has_no_time_to_peak() -> None:
+    """Proportional action on a lag leaves 1/(1 + K) of an upset behind, which the measurement nears as a lag does."""
+    found = simulate(
+        [cascade_structure([LoopStage(Controller(1.0), Process(1.0, (50.0,)))], final_element=FinalElement())],
+        standard_scenarios(1),
+    )[0]
+    _, upset = (ScenarioResponses(response.scenario, response, None) for response in found)
+    assert upset.tuned.metrics.peak_pct == pytest.approx(5.0, rel=0.01)  # half of 10 %
+    assert math.isnan(upset.peak_time_s(upset.tuned))
+
+
+def test_a_response_of_few_steps_is_drawn_past_where_it_settles() -> None:
+    """A loop executed once in 0.6 lags settles by the second step, of which alone no curve could be drawn."""
+    found = simulate(
+        [
+            cascade_structure(
+                [LoopStage(Controller(1.0, interval_s=3.0), Process(1.0, (5.0,)))], final_element=FinalElement()
+            )
+        ],
+        standard_scenarios(1),
+    )[0]
+    assert drawn_until_s(found) >= 2.0 * max(response.metrics.settling_s for response in found)
+
+
 def test_margins_of_a_level_stand_with_its_peaks_and_bandwidth(cascade: ChainDynamics) -> None:
     outer = cascade.margins[-1]
     row = margin_rows(cascade)[0]

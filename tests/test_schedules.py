@@ -526,3 +526,8 @@ def test_schedules_and_check_records_show_the_deviations_that_touch_them() -> No
     notes = {page.name: page.view["record"].notes for page in check_records(basis)}
     assert [note for note in notes["FIC-1017"] if "FIC-1017 (measurement-fault-unsafe, alarm-time-short)" in note]
     assert not any("FIC-1017" in note for note in notes["FIC-2011"])
+
+
+def test_a_loop_out_of_service_is_not_said_to_leave_alone_what_its_transmitter_trips() -> None:
+    page = next(page for page in failure_schedules(example("tennessee-eastman")) if page.name == "unit-30")
+    assert "Stays where it is, but for the trip of IS-3013H." in html(page)

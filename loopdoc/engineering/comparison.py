@@ -78,8 +78,11 @@ class ScenarioResponses:
 
 
 def peak_time_s(setpoint_step_pct: float, metrics: ResponseMetrics) -> float:
-    """When a response peaks [s]; nan after a setpoint step that is only approached, which is nearest at the end."""
-    only_approached = setpoint_step_pct != 0.0 and metrics.overshoot_pct < NO_OVERSHOOT_PCT
+    """When a response peaks [s]; nan where it only approaches a new setpoint or an offset, nearest at the end."""
+    if setpoint_step_pct:
+        only_approached = metrics.overshoot_pct < NO_OVERSHOOT_PCT
+    else:
+        only_approached = math.isinf(metrics.iae_pct_s) and metrics.settling_s < metrics.time_to_peak_s
     return math.nan if only_approached else metrics.time_to_peak_s
 
 

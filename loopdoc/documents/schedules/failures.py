@@ -50,7 +50,8 @@ COLUMNS = (
 )  # fmt: skip
 READING = (
     "Each failure stands once, at the loop nearest to it; its effects are those on every loop that it reaches. "
-    "Failures with the same effect share a row."
+    "Failures with the same effect share a row. A trip on a false reading is named; what it moves stands in the cause "
+    "and effect chart and is not followed here."
 )
 CAUTION = (
     "The effects follow from signs and modes alone, one failure at a time, without how far or how fast. They support "
@@ -253,10 +254,11 @@ class _Failures:
         if effect.elements:
             return
         asked = [effect.output, *(move.direction for move in effect.setpoints)]
+        tripped = listed(dict.fromkeys(trip.interlock.tag for trip in effect.initiated if trip.interlock.actions))
         if any(isinstance(direction, Undecided) for direction in asked):
             yield f"{UNDECIDED}."
         elif effect.loop.tag in self._plant.controlled or self._analysis.functions_of(effect.loop):
-            yield "Stays where it is."
+            yield sentence(f"Stays where it is{f', but for the trip of {tripped}' if tripped else ''}")
         else:
             yield NOT_APPLICABLE
 
