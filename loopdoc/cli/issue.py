@@ -98,9 +98,9 @@ def run(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
             from loopdoc.documents.handover.package import package
 
             made = package(basis, arguments.package, **settings)
-            return f"{made.documents} documents in {made.folder} and {made.archive} ({made.files} files).\n"
+            return f"{_documents(made.documents)} in {made.folder} and {made.archive} ({made.files} files).\n"
         issued = issue(basis, arguments.out, **settings)
-        return f"{issued.documents} documents in {issued.folder} ({len(issued.files)} files).\n"
+        return f"{_documents(issued.documents)} in {issued.folder} ({len(issued.files)} files).\n"
 
     try:
         told = write(formats)
@@ -113,3 +113,7 @@ def run(arguments: argparse.Namespace, stdout: TextIO, stderr: TextIO) -> int:
     stdout.write(told)
     stdout.write(f"Check of the register: {summary(basis.result)}\n")
     return status
+
+
+def _documents(count: int) -> str:
+    return "1 document" if count == 1 else f"{count} documents"

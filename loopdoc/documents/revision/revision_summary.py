@@ -166,5 +166,6 @@ def _state(stable: bool, reason: str, figures: Sequence[str]) -> str:
 
 def _blocks(changed: int, removed: int) -> str:
     told = [f"{changed} {'block' if changed == 1 else 'blocks'} differ{'s' if changed == 1 else ''}"] if changed else []
-    told += [f"{removed} gone"] if removed else []
+    noun = "" if changed else "block " if removed == 1 else "blocks "
+    told += [f"{removed} {noun}gone"] if removed else []
     return ", ".join(told)
