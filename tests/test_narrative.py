@@ -260,6 +260,15 @@ def test_failures_say_what_is_seen_done_and_met(column: Page) -> None:
     )
 
 
+def test_alarms_go_with_the_power_of_the_control_system(tmp_path: Path) -> None:
+    # The level is watched by one alarm, which the control system gives; without power there is none.
+    watched = SMALL.replace("    hazard: both\n", "    hazard: both\n    alarms: {low: {limit: 20 %}}\n")
+    (tmp_path / "register.yaml").write_text(watched, encoding="utf-8")
+    told = section(next(narratives(basis_of(tmp_path))), "Base level")
+    row = next(row for row in told.split("\n") if row.startswith("LV-2020 loses"))
+    assert row.endswith("| LIC-2020 alarm (low 20 %). Without the control system's power: nothing.")
+
+
 def test_alarms_carry_the_response_and_its_time(column: Page) -> None:
     row = (
         "TIC-2014 high | 94 °C, deadband 0.6 °C, after 10 s | medium | Too much steam | The product is wet | "
