@@ -52,7 +52,7 @@ def element_table(plant: Plant, loop: Loop, elements: Iterable[FinalElement], la
         for element in elements
     )
     columns = columns_with(
-        language, ("Final element", 9), ("Service", 14), ("Kind", 10), ("Opens on", 10), ("Output block", 9),
+        language, ("Final element", 9), ("Service", 15), ("Kind", 10), ("Opens on", 9), ("Output block", 9),
         ("Fails", 7), ("Safe position", 7), ("Signal", 7), ("Channel", 8), ("Characteristic", 12), ("Stroke time", 7),
     )  # fmt: skip
     return Table(language.label("Final elements"), columns, rows) if rows else None
