@@ -36,10 +36,10 @@ KIND = ScheduleKind(
                 "Remarks"),
 )  # fmt: skip
 COLUMNS = (
-    Column("Tag", 5.2), Column("Service", 8.4), Column("Range", 6.0), Column("Alarm or trip", 7.4),
+    Column("Tag", 5.2), Column("Service", 8.4), Column("Range", 6.7), Column("Alarm or trip", 7.4),
     Column("Limit", 5.8), Column("Dead band", 4.4), Column("Delay", 3.4), Column("Priority", 4.4),
     Column("Likely cause", 12.2), Column("Consequence", 12.4), Column("Response", 14.0), Column("Time to respond", 4.4),
-    Column("Time to act by upset", 12.0),
+    Column("Time to act by upset", 11.3),
 )  # fmt: skip
 READING = (
     "Every alarm and every trip, by tag, from the highest limit to the lowest; a trip stands on grey and acts by "
