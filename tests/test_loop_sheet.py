@@ -567,3 +567,24 @@ def test_a_deviation_stands_on_every_sheet_that_it_touches() -> None:
     touched = {tag for tag, rules in deviations.items() if "secondary-range-wide" in rules}
     assert touched == {"TIC-2014", "AIC-2015"}
     assert {tag for tag, rules in deviations.items() if "split-range-gap" in rules} == {"PIC-2021"}
+
+
+def test_the_response_is_drawn_lower_where_it_has_no_room_in_full() -> None:
+    page = page_of("tarn-hollow", "TIC-2014")
+    view: SheetView = page.view["sheet"]
+    size = next(density.size for density in DENSITIES if density.name == view.density)
+    assert view.response
+    assert sheet_height(view, size) <= room(page.document)
+    assert sheet_height(replace(view, response_height=full_height()), size) > room(page.document)
+
+
+def full_height() -> float:
+    """Of the figure on a sheet with room for all of it [pt]."""
+    view: SheetView = page_of("tarn-hollow", "FIC-1002").view["sheet"]
+    return view.response_height
+
+
+def test_a_drive_speeds_up_where_a_valve_opens() -> None:
+    html = str(page_of("tarn-hollow", "FIC-1017").view["sheet"].controller)
+    assert "SC-1017 speeds up on rising signal (+)" in html
+    assert "SC-1017 opens" not in html
