@@ -511,6 +511,14 @@ def test_an_alarm_beyond_what_the_primary_can_ask_does_not_come(tarn: Plant) -> 
     assert [one.alarm.kind for one in told["FIC-1002"].alarms] == ["low"]
 
 
+def test_a_limit_of_what_a_sum_adds_is_no_limit_of_the_setpoint(tarn: Plant) -> None:
+    # LIC-3001 may trim the steam flow by 5 t/h: the setpoint of FIC-3003 is not 5 t/h then.
+    (move,) = effect(tarn, "LIC-3001", Failure.MEASUREMENT_LOW).setpoints
+    assert (move.loop.tag, move.alone) == ("FIC-3003", False)
+    (move,) = effect(tarn, "PIC-3010", Failure.MEASUREMENT_LOW).setpoints
+    assert (move.loop.tag, move.alone) == ("FIC-3011", True)
+
+
 # ---------------------------------------------------------------- functions on the way, by hand
 
 FED_FORWARD = """

@@ -9,14 +9,11 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 from loopdoc.engineering.direction import Undecided
-from loopdoc.engineering.functions import SELECTORS, curve_of, fed_by, steady_band
+from loopdoc.engineering.functions import PASSING, curve_of, fed_by, steady_band
 from loopdoc.engineering.pairing import CascadeLink, Plant
 from loopdoc.register.model import Function, Loop, known
 from loopdoc.register.quantity import Range
 from loopdoc.register.units import Unit, UnitError, convert_difference, same_kind
-
-_PASSING = (*SELECTORS, "lead-lag")
-"""Functions that leave a steady signal within the span it has; a lead-lag has a steady gain of one."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -85,7 +82,7 @@ def _asked(link: CascadeLink, output: Range, unit: Unit, plant: Plant) -> Demand
             low, high = min(corners), max(corners)
             wild = fed_by(plant, function, commander)[0]
             steps.append(f"{function.tag} multiplies by {wild} ({factor[0]} in operation)")
-        elif kind not in _PASSING:
+        elif kind not in PASSING:
             return Undecided(f"the register does not say what {function.tag} makes of a signal")
         commander = function.tag
     return Demand(Range(low, high, unit), tuple(steps))

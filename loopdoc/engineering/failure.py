@@ -290,7 +290,7 @@ class _Effects:
             secondary = self._plant.controlled.get(known(function.to) or "")
             if secondary:
                 unsaid = Undecided(f"what {function.tag} does when {entry} is bad is not given")
-                moves.setpoints.append(SetpointMove(secondary, function.tag, unsaid, None, None, ()))
+                moves.setpoints.append(SetpointMove(secondary, function.tag, unsaid, None, False, None, ()))
 
     def _wrong(self, loop: Loop, reading: int, failure: Failure) -> FailureEffect:
         """A reading at the far end of its range, taken as good."""
@@ -416,7 +416,7 @@ class _Effects:
             if (transmitter := transmitter_of(one)) is not None and transmitter not in failed
         ]
         # A secondary follows no further than its primary may ask.
-        asked = {move.loop.tag: move.limit for move in moves.setpoints if not move.instead}
+        asked = {move.loop.tag: move.limit for move in moves.setpoints if move.alone and not move.instead}
         own = transmitter_of(loop)
         sensors = [tag for tag in (own, *self._analysis.sensors_beside(loop)) if tag and tag not in failed]
         alarms = tuple(

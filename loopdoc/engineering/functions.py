@@ -19,6 +19,8 @@ from loopdoc.register.quantity import Range
 from loopdoc.register.units import Unit, UnitError
 
 SELECTORS = ("high select", "low select")
+PASSING = (*SELECTORS, "lead-lag")
+"""Functions that leave a steady signal within the span it has; a lead-lag has a steady gain of one."""
 
 
 @dataclass(frozen=True, slots=True)

@@ -11,6 +11,7 @@ from collections.abc import Iterable
 from dataclasses import dataclass, field
 
 from loopdoc.engineering.direction import Undecided, curve_sign, element_sign, process_on, process_sign
+from loopdoc.engineering.functions import PASSING
 from loopdoc.engineering.pairing import ControlledLoop, Plant, Route
 from loopdoc.register.model import FinalElement, Function, Loop, known
 from loopdoc.register.quantity import Quantity
@@ -36,6 +37,8 @@ class SetpointMove:
     direction: Direction
     limit: Quantity | None
     """The output limit of the commanding loop at that end, where it has one."""
+    alone: bool
+    """Whether that limit is one of the setpoint: no function on the way adds to the demand or changes its size."""
     selector: Function | None
     """A selector on the way that can pass another demand instead."""
     instead: tuple[str, ...]
@@ -160,7 +163,8 @@ def command(plant: Plant, controlled: ControlledLoop, output: Direction, moves: 
         elif route.end.tag in plant.controlled:
             secondary = plant.controlled[route.end.tag]
             limit = output_limit(controlled, output)
-            moves.setpoints.append(SetpointMove(secondary, controlled.tag, direction, limit, selector, instead))
+            alone = all(known(function.kind) in PASSING for function in route.via)
+            moves.setpoints.append(SetpointMove(secondary, controlled.tag, direction, limit, alone, selector, instead))
             _follow(plant, secondary, direction, moves)
 
 
@@ -198,7 +202,7 @@ def through_function(plant: Plant, function: Function, entry: str, reading: Dire
     if secondary is None:
         return
     heard = reading if normal_mode(secondary) in (None, "cascade") else 0
-    moves.setpoints.append(SetpointMove(secondary, function.tag, heard, None, None, ()))
+    moves.setpoints.append(SetpointMove(secondary, function.tag, heard, None, False, None, ()))
     for corrector in plant.commanders.get(function.tag, ()):
         if corrector in plant.register.loops:
             moves.opposed[corrector] = (corrector,)

@@ -148,7 +148,7 @@ class FailureStory:
         via = [function for route in self._plant.controlled[move.by].routes for function in route.via]
         if any(known(function.kind) == "sum" for function in via):
             return self._language.reach_by(limit.replace("−", ""))
-        return self._language.reach_to(limit, up=way > 0)
+        return self._language.reach_to(limit, up=way > 0) if move.alone else ""
 
     # -- measurements of other loops that enter a function of the scheme
 

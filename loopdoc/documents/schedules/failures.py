@@ -224,7 +224,8 @@ class _Failures:
                 yield sentence(f"Setpoint of {tag}: {_lower(UNDECIDED)}, {move.direction.reason}")
             elif move.direction:
                 raises = move.direction > 0
-                end = f", to {value(move.limit)} at the {'highest' if raises else 'lowest'}" if move.limit else ""
+                limit = value(move.limit) if move.limit and move.alone else ""
+                end = f", to {limit} at the {'highest' if raises else 'lowest'}" if limit else ""
                 yield sentence(f"{move.by} {'raises' if raises else 'lowers'} the setpoint of {tag}{end}")
             elif move.instead and move.selector:
                 yield sentence(f"{move.selector.tag} goes on passing the demand of {listed(move.instead, 'or')}")

@@ -269,7 +269,8 @@ class EnglishSheet(EnglishGrammar):
 
     def signal_ends(self, first: str, last: str, kind: str) -> str:
         """At which ends of the signal a final element is shut and open."""
-        ends = {"variable-speed drive": (f"0{NO_BREAK}% speed", f"100{NO_BREAK}%"), "heater bank": ("off", "full power")}
+        speeds = (f"0{NO_BREAK}% speed", f"100{NO_BREAK}%")
+        ends = {"variable-speed drive": speeds, "heater bank": ("off", "full power")}
         shut, opened = ends.get(kind, ("shut", "open"))
         return f"{first} {shut}, {last} {opened}"
 
