@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import dataclasses
 import io
+import math
 import re
 from functools import cache
 from html import unescape
@@ -153,6 +154,17 @@ def test_limits_under_a_root_widen_towards_zero(flow: float, low: float, high: f
     tolerance = Tolerance(1.0, UNITS["%"], stated=True)
     found = accepted(flow, parse_range("0 to 100 t/h"), tolerance, square_root=True)
     assert found == pytest.approx((low, high), abs=1e-4)  # four printed decimals
+
+
+def test_a_printed_limit_lets_nothing_pass_that_the_tolerance_does_not() -> None:
+    """FIC-2011 at 0 %: half a percent of the span of the differential pressure is 8 t/h times the root of 0.005."""
+    demo = basis(EXAMPLES / "tarn-hollow")
+    (empty,) = (one for one in checks_of(demo, "FIC-2011").readings if one.key == "measurement 0 %")
+    exact = 8.0 * math.sqrt(0.005)
+    assert exact - 0.01 < empty.high <= exact
+    # What is a whole number of the last digit loses none to the noise of a division.
+    (middle,) = (one for one in checks_of(demo, "TIC-2014").readings if one.key == "measurement 50 %")
+    assert middle.high - middle.expected == pytest.approx(middle.expected - middle.low)
 
 
 def test_a_tolerance_in_units_is_a_difference() -> None:

@@ -245,9 +245,14 @@ def _is_root(measurement: Measurement) -> bool:
 
 
 def _printed(expected: float, low: float, high: float) -> tuple[float, float, float]:
-    """The figures as they are printed, so that who reads the paper and who judges go by the same limits."""
+    """The figures as they are printed, so that who reads the paper and who judges go by the same limits.
+
+    Limits are rounded towards each other: a printed one never lets pass what the tolerance does not.
+    """
     digits = reading_digits(low, high)
-    return round(expected, digits), round(low, digits), round(high, digits)
+    unit, slack = 10.0**digits, 1e-6  # what is a whole number of the last digit but for binary noise stays as it is
+    inward = math.ceil(low * unit - slack) / unit, math.floor(high * unit + slack) / unit
+    return (round(expected, digits), *inward)
 
 
 def _of_measurement(loop: Loop, tolerance_pct: float) -> Iterator[Reading]:

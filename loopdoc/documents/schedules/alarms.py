@@ -12,6 +12,7 @@ from loopdoc.documents.narrative.time_to_act_story import Told, alarm_name
 from loopdoc.documents.schedules.schedule import (
     DASHES,
     NOT_APPLICABLE,
+    REVIEW,
     Cell,
     Column,
     Group,
@@ -32,9 +33,8 @@ from loopdoc.register.units import UnitError
 
 KIND = ScheduleKind(
     "alarm-schedules", "Alarm and trip schedule", "AS",
-    signatures=("Reviewed by, for process control", "For operations", "For process safety", "Date of the review",
-                "Remarks"),
-)  # fmt: skip
+    signatures=REVIEW,
+)
 COLUMNS = (
     Column("Tag", 5.2), Column("Service", 8.4), Column("Range", 6.7), Column("Alarm or trip", 7.4),
     Column("Limit", 5.8), Column("Dead band", 4.4), Column("Delay", 3.4), Column("Priority", 4.4),

@@ -11,6 +11,7 @@ from loopdoc.documents.narrative import failure_story
 from loopdoc.documents.schedules.schedule import (
     DASHES,
     NOT_APPLICABLE,
+    REVIEW,
     Cell,
     Column,
     Group,
@@ -40,9 +41,8 @@ from loopdoc.register.model import Loop, known
 
 KIND = ScheduleKind(
     "failure-effects", "Failure effects", "FE",
-    signatures=("Reviewed by, for process control", "For operations", "For process safety", "Date of the review",
-                "Remarks"),
-)  # fmt: skip
+    signatures=REVIEW,
+)
 COLUMNS = (
     Column("What fails", 13.5), Column("What the control does", 22.0), Column("Where the final element goes", 13.0),
     Column("Where the process goes", 17.5), Column("Towards the hazard?", 14.0),

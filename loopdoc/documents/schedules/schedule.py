@@ -186,6 +186,12 @@ class ScheduleKind:
     """Label of each cell of the sign-off, the widest last; empty where the title block is signature enough."""
 
 
+REVIEW = (
+    "Reviewed by, for process control", "For operations", "For process safety", "Date of the review", "Remarks",
+)  # fmt: skip
+"""Who signs a schedule of what the hazard study rests on."""
+
+
 def unit_title(basis: Basis, number: str) -> str:
     """`Unit 20 Rectification`."""
     unit = basis.plant.register.units.get(number)
