@@ -213,7 +213,8 @@ def tuning_panel(loop: Loop, dynamics: LoopDynamics, language: Language) -> Pane
     if not margins.stable:
         rows.append(((label("Margins"), language.unstable()),))
         return Panel(title, tuple(rows))
-    gain, phase = _figure(margins.gain_margin, language), _figure(margins.phase_margin_deg, language, "°")
+    gain, degrees = _figure(margins.gain_margin, language), margins.phase_margin_deg
+    phase = label("none") if math.isinf(degrees) else _figure(degrees, language, "°")
     crossover = _figure(margins.crossover_rad_per_s, language, "\u00a0rad/s")
     rows.append(((label("Gain margin"), gain), (label("Phase margin"), phase)))
     rows.append(((label("Ms"), _figure(margins.max_sensitivity, language)), (label("Crossover"), crossover)))

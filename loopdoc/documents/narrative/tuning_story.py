@@ -93,7 +93,8 @@ def _margins(dynamics: Dynamics, tag: str, language: Language) -> tuple[str, str
         return language.label("unstable"), "", "", "", ""
     ratio = worst.speed_ratio
     crossover = margins.crossover_rad_per_s
-    phase = f"{_figure(margins.phase_margin_deg, language)}°" if math.isfinite(margins.phase_margin_deg) else "∞"
+    degrees = margins.phase_margin_deg
+    phase = f"{_figure(degrees, language)}°" if math.isfinite(degrees) else language.label("none")
     crosses = f"{_figure(crossover, language)}{NO_BREAK}rad/s" if math.isfinite(crossover) else language.label("none")
     speed = _figure(ratio, language) if ratio is not None and math.isfinite(ratio) else ""
     by = language.by_frequency_response()

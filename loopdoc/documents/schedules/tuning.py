@@ -123,7 +123,7 @@ class _Tuning:
         ratio, crossover = worst.speed_ratio, margins.crossover_rad_per_s
         texts = (
             _figure(margins.gain_margin, "not quoted"),
-            _figure(margins.phase_margin_deg, DASH, "°"),
+            "none" if math.isinf(margins.phase_margin_deg) else _figure(margins.phase_margin_deg, DASH, "°"),
             _figure(margins.max_sensitivity, DASH),
             _figure(crossover, "none"),
             NOT_APPLICABLE if ratio is None else _figure(ratio, DASH),
